@@ -1,0 +1,48 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The calibration of an instrument from a standard: aberrations of position and the width function,
+ * with covariance and the range in which they hold. */
+#ifndef LW_INSTRUMENT_CALIBRATION_H
+#define LW_INSTRUMENT_CALIBRATION_H
+
+#include "instrument/aberrations.h"
+#include "line/lines.h"
+
+typedef struct lw_calibration {
+    lw_arena arena;
+    lw_radiation radiation;     /* its wavelength is the refined one where that was asked for */
+    char geometry[24];          /* "reflection" (flat specimen on the focusing circle) or "capillary" */
+    lw_aberrations aberrations;
+    lw_width_function profile;
+    double valid_low_deg, valid_high_deg;
+    char verdict[16];           /* "pass", "attention", "fail" */
+    char hash[65];              /* SHA-256 of the record it was saved to or loaded from; "" before */
+    lw_node *record;            /* the whole record as a tree: linewright/calibration/1 without provenance */
+} lw_calibration;
+
+typedef struct lw_calibrate_options {
+    double goniometer_radius_mm; /* for the displacement in mm; 0 = from the scan's header, else 200 (said so) */
+    int geometry;                /* "auto", "reflection", "capillary"; auto: capillary for a plain wavelength */
+    lw_option_list aberrations;  /* names; empty = zero_shift, displacement, transparency (reflection) or
+                                    zero_shift, wavelength (capillary) */
+    bool refine_wavelength;      /* capillary default true: certified cell fixes the wavelength */
+} lw_calibrate_options;
+extern const lw_option lw_calibrate_option_table[];
+lw_calibrate_options lw_calibrate_defaults(void);
+
+/* Calibrates from the fitted lines of a standard.
+ * Errors: LW_NOT_SUPPORTED if there are fewer lines than aberrations + 1, or if the lines do not belong to the
+ * standard (wrong standard or radiation). A range that can't separate two aberrations is a warning in the record. */
+lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                       const lw_calibrate_options *options, lw_calibration **calibration, lw_error *err);
+
+/* A calibration from its record tree (as parsed from JSON); checks schema and every number. */
+lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, const char *file,
+                                   lw_calibration **calibration, lw_error *err);
+void lw_calibration_free(lw_calibration *calibration);
+
+/* Checks that a sample's scan can be analysed with it: same radiation, and [low, high] 2theta inside the valid
+ * range (5 % of its length is tolerated at either end, and marked). */
+lw_status lw_calibration_covers(const lw_calibration *calibration, const lw_radiation *radiation, double low_deg,
+                                double high_deg, lw_error *err);
+
+#endif
