@@ -5,6 +5,7 @@
 #define LW_SCAN_SCAN_H
 
 #include "base/arena.h"
+#include "base/options.h"
 #include "physics/radiation.h"
 
 #include <stdbool.h>
@@ -40,7 +41,7 @@ typedef struct lw_scan_options {
     const char *block;      /* data block of a CIF with several scans; NULL = the only one */
     const lw_radiation *radiation; /* what the user says; overrides the file's; NULL = the file's, if any */
 } lw_scan_options;
-extern const struct lw_option lw_scan_option_table[];
+extern const lw_option lw_scan_option_table[];
 lw_scan_options lw_scan_defaults(void);
 
 /* Reads a scan from a file: text columns or pdCIF, plain or gzipped, told apart by content.
