@@ -19,7 +19,7 @@ typedef struct lw_cell {
     double u_a, u_b, u_c;
 } lw_cell;
 
-/* Two ends of the fluorescent/elastic description that a material may lack. */
+/* What a material may lack besides its cell: stiffness, Burgers vector, density. */
 typedef struct lw_material {
     char name[64];
     char title[96];             /* as a person calls it, for reports */
@@ -46,6 +46,7 @@ typedef struct lw_standard {
     double coverage_factor;     /* k of the certificate */
     double temperature_c;       /* at which the cell is certified */
     double domain_size_nm;      /* certified or stated mean column length; 0 = none stated */
+    bool unverified;            /* certified values to be checked against the user's own certificate */
 } lw_standard;
 
 /* One reflection, families of equal spacing joined (333 and 511). */
@@ -57,8 +58,23 @@ typedef struct lw_reflection {
     int families;               /* how many were joined */
 } lw_reflection;
 
+/* The Hall number of a space group in a setting.
+ * Given:  number   1 to 230
+ *         setting  "1" or "2" (origin choice), "H" or "R" (axes), "b1", "c1", "cab" ...; NULL or "" = the
+ *                  standard one (hexagonal axes, origin choice 2, unique axis b with cell choice 1)
+ * LW_BAD_ARGUMENT lists the settings that the group has. */
+lw_status lw_space_group_setting(int number, const char *setting, int *hall_number, lw_error *err);
+
+/* The space group of a short symbol: "Fm-3m", "P6_3/mmc" or "P63/mmc", "P 21/n", "R-3c:R". Blanks and
+ * underscores don't matter. Without a setting after a colon the standard one is taken if the symbol fits
+ * it, or else (Pbnm, P21/n) the setting that has the symbol. */
+lw_status lw_space_group_find(const char *symbol, int *number, int *hall_number, lw_error *err);
+
 /* Fills system, lattice, symbol and hall number from the space group number (standard setting) or, when
- * hall_number is already set, from that; refuses a cell that the system does not allow. */
+ * hall_number is already set, from that; refuses a cell that the system does not allow. Edges and angles left 0 are filled where
+ * the symmetry fixes them (b and c of a cubic cell, right angles, 120 degrees of a hexagonal one), and
+ * refused where it doesn't; u_b and u_c follow u_a likewise. A cell is allowed if every rotation of the
+ * group leaves its metric unchanged within 5e-6. */
 lw_status lw_material_settle(lw_material *material, lw_error *err);
 
 /* 1/d of hkl in nm^-1 (s = 2 sin(theta)/lambda), for any cell. */
