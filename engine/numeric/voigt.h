@@ -61,6 +61,9 @@ const lw_voigt_kernel *lw_voigt_kernel_for(lw_cpu cpu);
 void lw_faddeeva(double x, double y, double *re, double *im);
 /* Voigt of unit area at x; gauss_fwhm, lorentz_fwhm >= 0 and not both 0, unit of x. */
 double lw_voigt(double x, double gauss_fwhm, double lorentz_fwhm);
+/* The same with its slopes, the scalar twin of the kernel. Takes the square of the Gaussian FWHM (0 = pure
+ * Lorentzian). d[0] value, d[1] d/dx, d[2] d/d(lorentz_fwhm), d[3] d/d(gauss_variance). */
+void lw_voigt_derivatives(double x, double gauss_variance, double lorentz_fwhm, double d[4]);
 /* FWHM of a Voigt by root finding, to 1e-12 relative. */
 double lw_voigt_fwhm(double gauss_fwhm, double lorentz_fwhm);
 /* Integral breadth (area/height) of a Voigt: beta_G exp(-k^2)/erfc(k), k = beta_L/(sqrt(pi) beta_G)

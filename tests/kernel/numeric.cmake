@@ -1,0 +1,10 @@
+# SPDX-License-Identifier: GPL-3.0-or-later
+# Tests of the floor `numeric`.
+lw_test(voigt kernel/voigt_test.c)
+
+# libcerf serves as an independent reference where it is installed; without it the test says what it skips.
+pkg_check_modules(CERF IMPORTED_TARGET libcerf)
+if(CERF_FOUND)
+  target_link_libraries(test_voigt PRIVATE PkgConfig::CERF)
+  target_compile_definitions(test_voigt PRIVATE LW_HAVE_CERF)
+endif()
