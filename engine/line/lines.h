@@ -26,6 +26,7 @@ typedef struct lw_line {
     double instrument_fwhm_deg, instrument_breadth_deg; /* at this angle; 0 when no instrument was given */
     double u_instrument_breadth_deg;
     double residual_misfit;     /* chi-square per point within 1.5 FWHM of the line */
+    bool shared_width;          /* its width comes from the function shared by lines, not from itself alone */
     size_t at_position, at_area, at_gauss, at_lorentz; /* rows of the covariance, or LW_NO_PARAMETER;
                                    at_gauss is the SQUARE of the own Gaussian FWHM (deg^2) */
 } lw_line;
@@ -33,6 +34,7 @@ typedef struct lw_line {
 typedef struct lw_lines {
     lw_arena arena;
     const lw_scan *scan;             /* borrowed: must outlive the lines */
+    lw_scan *cropped;                /* owned, and then what `scan` points to, when a range was asked for */
     const lw_material *material;     /* copy, NULL if the reflections came without one */
     lw_radiation radiation;
     bool has_instrument;
@@ -60,7 +62,7 @@ typedef struct lw_lines {
 
 typedef struct lw_fit_options {
     int shape;             /* "voigt", "gaussian", "lorentzian", "pseudo_voigt", "pearson7", "split_pseudo_voigt", "split_pearson7" */
-    int widths;            /* "free", "smooth", "auto" (free; smooth where lines overlap too much) */
+    int widths;            /* "auto" (free; shared where lines overlap or are weak), "free", "smooth" */
     int axial;             /* "none", "refined" (shared; without an instrument only) */
     int axis;              /* "s" (profile symmetric in sin theta), "two_theta" */
     int intensity_factor;  /* "lorentz_polarisation", "none": varies across a line or not */
@@ -71,9 +73,9 @@ typedef struct lw_fit_options {
     double range[2];       /* deg; both 0 = all */
     double search_deg;     /* how far from the expected place a line may be, deg */
     double window;         /* half-width of the point-by-point window in FWHM; further out a line is interpolated */
-    int weights;           /* "model" (iterated), "observed", "poisson" (deviance) */
+    int weights;           /* "model" (iterated), "observed" */
     bool misfit;           /* widen u when the shape misses the data */
-    const lw_option_list fixed; /* names of parameters held: "U", "background", ... */
+    lw_option_list fixed;  /* names of parameters held: "U", "background", ... */
     const lw_width_function *instrument; /* fold this in; NULL = none. From the option `instrument` = calibration */
     const double *expected_shift;        /* [n reflections] deg added to the expected places, or NULL */
     const lw_scan *background_scan;      /* its intensity times a fitted factor belongs to the background, or NULL */

@@ -1,0 +1,92 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The model of a whole scan: background + lines, and its normal equations.
+ * A scan is cut into blocks of 64 points. In the blocks near a line the line is evaluated point by point; in the
+ * others its tail is evaluated at a few nodes a block and interpolated (all tails of a block together, once).
+ * Model and gradient keep every tail; of the normal matrix only the blocks of one far line with another are
+ * left out while iterating. No Jacobian is ever stored beyond one block.
+ *
+ * Parameters, in this order: for each line position (deg), area (intensity x deg), then n_local shape
+ * parameters; then the border: background terms, then globals (width-function parameters). */
+#ifndef LW_LINE_MODEL_H
+#define LW_LINE_MODEL_H
+
+#include "line/nodes.h"
+#include "line/shape.h"
+#include "line/width.h"
+#include "numeric/least_squares.h"
+#include "scan/scan.h"
+
+#define LW_BLOCK 64
+#define LW_FAR_NODES 6
+#define LW_GLOBALS_MOST (2 * LW_WIDTH_PARAMETERS)
+
+typedef struct lw_global {
+    bool of_instrument; /* else of the lines' own width function */
+    int parameter;      /* LW_U ... LW_AXIAL_H */
+    bool tied;          /* LW_AXIAL_S only: moves H/L with it */
+} lw_global;
+
+typedef struct lw_model_line {
+    double nominal_deg;          /* where widths and axial divergence are evaluated: the expected 2theta */
+    size_t near_first, near_end; /* blocks evaluated point by point */
+    size_t axial;                /* copies of the axial divergence */
+} lw_model_line;
+
+typedef struct lw_model {
+    lw_engine *engine;
+    const lw_voigt_kernel *kernel;
+    const lw_radiation *radiation;
+    const lw_shape *shape;
+    bool on_s_axis, with_factor;
+    double cos2_monochromator; /* weight of cos^2(2theta) in the polarisation, and its constant part */
+    double constant_polarisation;
+    /* points, padded to whole blocks; padding has weight 0 */
+    size_t n, n_blocks;
+    const double *two_theta, *sine, *factor, *y;
+    double *weight;            /* 1/variance, set between iterations */
+    const double *to_nodes;    /* [n_blocks][LW_FAR_NODES][LW_BLOCK]: interpolation from a block's nodes */
+    const double *node_angle;  /* [n_blocks][LW_FAR_NODES] */
+    /* background */
+    size_t n_background;
+    const double *basis;       /* [n_background][padded n] */
+    /* lines */
+    size_t n_lines, n_local;
+    lw_model_line *line;
+    /* width functions: instrument's is fixed unless it stands among the globals */
+    double own[LW_WIDTH_PARAMETERS], instrument[LW_WIDTH_PARAMETERS];
+    size_t n_globals;
+    lw_global global[LW_GLOBALS_MOST];
+    bool whole_normal; /* also the far line's own block, for the final covariance */
+    /* scratch, sized by lw_model_prepare */
+    double *near_columns, *far_columns;
+    lw_voigt_node *nodes, *merged;
+    size_t *n_nodes, *n_merged, *near, *far;
+    struct lw_line_state *state;
+    double *curve; /* [padded n] model at the last evaluation */
+} lw_model;
+
+size_t lw_model_parameters(const lw_model *model);
+size_t lw_model_row(const lw_model *model, size_t line);   /* of the line's position */
+size_t lw_model_border(const lw_model *model);             /* row of background term 0 */
+
+/* Lays out points, blocks and interpolation for a scan. Chebyshev background of `terms` terms on the scan's range,
+ * then optionally 1/2theta and the extra column (n values, or NULL). */
+lw_status lw_model_points(lw_model *model, const lw_scan *scan, size_t terms, bool hyperbola, const double *extra,
+                          lw_arena *arena, lw_error *err);
+
+/* Takes scratch for the present lines and globals. Call again after their number changed. */
+lw_status lw_model_prepare(lw_model *model, lw_arena *arena, lw_error *err);
+
+/* Decides which blocks are near which line, for a typical FWHM at each: window in FWHM. */
+void lw_model_windows(lw_model *model, const double *p, double window);
+
+/* The callback of lw_problem: user is the lw_model. */
+lw_status lw_model_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
+
+/* Total squared Gaussian FWHM (deg^2) and Lorentzian FWHM (deg) of a line, emission left out. */
+void lw_model_widths(const lw_model *model, const double *p, size_t line, double *gauss_variance, double *lorentz);
+
+/* Intensity factor P/sin^2(theta) of a scan point or line (1 when switched off), and its relative slope, 1/deg. */
+double lw_model_factor(const lw_model *model, double two_theta_deg, double *relative_slope);
+
+#endif

@@ -1,0 +1,37 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Line shapes. The Voigt (with Gaussian and Lorentzian as its limits) is evaluated by numeric/voigt; the
+ * empirical shapes here serve comparison with older work and split forms for asymmetry. Each is one
+ * constant. An empirical shape takes the emission components as displaced copies of equal width. */
+#ifndef LW_LINE_SHAPE_H
+#define LW_LINE_SHAPE_H
+
+#include "numeric/voigt.h"
+
+#include <stdbool.h>
+
+#define LW_LOCAL_MOST 4
+
+typedef struct lw_shape {
+    const char *name;
+    const char *source;
+    bool is_voigt;
+    int n_local;                        /* own parameters of a line */
+    const char *local[LW_LOCAL_MOST];   /* their names */
+    double lower[LW_LOCAL_MOST], upper[LW_LOCAL_MOST]; /* bounds; widths are widened by the fit's scale */
+    bool held[LW_LOCAL_MOST];           /* Gaussian and Lorentzian: the other width stays 0 */
+    /* empirical shapes: unit-area profile at x and its derivatives to x and the parameters */
+    double (*value)(double x, const double *local, double *d_x, double *d_local);
+    /* FWHM and integral breadth and their derivatives to the parameters */
+    void (*breadths)(const double *local, double *fwhm, double *breadth, double *d_fwhm, double *d_breadth);
+    /* parameters for a FWHM, to start from */
+    void (*start)(double fwhm, double *local);
+} lw_shape;
+
+extern const lw_shape *const lw_shape_list[]; /* NULL-terminated, in the order of lw_shape_names */
+extern const char *const lw_shape_names[];    /* for the option table */
+
+/* Sums the copies of an empirical shape at n points; d_local[i][n]. */
+void lw_shape_sum(const lw_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
+                  const double *local, double *value, double *d_position, double *const *d_local);
+
+#endif
