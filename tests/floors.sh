@@ -91,7 +91,11 @@ unlisted() {
     for file in "$tree/engine/$floor"/*.c; do
       [ -f "$file" ] || continue
       name=${file##*/}
-      grep -qwF "$name" "$tree/engine/$floor/CMakeLists.txt" "$tree/engine/CMakeLists.txt" "$tree/CMakeLists.txt" 2>/dev/null ||
+      list="$tree/engine/$floor/CMakeLists.txt"
+      grep -qwF "$name" "$list" 2>/dev/null && continue
+      # a rung: the list has NAME_${rung}.c once, and a line a rung
+      rung=${name##*_}
+      grep -qF "${name%_*}_\${rung}.c" "$list" 2>/dev/null && grep -q "_rung(${rung%.c}[ )]" "$list" ||
         echo "engine/$floor/$name is in no CMakeLists.txt"
     done
   done

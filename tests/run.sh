@@ -18,7 +18,7 @@ unset LUA_INIT LUA_PATH LUA_CPATH LUA_INIT_5_4 LUA_PATH_5_4 LUA_CPATH_5_4 CC CFL
 
 jobs=2
 lean=no only=
-steps="build ctest sanitized floors luacheck specs demo records browser install memory"
+steps="build ctest sanitized floors luacheck specs demo records faults browser install memory"
 while [ $# -gt 0 ]; do
   case $1 in
     --lean) lean=yes ;;
@@ -97,7 +97,7 @@ part() {
     "python='$python' logs='$logs'" ". '$root/scripts/setup.sh'" "set -eu" "$1"
 }
 
-counted="ctest sanitized specs floors records browser"
+counted="ctest sanitized specs floors records faults browser"
 count_lines() {
   good=$(sed -nE 's/^([0-9]+: )?([0-9]+) passed, ([0-9]+) failed$/\2/p' "$log" | awk '{ n += $1 } END { print n + 0 }')
   bad=$(sed -nE 's/^([0-9]+: )?([0-9]+) passed, ([0-9]+) failed$/\3/p' "$log" | awk '{ n += $1 } END { print n + 0 }')
@@ -113,6 +113,7 @@ count_ctest() { count_programs; }
 count_sanitized() { count_programs; }
 count_floors() { count_lines; }
 count_records() { count_lines; }
+count_faults() { count_lines; }
 count_browser() { count_lines; }
 count_specs() {
   line_=$(grep -E '^[0-9]+ success(es)? / [0-9]+ failures? / [0-9]+ errors? / [0-9]+ pending' "$log" | tail -n 1)
@@ -190,7 +191,16 @@ if wanted demo || wanted records || wanted browser; then
 fi
 if wanted records; then step records 120 "$python" tests/records.py "$demo"; fi
 
-# 7. The reports in a browser without a window.
+# 7. What happens when the world is not as it should be.
+if wanted faults; then
+  if [ $built = yes ]; then
+    step faults 400 sh tests/faults/run.sh "$build"
+  else
+    skip faults "the interpreter was not built"
+  fi
+fi
+
+# 8. The reports in a browser without a window.
 if wanted browser; then
   if [ $lean = yes ]; then
     skip browser "left out by --lean"
@@ -199,7 +209,7 @@ if wanted browser; then
   fi
 fi
 
-# 8. Installed, moved and run from somewhere else.
+# 9. Installed, moved and run from somewhere else.
 if wanted install; then
   if [ $built = yes ]; then
     step install 240 sh tests/install.sh "$build"
@@ -208,7 +218,7 @@ if wanted install; then
   fi
 fi
 
-# 9. Memory of the interpreter's own start and end, which the C tests don't cross.
+# 10. Memory of the interpreter's own start and end, which the C tests don't cross.
 if wanted memory; then
   if [ $built = no ]; then
     skip memory "the interpreter was not built"

@@ -1,0 +1,169 @@
+#!/bin/sh
+# SPDX-License-Identifier: GPL-3.0-or-later
+# What the interpreter does when the world is not as it should be: exit status, a message that names
+# what to do, nothing half written, nothing left behind. Expected statuses are those of README.md.
+#   sh tests/faults/run.sh BUILD
+# Last line: "N passed, N failed".
+set -u
+LC_ALL=C.UTF-8
+export LC_ALL
+root=$(cd "$(dirname "$0")/../.." && pwd -P)
+engine=$(cd "$1" && pwd -P)/linewright
+scratch=$(mktemp -d "${TMPDIR:-/tmp}/linewright-faults.XXXXXX")
+child=
+trap 'rm -rf "$scratch"' EXIT
+trap '[ -z "$child" ] || kill "$child" 2>/dev/null; exit 130' INT TERM
+cd "$scratch" || exit 1
+demo=$root/scripts/demo
+scripts=$root/scripts
+passed=0 failed=0
+
+check() { # check WHAT: judges the status of the command before it
+  if [ $? -eq 0 ]; then
+    passed=$((passed + 1))
+  else
+    failed=$((failed + 1))
+    echo "FAILED: $1"
+    [ ! -s "$scratch/err" ] || sed -n '1,6s/^/    | /p' "$scratch/err" | cut -c1-300
+  fi
+}
+# ends STATUS COMMAND...: runs it, with stdout and stderr in files; true if it ends in that status.
+ends() {
+  want_=$1
+  shift
+  timeout -k 5 120 "$@" >"$scratch/out" 2>"$scratch/err" </dev/null
+  got_=$?
+  [ $got_ -eq "$want_" ] || { echo "    status $got_, not $want_: $*" | cut -c1-300; return 1; }
+}
+says() { grep -qE -- "$1" "$scratch/err"; }
+calibrate() {
+  "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660c radiation="Cu Ka" "$@"
+}
+recipe() { printf '%s\n' "$2" >"$scratch/$1.lua"; }
+
+# --- usage ---------------------------------------------------------------------------------------
+ends 2 "$engine" --no-such-option; check "an unknown option is a usage error"
+[ ! -s "$scratch/out" ]; check "a usage error leaves stdout alone"
+ends 0 "$engine" --help && [ -s "$scratch/out" ]; check "--help goes to stdout"
+ends 0 "$engine" --version && grep -q '[0-9]\.[0-9]' "$scratch/out"; check "--version goes to stdout"
+ends 0 "$engine" "$scripts/calibrate.lua" --help && grep -q standard "$scratch/out"; check "a recipe lists its inputs"
+ends 2 "$engine" "$scripts/calibrate.lua" scann=x; check "an unknown input is a usage error"
+says 'scan'; check "and the nearest spelling is named"
+
+# --- bad files -----------------------------------------------------------------------------------
+: >empty.xy
+printf '10 1\n10.1 2\nten three\n10.3 4\n' >words.xy
+printf '10 1\n10.1 2\n10.05 3\n10.3 4\n' >back.xy
+gzip -c "$demo/lab6_after_service.xy" | head -c 3000 >cut.xy.gz
+head -c 4000 /dev/urandom >noise.xy
+mkdir folder.xy
+for file in missing.xy empty.xy words.xy back.xy cut.xy.gz noise.xy folder.xy; do
+  ends 1 "$engine" "$scripts/calibrate.lua" scan="$file" standard=lab6-660c radiation="Cu Ka" out=bad
+  check "$file is refused"
+  says "$file"; check "the message about $file names it"
+  [ ! -e bad/calibration.json ]; check "$file leaves no calibration"
+done
+ends 1 "$engine" "$scripts/calibrate.lua" scan=words.xy standard=lab6-660c radiation="Cu Ka" out=bad
+says 'words\.xy:3'; check "the message names the line"
+ends 1 "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660x radiation="Cu Ka" out=bad
+says 'lab6-660'; check "an unknown standard gets the nearest name"
+printf '{"schema": "linewright/calibration/1", "profile": ' >broken.json
+ends 1 "$engine" "$scripts/size_strain.lua" scan="$demo/nickel_milled_04h.xy" material=nickel calibration=broken.json out=bad
+says 'broken\.json'; check "a cut calibration is refused by name"
+
+# --- writing -------------------------------------------------------------------------------------
+calibrate out=good >"$scratch/out" 2>"$scratch/err" </dev/null && [ -s good/calibration.json ]
+check "a sound job works"
+cp good/calibration.json before.json 2>/dev/null
+(
+  ulimit -f 4
+  calibrate out=good
+) >"$scratch/out" 2>"$scratch/err" </dev/null
+[ $? -eq 1 ]; check "a file that can't be written whole is an error, not a death"
+cmp -s before.json good/calibration.json; check "and the older record is untouched"
+[ -z "$(find good -newer before.json -name '*.tmp*' 2>/dev/null)" ] && [ -z "$(find good -name '.*' -type f)" ]
+check "and no temporary file stays"
+: >plain
+ends 1 "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660c radiation="Cu Ka" out=plain
+says plain; check "an out that is a file is named"
+if [ -c /dev/full ]; then
+  "$engine" -e 'for i = 1, 1e5 do print(i) end' >/dev/full 2>"$scratch/err" </dev/null
+  [ $? -eq 1 ]; check "a full stdout is an error"
+fi
+{ "$engine" -e 'for i = 1, 1e6 do print(i) end' 2>"$scratch/err" </dev/null; echo $? >status; } | head -n 1 >/dev/null
+[ "$(cat status)" -le 141 ] && ! says 'Sanitizer|core'; check "a closed pipe ends it quietly"
+(
+  PATH=/nowhere
+  export PATH
+  calibrate out=plotless
+) >"$scratch/out" 2>"$scratch/err" </dev/null
+status=$?
+[ $status -eq 1 ] && says '[Gg]nuplot' || { [ $status -eq 0 ] && [ -s plotless/report.html ]; }
+check "without gnuplot it still reports, or says what is missing"
+
+# --- scripts that should not be trusted ------------------------------------------------------------
+recipe execute 'os.execute("touch executed")'
+recipe popen 'io.popen("touch executed"):close()'
+recipe escape 'local lw = require "linewright"; local f = assert(io.open("../escaped", "w")); f:write("x"); f:close()'
+recipe absolute "local f = assert(io.open('$scratch/escaped', 'w')); f:write('x'); f:close()"
+recipe remove "os.remove('$scratch/before.json')"
+recipe bytecode 'assert(load(string.dump(function() end), "x", "b"))'
+recipe native 'assert(package.loadlib("/lib/x86_64-linux-gnu/libc.so.6", "system"))'
+recipe debugger 'debug.getregistry()'
+for name in execute popen escape absolute remove bytecode native debugger; do
+  ends 1 "$engine" "$name.lua"; check "the script '$name' is stopped"
+  says "$name\.lua:1"; check "the message about '$name' names its line"
+done
+[ ! -e executed ] && [ ! -e escaped ] && [ ! -e ../escaped ] && [ -e before.json ]; check "and none of them left a mark"
+
+# --- limits and interruption -------------------------------------------------------------------------
+recipe endless 'while true do end'
+recipe stubborn 'while true do pcall(function() while true do end end) end'
+recipe hungry 'local t = {} for i = 1, 1e9 do t[i] = ("x"):rep(1000) .. i end'
+recipe greedy 'return ("x"):rep(1 << 34)'
+ends 1 "$engine" --time-limit=1 endless.lua; check "a time limit stops an endless loop"
+ends 1 "$engine" --time-limit=1 stubborn.lua; check "a loop of pcall can't swallow the limit"
+ends 1 "$engine" --memory-limit=64 hungry.lua; check "a memory limit stops a hungry script"
+ends 1 "$engine" --memory-limit=64 greedy.lua; check "and one that asks for all at once"
+interrupt() { # interrupt SECONDS COMMAND...: sends SIGINT after a while; the status is its own
+  seconds_=$1
+  shift
+  # a shell without job control starts background commands with SIGINT ignored; env undoes it
+  env --default-signal=INT "$@" >"$scratch/out" 2>"$scratch/err" </dev/null &
+  child=$!
+  sleep "$seconds_"
+  kill -INT "$child" 2>/dev/null
+  wait "$child"
+  status=$?
+  child=
+  return $status
+}
+if env --default-signal=INT true 2>/dev/null; then
+  interrupt 1 "$engine" endless.lua
+  [ $? -eq 130 ]; check "Ctrl-C stops a script with status 130"
+  interrupt 0.5 "$engine" stubborn.lua
+  [ $? -eq 130 ]; check "Ctrl-C stops a stubborn script"
+  interrupt 0.3 "$engine" "$scripts/milling_series.lua" scans="$demo/nickel_milled_*.xy" material=nickel \
+    calibration=good/calibration.json out=stopped
+  status=$?
+  [ $status -eq 130 ] || [ $status -eq 0 ]; check "Ctrl-C stops a series"
+  [ $status -eq 0 ] || [ ! -e stopped/results.json ]; check "and it leaves no half record"
+fi
+
+# --- a series that is killed goes on where it was ----------------------------------------------------
+series() {
+  "$engine" "$scripts/milling_series.lua" scans="$demo/nickel_milled_*.xy" material=nickel \
+    calibration=good/calibration.json out="$1"
+}
+series whole >"$scratch/out" 2>"$scratch/err" </dev/null; check "the series works"
+series killed >/dev/null 2>&1 </dev/null &
+child=$!
+sleep 0.7
+kill -KILL "$child" 2>/dev/null
+wait "$child" 2>/dev/null
+child=
+series killed >"$scratch/out" 2>"$scratch/err" </dev/null; check "a killed series can be run again"
+cmp -s whole/series.csv killed/series.csv; check "and gives the same table"
+
+echo "$passed passed, $failed failed"
+[ "$failed" -eq 0 ]
