@@ -63,13 +63,13 @@ for file in missing.xy empty.xy words.xy back.xy cut.xy.gz noise.xy folder.xy; d
   says "$file"; check "the message about $file names it"
   [ ! -e bad/calibration.json ]; check "$file leaves no calibration"
 done
-ends 1 "$engine" "$scripts/calibrate.lua" scan=words.xy standard=lab6-660c radiation="Cu Ka" out=bad
-says 'words\.xy:3'; check "the message names the line"
-ends 1 "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660x radiation="Cu Ka" out=bad
-says 'lab6-660'; check "an unknown standard gets the nearest name"
+ends 1 "$engine" "$scripts/calibrate.lua" scan=words.xy standard=lab6-660c radiation="Cu Ka" out=bad &&
+  says 'words\.xy:3'; check "the message names the line"
+ends 1 "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660x radiation="Cu Ka" out=bad &&
+  says 'lab6-660'; check "an unknown standard gets the nearest name"
 printf '{"schema": "linewright/calibration/1", "profile": ' >broken.json
-ends 1 "$engine" "$scripts/size_strain.lua" scan="$demo/nickel_milled_04h.xy" material=nickel calibration=broken.json out=bad
-says 'broken\.json'; check "a cut calibration is refused by name"
+ends 1 "$engine" "$scripts/size_strain.lua" scan="$demo/nickel_milled_04h.xy" material=nickel calibration=broken.json out=bad &&
+  says 'broken\.json'; check "a cut calibration is refused by name"
 
 # --- writing -------------------------------------------------------------------------------------
 calibrate out=good >"$scratch/out" 2>"$scratch/err" </dev/null && [ -s good/calibration.json ]
@@ -84,8 +84,8 @@ cmp -s before.json good/calibration.json; check "and the older record is untouch
 [ -z "$(find good -newer before.json -name '*.tmp*' 2>/dev/null)" ] && [ -z "$(find good -name '.*' -type f)" ]
 check "and no temporary file stays"
 : >plain
-ends 1 "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660c radiation="Cu Ka" out=plain
-says plain; check "an out that is a file is named"
+ends 1 "$engine" "$scripts/calibrate.lua" scan="$demo/lab6_after_service.xy" standard=lab6-660c radiation="Cu Ka" out=plain &&
+  says plain; check "an out that is a file is named"
 if [ -c /dev/full ]; then
   "$engine" -e 'for i = 1, 1e5 do print(i) end' >/dev/full 2>"$scratch/err" </dev/null
   [ $? -eq 1 ]; check "a full stdout is an error"
