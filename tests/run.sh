@@ -97,7 +97,7 @@ part() {
     "python='$python' logs='$logs'" ". '$root/scripts/setup.sh'" "set -eu" "$1"
 }
 
-counted="ctest sanitized specs floors records faults browser"
+counted="ctest sanitized floors luacheck specs records faults browser"
 count_lines() {
   good=$(sed -nE 's/^([0-9]+: )?([0-9]+) passed, ([0-9]+) failed$/\2/p' "$log" | awk '{ n += $1 } END { print n + 0 }')
   bad=$(sed -nE 's/^([0-9]+: )?([0-9]+) passed, ([0-9]+) failed$/\3/p' "$log" | awk '{ n += $1 } END { print n + 0 }')
@@ -115,6 +115,10 @@ count_floors() { count_lines; }
 count_records() { count_lines; }
 count_faults() { count_lines; }
 count_browser() { count_lines; }
+count_luacheck() {
+  set -- $(sed -nE 's/^Total: ([0-9]+) warnings? \/ ([0-9]+) errors? in ([0-9]+) files?.*/\1 \2 \3/p' "$log")
+  bad=$((${1:-0} + ${2:-0})) good=$((${3:-0} > bad ? ${3:-0} - bad : 0))
+}
 count_specs() {
   line_=$(grep -E '^[0-9]+ success(es)? / [0-9]+ failures? / [0-9]+ errors? / [0-9]+ pending' "$log" | tail -n 1)
   set -- $(printf '%s' "$line_" | grep -oE '[0-9]+' | head -n 4)
@@ -163,8 +167,8 @@ fi
 # 4. The rules of the house.
 if wanted floors; then step floors 120 sh tests/floors.sh "$build"; fi
 if wanted luacheck; then
-  lua_sources="scripts standards engine/bind tests/spec"
-  step luacheck 120 luacheck --no-color --codes $(find $lua_sources -name '*.lua' | sort)
+  step luacheck 120 luacheck --no-color --codes -q \
+    $(find scripts standards engine/bind tests/spec -name '*.lua' 2>/dev/null | sort)
 fi
 
 # 5. The specs, under the interpreter itself.
