@@ -79,11 +79,11 @@ void lw_cholesky_solve(const double *u, size_t n, size_t ld, double *b)
 
 void lw_cholesky_invert_factor(double *u, size_t n, size_t ld)
 {
-    /* row i of V is (e_i - sum over k > i of U[i][k] V[k]) / U[i][i]; U[i][k] is read before it is
-     * overwritten, as V[k] starts at column k */
+    /* row i of V is (e_i - sum over k > i of U[i][k] V[k]) / U[i][i]; with k falling, U[i][k] is read
+     * before it is overwritten, as V[k] starts at column k */
     for (size_t i = n; i-- > 0;) {
         double *row = u + i * ld, inverse = 1 / row[i];
-        for (size_t k = i + 1; k < n; k++) {
+        for (size_t k = n; k-- > i + 1;) {
             double c = row[k];
             row[k] = 0;
             take_off(row + k, u + k * ld + k, c, n - k);

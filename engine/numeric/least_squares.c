@@ -196,7 +196,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
             return status;
         outcome->iterations++;
         if (!find_step(s, p, damping)) {
-            damping = fmax(10 * damping, 1e-8);
+            damping = fmax(10 * damping, 1e-13);
             if (damping < DAMPING_MOST)
                 continue;
             outcome->reason = "the normal equations are not positive";
@@ -242,7 +242,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
             rejected = 0;
         } else {
             rejected++;
-            damping = fmin(fmax(damping, 1e-6) * growth * (isfinite(actual) ? 1 : 5), DAMPING_MOST);
+            damping = fmin(damping * growth * (isfinite(actual) ? 1 : 5), DAMPING_MOST);
             growth *= 2;
         }
         if (small && damping > 1e-3) {

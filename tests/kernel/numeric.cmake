@@ -8,3 +8,6 @@ if(CERF_FOUND)
   target_link_libraries(test_voigt PRIVATE PkgConfig::CERF)
   target_compile_definitions(test_voigt PRIVATE LW_HAVE_CERF)
 endif()
+
+lw_test(least_squares kernel/least_squares_test.c)
+lw_test(strd published/strd_test.c)
