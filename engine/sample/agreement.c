@@ -1,0 +1,120 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "sample/agreement.h"
+
+#include <math.h>
+#include <string.h>
+
+#define PULL_MOST 3.0
+
+static const char *const fields[] = {"size_volume", "size_area", "strain_rms", NULL};
+
+static bool either(const char *a, const char *b, const char *name)
+{
+    return strcmp(a, name) == 0 || strcmp(b, name) == 0;
+}
+
+static bool by_breadth(const char *name)
+{
+    return strcmp(name, "scherrer") == 0 || strcmp(name, "williamson_hall") == 0 ||
+           strcmp(name, "halder_wagner") == 0 || strcmp(name, "single_line_voigt") == 0;
+}
+
+const char *lw_agreement_reason(const char *field, const char *first, const char *second, double difference)
+{
+    bool size = strncmp(field, "size", 4) == 0;
+    if (size && either(first, second, "scherrer")) {
+        bool smaller = strcmp(first, "scherrer") == 0 ? difference < 0 : difference > 0;
+        return smaller ? "Scherrer reads all breadth as size; strain is present, so its size is too small"
+                       : "the other method finds less size broadening than the mean breadth allows: breadths "
+                         "fall "
+                         "with s, as with planar faults or flat crystallites";
+    }
+    if (either(first, second, "single_line_voigt"))
+        return "the single-line method takes each line's Gaussian part for strain and its Lorentzian part "
+               "for size; "
+               "a narrow distribution of sizes has a Gaussian part of its own";
+    if (by_breadth(first) && by_breadth(second))
+        return "the methods add size and strain breadths by different rules, of which none is exact; "
+               "column-length "
+               "methods need no such rule";
+    if (by_breadth(first) != by_breadth(second))
+        return "one method reads breadths, which weigh tails and need a rule of addition, the other the "
+               "whole shape";
+    return "the methods treat the lines' tails and the background differently";
+}
+
+/* Pull of two values, or of a value against the side that a limit forbids; false if they can't be compared.
+ */
+static bool pull_of(lw_quantity a, lw_quantity b, double *pull)
+{
+    if (a.kind != LW_VALUE && b.kind != LW_VALUE)
+        return false;
+    double u = hypot(a.kind == LW_VALUE ? a.u : 0, b.kind == LW_VALUE ? b.u : 0);
+    if (!(u > 0) || !isfinite(a.value) || !isfinite(b.value))
+        return false;
+    *pull = (a.value - b.value) / u;
+    bool fine = (a.kind == LW_LOWER_LIMIT && *pull < 0) || (a.kind == LW_UPPER_LIMIT && *pull > 0) ||
+                (b.kind == LW_LOWER_LIMIT && *pull > 0) || (b.kind == LW_UPPER_LIMIT && *pull < 0);
+    if (fine)
+        *pull = 0;
+    return true;
+}
+
+/* One field: values, pairs. True if all pairs agree. */
+static bool tell_field(const lw_node *methods, const char *field, lw_node *agreement, lw_error *err)
+{
+    size_t n = 0;
+    for (const lw_node *m = methods->first; m != NULL; m = m->next) {
+        const lw_node *value = lw_node_get(m, field);
+        n += value != NULL && value->kind == LW_NODE_QUANTITY;
+    }
+    if (n == 0)
+        return true;
+    bool agree = true;
+    lw_node *group = lw_add_group(agreement, field, err);
+    lw_node *values = lw_add_group(group, "values", err);
+    lw_node *pairs = lw_add_list(group, "pairs", err);
+    for (const lw_node *a = methods->first; a != NULL; a = a->next) {
+        const lw_node *first = lw_node_get(a, field);
+        if (first == NULL || first->kind != LW_NODE_QUANTITY)
+            continue;
+        lw_add_quantity(values, a->name, first->quantity, first->definition, err);
+        for (const lw_node *b = a->next; b != NULL; b = b->next) {
+            const lw_node *second = lw_node_get(b, field);
+            double pull;
+            if (second == NULL || second->kind != LW_NODE_QUANTITY ||
+                !pull_of(first->quantity, second->quantity, &pull))
+                continue;
+            bool fits = fabs(pull) <= PULL_MOST;
+            lw_node *pair = lw_add_group(pairs, NULL, err);
+            lw_add_text(pair, "first", a->name, err);
+            lw_add_text(pair, "second", b->name, err);
+            lw_add_number(pair, "pull", pull, err);
+            lw_add_flag(pair, "agree", fits, err);
+            if (!fits)
+                lw_add_text(pair, "likely_reason",
+                            lw_agreement_reason(field, a->name, b->name,
+                                                first->quantity.value - second->quantity.value),
+                            err);
+            agree = agree && fits;
+        }
+    }
+    lw_add_flag(group, "agree", agree, err);
+    return agree;
+}
+
+void lw_agreement(const lw_node *methods, lw_node *results, lw_error *err)
+{
+    lw_node *agreement = lw_add_group(results, "agreement", err);
+    if (methods == NULL || agreement == NULL)
+        return;
+    bool agree = true;
+    for (size_t i = 0; fields[i] != NULL; i++)
+        agree = tell_field(methods, fields[i], agreement, err) && agree;
+    lw_add_flag(agreement, "agree", agree, err);
+    lw_add_text(
+        agreement, "definition",
+        "A pull is the difference of two methods over their combined standard uncertainty. The methods read "
+        "the same lines, so a pull is rather too small than too large; beyond 3 they disagree.",
+        err);
+}

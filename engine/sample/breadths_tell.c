@@ -1,0 +1,228 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The words, numbers and curves of a fit of breadths. */
+#include "sample/breadths.h"
+
+#include <math.h>
+#include <stdarg.h>
+#include <stdio.h>
+#include <stdlib.h>
+
+#define CURVE_POINTS 101
+
+static lw_quantity times(lw_quantity q, double factor)
+{
+    q.value *= factor;
+    q.u *= factor;
+    return q;
+}
+
+void lw_breadths_tell(const lw_breadth_fit *fit, lw_node *group, lw_error *err)
+{
+    lw_add_quantity(
+        group, "size_volume", fit->size_volume,
+        "Volume-weighted mean column length: the reciprocal of the breadth that does not depend on s.", err);
+    lw_add_quantity(group, "strain_apparent", fit->strain_apparent,
+                    "Apparent strain e: strain's integral breadth over 2/d (Stokes & Wilson 1944); about the "
+                    "largest strain present.",
+                    err);
+    lw_add_quantity(group, "strain_rms", times(fit->strain_apparent, LW_RMS_PER_APPARENT),
+                    "Root mean square strain, if the strains are normally distributed: sqrt(2/pi) times the "
+                    "apparent strain.",
+                    err);
+    lw_add_number(group, "correlation", fit->correlation, err);
+    lw_add_number(group, "chi2", fit->fit.chi2, err);
+    lw_add_number(group, "degrees_of_freedom", (double)fit->fit.degrees, err);
+    if (fit->fit.degrees > 0) {
+        lw_add_number(group, "chi2_per_degree", fit->fit.chi2 / (double)fit->fit.degrees, err);
+        lw_add_number(group, "chance", fit->fit.p, err);
+    }
+    lw_add_number(group, "scatter_factor", fit->fit.scatter, err);
+}
+
+void lw_breadths_draw(const lw_breadths *breadths, const lw_breadth_fit *fit, lw_node *group, lw_error *err)
+{
+    size_t n = breadths->n;
+    lw_node *points = lw_add_group(group, "points", err);
+    lw_node *hkl = lw_add_list(points, "hkl", err);
+    double most = 0;
+    for (size_t i = 0; i < n; i++) {
+        const lw_reflection *r = &breadths->profile[i]->line->reflection;
+        char text[24];
+        lw_add_text(hkl, NULL, lw_hkl_text(r->h, r->k, r->l, text, sizeof text), err);
+        most = fmax(most, breadths->s[i]);
+    }
+    lw_add_vector(points, "s", breadths->s, n, "nm^-1", err);
+    lw_add_vector(points, "breadth", breadths->beta, n, "nm^-1", err);
+    lw_add_vector(points, "u", fit->fit.u, n, "nm^-1", err);
+    lw_add_vector(points, "calculated", fit->fit.calculated, n, "nm^-1", err);
+    lw_add_vector(points, "residual", fit->fit.residual, n, "nm^-1", err);
+
+    /* the line from s = 0, where it shows the size, to beyond the last point, with its standard uncertainty
+     */
+    double s[CURVE_POINTS], beta[CURVE_POINTS], u[CURVE_POINTS];
+    size_t kept = 0;
+    for (size_t i = 0; i < CURVE_POINTS; i++) {
+        double slopes[2], s_slope, at = 1.08 * most * (double)i / (CURVE_POINTS - 1);
+        double value = lw_form_breadth(fit->form, fit->p, at, slopes, &s_slope), variance = 0;
+        for (size_t j = 0; j < 2; j++)
+            for (size_t k = 0; k < 2; k++)
+                variance += slopes[j] * fit->covariance[j][k] * slopes[k];
+        if (!isfinite(value) || !isfinite(variance))
+            continue; /* a form that ends before s = 0 because its size share is negative */
+        s[kept] = at;
+        beta[kept] = value;
+        u[kept++] = sqrt(fmax(0, variance));
+    }
+    lw_node *line = lw_add_group(group, "line", err);
+    lw_add_vector(line, "s", s, kept, "nm^-1", err);
+    lw_add_vector(line, "breadth", beta, kept, "nm^-1", err);
+    lw_add_vector(line, "u", u, kept, "nm^-1", err);
+}
+
+/* ------------------------------------------------------------------------------------------------- remarks
+ */
+
+static void say(lw_node *remarks, lw_error *err, const char *format, ...)
+    __attribute__((format(printf, 3, 4)));
+
+static void say(lw_node *remarks, lw_error *err, const char *format, ...)
+{
+    char text[480];
+    va_list list;
+    va_start(list, format);
+    vsnprintf(text, sizeof text, format, list);
+    va_end(list);
+    lw_add_text(remarks, NULL, text, err);
+}
+
+static int divisor(int a, int b)
+{
+    a = abs(a);
+    b = abs(b);
+    while (b != 0) {
+        int rest = a % b;
+        a = b;
+        b = rest;
+    }
+    return a;
+}
+
+/* The direction of a reflection: hkl without common divisor; in the cubic system without order and signs. */
+static void direction(const lw_profile *profile, bool cubic, int out[3])
+{
+    const lw_reflection *r = &profile->line->reflection;
+    out[0] = r->h;
+    out[1] = r->k;
+    out[2] = r->l;
+    int common = divisor(divisor(out[0], out[1]), out[2]);
+    for (int i = 0; i < 3; i++) {
+        if (common > 1)
+            out[i] /= common;
+        if (cubic)
+            out[i] = abs(out[i]);
+    }
+    for (int i = 0; cubic && i < 2; i++)
+        for (int j = 0; j < 2; j++)
+            if (out[j] < out[j + 1]) {
+                int keep = out[j];
+                out[j] = out[j + 1];
+                out[j + 1] = keep;
+            }
+}
+
+/* Directions of which two or more orders lie off the line to the same side by more than 3 u of their mean. */
+static void remark_directions(const lw_breadths *breadths, const lw_breadth_fit *fit, bool cubic,
+                              lw_node *remarks, lw_error *err)
+{
+    for (size_t i = 0; i < breadths->n; i++) {
+        int mine[3], other[3];
+        direction(breadths->profile[i], cubic, mine);
+        double sum = 0, weight = 0;
+        int orders = 0, above = 0;
+        bool first = true;
+        for (size_t j = 0; j < breadths->n; j++) {
+            direction(breadths->profile[j], cubic, other);
+            if (mine[0] != other[0] || mine[1] != other[1] || mine[2] != other[2])
+                continue;
+            first = first && j >= i;
+            double w = 1 / (fit->fit.u[j] * fit->fit.u[j]);
+            sum += w * fit->fit.residual[j];
+            weight += w;
+            orders++;
+            above += fit->fit.residual[j] > 0;
+        }
+        if (!first || orders < 2 || (above != 0 && above != orders) || fabs(sum) / sqrt(weight) <= 3)
+            continue;
+        char text[24];
+        say(remarks, err,
+            "the %d orders of direction %s lie %s the line by %.1f u of their mean: breadths depend on "
+            "direction, "
+            "so one size and one strain do not describe the powder",
+            orders, lw_hkl_text(mine[0], mine[1], mine[2], text, sizeof text), above > 0 ? "above" : "below",
+            fabs(sum) / sqrt(weight));
+    }
+}
+
+/* A line whose own uncertainty is so small that the others hardly count. */
+static void remark_weights(const lw_breadths *breadths, const lw_breadth_fit *fit, lw_node *remarks,
+                           lw_error *err)
+{
+    double all = 0, most = 0;
+    size_t at = 0;
+    for (size_t i = 0; i < breadths->n; i++) {
+        double w = 1 / (fit->fit.u[i] * fit->fit.u[i]);
+        all += w;
+        if (w > most) {
+            most = w;
+            at = i;
+        }
+    }
+    if (breadths->n < 3 || most < 0.75 * all)
+        return;
+    const lw_reflection *r = &breadths->profile[at]->line->reflection;
+    char text[24];
+    say(remarks, err, "line %s alone carries %.0f %% of the weight",
+        lw_hkl_text(r->h, r->k, r->l, text, sizeof text), 100 * most / all);
+}
+
+void lw_breadths_remark(const lw_breadths *breadths, const lw_breadth_fit *fit, lw_node *remarks,
+                        lw_error *err)
+{
+    const lw_generalised_fit *f = &fit->fit;
+    if (fit->p[0] < 0)
+        say(remarks, err,
+            "the share that would be size comes out negative (%.1f u below 0): size does not broaden these "
+            "lines "
+            "measurably, or the instrument's breadth is taken too large",
+            -fit->p[0] / sqrt(fit->covariance[0][0]));
+    else if (fit->size_volume.kind != LW_VALUE)
+        say(remarks, err, "size broadening is below twice its uncertainty: a lower limit is given");
+    if (fit->p[1] < 0)
+        say(remarks, err,
+            "the share that would be strain comes out negative (%.1f u below 0): breadths do not grow with "
+            "s; "
+            "planar faults, anisotropic shape or an instrument's breadth taken too large at high angles do "
+            "that",
+            -fit->p[1] / sqrt(fit->covariance[1][1]));
+    else if (fit->strain_apparent.kind != LW_VALUE)
+        say(remarks, err, "strain broadening is below twice its uncertainty: an upper limit is given");
+    if (f->degrees == 0)
+        say(remarks, err,
+            "as many parameters as independent breadths: the line passes through them and nothing "
+            "tests it");
+    else if (f->scatter > 1 && f->p < 0.01)
+        say(remarks, err,
+            "the breadths scatter about the line %.1f times as much as their uncertainties allow (chance "
+            "%.1g): "
+            "uncertainties are enlarged by that factor",
+            f->scatter, f->p);
+    if (f->rank < breadths->n)
+        say(remarks, err,
+            "the %zu breadths come from a common function of angle and carry %zu independent numbers",
+            breadths->n, f->rank);
+    if (breadths->n_left_out > 0)
+        say(remarks, err, "%zu line%s, known by a limit only, left out", breadths->n_left_out,
+            breadths->n_left_out == 1 ? "" : "s");
+    remark_directions(breadths, fit, breadths->cubic, remarks, err);
+    remark_weights(breadths, fit, remarks, err);
+}

@@ -1,0 +1,317 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Lattice parameters of the powder from the positions of its lines. */
+#include "sample/cell_parameters.h"
+#include "sample/generalised.h"
+#include "sample/method.h"
+#include "sample/positions.h"
+
+#include <math.h>
+#include <stddef.h>
+#include <stdio.h>
+#include <string.h>
+
+#define RADIAN (3.14159265358979323846 / 180)
+#define SHARED_MOST 0.98 /* multiple correlation above which a displacement can't be told from the cell */
+#define LINES_FOR_DISPLACEMENT 4
+
+typedef struct lattice_options {
+    int displacement;
+} lattice_options;
+
+enum { AUTO, YES, NO };
+static const char *const displacement_choices[] = {"auto", "yes", "no", NULL};
+
+static const lw_option options[] = {{.key = "displacement",
+                                     .kind = LW_OPTION_CHOICE,
+                                     .standard = "auto",
+                                     .choices = displacement_choices,
+                                     .offset = offsetof(lattice_options, displacement),
+                                     .help = "refine how far this specimen's surface lies from the axis; "
+                                             "auto: for flat specimens, where the lines "
+                                             "can tell it from the cell"},
+                                    LW_OPTIONS_END};
+
+static void defaults(void *target)
+{
+    *(lattice_options *)target = (lattice_options){.displacement = AUTO};
+}
+
+static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
+{
+    if (profiles->lines->material == NULL) {
+        snprintf(why, size, "the lines do not know their material, whose cell is to be refined");
+        return why;
+    }
+    lw_cell_free free = lw_cell_free_of(profiles->lines->material);
+    if (profiles->n >= free.n)
+        return NULL;
+    snprintf(why, size, "the cell has %zu free parameters and there are %zu lines", free.n, profiles->n);
+    return why;
+}
+
+/* Calculated positions: cell, then what the calibration and the specimen add. */
+typedef struct positions {
+    const lw_profiles *profiles;
+    lw_cell_free free;
+    lw_cell cell;
+    double wavelength;
+    const lw_aberration *displacement; /* refined, or NULL */
+} positions;
+
+static void model(void *user, const double *p, double *value, double *slopes, double *x_slope)
+{
+    positions *m = user;
+    (void)x_slope;
+    size_t n_free = m->free.n, columns = n_free + (m->displacement != NULL);
+    lw_cell_free_set(&m->free, p, &m->cell);
+    for (size_t i = 0; i < m->profiles->n; i++) {
+        const lw_reflection *r = &m->profiles->profile[i].line->reflection;
+        double s = lw_cell_s(&m->cell, r->h, r->k, r->l), d[6];
+        double sine = 0.5 * m->wavelength * s;
+        if (!(sine > 0 && sine < 1)) {
+            value[i] = NAN;
+            continue;
+        }
+        double theta = asin(sine) / RADIAN, two_theta = 2 * theta;
+        value[i] = two_theta + lw_position_shift(m->profiles, m->displacement, two_theta);
+        lw_cell_s_slopes(&m->cell, r->h, r->k, r->l, d);
+        double per_s = 1 / lw_position_s_slope(s, theta);
+        for (size_t j = 0; j < n_free; j++)
+            for (int k = 0; k < 6; k++)
+                if (m->free.moves[j][k])
+                    slopes[i * columns + j] += per_s * d[k];
+        if (m->displacement != NULL) {
+            double slope = m->displacement->slope(two_theta, m->profiles->calibration->aberrations.radius_mm);
+            value[i] += p[n_free] * slope;
+            slopes[i * columns + n_free] = slope;
+        }
+    }
+}
+
+typedef struct answer {
+    double p[LW_GENERALISED_MOST];
+    lw_generalised_fit fit;
+} answer;
+
+/* Fits the cell, with this specimen's displacement (not NULL) or without. */
+static lw_status fit_cell(positions *m, const lw_aberration *displacement, lw_arena *arena, answer *out,
+                          lw_error *err)
+{
+    const lw_profiles *profiles = m->profiles;
+    m->displacement = displacement;
+    double *y = lw_arena_take(arena, profiles->n, sizeof *y, err);
+    double *covariance = lw_position_covariance(profiles, displacement, arena, err);
+    if (y == NULL || covariance == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < profiles->n; i++)
+        y[i] = profiles->profile[i].line->two_theta.value;
+    m->cell = profiles->lines->material->cell;
+    memset(out, 0, sizeof *out);
+    lw_cell_free_read(&m->free, &m->cell, out->p);
+    lw_generalised problem = {.n = profiles->n,
+                              .m = m->free.n + (displacement != NULL),
+                              .y = y,
+                              .covariance = covariance,
+                              .model = model,
+                              .user = m};
+    size_t weakest = 0;
+    lw_error each = LW_ERROR_NONE;
+    lw_status status = lw_generalised_solve(&problem, arena, out->p, &out->fit, &weakest, &each);
+    if (status == LW_NOT_SUPPORTED && profiles->n >= problem.m && out->fit.iterations == 0 && weakest > 0)
+        return lw_fail(err, status, "measure lines of other directions",
+                       "the lines measured do not determine %s of the cell",
+                       weakest < m->free.n ? m->free.name[weakest] : "displacement beside the parameters");
+    if (status != LW_OK)
+        *err = each;
+    return status;
+}
+
+/* Decides whether the displacement is refined, and fits. *why says what was done, for the remarks. */
+static lw_status decide(positions *m, int wanted, lw_arena *arena, answer *out, const char **why,
+                        lw_error *err)
+{
+    const lw_profiles *profiles = m->profiles;
+    const lw_calibration *calibration = profiles->calibration;
+    const lw_aberration *displacement = lw_aberration_named("displacement");
+    *why = NULL;
+    if (wanted == YES) {
+        if (calibration == NULL || displacement == NULL)
+            return lw_fail(err, LW_NOT_SUPPORTED, "give a calibration",
+                           "the specimen's displacement needs the goniometer radius of a calibration");
+        return fit_cell(m, displacement, arena, out, err);
+    }
+    bool flat =
+        calibration != NULL && displacement != NULL && strcmp(calibration->geometry, "reflection") == 0;
+    if (wanted == AUTO && flat) {
+        size_t needed = m->free.n + 2 > LINES_FOR_DISPLACEMENT ? m->free.n + 2 : LINES_FOR_DISPLACEMENT;
+        lw_error each = LW_ERROR_NONE;
+        if (profiles->n < needed) {
+            *why = "too few lines to tell this specimen's displacement from the cell: the calibration's was "
+                   "used, "
+                   "and what the specimen's differs from it is not in the uncertainty";
+        } else {
+            lw_status status = fit_cell(m, displacement, arena, out, &each);
+            if (status == LW_OUT_OF_MEMORY) {
+                *err = each;
+                return status;
+            }
+            if (status == LW_OK && out->fit.shared[m->free.n] < SHARED_MOST) {
+                *why = "this specimen's own displacement was refined with the cell, since a flat specimen "
+                       "never lies "
+                       "quite where the standard lay";
+                return LW_OK;
+            }
+            *why =
+                "the range of angles is too short to tell this specimen's displacement from the cell: the "
+                "calibration's was used, and what the specimen's differs from it is not in the uncertainty";
+        }
+    } else if (wanted == NO && flat) {
+        *why = "this specimen was taken to lie where the standard lay; what it differs is not in the "
+               "uncertainty";
+    }
+    return fit_cell(m, NULL, arena, out, err);
+}
+
+/* Volume with its uncertainty; the slopes by central differences over a millionth. */
+static lw_quantity volume_of(const positions *m, const answer *a)
+{
+    double slope[LW_CELL_FREE_MOST], variance = 0;
+    lw_cell cell = m->cell;
+    for (size_t i = 0; i < m->free.n; i++) {
+        double p[LW_GENERALISED_MOST], step = 1e-6 * a->p[i];
+        memcpy(p, a->p, sizeof p);
+        p[i] = a->p[i] + step;
+        lw_cell_free_set(&m->free, p, &cell);
+        double high = lw_cell_volume(&cell);
+        p[i] = a->p[i] - step;
+        lw_cell_free_set(&m->free, p, &cell);
+        slope[i] = (high - lw_cell_volume(&cell)) / (2 * step);
+    }
+    lw_cell_free_set(&m->free, a->p, &cell);
+    for (size_t i = 0; i < m->free.n; i++)
+        for (size_t j = 0; j < m->free.n; j++)
+            variance += slope[i] * a->fit.covariance[i][j] * slope[j];
+    return lw_quantity_of(lw_cell_volume(&cell), sqrt(fmax(0, variance)) * a->fit.scatter, "nm^3");
+}
+
+static void tell_parameters(const positions *m, const answer *a, lw_node *result, lw_error *err)
+{
+    const lw_cell *stated = &m->profiles->lines->material->cell;
+    double start[LW_CELL_FREE_MOST];
+    lw_cell_free_read(&m->free, stated, start);
+    for (size_t i = 0; i < m->free.n; i++) {
+        bool edge = m->free.name[i][1] == '\0';
+        lw_add_quantity(
+            result, m->free.name[i],
+            lw_quantity_of(a->p[i], sqrt(a->fit.covariance[i][i]) * a->fit.scatter, edge ? "nm" : "deg"),
+            edge ? "Edge of the unit cell at the temperature of the measurement, from the lines' positions."
+                 : "Angle of the unit cell at the temperature of the measurement, from the lines' positions.",
+            err);
+    }
+    lw_add_quantity(result, "volume", volume_of(m, a), "Volume of the unit cell.", err);
+    lw_node *change = lw_add_group(result, "relative_change", err);
+    const double stated_u[3] = {stated->u_a, stated->u_b, stated->u_c};
+    for (size_t i = 0; i < m->free.n; i++) {
+        size_t which = 0;
+        while (which < 3 && !m->free.moves[i][which])
+            which++;
+        if (which == 3)
+            continue;
+        double u = hypot(sqrt(a->fit.covariance[i][i]) * a->fit.scatter, stated_u[which]);
+        lw_add_quantity(change, m->free.name[i], lw_quantity_of(a->p[i] / start[i] - 1, u / start[i], ""),
+                        "Relative difference from the edge that the material states.", err);
+    }
+}
+
+static void tell_lines(const lw_profiles *profiles, const answer *a, lw_node *result, lw_error *err)
+{
+    lw_node *list = lw_add_list(result, "lines", err);
+    for (size_t i = 0; i < profiles->n; i++) {
+        const lw_line *line = profiles->profile[i].line;
+        const lw_reflection *r = &line->reflection;
+        char text[24];
+        lw_node *node = lw_add_group(list, NULL, err);
+        lw_add_text(node, "hkl", lw_hkl_text(r->h, r->k, r->l, text, sizeof text), err);
+        lw_add_quantity(node, "two_theta", line->two_theta, "Position as observed, aberrations included.",
+                        err);
+        lw_add_quantity(node, "residual", lw_quantity_of(a->fit.residual[i], a->fit.u[i], "deg"),
+                        "Observed position minus that of the refined cell with all aberrations.", err);
+    }
+}
+
+static void tell(const positions *m, const answer *a, const char *why, lw_node *result, lw_error *err)
+{
+    const lw_profiles *profiles = m->profiles;
+    const lw_generalised_fit *fit = &a->fit;
+    tell_parameters(m, a, result, err);
+    lw_add_flag(result, "displacement_refined", m->displacement != NULL, err);
+    if (m->displacement != NULL) {
+        size_t at = m->free.n;
+        lw_add_quantity(result, "displacement",
+                        lw_quantity_of(a->p[at], sqrt(fit->covariance[at][at]) * fit->scatter, "mm"),
+                        m->displacement->definition, err);
+        lw_add_number(result, "displacement_correlation", fit->shared[at], err);
+    }
+    lw_add_quantity(result, "wavelength", lw_quantity_of(m->wavelength, 0, "nm"),
+                    "Wavelength that the positions refer to; its own uncertainty is not in the cell's.", err);
+    lw_add_number(result, "chi2", fit->chi2, err);
+    lw_add_number(result, "degrees_of_freedom", (double)fit->degrees, err);
+    if (fit->degrees > 0) {
+        lw_add_number(result, "chi2_per_degree", fit->chi2 / (double)fit->degrees, err);
+        lw_add_number(result, "chance", fit->p, err);
+    }
+    lw_add_number(result, "scatter_factor", fit->scatter, err);
+    tell_lines(profiles, a, result, err);
+    lw_node *remarks = lw_add_list(result, "remarks", err);
+    if (why != NULL)
+        lw_add_text(remarks, NULL, why, err);
+    if (fit->degrees > 0 && fit->scatter > 1 && fit->p < 0.01) {
+        char text[240];
+        snprintf(
+            text, sizeof text,
+            "the positions scatter about the cell %.1f times as much as their uncertainties allow (chance "
+            "%.1g): "
+            "uncertainties are enlarged by that factor; stacking faults and stress shift lines by direction",
+            fit->scatter, fit->p);
+        lw_add_text(remarks, NULL, text, err);
+    }
+    if (profiles->calibration == NULL)
+        lw_add_text(remarks, NULL, "no calibration: the positions were taken as they stand", err);
+}
+
+static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
+                     lw_error *err)
+{
+    const lattice_options *o = given;
+    const lw_radiation *radiation =
+        profiles->calibration != NULL ? &profiles->calibration->radiation : &profiles->lines->radiation;
+    positions m = {.profiles = profiles,
+                   .free = lw_cell_free_of(profiles->lines->material),
+                   .wavelength = lw_radiation_wavelength(radiation)};
+    lw_arena arena;
+    lw_arena_begin(&arena, engine);
+    answer a;
+    const char *why;
+    lw_status status = decide(&m, o->displacement, &arena, &a, &why, err);
+    if (status == LW_OK) {
+        tell(&m, &a, why, result, err);
+        status = err->status;
+    }
+    lw_arena_end(&arena);
+    return status;
+}
+
+const lw_method lw_method_lattice = {
+    .name = "lattice",
+    .title = "Lattice parameters",
+    .purpose = "cell of the powder from the positions of all its lines",
+    .assumes = "The lines stand where one cell puts them: no stacking faults, no stress. The calibration was "
+               "measured on the same mount, but for the height of the specimen.",
+    .source = "least squares on 2theta with the full covariance of positions and aberrations: Wilson (1963) "
+              "Mathematical Theory of X-ray Powder Diffractometry; Cohen (1935) Rev. Sci. Instrum. 6, 68",
+    .options = options,
+    .options_size = sizeof(lattice_options),
+    .defaults = defaults,
+    .lacks = lacks,
+    .run = run,
+};
