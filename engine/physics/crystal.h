@@ -26,7 +26,7 @@ typedef struct lw_material {
     char formula[48];
     lw_cell cell;
     int space_group;            /* number, 1 to 230 */
-    char space_group_symbol[24];/* international short symbol, settings after a colon (R-3m:H) */
+    char space_group_symbol[24];/* international short symbol, setting after a colon (R-3m:H) */
     int hall_number;            /* 1 to 530, the setting that is meant */
     lw_crystal_system system;
     char lattice;               /* P, A, B, C, I, F or R (obverse, hexagonal axes) */
@@ -71,10 +71,10 @@ lw_status lw_space_group_setting(int number, const char *setting, int *hall_numb
 lw_status lw_space_group_find(const char *symbol, int *number, int *hall_number, lw_error *err);
 
 /* Fills system, lattice, symbol and hall number from the space group number (standard setting) or, when
- * hall_number is already set, from that; refuses a cell that the system does not allow. Edges and angles left 0 are filled where
- * the symmetry fixes them (b and c of a cubic cell, right angles, 120 degrees of a hexagonal one), and
- * refused where it doesn't; u_b and u_c follow u_a likewise. A cell is allowed if every rotation of the
- * group leaves its metric unchanged within 5e-6. */
+ * hall_number is already set, from that; refuses a cell that the system does not allow. Edges and angles
+ * left 0 are filled where the symmetry fixes them (b and c of a cubic cell, right angles, 120 degrees of a
+ * hexagonal one), and refused where it doesn't; u_b and u_c follow u_a likewise. A cell is allowed if every
+ * rotation of the group leaves its metric unchanged within 5e-6. */
 lw_status lw_material_settle(lw_material *material, lw_error *err);
 
 /* 1/d of hkl in nm^-1 (s = 2 sin(theta)/lambda), for any cell. */

@@ -2,7 +2,6 @@
 #include "physics/elasticity.h"
 #include "physics/space_group.h"
 
-#include <ctype.h>
 #include <math.h>
 #include <string.h>
 
@@ -22,7 +21,8 @@ static const rule TETRAGONAL = {"11 12 13 33 44 66", "22=11 23=13 55=44"};
 static const rule TETRAGONAL_LOW = {"11 12 13 16 33 44 66", "22=11 23=13 55=44 26=-16"};
 static const rule TRIGONAL = {"11 12 13 14 33 44", "22=11 23=13 55=44 66=h 24=-14 56=14"};
 static const rule TRIGONAL_OTHER = {"11 12 13 15 33 44", "22=11 23=13 55=44 66=h 25=-15 46=-15"};
-static const rule TRIGONAL_LOW = {"11 12 13 14 15 33 44", "22=11 23=13 55=44 66=h 24=-14 56=14 25=-15 46=-15"};
+static const rule TRIGONAL_LOW = {"11 12 13 14 15 33 44",
+                                  "22=11 23=13 55=44 66=h 24=-14 56=14 25=-15 46=-15"};
 static const rule HEXAGONAL = {"11 12 13 33 44", "22=11 23=13 55=44 66=h"};
 static const rule CUBIC = {"11 12 44", "22=11 33=11 13=12 23=12 55=44 66=44"};
 
@@ -31,15 +31,16 @@ static const rule *rule_of(const lw_material *material, char unique_axis)
     int number = material->space_group;
     switch (material->system) {
     case LW_TRICLINIC: return &TRICLINIC;
-    case LW_MONOCLINIC: return unique_axis == 'a' ? &MONOCLINIC_A : unique_axis == 'c' ? &MONOCLINIC_C : &MONOCLINIC_B;
+    case LW_MONOCLINIC:
+        return unique_axis == 'a' ? &MONOCLINIC_A : unique_axis == 'c' ? &MONOCLINIC_C : &MONOCLINIC_B;
     case LW_ORTHORHOMBIC: return &ORTHORHOMBIC;
     case LW_TETRAGONAL: return number <= 88 ? &TETRAGONAL_LOW : &TETRAGONAL;
     case LW_TRIGONAL:
         if (number <= 148)
             return &TRIGONAL_LOW;
         /* Groups whose twofold axes or mirror normals lie along [210] instead of a. */
-        return number == 149 || number == 151 || number == 153 || number == 157 || number == 159 || number == 162 ||
-                       number == 163
+        return number == 149 || number == 151 || number == 153 || number == 157 || number == 159 ||
+                       number == 162 || number == 163
                    ? &TRIGONAL_OTHER
                    : &TRIGONAL;
     case LW_HEXAGONAL: return &HEXAGONAL;
@@ -53,7 +54,8 @@ lw_status lw_stiffness_set(lw_material *material, const char *name, double gpa, 
     bool good = (name[0] == 'c' || name[0] == 'C') && strlen(name) == 3 && name[1] >= '1' && name[1] <= '6' &&
                 name[2] >= '1' && name[2] <= '6';
     if (!good)
-        return lw_fail(err, LW_BAD_ARGUMENT, "use c11, c12, c44 ... c66", "\"%.20s\" is no elastic constant", name);
+        return lw_fail(err, LW_BAD_ARGUMENT, "use c11, c12, c44 ... c66", "\"%.20s\" is no elastic constant",
+                       name);
     if (!isfinite(gpa) || fabs(gpa) > 1e4)
         return lw_fail(err, LW_BAD_ARGUMENT, "give elastic constants in GPa", "%s of %s is %g GPa", name,
                        material->name, gpa);
@@ -84,7 +86,8 @@ static bool factor(const double c[6][6], double lower[6][6])
 static lw_status not_stable(const lw_material *material, lw_error *err)
 {
     return lw_fail(err, LW_BAD_ARGUMENT, "check the elastic constants and their units (GPa)",
-                   "the stiffness of %s is not positive definite: such a crystal could not exist", material->name);
+                   "the stiffness of %s is not positive definite: such a crystal could not exist",
+                   material->name);
 }
 
 lw_status lw_stiffness_complete(lw_material *material, lw_error *err)
@@ -93,12 +96,12 @@ lw_status lw_stiffness_complete(lw_material *material, lw_error *err)
     char symbol[24], unique_axis;
     bool rhombohedral;
     material->has_stiffness = false;
-    lw_status status = lw_space_group_describe(material->hall_number, &number, symbol, sizeof symbol, &unique_axis,
-                                               &rhombohedral, err);
+    lw_status status = lw_space_group_describe(material->hall_number, &number, symbol, sizeof symbol,
+                                               &unique_axis, &rhombohedral, err);
     if (status != LW_OK)
         return status;
     const rule *rule = rule_of(material, unique_axis);
-    double (*c)[6] = material->stiffness_gpa;
+    double(*c)[6] = material->stiffness_gpa;
     bool known[6][6] = {{false}};
     for (const char *p = rule->needs; *p != '\0'; p += p[2] == ' ' ? 3 : 2) {
         int i = p[0] - '1', j = p[1] - '1';
@@ -107,7 +110,8 @@ lw_status lw_stiffness_complete(lw_material *material, lw_error *err)
         bool may_vanish = j >= 3 && i != j;
         if (c[i][j] == 0 && !may_vanish)
             return lw_fail(err, LW_BAD_ARGUMENT, "give the full set for the crystal system, in GPa",
-                           "the stiffness of %s (space group %s) lacks c%d%d", material->name, symbol, i + 1, j + 1);
+                           "the stiffness of %s (space group %s) lacks c%d%d", material->name, symbol, i + 1,
+                           j + 1);
     }
     for (const char *p = rule->follows; *p != '\0';) {
         int i = p[0] - '1', j = p[1] - '1';
@@ -126,8 +130,8 @@ lw_status lw_stiffness_complete(lw_material *material, lw_error *err)
         known[i][j] = true;
         if (c[i][j] != 0 && fabs(c[i][j] - value) > 0.01 * fabs(value) + 0.05)
             return lw_fail(err, LW_BAD_ARGUMENT, "leave out what the symmetry fixes",
-                           "%s: c%d%d = %g GPa, but its symmetry (%s) makes it %g GPa", material->name, i + 1, j + 1,
-                           c[i][j], symbol, value);
+                           "%s: c%d%d = %g GPa, but its symmetry (%s) makes it %g GPa", material->name, i + 1,
+                           j + 1, c[i][j], symbol, value);
         c[i][j] = c[j][i] = value;
     }
     for (int i = 0; i < 6; i++)
@@ -183,8 +187,8 @@ static lw_status plane_normal(const lw_material *material, int h, int k, int l, 
     int number;
     char symbol[24], unique_axis;
     bool rhombohedral;
-    lw_status status = lw_space_group_describe(material->hall_number, &number, symbol, sizeof symbol, &unique_axis,
-                                               &rhombohedral, err);
+    lw_status status = lw_space_group_describe(material->hall_number, &number, symbol, sizeof symbol,
+                                               &unique_axis, &rhombohedral, err);
     if (status != LW_OK)
         return status;
     for (int i = 0; i < 3; i++) {
@@ -235,5 +239,6 @@ lw_status lw_young_modulus(const lw_material *material, int h, int k, int l, dou
 
 double lw_zener_ratio(const lw_material *material)
 {
-    return 2 * material->stiffness_gpa[3][3] / (material->stiffness_gpa[0][0] - material->stiffness_gpa[0][1]);
+    return 2 * material->stiffness_gpa[3][3] /
+           (material->stiffness_gpa[0][0] - material->stiffness_gpa[0][1]);
 }

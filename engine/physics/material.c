@@ -13,7 +13,7 @@ static const char *const DEMAND[] = {
     "a monoclinic cell needs a, b, c and the angle at its unique axis; its other angles are 90",
     "an orthorhombic cell needs a, b and c; its angles are 90",
     "a tetragonal cell needs a = b and c; its angles are 90",
-    "a trigonal cell needs a = b, c, gamma = 120; on rhombohedral axes (setting R) a = b = c, alpha = beta = gamma",
+    "a trigonal cell needs a = b, c, gamma = 120; in setting R a = b = c, alpha = beta = gamma",
     "a hexagonal cell needs a = b, c and gamma = 120",
     "a cubic cell needs a = b = c; its angles are 90"};
 
@@ -26,7 +26,8 @@ static void fill(double *value, double with)
 /* Fills zeros where the system fixes the value. */
 static void fill_cell(lw_cell *cell, lw_crystal_system system, char unique_axis, bool rhombohedral)
 {
-    bool a_is_b = system == LW_TETRAGONAL || system == LW_TRIGONAL || system == LW_HEXAGONAL || system == LW_CUBIC;
+    bool a_is_b =
+        system == LW_TETRAGONAL || system == LW_TRIGONAL || system == LW_HEXAGONAL || system == LW_CUBIC;
     bool a_is_c = system == LW_CUBIC || rhombohedral;
     if (a_is_b) {
         fill(&cell->b, cell->a);
@@ -67,15 +68,16 @@ static lw_status check_cell(const lw_material *material, const lw_operations *op
             return lw_fail(err, LW_BAD_ARGUMENT, "edges are in nm; for others say unit = \"angstrom\"",
                            "the cell of %s has %s = %g nm", material->name, edge_name[i], edge[i]);
         if (!(angle[i] > 5 && angle[i] < 175))
-            return lw_fail(err, LW_BAD_ARGUMENT, "angles are in degrees", "the cell of %s has %s = %g degrees",
-                           material->name, angle_name[i], angle[i]);
+            return lw_fail(err, LW_BAD_ARGUMENT, "angles are in degrees",
+                           "the cell of %s has %s = %g degrees", material->name, angle_name[i], angle[i]);
         if (!(spread[i] >= 0) || !isfinite(spread[i]))
             return lw_fail(err, LW_BAD_ARGUMENT, "give 0 or leave it out where none is stated",
                            "the cell of %s has an uncertainty of %s of %g nm", material->name, edge_name[i],
                            spread[i]);
     }
     if (!(lw_cell_volume(cell) > 1e-6 * edge[0] * edge[1] * edge[2]))
-        return lw_fail(err, LW_BAD_ARGUMENT, "check the angles", "the cell of %s encloses no volume", material->name);
+        return lw_fail(err, LW_BAD_ARGUMENT, "check the angles", "the cell of %s encloses no volume",
+                       material->name);
 
     double g[3][3];
     for (int i = 0; i < 3; i++)
@@ -89,10 +91,11 @@ static lw_status check_cell(const lw_material *material, const lw_operations *op
                     for (int q = 0; q < 3; q++)
                         turned += operations->rotation[op][p][i] * g[p][q] * operations->rotation[op][q][j];
                 if (fabs(turned - g[i][j]) > 5e-6 * edge[i] * edge[j])
-                    return lw_fail(err, LW_BAD_ARGUMENT, demand,
-                                   "the cell of %s (%g, %g, %g nm; %g, %g, %g degrees) does not fit space group %s",
-                                   material->name, edge[0], edge[1], edge[2], angle[0], angle[1], angle[2],
-                                   material->space_group_symbol);
+                    return lw_fail(
+                        err, LW_BAD_ARGUMENT, demand,
+                        "the cell of %s (%g, %g, %g nm; %g, %g, %g degrees) does not fit space group %s",
+                        material->name, edge[0], edge[1], edge[2], angle[0], angle[1], angle[2],
+                        material->space_group_symbol);
             }
     return LW_OK;
 }
@@ -141,8 +144,9 @@ lw_status lw_material_settle(lw_material *material, lw_error *err)
     if (status != LW_OK)
         return status;
     if (material->space_group != 0 && material->space_group != number)
-        return lw_fail(err, LW_BAD_ARGUMENT, "give one of the two", "%s: Hall number %d belongs to space group %d, not %d",
-                       material->name, material->hall_number, number, material->space_group);
+        return lw_fail(err, LW_BAD_ARGUMENT, "give one of the two",
+                       "%s: Hall number %d belongs to space group %d, not %d", material->name,
+                       material->hall_number, number, material->space_group);
     lw_operations operations;
     status = lw_space_group_operations(material->hall_number, &operations, err);
     if (status != LW_OK)

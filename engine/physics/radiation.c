@@ -71,7 +71,8 @@ lw_status lw_radiation_settle(lw_radiation *radiation, lw_error *err)
         if (status != LW_OK)
             return status;
         if (!(line->width_nm >= 0 && line->width_nm < 0.1 * line->wavelength_nm))
-            return lw_fail(err, LW_BAD_ARGUMENT, "give the full width at half maximum in nm, 0 for an ideal line",
+            return lw_fail(err, LW_BAD_ARGUMENT,
+                           "give the full width at half maximum in nm, 0 for an ideal line",
                            "component %zu of the radiation has a width of %g nm", i + 1, line->width_nm);
         if (!(line->weight > 0) || !isfinite(line->weight))
             return lw_fail(err, LW_BAD_ARGUMENT, "leave out a component without intensity",

@@ -126,9 +126,10 @@ static lw_status push(found *list, candidate item, lw_error *err)
 
 static lw_status too_many(const lw_material *material, double low_deg, double high_deg, lw_error *err)
 {
-    return lw_fail(err, LW_BAD_ARGUMENT, "narrow the range of angles, or check cell and wavelength (both in nm)",
-                   "%s has more than %d reflections between %g and %g degrees", material->name, REFLECTIONS_MOST,
-                   low_deg, high_deg);
+    return lw_fail(err, LW_BAD_ARGUMENT,
+                   "narrow the range of angles, or check cell and wavelength (both in nm)",
+                   "%s has more than %d reflections between %g and %g degrees", material->name,
+                   REFLECTIONS_MOST, low_deg, high_deg);
 }
 
 static lw_status search(const lw_material *material, double s_low, double s_high, found *list, lw_error *err)
@@ -151,7 +152,8 @@ static lw_status search(const lw_material *material, double s_low, double s_high
         double s = lw_cell_s(cell, probe[i][0], probe[i][1], probe[i][2]);
         form[i] = s * s;
     }
-    const double yz = form[3] - form[1] - form[2], xz = form[4] - form[0] - form[2], xy = form[5] - form[0] - form[1];
+    const double yz = form[3] - form[1] - form[2], xz = form[4] - form[0] - form[2],
+                 xy = form[5] - form[0] - form[1];
     const double least = s_low * s_low * (1 - 1e-12), most = s_high * s_high * (1 + 1e-12);
     long looked = 0;
     for (int h = -top[0]; h <= top[0]; h++)
@@ -159,8 +161,8 @@ static lw_status search(const lw_material *material, double s_low, double s_high
             for (int l = -top[2]; l <= top[2]; l++) {
                 if (++looked % POLL_EVERY == 0 && (status = lw_engine_poll(list->engine, err)) != LW_OK)
                     return status;
-                double square = form[0] * h * h + form[1] * k * k + form[2] * l * l + yz * k * l + xz * h * l +
-                                xy * h * k;
+                double square = form[0] * h * h + form[1] * k * k + form[2] * l * l + yz * k * l +
+                                xz * h * l + xy * h * k;
                 if (square < least || square > most)
                     continue;
                 const int index[3] = {h, k, l};
@@ -192,8 +194,12 @@ static size_t join(found *list, lw_reflection *line, double wavelength_nm)
         }
         if (line != NULL) {
             double sine = fmin(0.5 * wavelength_nm * best->s, 1.0);
-            line[n] = (lw_reflection){.h = best->h, .k = best->k, .l = best->l, .d_nm = 1 / best->s,
-                                      .two_theta_deg = 2 * asin(sine) * RADIAN, .multiplicity = sum,
+            line[n] = (lw_reflection){.h = best->h,
+                                      .k = best->k,
+                                      .l = best->l,
+                                      .d_nm = 1 / best->s,
+                                      .two_theta_deg = 2 * asin(sine) * RADIAN,
+                                      .multiplicity = sum,
                                       .families = families};
         }
         n++;
@@ -213,7 +219,8 @@ lw_status lw_reflections(const lw_material *material, double wavelength_nm, doub
         return lw_fail(err, LW_BAD_ARGUMENT, "give 0 < low < high < 180 degrees 2theta",
                        "there are no reflections between %g and %g degrees", low_deg, high_deg);
     if (material->hall_number < 1 || !(lw_cell_volume(&material->cell) > 0))
-        return lw_fail(err, LW_BAD_ARGUMENT, "settle the material first", "%s has no settled cell", material->name);
+        return lw_fail(err, LW_BAD_ARGUMENT, "settle the material first", "%s has no settled cell",
+                       material->name);
     double s_low = 2 * sin(0.5 * low_deg / RADIAN) / wavelength_nm;
     double s_high = 2 * sin(0.5 * high_deg / RADIAN) / wavelength_nm;
     const lw_cell *cell = &material->cell;

@@ -15,9 +15,9 @@ enum { CUTS_MOST = 20 };
 /* A body of unit volume with its direction: what A(L) needs, and where its pieces join. */
 typedef struct body {
     lw_shape shape;
-    double u[4];            /* |direction cosines| (cube), |cosines to the four {111} normals| (others) */
-    double extent;          /* edge, diameter or distance between opposite faces at unit volume */
-    double cut[CUTS_MOST];  /* ends of the pieces, ascending, the last one is the longest column */
+    double u[4];           /* |direction cosines| (cube), |cosines to the four {111} normals| (others) */
+    double extent;         /* edge, diameter or distance between opposite faces at unit volume */
+    double cut[CUTS_MOST]; /* ends of the pieces, ascending, the last one is the longest column */
     int cuts;
 } body;
 
@@ -169,7 +169,8 @@ static double transform(const body *b, double s)
     return 2 * sum;
 }
 
-lw_status lw_scherrer_constant(lw_shape shape, bool integral_breadth, int h, int k, int l, double *K, lw_error *err)
+lw_status lw_scherrer_constant(lw_shape shape, bool integral_breadth, int h, int k, int l, double *K,
+                               lw_error *err)
 {
     if (shape == LW_SHAPE_COLUMN) {
         if (!integral_breadth)
@@ -190,8 +191,8 @@ lw_status lw_scherrer_constant(lw_shape shape, bool integral_breadth, int h, int
     /* FWHM/integral breadth of any of these lines lies between 0.6 and 1. */
     double low = 0.2 / top, high = 0.7 / top;
     if (!(transform(&b, low) > 0.5 * top && transform(&b, high) < 0.5 * top))
-        return lw_fail(err, LW_NO_CONVERGENCE, NULL, "no half-height found for the line %d %d %d of a %s", h, k, l,
-                       lw_shape_names[shape]);
+        return lw_fail(err, LW_NO_CONVERGENCE, NULL, "no half-height found for the line %d %d %d of a %s", h,
+                       k, l, lw_shape_names[shape]);
     for (int i = 0; i < 60; i++) {
         double middle = 0.5 * (low + high);
         *(transform(&b, middle) > 0.5 * top ? &low : &high) = middle;
@@ -200,8 +201,8 @@ lw_status lw_scherrer_constant(lw_shape shape, bool integral_breadth, int h, int
     return LW_OK;
 }
 
-lw_status lw_shape_columns(lw_shape shape, int h, int k, int l, double *volume_weighted, double *area_weighted,
-                           lw_error *err)
+lw_status lw_shape_columns(lw_shape shape, int h, int k, int l, double *volume_weighted,
+                           double *area_weighted, lw_error *err)
 {
     body b;
     lw_status status = lay(shape, h, k, l, &b, err);

@@ -9,7 +9,13 @@
 
 /* Shape of the crystallites, the same for all, one size. Faces: cube {100}, tetrahedron and octahedron
  * {111} of a cubic lattice. COLUMN is no body: the size is the volume-weighted mean column length. */
-typedef enum lw_shape { LW_SHAPE_COLUMN, LW_SHAPE_SPHERE, LW_SHAPE_CUBE, LW_SHAPE_TETRAHEDRON, LW_SHAPE_OCTAHEDRON } lw_shape;
+typedef enum lw_shape {
+    LW_SHAPE_COLUMN,
+    LW_SHAPE_SPHERE,
+    LW_SHAPE_CUBE,
+    LW_SHAPE_TETRAHEDRON,
+    LW_SHAPE_OCTAHEDRON
+} lw_shape;
 
 /* The names of the shapes, in the order of the enum, ended by NULL (for option tables). */
 extern const char *const lw_shape_names[];
@@ -28,8 +34,8 @@ lw_status lw_scherrer_constant(lw_shape shape, bool integral_breadth, int h, int
 
 /* Mean column lengths along hkl of a crystallite whose volume is 1: volume-weighted (1/K of the integral
  * breadth) and area-weighted. Multiply by the size. COLUMN gives LW_NOT_SUPPORTED. */
-lw_status lw_shape_columns(lw_shape shape, int h, int k, int l, double *volume_weighted, double *area_weighted,
-                           lw_error *err);
+lw_status lw_shape_columns(lw_shape shape, int h, int k, int l, double *volume_weighted,
+                           double *area_weighted, lw_error *err);
 
 /* Share of the crystallite (volume 1) that lies in a copy of it shifted by `shift` along hkl: the size
  * Fourier coefficient A(L) at L = shift x size. 1 at 0, 0 beyond the longest column. NaN for COLUMN or

@@ -79,7 +79,8 @@ static int rank(const SpglibSpacegroupType *type)
 lw_status lw_space_group_setting(int number, const char *setting, int *hall_number, lw_error *err)
 {
     if (number < 1 || number > 230)
-        return lw_fail(err, LW_BAD_ARGUMENT, "space groups run from 1 to 230", "there is no space group %d", number);
+        return lw_fail(err, LW_BAD_ARGUMENT, "space groups run from 1 to 230", "there is no space group %d",
+                       number);
     bool named = setting != NULL && setting[0] != '\0';
     int best = 0, best_rank = 0;
     char known[160] = "";
@@ -102,8 +103,8 @@ lw_status lw_space_group_setting(int number, const char *setting, int *hall_numb
     }
     if (named) {
         char remedy[200];
-        snprintf(remedy, sizeof remedy, known[0] != '\0' ? "it has: %s" : "leave the setting out; it has only one",
-                 known);
+        snprintf(remedy, sizeof remedy,
+                 known[0] != '\0' ? "it has: %s" : "leave the setting out; it has only one", known);
         return lw_fail(err, LW_BAD_ARGUMENT, remedy, "space group %d has no setting \"%s\"", number, setting);
     }
     *hall_number = best;
@@ -135,7 +136,8 @@ lw_status lw_space_group_find(const char *symbol, int *number, int *hall_number,
         }
     }
     if (found == 0)
-        return lw_fail(err, LW_BAD_ARGUMENT, "use a short symbol such as \"Fm-3m\" or \"P63/mmc\", or the number",
+        return lw_fail(err, LW_BAD_ARGUMENT,
+                       "use a short symbol such as \"Fm-3m\" or \"P63/mmc\", or the number",
                        "there is no space group \"%.40s\"", symbol);
     *number = found;
     *hall_number = found_hall;
