@@ -1,0 +1,274 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "instrument/calibration.h"
+
+#include "instrument/calibration_record.h"
+#include "numeric/least_squares.h"
+#include "numeric/statistics.h"
+
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+static const double degree = M_PI / 180;
+static const char *const geometry_names[] = {"auto", "reflection", "capillary", NULL};
+
+#define AT(field) offsetof(lw_calibrate_options, field)
+const lw_option lw_calibrate_option_table[] = {
+    {"goniometer_radius", LW_OPTION_NUMBER, "mm", "from the scan's header, else 200", 0, 2000, NULL,
+     AT(goniometer_radius_mm), "distance from axis to receiving slit, for the displacement in mm"},
+    {"geometry", LW_OPTION_CHOICE, "", "auto", 0, 0, geometry_names, AT(geometry),
+     "reflection: flat specimen; capillary: transmission; auto: capillary for a plain wavelength"},
+    {"aberrations", LW_OPTION_LIST, "", "by geometry", 0, 0, NULL, AT(aberrations),
+     "aberrations of position to fit: zero_shift, displacement, transparency, wavelength"},
+    LW_OPTIONS_END};
+
+lw_calibrate_options lw_calibrate_defaults(void)
+{
+    return (lw_calibrate_options){.goniometer_radius_mm = 0};
+}
+
+/* "goniometer radius 217.5 mm" in the comments at the top of a scan; 0 if it is not said. */
+static double radius_in_header(const char *header)
+{
+    const char *at = header ? strstr(header, "goniometer radius") : NULL;
+    if (at == NULL)
+        return 0;
+    double radius = strtod(at + strlen("goniometer radius"), NULL);
+    return radius > 10 && radius < 2000 ? radius : 0;
+}
+
+static lw_status choose_aberrations(const lw_calibrate_options *options, bool capillary, lw_aberrations *set,
+                                    lw_error *err)
+{
+    static const char *const reflection[] = {"zero_shift", "displacement", "transparency", NULL};
+    static const char *const transmission[] = {"zero_shift", "wavelength", NULL};
+    const char *const *names = capillary ? transmission : reflection;
+    set->n = 0;
+    for (size_t i = 0; options->aberrations.n > 0 ? i < options->aberrations.n : names[i] != NULL; i++) {
+        const char *name = options->aberrations.n > 0 ? options->aberrations.item[i] : names[i];
+        const lw_aberration *kind = lw_aberration_named(name);
+        if (kind == NULL)
+            return lw_fail(err, LW_BAD_ARGUMENT, "choose from: zero_shift, displacement, transparency, wavelength",
+                           "calibrate: unknown aberration '%s'", name);
+        if (set->n == LW_ABERRATION_MOST)
+            return lw_fail(err, LW_BAD_ARGUMENT, NULL, "calibrate: more than %d aberrations", LW_ABERRATION_MOST);
+        set->kind[set->n++] = kind;
+    }
+    return LW_OK;
+}
+
+/* Where the certificate puts a line, degrees 2theta at the reference wavelength; slopes to the three edges by *d. */
+static double certified_angle(const lw_standard *standard, double wavelength_nm, const lw_reflection *r, double d[3])
+{
+    const lw_cell *cell = &standard->material.cell;
+    double s = lw_cell_s(cell, r->h, r->k, r->l), slopes[6];
+    lw_cell_s_slopes(cell, r->h, r->k, r->l, slopes);
+    double sine = s * wavelength_nm / 2;
+    if (!(sine < 1))
+        return NAN;
+    for (int i = 0; i < 3; i++)
+        d[i] = slopes[i] * wavelength_nm / sqrt(1 - sine * sine) / degree;
+    return 2 * asin(sine) / degree;
+}
+
+/* Equal edges of the crystal system move together: their shifts are one. */
+static size_t edge_groups(lw_crystal_system system, size_t group[3])
+{
+    bool ab = system == LW_CUBIC || system == LW_TETRAGONAL || system == LW_HEXAGONAL || system == LW_TRIGONAL;
+    group[0] = 0;
+    group[1] = ab ? 0 : 1;
+    group[2] = system == LW_CUBIC ? 0 : group[1] + 1;
+    return group[2] + 1;
+}
+
+/* Generalised least squares of the differences on the aberrations' slopes; residuals by *residual. */
+static lw_status fit_aberrations(lw_engine *engine, lw_aberrations *set, size_t n, const double *angle,
+                                 const double *difference, const double *covariance, double *residual, double *chi2,
+                                 lw_arena *scratch, lw_error *err)
+{
+    size_t k = set->n, weakest;
+    double *inverse = lw_arena_take(scratch, n * n, sizeof *inverse, err);
+    double *slope = lw_arena_take(scratch, n * k, sizeof *slope, err);
+    if (inverse == NULL || slope == NULL)
+        return LW_OUT_OF_MEMORY;
+    lw_status status = lw_invert_normal(engine, covariance, n, NULL, inverse, &weakest, err);
+    if (status != LW_OK)
+        return status;
+    double h[LW_ABERRATION_MOST * LW_ABERRATION_MOST] = {0}, c[LW_ABERRATION_MOST * LW_ABERRATION_MOST] = {0};
+    double g[LW_ABERRATION_MOST] = {0};
+    for (size_t i = 0; i < n; i++)
+        for (size_t a = 0; a < k; a++)
+            slope[i * k + a] = set->kind[a]->slope(angle[i], set->radius_mm);
+    for (size_t i = 0; i < n; i++)
+        for (size_t j = 0; j < n; j++)
+            for (size_t a = 0; a < k; a++) {
+                g[a] += slope[i * k + a] * inverse[i * n + j] * difference[j];
+                for (size_t b = 0; b < k; b++)
+                    h[a * k + b] += slope[i * k + a] * inverse[i * n + j] * slope[j * k + b];
+            }
+    status = lw_invert_normal(engine, h, k, NULL, c, &weakest, err);
+    if (status != LW_OK)
+        return status;
+    for (size_t a = 0; a < k; a++) {
+        set->value[a] = 0;
+        for (size_t b = 0; b < k; b++) {
+            set->value[a] += c[a * k + b] * g[b];
+            set->covariance[a][b] = c[a * k + b];
+        }
+    }
+    *chi2 = 0;
+    for (size_t i = 0; i < n; i++)
+        residual[i] = difference[i] - lw_aberrations_shift(set, angle[i], NULL);
+    for (size_t i = 0; i < n; i++)
+        for (size_t j = 0; j < n; j++)
+            *chi2 += residual[i] * inverse[i * n + j] * residual[j];
+    return LW_OK;
+}
+
+/* Positions of the supported lines against the certificate. */
+static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                                     lw_calibration *calibration, lw_calibration_lines *rows, lw_arena *scratch,
+                                     lw_error *err)
+{
+    lw_aberrations *set = &calibration->aberrations;
+    double wavelength = lw_radiation_wavelength(&lines->radiation);
+    size_t n = 0, group[3], groups = edge_groups(standard->material.system, group);
+    const lw_cell *cell = &standard->material.cell;
+    double u_edge[3] = {cell->u_a, cell->u_b, cell->u_c};
+    double *shift = lw_arena_take(scratch, lines->n * 3, sizeof *shift, err); /* per group, already times its u */
+    double *covariance = lw_arena_take(scratch, lines->n * lines->n, sizeof *covariance, err);
+    rows->line = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->line, err);
+    rows->certified = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->certified, err);
+    rows->u_certified = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->u_certified, err);
+    rows->difference = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->difference, err);
+    rows->residual = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->residual, err);
+    if (!shift || !covariance || !rows->line || !rows->certified || !rows->u_certified || !rows->difference ||
+        !rows->residual)
+        return LW_OUT_OF_MEMORY;
+    for (size_t k = 0; k < lines->n; k++) {
+        const lw_line *line = &lines->line[k];
+        double d[3];
+        if (!line->supported || !(line->two_theta.u > 0))
+            continue;
+        double angle = certified_angle(standard, wavelength, &line->reflection, d);
+        if (!isfinite(angle))
+            continue;
+        for (size_t e = 0; e < 3; e++)
+            shift[n * 3 + group[e]] += d[e] * u_edge[e];
+        for (size_t e = 0; e < groups; e++)
+            rows->u_certified[n] += shift[n * 3 + e] * shift[n * 3 + e];
+        rows->u_certified[n] = sqrt(rows->u_certified[n]);
+        rows->line[n] = line;
+        rows->certified[n] = angle;
+        rows->difference[n] = line->two_theta.value - angle;
+        n++;
+    }
+    rows->n = n;
+    if (n < set->n + 1)
+        return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0, "measure more lines, or name fewer aberrations",
+                          "%zu supported lines can't carry %zu aberrations", n, set->n);
+    for (size_t i = 0; i < n; i++)
+        for (size_t j = 0; j < n; j++) {
+            double sum = lines->covariance[rows->line[i]->at_position * lines->n_parameters + rows->line[j]->at_position];
+            for (size_t e = 0; e < groups; e++)
+                sum += shift[i * 3 + e] * shift[j * 3 + e];
+            covariance[i * n + j] = sum;
+        }
+    lw_status status = fit_aberrations(engine, set, n, rows->certified, rows->difference, covariance, rows->residual,
+                                       &rows->chi2, scratch, err);
+    if (status != LW_OK)
+        return status;
+    double square = 0, freedom = (double)(n - set->n);
+    for (size_t i = 0; i < n; i++)
+        square += rows->residual[i] * rows->residual[i];
+    rows->rms = sqrt(square / (double)n);
+    if (rows->rms > 0.05)
+        return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0,
+                          "is it the right standard, and the right radiation?",
+                          "the lines do not fall where the certificate of %s puts them (rms %.3f deg after aberrations)",
+                          standard->name, rows->rms);
+    /* an aberration law that misses the positions makes its parameters less certain (Birge 1932 Phys. Rev. 40, 207) */
+    rows->p = lw_chi2_tail(rows->chi2, freedom);
+    rows->birge = rows->p < 1e-3 ? sqrt(rows->chi2 / freedom) : 1;
+    for (size_t a = 0; a < set->n; a++)
+        for (size_t b = 0; b < set->n; b++)
+            set->covariance[a][b] *= rows->birge * rows->birge;
+    return LW_OK;
+}
+
+lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                       const lw_calibrate_options *options, lw_calibration **out, lw_error *err)
+{
+    *out = NULL;
+    bool smooth = false;
+    for (int i = 0; i < LW_AXIAL_S; i++)
+        smooth |= lines->smooth.refined[i];
+    if (!smooth || lines->has_instrument || strcmp(lines->shape, "voigt") != 0)
+        return lw_fail(err, LW_BAD_ARGUMENT, "fit the standard with fit_lines(scan, reflections, {widths = \"smooth\"})",
+                       "calibrate: the lines must be fitted with widths as smooth functions of angle and no instrument");
+    lw_calibration *calibration = lw_take(engine, sizeof *calibration, err);
+    if (calibration == NULL)
+        return LW_OUT_OF_MEMORY;
+    memset(calibration, 0, sizeof *calibration);
+    lw_arena_begin(&calibration->arena, engine);
+    lw_arena scratch;
+    lw_arena_begin(&scratch, engine);
+    bool capillary = options->geometry == 2 || (options->geometry == 0 && lines->radiation.is_plain);
+    snprintf(calibration->geometry, sizeof calibration->geometry, "%s", capillary ? "capillary" : "reflection");
+    calibration->radiation = lines->radiation;
+    calibration->profile = lines->smooth;
+    lw_calibration_lines rows = {.radius_from = "given"};
+    calibration->aberrations.radius_mm = options->goniometer_radius_mm;
+    if (!(calibration->aberrations.radius_mm > 0)) {
+        calibration->aberrations.radius_mm = radius_in_header(lines->scan->header);
+        rows.radius_from = "scan header";
+    }
+    if (!(calibration->aberrations.radius_mm > 0)) {
+        calibration->aberrations.radius_mm = 200;
+        rows.radius_from = "assumed: neither given nor in the scan's header";
+    }
+    lw_status status = choose_aberrations(options, capillary, &calibration->aberrations, err);
+    if (status == LW_OK)
+        status = calibrate_positions(engine, lines, standard, calibration, &rows, &scratch, err);
+    if (status == LW_OK) {
+        calibration->valid_low_deg = rows.line[0]->two_theta.value;
+        calibration->valid_high_deg = rows.line[rows.n - 1]->two_theta.value;
+        calibration->profile.low_deg = calibration->valid_low_deg;
+        calibration->profile.high_deg = calibration->valid_high_deg;
+        status = lw__calibration_record(calibration, lines, standard, &rows, err);
+    }
+    lw_arena_end(&scratch);
+    if (status != LW_OK) {
+        lw_calibration_free(calibration);
+        return status;
+    }
+    *out = calibration;
+    return LW_OK;
+}
+
+void lw_calibration_free(lw_calibration *calibration)
+{
+    if (calibration == NULL)
+        return;
+    lw_engine *engine = calibration->arena.engine;
+    lw_arena_end(&calibration->arena);
+    lw_give(engine, calibration, sizeof *calibration);
+}
+
+lw_status lw_calibration_covers(const lw_calibration *calibration, const lw_radiation *radiation, double low_deg,
+                                double high_deg, lw_error *err)
+{
+    if (!lw_radiation_same(&calibration->radiation, radiation))
+        return lw_fail(err, LW_BAD_ARGUMENT, "calibrate the instrument with the radiation that the sample was measured with",
+                       "the calibration is for %s (%.6f nm), the scan for %s (%.6f nm)", calibration->radiation.name,
+                       lw_radiation_wavelength(&calibration->radiation), radiation->name,
+                       lw_radiation_wavelength(radiation));
+    double margin = 0.05 * (calibration->valid_high_deg - calibration->valid_low_deg);
+    if (low_deg < calibration->valid_low_deg - margin || high_deg > calibration->valid_high_deg + margin)
+        return lw_fail(err, LW_OUT_OF_RANGE,
+                       "measure the standard over a wider range, or leave the lines outside it out (range = {low, high})",
+                       "lines from %.2f to %.2f deg, but the calibration holds from %.2f to %.2f deg", low_deg, high_deg,
+                       calibration->valid_low_deg, calibration->valid_high_deg);
+    return LW_OK;
+}

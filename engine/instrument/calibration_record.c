@@ -1,0 +1,335 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* linewright/calibration/1: written from a calibration, and read back to one that acts the same. */
+#include "instrument/calibration_record.h"
+
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+static const char schema[] = "linewright/calibration/1";
+
+/* Parameters of the covariance matrix, in its order: refined widths, then aberrations. */
+static const char *const profile_group[LW_WIDTH_PARAMETERS] = {"gauss", "gauss", "gauss",   "gauss", "lorentz",
+                                                               "lorentz", "lorentz", "axial", "axial"};
+static const char *const profile_field[LW_WIDTH_PARAMETERS] = {"U", "V", "W", "P", "X", "Y", "Z", "s_over_l", "h_over_l"};
+static const char *const profile_unit[LW_WIDTH_PARAMETERS] = {"deg^2", "deg^2", "deg^2", "deg^2", "deg",
+                                                              "deg",   "deg",   "",      ""};
+
+static void write_radiation(const lw_radiation *radiation, lw_node *root, lw_error *err)
+{
+    lw_node *group = lw_add_group(root, "radiation", err);
+    lw_add_text(group, "name", radiation->name, err);
+    lw_add_number(group, "wavelength_nm", lw_radiation_wavelength(radiation), err);
+    lw_node *list = lw_add_list(group, "components", err);
+    for (size_t i = 0; i < radiation->n; i++) {
+        lw_node *row = lw_add_group(list, NULL, err);
+        lw_add_number(row, "wavelength_nm", radiation->component[i].wavelength_nm, err);
+        lw_add_number(row, "width_nm", radiation->component[i].width_nm, err);
+        lw_add_number(row, "weight", radiation->component[i].weight, err);
+    }
+    lw_add_number(group, "k_beta_nm", radiation->k_beta_nm, err);
+    lw_add_flag(group, "plain", radiation->is_plain, err);
+    lw_add_text(group, "source", radiation->source, err);
+}
+
+static void write_profile(const lw_width_function *profile, lw_node *root, lw_error *err)
+{
+    lw_node *group = lw_add_group(root, "profile", err), *part = NULL;
+    lw_add_text(group, "form",
+                "Gaussian FWHM^2 = U tan^2 + V tan + W + P/cos^2; Lorentzian FWHM = X tan + Y/cos + Z; axial "
+                "half-lengths of specimen and slit over the radius", err);
+    for (int i = 0; i < LW_WIDTH_PARAMETERS; i++) {
+        if (i == 0 || strcmp(profile_group[i], profile_group[i - 1]) != 0)
+            part = lw_add_group(group, profile_group[i], err);
+        lw_add_quantity(part, profile_field[i],
+                        lw_quantity_of(profile->value[i], sqrt(profile->covariance[i][i]), profile_unit[i]), NULL, err);
+    }
+}
+
+static void write_table(const lw_calibration *calibration, lw_node *root, lw_error *err)
+{
+    lw_node *list = lw_add_list(root, "instrument_profile", err);
+    const lw_width_function *profile = &calibration->profile;
+    for (double angle = 5 * ceil(calibration->valid_low_deg / 5); angle <= calibration->valid_high_deg; angle += 5) {
+        lw_width_figure figure;
+        double u_shift, shift = lw_aberrations_shift(&calibration->aberrations, angle, &u_shift);
+        lw_width_figure_at(profile, angle, 0, 0, &figure);
+        lw_node *row = lw_add_group(list, NULL, err);
+        lw_add_number(row, "two_theta", angle, err);
+        lw_add_quantity(row, "fwhm", lw_quantity_of(figure.fwhm_deg, figure.u_fwhm, "deg"), NULL, err);
+        lw_add_quantity(row, "breadth", lw_quantity_of(figure.breadth_deg, figure.u_breadth, "deg"), NULL, err);
+        lw_add_quantity(row, "shift", lw_quantity_of(shift + figure.centroid_deg, u_shift, "deg"), NULL, err);
+    }
+}
+
+static void write_covariance(const lw_calibration *calibration, lw_node *root, lw_error *err)
+{
+    lw_node *group = lw_add_group(root, "covariance", err), *names = lw_add_list(group, "parameters", err);
+    const lw_width_function *profile = &calibration->profile;
+    const lw_aberrations *set = &calibration->aberrations;
+    size_t rows[LW_WIDTH_PARAMETERS], n = 0;
+    for (size_t i = 0; i < LW_WIDTH_PARAMETERS; i++)
+        if (profile->refined[i]) {
+            lw_add_text(names, NULL, profile_field[i], err);
+            rows[n++] = i;
+        }
+    for (size_t i = 0; i < set->n; i++)
+        lw_add_text(names, NULL, set->kind[i]->name, err);
+    lw_node *matrix = lw_add_list(group, "matrix", err);
+    for (size_t i = 0; i < n + set->n; i++) {
+        double row[LW_WIDTH_PARAMETERS + LW_ABERRATION_MOST] = {0};
+        for (size_t j = 0; j < n && i < n; j++)
+            row[j] = profile->covariance[rows[i]][rows[j]];
+        for (size_t j = 0; j < set->n && i >= n; j++)
+            row[n + j] = set->covariance[i - n][j];
+        lw_add_vector(matrix, NULL, row, n + set->n, "", err);
+    }
+}
+
+static void write_lines(const lw_calibration_lines *rows, lw_node *root, lw_error *err)
+{
+    lw_node *list = lw_add_list(root, "lines", err);
+    for (size_t i = 0; i < rows->n; i++) {
+        const lw_line *line = rows->line[i];
+        const lw_reflection *r = &line->reflection;
+        char hkl[24];
+        lw_node *row = lw_add_group(list, NULL, err);
+        lw_add_text(row, "hkl", lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl), err);
+        lw_add_quantity(row, "two_theta", line->two_theta, NULL, err);
+        lw_add_quantity(row, "two_theta_certified", lw_quantity_of(rows->certified[i], rows->u_certified[i], "deg"), NULL,
+                        err);
+        double u = hypot(line->two_theta.u, rows->u_certified[i]);
+        lw_add_quantity(row, "difference", lw_quantity_of(rows->difference[i], u, "deg"), NULL, err);
+        lw_add_quantity(row, "residual", lw_quantity_of(rows->residual[i], u, "deg"), NULL, err);
+        lw_add_quantity(row, "fwhm", line->fwhm, NULL, err);
+        lw_add_quantity(row, "breadth", line->breadth, NULL, err);
+        lw_add_quantity(row, "shape_ratio", line->shape_ratio, NULL, err);
+        lw_add_quantity(row, "area", line->area, NULL, err);
+    }
+}
+
+/* What a person should mind, and the verdict that follows: the calibration by itself, without a predecessor. */
+static void write_verdict(lw_calibration *calibration, const lw_lines *lines, const lw_calibration_lines *rows,
+                          lw_node *root, lw_error *err)
+{
+    lw_node *list = lw_add_list(root, "warnings", err);
+    const lw_aberrations *set = &calibration->aberrations;
+    for (size_t i = 0; i < set->n; i++)
+        for (size_t j = 0; j < i; j++) {
+            double r = set->covariance[i][j] / sqrt(set->covariance[i][i] * set->covariance[j][j]);
+            if (fabs(r) > 0.98)
+                lw_add_text(list, NULL,
+                            lw_arena_print(&calibration->arena, err,
+                                           "the range of angles can't separate %s from %s (correlation %.3f): their sum is "
+                                           "sound, each alone is not", set->kind[j]->name, set->kind[i]->name, r), err);
+        }
+    for (size_t i = 0; i < rows->n; i++) {
+        double u = hypot(rows->line[i]->two_theta.u, rows->u_certified[i]) * rows->birge;
+        const lw_reflection *h = &rows->line[i]->reflection;
+        char hkl[24];
+        if (fabs(rows->residual[i]) > fmax(4 * u, 0.002))
+            lw_add_text(list, NULL,
+                        lw_arena_print(&calibration->arena, err,
+                                       "line %s lies %.4f deg from its certified place after the aberrations (%.1f u)",
+                                       lw_hkl_text(h->h, h->k, h->l, hkl, sizeof hkl), rows->residual[i],
+                                       fabs(rows->residual[i]) / u), err);
+    }
+    size_t few = list != NULL ? list->n : 0;
+    if (lines->misfit[0] != '\0')
+        lw_add_text(list, NULL, lines->misfit, err);
+    if (strncmp(rows->radius_from, "assumed", 7) == 0 && lw_node_get(root, "aberrations") != NULL &&
+        lw_node_get(lw_node_get(root, "aberrations"), "displacement") != NULL)
+        lw_add_text(list, NULL, "the goniometer radius was not given: 200 mm was assumed, the displacement scales with it",
+                    err);
+    /* positions judged by themselves: the limits are common practice for a line-position calibration */
+    const char *verdict = rows->rms > 0.02 ? "fail" : rows->rms > 0.005 || few > 0 ? "attention" : "pass";
+    snprintf(calibration->verdict, sizeof calibration->verdict, "%s", verdict);
+    lw_add_text(root, "verdict", verdict, err);
+}
+
+lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *lines, const lw_standard *standard,
+                                 const lw_calibration_lines *rows, lw_error *err)
+{
+    lw_error local = LW_ERROR_NONE;
+    if (err == NULL)
+        err = &local;
+    lw_node *root = lw_tree_new(&calibration->arena, err);
+    lw_add_text(root, "schema", schema, err);
+    write_radiation(&calibration->radiation, root, err);
+    lw_node *group = lw_add_group(root, "standard", err);
+    lw_add_text(group, "name", standard->name, err);
+    lw_add_text(group, "certificate", standard->certificate, err);
+    lw_add_quantity(group, "a", lw_quantity_of(standard->material.cell.a, standard->material.cell.u_a, "nm"), NULL, err);
+    if (standard->material.system != LW_CUBIC)
+        lw_add_quantity(group, "c", lw_quantity_of(standard->material.cell.c, standard->material.cell.u_c, "nm"), NULL, err);
+    lw_add_number(group, "temperature_c", standard->temperature_c, err);
+    lw_add_text(root, "geometry", calibration->geometry, err);
+    double range[2] = {calibration->valid_low_deg, calibration->valid_high_deg};
+    lw_add_vector(root, "valid_two_theta", range, 2, "deg", err);
+    group = lw_add_group(root, "aberrations", err);
+    const lw_aberrations *set = &calibration->aberrations;
+    for (size_t i = 0; i < set->n; i++)
+        lw_add_quantity(group, set->kind[i]->name,
+                        lw_quantity_of(set->value[i], sqrt(set->covariance[i][i]), set->kind[i]->unit),
+                        set->kind[i]->definition, err);
+    lw_add_quantity(root, "goniometer_radius", lw_quantity_of(set->radius_mm, 0, "mm"), rows->radius_from, err);
+    write_profile(&calibration->profile, root, err);
+    write_table(calibration, root, err);
+    write_covariance(calibration, root, err);
+    write_lines(rows, root, err);
+    group = lw_add_group(root, "fit", err);
+    lw_add_number(group, "rwp", lines->rwp, err);
+    lw_add_number(group, "rexp", lines->rexp, err);
+    lw_add_number(group, "goodness_of_fit", lines->goodness, err);
+    lw_add_number(group, "durbin_watson", lines->durbin_watson, err);
+    lw_add_number(group, "misfit_factor", lines->misfit_factor, err);
+    lw_add_number(group, "position_chi2", rows->chi2, err);
+    lw_add_number(group, "position_birge_ratio", rows->birge, err);
+    lw_add_number(group, "position_rms_deg", rows->rms, err);
+    write_verdict(calibration, lines, rows, root, err);
+    calibration->record = root;
+    return err->status;
+}
+
+/* Reading back */
+
+static lw_status lacking(const char *file, const char *what, lw_error *err)
+{
+    return lw_fail_at(err, LW_BAD_DATA, file, 0, "make it again with calibrate, or use an undamaged copy",
+                      "not a usable calibration: %s", what);
+}
+
+static lw_status read_radiation(const lw_node *root, const char *file, lw_radiation *radiation, lw_error *err)
+{
+    const lw_node *group = lw_node_get(root, "radiation"), *list = lw_node_get(group, "components");
+    if (list == NULL || list->n == 0 || list->n > LW_EMISSION_MOST)
+        return lacking(file, "radiation.components is missing or too long", err);
+    snprintf(radiation->name, sizeof radiation->name, "%s", lw_node_text(group, "name", ""));
+    snprintf(radiation->source, sizeof radiation->source, "%s", lw_node_text(group, "source", ""));
+    radiation->k_beta_nm = lw_node_number(group, "k_beta_nm", 0);
+    const lw_node *plain = lw_node_get(group, "plain");
+    radiation->is_plain = plain != NULL && plain->kind == LW_NODE_FLAG && plain->flag;
+    radiation->n = 0;
+    for (const lw_node *row = list->first; row != NULL; row = row->next) {
+        lw_emission *at = &radiation->component[radiation->n++];
+        at->wavelength_nm = lw_node_number(row, "wavelength_nm", NAN);
+        at->width_nm = lw_node_number(row, "width_nm", NAN);
+        at->weight = lw_node_number(row, "weight", NAN);
+        if (!(at->wavelength_nm > 0.001 && at->wavelength_nm < 10 && at->width_nm >= 0 && at->weight > 0))
+            return lacking(file, "a component of the radiation has no usable numbers", err);
+    }
+    return LW_OK;
+}
+
+static lw_status read_covariance(const lw_node *root, const char *file, lw_calibration *calibration, lw_error *err)
+{
+    const lw_node *group = lw_node_get(root, "covariance"), *names = lw_node_get(group, "parameters"),
+                  *matrix = lw_node_get(group, "matrix");
+    if (names == NULL || matrix == NULL || names->n != matrix->n)
+        return lacking(file, "covariance is missing or not square", err);
+    double *cell[LW_WIDTH_PARAMETERS + LW_ABERRATION_MOST][LW_WIDTH_PARAMETERS + LW_ABERRATION_MOST];
+    int row_of[LW_WIDTH_PARAMETERS + LW_ABERRATION_MOST], kind[LW_WIDTH_PARAMETERS + LW_ABERRATION_MOST];
+    size_t n = 0;
+    for (const lw_node *name = names->first; name != NULL; name = name->next, n++) {
+        if (n >= LW_WIDTH_PARAMETERS + LW_ABERRATION_MOST || name->kind != LW_NODE_TEXT)
+            return lacking(file, "covariance.parameters has an unknown entry", err);
+        kind[n] = -1;
+        for (int i = 0; i < LW_WIDTH_PARAMETERS; i++)
+            if (strcmp(name->text, profile_field[i]) == 0) {
+                kind[n] = 0;
+                row_of[n] = i;
+                calibration->profile.refined[i] = true;
+            }
+        for (size_t i = 0; i < calibration->aberrations.n; i++)
+            if (strcmp(name->text, calibration->aberrations.kind[i]->name) == 0) {
+                kind[n] = 1;
+                row_of[n] = (int)i;
+            }
+        if (kind[n] < 0)
+            return lacking(file, "covariance.parameters has an unknown entry", err);
+    }
+    for (size_t i = 0; i < n; i++)
+        for (size_t j = 0; j < n; j++)
+            cell[i][j] = kind[i] != kind[j] ? NULL
+                         : kind[i] == 0     ? &calibration->profile.covariance[row_of[i]][row_of[j]]
+                                            : &calibration->aberrations.covariance[row_of[i]][row_of[j]];
+    size_t i = 0;
+    for (const lw_node *row = matrix->first; row != NULL; row = row->next, i++) {
+        if (row->kind != LW_NODE_VECTOR || row->n != n)
+            return lacking(file, "covariance.matrix has a row of the wrong length", err);
+        for (size_t j = 0; j < n; j++) {
+            if (!isfinite(row->vector[j]) || (i == j && row->vector[j] < 0))
+                return lacking(file, "covariance.matrix holds what can't be a covariance", err);
+            if (cell[i][j] != NULL)
+                *cell[i][j] = row->vector[j];
+        }
+    }
+    return LW_OK;
+}
+
+static lw_status read_record(const lw_node *record, const char *file, lw_calibration *calibration, lw_error *err)
+{
+    if (strcmp(lw_node_text(record, "schema", ""), schema) != 0)
+        return lw_fail_at(err, LW_BAD_DATA, file, 0, "give the calibration.json that calibrate wrote",
+                          "not a calibration: its schema is '%s', not '%s'", lw_node_text(record, "schema", "missing"),
+                          schema);
+    lw_status status = read_radiation(record, file, &calibration->radiation, err);
+    if (status != LW_OK)
+        return status;
+    snprintf(calibration->geometry, sizeof calibration->geometry, "%s", lw_node_text(record, "geometry", "reflection"));
+    snprintf(calibration->verdict, sizeof calibration->verdict, "%s", lw_node_text(record, "verdict", ""));
+    const lw_node *range = lw_node_get(record, "valid_two_theta");
+    if (range == NULL || range->kind != LW_NODE_VECTOR || range->n != 2 ||
+        !(range->vector[0] > 0 && range->vector[1] > range->vector[0] && range->vector[1] < 180))
+        return lacking(file, "valid_two_theta is missing or not a range", err);
+    calibration->valid_low_deg = calibration->profile.low_deg = range->vector[0];
+    calibration->valid_high_deg = calibration->profile.high_deg = range->vector[1];
+    const lw_node *profile = lw_node_get(record, "profile");
+    for (int i = 0; i < LW_WIDTH_PARAMETERS; i++) {
+        double value = lw_node_number(lw_node_get(profile, profile_group[i]), profile_field[i], NAN);
+        if (!isfinite(value))
+            return lacking(file, "profile lacks a parameter", err);
+        calibration->profile.value[i] = value;
+    }
+    calibration->aberrations.radius_mm = lw_node_number(record, "goniometer_radius", NAN);
+    if (!(calibration->aberrations.radius_mm > 0))
+        return lacking(file, "goniometer_radius is missing", err);
+    const lw_node *aberrations = lw_node_get(record, "aberrations");
+    if (aberrations == NULL || aberrations->n > LW_ABERRATION_MOST)
+        return lacking(file, "aberrations are missing or too many", err);
+    for (const lw_node *child = aberrations->first; child != NULL; child = child->next) {
+        const lw_aberration *kind = lw_aberration_named(child->name ? child->name : "");
+        if (kind == NULL || child->kind != LW_NODE_QUANTITY || !isfinite(child->quantity.value))
+            return lacking(file, "an aberration is unknown or has no value", err);
+        calibration->aberrations.kind[calibration->aberrations.n] = kind;
+        calibration->aberrations.value[calibration->aberrations.n++] = child->quantity.value;
+    }
+    return read_covariance(record, file, calibration, err);
+}
+
+lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, const char *file,
+                                   lw_calibration **out, lw_error *err)
+{
+    *out = NULL;
+    lw_error local = LW_ERROR_NONE;
+    if (err == NULL)
+        err = &local;
+    lw_calibration *calibration = lw_take(engine, sizeof *calibration, err);
+    if (calibration == NULL)
+        return LW_OUT_OF_MEMORY;
+    memset(calibration, 0, sizeof *calibration);
+    lw_arena_begin(&calibration->arena, engine);
+    lw_status status = read_record(record, file, calibration, err);
+    if (status == LW_OK) {
+        calibration->record = lw_tree_new(&calibration->arena, err);
+        for (const lw_node *child = record->first; child != NULL && calibration->record != NULL; child = child->next)
+            lw_add_copy(calibration->record, child->name, child, err);
+        status = err->status;
+    }
+    if (status != LW_OK) {
+        lw_calibration_free(calibration);
+        return status;
+    }
+    *out = calibration;
+    return LW_OK;
+}

@@ -1,0 +1,21 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The calibration as a record: what is written when it is made (private to instrument/). */
+#ifndef LW_INSTRUMENT_CALIBRATION_RECORD_H
+#define LW_INSTRUMENT_CALIBRATION_RECORD_H
+
+#include "instrument/calibration.h"
+
+/* Lines of the standard against the certificate. */
+typedef struct lw_calibration_lines {
+    size_t n;
+    const lw_line **line;
+    double *certified, *u_certified; /* deg */
+    double *difference, *residual;   /* deg, observed minus certified, before and after the aberrations */
+    double chi2, p, birge, rms;      /* of the residuals; rms in deg */
+    const char *radius_from;
+} lw_calibration_lines;
+
+lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *lines, const lw_standard *standard,
+                                 const lw_calibration_lines *rows, lw_error *err);
+
+#endif

@@ -1,0 +1,57 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* What the files of the line fit share while a fit is under way (private to line/). */
+#ifndef LW_LINE_FIT_STATE_H
+#define LW_LINE_FIT_STATE_H
+
+#include "line/lines.h"
+#include "line/model.h"
+#include "line/start.h"
+
+#define LW_BACKGROUND_MOST 44
+
+typedef struct lw_fit_state {
+    lw_engine *engine;
+    lw_arena scratch;              /* freed at the end of the fit */
+    const lw_scan *scan;
+    const lw_fit_options *options;
+    lw_lines *lines;               /* the result under construction */
+    lw_model model;
+    size_t n;                      /* lines */
+    lw_reflection *reflection;
+    lw_line_start *start;
+    const char **remark;           /* [n] */
+    /* the present point, by meaning */
+    double *position, *area;       /* [n] */
+    double (*local)[LW_LOCAL_MOST];/* [n] */
+    bool *hold_position, *hold_local, *weak; /* [n] */
+    double background[LW_BACKGROUND_MOST];
+    double global[LW_GLOBALS_MOST], global_lower[LW_GLOBALS_MOST];
+    bool hold_global[LW_GLOBALS_MOST], hold_background, hold_areas;
+    size_t terms;                  /* Chebyshev terms */
+    double *extra;                 /* background scan at the points, or NULL */
+    double *extra_variance;        /* of one unit of it */
+    /* the same as a parameter vector, laid out for the model */
+    size_t n_parameters;
+    double *p, *lower, *upper;
+    bool *fixed, *at_bound;
+    size_t iterations;
+    const char *stopped;
+    bool converged;
+    double chi2;                   /* of the last iteration */
+    lw_width_function shared;      /* the smooth width function, kept when lines get widths of their own */
+} lw_fit_state;
+
+/* Share of a line's area that lies under its neighbours. */
+double lw_fit_overlap(const lw_fit_state *fit, size_t line);
+
+/* Fills fit->lines from the converged state: covariance, statistics, quantities. */
+lw_status lw_fit_result(lw_fit_state *fit, lw_error *err);
+
+/* Standard uncertainties of the areas at the present point, and the shared width function with its
+ * covariance into fit->shared, by a normal matrix of the present layout. */
+lw_status lw_fit_survey(lw_fit_state *fit, double *u_area, lw_error *err);
+
+/* Variance of each point from the present model curve, into fit->lines->variance and the weights. */
+void lw_fit_weigh(lw_fit_state *fit, bool from_model);
+
+#endif
