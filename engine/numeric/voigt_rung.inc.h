@@ -4,7 +4,8 @@
  *
  * With v = 2 sigma^2, Z = x + i gamma (gamma = half the Lorentzian FWHM) and z = Z/sqrt(v), the analytic
  * function f(Z) = w(z)/sqrt(pi v) carries everything: V = Re f, dV/dx = Re f', dV/dgamma = -Im f' and,
- * as V obeys the heat equation in sigma^2, dV/d(sigma^2) = Re f''/2. All regions give pi times these.
+ * as V obeys the heat equation in sigma^2, dV/d(sigma^2) = Re f''/2. Each region gives these times a
+ * constant (see `quad`).
  *
  *   far     |z| > 25  asymptotic series in v/Z^2, which needs no 1/v: exact down to v = 0
  *   middle  |z| > 7   12 terms of the Laplace continued fraction, rearranged so that f' and f'' come
@@ -23,7 +24,7 @@ typedef long long mask __attribute__((vector_size(8 * LW_LANES)));
 
 #define FAR 625.0 /* squares of |z| that part the regions */
 #define MIDDLE 49.0
-#define BLEND 2500.0 /* a core chunk that reaches further than this is blended with the far series */
+#define BLEND 2500.0 /* a nearer chunk that reaches further than this is blended with the far series */
 
 #define ONE_PI 0.31830988618379067154
 #define ONE_SQRT_PI 0.56418958354775628695
@@ -52,14 +53,16 @@ static const double middle_u[6] = {-10395.0 / 64, 51975.0 / 32, -12645.0 / 8, 17
 /* S of the asymptotic series is far_c[k] (v/Z^2)^(k+1), far_c[k] = (2k+3)!!/2^(k+1). */
 static const double far_c[5] = {1.5, 3.75, 13.125, 59.0625, 324.84375};
 
-/* One node, prepared: weights that multiply V, V_x, V_gamma and V_xx. */
+/* One node, prepared: weights that multiply the parts of `quad`, and between which offsets of the chunk
+ * the far series, or at least the middle one, does not hold. */
 typedef struct prepared {
     double offset, gamma, value, position_x, position_gamma, lorentz, variance;
     double shape_x[LW_VOIGT_SHAPES], shape_v[LW_VOIGT_SHAPES];
+    double far_low, far_high, middle_low, middle_high;
 } prepared;
 #define PREPARED_MOST 48
 
-/* pi times V, dV/dx, dV/dgamma, d2V/dx2. */
+/* -pi V, pi dV/dx, pi dV/dgamma, -(pi/2) d2V/dx2: what the far series gives without a further product. */
 typedef struct quad {
     vec v, x, gamma, xx;
 } quad;
@@ -69,14 +72,14 @@ INLINE vec all(double value)
     return (vec){0} + value;
 }
 
-/* Real polynomial of a complex argument q: re + i im = sum c[k] q^k, by the recurrence in
+/* Real polynomial of a complex argument q: re + i im = sum c[k stride] q^k, by the recurrence in
  * t = 2 Re q and m = |q|^2 that needs two multiply-adds a coefficient. */
-INLINE void polynomial(const double *c, int count, vec qr, vec qi, vec t, vec m, vec *re, vec *im)
+INLINE void polynomial(const double *c, int count, int stride, vec qr, vec qi, vec t, vec m, vec *re, vec *im)
 {
-    vec b1 = all(c[count - 1]), b2 = all(0.0);
+    vec b2 = all(c[(count - 1) * stride]), b1 = c[(count - 2) * stride] + t * b2;
 #pragma GCC unroll 40
-    for (int k = count - 2; k >= 1; k--) {
-        vec b = (c[k] - m * b2) + t * b1;
+    for (int k = count - 3; k >= 1; k--) {
+        vec b = (c[k * stride] - m * b2) + t * b1;
         b2 = b1;
         b1 = b;
     }
@@ -88,42 +91,42 @@ INLINE quad far_out(vec x, double gamma, double v, int values_only)
 {
     quad out = {.v = all(0.0)};
     vec d = 1.0 / (x * x + gamma * gamma);
-    vec ur = x * d, ui = -gamma * d;
-    vec pr = ur * ur - ui * ui, pi = 2.0 * ur * ui;
-    vec qr = v * pr, qi = v * pi, sr, si;
-    polynomial(far_c, 5, qr, qi, 2.0 * qr, qr * qr + qi * qi, &sr, &si);
-    vec tr = 1.0 + (qr * sr - qi * si), ti = qr * si + qi * sr;
-    vec wr = pr * tr - pi * ti, wi = pr * ti + pi * tr;
-    out.v = -(ui + 0.5 * v * (ur * wi + ui * wr));
+    vec ur = x * d, ui = -gamma * d;                    /* U = 1/Z */
+    vec pr = ur * ur - ui * ui, pi = (ur + ur) * ui;    /* U^2 */
+    vec qr = v * pr, qi = v * pi, vd = v * d, sr, si;
+    polynomial(far_c, 5, 1, qr, qi, qr + qr, vd * vd, &sr, &si);
+    vec hr = pr * sr - pi * si, hi = pr * si + pi * sr; /* U^2 S/q */
+    vec wr = (pr + qr * hr) - qi * hi, wi = (pi + qr * hi) + qi * hr; /* U^2 (1 + S) */
+    out.v = ui + (0.5 * v) * (ur * wi + ui * wr);
     if (values_only)
         return out;
     out.x = wi;
     out.gamma = wr;
-    vec gr = sr - 0.5 * tr, gi = si - 0.5 * ti;
-    out.xx = -2.0 * ((ur * pr - ui * pi) * gi + (ur * pi + ui * pr) * gr);
+    hr -= 0.5 * wr;
+    hi -= 0.5 * wi;
+    out.xx = ur * hi + ui * hr;
     return out;
 }
 
 INLINE quad middle(vec x, double y, double s, int values_only)
 {
     quad out = {.v = all(0.0)};
-    vec zr = x * x - y * y, zi = (2.0 * y) * x, t = 2.0 * zr, m = zr * zr + zi * zi;
+    vec x2 = x * x, zr = x2 - y * y, zi = (2.0 * y) * x, r2 = x2 + y * y, m = r2 * r2, t = zr + zr;
     vec ar, ai, br, bi;
-    polynomial(middle_u, 6, zr, zi, t, m, &ar, &ai);
-    polynomial(middle_p, 7, zr, zi, t, m, &br, &bi);
-    vec d = 1.0 / (br * br + bi * bi);
+    polynomial(middle_u, 6, 1, zr, zi, t, m, &ar, &ai);
+    polynomial(middle_p, 7, 1, zr, zi, t, m, &br, &bi);
+    vec d = 1.0 / (br * br + bi * bi), e = 1.0 / r2;
     vec sr = (ar * br + ai * bi) * d, si = (ai * br - ar * bi) * d; /* S */
-    vec e = 1.0 / (x * x + y * y);
-    vec ur = x * e, ui = -y * e; /* 1/z */
+    vec ur = x * e, ui = -y * e;                                    /* 1/z */
     vec hr = 0.5 * (ur * ur - ui * ui), hi = ur * ui;
-    vec rr = hr * (1.0 + sr) - hi * si, ri = hr * si + hi * (1.0 + sr); /* R */
-    out.v = -s * (ui + (ur * ri + ui * rr));
+    vec rr = (hr + hr * sr) - hi * si, ri = (hi + hi * sr) + hr * si; /* R */
+    out.v = s * (ui + (ur * ri + ui * rr));
     if (values_only)
         return out;
     out.x = (2.0 * s * s) * ri;
     out.gamma = (2.0 * s * s) * rr;
     vec gr = sr - rr, gi = si - ri;
-    out.xx = (-2.0 * s * s * s) * (ur * gi + ui * gr);
+    out.xx = (s * s * s) * (ur * gi + ui * gr);
     return out;
 }
 
@@ -132,18 +135,22 @@ INLINE quad core(vec x, double y, double s, int values_only)
     quad out = {.v = all(0.0)};
     vec d = 1.0 / (x * x + (CORE_L + y) * (CORE_L + y));
     vec gr = (CORE_L + y) * d, gi = x * d; /* 1/(L - iz) */
-    vec zr = (CORE_L - y) * gr - x * gi, zi = (CORE_L - y) * gi + x * gr, pr, pi;
-    polynomial(core_a, CORE_TERMS, zr, zi, 2.0 * zr, zr * zr + zi * zi, &pr, &pi);
+    vec zr = (CORE_L - y) * gr - x * gi, zi = (CORE_L - y) * gi + x * gr;
+    /* even and odd powers apart: two chains of half the length run side by side */
+    vec zi2 = zi * zi, m = zr * zr + zi2, qr = zr * zr - zi2, qi = (zr + zr) * zi, er, ei, or, oi;
+    polynomial(core_a, CORE_TERMS / 2, 2, qr, qi, qr + qr, m * m, &er, &ei);
+    polynomial(core_a + 1, CORE_TERMS / 2, 2, qr, qi, qr + qr, m * m, &or, &oi);
+    vec pr = (er + zr * or) - zi * oi, pi = (ei + zr * oi) + zi * or;
     vec hr = ONE_SQRT_PI + 2.0 * (pr * gr - pi * gi), hi = 2.0 * (pr * gi + pi * gr);
     vec wr = gr * hr - gi * hi;
-    out.v = (s * SQRT_PI) * wr;
+    out.v = (-s * SQRT_PI) * wr;
     if (values_only)
         return out;
     vec wi = gr * hi + gi * hr;
-    vec dr = -2.0 * (x * wr - y * wi), di = 2.0 * ONE_SQRT_PI - 2.0 * (x * wi + y * wr);
-    out.x = (s * s * SQRT_PI) * dr;
-    out.gamma = (-s * s * SQRT_PI) * di;
-    out.xx = (-2.0 * s * s * s * SQRT_PI) * (wr + (x * dr - y * di));
+    vec dr = y * wi - x * wr, di = ONE_SQRT_PI - (x * wi + y * wr); /* w'/2 */
+    out.x = (2.0 * s * s * SQRT_PI) * dr;
+    out.gamma = (-2.0 * s * s * SQRT_PI) * di;
+    out.xx = (s * s * s * SQRT_PI) * (wr + 2.0 * (x * dr - y * di));
     return out;
 }
 
@@ -187,19 +194,19 @@ INLINE void sum_block(size_t n, const double *x, const prepared *node, size_t n_
         for (size_t j = 0; j < n_nodes; j++) {
             const prepared *a = &node[j];
             vec u = points - a->offset;
-            double low = first - a->offset, high = last - a->offset, g2 = a->gamma * a->gamma;
-            double nearest = low > 0 ? low : high < 0 ? high : 0.0, r2 = nearest * nearest + g2;
             quad q;
-            if (r2 > FAR * v) {
+            if (first > a->far_high || last < a->far_low) {
                 q = far_out(u, a->gamma, v, values_only);
-            } else if (r2 > MIDDLE * v) {
-                q = middle(u * s, a->gamma * s, s, values_only);
             } else {
-                q = core(u * s, a->gamma * s, s, values_only);
-                double reach = fmax(-low, high);
-                if (reach * reach + g2 > BLEND * v) {
+                if (first > a->middle_high || last < a->middle_low)
+                    q = middle(u * s, a->gamma * s, s, values_only);
+                else
+                    q = core(u * s, a->gamma * s, s, values_only);
+                double low = first - a->offset, high = last - a->offset, reach = fmax(-low, high);
+                if (reach * reach > BLEND * v) {
+                    /* a coarse step: some points of the chunk may lie far out all the same */
                     quad f = far_out(u, a->gamma, v, values_only);
-                    mask where = (mask)(u * u + g2 > FAR * v);
+                    mask where = (mask)(u * u > FAR * v);
                     q.v = chosen(where, f.v, q.v);
                     if (!values_only) {
                         q.x = chosen(where, f.x, q.x);
@@ -231,6 +238,13 @@ INLINE void sum_block(size_t n, const double *x, const prepared *node, size_t n_
     }
 }
 
+/* Up to which distance |x| the square of |Z| is at most `square`; -infinity if never. */
+static double reach_of(double square, double gamma)
+{
+    double left = square - gamma * gamma;
+    return left >= 0 ? sqrt(left) : -INFINITY;
+}
+
 void LW_RUNG_SUM(size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes, double gauss_variance,
                  double lorentz, int values_only, const lw_voigt_sums *out)
 {
@@ -240,17 +254,22 @@ void LW_RUNG_SUM(size_t n, const double *x, const lw_voigt_node *node, size_t n_
     do { /* once even without nodes: the sums are then zero */
         size_t count = n_nodes < PREPARED_MOST ? n_nodes : PREPARED_MOST;
         for (size_t j = 0; j < count; j++) {
-            double weight = node[j].weight * ONE_PI;
+            double weight = node[j].weight * ONE_PI, gamma = 0.5 * (lorentz + node[j].lorentz);
+            double far = reach_of(FAR * v, gamma), near = reach_of(MIDDLE * v, gamma);
             block[j] = (prepared){.offset = node[j].offset,
-                                  .gamma = 0.5 * (lorentz + node[j].lorentz),
-                                  .value = weight,
+                                  .gamma = gamma,
+                                  .value = -weight,
                                   .position_x = -weight * (1 + node[j].offset_slope),
                                   .position_gamma = 0.5 * weight * node[j].lorentz_slope,
                                   .lorentz = 0.5 * weight,
-                                  .variance = weight / (16 * LN2)};
+                                  .variance = -weight / (8 * LN2),
+                                  .far_low = node[j].offset - far,
+                                  .far_high = node[j].offset + far,
+                                  .middle_low = node[j].offset - near,
+                                  .middle_high = node[j].offset + near};
             for (int k = 0; k < LW_VOIGT_SHAPES; k++) {
                 block[j].shape_x[k] = -weight * node[j].d_offset[k];
-                block[j].shape_v[k] = ONE_PI * node[j].d_weight[k];
+                block[j].shape_v[k] = -ONE_PI * node[j].d_weight[k];
             }
         }
         if (values_only)
