@@ -4,7 +4,6 @@
  * SIAM J. Numer. Anal. 59, 2346. With TERMS = 11 the rule's own error is exp(-12 pi) = 4e-17. */
 #include "numeric/voigt.h"
 
-#include <complex.h>
 #include <math.h>
 
 #define TERMS 11
@@ -22,59 +21,80 @@ static const double at_step[TERMS] = {
     0.001437306080407531768, 0.00008069951757030459924, 2.684086793096743346e-6, 5.288422116944157332e-8,
     6.172478865224309567e-10, 4.267731135455224686e-12, 1.747987940565501288e-14};
 
-/* Multiplies out a complex product by hand: C's own handles infinities by a library call. */
-static double complex times(double complex a, double complex b)
+/* C's complex type would call the library at every product and quotient, and CMPLX is not everywhere. */
+typedef struct number {
+    double re, im;
+} number;
+
+static number plus(number a, number b)
 {
-    return CMPLX(creal(a) * creal(b) - cimag(a) * cimag(b), creal(a) * cimag(b) + cimag(a) * creal(b));
+    return (number){a.re + b.re, a.im + b.im};
+}
+
+static number times(number a, number b)
+{
+    return (number){a.re * b.re - a.im * b.im, a.re * b.im + a.im * b.re};
+}
+
+static number i_times(double c, number a)
+{
+    return (number){-c * a.im, c * a.re};
+}
+
+static number over(double c, number a)
+{
+    double size = hypot(a.re, a.im);
+    return (number){c / size * (a.re / size), -c / size * (a.im / size)};
 }
 
 /* exp(-z^2) for z = x + iy, x, y >= 0. */
-static double complex exp_minus_square(double x, double y)
+static number exp_minus_square(double x, double y)
 {
     double size = exp((y - x) * (y + x)), angle = -2 * x * y;
-    return CMPLX(size * cos(angle), size * sin(angle));
+    return (number){size * cos(angle), size * sin(angle)};
 }
 
 /* (2 i h z/pi) sum weight[k]/(z^2 - t2[k]), t2[k] = (k + shift)^2 h^2. */
-static double complex rule(double complex z, const double *weight, int count, double shift)
+static number rule(number z, const double *weight, int count, double shift)
 {
+    number sum = {0, 0};
     /* far out z^2 would overflow; the sum is then its leading term to every digit */
-    if (cabs(z) > 1e30) {
+    if (hypot(z.re, z.im) > 1e30) {
         double total = 0;
         for (int k = 0; k < count; k++)
             total += weight[k];
-        return times(CMPLX(0, 2 * STEP * total / PI), 1 / z);
+        return i_times(2 * STEP * total / PI, over(1, z));
     }
-    double complex z2 = times(z, z), sum = 0;
+    number z2 = times(z, z);
     for (int k = 0; k < count; k++) {
         double t2 = (k + shift) * (k + shift) * (PI / (TERMS + 1));
-        sum += weight[k] / (z2 - t2);
+        sum = plus(sum, over(weight[k], (number){z2.re - t2, z2.im}));
     }
-    return times(CMPLX(0, 2 * STEP / PI), times(z, sum));
+    return i_times(2 * STEP / PI, times(z, sum));
 }
 
-static double complex first_quadrant(double x, double y)
+static number first_quadrant(double x, double y)
 {
-    double complex z = CMPLX(x, y);
+    number z = {x, y};
     if (y >= fmax(x, PI / STEP))
         return rule(z, at_middle, TERMS + 1, 0.5);
     double place = x / STEP - floor(x / STEP);
     /* exp(-2 i pi z/h); the phase by the fraction of x/h, which keeps its digits */
     double size = exp(2 * PI * y / STEP);
-    double complex pole = CMPLX(size * cos(2 * PI * place), -size * sin(2 * PI * place));
-    double complex edge = 2 * exp_minus_square(x, y);
+    number pole = {size * cos(2 * PI * place), -size * sin(2 * PI * place)};
+    number edge = exp_minus_square(x, y);
     if (y < x && place >= 0.25 && place <= 0.75) {
         /* the point z is near a midpoint: the trapezoidal rule keeps away from it */
-        double complex sum = rule(z, at_step, TERMS, 1.0) + times(CMPLX(0, STEP / PI), 1 / z);
-        return isinf(size) ? sum : edge / (1 - pole) + sum;
+        number sum = plus(rule(z, at_step, TERMS, 1.0), i_times(STEP / PI, over(1, z)));
+        return isinf(size) ? sum : plus(sum, times(edge, over(2, (number){1 - pole.re, -pole.im})));
     }
-    double complex sum = rule(z, at_middle, TERMS + 1, 0.5);
-    return isinf(size) ? sum : edge / (1 + pole) + sum;
+    number sum = rule(z, at_middle, TERMS + 1, 0.5);
+    return isinf(size) ? sum : plus(sum, times(edge, over(2, (number){1 + pole.re, pole.im})));
 }
 
 void lw_faddeeva(double x, double y, double *re, double *im)
 {
-    double complex w = first_quadrant(fabs(x), y);
-    *re = creal(w);
-    *im = x < 0 ? -cimag(w) : cimag(w);
+    number w = first_quadrant(fabs(x), y);
+    *re = w.re;
+    *im = x < 0 ? -w.im : w.im;
 }

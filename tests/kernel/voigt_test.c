@@ -190,7 +190,7 @@ static void test_ragged(const lw_voigt_kernel *kernel)
             for (size_t i = 0; i < MOST + 32; i++)
                 if (i < 16 || i >= 16 + n)
                     if (r.room[a][i] != GUARD)
-                        CHECK(!"guard touched");
+                        CHECK(r.room[a][i] == GUARD); /* one count each would drown the others */
         for (size_t i = 0; i < n; i++) {
             double want = 0, d[4];
             for (int j = 0; j < 60; j++) {
@@ -241,9 +241,9 @@ static void test_cerf(const lw_voigt_kernel *kernel)
         lw_voigt_sums out = room_sums(&r);
         lw_voigt_node node = {.weight = 1};
         kernel->sum(MOST, x, &node, 1, 4 * LN2, 2 * y, 1, &out);
-        double peak = creal(w_of_z(CMPLX(0, y)));
+        double peak = creal(w_of_z(I * y));
         for (int i = 0; i < MOST; i++) {
-            double off = fabs(out.value[i] * 1.7724538509055160273 - creal(w_of_z(CMPLX(x[i], y)))) / peak;
+            double off = fabs(out.value[i] * 1.7724538509055160273 - creal(w_of_z(x[i] + I * y))) / peak;
             worst = fmax(worst, off);
             CHECK_NEAR(off, 0, 1e-12);
         }

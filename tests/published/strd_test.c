@@ -136,7 +136,7 @@ static lw_status evaluate(void *user, const double *p, bool want_normal, lw_norm
             continue;
         for (size_t k = 0; k < s->n_parameters; k++) {
             double h = 1e-150;
-            b[k] = CMPLX(p[k], h);
+            b[k] = p[k] + I * h;
             column[k] = cimag(s->model(b, s->x[i])) / h;
             b[k] = p[k];
         }
@@ -155,10 +155,10 @@ static void check_set(lw_engine *engine, const char *name, model_fn *model, int 
 {
     static set s;
     s.model = model;
-    if (!read_set(name, &s)) {
-        CHECK(!"data set can be read");
+    int readable = read_set(name, &s);
+    CHECK(readable);
+    if (!readable)
         return;
-    }
     lw_problem problem = {.n = s.n_parameters, .evaluate = evaluate, .user = &s};
     lw_fit_control control = lw_fit_control_defaults();
     control.iterations_most = 500;
