@@ -9,7 +9,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum { REFLECTIONS_MOST = 5000, POLL_EVERY = 20000 };
+enum { REFLECTIONS_MOST = 5000, POLL_EVERY = 4096 };
 
 static const double RADIAN = 180.0 / 3.14159265358979323846;
 

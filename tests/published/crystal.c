@@ -439,6 +439,67 @@ static void check_refusals(lw_engine *engine)
     lw_arena_end(&arena);
 }
 
+/* An allocator that refuses its n-th request, and counts what is out. */
+typedef struct miser {
+    int left;
+    size_t out;
+} miser;
+
+static void *miserly(void *user, void *block, size_t old_size, size_t new_size)
+{
+    miser *m = user;
+    if (new_size > old_size && m->left-- <= 0)
+        return NULL;
+    m->out = m->out - old_size + new_size;
+    if (new_size == 0) {
+        free(block);
+        return NULL;
+    }
+    return realloc(block, new_size);
+}
+
+static bool always(void *user)
+{
+    (void)user;
+    return true;
+}
+
+static void check_refused_memory(void)
+{
+    lw_material m = settled(2, (lw_cell){.a = 0.8, .b = 1, .c = 1.2, .alpha = 91, .beta = 92, .gamma = 93});
+    lw_status status = LW_OUT_OF_MEMORY;
+    int tries = 0;
+    for (; tries < 40 && status == LW_OUT_OF_MEMORY; tries++) {
+        lw_engine engine;
+        lw_arena arena;
+        lw_error err = LW_ERROR_NONE;
+        lw_reflection *line;
+        size_t n;
+        miser purse = {.left = tries};
+        lw_engine_begin(&engine);
+        engine.allocator = (lw_allocator){miserly, &purse};
+        lw_arena_begin(&arena, &engine);
+        status = lw_reflections(&m, WAVELENGTH, 5, 140, &arena, &line, &n, &err);
+        CHECK(status == err.status && (status == LW_OK) == (n > 1000));
+        lw_arena_end(&arena);
+        lw_engine_end(&engine);
+        CHECK(purse.out == 0);
+    }
+    CHECK(status == LW_OK && tries > 3);
+    /* A user who wants to stop. */
+    lw_engine engine;
+    lw_arena arena;
+    lw_error err = LW_ERROR_NONE;
+    lw_reflection *line;
+    size_t n;
+    lw_engine_begin(&engine);
+    engine.cancelled = always;
+    lw_arena_begin(&arena, &engine);
+    CHECK(lw_reflections(&m, WAVELENGTH, 5, 140, &arena, &line, &n, &err) == LW_CANCELLED && n == 0);
+    lw_arena_end(&arena);
+    lw_engine_end(&engine);
+}
+
 int main(void)
 {
     lw_engine engine;
@@ -449,6 +510,7 @@ int main(void)
     check_cell_geometry();
     check_symbols();
     check_refusals(&engine);
+    check_refused_memory();
     lw_engine_end(&engine);
     return lw_checks_end();
 }

@@ -3,6 +3,7 @@
  * H, H = (h2k2 + h2l2 + k2l2)/(h2 + k2 + l2)^2 (Nye 1957, ch. VIII) and the constants of each row. */
 #include "check.h"
 #include "physics/elasticity.h"
+#include "physics/space_group.h"
 
 static lw_material of(int space_group, const char *setting, lw_cell cell)
 {
@@ -136,6 +137,97 @@ static void check_uniaxial(void)
     CHECK_NEAR(with, 1 / inverse, 1e-9);
 }
 
+/* Equivalent planes must have equal moduli, in every symmetry class that has its own set of constants:
+ * this holds each relation between constants, and the axes, against the operations of the group. */
+static void check_classes(void)
+{
+    static const struct {
+        int group;
+        const char *setting;
+        lw_cell cell;
+        const char *names[14];
+        double values[14];
+    } row[] = {
+        {14,
+         "b1",
+         {.a = 0.51, .b = 0.52, .c = 0.53, .beta = 99},
+         {"c11", "c12", "c13", "c15", "c22", "c23", "c25", "c33", "c35", "c44", "c46", "c55", "c66"},
+         {300, 90, 70, 21, 280, 85, -13, 250, 17, 90, 11, 80, 100}},
+        {14,
+         "c1",
+         {.a = 0.51, .b = 0.52, .c = 0.53, .gamma = 99},
+         {"c11", "c12", "c13", "c16", "c22", "c23", "c26", "c33", "c36", "c44", "c45", "c55", "c66"},
+         {300, 90, 70, 21, 280, 85, -13, 250, 17, 90, 11, 80, 100}},
+        {14,
+         "a1",
+         {.a = 0.51, .b = 0.52, .c = 0.53, .alpha = 99},
+         {"c11", "c12", "c13", "c14", "c22", "c23", "c24", "c33", "c34", "c44", "c55", "c56", "c66"},
+         {300, 90, 70, 21, 280, 85, -13, 250, 17, 90, 80, 11, 100}},
+        {62,
+         NULL,
+         {.a = 0.57, .b = 0.49, .c = 0.79},
+         {"c11", "c12", "c13", "c22", "c23", "c33", "c44", "c55", "c66"},
+         {300, 90, 70, 280, 85, 250, 90, 80, 100}},
+        {88,
+         NULL,
+         {.a = 0.52, .c = 1.13},
+         {"c11", "c12", "c13", "c16", "c33", "c44", "c66"},
+         {170, 60, 45, -17, 130, 33, 45}},
+        {136,
+         NULL,
+         {.a = 0.46, .c = 0.3},
+         {"c11", "c12", "c13", "c33", "c44", "c66"},
+         {268, 175, 147, 484, 124, 190}},
+        {148,
+         NULL,
+         {.a = 0.48, .c = 1.6},
+         {"c11", "c12", "c13", "c14", "c15", "c33", "c44"},
+         {200, 70, 57, -20, 14, 113, 40}},
+        {162,
+         NULL,
+         {.a = 0.48, .c = 0.9},
+         {"c11", "c12", "c13", "c15", "c33", "c44"},
+         {200, 70, 57, 20, 113, 40}},
+        {164,
+         NULL,
+         {.a = 0.48, .c = 0.9},
+         {"c11", "c12", "c13", "c14", "c33", "c44"},
+         {200, 70, 57, 20, 113, 40}},
+        {167,
+         "R",
+         {.a = 0.513, .alpha = 55.3},
+         {"c11", "c12", "c13", "c14", "c33", "c44"},
+         {497, 163, 116, -22, 501, 147}},
+        {176, NULL, {.a = 0.94, .c = 0.69}, {"c11", "c12", "c13", "c33", "c44"}, {140, 13, 69, 180, 36}},
+        {205, NULL, {.a = 0.54}, {"c11", "c12", "c44"}, {380, 45, 110}}};
+    static const int plane[3][3] = {{1, 2, 3}, {2, -1, 1}, {0, 1, 2}};
+    for (size_t i = 0; i < sizeof row / sizeof row[0]; i++) {
+        lw_material m = of(row[i].group, row[i].setting, row[i].cell);
+        lw_error err = LW_ERROR_NONE;
+        int n = 0;
+        while (row[i].names[n] != NULL)
+            n++;
+        CHECK(give(&m, row[i].names, row[i].values, n, &err) == LW_OK);
+        if (err.status != LW_OK)
+            fprintf(stderr, "%s\n", err.message);
+        static lw_operations operations;
+        CHECK(lw_space_group_operations(m.hall_number, &operations, &err) == LW_OK);
+        double largest = 0;
+        for (int p = 0; p < 3; p++) {
+            double first = young(&m, plane[p][0], plane[p][1], plane[p][2]);
+            for (int op = 0; op < operations.n; op++) {
+                int h[3];
+                for (int j = 0; j < 3; j++)
+                    h[j] = plane[p][0] * operations.rotation[op][0][j] +
+                           plane[p][1] * operations.rotation[op][1][j] +
+                           plane[p][2] * operations.rotation[op][2][j];
+                largest = fmax(largest, fabs(young(&m, h[0], h[1], h[2]) - first));
+            }
+        }
+        CHECK_NEAR(largest, 0, 1e-8);
+    }
+}
+
 static void check_refusals(void)
 {
     lw_material m = of(225, NULL, (lw_cell){.a = 0.4});
@@ -167,6 +259,7 @@ int main(void)
     check_cubic();
     check_isotropic();
     check_uniaxial();
+    check_classes();
     check_refusals();
     return lw_checks_end();
 }
