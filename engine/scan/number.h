@@ -11,8 +11,12 @@
 #include <stdint.h>
 #include <string.h>
 
-/* Zero bytes that must follow any text handed to these functions: they look eight bytes ahead. */
-#define LW_NUMBER_SPARE 16
+#ifdef __SSE2__
+#include <emmintrin.h>
+#endif
+
+/* Zero bytes that must follow any text handed to these functions: they look up to 64 bytes ahead. */
+#define LW_NUMBER_SPARE 80
 
 /* Powers of ten that are exact as double (to 10^22) and as integer (to 10^8). */
 extern const double lw_power_of_ten[23];
@@ -52,6 +56,74 @@ static inline unsigned lw_eight_digits(const char *s, uint64_t *digits)
     *digits = sum;
     return n;
 #endif
+}
+
+/* Where the bytes that are not digits stand among the next 64: bit i for s[i]. With it a whole row is cut into
+ * its numbers without waiting for the end of one to find the next. */
+static inline uint64_t lw_not_digits(const char *s)
+{
+    uint64_t mask = 0;
+#ifdef __SSE2__
+    const __m128i shift = _mm_set1_epi8((char)(0x80 + '0')), nine = _mm_set1_epi8((char)(0x80 + 9));
+    for (int i = 0; i < 4; i++) {
+        __m128i v = _mm_loadu_si128((const __m128i *)(const void *)(s + 16 * i));
+        /* less the digit nought, as signed bytes: digits are the ten lowest values */
+        mask |= (uint64_t)(unsigned)_mm_movemask_epi8(_mm_cmpgt_epi8(_mm_sub_epi8(v, shift), nine)) << (16 * i);
+    }
+#else
+    for (unsigned i = 0; i < 64; i++)
+        mask |= (uint64_t)((unsigned char)(s[i] - '0') > 9) << i;
+#endif
+    return mask;
+}
+
+/* Value of the 1 to 8 digits at s. */
+static inline uint64_t lw_some_digits(const char *s, unsigned n)
+{
+#if defined(__BYTE_ORDER__) && __BYTE_ORDER__ == __ORDER_LITTLE_ENDIAN__
+    uint64_t w;
+    memcpy(&w, s, 8);
+    w = (w ^ 0x3030303030303030u) << (64 - 8 * n);
+    w = w * 10 + (w >> 8);
+    return ((w & 0x000000FF000000FFu) * 0x000F424000000064u + (w >> 16 & 0x000000FF000000FFu) * 0x0000271000000001u) >>
+           32;
+#else
+    uint64_t sum = 0;
+    for (unsigned i = 0; i < n; i++)
+        sum = sum * 10 + (uint64_t)(s[i] - '0');
+    return sum;
+#endif
+}
+
+/* Reads a plain number (1 to 8 digits, perhaps a mark and 1 to 8 more) of a row of at most 64 bytes.
+ * Given:  row   start of the row
+ *         mask  of lw_not_digits(row), with no bit set below *at
+ *         at    place in the row
+ * Returned: *at and mask moved behind the number. False, with nothing promised about them, if the number is
+ * not that plain. */
+static inline bool lw_plain_number(const char *row, uint64_t *mask, unsigned *at, char mark, double *value)
+{
+    if (*mask == 0)
+        return false;
+    unsigned stop = (unsigned)__builtin_ctzll(*mask), whole = stop - *at;
+    if (whole - 1 > 7)
+        return false;
+    uint64_t mantissa = lw_some_digits(row + *at, whole);
+    if (row[stop] != mark) {
+        *value = (double)(int64_t)mantissa;
+        *at = stop;
+        return true;
+    }
+    *mask &= *mask - 1;
+    if (*mask == 0)
+        return false;
+    unsigned end = (unsigned)__builtin_ctzll(*mask), fraction = end - stop - 1;
+    if (fraction - 1 > 7)
+        return false;
+    mantissa = mantissa * lw_whole_power_of_ten[fraction] + lw_some_digits(row + stop + 1, fraction);
+    *value = (double)(int64_t)mantissa / lw_power_of_ten[fraction];
+    *at = end;
+    return mantissa < (uint64_t)1 << 53;
 }
 
 /* Reads the number at s; see lw_number_slow(). */

@@ -185,19 +185,17 @@ static line_kind settle_form(text *t, const char *p, const char *eol, lw_error *
         t->mark = comma ? ',' : '.';
     }
     unsigned columns = 0;
-    const char *from, *to, *first = p;
-    while (next_field(t->separator, &p, eol, &from, &to))
-        columns++;
-    if (columns < 2) {
-        next_field(t->separator, &first, eol, &from, &to);
-        if (!is_number(from, to, t->mark)) {
-            char word[32];
+    const char *from, *to;
+    while (next_field(t->separator, &p, eol, &from, &to)) {
+        char word[32];
+        if (columns == 0 && !is_number(from, to, t->mark) && !is_not_finite(from, to))
             return refuse(t, err, "a scan has rows of 2theta, counts and perhaps sigma; put # before other lines",
                           "'%s' is not a number", shown(from, to, word));
-        }
+        columns++;
+    }
+    if (columns < 2)
         return refuse(t, err, "write 2theta (degrees) and counts side by side, separated by blanks, commas or semicolons",
                       "one column only: an intensity without its angle, or an angle without its intensity");
-    }
     if (columns > COLUMNS_MOST)
         return refuse(t, err,
                       t->separator == ',' ? "keep 2theta, counts and sigma; if the comma is the decimal mark, separate "
@@ -250,7 +248,7 @@ static line_kind read_line(text *t, const char *p, double row[COLUMNS_MOST], con
     if (p >= eol || is_remark(*p))
         return LINE_BARE;
     for (const char *q = p + 1; q < eol; q++)
-        if ((*q == '#' || *q == '!') && (is_blank(q[-1]) || q[-1] == t->separator)) {
+        if ((*q == '#' || *q == '!') && is_blank(q[-1])) {
             eol = q;
             break;
         }
@@ -307,6 +305,30 @@ static inline const char *gap(const char *p, char separator)
     return q;
 }
 
+/* Reads one row of plain numbers with a single separator (or blanks) between them. Returns the start of the next
+ * line; NULL if the row is anything else. */
+static inline const char *plain_row(const char *p, double *const column[COLUMNS_MOST], size_t i, unsigned columns,
+                                    char separator, char mark)
+{
+    uint64_t mask = lw_not_digits(p);
+    unsigned at = 0;
+    for (unsigned k = 0; k < columns; k++) {
+        if (k > 0) {
+            if (separator == ' ' ? p[at] != ' ' && p[at] != '\t' : p[at] != separator)
+                return NULL;
+            for (at++; p[at] == ' ' || p[at] == '\t'; at++)
+                ;
+            if (at > 63)
+                return NULL;
+            mask &= ~(uint64_t)0 << at;
+        }
+        if (!lw_plain_number(p, &mask, &at, mark, &column[k][i]))
+            return NULL;
+    }
+    at += p[at] == '\r';
+    return p[at] == '\n' ? p + at + 1 : NULL;
+}
+
 /* Reads clean rows from p on, until one is not clean or `most` are read; *n counts them. The digest is
  * carried on alongside, a block whenever the rows have passed one: hashing waits for its own results, and
  * the processor reads the next rows meanwhile. Returns the start of the first line that was not read. */
@@ -322,19 +344,22 @@ read_clean(const text *t, const char *p, size_t most, double *column[COLUMNS_MOS
     double *x = column[0], *y = column[1], *sigma = column[2];
     char mark = t->mark;
     for (size_t stop = i + most; i < stop && p < end; i++) {
-        const char *q = p;
-        while (*q == ' ' || *q == '\t')
-            q++;
-        q = lw_number(q, mark, &x[i]);
-        if (q == NULL || (q = gap(q, separator)) == NULL || (q = lw_number(q, mark, &y[i])) == NULL)
-            break;
-        if (columns == 3 && ((q = gap(q, separator)) == NULL || (q = lw_number(q, mark, &sigma[i])) == NULL))
-            break;
-        while (is_blank(*q))
-            q++;
-        if (*q != '\n')
-            break;
-        p = q + 1;
+        const char *q = plain_row(p, column, i, columns, separator, mark);
+        if (q == NULL) {
+            q = p;
+            while (*q == ' ' || *q == '\t')
+                q++;
+            q = lw_number(q, mark, &x[i]);
+            if (q == NULL || (q = gap(q, separator)) == NULL || (q = lw_number(q, mark, &y[i])) == NULL)
+                break;
+            if (columns == 3 && ((q = gap(q, separator)) == NULL || (q = lw_number(q, mark, &sigma[i])) == NULL))
+                break;
+            while (is_blank(*q))
+                q++;
+            if (*q++ != '\n')
+                break;
+        }
+        p = q;
         if (hash != NULL)
             for (; block + 64 <= p; block += 64)
                 lw_sha256_add(hash, block, 64);
@@ -437,8 +462,14 @@ static const char *gather_header(const text *t, lw_arena *arena, lw_error *err)
 static size_t lines_at_most(const lw_content *content)
 {
     size_t n = 1;
-    for (size_t i = 0; i < content->size; i++)
-        n += content->bytes[i] == '\n';
+    for (size_t from = 0; from < content->size; from += 128) {
+        /* a byte can't overflow in 128 steps, and bytes are what the compiler counts fastest */
+        size_t to = content->size - from < 128 ? content->size : from + 128;
+        unsigned char some = 0;
+        for (size_t i = from; i < to; i++)
+            some = (unsigned char)(some + (content->bytes[i] == '\n'));
+        n += some;
+    }
     return n;
 }
 
