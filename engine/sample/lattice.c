@@ -58,6 +58,27 @@ typedef struct positions {
     const lw_aberration *displacement; /* refined, or NULL */
 } positions;
 
+static double radius_of(const positions *m)
+{
+    return m->profiles->calibration->aberrations.radius_mm;
+}
+
+/* Shift at a true 2theta by the calibration and by this specimen's displacement (last of p), and its
+ * derivative to 2theta by a central difference: without it, a short range converges slowly. */
+static double shift_at(const positions *m, const double *p, double two_theta, double *derivative)
+{
+    static const double step = 0.01;
+    double at[3];
+    for (int i = 0; i < 3; i++) {
+        double x = two_theta + (i - 1) * step;
+        at[i] = lw_position_shift(m->profiles, m->displacement, x);
+        if (m->displacement != NULL)
+            at[i] += p[m->free.n] * m->displacement->slope(x, radius_of(m));
+    }
+    *derivative = (at[2] - at[0]) / (2 * step);
+    return at[1];
+}
+
 static void model(void *user, const double *p, double *value, double *slopes, double *x_slope)
 {
     positions *m = user;
@@ -73,18 +94,16 @@ static void model(void *user, const double *p, double *value, double *slopes, do
             continue;
         }
         double theta = asin(sine) / RADIAN, two_theta = 2 * theta;
-        value[i] = two_theta + lw_position_shift(m->profiles, m->displacement, two_theta);
+        double d_shift, shift = shift_at(m, p, two_theta, &d_shift);
+        value[i] = two_theta + shift;
         lw_cell_s_slopes(&m->cell, r->h, r->k, r->l, d);
-        double per_s = 1 / lw_position_s_slope(s, theta);
+        double per_s = (1 + d_shift) / lw_position_s_slope(s, theta);
         for (size_t j = 0; j < n_free; j++)
             for (int k = 0; k < 6; k++)
                 if (m->free.moves[j][k])
                     slopes[i * columns + j] += per_s * d[k];
-        if (m->displacement != NULL) {
-            double slope = m->displacement->slope(two_theta, m->profiles->calibration->aberrations.radius_mm);
-            value[i] += p[n_free] * slope;
-            slopes[i * columns + n_free] = slope;
-        }
+        if (m->displacement != NULL)
+            slopes[i * columns + n_free] = m->displacement->slope(two_theta, radius_of(m));
     }
 }
 
