@@ -51,6 +51,19 @@ static void check_table(void)
             CHECK_NEAR(constant(shape[s], false, -l, h, -k), want[s][0], tolerance);
         }
     }
+    /* The octahedron to nine places: common volumes by half-space intersection and convex hull (Qhull) at
+     * 720 nodes, K_w and K_beta in the order of the rows above. */
+    static const double octahedron[][2] = {{0.815105896, 1.100642416}, {0.861277706, 1.037695622},
+                                           {0.935394537, 1.143821152}, {0.870870737, 1.107500068},
+                                           {0.905665469, 1.106056332}, {0.915310708, 1.118539041},
+                                           {0.855625223, 1.113771816}, {0.886280854, 1.121135726}};
+    for (size_t i = 0; i < sizeof row / sizeof row[0]; i++) {
+        CHECK_NEAR(constant(LW_SHAPE_OCTAHEDRON, false, row[i].h, row[i].k, row[i].l), octahedron[i][0],
+                   2e-9);
+        CHECK_NEAR(constant(LW_SHAPE_OCTAHEDRON, true, row[i].h, row[i].k, row[i].l), octahedron[i][1], 2e-9);
+    }
+    /* Shifted along a fourfold axis it keeps its shape, A = (1 - L/2r)^3, so K_beta = (4/3)^(1/3). */
+    CHECK_NEAR(constant(LW_SHAPE_OCTAHEDRON, true, 2, 0, 0), cbrt(4.0 / 3), 1e-14);
     /* Column of one length (cube 100): FWHM 0.88589294 from sinc^2 = 1/2. */
     CHECK_NEAR(constant(LW_SHAPE_CUBE, false, 1, 0, 0), 0.88589294, 1e-8);
 }
