@@ -128,6 +128,21 @@ static void check_counted(void)
     }
 }
 
+/* The quadrature by pieces against Simpson's rule on 20000 even steps to the longest column of an
+ * octahedron |x| + |y| + |z| < r along 311, 2 r sqrt(11)/(3 + 1 + 1): error of order step^4. */
+static void check_pieces(void)
+{
+    enum { N = 20000 };
+    double sum = 0;
+    const double step = 2 * cbrt(0.75) * sqrt(11.0) / 5 / N;
+    for (int i = 0; i <= N; i++)
+        sum += (i == 0 || i == N ? 1
+                : i % 2 == 1     ? 4
+                                 : 2) *
+               step / 3 * lw_shape_common_volume(LW_SHAPE_OCTAHEDRON, 3, 1, 1, i * step);
+    CHECK_NEAR(constant(LW_SHAPE_OCTAHEDRON, true, 3, 1, 1), 1 / (2 * sum), 1e-11);
+}
+
 static void check_columns_and_refusals(void)
 {
     double K;
@@ -145,6 +160,7 @@ int main(void)
     check_table();
     check_sphere();
     check_counted();
+    check_pieces();
     check_columns_and_refusals();
     return lw_checks_end();
 }
