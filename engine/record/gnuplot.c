@@ -314,7 +314,7 @@ static void panel(lw_text *out, const lw_figure *figure, const lw_drawing *drawi
     axis_label(out, &figure->axis[p == 0 ? LW_AXIS_Y : LW_AXIS_LOWER_Y], &l->y[p], l, 20,
                (1 - (l->top[p] + l->bottom[p]) / 2) * l->height, true);
     if (last)
-        axis_label(out, &figure->axis[LW_AXIS_X], &l->x, l, (l->left + l->right) / 2 * l->width, l->height - 17, false);
+        axis_label(out, &figure->axis[LW_AXIS_X], &l->x, l, (l->left + l->right) / 2 * l->width, l->height - 15, false);
     notes(out, figure, p, l);
     if (p == 0) {
         legend(out, figure, l);

@@ -208,7 +208,7 @@ static lw_status read_value(lw_node *parent, const char *name, json_t *value, in
     lw_status status = LW_OK;
     lw_quantity q;
     if (depth > DEPTH_MOST)
-        return lw_fail(err, LW_BAD_DATA, "check that this is a record", "more than %d levels of nesting", DEPTH_MOST);
+        return LW_BAD_DATA; /* the only way to it here; lw_json_read words it */
     if (lw_engine_poll(parent->arena->engine, err) != LW_OK)
         return LW_CANCELLED;
     switch (json_typeof(value)) {
@@ -279,6 +279,9 @@ lw_status lw_json_read(lw_arena *arena, const char *json, size_t size, const cha
         status = LW_OUT_OF_MEMORY;
     else
         status = read_object(*root, value, 0, err);
+    if (status == LW_BAD_DATA)
+        lw_fail_at(err, LW_BAD_DATA, name, 0, "check that this is a record", "more than %d levels of nesting",
+                   DEPTH_MOST);
     json_decref(value);
     return status;
 }

@@ -197,7 +197,7 @@ lw_layout lw_layout_of(const lw_figure *figure, double width, double height, boo
             l.legend_rows++;
         }
         l.top[0] = 1 - (14 + LW_LEGEND_ROW_PX * l.legend_rows + (title ? TITLE_PX : 0)) / height;
-        l.bottom[0] = 66 / height;
+        l.bottom[0] = 70 / height;
         if (l.panels == 2) {
             double tall = l.top[0] - l.bottom[0];
             l.bottom[1] = l.bottom[0];

@@ -212,7 +212,7 @@ lw_status lw_report_figure(lw_report *report, const lw_figure *figure, lw_error 
     } else {
         char reason[800];
         lw_error_text(&fault, reason, sizeof reason);
-        wrap(&report->body, ">\n<p class=\"missing\">This figure couldn't be drawn: ", reason, "</p>\n");
+        wrap(&report->body, ">\n<p class=\"missing\">This figure couldn&#39;t be drawn: ", reason, "</p>\n");
         if (status == LW_IO && report->warning == NULL)
             report->warning = lw_arena_text(&report->arena, reason, err);
     }
