@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The common volume A(L) of each shape has a closed form, a polynomial of degree 3 in pieces. The line
- * of a crystallite is the cosine transform of A, its integral breadth 1/(2 int A), its FWHM a root. */
+/* The common volume A(L) of each shape has a closed form, one polynomial of degree 3 up to the longest
+ * column. The line of a crystallite is the cosine transform of A, its integral breadth 1/(2 int A), its
+ * FWHM a root. */
 #include "physics/scherrer.h"
 
 #include <math.h>
@@ -10,15 +11,12 @@ static const double PI = 3.14159265358979323846;
 
 const char *const lw_shape_names[] = {"column", "sphere", "cube", "tetrahedron", "octahedron", NULL};
 
-enum { CUTS_MOST = 20 };
-
-/* A body of unit volume with its direction: what A(L) needs, and where its pieces join. */
+/* A body of unit volume with its direction: what A(L) needs. */
 typedef struct body {
     lw_shape shape;
-    double u[4];           /* |direction cosines| (cube), |cosines to the four {111} normals| (others) */
-    double extent;         /* edge, diameter or distance between opposite faces at unit volume */
-    double cut[CUTS_MOST]; /* ends of the pieces, ascending, the last one is the longest column */
-    int cuts;
+    double u[4];   /* |direction cosines| (cube), |cosines to the four {111} normals| (octahedron) */
+    double extent; /* edge, diameter or distance between opposite faces at unit volume */
+    double end;    /* longest column along the direction */
 } body;
 
 /* Volume of {|y_i| <= w_i, |y_1 + y_2 + y_3| <= w_4}: the part of the box below a plane y_1 + y_2 + y_3 = t
@@ -40,24 +38,24 @@ static double below(const double w[4], double t)
     return sum / 6;
 }
 
+/* No piece of the polynomial ends before the longest column: the pieces would join where the plane passes a
+ * corner, w_i + w_j = w_k + w_4 or w_i + w_j + w_k = w_4, but the four normals add to 0, and so one of the u
+ * is the sum of the other three, or two make the same sum as the other two. */
 static double slabs(const double w[4])
 {
-    for (int i = 0; i < 4; i++)
-        if (!(w[i] > 0))
-            return 0;
     return below(w, w[3]) - below(w, -w[3]);
 }
 
 static double common(const body *b, double shift)
 {
-    if (!(shift < b->cut[b->cuts - 1]))
+    if (!(shift < b->end))
         return 0;
     double x = shift / b->extent;
     switch (b->shape) {
     case LW_SHAPE_SPHERE: return 1 - 1.5 * x + 0.5 * x * x * x;
     case LW_SHAPE_CUBE: return (1 - x * b->u[0]) * (1 - x * b->u[1]) * (1 - x * b->u[2]);
     case LW_SHAPE_TETRAHEDRON: {
-        double left = 1 - shift / b->cut[0];
+        double left = 1 - shift / b->end;
         return left * left * left;
     }
     case LW_SHAPE_OCTAHEDRON: {
@@ -72,42 +70,11 @@ static double common(const body *b, double shift)
     return NAN;
 }
 
-static void add_cut(body *b, double at, double end)
-{
-    if (!(at > 1e-12 * end && at < end * (1 - 1e-12)) || b->cuts == CUTS_MOST)
-        return;
-    int i = b->cuts++;
-    for (; i > 0 && b->cut[i - 1] > at; i--)
-        b->cut[i] = b->cut[i - 1];
-    b->cut[i] = at;
-}
-
-static void lay_octahedron(body *b)
-{
-    /* Volume of an octahedron of face distance 2r: 4 sqrt(3) r^3. */
-    b->extent = 2 * cbrt(1 / (4 * sqrt(3.0)));
-    double steepest = fmax(fmax(b->u[0], b->u[1]), fmax(b->u[2], b->u[3]));
-    double end = b->extent / steepest;
-    /* The pieces join where the plane passes a corner of the box: +-w_1 +-w_2 +-w_3 = w_4. */
-    for (int corner = 0; corner < 16; corner++) {
-        double at_0 = 0, slope = 0;
-        for (int i = 0; i < 4; i++) {
-            double sign = corner >> i & 1 ? -1 : 1;
-            at_0 += sign;
-            slope += sign * b->u[i];
-        }
-        if (slope != 0)
-            add_cut(b, b->extent * at_0 / slope, end);
-    }
-    b->cut[b->cuts++] = end;
-}
-
 static lw_status lay(lw_shape shape, int h, int k, int l, body *b, lw_error *err)
 {
     *b = (body){.shape = shape};
     if (shape == LW_SHAPE_SPHERE) {
-        b->extent = b->cut[0] = cbrt(6 / PI);
-        b->cuts = 1;
+        b->extent = b->end = cbrt(6 / PI);
         return LW_OK;
     }
     double length = sqrt((double)h * h + (double)k * k + (double)l * l);
@@ -121,8 +88,7 @@ static lw_status lay(lw_shape shape, int h, int k, int l, body *b, lw_error *err
         b->u[1] = fabs(y);
         b->u[2] = fabs(z);
         b->extent = 1;
-        b->cut[0] = 1 / fmax(b->u[0], fmax(b->u[1], b->u[2]));
-        b->cuts = 1;
+        b->end = 1 / fmax(b->u[0], fmax(b->u[1], b->u[2]));
         return LW_OK;
     case LW_SHAPE_TETRAHEDRON: {
         /* The common part is a smaller tetrahedron; its height falls by the sum of the positive cosines.
@@ -131,14 +97,15 @@ static lw_status lay(lw_shape shape, int h, int k, int l, body *b, lw_error *err
         for (int i = 0; i < 4; i++)
             sum += 0.5 * fabs(normal[i]) / sqrt(3.0);
         b->extent = cbrt(6 * sqrt(2.0)) * sqrt(2.0 / 3.0);
-        b->cut[0] = b->extent / sum;
-        b->cuts = 1;
+        b->end = b->extent / sum;
         return LW_OK;
     }
     case LW_SHAPE_OCTAHEDRON:
         for (int i = 0; i < 4; i++)
             b->u[i] = fabs(normal[i]) / sqrt(3.0);
-        lay_octahedron(b);
+        /* Volume of an octahedron of face distance 2r: 4 sqrt(3) r^3. */
+        b->extent = 2 * cbrt(1 / (4 * sqrt(3.0)));
+        b->end = b->extent / fmax(fmax(b->u[0], b->u[1]), fmax(b->u[2], b->u[3]));
         return LW_OK;
     default: break;
     }
@@ -146,7 +113,7 @@ static lw_status lay(lw_shape shape, int h, int k, int l, body *b, lw_error *err
                    "a column length alone says nothing of the crystallite's shape");
 }
 
-/* int over all L of A(L) cos(2 pi s L) = height of the line at s. Gauss-Legendre, 16 nodes a piece: exact
+/* int over all L of A(L) cos(2 pi s L) = height of the line at s. Gauss-Legendre with 16 nodes: exact
  * for the polynomial, and to rounding for the few radians that the cosine turns. */
 static double transform(const body *b, double s)
 {
@@ -156,15 +123,11 @@ static double transform(const body *b, double s)
     static const double weight[8] = {0.1894506104550684963, 0.1826034150449235889, 0.1691565193950025382,
                                      0.1495959888165767321, 0.1246289712555338721, 0.0951585116824927848,
                                      0.0622535239386478929, 0.0271524594117540949};
-    double sum = 0, low = 0;
-    for (int piece = 0; piece < b->cuts; piece++) {
-        double middle = 0.5 * (low + b->cut[piece]), half = 0.5 * (b->cut[piece] - low);
-        for (int i = 0; i < 8; i++) {
-            double left = middle - half * node[i], right = middle + half * node[i];
-            sum += half * weight[i] *
-                   (common(b, left) * cos(2 * PI * s * left) + common(b, right) * cos(2 * PI * s * right));
-        }
-        low = b->cut[piece];
+    double sum = 0, half = 0.5 * b->end;
+    for (int i = 0; i < 8; i++) {
+        double left = half * (1 - node[i]), right = half * (1 + node[i]);
+        sum += half * weight[i] *
+               (common(b, left) * cos(2 * PI * s * left) + common(b, right) * cos(2 * PI * s * right));
     }
     return 2 * sum;
 }
@@ -214,7 +177,7 @@ lw_status lw_shape_columns(lw_shape shape, int h, int k, int l, double *volume_w
     switch (shape) {
     case LW_SHAPE_SPHERE: fall = 1.5 / b.extent; break;
     case LW_SHAPE_CUBE: fall = b.u[0] + b.u[1] + b.u[2]; break;
-    case LW_SHAPE_TETRAHEDRON: fall = 3 / b.cut[0]; break;
+    case LW_SHAPE_TETRAHEDRON: fall = 3 / b.end; break;
     default:
         /* Projected area: each pair of the four pairs of faces (a share of 3/8 of the volume each way). */
         fall = 0.75 * (b.u[0] + b.u[1] + b.u[2] + b.u[3]) / b.extent;

@@ -8,8 +8,7 @@ return {
   title = "Cu Ka1",
   aliases = { "Cu K-alpha1", "copper K-alpha1" },
   hc_ev_angstrom = 12398.419843320,
-  -- Hölzer, Fritsch, Deutsch, Härtwig & Förster (1997) Phys. Rev. A 56, 4554, Table II, the first two lines of the doublet
-  components = {
+  components = { -- Hölzer, Fritsch, Deutsch, Härtwig & Förster (1997) Phys. Rev. A 56, 4554, Table II
     { energy_ev = 8047.8372, width_ev = 2.285, height = 957 },
     { energy_ev = 8045.3672, width_ev = 3.358, height = 90 },
   },

@@ -408,7 +408,10 @@ static void check_refusals(lw_engine *engine)
                {194, {.a = 0.3, .c = 0.5, .gamma = 90}, "does not fit"},
                {62, {.a = 0.3, .b = 0.4, .c = 0.5, .beta = 91}, "does not fit"},
                {1, {.a = 0.3, .b = 0.4, .c = 0.5, .alpha = 150, .beta = 150, .gamma = 150}, "no volume"},
-               {225, {.a = NAN}, "nm"}};
+               {225, {.a = NAN}, "nm"},
+               {166, {.a = 0.4, .c = 1.1, .alpha = 2}, "alpha = 2 degrees"},
+               {225, {.a = 0.4, .u_a = -1e-6}, "uncertainty of a"},
+               {0, {.a = 0.4}, "no space group 0"}};
     for (size_t i = 0; i < sizeof row / sizeof row[0]; i++) {
         lw_material m;
         lw_error err = LW_ERROR_NONE;
@@ -420,6 +423,13 @@ static void check_refusals(lw_engine *engine)
         CHECK_CONTAINS(err.message, row[i].part);
         CHECK(err.remedy[0] != '\0');
     }
+    lw_error mixed = LW_ERROR_NONE;
+    lw_material other = {.name = "it", .space_group = 227, .hall_number = 523, .cell = {.a = 0.4}};
+    CHECK(lw_material_settle(&other, &mixed) == LW_BAD_ARGUMENT);
+    CHECK_CONTAINS(mixed.message, "225"); /* Hall number 523 is Fm-3m */
+    mixed = LW_ERROR_NONE;
+    other.hall_number = 531;
+    CHECK(lw_material_settle(&other, &mixed) == LW_BAD_ARGUMENT);
     lw_material m = settled(2, (lw_cell){.a = 3, .b = 4, .c = 5, .alpha = 91, .beta = 92, .gamma = 93});
     lw_arena arena;
     lw_error err = LW_ERROR_NONE;
@@ -434,6 +444,15 @@ static void check_refusals(lw_engine *engine)
     err = LW_ERROR_NONE;
     CHECK(lw_reflections(&m, 1.5406, 5, 140, &arena, &line, &n, &err) == LW_BAD_ARGUMENT);
     err = LW_ERROR_NONE;
+    other = (lw_material){.name = "it", .space_group = 225, .cell = {.a = 0.4}};
+    CHECK(lw_reflections(&other, WAVELENGTH, 5, 140, &arena, &line, &n, &err) == LW_BAD_ARGUMENT);
+    CHECK_CONTAINS(err.remedy, "settle");
+    err = LW_ERROR_NONE;
+    m.cell = (lw_cell){.a = 60, .b = 60, .c = 60, .alpha = 90, .beta = 90, .gamma = 90};
+    CHECK(lw_reflections(&m, WAVELENGTH, 5, 140, &arena, &line, &n, &err) == LW_BAD_ARGUMENT);
+    CHECK_CONTAINS(err.message, "5000");
+    err = LW_ERROR_NONE;
+    m.cell.a = m.cell.b = m.cell.c = 3;
     CHECK(lw_reflections(&m, WAVELENGTH, 0.1, 0.2, &arena, &line, &n, &err) == LW_OK &&
           n == 0); /* none there */
     lw_arena_end(&arena);

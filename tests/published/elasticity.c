@@ -249,9 +249,20 @@ static void check_refusals(void)
     err = LW_ERROR_NONE;
     CHECK(lw_stiffness_set(&m, "c77", 1, &err) == LW_BAD_ARGUMENT);
     err = LW_ERROR_NONE;
+    CHECK(lw_stiffness_set(&m, "c11", 246.5e9, &err) == LW_BAD_ARGUMENT); /* Pa by mistake */
+    CHECK_CONTAINS(err.remedy, "GPa");
+    err = LW_ERROR_NONE;
+    m = of(225, NULL, (lw_cell){.a = 0.4});
+    static const char *const shear[] = {"c11", "c12", "c44", "c14"};
+    CHECK(give(&m, shear, (const double[]){246.5, 147.3, 124.7, 9}, 4, &err) == LW_BAD_ARGUMENT);
+    CHECK_CONTAINS(err.message, "c14 must be 0");
+    err = LW_ERROR_NONE;
     m = of(225, NULL, (lw_cell){.a = 0.4});
     CHECK(give(&m, CUBIC, (const double[]){246.5, 147.3, 124.7}, 3, &err) == LW_OK);
     CHECK(lw_young_modulus(&m, 0, 0, 0, &gpa, &err) == LW_BAD_ARGUMENT);
+    err = LW_ERROR_NONE;
+    m.stiffness_gpa[3][3] = -1;
+    CHECK(lw_young_modulus(&m, 1, 0, 0, &gpa, &err) == LW_BAD_ARGUMENT);
 }
 
 int main(void)

@@ -153,6 +153,17 @@ static void check_refusals(lua_State *L)
     err = LW_ERROR_NONE;
     CHECK(lw_radiation_add_energy(&other, 8047, 2, 957, 0.5, &err) == LW_BAD_ARGUMENT);
     err = LW_ERROR_NONE;
+    CHECK(lw_radiation_add_energy(&other, -8047, 2, 957, 0, &err) == LW_BAD_ARGUMENT);
+    err = LW_ERROR_NONE;
+    other = cu;
+    other.k_beta_nm = 1.39;
+    CHECK(lw_radiation_settle(&other, &err) == LW_BAD_ARGUMENT);
+    err = LW_ERROR_NONE;
+    other = cu;
+    other.component[1].wavelength_nm = 1.54;
+    CHECK(lw_radiation_settle(&other, &err) == LW_BAD_ARGUMENT);
+    err = LW_ERROR_NONE;
+    CHECK(lw_radiation_height(&r, 0.15405929) == 0); /* an ideal line has no height to speak of */
     memset(&other, 0, sizeof other);
     CHECK(lw_radiation_settle(&other, &err) == LW_BAD_ARGUMENT);
     err = LW_ERROR_NONE;

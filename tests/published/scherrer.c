@@ -152,6 +152,9 @@ static void check_columns_and_refusals(void)
     CHECK_CONTAINS(err.remedy, "integral breadth");
     err = LW_ERROR_NONE;
     CHECK(lw_scherrer_constant(LW_SHAPE_CUBE, true, 0, 0, 0, &K, &err) == LW_BAD_ARGUMENT);
+    err = LW_ERROR_NONE;
+    CHECK(lw_shape_columns(LW_SHAPE_COLUMN, 1, 0, 0, &K, &K, &err) == LW_NOT_SUPPORTED);
+    CHECK(isnan(lw_shape_common_volume(LW_SHAPE_COLUMN, 1, 0, 0, 0.1)));
     CHECK(strcmp(lw_shape_names[LW_SHAPE_OCTAHEDRON], "octahedron") == 0);
 }
 
