@@ -68,7 +68,8 @@ lw_status lw_breadths_gather(const lw_profiles *profiles, lw_arena *arena, lw_br
     for (size_t i = 0; i < all; i++) {
         const lw_profile *profile = &profiles->profile[i];
         double beta = estimate(profile);
-        if (beta < 0 || !(covariance_of(profiles, profile, profile) > 0)) {
+        double variance = covariance_of(profiles, profile, profile);
+        if (!(beta >= 0) || !isfinite(beta) || !(variance > 0) || !isfinite(variance)) {
             breadths->n_left_out++;
             continue;
         }
@@ -171,15 +172,19 @@ double lw_form_breadth(lw_form form, const double p[2], double s, double slopes[
 
 typedef struct model_of {
     const lw_breadths *breadths;
-    const double *scale;
     lw_form form;
 } model_of;
+
+static double scale_of(const lw_breadths *breadths, size_t i)
+{
+    return breadths->scale != NULL ? breadths->scale[i] : 1;
+}
 
 static void model(void *user, const double *p, double *value, double *slopes, double *x_slope)
 {
     const model_of *m = user;
     for (size_t i = 0; i < m->breadths->n; i++) {
-        double scale = m->scale != NULL ? m->scale[i] : 1;
+        double scale = scale_of(m->breadths, i);
         value[i] = lw_form_breadth(m->form, p, m->breadths->s[i] * scale, slopes + 2 * i, &x_slope[i]);
         x_slope[i] *= scale;
     }
@@ -192,7 +197,7 @@ static void start(const model_of *m, double p[2])
     const lw_breadths *b = m->breadths;
     double n = (double)b->n, sx = 0, sy = 0, sxx = 0, sxy = 0, mean = 0, mean_s = 0;
     for (size_t i = 0; i < b->n; i++) {
-        double s = b->s[i] * (m->scale != NULL ? m->scale[i] : 1), beta = b->beta[i], x, y;
+        double s = b->s[i] * scale_of(b, i), beta = b->beta[i], x, y;
         if (m->form == LW_FORM_LORENTZIAN) {
             x = 2 * s;
             y = beta;
@@ -221,8 +226,7 @@ static void start(const model_of *m, double p[2])
     bool exists = isfinite(p[0]) && isfinite(p[1]);
     for (size_t i = 0; exists && i < b->n; i++) {
         double unused[3];
-        exists = isfinite(
-            lw_form_breadth(m->form, p, b->s[i] * (m->scale != NULL ? m->scale[i] : 1), unused, &unused[2]));
+        exists = isfinite(lw_form_breadth(m->form, p, b->s[i] * scale_of(b, i), unused, &unused[2]));
     }
     if (!exists || (m->form == LW_FORM_MIXED && (p[0] <= 0 || p[1] <= 0))) {
         double half = 0.5 * fmax(mean, 1e-6);
@@ -252,10 +256,10 @@ static void read_parameters(lw_breadth_fit *fit)
     }
 }
 
-lw_status lw_breadths_fit(const lw_breadths *breadths, lw_form form, const double *scale, lw_arena *arena,
-                          lw_breadth_fit *fit, lw_error *err)
+lw_status lw_breadths_fit(const lw_breadths *breadths, lw_form form, lw_arena *arena, lw_breadth_fit *fit,
+                          lw_error *err)
 {
-    model_of m = {.breadths = breadths, .scale = scale, .form = form};
+    model_of m = {.breadths = breadths, .form = form};
     *fit = (lw_breadth_fit){.form = form};
     lw_generalised problem = {.n = breadths->n,
                               .m = 2,

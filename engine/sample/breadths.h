@@ -14,6 +14,7 @@ typedef struct lw_breadths {
     double *s;                  /* [n] nm^-1 */
     double *beta;               /* [n] nm^-1, the best estimate also where the profile reports a limit */
     double *covariance;         /* [n*n] nm^-2 */
+    const double *scale;        /* [n] factor on s in the share of strain, by direction; NULL = 1 */
     double *s_covariance;       /* [n*n] nm^-2, or NULL if positions have no uncertainty */
     size_t n_left_out;          /* profiles that carry a limit only */
     bool cubic;                 /* of the material: directions are told apart by |h|, |k|, |l| in any order */
@@ -51,20 +52,20 @@ typedef struct lw_breadth_fit {
     lw_generalised_fit fit;
 } lw_breadth_fit;
 
-/* Fits one form. `scale` [n] multiplies s in the strain's share (NULL = 1): for models in which the strain of
- * a line depends on its direction. Status: that of lw_generalised_solve(). */
-lw_status lw_breadths_fit(const lw_breadths *breadths, lw_form form, const double *scale, lw_arena *arena,
-                          lw_breadth_fit *fit, lw_error *err);
+/* Fits one form, with breadths->scale.
+ * Status: that of lw_generalised_solve(). */
+lw_status lw_breadths_fit(const lw_breadths *breadths, lw_form form, lw_arena *arena, lw_breadth_fit *fit,
+                          lw_error *err);
 
-/* sqrt(2/pi): rms strain of a Gaussian distribution of strain over the apparent strain e = beta*(strain)/(2
- * d*) (Stokes & Wilson 1944 Proc. Phys. Soc. 56, 174). */
+/* sqrt(2/pi): rms strain of a Gaussian distribution of strain over the apparent strain e = beta*(strain)/
+ * (2 d*) (Stokes & Wilson 1944 Proc. Phys. Soc. 56, 174). */
 #define LW_RMS_PER_APPARENT 0.79788456080286535588
 
 /* Adds size_volume, strain_apparent, strain_rms, their correlation and the statistics of the fit to a group.
  */
 void lw_breadths_tell(const lw_breadth_fit *fit, lw_node *group, lw_error *err);
-/* Adds the groups `points` (hkl, s, beta, u, line, residual) and `line` (s, beta, u of the line) for a
- * figure. */
+/* Adds the groups `points` (hkl, s, breadth, u, calculated, residual; scaled_s where a scale is set) and
+ * `line` (s, or scaled s, breadth and u of the line) for a figure. */
 void lw_breadths_draw(const lw_breadths *breadths, const lw_breadth_fit *fit, lw_node *group, lw_error *err);
 /* Adds a list `remarks` of sentences about what the fit shows: limits, misfit, directions off the line, a
  * line that carries nearly all the weight, breadths that are not independent. */

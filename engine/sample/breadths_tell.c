@@ -42,6 +42,11 @@ void lw_breadths_tell(const lw_breadth_fit *fit, lw_node *group, lw_error *err)
 void lw_breadths_draw(const lw_breadths *breadths, const lw_breadth_fit *fit, lw_node *group, lw_error *err)
 {
     size_t n = breadths->n;
+    if (group == NULL)
+        return;
+    double *scaled = lw_arena_take(group->arena, n, sizeof *scaled, err);
+    if (scaled == NULL)
+        return;
     lw_node *points = lw_add_group(group, "points", err);
     lw_node *hkl = lw_add_list(points, "hkl", err);
     double most = 0;
@@ -49,9 +54,12 @@ void lw_breadths_draw(const lw_breadths *breadths, const lw_breadth_fit *fit, lw
         const lw_reflection *r = &breadths->profile[i]->line->reflection;
         char text[24];
         lw_add_text(hkl, NULL, lw_hkl_text(r->h, r->k, r->l, text, sizeof text), err);
-        most = fmax(most, breadths->s[i]);
+        scaled[i] = breadths->s[i] * (breadths->scale != NULL ? breadths->scale[i] : 1);
+        most = fmax(most, scaled[i]);
     }
     lw_add_vector(points, "s", breadths->s, n, "nm^-1", err);
+    if (breadths->scale != NULL)
+        lw_add_vector(points, "scaled_s", scaled, n, "nm^-1", err);
     lw_add_vector(points, "breadth", breadths->beta, n, "nm^-1", err);
     lw_add_vector(points, "u", fit->fit.u, n, "nm^-1", err);
     lw_add_vector(points, "calculated", fit->fit.calculated, n, "nm^-1", err);

@@ -9,7 +9,9 @@
 
 #define EIGENVALUE_LEAST 1e-7
 #define ITERATIONS_MOST 100
-#define STEP_ENOUGH 1e-8 /* in u of the parameter; the step is taken all the same, so the answer is better */
+#define STEP_ENOUGH                                                                                          \
+    1e-8 /* in u of the parameter; the step is taken all the same, so the answer is better                   \
+          */
 
 double lw_generalised_p(double chi2, size_t degrees)
 {
@@ -122,7 +124,7 @@ static lw_status whitener(work *w, lw_error *err)
     for (size_t i = 0; i < n; i++) {
         double variance = w->c[i * n + i];
         if (!(variance > 0) || !isfinite(variance))
-            return lw_fail(err, LW_BAD_ARGUMENT, "give every line a standard uncertainty",
+            return lw_fail(err, LW_NOT_SUPPORTED, "give every line a standard uncertainty",
                            "observation %zu of %zu has no uncertainty above 0", i + 1, n);
         w->u[i] = sqrt(variance);
     }

@@ -43,8 +43,8 @@ typedef struct lw_generalised_fit {
 /* Fits. p[m] is the start on entry and the answer on return.
  * Notes:  eigenvectors of the observations' correlation matrix with eigenvalues below 1e-7 of the largest are
  *         left out: they are combinations that a common function of angle fixes, no measurement.
- * Status: LW_BAD_ARGUMENT (a variance that is not above 0, too many parameters); LW_NOT_SUPPORTED (fewer
- *         independent numbers than parameters, or parameters that the observations cannot tell apart;
+ * Status: LW_BAD_ARGUMENT (too many parameters); LW_NOT_SUPPORTED (a variance that is not above 0, fewer
+ *         independent numbers than parameters, or parameters that the observations cannot tell apart:
  *         *weakest, may be NULL, is the one concerned); LW_NO_CONVERGENCE. */
 lw_status lw_generalised_solve(const lw_generalised *problem, lw_arena *arena, double *p,
                                lw_generalised_fit *fit, size_t *weakest, lw_error *err);

@@ -59,7 +59,7 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
     lw_breadth_fit fit;
     lw_status status = lw_breadths_gather(profiles, &arena, &breadths, err);
     if (status == LW_OK)
-        status = lw_breadths_fit(&breadths, LW_FORM_PARABOLIC, NULL, &arena, &fit, err);
+        status = lw_breadths_fit(&breadths, LW_FORM_PARABOLIC, &arena, &fit, err);
     if (status == LW_OK) {
         lw_breadths_tell(&fit, result, err);
         draw(&arena, &breadths, &fit, result, err);

@@ -5,8 +5,9 @@
 #include <stdio.h>
 #include <string.h>
 
-#define SIZE_QUALITATIVE_NM 100.0 /* common practice: beyond 100 to 120 nm a laboratory size is qualitative  \
-                                   */
+#define SIZE_QUALITATIVE_NM                                                                                  \
+    100.0 /* common practice: beyond 100 to 120 nm a laboratory size is qualitative                          \
+           */
 #define OVERLAP_NOTED 0.2
 
 static void say(lw_node *notes, lw_error *err, const char *format, ...) __attribute__((format(printf, 3, 4)));

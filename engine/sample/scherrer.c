@@ -140,7 +140,7 @@ static void remark(const lw_breadths *breadths, const lw_generalised_fit *fit, l
     const char *reason =
         "breadths depend on direction (shape of the crystallites, planar faults, anisotropic "
         "strain) or the instrument's share is wrong";
-    if (lw_breadths_fit(breadths, LW_FORM_LORENTZIAN, NULL, arena, &straight, &none) == LW_OK &&
+    if (lw_breadths_fit(breadths, LW_FORM_LORENTZIAN, arena, &straight, &none) == LW_OK &&
         straight.p[1] > 3 * sqrt(straight.fit.covariance[1][1]))
         reason =
             straight.fit.p < CHANCE_OF_3U

@@ -53,7 +53,7 @@ static lw_status gather(const lw_profiles *profiles, bool gauss, lw_arena *arena
     for (size_t i = 0; i < all; i++) {
         const lw_profile *profile = &profiles->profile[i];
         lw_quantity q = gauss ? profile->gauss_s : profile->lorentz_s;
-        if (q.kind != LW_VALUE || !(q.u > 0))
+        if (q.kind != LW_VALUE || !(q.u > 0) || !isfinite(q.u) || !isfinite(q.value))
             continue;
         out->profile[out->n] = profile;
         out->beta[out->n] = q.value;

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Williamson-Hall: size from the breadth at s = 0, strain from its growth with s. */
+#include "physics/elasticity.h"
 #include "sample/breadths.h"
 #include "sample/method.h"
 
@@ -9,7 +10,11 @@
 
 typedef struct williamson_hall_options {
     int form;
+    int model;
 } williamson_hall_options;
+
+enum { STRAIN, STRESS, ENERGY };
+static const char *const models[] = {"strain", "stress", "energy", NULL};
 
 enum { AUTO, N_FORMS = 3 }; /* choices after "auto" are the first three forms in order */
 static const char *const choices[] = {"auto", "lorentzian", "gaussian", "mixed", NULL};
@@ -21,11 +26,19 @@ static const lw_option options[] = {
      .choices = choices,
      .offset = offsetof(williamson_hall_options, form),
      .help = "how size and strain breadths add; auto fits all three and leads with the lowest chi-square"},
+    {.key = "model",
+     .kind = LW_OPTION_CHOICE,
+     .standard = "strain",
+     .choices = models,
+     .offset = offsetof(williamson_hall_options, model),
+     .help = "what is the same in all directions: the strain, the stress (strain goes with 1/E_hkl) or the "
+             "elastic "
+             "energy density (with its square root); the last two need the material's stiffness"},
     LW_OPTIONS_END};
 
 static void defaults(void *target)
 {
-    *(williamson_hall_options *)target = (williamson_hall_options){.form = AUTO};
+    *(williamson_hall_options *)target = (williamson_hall_options){.form = AUTO, .model = STRAIN};
 }
 
 static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
@@ -77,11 +90,66 @@ static size_t leading(const lw_breadth_fit *fits, const bool *done)
     return best;
 }
 
+/* Factors on s that make the strain of the mean direction (mean of 1/E, or of its root, over the lines) the
+ * parameter of the fit: 1/E_hkl for uniform stress, 1/sqrt(E_hkl) for uniform energy density. *mean receives
+ * the mean that they are relative to. */
+static lw_status scale_by_stiffness(const lw_profiles *profiles, int chosen, lw_breadths *breadths,
+                                    lw_arena *arena, double *mean, lw_error *err)
+{
+    const lw_material *material = profiles->lines->material;
+    if (material == NULL || !material->has_stiffness)
+        return lw_fail(err, LW_NOT_SUPPORTED,
+                       "use model = \"strain\", or give the material's elastic constants",
+                       "model \"%s\" needs a material with stiffness", models[chosen]);
+    double *scale = lw_arena_take(arena, breadths->n, sizeof *scale, err);
+    if (scale == NULL)
+        return LW_OUT_OF_MEMORY;
+    *mean = 0;
+    for (size_t i = 0; i < breadths->n; i++) {
+        const lw_reflection *r = &breadths->profile[i]->line->reflection;
+        double gpa;
+        lw_status status = lw_young_modulus(material, r->h, r->k, r->l, &gpa, err);
+        if (status != LW_OK)
+            return status;
+        scale[i] = chosen == STRESS ? 1 / gpa : 1 / sqrt(gpa);
+        *mean += scale[i] / (double)breadths->n;
+    }
+    for (size_t i = 0; i < breadths->n; i++)
+        scale[i] /= *mean;
+    breadths->scale = scale;
+    return LW_OK;
+}
+
+/* Stress e E, or energy density e^2 E/2, from the strain of the mean direction. */
+static void tell_model(const lw_quantity *strain, int chosen, double mean, lw_node *result, lw_error *err)
+{
+    lw_add_text(result, "model", models[chosen], err);
+    if (chosen == STRAIN)
+        return;
+    double factor =
+        chosen == STRESS ? 1 / mean : 500 * strain->value / (mean * mean); /* 1 GPa = 1000 MJ m^-3 */
+    lw_quantity q = *strain;
+    q.value *= factor;
+    q.u *= chosen == STRESS ? factor : 2 * factor;
+    q.unit = chosen == STRESS ? "GPa" : "MJ m^-3";
+    lw_add_quantity(result, chosen == STRESS ? "stress_apparent" : "energy_density", q,
+                    chosen == STRESS
+                        ? "Apparent stress: the apparent strain of each direction times Young's modulus "
+                          "along it, taken the same in all; strain_apparent is that of the lines' mean "
+                          "1/E."
+                        : "Elastic energy density E e^2/2, taken the same in all directions; "
+                          "strain_apparent is that of the lines' mean 1/sqrt(E).",
+                    err);
+}
+
 static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const williamson_hall_options *given,
                         lw_node *result, lw_error *err)
 {
     lw_breadths breadths;
     lw_status status = lw_breadths_gather(profiles, arena, &breadths, err);
+    double mean = 1;
+    if (status == LW_OK && given->model != STRAIN)
+        status = scale_by_stiffness(profiles, given->model, &breadths, arena, &mean, err);
     if (status != LW_OK)
         return status;
     lw_breadth_fit fits[N_FORMS];
@@ -91,7 +159,7 @@ static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const will
         if (given->form != AUTO && given->form != (int)i + 1)
             continue;
         lw_error each = LW_ERROR_NONE;
-        status = lw_breadths_fit(&breadths, (lw_form)i, NULL, arena, &fits[i], &each);
+        status = lw_breadths_fit(&breadths, (lw_form)i, arena, &fits[i], &each);
         done[i] = status == LW_OK;
         if (status == LW_OUT_OF_MEMORY || status == LW_CANCELLED || status == LW_BAD_ARGUMENT) {
             *err = each;
@@ -115,6 +183,7 @@ static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const will
     }
     lw_breadths_tell(&lead, result, err);
     lw_add_text(result, "form", lw_form_name[best], err);
+    tell_model(&lead.strain_apparent, given->model, mean, result, err);
     if (given->form == AUTO) {
         lw_node *group = lw_add_group(result, "spread_between_forms", err);
         lw_add_quantity(
@@ -164,11 +233,12 @@ const lw_method lw_method_williamson_hall = {
     .purpose = "size from the breadth at s = 0, strain from its growth with s",
     .assumes =
         "Size broadens every line alike and strain in proportion to s, whatever the direction. Breadths of "
-        "a powder do not follow any of the rules of addition exactly, so sizes of 10 % and strains of half "
-        "to double the true ones are usual.",
+        "a powder do not follow any of the rules of addition exactly, so errors of 10 % in size, and "
+        "strains of half to one and a half times the true one, are usual.",
     .source =
         "Williamson & Hall (1953) Acta Metall. 1, 22; Stokes & Wilson (1944) Proc. Phys. Soc. 56, 174; Voigt "
-        "breadth: Langford (1978) J. Appl. Cryst. 11, 10",
+        "breadth: Langford (1978) J. Appl. Cryst. 11, 10; Young's modulus: Nye (1957) Physical Properties of "
+        "Crystals",
     .options = options,
     .options_size = sizeof(williamson_hall_options),
     .defaults = defaults,

@@ -328,6 +328,48 @@ static void directions(void)
     CHECK(hand_list_has(lw_node_get(node, "remarks"), "the 2 orders of direction 100 lie above the line"));
 }
 
+/* Uniform stress and uniform energy density in nickel, C11 246.5, C12 147.3, C44 124.7 GPa: E100 136.31, E110
+ * 232.51, E111 304.03, E311 184.17 GPa (from the compliances, Nye 1957). Breadths made from them give them
+ * back. */
+static void stiffness(void)
+{
+    static const struct {
+        int h, k, l;
+        double gpa;
+    } line[5] = {
+        {1, 1, 1, 304.03}, {2, 0, 0, 136.31}, {2, 2, 0, 232.51}, {3, 1, 1, 184.17}, {2, 2, 2, 304.03}};
+    for (int energy = 0; energy < 2; energy++) {
+        hand_begin(&h, LW_CUBIC, COPPER, CU);
+        const double D = 18, stress = 0.45, density = 1.5e-3; /* GPa */
+        for (int i = 0; i < 5; i++) {
+            double n = line[i].h * line[i].h + line[i].k * line[i].k + line[i].l * line[i].l;
+            double s = sqrt(n) / 0.3615;
+            double e = energy ? sqrt(2 * density / line[i].gpa) : stress / line[i].gpa;
+            hand_line(&h, line[i].h, line[i].k, line[i].l, s, 1 / D + 2 * e * s, 0, 0, 1e-4);
+        }
+        hand_end(&h, 0);
+        int options[2] = {1, 0};
+        lw_error err = LW_ERROR_NONE, settling = LW_ERROR_NONE;
+        CHECK(lw_method_run(&engine, lw_method_named("williamson_hall"), &h.profiles, (int[2]){1, 1},
+                            lw_tree_new(&arena, NULL), &err) == LW_NOT_SUPPORTED); /* no stiffness known */
+        h.material.space_group = 225;
+        CHECK(lw_material_settle(&h.material, &settling) == LW_OK);
+        h.material.has_stiffness = true;
+        for (int i = 0; i < 3; i++)
+            for (int j = 0; j < 3; j++) {
+                h.material.stiffness_gpa[i][j] = i == j ? 246.5 : 147.3;
+                h.material.stiffness_gpa[i + 3][j + 3] = i == j ? 124.7 : 0;
+            }
+        options[1] = 1 + energy;
+        lw_node *node = run_with("williamson_hall", options);
+        CHECK_RELATIVE(hand_quantity(node, "size_volume", NULL, NULL).value, D, 1e-4); /* E to five figures */
+        if (energy)
+            CHECK_RELATIVE(hand_quantity(node, "energy_density", NULL, NULL).value, 1000 * density, 1e-4);
+        else
+            CHECK_RELATIVE(hand_quantity(node, "stress_apparent", NULL, NULL).value, stress, 1e-4);
+    }
+}
+
 int main(void)
 {
     lw_engine_begin(&engine);
@@ -339,6 +381,7 @@ int main(void)
     scherrer();
     common_function();
     directions();
+    stiffness();
     lw_arena_end(&arena);
     lw_engine_end(&engine);
     return lw_checks_end();
