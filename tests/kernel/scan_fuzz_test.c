@@ -10,7 +10,7 @@
 #include <stdlib.h>
 #include <zlib.h>
 
-#define ROUNDS 3000
+#define ROUNDS 6000
 #define ROOM 8192
 
 /* xorshift64* of Vigna 2016, ACM Trans. Math. Softw. 42, 30 */
