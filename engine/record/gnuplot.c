@@ -16,8 +16,10 @@
 
 /* Colours that differ in lightness as well as in hue, darkest first where few are used; with its own
  * dash and marker for each, a grey copy can be read. */
-static const char *const colour[] = {"#111111", "#c2371e", "#2a74b8", "#e69f21", "#3b7d3a", "#8455a0", "#58b4c4", "#8a8a8a"};
-static const char *const dash[] = {"solid", "(14,6)", "(3,4)", "(14,5,3,5)", "(24,6)", "(8,4,2,4,2,4)", "(6,3)", "(2,7)"};
+static const char *const colour[] = {"#111111", "#c2371e", "#2a74b8", "#e69f21",
+                                     "#3b7d3a", "#8455a0", "#2f97a8", "#6e6e6e"};
+static const char *const dash[] = {"solid",   "(14,6)",        "(3,4)", "(14,5,3,5)",
+                                   "(24,6)", "(8,4,2,4,2,4)", "(6,3)", "(2,4,2,9)"};
 static const int marker[] = {7, 4, 8, 13, 6, 5, 10, 2}; /* filled and open circles, squares, triangles ... */
 
 #define LOOKS ((int)(sizeof colour / sizeof colour[0]))
@@ -67,9 +69,19 @@ static void at_screen(lw_text *out, const lw_layout *l, double x_px, double y_px
     number(out, 1 - y_px / l->height);
 }
 
+/* Type size at which a text of about 0.55 em a letter fits into `room` px; not below 9. */
+static int fitting(const char *text, double room, int standard)
+{
+    double n = 0;
+    for (const char *c = text; *c != '\0'; c++)
+        n += ((unsigned char)*c & 0xC0) != 0x80;
+    double size = room / (0.54 * fmax(n, 1));
+    return size >= standard ? standard : size < 9 ? 9 : (int)size;
+}
+
 /* An axis' label, then power of ten and unit in brackets, centred at a place in px. */
 static void axis_label(lw_text *out, const lw_figure_axis *a, const lw_axis_scale *s, const lw_layout *l, double x,
-                       double y, bool upright)
+                       double y, double upright_room)
 {
     lw_text label;
     lw_text_begin(&label, out->engine);
@@ -90,7 +102,9 @@ static void axis_label(lw_text *out, const lw_figure_axis *a, const lw_axis_scal
     quote(out, label.bytes ? label.bytes : "");
     lw_text_add(out, " at");
     at_screen(out, l, x, y);
-    lw_text_add(out, upright ? " center rotate by 90 front\n" : " center front\n");
+    double room = upright_room > 0 ? upright_room : (l->right - l->left) * l->width;
+    lw_text_print(out, " center %sfront font ',%d'\n", upright_room > 0 ? "rotate by 90 " : "",
+                  fitting(label.bytes ? label.bytes : "", room, SIZE));
     if (label.status != LW_OK)
         out->status = label.status;
     lw_text_end(&label);
@@ -312,9 +326,9 @@ static void panel(lw_text *out, const lw_figure *figure, const lw_drawing *drawi
     lw_text_add(out, "unset label\nunset arrow\nunset object\n");
     /* labels are placed by hand too: a terminal that thinks its type wider would push them off the page */
     axis_label(out, &figure->axis[p == 0 ? LW_AXIS_Y : LW_AXIS_LOWER_Y], &l->y[p], l, 20,
-               (1 - (l->top[p] + l->bottom[p]) / 2) * l->height, true);
+               (1 - (l->top[p] + l->bottom[p]) / 2) * l->height, (l->top[p] - l->bottom[p]) * l->height + 20);
     if (last)
-        axis_label(out, &figure->axis[LW_AXIS_X], &l->x, l, (l->left + l->right) / 2 * l->width, l->height - 15, false);
+        axis_label(out, &figure->axis[LW_AXIS_X], &l->x, l, (l->left + l->right) / 2 * l->width, l->height - 15, 0);
     notes(out, figure, p, l);
     if (p == 0) {
         legend(out, figure, l);
@@ -323,7 +337,8 @@ static void panel(lw_text *out, const lw_figure *figure, const lw_drawing *drawi
             quote(out, figure->title);
             lw_text_add(out, " at");
             at_screen(out, l, l->left * l->width, 24);
-            lw_text_print(out, " left front font ',%d'\n", SIZE + 3);
+            lw_text_print(out, " left front font ',%d'\n",
+                          fitting(figure->title, (1 - l->left) * l->width - 10, SIZE + 3));
         }
     }
     if (l->y[p].low < 0 && l->y[p].high > 0 && !l->y[p].log)
@@ -478,6 +493,6 @@ lw_status lw_figure_save_as(lw_engine *engine, const lw_figure *figure, const ch
     for (int i = 0; i < 3; i++)
         if (n > 4 && strcmp(path + n - 4, suffix[i]) == 0)
             return save(engine, figure, path, (lw_drawing_format)i, err);
-    return lw_fail(err, LW_BAD_ARGUMENT, "end the file's name in .svg, .png or .pdf", "can't tell the format of figure %s",
-                   path);
+    return lw_fail(err, LW_BAD_ARGUMENT, "end the file's name in .svg, .png or .pdf",
+                   "can't tell the format of figure %s", path);
 }

@@ -274,7 +274,8 @@ lw_status lw_json_read(lw_arena *arena, const char *json, size_t size, const cha
     }
     lw_status status = LW_OK;
     if (!json_is_object(value))
-        status = lw_fail_at(err, LW_BAD_DATA, name, 1, "check that this is a record", "a record is a JSON object {...}");
+        status = lw_fail_at(err, LW_BAD_DATA, name, 1, "check that this is a record",
+                            "a record is a JSON object {...}");
     else if ((*root = lw_tree_new(arena, err)) == NULL)
         status = LW_OUT_OF_MEMORY;
     else

@@ -182,6 +182,8 @@ lw_status lw_process_run(const lw_process *process, lw_text *output, lw_text *co
         shut(&p.theirs[i]);
     if (reason == ENOENT)
         status = lw_fail(err, LW_IO, NULL, "the program %s isn't installed", process->arguments[0]);
+    else if (reason == EACCES) /* also what one closed folder in PATH makes of a missing program */
+        status = lw_fail(err, LW_IO, NULL, "the program %s isn't installed, or may not be run", process->arguments[0]);
     else if (reason != 0) {
         char words[128];
         if (strerror_r(reason, words, sizeof words) != 0)
