@@ -10,4 +10,5 @@ if(CERF_FOUND)
 endif()
 
 lw_test(least_squares kernel/least_squares_test.c)
+lw_test(fft kernel/fft_test.c)
 lw_test(strd published/strd_test.c)
