@@ -3,6 +3,7 @@
 
 #include "record/curve.h"
 #include "record/file.h"
+#include "record/notes.h"
 #include "record/process.h"
 #include "record/typeset.h"
 
@@ -292,20 +293,25 @@ static void legend(lw_text *out, const lw_figure *figure, const lw_layout *l)
 
 static void notes(lw_text *out, const lw_figure *figure, int panel, const lw_layout *l)
 {
-    for (const lw_note *n = figure->notes; n != NULL; n = n->next) {
-        if (n->panel != panel || !isfinite(n->x) || !isfinite(n->y))
+    lw_note_place place[LW_NOTES_MOST];
+    size_t n = 0;
+    lw_notes_place(figure, l, panel, SIZE - 2, place);
+    for (const lw_note *note = figure->notes; note != NULL; note = note->next) {
+        if (!lw_note_shown(note, l, panel))
             continue;
-        /* written towards the middle, so that it doesn't run out of the frame */
-        double low = l->x.log ? log10(l->x.low) : l->x.low, high = l->x.log ? log10(l->x.high) : l->x.high;
-        bool far = (l->x.log ? log10(n->x) : n->x) > low + 0.6 * (high - low);
+        lw_note_place p = n < LW_NOTES_MOST ? place[n] : (lw_note_place){1, 1};
+        n++;
         lw_text_add(out, "set label ");
-        quote(out, n->text);
+        quote(out, note->text);
         lw_text_add(out, " at first ");
-        number(out, n->x * pow(10, -l->x.power));
+        number(out, note->x * pow(10, -l->x.power));
         lw_text_add(out, ", first ");
-        number(out, n->y * pow(10, -l->y[panel].power));
-        lw_text_print(out, " %s offset %s,0.7 front font ',%d' textcolor rgb '#222222'\n", far ? "right" : "left",
-                      far ? "-0.6" : "0.6", SIZE - 2);
+        number(out, note->y * pow(10, -l->y[panel].power));
+        lw_text_print(out, " %s offset screen", p.x == 0 ? "center" : p.x > 0 ? "left" : "right");
+        number(out, (p.y == 0 ? 10 : 6) * p.x / l->width);
+        lw_text_add(out, ", screen");
+        number(out, (p.x == 0 ? 16 : 11) * p.y / l->height);
+        lw_text_print(out, " front font ',%d' textcolor rgb '#222222'\n", SIZE - 2);
     }
 }
 

@@ -8,6 +8,7 @@
 #include "record/file.h"
 #include "record/gnuplot.h"
 #include "record/json.h"
+#include "record/notes.h"
 #include "record/process.h"
 #include "record/report.h"
 #include "record/typeset.h"
@@ -495,6 +496,26 @@ static void test_curve(void)
     CHECK(strcmp(f->name, "___a_b") == 0);
 }
 
+static void test_notes(void)
+{
+    lw_error err = LW_ERROR_NONE;
+    double x[] = {0, 1, 2}, y[] = {0, 1, 2};
+    lw_figure *f = lw_figure_new(&arena, "n", "", &err);
+    lw_figure_series(f, LW_SERIES_POINTS, 0, "", x, y, 3, &err);
+    for (int i = 0; i < 4; i++)
+        lw_figure_note(f, 0, 1, 1, "a note", &err); /* all at one point */
+    lw_figure_note(f, 0, 2, 2, "at the right edge of the frame", &err);
+    lw_figure_note(f, 0, NAN, 2, "nowhere", &err);
+    lw_layout l = lw_layout_of(f, 900, 560, true);
+    lw_note_place place[LW_NOTES_MOST];
+    lw_notes_place(f, &l, 0, 14, place);
+    CHECK(place[0].x < 0); /* the newest note stands first in the list, and runs into the frame */
+    for (int i = 1; i < 5; i++)
+        for (int j = 1; j < i; j++)
+            CHECK(place[i].x != place[j].x || place[i].y != place[j].y);
+    CHECK(err.status == LW_OK);
+}
+
 static void test_figures(bool gnuplot)
 {
     lw_error err = LW_ERROR_NONE;
@@ -758,6 +779,7 @@ int main(void)
     test_files();
     test_process();
     test_curve();
+    test_notes();
     test_figures(gnuplot);
     test_figure_of_tree();
     test_report(gnuplot);
