@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "sample/generalised.h"
 
-#include <gsl/gsl_cdf.h>
+#include "numeric/statistics.h"
 
 #include <float.h>
 #include <math.h>
@@ -17,7 +17,7 @@ double lw_generalised_p(double chi2, size_t degrees)
 {
     if (degrees == 0 || !(chi2 > 0))
         return 1.0;
-    return gsl_cdf_chisq_Q(chi2, (double)degrees);
+    return lw_chi2_tail(chi2, (double)degrees);
 }
 
 /* Eigenvalues (on the diagonal of a) and eigenvectors (columns of v) of a symmetric matrix by cyclic Jacobi

@@ -1,8 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Scherrer, Williamson-Hall, Halder-Wagner and single-line Voigt against closed forms. */
 #include "check.h"
+#include "numeric/straight_line.h"
 #include "numeric/voigt.h"
 #include "published/by_hand.h"
+#include "sample/breadths.h"
 
 #define PI 3.14159265358979323846
 #define RMS 0.79788456080286535588 /* sqrt(2/pi) */
@@ -370,6 +372,92 @@ static void stiffness(void)
     }
 }
 
+/* The Lorentzian form is a straight line: the same numbers as the exact line with errors in both coordinates
+ * (York et al. 2004), to second order in the relative error of the abscissa. */
+static void straight(void)
+{
+    static const double s[5] = {4.8, 5.5, 7.8, 9.2, 9.6}, beta[5] = {0.071, 0.0745, 0.0811, 0.0894, 0.0885};
+    double cy[25], cx[25], x[5];
+    const double u_theta = 0.01;
+    hand_begin(&h, LW_CUBIC, COPPER, CU);
+    for (int i = 0; i < 5; i++)
+        hand_line(&h, i + 1, 0, 0, s[i], beta[i], 0, 0, 4e-4 * (1 + i % 3));
+    hand_end(&h, 6e-4);
+    for (int i = 0; i < 5; i++) {
+        h.line[i].two_theta.u = u_theta;
+        x[i] = 2 * s[i];
+        for (int j = 0; j < 5; j++) {
+            double u = h.profile[i].breadth_s.u;
+            cy[5 * i + j] = 6e-4 * 6e-4 + (i == j ? u * u : 0);
+            double u_s = cos(h.profile[i].theta_deg * HAND_DEGREE) / CU * u_theta * HAND_DEGREE;
+            cx[5 * i + j] = i == j ? 4 * u_s * u_s : 0;
+        }
+    }
+    lw_straight_line line;
+    lw_error err = LW_ERROR_NONE;
+    CHECK(lw_line_correlated(&engine, 5, x, beta, cx, cy, &line, &err) == LW_OK);
+    lw_node *node = run_choice("williamson_hall", "form", "lorentzian", NULL, NULL);
+    double scatter = lw_node_number(node, "scatter_factor", 0);
+    lw_quantity size = hand_quantity(node, "size_volume", NULL, NULL);
+    lw_quantity strain = hand_quantity(node, "strain_apparent", NULL, NULL);
+    CHECK_RELATIVE(1 / size.value, line.intercept, 1e-6);
+    CHECK_RELATIVE(strain.value, line.slope, 1e-6);
+    CHECK_RELATIVE(lw_node_number(node, "chi2", 0), line.chi2, 1e-6);
+    CHECK_RELATIVE(strain.u, scatter * sqrt(line.slope_variance), 1e-5);
+    CHECK_RELATIVE(size.u / size.value / size.value, scatter * sqrt(line.intercept_variance), 1e-5);
+}
+
+/* A normal deviate of Box and Muller (1958) from a 64-bit linear congruential generator (Knuth's MMIX
+ * constants). */
+static double normal(unsigned long long *state)
+{
+    double uniform[2];
+    for (int i = 0; i < 2; i++) {
+        *state = *state * 6364136223846793005ULL + 1442695040888963407ULL;
+        uniform[i] = ((double)(*state >> 11) + 0.5) / 9007199254740992.0;
+    }
+    return sqrt(-2 * log(uniform[0])) * cos(2 * PI * uniform[1]);
+}
+
+/* Stated uncertainties are those that noise makes: over TRIALS noisy sets, with a part common to all lines,
+ * 1/D and the strain parameter deviate by their u in the mean square. The standard deviation of TRIALS pulls
+ * is known to 1/sqrt(2 TRIALS); 4.5 of that is allowed. Seed fixed. */
+#define TRIALS 2000
+static void pulls(void)
+{
+    static const int n[7] = {3, 4, 8, 11, 12, 16, 19};
+    const double u = 6e-4, common = 3e-4, allowed = 4.5 / sqrt(2.0 * TRIALS);
+    unsigned long long state = 20240229;
+    for (lw_form form = LW_FORM_LORENTZIAN; form < LW_FORMS; form++) {
+        double sum[2] = {0, 0}, p[2] = {1 / 60.0, 0.0015};
+        p[0] = form == LW_FORM_GAUSSIAN ? p[0] * p[0] : p[0];
+        p[1] = form == LW_FORM_LORENTZIAN ? p[1] : p[1] * p[1];
+        int failed = 0;
+        for (int trial = 0; trial < TRIALS; trial++) {
+            double together = common * normal(&state), slopes[2], s_slope;
+            hand_begin(&h, LW_CUBIC, COPPER, CU);
+            for (int i = 0; i < 7; i++) {
+                double s = sqrt(n[i]) / 0.3615, beta = lw_form_breadth(form, p, s, slopes, &s_slope);
+                hand_line(&h, i + 1, 0, 0, s, beta + together + u * normal(&state), 0, 0, u);
+            }
+            hand_end(&h, common);
+            lw_arena scratch;
+            lw_arena_begin(&scratch, &engine);
+            lw_breadths breadths;
+            lw_breadth_fit fit;
+            lw_error err = LW_ERROR_NONE;
+            failed += lw_breadths_gather(&h.profiles, &scratch, &breadths, &err) != LW_OK ||
+                      lw_breadths_fit(&breadths, form, &scratch, &fit, &err) != LW_OK;
+            for (int i = 0; i < 2 && err.status == LW_OK; i++)
+                sum[i] += pow(fit.p[i] - p[i], 2) / fit.fit.covariance[i][i];
+            lw_arena_end(&scratch);
+        }
+        CHECK(failed == 0);
+        CHECK_NEAR(sqrt(sum[0] / TRIALS), 1, allowed);
+        CHECK_NEAR(sqrt(sum[1] / TRIALS), 1, allowed);
+    }
+}
+
 int main(void)
 {
     lw_engine_begin(&engine);
@@ -382,6 +470,8 @@ int main(void)
     common_function();
     directions();
     stiffness();
+    straight();
+    pulls();
     lw_arena_end(&arena);
     lw_engine_end(&engine);
     return lw_checks_end();
