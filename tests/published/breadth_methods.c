@@ -247,8 +247,9 @@ static void limits(void)
 }
 
 /* 0.5 deg at 2theta 40 deg, Cu Ka1 0.15405929 nm: K = 0.9: 16.908 nm, K = 1: 18.787 nm, beta/(4 tan) =
- * 0.0059941 (arithmetic on Scherrer's and Stokes & Wilson's formulas). Constants: Langford & Wilson (1978),
- * section 3 of the method's source: sphere 1.07466130 and 0.89195888, cube 110 1.060660, octahedron
+ * 0.0059941 (arithmetic on Scherrer's
+ * and Stokes & Wilson's formulas). Constants of bodies (common-volume functions by quadrature; compare
+ * Langford & Wilson 1978, table 2): sphere 1.07466130 and 0.89195888, cube 110 1.060660, octahedron
  * 111 1.1438. */
 static void scherrer(void)
 {
