@@ -114,6 +114,29 @@ void lw_text_rounded(lw_text *text, double number, int places)
     add_number(text, digits);
 }
 
+void lw_text_fixed(lw_text *text, double number, int decimals)
+{
+    size_t before = text->n;
+    lw_text_print(text, "%.*f", decimals, number);
+    if (text->status != LW_OK)
+        return;
+    /* long, so that it can't go through add_number; but only digits, a minus and one mark are in it */
+    size_t to = before;
+    bool mark = false;
+    for (size_t from = before; from < text->n; from++) {
+        char c = text->bytes[from];
+        if ((c >= '0' && c <= '9') || c == '-') {
+            text->bytes[to++] = c;
+            mark = false;
+        } else if (!mark) {
+            text->bytes[to++] = '.';
+            mark = true;
+        }
+    }
+    text->n = to;
+    text->bytes[to] = '\0';
+}
+
 size_t lw_utf8_length(const char *s)
 {
     const unsigned char *b = (const unsigned char *)s;

@@ -30,6 +30,8 @@ void lw_text_print(lw_text *text, const char *format, ...) __attribute__((format
 void lw_text_number(lw_text *text, double number);
 /* Append with the given number of significant digits (1 to 17). */
 void lw_text_rounded(lw_text *text, double number, int digits);
+/* Append with that many decimals (0 to 300). */
+void lw_text_fixed(lw_text *text, double number, int decimals);
 
 /* Append with &, <, >, " and ' escaped for HTML and XML, control characters (but tab and newline)
  * left out and bytes that aren't UTF-8 shown as U+FFFD. NULL counts as "". */

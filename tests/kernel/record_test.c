@@ -3,6 +3,7 @@
  * person sees (figures, report) is drawn, escaped and self-contained. */
 #include "check.h"
 
+#include "record/cif.h"
 #include "record/csv.h"
 #include "record/curve.h"
 #include "record/file.h"
@@ -124,7 +125,8 @@ static lw_node *sample_tree(lw_error *err)
     lw_add_list(root, "nothing", err);
     lw_add_group(root, "no_one", err);
     lw_add_flag(root, "strict", true, err);
-    lw_add_text(root, "note", "tab\t, newline\n, quote \", backslash \\, bell \a, \xC3\xA9 \xF0\x9F\x94\xAC, </script>", err);
+    lw_add_text(root, "note",
+                "tab\t, newline\n, quote \", backslash \\, bell \a, \xC3\xA9 \xF0\x9F\x94\xAC, </script>", err);
     uint64_t state = 20240229;
     double numbers[2000];
     for (int i = 0; i < 2000;) {
@@ -297,6 +299,65 @@ static bool stop_now(void *user)
 {
     (void)user;
     return true;
+}
+
+static void check_cif_number(double value, double u, const char *want)
+{
+    lw_text text;
+    lw_text_begin(&text, &engine);
+    lw_cif_write_number(&text, value, u);
+    CHECK(strcmp(text.bytes, want) == 0);
+    lw_text_end(&text);
+}
+
+static void test_cif(void)
+{
+    check_cif_number(18.42, 0.63, "18.42(63)");
+    check_cif_number(0.415691, 0.0000080, "0.4156910(80)");
+    check_cif_number(-12346, 230, "-1.235e4(23)");
+    check_cif_number(3.1e-7, 4.2e-8, "3.10e-7(42)");
+    check_cif_number(0.1, 0, "0.1");
+    check_cif_number(5, 0.9996, "5.0(10)");
+    check_cif_number(NAN, 1, ".");
+
+    lw_error err = LW_ERROR_NONE;
+    lw_node *root = lw_tree_new(&arena, &err);
+    lw_add_text(root, "pd_instr_location", "hall 3, 'east' wing", &err);
+    lw_add_text(root, "a name", "data_x", &err);
+    lw_add_text(root, "quoted", "it's", &err);
+    lw_add_text(root, "both", "a' b\" c", &err);
+    lw_add_text(root, "empty", "", &err);
+    lw_add_text(root, "lines", "one\n;two \xCE\xB8", &err);
+    lw_add_quantity(root, "cell_length_a", lw_quantity_of(4.15691, 0.00008, "angstrom"), NULL, &err);
+    lw_add_quantity(root, "limit", lw_lower_limit(120, 0.95, "nm"), NULL, &err);
+    lw_node *rows = lw_add_list(root, "rows", &err), *row = lw_add_group(rows, NULL, &err);
+    lw_add_number(row, "refln_index_h", 1, &err);
+    row = lw_add_group(rows, NULL, &err);
+    lw_add_number(row, "refln_index_h", 2, &err);
+    lw_add_text(row, "note", "weak", &err);
+    double x[] = {20, 20.02, 20.04}, y[] = {101, 99, 120};
+    lw_node *loop = lw_add_group(root, "scan", &err);
+    lw_add_vector(loop, "pd_meas_2theta_scan", x, 3, "deg", &err);
+    lw_add_vector(loop, "pd_meas_counts_total", y, 3, "", &err);
+    lw_text text;
+    lw_text_begin(&text, &engine);
+    CHECK(lw_cif_write(root, "my scan", &text, &err) == LW_OK);
+    CHECK(strcmp(text.bytes, "#\\#CIF_1.1\ndata_my_scan\n"
+                             "_pd_instr_location \"hall 3, 'east' wing\"\n"
+                             "_a_name 'data_x'\n_quoted it's\n_both \n;a' b\" c\n;\n_empty ''\n"
+                             "_lines \n;one\n ;two ?\n;\n"
+                             "_cell_length_a 4.156910(80)\n_limit '> 120 (95 %)'\n"
+                             "\nloop_\n _refln_index_h\n _note\n1 ?\n2 weak\n"
+                             "\nloop_\n _pd_meas_2theta_scan\n _pd_meas_counts_total\n"
+                             "20 101\n20.02 99\n20.04 120\n") == 0);
+    lw_text_end(&text);
+    lw_add_vector(loop, "short", x, 2, "", &err);
+    lw_error refused = LW_ERROR_NONE;
+    lw_text_begin(&text, &engine);
+    CHECK(lw_cif_write(root, "x", &text, &refused) == LW_BAD_ARGUMENT);
+    CHECK_CONTAINS(refused.message, "short");
+    lw_text_end(&text);
+    CHECK(err.status == LW_OK);
 }
 
 static void test_files(void)
@@ -702,6 +763,8 @@ static void test_memory(bool gnuplot)
             status = lw_json_write(back, &out, &fault);
         if (status == LW_OK)
             status = lw_csv_write(lw_node_get(back, "columns"), &out, &fault);
+        if (status == LW_OK)
+            status = lw_cif_write(lw_node_get(back, "williamson_hall"), "x", &out, &fault);
         lw_report *r = status == LW_OK ? lw_report_new(&poor, "t", "s", &fault) : NULL;
         if (r != NULL) {
             status = lw_report_result(r, back, &fault);
@@ -776,6 +839,7 @@ int main(void)
     test_json();
     test_json_refusals();
     test_csv();
+    test_cif();
     test_files();
     test_process();
     test_curve();
