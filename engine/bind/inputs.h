@@ -1,0 +1,20 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The inputs of a recipe: kinds, and how a name=value argument becomes a value. */
+#ifndef LW_BIND_INPUTS_H
+#define LW_BIND_INPUTS_H
+
+#include "bind/bind.h"
+
+/* User values of the job. */
+enum { LWB_JOB_VALUES = 1, LWB_JOB_DECLARED, LWB_JOB_NAMES, LWB_JOB_TITLE, LWB_JOB_FILES };
+#define LWB_JOB_KEY "linewright.job" /* of the running job in the registry */
+
+/* Checks the declaration (table at index) of the input `name`: its kind and its default. */
+void lwb_check_kind(lua_State *L, int index, const char *name);
+
+/* Reads the arguments. Stack indices: declarations by name, names in order, arguments as a list, table of
+ * values to fill, list of {input, file, sha256} to fill. Raises for what is missing, unknown, given twice
+ * or of the wrong kind. */
+void lwb_read_inputs(lua_State *L, int declared, int names, int arguments, int values, int files);
+
+#endif

@@ -1,0 +1,29 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The objects along the road keep what they were made from in user values, so that nothing needs to be
+ * passed twice and nothing is freed too early. */
+#ifndef LW_BIND_ROADS_H
+#define LW_BIND_ROADS_H
+
+#include "bind/bind.h"
+
+/* User values of a lines object. */
+enum {
+    LWB_LINES_SCAN = 1,
+    LWB_LINES_CALIBRATION, /* nil without an instrument */
+    LWB_LINES_REFLECTIONS,
+    LWB_LINES_BACKGROUND, /* nil without a background scan */
+    LWB_LINES_TREE,
+    LWB_LINES_VALUES = LWB_LINES_TREE
+};
+
+/* Of a calibration. */
+enum { LWB_CALIBRATION_LINES = 1, LWB_CALIBRATION_STANDARD, LWB_CALIBRATION_TREE, LWB_CALIBRATION_VALUES = 3 };
+
+/* Of profiles. */
+enum { LWB_PROFILES_LINES = 1, LWB_PROFILES_CALIBRATION, LWB_PROFILES_TREE, LWB_PROFILES_VALUES = 3 };
+
+/* __index of such an object: entries of its list `list` by number, then methods (upvalue 1), fields of
+ * the noun, and the fields of its tree (user value `tree_at`). Self and key are at 1 and 2. */
+int lwb_index_road(lua_State *L, const lwb_noun *noun, int tree_at, const char *list);
+
+#endif

@@ -1,0 +1,92 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* standard: a certified reference material, lw.standard "lab6-660c", a path, or a table. */
+#include "bind/standards.h"
+
+#include <stdio.h>
+#include <string.h>
+
+#define VERB "standard"
+
+static void read_standard(lua_State *L, int at, lw_standard *standard)
+{
+    static const char *const keys[] = {
+        "name",       "title",   "aliases", "formula",       "space_group",      "setting",        "unit",
+        "cell",       "stiffness_gpa", "stiffness_source", "burgers_nm", "burgers", "density_kg_m3", "hazard",
+        "source",     "certificate", "expanded_uncertainty", "coverage_factor", "temperature_c", "domain_size_nm",
+        "unverified", NULL};
+    lwb_only_keys(L, at, VERB, keys);
+    lwb_read_material(L, at, VERB, &standard->material);
+    memcpy(standard->name, standard->material.name, sizeof standard->name);
+    lwb_copy_text(L, at, "certificate", VERB, true, standard->certificate, sizeof standard->certificate);
+    standard->coverage_factor = lwb_field_number(L, at, "coverage_factor", VERB, 1);
+    standard->temperature_c = lwb_field_number(L, at, "temperature_c", VERB, 25);
+    standard->domain_size_nm = lwb_field_number(L, at, "domain_size_nm", VERB, 0);
+    standard->unverified = lwb_field_flag(L, at, "unverified", VERB, false);
+}
+
+static int make(lua_State *L)
+{
+    lua_settop(L, 1);
+    if (lwb_test(L, 1, &lwb_standard_noun) != NULL)
+        return 1;
+    lw_standard *standard = lwb_new(L, &lwb_standard_noun, sizeof *standard, 0);
+    if (lua_type(L, 1) == LUA_TTABLE)
+        lua_pushvalue(L, 1);
+    else
+        lwb_find_literal(L, "reference", VERB, lwb_text(L, 1, VERB, "the name"));
+    read_standard(L, lua_gettop(L), standard);
+    lua_settop(L, 2);
+    return 1;
+}
+
+static int reflections(lua_State *L)
+{
+    const lw_standard *self = lwb_self(L, 1, &lwb_standard_noun, "standard:reflections");
+    return lwb_reflections_of(L, &self->material, "standard:reflections");
+}
+
+static bool field(lua_State *L, const char *key)
+{
+    const lw_standard *s = lwb_test(L, 1, &lwb_standard_noun);
+    if (strcmp(key, "certificate") == 0)
+        lua_pushstring(L, s->certificate);
+    else if (strcmp(key, "coverage_factor") == 0)
+        lua_pushnumber(L, s->coverage_factor);
+    else if (strcmp(key, "temperature_c") == 0)
+        lua_pushnumber(L, s->temperature_c);
+    else if (strcmp(key, "domain_size_nm") == 0)
+        lua_pushnumber(L, s->domain_size_nm);
+    else if (strcmp(key, "unverified") == 0)
+        lua_pushboolean(L, s->unverified);
+    else if (strcmp(key, "material") == 0) {
+        lw_material *copy = lwb_new(L, &lwb_material_noun, sizeof *copy, 0);
+        *copy = s->material;
+    } else
+        return lwb_material_field(L, &s->material, key);
+    return true;
+}
+
+static int show(lua_State *L)
+{
+    const lw_standard *s = lwb_self(L, 1, &lwb_standard_noun, "tostring");
+    char a[80], text[400];
+    lw_quantity_text(lw_quantity_of(s->material.cell.a, s->material.cell.u_a, "nm"), a, sizeof a);
+    snprintf(text, sizeof text, "%s, a = %s at %.4g degC%s", s->material.title, a, s->temperature_c,
+             s->unverified ? " (check against your own certificate)" : "");
+    lua_pushstring(L, text);
+    return 1;
+}
+
+static const char *const fields[] = {"name",    "title",  "formula",   "space_group", "cell",    "system", "burgers_nm",
+                                     "density_kg_m3", "hazard", "source", "volume_nm3",  "has_stiffness", "certificate",
+                                     "coverage_factor", "temperature_c", "domain_size_nm", "unverified", "material", NULL};
+static const luaL_Reg functions[] = {{"standard", make}, {NULL, NULL}};
+static const luaL_Reg methods[] = {{"reflections", reflections}, {NULL, NULL}};
+static const luaL_Reg metamethods[] = {{"__tostring", show}, {NULL, NULL}};
+
+const lwb_noun lwb_standard_noun = {.name = "standard",
+                                    .functions = functions,
+                                    .methods = methods,
+                                    .metamethods = metamethods,
+                                    .fields = fields,
+                                    .field = field};
