@@ -103,10 +103,8 @@ lw_status lw_columns_check(const lw_columns *columns, const char *file, int want
             return refuse(columns, file, i,
                           "counts can't be negative: give a sigma column, or read with noise = \"scaled\"", err,
                           "the intensity is %g", y);
-        if (wanted == 0 && whole && y != floor(y)) {
-            whole = false;
-            /* go on: a negative value further down says more */
-        }
+        /* below 1e15 the cast is safe; no end here, since a negative value further down says more */
+        whole = whole && (wanted != 0 || y == (double)(int64_t)y);
     }
     for (size_t i = 0; !whole; i++)
         if (columns->intensity[i] != floor(columns->intensity[i]))

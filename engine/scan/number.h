@@ -29,6 +29,28 @@ extern const uint64_t lw_whole_power_of_ten[9];
  * number at s or it is longer than 1000 characters. */
 const char *lw_number_slow(const char *s, char mark, double *value);
 
+/* The 1 to 8 digits at s as eight digits, leading zeros first: one a byte, the last one in the highest. */
+static inline uint64_t lw_digit_bytes(const char *s, unsigned n)
+{
+    uint64_t w = 0;
+#if defined(__BYTE_ORDER__) && __BYTE_ORDER__ == __ORDER_LITTLE_ENDIAN__
+    memcpy(&w, s, 8);
+    w = (w ^ 0x3030303030303030u) << (64 - 8 * n);
+#else
+    for (unsigned i = 0; i < n; i++)
+        w |= (uint64_t)(s[i] - '0') << (8 * (8 - n + i));
+#endif
+    return w;
+}
+
+/* Their value: neighbours are joined to pairs, these to fours, these to the eight. */
+static inline uint64_t lw_digit_value(uint64_t w)
+{
+    w = w * 10 + (w >> 8);
+    return ((w & 0x000000FF000000FFu) * 0x000F424000000064u + (w >> 16 & 0x000000FF000000FFu) * 0x0000271000000001u) >>
+           32;
+}
+
 /* Digits at the head of eight bytes (0 to 8), and their value in *digits. */
 static inline unsigned lw_eight_digits(const char *s, uint64_t *digits)
 {
@@ -42,11 +64,7 @@ static inline unsigned lw_eight_digits(const char *s, uint64_t *digits)
         *digits = 0;
         return 0;
     }
-    /* leading zeros fill the word up, then pairs, fours and the eight are joined */
-    w = (w ^ 0x3030303030303030u) << (64 - 8 * n);
-    w = w * 10 + (w >> 8);
-    *digits = ((w & 0x000000FF000000FFu) * 0x000F424000000064u + (w >> 16 & 0x000000FF000000FFu) * 0x0000271000000001u) >>
-              32;
+    *digits = lw_digit_value(lw_digit_bytes(s, n));
     return n;
 #else
     unsigned n = 0;
@@ -58,69 +76,51 @@ static inline unsigned lw_eight_digits(const char *s, uint64_t *digits)
 #endif
 }
 
-/* Where the bytes that are not digits stand among the next 64: bit i for s[i]. With it a whole row is cut into
- * its numbers without waiting for the end of one to find the next. */
-static inline uint64_t lw_not_digits(const char *s)
+/* Where the bytes that are not digits stand among the next `width` (32 or 64): bit i for s[i], and all bits from
+ * `width` on (of 64: the last one), so that the mask never runs out; a number cut by its end is followed by a digit. With it a row is cut into its numbers without waiting for the end of one to find the next. */
+static inline uint64_t lw_not_digits(const char *s, unsigned width)
 {
-    uint64_t mask = 0;
+    uint64_t mask = ~(uint64_t)0 << (width < 64 ? width : 63);
 #ifdef __SSE2__
     const __m128i shift = _mm_set1_epi8((char)(0x80 + '0')), nine = _mm_set1_epi8((char)(0x80 + 9));
-    for (int i = 0; i < 4; i++) {
-        __m128i v = _mm_loadu_si128((const __m128i *)(const void *)(s + 16 * i));
+    for (unsigned i = 0; i < width; i += 16) {
+        __m128i v = _mm_loadu_si128((const __m128i *)(const void *)(s + i));
         /* less the digit nought, as signed bytes: digits are the ten lowest values */
-        mask |= (uint64_t)(unsigned)_mm_movemask_epi8(_mm_cmpgt_epi8(_mm_sub_epi8(v, shift), nine)) << (16 * i);
+        mask |= (uint64_t)(unsigned)_mm_movemask_epi8(_mm_cmpgt_epi8(_mm_sub_epi8(v, shift), nine)) << i;
     }
 #else
-    for (unsigned i = 0; i < 64; i++)
+    for (unsigned i = 0; i < width; i++)
         mask |= (uint64_t)((unsigned char)(s[i] - '0') > 9) << i;
 #endif
     return mask;
 }
 
-/* Value of the 1 to 8 digits at s. */
-static inline uint64_t lw_some_digits(const char *s, unsigned n)
-{
-#if defined(__BYTE_ORDER__) && __BYTE_ORDER__ == __ORDER_LITTLE_ENDIAN__
-    uint64_t w;
-    memcpy(&w, s, 8);
-    w = (w ^ 0x3030303030303030u) << (64 - 8 * n);
-    w = w * 10 + (w >> 8);
-    return ((w & 0x000000FF000000FFu) * 0x000F424000000064u + (w >> 16 & 0x000000FF000000FFu) * 0x0000271000000001u) >>
-           32;
-#else
-    uint64_t sum = 0;
-    for (unsigned i = 0; i < n; i++)
-        sum = sum * 10 + (uint64_t)(s[i] - '0');
-    return sum;
-#endif
-}
-
-/* Reads a plain number (1 to 8 digits, perhaps a mark and 1 to 8 more) of a row of at most 64 bytes.
+/* Reads a plain number (1 to 8 digits, perhaps a mark and 1 to 8 more) of a row.
  * Given:  row   start of the row
- *         mask  of lw_not_digits(row), with no bit set below *at
+ *         mask  of lw_not_digits(row, width), with no bit set below *at
  *         at    place in the row
  * Returned: *at and mask moved behind the number. False, with nothing promised about them, if the number is
  * not that plain. */
 static inline bool lw_plain_number(const char *row, uint64_t *mask, unsigned *at, char mark, double *value)
 {
-    if (*mask == 0)
-        return false;
     unsigned stop = (unsigned)__builtin_ctzll(*mask), whole = stop - *at;
     if (whole - 1 > 7)
         return false;
-    uint64_t mantissa = lw_some_digits(row + *at, whole);
+    uint64_t digits = lw_digit_bytes(row + *at, whole);
     if (row[stop] != mark) {
-        *value = (double)(int64_t)mantissa;
+        *value = (double)(int64_t)lw_digit_value(digits);
         *at = stop;
         return true;
     }
     *mask &= *mask - 1;
-    if (*mask == 0)
-        return false;
     unsigned end = (unsigned)__builtin_ctzll(*mask), fraction = end - stop - 1;
     if (fraction - 1 > 7)
         return false;
-    mantissa = mantissa * lw_whole_power_of_ten[fraction] + lw_some_digits(row + stop + 1, fraction);
+    uint64_t decimals = lw_digit_bytes(row + stop + 1, fraction), mantissa;
+    if (whole + fraction <= 8)
+        mantissa = lw_digit_value(digits >> (8 * fraction) | decimals);
+    else
+        mantissa = lw_digit_value(digits) * lw_whole_power_of_ten[fraction] + lw_digit_value(decimals);
     *value = (double)(int64_t)mantissa / lw_power_of_ten[fraction];
     *at = end;
     return mantissa < (uint64_t)1 << 53;

@@ -350,6 +350,62 @@ static void test_forms(lw_engine *engine)
     lw_scan_free(scan);
 }
 
+/* Whole files of random rows: every value as strtod() reads it, by whatever path it was read. */
+static void test_rows(lw_engine *engine)
+{
+    enum { ROWS = 4000 };
+    static char text[ROWS * 120];
+    static double want[3][ROWS];
+    static const char *const separators[] = {" ", "\t", "   ", ",", ", ", ";", " ; "};
+    lw_scan_options options = lw_scan_defaults();
+    options.noise = 1;
+    for (int set = 0; set < 42; set++) {
+        int columns = 2 + set % 2, style = set / 14;
+        const char *separator = separators[set % 7];
+        size_t size = 0, row[ROWS];
+        for (int i = 0; i < ROWS; i++) {
+            char word[3][48];
+            uint64_t bits = random_bits();
+            snprintf(word[0], sizeof word[0], "%.*f", 3 + (int)(bits % 10), 20 + 0.01 * i + 0.001 * random_unit());
+            for (int k = 1; k < 3; k++) {
+                double value = random_unit() * pow(10, (double)(random_bits() % 9));
+                if (style == 0)
+                    snprintf(word[k], sizeof word[k], "%.3f", value);
+                else if (style == 1)
+                    snprintf(word[k], sizeof word[k], "%.*f", (int)(random_bits() % 12), value);
+                else
+                    snprintf(word[k], sizeof word[k], random_bits() % 3 ? "%.9g" : "%.7e", value);
+            }
+            row[i] = size;
+            size += (size_t)snprintf(text + size, sizeof text - size, "%s%s%s%s%s%s%s", bits >> 60 == 0 ? " " : "", word[0],
+                                     separator, word[1], columns == 3 ? separator : "", columns == 3 ? word[2] : "",
+                                     bits >> 63 ? "\n" : " \r\n");
+            for (int k = 0; k < columns; k++)
+                want[k][i] = strtod(word[k], NULL);
+        }
+        options.noise = columns == 3 ? 2 : 1;
+        /* a sigma that rounds to nought is not what is tested here */
+        bool sound = true;
+        for (int i = 0; i < ROWS; i++)
+            sound = sound && (columns == 2 || want[2][i] > 0);
+        if (!sound)
+            options.noise = 1;
+        lw_scan *scan = read_text(engine, text, size, &options);
+        if (scan == NULL)
+            continue;
+        CHECK(scan->n == ROWS);
+        int wrong = 0;
+        for (size_t i = 0; i < scan->n; i++)
+            if (!same_bits(scan->two_theta_deg[i], want[0][i]) || !same_bits(scan->intensity[i], want[1][i]) ||
+                (scan->sigma != NULL && !same_bits(scan->sigma[i], want[2][i]))) {
+                if (wrong++ == 0)
+                    fprintf(stderr, "  set %d: %.60s\n", set, text + row[i]);
+            }
+        CHECK(wrong == 0);
+        lw_scan_free(scan);
+    }
+}
+
 static void test_gzip(lw_engine *engine)
 {
     static char plain[40000], packed[40000];
@@ -543,6 +599,7 @@ int main(void)
     test_digest();
     test_measured(&engine);
     test_forms(&engine);
+    test_rows(&engine);
     test_gzip(&engine);
     test_points(&engine);
     test_noise(&engine);
