@@ -11,7 +11,7 @@
 #include "scan/scan.h"
 
 #include <math.h>
-#include <string.h>
+#include <stdint.h>
 
 #define WINDOW 25    /* points of the running median */
 #define LAGS 6
@@ -29,31 +29,41 @@ typedef struct window {
     double median[4]; /* of the last four points asked for, by i % 4 */
 } window;
 
-static void put(window *w, size_t held, double y)
-{
-    size_t i = held;
-    for (; i > 0 && w->sorted[i - 1] > y; i--)
-        w->sorted[i] = w->sorted[i - 1];
-    w->sorted[i] = y;
-}
-
 static void window_begin(window *w, const lw_scan *scan)
 {
     w->scan = scan;
     w->low = 0;
     w->width = scan->n < WINDOW ? scan->n : WINDOW;
-    for (size_t i = 0; i < w->width; i++)
-        put(w, i, scan->intensity[i]);
+    for (size_t held = 0; held < WINDOW; held++) {
+        /* places that are not used hold what sorts last */
+        double y = held < w->width ? scan->intensity[held] : INFINITY;
+        size_t i = held;
+        for (; i > 0 && w->sorted[i - 1] > y; i--)
+            w->sorted[i] = w->sorted[i - 1];
+        w->sorted[i] = y;
+    }
 }
 
+/* Centres the window on point i, one after the last one it was centred on. */
 static void window_move(window *w, size_t i)
 {
     if (i > w->low + w->width / 2 && w->low + w->width < w->scan->n) {
-        size_t gone = 0;
-        while (gone + 1 < w->width && w->sorted[gone] != w->scan->intensity[w->low])
-            gone++;
-        memmove(w->sorted + gone, w->sorted + gone + 1, (w->width - gone - 1) * sizeof(double));
-        put(w, w->width - 1, w->scan->intensity[w->low + w->width]);
+        double old = w->scan->intensity[w->low], new = w->scan->intensity[w->low + w->width];
+        double *sorted = w->sorted;
+        uint64_t below_old = 0, below_new = 0;
+        for (size_t k = 0; k < WINDOW; k++) {
+            below_old += sorted[k] < old;
+            below_new += sorted[k] < new;
+        }
+        if (below_new > below_old) {
+            for (uint64_t k = below_old; k + 1 < below_new; k++)
+                sorted[k] = sorted[k + 1];
+            sorted[below_new - 1] = new;
+        } else {
+            for (uint64_t k = below_old; k > below_new; k--)
+                sorted[k] = sorted[k - 1];
+            sorted[below_new] = new;
+        }
         w->low++;
     }
     w->median[i % 4] = w->sorted[w->width / 2];
@@ -137,7 +147,7 @@ void lw_scan_estimate_noise(const lw_scan *scan, double *factor, double *correla
     for (int pass = 0; pass < PASSES_MOST; pass++) {
         used = covariances(scan, CLIP * scale, covariance);
         double next = sqrt(covariance[0]);
-        bool settled = fabs(next - scale) <= 1e-4 * scale;
+        bool settled = fabs(next - scale) <= 1e-3 * scale;
         scale = next;
         if (settled || used == 0)
             break;
