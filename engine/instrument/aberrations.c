@@ -18,6 +18,12 @@ static double displacement(double two_theta_deg, double radius_mm)
     return -2 * cos(two_theta_deg * degree / 2) / radius_mm / degree;
 }
 
+static double flat_specimen(double two_theta_deg, double radius_mm)
+{
+    (void)radius_mm;
+    return -1 / tan(two_theta_deg * degree / 2);
+}
+
 static double transparency(double two_theta_deg, double radius_mm)
 {
     (void)radius_mm;
@@ -43,6 +49,13 @@ static const lw_aberration aberration_displacement = {
     .definition = "specimen surface outside (+) or inside (-) the focusing circle; lines move by -2 s cos(theta)/R",
     .source = "Wilson (1963) Mathematical Theory of X-ray Powder Diffractometry",
     .slope = displacement};
+static const lw_aberration aberration_flat_specimen = {
+    .name = "flat_specimen",
+    .unit = "deg",
+    .definition = "coefficient of -cot(theta): a flat specimen leaves the focusing circle; the square of the full "
+                  "equatorial divergence over 6 (in degrees: times 57.3) for an even beam",
+    .source = "Wilson (1963); Cheary & Coelho (1992) J. Appl. Cryst. 25, 109",
+    .slope = flat_specimen};
 static const lw_aberration aberration_transparency = {
     .name = "transparency",
     .unit = "deg",
@@ -57,7 +70,7 @@ static const lw_aberration aberration_wavelength = {
     .source = "Bragg's law, differentiated",
     .slope = wavelength};
 
-const lw_aberration *const lw_aberration_list[] = {&aberration_zero, &aberration_displacement,
+const lw_aberration *const lw_aberration_list[] = {&aberration_zero, &aberration_displacement, &aberration_flat_specimen,
                                                    &aberration_transparency, &aberration_wavelength, NULL};
 
 const lw_aberration *lw_aberration_named(const char *name)

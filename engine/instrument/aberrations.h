@@ -7,10 +7,10 @@
 #include <stdbool.h>
 #include <stddef.h>
 
-#define LW_ABERRATION_MOST 4
+#define LW_ABERRATION_MOST 6
 
 typedef struct lw_aberration {
-    const char *name;       /* field name in records: "zero_shift", "displacement", "transparency", "wavelength" */
+    const char *name;       /* field name in records: "zero_shift", "displacement", "flat_specimen" ... */
     const char *unit;       /* of its parameter */
     const char *definition; /* one sentence with the sign */
     const char *source;

@@ -20,7 +20,7 @@ const lw_option lw_calibrate_option_table[] = {
     {"geometry", LW_OPTION_CHOICE, "", "auto", 0, 0, geometry_names, AT(geometry),
      "reflection: flat specimen; capillary: transmission; auto: capillary for a plain wavelength"},
     {"aberrations", LW_OPTION_LIST, "", "by geometry", 0, 0, NULL, AT(aberrations),
-     "aberrations of position to fit: zero_shift, displacement, transparency, wavelength"},
+     "aberrations of position to fit: zero_shift, displacement, flat_specimen, transparency, wavelength"},
     LW_OPTIONS_END};
 
 lw_calibrate_options lw_calibrate_defaults(void)
@@ -38,18 +38,21 @@ static double radius_in_header(const char *header)
     return radius > 10 && radius < 2000 ? radius : 0;
 }
 
-static lw_status choose_aberrations(const lw_calibrate_options *options, bool capillary, lw_aberrations *set,
-                                    lw_error *err)
+static lw_status choose_aberrations(const lw_calibrate_options *options, const lw_lines *lines, bool capillary,
+                                    lw_aberrations *set, lw_error *err)
 {
-    static const char *const reflection[] = {"zero_shift", "displacement", "transparency", NULL};
+    static const char *const reflection[] = {"zero_shift", "displacement", "flat_specimen", "transparency", NULL};
+    static const char *const few_lines[] = {"zero_shift", "displacement", NULL};
     static const char *const transmission[] = {"zero_shift", "wavelength", NULL};
-    const char *const *names = capillary ? transmission : reflection;
+    /* a short range can't tell four smooth functions of angle apart */
+    bool wide = lines->n >= 10 && lines->line[lines->n - 1].two_theta.value - lines->line[0].two_theta.value > 80;
+    const char *const *names = capillary ? transmission : wide ? reflection : few_lines;
     set->n = 0;
     for (size_t i = 0; options->aberrations.n > 0 ? i < options->aberrations.n : names[i] != NULL; i++) {
         const char *name = options->aberrations.n > 0 ? options->aberrations.item[i] : names[i];
         const lw_aberration *kind = lw_aberration_named(name);
         if (kind == NULL)
-            return lw_fail(err, LW_BAD_ARGUMENT, "choose from: zero_shift, displacement, transparency, wavelength",
+            return lw_fail(err, LW_BAD_ARGUMENT, "choose from: zero_shift, displacement, flat_specimen, transparency, wavelength",
                            "calibrate: unknown aberration '%s'", name);
         if (set->n == LW_ABERRATION_MOST)
             return lw_fail(err, LW_BAD_ARGUMENT, NULL, "calibrate: more than %d aberrations", LW_ABERRATION_MOST);
@@ -82,47 +85,58 @@ static size_t edge_groups(lw_crystal_system system, size_t group[3])
     return group[2] + 1;
 }
 
-/* Generalised least squares of the differences on the aberrations' slopes; residuals by *residual. */
-static lw_status fit_aberrations(lw_engine *engine, lw_aberrations *set, size_t n, const double *angle,
-                                 const double *difference, const double *covariance, double *residual, double *chi2,
-                                 lw_arena *scratch, lw_error *err)
+/* Weighted least squares of the differences on the aberrations' slopes. Each line is weighted by its own u alone;
+ * what is common to all lines (the axial divergence, the certificate) would let generalised weights bend the
+ * aberrations to fit it, and enters the covariance of the result instead, through the estimator. */
+static lw_status fit_aberrations(lw_engine *engine, lw_aberrations *set, lw_calibration_lines *rows,
+                                 const double *covariance, const double *certificate, lw_arena *scratch, lw_error *err)
 {
-    size_t k = set->n, weakest;
-    double *inverse = lw_arena_take(scratch, n * n, sizeof *inverse, err);
+    size_t n = rows->n, k = set->n, weakest;
     double *slope = lw_arena_take(scratch, n * k, sizeof *slope, err);
-    if (inverse == NULL || slope == NULL)
+    double *estimator = lw_arena_take(scratch, n * k, sizeof *estimator, err);
+    if (slope == NULL || estimator == NULL)
         return LW_OUT_OF_MEMORY;
-    lw_status status = lw_invert_normal(engine, covariance, n, NULL, inverse, &weakest, err);
-    if (status != LW_OK)
-        return status;
     double h[LW_ABERRATION_MOST * LW_ABERRATION_MOST] = {0}, c[LW_ABERRATION_MOST * LW_ABERRATION_MOST] = {0};
-    double g[LW_ABERRATION_MOST] = {0};
     for (size_t i = 0; i < n; i++)
-        for (size_t a = 0; a < k; a++)
-            slope[i * k + a] = set->kind[a]->slope(angle[i], set->radius_mm);
-    for (size_t i = 0; i < n; i++)
-        for (size_t j = 0; j < n; j++)
-            for (size_t a = 0; a < k; a++) {
-                g[a] += slope[i * k + a] * inverse[i * n + j] * difference[j];
-                for (size_t b = 0; b < k; b++)
-                    h[a * k + b] += slope[i * k + a] * inverse[i * n + j] * slope[j * k + b];
-            }
-    status = lw_invert_normal(engine, h, k, NULL, c, &weakest, err);
+        for (size_t a = 0; a < k; a++) {
+            slope[i * k + a] = set->kind[a]->slope(rows->certified[i], set->radius_mm);
+            for (size_t b = 0; b <= a; b++)
+                h[a * k + b] += slope[i * k + a] * slope[i * k + b] / covariance[i * n + i];
+        }
+    lw_status status = lw_invert_normal(engine, h, k, NULL, c, &weakest, err);
     if (status != LW_OK)
         return status;
-    for (size_t a = 0; a < k; a++) {
-        set->value[a] = 0;
-        for (size_t b = 0; b < k; b++) {
-            set->value[a] += c[a * k + b] * g[b];
-            set->covariance[a][b] = c[a * k + b];
+    memset(set->value, 0, sizeof set->value);
+    for (size_t i = 0; i < n; i++)
+        for (size_t a = 0; a < k; a++) {
+            for (size_t b = 0; b < k; b++)
+                estimator[i * k + a] += c[a * k + b] * slope[i * k + b] / covariance[i * n + i];
+            set->value[a] += estimator[i * k + a] * rows->difference[i];
         }
+    rows->chi2 = 0;
+    for (size_t i = 0; i < n; i++) {
+        rows->residual[i] = rows->difference[i] - lw_aberrations_shift(set, rows->certified[i], NULL);
+        rows->chi2 += rows->residual[i] * rows->residual[i] / covariance[i * n + i];
     }
-    *chi2 = 0;
-    for (size_t i = 0; i < n; i++)
-        residual[i] = difference[i] - lw_aberrations_shift(set, angle[i], NULL);
-    for (size_t i = 0; i < n; i++)
-        for (size_t j = 0; j < n; j++)
-            *chi2 += residual[i] * inverse[i * n + j] * residual[j];
+    /* an aberration law that misses the positions makes its parameters less certain (Birge 1932 Phys. Rev. 40, 207) */
+    rows->p = lw_chi2_tail(rows->chi2, (double)(n - k));
+    rows->birge = rows->p < 1e-3 ? sqrt(rows->chi2 / (double)(n - k)) : 1;
+    for (size_t a = 0; a < k; a++)
+        for (size_t b = 0; b < k; b++) {
+            double sum = 0, common[2][3] = {{0}};
+            for (size_t i = 0; i < n; i++) {
+                for (size_t j = 0; j < n; j++)
+                    sum += estimator[i * k + a] * covariance[i * n + j] * estimator[j * k + b];
+                for (size_t e = 0; e < 3; e++) {
+                    common[0][e] += estimator[i * k + a] * certificate[i * 3 + e];
+                    common[1][e] += estimator[i * k + b] * certificate[i * 3 + e];
+                }
+            }
+            sum *= rows->birge * rows->birge;
+            for (size_t e = 0; e < 3; e++)
+                sum += common[0][e] * common[1][e];
+            set->covariance[a][b] = sum;
+        }
     return LW_OK;
 }
 
@@ -169,17 +183,13 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
         return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0, "measure more lines, or name fewer aberrations",
                           "%zu supported lines can't carry %zu aberrations", n, set->n);
     for (size_t i = 0; i < n; i++)
-        for (size_t j = 0; j < n; j++) {
-            double sum = lines->covariance[rows->line[i]->at_position * lines->n_parameters + rows->line[j]->at_position];
-            for (size_t e = 0; e < groups; e++)
-                sum += shift[i * 3 + e] * shift[j * 3 + e];
-            covariance[i * n + j] = sum;
-        }
-    lw_status status = fit_aberrations(engine, set, n, rows->certified, rows->difference, covariance, rows->residual,
-                                       &rows->chi2, scratch, err);
+        for (size_t j = 0; j < n; j++)
+            covariance[i * n + j] =
+                lines->covariance[rows->line[i]->at_position * lines->n_parameters + rows->line[j]->at_position];
+    lw_status status = fit_aberrations(engine, set, rows, covariance, shift, scratch, err);
     if (status != LW_OK)
         return status;
-    double square = 0, freedom = (double)(n - set->n);
+    double square = 0;
     for (size_t i = 0; i < n; i++)
         square += rows->residual[i] * rows->residual[i];
     rows->rms = sqrt(square / (double)n);
@@ -188,12 +198,6 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
                           "is it the right standard, and the right radiation?",
                           "the lines do not fall where the certificate of %s puts them (rms %.3f deg after aberrations)",
                           standard->name, rows->rms);
-    /* an aberration law that misses the positions makes its parameters less certain (Birge 1932 Phys. Rev. 40, 207) */
-    rows->p = lw_chi2_tail(rows->chi2, freedom);
-    rows->birge = rows->p < 1e-3 ? sqrt(rows->chi2 / freedom) : 1;
-    for (size_t a = 0; a < set->n; a++)
-        for (size_t b = 0; b < set->n; b++)
-            set->covariance[a][b] *= rows->birge * rows->birge;
     return LW_OK;
 }
 
@@ -202,7 +206,7 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
 {
     *out = NULL;
     bool smooth = false;
-    for (int i = 0; i < LW_AXIAL_S; i++)
+    for (int i = 0; i < LW_AXIAL_1; i++)
         smooth |= lines->smooth.refined[i];
     if (!smooth || lines->has_instrument || strcmp(lines->shape, "voigt") != 0)
         return lw_fail(err, LW_BAD_ARGUMENT, "fit the standard with fit_lines(scan, reflections, {widths = \"smooth\"})",
@@ -228,7 +232,7 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
         calibration->aberrations.radius_mm = 200;
         rows.radius_from = "assumed: neither given nor in the scan's header";
     }
-    lw_status status = choose_aberrations(options, capillary, &calibration->aberrations, err);
+    lw_status status = choose_aberrations(options, lines, capillary, &calibration->aberrations, err);
     if (status == LW_OK)
         status = calibrate_positions(engine, lines, standard, calibration, &rows, &scratch, err);
     if (status == LW_OK) {

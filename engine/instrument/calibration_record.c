@@ -11,7 +11,7 @@ static const char schema[] = "linewright/calibration/1";
 /* Parameters of the covariance matrix, in its order: refined widths, then aberrations. */
 static const char *const profile_group[LW_WIDTH_PARAMETERS] = {"gauss", "gauss", "gauss",   "gauss", "lorentz",
                                                                "lorentz", "lorentz", "axial", "axial"};
-static const char *const profile_field[LW_WIDTH_PARAMETERS] = {"U", "V", "W", "P", "X", "Y", "Z", "s_over_l", "h_over_l"};
+static const char *const profile_field[LW_WIDTH_PARAMETERS] = {"U", "V", "W", "P", "X", "Y", "Z", "first", "second"};
 static const char *const profile_unit[LW_WIDTH_PARAMETERS] = {"deg^2", "deg^2", "deg^2", "deg^2", "deg",
                                                               "deg",   "deg",   "",      ""};
 
@@ -36,11 +36,13 @@ static void write_profile(const lw_width_function *profile, lw_node *root, lw_er
 {
     lw_node *group = lw_add_group(root, "profile", err), *part = NULL;
     lw_add_text(group, "form",
-                "Gaussian FWHM^2 = U tan^2 + V tan + W + P/cos^2; Lorentzian FWHM = X tan + Y/cos + Z; axial "
-                "half-lengths of specimen and slit over the radius", err);
+                "Gaussian FWHM^2 = U tan^2 + V tan + W + P/cos^2; Lorentzian FWHM = X tan + Y/cos + Z; axial: soller = "
+                "largest (alpha - beta)/2 and (alpha + beta)/2 in rad, finger_cox_jephcoat = S/L and H/L", err);
     for (int i = 0; i < LW_WIDTH_PARAMETERS; i++) {
         if (i == 0 || strcmp(profile_group[i], profile_group[i - 1]) != 0)
             part = lw_add_group(group, profile_group[i], err);
+        if (i == LW_AXIAL_1)
+            lw_add_text(part, "model", lw_axial_names[profile->axial], err);
         lw_add_quantity(part, profile_field[i],
                         lw_quantity_of(profile->value[i], sqrt(profile->covariance[i][i]), profile_unit[i]), NULL, err);
     }
@@ -291,6 +293,13 @@ static lw_status read_record(const lw_node *record, const char *file, lw_calibra
             return lacking(file, "profile lacks a parameter", err);
         calibration->profile.value[i] = value;
     }
+    const char *axial = lw_node_text(lw_node_get(profile, "axial"), "model", "");
+    int kind = 0;
+    while (lw_axial_names[kind] != NULL && strcmp(lw_axial_names[kind], axial) != 0)
+        kind++;
+    if (lw_axial_names[kind] == NULL)
+        return lacking(file, "profile.axial.model is unknown", err);
+    calibration->profile.axial = (lw_axial_kind)kind;
     calibration->aberrations.radius_mm = lw_node_number(record, "goniometer_radius", NAN);
     if (!(calibration->aberrations.radius_mm > 0))
         return lacking(file, "goniometer_radius is missing", err);

@@ -8,7 +8,6 @@
 #include <string.h>
 
 enum { WIDTHS_AUTO, WIDTHS_FREE, WIDTHS_SMOOTH };
-enum { AXIAL_NONE, AXIAL_REFINED };
 
 static bool is_fixed(const lw_fit_options *options, const char *name)
 {
@@ -153,7 +152,7 @@ static lw_status pack(lw_fit_state *fit, lw_error *err)
         fit->fixed[border + model->n_background + i] =
             fit->hold_global[i] || is_fixed(fit->options, lw_width_name[model->global[i].parameter]);
         fit->lower[border + model->n_background + i] = fit->global_lower[i];
-        if (model->global[i].parameter >= LW_AXIAL_S)
+        if (model->global[i].parameter >= LW_AXIAL_1)
             fit->upper[border + model->n_background + i] = 0.25;
     }
     return LW_OK;
@@ -242,6 +241,10 @@ static void choose_globals(lw_fit_state *fit, double fwhm)
             continue;
         if ((i >= 2 && visible < 3) || (i == 4 && visible < 5))
             continue;
+        /* V is the mark of a monochromator's dispersion; under the flat-specimen geometry of a tube it only takes up
+         * what the axial divergence leaves */
+        if (order[i] == LW_V && fit->options->axial == LW_AXIAL_SOLLER)
+            continue;
         bool both = gauss && lorentz;
         double part = both ? 0.6 : 1;
         model->global[n] = (lw_global){.parameter = order[i]};
@@ -252,13 +255,16 @@ static void choose_globals(lw_fit_state *fit, double fwhm)
             fit->global[n] = part * part * fwhm * fwhm / (secant * secant);
         if (order[i] == LW_Y)
             fit->global[n] = part * fwhm / secant;
-        fit->global_lower[n] = is_lorentz || sample ? 0 : -INFINITY;
+        fit->global_lower[n] = order[i] == LW_V ? -INFINITY : 0;
         fit->hold_global[n] = false;
         n++;
     }
-    if (!sample && fit->options->axial == AXIAL_REFINED) {
-        model->global[n] = (lw_global){.parameter = LW_AXIAL_S, .tied = true};
-        fit->global[n] = 0.025; /* at zero its derivative vanishes, so it starts at a usual value */
+    /* at zero their derivatives vanish, so they start at usual values; specimen and slit length can't be told apart
+     * by one standard, and move together */
+    int axial = sample ? LW_AXIAL_NONE : fit->options->axial;
+    for (int i = 0; i < (axial == LW_AXIAL_NONE ? 0 : axial == LW_AXIAL_FINGER ? 1 : 2); i++) {
+        model->global[n] = (lw_global){.parameter = LW_AXIAL_1 + i, .tied = axial == LW_AXIAL_FINGER};
+        fit->global[n] = axial == LW_AXIAL_FINGER ? 0.025 : 0.04;
         fit->global_lower[n] = 1e-4;
         fit->hold_global[n] = false;
         n++;
@@ -348,7 +354,7 @@ double lw_fit_overlap(const lw_fit_state *fit, size_t line)
 static lw_status free_widths(lw_fit_state *fit, lw_error *err)
 {
     lw_model *model = &fit->model;
-    const lw_shape *shape = lw_shape_list[fit->options->shape];
+    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
     double *u_area = lw_arena_take(&fit->scratch, fit->n, sizeof *u_area, err);
     if (u_area == NULL)
         return LW_OUT_OF_MEMORY;
@@ -373,7 +379,7 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
     /* only the axial length stays common */
     size_t n = 0;
     for (size_t i = 0; i < model->n_globals; i++)
-        if (model->global[i].parameter >= LW_AXIAL_S && shape->is_voigt) {
+        if (model->global[i].parameter >= LW_AXIAL_1 && shape->is_voigt) {
             model->global[n] = model->global[i];
             fit->global[n] = fit->global[i];
             fit->global_lower[n] = fit->global_lower[i];
@@ -394,7 +400,7 @@ static lw_status run(lw_fit_state *fit, lw_error *err)
 {
     lw_model *model = &fit->model;
     const lw_scan *scan = fit->scan;
-    const lw_shape *shape = lw_shape_list[fit->options->shape];
+    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
     double span = scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0], explained;
     double *background = lw_arena_take(&fit->scratch, scan->n, sizeof *background, err);
     if (background == NULL)
@@ -428,7 +434,7 @@ static lw_status run(lw_fit_state *fit, lw_error *err)
         fit->hold_position[k] = true;
     }
     model->n_lines = fit->n;
-    model->shape = shape->is_voigt ? shape : lw_shape_list[0];
+    model->shape = shape->is_voigt ? shape : lw_line_shape_list[0];
     model->n_local = 0;
     for (size_t k = 0; k < fit->n; k++)
         model->line[k].nominal_deg = fit->start[k].position_deg;
@@ -498,17 +504,17 @@ static lw_status take_state(lw_fit_state *fit, lw_error *err)
 
 static lw_status check_options(const lw_scan *scan, const lw_fit_options *options, lw_error *err)
 {
-    const lw_shape *shape = lw_shape_list[options->shape];
+    const lw_line_shape *shape = lw_line_shape_list[options->shape];
     if (!scan->has_radiation)
         return lw_fail_at(err, LW_BAD_ARGUMENT, scan->file, 0, "give radiation = \"Cu Ka\" or a wavelength when reading it",
                           "the scan does not say with which radiation it was measured");
-    if (!shape->is_voigt && (options->instrument != NULL || options->axial == AXIAL_REFINED))
+    if (!shape->is_voigt && (options->instrument != NULL || options->axial != LW_AXIAL_NONE))
         return lw_fail(err, LW_BAD_ARGUMENT, "use shape = \"voigt\"",
                        "fit_lines: an instrument or axial divergence can only be folded into a Voigt, not into '%s'",
                        shape->name);
     if (!shape->is_voigt && options->widths == WIDTHS_SMOOTH)
         return lw_fail(err, LW_BAD_ARGUMENT, "use shape = \"voigt\"", "fit_lines: widths = \"smooth\" needs a Voigt");
-    if (options->instrument != NULL && options->axial == AXIAL_REFINED)
+    if (options->instrument != NULL && options->axial != LW_AXIAL_NONE)
         return lw_fail(err, LW_BAD_ARGUMENT, "leave axial out",
                        "fit_lines: the instrument brings its axial divergence; it can't be refined again");
     return LW_OK;
@@ -537,7 +543,8 @@ lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflecti
                            .kernel = lw_voigt_kernel_for(engine->cpu),
                            .radiation = &lines->radiation,
                            .on_s_axis = options->axis == 0,
-                           .with_factor = options->intensity_factor == 0};
+                           .with_factor = options->intensity_factor == 0,
+                           .axial = (lw_axial_kind)options->axial};
     double mono = cos(options->monochromator_deg * M_PI / 180);
     fit.model.constant_polarisation = 1 - options->polarised;
     fit.model.cos2_monochromator = options->polarised * mono * mono;
@@ -545,6 +552,7 @@ lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflecti
         lines->has_instrument = true;
         lines->instrument = *options->instrument;
         memcpy(fit.model.instrument, options->instrument->value, sizeof fit.model.instrument);
+        fit.model.axial = options->instrument->axial;
     }
     if (status == LW_OK && material != NULL &&
         (lines->material = lw_arena_copy(&lines->arena, material, 1, sizeof *material, err)) == NULL)

@@ -3,7 +3,6 @@
 #include "line/shape.h"
 
 static const char *const widths_names[] = {"auto", "free", "smooth", NULL};
-static const char *const axial_names[] = {"none", "refined", NULL};
 static const char *const axis_names[] = {"s", "two_theta", NULL};
 static const char *const factor_names[] = {"lorentz_polarisation", "none", NULL};
 static const char *const weights_names[] = {"model", "observed", NULL};
@@ -11,11 +10,11 @@ static const char *const weights_names[] = {"model", "observed", NULL};
 #define AT(field) offsetof(lw_fit_options, field)
 
 const lw_option lw_fit_option_table[] = {
-    {"shape", LW_OPTION_CHOICE, "", "voigt", 0, 0, lw_shape_names, AT(shape), "shape of a line at one wavelength"},
+    {"shape", LW_OPTION_CHOICE, "", "voigt", 0, 0, lw_line_shape_names, AT(shape), "shape of a line at one wavelength"},
     {"widths", LW_OPTION_CHOICE, "", "auto", 0, 0, widths_names, AT(widths),
      "free: each line its own; smooth: functions of angle shared by all; auto: free, shared where lines overlap or are weak"},
-    {"axial", LW_OPTION_CHOICE, "", "none", 0, 0, axial_names, AT(axial),
-     "refined: axial divergence with one effective length shared by all lines (without an instrument)"},
+    {"axial", LW_OPTION_CHOICE, "", "none", 0, 0, lw_axial_names, AT(axial),
+     "axial divergence refined for all lines together: soller (both beams), finger_cox_jephcoat (diffracted beam only)"},
     {"axis", LW_OPTION_CHOICE, "", "s", 0, 0, axis_names, AT(axis),
      "axis on which a line is symmetric: s = 2 sin(theta)/lambda, or 2theta"},
     {"intensity_factor", LW_OPTION_CHOICE, "", "lorentz_polarisation", 0, 0, factor_names, AT(intensity_factor),
@@ -40,7 +39,7 @@ const lw_option lw_fit_option_table[] = {
     {"misfit", LW_OPTION_FLAG, "", "true", 0, 0, NULL, AT(misfit),
      "widen all uncertainties when the shape misses the data"},
     {"fixed", LW_OPTION_LIST, "", "", 0, 0, NULL, AT(fixed),
-     "parameters held at their start: U, V, W, P, X, Y, Z, S/L, background, positions"},
+     "parameters held at their start: U, V, W, P, X, Y, Z, axial 1, axial 2, background, positions"},
     {"instrument", LW_OPTION_NOUN, "calibration", "", 0, 0, NULL, AT(instrument),
      "calibration whose profile is folded into every line"},
     LW_OPTIONS_END};

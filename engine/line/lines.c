@@ -44,7 +44,7 @@ static const char *name_of(lw_fit_state *fit, lw_arena *arena, size_t row, lw_er
     if (row < model->n_background)
         return fit->extra && row == model->n_background - 1 ? "background scan" : "background hyperbola";
     const lw_global *global = &model->global[row - model->n_background];
-    return global->tied ? "axial" : lw_width_name[global->parameter];
+    return lw_width_name[global->parameter];
 }
 
 /* The shared width function with its covariance c[n*n] of the present layout. */
@@ -55,7 +55,7 @@ static void take_shared(const lw_fit_state *fit, const double *c, size_t n, lw_w
     int rows[LW_GLOBALS_MOST][2];
     for (size_t i = 0; i < model->n_globals; i++) {
         rows[i][0] = model->global[i].parameter;
-        rows[i][1] = model->global[i].tied ? LW_AXIAL_H : -1;
+        rows[i][1] = model->global[i].tied ? LW_AXIAL_2 : -1;
         for (int a = 0; a < 2; a++)
             if (rows[i][a] >= 0) {
                 shared->value[rows[i][a]] = fit->global[i];
@@ -291,8 +291,9 @@ static void voigt_widths(lw_fit_state *fit, lw_line *line, size_t k)
     lw_width_function base = lines->instrument;
     if (!lines->has_instrument) {
         memset(&base, 0, sizeof base);
-        base.value[LW_AXIAL_S] = lines->smooth.value[LW_AXIAL_S];
-        base.value[LW_AXIAL_H] = lines->smooth.value[LW_AXIAL_H];
+        base.axial = lines->smooth.axial;
+        base.value[LW_AXIAL_1] = lines->smooth.value[LW_AXIAL_1];
+        base.value[LW_AXIAL_2] = lines->smooth.value[LW_AXIAL_2];
     }
     lw_width_figure whole, up, down, alone;
     lw_width_function exact = base;
@@ -336,7 +337,7 @@ static void voigt_widths(lw_fit_state *fit, lw_line *line, size_t k)
 static void empirical_widths(lw_fit_state *fit, lw_line *line, size_t k)
 {
     lw_lines *lines = fit->lines;
-    const lw_shape *shape = fit->model.shape;
+    const lw_line_shape *shape = fit->model.shape;
     double fwhm, breadth, d_fwhm[LW_LOCAL_MOST], d_breadth[LW_LOCAL_MOST], var[3] = {0};
     shape->breadths(fit->local[k], &fwhm, &breadth, d_fwhm, d_breadth);
     double phi = fwhm / breadth;
@@ -398,6 +399,7 @@ lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
         for (size_t j = 0; j < LW_WIDTH_PARAMETERS; j++)
             lines->smooth.covariance[i][j] *= lines->misfit_factor * lines->misfit_factor;
     take_shared(fit, lines->covariance, n, &lines->smooth);
+    lines->smooth.axial = lines->has_instrument ? LW_AXIAL_NONE : model->axial;
     lines->smooth.low_deg = fit->position[0];
     lines->smooth.high_deg = fit->position[fit->n - 1];
     lines->n = fit->n;

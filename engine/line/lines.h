@@ -63,7 +63,7 @@ typedef struct lw_lines {
 typedef struct lw_fit_options {
     int shape;             /* "voigt", "gaussian", "lorentzian", "pseudo_voigt", "pearson7", "split_pseudo_voigt", "split_pearson7" */
     int widths;            /* "auto" (free; shared where lines overlap or are weak), "free", "smooth" */
-    int axial;             /* "none", "refined" (shared; without an instrument only) */
+    int axial;             /* lw_axial_kind, refined for all lines together (without an instrument only) */
     int axis;              /* "s" (profile symmetric in sin theta), "two_theta" */
     int intensity_factor;  /* "lorentz_polarisation", "none": varies across a line or not */
     double monochromator_deg; /* 2theta of a monochromator for the polarisation; 0 = none */

@@ -171,33 +171,45 @@ void lw_model_widths(const lw_model *model, const double *p, size_t line, double
     }
 }
 
-/* Lengths S/L and H/L that hold at p: the instrument's or the lines' own. */
-static void axial_lengths(const lw_model *model, const double *p, double *s, double *h)
+/* Axial parameters that hold at p: the instrument's or the lines' own. */
+static void axial_parameters(const lw_model *model, const double *p, double axial[2])
 {
-    *s = model->instrument[LW_AXIAL_S] + model->own[LW_AXIAL_S];
-    *h = model->instrument[LW_AXIAL_H] + model->own[LW_AXIAL_H];
+    for (int i = 0; i < 2; i++)
+        axial[i] = model->instrument[LW_AXIAL_1 + i] + model->own[LW_AXIAL_1 + i];
     const double *global = p + lw_model_border(model) + model->n_background;
     for (size_t i = 0; i < model->n_globals; i++) {
-        if (model->global[i].parameter == LW_AXIAL_S)
-            *s = global[i];
-        if (model->global[i].parameter == LW_AXIAL_H || model->global[i].tied)
-            *h = global[i];
+        if (model->global[i].parameter == LW_AXIAL_1)
+            axial[0] = global[i];
+        if (model->global[i].parameter == LW_AXIAL_2 || model->global[i].tied)
+            axial[1] = global[i];
     }
+}
+
+/* How the nodes of line k are made. */
+static lw_node_recipe recipe_of(const lw_model *model, size_t k, const double axial[2], const bool slopes[2])
+{
+    return (lw_node_recipe){.radiation = model->radiation,
+                            .on_s_axis = model->on_s_axis,
+                            .spectral_widths = model->shape->is_voigt,
+                            .axial = model->axial,
+                            .parameter = {axial[0], axial[1]},
+                            .slopes = {slopes[0], slopes[1]},
+                            .copies = model->line[k].copies};
 }
 
 void lw_model_windows(lw_model *model, const double *p, double window)
 {
-    double s, h;
-    axial_lengths(model, p, &s, &h);
+    double axial[2];
+    const bool no_slopes[2] = {false, false};
+    axial_parameters(model, p, axial);
     for (size_t k = 0; k < model->n_lines; k++) {
         lw_model_line *line = &model->line[k];
         const double *own = p + lw_model_row(model, k);
         double variance, lorentz;
         lw_model_widths(model, p, k, &variance, &lorentz);
         double width = lw_voigt_fwhm(sqrt(fmax(variance, 1e-12)), lorentz);
-        line->axial = lw_axial_count(s, h, line->nominal_deg, width, LW_AXIAL_NODES_MOST);
-        lw_node_recipe recipe = {.radiation = model->radiation, .on_s_axis = model->on_s_axis,
-                                 .spectral_widths = true, .s_over_l = s, .h_over_l = h, .axial = line->axial};
+        line->copies = lw_axial_copies(model->axial, axial, line->nominal_deg, width);
+        lw_node_recipe recipe = recipe_of(model, k, axial, no_slopes);
         lw_voigt_node *node = model->nodes;
         size_t n = lw_line_nodes(&recipe, own[0], node);
         double low = 0, high = 0, spectral = 0;
@@ -226,7 +238,7 @@ void lw_model_windows(lw_model *model, const double *p, double window)
 /* Fills the line states and nodes at p; false where the model does not exist. */
 static bool set_lines(const lw_model *model, const double *p, line_state *state)
 {
-    double own[LW_WIDTH_PARAMETERS], instrument[LW_WIDTH_PARAMETERS], s, h;
+    double own[LW_WIDTH_PARAMETERS], instrument[LW_WIDTH_PARAMETERS], axial[2];
     memcpy(own, model->own, sizeof own);
     memcpy(instrument, model->instrument, sizeof instrument);
     const double *global = p + lw_model_border(model) + model->n_background;
@@ -234,10 +246,10 @@ static bool set_lines(const lw_model *model, const double *p, line_state *state)
     for (size_t i = 0; i < model->n_globals; i++) {
         const lw_global *g = &model->global[i];
         (g->of_instrument ? instrument : own)[g->parameter] = global[i];
-        slopes[0] |= g->parameter == LW_AXIAL_S;
-        slopes[1] |= g->parameter == LW_AXIAL_H || g->tied;
+        slopes[0] |= g->parameter == LW_AXIAL_1;
+        slopes[1] |= g->parameter == LW_AXIAL_2 || g->tied;
     }
-    axial_lengths(model, p, &s, &h);
+    axial_parameters(model, p, axial);
     for (size_t k = 0; k < model->n_lines; k++) {
         line_state *line = &state[k];
         const double *own_p = p + lw_model_row(model, k);
@@ -247,8 +259,10 @@ static bool set_lines(const lw_model *model, const double *p, line_state *state)
         line->local = own_p + 2;
         if (!(line->position > 0 && line->position < 179.5))
             return false;
-        line->variance = lw_width_gauss_variance(own, nominal, slope_own) +
-                         lw_width_gauss_variance(instrument, nominal, slope_ins);
+        line->variance = lw_width_gauss_variance(own, nominal, slope_own);
+        if (!(line->variance > 0) && own[LW_W] > 0)
+            return false; /* V took a real variance below zero */
+        line->variance += lw_width_gauss_variance(instrument, nominal, slope_ins);
         for (size_t i = 0; i < model->n_globals; i++)
             line->slope_variance[i] =
                 (model->global[i].of_instrument ? slope_ins : slope_own)[model->global[i].parameter];
@@ -268,9 +282,7 @@ static bool set_lines(const lw_model *model, const double *p, line_state *state)
         line->tangent_over_cosine = tangent / cosine;
         line->secant2 = 1 / (cosine * cosine);
         line->factor = lw_model_factor(model, line->position, &line->factor_slope);
-        lw_node_recipe recipe = {.radiation = model->radiation, .on_s_axis = model->on_s_axis,
-                                 .spectral_widths = model->shape->is_voigt, .s_over_l = s, .h_over_l = h,
-                                 .slopes = {slopes[0], slopes[1]}, .axial = model->line[k].axial};
+        lw_node_recipe recipe = recipe_of(model, k, axial, slopes);
         lw_voigt_node *node = model->nodes + k * LW_NODES_MOST;
         model->n_nodes[k] = lw_line_nodes(&recipe, line->position, node);
         double extra = 0;
@@ -306,7 +318,7 @@ static void line_columns(const lw_model *model, const line_state *line, size_t k
     if (model->shape->is_voigt) {
         bool shapes = false;
         for (size_t i = 0; i < model->n_globals; i++)
-            shapes |= model->global[i].parameter >= LW_AXIAL_S;
+            shapes |= model->global[i].parameter >= LW_AXIAL_1;
         shapes = shapes && near && slopes;
         lw_voigt_sums sums = {out->value, out->position, out->local[0], out->local[1],
                               {shapes ? out->shape[0] : NULL, shapes ? out->shape[1] : NULL}};
@@ -318,7 +330,7 @@ static void line_columns(const lw_model *model, const line_state *line, size_t k
         double *local[LW_LOCAL_MOST];
         for (int i = 0; i < LW_LOCAL_MOST; i++)
             local[i] = out->local[i];
-        lw_shape_sum(model->shape, n, x, node, n_nodes, line->local, out->value, out->position, local);
+        lw_line_shape_sum(model->shape, n, x, node, n_nodes, line->local, out->value, out->position, local);
         memset(out->shape, 0, sizeof out->shape);
     }
     /* intensity factor across the line, normalised at its position */
@@ -346,9 +358,9 @@ static void add_globals(const lw_model *model, const line_state *line, const col
     for (size_t q = 0; q < model->n_globals; q++) {
         const lw_global *global = &model->global[q];
         double *column = into + q * stride;
-        if (global->parameter == LW_AXIAL_S || global->parameter == LW_AXIAL_H) {
+        if (global->parameter == LW_AXIAL_1 || global->parameter == LW_AXIAL_2) {
             for (size_t i = 0; i < n; i++)
-                column[i] += from->shape[global->parameter - LW_AXIAL_S][i] + (global->tied ? from->shape[1][i] : 0);
+                column[i] += from->shape[global->parameter - LW_AXIAL_1][i] + (global->tied ? from->shape[1][i] : 0);
             continue;
         }
         double variance = line->slope_variance[q], lorentz = line->slope_lorentz[q];

@@ -22,21 +22,21 @@
 
 typedef struct lw_global {
     bool of_instrument; /* else of the lines' own width function */
-    int parameter;      /* LW_U ... LW_AXIAL_H */
-    bool tied;          /* LW_AXIAL_S only: moves H/L with it */
+    int parameter;      /* LW_U ... LW_AXIAL_2 */
+    bool tied;          /* LW_AXIAL_1 only: moves the second axial parameter with it */
 } lw_global;
 
 typedef struct lw_model_line {
     double nominal_deg;          /* where widths and axial divergence are evaluated: the expected 2theta */
     size_t near_first, near_end; /* blocks evaluated point by point */
-    size_t axial;                /* copies of the axial divergence */
+    lw_axial_count copies;       /* of the axial divergence */
 } lw_model_line;
 
 typedef struct lw_model {
     lw_engine *engine;
     const lw_voigt_kernel *kernel;
     const lw_radiation *radiation;
-    const lw_shape *shape;
+    const lw_line_shape *shape;
     bool on_s_axis, with_factor;
     double cos2_monochromator; /* weight of cos^2(2theta) in the polarisation, and its constant part */
     double constant_polarisation;
@@ -53,6 +53,7 @@ typedef struct lw_model {
     size_t n_lines, n_local;
     lw_model_line *line;
     /* width functions: instrument's is fixed unless it stands among the globals */
+    lw_axial_kind axial;
     double own[LW_WIDTH_PARAMETERS], instrument[LW_WIDTH_PARAMETERS];
     size_t n_globals;
     lw_global global[LW_GLOBALS_MOST];

@@ -1,8 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "line/nodes.h"
 
-#include "numeric/quadrature.h"
-
 #include <math.h>
 
 static const double degree = M_PI / 180;
@@ -16,59 +14,126 @@ static double axial_shift(double two_theta, double kappa, double *sin_2phi)
     return (acos(c) - two_theta) / degree;
 }
 
-size_t lw_axial_count(double s_over_l, double h_over_l, double two_theta_deg, double width_deg, size_t most)
+/* A tail is the image of a variable u in 0..1 displaced by span x u^2. Copies stand at midpoints of t in
+ * u = t/(1 + (t/tau)^2)^(1/4): like u near 0, where the displacement is flat, and evenly spaced in displacement
+ * further out. The function is odd, so that the midpoint rule converges faster than any power of the step; copies
+ * closer than half the width leave a ripple below 1e-6. Beyond u = 0.9 lies less than 1e-4 of the weight. */
+#define TAIL_END 0.9
+
+static double tail_tau(double span, double width)
 {
-    double whole = s_over_l + h_over_l;
-    if (!(whole > 0) || most < 2)
-        return 1;
-    double sine, span = fabs(axial_shift(two_theta_deg * degree, whole, &sine));
-    double n = 6 + 2.5 * span / width_deg;
-    size_t count = n < 48 ? (size_t)n : 48;
-    count += count % 2;
-    return count < most ? count : most;
+    return sqrt(width / (2 * span));
 }
 
-/* Copies for given lengths, in a given number, so that derivatives can be taken at the same number. */
-static void axial_fill(double s, double h, double two_theta_deg, size_t n, lw_voigt_node *node)
+/* Copies for a tail of `span` under a profile of FWHM `width`. A spread of a tenth of the width changes it by less
+ * than 1e-4 and is carried by its mean. */
+static size_t points_for(double span, double width)
 {
-    if (n == 1 || !(s + h > 0)) {
-        for (size_t i = 0; i < n; i++) {
-            node[i].offset = 0;
-            node[i].weight = 1.0 / (double)n;
-        }
-        return;
+    if (!(span > 0.1 * width))
+        return 1;
+    double tau = tail_tau(span, width), u2 = TAIL_END * TAIL_END;
+    /* t at u = TAIL_END, from u^4 (1 + (t/tau)^2) = t^4 */
+    double q = u2 * u2 / (tau * tau), t = sqrt(0.5 * (q + sqrt(q * q + 4 * u2 * u2)));
+    return (size_t)fmin(2 + t / (0.7 * tau), LW_AXIAL_NODES_MOST);
+}
+
+/* Places u and weights du of n copies. */
+static void place(size_t n, double *u, double *du)
+{
+    /* the number of copies fixes the ratio of span to width and with it tau */
+    double most = TAIL_END, tau = fmin(fmax(1.2 * most / sqrt((double)n), 0.02), 2), u2 = most * most;
+    double q = u2 * u2 / (tau * tau), end = sqrt(0.5 * (q + sqrt(q * q + 4 * u2 * u2)));
+    for (size_t i = 0; i < n; i++) {
+        double t = end * ((double)i + 0.5) / (double)n, base = 1 + t * t / (tau * tau);
+        u[i] = t / sqrt(sqrt(base));
+        du[i] = end / (double)n * (1 + 0.5 * t * t / (tau * tau)) / (base * sqrt(sqrt(base)));
     }
-    /* the overlap of specimen and slit is constant up to |S - H| and falls linearly to S + H */
-    double low = fabs(s - h), high = s + h;
-    size_t flat = low > 0.05 * high ? n / 2 : 0, slope = n - flat;
-    double x[LW_AXIAL_NODES_MOST], w[LW_AXIAL_NODES_MOST], sum = 0;
-    double two_theta = two_theta_deg * degree;
-    for (int part = 0; part < 2; part++) {
-        size_t count = part == 0 ? flat : slope, first = part == 0 ? 0 : flat;
-        double from = part == 0 || flat == 0 ? 0 : low, to = part == 0 ? low : high;
-        if (count == 0)
-            continue;
-        lw_gauss_legendre(count, x, w);
-        for (size_t i = 0; i < count; i++) {
-            double kappa = from + 0.5 * (to - from) * (1 + x[i]), sine;
-            double overlap = fmin(2 * fmin(s, h), high - kappa);
-            lw_voigt_node *at = &node[first + i];
-            at->offset = axial_shift(two_theta, kappa, &sine);
-            at->weight = 0.5 * (to - from) * w[i] * overlap / ((1 + kappa * kappa) * sine);
-            sum += at->weight;
-        }
+}
+
+lw_axial_count lw_axial_copies(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg)
+{
+    lw_axial_count count = {{1, 1}};
+    double sine, tangent = tan(two_theta_deg * degree / 2);
+    if (kind == LW_AXIAL_FINGER && parameter[0] + parameter[1] > 0)
+        count.part[0] =
+            points_for(fabs(axial_shift(two_theta_deg * degree, parameter[0] + parameter[1], &sine)), width_deg);
+    else if (kind == LW_AXIAL_SOLLER) {
+        count.part[0] = points_for(parameter[0] * parameter[0] / tangent / degree, width_deg);
+        count.part[1] = points_for(parameter[1] * parameter[1] * tangent / degree, width_deg);
+        while (count.part[0] * count.part[1] > LW_AXIAL_NODES_MOST)
+            count.part[count.part[0] > count.part[1] ? 0 : 1]--;
+    }
+    return count;
+}
+
+/* Published weight of specimen and slit lengths s, h (over the radius). */
+static void fill_finger(double s, double h, double two_theta_deg, size_t n, lw_voigt_node *node)
+{
+    double u[LW_AXIAL_NODES_MOST], du[LW_AXIAL_NODES_MOST], sum = 0, whole = s + h, two_theta = two_theta_deg * degree;
+    place(n, u, du);
+    for (size_t i = 0; i < n; i++) {
+        double kappa = whole * u[i] / TAIL_END, sine;
+        /* the overlap of specimen and slit is constant up to |S - H| and falls linearly to S + H */
+        double overlap = fmin(2 * fmin(s, h), whole - kappa);
+        node[i].offset = axial_shift(two_theta, kappa, &sine);
+        node[i].weight = du[i] * overlap / ((1 + kappa * kappa) * sine);
+        sum += node[i].weight;
     }
     for (size_t i = 0; i < n; i++)
         node[i].weight /= sum;
 }
 
-size_t lw_axial_nodes(double s_over_l, double h_over_l, double two_theta_deg, double width_deg, size_t most,
+/* One tail of the Soller description: u with the density of a mean of four rectangular variables. */
+static void fill_tail(double most, double scale_deg, size_t n, double *offset, double *weight)
+{
+    if (n == 1) {
+        offset[0] = scale_deg * most * most / 12; /* the mean square of u is 1/12 */
+        weight[0] = 1;
+        return;
+    }
+    double u[LW_AXIAL_NODES_MOST], sum = 0;
+    place(n, u, weight);
+    for (size_t i = 0; i < n; i++) {
+        double rest = 1 - u[i], density = u[i] < 0.5 ? 1 - 6 * u[i] * u[i] * rest : 2 * rest * rest * rest;
+        offset[i] = scale_deg * most * most * u[i] * u[i];
+        weight[i] *= density;
+        sum += weight[i];
+    }
+    for (size_t i = 0; i < n; i++)
+        weight[i] /= sum;
+}
+
+/* Copies for given parameters, in a given number, so that derivatives can be taken at the same number. */
+static void axial_fill(lw_axial_kind kind, const double parameter[2], double two_theta_deg, lw_axial_count count,
+                       lw_voigt_node *node)
+{
+    if (kind == LW_AXIAL_FINGER && count.part[0] > 1) {
+        fill_finger(parameter[0], parameter[1], two_theta_deg, count.part[0], node);
+        return;
+    }
+    if (kind != LW_AXIAL_SOLLER) {
+        node[0].offset = 0;
+        node[0].weight = 1;
+        return;
+    }
+    double tangent = tan(two_theta_deg * degree / 2), offset[2][LW_AXIAL_NODES_MOST], weight[2][LW_AXIAL_NODES_MOST];
+    fill_tail(parameter[0], -1 / (tangent * degree), count.part[0], offset[0], weight[0]);
+    fill_tail(parameter[1], tangent / degree, count.part[1], offset[1], weight[1]);
+    for (size_t i = 0; i < count.part[0]; i++)
+        for (size_t j = 0; j < count.part[1]; j++) {
+            node[i * count.part[1] + j].offset = offset[0][i] + offset[1][j];
+            node[i * count.part[1] + j].weight = weight[0][i] * weight[1][j];
+        }
+}
+
+size_t lw_axial_nodes(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg,
                       lw_voigt_node *node)
 {
-    size_t n = lw_axial_count(s_over_l, h_over_l, two_theta_deg, width_deg, most);
+    lw_axial_count count = lw_axial_copies(kind, parameter, two_theta_deg, width_deg);
+    size_t n = count.part[0] * count.part[1];
     for (size_t i = 0; i < n; i++)
         node[i] = (lw_voigt_node){0};
-    axial_fill(s_over_l, h_over_l, two_theta_deg, n, node);
+    axial_fill(kind, parameter, two_theta_deg, count, node);
     return n;
 }
 
@@ -109,18 +174,18 @@ size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voig
 {
     lw_voigt_node emission[LW_EMISSION_MOST], axial[LW_AXIAL_NODES_MOST] = {{0}};
     size_t n_emission = emission_nodes(recipe, two_theta_deg, emission);
-    size_t n_axial = recipe->axial ? recipe->axial : 1;
-    double length[LW_VOIGT_SHAPES] = {recipe->s_over_l, recipe->h_over_l};
-    axial_fill(length[0], length[1], two_theta_deg, n_axial, axial);
-    for (int k = 0; k < LW_VOIGT_SHAPES && n_axial > 1; k++) {
+    size_t n_axial = recipe->copies.part[0] * recipe->copies.part[1];
+    const double *now = recipe->parameter;
+    axial_fill(recipe->axial, now, two_theta_deg, recipe->copies, axial);
+    for (int k = 0; k < LW_VOIGT_SHAPES && recipe->axial != LW_AXIAL_NONE; k++) {
         if (!recipe->slopes[k])
             continue;
         lw_voigt_node up[LW_AXIAL_NODES_MOST], down[LW_AXIAL_NODES_MOST];
-        double step = 1e-4 * (length[0] + length[1]), moved[LW_VOIGT_SHAPES] = {length[0], length[1]};
-        moved[k] = length[k] + step;
-        axial_fill(moved[0], moved[1], two_theta_deg, n_axial, up);
-        moved[k] = length[k] - step;
-        axial_fill(moved[0], moved[1], two_theta_deg, n_axial, down);
+        double step = 1e-4 * (now[0] + now[1]), moved[LW_VOIGT_SHAPES] = {now[0], now[1]};
+        moved[k] = now[k] + step;
+        axial_fill(recipe->axial, moved, two_theta_deg, recipe->copies, up);
+        moved[k] = now[k] - step;
+        axial_fill(recipe->axial, moved, two_theta_deg, recipe->copies, down);
         for (size_t i = 0; i < n_axial; i++) {
             axial[i].d_offset[k] = (up[i].offset - down[i].offset) / (2 * step);
             axial[i].d_weight[k] = (up[i].weight - down[i].weight) / (2 * step);
@@ -145,8 +210,8 @@ size_t lw_line_nodes_merged(const lw_node_recipe *recipe, double two_theta_deg, 
                             double *extra_variance)
 {
     lw_voigt_node axial[LW_AXIAL_NODES_MOST] = {{0}};
-    size_t n_axial = recipe->axial ? recipe->axial : 1, n = emission_nodes(recipe, two_theta_deg, node);
-    axial_fill(recipe->s_over_l, recipe->h_over_l, two_theta_deg, n_axial, axial);
+    size_t n_axial = recipe->copies.part[0] * recipe->copies.part[1], n = emission_nodes(recipe, two_theta_deg, node);
+    axial_fill(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, axial);
     double mean = 0, square = 0;
     for (size_t i = 0; i < n_axial; i++) {
         mean += axial[i].weight * axial[i].offset;

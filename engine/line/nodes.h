@@ -3,38 +3,41 @@
 #ifndef LW_LINE_NODES_H
 #define LW_LINE_NODES_H
 
+#include "line/width.h"
 #include "numeric/voigt.h"
 #include "physics/radiation.h"
 
 #include <stdbool.h>
 #include <stddef.h>
 
-#define LW_AXIAL_NODES_MOST 48
+#define LW_AXIAL_NODES_MOST 64
 #define LW_NODES_MOST (LW_AXIAL_NODES_MOST * LW_EMISSION_MOST)
 
+/* How many copies the two parts of an axial description take (the second is 1 where there is one part). */
+typedef struct lw_axial_count {
+    size_t part[2];
+} lw_axial_count;
+lw_axial_count lw_axial_copies(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg);
+
 /* Axial divergence as a sum of displaced copies.
- * Given:  s_over_l, h_over_l  half-lengths of specimen and slit along the axis over the radius, 0 to 0.3; both
- *                             0 = no axial divergence
+ * Given:  kind, parameter[2]  see lw_axial_kind; both 0 = no axial divergence
  *         two_theta_deg       0 to 180
  *         width_deg           FWHM of what the copies are convolved with: sets how many are needed
- *         most                room in node[], >= 1
- * Returned: node[].offset (deg), node[].weight (sum 1); the return value is their number.
- * Notes: the substitution kappa = h/L takes the inverse-square-root singularity of the published weight
- *   away, W(kappa) dkappa / ((1 + kappa^2) sin(2phi)), cos(2phi) = cos(2theta) sqrt(1 + kappa^2), so that
- *   Gauss-Legendre points converge fast.
- * Source: Finger, Cox & Jephcoat (1994) J. Appl. Cryst. 27, 892; van Laar & Yelon (1984) J. Appl. Cryst. 17, 47. */
-size_t lw_axial_nodes(double s_over_l, double h_over_l, double two_theta_deg, double width_deg, size_t most,
+ * Returned: node[LW_AXIAL_NODES_MOST].offset (deg), .weight (sum 1); the return value is their number.
+ * Notes: for LW_AXIAL_FINGER the substitution kappa = h/L takes the inverse-square-root singularity of the
+ *   published weight away, W(kappa) dkappa / ((1 + kappa^2) sin(2phi)), cos(2phi) = cos(2theta) sqrt(1 + kappa^2);
+ *   for LW_AXIAL_SOLLER the variable is the angle m or p itself. */
+size_t lw_axial_nodes(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg,
                       lw_voigt_node *node);
-/* How many nodes that takes. */
-size_t lw_axial_count(double s_over_l, double h_over_l, double two_theta_deg, double width_deg, size_t most);
 
 typedef struct lw_node_recipe {
     const lw_radiation *radiation;
     bool on_s_axis;          /* x is 2 tan(theta0) (sin(theta)/sin(theta0) - 1), degrees; else 2theta - 2theta0 */
     bool spectral_widths;    /* give the components their Lorentzian widths */
-    double s_over_l, h_over_l;
-    bool slopes[LW_VOIGT_SHAPES]; /* derivatives to S/L, H/L wanted */
-    size_t axial;            /* number of axial copies (lw_axial_count) */
+    lw_axial_kind axial;
+    double parameter[LW_VOIGT_SHAPES];
+    bool slopes[LW_VOIGT_SHAPES]; /* derivatives to the axial parameters wanted */
+    lw_axial_count copies;   /* from lw_axial_copies; kept while a fit iterates, so that it stays smooth */
 } lw_node_recipe;
 
 /* All nodes of a line at two_theta_deg (its position at the reference wavelength), most LW_NODES_MOST.

@@ -169,14 +169,14 @@ static void start_split_pearson(double fwhm, double *local)
 
 #define WIDTH_LEAST 1e-5 /* deg */
 
-static const lw_shape voigt = {.name = "voigt",
+static const lw_line_shape voigt = {.name = "voigt",
                                .source = "Langford (1978) J. Appl. Cryst. 11, 10",
                                .is_voigt = true,
                                .n_local = 2,
                                .local = {"gauss fwhm^2", "lorentz fwhm"},
                                .lower = {0, 0},
                                .upper = {INFINITY, INFINITY}};
-static const lw_shape gaussian = {.name = "gaussian",
+static const lw_line_shape gaussian = {.name = "gaussian",
                                   .source = "Caglioti, Paoletti & Ricci (1958) Nucl. Instrum. 3, 223",
                                   .is_voigt = true,
                                   .n_local = 2,
@@ -184,7 +184,7 @@ static const lw_shape gaussian = {.name = "gaussian",
                                   .lower = {0, 0},
                                   .upper = {INFINITY, INFINITY},
                                   .held = {false, true}};
-static const lw_shape lorentzian = {.name = "lorentzian",
+static const lw_line_shape lorentzian = {.name = "lorentzian",
                                     .source = "Jones (1938) Proc. R. Soc. London A 166, 16",
                                     .is_voigt = true,
                                     .n_local = 2,
@@ -192,7 +192,7 @@ static const lw_shape lorentzian = {.name = "lorentzian",
                                     .lower = {0, 0},
                                     .upper = {INFINITY, INFINITY},
                                     .held = {true, false}};
-static const lw_shape pseudo_voigt = {.name = "pseudo_voigt",
+static const lw_line_shape pseudo_voigt = {.name = "pseudo_voigt",
                                       .source = "Wertheim, Butler, West & Buchanan (1974) Rev. Sci. Instrum. 45, 1369",
                                       .n_local = 2,
                                       .local = {"fwhm", "eta"},
@@ -201,7 +201,7 @@ static const lw_shape pseudo_voigt = {.name = "pseudo_voigt",
                                       .value = value_pseudo_voigt,
                                       .breadths = breadths_pseudo_voigt,
                                       .start = start_pseudo_voigt};
-static const lw_shape pearson7 = {.name = "pearson7",
+static const lw_line_shape pearson7 = {.name = "pearson7",
                                   .source = "Hall, Veeraraghavan, Rubin & Winchell (1977) J. Appl. Cryst. 10, 66",
                                   .n_local = 2,
                                   .local = {"fwhm", "m"},
@@ -210,7 +210,7 @@ static const lw_shape pearson7 = {.name = "pearson7",
                                   .value = value_pearson,
                                   .breadths = breadths_pearson,
                                   .start = start_pearson};
-static const lw_shape split_pseudo_voigt = {.name = "split_pseudo_voigt",
+static const lw_line_shape split_pseudo_voigt = {.name = "split_pseudo_voigt",
                                             .source = "Toraya (1990) J. Appl. Cryst. 23, 485",
                                             .n_local = 4,
                                             .local = {"fwhm left", "fwhm right", "eta left", "eta right"},
@@ -219,7 +219,7 @@ static const lw_shape split_pseudo_voigt = {.name = "split_pseudo_voigt",
                                             .value = value_split_pseudo_voigt,
                                             .breadths = breadths_split_pseudo_voigt,
                                             .start = start_split_pseudo_voigt};
-static const lw_shape split_pearson7 = {.name = "split_pearson7",
+static const lw_line_shape split_pearson7 = {.name = "split_pearson7",
                                         .source = "Brown & Edmonds (1980) Adv. X-ray Anal. 23, 361; Toraya (1986) "
                                                   "J. Appl. Cryst. 19, 440",
                                         .n_local = 4,
@@ -230,12 +230,12 @@ static const lw_shape split_pearson7 = {.name = "split_pearson7",
                                         .breadths = breadths_split_pearson,
                                         .start = start_split_pearson};
 
-const lw_shape *const lw_shape_list[] = {&voigt,    &gaussian,           &lorentzian,     &pseudo_voigt,
+const lw_line_shape *const lw_line_shape_list[] = {&voigt,    &gaussian,           &lorentzian,     &pseudo_voigt,
                                          &pearson7, &split_pseudo_voigt, &split_pearson7, NULL};
-const char *const lw_shape_names[] = {"voigt",    "gaussian",           "lorentzian",     "pseudo_voigt",
+const char *const lw_line_shape_names[] = {"voigt",    "gaussian",           "lorentzian",     "pseudo_voigt",
                                       "pearson7", "split_pseudo_voigt", "split_pearson7", NULL};
 
-void lw_shape_sum(const lw_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
+void lw_line_shape_sum(const lw_line_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
                   const double *local, double *value, double *d_position, double *const *d_local)
 {
     for (size_t i = 0; i < n; i++) {

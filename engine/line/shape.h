@@ -11,7 +11,7 @@
 
 #define LW_LOCAL_MOST 4
 
-typedef struct lw_shape {
+typedef struct lw_line_shape {
     const char *name;
     const char *source;
     bool is_voigt;
@@ -25,13 +25,13 @@ typedef struct lw_shape {
     void (*breadths)(const double *local, double *fwhm, double *breadth, double *d_fwhm, double *d_breadth);
     /* parameters for a FWHM, to start from */
     void (*start)(double fwhm, double *local);
-} lw_shape;
+} lw_line_shape;
 
-extern const lw_shape *const lw_shape_list[]; /* NULL-terminated, in the order of lw_shape_names */
-extern const char *const lw_shape_names[];    /* for the option table */
+extern const lw_line_shape *const lw_line_shape_list[]; /* NULL-terminated, in the order of lw_line_shape_names */
+extern const char *const lw_line_shape_names[];    /* for the option table */
 
 /* Sums the copies of an empirical shape at n points; d_local[i][n]. */
-void lw_shape_sum(const lw_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
+void lw_line_shape_sum(const lw_line_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
                   const double *local, double *value, double *d_position, double *const *d_local);
 
 #endif

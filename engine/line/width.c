@@ -6,7 +6,8 @@
 #include <math.h>
 #include <stddef.h>
 
-const char *const lw_width_name[LW_WIDTH_PARAMETERS] = {"U", "V", "W", "P", "X", "Y", "Z", "S/L", "H/L"};
+const char *const lw_width_name[LW_WIDTH_PARAMETERS] = {"U", "V", "W", "P", "X", "Y", "Z", "axial 1", "axial 2"};
+const char *const lw_axial_names[] = {"none", "finger_cox_jephcoat", "soller", NULL};
 
 static double radians(double degrees)
 {
@@ -17,7 +18,7 @@ double lw_width_gauss_variance(const double *value, double two_theta_deg, double
 {
     double t = tan(radians(two_theta_deg / 2)), sec2 = 1 + t * t;
     double variance = (value[LW_U] * t + value[LW_V]) * t + value[LW_W] + value[LW_P] * sec2;
-    bool clipped = variance < 0;
+    bool clipped = variance < 0; /* fits refuse such a point; a calibration is not asked outside its range */
     if (slopes != NULL) {
         for (int i = 0; i < LW_WIDTH_PARAMETERS; i++)
             slopes[i] = 0;
@@ -77,23 +78,22 @@ static double crossing(const lw_voigt_node *node, size_t n, double gauss_fwhm, d
 }
 
 /* FWHM, breadth, centroid and top for given parameter values. */
-static void figure_of(const double *value, double two_theta_deg, double own_variance, double own_lorentz,
+static void figure_of(lw_axial_kind axial, const double *value, double two_theta_deg, double own_variance, double own_lorentz,
                       lw_width_figure *figure)
 {
     lw_voigt_node node[LW_AXIAL_NODES_MOST];
     double variance = lw_width_gauss_variance(value, two_theta_deg, NULL) + own_variance;
     double lorentz = lw_width_lorentz(value, two_theta_deg, NULL) + own_lorentz;
     double gauss = sqrt(variance), width = lw_voigt_fwhm(gauss, lorentz);
-    size_t n = lw_axial_nodes(value[LW_AXIAL_S], value[LW_AXIAL_H], two_theta_deg, width, LW_AXIAL_NODES_MOST, node);
-    double centroid = 0, far = 0;
+    size_t n = lw_axial_nodes(axial, value + LW_AXIAL_1, two_theta_deg, width, node);
+    double centroid = 0, low = -0.1 * width, high = 0.1 * width, best = 0, at = 0;
     for (size_t i = 0; i < n; i++) {
         centroid += node[i].weight * node[i].offset;
-        if (fabs(node[i].offset) > fabs(far))
-            far = node[i].offset;
+        low = fmin(low, node[i].offset);
+        high = fmax(high, node[i].offset);
     }
-    /* the top lies between the unaberrated place and the farthest node; the profile has one top */
-    double low = fmin(0, far) - 0.1 * width, high = fmax(0, far) + 0.1 * width, best = 0, at = 0;
-    int steps = 24 + (int)(8 * fabs(far) / width);
+    /* the profile has one top, between its outermost copies */
+    int steps = 24 + (int)(8 * (high - low) / width);
     for (int i = 0; i <= steps; i++) {
         double x = low + (high - low) * i / steps, h = height_at(node, n, gauss, lorentz, x);
         if (h > best) {
@@ -123,7 +123,7 @@ static void figure_of(const double *value, double two_theta_deg, double own_vari
 void lw_width_figure_at(const lw_width_function *function, double two_theta_deg, double own_gauss_variance,
                         double own_lorentz_deg, lw_width_figure *figure)
 {
-    figure_of(function->value, two_theta_deg, own_gauss_variance, own_lorentz_deg, figure);
+    figure_of(function->axial, function->value, two_theta_deg, own_gauss_variance, own_lorentz_deg, figure);
     double slope_fwhm[LW_WIDTH_PARAMETERS] = {0}, slope_breadth[LW_WIDTH_PARAMETERS] = {0};
     for (int i = 0; i < LW_WIDTH_PARAMETERS; i++) {
         double u = sqrt(function->covariance[i][i]);
@@ -135,9 +135,9 @@ void lw_width_figure_at(const lw_width_function *function, double two_theta_deg,
         for (int j = 0; j < LW_WIDTH_PARAMETERS; j++)
             value[j] = function->value[j];
         value[i] = function->value[i] + step;
-        figure_of(value, two_theta_deg, own_gauss_variance, own_lorentz_deg, &up);
+        figure_of(function->axial, value, two_theta_deg, own_gauss_variance, own_lorentz_deg, &up);
         value[i] = function->value[i] - step;
-        figure_of(value, two_theta_deg, own_gauss_variance, own_lorentz_deg, &down);
+        figure_of(function->axial, value, two_theta_deg, own_gauss_variance, own_lorentz_deg, &down);
         slope_fwhm[i] = (up.fwhm_deg - down.fwhm_deg) / (2 * step);
         slope_breadth[i] = (up.breadth_deg - down.breadth_deg) / (2 * step);
     }

@@ -5,7 +5,7 @@
  *   Gaussian:   FWHM^2 = U tan^2(theta) + V tan(theta) + W + P/cos^2(theta)   (Caglioti, Paoletti & Ricci
  *               1958 Nucl. Instrum. 3, 223; P: Scherrer-like)
  *   Lorentzian: FWHM   = X tan(theta) + Y/cos(theta) + Z
- *   axial:      Finger, Cox & Jephcoat 1994 J. Appl. Cryst. 27, 892 with half-lengths S/L, H/L */
+ *   axial:      one of two published descriptions, each with two parameters, see lw_axial_kind */
 #ifndef LW_LINE_WIDTH_H
 #define LW_LINE_WIDTH_H
 
@@ -14,18 +14,36 @@
 enum {
     LW_U, LW_V, LW_W, LW_P,  /* deg^2 */
     LW_X, LW_Y, LW_Z,        /* deg */
-    LW_AXIAL_S, LW_AXIAL_H,  /* specimen and slit half-length over radius, dimensionless */
+    LW_AXIAL_1, LW_AXIAL_2,  /* the two parameters of the axial description, dimensionless */
     LW_WIDTH_PARAMETERS
 };
+
+/* How axial divergence is described. */
+typedef enum lw_axial_kind {
+    LW_AXIAL_NONE,
+    /* Diffracted beam only, as for a parallel incident beam: half-lengths of specimen S/L and slit H/L over the
+     * radius. Finger, Cox & Jephcoat (1994) J. Appl. Cryst. 27, 892. */
+    LW_AXIAL_FINGER,
+    /* Incident and diffracted beam through Soller slits. A ray with axial angles alpha before and beta after the
+     * specimen is seen at 2phi with cos(2phi) = (cos(2theta) - sin(alpha) sin(beta))/(cos(alpha) cos(beta)), that is
+     * 2phi - 2theta = -m^2 cot(theta) + p^2 tan(theta), m = (alpha - beta)/2, p = (alpha + beta)/2: a tail to low
+     * angles that dies with cot(theta), one to high angles that grows with tan(theta). Triangular transmissions make
+     * m and p means of four rectangular variables (cubic B-spline); the parameters are their largest values, rad:
+     * for both, the Soller slits' aperture where these alone limit the rays. Geometry: Cheary & Coelho (1998)
+     * J. Appl. Cryst. 31, 851. */
+    LW_AXIAL_SOLLER
+} lw_axial_kind;
 
 typedef struct lw_width_function {
     double value[LW_WIDTH_PARAMETERS];
     bool refined[LW_WIDTH_PARAMETERS]; /* false: held, its covariance is 0 */
     double covariance[LW_WIDTH_PARAMETERS][LW_WIDTH_PARAMETERS];
+    lw_axial_kind axial;
     double low_deg, high_deg;          /* 2theta between which it was fitted */
 } lw_width_function;
 
-extern const char *const lw_width_name[LW_WIDTH_PARAMETERS]; /* "U", "V", ... "S/L", "H/L" */
+extern const char *const lw_width_name[LW_WIDTH_PARAMETERS]; /* "U", "V", ... "axial 1", "axial 2" */
+extern const char *const lw_axial_names[];                    /* of lw_axial_kind, NULL-terminated */
 
 /* Square of the Gaussian FWHM, deg^2, at 2theta; never negative (clipped at 0). slopes[LW_WIDTH_PARAMETERS]
  * (may be NULL) receives the derivatives to the parameters. */
