@@ -13,6 +13,7 @@
 #include "record/process.h"
 #include "record/report.h"
 #include "record/typeset.h"
+#include "scan/scan.h"
 
 #include <dirent.h>
 #include <errno.h>
@@ -350,6 +351,13 @@ static void test_cif(void)
                              "\nloop_\n _refln_index_h\n _note\n1 ?\n2 weak\n"
                              "\nloop_\n _pd_meas_2theta_scan\n _pd_meas_counts_total\n"
                              "20 101\n20.02 99\n20.04 120\n") == 0);
+    /* the scan reader of this project takes it, point by point */
+    lw_scan_options options = lw_scan_defaults();
+    lw_scan *scan = NULL;
+    CHECK(lw_scan_read_bytes(&engine, "my.cif", text.bytes, text.n, &options, &scan, &err) == LW_OK);
+    CHECK(scan != NULL && scan->n == 3 && memcmp(scan->two_theta_deg, x, sizeof x) == 0 &&
+          memcmp(scan->intensity, y, sizeof y) == 0);
+    lw_scan_free(scan);
     lw_text_end(&text);
     lw_add_vector(loop, "short", x, 2, "", &err);
     lw_error refused = LW_ERROR_NONE;
@@ -722,7 +730,8 @@ static void test_report(bool gnuplot)
     free(path);
     CHECK(err.status == LW_OK && lw_report_save(&engine, r, in_folder("bare.html"), &err) == LW_OK);
     CHECK(lw_report_warning(r) != NULL);
-    CHECK_CONTAINS(content(in_folder("bare.html")), "This figure couldn&#39;t be drawn: the program gnuplot isn&#39;t installed");
+    CHECK_CONTAINS(content(in_folder("bare.html")),
+                   "This figure couldn&#39;t be drawn: the program gnuplot isn&#39;t installed");
     lw_report_free(&r);
     lw_report_free(&r);
 }
