@@ -2,19 +2,21 @@
 #include "record/curve.h"
 
 #include <math.h>
+#include <string.h>
 
 lw_pick lw_pick_begin(const lw_series *series, const lw_layout *layout)
 {
-    lw_pick pick = {.series = series, .log = layout->x.log};
-    /* a marker is wider than a pixel, a curve's joint isn't */
-    double density = series->kind == LW_SERIES_POINTS ? 1 : 2;
-    double columns = density * ceil(layout->width * (layout->right - layout->left));
+    lw_pick pick = {.series = series, .log = layout->x.log, .y = layout->y[series->panel], .column = NAN};
+    pick.markers = series->kind == LW_SERIES_POINTS;
+    pick.height = (layout->top[series->panel] - layout->bottom[series->panel]) * layout->height;
+    double width = layout->width * (layout->right - layout->left);
+    double columns = ceil(pick.markers ? width : 2 * width);
     double high = pick.log ? log10(layout->x.high) : layout->x.high;
     pick.low = pick.log ? log10(layout->x.low) : layout->x.low;
     pick.step = (high - pick.low) / columns;
-    pick.all = (double)series->n <= 4 * columns || series->u_x != NULL || series->u_y != NULL ||
-               series->y == NULL || !(pick.step > 0);
-    for (size_t i = 1; i < series->n && !pick.all; i++)
+    pick.all = (double)series->n <= (pick.markers ? 1000 : 4 * columns) || series->u_x != NULL ||
+               series->u_y != NULL || series->y == NULL || !(pick.step > 0);
+    for (size_t i = 1; i < series->n && !pick.all && !pick.markers; i++)
         if (!(series->x[i] >= series->x[i - 1]))
             pick.all = true;
     return pick;
@@ -32,10 +34,35 @@ static void enqueue(lw_pick *pick, size_t index)
         pick->queue[pick->queued++] = index;
 }
 
+/* Whether a marker's pixel is free; takes it. Those outside the frame aren't drawn. */
+static bool take_pixel(lw_pick *pick, size_t i)
+{
+    double y = pick->series->y[i], here = column(pick, i);
+    double part = pick->y.log ? log(y / pick->y.low) / log(pick->y.high / pick->y.low)
+                              : (y - pick->y.low) / (pick->y.high - pick->y.low);
+    double row = floor(part * pick->height);
+    if (!(row >= 0 && row < LW_PICK_ROWS))
+        return false;
+    if (!(here == pick->column)) {
+        memset(pick->taken, 0, sizeof pick->taken);
+        pick->column = here;
+    }
+    unsigned char *cell = &pick->taken[(size_t)row / 8], bit = (unsigned char)(1u << ((unsigned)row % 8));
+    bool is_free = (*cell & bit) == 0;
+    *cell = (unsigned char)(*cell | bit);
+    return is_free;
+}
+
 bool lw_pick_next(lw_pick *pick, size_t *index)
 {
     const lw_series *s = pick->series;
     if (pick->all) {
+        *index = pick->next;
+        return pick->next++ < s->n;
+    }
+    if (pick->markers) {
+        while (pick->next < s->n && !take_pixel(pick, pick->next))
+            pick->next++;
         *index = pick->next;
         return pick->next++ < s->n;
     }

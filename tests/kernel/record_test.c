@@ -563,6 +563,25 @@ static void test_curve(void)
     CHECK(ordered && last == 19999 && n < 8000 && n > 1500);
     CHECK_NEAR(highest, 1010, 1e-9); /* the narrow peak survives */
     CHECK(strcmp(f->name, "___a_b") == 0);
+
+    /* markers: one a pixel, so a flat series keeps about one a column, a steep flank all it has */
+    static double x[20000], y[20000];
+    for (int k = 0; k < 20000; k++) {
+        x[k] = k;
+        y[k] = k < 10000 ? 1 : k % 2 * 1000 + k / 100;
+    }
+    f = lw_figure_new(&arena, "m", "", &err);
+    lw_figure_series(f, LW_SERIES_POINTS, 0, "", x, y, 20000, &err);
+    l = lw_layout_of(f, 900, 560, true);
+    pick = lw_pick_begin(f->first, &l);
+    size_t flat = 0, high = 0;
+    while (lw_pick_next(&pick, &i))
+        if (i < 10000)
+            flat++;
+        else
+            high += y[i] >= 1000;
+    CHECK(flat > 380 && flat < 430 && high > 380 && high < 900);
+    CHECK(err.status == LW_OK);
 }
 
 static void test_notes(void)
