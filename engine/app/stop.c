@@ -83,11 +83,14 @@ bool lwa_stop_wanted(void *user)
 
 static void look(lua_State *L, lua_Debug *frame)
 {
-    (void)frame;
     if (reason == LWA_NOT_STOPPED)
         return;
     lua_sethook(L, look, LUA_MASKCOUNT | LUA_MASKLINE | LUA_MASKCALL, HOOK_EVERY);
-    luaL_error(L, reason == LWA_INTERRUPTED ? "interrupted" : "the time limit is reached");
+    const char *text = reason == LWA_INTERRUPTED ? "interrupted" : "the time limit is reached";
+    lua_getinfo(L, "Sl", frame);
+    if (frame->currentline > 0)
+        luaL_error(L, "%s:%d: %s", frame->short_src, frame->currentline, text);
+    luaL_error(L, "%s", text);
 }
 
 void lwa_stop_hook(lua_State *L)

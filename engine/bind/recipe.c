@@ -133,7 +133,7 @@ static int end_after_help(lua_State *L)
 static void check_declaration(lua_State *L, int declared)
 {
     static const char *const keys[] = {"kind", "default", "help", "unit", "choices", "least", "most", NULL};
-    static const char *const taken[] = {"path", "write", "write_csv", "check", "title", "inputs", NULL};
+    static const char *const taken[] = {"path", "write", "write_csv", "check", "once", "title", "inputs", NULL};
     for (lua_pushnil(L); lua_next(L, declared); lua_pop(L, 1)) {
         if (lua_type(L, -2) != LUA_TSTRING)
             lwb_refuse(L, "write name = { kind = ... }", "recipe: an input has no name");
@@ -283,6 +283,7 @@ static const luaL_Reg methods[] = {{"path", lwb_job_path},
                                    {"write", lwb_job_write},
                                    {"write_csv", lwb_job_write_csv},
                                    {"check", lwb_job_check},
+                                   {"once", lwb_job_once},
                                    {NULL, NULL}};
 static const luaL_Reg metamethods[] = {{"__index", at}, {"__tostring", show}, {NULL, NULL}};
 
