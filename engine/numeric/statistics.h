@@ -1,0 +1,43 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Distributions and robust summaries. Out-of-range arguments give NaN, never an abort. */
+#ifndef LW_NUMERIC_STATISTICS_H
+#define LW_NUMERIC_STATISTICS_H
+
+#include "base/engine.h"
+
+#include <stddef.h>
+
+/* Probability that chi-square with dof > 0 degrees of freedom exceeds chi2 >= 0, to 1e-12 relative
+ * (incomplete gamma function: series and continued fraction). */
+double lw_chi2_tail(double chi2, double dof);
+/* Normal distribution: P(Z <= z), and z for a probability 0 < p < 1. */
+double lw_normal_probability(double z);
+double lw_normal_quantile(double p);
+/* Student's t with dof > 0: P(T <= t), and t for a probability 0 < p < 1. */
+double lw_student_probability(double t, double dof);
+double lw_student_quantile(double p, double dof);
+/* The coverage factor k of a two-sided interval of the given probability (0.95: 1.96 for infinite dof). */
+double lw_coverage_factor(double probability, double dof);
+/* Regularised incomplete beta function I_x(a, b), a, b > 0, 0 <= x <= 1 (continued fraction). */
+double lw_incomplete_beta(double a, double b, double x);
+
+/* Durbin-Watson statistic of residuals in order: 2 for none, below 2 for positive serial correlation
+ * (Durbin & Watson 1950 Biometrika 37, 409; the weighted residuals of a scan: Hill & Flack 1987 J. Appl. Cryst.
+ * 20, 356). NaN for fewer than 2 or for residuals that are all 0. */
+double lw_durbin_watson(const double *residual, size_t n);
+
+/* Mean and, if sd is not NULL, the sample standard deviation (n - 1); NaN where n is too small. */
+double lw_mean(const double *values, size_t n, double *sd);
+/* Median, by partial ordering in place: values are permuted. NaN for n = 0. */
+double lw_median(double *values, size_t n);
+/* Standard deviation of normal data from the median absolute deviation, 1.482602 x MAD; values are
+ * overwritten. */
+double lw_robust_sd(double *values, size_t n);
+/* Quantile of values in ascending order, linear between order statistics (type 7 of Hyndman & Fan 1996). */
+double lw_quantile_of_sorted(const double *sorted, size_t n, double p);
+/* Sorts ascending. */
+void lw_sort(double *values, size_t n);
+/* Running median over 2 half + 1 points, fewer at the ends; out[n] may not be y. */
+lw_status lw_running_median(lw_engine *engine, const double *y, size_t n, size_t half, double *out, lw_error *err);
+
+#endif
