@@ -319,6 +319,8 @@ static void voigt_widths(lw_fit_state *fit, lw_line *line, size_t k)
                                             : u_of_smooth(lines, nominal, slopes[i]);
     if (!(gauss > 0)) /* at its bound: the uncertainty of the square says how large it may be */
         u[3] = local && !fit->hold_local[k] ? sqrt(u_of_widths(lines, line, (const double[2]){1, 0}, false)) : 0;
+    line->own_variance_deg2 = own_variance;
+    line->own_lorentz_deg = own_lorentz;
     line->fwhm = lw_quantity_of(whole.fwhm_deg, u[0], "deg");
     line->breadth = lw_quantity_of(whole.breadth_deg, u[1], "deg");
     line->shape_ratio = lw_quantity_of(phi, u[2], "");
@@ -403,11 +405,18 @@ lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
     lines->smooth.low_deg = fit->position[0];
     lines->smooth.high_deg = fit->position[fit->n - 1];
     lines->n = fit->n;
+    lines->at_background = lw_model_border(model);
+    lines->n_background = fit->terms;
+    lines->on_s_axis = model->on_s_axis;
+    lines->with_factor = model->with_factor;
+    lines->constant_polarisation = model->constant_polarisation;
+    lines->cos2_polarisation = model->cos2_monochromator;
     const char *unit = fit->scan->noise == LW_NOISE_COUNTS ? "counts deg" : "deg";
     for (size_t k = 0; k < fit->n; k++) {
         lw_line *line = &lines->line[k];
         size_t row = lw_model_row(model, k);
         line->reflection = fit->reflection[k];
+        line->nominal_deg = model->line[k].nominal_deg;
         line->at_position = row;
         line->at_area = row + 1;
         bool free_local = model->shape->is_voigt && model->n_local == 2 && !fit->hold_local[k];

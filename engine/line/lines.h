@@ -23,6 +23,8 @@ typedef struct lw_line {
     lw_quantity shape_ratio;    /* phi = FWHM / breadth */
     lw_quantity gauss_fwhm, lorentz_fwhm; /* deg: the line's own parts: of the sample when an instrument is folded
                                              in, else of the whole line */
+    double nominal_deg;         /* where the width functions were evaluated for it */
+    double own_variance_deg2, own_lorentz_deg; /* own Gaussian FWHM^2 and Lorentzian FWHM (Voigt shapes) */
     double instrument_fwhm_deg, instrument_breadth_deg; /* at this angle; 0 when no instrument was given */
     double u_instrument_breadth_deg;
     double residual_misfit;     /* chi-square per point within 1.5 FWHM of the line */
@@ -55,6 +57,10 @@ typedef struct lw_lines {
     const char *misfit;              /* what was noticed, in words; "" if nothing */
     size_t n_points, iterations;
     const char *stopped;             /* why the iteration stopped */
+    size_t at_background, n_background; /* rows of the Chebyshev terms */
+    /* how the model was set up, for lw_line_curve */
+    bool on_s_axis, with_factor;
+    double constant_polarisation, cos2_polarisation;
     /* curves, at the scan's points */
     double *fitted, *background, *variance;
     double background_scan_scale, u_background_scan_scale; /* 0 without a background scan */

@@ -1,0 +1,33 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* What a method of deconvolution is, and what the methods share (private to profile/). To add one: a file that
+ * ends in one such constant, and a line in the list. */
+#ifndef LW_PROFILE_DECONVOLUTION_H
+#define LW_PROFILE_DECONVOLUTION_H
+
+#include "profile/profiles.h"
+
+typedef struct lw_deconvolution {
+    const char *name;
+    const char *source; /* published source */
+    /* Fills coefficients, breadth and refold of every profile in `profiles`; the Voigt parts are there already. */
+    lw_status (*run)(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err);
+} lw_deconvolution;
+
+extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_stokes;
+
+/* Degrees of the line's own axis to nm^-1: ds = factor x dx. */
+double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile);
+
+/* Fourier coefficient of a Voigt with integral breadths gauss_s, lorentz_s (nm^-1) at a length (nm):
+ * exp(-2 lorentz L - pi gauss^2 L^2). */
+double lw__voigt_coefficient(double gauss_s, double lorentz_s, double length_nm);
+
+/* Lengths 0, step, 2 step ... for a profile: n and step by the options, else so that the last Voigt coefficient
+ * is 0.002. Takes the arrays of the profile. */
+lw_status lw__take_lengths(lw_profiles *profiles, lw_profile *profile, const lw_deconvolve_options *options,
+                           lw_error *err);
+
+/* Breadth as a quantity, or an upper limit (95 %) when it is below twice its u. */
+void lw__set_breadth(const lw_profiles *profiles, lw_profile *profile, double value, double u);
+
+#endif
