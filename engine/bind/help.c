@@ -55,8 +55,9 @@ static void add_options(luaL_Buffer *out, const lw_option *table)
         size_t used = 0;
         for (int i = 0; o->kind == LW_OPTION_CHOICE && o->choices[i] != NULL && used + 1 < sizeof choices; i++)
             used += (size_t)snprintf(choices + used, sizeof choices - used, "%s%s", i > 0 ? ", " : ": ", o->choices[i]);
-        snprintf(line, sizeof line, "  %-22s %s%s%s%s%s%s%s\n", o->key, o->help, choices, o->unit[0] ? ", " : "", o->unit,
-                 o->standard[0] ? " (" : "", o->standard, o->standard[0] ? ")" : "");
+        const char *unit = o->unit ? o->unit : "", *standard = o->standard ? o->standard : "";
+        snprintf(line, sizeof line, "  %-22s %s%s%s%s%s%s%s\n", o->key, o->help ? o->help : "", choices,
+                 unit[0] ? ", " : "", unit, standard[0] ? " (" : "", standard, standard[0] ? ")" : "");
         luaL_addstring(out, line);
     }
 }
@@ -110,6 +111,21 @@ static void push_entry(lua_State *L, const char *name, int entry)
     lua_remove(L, parameters);
 }
 
+/* Puts the text on the top of the stack into its place in the sorted list. Pops it. */
+static void insert(lua_State *L, int lines)
+{
+    lua_Integer at = (lua_Integer)lua_rawlen(L, lines) + 1;
+    for (; at > 1; at--) {
+        lua_rawgeti(L, lines, at - 1);
+        if (strcmp(lua_tostring(L, -1), lua_tostring(L, -2)) <= 0) {
+            lua_pop(L, 1);
+            break;
+        }
+        lua_rawseti(L, lines, at);
+    }
+    lua_rawseti(L, lines, at);
+}
+
 /* Without a name: every function with its one line. */
 static void push_list(lua_State *L, int api)
 {
@@ -125,18 +141,21 @@ static void push_list(lua_State *L, int api)
             const char *purpose = text_of(L, lua_gettop(L), "purpose");
             snprintf(line, sizeof line, p == 0 ? "  lw.%-20s %s\n" : "  %-23s %s\n", lua_tostring(L, -2), purpose ? purpose : "");
             lua_pushstring(L, line);
-            lua_Integer at = (lua_Integer)lua_rawlen(L, lines) + 1;
-            for (; at > 1; at--) {
-                lua_rawgeti(L, lines, at - 1);
-                if (strcmp(lua_tostring(L, -1), lua_tostring(L, -2)) <= 0) {
-                    lua_pop(L, 1);
-                    break;
-                }
-                lua_rawseti(L, lines, at);
-            }
-            lua_rawseti(L, lines, at);
+            insert(L, lines);
         }
         lua_pop(L, 1);
+    }
+    for (size_t i = 0; lw_method_list[i] != NULL; i++) {
+        lua_pushfstring(L, "  lw.%s", lw_method_list[i]->name);
+        size_t n = lua_rawlen(L, -1);
+        for (; n < 26; n++) {
+            lua_pushliteral(L, " ");
+            lua_concat(L, 2);
+        }
+        lua_pushstring(L, lw_method_list[i]->purpose);
+        lua_pushliteral(L, "\n");
+        lua_concat(L, 3);
+        insert(L, lines);
     }
     luaL_buffinit(L, &out);
     luaL_addstring(&out, "help \"name\" tells more:\n");
@@ -154,21 +173,93 @@ static void add_names(lua_State *L, int table, const char **names, size_t *n, si
             names[(*n)++] = lua_tostring(L, -2);
 }
 
-static bool find(lua_State *L, int api, const char *name, const char **names, size_t *n)
+/* Whether the part of the description has the name; pushes its entry. */
+static bool find(lua_State *L, int api, const char *part, const char *name)
 {
-    static const char *const parts[] = {"functions", "methods", "nouns"};
-    for (size_t p = 0; p < 3; p++) {
-        lua_getfield(L, api, parts[p]);
-        if (lua_getfield(L, -1, name) == LUA_TTABLE)
-            return true;
+    lua_getfield(L, api, part);
+    bool found = lua_getfield(L, -1, name) == LUA_TTABLE;
+    lua_remove(L, -2);
+    if (!found)
         lua_pop(L, 1);
-        add_names(L, lua_gettop(L), names, n, 199);
-        lua_pop(L, 1);
-    }
-    return false;
+    return found;
 }
 
-/* lw.help(name): the text; at the prompt and in recipes `help "name"` prints it. */
+/* Fields and methods of a noun, each with its one line. */
+static void push_noun(lua_State *L, int api, const char *name, int entry)
+{
+    luaL_Buffer out;
+    luaL_checkstack(L, 20, NULL);
+    lua_newtable(L);
+    int lines = lua_gettop(L);
+    lua_getfield(L, entry, "fields");
+    int fields = lua_gettop(L);
+    for (lua_pushnil(L); lua_next(L, fields); lua_pop(L, 1)) {
+        char line[300];
+        const char *type = text_of(L, lua_gettop(L), "type"), *unit = text_of(L, lua_gettop(L), "unit"),
+                   *meaning = text_of(L, lua_gettop(L), "help");
+        snprintf(line, sizeof line, "  .%-21s %s%s%s: %s\n", lua_tostring(L, -2), type ? type : "", unit ? ", " : "",
+                 unit ? unit : "", meaning ? meaning : "");
+        lua_pushstring(L, line);
+        insert(L, lines);
+    }
+    lua_getfield(L, api, "methods");
+    int methods = lua_gettop(L);
+    size_t length = strlen(name);
+    for (lua_pushnil(L); lua_next(L, methods); lua_pop(L, 1)) {
+        const char *key = lua_tostring(L, -2);
+        if (strncmp(key, name, length) != 0 || key[length] != ':')
+            continue;
+        char line[300];
+        const char *purpose = text_of(L, lua_gettop(L), "purpose");
+        snprintf(line, sizeof line, "  :%-21s %s\n", key + length + 1, purpose ? purpose : "");
+        lua_pushstring(L, line);
+        insert(L, lines);
+    }
+    const char *purpose = text_of(L, entry, "purpose");
+    luaL_buffinit(L, &out);
+    luaL_addstring(&out, name);
+    luaL_addstring(&out, ": ");
+    luaL_addstring(&out, purpose ? purpose : "");
+    luaL_addchar(&out, '\n');
+    for (lua_Integer i = 1, n = (lua_Integer)lua_rawlen(L, lines); i <= n; i++) {
+        lua_rawgeti(L, lines, i);
+        luaL_addvalue(&out);
+    }
+    luaL_pushresult(&out);
+}
+
+static int refuse_help(lua_State *L, const char *asked)
+{
+    static const char *const parts[] = {"functions", "methods", "nouns"};
+    const char *names[200] = {NULL};
+    size_t n = 0;
+    for (size_t i = 0; i < 3; i++) {
+        lua_getfield(L, 2, parts[i]);
+        add_names(L, lua_gettop(L), names, &n, 160);
+    }
+    for (size_t i = 0; lw_method_list[i] != NULL && n < 199; i++)
+        names[n++] = lw_method_list[i]->name;
+    const char *near = lw_nearest(names, asked);
+    char hint[160] = "help() lists what there is";
+    if (near != NULL)
+        snprintf(hint, sizeof hint, "did you mean '%s'? help() lists what there is", near);
+    return lwb_refuse(L, hint, "help: there is nothing called '%s'", asked);
+}
+
+static void push_method(lua_State *L, const lw_method *method)
+{
+    luaL_Buffer out;
+    luaL_buffinit(L, &out);
+    const char *const part[] = {"lw.", method->name, "(profiles, options)\n  ", method->purpose, "\nassumes: ",
+                                method->assumes, "\nsource: ", method->source, "\n"};
+    for (size_t i = 0; i < sizeof part / sizeof *part; i++)
+        luaL_addstring(&out, part[i] ? part[i] : "");
+    add_options(&out, method->options);
+    luaL_pushresult(&out);
+}
+
+/* lw.help(name): the text; at the prompt and in recipes `help "name"` prints it. A word that is both a
+ * function and a noun gets both. */
 static int help(lua_State *L)
 {
     lua_settop(L, 1);
@@ -178,34 +269,39 @@ static int help(lua_State *L)
         return 1;
     }
     char asked[128];
-    if (lua_type(L, 1) == LUA_TUSERDATA)
-        snprintf(asked, sizeof asked, "%s", lwb_kind(L, 1));
-    else {
-        const char *text = lwb_text(L, 1, "help", "the name");
-        snprintf(asked, sizeof asked, "%s", strncmp(text, "lw.", 3) == 0 ? text + 3 : text);
+    bool is_object = lua_type(L, 1) == LUA_TUSERDATA;
+    const char *text = is_object ? lwb_kind(L, 1) : lwb_text(L, 1, "help", "the name");
+    snprintf(asked, sizeof asked, "%s", strncmp(text, "lw.", 3) == 0 ? text + 3 : text);
+    lua_pushliteral(L, ""); /* 3 */
+    bool found = false;
+    if (!is_object && (find(L, 2, "functions", asked) || find(L, 2, "methods", asked))) {
+        push_entry(L, asked, lua_gettop(L));
+        lua_replace(L, 3);
+        lua_settop(L, 3);
+        found = true;
     }
-    const char *names[200] = {NULL};
-    size_t n = 0;
-    if (!find(L, 2, asked, names, &n)) {
-        const lw_method *method = lw_method_named(asked);
-        if (method == NULL) {
-            const char *near = lw_nearest(names, asked);
-            char hint[160] = "help() lists what there is";
-            if (near != NULL)
-                snprintf(hint, sizeof hint, "did you mean '%s'? help() lists what there is", near);
-            return lwb_refuse(L, hint, "help: there is nothing called '%s'", asked);
+    if (!is_object && lw_method_named(asked) != NULL) {
+        push_method(L, lw_method_named(asked));
+        lua_replace(L, 3);
+        found = true;
+    }
+    if (find(L, 2, "nouns", asked)) {
+        if (found) {
+            lua_pushvalue(L, 3);
+            lua_pushliteral(L, "\n");
+            lua_concat(L, 2);
+            lua_replace(L, 3);
         }
-        luaL_Buffer out;
-        luaL_buffinit(L, &out);
-        const char *const part[] = {"lw.", method->name, "(profiles, options)\n  ", method->purpose, "\nassumes: ",
-                                    method->assumes, "\nsource: ", method->source, "\n"};
-        for (size_t i = 0; i < sizeof part / sizeof *part; i++)
-            luaL_addstring(&out, part[i] ? part[i] : "");
-        add_options(&out, method->options);
-        luaL_pushresult(&out);
-        return 1;
+        push_noun(L, 2, asked, lua_gettop(L));
+        lua_pushvalue(L, 3);
+        lua_insert(L, -2);
+        lua_concat(L, 2);
+        lua_replace(L, 3);
+        found = true;
     }
-    push_entry(L, asked, lua_gettop(L));
+    if (!found)
+        return refuse_help(L, asked);
+    lua_settop(L, 3);
     return 1;
 }
 

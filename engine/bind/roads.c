@@ -39,3 +39,17 @@ int lwb_index_road(lua_State *L, const lwb_noun *noun, int tree_at, const char *
             names[n++] = c->name;
     return lwb_unknown_field(L, noun->name, key, names);
 }
+
+const lw_node *lwb_road_node(lua_State *L, int index)
+{
+    int at = lwb_test(L, index, &lwb_lines_noun) != NULL         ? (int)LWB_LINES_TREE
+             : lwb_test(L, index, &lwb_profiles_noun) != NULL    ? (int)LWB_PROFILES_TREE
+             : lwb_test(L, index, &lwb_calibration_noun) != NULL ? (int)LWB_CALIBRATION_TREE
+                                                                 : 0;
+    if (at == 0)
+        return NULL;
+    lua_getiuservalue(L, index, at);
+    const lwb_tree *tree = lwb_test(L, -1, &lwb_tree_noun);
+    lua_pop(L, 1);
+    return tree != NULL ? tree->node : NULL;
+}

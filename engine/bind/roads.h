@@ -26,4 +26,7 @@ enum { LWB_PROFILES_LINES = 1, LWB_PROFILES_CALIBRATION, LWB_PROFILES_TREE, LWB_
  * the noun, and the fields of its tree (user value `tree_at`). Self and key are at 1 and 2. */
 int lwb_index_road(lua_State *L, const lwb_noun *noun, int tree_at, const char *list);
 
+/* The tree of lines, profiles or a calibration at an index, which keeps it alive; NULL for anything else. */
+const lw_node *lwb_road_node(lua_State *L, int index);
+
 #endif

@@ -4,6 +4,7 @@
  * gives nil instead). */
 #include "bind/bind.h"
 #include "bind/figures.h"
+#include "bind/roads.h"
 
 #include <math.h>
 #include <string.h>
@@ -315,8 +316,11 @@ void lwb_add_value(lua_State *L, lw_node *parent, const char *name, int index)
     lw_error err = LW_ERROR_NONE;
     const lw_quantity *quantity = lwb_test_quantity(L, index);
     const lwb_tree *tree = lwb_test(L, index, &lwb_tree_noun);
+    const lw_node *road = lwb_road_node(L, index);
     int type = lua_type(L, index);
-    if (quantity != NULL)
+    if (road != NULL)
+        lw_add_copy(parent, name, road, &err);
+    else if (quantity != NULL)
         lw_add_quantity(parent, name, *quantity, NULL, &err);
     else if (tree != NULL && tree->node != NULL)
         lw_add_copy(parent, name, tree->node, &err);
