@@ -10,9 +10,9 @@
 
 typedef struct lw_sha256 {
     uint32_t state[8];
-    uint64_t size;            /* bytes so far */
-    unsigned char block[64];  /* the block that is not full yet */
-    bool fast;                /* the processor has instructions for it; the digest is the same */
+    uint64_t size;           /* bytes so far */
+    unsigned char block[64]; /* the block that is not full yet */
+    bool fast;               /* the processor has instructions for it; the digest is the same */
 } lw_sha256;
 
 /* Begin, add bytes as often as needed, end: 64 hexadecimal digits, lower case, and a NUL. */

@@ -8,9 +8,9 @@
 #define POINTS_LEAST 3
 #define VALUE_MOST 1e15
 
-__attribute__((format(printf, 6, 7))) static lw_status refuse(const lw_columns *columns, const char *file, size_t i,
-                                                              const char *remedy, lw_error *err, const char *format,
-                                                              ...)
+__attribute__((format(printf, 6, 7))) static lw_status refuse(const lw_columns *columns, const char *file,
+                                                              size_t i, const char *remedy, lw_error *err,
+                                                              const char *format, ...)
 {
     char message[300];
     va_list arguments;
@@ -38,21 +38,23 @@ static lw_status check_angles(const lw_columns *columns, const char *file, lw_er
                       "2theta is %.10g degrees, outside 0 to 180", x[i]);
     if (x[i] == x[i - 1])
         return refuse(columns, file, i,
-                      columns->doubt ? columns->doubt
-                                     : "delete the repeated row; if the angles were rounded, export more digits",
+                      columns->doubt
+                          ? columns->doubt
+                          : "delete the repeated row; if the angles were rounded, export more digits",
                       err, "2theta %.10g degrees is there twice", x[i]);
     bool all = true;
     for (size_t k = 1; k < n; k++)
         all = all && x[k] < x[k - 1];
     return refuse(columns, file, i,
-                  all              ? "the scan runs downwards: sort its rows by 2theta, lowest first"
-                  : columns->doubt ? columns->doubt
-                                   : "sort the rows by 2theta, lowest first; split the file if it holds several scans",
+                  all ? "the scan runs downwards: sort its rows by 2theta, lowest first"
+                  : columns->doubt
+                      ? columns->doubt
+                      : "sort the rows by 2theta, lowest first; split the file if it holds several scans",
                   err, "2theta falls from %.10g to %.10g degrees", x[i - 1], x[i]);
 }
 
-static lw_status check_values(const lw_columns *columns, const char *file, const double *values, const char *what,
-                              lw_error *err)
+static lw_status check_values(const lw_columns *columns, const char *file, const double *values,
+                              const char *what, lw_error *err)
 {
     size_t i = 0;
     while (i < columns->n && fabs(values[i]) <= VALUE_MOST)
@@ -60,7 +62,8 @@ static lw_status check_values(const lw_columns *columns, const char *file, const
     if (i == columns->n)
         return LW_OK;
     if (!isfinite(values[i]))
-        return refuse(columns, file, i, "delete the row or correct it", err, "%s is not a finite number", what);
+        return refuse(columns, file, i, "delete the row or correct it", err, "%s is not a finite number",
+                      what);
     return refuse(columns, file, i, "correct the row, or divide all intensities by one number", err,
                   "%s is %g, beyond %g", what, values[i], VALUE_MOST);
 }
@@ -70,24 +73,27 @@ static lw_status check_sigma(const lw_columns *columns, const char *file, lw_err
     for (size_t i = 0; i < columns->n; i++)
         if (!(columns->sigma[i] > 0))
             return refuse(columns, file, i,
-                          "give each point a standard uncertainty above 0, or read with noise = \"counts\" or \"scaled\"",
+                          "give each point a standard uncertainty above 0, or read with noise = \"counts\" "
+                          "or \"scaled\"",
                           err, "sigma is %g", columns->sigma[i]);
     return LW_OK;
 }
 
-lw_status lw_columns_check(const lw_columns *columns, const char *file, int wanted, lw_noise *noise, lw_error *err)
+lw_status lw_columns_check(const lw_columns *columns, const char *file, int wanted, lw_noise *noise,
+                           lw_error *err)
 {
     if (columns->n < POINTS_LEAST)
-        return lw_fail_at(err, LW_BAD_DATA, file, 0, "a scan has at least 3 points", "only %zu point%s", columns->n,
-                          columns->n == 1 ? "" : "s");
+        return lw_fail_at(err, LW_BAD_DATA, file, 0, "a scan has at least 3 points", "only %zu point%s",
+                          columns->n, columns->n == 1 ? "" : "s");
     lw_status status = check_angles(columns, file, err);
     if (status == LW_OK)
         status = check_values(columns, file, columns->intensity, "the intensity", err);
     bool wants_sigma = wanted == 2 || (wanted == 0 && columns->sigma != NULL);
     if (status == LW_OK && wants_sigma && columns->sigma == NULL)
-        return lw_fail_at(err, LW_BAD_DATA, file, 0,
-                          "add a third column with the standard uncertainty, or read with noise = \"counts\" or \"scaled\"",
-                          "noise = \"sigma\" was asked for, but the file gives none");
+        return lw_fail_at(
+            err, LW_BAD_DATA, file, 0,
+            "add a third column with the standard uncertainty, or read with noise = \"counts\" or \"scaled\"",
+            "noise = \"sigma\" was asked for, but the file gives none");
     if (status == LW_OK && wants_sigma) {
         status = check_values(columns, file, columns->sigma, "sigma", err);
         if (status == LW_OK)
@@ -101,17 +107,18 @@ lw_status lw_columns_check(const lw_columns *columns, const char *file, int want
         double y = columns->intensity[i];
         if (y < 0)
             return refuse(columns, file, i,
-                          "counts can't be negative: give a sigma column, or read with noise = \"scaled\"", err,
-                          "the intensity is %g", y);
+                          "counts can't be negative: give a sigma column, or read with noise = \"scaled\"",
+                          err, "the intensity is %g", y);
         /* below 1e15 the cast is safe; no end here, since a negative value further down says more */
         whole = whole && (wanted != 0 || y == (double)(int64_t)y);
     }
     for (size_t i = 0; !whole; i++)
         if (columns->intensity[i] != floor(columns->intensity[i]))
-            return refuse(columns, file, i,
-                          "give a sigma column, or read with noise = \"scaled\" (or \"counts\" if they are counts all "
-                          "the same)",
-                          err, "the intensity is %.10g, not a whole number of counts, and its noise is not known",
-                          columns->intensity[i]);
+            return refuse(
+                columns, file, i,
+                "give a sigma column, or read with noise = \"scaled\" (or \"counts\" if they are counts all "
+                "the same)",
+                err, "the intensity is %.10g, not a whole number of counts, and its noise is not known",
+                columns->intensity[i]);
     return LW_OK;
 }

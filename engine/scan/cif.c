@@ -6,7 +6,14 @@
 #include <math.h>
 #include <string.h>
 
-typedef enum token_kind { TOKEN_END, TOKEN_DATA, TOKEN_LOOP, TOKEN_PASSED, TOKEN_NAME, TOKEN_VALUE } token_kind;
+typedef enum token_kind {
+    TOKEN_END,
+    TOKEN_DATA,
+    TOKEN_LOOP,
+    TOKEN_PASSED,
+    TOKEN_NAME,
+    TOKEN_VALUE
+} token_kind;
 
 typedef struct token {
     token_kind kind;
@@ -48,7 +55,8 @@ static void skip_space(lw_cif_cursor *cursor, const char *end)
     cursor->at = p;
 }
 
-static lw_status refuse(const lw_cif_cursor *cursor, long line, const char *remedy, const char *message, lw_error *err)
+static lw_status refuse(const lw_cif_cursor *cursor, long line, const char *remedy, const char *message,
+                        lw_error *err)
 {
     return lw_fail_at(err, LW_BAD_DATA, cursor->content->name, line, remedy, "%s", message);
 }
@@ -60,13 +68,15 @@ static void count_lines(lw_cif_cursor *cursor, const char *to)
 }
 
 /* A text between lines that begin with a semicolon; p is at the first one. */
-static lw_status text_field(lw_cif_cursor *cursor, const char *p, const char *end, lw_cif_value *value, lw_error *err)
+static lw_status text_field(lw_cif_cursor *cursor, const char *p, const char *end, lw_cif_value *value,
+                            lw_error *err)
 {
     const char *q = p;
     while ((q = memchr(q, '\n', (size_t)(end - q))) != NULL && (q + 1 >= end || q[1] != ';'))
         q++;
     if (q == NULL)
-        return refuse(cursor, cursor->line, "copy the file again, or end the text with a line that begins with ;",
+        return refuse(cursor, cursor->line,
+                      "copy the file again, or end the text with a line that begins with ;",
                       "the text that begins here has no end", err);
     value->text = p + 1;
     value->length = (size_t)(q - p - 1);
@@ -75,7 +85,8 @@ static lw_status text_field(lw_cif_cursor *cursor, const char *p, const char *en
     return LW_OK;
 }
 
-static lw_status quoted(lw_cif_cursor *cursor, const char *p, const char *end, lw_cif_value *value, lw_error *err)
+static lw_status quoted(lw_cif_cursor *cursor, const char *p, const char *end, lw_cif_value *value,
+                        lw_error *err)
 {
     char quote = *p;
     value->quoted = true;
@@ -97,11 +108,13 @@ static lw_status quoted(lw_cif_cursor *cursor, const char *p, const char *end, l
             cursor->at = q + 1;
             return LW_OK;
         }
-    return refuse(cursor, cursor->line, "close the quotes on the same line", "a quoted value has no end", err);
+    return refuse(cursor, cursor->line, "close the quotes on the same line", "a quoted value has no end",
+                  err);
 }
 
 /* A list or table of CIF 2.0, passed over as one value. */
-static lw_status bracketed(lw_cif_cursor *cursor, const char *p, const char *end, lw_cif_value *value, lw_error *err)
+static lw_status bracketed(lw_cif_cursor *cursor, const char *p, const char *end, lw_cif_value *value,
+                           lw_error *err)
 {
     long depth = 0;
     value->quoted = true;
@@ -160,7 +173,8 @@ static lw_cif_cursor cursor_at_start(const lw_content *content)
     return (lw_cif_cursor){.content = content,
                            .at = content->bytes,
                            .line = 1,
-                           .second_version = content->size >= 10 && memcmp(content->bytes, "#\\#CIF_2.0", 10) == 0};
+                           .second_version =
+                               content->size >= 10 && memcmp(content->bytes, "#\\#CIF_2.0", 10) == 0};
 }
 
 bool lw_cif_claims(const lw_content *content)
@@ -169,7 +183,8 @@ bool lw_cif_claims(const lw_content *content)
     const char *end = content->bytes + content->size;
     skip_space(&cursor, end);
     const char *p = cursor.at;
-    bool inside = begins(p, end, "data_") || begins(p, end, "loop_") || begins(p, end, "global_") || (p < end && *p == '_');
+    bool inside = begins(p, end, "data_") || begins(p, end, "loop_") || begins(p, end, "global_") ||
+                  (p < end && *p == '_');
     return inside || begins(content->bytes, end, "#\\#cif_");
 }
 
@@ -212,7 +227,8 @@ static lw_cif_item *new_item(lw_arena *arena, const token *t, lw_error *err)
 }
 
 /* Reads names and values after loop_, and leaves the token that follows in *t. */
-static lw_status read_loop(lw_arena *arena, lw_cif_cursor *cursor, lw_cif_item ***tail, token *t, lw_error *err)
+static lw_status read_loop(lw_arena *arena, lw_cif_cursor *cursor, lw_cif_item ***tail, token *t,
+                           lw_error *err)
 {
     long line = cursor->line;
     lw_cif_loop *loop = lw_arena_take(arena, 1, sizeof *loop, err);
@@ -275,7 +291,8 @@ lw_status lw_cif_read(lw_arena *arena, const lw_content *content, lw_cif_block *
         if (t.kind == TOKEN_DATA || items == NULL) {
             /* names before any data_ get a block without a name */
             bool named = t.kind == TOKEN_DATA;
-            lw_cif_block *block = new_block(arena, named ? t.value.text : "", named ? t.value.length : 0, err);
+            lw_cif_block *block =
+                new_block(arena, named ? t.value.text : "", named ? t.value.length : 0, err);
             if (block == NULL)
                 return LW_OUT_OF_MEMORY;
             *tail = block;
@@ -305,7 +322,8 @@ lw_status lw_cif_read(lw_arena *arena, const lw_content *content, lw_cif_block *
             *items = item;
             items = &item->next;
         } else if (t.kind == TOKEN_VALUE)
-            return refuse(&cursor, t.value.line, "put texts with blanks in quotes, and each value after its name",
+            return refuse(&cursor, t.value.line,
+                          "put texts with blanks in quotes, and each value after its name",
                           "a value that belongs to no data name", err);
         else
             status = next_token(&cursor, &t, err);

@@ -67,7 +67,8 @@ static lw_status bad_gzip(const lw_content *content, const char *what, lw_error 
 }
 
 /* Inflates every member of a gzip file (RFC 1952) from packed[size] into content->bytes. */
-static lw_status inflate_all(lw_engine *engine, const char *packed, size_t size, lw_content *content, lw_error *err)
+static lw_status inflate_all(lw_engine *engine, const char *packed, size_t size, lw_content *content,
+                             lw_error *err)
 {
     z_stream stream = {.zalloc = zlib_take, .zfree = zlib_give, .opaque = engine};
     if (inflateInit2(&stream, 15 + 16) != Z_OK)
@@ -172,8 +173,8 @@ static lw_status read_all(lw_engine *engine, int file, lw_content *content, lw_e
     for (;;) {
         if (content->size == room_size) {
             if (room_size == SIZE_MOST)
-                return lw_fail_at(err, LW_BAD_DATA, content->name, 0, TOO_LARGE, "the file is larger than %zu MB",
-                                  SIZE_MOST >> 20);
+                return lw_fail_at(err, LW_BAD_DATA, content->name, 0, TOO_LARGE,
+                                  "the file is larger than %zu MB", SIZE_MOST >> 20);
             room_size = room_size > SIZE_MOST / 2 ? SIZE_MOST : 2 * room_size;
             char *grown = room_of(engine, content->bytes, room_size, err);
             if (grown == NULL)
@@ -198,7 +199,8 @@ static lw_status read_all(lw_engine *engine, int file, lw_content *content, lw_e
     }
 }
 
-lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, lw_content *content, lw_error *err)
+lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, lw_content *content,
+                          lw_error *err)
 {
     *content = (lw_content){.name = path};
     int file = open(path, O_RDONLY | O_CLOEXEC | O_NOCTTY);
@@ -206,8 +208,8 @@ lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, 
         char reason[128];
         if (strerror_r(errno, reason, sizeof reason) != 0)
             reason[0] = '\0';
-        return lw_fail_at(err, LW_IO, path, 0, "check the name and the folder", "the file can't be opened (%s)",
-                          reason);
+        return lw_fail_at(err, LW_IO, path, 0, "check the name and the folder",
+                          "the file can't be opened (%s)", reason);
     }
     lw_status status = read_all(engine, file, content, err);
     close(file);
@@ -217,12 +219,13 @@ lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, 
     return status;
 }
 
-lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes, size_t size, lw_sha256 *hash,
-                          lw_content *content, lw_error *err)
+lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes, size_t size,
+                          lw_sha256 *hash, lw_content *content, lw_error *err)
 {
     *content = (lw_content){.name = name};
     if (size > SIZE_MOST)
-        return lw_fail_at(err, LW_BAD_DATA, name, 0, TOO_LARGE, "the content is larger than %zu MB", SIZE_MOST >> 20);
+        return lw_fail_at(err, LW_BAD_DATA, name, 0, TOO_LARGE, "the content is larger than %zu MB",
+                          SIZE_MOST >> 20);
     content->bytes = room_of(engine, NULL, size, err);
     if (content->bytes == NULL)
         return LW_OUT_OF_MEMORY;

@@ -13,12 +13,12 @@
 #include <math.h>
 #include <stdint.h>
 
-#define WINDOW 25    /* points of the running median */
+#define WINDOW 25 /* points of the running median */
 #define LAGS 6
-#define REACH 3      /* differences that share a point lie at most this far apart */
+#define REACH 3 /* differences that share a point lie at most this far apart */
 #define CLIP 4.0
 #define PASSES_MOST 12
-#define BINS 1600    /* of the histogram that gives the first scale: 10 an octave */
+#define BINS 1600          /* of the histogram that gives the first scale: 10 an octave */
 #define FACTOR_LEAST 1e-12 /* of a scan without any noise */
 
 /* The running median, for points taken in ascending order. */
@@ -162,7 +162,8 @@ void lw_scan_estimate_noise(const lw_scan *scan, double *factor, double *correla
     }
     double determinant = aa * bb - ab * ab;
     double g0 = (bb * ac - ab * bc) / determinant, g1 = (aa * bc - ab * ac) / determinant;
-    /* a negative correlation is chance, and a short scan can't tell one: then the plain variance is the better figure */
+    /* a negative correlation is chance, and a short scan can't tell one: then the plain variance is the
+     * better figure */
     if (g1 <= 0 || g0 <= 0 || used < 100) {
         g0 = covariance[0] / 20;
         g1 = 0;

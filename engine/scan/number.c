@@ -5,7 +5,7 @@
 #include <stdlib.h>
 
 #define LENGTH_MOST 1000
-#define DIGITS_SAFE 19   /* any 19 digits fit 64 bits */
+#define DIGITS_SAFE 19     /* any 19 digits fit 64 bits */
 #define EXPONENT_MOST 9999 /* beyond it every number of LENGTH_MOST digits is 0 or infinite */
 
 const double lw_power_of_ten[23] = {1e0,  1e1,  1e2,  1e3,  1e4,  1e5,  1e6,  1e7,  1e8,  1e9,  1e10, 1e11,
@@ -17,7 +17,8 @@ static bool is_digit(char c)
     return c >= '0' && c <= '9';
 }
 
-/* strtod() in the C locale, for the calling thread only, so that a host's locale neither matters nor changes. */
+/* strtod() in the C locale, for the calling thread only, so that a host's locale neither matters nor changes.
+ */
 static double library_number(const char *text)
 {
     locale_t plain = newlocale(LC_ALL_MASK, "C", (locale_t)0);
@@ -69,7 +70,8 @@ const char *lw_number_slow(const char *s, char mark, double *value)
         return NULL;
     if (significant <= DIGITS_SAFE && mantissa < (uint64_t)1 << 53 && exponent >= -22 && exponent <= 22) {
         double magnitude = (double)(int64_t)mantissa;
-        magnitude = exponent < 0 ? magnitude / lw_power_of_ten[-exponent] : magnitude * lw_power_of_ten[exponent];
+        magnitude =
+            exponent < 0 ? magnitude / lw_power_of_ten[-exponent] : magnitude * lw_power_of_ten[exponent];
         *value = *from == '-' ? -magnitude : magnitude;
         return s;
     }

@@ -47,7 +47,8 @@ static inline uint64_t lw_digit_bytes(const char *s, unsigned n)
 static inline uint64_t lw_digit_value(uint64_t w)
 {
     w = w * 10 + (w >> 8);
-    return ((w & 0x000000FF000000FFu) * 0x000F424000000064u + (w >> 16 & 0x000000FF000000FFu) * 0x0000271000000001u) >>
+    return ((w & 0x000000FF000000FFu) * 0x000F424000000064u +
+            (w >> 16 & 0x000000FF000000FFu) * 0x0000271000000001u) >>
            32;
 }
 
@@ -76,8 +77,9 @@ static inline unsigned lw_eight_digits(const char *s, uint64_t *digits)
 #endif
 }
 
-/* Where the bytes that are not digits stand among the next `width` (32 or 64): bit i for s[i], and all bits from
- * `width` on (of 64: the last one), so that the mask never runs out; a number cut by its end is followed by a digit. With it a row is cut into its numbers without waiting for the end of one to find the next. */
+/* Where the bytes that are not digits stand among the next `width` (32 or 64): bit i for s[i], and all bits
+ * from `width` on (of 64: the last one), so that the mask never runs out; a number cut by its end is followed
+ * by a digit. With it a row is cut into its numbers without waiting for the end of one to find the next. */
 static inline uint64_t lw_not_digits(const char *s, unsigned width)
 {
     uint64_t mask = ~(uint64_t)0 << (width < 64 ? width : 63);
@@ -147,7 +149,8 @@ static inline const char *lw_number(const char *s, char mark, double *value)
     }
     n += fraction;
     /* one more digit or an exponent would belong to the number: not for this path */
-    if (n == 0 || n > 18 || (unsigned char)(*s - '0') < 10 || (*s | 32) == 'e' || mantissa >= (uint64_t)1 << 53)
+    if (n == 0 || n > 18 || (unsigned char)(*s - '0') < 10 || (*s | 32) == 'e' ||
+        mantissa >= (uint64_t)1 << 53)
         return lw_number_slow(from, mark, value);
     double magnitude = (double)(int64_t)mantissa / lw_power_of_ten[fraction];
     *value = negative ? -magnitude : magnitude;

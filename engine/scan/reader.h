@@ -9,11 +9,12 @@
 
 /* The inflated content of a file. */
 typedef struct lw_content {
-    const char *name;  /* of the file, for messages */
-    char *bytes;       /* [size], then LW_NUMBER_SPARE zero bytes */
+    const char *name; /* of the file, for messages */
+    char *bytes;      /* [size], then LW_NUMBER_SPARE zero bytes */
     size_t size;
-    lw_sha256 *hash;   /* NULL, or a digest of these bytes that a reader may carry on while it reads (see `hashed`) */
-    size_t hashed;     /* bytes that the digest holds already */
+    lw_sha256
+        *hash; /* NULL, or a digest of these bytes that a reader may carry on while it reads (see `hashed`) */
+    size_t hashed; /* bytes that the digest holds already */
 } lw_content;
 
 /* Columns as read, before they are checked. Memory belongs to the arena. */
@@ -34,8 +35,8 @@ typedef struct lw_columns {
 typedef struct lw_reader {
     const char *name; /* as help shows it */
     bool (*claims)(const lw_content *content);
-    lw_status (*read)(lw_engine *engine, lw_content *content, const lw_scan_options *options, lw_columns *columns,
-                      lw_error *err);
+    lw_status (*read)(lw_engine *engine, lw_content *content, const lw_scan_options *options,
+                      lw_columns *columns, lw_error *err);
 } lw_reader;
 
 extern const lw_reader lw_text_reader;
@@ -46,14 +47,16 @@ extern const lw_reader lw_pdcif_reader;
  * LW_OUT_OF_MEMORY, LW_CANCELLED.
  * hash: begun by the caller. If the content is the file's own bytes it is left for the reader to carry on;
  * if it was inflated, the file's bytes are already in it and content->hash is NULL. */
-lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, lw_content *content, lw_error *err);
-lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes, size_t size, lw_sha256 *hash,
-                          lw_content *content, lw_error *err);
+lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, lw_content *content,
+                          lw_error *err);
+lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes, size_t size,
+                          lw_sha256 *hash, lw_content *content, lw_error *err);
 void lw_content_free(lw_engine *engine, lw_content *content);
 
 /* Refuses columns that can't be a scan: fewer than 3 points, angles that don't ascend or lie outside 0 to
  * 180 degrees, values that are not finite or beyond 1e15, sigma that is not positive, intensities that the
  * kind of noise can't have. Settles "auto" into *noise. file: for messages. */
-lw_status lw_columns_check(const lw_columns *columns, const char *file, int wanted, lw_noise *noise, lw_error *err);
+lw_status lw_columns_check(const lw_columns *columns, const char *file, int wanted, lw_noise *noise,
+                           lw_error *err);
 
 #endif

@@ -8,15 +8,34 @@
 static const char *const noise_words[] = {"auto", "counts", "sigma", "scaled", NULL};
 
 const lw_option lw_scan_option_table[] = {
-    {.key = "noise", .kind = LW_OPTION_CHOICE, .unit = "", .standard = "auto", .choices = noise_words,
+    {.key = "noise",
+     .kind = LW_OPTION_CHOICE,
+     .unit = "",
+     .standard = "auto",
+     .choices = noise_words,
      .offset = offsetof(lw_scan_options, noise),
-     .help = "what the noise is: counts (Poisson), sigma (a third column), scaled (factor estimated), or auto"},
-    {.key = "range", .kind = LW_OPTION_RANGE, .unit = "deg", .standard = "the whole scan", .least = 0, .most = 180,
-     .offset = offsetof(lw_scan_options, range), .help = "keep only this range of 2theta, {low, high}"},
-    {.key = "block", .kind = LW_OPTION_TEXT, .unit = "", .standard = "the only one",
-     .offset = offsetof(lw_scan_options, block), .help = "data block of a CIF that holds several scans"},
-    {.key = "radiation", .kind = LW_OPTION_NOUN, .unit = "radiation", .standard = "that of the file",
-     .offset = offsetof(lw_scan_options, radiation), .help = "radiation of the scan, instead of what the file says"},
+     .help =
+         "what the noise is: counts (Poisson), sigma (a third column), scaled (factor estimated), or auto"},
+    {.key = "range",
+     .kind = LW_OPTION_RANGE,
+     .unit = "deg",
+     .standard = "the whole scan",
+     .least = 0,
+     .most = 180,
+     .offset = offsetof(lw_scan_options, range),
+     .help = "keep only this range of 2theta, {low, high}"},
+    {.key = "block",
+     .kind = LW_OPTION_TEXT,
+     .unit = "",
+     .standard = "the only one",
+     .offset = offsetof(lw_scan_options, block),
+     .help = "data block of a CIF that holds several scans"},
+    {.key = "radiation",
+     .kind = LW_OPTION_NOUN,
+     .unit = "radiation",
+     .standard = "that of the file",
+     .offset = offsetof(lw_scan_options, radiation),
+     .help = "radiation of the scan, instead of what the file says"},
     LW_OPTIONS_END};
 
 lw_scan_options lw_scan_defaults(void)
@@ -75,8 +94,8 @@ lw_status lw_scan_crop(const lw_scan *scan, double low_deg, double high_deg, lw_
 {
     *cropped = NULL;
     if (!(low_deg < high_deg) || !isfinite(low_deg) || !isfinite(high_deg))
-        return lw_fail(err, LW_BAD_ARGUMENT, "give the lower angle first", "the range %g to %g degrees is empty",
-                       low_deg, high_deg);
+        return lw_fail(err, LW_BAD_ARGUMENT, "give the lower angle first",
+                       "the range %g to %g degrees is empty", low_deg, high_deg);
     size_t first = points_below(scan, low_deg, false), end = points_below(scan, high_deg, true);
     size_t n = end - first;
     if (n < 3)

@@ -19,9 +19,9 @@ typedef enum lw_noise {
 
 typedef struct lw_scan {
     lw_arena arena;
-    const char *file;      /* as the user named it; "" for a made scan */
-    char hash[65];         /* SHA-256 of the file's bytes, hexadecimal; empty for a made scan */
-    const char *header;    /* comment lines at the top, newline-separated */
+    const char *file;   /* as the user named it; "" for a made scan */
+    char hash[65];      /* SHA-256 of the file's bytes, hexadecimal; empty for a made scan */
+    const char *header; /* comment lines at the top, newline-separated */
     size_t n;
     const double *two_theta_deg; /* [n] */
     const double *intensity;     /* [n], counts or scaled */
@@ -31,14 +31,14 @@ typedef struct lw_scan {
     double correlation;     /* of neighbouring points' noise, 0 for counts */
     bool has_radiation;
     lw_radiation radiation;
-    size_t first_line;      /* line of the file that holds point 0 (text), 0 if not known */
+    size_t first_line; /* line of the file that holds point 0 (text), 0 if not known */
 } lw_scan;
 
 /* Options of reading; key names are those of lw.read_scan. */
 typedef struct lw_scan_options {
-    int noise;              /* index: "auto", "counts", "sigma", "scaled" */
-    double range[2];        /* keep only these 2theta, degrees; both 0 = all */
-    const char *block;      /* data block of a CIF with several scans; NULL = the only one */
+    int noise;                     /* index: "auto", "counts", "sigma", "scaled" */
+    double range[2];               /* keep only these 2theta, degrees; both 0 = all */
+    const char *block;             /* data block of a CIF with several scans; NULL = the only one */
     const lw_radiation *radiation; /* what the user says; overrides the file's; NULL = the file's, if any */
 } lw_scan_options;
 extern const lw_option lw_scan_option_table[];
@@ -61,7 +61,8 @@ lw_status lw_scan_make(lw_engine *engine, const char *name, size_t n, const doub
                        lw_scan **scan, lw_error *err);
 
 /* A new scan of the points with low <= 2theta <= high (degrees). LW_BAD_ARGUMENT if fewer than 3 remain. */
-lw_status lw_scan_crop(const lw_scan *scan, double low_deg, double high_deg, lw_scan **cropped, lw_error *err);
+lw_status lw_scan_crop(const lw_scan *scan, double low_deg, double high_deg, lw_scan **cropped,
+                       lw_error *err);
 
 void lw_scan_free(lw_scan *scan); /* accepts NULL */
 

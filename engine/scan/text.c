@@ -3,10 +3,11 @@
  * (separator, decimal mark, number of columns) is settled by the first row of numbers and then holds for
  * the whole file, so that a file is never read in two ways.
  *
- * Rows are read by a fast loop that knows only clean rows; whatever it does not understand it leaves to
- * read_line(), which knows comments and words every refusal. */
+ * Rows are read by a fast loop (rows.c) that knows only clean rows; whatever it does not understand is left
+ * to read_line(), which knows comments and words every refusal. */
 #include "scan/number.h"
 #include "scan/reader.h"
+#include "scan/rows.h"
 
 #include <stdarg.h>
 #include <stdio.h>
@@ -14,7 +15,7 @@
 
 #define HEADER_MOST ((size_t)64 << 10)
 #define ROWS_BETWEEN_POLLS 65536
-#define COLUMNS_MOST 3
+#define COLUMNS_MOST LW_ROWS_COLUMNS_MOST
 
 typedef struct text {
     lw_content *content;
@@ -66,8 +67,8 @@ static long line_number(const text *t, const char *at)
 }
 
 /* Words a refusal about the line being read. */
-__attribute__((format(printf, 4, 5))) static line_kind refuse(const text *t, lw_error *err, const char *remedy,
-                                                              const char *format, ...)
+__attribute__((format(printf, 4, 5))) static line_kind refuse(const text *t, lw_error *err,
+                                                              const char *remedy, const char *format, ...)
 {
     char message[400];
     va_list arguments;
@@ -155,7 +156,8 @@ static line_kind settle_form(text *t, const char *p, const char *eol, lw_error *
     for (const char *q = p; q < eol; q++) {
         semicolon = semicolon || *q == ';';
         point = point || *q == '.';
-        if (is_blank(*q) && !is_blank(q[-1]) && q[-1] != ',' && q[-1] != ';' && *skip_blanks(q) != ',' && *skip_blanks(q) != ';')
+        if (is_blank(*q) && !is_blank(q[-1]) && q[-1] != ',' && q[-1] != ';' && *skip_blanks(q) != ',' &&
+            *skip_blanks(q) != ';')
             blank = true;
         if (*q == ',') {
             comma = true;
@@ -175,8 +177,9 @@ static line_kind settle_form(text *t, const char *p, const char *eol, lw_error *
         if (!loose && memchr(p, ' ', (size_t)(eol - p)) != NULL && !point)
             for (const char *q = p + 1; q < eol; q++)
                 if (*q == ',' && !is_blank(q[1]) && !is_blank(q[-1]))
-                    return refuse(t, err, MARK_HELP,
-                                  "commas with and without blanks in one row can be read in more than one way");
+                    return refuse(
+                        t, err, MARK_HELP,
+                        "commas with and without blanks in one row can be read in more than one way");
     } else {
         t->separator = ' ';
         if (comma && point)
@@ -189,18 +192,22 @@ static line_kind settle_form(text *t, const char *p, const char *eol, lw_error *
     while (next_field(t->separator, &p, eol, &from, &to)) {
         char word[32];
         if (columns == 0 && !is_number(from, to, t->mark) && !is_not_finite(from, to))
-            return refuse(t, err, "a scan has rows of 2theta, counts and perhaps sigma; put # before other lines",
+            return refuse(t, err,
+                          "a scan has rows of 2theta, counts and perhaps sigma; put # before other lines",
                           "'%s' is not a number", shown(from, to, word));
         columns++;
     }
     if (columns < 2)
-        return refuse(t, err, "write 2theta (degrees) and counts side by side, separated by blanks, commas or semicolons",
-                      "one column only: an intensity without its angle, or an angle without its intensity");
+        return refuse(
+            t, err,
+            "write 2theta (degrees) and counts side by side, separated by blanks, commas or semicolons",
+            "one column only: an intensity without its angle, or an angle without its intensity");
     if (columns > COLUMNS_MOST)
         return refuse(t, err,
-                      t->separator == ',' ? "keep 2theta, counts and sigma; if the comma is the decimal mark, separate "
-                                            "the columns by blanks or semicolons"
-                                          : "keep 2theta, counts and, if known, sigma",
+                      t->separator == ','
+                          ? "keep 2theta, counts and sigma; if the comma is the decimal mark, separate "
+                            "the columns by blanks or semicolons"
+                          : "keep 2theta, counts and, if known, sigma",
                       "%u columns, expected 2 or 3", columns);
     t->columns = columns;
     return LINE_NUMBERS;
@@ -221,8 +228,8 @@ static line_kind refuse_field(const text *t, unsigned column, const char *from, 
     char word[32];
     shown(from, to, word);
     if (is_not_finite(from, to))
-        return refuse(t, err, "delete the row or measure the point again", "column %u is %s, not a finite number",
-                      column, word);
+        return refuse(t, err, "delete the row or measure the point again",
+                      "column %u is %s, not a finite number", column, word);
     if (last)
         return refuse(t, err, CUT_HELP, "the last line is cut short: column %u is '%s'", column, word);
     if (from == to)
@@ -232,8 +239,10 @@ static line_kind refuse_field(const text *t, unsigned column, const char *from, 
                       "column %u is '%s', but other rows have a decimal %s", column, word,
                       t->mark == '.' ? "point" : "comma");
     if ((unsigned char)*from < 32 || (unsigned char)*from == 127)
-        return refuse(t, err, "export the scan as text", "binary content (byte 0x%02x)", (unsigned char)*from);
-    return refuse(t, err, t->first ? "correct or delete the row; put # before remarks" : "put # before header lines",
+        return refuse(t, err, "export the scan as text", "binary content (byte 0x%02x)",
+                      (unsigned char)*from);
+    return refuse(t, err,
+                  t->first ? "correct or delete the row; put # before remarks" : "put # before header lines",
                   "column %u is '%s', not a number", column, word);
 }
 
@@ -269,119 +278,27 @@ static line_kind read_line(text *t, const char *p, double row[COLUMNS_MOST], con
     while (next_field(t->separator, &p, eol, &from, &to)) {
         double value = 0;
         bool good = lw_number(from, t->mark, &value) == to && from < to;
-        if (!good && comma_is_mark(t) && memchr(from, ',', (size_t)(to - from)) != NULL && is_number(from, to, ',')) {
+        if (!good && comma_is_mark(t) && memchr(from, ',', (size_t)(to - from)) != NULL &&
+            is_number(from, to, ',')) {
             t->mark = ',';
             good = lw_number(from, ',', &value) == to;
         }
         if (!good)
-            return refuse_field(t, columns + 1, from, to, last && t->first != NULL && columns + 1 == t->columns, err);
+            return refuse_field(t, columns + 1, from, to,
+                                last && t->first != NULL && columns + 1 == t->columns, err);
         if (columns < COLUMNS_MOST)
             row[columns] = value;
         columns++;
     }
     if (columns < t->columns && last && t->first != NULL)
-        return refuse(t, err, CUT_HELP, "the last line is cut short: %u column%s, the others have %u", columns,
-                      columns == 1 ? "" : "s", t->columns);
+        return refuse(t, err, CUT_HELP, "the last line is cut short: %u column%s, the others have %u",
+                      columns, columns == 1 ? "" : "s", t->columns);
     if (columns != t->columns)
         return refuse(t, err, "every row must have the same columns; put # before remarks",
                       "%u column%s, the rows before have %u", columns, columns == 1 ? "" : "s", t->columns);
     if (t->first == NULL)
         t->first = t->line;
     return LINE_NUMBERS;
-}
-
-/* Steps over one separator; NULL if there is none. */
-static inline const char *gap(const char *p, char separator)
-{
-    const char *q = p;
-    while (*q == ' ' || *q == '\t')
-        q++;
-    if (separator == ' ')
-        return q > p ? q : NULL;
-    if (*q != separator)
-        return NULL;
-    for (q++; *q == ' ' || *q == '\t';)
-        q++;
-    return q;
-}
-
-/* Steps over the separator at *at, and the blanks behind it. False if there is none, or the row is too long. */
-static inline bool plain_gap(const char *row, uint64_t *mask, unsigned *at, unsigned width, char separator)
-{
-    char c = row[*at];
-    if (c != separator && !(separator == ' ' && c == '\t'))
-        return false;
-    do
-        c = row[++*at];
-    while (c == ' ' || c == '\t');
-    if (*at >= width - 1)
-        return false;
-    *mask &= ~(uint64_t)0 << *at;
-    return true;
-}
-
-/* Reads one row of plain numbers. Returns the start of the next line; NULL if the row is anything else. */
-static inline __attribute__((always_inline)) const char *plain_row(const char *p, double *x, double *y, double *sigma,
-                                                                   unsigned columns, char separator, char mark)
-{
-    unsigned width = columns == 2 ? 32 : 64, at = 0;
-    uint64_t mask = lw_not_digits(p, width);
-    if (!lw_plain_number(p, &mask, &at, mark, x) || !plain_gap(p, &mask, &at, width, separator) ||
-        !lw_plain_number(p, &mask, &at, mark, y))
-        return NULL;
-    if (columns == 3 && (!plain_gap(p, &mask, &at, width, separator) || !lw_plain_number(p, &mask, &at, mark, sigma)))
-        return NULL;
-    at += p[at] == '\r';
-    return p[at] == '\n' ? p + at + 1 : NULL;
-}
-
-/* Reads clean rows from p on, until one is not clean or `most` are read; *n counts them. The digest is
- * carried on alongside, a block whenever the rows have passed one: hashing waits for its own results, and
- * the processor reads the next rows meanwhile (one seventh less time than in portions of 1024 bytes). Returns the start of the first line that was not read. */
-static inline __attribute__((always_inline)) const char *
-read_clean(const text *t, const char *p, size_t most, double *column[COLUMNS_MOST], size_t *n, unsigned columns,
-           char separator)
-{
-    const char *end = t->end;
-    lw_content *content = t->content;
-    const char *block = content->bytes + content->hashed;
-    lw_sha256 *hash = content->hash;
-    size_t i = *n;
-    double *x = column[0], *y = column[1], *sigma = column[2];
-    char mark = t->mark;
-    for (size_t stop = i + most; i < stop && p < end; i++) {
-        const char *q = plain_row(p, x + i, y + i, columns == 3 ? sigma + i : NULL, columns, separator, mark);
-        if (q == NULL) {
-            q = p;
-            while (*q == ' ' || *q == '\t')
-                q++;
-            q = lw_number(q, mark, &x[i]);
-            if (q == NULL || (q = gap(q, separator)) == NULL || (q = lw_number(q, mark, &y[i])) == NULL)
-                break;
-            if (columns == 3 && ((q = gap(q, separator)) == NULL || (q = lw_number(q, mark, &sigma[i])) == NULL))
-                break;
-            while (is_blank(*q))
-                q++;
-            if (*q++ != '\n')
-                break;
-        }
-        p = q;
-        if (hash != NULL)
-            for (; block + 64 <= p; block += 64)
-                lw_sha256_add(hash, block, 64);
-    }
-    if (hash != NULL)
-        content->hashed = (size_t)(block - content->bytes);
-    *n = i;
-    return p;
-}
-
-static const char *read_rows(const text *t, const char *p, double *column[COLUMNS_MOST], size_t *n)
-{
-    size_t most = ROWS_BETWEEN_POLLS;
-    if (t->columns == 2 && t->separator == ' ')
-        return read_clean(t, p, most, column, n, 2, ' ');
-    return read_clean(t, p, most, column, n, t->columns, t->separator);
 }
 
 /* Decimals that the last number of a line shows. */
@@ -484,13 +401,14 @@ static lw_status check_bytes(lw_content *content, lw_error *err)
 {
     const char *bytes = content->bytes;
     if (content->size == 0)
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "export or copy the scan again", "the file is empty");
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "export or copy the scan again",
+                          "the file is empty");
     if (content->size >= 2 && (memcmp(bytes, "\xff\xfe", 2) == 0 || memcmp(bytes, "\xfe\xff", 2) == 0))
         return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "save it as plain text (ASCII or UTF-8)",
                           "the text is in UTF-16");
     if (memchr(bytes, '\0', content->size) != NULL)
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "export the scan as columns of text or as pdCIF",
-                          "binary content, not a text");
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0,
+                          "export the scan as columns of text or as pdCIF", "binary content, not a text");
     /* one old line end only: carriage returns alone */
     if (memchr(bytes, '\n', content->size) == NULL && memchr(bytes, '\r', content->size) != NULL) {
         if (content->hash != NULL)
@@ -529,8 +447,7 @@ static lw_status read_text(lw_engine *engine, lw_content *content, const lw_scan
     if (t == NULL)
         return LW_OUT_OF_MEMORY;
     *t = (text){.content = content, .end = content->bytes + content->size, .separator = ' ', .mark = '.'};
-    size_t room = 0, n = 0;
-    double *column[COLUMNS_MOST] = {NULL, NULL, NULL};
+    lw_rows rows = {.content = content};
     for (const char *p = content->bytes; p < t->end;) {
         double row[COLUMNS_MOST];
         const char *next;
@@ -540,34 +457,38 @@ static lw_status read_text(lw_engine *engine, lw_content *content, const lw_scan
         p = next;
         if (kind == LINE_BARE)
             continue;
-        if (n == 0) {
+        if (rows.n == 0) {
+            size_t room = lines_at_most(content);
             columns->header = gather_header(t, columns->arena, err);
-            room = lines_at_most(content);
-            column[0] = lw_arena_take(columns->arena, room * t->columns, sizeof(double), err);
-            if (columns->header == NULL || column[0] == NULL)
+            rows.column[0] = lw_arena_take(columns->arena, room * t->columns, sizeof(double), err);
+            if (columns->header == NULL || rows.column[0] == NULL)
                 return LW_OUT_OF_MEMORY;
-            column[1] = column[0] + room;
-            column[2] = t->columns == 3 ? column[1] + room : NULL;
+            rows.column[1] = rows.column[0] + room;
+            rows.column[2] = t->columns == 3 ? rows.column[1] + room : NULL;
         }
         for (unsigned k = 0; k < t->columns; k++)
-            column[k][n] = row[k];
-        n++;
-        p = read_rows(t, p, column, &n);
+            rows.column[k][rows.n] = row[k];
+        rows.n++;
+        rows.separator = t->separator;
+        rows.mark = t->mark;
+        rows.columns = t->columns;
+        p = lw_rows_read(&rows, p, ROWS_BETWEEN_POLLS);
         status = lw_engine_poll(engine, err);
         if (status != LW_OK)
             return status;
     }
-    if (n == 0)
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "a scan has rows of 2theta (degrees) and counts",
-                          "the file has no numbers");
+    if (rows.n == 0)
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0,
+                          "a scan has rows of 2theta (degrees) and counts", "the file has no numbers");
     if (t->end[-1] != '\n' && t->line > t->first && is_cut_number(t)) {
-        refuse(t, err, CUT_HELP, "the last line is cut short: its last number has fewer decimals than all before");
+        refuse(t, err, CUT_HELP,
+               "the last line is cut short: its last number has fewer decimals than all before");
         return LW_BAD_DATA;
     }
-    columns->n = n;
-    columns->two_theta_deg = column[0];
-    columns->intensity = column[1];
-    columns->sigma = column[2];
+    columns->n = rows.n;
+    columns->two_theta_deg = rows.column[0];
+    columns->intensity = rows.column[1];
+    columns->sigma = rows.column[2];
     columns->line_of = line_of;
     columns->origin = t;
     if (t->separator == ',' && memchr(t->first, '.', (size_t)(t->end - t->first)) == NULL)

@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Smoke test of the readers: a few thousand damaged copies of sound files (fixed seed). Whatever comes in, the
- * reader either refuses with a message and a remedy or gives a scan that keeps its promises. Meant for the build
- * with sanitizers, where a wrong access ends the program. */
+/* Smoke test of the readers: a few thousand damaged copies of sound files (fixed seed). Whatever comes in,
+ * the reader either refuses with a message and a remedy or gives a scan that keeps its promises. Meant for
+ * the build with sanitizers, where a wrong access ends the program. */
 #include "check.h"
 
 #include "scan/scan.h"
@@ -27,7 +27,8 @@ static size_t below(size_t n)
 /* Changes, inserts, deletes, repeats or cuts at random places. */
 static size_t damage(char *bytes, size_t size)
 {
-    static const char telling[] = "0123456789.,;:+-eE#!\"'\n\r\t _()[]{}?\0\x1a\x1f\x8b\xff\xfe\xef%nainfNAINF";
+    static const char telling[] =
+        "0123456789.,;:+-eE#!\"'\n\r\t _()[]{}?\0\x1a\x1f\x8b\xff\xfe\xef%nainfNAINF";
     for (size_t times = 1 + below(3); times > 0 && size > 0; times--) {
         size_t at = below(size), length = 1 + below(size - at < 40 ? size - at : 40);
         switch (below(7)) {
@@ -72,8 +73,8 @@ static void try_bytes(lw_engine *engine, const char *bytes, size_t size, int noi
     count[status == LW_OK]++;
     bool sound = true;
     if (status == LW_OK) {
-        sound = scan->n >= 3 && strlen(scan->hash) == 64 && scan->variance_factor > 0 && scan->correlation >= 0 &&
-                scan->correlation < 1 && strlen(scan->header) < ROOM + 2100;
+        sound = scan->n >= 3 && strlen(scan->hash) == 64 && scan->variance_factor > 0 &&
+                scan->correlation >= 0 && scan->correlation < 1 && strlen(scan->header) < ROOM + 2100;
         for (size_t i = 0; i < scan->n; i++)
             sound = sound && isfinite(scan->two_theta_deg[i]) && isfinite(scan->intensity[i]) &&
                     (i == 0 || scan->two_theta_deg[i] > scan->two_theta_deg[i - 1]) &&
@@ -94,13 +95,19 @@ int main(void)
         "# header\n20.00 195\n20.02 190\n20.04 201\n20.06 188\n20.08 202\n",
         "theta;count;sigma\r\n20,00;195,5;3,1\r\n20,02;190,0;2,9\r\n20,04;201,7;3,3\r\n",
         "20.00, 195.25\n20.02, -1.5e1\n20.04, 201.125\n20.06, 177.5\n",
-        "#\\#CIF_2.0\ndata_a\n_t 'text'\n_u\n;lines\n;\n_l [1 'a ]' {'k':2}]\n_diffrn_radiation_wavelength.value 1.5406(1)\n"
-        "loop_\n_pd_data_point_id\n_pd_proc.2theta_corrected\n_pd_proc.intensity_total\n1 20.0 195(14)\n2 20.1 190(13)\n3 20.2 1.01e2(3)\n4 20.3 .\n",
-        "data_a\n_pd_meas_2theta_range_min 20\n_pd_meas_2theta_range_max 20.06\n_pd_meas_2theta_range_inc 0.02\n"
+        "#\\#CIF_2.0\ndata_a\n_t 'text'\n_u\n;lines\n;\n_l [1 'a ]' "
+        "{'k':2}]\n_diffrn_radiation_wavelength.value 1.5406(1)\n"
+        "loop_\n_pd_data_point_id\n_pd_proc.2theta_corrected\n_pd_proc.intensity_total\n1 20.0 195(14)\n2 "
+        "20.1 190(13)\n3 20.2 1.01e2(3)\n4 20.3 .\n",
+        "data_a\n_pd_meas_2theta_range_min 20\n_pd_meas_2theta_range_max 20.06\n_pd_meas_2theta_range_inc "
+        "0.02\n"
         "loop_\n_diffrn_radiation_wavelength\n_diffrn_radiation_wavelength_wt\n1.540598 1.0\n1.544390 0.5\n"
-        "loop_\n_pd_meas_counts_total\n_pd_proc_ls_weight\n512 0.1\n530 0\n498 .\n500 ?\ndata_b\n_x?\nloop_\n_some_other\n1 2 3\n",
-        "data_a\n_diffrn_radiation_wavelength 1.5\nloop_\n_pd_proc_d_spacing\n_pd_proc_point_id\n3.0 1 2.9 2 2.8 3\n"
-        "loop_\n_pd_meas_point_id\n_pd_meas_intensity_total\n_pd_meas_intensity_total_su\n1 10 1 2 11 1 3 12 1\n"};
+        "loop_\n_pd_meas_counts_total\n_pd_proc_ls_weight\n512 0.1\n530 0\n498 .\n500 "
+        "?\ndata_b\n_x?\nloop_\n_some_other\n1 2 3\n",
+        "data_a\n_diffrn_radiation_wavelength 1.5\nloop_\n_pd_proc_d_spacing\n_pd_proc_point_id\n3.0 1 2.9 2 "
+        "2.8 3\n"
+        "loop_\n_pd_meas_point_id\n_pd_meas_intensity_total\n_pd_meas_intensity_total_su\n1 10 1 2 11 1 3 12 "
+        "1\n"};
     enum { SEEDS = sizeof seed / sizeof seed[0] };
     lw_engine engine;
     lw_engine_begin(&engine);

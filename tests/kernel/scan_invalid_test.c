@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Every malformed file of tests/invalid must be refused with its place and its remedy. A case is a folder with
- * `input`, the file, and `error`: the line that the message must name (0 = the whole file), a part of the message,
- * a part of the remedy and, if the case needs it, the noise asked for. */
+/* Every malformed file of tests/invalid must be refused with its place and its remedy. A case is a folder
+ * with `input`, the file, and `error`: the line that the message must name (0 = the whole file), a part of
+ * the message, a part of the remedy and, if the case needs it, the noise asked for. */
 #include "check.h"
 
 #include "scan/scan.h"
@@ -25,8 +25,8 @@ static void run_case(lw_engine *engine, const char *name)
     snprintf(path, sizeof path, "%s/%s/input", FOLDER, name);
     lw_scan_options options = lw_scan_defaults();
     if (want[3][0] != '\0')
-        CHECK(lw_option_text(lw_option_find(lw_scan_option_table, "read_scan", "noise", NULL), "read_scan", &options,
-                             want[3], NULL) == LW_OK);
+        CHECK(lw_option_text(lw_option_find(lw_scan_option_table, "read_scan", "noise", NULL), "read_scan",
+                             &options, want[3], NULL) == LW_OK);
     lw_scan *scan = NULL;
     lw_error err = LW_ERROR_NONE;
     lw_status status = lw_scan_read(engine, path, &options, &scan, &err);

@@ -59,19 +59,76 @@ static void test_numbers(void)
 {
     /* hard roundings: halfway cases, limits of the subnormals and of overflow, long mantissas (known hard
      * cases of the literature: Paxson 1991; Clinger 1990; the 2.2250738585072011e-308 of 2010) */
-    static const char *const hard[] = {
-        "0", "-0", "0.0", "-0.0", "1", "+1", "5.", ".5", "-.5", "+.5e1", "1e0", "1E+2", "1e-2", "00020.00", "0.1",
-        "9007199254740992", "9007199254740993", "9007199254740993.0", "9007199254740994", "9007199254740995",
-        "900719925474099.3", "90071992547409.93", "0.9007199254740993", "4503599627370496.5", "4503599627370497.5",
-        "12345678901234567", "123456789012345678", "1234567890123456789", "12345678901234567890", "18446744073709551615",
-        "18446744073709551616", "99999999999999999999", "1e22", "1e23", "8.5e22", "9.5e-22", "1e-22", "1e-23",
-        "2.2250738585072011e-308", "2.2250738585072014e-308", "4.9406564584124654e-324", "2.4703282292062327e-324",
-        "2.4703282292062328e-324", "1.7976931348623157e308", "1.7976931348623158e308", "1.797693134862315808e308",
-        "1e308", "1e-400", "6.9294956446009195e15", "3.7455744005952583e15", "9214843084008499", "0.500000000000000166533453693773481063544750213623046875",
-        "0.3", "20.0131", "149.99987", "1.00000000000000011102230246251565404236316680908203125",
-        "1.00000000000000011102230246251565404236316680908203124", "0.000000000000000000000000000001", "1e", "1e+", "1.5ex",
-        "12.5.3", "1-2", "20.00 5", "0x10", "7e00000000000000000012", "100000000.00000001", "12345678.12345678",
-        "123456781234567.8", "1234567812345678.5"};
+    static const char *const hard[] = {"0",
+                                       "-0",
+                                       "0.0",
+                                       "-0.0",
+                                       "1",
+                                       "+1",
+                                       "5.",
+                                       ".5",
+                                       "-.5",
+                                       "+.5e1",
+                                       "1e0",
+                                       "1E+2",
+                                       "1e-2",
+                                       "00020.00",
+                                       "0.1",
+                                       "9007199254740992",
+                                       "9007199254740993",
+                                       "9007199254740993.0",
+                                       "9007199254740994",
+                                       "9007199254740995",
+                                       "900719925474099.3",
+                                       "90071992547409.93",
+                                       "0.9007199254740993",
+                                       "4503599627370496.5",
+                                       "4503599627370497.5",
+                                       "12345678901234567",
+                                       "123456789012345678",
+                                       "1234567890123456789",
+                                       "12345678901234567890",
+                                       "18446744073709551615",
+                                       "18446744073709551616",
+                                       "99999999999999999999",
+                                       "1e22",
+                                       "1e23",
+                                       "8.5e22",
+                                       "9.5e-22",
+                                       "1e-22",
+                                       "1e-23",
+                                       "2.2250738585072011e-308",
+                                       "2.2250738585072014e-308",
+                                       "4.9406564584124654e-324",
+                                       "2.4703282292062327e-324",
+                                       "2.4703282292062328e-324",
+                                       "1.7976931348623157e308",
+                                       "1.7976931348623158e308",
+                                       "1.797693134862315808e308",
+                                       "1e308",
+                                       "1e-400",
+                                       "6.9294956446009195e15",
+                                       "3.7455744005952583e15",
+                                       "9214843084008499",
+                                       "0.500000000000000166533453693773481063544750213623046875",
+                                       "0.3",
+                                       "20.0131",
+                                       "149.99987",
+                                       "1.00000000000000011102230246251565404236316680908203125",
+                                       "1.00000000000000011102230246251565404236316680908203124",
+                                       "0.000000000000000000000000000001",
+                                       "1e",
+                                       "1e+",
+                                       "1.5ex",
+                                       "12.5.3",
+                                       "1-2",
+                                       "20.00 5",
+                                       "0x10",
+                                       "7e00000000000000000012",
+                                       "100000000.00000001",
+                                       "12345678.12345678",
+                                       "123456781234567.8",
+                                       "1234567812345678.5"};
     for (size_t i = 0; i < sizeof hard / sizeof hard[0]; i++)
         if (strcmp(hard[i], "0x10") != 0)
             CHECK(as_strtod(hard[i]));
@@ -91,10 +148,15 @@ static void test_numbers(void)
         case 0: snprintf(word, sizeof word, "%.17g", any); break;
         case 1: snprintf(word, sizeof word, "%.4f", random_unit() * 180); break;
         case 2: snprintf(word, sizeof word, "%.3f", random_unit() * 1e6); break;
-        case 3: snprintf(word, sizeof word, "%.*f", (int)(bits % 20), random_unit() * pow(10, (double)(bits % 17))); break;
+        case 3:
+            snprintf(word, sizeof word, "%.*f", (int)(bits % 20),
+                     random_unit() * pow(10, (double)(bits % 17)));
+            break;
         case 4: snprintf(word, sizeof word, "%llu", (unsigned long long)(bits >> (bits % 60))); break;
         case 5: snprintf(word, sizeof word, "%.*e", (int)(bits % 25), any); break;
-        case 6: snprintf(word, sizeof word, "%llue%d", (unsigned long long)(bits >> 10), (int)(bits % 60) - 30); break;
+        case 6:
+            snprintf(word, sizeof word, "%llue%d", (unsigned long long)(bits >> 10), (int)(bits % 60) - 30);
+            break;
         default: snprintf(word, sizeof word, "%.60f", random_unit() * 100); break;
         }
         wrong += !as_strtod(word);
@@ -103,7 +165,8 @@ static void test_numbers(void)
     /* the middle between two neighbouring doubles, written out in full, and a hair beside it */
     for (int i = 0; i < 2000; i++) {
         double low = random_unit() * 1000, high = nextafter(low, 2000);
-        char *end = word + snprintf(word, sizeof word, "%.80Lf", (long double)low + ((long double)high - (long double)low) / 2);
+        char *end = word + snprintf(word, sizeof word, "%.80Lf",
+                                    (long double)low + ((long double)high - (long double)low) / 2);
         wrong += !as_strtod(word);
         end[-1] = '1';
         wrong += !as_strtod(word);
@@ -121,9 +184,10 @@ static void test_numbers(void)
 
 static void test_digest(void)
 {
-    /* NIST, examples with intermediate values to FIPS 180-4: SHA-256 of one and two blocks; NIST CAVP SHA256ShortMsg
-     * and the long message of FIPS 180-2 appendix B.3 */
-    static const char *const message[] = {"abc", "abcdbcdecdefdefgefghfghighijhijkijkljklmklmnlmnomnopnopq", ""};
+    /* NIST, examples with intermediate values to FIPS 180-4: SHA-256 of one and two blocks; NIST CAVP
+     * SHA256ShortMsg and the long message of FIPS 180-2 appendix B.3 */
+    static const char *const message[] = {"abc", "abcdbcdecdefdefgefghfghighijhijkijkljklmklmnlmnomnopnopq",
+                                          ""};
     static const char *const digest[] = {"ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad",
                                          "248d6a61d20638b8e5c026930c3e6039a33ce45964ff2167f6ecedd419db06c1",
                                          "e3b0c44298fc1c149afbf4c8996fb92427ae41e4649b934ca495991b7852b855"};
@@ -181,12 +245,16 @@ static void test_measured(lw_engine *engine)
     } file[] = {
         {"ptc/ceo2-reference.xy", 16150, 2.095, 82.840, 176.063, 70.5547, 3, LW_NOISE_SCALED, "fed0a059acb1"},
         {"ptc/ptc-tec10v50e.xy", 16550, 2.095, 84.840, 52241.4, 4649.27, 3, LW_NOISE_SCALED, "c6d469b0f49e"},
-        {"ptc/capillary-empty.xy", 16550, 2.095, 84.840, 15028.8, 2679.68, 3, LW_NOISE_SCALED, "8d52e9ad0c74"},
-        {"rb-pyrochlore/rbnb2o5f-lab-cu.xy", 8757, 5.0197, 119.9884, 27849, 11718, 0, LW_NOISE_COUNTS, "1dcfccd8557b"},
+        {"ptc/capillary-empty.xy", 16550, 2.095, 84.840, 15028.8, 2679.68, 3, LW_NOISE_SCALED,
+         "8d52e9ad0c74"},
+        {"rb-pyrochlore/rbnb2o5f-lab-cu.xy", 8757, 5.0197, 119.9884, 27849, 11718, 0, LW_NOISE_COUNTS,
+         "1dcfccd8557b"},
         {"tacr2o6/tacr2o6-lab.csv", 4251, 5.0, 90.0, 133, 177, 0, LW_NOISE_COUNTS, "8ed3d67939ae"},
-        {"ceramic/mixed-ceramic.csv", 2989, 10.00616, 69.8187488, 6780, 2864, 0, LW_NOISE_COUNTS, "28b373a315d9"},
+        {"ceramic/mixed-ceramic.csv", 2989, 10.00616, 69.8187488, 6780, 2864, 0, LW_NOISE_COUNTS,
+         "28b373a315d9"},
         {"pdcif/cod-1516218-profile.cif", 3955, 3.0, 89.988, 21381, 229, 0, LW_NOISE_COUNTS, "499d58d890d0"},
-        {"pdcif/rbnb2o5f-profile.cif", 8751, 5.1423, 120.0322, 27298, 11718, 0, LW_NOISE_SIGMA, "0192975e083e"}};
+        {"pdcif/rbnb2o5f-profile.cif", 8751, 5.1423, 120.0322, 27298, 11718, 0, LW_NOISE_SIGMA,
+         "0192975e083e"}};
     for (size_t i = 0; i < sizeof file / sizeof file[0]; i++) {
         lw_scan *scan = read_file(engine, file[i].name, file[i].noise);
         if (scan == NULL)
@@ -269,14 +337,24 @@ static void test_forms(lw_engine *engine)
         "2.000e+01 1.95E2\n2.002e1 1.9e+2\n.2005e2 201.\n",
         "+20.00 +195\n20.02 190\n20.05 201\n",
         "# \xb0 degrees in another alphabet\n20.00 195\n20.02 190\n20.05 201\n",
-        "data_a\n_pd_meas_2theta_range_min 20\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 195 20.02 190\n20.05\n201\n",
-        "data_a\r\nloop_\r\n_pd_meas.2theta_scan\r\n_pd_meas.counts_total\r\n20 195\r\n20.02 190\r\n20.05 201\r\n",
-        "DATA_a\n LOOP_\n_PD_MEAS_COUNTS_TOTAL\n_PD_MEAS_ANGLE_2THETA\n\n195 20 # note\n190 20.02\n201 20.05\n_a?\n_b .\n",
-        "#\\#CIF_2.0\ndata_a\n_x [1 'two ]' {'a':3}]\n_y '''many\nlines'''\nloop_\n_pd_proc.2theta_corrected\n_pd_meas.counts_total\n20 195\n20.02 190\n20.05 201\n",
-        "data_a\n_t\n\n# note\n;text with _names and loop_\n;\n_u 'it's'\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 195\n20.01 ?\n20.02 190\n20.03 .\n20.05 201\n",
-        "data_a\n_pd_calib_2theta_offset 0.5\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n19.5 195\n19.52 190\n19.55 201\n",
-        "data_a\n_pd_calib_2theta_offset 0.5\nloop_\n_pd_proc_2theta_corrected\n_pd_meas_counts_total\n20 195\n20.02 190\n20.05 201\n",
-        "data_text\n_title x\ndata_a\nloop_\n_pd_meas_point_id\n_pd_meas_2theta_scan\n1 20\n2 20.02\n3 20.05\nloop_\n_pd_proc_point_id\n_pd_meas_counts_total\n1 195\n2 190\n3 201\n"};
+        "data_a\n_pd_meas_2theta_range_min 20\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 195 "
+        "20.02 190\n20.05\n201\n",
+        "data_a\r\nloop_\r\n_pd_meas.2theta_scan\r\n_pd_meas.counts_total\r\n20 195\r\n20.02 190\r\n20.05 "
+        "201\r\n",
+        "DATA_a\n LOOP_\n_PD_MEAS_COUNTS_TOTAL\n_PD_MEAS_ANGLE_2THETA\n\n195 20 # note\n190 20.02\n201 "
+        "20.05\n_a?\n_b .\n",
+        "#\\#CIF_2.0\ndata_a\n_x [1 'two ]' {'a':3}]\n_y "
+        "'''many\nlines'''\nloop_\n_pd_proc.2theta_corrected\n_pd_meas.counts_total\n20 195\n20.02 "
+        "190\n20.05 201\n",
+        "data_a\n_t\n\n# note\n;text with _names and loop_\n;\n_u "
+        "'it's'\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 195\n20.01 ?\n20.02 190\n20.03 "
+        ".\n20.05 201\n",
+        "data_a\n_pd_calib_2theta_offset 0.5\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n19.5 "
+        "195\n19.52 190\n19.55 201\n",
+        "data_a\n_pd_calib_2theta_offset 0.5\nloop_\n_pd_proc_2theta_corrected\n_pd_meas_counts_total\n20 "
+        "195\n20.02 190\n20.05 201\n",
+        "data_text\n_title x\ndata_a\nloop_\n_pd_meas_point_id\n_pd_meas_2theta_scan\n1 20\n2 20.02\n3 "
+        "20.05\nloop_\n_pd_proc_point_id\n_pd_meas_counts_total\n1 195\n2 190\n3 201\n"};
     for (size_t i = 0; i < sizeof counts / sizeof counts[0]; i++) {
         lw_scan *scan = read_text(engine, counts[i], strlen(counts[i]), NULL);
         if (scan == NULL)
@@ -293,11 +371,13 @@ static void test_forms(lw_engine *engine)
     }
     /* the same with sigma: (20, 19.5 +- 1.4), (20.02, -1.37 +- 0.04), (20.05, 2.01e3 +- 0.05e3) */
     static const char *const sigmas[] = {
-        "20 19.5 1.4\n20.02 -1.37 0.04\n20.05 2010 50\n",
-        "20,0;19,5;1,4\n20,02;-1,37;0,04\n20,05;2010;50\n",
-        "data_a\nloop_\n_pd_proc_2theta_corrected\n_pd_proc_intensity_net\n20 19.5(14)\n20.02 -1.37(4)\n20.05 2.01e3(5)\n",
-        "data_a\nloop_\n_pd_proc.2theta_corrected\n_pd_proc.intensity_total\n_pd_proc.intensity_total_su\n20 19.5 1.4\n20.02 -1.37 0.04\n20.05 2010 50\n",
-        "data_a\nloop_\n_pd_proc_2theta_corrected\n_pd_proc_intensity_total\n_pd_proc_intensity_total_esd\n20 19.5 1.4\n20.02 -1.37 0.04\n20.05 2010. 50\n"};
+        "20 19.5 1.4\n20.02 -1.37 0.04\n20.05 2010 50\n", "20,0;19,5;1,4\n20,02;-1,37;0,04\n20,05;2010;50\n",
+        "data_a\nloop_\n_pd_proc_2theta_corrected\n_pd_proc_intensity_net\n20 19.5(14)\n20.02 "
+        "-1.37(4)\n20.05 2.01e3(5)\n",
+        "data_a\nloop_\n_pd_proc.2theta_corrected\n_pd_proc.intensity_total\n_pd_proc.intensity_total_su\n20 "
+        "19.5 1.4\n20.02 -1.37 0.04\n20.05 2010 50\n",
+        "data_a\nloop_\n_pd_proc_2theta_corrected\n_pd_proc_intensity_total\n_pd_proc_intensity_total_"
+        "esd\n20 19.5 1.4\n20.02 -1.37 0.04\n20.05 2010. 50\n"};
     for (size_t i = 0; i < sizeof sigmas / sizeof sigmas[0]; i++) {
         lw_scan *scan = read_text(engine, sigmas[i], strlen(sigmas[i]), NULL);
         if (scan == NULL)
@@ -315,20 +395,24 @@ static void test_forms(lw_engine *engine)
     CHECK(scan->first_line == 5);
     lw_scan_free(scan);
     /* grid in items; d and Q with a wavelength: Bragg's law, lambda = 2 d sin(theta), Q = 2 pi / d */
-    static const char grid[] = "data_a\n_pd_meas_2theta_range_min 20\n_pd_meas_2theta_range_max 20.04\n"
-                               "_pd_meas_2theta_range_inc 0.02\nloop_\n_pd_meas_counts_total\n_pd_proc_ls_weight\n512 0.002 530 0.0 498 .\n";
+    static const char grid[] =
+        "data_a\n_pd_meas_2theta_range_min 20\n_pd_meas_2theta_range_max 20.04\n"
+        "_pd_meas_2theta_range_inc 0.02\nloop_\n_pd_meas_counts_total\n_pd_proc_ls_weight\n512 0.002 530 0.0 "
+        "498 .\n";
     scan = read_text(engine, grid, sizeof grid - 1, NULL);
     CHECK(scan->n == 3 && !scan->has_radiation);
     CHECK_NEAR(scan->two_theta_deg[1], 20.02, 1e-13);
     lw_scan_free(scan);
-    static const char spacing[] = "data_a\n_diffrn_radiation_wavelength.value 2.0\nloop_\n_pd_proc_d_spacing\n_pd_proc_intensity_total\n"
+    static const char spacing[] = "data_a\n_diffrn_radiation_wavelength.value "
+                                  "2.0\nloop_\n_pd_proc_d_spacing\n_pd_proc_intensity_total\n"
                                   "2.0 10(1)\n1.41421356237309505 11(1)\n1.15470053837925153 12(1)\n";
     scan = read_text(engine, spacing, sizeof spacing - 1, NULL);
     CHECK_NEAR(scan->two_theta_deg[0], 60, 1e-12);
     CHECK_NEAR(scan->two_theta_deg[1], 90, 1e-12);
     CHECK_NEAR(scan->two_theta_deg[2], 120, 1e-12);
     lw_scan_free(scan);
-    static const char wave[] = "data_b\n_diffrn_radiation_wavelength 2.0\ndata_a\nloop_\n_pd_proc_recip_len_Q\n_pd_proc_intensity_total\n"
+    static const char wave[] = "data_b\n_diffrn_radiation_wavelength "
+                               "2.0\ndata_a\nloop_\n_pd_proc_recip_len_Q\n_pd_proc_intensity_total\n"
                                "3.14159265358979324 10(1)\n4.44288293815836624 11(1)\n5.0 12(1)\n";
     scan = read_text(engine, wave, sizeof wave - 1, NULL);
     CHECK_NEAR(scan->two_theta_deg[0], 60, 1e-12);
@@ -336,8 +420,10 @@ static void test_forms(lw_engine *engine)
     CHECK(scan->has_radiation && scan->radiation.is_plain);
     lw_scan_free(scan);
     /* a block by name, and the user's radiation before the file's */
-    static const char blocks[] = "data_one\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 1 21 2 22 3\n"
-                                 "data_Two\n_diffrn_radiation_wavelength 1.54\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n30 4 31 5 32 6 33 7\n";
+    static const char blocks[] =
+        "data_one\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 1 21 2 22 3\n"
+        "data_Two\n_diffrn_radiation_wavelength 1.54\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n30 "
+        "4 31 5 32 6 33 7\n";
     lw_scan_options options = lw_scan_defaults();
     lw_radiation radiation;
     CHECK(lw_radiation_plain(0.07, &radiation, NULL) == LW_OK);
@@ -366,7 +452,8 @@ static void test_rows(lw_engine *engine)
         for (int i = 0; i < ROWS; i++) {
             char word[3][48];
             uint64_t bits = random_bits();
-            snprintf(word[0], sizeof word[0], "%.*f", 3 + (int)(bits % 10), 20 + 0.01 * i + 0.001 * random_unit());
+            snprintf(word[0], sizeof word[0], "%.*f", 3 + (int)(bits % 10),
+                     20 + 0.01 * i + 0.001 * random_unit());
             for (int k = 1; k < 3; k++) {
                 double value = random_unit() * pow(10, (double)(random_bits() % 9));
                 if (style == 0)
@@ -377,8 +464,9 @@ static void test_rows(lw_engine *engine)
                     snprintf(word[k], sizeof word[k], random_bits() % 3 ? "%.9g" : "%.7e", value);
             }
             row[i] = size;
-            size += (size_t)snprintf(text + size, sizeof text - size, "%s%s%s%s%s%s%s", bits >> 60 == 0 ? " " : "", word[0],
-                                     separator, word[1], columns == 3 ? separator : "", columns == 3 ? word[2] : "",
+            size += (size_t)snprintf(text + size, sizeof text - size, "%s%s%s%s%s%s%s",
+                                     bits >> 60 == 0 ? " " : "", word[0], separator, word[1],
+                                     columns == 3 ? separator : "", columns == 3 ? word[2] : "",
                                      bits >> 63 ? "\n" : " \r\n");
             for (int k = 0; k < columns; k++)
                 want[k][i] = strtod(word[k], NULL);
@@ -396,7 +484,8 @@ static void test_rows(lw_engine *engine)
         CHECK(scan->n == ROWS);
         int wrong = 0;
         for (size_t i = 0; i < scan->n; i++)
-            if (!same_bits(scan->two_theta_deg[i], want[0][i]) || !same_bits(scan->intensity[i], want[1][i]) ||
+            if (!same_bits(scan->two_theta_deg[i], want[0][i]) ||
+                !same_bits(scan->intensity[i], want[1][i]) ||
                 (scan->sigma != NULL && !same_bits(scan->sigma[i], want[2][i]))) {
                 if (wrong++ == 0)
                     fprintf(stderr, "  set %d: %.60s\n", set, text + row[i]);
@@ -411,7 +500,8 @@ static void test_gzip(lw_engine *engine)
     static char plain[40000], packed[40000];
     size_t size = 0;
     for (int i = 0; i < 2000; i++)
-        size += (size_t)snprintf(plain + size, sizeof plain - size, "%.3f %d\n", 20 + 0.01 * i, (int)(random_bits() % 9000));
+        size += (size_t)snprintf(plain + size, sizeof plain - size, "%.3f %d\n", 20 + 0.01 * i,
+                                 (int)(random_bits() % 9000));
     lw_scan *want = read_text(engine, plain, size, NULL);
     /* in one member, and cut within a line into two (RFC 1952 section 2.2), with padding behind */
     for (int parts = 1; parts <= 2; parts++) {
@@ -451,7 +541,8 @@ static void test_points(lw_engine *engine)
     bool inside = false;
     CHECK_NEAR(lw_scan_at(scan, 20.2, &inside), 10, 1e-12);
     CHECK(inside);
-    CHECK(lw_scan_at(scan, 20, NULL) == 10 && lw_scan_at(scan, 20.5, NULL) == 5 && lw_scan_at(scan, 20.3, NULL) == 8);
+    CHECK(lw_scan_at(scan, 20, NULL) == 10 && lw_scan_at(scan, 20.5, NULL) == 5 &&
+          lw_scan_at(scan, 20.3, NULL) == 8);
     CHECK(lw_scan_at(scan, 19.99, &inside) == 0 && !inside);
     CHECK(lw_scan_at(scan, NAN, &inside) == 0 && !inside);
     CHECK(lw_scan_crop(scan, 20.1, 20.4, &cropped, &err) == LW_OK);
@@ -477,10 +568,10 @@ static void test_points(lw_engine *engine)
 
 static void test_noise(lw_engine *engine)
 {
-    /* Scaled noise of known factor and neighbour correlation rho, made as (e[i] + b e[i-1]) / sqrt(1 + b^2) with
-     * rho = b / (1 + b^2), on a falling background with 12 lines of 3 to 6 steps width. The mean over 20 scans
-     * must meet the truth within the bias of 2 % that clipping and the median level may leave, plus 4 standard
-     * deviations of the mean, which the scatter of the 20 gives. */
+    /* Scaled noise of known factor and neighbour correlation rho, made as (e[i] + b e[i-1]) / sqrt(1 + b^2)
+     * with rho = b / (1 + b^2), on a falling background with 12 lines of 3 to 6 steps width. The mean over 20
+     * scans must meet the truth within the bias of 2 % that clipping and the median level may leave, plus 4
+     * standard deviations of the mean, which the scatter of the 20 gives. */
     enum { N = 16000, SCANS = 20 };
     static double x[N], y[N];
     static const double given[][2] = {{3.7, 0}, {0.8, 0.28}, {12, 0.45}};
@@ -554,7 +645,8 @@ static void *counting_resize(void *user, void *block, size_t old_size, size_t ne
 
 static void test_refused_memory(void)
 {
-    static const char cif[] = "data_a\n_diffrn_radiation_wavelength 1.54\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 1 21 2 22 3\n";
+    static const char cif[] = "data_a\n_diffrn_radiation_wavelength "
+                              "1.54\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n20 1 21 2 22 3\n";
     static const char text[] = "# header\n20 1 1\n21 2 1\n22 3 1\n";
     unsigned char packed[200];
     z_stream stream = {0};
