@@ -23,7 +23,8 @@ static void take_off(double *restrict to, const double *restrict a, double c, si
 }
 
 /* to -= c0 a0 + ... + c3 a3: four pivots at once, so that `to` is loaded and stored once for them */
-static void take_off_four(double *restrict to, const double *restrict a, size_t ld, const double c[4], size_t n)
+static void take_off_four(double *restrict to, const double *restrict a, size_t ld, const double c[4],
+                          size_t n)
 {
     const double *a1 = a + ld, *a2 = a1 + ld, *a3 = a2 + ld;
     double c0 = c[0], c1 = c[1], c2 = c[2], c3 = c[3];

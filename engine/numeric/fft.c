@@ -15,9 +15,9 @@ struct lw_fft {
     size_t n, block_size; /* block_size: of this struct with all arrays behind it */
     lw_fft_kind kind;
     lw_fft_use use;
-    double *root, *work;           /* plain: roots of unity and work */
-    double *in, *out;              /* aligned copies for arrays that are not aligned */
-    fftw_plan forward, back;       /* FFTW; NULL where the plain transform serves */
+    double *root, *work;     /* plain: roots of unity and work */
+    double *in, *out;        /* aligned copies for arrays that are not aligned */
+    fftw_plan forward, back; /* FFTW; NULL where the plain transform serves */
 };
 
 size_t lw_fft_length(size_t least)
@@ -73,7 +73,8 @@ static void make_fftw(lw_fft *plan)
 lw_fft *lw_fft_plan(lw_engine *engine, size_t n, lw_fft_kind kind, lw_fft_use use, lw_error *err)
 {
     if (n == 0 || n > LENGTH_MOST) {
-        lw_fail(err, LW_BAD_ARGUMENT, "use between 1 and 67108864 points", "a transform of %zu points was asked for", n);
+        lw_fail(err, LW_BAD_ARGUMENT, "use between 1 and 67108864 points",
+                "a transform of %zu points was asked for", n);
         return NULL;
     }
     for (lw_fft *plan = engine->plans; plan != NULL; plan = plan->next)
@@ -170,7 +171,8 @@ void lw_fft_complex(lw_fft *plan, const double *in, double *out, bool forward)
         from = (double *)(uintptr_t)in;
     else
         memcpy(from, in, 2 * plan->n * sizeof *in);
-    fftw_execute_dft(forward ? plan->forward : plan->back, (fftw_complex *)(void *)from, (fftw_complex *)(void *)to);
+    fftw_execute_dft(forward ? plan->forward : plan->back, (fftw_complex *)(void *)from,
+                     (fftw_complex *)(void *)to);
     if (to != out)
         memcpy(out, to, 2 * plan->n * sizeof *out);
 }

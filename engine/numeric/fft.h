@@ -8,7 +8,8 @@
  *
  * Threads: a plan holds work arrays, so it serves one thread at a time (as its engine does). FFTW's
  * planner is one for the whole process: where several threads have engines, no two of them may be in
- * lw_fft_plan() with LW_FFT_MANY, or in lw_engine_end(), at the same time. Transforms may run side by side. */
+ * lw_fft_plan() with LW_FFT_MANY, or in lw_engine_end(), at the same time. Transforms may run side by side.
+ */
 #ifndef LW_NUMERIC_FFT_H
 #define LW_NUMERIC_FFT_H
 

@@ -104,7 +104,8 @@ static void radix5(number *a, double s)
     a[4] = minus(r1, i1);
 }
 
-void lw_fft_plain(const double *root, size_t stride, size_t n, int sign, const double *in, double *out, double *work)
+void lw_fft_plain(const double *root, size_t stride, size_t n, int sign, const double *in, double *out,
+                  double *work)
 {
     size_t steps = 0, rest = n;
     for (; rest % 4 == 0; rest /= 4)
@@ -118,7 +119,11 @@ void lw_fft_plain(const double *root, size_t stride, size_t n, int sign, const d
         memcpy(out, in, 2 * n * sizeof *out);
     /* ping-pong between work and out so that the last step writes out */
     for (size_t length = n, span = 1, step = 0; step < steps; step++) {
-        size_t radix = length % 4 == 0 ? 4 : length % 2 == 0 ? 2 : length % 3 == 0 ? 3 : 5, m = length / radix;
+        size_t radix = length % 4 == 0   ? 4
+                       : length % 2 == 0 ? 2
+                       : length % 3 == 0 ? 3
+                                         : 5,
+               m = length / radix;
         double *to = (steps - step) % 2 == 1 ? out : work;
         for (size_t p = 0; p < m; p++) {
             number w[5];

@@ -15,7 +15,8 @@ void lw_fft_roots(double *root, size_t n);
 
 /* Complex transform of n points. root: those of length n * stride. in[2n] is kept; out[2n] and work[2n] are
  * overwritten, none may overlap. sign -1: exponent -2 pi i (forward); +1: back, unnormalised. */
-void lw_fft_plain(const double *root, size_t stride, size_t n, int sign, const double *in, double *out, double *work);
+void lw_fft_plain(const double *root, size_t stride, size_t n, int sign, const double *in, double *out,
+                  double *work);
 
 /* Real transforms of even n, as in fft.h; root of length n, work[2n]. back keeps c. */
 void lw_fft_plain_forward(const double *root, size_t n, const double *x, double *c, double *work);

@@ -9,7 +9,7 @@
 
 typedef struct lw_random {
     uint64_t state[4];
-    double spare;   /* second normal deviate of a pair */
+    double spare; /* second normal deviate of a pair */
     bool has_spare;
 } lw_random;
 

@@ -72,7 +72,8 @@ double lw_normal_quantile(double p)
         return NAN;
     /* Abramowitz & Stegun 26.2.23 (4.5e-4) for the smaller tail, then Halley's method */
     double tail = p < 0.5 ? p : 1 - p, t = sqrt(-2 * log(tail));
-    double z = t - (2.515517 + t * (0.802853 + t * 0.010328)) / (1 + t * (1.432788 + t * (0.189269 + t * 0.001308)));
+    double z =
+        t - (2.515517 + t * (0.802853 + t * 0.010328)) / (1 + t * (1.432788 + t * (0.189269 + t * 0.001308)));
     for (int i = 0; i < 3; i++) {
         double off = 0.5 * erfc(z * 0.70710678118654752440) - tail;
         double step = off * 2.5066282746310005024 * exp(0.5 * z * z);
@@ -296,7 +297,8 @@ static size_t place_of(const double *sorted, size_t n, double value)
     return low;
 }
 
-lw_status lw_running_median(lw_engine *engine, const double *y, size_t n, size_t half, double *out, lw_error *err)
+lw_status lw_running_median(lw_engine *engine, const double *y, size_t n, size_t half, double *out,
+                            lw_error *err)
 {
     if (half > n)
         half = n;

@@ -22,8 +22,8 @@ double lw_coverage_factor(double probability, double dof);
 double lw_incomplete_beta(double a, double b, double x);
 
 /* Durbin-Watson statistic of residuals in order: 2 for none, below 2 for positive serial correlation
- * (Durbin & Watson 1950 Biometrika 37, 409; the weighted residuals of a scan: Hill & Flack 1987 J. Appl. Cryst.
- * 20, 356). NaN for fewer than 2 or for residuals that are all 0. */
+ * (Durbin & Watson 1950 Biometrika 37, 409; the weighted residuals of a scan: Hill & Flack 1987 J. Appl.
+ * Cryst. 20, 356). NaN for fewer than 2 or for residuals that are all 0. */
 double lw_durbin_watson(const double *residual, size_t n);
 
 /* Mean and, if sd is not NULL, the sample standard deviation (n - 1); NaN where n is too small. */
@@ -38,6 +38,7 @@ double lw_quantile_of_sorted(const double *sorted, size_t n, double p);
 /* Sorts ascending. */
 void lw_sort(double *values, size_t n);
 /* Running median over 2 half + 1 points, fewer at the ends; out[n] may not be y. */
-lw_status lw_running_median(lw_engine *engine, const double *y, size_t n, size_t half, double *out, lw_error *err);
+lw_status lw_running_median(lw_engine *engine, const double *y, size_t n, size_t half, double *out,
+                            lw_error *err);
 
 #endif

@@ -45,7 +45,7 @@ static bool prepare(problem *p, double b)
         return true;
     /* a matrix that is singular to rounding says that some combination of points is exact; a jitter of
      * 1e-11 of the diagonal keeps that combination nearly so, and the rest as it is */
-    for (double jitter = 0; jitter < 1; jitter = jitter > 0 ? 100 * jitter : 1e-11) {
+    for (double jitter = 0; jitter<1; jitter = jitter> 0 ? 100 * jitter : 1e-11) {
         for (size_t i = 0; i < n; i++)
             for (size_t j = i; j < n; j++) {
                 double c = p->cy[i * n + j] + (p->cx != NULL ? b * b * p->cx[i * n + j] : 0);
@@ -203,7 +203,8 @@ static lw_status fit(lw_engine *engine, problem *p, lw_straight_line *line, lw_e
     double mean_x = 0, mean_y = 0, xx = 0, yy = 0;
     for (size_t i = 0; i < n; i++) {
         if (!isfinite(p->x[i]) || !isfinite(p->y[i]))
-            return lw_fail(err, LW_BAD_ARGUMENT, NULL, "point %zu of the straight line is not a number", i + 1);
+            return lw_fail(err, LW_BAD_ARGUMENT, NULL, "point %zu of the straight line is not a number",
+                           i + 1);
         mean_x += p->x[i] / (double)n;
         mean_y += p->y[i] / (double)n;
     }
@@ -230,7 +231,8 @@ static lw_status fit(lw_engine *engine, problem *p, lw_straight_line *line, lw_e
     double b = 0, unit = yy > 0 ? sqrt(yy / xx) : 1 / sqrt(xx);
     bool x_exact = p->cy != NULL ? p->cx == NULL : p->ux == NULL;
     if (!(x_exact ? direct_slope(p, &b) : search_slope(p, unit, &b)) || !evaluate(p, b, &s)) {
-        status = lw_fail(err, LW_BAD_ARGUMENT, "give each point an uncertainty in x or y, and symmetric covariances",
+        status = lw_fail(err, LW_BAD_ARGUMENT,
+                         "give each point an uncertainty in x or y, and symmetric covariances",
                          "the errors given do not determine a straight line");
         goto done;
     }

@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The straight line y = a + b x with errors in both coordinates, independent or correlated.
- * Minimises S(b) = r' C(b)^-1 r, r = y - a - b x, C(b) = Cy + b^2 Cx, over a (in closed form) and b (exactly, with
- * the change of C). Source: York, Evensen, Lopez Martinez & De Basabe Delgado (2004) Am. J. Phys. 72, 367, for
- * independent errors; the same with full matrices: generalised least squares in JCGM 102:2011 and
+ * Minimises S(b) = r' C(b)^-1 r, r = y - a - b x, C(b) = Cy + b^2 Cx, over a (in closed form) and b (exactly,
+ * with the change of C). Source: York, Evensen, Lopez Martinez & De Basabe Delgado (2004) Am. J. Phys. 72,
+ * 367, for independent errors; the same with full matrices: generalised least squares in JCGM 102:2011 and
  * ISO/TS 28037:2010. */
 #ifndef LW_NUMERIC_STRAIGHT_LINE_H
 #define LW_NUMERIC_STRAIGHT_LINE_H
@@ -15,9 +15,9 @@
 typedef struct lw_straight_line {
     double intercept, slope;
     double intercept_variance, slope_variance, covariance; /* from the given errors, at the adjusted points */
-    double chi2;       /* S at its minimum */
-    size_t n;          /* points; n - 2 degrees of freedom */
-    bool dependent;    /* the covariance of y was singular to rounding: rows repeat each other */
+    double chi2;                                           /* S at its minimum */
+    size_t n;                                              /* points; n - 2 degrees of freedom */
+    bool dependent; /* the covariance of y was singular to rounding: rows repeat each other */
 } lw_straight_line;
 
 /* Independent errors.

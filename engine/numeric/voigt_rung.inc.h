@@ -36,18 +36,22 @@ typedef long long mask __attribute__((vector_size(8 * LW_LANES)));
 #define CORE_TERMS 32
 #define CORE_L 4.7568284600108842669
 static const double core_a[CORE_TERMS] = {
-    2.572253408124569313,     2.263537299900267782,     1.825669629632481319,     1.345544169234545134,
-    0.9019254893647999817,    0.5460139720639342329,    0.2954445107150873226,    0.1406071622689378479,
-    0.05730440352983719074,   0.01900615578484547556,   0.00451954110534928564,   0.0003925913607007896469,
-    -0.0002453298027001811876, -0.0001307544925460985417, -0.00002140961920181826252, 6.821031944000644954e-6,
-    4.401531731530374201e-6,  4.255833137355631557e-7,  -4.184076371185529253e-7, -1.481307891793793043e-7,
-    2.293043903089130642e-8,  2.379755670492633234e-8,  8.124889174050190491e-10, -3.20801522060210889e-9,
-    -5.231022115795881263e-10, 4.153742283768117825e-10, 1.165823850551326933e-10, -5.544247434751947981e-11,
-    -2.154362353454025907e-11, 8.0303941233429979e-12,   3.741034357970914714e-12, -1.303348124509092528e-12};
+    2.572253408124569313,      2.263537299900267782,      1.825669629632481319,
+    1.345544169234545134,      0.9019254893647999817,     0.5460139720639342329,
+    0.2954445107150873226,     0.1406071622689378479,     0.05730440352983719074,
+    0.01900615578484547556,    0.00451954110534928564,    0.0003925913607007896469,
+    -0.0002453298027001811876, -0.0001307544925460985417, -0.00002140961920181826252,
+    6.821031944000644954e-6,   4.401531731530374201e-6,   4.255833137355631557e-7,
+    -4.184076371185529253e-7,  -1.481307891793793043e-7,  2.293043903089130642e-8,
+    2.379755670492633234e-8,   8.124889174050190491e-10,  -3.20801522060210889e-9,
+    -5.231022115795881263e-10, 4.153742283768117825e-10,  1.165823850551326933e-10,
+    -5.544247434751947981e-11, -2.154362353454025907e-11, 8.0303941233429979e-12,
+    3.741034357970914714e-12,  -1.303348124509092528e-12};
 
 /* Twelve convergents of the continued fraction, w = i/(sqrt(pi) z) (1 + (1 + S)/(2 z^2)), S = U/P;
  * coefficients of ascending powers of z^2 (exact). */
-static const double middle_p[7] = {10395.0 / 64, -31185.0 / 16, 51975.0 / 16, -3465.0 / 2, 1485.0 / 4, -33, 1};
+static const double middle_p[7] = {
+    10395.0 / 64, -31185.0 / 16, 51975.0 / 16, -3465.0 / 2, 1485.0 / 4, -33, 1};
 static const double middle_u[6] = {-10395.0 / 64, 51975.0 / 32, -12645.0 / 8, 1785.0 / 4, -183.0 / 4, 1.5};
 
 /* S of the asymptotic series is far_c[k] (v/Z^2)^(k+1), far_c[k] = (2k+3)!!/2^(k+1). */
@@ -91,11 +95,11 @@ INLINE quad far_out(vec x, double gamma, double v, int values_only)
 {
     quad out = {.v = all(0.0)};
     vec d = 1.0 / (x * x + gamma * gamma);
-    vec ur = x * d, ui = -gamma * d;                    /* U = 1/Z */
-    vec pr = ur * ur - ui * ui, pi = (ur + ur) * ui;    /* U^2 */
+    vec ur = x * d, ui = -gamma * d;                 /* U = 1/Z */
+    vec pr = ur * ur - ui * ui, pi = (ur + ur) * ui; /* U^2 */
     vec qr = v * pr, qi = v * pi, vd = v * d, sr, si;
     polynomial(far_c, 5, 1, qr, qi, qr + qr, vd * vd, &sr, &si);
-    vec hr = pr * sr - pi * si, hi = pr * si + pi * sr; /* U^2 S/q */
+    vec hr = pr * sr - pi * si, hi = pr * si + pi * sr;               /* U^2 S/q */
     vec wr = (pr + qr * hr) - qi * hi, wi = (pi + qr * hi) + qi * hr; /* U^2 (1 + S) */
     out.v = ui + (0.5 * v) * (ur * wi + ui * wr);
     if (values_only)
@@ -139,8 +143,8 @@ INLINE quad core(vec x, double y, double s, int values_only)
     /* even and odd powers apart: two chains of half the length run side by side */
     vec zi2 = zi * zi, m = zr * zr + zi2, qr = zr * zr - zi2, qi = (zr + zr) * zi, er, ei, or, oi;
     polynomial(core_a, CORE_TERMS / 2, 2, qr, qi, qr + qr, m * m, &er, &ei);
-    polynomial(core_a + 1, CORE_TERMS / 2, 2, qr, qi, qr + qr, m * m, &or, &oi);
-    vec pr = (er + zr * or) - zi * oi, pi = (ei + zr * oi) + zi * or;
+    polynomial(core_a + 1, CORE_TERMS / 2, 2, qr, qi, qr + qr, m * m, & or, &oi);
+    vec pr = (er + zr * or) - zi * oi, pi = (ei + zr * oi) + zi * or ;
     vec hr = ONE_SQRT_PI + 2.0 * (pr * gr - pi * gi), hi = 2.0 * (pr * gi + pi * gr);
     vec wr = gr * hr - gi * hi;
     out.v = (-s * SQRT_PI) * wr;
@@ -180,8 +184,8 @@ INLINE void store(double *to, size_t i, size_t count, vec value, int add)
 }
 
 /* All points, one block of nodes. shapes: whether any d_shape is wanted. */
-INLINE void sum_block(size_t n, const double *x, const prepared *node, size_t n_nodes, double v, int values_only,
-                      int shapes, int add, const lw_voigt_sums *out)
+INLINE void sum_block(size_t n, const double *x, const prepared *node, size_t n_nodes, double v,
+                      int values_only, int shapes, int add, const lw_voigt_sums *out)
 {
     const double s = v > 0 ? 1.0 / sqrt(v) : 0.0;
     for (size_t i = 0; i < n; i += LW_LANES) {

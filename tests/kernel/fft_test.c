@@ -45,8 +45,8 @@ static void slow(const double *in, double *out, size_t n, int sign)
 
 static void test_sums(lw_fft_use use)
 {
-    static const size_t lengths[] = {1, 2, 3, 4, 5, 6, 8, 10, 12, 15, 16, 18, 30, 32, 50, 60, 64, 90, 100, 128, 225,
-                                     256, 360, 480, 512, 7, 11, 14, 97, 154};
+    static const size_t lengths[] = {1,  2,  3,  4,   5,   6,   8,   10,  12,  15,  16, 18, 30, 32, 50,
+                                     60, 64, 90, 100, 128, 225, 256, 360, 480, 512, 7,  11, 14, 97, 154};
     for (size_t i = 0; i < sizeof lengths / sizeof *lengths; i++) {
         size_t n = lengths[i];
         lw_error err = LW_ERROR_NONE;
@@ -98,7 +98,8 @@ static void test_sums(lw_fft_use use)
 static void test_length(void)
 {
     CHECK(lw_fft_length(0) == 2 && lw_fft_length(1) == 2 && lw_fft_length(2) == 2 && lw_fft_length(3) == 4);
-    CHECK(lw_fft_length(7) == 8 && lw_fft_length(11) == 12 && lw_fft_length(17) == 18 && lw_fft_length(4097) == 4320);
+    CHECK(lw_fft_length(7) == 8 && lw_fft_length(11) == 12 && lw_fft_length(17) == 18 &&
+          lw_fft_length(4097) == 4320);
     for (size_t least = 1; least < 700; least++) { /* by trial */
         size_t n = least + least % 2;
         for (;; n += 2) {

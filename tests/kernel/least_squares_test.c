@@ -15,7 +15,8 @@ typedef struct quadratic {
     const double *a, *c;
 } quadratic;
 
-static lw_status evaluate_quadratic(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
+static lw_status evaluate_quadratic(void *user, const double *p, bool want_normal, lw_normal *normal,
+                                    lw_error *err)
 {
     const quadratic *q = user;
     (void)err;
@@ -146,7 +147,8 @@ static void test_many_bounds(void)
  * times the rate. */
 static int barrier_hits;
 
-static lw_status evaluate_decay(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
+static lw_status evaluate_decay(void *user, const double *p, bool want_normal, lw_normal *normal,
+                                lw_error *err)
 {
     (void)user;
     (void)err;

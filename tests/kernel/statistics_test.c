@@ -46,7 +46,8 @@ static void test_distributions(void)
         }
     }
     printf("chi-square %.1e, normal quantile %.1e, Student quantile %.1e\n", worst[0], worst[1], worst[2]);
-    CHECK(lw_student_quantile(0.5, 4) == 0 && isnan(lw_student_quantile(0, 4)) && isnan(lw_normal_quantile(1)));
+    CHECK(lw_student_quantile(0.5, 4) == 0 && isnan(lw_student_quantile(0, 4)) &&
+          isnan(lw_normal_quantile(1)));
     /* JCGM 100:2008, table G.2: t_95 and t_99 (two digits after the point) */
     CHECK_NEAR(lw_coverage_factor(0.95, 1), 12.71, 0.005);
     CHECK_NEAR(lw_coverage_factor(0.95, 10), 2.23, 0.005);

@@ -31,7 +31,10 @@ static lw_voigt_sums room_sums(sums_room *r)
     for (int a = 0; a < 6; a++)
         for (size_t i = 0; i < MOST + 32; i++)
             r->room[a][i] = GUARD;
-    return (lw_voigt_sums){r->room[0] + 16, r->room[1] + 16, r->room[2] + 16, r->room[3] + 16,
+    return (lw_voigt_sums){r->room[0] + 16,
+                           r->room[1] + 16,
+                           r->room[2] + 16,
+                           r->room[3] + 16,
                            {r->room[4] + 16, r->room[5] + 16}};
 }
 
@@ -117,10 +120,20 @@ static void test_rung_grid(const lw_voigt_kernel *kernel)
     static const double lorentz[] = {0, 1e-8, 1e-5, 1e-3, 0.02, 0.3, 1, 10, 100};
     static const lw_voigt_node nodes[] = {
         {.offset = 0, .weight = 0.6, .d_weight = {0.3, -2}, .d_offset = {-0.7, 0.1}},
-        {.offset = 0.013, .weight = 0.3, .lorentz = 1e-4, .offset_slope = 0.0025, .lorentz_slope = 0.001,
-         .d_weight = {-0.3, 1}, .d_offset = {0.2, 0.5}},
-        {.offset = -0.21, .weight = 0.1, .lorentz = 0.01, .offset_slope = -0.01, .lorentz_slope = -0.02,
-         .d_weight = {0, 1}, .d_offset = {0.4, 0.01}}};
+        {.offset = 0.013,
+         .weight = 0.3,
+         .lorentz = 1e-4,
+         .offset_slope = 0.0025,
+         .lorentz_slope = 0.001,
+         .d_weight = {-0.3, 1},
+         .d_offset = {0.2, 0.5}},
+        {.offset = -0.21,
+         .weight = 0.1,
+         .lorentz = 0.01,
+         .offset_slope = -0.01,
+         .lorentz_slope = -0.02,
+         .d_weight = {0, 1},
+         .d_offset = {0.4, 0.01}}};
     static sums_room r, only;
     static double x[MOST];
     double worst[6] = {0}, worst_value = 0;
@@ -165,7 +178,8 @@ static void test_rung_grid(const lw_voigt_kernel *kernel)
             }
             worst_value = fmax(worst_value, off_value / most[0]);
             CHECK_NEAR(off_value / most[0], 0, 1e-15);
-            CHECK(alone.d_position[0] == GUARD && alone.d_variance[3] == GUARD && alone.d_shape[0][5] == GUARD);
+            CHECK(alone.d_position[0] == GUARD && alone.d_variance[3] == GUARD &&
+                  alone.d_shape[0][5] == GUARD);
         }
     printf("%s, against the twin: value %.1e position %.1e variance %.1e lorentz %.1e shapes %.1e %.1e\n",
            kernel->rung, worst[0], worst[1], worst[2], worst[3], worst[4], worst[5]);

@@ -10,10 +10,13 @@
 
 static void test_generator(void)
 {
-    /* State 1, 2, 3, 4 gives these numbers by hand: result = rotl(s0 + s3, 23) + s0 (Blackman & Vigna 2021), so
-     * first rotl(5, 23) + 1 = 41943041; the next ones are those of the reference implementation. */
-    static const uint64_t want[6] = {UINT64_C(41943041), UINT64_C(58720359), UINT64_C(3588806011781223),
-                                     UINT64_C(3591011842654386), UINT64_C(9228616714210784205),
+    /* State 1, 2, 3, 4 gives these numbers by hand: result = rotl(s0 + s3, 23) + s0 (Blackman & Vigna 2021),
+     * so first rotl(5, 23) + 1 = 41943041; the next ones are those of the reference implementation. */
+    static const uint64_t want[6] = {UINT64_C(41943041),
+                                     UINT64_C(58720359),
+                                     UINT64_C(3588806011781223),
+                                     UINT64_C(3591011842654386),
+                                     UINT64_C(9228616714210784205),
                                      UINT64_C(9973669472204895162)};
     lw_random random = {.state = {1, 2, 3, 4}};
     for (int i = 0; i < 6; i++)
@@ -33,8 +36,9 @@ static void test_generator(void)
     }
 }
 
-/* JCGM 101:2008, 9.2.3: Y = X1 + X2 + X3 + X4, each rectangular with mean 0 and standard deviation 1: the exact
- * 95 % interval is +-2 sqrt(3) (2 - (3/5)^(1/4)) = +-3.879406741347821; 9.2.2: normal: +-3.919927969080108. */
+/* JCGM 101:2008, 9.2.3: Y = X1 + X2 + X3 + X4, each rectangular with mean 0 and standard deviation 1: the
+ * exact 95 % interval is +-2 sqrt(3) (2 - (3/5)^(1/4)) = +-3.879406741347821; 9.2.2: normal:
+ * +-3.919927969080108. */
 static void test_jcgm_101(void)
 {
     enum { M = 1000000 };

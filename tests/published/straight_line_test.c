@@ -63,12 +63,15 @@ static void test_york(void)
     CHECK_NEAR(line.slope, 1 / turned.slope, 1e-12);
 }
 
-/* JCGM 100:2008 (GUM), example H.3: calibration of a thermometer. Printed: y1 = -0.1712(29), y2 = 0.00218(67),
- * r = -0.930, s = 0.0035, b(30 C) = -0.1494(41); more digits from a 40-digit evaluation of the table. */
+/* JCGM 100:2008 (GUM), example H.3: calibration of a thermometer. Printed: y1 = -0.1712(29), y2 =
+ * 0.00218(67), r = -0.930, s = 0.0035, b(30 C) = -0.1494(41); more digits from a 40-digit evaluation of the
+ * table. */
 static void test_gum_h3(void)
 {
-    static const double t[11] = {21.521, 22.012, 22.512, 23.003, 23.507, 23.999, 24.513, 25.002, 25.503, 26.010, 26.511};
-    static const double b[11] = {-0.171, -0.169, -0.166, -0.159, -0.164, -0.165, -0.156, -0.157, -0.159, -0.161, -0.160};
+    static const double t[11] = {21.521, 22.012, 22.512, 23.003, 23.507, 23.999,
+                                 24.513, 25.002, 25.503, 26.010, 26.511};
+    static const double b[11] = {-0.171, -0.169, -0.166, -0.159, -0.164, -0.165,
+                                 -0.156, -0.157, -0.159, -0.161, -0.160};
     double x[11], u;
     for (int i = 0; i < 11; i++)
         x[i] = t[i] - 20;
@@ -85,8 +88,8 @@ static void test_gum_h3(void)
     CHECK_NEAR(u, 0.0041386, 5e-8);
 }
 
-/* Cy = s^2 I + t^2 11' (a common offset) leaves the slope of ordinary least squares, with variance s^2/Sxx, and
- * adds t^2 to the variance of the intercept; Cy = s^2 I + t^2 xx' (a common scale of slope) adds t^2 to
+/* Cy = s^2 I + t^2 11' (a common offset) leaves the slope of ordinary least squares, with variance s^2/Sxx,
+ * and adds t^2 to the variance of the intercept; Cy = s^2 I + t^2 xx' (a common scale of slope) adds t^2 to
  * that of the slope. Both exactly, for t up to 1e5 s. */
 static void test_common(void)
 {
@@ -100,7 +103,7 @@ static void test_common(void)
     lw_straight_line plain, line;
     lw_error err = LW_ERROR_NONE;
     CHECK(lw_line_plain(&engine, N, x, y, &plain, &err) == LW_OK);
-    for (double t = 0; t < 2e5; t = t > 0 ? 10 * t : 0.1)
+    for (double t = 0; t<2e5; t = t> 0 ? 10 * t : 0.1)
         for (int kind = 0; kind < 2; kind++) {
             for (int i = 0; i < N; i++)
                 for (int j = 0; j < N; j++)
@@ -110,7 +113,8 @@ static void test_common(void)
             CHECK_NEAR(line.slope, plain.slope, digits);
             CHECK_NEAR(line.intercept, plain.intercept, digits);
             CHECK_RELATIVE(line.slope_variance, 1 / sxx + (kind ? t * t : 0), 10 * digits);
-            CHECK_RELATIVE(line.intercept_variance, 1.0 / N + mean * mean / sxx + (kind ? 0 : t * t), 10 * digits);
+            CHECK_RELATIVE(line.intercept_variance, 1.0 / N + mean * mean / sxx + (kind ? 0 : t * t),
+                           10 * digits);
             CHECK_RELATIVE(line.chi2, plain.chi2, 10 * digits);
         }
     /* a point measured once and written down twice: singular, and the same as having it once with the
@@ -128,9 +132,10 @@ static void test_common(void)
     CHECK_RELATIVE(line.slope_variance, 1 / sxx, 1e-9);
 }
 
-/* Correlated errors in both axes: the chi-square at the minimum is not beaten by any slope and intercept near,
- * by direct evaluation of S(a, b) with a plain elimination. */
-static double direct_s(const double *x, const double *y, const double *cx, const double *cy, int n, double a, double b)
+/* Correlated errors in both axes: the chi-square at the minimum is not beaten by any slope and intercept
+ * near, by direct evaluation of S(a, b) with a plain elimination. */
+static double direct_s(const double *x, const double *y, const double *cx, const double *cy, int n, double a,
+                       double b)
 {
     double m[6][7], s = 0;
     for (int i = 0; i < n; i++) {
@@ -175,8 +180,8 @@ static void test_both_correlated(void)
     CHECK_NEAR(db, 0, 1e-2 * far);
 }
 
-/* Uncertainties as the scatter shows them: 4000 lines with York's errors; the ratio of scatter to stated u has
- * a standard deviation of 1/sqrt(2 * 4000) = 0.011 and a curvature bias of the order of u(b)/b. */
+/* Uncertainties as the scatter shows them: 4000 lines with York's errors; the ratio of scatter to stated u
+ * has a standard deviation of 1/sqrt(2 * 4000) = 0.011 and a curvature bias of the order of u(b)/b. */
 static void test_scatter(void)
 {
     enum { N = 10, ROUNDS = 4000 };
@@ -201,7 +206,8 @@ static void test_scatter(void)
     }
     CHECK_NEAR(sqrt(square / ROUNDS) / u, 1, 0.045);
     CHECK_NEAR(sum / ROUNDS / u, 0, 4 / sqrt(ROUNDS));
-    CHECK_NEAR(chi2, N - 2, 4 * sqrt(2.0 * (N - 2) / ROUNDS)); /* mean of chi-square of 8 degrees of freedom */
+    CHECK_NEAR(chi2, N - 2,
+               4 * sqrt(2.0 * (N - 2) / ROUNDS)); /* mean of chi-square of 8 degrees of freedom */
 }
 
 static void test_refusals(void)

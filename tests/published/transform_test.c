@@ -21,7 +21,8 @@ static lw_fft *plan_for(lw_fft_use use)
     return plan;
 }
 
-/* Samples f at s = (j - N for the upper half) ds, transforms, and compares A_k ds with want(L), L = k/(N ds). */
+/* Samples f at s = (j - N for the upper half) ds, transforms, and compares A_k ds with want(L), L = k/(N ds).
+ */
 static double worst_of(lw_fft *plan, double ds, double (*f)(double), double (*want)(double))
 {
     double worst = 0;
@@ -104,7 +105,8 @@ static void test_road(lw_fft_use use)
     }
     CHECK_NEAR(worst, 0, 1e-10);
 
-    /* exponential: the discrete sum is the Poisson kernel, dL (1 - q^2)/(1 - 2 q cos + q^2), q = exp(-dL/5) */
+    /* exponential: the discrete sum is the Poisson kernel, dL (1 - q^2)/(1 - 2 q cos + q^2), q = exp(-dL/5)
+     */
     dl = 0.1;
     profile_of(plan, dl, exponential);
     double q = exp(-dl / 5);

@@ -8,11 +8,11 @@ static const double PI = 3.14159265358979323846, LN2 = 0.69314718055994530942;
 
 /* x, sigma of the Gauss, half width gamma of the Lorentz, density */
 static const double density[][4] = {
-    {0, 1, 1, 0.2087092805203676891488},     {1, 1, 1, 0.1657956626891664570736},
-    {2, 1, 1, 0.09071519942627542976993},    {5, 1, 1, 0.01388492128857124759803},
-    {10, 1, 1, 0.003248734859769095230958},  {0, 1, 0.1, 0.3690046824797880191698},
-    {1, 1, 0.1, 0.2332320942779386594103},   {3, 1, 0.1, 0.009964702131201453226958},
-    {0, 0.1, 1, 0.3152178127185752236889},   {1, 0.1, 1, 0.1599384936582573153345},
+    {0, 1, 1, 0.2087092805203676891488},      {1, 1, 1, 0.1657956626891664570736},
+    {2, 1, 1, 0.09071519942627542976993},     {5, 1, 1, 0.01388492128857124759803},
+    {10, 1, 1, 0.003248734859769095230958},   {0, 1, 0.1, 0.3690046824797880191698},
+    {1, 1, 0.1, 0.2332320942779386594103},    {3, 1, 0.1, 0.009964702131201453226958},
+    {0, 0.1, 1, 0.3152178127185752236889},    {1, 0.1, 1, 0.1599384936582573153345},
     {10, 0.1, 1, 0.003152507232867993113623}, {0.5, 0.25, 0.02, 0.2424851543531784530541}};
 
 /* Lorentz FWHM r, Gauss FWHM 1 - r: FWHM, breadth, their ratio, beta_L/beta, beta_G/beta */
@@ -56,7 +56,8 @@ static void test_widths(void)
         CHECK_RELATIVE(olivero, fwhm, 2.4e-4);
         /* Thompson, Cox & Hastings (1987) J. Appl. Cryst. 20, 79: within 0.43 % */
         double g = 1 - r, tch = pow(pow(g, 5) + 2.69269 * pow(g, 4) * r + 2.42843 * g * g * g * r * r +
-                                        4.47163 * g * g * r * r * r + 0.07842 * g * pow(r, 4) + pow(r, 5), 0.2);
+                                        4.47163 * g * g * r * r * r + 0.07842 * g * pow(r, 4) + pow(r, 5),
+                                    0.2);
         CHECK_RELATIVE(tch, fwhm, 4.4e-3);
     }
     /* the ends: FWHM/breadth = 2/pi (Lorentz) and 2 sqrt(ln 2/pi) (Gauss) */
@@ -75,7 +76,8 @@ static double slope_of(double (*f)(double, double), double g, double l, int of_l
     static const double weight[3] = {45.0 / 60, -9.0 / 60, 1.0 / 60};
     double sum = 0, h = 4e-3 * (of_lorentz ? l : g);
     for (int k = 1; k <= 3; k++)
-        sum += weight[k - 1] * (of_lorentz ? f(g, l + k * h) - f(g, l - k * h) : f(g + k * h, l) - f(g - k * h, l)) / h;
+        sum += weight[k - 1] *
+               (of_lorentz ? f(g, l + k * h) - f(g, l - k * h) : f(g + k * h, l) - f(g - k * h, l)) / h;
     return sum;
 }
 
