@@ -218,11 +218,10 @@ static void choose_globals(lw_fit_state *fit, double fwhm)
     lw_model *model = &fit->model;
     bool sample = fit->options->instrument != NULL;
     size_t visible = 0;
-    double tangent2 = 0, secant = 0;
+    double secant = 0;
     for (size_t k = 0; k < fit->n; k++)
         if (fit->start[k].visible) {
             double t = tan(fit->position[k] * M_PI / 360);
-            tangent2 += t * t;
             secant += sqrt(1 + t * t);
             visible++;
         }
