@@ -128,7 +128,7 @@ static int run_recipe(lua_State *L, const job *work)
         lua_remove(L, -n_arguments - 1);
     } else
         lua_pop(L, 1);
-    return lwa_call(L, n_arguments, 0, work->progress);
+    return (int)lwa_call(L, n_arguments, 0, work->progress);
 }
 
 static int work_through(lua_State *L)
@@ -201,7 +201,7 @@ int main(int argc, char **argv)
     }
     lwa_progress_clear(&progress);
     lua_close(L);
-    if (fflush(stdout) != 0 && work.code == LWA_DONE) {
+    if ((fflush(stdout) != 0 || ferror(stdout)) && work.code == LWA_DONE) {
         fprintf(stderr, "linewright: can't write to standard output: %s\n", strerror(errno));
         work.code = LWA_FAILED;
     }
