@@ -239,12 +239,12 @@ int lwa_prompt(lua_State *L, lwa_progress *progress)
         lwa_stop_forget();
         lwa_stop_arm();
         lwa_stop_hook(L);
-        code = lwa_call(L, 0, LUA_MULTRET, progress);
+        code = (int)lwa_call(L, 0, LUA_MULTRET, progress);
         lwa_progress_clear(progress);
         if (code == LWA_DONE && lua_gettop(L) > 0) {
             lua_pushcfunction(L, show_values);
             lua_insert(L, 1);
-            code = lwa_call(L, lua_gettop(L) - 1, 0, progress);
+            code = (int)lwa_call(L, lua_gettop(L) - 1, 0, progress);
         }
         if (lwa_stop_reason() == LWA_TIME_IS_UP)
             break;
