@@ -47,8 +47,8 @@ ends 2 "$engine" --no-such-option; check "an unknown option is a usage error"
 ends 0 "$engine" --help && [ -s "$scratch/out" ]; check "--help goes to stdout"
 ends 0 "$engine" --version && grep -q '[0-9]\.[0-9]' "$scratch/out"; check "--version goes to stdout"
 ends 0 "$engine" "$scripts/calibrate.lua" --help && grep -q standard "$scratch/out"; check "a recipe lists its inputs"
-ends 2 "$engine" "$scripts/calibrate.lua" scann=x; check "an unknown input is a usage error"
-says 'scan'; check "and the nearest spelling is named"
+ends 1 "$engine" "$scripts/calibrate.lua" scann=x && says 'calibrate\.lua:[0-9]+:.*did you mean .scan'
+check "an unknown input is an error of the recipe's, with the nearest spelling"
 
 # --- bad files -----------------------------------------------------------------------------------
 : >empty.xy
@@ -75,10 +75,10 @@ ends 1 "$engine" "$scripts/size_strain.lua" scan="$demo/nickel_milled_04h.xy" ma
 calibrate out=good >"$scratch/out" 2>"$scratch/err" </dev/null && [ -s good/calibration.json ]
 check "a sound job works"
 cp good/calibration.json before.json 2>/dev/null
-(
-  ulimit -f 4
+( # 8 KiB: less than a record; stdout is no file, so only the records meet the limit
+  ulimit -f 16
   calibrate out=good
-) >"$scratch/out" 2>"$scratch/err" </dev/null
+) >/dev/null 2>"$scratch/err" </dev/null
 [ $? -eq 1 ]; check "a file that can't be written whole is an error, not a death"
 cmp -s before.json good/calibration.json; check "and the older record is untouched"
 [ -z "$(find good -newer before.json -name '*.tmp*' 2>/dev/null)" ] && [ -z "$(find good -name '.*' -type f)" ]
