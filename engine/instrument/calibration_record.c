@@ -125,18 +125,20 @@ static void write_verdict(lw_calibration *calibration, const lw_lines *lines, co
                                            "the range of angles can't separate %s from %s (correlation %.3f): their sum is "
                                            "sound, each alone is not", set->kind[j]->name, set->kind[i]->name, r), err);
         }
+    size_t off = 0;
     for (size_t i = 0; i < rows->n; i++) {
         double u = hypot(rows->line[i]->two_theta.u, rows->u_certified[i]) * rows->birge;
         const lw_reflection *h = &rows->line[i]->reflection;
         char hkl[24];
-        if (fabs(rows->residual[i]) > fmax(4 * u, 0.002))
+        if (fabs(rows->residual[i]) > fmax(4 * u, 0.002)) {
+            off++;
             lw_add_text(list, NULL,
                         lw_arena_print(&calibration->arena, err,
                                        "line %s lies %.4f deg from its certified place after the aberrations (%.1f u)",
                                        lw_hkl_text(h->h, h->k, h->l, hkl, sizeof hkl), rows->residual[i],
                                        fabs(rows->residual[i]) / u), err);
+        }
     }
-    size_t few = list != NULL ? list->n : 0;
     if (lines->misfit[0] != '\0')
         lw_add_text(list, NULL, lines->misfit, err);
     if (strncmp(rows->radius_from, "assumed", 7) == 0 && lw_node_get(root, "aberrations") != NULL &&
@@ -144,7 +146,7 @@ static void write_verdict(lw_calibration *calibration, const lw_lines *lines, co
         lw_add_text(list, NULL, "the goniometer radius was not given: 200 mm was assumed, the displacement scales with it",
                     err);
     /* positions judged by themselves: the limits are common practice for a line-position calibration */
-    const char *verdict = rows->rms > 0.02 ? "fail" : rows->rms > 0.005 || few > 0 ? "attention" : "pass";
+    const char *verdict = rows->rms > 0.02 ? "fail" : rows->rms > 0.005 || off > 0 ? "attention" : "pass";
     snprintf(calibration->verdict, sizeof calibration->verdict, "%s", verdict);
     lw_add_text(root, "verdict", verdict, err);
 }

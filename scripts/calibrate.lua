@@ -1,0 +1,84 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- Calibrates a diffractometer from the scan of a reference material.
+local lw = require "linewright"
+
+local job = lw.recipe {
+  title  = "Calibration of a diffractometer",
+  inputs = {
+    scan      = { kind = "file", help = "scan of the reference material" },
+    standard  = { kind = "name", help = "reference material: a name from standards/reference, or a file" },
+    radiation = { kind = "name", help = "Cu Ka, Co Ka ...; or a wavelength, 0.05168nm" },
+    previous  = { kind = "file", default = "", help = "calibration.json of the time before, to compare with" },
+    geometry  = { kind = "text", default = "auto", choices = { "auto", "reflection", "capillary" },
+                  help = "flat specimen in reflection, or capillary; auto: capillary for a plain wavelength" },
+    radius    = { kind = "number", default = "", unit = "mm", least = 10, most = 2000,
+                  help = "goniometer radius; left out: as the scan's header says, else 200" },
+    noise     = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },
+                  help = "scaled: intensities are not counts, their noise is estimated from the scan" },
+  },
+}
+
+-- The scan, and where the certificate puts the lines.
+local standard = lw.standard(job.standard)
+local scan     = lw.read_scan(job.scan, { radiation = job.radiation, noise = job.noise })
+local lines    = standard:reflections(scan)
+
+-- All lines at once, their widths smooth functions of the angle. A tube's divergent beam needs the axial
+-- divergence of both beams; the parallel beam of a storage ring only that of the diffracted one.
+local capillary = job.geometry == "capillary" or (job.geometry == "auto" and scan.radiation.is_plain)
+local fitted = lw.fit_lines(scan, lines, {
+  widths    = "smooth",
+  axial     = capillary and "finger_cox_jephcoat" or "soller",
+  polarised = capillary and 0.05 or 0.5,
+})
+local instrument = lw.calibrate(fitted, standard, {
+  geometry          = capillary and "capillary" or "reflection",
+  goniometer_radius = job.radius or nil,
+})
+print(instrument)
+
+-- What changed since the time before.
+local changes
+if job.previous then
+  local before = lw.load_calibration(job.previous)
+  if math.abs(before.radiation.wavelength_nm / instrument.radiation.wavelength_nm - 1) > 1e-6 then
+    error(("%s was made with %s, this scan with %s: nothing to compare"):format(
+      job.previous, before.radiation.name, instrument.radiation.name), 0)
+  end
+  changes = {}
+  local function compare(quantity, was, is)
+    changes[#changes + 1] = {
+      quantity = quantity, before = was, after = is, difference = is - was,
+      in_units_of_u = tonumber(("%.1f"):format(is:pull(was))),
+    }
+  end
+  for name, is in pairs(instrument.record.aberrations) do
+    local was = before.record.aberrations[name]
+    if was then compare(name, was, is) end
+  end
+  local low  = math.max(before.valid_two_theta[1], instrument.valid_two_theta[1])
+  local high = math.min(before.valid_two_theta[2], instrument.valid_two_theta[2])
+  for _, share in ipairs { 0.1, 0.5, 0.9 } do
+    local angle = math.floor(low + share * (high - low) + 0.5)
+    compare(("FWHM at %d deg"):format(angle), before:profile_at(angle).fwhm, instrument:profile_at(angle).fwhm)
+  end
+  print(lw.result { changes_since_the_time_before = changes })
+end
+
+job:check(instrument.verdict ~= "fail", "calibration: " .. instrument.verdict)
+
+-- The report opens with what protects people.
+local items = {
+  title = "Calibration of a diffractometer",
+  subtitle = ("%s, %s"):format(standard.title, scan.radiation.name),
+  { caution = "After work on a tube, shutter or housing the interlocks, warning lights and leakage are checked and "
+      .. "released by the licensed radiation-safety officer before the shutter is opened. Local rules come first; a "
+      .. "good calibration says nothing about the safety of the beam.", title = "X-rays after maintenance" },
+  instrument,
+  fitted,
+}
+if changes then
+  table.insert(items, 3, { heading = "Since the time before" })
+  table.insert(items, 4, { table = changes, caption = "Before, after, and the difference in units of its u" })
+end
+job:write(instrument, lw.report(items))

@@ -1,0 +1,106 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- Sizes and strains along a series of powders of one material, for example from a mill.
+local lw = require "linewright"
+
+local job = lw.recipe {
+  title  = "Size and strain along a series",
+  inputs = {
+    scans       = { kind = "glob", help = "scans of the series, for example powder_*.xy" },
+    material    = { kind = "name", help = "material: a name from standards/materials, or a file" },
+    calibration = { kind = "file", help = "calibration.json of the instrument" },
+    noise       = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },
+                    help = "scaled: intensities are not counts, their noise is estimated from the scan" },
+  },
+}
+
+local instrument = lw.load_calibration(job.calibration)
+local powder     = lw.material(job.material)
+
+-- Milling time from the file's name (nickel_milled_08h.xy: 8); without one, the place in the series.
+local function hours(path, place)
+  local name = path:match "[^/]+$"
+  return tonumber(name:match "(%d+%.?%d*)h") or place
+end
+
+local function analyse(path)
+  local scan     = lw.read_scan(path, { radiation = instrument.radiation, noise = job.noise })
+  local lines    = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
+  local profiles = lw.deconvolve(lines, { method = "convolution" })
+  local results  = lw.separate(profiles)
+  return lines, profiles, results
+end
+
+-- One powder after the other. One that can't be analysed is told and left out; the others go on.
+local entries, rows, failed, shown = {}, {}, {}, {}
+for place, path in ipairs(job.scans) do
+  local ok, lines, profiles, results = pcall(analyse, path)
+  if ok then
+    local wh = results.methods.williamson_hall
+    local row = {
+      scan = path:match "[^/]+$", milling_time_h = hours(path, place),
+      size_volume = wh.size_volume, strain_rms = wh.strain_rms, strain_apparent = wh.strain_apparent,
+      lattice_a = results:get "lattice.a", goodness_of_fit = lines.fit.goodness_of_fit,
+    }
+    rows[#rows + 1] = row
+    entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = results.lines,
+                              methods = results.methods, lattice = results.lattice,
+                              agreement = results.agreement, notes = results.notes }
+    shown[#shown + 1] = { name = row.scan, lines = lines, profiles = profiles, results = results }
+    print(("%-28s size %-16s strain %s"):format(row.scan, tostring(row.size_volume), tostring(row.strain_rms)))
+  else
+    local message = tostring(lines)
+    entries[#entries + 1] = { scan = path, error = message }
+    failed[#failed + 1] = { scan = path, error = message }
+    print(("%-28s %s"):format(path:match "[^/]+$", message))
+  end
+end
+if #rows == 0 then
+  error("no scan of the series could be analysed: " .. failed[1].error, 0)
+end
+table.sort(rows, function(a, b) return a.milling_time_h < b.milling_time_h end)
+job:write_csv("series.csv", rows)
+
+-- Size and strain against time; limits are left out of the curves and stay in the table.
+local function series_of(field)
+  local x, y = {}, {}
+  for _, row in ipairs(rows) do
+    if row[field] and row[field].kind == "value" then
+      x[#x + 1], y[#y + 1] = row.milling_time_h, row[field]
+    end
+  end
+  return x, y
+end
+local function against_time(field, title, label, unit)
+  local x, y = series_of(field)
+  if #x < 2 then return nil end
+  return lw.figure {
+    name = field .. "_against_time", title = title,
+    caption = title .. ", Williamson-Hall, with standard uncertainties (counting, calibration and choice of form).",
+    x = { label = "milling time", unit = "h" }, y = { label = label, unit = unit },
+    series = { { kind = "points", label = label, x = x, y = y }, { kind = "line", x = x, y = y } },
+  }
+end
+
+local items = {
+  title = "Milling series: " .. powder.title, subtitle = ("%d powders"):format(#rows),
+}
+if powder.hazard ~= "" then
+  items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }
+end
+items[#items + 1] = { heading = "Along the series" }
+items[#items + 1] = { table = rows, caption = "Volume-weighted size and rms strain by Williamson-Hall" }
+for _, figure in ipairs {
+  against_time("size_volume", "Size against milling time", "volume-weighted size", "nm") or false,
+  against_time("strain_rms", "Strain against milling time", "rms strain", "") or false,
+} do
+  if figure then items[#items + 1] = figure end
+end
+if #failed > 0 then
+  items[#items + 1] = { table = failed, caption = "Not analysed, and why" }
+end
+for _, one in ipairs(shown) do
+  items[#items + 1] = { heading = one.name }
+  items[#items + 1] = one.results
+  items[#items + 1] = one.lines
+end
+job:write({ scans = entries }, lw.report(items))

@@ -1,0 +1,50 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- Sizes and strains of one powder, against a calibrated instrument.
+local lw = require "linewright"
+
+local job = lw.recipe {
+  title  = "Size and strain of a powder",
+  inputs = {
+    scan        = { kind = "file", help = "scan of the powder" },
+    material    = { kind = "name", help = "material: a name from standards/materials, or a file" },
+    calibration = { kind = "file", help = "calibration.json of the instrument" },
+    background  = { kind = "file", default = "", help = "scan of the empty holder or capillary" },
+    deconvolve  = { kind = "text", default = "convolution", choices = { "convolution", "stokes" },
+                    help = "how the instrument is taken out" },
+    methods     = { kind = "list", default = "all", help = "methods to run" },
+    low         = { kind = "number", default = "", unit = "deg", least = 0, most = 180, help = "first 2theta to use" },
+    high        = { kind = "number", default = "", unit = "deg", least = 0, most = 180, help = "last 2theta to use" },
+    noise       = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },
+                    help = "scaled: intensities are not counts, their noise is estimated from the scan" },
+  },
+}
+
+local instrument = lw.load_calibration(job.calibration)
+local powder     = lw.material(job.material)
+local reading    = { radiation = instrument.radiation, noise = job.noise }
+local scan       = lw.read_scan(job.scan, reading)
+local holder     = job.background and lw.read_scan(job.background, reading) or nil
+
+-- Only where the instrument is known, unless the angles are given.
+local valid = instrument.valid_two_theta
+local margin = 0.05 * (valid[2] - valid[1])
+local low   = job.low or math.max(valid[1] - margin, scan.two_theta[1])
+local high  = job.high or math.min(valid[2] + margin, scan.two_theta[scan.n])
+scan = scan:crop(low, high)
+
+local lines    = lw.fit_lines(scan, powder:reflections(scan), {
+  instrument = instrument, background = holder,
+  polarised  = instrument.geometry == "capillary" and 0.05 or 0.5,
+})
+local profiles = lw.deconvolve(lines, { method = job.deconvolve })     -- refolded, or it stops here
+local results  = lw.separate(profiles, { methods = job.methods })      -- every method that applies
+print(results)
+
+local items = { title = "Size and strain: " .. powder.title, subtitle = scan.file }
+if powder.hazard ~= "" then
+  items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }
+end
+for _, item in ipairs { results, profiles, lines } do
+  items[#items + 1] = item
+end
+job:write(results, lw.report(items))
