@@ -349,6 +349,27 @@ double lw_fit_overlap(const lw_fit_state *fit, size_t line)
     return sum > 0 ? share / sum : 1;
 }
 
+/* Where three lines in a row lie for three tenths or more under their neighbours, the data tell neither their widths nor
+ * their background: 0 if nowhere, else an angle in the gap before them. */
+static double overlap_begins(const lw_fit_state *fit)
+{
+    size_t run = 0;
+    for (size_t k = 3; k < fit->n; k++) {
+        run = lw_fit_overlap(fit, k) > 0.3 ? run + 1 : 0;
+        if (run < 3)
+            continue;
+        /* cut in a gap of two widths at least, or the last line kept would lose its neighbour and take its area */
+        for (size_t j = k - 2; j < fit->n; j++) {
+            double variance, lorentz, gap = fit->position[j] - fit->position[j - 1];
+            lw_model_widths(&fit->model, fit->p, j, &variance, &lorentz);
+            if (gap > 2 * lw_voigt_fwhm(sqrt(variance), lorentz))
+                return fit->position[j - 1] + 0.55 * gap;
+        }
+        return 0;
+    }
+    return 0;
+}
+
 /* From smooth widths to each line's own, where the data carry them. */
 static lw_status free_widths(lw_fit_state *fit, lw_error *err)
 {
@@ -463,6 +484,9 @@ static lw_status run(lw_fit_state *fit, lw_error *err)
                               model->global[i].parameter != LW_Y;
     if (status == LW_OK)
         status = iterate(fit, 2, false, err);
+    bool whole_scan = !(fit->options->range[1] > fit->options->range[0]);
+    if (status == LW_OK && whole_scan && (fit->crop_deg = overlap_begins(fit)) > 0)
+        return LW_OK;
     for (size_t i = 0; i < model->n_globals; i++)
         fit->hold_global[i] = false;
     if (status == LW_OK)
@@ -519,20 +543,19 @@ static lw_status check_options(const lw_scan *scan, const lw_fit_options *option
     return LW_OK;
 }
 
-lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflection *reflections, size_t n,
-                       const lw_material *material, const lw_fit_options *options, lw_lines **out, lw_error *err)
+/* One fit of the scan, or of the range that the options name. *crop_deg > 0 and no lines: fit again below it. */
+static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_reflection *reflections, size_t n,
+                          const lw_material *material, const lw_fit_options *options, lw_lines **out, double *crop_deg,
+                          lw_error *err)
 {
-    *out = NULL;
-    lw_status status = check_options(scan, options, err);
-    if (status != LW_OK)
-        return status;
     lw_lines *lines = lw_take(engine, sizeof *lines, err);
     if (lines == NULL)
         return LW_OUT_OF_MEMORY;
-    *lines = (lw_lines){.scan = scan, .radiation = scan->radiation, .misfit = ""};
+    *lines = (lw_lines){.scan = scan, .radiation = scan->radiation, .misfit = "", .left_out = ""};
     lw_arena_begin(&lines->arena, engine);
     lw_fit_state fit = {.engine = engine, .options = options, .lines = lines};
     lw_arena_begin(&fit.scratch, engine);
+    lw_status status = LW_OK;
     if (options->range[1] > options->range[0]) {
         status = lw_scan_crop(scan, options->range[0], options->range[1], &lines->cropped, err);
         lines->scan = lines->cropped;
@@ -564,14 +587,45 @@ lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflecti
         status = take_state(&fit, err);
     if (status == LW_OK)
         status = run(&fit, err);
-    if (status == LW_OK)
+    if (status == LW_OK && !(fit.crop_deg > 0))
         status = lw_fit_result(&fit, err);
+    *crop_deg = fit.crop_deg;
     lw_arena_end(&fit.scratch);
-    if (status != LW_OK) {
+    if (status != LW_OK || *crop_deg > 0) {
         lw_lines_free(lines);
         return status;
     }
     *out = lines;
+    return LW_OK;
+}
+
+lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflection *reflections, size_t n,
+                       const lw_material *material, const lw_fit_options *options, lw_lines **out, lw_error *err)
+{
+    *out = NULL;
+    double crop_deg = 0;
+    lw_status status = check_options(scan, options, err);
+    if (status == LW_OK)
+        status = fit_once(engine, scan, reflections, n, material, options, out, &crop_deg, err);
+    if (status != LW_OK || !(crop_deg > 0))
+        return status;
+    lw_fit_options below = *options;
+    below.range[0] = scan->two_theta_deg[0];
+    below.range[1] = crop_deg;
+    double unused;
+    status = fit_once(engine, scan, reflections, n, material, &below, out, &unused, err);
+    if (status != LW_OK)
+        return status;
+    const char *text = lw_arena_print(&(*out)->arena, err,
+                                      "beyond %.2f deg the lines overlap so much that their widths can't be told apart: "
+                                      "that part of the scan was left out (give range to use it all the same)",
+                                      crop_deg);
+    if (text == NULL) {
+        lw_lines_free(*out);
+        *out = NULL;
+        return LW_OUT_OF_MEMORY;
+    }
+    (*out)->left_out = text;
     return LW_OK;
 }
 

@@ -37,6 +37,7 @@ typedef struct lw_fit_state {
     size_t iterations;
     const char *stopped;
     bool converged;
+    double crop_deg;               /* > 0: from here on the lines overlap too much; fit again below it */
     double chi2;                   /* of the last iteration */
     lw_width_function shared;      /* the smooth width function, kept when lines get widths of their own */
 } lw_fit_state;

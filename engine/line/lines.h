@@ -55,6 +55,7 @@ typedef struct lw_lines {
     double misfit_factor;            /* by which all u were multiplied because the shape misses the data (>= 1) */
     double misfit_p;                 /* probability of a chi2 this large if the model were right */
     const char *misfit;              /* what was noticed, in words; "" if nothing */
+    const char *left_out;            /* which part of the scan was not used because its lines overlap; "" if none */
     size_t n_points, iterations;
     const char *stopped;             /* why the iteration stopped */
     size_t at_background, n_background; /* rows of the Chebyshev terms */

@@ -40,6 +40,7 @@ lw_node *lw_lines_tree(const lw_lines *lines, lw_arena *arena, lw_error *err)
     lw_add_number(fit, "misfit_probability", lines->misfit_p, err);
     lw_add_number(fit, "misfit_factor", lines->misfit_factor, err);
     lw_add_text(fit, "misfit", lines->misfit, err);
+    lw_add_text(fit, "left_out", lines->left_out, err);
     lw_add_number(fit, "iterations", (double)lines->iterations, err);
     lw_add_text(fit, "stopped", lines->stopped, err);
     if (lines->background_scan_scale != 0)
