@@ -292,6 +292,19 @@ static lw_status set_background(lw_fit_state *fit, size_t terms, lw_error *err)
     return status;
 }
 
+/* Terms beyond which the background would follow the lines' tails: its shortest wave, twice the span over the order,
+ * stays six times as long as the lines are wide on average. */
+static size_t most_terms(const lw_fit_state *fit)
+{
+    double sum = 0, span = fit->scan->two_theta_deg[fit->scan->n - 1] - fit->scan->two_theta_deg[0];
+    for (size_t k = 0; k < fit->n; k++) {
+        double variance, lorentz;
+        lw_model_widths(&fit->model, fit->p, k, &variance, &lorentz);
+        sum += lw_voigt_fwhm(sqrt(fmax(variance, 1e-12)), lorentz);
+    }
+    return (size_t)fmin(fmax(span / (3 * sum / (double)fit->n), 4), 20);
+}
+
 /* More background terms while the Bayesian information criterion falls (Schwarz 1978 Ann. Stat. 6, 461). */
 static lw_status choose_background(lw_fit_state *fit, lw_error *err)
 {
@@ -300,7 +313,8 @@ static lw_status choose_background(lw_fit_state *fit, lw_error *err)
     size_t kept = fit->terms, misses = 0;
     double best = fit->chi2, keep[LW_BACKGROUND_MOST];
     memcpy(keep, fit->background, sizeof keep);
-    while (fit->terms + 2 <= 20 && misses < 2) {
+    size_t most = most_terms(fit);
+    while (fit->terms + 2 <= most && misses < 2) {
         double scale = fmax(1, best / (double)fit->scan->n);
         lw_status status = set_background(fit, fit->terms + 2, err);
         if (status == LW_OK)
