@@ -47,8 +47,8 @@ climbing() {
     [ -d "$tree/engine/$floor" ] || continue
     at=$(height "$floor")
     grep -nE '^[[:space:]]*#[[:space:]]*include[[:space:]]*"' "$tree/engine/$floor"/*.[ch] /dev/null 2>/dev/null |
-      sed -E 's/^([^:]*):([0-9]+):[^"]*"([^"]*)".*/\1 \2 \3/' |
-      while read -r file line included; do
+      sed -E 's/^([^:]*):([0-9]+):[^"]*"([^"]*)".*/\1|\2|\3/' |
+      while IFS='|' read -r file line included; do
         to=$(height "${included%%/*}")
         if [ "$to" -eq 0 ]; then
           echo "${file#"$tree"/}:$line: \"$included\" names no floor"
