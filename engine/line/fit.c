@@ -531,10 +531,9 @@ static lw_status take_state(lw_fit_state *fit, lw_error *err)
     fit->local = lw_arena_take(&fit->scratch, n, sizeof *fit->local, err);
     fit->hold_position = lw_arena_take(&fit->scratch, n, sizeof *fit->hold_position, err);
     fit->hold_local = lw_arena_take(&fit->scratch, n, sizeof *fit->hold_local, err);
-    fit->weak = lw_arena_take(&fit->scratch, n, sizeof *fit->weak, err);
     fit->model.line = lw_arena_take(&fit->scratch, n, sizeof *fit->model.line, err);
     fit->lines->variance = lw_arena_take(&fit->lines->arena, fit->scan->n, sizeof(double), err);
-    bool all = fit->position && fit->area && fit->local && fit->hold_position && fit->hold_local && fit->weak &&
+    bool all = fit->position && fit->area && fit->local && fit->hold_position && fit->hold_local &&
                fit->model.line && fit->lines->variance;
     return all ? LW_OK : LW_OUT_OF_MEMORY;
 }

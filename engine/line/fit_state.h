@@ -23,7 +23,7 @@ typedef struct lw_fit_state {
     /* the present point, by meaning */
     double *position, *area;       /* [n] */
     double (*local)[LW_LOCAL_MOST];/* [n] */
-    bool *hold_position, *hold_local, *weak; /* [n] */
+    bool *hold_position, *hold_local; /* [n] */
     double background[LW_BACKGROUND_MOST];
     double global[LW_GLOBALS_MOST], global_lower[LW_GLOBALS_MOST];
     bool hold_global[LW_GLOBALS_MOST], hold_background, hold_areas;

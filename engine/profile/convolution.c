@@ -27,8 +27,8 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
             double by_gauss = -2 * M_PI * gauss * length * length * a, by_lorentz = -2 * length * a;
             double variance = by_gauss * by_gauss * c[g * stride + g] + by_lorentz * by_lorentz * c[l * stride + l] +
                               2 * by_gauss * by_lorentz * c[g * stride + l];
-            ((double *)profile->cosine)[i] = a;
-            ((double *)profile->u_cosine)[i] = sqrt(fmax(variance, 0));
+            profile->cosine[i] = a;
+            profile->u_cosine[i] = sqrt(fmax(variance, 0));
         }
         profile->truncation = "none: a Voigt has coefficients at every length";
         /* the refold is the fit itself */

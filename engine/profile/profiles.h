@@ -17,8 +17,8 @@ typedef struct lw_profile {
     size_t at_gauss, at_lorentz, at_breadth; /* rows in lw_profiles.covariance */
     /* Fourier coefficients, normalised to A(0) = 1 */
     size_t n_coefficients;
-    const double *length_nm;      /* [n] column length L = harmonic number x step, first 0 */
-    const double *cosine, *u_cosine, *sine, *u_sine; /* [n] */
+    double *length_nm;            /* [n] column length L = harmonic number x step, first 0 */
+    double *cosine, *u_cosine, *sine, *u_sine; /* [n] */
     size_t truncated_at;          /* coefficients from here on are below the noise */
     const char *truncation;       /* the rule that chose it, in words */
     /* refold: instrument x pure profile against the data */
@@ -28,7 +28,7 @@ typedef struct lw_profile {
     bool refold_failed;
     /* pure profile for figures */
     size_t n_curve;
-    const double *curve_s, *curve_intensity, *curve_u; /* s - s_line in nm^-1, unit area */
+    double *curve_s, *curve_intensity, *curve_u; /* s - s_line in nm^-1, unit area */
 } lw_profile;
 
 typedef struct lw_profiles {

@@ -151,8 +151,8 @@ static lw_status one_line(lw_profiles *profiles, lw_profile *profile, const lw_d
         return LW_OUT_OF_MEMORY;
     double variance, lorentz;
     size_t n_nodes = lw_line_all_nodes(lines, profile->line, true, node, &variance, &lorentz);
-    double *cosine = (double *)profile->cosine, *sine = (double *)profile->sine;
-    double *u_cosine = (double *)profile->u_cosine, *u_sine = (double *)profile->u_sine;
+    double *cosine = profile->cosine, *sine = profile->sine;
+    double *u_cosine = profile->u_cosine, *u_sine = profile->u_sine;
     double scale = 0;
     for (size_t k = 0; k < n; k++) {
         double length = profile->length_nm[k];
