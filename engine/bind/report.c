@@ -56,7 +56,8 @@ static void add_figure_of(lua_State *L, lw_report *report, int self, int item)
 
 static bool is_drawing(const char *name)
 {
-    return name != NULL && (strcmp(name, "points") == 0 || strcmp(name, "line") == 0 || strcmp(name, "curve") == 0);
+    return name != NULL && (strcmp(name, "points") == 0 || strcmp(name, "line") == 0 || strcmp(name, "curve") == 0 ||
+                            strcmp(name, "plot") == 0);
 }
 
 /* A result under its heading, without the vectors that only its figure needs, then the figure. */
@@ -305,9 +306,18 @@ void lwb_write_report(lua_State *L, int index)
     for (lua_Integer i = 1; i <= n; i++) {
         lua_rawgeti(L, figures, i);
         const lwb_figure *figure = lwb_self(L, -1, &lwb_figure_noun, "job:write");
+        int same = 1; /* the second of a name gets a number */
+        for (lua_Integer j = 1; j < i; j++) {
+            lua_rawgeti(L, figures, j);
+            const lwb_figure *other = lwb_self(L, -1, &lwb_figure_noun, "job:write");
+            same += strcmp(other->figure->name, figure->figure->name) == 0;
+            lua_pop(L, 1);
+        }
         for (int k = 0; k < 2; k++) {
-            char name[256];
-            snprintf(name, sizeof name, "figures/%.200s.%s", figure->figure->name, suffix[k]);
+            char name[256], number[16] = "";
+            if (same > 1)
+                snprintf(number, sizeof number, "_%d", same);
+            snprintf(name, sizeof name, "figures/%.200s%s.%s", figure->figure->name, number, suffix[k]);
             const char *file = lwb_push_out_path(L, name, "job:write");
             lwb_check(L, lw_figure_save_as(lwb_engine(L), figure->figure, file, &err), &err);
             lua_pop(L, 1);

@@ -24,6 +24,33 @@ static bool columns(const lw_node *group, const lw_node **x, const lw_node **y, 
     return *x != NULL && *y != NULL && (*x)->n == (*y)->n && (*x)->n > 0;
 }
 
+static const lw_node *vector_of(const lw_node *group, const char *name, size_t n)
+{
+    const lw_node *found = lw_node_get(group, name);
+    return found != NULL && found->kind == LW_NODE_VECTOR && (n == 0 || found->n == n) ? found : NULL;
+}
+
+/* A group of vectors x, y, u_x, u_y and line_x, line_y, with texts x_label and y_label if it has them. */
+static bool push_plot(lua_State *L, const lw_node *group, const lw_node *plot, const char *name)
+{
+    lw_error err = LW_ERROR_NONE;
+    const lw_node *x = vector_of(plot, "x", 0), *y = x ? vector_of(plot, "y", x->n) : NULL;
+    if (y == NULL || x->n == 0)
+        return false;
+    const lw_node *u_x = vector_of(plot, "u_x", x->n), *u_y = vector_of(plot, "u_y", x->n);
+    const lw_node *line_x = vector_of(plot, "line_x", 0), *line_y = line_x ? vector_of(plot, "line_y", line_x->n) : NULL;
+    lw_figure *figure = lwb_new_figure(L, name, lw_node_text(group, "title", name));
+    lw_figure_label(figure, LW_AXIS_X, lw_node_text(plot, "x_label", "x"), x->unit, &err);
+    lw_figure_label(figure, LW_AXIS_Y, lw_node_text(plot, "y_label", "y"), y->unit, &err);
+    lw_series *series = lw_figure_series(figure, LW_SERIES_POINTS, 0, "lines", x->vector, y->vector, x->n, &err);
+    if (series != NULL && (u_x != NULL || u_y != NULL))
+        lw_series_errors(figure, series, u_x ? u_x->vector : NULL, u_y ? u_y->vector : NULL, &err);
+    if (line_y != NULL)
+        lw_figure_series(figure, LW_SERIES_LINE, 0, "fit", line_x->vector, line_y->vector, line_x->n, &err);
+    lwb_check(L, LW_OK, &err);
+    return true;
+}
+
 bool lwb_push_result_figure(lua_State *L, const lw_node *group, const char *name)
 {
     lw_error err = LW_ERROR_NONE;
@@ -32,6 +59,9 @@ bool lwb_push_result_figure(lua_State *L, const lw_node *group, const char *name
         lwb_push_figure(L, described);
         return true;
     }
+    const lw_node *plot = lw_node_get(group, "plot");
+    if (plot != NULL && plot->kind == LW_NODE_GROUP)
+        return push_plot(L, group, plot, name);
     const lw_node *points = lw_node_get(group, "points"), *line = lw_node_get(group, "line");
     const lw_node *x, *y, *u, *line_x = NULL, *line_y = NULL, *line_u = NULL;
     if (points == NULL || points->kind != LW_NODE_GROUP || !columns(points, &x, &y, &u))

@@ -70,11 +70,12 @@ static int make(lua_State *L)
 static int crop(lua_State *L)
 {
     const lw_scan *scan = self_of(L, "scan:crop");
+    lua_settop(L, 3);
     if (lua_type(L, 2) == LUA_TTABLE) {
+        lua_settop(L, 2);
         lua_rawgeti(L, 2, 1);
         lua_rawgeti(L, 2, 2);
-        lua_replace(L, 3);
-        lua_replace(L, 2);
+        lua_remove(L, 2);
     }
     double low = lwb_number(L, 2, "scan:crop", "the low angle"), high = lwb_number(L, 3, "scan:crop", "the high angle");
     lw_error err = LW_ERROR_NONE;

@@ -3,6 +3,7 @@
  * like groups as a table. This is what print() and the prompt show. */
 #include "bind/bind.h"
 
+#include <math.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -105,75 +106,76 @@ static void add_cell(luaL_Buffer *out, const char *text, size_t room, bool right
         pad(out, room - n);
 }
 
-static void show_rows(luaL_Buffer *out, const lw_node *list, size_t indent)
-{
-    const char *column[COLUMN_MOST], *unit[COLUMN_MOST];
-    size_t room[COLUMN_MOST], n = 0;
+/* The columns of a table: names of the rows' children, and how each is set. */
+typedef struct columns {
+    size_t n;
+    const char *name[COLUMN_MOST], *unit[COLUMN_MOST];
     bool right[COLUMN_MOST];
+} columns;
+
+/* The text of a cell; a column without a name holds the rows' own names. */
+static const char *column_text(const columns *c, size_t i, const lw_node *row, char *text, size_t size)
+{
+    return c->name[i] == NULL ? row->name : cell_text(row, c->name[i], c->unit[i], text, size);
+}
+
+static void show_table(luaL_Buffer *out, const lw_node *list, const columns *c, size_t indent)
+{
+    size_t room[COLUMN_MOST];
     char text[256];
-    for (const lw_node *cell = list->first->first; cell != NULL && n < COLUMN_MOST; cell = cell->next)
-        if (is_scalar(cell)) {
-            column[n] = cell->name;
-            right[n] = cell->kind != LW_NODE_TEXT;
-            unit[n++] = shared_unit(list, cell->name);
-        }
-    for (size_t i = 0; i < n; i++) {
-        size_t head = width(column[i]) + (unit[i] ? width(unit[i]) + 3 : 0);
+    for (size_t i = 0; i < c->n; i++) {
+        const char *name = c->name[i] ? c->name[i] : list->name;
+        size_t head = width(name) + (c->unit[i] ? width(c->unit[i]) + 3 : 0);
         room[i] = head;
         for (const lw_node *row = list->first; row != NULL; row = row->next) {
-            size_t w = width(cell_text(row, column[i], unit[i], text, sizeof text));
+            size_t w = width(column_text(c, i, row, text, sizeof text));
             if (w > room[i])
                 room[i] = w < CELL_MOST ? w : (head > CELL_MOST ? head : CELL_MOST);
         }
     }
     pad(out, indent);
-    for (size_t i = 0; i < n; i++) {
-        snprintf(text, sizeof text, unit[i] ? "%s (%s)" : "%s", column[i], unit[i] ? unit[i] : "");
+    for (size_t i = 0; i < c->n; i++) {
+        const char *name = c->name[i] ? c->name[i] : list->name;
+        snprintf(text, sizeof text, c->unit[i] ? "%s (%s)" : "%s", name, c->unit[i] ? c->unit[i] : "");
         if (i > 0)
             luaL_addstring(out, "  ");
-        add_cell(out, text, i + 1 < n || right[i] ? room[i] : 0, right[i]);
+        add_cell(out, text, i + 1 < c->n || c->right[i] ? room[i] : 0, c->right[i]);
     }
     luaL_addchar(out, '\n');
     size_t rows = 0;
     for (const lw_node *row = list->first; row != NULL; row = row->next) {
+        pad(out, indent);
         if (++rows > ROW_MOST) {
-            pad(out, indent);
             snprintf(text, sizeof text, "... and %zu more rows\n", list->n - ROW_MOST);
             luaL_addstring(out, text);
             break;
         }
-        pad(out, indent);
-        for (size_t i = 0; i < n; i++) {
+        size_t last = c->n; /* no blanks after the last cell that holds something */
+        while (last > 0 && column_text(c, last - 1, row, text, sizeof text)[0] == '\0')
+            last--;
+        for (size_t i = 0; i < last; i++) {
             if (i > 0)
                 luaL_addstring(out, "  ");
-            add_cell(out, cell_text(row, column[i], unit[i], text, sizeof text), i + 1 < n || right[i] ? room[i] : 0,
-                     right[i]);
+            add_cell(out, column_text(c, i, row, text, sizeof text), i + 1 < last || c->right[i] ? room[i] : 0, c->right[i]);
         }
         luaL_addchar(out, '\n');
     }
 }
 
+/* A list of groups as a table of their scalars. */
+static void show_rows(luaL_Buffer *out, const lw_node *list, size_t indent)
+{
+    columns c = {.n = 0};
+    for (const lw_node *cell = list->first->first; cell != NULL && c.n < COLUMN_MOST; cell = cell->next)
+        if (is_scalar(cell)) {
+            c.name[c.n] = cell->name;
+            c.right[c.n] = cell->kind != LW_NODE_TEXT;
+            c.unit[c.n++] = shared_unit(list, cell->name);
+        }
+    show_table(out, list, &c, indent);
+}
+
 static void show(luaL_Buffer *out, const lw_node *node, size_t indent, int depth);
-
-static void show_list(luaL_Buffer *out, const lw_node *list, size_t indent, int depth)
-{
-    if (list->first != NULL && list->first->kind == LW_NODE_GROUP) {
-        show_rows(out, list, indent);
-        return;
-    }
-    for (const lw_node *child = list->first; child != NULL; child = child->next)
-        show(out, child, indent, depth);
-}
-
-/* Parts that only a figure needs aren't shown. */
-static bool is_drawing(const lw_node *node)
-{
-    static const char *const names[] = {"points", "line", "curve", "figure", "figures"};
-    for (size_t i = 0; node->kind == LW_NODE_GROUP && i < sizeof names / sizeof *names; i++)
-        if (strcmp(node->name, names[i]) == 0)
-            return true;
-    return false;
-}
 
 /* Long texts go on below themselves. */
 static void add_wrapped(luaL_Buffer *out, const char *text, size_t column)
@@ -195,6 +197,33 @@ static void add_wrapped(luaL_Buffer *out, const char *text, size_t column)
         text += best + 1;
     }
     luaL_addstring(out, text);
+}
+
+static void show_list(luaL_Buffer *out, const lw_node *list, size_t indent, int depth)
+{
+    if (list->first != NULL && list->first->kind == LW_NODE_GROUP) {
+        show_rows(out, list, indent);
+        return;
+    }
+    for (const lw_node *child = list->first; child != NULL; child = child->next) {
+        if (child->kind == LW_NODE_TEXT) {
+            pad(out, indent);
+            luaL_addstring(out, "- ");
+            add_wrapped(out, child->text, indent + 2);
+            luaL_addchar(out, '\n');
+        } else
+            show(out, child, indent, depth);
+    }
+}
+
+/* Parts that only a figure needs aren't shown. */
+static bool is_drawing(const lw_node *node)
+{
+    static const char *const names[] = {"points", "line", "curve", "plot", "figure", "figures"};
+    for (size_t i = 0; node->kind == LW_NODE_GROUP && i < sizeof names / sizeof *names; i++)
+        if (strcmp(node->name, names[i]) == 0)
+            return true;
+    return false;
 }
 
 static void show_children(luaL_Buffer *out, const lw_node *group, size_t indent, int depth)
@@ -226,10 +255,83 @@ static void show_children(luaL_Buffer *out, const lw_node *group, size_t indent,
     }
 }
 
+/* Which pairs of methods disagree, and why. */
+static void show_disagreement(luaL_Buffer *out, const lw_node *field)
+{
+    char text[600];
+    const lw_node *pairs = lw_node_get(field, "pairs");
+    for (const lw_node *pair = pairs ? pairs->first : NULL; pair != NULL; pair = pair->next) {
+        const lw_node *agree = lw_node_get(pair, "agree");
+        if (agree == NULL || agree->flag)
+            continue;
+        const char *reason = lw_node_text(pair, "reason", "");
+        snprintf(text, sizeof text, "%s: %s and %s differ by %.1f u%s%s", field->name, lw_node_text(pair, "first", "?"),
+                 lw_node_text(pair, "second", "?"), fabs(lw_node_number(pair, "pull", 0)), reason[0] ? ": " : "", reason);
+        luaL_addstring(out, "  - ");
+        add_wrapped(out, text, 4);
+        luaL_addchar(out, '\n');
+    }
+}
+
+/* The results of several methods, short: what each says, where they differ, what to mind. Each method's
+ * own result shows the rest. */
+static void show_methods(luaL_Buffer *out, const lw_node *results, const lw_node *methods)
+{
+    static const char *const shown[] = {"size_volume", "size_area", "strain_rms", "strain_apparent", "not_applied"};
+    columns c = {.n = 1};
+    for (size_t i = 0; i < sizeof shown / sizeof *shown; i++) {
+        bool any = false;
+        for (const lw_node *method = methods->first; method != NULL && !any; method = method->next)
+            any = lw_node_get(method, shown[i]) != NULL;
+        if (!any)
+            continue;
+        c.name[c.n] = shown[i];
+        c.right[c.n] = strcmp(shown[i], "not_applied") != 0;
+        c.unit[c.n++] = shared_unit(methods, shown[i]);
+    }
+    const lw_node *lines = lw_node_get(results, "lines"), *lattice = lw_node_get(results, "lattice"),
+                  *agreement = lw_node_get(results, "agreement"), *notes = lw_node_get(results, "notes");
+    char text[256];
+    if (lines != NULL && lines->first != NULL && lines->first->kind == LW_NODE_GROUP) {
+        show_rows(out, lines, 0);
+        luaL_addchar(out, '\n');
+    }
+    if (methods->first != NULL)
+        show_table(out, methods, &c, 0);
+    if (lattice != NULL) {
+        luaL_addstring(out, "\nlattice");
+        for (const lw_node *cell = lattice->first; cell != NULL; cell = cell->next)
+            if (cell->kind == LW_NODE_QUANTITY && strcmp(cell->name, "wavelength") != 0) {
+                luaL_addstring(out, "  ");
+                luaL_addstring(out, cell->name);
+                luaL_addstring(out, " = ");
+                luaL_addstring(out, lw_quantity_text(cell->quantity, text, sizeof text));
+            }
+        luaL_addstring(out, lw_node_text(lattice, "not_applied", ""));
+        luaL_addchar(out, '\n');
+    }
+    if (agreement != NULL) {
+        const lw_node *agree = lw_node_get(agreement, "agree");
+        luaL_addstring(out, agree == NULL || agree->flag ? "\nthe methods agree\n" : "\nthe methods disagree\n");
+        for (const lw_node *field = agreement->first; field != NULL; field = field->next)
+            if (field->kind == LW_NODE_GROUP)
+                show_disagreement(out, field);
+    }
+    if (notes != NULL && notes->first != NULL) {
+        luaL_addstring(out, "\nmind\n");
+        show_list(out, notes, 2, 1);
+    }
+}
+
 static void show(luaL_Buffer *out, const lw_node *node, size_t indent, int depth)
 {
     if (depth > DEPTH_MOST)
         return;
+    const lw_node *methods = depth == 0 && node->kind == LW_NODE_GROUP ? lw_node_get(node, "methods") : NULL;
+    if (methods != NULL && methods->kind == LW_NODE_GROUP) {
+        show_methods(out, node, methods);
+        return;
+    }
     if (node->kind == LW_NODE_GROUP)
         show_children(out, node, indent, depth);
     else if (node->kind == LW_NODE_LIST)

@@ -41,7 +41,7 @@ describe("the interpreter", function()
   end)
 
   it("names file and line of an error, and the lines that led there", function()
-    local code, out, err = helper.recipe(folder, "local function f()\n  error 'wrong'\nend\nprint 'before'\nf()\n")
+    local code, out, err, _ = helper.recipe(folder, "local function f()\n  error 'wrong'\nend\nprint 'before'\nf()\n")
     assert.are.same({ 1, "before\n" }, { code, out })
     assert.matches("^recipe.lua:2: wrong\n  called from recipe.lua:5 in the main chunk\n$", err)
     code, _, err = helper.recipe(folder, "print(\n")
@@ -81,7 +81,8 @@ describe("the interpreter", function()
       "while true do pcall(function() while true do end end) end",
       "local function f() while true do end end while true do pcall(coroutine.wrap(f)) end",
       "local function again() return xpcall(again, again) end while true do again() end",
-      "local t = setmetatable({}, { __close = function() while true do end end }) local x <close> = t while true do end",
+      "local t = setmetatable({}, { __close = function() while true do end end })"
+        .. " local x <close> = t while true do end",
     } do
       local code, _, err = helper.recipe(folder, text, {}, { signal_after = 0.4 })
       assert.are.equal(130, code, text)

@@ -47,8 +47,9 @@ describe("the prompt", function()
         printf '\004'
         sleep 0.2
       ]])
-      local command = ("cd %s && : >screen && sh typing %s | HOME=%s TERM=dumb timeout -k 5 20 script -qefc %s screen >script.out 2>&1")
-        :format(folder, helper.quote(awaited), folder, helper.quote(helper.quote(helper.engine)))
+      local command = ("cd %s && : >screen && sh typing %s | HOME=%s TERM=dumb timeout -k 5 20 "
+        .. "script -qefc %s screen >script.out 2>&1"):format(folder, helper.quote(awaited), folder,
+          helper.quote(helper.quote(helper.engine)))
       os.execute(command)
       return helper.read(folder .. "/screen")
     end

@@ -41,7 +41,8 @@ describe("a recipe", function()
 
   it("reads values of every kind", function()
     local code, out, err = run([[
-      print(job.scan, job.n, table.concat(job.words, "+"), job.flag, job.shape, job.other, job.out, #job.scans, job.scans[2])
+      print(job.scan, job.n, table.concat(job.words, "+"), job.flag, job.shape, job.other, job.out,
+        #job.scans, job.scans[2])
     ]], "scan=a.xy", "n=4.5nm", "words=a, b,c", "flag=yes", "shape=flat", "out=o/", "scans=*.xy")
     assert.are.same({ 0, "" }, { code, err })
     assert.are.equal("a.xy\t4.5\ta+b+c\ttrue\tflat\tfalse\to\t2\tb.xy\n", out)
@@ -92,7 +93,8 @@ describe("a recipe", function()
       ["path = { kind = 'file' }"] = "'path' is a method of the job",
       ["{ kind = 'file' }"] = "an input has no name",
     } do
-      local code, _, err = helper.recipe(folder, "require 'linewright'.recipe { title = 't', inputs = { " .. text .. " } }")
+      local code, _, err = helper.recipe(folder,
+        "require 'linewright'.recipe { title = 't', inputs = { " .. text .. " } }")
       assert.are.equal(1, code)
       assert.is_truthy(err:find(message, 1, true), err)
     end

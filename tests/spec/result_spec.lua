@@ -9,7 +9,8 @@ describe("a result", function()
     good = true,
     curve = lw.vector { 1, 2, 3 },
     inner = { deep = { x = 1.5 } },
-    rows = { { hkl = "111", width = lw.quantity { 0.1, 0.01, "deg" } }, { hkl = "200", width = lw.quantity { 0.12, 0.02, "deg" } } },
+    rows = { { hkl = "111", width = lw.quantity { 0.1, 0.01, "deg" } },
+      { hkl = "200", width = lw.quantity { 0.12, 0.02, "deg" } } },
   }
 
   it("gives its fields as what they are", function()

@@ -120,7 +120,8 @@ describe("the sandbox", function()
 
     for _, name in ipairs { "../x", "a/../../x", "/tmp/x", "..", "a/..", ".", "", "a//b", "a/" } do
       it("nothing to '" .. name .. "'", function()
-        local code, _, err = helper.recipe(folder, start .. ("job:write_csv(%q, { { a = 1 } })"):format(name), { "out=o/o" })
+        local code, _, err = helper.recipe(folder,
+          start .. ("job:write_csv(%q, { { a = 1 } })"):format(name), { "out=o/o" })
         assert.are.equal(1, code)
         assert.matches("recipe.lua:3: job:write_csv", err)
         assert.is_false(helper.exists(folder .. "/x"))
@@ -129,9 +130,11 @@ describe("the sandbox", function()
     end
 
     it("nothing through links", function()
-      os.execute(("cd %s && mkdir -p o outside && ln -s ../outside o/link && ln -s ../outside/f.csv o/f.csv"):format(folder))
+      os.execute(("cd %s && mkdir -p o outside && ln -s ../outside o/link && ln -s ../outside/f.csv o/f.csv")
+        :format(folder))
       for _, name in ipairs { "link/x.csv", "f.csv", "link" } do
-        local code, _, err = helper.recipe(folder, start .. ("job:write_csv(%q, { { a = 1 } })"):format(name), { "out=o" })
+        local code, _, err = helper.recipe(folder,
+          start .. ("job:write_csv(%q, { { a = 1 } })"):format(name), { "out=o" })
         assert.are.equal(1, code)
         assert.matches("link", err)
       end

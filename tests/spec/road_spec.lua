@@ -1,0 +1,163 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- The road from a scan to sizes and strains, as a recipe walks it. What the numbers should be is judged
+-- elsewhere; here: that each verb takes what the one before gave, keeps it alive, and says what is wrong.
+local lw = require "linewright"
+local helper = dofile((debug.getinfo(1, "S").source:match "^@(.*/)" or "./") .. "helper.lua")
+
+local function read(name)
+  return lw.read_scan(helper.demo .. "/" .. name .. ".xy", { radiation = "Cu Ka" })
+end
+local function sweep()
+  collectgarbage()
+  collectgarbage()
+end
+
+describe("a scan", function()
+  local scan = read "lab6_before_service"
+
+  it("has its columns, header, hash and radiation", function()
+    assert.are.equal(13001, scan.n)
+    assert.are.equal(13001, #scan.two_theta)
+    assert.are.equal(20, scan.two_theta[1])
+    assert.are.equal("counts", scan.noise)
+    assert.matches("line%-shape standard LaB6", scan.header)
+    assert.are.equal(helper.output_of("sha256sum " .. scan.file):match "^%x+", scan.hash)
+    assert.are.equal(lw.radiation "Cu Ka", scan.radiation)
+    assert.is_nil(scan.sigma)
+  end)
+
+  it("is cropped into a new one", function()
+    local part = scan:crop(30, 40)
+    assert.are.equal(1001, part.n)
+    assert.are.equal(part.two_theta, scan:crop({ 30, 40 }).two_theta)
+    assert.are.equal(13001, scan.n)
+    assert.error_matches(function() scan:crop(200, 210) end, "crop")
+  end)
+
+  it("keeps its columns alive", function()
+    local column = read("lab6_before_service").intensity:slice(1, 100)
+    sweep()
+    assert.are.equal(scan.intensity[1], column[1])
+  end)
+
+  it("may be made from numbers", function()
+    local made = lw.scan { two_theta = scan.two_theta, intensity = scan.intensity, radiation = "Cu Ka" }
+    assert.are.equal(13001, made.n)
+    assert.is_near(scan:at(30.005), made:at(30.005), 1e-9)
+    assert.error_matches(function() lw.scan { two_theta = { 1, 2 }, intensity = { 1 } } end, "columns have 2, 1")
+    assert.error_matches(function() scan:at(10) end, "outside the scan")
+  end)
+
+  it("without a radiation says what to do", function()
+    local bare = lw.scan { two_theta = { 10, 11, 12, 13 }, intensity = { 1, 2, 3, 4 } }
+    assert.error_matches(function() lw.material("nickel"):reflections(bare) end, "read it with { radiation")
+    assert.error_matches(function() lw.fit_lines(bare, lw.material "nickel") end, "read it with { radiation")
+  end)
+end)
+
+describe("the road", function()
+  local lines, calibration, powder, profiles, results
+  setup(function()
+    local scan = read "lab6_after_service"
+    lines = lw.fit_lines(scan, lw.standard("lab6-660c"):reflections(scan), {})
+    calibration = lw.calibrate(lines, "lab6-660c", {})
+    local sample = read "nickel_milled_04h"
+    powder = lw.fit_lines(sample, lw.material "nickel", { instrument = calibration })
+    profiles = lw.deconvolve(powder)
+    results = lw.separate(profiles, { methods = { "scherrer", "williamson_hall" } })
+    sweep()
+  end)
+
+  it("gives lines that know their scan", function()
+    assert.are.equal(24, #lines)
+    assert.are.equal("100", lines[1].hkl)
+    assert.is_true(lines[1].fwhm.u > 0)
+    assert.is_nil(lines[25])
+    assert.matches("lab6_after_service", lines.scan.file)
+    assert.is_nil(lines.instrument)
+    assert.are.equal("LaB6", lines.material.formula)
+    assert.are.equal(lines.scan.n, #lines.fitted)
+    assert.is_true(lines.fit.goodness_of_fit > 0)
+    assert.are.equal("100", lines:table().lines[1].hkl)
+    assert.matches("hkl +two_theta %(deg%)", tostring(lines))
+    local n = 0
+    for _, line in ipairs(lines) do
+      n = n + 1
+      assert.is_string(line.hkl)
+    end
+    assert.are.equal(24, n)
+  end)
+
+  it("gives a calibration that is saved and loaded", function()
+    local folder = helper.folder()
+    calibration:save(folder .. "/c.json")
+    assert.are.equal(helper.output_of("sha256sum " .. folder .. "/c.json"):match "^%x+", calibration.hash)
+    local again = lw.load_calibration(folder .. "/c.json")
+    assert.are.equal(calibration.hash, again.hash)
+    assert.are.equal(calibration.radiation, again.radiation)
+    local at, at_again = calibration:profile_at(60), again:profile_at(60)
+    assert.are.equal(at.fwhm.value, at_again.fwhm.value)
+    assert.is_near(at.fwhm.u, at_again.fwhm.u, 1e-12)
+    assert.error_matches(function() again:profile_at(5) end, "outside")
+    helper.write(folder .. "/bad.json", "{\"schema\": 1}")
+    assert.error_matches(function() lw.load_calibration(folder .. "/bad.json") end, "bad.json")
+    helper.remove(folder)
+  end)
+
+  it("gives a sample's lines that know their instrument", function()
+    assert.are.equal(calibration, powder.instrument)
+    assert.are.equal("linewright.calibration", getmetatable(powder.instrument))
+    assert.is_near(4, #powder, 6)
+    assert.error_matches(function() lw.deconvolve(lines) end, "fitted without an instrument")
+  end)
+
+  it("gives profiles with coefficients", function()
+    assert.is_true(#profiles > 3)
+    local c = profiles:coefficients(1)
+    assert.are.equal(#c.length_nm, #c.cosine)
+    if #c.cosine > 0 then
+      assert.is_near(1, c.cosine[1], 1e-6)
+    end
+    assert.error_matches(function() profiles:coefficients(99) end, "there are profiles 1 to")
+    assert.are.equal(powder, profiles.fitted_lines)
+  end)
+
+  it("gives results by method, alone or side by side", function()
+    assert.are.same({ "scherrer", "williamson_hall" }, results.methods:names())
+    local alone = lw.williamson_hall(profiles)
+    assert.are.equal(results.methods.williamson_hall.size_volume, alone.size_volume)
+    assert.are.equal("nm", alone.size_volume.unit)
+    local meaning = alone:describe "size_volume"
+    assert.matches("%S", meaning)
+    assert.matches("the methods", tostring(results))
+    assert.error_matches(function() lw.separate(profiles, { methods = { "scherer" } }) end, "did you mean 'scherrer'")
+    assert.error_matches(function() lw.scherrer(profiles, { shpae = "cube" }) end, "did you mean 'shape'")
+    assert.error_matches(function() lw.scherrer(lines) end, "wants a profiles, not lines")
+  end)
+
+  it("draws each of its objects", function()
+    for _, figure in ipairs { lines:figure(), calibration:figure(), profiles:figure(), results:figure "williamson_hall",
+      lines.scan:figure() } do
+      assert.matches("^figure ", tostring(figure))
+      assert.matches("%S", figure.title)
+    end
+  end)
+
+  it("keeps all it needs when only the end is held", function()
+    local function walk()
+      local sample = read "nickel_milled_04h"
+      return lw.deconvolve(lw.fit_lines(sample, lw.material "nickel", { instrument = calibration }))
+    end
+    local held = walk()
+    sweep()
+    assert.are.equal(tostring(results.methods.scherrer.size_volume), tostring(lw.scherrer(held).size_volume))
+    assert.matches("nickel_milled_04h", held.fitted_lines.scan.file)
+  end)
+
+  it("is the same on every rung and every run, but for stated rounding", function()
+    local again = lw.fit_lines(read "lab6_after_service", lw.standard "lab6-660c", {})
+    for i = 1, #lines do
+      assert.are.equal(lines[i].fwhm.value, again[i].fwhm.value)
+    end
+  end)
+end)
