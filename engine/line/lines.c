@@ -295,25 +295,16 @@ static void voigt_widths(lw_fit_state *fit, lw_line *line, size_t k)
         base.value[LW_AXIAL_1] = lines->smooth.value[LW_AXIAL_1];
         base.value[LW_AXIAL_2] = lines->smooth.value[LW_AXIAL_2];
     }
-    lw_width_figure whole, up, down, alone;
+    lw_width_figure whole, alone;
     lw_width_function exact = base;
     memset(exact.covariance, 0, sizeof exact.covariance);
     lw_width_figure_at(&exact, nominal, own_variance, own_lorentz, &whole);
-    double total = own_variance + lw_width_gauss_variance(base.value, nominal, NULL);
-    double step[2] = {1e-4 * (total + whole.fwhm_deg * whole.fwhm_deg), 1e-4 * whole.fwhm_deg};
-    double d_fwhm[2], d_breadth[2], d_phi[2], phi = whole.fwhm_deg / whole.breadth_deg;
-    for (int i = 0; i < 2; i++) {
-        lw_width_figure_at(&exact, nominal, own_variance + (i == 0) * step[0], own_lorentz + (i == 1) * step[1], &up);
-        lw_width_figure_at(&exact, nominal, own_variance + 2 * (i == 0) * step[0], own_lorentz + 2 * (i == 1) * step[1],
-                           &down);
-        /* one-sided, second order: a width of zero can't be lowered */
-        d_fwhm[i] = (4 * up.fwhm_deg - 3 * whole.fwhm_deg - down.fwhm_deg) / (2 * step[i]);
-        d_breadth[i] = (4 * up.breadth_deg - 3 * whole.breadth_deg - down.breadth_deg) / (2 * step[i]);
-        d_phi[i] = d_fwhm[i] / whole.breadth_deg - phi / whole.breadth_deg * d_breadth[i];
-    }
+    double d_phi[2], phi = whole.fwhm_deg / whole.breadth_deg;
+    for (int i = 0; i < 2; i++)
+        d_phi[i] = (whole.d_fwhm[i] - phi * whole.d_breadth[i]) / whole.breadth_deg;
     double gauss = sqrt(own_variance), slope_gauss[2] = {gauss > 0 ? 0.5 / gauss : 0, 0}, slope_lorentz[2] = {0, 1};
     double u[5];
-    const double *slopes[5] = {d_fwhm, d_breadth, d_phi, slope_gauss, slope_lorentz};
+    const double *slopes[5] = {whole.d_fwhm, whole.d_breadth, d_phi, slope_gauss, slope_lorentz};
     for (int i = 0; i < 5; i++)
         u[i] = local && !fit->hold_local[k] ? u_of_widths(lines, line, slopes[i], i < 3)
                                             : u_of_smooth(lines, nominal, slopes[i]);

@@ -5,7 +5,7 @@
 
 #include "base/options.h"
 #include "base/tree.h"
-#include "line/width.h"
+#include "line/width_figure.h"
 #include "physics/crystal.h"
 #include "scan/scan.h"
 

@@ -126,15 +126,51 @@ static void axial_fill(lw_axial_kind kind, const double parameter[2], double two
         }
 }
 
-size_t lw_axial_nodes(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg,
-                      lw_voigt_node *node)
+/* Derivatives of the copies to one axial parameter, at the same number of copies. */
+static void axial_slopes(lw_axial_kind kind, const double parameter[2], double two_theta_deg, lw_axial_count count,
+                         int which, lw_voigt_node *node)
 {
-    lw_axial_count count = lw_axial_copies(kind, parameter, two_theta_deg, width_deg);
+    size_t n = count.part[0] * count.part[1];
+    if (kind == LW_AXIAL_SOLLER) {
+        /* the offsets of a tail go with the square of its parameter, the weights stay */
+        double tangent = tan(two_theta_deg * degree / 2), scale = which == 0 ? -1 / (tangent * degree) : tangent / degree;
+        double offset[LW_AXIAL_NODES_MOST], weight[LW_AXIAL_NODES_MOST];
+        fill_tail(parameter[which], 2 * scale / parameter[which], count.part[which], offset, weight);
+        for (size_t i = 0; i < n; i++)
+            node[i].d_offset[which] = offset[which == 0 ? i / count.part[1] : i % count.part[1]];
+        return;
+    }
+    lw_voigt_node up[LW_AXIAL_NODES_MOST], down[LW_AXIAL_NODES_MOST];
+    double step = 1e-4 * (parameter[0] + parameter[1]), moved[LW_VOIGT_SHAPES] = {parameter[0], parameter[1]};
+    moved[which] = parameter[which] + step;
+    axial_fill(kind, moved, two_theta_deg, count, up);
+    moved[which] = parameter[which] - step;
+    axial_fill(kind, moved, two_theta_deg, count, down);
+    for (size_t i = 0; i < n; i++) {
+        node[i].d_offset[which] = (up[i].offset - down[i].offset) / (2 * step);
+        node[i].d_weight[which] = (up[i].weight - down[i].weight) / (2 * step);
+    }
+}
+
+size_t lw_axial_nodes_at(lw_axial_kind kind, const double parameter[2], double two_theta_deg, lw_axial_count count,
+                         const bool slopes[LW_VOIGT_SHAPES], lw_voigt_node *node)
+{
     size_t n = count.part[0] * count.part[1];
     for (size_t i = 0; i < n; i++)
         node[i] = (lw_voigt_node){0};
     axial_fill(kind, parameter, two_theta_deg, count, node);
+    for (int k = 0; k < LW_VOIGT_SHAPES && kind != LW_AXIAL_NONE; k++)
+        if (slopes[k])
+            axial_slopes(kind, parameter, two_theta_deg, count, k, node);
     return n;
+}
+
+size_t lw_axial_nodes(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg,
+                      lw_voigt_node *node)
+{
+    const bool none[LW_VOIGT_SHAPES] = {false};
+    return lw_axial_nodes_at(kind, parameter, two_theta_deg,
+                             lw_axial_copies(kind, parameter, two_theta_deg, width_deg), none, node);
 }
 
 /* Emission components alone: offset, width and their slopes with the line's position. */
@@ -172,25 +208,10 @@ static size_t emission_nodes(const lw_node_recipe *recipe, double two_theta_deg,
 
 size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node)
 {
-    lw_voigt_node emission[LW_EMISSION_MOST], axial[LW_AXIAL_NODES_MOST] = {{0}};
+    lw_voigt_node emission[LW_EMISSION_MOST], axial[LW_AXIAL_NODES_MOST];
     size_t n_emission = emission_nodes(recipe, two_theta_deg, emission);
-    size_t n_axial = recipe->copies.part[0] * recipe->copies.part[1];
-    const double *now = recipe->parameter;
-    axial_fill(recipe->axial, now, two_theta_deg, recipe->copies, axial);
-    for (int k = 0; k < LW_VOIGT_SHAPES && recipe->axial != LW_AXIAL_NONE; k++) {
-        if (!recipe->slopes[k])
-            continue;
-        lw_voigt_node up[LW_AXIAL_NODES_MOST], down[LW_AXIAL_NODES_MOST];
-        double step = 1e-4 * (now[0] + now[1]), moved[LW_VOIGT_SHAPES] = {now[0], now[1]};
-        moved[k] = now[k] + step;
-        axial_fill(recipe->axial, moved, two_theta_deg, recipe->copies, up);
-        moved[k] = now[k] - step;
-        axial_fill(recipe->axial, moved, two_theta_deg, recipe->copies, down);
-        for (size_t i = 0; i < n_axial; i++) {
-            axial[i].d_offset[k] = (up[i].offset - down[i].offset) / (2 * step);
-            axial[i].d_weight[k] = (up[i].weight - down[i].weight) / (2 * step);
-        }
-    }
+    size_t n_axial = lw_axial_nodes_at(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, recipe->slopes,
+                                       axial);
     size_t n = 0;
     for (size_t c = 0; c < n_emission; c++)
         for (size_t i = 0; i < n_axial; i++) {
@@ -209,9 +230,10 @@ size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voig
 size_t lw_line_nodes_merged(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node,
                             double *extra_variance)
 {
-    lw_voigt_node axial[LW_AXIAL_NODES_MOST] = {{0}};
-    size_t n_axial = recipe->copies.part[0] * recipe->copies.part[1], n = emission_nodes(recipe, two_theta_deg, node);
-    axial_fill(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, axial);
+    lw_voigt_node axial[LW_AXIAL_NODES_MOST];
+    const bool none[LW_VOIGT_SHAPES] = {false};
+    size_t n = emission_nodes(recipe, two_theta_deg, node);
+    size_t n_axial = lw_axial_nodes_at(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, none, axial);
     double mean = 0, square = 0;
     for (size_t i = 0; i < n_axial; i++) {
         mean += axial[i].weight * axial[i].offset;

@@ -30,6 +30,11 @@ lw_axial_count lw_axial_copies(lw_axial_kind kind, const double parameter[2], do
 size_t lw_axial_nodes(lw_axial_kind kind, const double parameter[2], double two_theta_deg, double width_deg,
                       lw_voigt_node *node);
 
+/* The same in a given number of copies, so that values and slopes stay smooth while parameters move.
+ * slopes[k]: also d_offset[k] and d_weight[k], the derivatives to the axial parameter k (parameter > 0). */
+size_t lw_axial_nodes_at(lw_axial_kind kind, const double parameter[2], double two_theta_deg, lw_axial_count count,
+                         const bool slopes[LW_VOIGT_SHAPES], lw_voigt_node *node);
+
 typedef struct lw_node_recipe {
     const lw_radiation *radiation;
     bool on_s_axis;          /* x is 2 tan(theta0) (sin(theta)/sin(theta0) - 1), degrees; else 2theta - 2theta0 */

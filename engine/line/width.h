@@ -51,13 +51,4 @@ double lw_width_gauss_variance(const double *value, double two_theta_deg, double
 /* Lorentzian FWHM, deg, likewise, never negative. */
 double lw_width_lorentz(const double *value, double two_theta_deg, double *slopes);
 
-/* Profile at one wavelength with the function's widths plus own parts: value of FWHM, integral breadth
- * (area over height) and shift of the centroid and of the top from the unaberrated position, degrees, with
- * standard uncertainties from the covariance (u of the own parts not included). */
-typedef struct lw_width_figure {
-    double fwhm_deg, u_fwhm, breadth_deg, u_breadth, centroid_deg, top_deg;
-} lw_width_figure;
-void lw_width_figure_at(const lw_width_function *function, double two_theta_deg, double own_gauss_variance,
-                        double own_lorentz_deg, lw_width_figure *figure);
-
 #endif
