@@ -186,7 +186,8 @@ static lw_status iterate(lw_fit_state *fit, int rounds, bool final, lw_error *er
                               .evaluate = lw_model_evaluate, .user = &fit->model};
         lw_fit_control control = lw_fit_control_defaults();
         control.iterations_most = final ? 200 : 60;
-        control.chi2_tolerance = final ? 1e-9 : 1e-6;
+        control.chi2_tolerance = final ? 1e-9 : 1e-4;
+        control.step_tolerance = final ? 1e-3 : 0.1; /* a stage on the way need not end sharper than it is used */
         lw_fit_outcome outcome;
         status = lw_least_squares(fit->engine, &problem, &control, fit->p, fit->at_bound, &outcome, err);
         if (status != LW_OK)
