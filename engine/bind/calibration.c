@@ -6,6 +6,7 @@
 #include "bind/figures.h"
 #include "bind/outputs.h"
 #include "bind/roads.h"
+#include "line/width_figure.h"
 #include "record/file.h"
 #include "record/json.h"
 
@@ -52,6 +53,7 @@ static int calibrate(lua_State *L)
     lua_setiuservalue(L, -2, LWB_CALIBRATION_LINES);
     lua_pushvalue(L, 2);
     lua_setiuservalue(L, -2, LWB_CALIBRATION_STANDARD);
+    lwb_keep_options(L, -1, LWB_CALIBRATION_OPTIONS, "calibrate", lw_calibrate_option_table, &options);
     lw_calibration *calibration = NULL;
     lw_status status = lw_calibrate(lwb_engine(L), lines, standard, &options, &calibration, &err);
     box->object = calibration;
@@ -97,9 +99,7 @@ lwb_tree *lwb_calibration_record(lua_State *L, int index)
     if (made != NULL) /* a record that was loaded keeps where it came from */
         lw_add_copy(tree->root, "provenance", made, &err);
     else {
-        lua_getiuservalue(L, index, LWB_CALIBRATION_LINES);
-        lwb_add_provenance(L, tree->root, -1);
-        lua_pop(L, 1);
+        lwb_add_provenance(L, tree->root, index);
     }
     lwb_check(L, LW_OK, &err);
     return tree;

@@ -85,6 +85,7 @@ static int fit_lines(lua_State *L)
         lua_pushvalue(L, background);
         lua_setiuservalue(L, self, LWB_LINES_BACKGROUND);
     }
+    lwb_keep_options(L, self, LWB_LINES_OPTIONS, "fit_lines", lw_fit_option_table, &options);
     lw_lines *lines = NULL;
     lw_status status = lw_fit_lines(lwb_engine(L), scan, reflections->reflection, reflections->n,
                                     reflections->has_material ? &reflections->material : NULL, &options, &lines, &err);

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "bind/methods.h"
 
+#include "bind/roads.h"
 #include "sample/method.h"
 
 #include <stddef.h>
@@ -24,6 +25,9 @@ static int run_method(lua_State *L)
     lua_pushvalue(L, 1);
     lua_setiuservalue(L, -2, 1);
     lwb_check(L, lw_method_run(lwb_engine(L), method, profiles, options, tree->root, &err), &err);
+    if (method->options != NULL && method->options->key != NULL)
+        lwb_add_options(tree->root, "options", method->options, options, &err);
+    lwb_check(L, LW_OK, &err);
     return 1;
 }
 

@@ -104,7 +104,11 @@ void lwb_add_provenance(lua_State *L, lw_node *record, int object)
     lwb_check(L, LW_OK, &err);
     int job = lua_getfield(L, LUA_REGISTRYINDEX, LWB_JOB_KEY) == LUA_TUSERDATA ? lua_gettop(L) : 0;
     add_recipe(L, group, job);
-    const lw_calibration *calibration = find_calibration(L, object);
+    lw_node *options = lw_add_group(group, "options", &err);
+    lwb_check(L, LW_OK, &err);
+    lwb_add_road_options(L, options, object);
+    bool itself = lwb_test(L, object, &lwb_calibration_noun) != NULL; /* its own hash isn't known before it is written */
+    const lw_calibration *calibration = itself ? NULL : find_calibration(L, object);
     if (calibration != NULL && calibration->hash[0] != '\0')
         lw_add_text(group, "calibration_sha256", calibration->hash, &err);
     if (job != 0) {

@@ -40,6 +40,7 @@ static int deconvolve(lua_State *L)
     lua_setiuservalue(L, self, LWB_PROFILES_LINES);
     lua_pushvalue(L, instrument);
     lua_setiuservalue(L, self, LWB_PROFILES_CALIBRATION);
+    lwb_keep_options(L, self, LWB_PROFILES_OPTIONS, "deconvolve", lw_deconvolve_option_table, &options);
     lw_profiles *profiles = NULL;
     lw_status status = lw_deconvolve(lwb_engine(L), lines, calibration, &options, &profiles, &err);
     box->object = profiles;

@@ -10,7 +10,8 @@ local function noun_names()
   local names = {}
   for key in pairs(registry) do
     local name = type(key) == "string" and key:match "^linewright%.([a-z_]+)$"
-    if name and type(registry[key]) == "table" and name ~= "error" and name ~= "help" and name ~= "api" and name ~= "job" then
+    local inner = { error = true, help = true, api = true, job = true }
+    if name and type(registry[key]) == "table" and not inner[name] then
       names[#names + 1] = name
     end
   end

@@ -31,7 +31,7 @@ describe("a scan", function()
     assert.are.equal(1001, part.n)
     assert.are.equal(part.two_theta, scan:crop({ 30, 40 }).two_theta)
     assert.are.equal(13001, scan.n)
-    assert.error_matches(function() scan:crop(200, 210) end, "crop")
+    assert.error_matches(function() scan:crop(200, 210) end, "choose a wider range")
   end)
 
   it("keeps its columns alive", function()
