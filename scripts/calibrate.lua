@@ -31,6 +31,12 @@ local fitted = lw.fit_lines(scan, lines, {
   axial     = capillary and "finger_cox_jephcoat" or "soller",
   polarised = capillary and 0.05 or 0.5,
 })
+-- Each line by itself as well: these widths show whether the smooth functions do the instrument justice.
+local single = lw.fit_lines(scan, lines, {
+  widths    = "free",
+  axial     = capillary and "finger_cox_jephcoat" or "soller",
+  polarised = capillary and 0.05 or 0.5,
+})
 local instrument = lw.calibrate(fitted, standard, {
   geometry          = capillary and "capillary" or "reflection",
   goniometer_radius = job.radius or nil,
@@ -65,6 +71,44 @@ if job.previous then
   print(lw.result { changes_since_the_time_before = changes })
 end
 
+-- Width against angle with its band, and where the lines stand against the certificate.
+local curve = { x = {}, fwhm = {}, low = {}, high = {} }
+for angle = instrument.valid_two_theta[1], instrument.valid_two_theta[2], 1.5 do
+  local fwhm = instrument:profile_at(angle).fwhm
+  local n = #curve.x + 1
+  curve.x[n], curve.fwhm[n] = angle, fwhm.value
+  curve.low[n], curve.high[n] = fwhm.value - 2 * fwhm.u, fwhm.value + 2 * fwhm.u
+end
+local points = { x = {}, fwhm = {} }
+for _, line in ipairs(single) do
+  if line.supported and line.fwhm.u < 0.5 * line.fwhm.value then
+    points.x[#points.x + 1], points.fwhm[#points.fwhm + 1] = line.two_theta.value, line.fwhm
+  end
+end
+local residuals = { x = {}, before = {}, after = {} }
+for i, line in ipairs(instrument.record.lines) do
+  residuals.x[i], residuals.before[i], residuals.after[i] = line.two_theta.value, line.difference, line.residual
+end
+local widths_figure = lw.figure {
+  name = "width", title = "Width of the instrument at one wavelength",
+  caption = "FWHM without the spectrum's share: smooth function with its band (2 u), and every line fitted by itself.",
+  x = { label = "2theta", unit = "deg" }, y = { label = "FWHM", unit = "deg" },
+  series = {
+    { kind = "band", label = "2 u", x = curve.x, y = curve.low, high = curve.high },
+    { kind = "line", label = "smooth function", x = curve.x, y = curve.fwhm },
+    { kind = "points", label = "single lines", x = points.x, y = points.fwhm },
+  },
+}
+local positions_figure = lw.figure {
+  name = "positions", title = "Observed minus certified position",
+  caption = "As observed, and after the fitted aberrations; error bars contain the certificate's uncertainty.",
+  x = { label = "2theta", unit = "deg" }, y = { label = "observed - certified", unit = "deg" },
+  series = {
+    { kind = "points", label = "as observed", x = residuals.x, y = residuals.before },
+    { kind = "points", label = "after the aberrations", x = residuals.x, y = residuals.after },
+  },
+}
+
 job:check(instrument.verdict ~= "fail", "calibration: " .. instrument.verdict)
 
 -- The report opens with what protects people.
@@ -74,6 +118,7 @@ local items = {
   { caution = "After work on a tube, shutter or housing the interlocks, warning lights and leakage are checked and "
       .. "released by the licensed radiation-safety officer before the shutter is opened. Local rules come first; a "
       .. "good calibration says nothing about the safety of the beam.", title = "X-rays after maintenance" },
+  widths_figure, positions_figure,
   instrument,
   fitted,
 }
