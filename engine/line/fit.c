@@ -105,6 +105,7 @@ void lw_fit_weigh(lw_fit_state *fit, bool from_model)
             variance[i] += scale * scale * fit->extra_variance[i];
         fit->model.weight[i] = 1 / variance[i];
     }
+    fit->model.weighed = false;
 }
 
 /* Takes arrays for the layout that the model now has, and fills them from the state. */

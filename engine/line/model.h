@@ -1,9 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The model of a whole scan: background + lines, and its normal equations.
- * A scan is cut into blocks of 64 points. In the blocks near a line the line is evaluated point by point; in the
- * others its tail is evaluated at a few nodes a block and interpolated (all tails of a block together, once).
- * Model and gradient keep every tail; of the normal matrix only the blocks of one far line with another are
- * left out while iterating. No Jacobian is ever stored beyond one block.
+ * A scan is cut into blocks of 64 points, and these are bundled by eight. In the blocks near a line the line is
+ * evaluated point by point; further out its tail is evaluated at a few nodes a block and interpolated (all tails of
+ * a block together, once), and in bundles far away at a few nodes a bundle. Model and gradient keep every tail; of
+ * the normal matrix only the blocks of one far line with another are left out while iterating. No Jacobian is ever
+ * stored beyond one bundle.
  *
  * Parameters, in this order: for each line position (deg), area (intensity x deg), then n_local shape
  * parameters; then the border: background terms, then globals (width-function parameters). */
@@ -18,6 +19,9 @@
 
 #define LW_BLOCK 64
 #define LW_FAR_NODES 6
+#define LW_BUNDLE 8
+#define LW_BUNDLE_NODES 8
+#define LW_COLUMNS (2 + LW_LOCAL_MOST + LW_VOIGT_SHAPES) /* of a line, from one evaluation of it */
 #define LW_GLOBALS_MOST (2 * LW_WIDTH_PARAMETERS)
 
 typedef struct lw_global {
@@ -26,9 +30,15 @@ typedef struct lw_global {
     bool tied;          /* LW_AXIAL_1 only: moves the second axial parameter with it */
 } lw_global;
 
+/* Where lines are evaluated: angle, and what depends on it alone. */
+typedef struct lw_model_places {
+    double *two_theta, *sine, *factor; /* deg; sin(theta); intensity factor */
+} lw_model_places;
+
 typedef struct lw_model_line {
     double nominal_deg;          /* where widths and axial divergence are evaluated: the expected 2theta */
     size_t near_first, near_end; /* blocks evaluated point by point */
+    size_t close_first, close_end; /* bundles evaluated at the nodes of blocks, or nearer */
     lw_axial_count copies;       /* of the axial divergence */
 } lw_model_line;
 
@@ -41,14 +51,19 @@ typedef struct lw_model {
     double cos2_monochromator; /* weight of cos^2(2theta) in the polarisation, and its constant part */
     double constant_polarisation;
     /* points, padded to whole blocks; padding has weight 0 */
-    size_t n, n_blocks;
-    const double *two_theta, *sine, *factor, *y;
-    double *weight;            /* 1/variance, set between iterations */
-    const double *to_nodes;    /* [n_blocks][LW_FAR_NODES][LW_BLOCK]: interpolation from a block's nodes */
-    const double *node_angle;  /* [n_blocks][LW_FAR_NODES] */
+    size_t n, n_blocks, n_bundles;
+    lw_model_places points, nodes, bundle_nodes; /* scan points; nodes of all blocks; nodes of all bundles */
+    const double *y;
+    double *weight;            /* 1/variance, set between iterations: then `weighed` is to be made false */
+    bool weighed;              /* the products below belong to `weight` */
+    const double *from_nodes;  /* [n_blocks][LW_FAR_NODES][LW_BLOCK]: interpolation from a block's nodes */
+    const double *from_bundle; /* [n_blocks][LW_BUNDLE_NODES][LW_FAR_NODES]: from its bundle's nodes to a block's */
     /* background */
     size_t n_background;
     const double *basis;       /* [n_background][padded n] */
+    double *basis_square;      /* [n_background][n_background]: basis' W basis, lower triangle */
+    double *basis_moment;      /* [n_blocks][n_background][LW_FAR_NODES]: basis' W from_nodes */
+    double *bundle_moment;     /* [n_bundles][n_background][LW_BUNDLE_NODES]: the same, handed on to the bundles */
     /* lines */
     size_t n_lines, n_local;
     lw_model_line *line;
@@ -59,9 +74,11 @@ typedef struct lw_model {
     lw_global global[LW_GLOBALS_MOST];
     bool whole_normal; /* also the far line's own block, for the final covariance */
     /* scratch, sized by lw_model_prepare */
-    double *near_columns, *far_columns;
-    lw_voigt_node *nodes, *merged;
-    size_t *n_nodes, *n_merged, *near, *far;
+    double *near_columns;   /* [n_lines][LW_COLUMNS][LW_BLOCK] */
+    double *close_columns;  /* [n_lines][LW_COLUMNS][LW_BUNDLE x LW_FAR_NODES] */
+    double *bundle_columns; /* [n_lines][LW_COLUMNS][LW_BUNDLE_NODES] */
+    lw_voigt_node *line_nodes, *merged;
+    size_t *n_line_nodes, *n_merged, *near, *far, *close;
     struct lw_line_state *state;
     double *curve; /* [padded n] model at the last evaluation */
 } lw_model;

@@ -236,7 +236,7 @@ const char *const lw_line_shape_names[] = {"voigt",    "gaussian",           "lo
                                       "pearson7", "split_pseudo_voigt", "split_pearson7", NULL};
 
 void lw_line_shape_sum(const lw_line_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
-                  const double *local, double *value, double *d_position, double *const *d_local)
+                       const double *local, bool slopes, double *value, double *d_position, double *const *d_local)
 {
     for (size_t i = 0; i < n; i++) {
         double sum = 0, sum_position = 0, sum_local[LW_LOCAL_MOST] = {0};
@@ -248,6 +248,8 @@ void lw_line_shape_sum(const lw_line_shape *shape, size_t n, const double *x, co
                 sum_local[j] += node[k].weight * d[j];
         }
         value[i] = sum;
+        if (!slopes)
+            continue;
         d_position[i] = sum_position;
         for (int j = 0; j < shape->n_local; j++)
             d_local[j][i] = sum_local[j];

@@ -30,8 +30,9 @@ typedef struct lw_line_shape {
 extern const lw_line_shape *const lw_line_shape_list[]; /* NULL-terminated, in the order of lw_line_shape_names */
 extern const char *const lw_line_shape_names[];    /* for the option table */
 
-/* Sums the copies of an empirical shape at n points; d_local[i][n]. */
+/* Sums the copies of an empirical shape at n points; without slopes only value[n] is written, with them also
+ * d_position[n] and d_local[i][n]. */
 void lw_line_shape_sum(const lw_line_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
-                  const double *local, double *value, double *d_position, double *const *d_local);
+                       const double *local, bool slopes, double *value, double *d_position, double *const *d_local);
 
 #endif
