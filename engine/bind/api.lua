@@ -140,8 +140,32 @@
 ---@field path fun(self: recipe, name: string): string
 ---@field write fun(self: recipe, ...: any)
 ---@field write_csv fun(self: recipe, name: string, rows: any): string
+---@field progress fun(self: recipe, what: string, fraction: number)
 ---@field check fun(self: recipe, passed: boolean, text?: string): boolean
 ---@field once fun(self: recipe, key: string, f: fun(): any): result
+---@field run fun(self: recipe, recipe: string, inputs: table)
+
+---@class linewright
+---@field version string
+---@field quantity fun(parts: table): quantity
+---@field vector fun(numbers: table|vector): vector
+---@field result fun(values: table): result
+---@field radiation fun(name: string|number|table): radiation
+---@field material fun(name: string|table): material
+---@field standard fun(name: string|table): standard
+---@field read_scan fun(path: string, options?: table): scan
+---@field scan fun(columns: table): scan
+---@field fit_lines fun(scan: scan, reflections: reflections|material|standard, options?: table): lines
+---@field calibrate fun(lines: lines, standard: standard|string, options?: table): calibration
+---@field load_calibration fun(path: string): calibration
+---@field deconvolve fun(lines: lines, options?: table): profiles
+---@field separate fun(profiles: profiles, options?: table): result
+---@field figure fun(parts: table): figure
+---@field report fun(items: table): report
+---@field recipe fun(declaration: table): recipe
+---@field help fun(name?: any): string
+---@field api fun(): table
+---@field options fun(name: string): table[]
 
 local function entry(call, purpose, parameters, returns, source)
   return { call = call, purpose = purpose, parameters = parameters, returns = returns, source = source }
@@ -276,6 +300,13 @@ local methods = {
     "text"),
   ["recipe:check"] = entry("job:check(passed, text)", "A verdict: exit code 3 under strict=true if it failed.",
     { p("passed", "flag", "whether it holds"), p("text", "text", "what was judged") }, "flag"),
+  ["recipe:progress"] = entry("job:progress(what, fraction)",
+    "How far a long job has come: one bar with the time left on a terminal.",
+    { p("what", "text", "what is done"), p("fraction", "number", "0 to 1, at the end 1") }),
+  ["recipe:run"] = entry("job:run(recipe, inputs)",
+    "Runs another recipe as a step of this one; it writes to a folder below this job's own.",
+    { p("recipe", "text", "its path, from this recipe's folder"),
+      p("inputs", "table", "name = value, and out = \"name\", the folder below out") }),
   ["recipe:once"] = entry("job:once(key, f)",
     "What f() gave when the key was first done: a long job that was stopped goes on where it was.",
     { p("key", "text", "names all that the step depends on besides the recipe, such as hashes"),

@@ -18,6 +18,7 @@ typedef struct lwb_home {
     lua_State *running;      /* the thread of the engine call now under way: an emergency collection runs there */
     size_t engine_bytes;     /* held by the engine */
     size_t collect_at;       /* collect garbage before a call when engine_bytes exceed this */
+    void (*progress)(void *user, const char *what, double fraction); /* the engine's, while a job tells its own */
     bool interpreter;        /* the linewright program runs this state, not a stock Lua */
     bool confined;           /* scripts write only under the recipe's out folder */
     bool verdict_failed;     /* a verdict failed under strict = true: exit code 3 */

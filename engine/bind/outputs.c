@@ -205,6 +205,27 @@ int lwb_job_check(lua_State *L)
     return 1;
 }
 
+/* job:progress(what, fraction): how far a long job has come. Until it is at 1 the engine's own steps are
+ * silent, so that one bar tells of the whole. */
+int lwb_job_progress(lua_State *L)
+{
+    lwb_home *home = lwb_home_of(L);
+    lwb_self(L, 1, &lwb_recipe_noun, "job:progress");
+    const char *what = lwb_text(L, 2, "job:progress", "what is done");
+    double fraction = lwb_number(L, 3, "job:progress", "the fraction");
+    if (home->progress == NULL) {
+        home->progress = home->engine.progress;
+        home->engine.progress = NULL;
+    }
+    if (home->progress != NULL)
+        home->progress(home->engine.user, what, fraction);
+    if (!(fraction < 1)) {
+        home->engine.progress = home->progress;
+        home->progress = NULL;
+    }
+    return 0;
+}
+
 /* job:write(results, report): each thing by its kind: results to results.json, a calibration to
  * calibration.json, a report to report.html with its figures, a figure to figures/. */
 int lwb_job_write(lua_State *L)

@@ -28,7 +28,9 @@ int lwb_job_path(lua_State *L);
 int lwb_job_write(lua_State *L);
 int lwb_job_write_csv(lua_State *L);
 int lwb_job_check(lua_State *L);
+int lwb_job_progress(lua_State *L);
 int lwb_job_once(lua_State *L); /* journal.c */
+int lwb_job_run(lua_State *L);  /* run.c */
 
 /* SHA-256 of a file into hex; raises if it can't be read. */
 void lwb_hash_file(lua_State *L, const char *path, char hex[65]);

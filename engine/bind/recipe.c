@@ -133,7 +133,7 @@ static int end_after_help(lua_State *L)
 static void check_declaration(lua_State *L, int declared)
 {
     static const char *const keys[] = {"kind", "default", "help", "unit", "choices", "least", "most", NULL};
-    static const char *const taken[] = {"path", "write", "write_csv", "check", "once", "title", "inputs", NULL};
+    static const char *const taken[] = {"path", "write", "write_csv", "check", "progress", "once", "title", "inputs", NULL};
     for (lua_pushnil(L); lua_next(L, declared); lua_pop(L, 1)) {
         if (lua_type(L, -2) != LUA_TSTRING)
             lwb_refuse(L, "write name = { kind = ... }", "recipe: an input has no name");
@@ -155,6 +155,10 @@ static int make(lua_State *L)
     lwb_want_table(L, 1, "recipe", "the argument");
     lua_settop(L, 1);
     luaL_checkstack(L, 40, NULL);
+    if (home->progress != NULL) { /* a job before this one ended halfway */
+        home->engine.progress = home->progress;
+        home->progress = NULL;
+    }
     lwb_only_keys(L, 1, "recipe", keys);
     const char *title = lwb_field_text(L, 1, "title", "recipe", "Recipe");
     lua_newtable(L); /* 2: declarations, a copy */
@@ -283,7 +287,9 @@ static const luaL_Reg methods[] = {{"path", lwb_job_path},
                                    {"write", lwb_job_write},
                                    {"write_csv", lwb_job_write_csv},
                                    {"check", lwb_job_check},
+                                   {"progress", lwb_job_progress},
                                    {"once", lwb_job_once},
+                                   {"run", lwb_job_run},
                                    {NULL, NULL}};
 static const luaL_Reg metamethods[] = {{"__index", at}, {"__tostring", show}, {NULL, NULL}};
 

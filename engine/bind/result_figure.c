@@ -51,6 +51,14 @@ static bool push_plot(lua_State *L, const lw_node *group, const lw_node *plot, c
     return true;
 }
 
+/* What an axis is called, for names that are short in records. */
+static const char *axis_name(const char *name)
+{
+    if (strcmp(name, "s") == 0)
+        return "s = 2 sin(theta)/lambda";
+    return strcmp(name, "breadth") == 0 ? "integral breadth in s" : name;
+}
+
 bool lwb_push_result_figure(lua_State *L, const lw_node *group, const char *name)
 {
     lw_error err = LW_ERROR_NONE;
@@ -67,8 +75,8 @@ bool lwb_push_result_figure(lua_State *L, const lw_node *group, const char *name
     if (points == NULL || points->kind != LW_NODE_GROUP || !columns(points, &x, &y, &u))
         return false;
     lw_figure *figure = lwb_new_figure(L, name, lw_node_text(group, "title", name));
-    lw_figure_label(figure, LW_AXIS_X, x->name, x->unit, &err);
-    lw_figure_label(figure, LW_AXIS_Y, y->name, y->unit, &err);
+    lw_figure_label(figure, LW_AXIS_X, axis_name(x->name), x->unit, &err);
+    lw_figure_label(figure, LW_AXIS_Y, axis_name(y->name), y->unit, &err);
     lw_series *series = lw_figure_series(figure, LW_SERIES_POINTS, 0, "lines", x->vector, y->vector, x->n, &err);
     if (series != NULL && u != NULL && u->n == x->n)
         lw_series_errors(figure, series, NULL, u->vector, &err);

@@ -96,6 +96,12 @@ describe("the description of the api", function()
       end
     end
     classes[""] = nil
+    local functions = { version = true }
+    for name in pairs(api.functions) do
+      functions[name] = true
+    end
+    assert.are.same(sorted_keys(functions), sorted_keys(classes.linewright))
+    classes.linewright = nil
     assert.are.same(sorted_keys(api.nouns), sorted_keys(classes))
     for noun, described in pairs(api.nouns) do
       local all = {}
