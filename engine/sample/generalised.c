@@ -9,9 +9,8 @@
 
 #define EIGENVALUE_LEAST 1e-7
 #define ITERATIONS_MOST 100
-#define STEP_ENOUGH                                                                                          \
-    1e-8 /* in u of the parameter; the step is taken all the same, so the answer is better                   \
-          */
+#define STEP_ENOUGH 1e-5 /* in u of the parameter; the step is taken all the same, so the answer is better   \
+                          */
 
 double lw_generalised_p(double chi2, size_t degrees)
 {
@@ -267,6 +266,15 @@ static lw_status iterate(work *w, double *p, lw_generalised_fit *fit, size_t *we
         double largest = 0;
         for (size_t i = 0; i < m; i++)
             largest = fmax(largest, fabs(step[i]) / sqrt(fit->covariance[i][i]));
+        if (largest < STEP_ENOUGH) { /* chi2 is flat to its rounding here: what it says of a step is chance */
+            for (size_t i = 0; i < m; i++)
+                tried[i] = p[i] + step[i];
+            if (evaluate(w, tried))
+                memcpy(p, tried, m * sizeof(double));
+            else if (!evaluate(w, p))
+                return no_start(err);
+            return LW_OK;
+        }
         /* shorten until the model exists and chi2 does not rise by more than rounding */
         double share = 1;
         for (;; share /= 2) {
@@ -282,8 +290,6 @@ static lw_status iterate(work *w, double *p, lw_generalised_fit *fit, size_t *we
                 break;
         }
         memcpy(p, tried, m * sizeof(double));
-        if (share >= 1 && largest < STEP_ENOUGH)
-            return LW_OK;
     }
     return lw_fail(err, LW_NO_CONVERGENCE, NULL, "no convergence after %d iterations", ITERATIONS_MOST);
 }

@@ -13,6 +13,10 @@
 #define RADIAN (3.14159265358979323846 / 180)
 #define SHARED_MOST 0.98 /* multiple correlation above which a displacement can't be told from the cell */
 #define LINES_FOR_DISPLACEMENT 4
+#define FALL_CHANCE                                                                                          \
+    1e-3 /* a fall of chi-square by one parameter rarer than this is evidence of a displacement */
+#define BREADTHS_TO_END                                                                                      \
+    2.0 /* a line nearer to an end of the scan has a tail cut off, which pulls its position */
 
 typedef struct lattice_options {
     int displacement;
@@ -27,8 +31,8 @@ static const lw_option options[] = {{.key = "displacement",
                                      .choices = displacement_choices,
                                      .offset = offsetof(lattice_options, displacement),
                                      .help = "refine how far this specimen's surface lies from the axis; "
-                                             "auto: for flat specimens, where the lines "
-                                             "can tell it from the cell"},
+                                             "auto: for flat specimens, where the lines can tell it from the "
+                                             "cell or do not fit without it"},
                                     LW_OPTIONS_END};
 
 static void defaults(void *target)
@@ -52,6 +56,8 @@ static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
 /* Calculated positions: cell, then what the calibration and the specimen add. */
 typedef struct positions {
     const lw_profiles *profiles;
+    size_t n;
+    const size_t *use; /* [n] which profiles take part */
     lw_cell_free free;
     lw_cell cell;
     double wavelength;
@@ -85,8 +91,8 @@ static void model(void *user, const double *p, double *value, double *slopes, do
     (void)x_slope;
     size_t n_free = m->free.n, columns = n_free + (m->displacement != NULL);
     lw_cell_free_set(&m->free, p, &m->cell);
-    for (size_t i = 0; i < m->profiles->n; i++) {
-        const lw_reflection *r = &m->profiles->profile[i].line->reflection;
+    for (size_t i = 0; i < m->n; i++) {
+        const lw_reflection *r = &m->profiles->profile[m->use[i]].line->reflection;
         double s = lw_cell_s(&m->cell, r->h, r->k, r->l), d[6];
         double sine = 0.5 * m->wavelength * s;
         if (!(sine > 0 && sine < 1)) {
@@ -95,7 +101,8 @@ static void model(void *user, const double *p, double *value, double *slopes, do
         }
         double theta = asin(sine) / RADIAN, two_theta = 2 * theta;
         double d_shift, shift = shift_at(m, p, two_theta, &d_shift);
-        value[i] = two_theta + shift;
+        double u_scattering;
+        value[i] = two_theta + shift + lw_position_scattering(m->profiles, m->use[i], &u_scattering);
         lw_cell_s_slopes(&m->cell, r->h, r->k, r->l, d);
         double per_s = (1 + d_shift) / lw_position_s_slope(s, theta);
         for (size_t j = 0; j < n_free; j++)
@@ -110,24 +117,36 @@ static void model(void *user, const double *p, double *value, double *slopes, do
 typedef struct answer {
     double p[LW_GENERALISED_MOST];
     lw_generalised_fit fit;
+    bool displaced;  /* the displacement was refined */
+    const char *why; /* what was decided about it, for the remarks, or NULL */
 } answer;
+
+static const lw_line *line_at(const positions *m, size_t i)
+{
+    return m->profiles->profile[m->use[i]].line;
+}
 
 /* Fits the cell, with this specimen's displacement (not NULL) or without. */
 static lw_status fit_cell(positions *m, const lw_aberration *displacement, lw_arena *arena, answer *out,
                           lw_error *err)
 {
-    const lw_profiles *profiles = m->profiles;
+    size_t n = m->n;
     m->displacement = displacement;
-    double *y = lw_arena_take(arena, profiles->n, sizeof *y, err);
-    double *covariance = lw_position_covariance(profiles, displacement, arena, err);
-    if (y == NULL || covariance == NULL)
+    double *y = lw_arena_take(arena, n, sizeof *y, err);
+    double *covariance = lw_arena_take(arena, n * n, sizeof *covariance, err);
+    const double *all = lw_position_covariance(m->profiles, displacement, arena, err);
+    if (y == NULL || covariance == NULL || all == NULL)
         return LW_OUT_OF_MEMORY;
-    for (size_t i = 0; i < profiles->n; i++)
-        y[i] = profiles->profile[i].line->two_theta.value;
-    m->cell = profiles->lines->material->cell;
+    for (size_t i = 0; i < n; i++) {
+        y[i] = line_at(m, i)->two_theta.value;
+        for (size_t j = 0; j < n; j++)
+            covariance[i * n + j] = all[m->use[i] * m->profiles->n + m->use[j]];
+    }
+    m->cell = m->profiles->lines->material->cell;
     memset(out, 0, sizeof *out);
+    out->displaced = displacement != NULL;
     lw_cell_free_read(&m->free, &m->cell, out->p);
-    lw_generalised problem = {.n = profiles->n,
+    lw_generalised problem = {.n = n,
                               .m = m->free.n + (displacement != NULL),
                               .y = y,
                               .covariance = covariance,
@@ -136,7 +155,7 @@ static lw_status fit_cell(positions *m, const lw_aberration *displacement, lw_ar
     size_t weakest = 0;
     lw_error each = LW_ERROR_NONE;
     lw_status status = lw_generalised_solve(&problem, arena, out->p, &out->fit, &weakest, &each);
-    if (status == LW_NOT_SUPPORTED && profiles->n >= problem.m && out->fit.iterations == 0 && weakest > 0)
+    if (status == LW_NOT_SUPPORTED && n >= problem.m && out->fit.iterations == 0 && weakest > 0)
         return lw_fail(err, status, "measure lines of other directions",
                        "the lines measured do not determine %s of the cell",
                        weakest < m->free.n ? m->free.name[weakest] : "displacement beside the parameters");
@@ -145,50 +164,109 @@ static lw_status fit_cell(positions *m, const lw_aberration *displacement, lw_ar
     return status;
 }
 
-/* Decides whether the displacement is refined, and fits. *why says what was done, for the remarks. */
-static lw_status decide(positions *m, int wanted, lw_arena *arena, answer *out, const char **why,
+static bool is_flat(const lw_calibration *calibration)
+{
+    return calibration != NULL && strcmp(calibration->geometry, "reflection") == 0;
+}
+
+/* Chance that chi-square falls as far as from `without` to `with` though the specimen lies where the standard
+ * lay. The fall counts in units of what scatters about the better fit (F test with one parameter, its
+ * denominator's own scatter left out, which the strict limit covers). */
+static double chance_of_fall(const answer *without, const answer *with)
+{
+    double scatter = with->fit.scatter;
+    return lw_generalised_p((without->fit.chi2 - with->fit.chi2) / (scatter * scatter), 1);
+}
+
+/* Chooses between the two fits by what the lines can tell and by how well each stands. */
+static lw_status choose(positions *m, const lw_aberration *displacement, lw_arena *arena, answer *out,
                         lw_error *err)
 {
-    const lw_profiles *profiles = m->profiles;
-    const lw_calibration *calibration = profiles->calibration;
+    answer with, without;
+    lw_error each = LW_ERROR_NONE;
+    size_t needed = m->free.n + 2 > LINES_FOR_DISPLACEMENT ? m->free.n + 2 : LINES_FOR_DISPLACEMENT;
+    lw_status status = m->n < needed ? LW_NOT_SUPPORTED : fit_cell(m, displacement, arena, &with, &each);
+    if (status == LW_OUT_OF_MEMORY) {
+        *err = each;
+        return status;
+    }
+    if (status == LW_OK && with.fit.shared[m->free.n] < SHARED_MOST) {
+        *out = with;
+        out->why = "this specimen's displacement was refined";
+        return LW_OK;
+    }
+    lw_status plain = fit_cell(m, NULL, arena, &without, err);
+    if (plain != LW_OK)
+        return plain;
+    if (status == LW_OK && chance_of_fall(&without, &with) < FALL_CHANCE) {
+        *out = with;
+        m->displacement = displacement;
+        out->why = "this specimen's displacement was refined: the lines hardly tell it from the cell, which "
+                   "enlarges the uncertainty, but do not fit without it";
+        return LW_OK;
+    }
+    *out = without;
+    out->why = m->n < needed
+                   ? "too few lines to refine this specimen's displacement: the calibration's was used, "
+                     "a difference is not in the uncertainty"
+                   : "the lines cannot tell this specimen's displacement from the cell and fit without "
+                     "it: the calibration's was used, a difference is not in the uncertainty";
+    return LW_OK;
+}
+
+static lw_status decide(positions *m, int wanted, lw_arena *arena, answer *out, lw_error *err)
+{
+    const lw_calibration *calibration = m->profiles->calibration;
     const lw_aberration *displacement = lw_aberration_named("displacement");
-    *why = NULL;
-    if (wanted == YES) {
-        if (calibration == NULL || displacement == NULL)
-            return lw_fail(err, LW_NOT_SUPPORTED, "give a calibration",
-                           "the specimen's displacement needs the goniometer radius of a calibration");
-        return fit_cell(m, displacement, arena, out, err);
-    }
-    bool flat =
-        calibration != NULL && displacement != NULL && strcmp(calibration->geometry, "reflection") == 0;
-    if (wanted == AUTO && flat) {
-        size_t needed = m->free.n + 2 > LINES_FOR_DISPLACEMENT ? m->free.n + 2 : LINES_FOR_DISPLACEMENT;
+    if (wanted == YES && (calibration == NULL || displacement == NULL))
+        return lw_fail(err, LW_NOT_SUPPORTED, "give a calibration",
+                       "the specimen's displacement needs the goniometer radius of a calibration");
+    if (wanted == AUTO && displacement != NULL && is_flat(calibration))
+        return choose(m, displacement, arena, out, err);
+    lw_status status = fit_cell(m, wanted == YES ? displacement : NULL, arena, out, err);
+    if (wanted == NO && is_flat(calibration))
+        out->why =
+            "this specimen was taken to lie where the standard lay; a difference is not in the uncertainty";
+    return status;
+}
+
+/* Whether a line's tails were measured on both sides. */
+static bool is_whole(const lw_profiles *profiles, const lw_line *line)
+{
+    const lw_scan *scan = profiles->lines->scan;
+    if (scan == NULL || scan->n < 2)
+        return true;
+    double room = fmin(line->two_theta.value - scan->two_theta_deg[0],
+                       scan->two_theta_deg[scan->n - 1] - line->two_theta.value);
+    return room >= BREADTHS_TO_END * line->breadth.value;
+}
+
+/* The fit with the lines that are whole; with all lines where those do not suffice. */
+static lw_status fit_whole(positions *m, int wanted, lw_arena *arena, answer *out, lw_error *err)
+{
+    size_t n = m->profiles->n, whole = 0;
+    size_t *use = lw_arena_take(arena, n, sizeof *use, err);
+    if (use == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < n; i++)
+        if (is_whole(m->profiles, m->profiles->profile[i].line))
+            use[whole++] = i;
+    m->use = use;
+    m->n = whole;
+    if (whole < n && whole > m->free.n) {
         lw_error each = LW_ERROR_NONE;
-        if (profiles->n < needed) {
-            *why = "too few lines to tell this specimen's displacement from the cell: the calibration's was "
-                   "used, "
-                   "and what the specimen's differs from it is not in the uncertainty";
-        } else {
-            lw_status status = fit_cell(m, displacement, arena, out, &each);
-            if (status == LW_OUT_OF_MEMORY) {
-                *err = each;
-                return status;
-            }
-            if (status == LW_OK && out->fit.shared[m->free.n] < SHARED_MOST) {
-                *why = "this specimen's own displacement was refined with the cell, since a flat specimen "
-                       "never lies "
-                       "quite where the standard lay";
-                return LW_OK;
-            }
-            *why =
-                "the range of angles is too short to tell this specimen's displacement from the cell: the "
-                "calibration's was used, and what the specimen's differs from it is not in the uncertainty";
+        lw_status status = decide(m, wanted, arena, out, &each);
+        if (status == LW_OK)
+            return LW_OK;
+        if (status != LW_NOT_SUPPORTED) {
+            *err = each;
+            return status;
         }
-    } else if (wanted == NO && flat) {
-        *why = "this specimen was taken to lie where the standard lay; what it differs is not in the "
-               "uncertainty";
     }
-    return fit_cell(m, NULL, arena, out, err);
+    for (size_t i = 0; i < n; i++)
+        use[i] = i;
+    m->n = n;
+    return decide(m, wanted, arena, out, err);
 }
 
 /* Volume with its uncertainty; the slopes by central differences over a millionth. */
@@ -242,11 +320,20 @@ static void tell_parameters(const positions *m, const answer *a, lw_node *result
     }
 }
 
-static void tell_lines(const lw_profiles *profiles, const answer *a, lw_node *result, lw_error *err)
+static bool takes_part(const positions *m, size_t profile)
+{
+    for (size_t i = 0; i < m->n; i++)
+        if (m->use[i] == profile)
+            return true;
+    return false;
+}
+
+/* The lines that took part; those that did not are named in the remarks. */
+static void tell_lines(const positions *m, const answer *a, lw_node *result, lw_error *err)
 {
     lw_node *list = lw_add_list(result, "lines", err);
-    for (size_t i = 0; i < profiles->n; i++) {
-        const lw_line *line = profiles->profile[i].line;
+    for (size_t i = 0; i < m->n; i++) {
+        const lw_line *line = line_at(m, i);
         const lw_reflection *r = &line->reflection;
         char text[24];
         lw_node *node = lw_add_group(list, NULL, err);
@@ -258,13 +345,59 @@ static void tell_lines(const lw_profiles *profiles, const answer *a, lw_node *re
     }
 }
 
-static void tell(const positions *m, const answer *a, const char *why, lw_node *result, lw_error *err)
+/* Names the lines whose tails are cut off, and what was done with them. */
+static void tell_cut(const positions *m, lw_node *remarks, lw_error *err)
+{
+    char names[160] = "", hkl[24], text[320];
+    size_t used = 0, cut = 0;
+    bool left_out = m->n < m->profiles->n;
+    for (size_t i = 0; i < m->profiles->n; i++) {
+        const lw_line *line = m->profiles->profile[i].line;
+        const lw_reflection *r = &line->reflection;
+        if (left_out ? takes_part(m, i) : is_whole(m->profiles, line))
+            continue;
+        lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl);
+        if (used + strlen(hkl) + 3 < sizeof names)
+            used += (size_t)snprintf(names + used, sizeof names - used, "%s%s", cut > 0 ? ", " : "", hkl);
+        cut++;
+    }
+    if (cut == 0)
+        return;
+    snprintf(text, sizeof text, "%s %s within %.0f integral breadths of the scan's end: %s",
+             cut == 1 ? "line" : "lines", names, BREADTHS_TO_END,
+             left_out ? "left out, since a cut tail pulls the position"
+                      : "used, since the others do not determine the cell; a cut tail pulls the position");
+    lw_add_text(remarks, NULL, text, err);
+}
+
+/* Says so where the shift by the atoms' scattering is more than half of a position's uncertainty. */
+static void tell_scattering(const positions *m, lw_node *remarks, lw_error *err)
+{
+    double u, largest = 0;
+    bool matters = false;
+    for (size_t i = 0; i < m->n; i++) {
+        double shift = lw_position_scattering(m->profiles, m->use[i], &u);
+        matters |= fabs(shift) > 0.5 * line_at(m, i)->two_theta.u;
+        largest = fmax(largest, fabs(shift));
+    }
+    if (!matters)
+        return;
+    char text[200];
+    snprintf(text, sizeof text,
+             "the atoms' scattering falls across these broad lines: their shift by it, up to %.1g deg, was "
+             "taken off "
+             "as -0.25(9) nm b^2/(2 pi)",
+             largest);
+    lw_add_text(remarks, NULL, text, err);
+}
+
+static void tell(const positions *m, const answer *a, lw_node *result, lw_error *err)
 {
     const lw_profiles *profiles = m->profiles;
     const lw_generalised_fit *fit = &a->fit;
     tell_parameters(m, a, result, err);
-    lw_add_flag(result, "displacement_refined", m->displacement != NULL, err);
-    if (m->displacement != NULL) {
+    lw_add_flag(result, "displacement_refined", a->displaced, err);
+    if (a->displaced) {
         size_t at = m->free.n;
         lw_add_quantity(result, "displacement",
                         lw_quantity_of(a->p[at], sqrt(fit->covariance[at][at]) * fit->scatter, "mm"),
@@ -280,10 +413,12 @@ static void tell(const positions *m, const answer *a, const char *why, lw_node *
         lw_add_number(result, "chance", fit->p, err);
     }
     lw_add_number(result, "scatter_factor", fit->scatter, err);
-    tell_lines(profiles, a, result, err);
+    tell_lines(m, a, result, err);
     lw_node *remarks = lw_add_list(result, "remarks", err);
-    if (why != NULL)
-        lw_add_text(remarks, NULL, why, err);
+    if (a->why != NULL)
+        lw_add_text(remarks, NULL, a->why, err);
+    tell_cut(m, remarks, err);
+    tell_scattering(m, remarks, err);
     if (fit->degrees > 0 && fit->scatter > 1 && fit->p < 0.01) {
         char text[240];
         snprintf(
@@ -310,10 +445,9 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
     lw_arena arena;
     lw_arena_begin(&arena, engine);
     answer a;
-    const char *why;
-    lw_status status = decide(&m, o->displacement, &arena, &a, &why, err);
+    lw_status status = fit_whole(&m, o->displacement, &arena, &a, err);
     if (status == LW_OK) {
-        tell(&m, &a, why, result, err);
+        tell(&m, &a, result, err);
         status = err->status;
     }
     lw_arena_end(&arena);

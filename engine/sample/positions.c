@@ -3,7 +3,8 @@
 
 #include <math.h>
 
-#define RADIAN (3.14159265358979323846 / 180)
+#define PI 3.14159265358979323846
+#define RADIAN (PI / 180)
 
 double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration *without, lw_arena *arena,
                                lw_error *err)
@@ -29,7 +30,10 @@ double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration 
                         sum += set->kind[k]->slope(a->two_theta.value, set->radius_mm) *
                                set->covariance[k][l] *
                                set->kind[l]->slope(b->two_theta.value, set->radius_mm);
-            c[i * n + j] = sum;
+            double u_a, u_b;
+            lw_position_scattering(profiles, i, &u_a);
+            lw_position_scattering(profiles, j, &u_b);
+            c[i * n + j] = sum + u_a * u_b;
         }
     return c;
 }
@@ -44,6 +48,20 @@ double lw_position_shift(const lw_profiles *profiles, const lw_aberration *witho
         if (set->kind[k] != without)
             sum += set->value[k] * set->kind[k]->slope(two_theta_deg, set->radius_mm);
     return sum;
+}
+
+double lw_position_scattering(const lw_profiles *profiles, size_t which, double *u)
+{
+    static const double steepest = -0.4, gentlest = -0.1; /* nm */
+    const lw_profile *profile = &profiles->profile[which];
+    *u = 0;
+    if (!profiles->lines->with_factor || profile->breadth_s.kind != LW_VALUE ||
+        !(profile->breadth_s.value > 0) || !(profile->s_per_nm > 0))
+        return 0;
+    double breadth = profile->breadth_s.value;
+    double share = breadth * breadth / (2 * PI) / lw_position_s_slope(profile->s_per_nm, profile->theta_deg);
+    *u = (gentlest - steepest) / sqrt(12) * share;
+    return 0.5 * (gentlest + steepest) * share;
 }
 
 double lw_position_s_slope(double s_per_nm, double theta_deg)
