@@ -164,8 +164,7 @@ static void remark_directions(const lw_breadths *breadths, const lw_breadth_fit 
         char text[24];
         say(remarks, err,
             "the %d orders of direction %s lie %s the line by %.1f u of their mean: breadths depend on "
-            "direction, "
-            "so one size and one strain do not describe the powder",
+            "direction",
             orders, lw_hkl_text(mine[0], mine[1], mine[2], text, sizeof text), above > 0 ? "above" : "below",
             fabs(sum) / sqrt(weight));
     }
@@ -199,18 +198,12 @@ void lw_breadths_remark(const lw_breadths *breadths, const lw_breadth_fit *fit, 
     const lw_generalised_fit *f = &fit->fit;
     if (fit->p[0] < 0)
         say(remarks, err,
-            "the share that would be size comes out negative (%.1f u below 0): size does not broaden these "
-            "lines "
-            "measurably, or the instrument's breadth is taken too large",
+            "the share of size is negative (%.1f u below 0): size does not broaden these lines measurably",
             -fit->p[0] / sqrt(fit->covariance[0][0]));
     else if (fit->size_volume.kind != LW_VALUE)
         say(remarks, err, "size broadening is below twice its uncertainty: a lower limit is given");
     if (fit->p[1] < 0)
-        say(remarks, err,
-            "the share that would be strain comes out negative (%.1f u below 0): breadths do not grow with "
-            "s; "
-            "planar faults, anisotropic shape or an instrument's breadth taken too large at high angles do "
-            "that",
+        say(remarks, err, "the share of strain is negative (%.1f u below 0): breadths do not grow with s",
             -fit->p[1] / sqrt(fit->covariance[1][1]));
     else if (fit->strain_apparent.kind != LW_VALUE)
         say(remarks, err, "strain broadening is below twice its uncertainty: an upper limit is given");
@@ -220,9 +213,7 @@ void lw_breadths_remark(const lw_breadths *breadths, const lw_breadth_fit *fit, 
             "tests it");
     else if (f->scatter > 1 && f->p < 0.01)
         say(remarks, err,
-            "the breadths scatter about the line %.1f times as much as their uncertainties allow (chance "
-            "%.1g): "
-            "uncertainties are enlarged by that factor",
+            "breadths scatter %.1f times their u about the line (chance %.1g): u enlarged by that",
             f->scatter, f->p);
     if (f->rank < breadths->n)
         say(remarks, err,

@@ -9,8 +9,9 @@
 
 #define EIGENVALUE_LEAST 1e-7
 #define ITERATIONS_MOST 100
-#define STEP_ENOUGH 1e-5 /* in u of the parameter; the step is taken all the same, so the answer is better   \
-                          */
+#define STEP_ENOUGH                                                                                          \
+    1e-5 /* in u of the parameter; the step is taken all the same, so the answer is better                   \
+          */
 
 double lw_generalised_p(double chi2, size_t degrees)
 {

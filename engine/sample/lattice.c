@@ -421,12 +421,11 @@ static void tell(const positions *m, const answer *a, lw_node *result, lw_error 
     tell_scattering(m, remarks, err);
     if (fit->degrees > 0 && fit->scatter > 1 && fit->p < 0.01) {
         char text[240];
-        snprintf(
-            text, sizeof text,
-            "the positions scatter about the cell %.1f times as much as their uncertainties allow (chance "
-            "%.1g): "
-            "uncertainties are enlarged by that factor; stacking faults and stress shift lines by direction",
-            fit->scatter, fit->p);
+        snprintf(text, sizeof text,
+                 "positions scatter %.1f times their u about the cell (chance %.1g): u enlarged by that; "
+                 "faults and "
+                 "stress shift lines by direction",
+                 fit->scatter, fit->p);
         lw_add_text(remarks, NULL, text, err);
     }
     if (profiles->calibration == NULL)

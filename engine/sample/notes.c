@@ -65,20 +65,16 @@ static void about_lines(const lw_profiles *profiles, lw_node *notes, lw_error *e
         say(notes, err, "%s %s: not seen in the data, left out", lines_word(&unseen), unseen.text);
     if (unresolved.n > 0)
         say(notes, err,
-            "%s %s: the sample's own breadth is below twice its uncertainty, so size has a lower limit only; "
-            "a "
-            "better instrument or longer counting would be needed",
+            "%s %s: the sample's breadth is below twice its uncertainty, so size has a lower limit only",
             lines_word(&unresolved), unresolved.text);
     if (overlapped.n > 0)
         say(notes, err,
-            "%s %s: more than %.0f %% of the area lies under neighbours, breadths there depend on the model "
-            "of the "
+            "%s %s: more than %.0f %% of the area lies under neighbours, so breadths depend on the model of "
             "tails",
             lines_word(&overlapped), overlapped.text, 100 * OVERLAP_NOTED);
     if (refold.n > 0)
         say(notes, err,
-            "%s %s: instrument times result does not give the data back; what follows from the shape of "
-            "these lines is not to be trusted",
+            "%s %s: instrument times result does not give the data back, do not trust their shape",
             lines_word(&refold), refold.text);
     if (profiles->n < 3)
         say(notes, err,
@@ -90,19 +86,39 @@ static void about_fit(const lw_profiles *profiles, lw_node *notes, lw_error *err
 {
     const lw_lines *lines = profiles->lines;
     if (lines->misfit != NULL && lines->misfit[0] != '\0')
-        say(notes, err, "shape of the lines: %s", lines->misfit);
-    if (lines->misfit_factor > 1)
-        say(notes, err,
-            "the line shape misses the data: uncertainties of the fit were multiplied by %.2f, but breadths "
-            "may be "
-            "off by several per cent all the same, since a Voigt is not the shape of a real powder's line",
-            lines->misfit_factor);
+        say(notes, err, "fit of the lines: %s; breadths may still be off by several per cent", lines->misfit);
     if (profiles->calibration == NULL)
         say(notes, err, "no calibration: the instrument's breadth is in everything");
     else if (strcmp(profiles->calibration->verdict, "fail") == 0 ||
              strcmp(profiles->calibration->verdict, "attention") == 0)
-        say(notes, err, "the calibration's own verdict is \"%s\": see its report first",
-            profiles->calibration->verdict);
+        say(notes, err, "the calibration's own verdict is %s", profiles->calibration->verdict);
+}
+
+static bool has_remark(const lw_node *method, const char *text)
+{
+    const lw_node *remarks = lw_node_get(method, "remarks");
+    for (const lw_node *r = remarks != NULL ? remarks->first : NULL; r != NULL; r = r->next)
+        if (strcmp(r->text, text) == 0)
+            return true;
+    return false;
+}
+
+/* A remark once, behind the titles of all methods that make it. */
+static void say_once(const lw_node *methods, const lw_node *method, const char *text, lw_node *notes,
+                     lw_error *err)
+{
+    char titles[200] = "";
+    size_t used = 0;
+    for (const lw_node *m = methods->first; m != method; m = m->next)
+        if (has_remark(m, text))
+            return;
+    for (const lw_node *m = method; m != NULL; m = m->next) {
+        const char *title = lw_node_text(m, "title", m->name);
+        if (has_remark(m, text) && used + strlen(title) + 3 < sizeof titles)
+            used +=
+                (size_t)snprintf(titles + used, sizeof titles - used, "%s%s", used > 0 ? ", " : "", title);
+    }
+    say(notes, err, "%s: %s", titles, text);
 }
 
 static void about_methods(const lw_node *methods, lw_node *notes, lw_error *err)
@@ -118,13 +134,12 @@ static void about_methods(const lw_node *methods, lw_node *notes, lw_error *err)
         if (remarks == NULL)
             continue;
         for (const lw_node *remark = remarks->first; remark != NULL; remark = remark->next)
-            say(notes, err, "%s: %s", lw_node_text(m, "title", m->name), remark->text);
+            say_once(methods, m, remark->text, notes, err);
     }
     if (large)
         say(notes, err,
-            "sizes above about %.0f nm from a laboratory instrument are qualitative: they rest on small "
-            "differences "
-            "from the instrument's breadth",
+            "sizes above about %.0f nm are qualitative: they rest on small differences from the instrument's "
+            "breadth",
             SIZE_QUALITATIVE_NM);
 }
 

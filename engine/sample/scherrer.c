@@ -137,19 +137,14 @@ static void remark(const lw_breadths *breadths, const lw_generalised_fit *fit, l
         return;
     lw_breadth_fit straight;
     lw_error none = LW_ERROR_NONE;
-    const char *reason =
-        "breadths depend on direction (shape of the crystallites, planar faults, anisotropic "
-        "strain) or the instrument's share is wrong";
+    const char *reason = "breadths depend on direction, or the instrument's share is wrong";
     if (lw_breadths_fit(breadths, LW_FORM_LORENTZIAN, arena, &straight, &none) == LW_OK &&
         straight.p[1] > 3 * sqrt(straight.fit.covariance[1][1]))
-        reason =
-            straight.fit.p < CHANCE_OF_3U
-                ? "breadths grow with s, which strain does, and scatter beyond that, which dependence on "
-                  "direction does"
-                : "breadths grow with s, which strain does: use a method that parts size from strain";
-    snprintf(text, sizeof text,
-             "the lines' sizes disagree beyond 3 u (chi-square %.3g for %zu degrees of freedom): %s",
-             fit->chi2, fit->degrees, reason);
+        reason = straight.fit.p < CHANCE_OF_3U
+                     ? "breadths grow with s, which strain does, and scatter beyond that"
+                     : "breadths grow with s, which strain does";
+    snprintf(text, sizeof text, "the lines' sizes disagree (chi-square %.3g for %zu): %s", fit->chi2,
+             fit->degrees, reason);
     lw_add_text(remarks, NULL, text, err);
 }
 
