@@ -9,6 +9,7 @@
 #include "app/stop.h"
 #include "base/sha256.h"
 #include "bind/home.h"
+#include "bind/inputs.h"
 #include "bind/standards.h"
 
 #include <lauxlib.h>
@@ -61,7 +62,16 @@ static void set_arguments(lua_State *L, const job *work)
         lua_pushstring(L, work->argv[i]);
         lua_rawseti(L, -2, i - work->options->first_argument + 1);
     }
+    lua_pushvalue(L, -1);
     lua_setglobal(L, "arg");
+    /* a copy that scripts can't reach is what lw.recipe reads */
+    lua_newtable(L);
+    for (lua_Integer i = 0; i <= (lua_Integer)lua_rawlen(L, -2); i++) {
+        lua_rawgeti(L, -2, i);
+        lua_rawseti(L, -2, i);
+    }
+    lua_setfield(L, LUA_REGISTRYINDEX, LWB_ARGUMENTS_KEY);
+    lua_pop(L, 1);
 }
 
 /* The whole of a file, or of standard input for -1, as a string on the stack; false with errno. */

@@ -93,6 +93,7 @@ lwa_exit lwa_call(lua_State *L, int n_arguments, int n_results, lwa_progress *pr
         return LWA_DONE;
     if (status == LUA_OK) { /* it swallowed the stop at its very end */
         lua_settop(L, base - 1);
+        fprintf(stderr, "%s\n", lwa_stop_reason() == LWA_INTERRUPTED ? "interrupted" : "the time limit is reached");
         return lwa_stop_reason() == LWA_INTERRUPTED ? LWA_EXIT_INTERRUPTED : LWA_FAILED;
     }
     if (lua_type(L, -1) == LUA_TTABLE) { /* only a request for help passes the handler as a table */

@@ -139,7 +139,8 @@
 ---@class recipe the running job; its inputs are fields
 ---@field path fun(self: recipe, name: string): string
 ---@field write fun(self: recipe, ...: any)
----@field write_csv fun(self: recipe, name: string, rows: any): string
+---@field write_csv fun(self: recipe, name: string, rows: any, columns?: string[]): string
+---@field run fun(self: recipe, recipe: string, inputs: table)
 ---@field progress fun(self: recipe, what: string, fraction: number)
 ---@field check fun(self: recipe, passed: boolean, text?: string): boolean
 ---@field once fun(self: recipe, key: string, f: fun(): any): result
@@ -295,8 +296,9 @@ local methods = {
   ["recipe:write"] = entry("job:write(results, report, ...)",
     "Writes each thing by its kind: results.json, calibration.json, report.html with figures/.",
     { p("things", "any", "a result or table, a calibration, a report, figures") }),
-  ["recipe:write_csv"] = entry("job:write_csv(name, rows)", "Rows as comma-separated values.",
-    { p("name", "text", "below the out folder"), p("rows", "list", "of a result, lines, profiles, or tables") },
+  ["recipe:write_csv"] = entry("job:write_csv(name, rows, columns)", "Rows as comma-separated values.",
+    { p("name", "text", "below the out folder"), p("rows", "list", "of a result, lines, profiles, or tables"),
+      p("columns", "list", "names, which and in what order; left out: all, those of tables by the alphabet") },
     "text"),
   ["recipe:check"] = entry("job:check(passed, text)", "A verdict: exit code 3 under strict=true if it failed.",
     { p("passed", "flag", "whether it holds"), p("text", "text", "what was judged") }, "flag"),

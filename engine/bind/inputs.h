@@ -8,6 +8,9 @@
 /* User values of the job. */
 enum { LWB_JOB_VALUES = 1, LWB_JOB_DECLARED, LWB_JOB_NAMES, LWB_JOB_TITLE, LWB_JOB_FILES };
 #define LWB_JOB_KEY "linewright.job" /* of the running job in the registry */
+/* Of the arguments of the recipe in the registry, as the host set them: a script can change the global
+ * `arg`, and must not be able to choose `out` by that. */
+#define LWB_ARGUMENTS_KEY "linewright arguments"
 
 /* Checks the declaration (table at index) of the input `name`: its kind and its default. */
 void lwb_check_kind(lua_State *L, int index, const char *name);

@@ -260,13 +260,53 @@ int lwb_job_write(lua_State *L)
     return 0;
 }
 
-/* job:write_csv(name, rows): rows is a list of groups of a result, lines, or a list of tables. */
+/* Copies the wanted columns of rows into a list, in the order wanted. Rows are a list of tables at `rows`,
+ * or groups of `from` if that isn't NULL; the names are a list at `wanted`. */
+static const lw_node *choose_columns(lua_State *L, const lw_node *from, int rows, int wanted)
+{
+    lw_error err = LW_ERROR_NONE;
+    lwb_tree *tree = lwb_new_tree(L);
+    lw_node *list = lw_add_list(tree->root, "rows", &err);
+    lua_Integer n_columns = (lua_Integer)lua_rawlen(L, wanted);
+    lua_Integer n_rows = from ? (lua_Integer)from->n : (lua_Integer)lua_rawlen(L, rows);
+    const lw_node *each = from ? from->first : NULL;
+    for (lua_Integer i = 1; i <= n_rows; i++) {
+        int top = lua_gettop(L);
+        lw_node *row = lw_add_group(list, NULL, &err);
+        lwb_check(L, LW_OK, &err);
+        if (from == NULL) {
+            lua_rawgeti(L, rows, i);
+            lwb_want_table(L, top + 1, "job:write_csv", "a row");
+        }
+        for (lua_Integer c = 1; c <= n_columns; c++) {
+            lua_rawgeti(L, wanted, c);
+            const char *name = lwb_text(L, -1, "job:write_csv", "a column's name"); /* the list keeps it alive */
+            lua_pop(L, 1);
+            const lw_node *cell = each ? lw_node_get(each, name) : NULL;
+            if (cell != NULL)
+                lw_add_copy(row, name, cell, &err);
+            else if (from == NULL && lua_getfield(L, top + 1, name) != LUA_TNIL)
+                lwb_add_value(L, row, name, lua_gettop(L));
+            lua_settop(L, from ? top : top + 1);
+        }
+        lwb_check(L, LW_OK, &err);
+        each = each ? each->next : NULL;
+        lua_settop(L, top);
+    }
+    return list;
+}
+
+/* job:write_csv(name, rows, columns): rows is a list of groups of a result, lines, or a list of tables;
+ * columns says which and in what order. Without it: all, those of tables in alphabetical order. */
 int lwb_job_write_csv(lua_State *L)
 {
     lw_error err = LW_ERROR_NONE;
     lwb_self(L, 1, &lwb_recipe_noun, "job:write_csv");
     const char *name = lwb_text(L, 2, "job:write_csv", "the name");
-    lua_settop(L, 3);
+    lua_settop(L, 4);
+    bool chosen = !lua_isnil(L, 4);
+    if (chosen)
+        lwb_want_table(L, 4, "job:write_csv", "the columns");
     const char *path = lwb_push_out_path(L, name, "job:write_csv");
     const lw_node *rows = NULL;
     if (lwb_test(L, 3, &lwb_lines_noun) != NULL || lwb_test(L, 3, &lwb_profiles_noun) != NULL) {
@@ -277,6 +317,12 @@ int lwb_job_write_csv(lua_State *L)
         rows = ((lwb_tree *)lua_touserdata(L, 3))->node;
     else {
         lwb_want_table(L, 3, "job:write_csv", "the rows");
+        if (chosen)
+            rows = choose_columns(L, NULL, 3, 4);
+    }
+    if (rows != NULL && chosen && (lwb_test(L, 3, &lwb_tree_noun) != NULL || lwb_road_node(L, 3) != NULL))
+        rows = choose_columns(L, rows, 0, 4);
+    else if (rows == NULL && lua_istable(L, 3)) {
         lwb_tree *tree = lwb_new_tree(L);
         lwb_add_value(L, tree->root, "rows", 3);
         rows = tree->root->first;
@@ -284,6 +330,6 @@ int lwb_job_write_csv(lua_State *L)
     if (rows == NULL)
         return lwb_refuse(L, NULL, "job:write_csv: there are no rows");
     lwb_check(L, lw_csv_save(lwb_engine(L), path, rows, &err), &err);
-    lua_pushvalue(L, 4);
+    lua_pushvalue(L, 5);
     return 1;
 }

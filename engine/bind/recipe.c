@@ -133,7 +133,8 @@ static int end_after_help(lua_State *L)
 static void check_declaration(lua_State *L, int declared)
 {
     static const char *const keys[] = {"kind", "default", "help", "unit", "choices", "least", "most", NULL};
-    static const char *const taken[] = {"path", "write", "write_csv", "check", "progress", "once", "title", "inputs", NULL};
+    static const char *const taken[] = {"path", "write", "write_csv", "check", "progress", "run", "once",
+                                        "title", "inputs", NULL};
     for (lua_pushnil(L); lua_next(L, declared); lua_pop(L, 1)) {
         if (lua_type(L, -2) != LUA_TSTRING)
             lwb_refuse(L, "write name = { kind = ... }", "recipe: an input has no name");
@@ -176,7 +177,8 @@ static int make(lua_State *L)
     declare_frame(L, 2);
     lua_newtable(L); /* 3: names in order */
     sort_names(L, 2, 3);
-    if (lua_getglobal(L, "arg") != LUA_TTABLE) {
+    int arguments = home->interpreter ? lua_getfield(L, LUA_REGISTRYINDEX, LWB_ARGUMENTS_KEY) : lua_getglobal(L, "arg");
+    if (arguments != LUA_TTABLE) {
         lua_pop(L, 1);
         lua_newtable(L);
     } /* 4: arguments */

@@ -80,24 +80,30 @@ int lwb_job_run(lua_State *L)
     int arguments = lua_gettop(L);
 
     lw_error err = LW_ERROR_NONE;
-    lw_arena arena;
-    lw_arena_begin(&arena, &home->engine);
+    lw_arena *arena = lwb_scratch(L);
     char *bytes = NULL;
     size_t size = 0;
-    lw_status status = lw_read_file(&arena, path, RECIPE_MOST, &bytes, &size, &err);
+    lw_status status = lw_read_file(arena, path, RECIPE_MOST, &bytes, &size, &err);
     char hash[65] = "";
     int loaded = LUA_OK;
     if (status == LW_OK) {
         lw_sha256_hex(bytes, size, hash);
         loaded = luaL_loadbufferx(L, bytes, size, lua_pushfstring(L, "@%s", path), "t");
     }
-    lw_arena_end(&arena);
     lwb_check(L, status, &err);
     if (loaded != LUA_OK)
         return lua_error(L);
     int chunk = lua_gettop(L);
 
-    /* the inner recipe reads its arguments where any recipe does */
+    /* the inner recipe finds its arguments where any recipe does: in `arg` and, for lw.recipe, in the registry */
+    lua_getfield(L, LUA_REGISTRYINDEX, LWB_ARGUMENTS_KEY);
+    int outer_arguments = lua_gettop(L);
+    lua_newtable(L);
+    for (lua_Integer i = 0; i <= (lua_Integer)lua_rawlen(L, arguments); i++) {
+        lua_rawgeti(L, arguments, i);
+        lua_rawseti(L, -2, i);
+    }
+    lua_setfield(L, LUA_REGISTRYINDEX, LWB_ARGUMENTS_KEY);
     lua_rawgeti(L, LUA_REGISTRYINDEX, LUA_RIDX_GLOBALS);
     int globals = lua_gettop(L);
     lua_pushliteral(L, "arg");
@@ -117,6 +123,8 @@ int lwb_job_run(lua_State *L)
     snprintf(home->recipe_hash, sizeof home->recipe_hash, "%s", keep->hash);
     snprintf(home->out, sizeof home->out, "%s", keep->out);
     home->out_is_default = keep->out_is_default;
+    lua_pushvalue(L, outer_arguments);
+    lua_setfield(L, LUA_REGISTRYINDEX, LWB_ARGUMENTS_KEY);
     lua_pushvalue(L, own_job);
     lua_setfield(L, LUA_REGISTRYINDEX, LWB_JOB_KEY);
     lua_pushliteral(L, "arg");

@@ -124,6 +124,20 @@ describe("a recipe", function()
     assert.are.equal("hkl,size_nm,u_size_nm\n111,2.5,0.5\n", helper.read(folder .. "/o/rows.csv"))
   end)
 
+  it("writes the columns that are wanted, in their order", function()
+    local code, _, err = run([[
+      local rows = { { a = 1, b = "x", c = 3 }, { a = 4, c = 5 } }
+      job:write_csv("rows.csv", rows, { "c", "a" })
+      job:write_csv("tree.csv", lw.result { rows = { { a = 1, b = 2 } } }.rows, { "b" })
+    ]], "scan=a.xy", "out=o")
+    assert.are.same({ 0, "" }, { code, err })
+    assert.are.equal("b\n2\n", helper.read(folder .. "/o/tree.csv"))
+    assert.are.equal("c,a\n3,1\n5,4\n", helper.read(folder .. "/o/rows.csv"))
+    code, _, err = run("job:write_csv('rows.csv', { { a = 1 } }, { 7 })", "scan=a.xy", "out=o")
+    assert.are.equal(1, code)
+    assert.matches("a column's name must be a text", err)
+  end)
+
   it("ends in 3 when a verdict fails under strict=true only", function()
     local text = "job:check(false, 'the width grew')"
     local code, _, err = run(text, "scan=a.xy", "strict=true")

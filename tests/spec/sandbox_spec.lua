@@ -149,6 +149,34 @@ describe("the sandbox", function()
       assert.are.equal(0, (helper.recipe(folder, start .. "job:write { a = 1 }", { "out=out" })))
     end)
 
+    it("nothing where the script would like out to be", function()
+      for _, trick in ipairs {
+        "arg = { 'out=outside' }", "arg[1] = 'out=outside'", "rawset(arg, 1, 'out=outside')",
+      } do
+        local code, out = helper.recipe(folder,
+          trick .. "\n" .. start .. "print(job.out) job:write { a = 1 }", { "out=o" })
+        assert.are.same({ 0, "o\n" }, { code, out })
+      end
+      local code, _, err = helper.recipe(folder, [[
+        local lw = require "linewright"
+        lw.recipe { title = "t", inputs = { out = { kind = "text", default = "outside" } } }:write { a = 1 }
+      ]])
+      assert.are.same({ 0, "" }, { code, err })
+      assert.is_false(helper.exists(folder .. "/outside"))
+      helper.write(folder .. "/inner.lua", start .. "job:write { a = 1 }")
+      for _, out in ipairs { "../outside", "/tmp/outside", "x/../../outside" } do
+        code, _, err = helper.recipe(folder, start .. ("job:run('inner.lua', { out = %q })"):format(out), { "out=o" })
+        assert.are.equal(1, code)
+        assert.matches("run: ", err)
+      end
+      assert.is_false(helper.exists(folder .. "/outside"))
+      assert.is_false(helper.exists "/tmp/outside")
+      code = helper.recipe(folder, start .. "job:run('inner.lua', { out = 'x' }) job:write { b = 1 }", { "out=o" })
+      assert.are.equal(0, code)
+      assert.is_true(helper.exists(folder .. "/o/x/results.json"))
+      assert.is_true(helper.exists(folder .. "/o/results.json"))
+    end)
+
     it("nothing by a figure or calibration elsewhere", function()
       local code, _, err = helper.recipe(folder, start .. [[
         lw.figure { title = "t", series = { { x = { 1, 2 }, y = { 1, 2 } } } }:save "x.svg"
