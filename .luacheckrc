@@ -16,3 +16,4 @@ stds.recipe = {
 files["scripts"] = { std = "recipe" }
 files["standards"] = { std = "none", max_line_length = false }
 files["tests/spec"] = { std = "lua54+busted" }
+files["tests/truth"] = { std = "lua54+busted" }

@@ -168,14 +168,14 @@ fi
 if wanted floors; then step floors 120 sh tests/floors.sh "$build"; fi
 if wanted luacheck; then
   step luacheck 120 luacheck --no-color --codes -q \
-    $(find scripts standards engine/bind tests/spec -name '*.lua' 2>/dev/null | sort)
+    $(find scripts standards engine/bind tests/spec tests/truth -name '*.lua' 2>/dev/null | sort)
 fi
 
 # 5. The specs, under the interpreter itself.
 if wanted specs; then
   if [ $built = yes ]; then
     # a path from here: busted hands it to a shell without quotes
-    step specs 600 busted --lua=build/lua-for-busted --output=plainTerminal --pattern=_spec tests/spec
+    step specs 600 busted --lua=build/lua-for-busted --output=plainTerminal --pattern=_spec tests/spec tests/truth
   else
     skip specs "the interpreter was not built"
   fi
