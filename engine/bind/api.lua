@@ -117,6 +117,7 @@
 ---@field profile_at fun(self: calibration, two_theta: number): table
 ---@field figure fun(self: calibration): figure
 ---@field table fun(self: calibration): table
+---@field compare fun(self: calibration, previous: calibration, options?: table): result
 
 ---@class profiles what the sample alone does to each line
 ---@field fitted_lines lines
@@ -159,6 +160,7 @@
 ---@field fit_lines fun(scan: scan, reflections: reflections|material|standard, options?: table): lines
 ---@field calibrate fun(lines: lines, standard: standard|string, options?: table): calibration
 ---@field load_calibration fun(path: string): calibration
+---@field history fun(calibrations: table[], options?: table): result
 ---@field deconvolve fun(lines: lines, options?: table): profiles
 ---@field separate fun(profiles: profiles, options?: table): result
 ---@field figure fun(parts: table): figure
@@ -211,6 +213,10 @@ local functions = {
       p("standard", "standard", "or its name") }, "calibration"),
   load_calibration = entry("lw.load_calibration(path)", "Reads a calibration's record.",
     { p("path", "text", "calibration.json") }, "calibration"),
+  history = entry("lw.history({ { calibration =, label =, after_service = }, ... }, { ... })",
+    "Control charts of an instrument's calibrations in order of time: which point broke which rule.",
+    { p("calibrations", "list", "tables: calibration, label (a date or a file), after_service (flag)") }, "result",
+    "Shewhart (1931) Economic Control of Quality of Manufactured Product; ISO 7870-2"),
   deconvolve = entry("lw.deconvolve(lines, { ... })",
     "Takes the instrument out of the lines, and refolds what it finds against the data.",
     { p("lines", "lines", "fitted with an instrument, which is used") }, "profiles"),
@@ -285,6 +291,12 @@ local methods = {
     { p("two_theta", "number", "within the valid range", "deg") }, "table of quantities"),
   ["calibration:figure"] = entry("c:figure()", "Width of the instrument against angle.", {}, "figure"),
   ["calibration:table"] = entry("c:table()", "A deep Lua table of the record.", {}, "table"),
+  ["calibration:compare"] = entry("c:compare(previous, { tolerances =, effects = })",
+    "What changed since a calibration before, against tolerances, and what that would do to results.",
+    { p("previous", "calibration", "of the same instrument, radiation and geometry"),
+      p("tolerances", "table", "or the path of a Lua literal: zero_shift (deg), displacement (mm), flat_specimen (deg), "
+        .. "transparency (deg), wavelength (relative), shift (deg), fwhm (%), breadth (%), asymmetry (deg), intensity (%)"),
+      p("effects", "flag", "false leaves out what samples would be reported with the old calibration") }, "result"),
   ["profiles:coefficients"] = entry("p:coefficients(i)", "Fourier coefficients of one profile as vectors.",
     { p("i", "integer", "from 1") }, "table: length_nm, cosine, u_cosine, sine, u_sine, truncated_at"),
   ["profiles:figure"] = entry("p:figure()", "Fourier coefficients against column length.", {}, "figure"),

@@ -3,6 +3,7 @@
 #include "instrument/calibration.h"
 #include "base/sha256.h"
 #include "bind/bind.h"
+#include "bind/comparison.h"
 #include "bind/figures.h"
 #include "bind/outputs.h"
 #include "bind/roads.h"
@@ -248,9 +249,10 @@ static int table(lua_State *L)
 
 static const char *const fields[] = {"radiation", "geometry", "verdict", "hash", "valid_two_theta",
                                      "record", "fitted_lines", "standard_used", NULL};
-static const luaL_Reg functions[] = {{"calibrate", calibrate}, {"load_calibration", load}, {NULL, NULL}};
+static const luaL_Reg functions[] = {{"calibrate", calibrate}, {"load_calibration", load}, {"history", lwb_history}, {NULL, NULL}};
 static const luaL_Reg methods[] = {
-    {"save", save}, {"profile_at", profile_at}, {"figure", figure}, {"table", table}, {NULL, NULL}};
+    {"save", save}, {"profile_at", profile_at}, {"figure", figure}, {"table", table},
+    {"compare", lwb_calibration_compare}, {NULL, NULL}};
 static const luaL_Reg metamethods[] = {{"__index", at}, {"__tostring", show}, {NULL, NULL}};
 
 const lwb_noun lwb_calibration_noun = {.name = "calibration",

@@ -4,6 +4,7 @@
 #include "bind/bind.h"
 #include "bind/help.h"
 #include "instrument/calibration.h"
+#include "instrument/history.h"
 #include "line/lines.h"
 #include "profile/profiles.h"
 #include "sample/method.h"
@@ -23,7 +24,8 @@ const lw_option *lwb_options_of(const char *function)
                 {"scan", lw_scan_option_table},
                 {"fit_lines", lw_fit_option_table},
                 {"calibrate", lw_calibrate_option_table},
-                {"deconvolve", lw_deconvolve_option_table}};
+                {"deconvolve", lw_deconvolve_option_table},
+                {"history", lw_history_option_table}};
     for (size_t i = 0; i < sizeof verb / sizeof *verb; i++)
         if (strcmp(verb[i].name, function) == 0)
             return verb[i].table;

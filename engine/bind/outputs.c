@@ -136,6 +136,8 @@ static void copy_plain(lw_node *to, const lw_node *from, lw_error *err)
     for (const lw_node *child = from->first; child != NULL; child = child->next) {
         if (child->name != NULL && (strcmp(child->name, "figure") == 0 || strcmp(child->name, "figures") == 0))
             continue;
+        if (child->name != NULL && strcmp(child->name, "schema") == 0 && lw_node_get(to, "schema") != NULL)
+            continue;
         if (child->kind == LW_NODE_GROUP || child->kind == LW_NODE_LIST) {
             lw_node *copy = child->kind == LW_NODE_GROUP ? lw_add_group(to, child->name, err)
                                                          : lw_add_list(to, child->name, err);
@@ -154,13 +156,30 @@ static bool has_failed(const lw_node *node)
     return strcmp(lw_node_text(node, "verdict", ""), "fail") == 0;
 }
 
-/* The results as the record results.json. */
+/* The file of a result: results.json, or, for one that is a record of another schema (linewright/comparison/1),
+ * a file of that name. */
+static const char *record_file(const lw_node *node, char *file, size_t size)
+{
+    const char *schema = node ? lw_node_text(node, "schema", "") : "";
+    size_t n = strncmp(schema, "linewright/", 11) == 0 ? strspn(schema + 11, "abcdefghijklmnopqrstuvwxyz_") : 0;
+    if (n == 0 || n + sizeof ".json" > size || schema[11 + n] != '/') {
+        snprintf(file, size, "results.json");
+        return "linewright/results/1";
+    }
+    snprintf(file, size, "%.*s.json", (int)n, schema + 11);
+    return schema;
+}
+
+/* The results as a record. */
 static void write_results(lua_State *L, int index)
 {
     lw_error err = LW_ERROR_NONE;
-    const char *path = lwb_push_out_path(L, "results.json", "job:write");
+    const lwb_tree *given = lwb_test(L, index, &lwb_tree_noun);
+    char file[64];
+    const char *schema = record_file(given ? given->node : NULL, file, sizeof file);
+    const char *path = lwb_push_out_path(L, file, "job:write");
     lwb_tree *record = lwb_new_tree(L);
-    lw_add_text(record->root, "schema", "linewright/results/1", &err);
+    lw_add_text(record->root, "schema", schema, &err);
     lua_getiuservalue(L, 1, LWB_JOB_TITLE);
     lw_add_text(record->root, "title", lua_tostring(L, -1), &err);
     lua_pop(L, 1);

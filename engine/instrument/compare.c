@@ -138,8 +138,7 @@ static void compare_aberrations(comparison *c, const lw_calibration *before, con
         }
 }
 
-/* Centroid minus top, deg, and its u by central differences over the profile's parameters. */
-static lw_quantity asymmetry(const lw_width_function *profile, double angle)
+lw_quantity lw_compare_asymmetry(const lw_width_function *profile, double angle)
 {
     lw_width_figure figure;
     double slope[LW_WIDTH_PARAMETERS] = {0}, variance = 0;
@@ -186,19 +185,17 @@ static void compare_at(comparison *c, const lw_calibration *before, const lw_cal
                  lw_quantity_of(is.breadth_deg, is.u_breadth, "deg"), tolerances->breadth_percent / 100 * was.breadth_deg,
                  true, err);
     snprintf(name, sizeof name, "asymmetry_%s", where);
-    add_quantity(c, name, "the asymmetry (centroid minus top)", angle, asymmetry(&before->profile, angle),
-                 asymmetry(&after->profile, angle), tolerances->asymmetry_deg, true, err);
+    add_quantity(c, name, "the asymmetry (centroid minus top)", angle, lw_compare_asymmetry(&before->profile, angle),
+                 lw_compare_asymmetry(&after->profile, angle), tolerances->asymmetry_deg, true, err);
 }
 
-/* Areas of the lines that both calibrations have: geometric mean of after over before, u from its scatter. */
-static void compare_intensity(comparison *c, const lw_calibration *before, const lw_calibration *after,
-                              const lw_tolerances *tolerances, lw_error *err)
+bool lw_compare_intensity(const lw_calibration *before, const lw_calibration *after, lw_quantity *percent)
 {
     const lw_node *a = lw_node_get(before->record, "lines"), *b = lw_node_get(after->record, "lines");
     const char *name_a = lw_node_text(lw_node_get(before->record, "standard"), "name", "");
     const char *name_b = lw_node_text(lw_node_get(after->record, "standard"), "name", "");
     if (a == NULL || b == NULL || strcmp(name_a, name_b) != 0)
-        return;
+        return false;
     double sum = 0, square = 0;
     size_t n = 0;
     for (const lw_node *was = a->first; was != NULL; was = was->next)
@@ -212,11 +209,15 @@ static void compare_intensity(comparison *c, const lw_calibration *before, const
             n++;
         }
     if (n < 3)
-        return;
+        return false;
     double mean = sum / (double)n, deviation = sqrt(fmax(square / (double)n - mean * mean, 0) / (double)(n - 1));
-    add_quantity(c, "intensity", "the intensity", 0, lw_quantity_of(100, 0, "%"),
-                 lw_quantity_of(100 * exp(mean), 100 * exp(mean) * deviation, "%"), tolerances->intensity_percent, false,
-                 err);
+    *percent = lw_quantity_of(100 * exp(mean), 100 * exp(mean) * deviation, "%");
+    return true;
+}
+
+double lw_compare_angle(double low_deg, double high_deg, int which)
+{
+    return fmin(fmax(round(low_deg + (0.1 + 0.4 * which) * (high_deg - low_deg)), low_deg), high_deg);
 }
 
 /* Eight lines over the common range. */
@@ -318,7 +319,7 @@ lw_status lw_compare(lw_engine *engine, const lw_calibration *before, const lw_c
     static const char *const where[] = {"low", "middle", "high"};
     double angle[3];
     for (int i = 0; i < 3; i++)
-        angle[i] = fmin(fmax(round(low + (0.1 + 0.4 * i) * (high - low)), low), high);
+        angle[i] = lw_compare_angle(low, high, i);
     lw_add_text(record, "schema", schema, err);
     lw_node *verdict = lw_add_text(record, "verdict", "pass", err);
     comparison c = {.arena = record->arena};
@@ -332,7 +333,10 @@ lw_status lw_compare(lw_engine *engine, const lw_calibration *before, const lw_c
     compare_aberrations(&c, before, after, &options->tolerances, err);
     for (int i = 0; i < 3; i++)
         compare_at(&c, before, after, where[i], angle[i], &options->tolerances, err);
-    compare_intensity(&c, before, after, &options->tolerances, err);
+    lw_quantity intensity;
+    if (lw_compare_intensity(before, after, &intensity))
+        add_quantity(&c, "intensity", "the intensity", 0, lw_quantity_of(100, 0, "%"), intensity,
+                     options->tolerances.intensity_percent, false, err);
     if (verdict != NULL)
         verdict->text = verdicts[c.worst];
     if (options->effects && err->status == LW_OK) {
@@ -342,6 +346,7 @@ lw_status lw_compare(lw_engine *engine, const lw_calibration *before, const lw_c
         if (status != LW_OK)
             return status;
         write_spacing(before, after, angle, record, err);
-    }
+    } else
+        lw_add_list(record, "effects", err);
     return err->status;
 }

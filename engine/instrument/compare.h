@@ -35,4 +35,13 @@ lw_status lw_comparable(const lw_calibration *before, const lw_calibration *afte
 lw_status lw_compare(lw_engine *engine, const lw_calibration *before, const lw_calibration *after,
                      const lw_compare_options *options, lw_node *record, lw_error *err);
 
+/* The parts that the history shares. Centroid minus top of the profile at an angle, deg, with its u by central
+ * differences over the profile's parameters. */
+lw_quantity lw_compare_asymmetry(const lw_width_function *profile, double two_theta_deg);
+/* Areas of the lines that both have: geometric mean of after over before, percent, u from the scatter of the lines.
+ * False if the standards differ or fewer than three lines are common. */
+bool lw_compare_intensity(const lw_calibration *before, const lw_calibration *after, lw_quantity *percent);
+/* The low, middle and high angle (which = 0, 1, 2) of a range, deg. */
+double lw_compare_angle(double low_deg, double high_deg, int which);
+
 #endif

@@ -1,0 +1,100 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* calibration:compare(previous, options) and lw.history(calibrations, options). */
+#include "bind/comparison.h"
+
+#include "bind/outputs.h"
+#include "bind/standards.h"
+#include "instrument/compare.h"
+#include "instrument/history.h"
+
+#include <string.h>
+
+/* One calibration as the comparison tells of it. */
+static void describe(lw_node *record, const char *name, const lw_calibration *calibration, lw_error *err)
+{
+    lw_node *group = lw_add_group(record, name, err);
+    lw_add_text(group, "standard", lw_node_text(lw_node_get(calibration->record, "standard"), "name", ""), err);
+    lw_add_text(group, "verdict", calibration->verdict, err);
+    double range[2] = {calibration->valid_low_deg, calibration->valid_high_deg};
+    lw_add_vector(group, "valid_two_theta", range, 2, "deg", err);
+    const char *date = lw_node_text(lw_node_get(calibration->record, "provenance"), "date", NULL);
+    if (date != NULL)
+        lw_add_text(group, "made", date, err);
+    if (calibration->hash[0] != '\0')
+        lw_add_text(group, "sha256", calibration->hash, err);
+}
+
+/* The option `tolerances`: a table, or the path of a Lua literal. */
+static void read_tolerances(lua_State *L, int options, lw_tolerances *tolerances)
+{
+    if (lua_getfield(L, options, "tolerances") == LUA_TSTRING) {
+        lwb_load_literal(L, lua_tostring(L, -1));
+        lua_replace(L, -2);
+    }
+    if (!lua_isnil(L, -1))
+        lwb_options(L, lua_gettop(L), "compare: tolerances", lw_tolerance_table, NULL, tolerances);
+    lua_pop(L, 1);
+}
+
+int lwb_calibration_compare(lua_State *L)
+{
+    static const char *const own[] = {"tolerances", "effects", NULL};
+    lw_error err = LW_ERROR_NONE;
+    lua_settop(L, 3);
+    luaL_checkstack(L, 40, NULL);
+    const lw_calibration *after = lwb_object(L, 1, &lwb_calibration_noun, "calibration:compare");
+    const lw_calibration *before = lwb_object(L, 2, &lwb_calibration_noun, "calibration:compare");
+    lw_compare_options options = lw_compare_defaults();
+    if (!lua_isnil(L, 3)) {
+        lwb_want_table(L, 3, "calibration:compare", "the options");
+        lwb_only_keys(L, 3, "calibration:compare", own);
+        read_tolerances(L, 3, &options.tolerances);
+        if (lua_getfield(L, 3, "effects") != LUA_TNIL) {
+            if (!lua_isboolean(L, -1))
+                return lwb_refuse(L, "give true or false", "calibration:compare: the option 'effects' is a %s",
+                                  lwb_kind(L, -1));
+            options.effects = lua_toboolean(L, -1);
+        }
+        lua_pop(L, 1);
+    }
+    lwb_tree *tree = lwb_new_tree(L);
+    lua_pushvalue(L, 1);
+    lua_setiuservalue(L, -2, 1);
+    lwb_check(L, lw_compare(lwb_engine(L), before, after, &options, tree->root, &err), &err);
+    describe(tree->root, "before", before, &err);
+    describe(tree->root, "after", after, &err);
+    lwb_check(L, LW_OK, &err);
+    return 1;
+}
+
+int lwb_history(lua_State *L)
+{
+    static const char *const keys[] = {"calibration", "label", "after_service", NULL};
+    lw_error err = LW_ERROR_NONE;
+    lua_settop(L, 2);
+    luaL_checkstack(L, 40, NULL);
+    lwb_want_table(L, 1, "history", "the calibrations");
+    lw_history_options options = lw_history_defaults();
+    lwb_options(L, 2, "history", lw_history_option_table, NULL, &options);
+    lua_Integer n = (lua_Integer)lua_rawlen(L, 1);
+    lw_arena *arena = lwb_scratch(L);
+    lw_history_entry *entry = lw_arena_take(arena, (size_t)n, sizeof *entry, &err);
+    lwb_check(L, LW_OK, &err);
+    for (lua_Integer i = 1; i <= n; i++) {
+        lua_rawgeti(L, 1, i);
+        int at = lua_gettop(L);
+        lwb_want_table(L, at, "history", "an entry");
+        lwb_only_keys(L, at, "history", keys);
+        lw_history_entry *into = &entry[i - 1];
+        lua_getfield(L, at, "calibration");
+        into->calibration = lwb_object(L, -1, &lwb_calibration_noun, "history"); /* the list keeps it alive */
+        into->label = lw_arena_text(arena, lwb_field_text(L, at, "label", "history", "calibration"), &err);
+        lua_getfield(L, at, "after_service");
+        into->after_service = lua_toboolean(L, -1);
+        lua_settop(L, at - 1);
+    }
+    lwb_check(L, LW_OK, &err);
+    lwb_tree *tree = lwb_new_tree(L);
+    lwb_check(L, lw_history(lwb_engine(L), entry, (size_t)n, &options, tree->root, &err), &err);
+    return 1;
+}

@@ -1,0 +1,11 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Comparison and history of calibrations, for the noun calibration. */
+#ifndef LW_BIND_COMPARISON_H
+#define LW_BIND_COMPARISON_H
+
+#include "bind/bind.h"
+
+int lwb_calibration_compare(lua_State *L); /* c:compare(previous, { tolerances =, effects = }) */
+int lwb_history(lua_State *L);             /* lw.history({ { calibration =, label =, after_service = }, ... }, { ... }) */
+
+#endif
