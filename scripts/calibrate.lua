@@ -49,7 +49,7 @@ if job.previous then
   local before = lw.load_calibration(job.previous)
   if math.abs(before.radiation.wavelength_nm / instrument.radiation.wavelength_nm - 1) > 1e-6 then
     error(("%s was made with %s, this scan with %s: nothing to compare"):format(
-      job.previous, before.radiation.name, instrument.radiation.name), 0)
+      job.previous, before.radiation.name, instrument.radiation.name))
   end
   changes = {}
   local function compare(quantity, was, is)

@@ -55,7 +55,7 @@ for place, path in ipairs(job.scans) do
   end
 end
 if #rows == 0 then
-  error("no scan of the series could be analysed: " .. failed[1].error, 0)
+  error("no scan of the series could be analysed: " .. failed[1].error)
 end
 table.sort(rows, function(a, b) return a.milling_time_h < b.milling_time_h end)
 job:write_csv("series.csv", rows)
