@@ -9,6 +9,8 @@
 
 #define LW_BACKGROUND_MOST 44
 
+enum { LW_WIDTHS_AUTO, LW_WIDTHS_FREE, LW_WIDTHS_SMOOTH }; /* lw_fit_options.widths */
+
 typedef struct lw_fit_state {
     lw_engine *engine;
     lw_arena scratch;              /* freed at the end of the fit */
@@ -41,6 +43,24 @@ typedef struct lw_fit_state {
     double chi2;                   /* of the last iteration */
     lw_width_function shared;      /* the smooth width function, kept when lines get widths of their own */
 } lw_fit_state;
+
+/* The stages in their order. With fit->crop_deg set at its end the fit is to be run again below that angle. */
+lw_status lw__fit_run(lw_fit_state *fit, lw_error *err);
+
+/* One stage: least squares, then weights and windows from the new model, until both agree. */
+lw_status lw__fit_stage(lw_fit_state *fit, int rounds, bool final, lw_error *err);
+
+/* Whether the user holds a parameter (or "positions", "background") of that name. */
+bool lw__fit_is_fixed(const lw_fit_options *options, const char *name);
+
+/* Background scan at the points of this scan, with the variance of one unit of it. */
+lw_status lw__fit_take_background_scan(lw_fit_state *fit, lw_error *err);
+
+/* Background with `terms` Chebyshev terms; keeps the coefficients there are. */
+lw_status lw__fit_set_background(lw_fit_state *fit, size_t terms, lw_error *err);
+
+/* More background terms while the Bayesian information criterion falls (Schwarz 1978 Ann. Stat. 6, 461). */
+lw_status lw__fit_choose_background(lw_fit_state *fit, lw_error *err);
 
 /* Share of a line's area that lies under its neighbours. */
 double lw_fit_overlap(const lw_fit_state *fit, size_t line);

@@ -1,0 +1,251 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The fit of all lines of a scan, in stages: areas and background; common widths and places; everything with widths
+ * as smooth functions of angle; then, where the data carry it, widths line by line. Each stage is one call of the
+ * same least squares with other parameters held. */
+#include "line/fit_state.h"
+
+#include <math.h>
+#include <string.h>
+
+/* Width parameters that the lines can carry: no more than there are visible lines. */
+static void choose_globals(lw_fit_state *fit, double fwhm)
+{
+    lw_model *model = &fit->model;
+    bool sample = fit->options->instrument != NULL;
+    size_t visible = 0;
+    double secant = 0;
+    for (size_t k = 0; k < fit->n; k++)
+        if (fit->start[k].visible) {
+            double t = tan(fit->position[k] * M_PI / 360);
+            secant += sqrt(1 + t * t);
+            visible++;
+        }
+    if (visible == 0)
+        visible = 1;
+    secant = secant > 0 ? secant / (double)visible : 1;
+    bool gauss = !model->shape->held[0] || !model->shape->is_voigt;
+    bool lorentz = !model->shape->held[1] || !model->shape->is_voigt;
+    static const int of_sample[] = {LW_P, LW_Y, LW_U, LW_X}, of_standard[] = {LW_W, LW_Y, LW_U, LW_X, LW_V};
+    const int *order = sample ? of_sample : of_standard;
+    size_t count = sample ? 4 : 5;
+    size_t n = 0;
+    for (size_t i = 0; i < count; i++) {
+        bool is_lorentz = order[i] >= LW_X;
+        if ((is_lorentz && !lorentz) || (!is_lorentz && !gauss))
+            continue;
+        if ((i >= 2 && visible < 3) || (i == 4 && visible < 5))
+            continue;
+        /* V is the mark of a monochromator's dispersion; under the flat-specimen geometry of a tube it only takes up
+         * what the axial divergence leaves */
+        if (order[i] == LW_V && fit->options->axial == LW_AXIAL_SOLLER)
+            continue;
+        bool both = gauss && lorentz;
+        double part = both ? 0.6 : 1;
+        model->global[n] = (lw_global){.parameter = order[i]};
+        fit->global[n] = 0;
+        if (order[i] == LW_W)
+            fit->global[n] = part * part * fwhm * fwhm;
+        if (order[i] == LW_P)
+            fit->global[n] = part * part * fwhm * fwhm / (secant * secant);
+        if (order[i] == LW_Y)
+            fit->global[n] = part * fwhm / secant;
+        fit->global_lower[n] = order[i] == LW_V ? -INFINITY : 0;
+        fit->hold_global[n] = false;
+        n++;
+    }
+    /* at zero their derivatives vanish, so they start at usual values; specimen and slit length can't be told apart
+     * by one standard, and move together */
+    int axial = sample ? LW_AXIAL_NONE : fit->options->axial;
+    for (int i = 0; i < (axial == LW_AXIAL_NONE ? 0 : axial == LW_AXIAL_FINGER ? 1 : 2); i++) {
+        model->global[n] = (lw_global){.parameter = LW_AXIAL_1 + i, .tied = axial == LW_AXIAL_FINGER};
+        fit->global[n] = axial == LW_AXIAL_FINGER ? 0.025 : 0.04;
+        fit->global_lower[n] = 1e-4;
+        fit->hold_global[n] = false;
+        n++;
+    }
+    model->n_globals = n;
+}
+
+double lw_fit_overlap(const lw_fit_state *fit, size_t line)
+{
+    const lw_model *model = &fit->model;
+    double variance, lorentz, share = 0, sum = 0;
+    lw_model_widths(model, fit->p, line, &variance, &lorentz);
+    double gauss = sqrt(variance), width = lw_voigt_fwhm(gauss, lorentz);
+    for (int i = -30; i <= 30; i++) {
+        double x = fit->position[line] + 0.1 * i * width;
+        double own = fabs(fit->area[line]) * lw_voigt(x - fit->position[line], gauss, lorentz), others = 0;
+        for (size_t k = 0; k < fit->n; k++) {
+            if (k == line || fabs(fit->position[k] - x) > 12 * width + 1)
+                continue;
+            double v, l;
+            lw_model_widths(model, fit->p, k, &v, &l);
+            others += fabs(fit->area[k]) * lw_voigt(x - fit->position[k], sqrt(v), l);
+        }
+        if (own + others > 0) {
+            share += own * others / (own + others);
+            sum += own;
+        }
+    }
+    return sum > 0 ? share / sum : 1;
+}
+
+/* Where three lines in a row lie for three tenths or more under their neighbours, the data tell neither their widths nor
+ * their background: 0 if nowhere, else an angle in the gap before them. */
+static double overlap_begins(const lw_fit_state *fit)
+{
+    size_t run = 0;
+    for (size_t k = 3; k < fit->n; k++) {
+        run = lw_fit_overlap(fit, k) > 0.3 ? run + 1 : 0;
+        if (run < 3)
+            continue;
+        /* cut in a gap of two widths at least, or the last line kept would lose its neighbour and take its area */
+        for (size_t j = k - 2; j < fit->n; j++) {
+            double variance, lorentz, gap = fit->position[j] - fit->position[j - 1];
+            lw_model_widths(&fit->model, fit->p, j, &variance, &lorentz);
+            if (gap > 2 * lw_voigt_fwhm(sqrt(variance), lorentz))
+                return fit->position[j - 1] + 0.55 * gap;
+        }
+        return 0;
+    }
+    return 0;
+}
+
+/* From smooth widths to each line's own, where the data carry them. */
+static lw_status free_widths(lw_fit_state *fit, lw_error *err)
+{
+    lw_model *model = &fit->model;
+    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
+    double *u_area = lw_arena_take(&fit->scratch, fit->n, sizeof *u_area, err);
+    if (u_area == NULL)
+        return LW_OUT_OF_MEMORY;
+    lw_status status = lw_fit_survey(fit, u_area, err);
+    if (status != LW_OK)
+        return status;
+    bool automatic = fit->options->widths == LW_WIDTHS_AUTO;
+    for (size_t k = 0; k < fit->n; k++) {
+        double significance = fit->area[k] / u_area[k], overlap = lw_fit_overlap(fit, k);
+        fit->hold_local[k] = significance < (automatic ? 20 : 4) || (automatic && overlap > 0.3);
+        if (significance < 3 || overlap > 0.75)
+            fit->hold_position[k] = true;
+        double variance, lorentz;
+        lw_model_widths(model, fit->p, k, &variance, &lorentz);
+        if (shape->is_voigt) {
+            double nominal = model->line[k].nominal_deg;
+            fit->local[k][0] = fmax(variance - lw_width_gauss_variance(model->instrument, nominal, NULL), 0);
+            fit->local[k][1] = fmax(lorentz - lw_width_lorentz(model->instrument, nominal, NULL), 0);
+        } else
+            shape->start(lw_voigt_fwhm(sqrt(variance), lorentz), fit->local[k]);
+    }
+    /* only the axial length stays common */
+    size_t n = 0;
+    for (size_t i = 0; i < model->n_globals; i++)
+        if (model->global[i].parameter >= LW_AXIAL_1 && shape->is_voigt) {
+            model->global[n] = model->global[i];
+            fit->global[n] = fit->global[i];
+            fit->global_lower[n] = fit->global_lower[i];
+            fit->hold_global[n] = fit->hold_global[i];
+            n++;
+        }
+    model->n_globals = n;
+    model->shape = shape;
+    model->n_local = (size_t)shape->n_local;
+    status = lw_model_prepare(model, &fit->scratch, err);
+    if (status == LW_OK)
+        status = lw__fit_stage(fit, 6, true, err);
+    return status;
+}
+
+/* The stages in their order. */
+lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
+{
+    lw_model *model = &fit->model;
+    const lw_scan *scan = fit->scan;
+    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
+    double span = scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0], explained;
+    double *background = lw_arena_take(&fit->scratch, scan->n, sizeof *background, err);
+    if (background == NULL)
+        return LW_OUT_OF_MEMORY;
+    lw_status status = lw_start_background(scan, fmin(4, span / 15), background, &fit->scratch, err);
+    if (status == LW_OK)
+        status = lw_start_lines(scan, background, fit->options->search_deg, fit->start, fit->n, &explained,
+                                &fit->scratch, err);
+    if (status != LW_OK)
+        return status;
+    size_t visible = 0;
+    for (size_t k = 0; k < fit->n; k++)
+        visible += fit->start[k].visible;
+    if (visible == 0 || explained < 0.3)
+        return lw_fail_at(err, LW_NOT_SUPPORTED, scan->file, 0,
+                          "is it the right standard or material, and the right radiation?",
+                          "the lines of the scan are not where the reflections are expected (%zu of %zu reflections "
+                          "seen, %.0f %% of the strong peaks explained)",
+                          visible, fit->n, 100 * explained);
+    double fwhm = 0;
+    size_t counted = 0;
+    for (size_t k = 0; k < fit->n; k++)
+        if (fit->start[k].visible) {
+            fwhm += fit->start[k].fwhm_deg;
+            counted++;
+        }
+    fwhm /= (double)counted;
+    for (size_t k = 0; k < fit->n; k++) {
+        fit->position[k] = fit->start[k].position_deg;
+        fit->area[k] = 2 * fit->start[k].height * fit->start[k].fwhm_deg;
+        fit->hold_position[k] = true;
+    }
+    model->n_lines = fit->n;
+    model->shape = shape->is_voigt ? shape : lw_line_shape_list[0];
+    model->n_local = 0;
+    for (size_t k = 0; k < fit->n; k++)
+        model->line[k].nominal_deg = fit->start[k].position_deg;
+    choose_globals(fit, fwhm);
+    size_t terms = fit->options->background_terms > 0 ? (size_t)fit->options->background_terms
+                                                       : (span > 60 ? 6 : span > 15 ? 4 : 2);
+    fit->background[0] = background[scan->n / 2];
+    status = lw__fit_set_background(fit, terms, err);
+    if (status == LW_OK)
+        status = lw_model_prepare(model, &fit->scratch, err);
+    if (status != LW_OK)
+        return status;
+    lw_fit_weigh(fit, false);
+    if (lw__fit_is_fixed(fit->options, "background"))
+        return lw_fail(err, LW_BAD_ARGUMENT, "give background = a scan of the holder instead",
+                       "the background can't be held before it is known");
+
+    lw_engine_progress(fit->engine, "line fit", 0.1);
+    for (size_t i = 0; i < model->n_globals; i++)
+        fit->hold_global[i] = true;
+    status = lw__fit_stage(fit, 1, false, err); /* areas and background: linear */
+    lw_engine_progress(fit->engine, "line fit", 0.25);
+    for (size_t k = 0; k < fit->n; k++)
+        fit->hold_position[k] = !fit->start[k].visible;
+    for (size_t i = 0; i < model->n_globals; i++)
+        fit->hold_global[i] = model->global[i].parameter != LW_W && model->global[i].parameter != LW_P &&
+                              model->global[i].parameter != LW_Y;
+    if (status == LW_OK)
+        status = lw__fit_stage(fit, 2, false, err);
+    bool whole_scan = !(fit->options->range[1] > fit->options->range[0]);
+    if (status == LW_OK && whole_scan && (fit->crop_deg = overlap_begins(fit)) > 0)
+        return LW_OK;
+    for (size_t i = 0; i < model->n_globals; i++)
+        fit->hold_global[i] = false;
+    if (status == LW_OK)
+        status = lw__fit_stage(fit, 2, false, err);
+    lw_engine_progress(fit->engine, "line fit", 0.5);
+    if (status == LW_OK)
+        status = lw__fit_choose_background(fit, err);
+    if (status != LW_OK)
+        return status;
+    lw_engine_progress(fit->engine, "line fit", 0.7);
+    bool smooth = fit->options->widths == LW_WIDTHS_SMOOTH && shape->is_voigt;
+    status = lw__fit_stage(fit, smooth ? 6 : 2, smooth, err);
+    if (status == LW_OK && !smooth)
+        status = free_widths(fit, err);
+    if (status == LW_OK && !fit->converged)
+        return lw_fail_at(err, LW_NO_CONVERGENCE, scan->file, 0,
+                          "hold some parameters (fixed), use widths = \"smooth\", or crop the scan with range",
+                          "the line fit did not converge in %zu iterations: %s", fit->iterations, fit->stopped);
+    lw_engine_progress(fit->engine, "line fit", 1);
+    return status;
+}
