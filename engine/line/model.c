@@ -6,6 +6,10 @@
 #include <string.h>
 
 static const double degree = M_PI / 180;
+/* Interpolation from the nodes of a part whose distance from the line is MARGIN times its own length loses less than
+ * 1e-6 of the tail there; a Gaussian is over, or smooth, at CORE times the FWHM. */
+#define MARGIN 1.75
+#define CORE 6
 
 size_t lw_model_row(const lw_model *model, size_t line)
 {
@@ -101,7 +105,7 @@ static void reach_of(const lw_model *model, size_t n_parts, size_t size, double 
     for (size_t i = 0; i < n_parts; i++) {
         size_t last = (i + 1) * size < padded ? (i + 1) * size - 1 : padded - 1;
         double from = model->points.two_theta[i * size], to = model->points.two_theta[last];
-        double margin = fmax(reach, to - from); /* a tail is smooth on the scale of its distance */
+        double margin = fmax(reach, MARGIN * (to - from));
         if (to < low - margin || from > high + margin)
             continue;
         if (*first > i)
@@ -134,6 +138,8 @@ void lw_model_windows(lw_model *model, const double *p, double window)
             spectral = fmax(spectral, node[i].lorentz);
         }
         double reach = window * (width + spectral);
+        reach_of(model, model->n_blocks, LW_BLOCK, own[0] + low, own[0] + high, fmin(window, CORE) * (width + spectral),
+                 &line->core_first, &line->core_end);
         reach_of(model, model->n_blocks, LW_BLOCK, own[0] + low, own[0] + high, reach, &line->near_first,
                  &line->near_end);
         reach_of(model, model->n_bundles, LW_BLOCK * LW_BUNDLE, own[0] + low, own[0] + high, reach, &line->close_first,
@@ -201,4 +207,16 @@ bool lw_model_set_lines(const lw_model *model, const double *p)
             return false; /* a line without any width */
     }
     return true;
+}
+
+lw_status lw_model_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
+{
+#ifdef LW_RUNGS_X86
+    const char *rung = ((const lw_model *)user)->kernel->rung;
+    if (strcmp(rung, "avx512") == 0)
+        return lw_model_evaluate_avx512(user, p, want_normal, normal, err);
+    if (strcmp(rung, "avx2") == 0)
+        return lw_model_evaluate_avx2(user, p, want_normal, normal, err);
+#endif
+    return lw_model_evaluate_plain(user, p, want_normal, normal, err);
 }

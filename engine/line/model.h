@@ -1,10 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The model of a whole scan: background + lines, and its normal equations.
- * A scan is cut into blocks of 64 points, and these are bundled by eight. In the blocks near a line the line is
- * evaluated point by point; further out its tail is evaluated at a few nodes a block and interpolated (all tails of
- * a block together, once), and in bundles far away at a few nodes a bundle. Model and gradient keep every tail; of
- * the normal matrix only the blocks of one far line with another are left out while iterating. No Jacobian is ever
- * stored beyond one bundle.
+ * A scan is cut into blocks of 64 points, and these are bundled by eight. In the core of a line it is evaluated point
+ * by point; further out at a few nodes a block and interpolated, and in bundles far away at a few nodes a bundle.
+ * Model and gradient keep every tail; of the normal matrix only the blocks of one far line with another are left out
+ * while iterating. No Jacobian is ever stored beyond one bundle.
  *
  * Parameters, in this order: for each line position (deg), area (intensity x deg), then n_local shape
  * parameters; then the border: background terms, then globals (width-function parameters). */
@@ -18,7 +17,7 @@
 #include "scan/scan.h"
 
 #define LW_BLOCK 64
-#define LW_FAR_NODES 6
+#define LW_FAR_NODES 8
 #define LW_BUNDLE 8
 #define LW_BUNDLE_NODES 8
 #define LW_COLUMNS (2 + LW_LOCAL_MOST + LW_VOIGT_SHAPES) /* of a line, from one evaluation of it */
@@ -37,8 +36,9 @@ typedef struct lw_model_places {
 
 typedef struct lw_model_line {
     double nominal_deg;          /* where widths and axial divergence are evaluated: the expected 2theta */
-    size_t near_first, near_end; /* blocks evaluated point by point */
-    size_t close_first, close_end; /* bundles evaluated at the nodes of blocks, or nearer */
+    size_t core_first, core_end;   /* blocks evaluated point by point */
+    size_t near_first, near_end;   /* blocks in which all products of the line are taken, from the points */
+    size_t close_first, close_end; /* bundles evaluated at the nodes of blocks, or nearer; else at the bundle's */
     lw_axial_count copies;       /* of the axial divergence */
 } lw_model_line;
 

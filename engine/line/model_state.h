@@ -21,15 +21,10 @@ typedef struct lw_line_state {
 /* Fills model->state and the nodes at p; false where the model does not exist. */
 bool lw_model_set_lines(const lw_model *model, const double *p);
 
-/* Value and derivatives of line k at `count` places from `from` on, at most LW_BLOCK. The columns, `stride` apart:
- * d/d(position), value (per unit area), d/d(local[...]) and, where axial parameters are fitted, d/d(axial). Without
- * slopes only the value is written. near: point by point, with all copies of the axial divergence. */
-void lw_model_columns(const lw_model *model, size_t k, bool near, const lw_model_places *places, size_t from,
-                      size_t count, bool slopes, double *column, size_t stride);
-
-/* Adds a line's share to the columns of the globals: into[q][i], rows `into_stride` apart. */
-void lw_model_add_globals(const lw_model *model, size_t k, const double *column, size_t stride, size_t count,
-                          double *into, size_t into_stride);
+/* The rungs of lw_model_evaluate. All are compiled from model_normal.inc.h; only lanes and machine flags differ. */
+lw_status lw_model_evaluate_plain(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
+lw_status lw_model_evaluate_avx2(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
+lw_status lw_model_evaluate_avx512(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
 
 /* Products of background and weights, which stay the same while the weights do. */
 void lw_model_weigh(lw_model *model);

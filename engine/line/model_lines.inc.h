@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Columns of one line: its value and derivatives at a run of places. */
+/* Columns of one line: its value and derivatives at a run of places. Part of a rung of the model. */
 #include "line/model_state.h"
 
 #include <string.h>
@@ -23,7 +23,10 @@ static bool has_axial_slopes(const lw_model *model)
     return false;
 }
 
-void lw_model_columns(const lw_model *model, size_t k, bool near, const lw_model_places *places, size_t from,
+/* Value and derivatives of line k at `count` places from `from` on, at most LW_BLOCK. The columns, `stride` apart:
+ * d/d(position), value (per unit area), d/d(local[...]) and, where axial parameters are fitted, d/d(axial). Without
+ * slopes only the value is written. near: with all copies of the axial divergence. */
+static void line_columns(const lw_model *model, size_t k, bool near, const lw_model_places *places, size_t from,
                       size_t count, bool slopes, double *column, size_t stride)
 {
     const lw_line_state *line = &model->state[k];
@@ -67,7 +70,8 @@ void lw_model_columns(const lw_model *model, size_t k, bool near, const lw_model
             shape[j][i] *= relative[i];
 }
 
-void lw_model_add_globals(const lw_model *model, size_t k, const double *column, size_t stride, size_t count,
+/* Adds a line's share to the columns of the globals: into[q][i], rows `into_stride` apart. */
+static void add_globals(const lw_model *model, size_t k, const double *column, size_t stride, size_t count,
                           double *into, size_t into_stride)
 {
     const lw_line_state *line = &model->state[k];

@@ -1,10 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* One evaluation of the model: curve, chi-square and normal equations, bundle by bundle and block by block. */
-#include "line/model_state.h"
-#include "numeric/cholesky.h"
+/* Body of one rung of the model's evaluation: curve, chi-square and normal equations, bundle by bundle and block by
+ * block. The includer sets LW_LANES (points done at once) and LW_RUNG_EVALUATE (name of the function). No include
+ * guard: each rung is one translation unit. */
+#include "line/model_lines.inc.h"
+#include "line/model_rows.inc.h"
 
 #include <math.h>
-#include <string.h>
 
 #define CLOSE_NODES (LW_BUNDLE * LW_FAR_NODES)
 
@@ -59,14 +60,12 @@ static bool is_near(const lw_model_line *line, size_t block)
     return block >= line->near_first && block < line->near_end;
 }
 
-/* h[r][column] += sum of scaled x row r, for n rows `stride` apart. */
-static void add_dots(const double *scaled, const double *rows, size_t stride, size_t n, double *h, size_t h_stride)
+static bool is_core(const lw_model_line *line, size_t block)
 {
-    for (size_t r = 0; r < n; r++)
-        h[r * h_stride] += lw_dot(scaled, rows + r * stride, LW_BLOCK);
+    return block >= line->core_first && block < line->core_end;
 }
 
-static double short_dot(const double *a, const double *b, size_t n)
+static inline double short_dot(const double *a, const double *b, size_t n)
 {
     double sum = 0;
     for (size_t i = 0; i < n; i++)
@@ -74,18 +73,27 @@ static double short_dot(const double *a, const double *b, size_t n)
     return sum;
 }
 
-/* Lines close to a bundle at the nodes of its blocks, save those where the line is near. */
+static size_t clamp(size_t value, size_t low, size_t high)
+{
+    return value < low ? low : value > high ? high : value;
+}
+
+/* Line k at the nodes of the bundle's blocks, save those of its core. */
 static void close_tails(const evaluation *e, const bundle *u, size_t k, double *column)
 {
     const lw_model *model = e->model;
     const lw_model_line *line = &model->line[k];
-    size_t ranges[2][2] = {{u->first, line->near_first < u->end ? line->near_first : u->end},
-                           {line->near_end > u->first ? line->near_end : u->first, u->end}};
-    for (int i = 0; i < 2; i++)
-        if (ranges[i][0] < ranges[i][1])
-            lw_model_columns(model, k, false, &model->nodes, ranges[i][0] * LW_FAR_NODES,
-                             (ranges[i][1] - ranges[i][0]) * LW_FAR_NODES, e->want_normal,
-                             column + (ranges[i][0] - u->first) * LW_FAR_NODES, CLOSE_NODES);
+    const size_t edge[6] = {u->first, line->near_first, line->core_first, line->core_end, line->near_end, u->end};
+    static const struct {
+        size_t from, to;
+        bool near;
+    } range[4] = {{0, 1, false}, {1, 2, true}, {3, 4, true}, {4, 5, false}};
+    for (int i = 0; i < 4; i++) {
+        size_t from = clamp(edge[range[i].from], u->first, u->end), to = clamp(edge[range[i].to], u->first, u->end);
+        if (from < to)
+            line_columns(model, k, range[i].near, &model->nodes, from * LW_FAR_NODES, (to - from) * LW_FAR_NODES,
+                             e->want_normal, column + (from - u->first) * LW_FAR_NODES, CLOSE_NODES);
+    }
 }
 
 static void begin_bundle(const evaluation *e, size_t at, bundle *u)
@@ -103,12 +111,12 @@ static void begin_bundle(const evaluation *e, size_t at, bundle *u)
             continue;
         }
         double *column = bundle_column(e, u->n_far);
-        lw_model_columns(model, k, false, &model->bundle_nodes, at * LW_BUNDLE_NODES, LW_BUNDLE_NODES, e->want_normal,
+        line_columns(model, k, false, &model->bundle_nodes, at * LW_BUNDLE_NODES, LW_BUNDLE_NODES, e->want_normal,
                          column, LW_BUNDLE_NODES);
         for (size_t j = 0; j < LW_BUNDLE_NODES; j++)
             u->value[j] += model->state[k].area * column[LW_BUNDLE_NODES + j];
         if (e->want_normal)
-            lw_model_add_globals(model, k, column, LW_BUNDLE_NODES, LW_BUNDLE_NODES, u->global[0], LW_BUNDLE_NODES);
+            add_globals(model, k, column, LW_BUNDLE_NODES, LW_BUNDLE_NODES, u->global[0], LW_BUNDLE_NODES);
         model->far[u->n_far++] = k;
     }
 }
@@ -129,50 +137,55 @@ static void far_tails(const evaluation *e, const bundle *u, block *k)
         }
     for (size_t c = 0; c < u->n_close; c++) {
         size_t line = model->close[c];
-        if (is_near(&model->line[line], k->at))
+        if (is_core(&model->line[line], k->at))
             continue;
         const double *column = close_column(e, c) + k->in_bundle * LW_FAR_NODES;
         for (size_t i = 0; i < LW_FAR_NODES; i++)
             value[i] += model->state[line].area * column[CLOSE_NODES + i];
         if (e->want_normal)
-            lw_model_add_globals(model, line, column, CLOSE_NODES, LW_FAR_NODES, global[0], LW_FAR_NODES);
+            add_globals(model, line, column, CLOSE_NODES, LW_FAR_NODES, global[0], LW_FAR_NODES);
     }
     memset(k->curve, 0, sizeof k->curve);
     memset(k->global, 0, n_global * sizeof k->global[0]);
-    for (size_t j = 0; j < LW_FAR_NODES; j++) {
-        const double *to = k->from_nodes + j * LW_BLOCK;
-        for (size_t i = 0; i < LW_BLOCK; i++)
-            k->curve[i] += value[j] * to[i];
-        for (size_t q = 0; q < n_global; q++)
-            for (size_t i = 0; i < LW_BLOCK; i++)
-                k->global[q][i] += global[q][j] * to[i];
-    }
+    add_rows(value, 1, k->from_nodes, LW_BLOCK, LW_FAR_NODES, k->curve);
+    for (size_t q = 0; q < n_global; q++)
+        add_rows(global[q], 1, k->from_nodes, LW_BLOCK, LW_FAR_NODES, k->global[q]);
 }
 
 static void add_background(const evaluation *e, block *k)
 {
-    for (size_t r = 0; r < e->nb; r++) {
-        const double *basis = e->model->basis + r * e->padded + k->at * LW_BLOCK;
-        double scale = e->p[e->border + r];
-        for (size_t i = 0; i < LW_BLOCK; i++)
-            k->curve[i] += scale * basis[i];
+    add_rows(e->p + e->border, 1, e->model->basis + k->at * LW_BLOCK, e->padded, e->nb, k->curve);
+}
+
+/* Columns of one line from the block's nodes to its points. */
+static void interpolate(const evaluation *e, const block *k, const double *at_nodes, double *column)
+{
+    for (size_t j = 0; j < e->m; j++) {
+        double *to = column + j * LW_BLOCK;
+        memset(to, 0, LW_BLOCK * sizeof *to);
+        add_rows(at_nodes + j * CLOSE_NODES, 1, k->from_nodes, LW_BLOCK, LW_FAR_NODES, to);
     }
 }
 
+/* Lines in their core, point by point; of the other near ones, already in the curve with the tails, the columns. */
 static void add_near_lines(const evaluation *e, const bundle *u, block *k)
 {
     lw_model *model = e->model;
     k->n_near = 0;
     for (size_t c = 0; c < u->n_close; c++) {
         size_t line = model->close[c];
-        if (!is_near(&model->line[line], k->at))
+        bool core = is_core(&model->line[line], k->at);
+        if (!core && !(e->want_normal && is_near(&model->line[line], k->at)))
             continue;
         double *column = near_column(e, k->n_near), area = model->state[line].area;
-        lw_model_columns(model, line, true, &model->points, k->at * LW_BLOCK, LW_BLOCK, e->want_normal, column, LW_BLOCK);
-        for (size_t i = 0; i < LW_BLOCK; i++)
-            k->curve[i] += area * column[LW_BLOCK + i];
-        if (e->want_normal)
-            lw_model_add_globals(model, line, column, LW_BLOCK, LW_BLOCK, k->global[0], LW_BLOCK);
+        if (core) {
+            line_columns(model, line, true, &model->points, k->at * LW_BLOCK, LW_BLOCK, e->want_normal, column,
+                             LW_BLOCK);
+            add_rows(&area, 1, column + LW_BLOCK, LW_BLOCK, 1, k->curve);
+            if (e->want_normal)
+                add_globals(model, line, column, LW_BLOCK, LW_BLOCK, k->global[0], LW_BLOCK);
+        } else
+            interpolate(e, k, close_column(e, c) + k->in_bundle * LW_FAR_NODES, column);
         model->near[k->n_near++] = line;
     }
 }
@@ -187,7 +200,7 @@ static void take_residual(const evaluation *e, block *k)
         residual[i] = k->weight[i] > 0 ? model->y[at + i] - k->curve[i] : 0;
         k->weighted[i] = k->weight[i] * residual[i];
     }
-    e->normal->chi2 += lw_dot(residual, k->weighted, LW_BLOCK);
+    e->normal->chi2 += block_dot(residual, k->weighted);
 }
 
 /* Hands sums at a block's nodes on to the nodes of its bundle. */
@@ -200,13 +213,12 @@ static void hand_on(const block *k, const double *moment, double *of_bundle)
 /* Sums over the block's points against its interpolation columns. */
 static void moments(const block *k, const double *scaled, double *moment)
 {
-    for (size_t j = 0; j < LW_FAR_NODES; j++)
-        moment[j] = lw_dot(scaled, k->from_nodes + j * LW_BLOCK, LW_BLOCK);
+    memset(moment, 0, LW_FAR_NODES * sizeof *moment);
+    add_dots(scaled, k->from_nodes, LW_BLOCK, LW_FAR_NODES, moment, 1);
 }
 
-/* Gradient of one border row, and its products with the lines seen through the block's nodes. */
-static void close_products(const evaluation *e, const bundle *u, const block *k, const double *moment, double *target,
-                           size_t stride)
+/* Products of one row, given by its sums at the block's nodes, with the lines seen through these. */
+static void close_products(const evaluation *e, const bundle *u, const block *k, const double *moment, double *target)
 {
     for (size_t c = 0; c < u->n_close; c++) {
         size_t line = e->model->close[c];
@@ -214,7 +226,7 @@ static void close_products(const evaluation *e, const bundle *u, const block *k,
             continue;
         const double *column = close_column(e, c) + k->in_bundle * LW_FAR_NODES;
         for (size_t j = 0; j < e->m; j++)
-            target[(line * e->m + j) * stride] += short_dot(moment, column + j * CLOSE_NODES, LW_FAR_NODES);
+            target[line * e->m + j] += short_dot(moment, column + j * CLOSE_NODES, LW_FAR_NODES);
     }
 }
 
@@ -226,16 +238,15 @@ static void border_products(const evaluation *e, bundle *u, const block *k)
     const double *basis = model->basis + k->at * LW_BLOCK;
     add_dots(k->weighted, basis, e->padded, e->nb, g + e->border, 1);
     for (size_t r = 0; r < e->nb; r++)
-        close_products(e, u, k, model->basis_moment + (k->at * e->nb + r) * LW_FAR_NODES, h + (e->border + r) * e->n, 1);
+        close_products(e, u, k, model->basis_moment + (k->at * e->nb + r) * LW_FAR_NODES, h + (e->border + r) * e->n);
     for (size_t q = 0; q < e->ng; q++) {
         size_t row = e->border + e->nb + q;
-        g[row] += lw_dot(k->global[q], k->weighted, LW_BLOCK);
-        for (size_t i = 0; i < LW_BLOCK; i++)
-            scaled[i] = k->weight[i] * k->global[q][i];
+        g[row] += block_dot(k->global[q], k->weighted);
+        multiply(k->weight, k->global[q], scaled);
         add_dots(scaled, basis, e->padded, e->nb, h + row * e->n + e->border, 1);
         add_dots(scaled, k->global[0], LW_BLOCK, q + 1, h + row * e->n + e->border + e->nb, 1);
         moments(k, scaled, moment);
-        close_products(e, u, k, moment, h + row * e->n, 1);
+        close_products(e, u, k, moment, h + row * e->n);
         hand_on(k, moment, u->border[q]);
     }
 }
@@ -249,9 +260,8 @@ static void near_products(const evaluation *e, const block *k)
         for (size_t j = 0; j < e->m; j++) {
             const double *column = near_column(e, a) + j * LW_BLOCK;
             size_t row = model->near[a] * e->m + j;
-            g[row] += lw_dot(column, k->weighted, LW_BLOCK);
-            for (size_t i = 0; i < LW_BLOCK; i++)
-                scaled[i] = k->weight[i] * column[i];
+            g[row] += block_dot(column, k->weighted);
+            multiply(k->weight, column, scaled);
             add_dots(scaled, model->basis + k->at * LW_BLOCK, e->padded, e->nb, h + e->border * e->n + row, e->n);
             add_dots(scaled, k->global[0], LW_BLOCK, e->ng, h + (e->border + e->nb) * e->n + row, e->n);
             for (size_t b = 0; b <= a; b++)
@@ -279,14 +289,13 @@ static void far_products(const evaluation *e, bundle *u, const block *k)
     const lw_model *model = e->model;
     double moment[LW_FAR_NODES];
     moments(k, k->weighted, moment);
-    close_products(e, u, k, moment, e->normal->g, 1);
+    close_products(e, u, k, moment, e->normal->g);
     hand_on(k, moment, u->residual);
     if (!model->whole_normal)
         return;
     double square[LW_FAR_NODES][LW_FAR_NODES], scaled[LW_BLOCK], half[LW_FAR_NODES][LW_BUNDLE_NODES] = {{0}};
     for (size_t j = 0; j < LW_FAR_NODES; j++) {
-        for (size_t i = 0; i < LW_BLOCK; i++)
-            scaled[i] = k->weight[i] * k->from_nodes[j * LW_BLOCK + i];
+        multiply(k->weight, k->from_nodes + j * LW_BLOCK, scaled);
         moments(k, scaled, square[j]);
         hand_on(k, square[j], half[j]);
     }
@@ -341,7 +350,7 @@ static void evaluate_block(const evaluation *e, bundle *u, size_t at)
     far_products(e, u, &k);
 }
 
-lw_status lw_model_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
+lw_status LW_RUNG_EVALUATE(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
 {
     lw_model *model = user;
     evaluation e = {.model = model,
