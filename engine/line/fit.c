@@ -68,6 +68,9 @@ static lw_status check_options(const lw_scan *scan, const lw_fit_options *option
                        shape->name);
     if (!shape->is_voigt && options->widths == LW_WIDTHS_SMOOTH)
         return lw_fail(err, LW_BAD_ARGUMENT, "use shape = \"voigt\"", "fit_lines: widths = \"smooth\" needs a Voigt");
+    if (lw__fit_is_fixed(options, "background"))
+        return lw_fail(err, LW_BAD_ARGUMENT, "give background = a scan of the holder instead",
+                       "fit_lines: the background can't be held before it is known");
     if (options->instrument != NULL && options->axial != LW_AXIAL_NONE)
         return lw_fail(err, LW_BAD_ARGUMENT, "leave axial out",
                        "fit_lines: the instrument brings its axial divergence; it can't be refined again");

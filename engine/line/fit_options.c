@@ -39,7 +39,7 @@ const lw_option lw_fit_option_table[] = {
     {"misfit", LW_OPTION_FLAG, "", "true", 0, 0, NULL, AT(misfit),
      "widen all uncertainties when the shape misses the data"},
     {"fixed", LW_OPTION_LIST, "", "", 0, 0, NULL, AT(fixed),
-     "parameters held at their start: U, V, W, P, X, Y, Z, axial 1, axial 2, background, positions"},
+     "parameters held at their start: U, V, W, P, X, Y, Z, axial 1, axial 2, positions"},
     {"instrument", LW_OPTION_NOUN, "calibration", "", 0, 0, NULL, AT(instrument),
      "calibration whose profile is folded into every line"},
     LW_OPTIONS_END};

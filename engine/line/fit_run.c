@@ -156,16 +156,11 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
     return status;
 }
 
-/* The stages in their order. */
-lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
+/* Places, areas and a typical width from the scan alone; refuses a scan whose lines are others. */
+static lw_status start_values(lw_fit_state *fit, double *background, double *typical_fwhm, lw_error *err)
 {
-    lw_model *model = &fit->model;
     const lw_scan *scan = fit->scan;
-    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
     double span = scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0], explained;
-    double *background = lw_arena_take(&fit->scratch, scan->n, sizeof *background, err);
-    if (background == NULL)
-        return LW_OUT_OF_MEMORY;
     lw_status status = lw_start_background(scan, fmin(4, span / 15), background, &fit->scratch, err);
     if (status == LW_OK)
         status = lw_start_lines(scan, background, fit->options->search_deg, fit->start, fit->n, &explained,
@@ -173,77 +168,99 @@ lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
     if (status != LW_OK)
         return status;
     size_t visible = 0;
+    *typical_fwhm = 0;
     for (size_t k = 0; k < fit->n; k++)
-        visible += fit->start[k].visible;
+        if (fit->start[k].visible) {
+            *typical_fwhm += fit->start[k].fwhm_deg;
+            visible++;
+        }
     if (visible == 0 || explained < 0.3)
         return lw_fail_at(err, LW_NOT_SUPPORTED, scan->file, 0,
                           "is it the right standard or material, and the right radiation?",
                           "the lines of the scan are not where the reflections are expected (%zu of %zu reflections "
                           "seen, %.0f %% of the strong peaks explained)",
                           visible, fit->n, 100 * explained);
-    double fwhm = 0;
-    size_t counted = 0;
-    for (size_t k = 0; k < fit->n; k++)
-        if (fit->start[k].visible) {
-            fwhm += fit->start[k].fwhm_deg;
-            counted++;
-        }
-    fwhm /= (double)counted;
+    *typical_fwhm /= (double)visible;
     for (size_t k = 0; k < fit->n; k++) {
         fit->position[k] = fit->start[k].position_deg;
         fit->area[k] = 2 * fit->start[k].height * fit->start[k].fwhm_deg;
         fit->hold_position[k] = true;
+        fit->model.line[k].nominal_deg = fit->start[k].position_deg;
     }
+    return LW_OK;
+}
+
+/* The model with widths as smooth functions, at its starting values. */
+static lw_status start_model(lw_fit_state *fit, lw_error *err)
+{
+    lw_model *model = &fit->model;
+    const lw_scan *scan = fit->scan;
+    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
+    double fwhm, *background = lw_arena_take(&fit->scratch, scan->n, sizeof *background, err);
+    if (background == NULL)
+        return LW_OUT_OF_MEMORY;
+    lw_status status = start_values(fit, background, &fwhm, err);
+    if (status != LW_OK)
+        return status;
     model->n_lines = fit->n;
     model->shape = shape->is_voigt ? shape : lw_line_shape_list[0];
     model->n_local = 0;
-    for (size_t k = 0; k < fit->n; k++)
-        model->line[k].nominal_deg = fit->start[k].position_deg;
     choose_globals(fit, fwhm);
-    size_t terms = fit->options->background_terms > 0 ? (size_t)fit->options->background_terms
-                                                       : (span > 60 ? 6 : span > 15 ? 4 : 2);
+    double span = scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0];
+    size_t terms = (size_t)fit->options->background_terms;
+    if (terms == 0)
+        terms = span > 60 ? 6 : span > 15 ? 4 : 2;
     fit->background[0] = background[scan->n / 2];
     status = lw__fit_set_background(fit, terms, err);
     if (status == LW_OK)
         status = lw_model_prepare(model, &fit->scratch, err);
-    if (status != LW_OK)
-        return status;
-    lw_fit_weigh(fit, false);
-    if (lw__fit_is_fixed(fit->options, "background"))
-        return lw_fail(err, LW_BAD_ARGUMENT, "give background = a scan of the holder instead",
-                       "the background can't be held before it is known");
+    if (status == LW_OK)
+        lw_fit_weigh(fit, false);
+    return status;
+}
 
+/* Holds all width parameters, all but the widest ones, or none. */
+enum { HOLD_ALL, HOLD_FINE, HOLD_NONE };
+static void hold_globals(lw_fit_state *fit, int which)
+{
+    for (size_t i = 0; i < fit->model.n_globals; i++) {
+        int parameter = fit->model.global[i].parameter;
+        bool coarse = parameter == LW_W || parameter == LW_P || parameter == LW_Y;
+        fit->hold_global[i] = which == HOLD_ALL || (which == HOLD_FINE && !coarse);
+    }
+}
+
+lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
+{
+    const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
+    bool smooth = fit->options->widths == LW_WIDTHS_SMOOTH && shape->is_voigt;
+    bool whole_scan = !(fit->options->range[1] > fit->options->range[0]);
+    lw_status status = start_model(fit, err);
     lw_engine_progress(fit->engine, "line fit", 0.1);
-    for (size_t i = 0; i < model->n_globals; i++)
-        fit->hold_global[i] = true;
-    status = lw__fit_stage(fit, 1, false, err); /* areas and background: linear */
+    hold_globals(fit, HOLD_ALL);
+    if (status == LW_OK)
+        status = lw__fit_stage(fit, 1, false, err); /* areas and background: linear */
     lw_engine_progress(fit->engine, "line fit", 0.25);
     for (size_t k = 0; k < fit->n; k++)
         fit->hold_position[k] = !fit->start[k].visible;
-    for (size_t i = 0; i < model->n_globals; i++)
-        fit->hold_global[i] = model->global[i].parameter != LW_W && model->global[i].parameter != LW_P &&
-                              model->global[i].parameter != LW_Y;
+    hold_globals(fit, HOLD_FINE);
     if (status == LW_OK)
         status = lw__fit_stage(fit, 2, false, err);
-    bool whole_scan = !(fit->options->range[1] > fit->options->range[0]);
     if (status == LW_OK && whole_scan && (fit->crop_deg = overlap_begins(fit)) > 0)
         return LW_OK;
-    for (size_t i = 0; i < model->n_globals; i++)
-        fit->hold_global[i] = false;
+    hold_globals(fit, HOLD_NONE);
     if (status == LW_OK)
         status = lw__fit_stage(fit, 2, false, err);
     lw_engine_progress(fit->engine, "line fit", 0.5);
     if (status == LW_OK)
         status = lw__fit_choose_background(fit, err);
-    if (status != LW_OK)
-        return status;
     lw_engine_progress(fit->engine, "line fit", 0.7);
-    bool smooth = fit->options->widths == LW_WIDTHS_SMOOTH && shape->is_voigt;
-    status = lw__fit_stage(fit, smooth ? 6 : 2, smooth, err);
+    if (status == LW_OK)
+        status = lw__fit_stage(fit, smooth ? 6 : 2, smooth, err);
     if (status == LW_OK && !smooth)
         status = free_widths(fit, err);
     if (status == LW_OK && !fit->converged)
-        return lw_fail_at(err, LW_NO_CONVERGENCE, scan->file, 0,
+        return lw_fail_at(err, LW_NO_CONVERGENCE, fit->scan->file, 0,
                           "hold some parameters (fixed), use widths = \"smooth\", or crop the scan with range",
                           "the line fit did not converge in %zu iterations: %s", fit->iterations, fit->stopped);
     lw_engine_progress(fit->engine, "line fit", 1);
