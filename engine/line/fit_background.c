@@ -60,7 +60,7 @@ static size_t most_terms(const lw_fit_state *fit)
 
 lw_status lw__fit_choose_background(lw_fit_state *fit, lw_error *err)
 {
-    if (fit->options->background_terms > 0 || fit->hold_background)
+    if (fit->options->background_terms > 0)
         return LW_OK;
     size_t kept = fit->terms, misses = 0;
     double best = fit->chi2, keep[LW_BACKGROUND_MOST];

@@ -75,7 +75,6 @@ static lw_status pack(lw_fit_state *fit, lw_error *err)
         fit->lower[row] = fit->start[k].expected_deg - 1.5 * fit->options->search_deg;
         fit->upper[row] = fit->start[k].expected_deg + 1.5 * fit->options->search_deg;
         fit->p[row + 1] = fit->area[k];
-        fit->fixed[row + 1] = fit->hold_areas;
         for (size_t j = 0; j < model->n_local; j++) {
             fit->p[row + 2 + j] = fit->local[k][j];
             fit->fixed[row + 2 + j] = fit->hold_local[k] || model->shape->held[j];
@@ -83,10 +82,8 @@ static lw_status pack(lw_fit_state *fit, lw_error *err)
             fit->upper[row + 2 + j] = model->shape->upper[j];
         }
     }
-    for (size_t i = 0; i < model->n_background; i++) {
+    for (size_t i = 0; i < model->n_background; i++)
         fit->p[border + i] = fit->background[i];
-        fit->fixed[border + i] = fit->hold_background;
-    }
     for (size_t i = 0; i < model->n_globals; i++) {
         fit->p[border + model->n_background + i] = fit->global[i];
         fit->fixed[border + model->n_background + i] =

@@ -28,7 +28,7 @@ typedef struct lw_fit_state {
     bool *hold_position, *hold_local; /* [n] */
     double background[LW_BACKGROUND_MOST];
     double global[LW_GLOBALS_MOST], global_lower[LW_GLOBALS_MOST];
-    bool hold_global[LW_GLOBALS_MOST], hold_background, hold_areas;
+    bool hold_global[LW_GLOBALS_MOST];
     size_t terms;                  /* Chebyshev terms */
     double *extra;                 /* background scan at the points, or NULL */
     double *extra_variance;        /* of one unit of it */
