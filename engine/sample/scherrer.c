@@ -143,8 +143,8 @@ static void remark(const lw_breadths *breadths, const lw_generalised_fit *fit, l
         reason = straight.fit.p < CHANCE_OF_3U
                      ? "breadths grow with s, which strain does, and scatter beyond that"
                      : "breadths grow with s, which strain does";
-    snprintf(text, sizeof text, "the lines' sizes disagree (chi-square %.3g, %zu degrees of freedom): %s", fit->chi2,
-             fit->degrees, reason);
+    snprintf(text, sizeof text, "the lines' sizes disagree (chi-square %.3g, %zu degrees of freedom): %s",
+             fit->chi2, fit->degrees, reason);
     lw_add_text(remarks, NULL, text, err);
 }
 
