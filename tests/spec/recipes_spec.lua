@@ -129,6 +129,32 @@ describe("the recipe", function()
     end)
   end)
 
+  describe("calibrate, of a goniometer whose angles go wrong by 0.06 deg to and fro,", function()
+    local function wavy(...)
+      local rows = {}
+      for line in io.lines(before) do
+        local angle, rest = line:match "^([%d.]+)( .*)$"
+        rows[#rows + 1] = angle and ("%.4f%s"):format(angle + 0.06 * math.sin(angle / 5), rest) or line
+      end
+      helper.write(folder .. "/wavy.xy", table.concat(rows, "\n") .. "\n")
+      return recipe("calibrate", "scan=wavy.xy", "standard=lab6-660c", "radiation=Cu Ka", "out=o", ...)
+    end
+    it("ends in 3 under strict=true, and writes all the same", function()
+      local code, out, err = wavy "strict=true"
+      assert.are.equal(3, code)
+      assert.matches("verdict failed: [^\n]*calibration", err)
+      assert.matches("verdict +fail", out)
+      assert.are.equal("fail", record.read(folder .. "/o/calibration.json").verdict)
+      assert.is_true(helper.exists(folder .. "/o/report.html"))
+    end)
+    it("ends in 0 without", function()
+      local code, _, err = wavy()
+      assert.are.equal(0, code, err)
+      assert.matches("verdict failed", err) -- told all the same
+      assert.are.equal("fail", record.read(folder .. "/o/calibration.json").verdict)
+    end)
+  end)
+
   describe("size_strain", function()
     it("writes results.json, report.html and figures, the same twice", function()
       for _, out in ipairs { "one", "two" } do
@@ -207,19 +233,6 @@ describe("the recipe", function()
       ]]):format(before, nickel))
       assert.are.same({ 0, "" }, { code, err })
       assert.are.equal("true\t0\n", out)
-    end)
-
-    it("ends in 3 for a verdict that fails under strict=true, and writes all the same", function()
-      -- a failing verdict, put into the record of a sound calibration's recipe
-      local code, _, err = helper.recipe(folder, [[
-        local lw = require "linewright"
-        local job = lw.recipe { title = "Verdict", inputs = {} }
-        job:check(false, "calibration: fail")
-        job:write { size = lw.quantity { 1, 0.1, "nm" } }
-      ]], { "strict=true", "out=o" })
-      assert.are.equal(3, code)
-      assert.matches("verdict failed: calibration: fail", err)
-      assert.is_true(helper.exists(folder .. "/o/results.json"))
     end)
   end)
 
