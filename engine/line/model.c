@@ -6,9 +6,11 @@
 #include <string.h>
 
 static const double degree = M_PI / 180;
-/* Interpolation from the nodes of a part whose distance from the line is MARGIN times its own length loses less than
- * 1e-6 of the tail there; a Gaussian is over, or smooth, at CORE times the FWHM. */
-#define MARGIN 1.75
+/* Interpolation from the nodes of a part whose distance from the line is this many times its own length loses 1e-7 of
+ * the tail there (5e-8, 1e-7 of a Lorentzian for a block and a bundle); a Gaussian is over, or smooth, at CORE times
+ * the FWHM. */
+#define BLOCK_MARGIN 1.75
+#define BUNDLE_MARGIN 1.25
 #define CORE 6
 
 size_t lw_model_row(const lw_model *model, size_t line)
@@ -97,7 +99,7 @@ static lw_node_recipe recipe_of(const lw_model *model, size_t k, const double ax
 
 /* First and last block or bundle (from, end) of `size` points each that comes within the reach of low..high. */
 static void reach_of(const lw_model *model, size_t n_parts, size_t size, double low, double high, double reach,
-                     size_t *first, size_t *end)
+                     double margin_lengths, size_t *first, size_t *end)
 {
     size_t padded = model->n_blocks * LW_BLOCK;
     *first = n_parts;
@@ -105,7 +107,7 @@ static void reach_of(const lw_model *model, size_t n_parts, size_t size, double 
     for (size_t i = 0; i < n_parts; i++) {
         size_t last = (i + 1) * size < padded ? (i + 1) * size - 1 : padded - 1;
         double from = model->points.two_theta[i * size], to = model->points.two_theta[last];
-        double margin = fmax(reach, MARGIN * (to - from));
+        double margin = fmax(reach, margin_lengths * (to - from));
         if (to < low - margin || from > high + margin)
             continue;
         if (*first > i)
@@ -139,11 +141,11 @@ void lw_model_windows(lw_model *model, const double *p, double window)
         }
         double reach = window * (width + spectral);
         reach_of(model, model->n_blocks, LW_BLOCK, own[0] + low, own[0] + high, fmin(window, CORE) * (width + spectral),
-                 &line->core_first, &line->core_end);
-        reach_of(model, model->n_blocks, LW_BLOCK, own[0] + low, own[0] + high, reach, &line->near_first,
-                 &line->near_end);
-        reach_of(model, model->n_bundles, LW_BLOCK * LW_BUNDLE, own[0] + low, own[0] + high, reach, &line->close_first,
-                 &line->close_end);
+                 BLOCK_MARGIN, &line->core_first, &line->core_end);
+        reach_of(model, model->n_blocks, LW_BLOCK, own[0] + low, own[0] + high, reach, BLOCK_MARGIN,
+                 &line->near_first, &line->near_end);
+        reach_of(model, model->n_bundles, LW_BLOCK * LW_BUNDLE, own[0] + low, own[0] + high, reach, BUNDLE_MARGIN,
+                 &line->close_first, &line->close_end);
     }
 }
 

@@ -18,7 +18,7 @@
 
 #define LW_BLOCK 64
 #define LW_FAR_NODES 8
-#define LW_BUNDLE 8
+#define LW_BUNDLE (LW_BLOCK / LW_FAR_NODES) /* so that the nodes of its blocks are as many as the points of a block */
 #define LW_BUNDLE_NODES 8
 #define LW_COLUMNS (2 + LW_LOCAL_MOST + LW_VOIGT_SHAPES) /* of a line, from one evaluation of it */
 #define LW_GLOBALS_MOST (2 * LW_WIDTH_PARAMETERS)
@@ -62,7 +62,7 @@ typedef struct lw_model {
     size_t n_background;
     const double *basis;       /* [n_background][padded n] */
     double *basis_square;      /* [n_background][n_background]: basis' W basis, lower triangle */
-    double *basis_moment;      /* [n_blocks][n_background][LW_FAR_NODES]: basis' W from_nodes */
+    double *basis_moment;      /* [n_bundles][n_background][LW_BUNDLE][LW_FAR_NODES]: basis' W from_nodes */
     double *bundle_moment;     /* [n_bundles][n_background][LW_BUNDLE_NODES]: the same, handed on to the bundles */
     /* lines */
     size_t n_lines, n_local;

@@ -26,8 +26,10 @@ typedef struct bundle {
     size_t at, first, end;  /* its number and blocks */
     size_t n_far, n_close;  /* lines seen only through the bundle's nodes; others */
     double value[LW_BUNDLE_NODES], global[LW_GLOBALS_MOST][LW_BUNDLE_NODES];
-    double residual[LW_BUNDLE_NODES];                  /* sums of weighted residuals */
-    double border[LW_GLOBALS_MOST][LW_BUNDLE_NODES];   /* sums of weighted columns of the globals */
+    /* sums of weighted residuals and weighted columns of the globals against the interpolation columns: at the nodes
+     * of the blocks, and handed on to the bundle's */
+    double close_residual[CLOSE_NODES], close_global[LW_GLOBALS_MOST][CLOSE_NODES];
+    double residual[LW_BUNDLE_NODES], border[LW_GLOBALS_MOST][LW_BUNDLE_NODES];
     double square[LW_BUNDLE_NODES][LW_BUNDLE_NODES];   /* sums of weighted pairs of interpolation columns */
 } bundle;
 
@@ -88,6 +90,8 @@ static void close_tails(const evaluation *e, const bundle *u, size_t k, double *
         size_t from, to;
         bool near;
     } range[4] = {{0, 1, false}, {1, 2, true}, {3, 4, true}, {4, 5, false}};
+    for (size_t j = 0; j < LW_COLUMNS && u->end - u->first < LW_BUNDLE; j++) /* a short last bundle */
+        memset(column + j * CLOSE_NODES, 0, CLOSE_NODES * sizeof *column);
     for (int i = 0; i < 4; i++) {
         size_t from = clamp(edge[range[i].from], u->first, u->end), to = clamp(edge[range[i].to], u->first, u->end);
         if (from < to)
@@ -206,8 +210,7 @@ static void take_residual(const evaluation *e, block *k)
 /* Hands sums at a block's nodes on to the nodes of its bundle. */
 static void hand_on(const block *k, const double *moment, double *of_bundle)
 {
-    for (size_t j = 0; j < LW_BUNDLE_NODES; j++)
-        of_bundle[j] += short_dot(moment, k->from_bundle + j * LW_FAR_NODES, LW_FAR_NODES);
+    add_node_dots(moment, k->from_bundle, LW_FAR_NODES, LW_BUNDLE_NODES, of_bundle, 1);
 }
 
 /* Sums over the block's points against its interpolation columns. */
@@ -217,36 +220,21 @@ static void moments(const block *k, const double *scaled, double *moment)
     add_dots(scaled, k->from_nodes, LW_BLOCK, LW_FAR_NODES, moment, 1);
 }
 
-/* Products of one row, given by its sums at the block's nodes, with the lines seen through these. */
-static void close_products(const evaluation *e, const bundle *u, const block *k, const double *moment, double *target)
-{
-    for (size_t c = 0; c < u->n_close; c++) {
-        size_t line = e->model->close[c];
-        if (is_near(&e->model->line[line], k->at))
-            continue;
-        const double *column = close_column(e, c) + k->in_bundle * LW_FAR_NODES;
-        for (size_t j = 0; j < e->m; j++)
-            target[line * e->m + j] += short_dot(moment, column + j * CLOSE_NODES, LW_FAR_NODES);
-    }
-}
-
-/* Background and globals: gradient, among themselves, and with the close lines. */
+/* Background and globals: gradient, among themselves, and sums for their products with the lines seen through nodes. */
 static void border_products(const evaluation *e, bundle *u, const block *k)
 {
     const lw_model *model = e->model;
-    double *h = e->normal->h, *g = e->normal->g, scaled[LW_BLOCK], moment[LW_FAR_NODES];
+    double *h = e->normal->h, *g = e->normal->g, scaled[LW_BLOCK];
     const double *basis = model->basis + k->at * LW_BLOCK;
     add_dots(k->weighted, basis, e->padded, e->nb, g + e->border, 1);
-    for (size_t r = 0; r < e->nb; r++)
-        close_products(e, u, k, model->basis_moment + (k->at * e->nb + r) * LW_FAR_NODES, h + (e->border + r) * e->n);
     for (size_t q = 0; q < e->ng; q++) {
         size_t row = e->border + e->nb + q;
         g[row] += block_dot(k->global[q], k->weighted);
         multiply(k->weight, k->global[q], scaled);
         add_dots(scaled, basis, e->padded, e->nb, h + row * e->n + e->border, 1);
         add_dots(scaled, k->global[0], LW_BLOCK, q + 1, h + row * e->n + e->border + e->nb, 1);
+        double *moment = u->close_global[q] + k->in_bundle * LW_FAR_NODES;
         moments(k, scaled, moment);
-        close_products(e, u, k, moment, h + row * e->n);
         hand_on(k, moment, u->border[q]);
     }
 }
@@ -283,13 +271,12 @@ static void own_products(const evaluation *e, size_t line, const double *column,
         }
 }
 
-/* Lines seen through nodes: gradient, and their own blocks where these are wanted. */
+/* Lines seen through nodes: sums for the gradient, and their own blocks where these are wanted. */
 static void far_products(const evaluation *e, bundle *u, const block *k)
 {
     const lw_model *model = e->model;
-    double moment[LW_FAR_NODES];
+    double *moment = u->close_residual + k->in_bundle * LW_FAR_NODES;
     moments(k, k->weighted, moment);
-    close_products(e, u, k, moment, e->normal->g);
     hand_on(k, moment, u->residual);
     if (!model->whole_normal)
         return;
@@ -309,21 +296,42 @@ static void far_products(const evaluation *e, bundle *u, const block *k)
                          LW_FAR_NODES);
 }
 
-/* What was summed over the bundle's points, for the lines seen only through its nodes. */
-static void end_bundle(const evaluation *e, const bundle *u)
+/* Gradient and border products of the lines seen through the nodes of blocks; near blocks were taken from the points. */
+static void end_close(const evaluation *e, const bundle *u)
 {
     const lw_model *model = e->model;
-    double *h = e->normal->h, *g = e->normal->g;
+    const double *of_basis = model->basis_moment + u->at * e->nb * CLOSE_NODES;
+    for (size_t c = 0; c < u->n_close; c++) {
+        const lw_model_line *line = &model->line[model->close[c]];
+        size_t from = clamp(line->near_first, u->first, u->end), to = clamp(line->near_end, u->first, u->end);
+        if (from == u->first && to == u->end)
+            continue;
+        for (size_t j = 0; j < e->m; j++) {
+            double *column = close_column(e, c) + j * CLOSE_NODES;
+            size_t row = model->close[c] * e->m + j;
+            double *h = e->normal->h + e->border * e->n + row;
+            if (from < to)
+                memset(column + (from - u->first) * LW_FAR_NODES, 0, (to - from) * LW_FAR_NODES * sizeof *column);
+            add_dots(column, u->close_residual, CLOSE_NODES, 1, e->normal->g + row, 1);
+            add_dots(column, of_basis, CLOSE_NODES, e->nb, h, e->n);
+            add_dots(column, u->close_global[0], CLOSE_NODES, e->ng, h + e->nb * e->n, e->n);
+        }
+    }
+}
+
+/* The same of the lines seen only through the bundle's nodes. */
+static void end_far(const evaluation *e, const bundle *u)
+{
+    const lw_model *model = e->model;
     const double *of_basis = model->bundle_moment + u->at * e->nb * LW_BUNDLE_NODES;
     for (size_t f = 0; f < u->n_far; f++) {
         for (size_t j = 0; j < e->m; j++) {
             const double *column = bundle_column(e, f) + j * LW_BUNDLE_NODES;
             size_t row = model->far[f] * e->m + j;
-            g[row] += short_dot(u->residual, column, LW_BUNDLE_NODES);
-            for (size_t r = 0; r < e->nb; r++)
-                h[(e->border + r) * e->n + row] += short_dot(of_basis + r * LW_BUNDLE_NODES, column, LW_BUNDLE_NODES);
-            for (size_t q = 0; q < e->ng; q++)
-                h[(e->border + e->nb + q) * e->n + row] += short_dot(u->border[q], column, LW_BUNDLE_NODES);
+            double *h = e->normal->h + e->border * e->n + row;
+            add_node_dots(column, u->residual, LW_BUNDLE_NODES, 1, e->normal->g + row, 1);
+            add_node_dots(column, of_basis, LW_BUNDLE_NODES, e->nb, h, e->n);
+            add_node_dots(column, u->border[0], LW_BUNDLE_NODES, e->ng, h + e->nb * e->n, e->n);
         }
         if (model->whole_normal)
             own_products(e, model->far[f], bundle_column(e, f), LW_BUNDLE_NODES, u->square[0], LW_BUNDLE_NODES);
@@ -378,8 +386,10 @@ lw_status LW_RUNG_EVALUATE(void *user, const double *p, bool want_normal, lw_nor
         begin_bundle(&e, s, &u);
         for (size_t b = u.first; b < u.end; b++)
             evaluate_block(&e, &u, b);
-        if (want_normal)
-            end_bundle(&e, &u);
+        if (want_normal) {
+            end_close(&e, &u);
+            end_far(&e, &u);
+        }
     }
     if (!isfinite(normal->chi2))
         normal->chi2 = INFINITY;

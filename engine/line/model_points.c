@@ -119,7 +119,7 @@ lw_status lw_model_points(lw_model *model, const lw_scan *scan, size_t terms, bo
     model->weight = lw_arena_take(arena, padded, sizeof(double), err);
     model->curve = lw_arena_take(arena, padded, sizeof(double), err);
     model->basis_square = lw_arena_take(arena, n_background * n_background, sizeof(double), err);
-    model->basis_moment = lw_arena_take(arena, blocks * n_background * LW_FAR_NODES, sizeof(double), err);
+    model->basis_moment = lw_arena_take(arena, bundles * n_background * LW_BLOCK, sizeof(double), err);
     model->bundle_moment = lw_arena_take(arena, bundles * n_background * LW_BUNDLE_NODES, sizeof(double), err);
     if (!y || !basis || !from_nodes || !from_bundle || !model->weight || !model->curve || !model->basis_square ||
         !model->basis_moment || !model->bundle_moment || take_places(&model->points, padded, arena, err) != LW_OK ||
@@ -156,7 +156,8 @@ void lw_model_weigh(lw_model *model)
     for (size_t b = 0; b < model->n_blocks; b++) {
         const double *weight = model->weight + b * LW_BLOCK, *from_nodes = model->from_nodes + b * LW_FAR_NODES * LW_BLOCK;
         for (size_t r = 0; r < nb; r++) {
-            double scaled[LW_BLOCK], *moment = model->basis_moment + (b * nb + r) * LW_FAR_NODES;
+            double scaled[LW_BLOCK];
+            double *moment = model->basis_moment + (b / LW_BUNDLE * nb + r) * LW_BLOCK + b % LW_BUNDLE * LW_FAR_NODES;
             double *of_bundle = model->bundle_moment + (b / LW_BUNDLE * nb + r) * LW_BUNDLE_NODES;
             for (size_t i = 0; i < LW_BLOCK; i++)
                 scaled[i] = weight[i] * model->basis[r * padded + b * LW_BLOCK + i];

@@ -32,28 +32,68 @@ static inline double block_dot(const double *a, const double *b)
     return sum_of(even + odd);
 }
 
-/* h[r h_stride] += sum of a x row r over a block, for n rows `stride` apart; four at once, so that a is loaded once
- * for them. */
-static inline void add_dots(const double *a, const double *rows, size_t stride, size_t n, double *h, size_t h_stride)
+/* The sums of four vectors, by pairs, added to h. */
+static inline void add_sums(lanes a, lanes b, lanes c, lanes d, double *h, size_t stride)
+{
+    double sum[4];
+#if LW_LANES == 2
+    lanes ab = __builtin_shufflevector(a, b, 0, 2) + __builtin_shufflevector(a, b, 1, 3);
+    lanes cd = __builtin_shufflevector(c, d, 0, 2) + __builtin_shufflevector(c, d, 1, 3);
+    memcpy(sum, &ab, sizeof ab);
+    memcpy(sum + 2, &cd, sizeof cd);
+#elif LW_LANES == 4
+    lanes ab = __builtin_shufflevector(a, b, 0, 4, 2, 6) + __builtin_shufflevector(a, b, 1, 5, 3, 7);
+    lanes cd = __builtin_shufflevector(c, d, 0, 4, 2, 6) + __builtin_shufflevector(c, d, 1, 5, 3, 7);
+    lanes all = __builtin_shufflevector(ab, cd, 0, 1, 4, 5) + __builtin_shufflevector(ab, cd, 2, 3, 6, 7);
+    memcpy(sum, &all, sizeof all);
+#else
+    lanes ab = __builtin_shufflevector(a, b, 0, 8, 2, 10, 4, 12, 6, 14) +
+               __builtin_shufflevector(a, b, 1, 9, 3, 11, 5, 13, 7, 15);
+    lanes cd = __builtin_shufflevector(c, d, 0, 8, 2, 10, 4, 12, 6, 14) +
+               __builtin_shufflevector(c, d, 1, 9, 3, 11, 5, 13, 7, 15);
+    lanes half = __builtin_shufflevector(ab, cd, 0, 1, 8, 9, 4, 5, 12, 13) +
+                 __builtin_shufflevector(ab, cd, 2, 3, 10, 11, 6, 7, 14, 15);
+    half += __builtin_shufflevector(half, half, 4, 5, 6, 7, 0, 1, 2, 3);
+    memcpy(sum, &half, sizeof sum);
+#endif
+    for (size_t i = 0; i < 4; i++)
+        h[i * stride] += sum[i];
+}
+
+/* h[r h_stride] += sum of a x row r over `length` (8 or 64) numbers, for n rows `stride` apart; four at once, so that
+ * a is loaded once for them. */
+static inline void add_long_dots(size_t length, const double *a, const double *rows, size_t stride, size_t n, double *h,
+                                 size_t h_stride)
 {
     size_t fours = n / 4 * 4;
     for (size_t r = 0; r < fours; r += 4) {
         const double *row = rows + r * stride;
         lanes s0 = {0}, s1 = {0}, s2 = {0}, s3 = {0};
-        for (size_t i = 0; i < LW_BLOCK; i += LW_LANES) {
+        for (size_t i = 0; i < length; i += LW_LANES) {
             lanes left = at(a + i);
             s0 += left * at(row + i);
             s1 += left * at(row + stride + i);
             s2 += left * at(row + 2 * stride + i);
             s3 += left * at(row + 3 * stride + i);
         }
-        h[r * h_stride] += sum_of(s0);
-        h[(r + 1) * h_stride] += sum_of(s1);
-        h[(r + 2) * h_stride] += sum_of(s2);
-        h[(r + 3) * h_stride] += sum_of(s3);
+        add_sums(s0, s1, s2, s3, h + r * h_stride, h_stride);
     }
-    for (size_t r = fours; r < n; r++)
-        h[r * h_stride] += block_dot(a, rows + r * stride);
+    for (size_t r = fours; r < n; r++) {
+        lanes sum = {0};
+        for (size_t i = 0; i < length; i += LW_LANES)
+            sum += at(a + i) * at(rows + r * stride + i);
+        h[r * h_stride] += sum_of(sum);
+    }
+}
+
+static inline void add_dots(const double *a, const double *rows, size_t stride, size_t n, double *h, size_t h_stride)
+{
+    add_long_dots(LW_BLOCK, a, rows, stride, n, h, h_stride);
+}
+
+static inline void add_node_dots(const double *a, const double *rows, size_t stride, size_t n, double *h, size_t h_stride)
+{
+    add_long_dots(LW_BUNDLE_NODES, a, rows, stride, n, h, h_stride);
 }
 
 /* to += sum over n rows of factor[r f_stride] x row r. */
