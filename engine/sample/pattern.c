@@ -17,9 +17,16 @@ size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line)
     return LW_PATTERN_BACKGROUND + pattern->n_background + 2 * line;
 }
 
+lw_spheres lw_pattern_spheres(const double *p)
+{
+    double sigma = p[LW_PATTERN_SIGMA];
+    return (lw_spheres){1.5 * exp(-2.5 * sigma * sigma) / p[LW_PATTERN_INVERSE_SIZE], sigma};
+}
+
 static double s_of(const lw_pattern *pattern, double two_theta_deg)
 {
-    return 2 * sin(two_theta_deg * degree / 2) / lw_radiation_wavelength(&pattern->profiles->lines->radiation);
+    return 2 * sin(two_theta_deg * degree / 2) /
+           lw_radiation_wavelength(&pattern->profiles->lines->radiation);
 }
 
 static double *take(lw_arena *arena, size_t n, lw_error *err)
@@ -27,8 +34,8 @@ static double *take(lw_arena *arena, size_t n, lw_error *err)
     return lw_arena_take(arena, n, sizeof(double), err);
 }
 
-/* Step and number of lengths. Half a period in s holds 20 of the largest breadth; the lengths end where the narrowest
- * sample line would have died (Voigt coefficient 1e-7), with a margin for the fit to move. */
+/* Step and number of lengths. Half a period in s holds 20 of the largest breadth; the lengths end where the
+ * narrowest sample line would have died (Voigt coefficient 1e-7), with a margin for the fit to move. */
 static void choose_lengths(lw_pattern *pattern)
 {
     double widest = 0, longest = 0;
@@ -37,8 +44,10 @@ static void choose_lengths(lw_pattern *pattern)
         const lw_line *line = profile->line;
         double cosine = cos(line->two_theta.value * degree / 2);
         double per_degree = degree * cosine / lw_radiation_wavelength(&pattern->profiles->lines->radiation);
-        double variance = lw_width_gauss_variance(pattern->profiles->lines->instrument.value, line->nominal_deg, NULL);
-        double lorentz = lw_width_lorentz(pattern->profiles->lines->instrument.value, line->nominal_deg, NULL);
+        double variance =
+            lw_width_gauss_variance(pattern->profiles->lines->instrument.value, line->nominal_deg, NULL);
+        double lorentz =
+            lw_width_lorentz(pattern->profiles->lines->instrument.value, line->nominal_deg, NULL);
         variance = (fmax(variance, 0) + 0.5 * line->own_variance_deg2) * per_degree * per_degree;
         lorentz = (fmax(lorentz, 0) + 0.7 * line->own_lorentz_deg) * per_degree;
         widest = fmax(widest, line->breadth.value * per_degree);
@@ -67,7 +76,8 @@ lw_status lw_pattern_instrument(lw_pattern *pattern, const lw_width_function *in
         lw_pattern_line *line = &pattern->line[k];
         double variance, lorentz;
         size_t n = lw_line_all_nodes(&lines, line->line, true, node, &variance, &lorentz);
-        double per = degree * cos(line->line->two_theta.value * degree / 2) / lw_radiation_wavelength(&lines.radiation);
+        double per = degree * cos(line->line->two_theta.value * degree / 2) /
+                     lw_radiation_wavelength(&lines.radiation);
         line->kink = 0;
         memset(line->g, 0, 2 * pattern->n_lengths * sizeof(double));
         for (size_t i = 0; i < n; i++) {
@@ -109,21 +119,26 @@ static double direction_of(const lw_material *material, const lw_reflection *r)
     return (h * k + h * l + k * l) / ((h + k + l) * (h + k + l));
 }
 
-lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles, lw_arena *arena,
-                           lw_error *err)
+lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles,
+                           lw_arena *arena, lw_error *err)
 {
     const lw_lines *lines = profiles->lines;
     const lw_scan *scan = lines->scan;
-    *pattern = (lw_pattern){.engine = engine, .profiles = profiles, .n = scan->n, .n_lines = lines->n,
-                            .n_background = lines->n_background, .strain = &lw_strain_constant};
+    *pattern = (lw_pattern){.engine = engine,
+                            .profiles = profiles,
+                            .n = scan->n,
+                            .n_lines = lines->n,
+                            .n_background = lines->n_background,
+                            .strain = &lw_strain_constant};
     pattern->n_parameters = lw_pattern_position_row(pattern, lines->n);
     choose_lengths(pattern);
     size_t n = pattern->n, m = pattern->n_lengths, f = pattern->n_fft;
     double **array[] = {&pattern->s, &pattern->factor, &pattern->weight, &pattern->curve, &pattern->of_lines};
     for (size_t i = 0; i < sizeof array / sizeof *array; i++)
         *array[i] = take(arena, n, err);
-    double **by_length[] = {&pattern->size, &pattern->size_slopes[0], &pattern->size_slopes[1], &pattern->displacement,
-                            &pattern->displacement_slopes[0], &pattern->displacement_slopes[1]};
+    double **by_length[] = {
+        &pattern->size,         &pattern->size_slopes[0],         &pattern->size_slopes[1],
+        &pattern->displacement, &pattern->displacement_slopes[0], &pattern->displacement_slopes[1]};
     for (size_t i = 0; i < sizeof by_length / sizeof *by_length; i++)
         *by_length[i] = take(arena, m, err);
     for (size_t i = 0; i < 1 + LW_PATTERN_SHAPES; i++)
@@ -143,8 +158,8 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
     double low = scan->two_theta_deg[0], high = scan->two_theta_deg[n - 1];
     double term[64];
     if (pattern->n_background > 64)
-        return lw_fail(err, LW_NOT_SUPPORTED, "fit with fewer background terms", "%zu background terms are too many",
-                       pattern->n_background);
+        return lw_fail(err, LW_NOT_SUPPORTED, "fit with fewer background terms",
+                       "%zu background terms are too many", pattern->n_background);
     for (size_t i = 0; i < n; i++) {
         pattern->s[i] = s_of(pattern, scan->two_theta_deg[i]);
         pattern->factor[i] =
@@ -154,6 +169,11 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
         for (size_t j = 0; j < pattern->n_background; j++)
             pattern->basis[j * n + i] = term[j];
     }
+        /* P/sin^2(theta) is for lines that are narrow against s. The mean over orientations of a crystal whose transform is
+     * round is exactly profile(s - s0)/(s s0): across a line the factor goes as 1/s (Guinier 1963 X-ray Diffraction,
+     * ch. 5, from the integral over the sphere of radius s) */
+    for (size_t i = 0; i < n && lines->n > 0 && lines->with_factor; i++)
+        pattern->factor[i] *= pattern->s[i] / s_of(pattern, lines->line[0].two_theta.value);
     for (size_t k = 0; k < lines->n; k++) {
         lw_pattern_line *line = &pattern->line[k];
         line->line = &lines->line[k];
@@ -169,21 +189,26 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
 void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, double *p)
 {
     memset(p, 0, pattern->n_parameters * sizeof *p);
-    p[LW_PATTERN_INVERSE_MEDIAN] = 1 / spheres->median_nm;
+    p[LW_PATTERN_INVERSE_SIZE] = 1 / lw_spheres_size_area(spheres, NULL);
     p[LW_PATTERN_SIGMA] = spheres->sigma;
     for (size_t k = 0; k < pattern->n_lines; k++) {
         const lw_line *line = pattern->line[k].line;
         double per = degree * cos(line->two_theta.value * degree / 2) /
                      lw_radiation_wavelength(&pattern->profiles->lines->radiation);
-        /* the fit's area is over degrees of the line's own axis; its factor was 1 at the line, here at line 0 */
-        double factor = lw_line_relative_factor(pattern->profiles->lines, pattern->line[0].line, line->two_theta.value);
+        /* the fit's area is over degrees of the line's own axis; its factor was 1 at the line, here at line 0
+         */
+        double factor =
+            lw_line_relative_factor(pattern->profiles->lines, pattern->line[0].line, line->two_theta.value);
+        if (pattern->profiles->lines->with_factor)
+            factor *= pattern->line[k].s_start / pattern->line[0].s_start;
         p[lw_pattern_position_row(pattern, k) + 1] = line->area.value * per / factor;
     }
 }
 
-/* Profile of one line and its slopes to the shape parameters on the grid of s, period 1/length_step; returns the
- * strength of the 1/s^2 tail in tail[0] and its slopes in tail[1..]. */
-static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, const double *p, bool slopes, double *tail)
+/* Profile of one line and its slopes to the shape parameters on the grid of s, period 1/length_step; returns
+ * the strength of the 1/s^2 tail in tail[0] and its slopes in tail[1..]. */
+static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, const double *p, bool slopes,
+                          double *tail)
 {
     double strain = 2 * PI * PI * line->s_corrected * line->s_corrected;
     double scale = 1 - p[LW_PATTERN_ANISOTROPY] * line->hkl_sum;
@@ -199,22 +224,15 @@ static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, cons
         for (size_t j = 0; j < pattern->n_lengths; j++) {
             double a = exp(-strain * scale * pattern->displacement[j]);
             switch (which - 1) {
-            case -1:
-                a *= pattern->size[j];
-                break;
-            case LW_PATTERN_INVERSE_MEDIAN:
-                a *= pattern->size_slopes[0][j];
-                break;
-            case LW_PATTERN_SIGMA:
-                a *= pattern->size_slopes[1][j];
-                break;
+            case -1: a *= pattern->size[j]; break;
+            case LW_PATTERN_INVERSE_SIZE: a *= pattern->size_slopes[0][j]; break;
+            case LW_PATTERN_SIGMA: a *= pattern->size_slopes[1][j]; break;
             case LW_PATTERN_STRAIN_1:
             case LW_PATTERN_STRAIN_2:
-                a *= -strain * scale * pattern->size[j] * pattern->displacement_slopes[which - 1 - LW_PATTERN_STRAIN_1][j];
+                a *= -strain * scale * pattern->size[j] *
+                     pattern->displacement_slopes[which - 1 - LW_PATTERN_STRAIN_1][j];
                 break;
-            default:
-                a *= strain * line->hkl_sum * pattern->size[j] * pattern->displacement[j];
-                break;
+            default: a *= strain * line->hkl_sum * pattern->size[j] * pattern->displacement[j]; break;
             }
             c[2 * j] = a * line->g[2 * j] * pattern->length_step;
             /* the sum below has exp(+2 pi i L s), the profile exp(-2 pi i L s) */
@@ -224,14 +242,12 @@ static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, cons
         memset(c + 2 * last, 0, (n_c - 2 * last) * sizeof *c);
         lw_fft_back(pattern->plan, c, pattern->profile[which]);
     }
-    lw_spheres spheres = {1 / p[LW_PATTERN_INVERSE_MEDIAN], p[LW_PATTERN_SIGMA]};
-    double area_slopes[2], kink_slopes[2] = {0, 0};
-    double area = lw_spheres_size_area(&spheres, area_slopes);
+    double kink_slopes[2] = {0, 0};
     double kink = pattern->strain->kink(p + LW_PATTERN_STRAIN_1, kink_slopes);
     double unit = 1 / (2 * PI * PI);
-    tail[0] = unit * (1 / area + strain * scale * kink + line->kink);
-    tail[1 + LW_PATTERN_INVERSE_MEDIAN] = unit * spheres.median_nm / area;
-    tail[1 + LW_PATTERN_SIGMA] = -unit * area_slopes[1] / (area * area);
+    tail[0] = unit * (p[LW_PATTERN_INVERSE_SIZE] + strain * scale * kink + line->kink);
+    tail[1 + LW_PATTERN_INVERSE_SIZE] = unit;
+    tail[1 + LW_PATTERN_SIGMA] = 0;
     tail[1 + LW_PATTERN_STRAIN_1] = unit * strain * scale * kink_slopes[0];
     tail[1 + LW_PATTERN_STRAIN_2] = unit * strain * scale * kink_slopes[1];
     tail[1 + LW_PATTERN_ANISOTROPY] = -unit * strain * line->hkl_sum * kink;
@@ -241,8 +257,8 @@ static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, cons
 static inline double at(const double *grid, size_t n, double x, double *slope)
 {
     double whole = floor(x), t = x - whole;
-    size_t i = (size_t)((long long)whole + (long long)n) % n;
-    double a = grid[(i + n - 1) % n], b = grid[i], c = grid[(i + 1) % n], d = grid[(i + 2) % n];
+    size_t mask = n - 1, i = (size_t)((long long)whole + (long long)n) & mask; /* n is a power of 2 */
+    double a = grid[(i + n - 1) & mask], b = grid[i], c = grid[(i + 1) & mask], d = grid[(i + 2) & mask];
     double c1 = c - a / 3 - b / 2 - d / 6, c2 = 0.5 * (a + c) - b, c3 = (d - a) / 6 + 0.5 * (b - c);
     if (slope != NULL)
         *slope = c1 + t * (2 * c2 + t * 3 * c3);
@@ -259,12 +275,12 @@ static inline double neighbours(double s, double period)
     return (PI / period) * (PI / period) * (1 / (sine * sine) - 1 / (x * x));
 }
 
-static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_normal *normal, const double *difference,
-                          double *g, lw_error *err);
+static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_normal *normal,
+                          const double *difference, double *g, lw_error *err);
 
 static bool possible(const lw_pattern *pattern, const double *p)
 {
-    if (!(p[LW_PATTERN_INVERSE_MEDIAN] > 0) || !(p[LW_PATTERN_SIGMA] > 0))
+    if (!(p[LW_PATTERN_INVERSE_SIZE] > 0) || !(p[LW_PATTERN_SIGMA] > 0))
         return false;
     for (size_t k = 0; k < pattern->n_lines; k++)
         if (!(1 - p[LW_PATTERN_ANISOTROPY] * pattern->line[k].hkl_sum >= 0))
@@ -277,7 +293,8 @@ lw_status lw_pattern_evaluate(void *user, const double *p, bool want_normal, lw_
     return evaluate(user, p, want_normal, normal, NULL, NULL, err);
 }
 
-lw_status lw_pattern_project(lw_pattern *pattern, const double *p, const double *difference, double *g, lw_error *err)
+lw_status lw_pattern_project(lw_pattern *pattern, const double *p, const double *difference, double *g,
+                             lw_error *err)
 {
     return evaluate(pattern, p, true, NULL, difference, g, err);
 }
@@ -285,11 +302,13 @@ lw_status lw_pattern_project(lw_pattern *pattern, const double *p, const double 
 /* The parts of one line that all its points share. */
 typedef struct line_values {
     double tail[1 + LW_PATTERN_SHAPES];
-    double *curve[2 + LW_PATTERN_SHAPES]; /* [n] unit-area profile, its slopes to the shapes, and to the position */
+    double *curve[2 + LW_PATTERN_SHAPES]; /* [n] unit-area profile, its slopes to the shapes, and to the
+                                             position */
 } line_values;
 
 /* All points of one line into values. */
-static void spread(const lw_pattern *pattern, double s0, double fall, bool slopes, const bool *wanted, line_values *v)
+static void spread(const lw_pattern *pattern, double s0, double fall, bool slopes, const bool *wanted,
+                   line_values *v)
 {
     double period = 1 / pattern->length_step, per_cell = (double)pattern->n_fft / period;
     for (size_t i = 0; i < pattern->n; i++) {
@@ -299,12 +318,14 @@ static void spread(const lw_pattern *pattern, double s0, double fall, bool slope
             factor *= exp(-fall * (pattern->s[i] * pattern->s[i] - s0 * s0));
         if (fabs(s) < 0.5 * period) {
             double others = neighbours(s, period), x = s * per_cell;
-            v->curve[0][i] = factor * (at(pattern->profile[0], pattern->n_fft, x, slopes ? &by_s : NULL) - v->tail[0] * others);
+            v->curve[0][i] = factor * (at(pattern->profile[0], pattern->n_fft, x, slopes ? &by_s : NULL) -
+                                       v->tail[0] * others);
             if (!slopes)
                 continue;
             for (int w = 1; w <= LW_PATTERN_SHAPES; w++)
                 if (wanted[w])
-                    v->curve[w][i] = factor * (at(pattern->profile[w], pattern->n_fft, x, NULL) - v->tail[w] * others);
+                    v->curve[w][i] =
+                        factor * (at(pattern->profile[w], pattern->n_fft, x, NULL) - v->tail[w] * others);
             v->curve[1 + LW_PATTERN_SHAPES][i] = -factor * by_s * per_cell;
         } else {
             double square = factor / (s * s);
@@ -319,9 +340,10 @@ static void spread(const lw_pattern *pattern, double s0, double fall, bool slope
     }
 }
 
-/* Adds one block of points to the normal equations; column holds the slopes, block of a parameter after another. */
-static void add_block(const lw_pattern *pattern, size_t first, size_t count, const double *residual, lw_normal *normal,
-                      double *g)
+/* Adds one block of points to the normal equations; column holds the slopes, block of a parameter after
+ * another. */
+static void add_block(const lw_pattern *pattern, size_t first, size_t count, const double *residual,
+                      lw_normal *normal, double *g)
 {
     size_t n = pattern->n_parameters;
     double weighted[BLOCK];
@@ -349,8 +371,8 @@ static void add_block(const lw_pattern *pattern, size_t first, size_t count, con
     }
 }
 
-static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_normal *normal, const double *difference,
-                          double *g, lw_error *err)
+static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_normal *normal,
+                          const double *difference, double *g, lw_error *err)
 {
     size_t n = pattern->n, m = pattern->n_lines, rows = 2 + LW_PATTERN_SHAPES;
     const lw_scan *scan = pattern->profiles->lines->scan;
@@ -364,18 +386,19 @@ static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_
     lw_arena scratch;
     lw_arena_begin(&scratch, pattern->engine);
     /* curves that all lines share: slopes to shapes and to the fall, summed over lines; then two a line */
-    double *shared = take(&scratch, (LW_PATTERN_SHAPES + 1) * n, err), *own = slopes ? take(&scratch, 2 * m * n, err) : NULL;
+    double *shared = take(&scratch, (LW_PATTERN_SHAPES + 1) * n, err),
+           *own = slopes ? take(&scratch, 2 * m * n, err) : NULL;
     double *work = take(&scratch, rows * n, err), *residual = take(&scratch, n, err);
     if (!shared || (slopes && !own) || !work || !residual) {
         lw_arena_end(&scratch);
         return LW_OUT_OF_MEMORY;
     }
-    lw_spheres spheres = {1 / p[LW_PATTERN_INVERSE_MEDIAN], p[LW_PATTERN_SIGMA]};
+    lw_spheres spheres = lw_pattern_spheres(p);
     for (size_t j = 0; j < pattern->n_lengths; j++) {
         double length = pattern->length_step * (double)j, by_size[2], by_strain[2] = {0, 0};
         pattern->size[j] = lw_spheres_coefficient(&spheres, length, by_size);
-        pattern->size_slopes[0][j] = -by_size[0] * spheres.median_nm;
-        pattern->size_slopes[1][j] = by_size[1];
+        pattern->size_slopes[0][j] = -by_size[0] / p[LW_PATTERN_INVERSE_SIZE];
+        pattern->size_slopes[1][j] = by_size[1] - 5 * spheres.sigma * by_size[0];
         pattern->displacement[j] = pattern->strain->displacement(p + LW_PATTERN_STRAIN_1, length, by_strain);
         pattern->displacement_slopes[0][j] = by_strain[0];
         pattern->displacement_slopes[1][j] = by_strain[1];

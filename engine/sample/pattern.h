@@ -16,8 +16,8 @@
 #include "profile/profiles.h"
 
 enum {
-    LW_PATTERN_INVERSE_MEDIAN, /* nm^-1 */
-    LW_PATTERN_SIGMA,
+    LW_PATTERN_INVERSE_SIZE, /* of the area-weighted size, nm^-1: what the lines say best, whatever sigma is */
+    LW_PATTERN_SIGMA,        /* of ln(diameter) */
     LW_PATTERN_STRAIN_1,
     LW_PATTERN_STRAIN_2,
     LW_PATTERN_ANISOTROPY, /* q */
@@ -61,6 +61,9 @@ typedef struct lw_pattern {
  * median diameter, sigma and mean square strain. n_parameters = LW_PATTERN_BACKGROUND + n_background + 2 n_lines. */
 lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles, lw_arena *arena,
                            lw_error *err);
+/* The spheres that the parameters p describe. */
+lw_spheres lw_pattern_spheres(const double *p);
+
 void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, double *p);
 size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line); /* nm^-1 from s_start; the area is the next */
 

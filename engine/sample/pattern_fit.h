@@ -1,0 +1,60 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Fits the whole pattern with one or several forms of strain and joins what they say. */
+#ifndef LW_SAMPLE_PATTERN_FIT_H
+#define LW_SAMPLE_PATTERN_FIT_H
+
+#include "sample/pattern.h"
+
+/* Which forms: an index of lw_strain_form_list, or: */
+typedef int lw_pattern_choice;
+#define LW_PATTERN_AUTO (-1)
+#define LW_PATTERN_NO_STRAIN (-2)
+
+typedef struct lw_pattern_request {
+    lw_pattern_choice strain;
+    int anisotropy; /* 0 = if the data say so, 1 = no, 2 = yes */
+        int fall; /* of the scattering power: 0 = from the lines' areas, 1 = fitted, 2 = none */
+} lw_pattern_request;
+
+#define LW_PATTERN_FORMS_MOST 8
+#define LW_ANSWER_LENGTHS 24
+enum {
+    LW_ANSWER_SIZE_VOLUME,
+    LW_ANSWER_SIZE_AREA,
+    LW_ANSWER_DIAMETER,
+    LW_ANSWER_DISPERSION,
+    LW_ANSWER_STRAIN,    /* rms over half the volume-weighted size */
+    LW_ANSWER_STRAIN_AT, /* first of the lengths */
+    LW_ANSWER_MOST = LW_ANSWER_STRAIN_AT + LW_ANSWER_LENGTHS
+};
+
+typedef struct lw_pattern_form {
+    const lw_strain_form *strain;
+    bool none;   /* strain held at 0 */
+    bool fitted; /* else `why` says why not */
+    const char *why;
+    double chi2, weight; /* weight: its share of the answer */
+    size_t n_free, iterations;
+    double shape[LW_PATTERN_SHAPES + 1]; /* and the fall */
+    double value[LW_ANSWER_MOST];
+    double covariance[LW_ANSWER_MOST][LW_ANSWER_MOST];
+} lw_pattern_form;
+
+typedef struct lw_pattern_answer {
+    size_t n_forms, best, n_points, n_lengths;
+    lw_pattern_form form[LW_PATTERN_FORMS_MOST];
+    double length[LW_ANSWER_LENGTHS]; /* nm */
+    double value[LW_ANSWER_MOST];     /* weighted mean over the forms */
+    double covariance[LW_ANSWER_MOST][LW_ANSWER_MOST]; /* counting, misfit, calibration, choice of the form */
+    double goodness, misfit;          /* misfit: factor on u, 1 where chi-square is as it should be */
+    double strain_limit;              /* 95 % upper limit of the rms strain where none stands out, else 0 */
+    double size_volume_limit, size_area_limit; /* nm, 95 % lower limits where no size stands out */
+    bool size_unresolved, sigma_at_bound, anisotropic;
+    double anisotropy, u_anisotropy;
+} lw_pattern_answer;
+
+/* Status: those of the fit; LW_NO_CONVERGENCE if no form could be fitted. */
+lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const lw_pattern_request *request,
+                         lw_arena *arena, lw_pattern_answer *answer, lw_error *err);
+
+#endif
