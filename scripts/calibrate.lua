@@ -90,7 +90,7 @@ for i, line in ipairs(instrument.record.lines) do
   residuals.x[i], residuals.before[i], residuals.after[i] = line.two_theta.value, line.difference, line.residual
 end
 local widths_figure = lw.figure {
-  name = "width", title = "Width of the instrument at one wavelength",
+  name = "instrument_width", title = "Width of the instrument at one wavelength",
   caption = "FWHM without the spectrum's share: smooth function with its band (2 u), and every line fitted by itself.",
   x = { label = "2theta", unit = "deg" }, y = { label = "FWHM", unit = "deg" },
   series = {
@@ -118,12 +118,17 @@ local items = {
   { caution = "After work on a tube, shutter or housing the interlocks, warning lights and leakage are checked and "
       .. "released by the licensed radiation-safety officer before the shutter is opened. Local rules come first; a "
       .. "good calibration says nothing about the safety of the beam.", title = "X-rays after maintenance" },
+  { heading = "Calibration of the instrument" },
+  { brief = instrument },
   widths_figure, positions_figure,
-  instrument,
-  fitted,
 }
 if changes then
-  table.insert(items, 3, { heading = "Since the time before" })
-  table.insert(items, 4, { table = changes, caption = "Before, after, and the difference in units of its u" })
+  items[#items + 1] = { heading = "Since the time before" }
+  items[#items + 1] = { table = changes, columns = { "quantity", "before", "after", "difference", "in_units_of_u" },
+                        caption = "Before, after, and the difference in units of its u" }
 end
+items[#items + 1] = { heading = "Fit and record" }
+items[#items + 1] = { brief = fitted }
+items[#items + 1] = { details = fitted }
+items[#items + 1] = { details = instrument }
 job:write(instrument, lw.report(items))

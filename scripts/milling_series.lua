@@ -58,7 +58,8 @@ if #rows == 0 then
   error("no scan of the series could be analysed: " .. failed[1].error)
 end
 table.sort(rows, function(a, b) return a.milling_time_h < b.milling_time_h end)
-job:write_csv("series.csv", rows)
+local columns = { "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "lattice_a", "goodness_of_fit" }
+job:write_csv("series.csv", rows, columns)
 
 -- Size and strain against time; limits are left out of the curves and stay in the table.
 local function series_of(field)
@@ -88,7 +89,7 @@ if powder.hazard ~= "" then
   items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }
 end
 items[#items + 1] = { heading = "Along the series" }
-items[#items + 1] = { table = rows, caption = "Volume-weighted size and rms strain by Williamson-Hall" }
+items[#items + 1] = { table = rows, columns = columns, caption = "Size and strain by Williamson-Hall" }
 for _, figure in ipairs {
   against_time("size_volume", "Size against milling time", "volume-weighted size", "nm") or false,
   against_time("strain_rms", "Strain against milling time", "rms strain", "") or false,
@@ -96,11 +97,13 @@ for _, figure in ipairs {
   if figure then items[#items + 1] = figure end
 end
 if #failed > 0 then
-  items[#items + 1] = { table = failed, caption = "Not analysed, and why" }
+  items[#items + 1] = { table = failed, columns = { "scan", "error" }, caption = "Not analysed, and why" }
 end
+-- Of each powder what matters, the rest folded away; all of it is in results.json.
 for _, one in ipairs(shown) do
-  items[#items + 1] = { heading = one.name }
-  items[#items + 1] = one.results
-  items[#items + 1] = one.lines
+  items[#items + 1] = { heading = one.name, prefix = one.name:gsub("%.%w+$", "") }
+  items[#items + 1] = { brief = one.results }
+  items[#items + 1] = { brief = one.lines }
+  items[#items + 1] = { details = one.results }
 end
 job:write({ scans = entries }, lw.report(items))

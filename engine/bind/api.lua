@@ -233,8 +233,9 @@ local functions = {
       p("notes", "list", "tables: x, y, text, panel") }, "figure"),
   report = entry("lw.report { title =, items ... }", "A report in one HTML file; job:write writes it.",
     { p("title", "text", "the recipe's title if left out"), p("subtitle", "text", "may be left out"),
-      p("items", "list", "texts, figures, objects of the road, { heading = }, { caution =, title = }, "
-        .. "{ verdict = \"pass\", text = }, { table = rows, caption = }") }, "report"),
+      p("items", "list", "texts, figures, objects of the road, { heading =, prefix = } (of its figures' files), "
+        .. "{ caution =, title = }, { verdict = \"pass\", text = }, { table = rows, columns =, caption = }, "
+        .. "{ brief = object } (what matters of it), { details = object } (the rest, folded)") }, "report"),
   recipe = entry("lw.recipe { title =, inputs = { ... } }",
     "Declares what a recipe wants, reads it from name=value arguments, and gives the job.",
     { p("title", "text", "what the recipe does"),

@@ -30,7 +30,8 @@ static const lw_node *vector_of(const lw_node *group, const char *name, size_t n
     return found != NULL && found->kind == LW_NODE_VECTOR && (n == 0 || found->n == n) ? found : NULL;
 }
 
-/* A group of vectors x, y, u_x, u_y and line_x, line_y, with texts x_label and y_label if it has them. */
+/* A group of vectors x, y, u_x, u_y and line_x, line_y, with texts x_label and y_label if it has them; else
+ * they are the size-strain plot's. */
 static bool push_plot(lua_State *L, const lw_node *group, const lw_node *plot, const char *name)
 {
     lw_error err = LW_ERROR_NONE;
@@ -40,8 +41,8 @@ static bool push_plot(lua_State *L, const lw_node *group, const lw_node *plot, c
     const lw_node *u_x = vector_of(plot, "u_x", x->n), *u_y = vector_of(plot, "u_y", x->n);
     const lw_node *line_x = vector_of(plot, "line_x", 0), *line_y = line_x ? vector_of(plot, "line_y", line_x->n) : NULL;
     lw_figure *figure = lwb_new_figure(L, name, lw_node_text(group, "title", name));
-    lw_figure_label(figure, LW_AXIS_X, lw_node_text(plot, "x_label", "x"), x->unit, &err);
-    lw_figure_label(figure, LW_AXIS_Y, lw_node_text(plot, "y_label", "y"), y->unit, &err);
+    lw_figure_label(figure, LW_AXIS_X, lw_node_text(plot, "x_label", "breadth / s^2"), x->unit, &err);
+    lw_figure_label(figure, LW_AXIS_Y, lw_node_text(plot, "y_label", "(breadth / s)^2"), y->unit, &err);
     lw_series *series = lw_figure_series(figure, LW_SERIES_POINTS, 0, "lines", x->vector, y->vector, x->n, &err);
     if (series != NULL && (u_x != NULL || u_y != NULL))
         lw_series_errors(figure, series, u_x ? u_x->vector : NULL, u_y ? u_y->vector : NULL, &err);

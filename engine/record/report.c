@@ -75,6 +75,24 @@ lw_status lw_report_heading(lw_report *report, const char *text, lw_error *err)
     return done(report, err);
 }
 
+lw_status lw_report_subheading(lw_report *report, const char *text, lw_error *err)
+{
+    wrap(&report->body, "<h3>", text, "</h3>\n");
+    return done(report, err);
+}
+
+lw_status lw_report_fold(lw_report *report, const char *title, lw_error *err)
+{
+    wrap(&report->body, "<details>\n<summary>", title, "</summary>\n");
+    return done(report, err);
+}
+
+lw_status lw_report_fold_end(lw_report *report, lw_error *err)
+{
+    lw_text_add(&report->body, "</details>\n");
+    return done(report, err);
+}
+
 /* Paragraphs, parted by empty lines. */
 static lw_status paragraphs(lw_report *report, const char *text, lw_error *err)
 {
@@ -115,10 +133,28 @@ lw_status lw_report_verdict(lw_report *report, lw_verdict verdict, const char *t
     return done(report, err);
 }
 
-lw_status lw_report_table(lw_report *report, const char *caption, const lw_node *rows, lw_error *err)
+lw_status lw_report_table(lw_report *report, const char *caption, const lw_node *rows, const char *const columns[],
+                          lw_error *err)
 {
-    lw_status status = lw_sheet_table(&report->body, caption, rows, err);
+    lw_status status = lw_sheet_table(&report->body, caption, rows, columns, err);
     return status == LW_OK ? done(report, err) : status;
+}
+
+lw_status lw_report_remarks(lw_report *report, const char *title, const lw_node *list, lw_error *err)
+{
+    bool any = false;
+    for (const lw_node *item = list ? list->first : NULL; item != NULL; item = item->next) {
+        if (item->kind != LW_NODE_TEXT)
+            continue;
+        if (!any) {
+            lw_text_add(&report->body, "<div class=\"remarks\" role=\"note\">\n");
+            wrap(&report->body, "<p>", title, "</p>\n<ul>\n");
+        }
+        any = true;
+        wrap(&report->body, "<li>", item->text, "</li>\n");
+    }
+    lw_text_add(&report->body, any ? "</ul>\n</div>\n" : "");
+    return done(report, err);
 }
 
 /* ---- figures ---- */
@@ -233,6 +269,14 @@ static lw_status figure_of(lw_report *report, const lw_node *group, lw_error *er
     return figure != NULL ? lw_report_figure(report, figure, err) : err != NULL ? err->status : LW_BAD_ARGUMENT;
 }
 
+static bool is_remarks(const lw_node *node)
+{
+    return node->kind == LW_NODE_LIST && node->name != NULL && node->first != NULL &&
+           node->first->kind == LW_NODE_TEXT &&
+           (strcmp(node->name, "remarks") == 0 || strcmp(node->name, "warnings") == 0 ||
+            strcmp(node->name, "notes") == 0);
+}
+
 static lw_status result(lw_report *report, const lw_node *group, int level, lw_error *err)
 {
     lw_text *out = &report->body;
@@ -241,6 +285,10 @@ static lw_status result(lw_report *report, const lw_node *group, int level, lw_e
     if (group->definition != NULL)
         wrap(out, "<p>", group->definition, "</p>\n");
     lw_sheet_values(out, group);
+    for (const lw_node *child = group->first; child != NULL && status == LW_OK; child = child->next)
+        if (is_remarks(child))
+            status = lw_report_remarks(report, "To mind", child, err);
+    lw_sheet_small(out, group);
     if (source != NULL)
         wrap(out, "<p class=\"source\">Source: ", source, "</p>\n");
     for (const lw_node *child = group->first; child != NULL && status == LW_OK; child = child->next) {
@@ -256,7 +304,7 @@ static lw_status result(lw_report *report, const lw_node *group, int level, lw_e
             lw_sheet_title(out, child);
             lw_text_print(out, "</h%d>\n", level);
             status = result(report, child, level < 6 ? level + 1 : 6, err);
-        } else if (child->kind == LW_NODE_LIST && child->first != NULL)
+        } else if (child->kind == LW_NODE_LIST && child->first != NULL && !is_remarks(child))
             status = lw_sheet_list(out, child, err);
     }
     return status;

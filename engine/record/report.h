@@ -27,10 +27,20 @@ lw_status lw_report_text(lw_report *report, const char *text, lw_error *err);
 lw_status lw_report_caution(lw_report *report, const char *title, const char *text, lw_error *err);
 /* The outcome in one line, told by word and mark, not by colour alone. */
 lw_status lw_report_verdict(lw_report *report, lw_verdict verdict, const char *text, lw_error *err);
-/* Rows from a list of groups. Units stand in the head where a column has one unit. */
-lw_status lw_report_table(lw_report *report, const char *caption, const lw_node *rows, lw_error *err);
+/* A heading below the last one, not in the table of contents. */
+lw_status lw_report_subheading(lw_report *report, const char *text, lw_error *err);
+/* Rows from a list of groups. Units stand in the head where a column has one unit.
+ * columns: names of those to show in their order, ended by NULL; NULL = all that any row has. */
+lw_status lw_report_table(lw_report *report, const char *caption, const lw_node *rows, const char *const columns[],
+                          lw_error *err);
+/* Remarks in one compact list under one heading; nothing if there is no text among the list's children. */
+lw_status lw_report_remarks(lw_report *report, const char *title, const lw_node *list, lw_error *err);
+/* What is added between the two is folded away under its title until the reader opens it. */
+lw_status lw_report_fold(lw_report *report, const char *title, lw_error *err);
+lw_status lw_report_fold_end(lw_report *report, lw_error *err);
 /* A result group under a heading of its own (its text `title`, else its name): quantities with
- * uncertainty, definition and published source; lists as tables; groups within, a level lower. A
+ * uncertainty and definition; lists `remarks` and `warnings`; statistics, words and published source in
+ * small type; other lists as tables; groups within, a level lower. A
  * group `figure` within it, and each of a list `figures`, is drawn (lw_figure_of_tree). */
 lw_status lw_report_result(lw_report *report, const lw_node *group, lw_error *err);
 /* A figure with its title and caption. If it can't be drawn (no gnuplot), the report says so in its

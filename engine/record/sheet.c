@@ -30,12 +30,52 @@ static void unit_html(lw_text *out, const char *unit)
     lw_text_end(&typeset);
 }
 
-static void number_html(lw_text *out, double number)
+/* Whether a name has one of the stems, as a whole word of it. */
+static bool has_stem(const char *name, const char *const stems[])
 {
-    if (isfinite(number))
-        lw_text_rounded(out, number, 6);
-    else
+    for (int i = 0; name != NULL && stems[i] != NULL; i++) {
+        const char *at = strstr(name, stems[i]);
+        size_t n = strlen(stems[i]);
+        if (at != NULL && (at == name || at[-1] == '_') && (at[n] == '\0' || at[n] == '_'))
+            return true;
+    }
+    return false;
+}
+
+/* A statistic has no more than four digits to say, and a chance below one in ten thousand says no more than
+ * that it is; the record keeps them whole. */
+static void number_html(lw_text *out, const char *name, double number)
+{
+    static const char *const statistics[] = {"chi2",  "chance", "goodness", "factor", "correlation", "rwp",  "rexp",
+                                             "watson", "ratio", "weight",   "pull",   "rms",         "overlap", "probability", "misfit", NULL};
+    static const char *const chances[] = {"chance", "weight", "probability", NULL};
+    if (!isfinite(number))
         lw_text_add(out, "not determined");
+    else if (has_stem(name, chances) && number >= 0 && number < 1e-4)
+        lw_text_add(out, number > 0 || strcmp(name, "chance") == 0 ? "&lt; 0.0001" : "0");
+    else if (number == floor(number) && fabs(number) < 1e9)
+        lw_text_fixed(out, number, 0);
+    else if (has_stem(name, statistics) && fabs(number) >= 1e4 && fabs(number) < 1e9)
+        lw_text_fixed(out, number, 0);
+    else
+        lw_text_rounded(out, number, has_stem(name, statistics) ? 4 : 6);
+}
+
+/* The unit that the name of a plain number ends in ("milling_time_h"), and the name's length without it. */
+static const char *unit_in_name(const lw_node *node, size_t *length)
+{
+    static const char *const units[][2] = {{"_nm", "nm"}, {"_mm", "mm"}, {"_deg", "deg"}, {"_h", "h"}, {"_c", "°C"}};
+    *length = strlen(node->name);
+    if (node->kind != LW_NODE_NUMBER)
+        return "";
+    for (size_t i = 0; i < sizeof units / sizeof *units; i++) {
+        size_t n = strlen(units[i][0]);
+        if (*length > n && strcmp(node->name + *length - n, units[i][0]) == 0) {
+            *length -= n;
+            return units[i][1];
+        }
+    }
+    return "";
 }
 
 /* The quantity's own print without its unit, which stands in the column's head. */
@@ -64,18 +104,18 @@ static void cell(lw_text *out, const lw_node *node, bool with_unit)
 {
     switch (node->kind) {
     case LW_NODE_QUANTITY: quantity_html(out, node->quantity, with_unit); break;
-    case LW_NODE_NUMBER: number_html(out, node->number); break;
+    case LW_NODE_NUMBER: number_html(out, node->name, node->number); break;
     case LW_NODE_TEXT: lw_text_html(out, node->text); break;
     case LW_NODE_FLAG: lw_text_add(out, node->flag ? "yes" : "no"); break;
     case LW_NODE_VECTOR:
         for (size_t i = 0; i < node->n && node->n <= SHORT_VECTOR; i++) {
             lw_text_add(out, i > 0 ? " " : "");
-            number_html(out, node->vector[i]);
+            number_html(out, NULL, node->vector[i]);
         }
         if (node->n > SHORT_VECTOR)
             lw_text_print(out, "%zu values, in the JSON record", node->n);
         if (with_unit && node->unit != NULL && node->unit[0] != '\0') {
-            lw_text_add(out, "\xC2\xA0");
+            lw_text_add(out, strcmp(node->unit, "deg") == 0 ? "" : "\xC2\xA0");
             unit_html(out, node->unit);
         }
         break;
@@ -95,24 +135,66 @@ static void cell(lw_text *out, const lw_node *node, bool with_unit)
 
 typedef struct head {
     const char *name, *unit; /* unit NULL: differs from row to row */
+    size_t length;           /* of the name, without a unit in it */
     bool numeric;
 } head;
 
 static const char *unit_of(const lw_node *node)
 {
+    size_t length;
+    if (node->kind == LW_NODE_NUMBER)
+        return unit_in_name(node, &length);
     const char *unit = node->kind == LW_NODE_QUANTITY ? node->quantity.unit
                        : node->kind == LW_NODE_VECTOR ? node->unit
                                                       : "";
     return unit ? unit : "";
 }
 
-static lw_status collect(lw_arena *arena, const lw_node *rows, head **heads, size_t *n, lw_error *err)
+/* A name as words, without a unit in it. */
+static void head_html(lw_text *out, const char *name, size_t length)
+{
+    lw_text words;
+    lw_text_begin(&words, out->engine);
+    lw_text_bytes(&words, name, length);
+    if (words.status == LW_OK)
+        name_html(out, words.bytes, false);
+    else
+        out->status = words.status;
+    lw_text_end(&words);
+}
+
+static bool is_wanted(const char *const columns[], const char *name)
+{
+    for (size_t i = 0; columns != NULL && columns[i] != NULL; i++)
+        if (strcmp(columns[i], name) == 0)
+            return true;
+    return columns == NULL;
+}
+
+/* Brings the columns into the order wanted. */
+static void order(head *heads, size_t n, const char *const columns[])
+{
+    size_t done = 0;
+    for (size_t i = 0; columns != NULL && columns[i] != NULL; i++)
+        for (size_t k = done; k < n; k++)
+            if (strcmp(heads[k].name, columns[i]) == 0) {
+                head found = heads[k];
+                memmove(heads + done + 1, heads + done, (k - done) * sizeof *heads);
+                heads[done++] = found;
+                break;
+            }
+}
+
+static lw_status collect(lw_arena *arena, const lw_node *rows, const char *const columns[], head **heads, size_t *n,
+                         lw_error *err)
 {
     size_t room = 0;
     for (const lw_node *row = rows->first; row != NULL; row = row->next)
         for (const lw_node *child = row->first; child != NULL; child = child->next) {
             bool numeric = child->kind == LW_NODE_QUANTITY || child->kind == LW_NODE_NUMBER;
-            size_t i = 0;
+            size_t i = 0, length;
+            if (!is_wanted(columns, child->name))
+                continue;
             while (i < *n && strcmp((*heads)[i].name, child->name) != 0)
                 i++;
             if (i < *n) {
@@ -131,12 +213,15 @@ static lw_status collect(lw_arena *arena, const lw_node *rows, head **heads, siz
                     memcpy(more, *heads, *n * sizeof *more);
                 *heads = more;
             }
-            (*heads)[(*n)++] = (head){child->name, unit_of(child), numeric};
+            unit_in_name(child, &length);
+            (*heads)[(*n)++] = (head){child->name, unit_of(child), length, numeric};
         }
+    order(*heads, *n, columns);
     return LW_OK;
 }
 
-lw_status lw_sheet_table(lw_text *out, const char *caption, const lw_node *rows, lw_error *err)
+lw_status lw_sheet_table(lw_text *out, const char *caption, const lw_node *rows, const char *const columns[],
+                         lw_error *err)
 {
     lw_arena arena;
     head *heads = NULL;
@@ -147,9 +232,11 @@ lw_status lw_sheet_table(lw_text *out, const char *caption, const lw_node *rows,
         if (row->kind != LW_NODE_GROUP)
             return lw_fail(err, LW_BAD_ARGUMENT, "give a list of groups", "a row of a table must have named values");
     lw_arena_begin(&arena, out->engine);
-    lw_status status = collect(&arena, rows, &heads, &n, err);
+    lw_status status = collect(&arena, rows, columns, &heads, &n, err);
     if (status == LW_OK) {
-        lw_text_add(out, "<div class=\"scroll\"><table>\n");
+        /* many columns are set smaller, so that they fit the page */
+        lw_text_print(out, "<div class=\"scroll\"><table%s>\n",
+                      n > 8 ? " class=\"wide most\"" : n > 5 ? " class=\"wide\"" : "");
         if (caption != NULL && caption[0] != '\0') {
             lw_text_add(out, "<caption>");
             lw_text_html(out, caption);
@@ -158,7 +245,7 @@ lw_status lw_sheet_table(lw_text *out, const char *caption, const lw_node *rows,
         lw_text_add(out, "<thead><tr>");
         for (size_t i = 0; i < n; i++) {
             lw_text_add(out, heads[i].numeric ? "<th scope=\"col\" class=\"n\">" : "<th scope=\"col\">");
-            name_html(out, heads[i].name, false);
+            head_html(out, heads[i].name, heads[i].length);
             if (heads[i].unit != NULL && heads[i].unit[0] != '\0') {
                 lw_text_add(out, " <span class=\"unit\">");
                 unit_html(out, heads[i].unit);
@@ -192,39 +279,95 @@ static bool is_value(const lw_node *node)
 {
     if (node->kind == LW_NODE_GROUP || node->kind == LW_NODE_LIST)
         return false;
-    return node->kind != LW_NODE_TEXT || (strcmp(node->name, "title") != 0 && strcmp(node->name, "source") != 0);
+    return node->kind != LW_NODE_TEXT || (node->text[0] != '\0' && strcmp(node->name, "title") != 0 &&
+                                          strcmp(node->name, "source") != 0);
+}
+
+/* One row of a group's table: name, value, what it means. */
+static void value_row(lw_text *out, const lw_node *child)
+{
+    bool text = child->kind == LW_NODE_TEXT || child->kind == LW_NODE_VECTOR;
+    bool alone = child->definition == NULL && child->source == NULL;
+    size_t length;
+    const char *unit = unit_in_name(child, &length);
+    lw_text_add(out, "<tr><th scope=\"row\">");
+    head_html(out, child->name, length);
+    lw_text_print(out, "</th><td class=\"value%s\"%s>", text ? " long" : "", alone ? " colspan=\"2\"" : "");
+    cell(out, child, true);
+    if (unit[0] != '\0') {
+        lw_text_add(out, strcmp(unit, "deg") == 0 ? "" : "\xC2\xA0");
+        unit_html(out, unit);
+    }
+    lw_text_add(out, "</td>");
+    if (!alone) {
+        lw_text_add(out, "<td class=\"note\">");
+        lw_text_html(out, child->definition);
+        if (child->source != NULL) {
+            lw_text_add(out, child->definition ? " <span>(" : "<span>(");
+            lw_text_html(out, child->source);
+            lw_text_add(out, ")</span>");
+        }
+        lw_text_add(out, "</td>");
+    }
+    lw_text_add(out, "</tr>\n");
+}
+
+/* Whether a value stands in the table, or below it in small type: beside quantities, statistics and words do. */
+static bool is_small(const lw_node *node, bool quantities)
+{
+    return quantities && node->kind != LW_NODE_QUANTITY;
+}
+
+static bool has_quantities(const lw_node *group)
+{
+    const lw_node *child = group->first;
+    while (child != NULL && child->kind != LW_NODE_QUANTITY)
+        child = child->next;
+    return child != NULL;
 }
 
 void lw_sheet_values(lw_text *out, const lw_node *group)
 {
-    bool any = false;
+    bool any = false, quantities = has_quantities(group);
     for (const lw_node *child = group->first; child != NULL; child = child->next) {
-        if (!is_value(child))
+        if (!is_value(child) || is_small(child, quantities))
             continue;
-        if (!any)
-            lw_text_add(out, "<div class=\"scroll\"><table class=\"result\"><tbody>\n");
+        lw_text_add(out, any ? "" : "<div class=\"scroll\"><table class=\"result\"><tbody>\n");
         any = true;
-        lw_text_add(out, "<tr><th scope=\"row\">");
-        name_html(out, child->name, false);
-        bool text = child->kind == LW_NODE_TEXT || child->kind == LW_NODE_VECTOR;
-        bool alone = text && child->definition == NULL && child->source == NULL;
-        lw_text_print(out, "</th><td class=\"value%s\"%s>", text ? " long" : "", alone ? " colspan=\"2\"" : "");
-        cell(out, child, true);
-        lw_text_add(out, "</td>");
-        if (!alone) {
-            lw_text_add(out, "<td class=\"note\">");
-            lw_text_html(out, child->definition);
-            if (child->source != NULL) {
-                lw_text_add(out, child->definition ? " <span>(" : "<span>(");
-                lw_text_html(out, child->source);
-                lw_text_add(out, ")</span>");
-            }
-            lw_text_add(out, "</td>");
-        }
-        lw_text_add(out, "</tr>\n");
+        value_row(out, child);
     }
     if (any)
         lw_text_add(out, "</tbody></table></div>\n");
+}
+
+void lw_sheet_small(lw_text *out, const lw_node *group)
+{
+    bool any = false;
+    if (!has_quantities(group))
+        return;
+    for (int sentences = 0; sentences < 2; sentences++) { /* first what is short, in one line */
+        for (const lw_node *child = group->first; child != NULL; child = child->next) {
+            bool sentence = child->kind == LW_NODE_TEXT && strchr(child->text, ' ') != NULL;
+            if (!is_value(child) || !is_small(child, true) || sentence != (sentences == 1))
+                continue;
+            lw_text_add(out, sentence ? "<p class=\"source\">" : any ? " · <span>" : "<p class=\"source\"><span>");
+            any = any || !sentence;
+            size_t length;
+            const char *unit = unit_in_name(child, &length);
+            if (sentence)
+                name_html(out, child->name, true);
+            else
+                head_html(out, child->name, length);
+            lw_text_add(out, sentence ? ": " : "\xC2\xA0");
+            cell(out, child, true);
+            if (unit[0] != '\0') {
+                lw_text_add(out, strcmp(unit, "deg") == 0 ? "" : "\xC2\xA0");
+                unit_html(out, unit);
+            }
+            lw_text_add(out, sentence ? "</p>\n" : "</span>");
+        }
+        lw_text_add(out, sentences == 0 && any ? "</p>\n" : "");
+    }
 }
 
 lw_status lw_sheet_list(lw_text *out, const lw_node *list, lw_error *err)
@@ -238,7 +381,7 @@ lw_status lw_sheet_list(lw_text *out, const lw_node *list, lw_error *err)
         lw_name_typeset(&caption, list->name, true);
         lw_status status = lw_text_check(&caption, err);
         if (status == LW_OK)
-            status = lw_sheet_table(out, caption.bytes, list, err);
+            status = lw_sheet_table(out, caption.bytes, list, NULL, err);
         lw_text_end(&caption);
         return status;
     }

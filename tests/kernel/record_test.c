@@ -700,8 +700,18 @@ static lw_report *sample_report(lw_error *err)
     }
     lw_node *texts = lw_add_list(m, "reasons", err);
     lw_add_text(texts, NULL, "because " EVIL, err);
+    lw_node *remarks = lw_add_list(m, "remarks", err);
+    lw_add_text(remarks, NULL, "remark " EVIL, err);
+    lw_add_number(m, "chi2", 12345.678, err);
+    lw_add_number(m, "chance", 1e-30, err);
+    lw_add_number(m, "length_nm", 1.23456789, err);
     lw_report_result(r, m, err);
-    lw_report_table(r, "caption " EVIL, list, err);
+    lw_report_fold(r, "fold " EVIL, err);
+    static const char *const columns[] = {"mixed", "size", "nothing", NULL};
+    lw_report_table(r, "chosen", list, columns, err);
+    lw_report_subheading(r, "below " EVIL, err);
+    lw_report_fold_end(r, err);
+    lw_report_table(r, "caption " EVIL, list, NULL, err);
     lw_report_figure(r, sample_figure(err), err);
     lw_report_figure(r, sample_figure(err), err);
     lw_report_provenance(r, m, err);
@@ -721,6 +731,12 @@ static void test_report(bool gnuplot)
     CHECK_CONTAINS(html, "&gt; 120\xC2\xA0nm⁻¹ (95 %)");
     CHECK_CONTAINS(html, "<th scope=\"col\" class=\"n\">size <span class=\"unit\">nm</span></th>");
     CHECK_CONTAINS(html, "FAIL");
+    CHECK_CONTAINS(html, "<p>To mind</p>\n<ul>\n<li>remark &lt;b&gt;");
+    CHECK_CONTAINS(html, "<span>chi2\xC2\xA0" "12346</span> · <span>chance\xC2\xA0&lt; 0.0001</span> · <span>length\xC2\xA0" "1.23457\xC2\xA0nm</span>");
+    CHECK_CONTAINS(html, "<details>\n<summary>fold &lt;b&gt;");
+    CHECK_CONTAINS(html, "</h3>\n</details>\n");
+    CHECK_CONTAINS(html, "<caption>chosen</caption>\n<thead><tr><th scope=\"col\" class=\"n\">mixed</th>"
+                         "<th scope=\"col\" class=\"n\">size <span class=\"unit\">nm</span></th></tr>");
     int scripts = 0;
     for (const char *at = html; (at = strstr(at, "<script")) != NULL; at++)
         scripts++;
@@ -797,7 +813,7 @@ static void test_memory(bool gnuplot)
         if (r != NULL) {
             status = lw_report_result(r, back, &fault);
             if (status == LW_OK)
-                status = lw_report_table(r, "c", lw_node_get(back, "columns"), &fault);
+                status = lw_report_table(r, "c", lw_node_get(back, "columns"), NULL, &fault);
             if (status == LW_OK)
                 status = lw_report_provenance(r, back, &fault);
             if (status == LW_OK)

@@ -167,10 +167,32 @@ describe("a recipe", function()
     assert.is_true(helper.exists(folder .. "/o/figures/own.png"))
   end)
 
+  it("shows a table's columns in the order asked for, and names figures' files by their section", function()
+    local code, _, err = run([[
+      local figure = lw.figure { name = "own", x = "a", y = "b", series = { { x = { 1, 2, 3 }, y = { 1, 2, 3 } } } }
+      local rows = { { name = "first", time_h = 2, chance = 1e-9 }, { name = "second", chi2 = 12.3456789, size = lw.quantity { 1, 0.1, "nm" } } }
+      job:write(lw.report { { table = rows, columns = { "time_h", "size", "name", "chi2", "chance", "absent" } },
+        { heading = "One", prefix = "one" }, figure, figure, { heading = "Two" }, figure,
+        { details = lw.result { size = lw.quantity { 1, 0.1, "nm" }, chi2 = 3.14159265, form = "round" } } })
+    ]], "scan=a.xy", "out=o")
+    assert.are.same({ 0, "" }, { code, err })
+    local page, heads = helper.read(folder .. "/o/report.html"), {}
+    for head in page:gmatch '<th scope="col"[^>]*>(.-)</th>' do heads[#heads + 1] = head:gsub("<[^>]*>", "") end
+    assert.are.same({ "time h", "size nm", "name", "chi2", "chance" }, heads)
+    assert.is_truthy(page:find("<td class=\"n\">&lt; 0.0001</td>", 1, true))
+    assert.is_truthy(page:find("<td class=\"n\">12.35</td>", 1, true))
+    assert.is_truthy(page:find("chi2\xC2\xA03.142</span> · <span>form\xC2\xA0round", 1, true))
+    for _, name in ipairs { "one_own", "one_own_2", "own" } do
+      assert.is_true(helper.exists(folder .. "/o/figures/" .. name .. ".svg"), name)
+    end
+    assert.is_false(helper.exists(folder .. "/o/figures/own_2.svg"))
+  end)
+
   it("refuses items that a report can't show", function()
     for item, message in pairs {
       ["print"] = "a function can't be shown", ["{ headng = 'x' }"] = "did you mean 'heading'",
-      ["{ verdict = 'good' }"] = "pass, attention, fail",
+      ["{ verdict = 'good' }"] = "pass, attention, fail", ["{ brief = {} }"] = "a table has no 'brief' part",
+      ["{ table = {}, columns = { 1 } }"] = "a column's name",
     } do
       local code, _, err = run("lw.report { " .. item .. " }", "scan=a.xy")
       assert.are.equal(1, code)
