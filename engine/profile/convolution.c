@@ -3,7 +3,6 @@
  * into every line, so nothing is divided or subtracted here. */
 #include "profile/deconvolution.h"
 
-#include "numeric/statistics.h"
 #include "numeric/voigt.h"
 
 #include <math.h>
@@ -43,12 +42,8 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
             net += above * above;
             profile->refold_points++;
         }
-        if (profile->refold_points > 0) {
-            profile->refold_chi2 = chi2 / (double)profile->refold_points;
-            profile->refold_p = lw_chi2_tail(chi2, (double)profile->refold_points);
-            /* noise taken off, more than a tenth of the line is not what the model says: not a matter of shape */
-            profile->refold_failed = profile->refold_p < 1e-6 && residual > 0.01 * net;
-        }
+        lw__set_refold(profile, chi2, (double)profile->refold_points, profile->refold_points, residual, net);
+        profile->assumed = "the sample's profile is a Voigt";
         size_t n = 161;
         double *curve[3];
         for (int i = 0; i < 3; i++)

@@ -13,7 +13,7 @@ typedef struct lw_deconvolution {
     lw_status (*run)(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err);
 } lw_deconvolution;
 
-extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_stokes;
+extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_physical, lw_deconvolution_stokes;
 
 /* Degrees of the line's own axis to nm^-1: ds = factor x dx. */
 double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile);
@@ -29,5 +29,13 @@ lw_status lw__take_lengths(lw_profiles *profiles, lw_profile *profile, const lw_
 
 /* Breadth as a quantity, or an upper limit (95 %) when it is below twice its u. */
 void lw__set_breadth(const lw_profiles *profiles, lw_profile *profile, double value, double u);
+
+/* Refold: chi2 with its degrees of freedom; lost = sum of r^2 - variance, net = sum of (line)^2. It fails when the
+ * misfit is beyond chance (1e-6) and more than a tenth of the line (in amplitude, noise taken off) is not given back:
+ * a matter of shape alone never reaches that. */
+void lw__set_refold(lw_profile *profile, double chi2, double freedom, size_t points, double lost, double net);
+
+/* The pure profile for figures, from the coefficients up to truncated_at, over +-4 breadths. */
+lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth_s, lw_error *err);
 
 #endif

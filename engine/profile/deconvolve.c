@@ -2,6 +2,7 @@
 /* Deconvolution on one footing: the Voigt parts and their covariance first, then the method's own. */
 #include "profile/deconvolution.h"
 
+#include "numeric/statistics.h"
 #include "numeric/voigt.h"
 
 #include <math.h>
@@ -9,13 +10,15 @@
 #include <string.h>
 
 static const double degree = M_PI / 180;
-static const lw_deconvolution *const methods[] = {&lw_deconvolution_convolution, &lw_deconvolution_stokes, NULL};
-static const char *const method_names[] = {"convolution", "stokes", NULL};
+static const lw_deconvolution *const methods[] = {&lw_deconvolution_convolution, &lw_deconvolution_stokes,
+                                                 &lw_deconvolution_physical, NULL};
+static const char *const method_names[] = {"convolution", "stokes", "physical", NULL};
 
 #define AT(field) offsetof(lw_deconvolve_options, field)
 const lw_option lw_deconvolve_option_table[] = {
     {"method", LW_OPTION_CHOICE, "", "convolution", 0, 0, method_names, AT(method),
-     "convolution: the Voigt fitted with the instrument inside; stokes: Fourier quotient"},
+     "convolution: the Voigt fitted with the instrument inside; stokes: Fourier quotient; physical: lognormal spheres x "
+     "strain, all lines fitted again"},
     {"length_step", LW_OPTION_NUMBER, "nm", "from the breadth", 0, 1000, NULL, AT(length_step_nm),
      "step of the column length L, 0 = from the breadth"},
     {"length_most", LW_OPTION_NUMBER, "nm", "from the breadth", 0, 1e5, NULL, AT(length_most_nm),
@@ -53,6 +56,45 @@ void lw__set_breadth(const lw_profiles *profiles, lw_profile *profile, double va
         profile->breadth_s = lw_upper_limit(limit, 0.95, "nm^-1");
         profile->breadth_deg = lw_upper_limit(limit / per_degree, 0.95, "deg");
     }
+}
+
+void lw__set_refold(lw_profile *profile, double chi2, double freedom, size_t points, double lost, double net)
+{
+    profile->refold_points = points;
+    profile->refold_freedom = fmax(freedom, 1);
+    profile->refold_chi2 = points > 0 ? chi2 / profile->refold_freedom : 0;
+    profile->refold_p = points > 0 ? lw_chi2_tail(chi2, profile->refold_freedom) : 1;
+    profile->refold_failed = profile->refold_p < 1e-6 && lost > 0.01 * net;
+}
+
+lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth, lw_error *err)
+{
+    size_t n = 161, last = profile->truncated_at;
+    double *curve[3];
+    for (int i = 0; i < 3; i++)
+        if ((curve[i] = lw_arena_take(&profiles->arena, n, sizeof(double), err)) == NULL)
+            return LW_OUT_OF_MEMORY;
+    if (!(breadth > 0) || last < 2)
+        return LW_OK;
+    double step = profile->length_nm[1];
+    for (size_t j = 0; j < n; j++) {
+        double s = breadth * 0.05 * ((double)j - 80), sum = 0, variance = 0;
+        for (size_t k = 0; k < last; k++) {
+            double phase = 2 * M_PI * profile->length_nm[k] * s, twice = (k == 0 ? 1 : 2) * step;
+            double c = cos(phase), d = sin(phase);
+            sum += twice * (profile->cosine[k] * c + profile->sine[k] * d);
+            variance += twice * twice *
+                        (profile->u_cosine[k] * profile->u_cosine[k] * c * c + profile->u_sine[k] * profile->u_sine[k] * d * d);
+        }
+        curve[0][j] = s;
+        curve[1][j] = sum;
+        curve[2][j] = sqrt(variance);
+    }
+    profile->n_curve = n;
+    profile->curve_s = curve[0];
+    profile->curve_intensity = curve[1];
+    profile->curve_u = curve[2];
+    return LW_OK;
 }
 
 lw_status lw__take_lengths(lw_profiles *profiles, lw_profile *profile, const lw_deconvolve_options *options,

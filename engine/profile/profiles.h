@@ -21,8 +21,10 @@ typedef struct lw_profile {
     double *cosine, *u_cosine, *sine, *u_sine; /* [n] */
     size_t truncated_at;          /* coefficients from here on are below the noise */
     const char *truncation;       /* the rule that chose it, in words */
+    const char *assumed;          /* what the method took for granted: separation, prior, regularisation */
     /* refold: instrument x pure profile against the data */
-    double refold_chi2;           /* per point */
+    double refold_chi2;           /* per degree of freedom */
+    double refold_freedom;        /* points less what the method fitted to them */
     size_t refold_points;
     double refold_p;              /* probability of a chi2 this large by chance */
     bool refold_failed;
@@ -35,7 +37,7 @@ typedef struct lw_profiles {
     lw_arena arena;
     const lw_lines *lines;             /* borrowed */
     const lw_calibration *calibration; /* borrowed, NULL if none */
-    const char *method;                /* "convolution", "stokes" */
+    const char *method;                /* "convolution", "stokes" ... */
     const char *source;                /* published source of the method */
     size_t n;
     lw_profile *profile;               /* supported lines only, ascending */
@@ -45,7 +47,7 @@ typedef struct lw_profiles {
 } lw_profiles;
 
 typedef struct lw_deconvolve_options {
-    int method;            /* "convolution", "stokes" */
+    int method;            /* of lw_deconvolve_option_table: "convolution", "stokes", "physical" ... */
     double length_step_nm; /* step of L; 0 = from the window */
     double length_most_nm; /* largest L; 0 = where the noise begins */
     double window;         /* half-width used for the Fourier sums in units of the breadth; 0 = as far as the neighbours allow */

@@ -28,7 +28,9 @@ lw_node *lw_profiles_tree(const lw_profiles *profiles, lw_arena *arena, lw_error
         lw_add_vector(row, "u_sine", profile->u_sine, profile->n_coefficients, "", err);
         lw_add_number(row, "truncated_at", (double)profile->truncated_at, err);
         lw_add_text(row, "truncation", profile->truncation, err);
+        lw_add_text(row, "assumed", profile->assumed ? profile->assumed : "", err);
         lw_add_number(row, "refold_chi2_per_point", profile->refold_chi2, err);
+        lw_add_number(row, "refold_freedom", profile->refold_freedom, err);
         lw_add_number(row, "refold_points", (double)profile->refold_points, err);
         lw_add_number(row, "refold_probability", profile->refold_p, err);
         lw_add_flag(row, "refold_failed", profile->refold_failed, err);

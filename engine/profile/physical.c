@@ -1,0 +1,87 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Deconvolution by convolution with a physical shape: see physical_fit.c. */
+#include "profile/separation.h"
+
+#include "numeric/statistics.h"
+
+#include <math.h>
+#include <stdio.h>
+
+/* Coefficients and pure profile of a line: means over the forms of strain, their scatter in the uncertainty. */
+static lw_status fill(lw_profiles *profiles, size_t k, const lw__physical_fit *fit, double breadth, lw_error *err)
+{
+    lw_profile *profile = &profiles->profile[k];
+    for (size_t i = 0; i < profile->n_coefficients; i++) {
+        double mean = 0, square = 0, variance = 0;
+        for (size_t m = 0; m < fit->n_members; m++) {
+            if (!(fit->weight[m] > 0))
+                continue;
+            double slope[4], own = 0;
+            double a = lw__shape_coefficient(&fit->shape[m][k], profile->length_nm[i], slope);
+            for (int p = 0; p < 4; p++)
+                for (int q = 0; q < 4; q++)
+                    own += slope[p] * slope[q] * fit->shape_covariance[m][16 * k + (size_t)(4 * p + q)];
+            mean += fit->weight[m] * a;
+            square += fit->weight[m] * a * a;
+            variance += fit->weight[m] * fmax(own, 0);
+        }
+        profile->cosine[i] = mean;
+        profile->u_cosine[i] = sqrt(variance + fmax(square - mean * mean, 0));
+    }
+    return lw__curve_of_coefficients(profiles, profile, breadth, err);
+}
+
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+{
+    lw_arena scratch;
+    lw__separation separation;
+    lw__physical_fit fit;
+    lw_arena_begin(&scratch, engine);
+    lw_status status = lw__separate_by_physics(engine, profiles, &scratch, &separation, &fit, err);
+    size_t n = profiles->n, stride = profiles->n_covariance;
+    const lw_scan *scan = profiles->lines->scan;
+    for (size_t k = 0; k < n && status == LW_OK; k++) {
+        lw_profile *profile = &profiles->profile[k];
+        for (size_t l = 0; l < n; l++)
+            profiles->covariance[profile->at_breadth * stride + profiles->profile[l].at_breadth] =
+                fit.covariance[k * n + l];
+        for (size_t l = 0; l < n; l++) { /* the Voigt's parts belong to another description of the line */
+            size_t at[2] = {profiles->profile[l].at_gauss, profiles->profile[l].at_lorentz};
+            for (int i = 0; i < 2; i++)
+                profiles->covariance[profile->at_breadth * stride + at[i]] =
+                    profiles->covariance[at[i] * stride + profile->at_breadth] = 0;
+        }
+        lw__set_breadth(profiles, profile, fit.breadth[k], sqrt(fit.covariance[k * n + k]));
+        if ((status = lw__take_lengths(profiles, profile, options, err)) != LW_OK ||
+            (status = fill(profiles, k, &fit, fit.breadth[k], err)) != LW_OK)
+            break;
+        double chi2 = 0, lost = 0, net = 0;
+        for (size_t i = 0; i < scan->n; i++) {
+            if (fabs(scan->two_theta_deg[i] - profile->line->two_theta.value) > 2 * profile->line->fwhm.value)
+                continue;
+            double r = separation.residual[i], v = profiles->lines->variance[i];
+            double above = scan->intensity[i] - r - separation.background[i];
+            chi2 += r * r / v;
+            lost += r * r - v;
+            net += above * above;
+            profile->refold_points++;
+        }
+        lw__set_refold(profile, chi2, (double)profile->refold_points, profile->refold_points, lost, net);
+        profile->truncation = "none: the shape has coefficients at every length";
+        profile->assumed = lw_arena_print(&profiles->arena, err,
+                                          "lognormal spheres x strain (%s %.2f, %s %.2f, %s %.2f by weight); reduced "
+                                          "chi-square %.3f; sigma and the correlation length shared by all lines",
+                                          fit.form[0], fit.weight[0], fit.form[1], fit.weight[1], fit.form[2],
+                                          fit.weight[2], fit.goodness);
+        if (profile->assumed == NULL)
+            status = LW_OUT_OF_MEMORY;
+    }
+    lw_arena_end(&scratch);
+    return status;
+}
+
+const lw_deconvolution lw_deconvolution_physical = {
+    .name = "physical",
+    .source = "lognormal spheres: Langford, Louer & Scardi (2000) J. Appl. Cryst. 33, 964; Gaussian strain: Warren & Averbach "
+              "(1950) J. Appl. Phys. 21, 595; the instrument inside the model",
+    .run = run};
