@@ -76,6 +76,7 @@ static void fill_finger(double s, double h, double two_theta_deg, size_t n, lw_v
         /* the overlap of specimen and slit is constant up to |S - H| and falls linearly to S + H */
         double overlap = fmin(2 * fmin(s, h), whole - kappa);
         node[i].offset = axial_shift(two_theta, kappa, &sine);
+        node[i].offset_slope = sqrt(1 + kappa * kappa) * sin(two_theta) / sine - 1;
         node[i].weight = du[i] * overlap / ((1 + kappa * kappa) * sine);
         sum += node[i].weight;
     }
@@ -112,17 +113,20 @@ static void axial_fill(lw_axial_kind kind, const double parameter[2], double two
         return;
     }
     if (kind != LW_AXIAL_SOLLER) {
-        node[0].offset = 0;
+        node[0].offset = node[0].offset_slope = 0;
         node[0].weight = 1;
         return;
     }
     double tangent = tan(two_theta_deg * degree / 2), offset[2][LW_AXIAL_NODES_MOST], weight[2][LW_AXIAL_NODES_MOST];
     fill_tail(parameter[0], -1 / (tangent * degree), count.part[0], offset[0], weight[0]);
     fill_tail(parameter[1], tangent / degree, count.part[1], offset[1], weight[1]);
+    double relative = 0.5 * degree * (tangent + 1 / tangent); /* d ln(tan(theta)) / d(2theta), 1/deg */
     for (size_t i = 0; i < count.part[0]; i++)
         for (size_t j = 0; j < count.part[1]; j++) {
-            node[i * count.part[1] + j].offset = offset[0][i] + offset[1][j];
-            node[i * count.part[1] + j].weight = weight[0][i] * weight[1][j];
+            lw_voigt_node *at = &node[i * count.part[1] + j];
+            at->offset = offset[0][i] + offset[1][j];
+            at->offset_slope = relative * (offset[1][j] - offset[0][i]);
+            at->weight = weight[0][i] * weight[1][j];
         }
 }
 
@@ -217,6 +221,7 @@ size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voig
         for (size_t i = 0; i < n_axial; i++) {
             node[n] = emission[c];
             node[n].offset += axial[i].offset;
+            node[n].offset_slope += axial[i].offset_slope;
             node[n].weight *= axial[i].weight;
             for (int k = 0; k < LW_VOIGT_SHAPES; k++) {
                 node[n].d_offset[k] = axial[i].d_offset[k];
@@ -234,13 +239,16 @@ size_t lw_line_nodes_merged(const lw_node_recipe *recipe, double two_theta_deg, 
     const bool none[LW_VOIGT_SHAPES] = {false};
     size_t n = emission_nodes(recipe, two_theta_deg, node);
     size_t n_axial = lw_axial_nodes_at(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, none, axial);
-    double mean = 0, square = 0;
+    double mean = 0, square = 0, slope = 0;
     for (size_t i = 0; i < n_axial; i++) {
         mean += axial[i].weight * axial[i].offset;
         square += axial[i].weight * axial[i].offset * axial[i].offset;
+        slope += axial[i].weight * axial[i].offset_slope;
     }
-    for (size_t c = 0; c < n; c++)
+    for (size_t c = 0; c < n; c++) {
         node[c].offset += mean;
+        node[c].offset_slope += slope;
+    }
     *extra_variance = fmax(square - mean * mean, 0) * 8 * M_LN2;
     return n;
 }

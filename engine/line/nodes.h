@@ -23,7 +23,8 @@ lw_axial_count lw_axial_copies(lw_axial_kind kind, const double parameter[2], do
  * Given:  kind, parameter[2]  see lw_axial_kind; both 0 = no axial divergence
  *         two_theta_deg       0 to 180
  *         width_deg           FWHM of what the copies are convolved with: sets how many are needed
- * Returned: node[LW_AXIAL_NODES_MOST].offset (deg), .weight (sum 1); the return value is their number.
+ * Returned: node[LW_AXIAL_NODES_MOST].offset (deg), .offset_slope (the same against 2theta), .weight (sum 1); the
+ *           return value is their number.
  * Notes: for LW_AXIAL_FINGER the substitution kappa = h/L takes the inverse-square-root singularity of the
  *   published weight away, W(kappa) dkappa / ((1 + kappa^2) sin(2phi)), cos(2phi) = cos(2theta) sqrt(1 + kappa^2);
  *   for LW_AXIAL_SOLLER the variable is the angle m or p itself. */

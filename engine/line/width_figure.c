@@ -104,8 +104,10 @@ void lw_width_figure_at(const lw_width_function *function, double two_theta_deg,
                                           function->covariance[LW_AXIAL_2][LW_AXIAL_2] > 0 && axial[1] > 0};
     of.n = lw_axial_nodes_at(function->axial, axial, two_theta_deg,
                              lw_axial_copies(function->axial, axial, two_theta_deg, width), slopes, of.node);
-    for (size_t i = 0; i < of.n; i++)
+    for (size_t i = 0; i < of.n; i++) {
         figure->centroid_deg += of.node[i].weight * of.node[i].offset;
+        of.node[i].offset_slope = 0; /* the angle is held here */
+    }
     figure->top_deg = top_of(&of, width);
     point top = at(&of, figure->top_deg);
     double right = crossing(&of, 0.5 * top.value, figure->top_deg, 0.25 * width);
