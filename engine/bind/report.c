@@ -15,6 +15,8 @@
 #include <stdio.h>
 #include <string.h>
 
+#define COLUMNS_MOST 1000
+
 /* User values: list of figures, list of the prefixes of their files, the prefix of the present section. */
 enum { FIGURES = 1, SUBJECT, PREFIXES, PREFIX, VALUES = 4 };
 
@@ -305,6 +307,8 @@ static const char *const *push_columns(lua_State *L, int item)
     int list = lua_gettop(L);
     lwb_want_table(L, list, "report", "the field 'columns'");
     size_t n = (size_t)lua_rawlen(L, list);
+    if (n > COLUMNS_MOST) /* the length of a table can be as large as a number can */
+        lwb_refuse(L, "choose fewer", "report: %zu columns are too many", n);
     const char **columns = lua_newuserdatauv(L, (n + 1) * sizeof *columns, 0);
     for (size_t i = 0; i < n; i++) {
         lua_rawgeti(L, list, (lua_Integer)i + 1);
