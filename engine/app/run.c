@@ -113,7 +113,9 @@ lwa_exit lwa_call(lua_State *L, int n_arguments, int n_results, lwa_progress *pr
 
 bool lwa_load(lua_State *L, const char *text, size_t size, const char *name)
 {
-    if (luaL_loadbufferx(L, text, size, name, "t") == LUA_OK)
+    if (size > 0 && text[0] == LUA_SIGNATURE[0]) /* Lua's own message has no name in it */
+        lua_pushfstring(L, "%s: compiled Lua is not run; give the recipe's text", *name == '@' ? name + 1 : name);
+    else if (luaL_loadbufferx(L, text, size, name, "t") == LUA_OK)
         return true;
     lwa_tell_error(L, NULL);
     return false;

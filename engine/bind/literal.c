@@ -98,9 +98,12 @@ void lwb_load_literal(lua_State *L, const char *path)
         lua_remove(L, -2);
     } else
         lua_remove(L, -2);
-    if (status != LUA_OK)
-        lwb_refuse(L, "a data file holds `return { ... }` with constants", "%s",
-                   lua_type(L, -1) == LUA_TSTRING ? lua_tostring(L, -1) : "can't be read");
+    if (status != LUA_OK) {
+        const char *text = lua_type(L, -1) == LUA_TSTRING ? lua_tostring(L, -1) : "can't be read";
+        bool placed = strncmp(text, path, strlen(path)) == 0; /* Lua's own messages carry file:line */
+        lwb_refuse(L, "a data file holds `return { ... }` with constants", "%s%s%s", placed ? "" : path,
+                   placed ? "" : ": ", text);
+    }
     if (lua_type(L, -1) != LUA_TTABLE)
         lwb_refuse(L, "a data file holds `return { ... }` with constants", "%s: returns a %s, not a table", path,
                    luaL_typename(L, -1));

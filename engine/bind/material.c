@@ -169,13 +169,16 @@ static int make(lua_State *L)
     if (lwb_test(L, 1, &lwb_material_noun) != NULL)
         return 1;
     lw_material *material = lwb_new(L, &lwb_material_noun, sizeof *material, 0);
+    const char *called = VERB; /* in messages: a file by its name */
     if (lua_type(L, 1) == LUA_TTABLE)
         lua_pushvalue(L, 1);
-    else
-        lwb_find_literal(L, "materials", VERB, lwb_text(L, 1, VERB, "the name"));
+    else {
+        called = lwb_text(L, 1, VERB, "the name");
+        lwb_find_literal(L, "materials", VERB, called);
+    }
     int at = lua_gettop(L);
-    lwb_only_keys(L, at, VERB, keys);
-    lwb_read_material(L, at, VERB, material);
+    lwb_only_keys(L, at, called, keys);
+    lwb_read_material(L, at, called, material);
     lua_settop(L, 2);
     return 1;
 }

@@ -7,21 +7,22 @@
 
 #define VERB "standard"
 
-static void read_standard(lua_State *L, int at, lw_standard *standard)
+/* called: how messages name it, a file by its path */
+static void read_standard(lua_State *L, int at, const char *called, lw_standard *standard)
 {
     static const char *const keys[] = {
         "name",       "title",   "aliases", "formula",       "space_group",      "setting",        "unit",
         "cell",       "stiffness_gpa", "stiffness_source", "burgers_nm", "burgers", "density_kg_m3", "hazard",
         "source",     "certificate", "expanded_uncertainty", "coverage_factor", "temperature_c", "domain_size_nm",
         "unverified", NULL};
-    lwb_only_keys(L, at, VERB, keys);
-    lwb_read_material(L, at, VERB, &standard->material);
+    lwb_only_keys(L, at, called, keys);
+    lwb_read_material(L, at, called, &standard->material);
     memcpy(standard->name, standard->material.name, sizeof standard->name);
-    lwb_copy_text(L, at, "certificate", VERB, true, standard->certificate, sizeof standard->certificate);
-    standard->coverage_factor = lwb_field_number(L, at, "coverage_factor", VERB, 1);
-    standard->temperature_c = lwb_field_number(L, at, "temperature_c", VERB, 25);
-    standard->domain_size_nm = lwb_field_number(L, at, "domain_size_nm", VERB, 0);
-    standard->unverified = lwb_field_flag(L, at, "unverified", VERB, false);
+    lwb_copy_text(L, at, "certificate", called, true, standard->certificate, sizeof standard->certificate);
+    standard->coverage_factor = lwb_field_number(L, at, "coverage_factor", called, 1);
+    standard->temperature_c = lwb_field_number(L, at, "temperature_c", called, 25);
+    standard->domain_size_nm = lwb_field_number(L, at, "domain_size_nm", called, 0);
+    standard->unverified = lwb_field_flag(L, at, "unverified", called, false);
 }
 
 static int make(lua_State *L)
@@ -30,11 +31,14 @@ static int make(lua_State *L)
     if (lwb_test(L, 1, &lwb_standard_noun) != NULL)
         return 1;
     lw_standard *standard = lwb_new(L, &lwb_standard_noun, sizeof *standard, 0);
+    const char *called = VERB;
     if (lua_type(L, 1) == LUA_TTABLE)
         lua_pushvalue(L, 1);
-    else
-        lwb_find_literal(L, "reference", VERB, lwb_text(L, 1, VERB, "the name"));
-    read_standard(L, lua_gettop(L), standard);
+    else {
+        called = lwb_text(L, 1, VERB, "the name");
+        lwb_find_literal(L, "reference", VERB, called);
+    }
+    read_standard(L, lua_gettop(L), called, standard);
     lua_settop(L, 2);
     return 1;
 }

@@ -139,6 +139,15 @@ static void write_verdict(lw_calibration *calibration, const lw_lines *lines, co
                                        fabs(rows->residual[i]) / u), err);
         }
     }
+    bool far = false; /* a wavelength is known to 1e-4 or so: more says that something else is wrong */
+    for (size_t i = 0; i < set->n; i++)
+        if (strcmp(set->kind[i]->name, "wavelength") == 0 && fabs(set->value[i]) > 1e-3) {
+            far = true;
+            lw_add_text(list, NULL,
+                        lw_arena_print(&calibration->arena, err,
+                                       "the lines ask for a wavelength %.2f %% from the one given: is it the right standard, "
+                                       "and the right radiation?", 100 * set->value[i]), err);
+        }
     if (lines->misfit[0] != '\0')
         lw_add_text(list, NULL, lines->misfit, err);
     if (strncmp(rows->radius_from, "assumed", 7) == 0 && lw_node_get(root, "aberrations") != NULL &&
@@ -153,7 +162,7 @@ static void write_verdict(lw_calibration *calibration, const lw_lines *lines, co
                     "the profile model does not describe this standard: its widths are an average, wrong by more than their "
                     "uncertainty at some angles (is the specimen transparent, the domain size small, the geometry another?)",
                     err);
-    const char *verdict = rows->rms > 0.02 ? "fail" : rows->rms > 0.005 || off > 0 || off_shape ? "attention" : "pass";
+    const char *verdict = rows->rms > 0.02 || far ? "fail" : rows->rms > 0.005 || off > 0 || off_shape ? "attention" : "pass";
     snprintf(calibration->verdict, sizeof calibration->verdict, "%s", verdict);
     lw_add_text(root, "verdict", verdict, err);
 }
@@ -275,7 +284,27 @@ static lw_status read_covariance(const lw_node *root, const char *file, lw_calib
                 *cell[i][j] = row->vector[j];
         }
     }
+    for (i = 0; i < n; i++)
+        for (size_t j = 0; j < i; j++)
+            if (cell[i][j] != NULL) {
+                double product = *cell[i][i] * *cell[j][j], one = *cell[i][j], other = *cell[j][i];
+                if (one * one > product * (1 + 1e-6) || fabs(one - other) > 1e-6 * sqrt(product))
+                    return lacking(file, "covariance.matrix holds what can't be a covariance", err);
+            }
     return LW_OK;
+}
+
+/* A width function that gives no width somewhere in its range is no profile. */
+static bool has_width(const lw_calibration *calibration)
+{
+    const double *value = calibration->profile.value;
+    for (int i = 0; i <= 16; i++) {
+        double angle = calibration->valid_low_deg + (calibration->valid_high_deg - calibration->valid_low_deg) * i / 16;
+        double gauss = lw_width_gauss_variance(value, angle, NULL), lorentz = lw_width_lorentz(value, angle, NULL);
+        if (!(isfinite(gauss) && isfinite(lorentz) && gauss + lorentz > 0) || value[LW_AXIAL_1] < 0 || value[LW_AXIAL_2] < 0)
+            return false;
+    }
+    return true;
 }
 
 static lw_status read_record(const lw_node *record, const char *file, lw_calibration *calibration, lw_error *err)
@@ -302,6 +331,8 @@ static lw_status read_record(const lw_node *record, const char *file, lw_calibra
             return lacking(file, "profile lacks a parameter", err);
         calibration->profile.value[i] = value;
     }
+    if (!has_width(calibration))
+        return lacking(file, "profile gives no width within valid_two_theta", err);
     const char *axial = lw_node_text(lw_node_get(profile, "axial"), "model", "");
     int kind = 0;
     while (lw_axial_names[kind] != NULL && strcmp(lw_axial_names[kind], axial) != 0)
