@@ -35,7 +35,7 @@ void lw_engine_end(lw_engine *engine)
 lw_status lw_engine_poll(lw_engine *engine, lw_error *err)
 {
     if (engine->cancelled != NULL && engine->cancelled(engine->user))
-        return lw_fail(err, LW_CANCELLED, NULL, "stopped on request");
+        return lw_fail(err, LW_CANCELLED, NULL, "interrupted: stopped on request");
     return LW_OK;
 }
 

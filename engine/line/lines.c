@@ -23,7 +23,8 @@ static lw_status normal_matrix(lw_fit_state *fit, const double *p, size_t n, lw_
 static lw_status undetermined(const lw_fit_state *fit, const char *name, lw_error *err)
 {
     return lw_fail_at(err, LW_NOT_SUPPORTED, fit->scan->file, 0,
-                      "hold it (fixed), use widths = \"smooth\", or leave the line out",
+                      "is it the right material and radiation? if so hold it (fixed), use widths = \"smooth\", or leave the "
+                      "line out",
                       "the data do not determine the parameter '%s'", name);
 }
 
@@ -128,7 +129,10 @@ static lw_status covariance(lw_fit_state *fit, lw_error *err)
         return status;
     lines->chi2 = normal.chi2;
     for (size_t i = 0; i < n; i++) {
-        skip[i] = fit->fixed[i];
+        /* a width at 0 still has an uncertainty; an axial tail at 0 has none to first order and would only blur the places */
+        bool axial = i >= lw_model_border(model) + model->n_background &&
+                     model->global[i - lw_model_border(model) - model->n_background].parameter >= LW_AXIAL_1;
+        skip[i] = fit->fixed[i] || (axial && fit->at_bound[i]);
         memcpy(pp + i * n, normal.h + i * whole, n * sizeof *pp);
     }
     status = lw_invert_normal(fit->engine, pp, n, skip, c, &weakest, err);
@@ -212,6 +216,17 @@ static lw_status statistics(lw_fit_state *fit, lw_error *err)
         square += z * z;
         before = z;
     }
+    double missed = 0, lines_square = 0;
+    for (size_t i = 0; i < n; i++) {
+        double r = scan->intensity[i] - lines->fitted[i], net = scan->intensity[i] - lines->background[i];
+        missed += r * r - lines->variance[i];
+        lines_square += net * net - lines->variance[i];
+    }
+    if (lines_square > 0 && missed > 0.25 * lines_square)
+        return lw_fail_at(err, LW_NOT_SUPPORTED, scan->file, 0,
+                          "is it the right material and radiation, and is it alone in the specimen?",
+                          "the reflections describe only %.0f %% of what stands above the background",
+                          100 * (1 - sqrt(missed / lines_square)));
     double freedom = (double)n - (double)free_parameters;
     if (!(freedom > 0))
         return lw_fail_at(err, LW_NOT_SUPPORTED, scan->file, 0, "use fewer lines or a longer scan",

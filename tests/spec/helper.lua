@@ -56,7 +56,7 @@ function helper.run(folder, arguments, options)
   end
   local guard = "timeout -k 5 60"
   if options.signal_after then
-    guard = "timeout --preserve-status -s INT -k 10 " .. options.signal_after
+    guard = "timeout --foreground --preserve-status -s INT -k 10 " .. options.signal_after
   end
   local input = "/dev/null"
   if options.input then
