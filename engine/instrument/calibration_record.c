@@ -162,6 +162,11 @@ static void write_verdict(lw_calibration *calibration, const lw_lines *lines, co
                     "the profile model does not describe this standard: its widths are an average, wrong by more than their "
                     "uncertainty at some angles (is the specimen transparent, the domain size small, the geometry another?)",
                     err);
+    if (rows->rms > 0.005)
+        lw_add_text(list, NULL,
+                    lw_arena_print(&calibration->arena, err,
+                                   "after the aberrations the lines still scatter by %.4f deg rms about their certified "
+                                   "places (attention above 0.005 deg, fail above 0.02 deg)", rows->rms), err);
     const char *verdict = rows->rms > 0.02 || far ? "fail" : rows->rms > 0.005 || off > 0 || off_shape ? "attention" : "pass";
     snprintf(calibration->verdict, sizeof calibration->verdict, "%s", verdict);
     lw_add_text(root, "verdict", verdict, err);
