@@ -109,8 +109,6 @@ local positions_figure = lw.figure {
   },
 }
 
-job:check(instrument.verdict ~= "fail", "calibration: " .. instrument.verdict)
-
 -- The report opens with what protects people.
 local items = {
   title = "Calibration of a diffractometer",
