@@ -92,16 +92,23 @@ static void fill_tail(double most, double scale_deg, size_t n, double *offset, d
         weight[0] = 1;
         return;
     }
-    double u[LW_AXIAL_NODES_MOST], sum = 0;
+    double u[LW_AXIAL_NODES_MOST], sum = 0, mean = 0, square = 0;
     place(n, u, weight);
     for (size_t i = 0; i < n; i++) {
         double rest = 1 - u[i], density = u[i] < 0.5 ? 1 - 6 * u[i] * u[i] * rest : 2 * rest * rest * rest;
-        offset[i] = scale_deg * most * most * u[i] * u[i];
+        offset[i] = u[i] * u[i];
         weight[i] *= density;
         sum += weight[i];
+        mean += weight[i] * offset[i];
+        square += weight[i] * offset[i] * offset[i];
     }
-    for (size_t i = 0; i < n; i++)
+    /* few copies under a wide profile: mean (1/12) and variance (17/1440) of u^2 are kept, whatever their number */
+    mean /= sum;
+    double variance = square / sum - mean * mean, stretch = sqrt(17.0 / 1440 / variance);
+    for (size_t i = 0; i < n; i++) {
         weight[i] /= sum;
+        offset[i] = scale_deg * most * most * (1.0 / 12 + stretch * (offset[i] - mean));
+    }
 }
 
 /* Copies for given parameters, in a given number, so that derivatives can be taken at the same number. */
