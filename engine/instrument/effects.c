@@ -2,6 +2,7 @@
 #include "instrument/effects.h"
 
 #include "line/nodes.h"
+#include "numeric/random.h"
 
 #include <math.h>
 #include <string.h>
@@ -84,8 +85,10 @@ lw_status lw_effect_simulate(lw_engine *engine, const lw_calibration *instrument
                      lines->height ? lines->height[k] : 1, n, angle, x, line, node, counts);
         /* whole counts, as a detector gives: their rounding is far below counting noise, and tells the fit how
          * sharp its end need be */
+        lw_random random;
+        lw_random_begin(&random, how->seed, 0);
         for (size_t i = 0; i < n; i++)
-            counts[i] = round(counts[i]);
+            counts[i] = how->seed > 0 ? lw_random_poisson(&random, counts[i]) : round(counts[i]);
         lw_scan_options options = lw_scan_defaults();
         options.radiation = &instrument->radiation;
         status = lw_scan_make(engine, "computed scan of a sample", n, angle, counts, NULL, &options, scan, err);
@@ -149,9 +152,9 @@ static lw_status line_by_line(lw_engine *engine, const lw_scan *scan, const lw_c
     return LW_OK;
 }
 
-/* With the narrowest line sampled `points` times over its FWHM. */
+/* With counting noise of a seed, or (0) without noise. */
 static lw_status find(lw_engine *engine, const lw_calibration *old, const lw_calibration *now,
-                      const lw_effect_lines *lines, double points, lw_effect *effect, lw_error *err)
+                      const lw_effect_lines *lines, uint64_t seed, lw_effect *effect, lw_error *err)
 {
     double first = lines->reflection[0].two_theta_deg, last = lines->reflection[lines->n - 1].two_theta_deg;
     double variance, lorentz, wavelength = lw_radiation_wavelength(&now->radiation);
@@ -165,9 +168,10 @@ static lw_status find(lw_engine *engine, const lw_calibration *old, const lw_cal
     lw_effect_scan how = {.size_nm = effect->size_nm,
                           .strain = effect->strain,
                           .polarised = strcmp(now->geometry, "capillary") == 0 ? 0.05 : 0.5,
-                          .step_deg = fmin(fmax(narrow / points, 0.002), 0.05),
-                          .counts = 10000,
-                          .background = 100};
+                          .step_deg = fmin(fmax(narrow / 8, 0.002), 0.05),
+                          .seed = seed,
+                          .counts = seed > 0 ? 1e6 : 1e4,
+                          .background = seed > 0 ? 1e4 : 1e2};
     how.low_deg = fmax(first - 6, 0.5 * first);
     how.high_deg = fmin(last + fmax(6, 4 * figure.fwhm_deg), 0.5 * (last + 178));
     lw_scan *scan = NULL;
@@ -201,14 +205,14 @@ static lw_status find(lw_engine *engine, const lw_calibration *old, const lw_cal
 lw_status lw_effect_find(lw_engine *engine, const lw_calibration *old, const lw_calibration *now,
                          const lw_effect_lines *lines, lw_effect *effect, lw_error *err)
 {
-    /* data without noise can hold a fit at the last rounding of chi-square; another sampling frees it */
-    static const double points[] = {8, 7.1, 9.3};
-    lw_status status = LW_OK;
-    for (size_t i = 0; i < sizeof points / sizeof *points; i++) {
+    /* data without noise can hold a fit at the last rounding of chi-square; noise of 1e6 counts frees it, and moves
+     * the figures by a thousandth */
+    for (uint64_t seed = 0;; seed++) {
         lw_error why = LW_ERROR_NONE;
-        status = find(engine, old, now, lines, points[i], effect, &why);
-        if (status != LW_NO_CONVERGENCE || i + 1 == sizeof points / sizeof *points)
-            return status == LW_OK ? LW_OK : lw_fail(err, status, why.remedy, "%s", why.message);
+        lw_status status = find(engine, old, now, lines, seed, effect, &why);
+        if (status == LW_OK)
+            return LW_OK;
+        if (status != LW_NO_CONVERGENCE || seed == 3)
+            return lw_fail(err, status, why.remedy, "%s", why.message);
     }
-    return status;
 }

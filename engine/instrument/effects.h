@@ -1,11 +1,13 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* What a change of the instrument does to results: samples of known size and strain are measured on the
  * instrument as it is now and analysed with the calibration from before. Nothing is approximated: the scan is
- * computed without noise and goes through the line fit that every sample goes through. */
+ * computed without noise worth the name and goes through the line fit that every sample goes through. */
 #ifndef LW_INSTRUMENT_EFFECTS_H
 #define LW_INSTRUMENT_EFFECTS_H
 
 #include "instrument/calibration.h"
+
+#include <stdint.h>
 
 /* What breadths line by line give: 0 = the lines show no such part. */
 typedef struct lw_effect_breadths {
@@ -38,10 +40,12 @@ typedef struct lw_effect_lines {
  * Given:  instrument   whose profile the lines have, at its radiation
  *         lines        where, 2theta at the reference wavelength; aberrations of position are not applied
  *         size_nm, strain as in lw_effect; polarised as in lw_fit_options
- *         low_deg, high_deg, step_deg of the scan; counts at the top of the highest line, background counts
- * Returned: *scan of expected counts, no noise; free with lw_scan_free(). */
+ *         low_deg, high_deg, step_deg of the scan; counts at the top of the highest line, background counts;
+ *         seed of the counting noise, 0 = none: expected counts, rounded
+ * Returned: *scan; free with lw_scan_free(). */
 typedef struct lw_effect_scan {
     double size_nm, strain, polarised, low_deg, high_deg, step_deg, counts, background;
+    uint64_t seed;
 } lw_effect_scan;
 lw_status lw_effect_simulate(lw_engine *engine, const lw_calibration *instrument, const lw_effect_lines *lines,
                              const lw_effect_scan *how, lw_scan **scan, lw_error *err);
