@@ -38,8 +38,8 @@ static void add_trace(lua_State *L, luaL_Buffer *out, const char *message)
 /* Turns an error into its text with a traceback; an error that asks to end quietly stays as it is. */
 static int handle(lua_State *L)
 {
-    if (lua_type(L, 1) == LUA_TTABLE && luaL_getmetafield(L, 1, "__name") == LUA_TSTRING &&
-        strcmp(lua_tostring(L, -1), "linewright.error") == 0) {
+    if (lua_type(L, 1) == LUA_TTABLE && lua_getmetatable(L, 1) && luaL_getmetatable(L, "linewright.error") == LUA_TTABLE &&
+        lua_rawequal(L, -1, -2)) {
         lua_getfield(L, 1, "kind");
         if (lua_type(L, -1) == LUA_TSTRING && strcmp(lua_tostring(L, -1), "help") == 0) {
             lua_settop(L, 1);
@@ -66,6 +66,9 @@ void lwa_tell_error(lua_State *L, lwa_progress *progress)
         lwa_progress_clear(progress);
     fflush(stdout);
     fprintf(stderr, "%s\n", message ? message : "(an error without text)");
+    /* the engine says only that it was stopped, not by whom */
+    if (lwa_stop_reason() == LWA_TIME_IS_UP && (message == NULL || strstr(message, "time limit") == NULL))
+        fprintf(stderr, "the time limit is reached\n");
     lua_pop(L, 1);
 }
 

@@ -30,6 +30,9 @@ typedef struct lw_engine {
     lw_cpu cpu;                                     /* rung asked for */
     bool (*cancelled)(void *user);                  /* polled in long loops; NULL = never */
     void (*progress)(void *user, const char *what, double fraction); /* NULL = nobody listens */
+    const char *fence;                              /* files are written only below this folder, where no link is
+                                                       followed; NULL = anywhere */
+    bool fence_no_link;                             /* the fence itself must not be a link */
     void *user;                                     /* handed to cancelled() and progress() */
     void *plans;                                    /* Fourier plans, owned by numeric/fft */
     void (*free_plans)(struct lw_engine *engine);   /* set by the first transform */

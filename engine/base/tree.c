@@ -17,10 +17,16 @@ static lw_node *add(lw_node *parent, const char *name, lw_node_kind kind, lw_err
 {
     if (parent == NULL)
         return NULL;
+    if (parent->depth >= LW_TREE_DEEPEST) {
+        lw_fail(err, LW_BAD_ARGUMENT, "see whether a table holds itself", "values are nested more than %d levels deep",
+                LW_TREE_DEEPEST);
+        return NULL;
+    }
     lw_node *node = lw_arena_take(parent->arena, 1, sizeof *node, err);
     if (node == NULL)
         return NULL;
     node->kind = kind;
+    node->depth = parent->depth + 1;
     node->arena = parent->arena;
     if (name != NULL && (node->name = lw_arena_text(parent->arena, name, err)) == NULL)
         return NULL;

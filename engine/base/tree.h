@@ -19,6 +19,9 @@ typedef enum lw_node_kind {
     LW_NODE_VECTOR    /* numbers of one kind, for curves */
 } lw_node_kind;
 
+/* Whoever walks a tree calls itself for each level, so there are never more than this. */
+#define LW_TREE_DEEPEST 250
+
 typedef struct lw_node lw_node;
 struct lw_node {
     lw_node_kind kind;
@@ -34,6 +37,7 @@ struct lw_node {
     const char *unit;       /* of the vector */
     lw_node *first, *last;  /* children */
     lw_node *next;          /* sibling */
+    int depth;              /* 0 at the root */
     lw_arena *arena;
 };
 
@@ -42,7 +46,8 @@ lw_node *lw_tree_new(lw_arena *arena, lw_error *err);
 
 /* Each adds one child to a group (name != NULL) or list (name NULL) and returns it, NULL on refusal.
  * `parent` may be NULL (an earlier refusal): the call then does nothing, so that a chain of calls
- * needs one check, of err->status, at its end. Strings and vectors are copied. */
+ * needs one check, of err->status, at its end. Strings and vectors are copied. LW_BAD_ARGUMENT beyond
+ * LW_TREE_DEEPEST levels. */
 lw_node *lw_add_group(lw_node *parent, const char *name, lw_error *err);
 lw_node *lw_add_list(lw_node *parent, const char *name, lw_error *err);
 lw_node *lw_add_quantity(lw_node *parent, const char *name, lw_quantity quantity, const char *definition,

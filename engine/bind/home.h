@@ -27,6 +27,8 @@ typedef struct lwb_home {
     char recipe_hash[65];    /* SHA-256 of the bytes that were run; "" if not known */
     char out[LWB_PATH_MOST]; /* folder under which may be written, set by lw.recipe; "" before */
     bool out_is_default;     /* the user did not choose it: it must not be a link */
+    char fence[LWB_PATH_MOST]; /* out of the outermost recipe; the engine writes nowhere else if confined */
+    int inner;               /* recipes that run as a step of another one now */
 } lwb_home;
 
 /* The home of a state, made at the first call. */

@@ -107,7 +107,7 @@ int lwb_job_once(lua_State *L)
     lw_status status = lw_json_write(entry->root, &text, &err);
     if (status == LW_OK) {
         flatten(text.bytes);
-        status = lw_append_line(path, text.bytes, &err);
+        status = lw_append_line(lwb_engine(L), path, text.bytes, &err);
     }
     lw_text_end(&text);
     lwb_check(L, status, &err);

@@ -55,7 +55,7 @@ void lwb_allow_write(lua_State *L, const char *path, const char *verb)
 {
     const lwb_home *home = lwb_home_of(L);
     lw_error err = LW_ERROR_NONE;
-    size_t n = strlen(home->out);
+    size_t n = strlen(home->out), n_fence = strlen(home->fence);
     if (!home->confined) {
         char folder[LWB_PATH_MOST];
         if (n > 0 && strncmp(path, home->out, n) == 0 && path[n] == '/' && strlen(path) < sizeof folder) {
@@ -70,15 +70,20 @@ void lwb_allow_write(lua_State *L, const char *path, const char *verb)
     if (strncmp(path, home->out, n) != 0 || path[n] != '/')
         lwb_refuse(L, "use job:path(name), or start with --trusted if you trust the recipe",
                    "%s: '%.200s' is not under %s", verb, path, home->out);
+    /* the outermost recipe's folder is the user's choice; what lies below it, an inner recipe's own folder
+     * included, is walked part by part */
     struct stat info;
-    if (home->out_is_default && lstat(home->out, &info) == 0 && S_ISLNK(info.st_mode))
-        lwb_refuse(L, "choose it yourself with out=DIR", "%s: the folder '%s' is a link", verb, home->out);
-    lwb_check(L, lw_make_folder(home->out, &err), &err);
-    int at = open(home->out, O_RDONLY | O_DIRECTORY | O_CLOEXEC);
+    bool chosen = !home->engine.fence_no_link;
+    if (!chosen && lstat(home->fence, &info) == 0 && S_ISLNK(info.st_mode))
+        lwb_refuse(L, "choose it yourself with out=DIR", "%s: the folder '%s' is a link", verb, home->fence);
+    if (strncmp(path, home->fence, n_fence) != 0 || path[n_fence] != '/')
+        lwb_refuse(L, NULL, "%s: '%.200s' is not under %s", verb, path, home->fence);
+    lwb_check(L, lw_make_folder(home->fence, &err), &err);
+    int at = open(home->fence, O_RDONLY | O_DIRECTORY | O_CLOEXEC | (chosen ? 0 : O_NOFOLLOW));
     if (at < 0)
-        lwb_refuse(L, NULL, "%s: can't open the folder %s: %s", verb, home->out, strerror(errno));
+        lwb_refuse(L, NULL, "%s: can't open the folder %s: %s", verb, home->fence, strerror(errno));
     const char *what = NULL;
-    if (walk(at, path + n + 1, &what) != 0) /* closes `at` */
+    if (walk(at, path + n_fence + 1, &what) != 0) /* closes `at` */
         lwb_refuse(L, "give a plain name below the out folder", "%s: '%.200s' is refused: %s", verb, path, what);
 }
 

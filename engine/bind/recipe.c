@@ -208,6 +208,11 @@ static int make(lua_State *L)
     lua_setfield(L, 5, "out");
     lua_getfield(L, 5, " out is default");
     home->out_is_default = lua_toboolean(L, -1);
+    if (home->confined && home->inner == 0) {
+        memcpy(home->fence, home->out, n + 1);
+        home->engine.fence = home->fence;
+        home->engine.fence_no_link = home->out_is_default;
+    }
     lua_pushnil(L);
     lua_setfield(L, 5, " out is default");
     lwb_new(L, &lwb_recipe_noun, sizeof(int), 5);

@@ -117,7 +117,9 @@ int lwb_job_run(lua_State *L)
     snprintf(home->recipe, sizeof home->recipe, "%s", path);
     snprintf(home->recipe_hash, sizeof home->recipe_hash, "%s", hash);
     lua_pushvalue(L, chunk);
+    home->inner++;
     int result = lua_pcall(L, 0, 0, 0);
+    home->inner--;
 
     snprintf(home->recipe, sizeof home->recipe, "%s", keep->recipe);
     snprintf(home->recipe_hash, sizeof home->recipe_hash, "%s", keep->hash);

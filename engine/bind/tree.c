@@ -269,6 +269,7 @@ static void add_table(lua_State *L, lw_node *parent, const char *name, int index
 {
     lw_error err = LW_ERROR_NONE;
     luaL_checkstack(L, 8, "table too deep");
+    lwb_check(L, lw_engine_poll(&lwb_home_of(L)->engine, &err), &err); /* a few tables may stand for very many values */
     if (lua_rawlen(L, index) > 0) {
         lw_node *list = lw_add_list(parent, name, &err);
         lwb_check(L, LW_OK, &err);

@@ -43,8 +43,41 @@ static lw_status refuse(lw_error *err, const char *verb, const char *path, int r
     return lw_fail(err, LW_IO, remedy_of(reason), "can't %s %s: %s", verb, path, words);
 }
 
+/* Opens a folder below the fence part by part, so that a link that was put there after somebody looked
+ * leads nowhere. -1 with errno on failure. */
+static int open_inside(const lw_engine *engine, const char *folder)
+{
+    size_t n = strlen(engine->fence);
+    if (strncmp(folder, engine->fence, n) != 0 || folder[n] != '/') {
+        errno = EPERM;
+        return -1;
+    }
+    int at = open(engine->fence, O_RDONLY | O_DIRECTORY | O_CLOEXEC | (engine->fence_no_link ? O_NOFOLLOW : 0));
+    for (const char *part = folder + n + strspn(folder + n, "/"); at >= 0 && *part != '\0';) {
+        char name[NAME_MAX + 1];
+        size_t length = strcspn(part, "/");
+        int next = -1;
+        if (length >= sizeof name)
+            errno = ENAMETOOLONG;
+        else if (length == 2 && part[0] == '.' && part[1] == '.')
+            errno = EPERM;
+        else {
+            memcpy(name, part, length);
+            name[length] = '\0';
+            next = openat(at, name, O_RDONLY | O_DIRECTORY | O_NOFOLLOW | O_CLOEXEC);
+        }
+        int reason = errno;
+        close(at);
+        errno = reason;
+        at = next;
+        part += length;
+        part += strspn(part, "/");
+    }
+    return at;
+}
+
 /* Opens the folder of `path`; *name is set to its last part. -1 with errno on failure. */
-static int open_folder(const char *path, const char **name)
+static int open_folder(const lw_engine *engine, const char *path, const char **name)
 {
     const char *slash = strrchr(path, '/');
     char folder[PATH_MAX];
@@ -60,6 +93,8 @@ static int open_folder(const char *path, const char **name)
     }
     memcpy(folder, path, n);
     folder[n] = '\0';
+    if (engine->fence != NULL)
+        return open_inside(engine, folder);
     return open(n > 0 ? folder : ".", O_RDONLY | O_DIRECTORY | O_CLOEXEC);
 }
 
@@ -97,7 +132,7 @@ lw_status lw_write_file(lw_engine *engine, const char *path, const void *bytes, 
     const char *name;
     char temporary[64];
     struct stat old;
-    int folder = open_folder(path, &name);
+    int folder = open_folder(engine, path, &name);
     if (folder < 0)
         return refuse(err, "write", path, errno);
     /* renaming over a device such as /dev/null would destroy it */
@@ -158,12 +193,18 @@ lw_status lw_make_folder(const char *path, lw_error *err)
     return LW_OK;
 }
 
-lw_status lw_append_line(const char *path, const char *line, lw_error *err)
+lw_status lw_append_line(lw_engine *engine, const char *path, const char *line, lw_error *err)
 {
-    /* what follows a crash may be half a line without its newline: begin on a new one then */
-    int file = open(path, O_RDWR | O_APPEND | O_CREAT | O_NOFOLLOW | O_CLOEXEC | O_NONBLOCK, 0666);
-    if (file < 0)
+    const char *name;
+    int folder = open_folder(engine, path, &name);
+    if (folder < 0)
         return refuse(err, "write", path, errno);
+    /* what follows a crash may be half a line without its newline: begin on a new one then */
+    int file = openat(folder, name, O_RDWR | O_APPEND | O_CREAT | O_NOFOLLOW | O_CLOEXEC | O_NONBLOCK, 0666);
+    int open_reason = errno;
+    close(folder);
+    if (file < 0)
+        return refuse(err, "write", path, open_reason);
     struct stat here;
     int reason = fstat(file, &here) != 0 ? errno : 0;
     if (reason == 0 && !S_ISREG(here.st_mode)) {

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Files, written whole or not at all. Whether a script may write to a path is decided above. */
+/* Files, written whole or not at all. Whether a script may write to a path is decided above; the engine's
+ * fence holds here too, part by part while a path is opened. */
 #ifndef LW_RECORD_FILE_H
 #define LW_RECORD_FILE_H
 
@@ -18,7 +19,7 @@ lw_status lw_make_folder(const char *path, lw_error *err);
 
 /* Appends one line (a newline is added) in a single write and flushes it to the disk, for journals
  * that must survive a crash. Doesn't follow a symbolic link. Status: LW_IO. */
-lw_status lw_append_line(const char *path, const char *line, lw_error *err);
+lw_status lw_append_line(lw_engine *engine, const char *path, const char *line, lw_error *err);
 
 /* Reads a whole plain file into the arena, with a zero byte after it.
  * Given:    most   largest size that is accepted, bytes

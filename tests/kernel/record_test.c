@@ -434,12 +434,12 @@ static void test_files(void)
     CHECK_CONTAINS(refused.message, "file.txt");
 
     const char *journal = in_folder("journal");
-    CHECK(lw_append_line(journal, "one", &err) == LW_OK && lw_append_line(journal, "two", &err) == LW_OK);
+    CHECK(lw_append_line(&engine, journal, "one", &err) == LW_OK && lw_append_line(&engine, journal, "two", &err) == LW_OK);
     CHECK(strcmp(content(journal), "one\ntwo\n") == 0);
     CHECK(lw_write_file(&engine, journal, "one\ntw", 6, &err) == LW_OK); /* cut off by a crash */
-    CHECK(lw_append_line(journal, "three", &err) == LW_OK && strcmp(content(journal), "one\ntw\nthree\n") == 0);
+    CHECK(lw_append_line(&engine, journal, "three", &err) == LW_OK && strcmp(content(journal), "one\ntw\nthree\n") == 0);
     refused = LW_ERROR_NONE;
-    CHECK(symlink(path, in_folder("out")) == 0 && lw_append_line(in_folder("out"), "x", &refused) == LW_IO);
+    CHECK(symlink(path, in_folder("out")) == 0 && lw_append_line(&engine, in_folder("out"), "x", &refused) == LW_IO);
 
     char *bytes = NULL;
     size_t size = 0;
