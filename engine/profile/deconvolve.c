@@ -14,6 +14,11 @@ static const lw_deconvolution *const methods[] = {&lw_deconvolution_convolution,
                                                  &lw_deconvolution_physical, NULL};
 static const char *const method_names[] = {"convolution", "stokes", "physical", NULL};
 
+static const char *const completions[] = {"auto", "voigt", "physical", NULL};
+static const char *const windows[] = {"none", "hann", NULL};
+static const char *const orders[] = {"0", "1", "2", NULL};
+static const char *const rules[] = {"discrepancy", "gcv", NULL};
+
 #define AT(field) offsetof(lw_deconvolve_options, field)
 const lw_option lw_deconvolve_option_table[] = {
     {"method", LW_OPTION_CHOICE, "", "convolution", 0, 0, method_names, AT(method),
@@ -25,13 +30,30 @@ const lw_option lw_deconvolve_option_table[] = {
      "largest column length, 0 = where the coefficients have died"},
     {"window", LW_OPTION_NUMBER, "breadths", "as far as the neighbours allow", 0, 100, NULL, AT(window),
      "half-width of the data used for the Fourier sums"},
+    {"completion", LW_OPTION_CHOICE, "", "auto", 0, 0, completions, AT(completion),
+     "shape by which lines are separated and tails completed; physical fits all lines again first, auto does so where "
+     "the fitted Voigts miss the data (p < 0.2) and lines are at most 30"},
+    {"apodise", LW_OPTION_CHOICE, "", "none", 0, 0, windows, AT(apodise),
+     "stokes: window over the coefficients; its effect on the breadth is stated"},
+    {"order", LW_OPTION_CHOICE, "", "2", 0, 0, orders, AT(order),
+     "tikhonov: order of the derivative that is kept small"},
+    {"parameter", LW_OPTION_CHOICE, "", "discrepancy", 0, 0, rules, AT(parameter),
+     "tikhonov: rule for the regularisation parameter"},
+    {"strength", LW_OPTION_NUMBER, "", "by the rule", 0, 1e300, NULL, AT(strength),
+     "tikhonov: the regularisation parameter itself, 0 = by the rule"},
+    {"non_negative", LW_OPTION_FLAG, "", "false", 0, 0, NULL, AT(non_negative), "tikhonov: no negative intensity"},
+    {"iterations_most", LW_OPTION_COUNT, "", "500", 1, 100000, NULL, AT(iterations_most),
+     "richardson_lucy: iterations at most"},
+    {"realisations", LW_OPTION_COUNT, "", "20", 2, 10000, NULL, AT(realisations),
+     "richardson_lucy: realisations of noise for the uncertainty"},
+    {"seed", LW_OPTION_COUNT, "", "1", 0, 2147483647, NULL, AT(seed), "of the realisations"},
     {"accept_refold", LW_OPTION_FLAG, "", "false", 0, 0, NULL, AT(accept_refold),
      "go on although instrument x result does not give the data back"},
     LW_OPTIONS_END};
 
 lw_deconvolve_options lw_deconvolve_defaults(void)
 {
-    return (lw_deconvolve_options){.method = 0};
+    return (lw_deconvolve_options){.order = 2, .iterations_most = 500, .realisations = 20, .seed = 1};
 }
 
 double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile)
@@ -254,6 +276,9 @@ lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calib
         return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0,
                           "fit the lines with instrument = calibration",
                           "the lines were fitted without an instrument: nothing can be taken out of them");
+    if (strcmp(lines->shape, "voigt") != 0)
+        return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0, "fit the lines with shape = voigt",
+                          "lines of shape %s are not sums of the instrument's and the sample's part", lines->shape);
     size_t supported = 0;
     for (size_t k = 0; k < lines->n; k++)
         supported += lines->line[k].supported;

@@ -51,6 +51,15 @@ typedef struct lw_deconvolve_options {
     double length_step_nm; /* step of L; 0 = from the window */
     double length_most_nm; /* largest L; 0 = where the noise begins */
     double window;         /* half-width used for the Fourier sums in units of the breadth; 0 = as far as the neighbours allow */
+    int completion;        /* by which shape lines are separated and tails completed: "auto", "voigt", "physical" */
+    int apodise;           /* stokes: "none", "hann" */
+    int order;             /* tikhonov: of the derivative whose square is kept small: 0, 1, 2 */
+    int parameter;         /* tikhonov: rule, "discrepancy", "gcv" */
+    double strength;       /* tikhonov: the parameter itself; 0 = by the rule */
+    bool non_negative;     /* tikhonov: no negative intensity (uncertainties stay those of the free solution) */
+    long iterations_most;  /* richardson_lucy */
+    long realisations;     /* richardson_lucy: of the Monte Carlo uncertainty */
+    long seed;
     bool accept_refold;    /* go on although instrument x result does not give the data back */
 } lw_deconvolve_options;
 extern const lw_option lw_deconvolve_option_table[];

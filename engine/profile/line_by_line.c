@@ -1,0 +1,113 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "profile/line_by_line.h"
+
+#include <math.h>
+
+double lw__tail_variance(const lw__job *job, double *share)
+{
+    const lw__window *data = &job->data;
+    double inside = 0, most = 0, cross = 0, square = 0, level = 0;
+    for (size_t i = 0; i < data->n; i++) {
+        inside += data->curve[i] * data->step[i];
+        most = fmax(most, fabs(data->s[i]));
+    }
+    for (size_t i = 0; i < data->n; i++) {
+        if (fabs(data->s[i]) < 0.5 * most)
+            continue;
+        double w = 1 / data->variance[i];
+        cross += w * data->curve[i] * data->residual[i];
+        square += w * data->curve[i] * data->curve[i];
+        level += w * data->curve[i];
+    }
+    *share = fmin(fmax(1 - inside / job->line->area_s, 0), 1);
+    if (!(square > 0))
+        return *share * *share;
+    double wrong = cross / square, variance = 1 / square + level * level / (square * square) * data->background_variance;
+    return *share * *share * fmin(wrong * wrong + variance, 1);
+}
+
+static lw_status one_line(lw__job *job, const lw__separation *separation, size_t k, lw__solve_fn *solve,
+                          lw__answer *answer, double slope[2], lw_error *err)
+{
+    lw_arena scratch;
+    lw_arena_begin(&scratch, job->engine);
+    lw_profile *profile = job->profile = &job->profiles->profile[k];
+    job->line = &separation->line[k];
+    job->shape_breadth = lw__shape_breadth(&job->line->shape, NULL);
+    job->shape_variance = job->profiles->covariance[profile->at_breadth * (job->profiles->n_covariance + 1)];
+    slope[0] = slope[1] = 0;
+    lw_status status = lw__take_lengths(job->profiles, profile, job->options, err);
+    if (status == LW_OK)
+        status = lw__take_window(job->profiles, k, separation, job->options->window, &scratch, &job->data, err);
+    if (status == LW_OK)
+        status = lw__take_instrument(job->profiles, profile, &scratch, &job->instrument, err);
+    *answer = (lw__answer){.breadth = job->shape_breadth, .from_shape = true};
+    if (status == LW_OK && job->data.n >= 8 && job->line->area_s > 0 && job->shape_breadth > 0)
+        status = solve(job, &job->instrument, true, &scratch, answer, err);
+    for (int i = 0; i < 2 && status == LW_OK && !answer->from_shape; i++) {
+        /* the same data with an instrument a little wider */
+        lw__instrument wider = job->instrument;
+        double step = 0.02 * (i == 0 ? wider.fwhm_deg * wider.fwhm_deg : wider.fwhm_deg);
+        *(i == 0 ? &wider.variance : &wider.lorentz) += step;
+        lw__answer other = *answer;
+        status = solve(job, &wider, false, &scratch, &other, err);
+        slope[i] = (other.breadth - answer->breadth) / step;
+    }
+    lw_arena_end(&scratch);
+    return status == LW_OK ? lw_engine_poll(job->engine, err) : status;
+}
+
+lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                           lw__solve_fn *solve, const char *name, lw_error *err)
+{
+    size_t n = profiles->n, stride = profiles->n_covariance;
+    lw_arena scratch;
+    lw__separation separation;
+    lw__physical_fit physical;
+    lw_arena_begin(&scratch, engine);
+    lw__answer *answer = lw_arena_take(&scratch, n, sizeof *answer, err);
+    double(*slope)[2] = lw_arena_take(&scratch, n, sizeof *slope, err);
+    lw_status status = answer == NULL || slope == NULL ? LW_OUT_OF_MEMORY : LW_OK;
+    bool by_physics = options->completion == LW__BY_PHYSICS ||
+                      (options->completion == LW__BY_MISFIT && profiles->lines->misfit_p < 0.2 && n <= 30);
+    if (status == LW_OK && by_physics)
+        status = lw__separate_by_physics(engine, profiles, &scratch, &separation, &physical, err);
+    else if (status == LW_OK)
+        status = lw__separate_by_voigts(profiles, &scratch, &separation, err);
+    if (status == LW_OK && by_physics)
+        for (size_t a = 0; a < n; a++) {
+            const lw_profile *profile = &profiles->profile[a];
+            for (size_t b = 0; b < n; b++)
+                profiles->covariance[profile->at_breadth * stride + profiles->profile[b].at_breadth] =
+                    physical.covariance[a * n + b];
+        }
+    lw__job job = {.engine = engine, .profiles = profiles, .options = options};
+    for (size_t k = 0; k < n && status == LW_OK; k++) {
+        profiles->profile[k].assumed = separation.how;
+        status = one_line(&job, &separation, k, solve, &answer[k], slope[k], err);
+        lw_engine_progress(engine, name, (double)(k + 1) / (double)n);
+    }
+    for (size_t a = 0; a < n && status == LW_OK; a++) {
+        lw_profile *profile = &profiles->profile[a];
+        double *row = profiles->covariance + profile->at_breadth * stride;
+        for (size_t b = 0; b < n; b++) {
+            const lw_profile *other = &profiles->profile[b];
+            /* the Voigt's parts belong to another description of the line; breadths share the instrument */
+            if (answer[a].from_shape && answer[b].from_shape && !by_physics)
+                continue;
+            size_t at[2] = {other->at_gauss, other->at_lorentz};
+            for (int i = 0; i < 2; i++)
+                row[at[i]] = profiles->covariance[at[i] * stride + profile->at_breadth] = 0;
+            if (answer[a].from_shape && answer[b].from_shape)
+                continue;
+            if (answer[a].from_shape || answer[b].from_shape)
+                row[other->at_breadth] = profiles->covariance[other->at_breadth * stride + profile->at_breadth] = 0;
+            else
+                row[other->at_breadth] = lw__from_instrument(profiles, profile, slope[a], other, slope[b]) +
+                                         (a == b ? answer[a].variance : 0);
+        }
+        lw__set_breadth(profiles, profile, answer[a].breadth, sqrt(fmax(row[profile->at_breadth], 0)));
+    }
+    lw_arena_end(&scratch);
+    return status;
+}
