@@ -19,8 +19,9 @@ const lw_option lw_calibrate_option_table[] = {
      AT(goniometer_radius_mm), "distance from axis to receiving slit, for the displacement in mm"},
     {"geometry", LW_OPTION_CHOICE, "", "auto", 0, 0, geometry_names, AT(geometry),
      "reflection: flat specimen; capillary: transmission; auto: capillary for a plain wavelength"},
-    {"aberrations", LW_OPTION_LIST, "", "by geometry", 0, 0, NULL, AT(aberrations),
-     "aberrations of position to fit: zero_shift, displacement, flat_specimen, transparency, wavelength"},
+    {"aberrations", LW_OPTION_LIST, "", "auto", 0, 0, NULL, AT(aberrations),
+     "aberrations of position to fit: zero_shift, displacement, flat_specimen, transparency, wavelength; auto: what the "
+     "lines give evidence for"},
     LW_OPTIONS_END};
 
 lw_calibrate_options lw_calibrate_defaults(void)
@@ -38,22 +39,40 @@ static double radius_in_header(const char *header)
     return radius > 10 && radius < 2000 ? radius : 0;
 }
 
-static lw_status choose_aberrations(const lw_calibrate_options *options, const lw_lines *lines, bool capillary,
-                                    lw_aberrations *set, lw_error *err)
+/* Sets of aberrations to try, the first with all; evidence decides between them. Zero shift and displacement (or the
+ * wavelength of a capillary) are always there: an instrument has them. */
+typedef struct candidates {
+    size_t n;
+    const char *const *names[4];
+} candidates;
+
+static candidates candidates_for(const lw_lines *lines, bool capillary)
 {
-    static const char *const reflection[] = {"zero_shift", "displacement", "flat_specimen", "transparency", NULL};
-    static const char *const few_lines[] = {"zero_shift", "displacement", NULL};
+    static const char *const all[] = {"zero_shift", "displacement", "flat_specimen", "transparency", NULL};
+    static const char *const flat[] = {"zero_shift", "displacement", "flat_specimen", NULL};
+    static const char *const deep[] = {"zero_shift", "displacement", "transparency", NULL};
+    static const char *const few[] = {"zero_shift", "displacement", NULL};
     static const char *const transmission[] = {"zero_shift", "wavelength", NULL};
     /* a short range can't tell four smooth functions of angle apart */
     bool wide = lines->n >= 10 && lines->line[lines->n - 1].two_theta.value - lines->line[0].two_theta.value > 80;
-    const char *const *names = capillary ? transmission : wide ? reflection : few_lines;
+    if (capillary)
+        return (candidates){1, {transmission}};
+    return wide ? (candidates){4, {all, flat, deep, few}} : (candidates){1, {few}};
+}
+
+static lw_status take_named(const char *const *names, size_t n, lw_aberrations *set, lw_error *err)
+{
     set->n = 0;
-    for (size_t i = 0; options->aberrations.n > 0 ? i < options->aberrations.n : names[i] != NULL; i++) {
-        const char *name = options->aberrations.n > 0 ? options->aberrations.item[i] : names[i];
-        const lw_aberration *kind = lw_aberration_named(name);
+    for (size_t i = 0; i < n && names[i] != NULL; i++) {
+        const lw_aberration *kind = lw_aberration_named(names[i]);
         if (kind == NULL)
-            return lw_fail(err, LW_BAD_ARGUMENT, "choose from: zero_shift, displacement, flat_specimen, transparency, wavelength",
-                           "calibrate: unknown aberration '%s'", name);
+            return lw_fail(err, LW_BAD_ARGUMENT,
+                           "choose from: auto, zero_shift, displacement, flat_specimen, transparency, wavelength",
+                           "calibrate: unknown aberration '%s'", names[i]);
+        for (size_t j = 0; j < set->n; j++)
+            if (set->kind[j] == kind)
+                return lw_fail(err, LW_BAD_ARGUMENT, "name each once", "calibrate: the aberration '%s' is named twice",
+                               names[i]);
         if (set->n == LW_ABERRATION_MOST)
             return lw_fail(err, LW_BAD_ARGUMENT, NULL, "calibrate: more than %d aberrations", LW_ABERRATION_MOST);
         set->kind[set->n++] = kind;
@@ -140,6 +159,39 @@ static lw_status fit_aberrations(lw_engine *engine, lw_aberrations *set, lw_cali
     return LW_OK;
 }
 
+/* Akaike's criterion for few data: n ln(chi2/n) + 2 K + 2 K (K + 1)/(n - K - 1), K parameters with the scale (Hurvich &
+ * Tsai 1989 Biometrika 76, 297). Infinite where n does not allow it. */
+static double aicc(double chi2, size_t n, size_t parameters)
+{
+    double points = (double)n, k = (double)parameters + 1;
+    return points - k - 1 > 0 ? points * log(chi2 / points) + 2 * k + 2 * k * (k + 1) / (points - k - 1) : INFINITY;
+}
+
+/* Fits each candidate set and keeps the one with the lowest criterion; of two within 2 of each other the larger, so
+ * that what can't be ruled out stays in the uncertainty. */
+static lw_status choose_aberrations(lw_engine *engine, const lw_lines *lines, bool capillary, lw_aberrations *set,
+                                    lw_calibration_lines *rows, const double *covariance, const double *certificate,
+                                    lw_arena *scratch, lw_error *err)
+{
+    candidates tried = candidates_for(lines, capillary);
+    double best = INFINITY;
+    size_t kept = 0;
+    lw_status status = LW_OK;
+    for (size_t i = 0; i < tried.n && status == LW_OK; i++) {
+        status = take_named(tried.names[i], LW_ABERRATION_MOST, set, err);
+        if (status == LW_OK && rows->n > set->n)
+            status = fit_aberrations(engine, set, rows, covariance, certificate, scratch, err);
+        rows->tried[i] = (lw_calibration_trial){.set = *set, .criterion = aicc(rows->chi2, rows->n, set->n)};
+        rows->n_tried = i + 1;
+        if (rows->tried[i].criterion < best)
+            best = rows->tried[i].criterion;
+    }
+    while (kept + 1 < tried.n && !(rows->tried[kept].criterion <= best + 2))
+        kept++;
+    *set = rows->tried[kept].set;
+    return status == LW_OK ? fit_aberrations(engine, set, rows, covariance, certificate, scratch, err) : status;
+}
+
 /* Positions of the supported lines against the certificate. */
 static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
                                      lw_calibration *calibration, lw_calibration_lines *rows, lw_arena *scratch,
@@ -186,7 +238,12 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
         for (size_t j = 0; j < n; j++)
             covariance[i * n + j] =
                 lines->covariance[rows->line[i]->at_position * lines->n_parameters + rows->line[j]->at_position];
-    lw_status status = fit_aberrations(engine, set, rows, covariance, shift, scratch, err);
+    lw_status status = LW_OK;
+    if (rows->given)
+        status = fit_aberrations(engine, set, rows, covariance, shift, scratch, err);
+    else
+        status = choose_aberrations(engine, lines, strcmp(calibration->geometry, "capillary") == 0, set, rows, covariance,
+                                    shift, scratch, err);
     if (status != LW_OK)
         return status;
     double square = 0;
@@ -232,7 +289,10 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
         calibration->aberrations.radius_mm = 200;
         rows.radius_from = "assumed: neither given nor in the scan's header";
     }
-    lw_status status = choose_aberrations(options, lines, capillary, &calibration->aberrations, err);
+    rows.given = options->aberrations.n > 0 && strcmp(options->aberrations.item[0], "auto") != 0;
+    candidates usual = candidates_for(lines, capillary);
+    lw_status status = rows.given ? take_named(options->aberrations.item, options->aberrations.n, &calibration->aberrations, err)
+                                  : take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
     if (status == LW_OK)
         status = calibrate_positions(engine, lines, standard, calibration, &rows, &scratch, err);
     if (status == LW_OK) {

@@ -22,8 +22,8 @@ typedef struct lw_calibration {
 typedef struct lw_calibrate_options {
     double goniometer_radius_mm; /* for the displacement in mm; 0 = from the scan's header, else 200 (said so) */
     int geometry;                /* "auto", "reflection", "capillary"; auto: capillary for a plain wavelength */
-    lw_option_list aberrations;  /* names; empty = zero_shift, displacement, transparency (reflection) or
-                                    zero_shift, wavelength (capillary) */
+    lw_option_list aberrations;  /* names; empty or "auto" = by evidence (AICc) among zero_shift, displacement,
+                                    flat_specimen, transparency (reflection); zero_shift, wavelength (capillary) */
     bool refine_wavelength;      /* capillary default true: certified cell fixes the wavelength */
 } lw_calibrate_options;
 extern const lw_option lw_calibrate_option_table[];

@@ -88,6 +88,37 @@ static void write_covariance(const lw_calibration *calibration, lw_node *root, l
     }
 }
 
+/* Which aberrations were tried and how they did, and how those kept correlate. */
+static void write_choice(const lw_aberrations *set, const lw_calibration_lines *rows, lw_node *root, lw_error *err)
+{
+    double best = INFINITY;
+    for (size_t i = 0; i < rows->n_tried; i++)
+        best = fmin(best, rows->tried[i].criterion);
+    if (rows->n_tried > 1) {
+        lw_node *list = lw_add_list(root, "aberrations_tried", err);
+        for (size_t i = 0; i < rows->n_tried; i++) {
+            const lw_calibration_trial *trial = &rows->tried[i];
+            char names[200] = "";
+            size_t used = 0;
+            for (size_t k = 0; k < trial->set.n && used < sizeof names; k++)
+                used += (size_t)snprintf(names + used, sizeof names - used, "%s%s", k > 0 ? ", " : "",
+                                         trial->set.kind[k]->name);
+            lw_node *row = lw_add_group(list, NULL, err);
+            lw_add_text(row, "aberrations", names, err);
+            lw_add_number(row, "aicc_above_best", trial->criterion - best, err);
+            lw_add_flag(row, "kept", trial->set.n == set->n && memcmp(trial->set.kind, set->kind, set->n * sizeof *set->kind) == 0, err);
+        }
+    }
+    lw_node *list = lw_add_list(root, "correlations", err);
+    for (size_t i = 0; i < set->n; i++)
+        for (size_t j = i + 1; j < set->n; j++) {
+            lw_node *row = lw_add_group(list, NULL, err);
+            lw_add_text(row, "of", set->kind[i]->name, err);
+            lw_add_text(row, "with", set->kind[j]->name, err);
+            lw_add_number(row, "r", set->covariance[i][j] / sqrt(set->covariance[i][i] * set->covariance[j][j]), err);
+        }
+}
+
 static void write_lines(const lw_calibration_lines *rows, lw_node *root, lw_error *err)
 {
     lw_node *list = lw_add_list(root, "lines", err);
@@ -202,6 +233,7 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
     write_table(calibration, root, err);
     write_covariance(calibration, root, err);
     write_lines(rows, root, err);
+    write_choice(set, rows, root, err);
     group = lw_add_group(root, "fit", err);
     lw_add_number(group, "rwp", lines->rwp, err);
     lw_add_number(group, "rexp", lines->rexp, err);

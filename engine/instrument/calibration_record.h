@@ -5,6 +5,12 @@
 
 #include "instrument/calibration.h"
 
+/* One set of aberrations that was tried, and its criterion (lower is better). */
+typedef struct lw_calibration_trial {
+    lw_aberrations set;
+    double criterion;
+} lw_calibration_trial;
+
 /* Lines of the standard against the certificate. */
 typedef struct lw_calibration_lines {
     size_t n;
@@ -13,6 +19,9 @@ typedef struct lw_calibration_lines {
     double *difference, *residual;   /* deg, observed minus certified, before and after the aberrations */
     double chi2, p, birge, rms;      /* of the residuals; rms in deg */
     const char *radius_from;
+    bool given;                      /* the aberrations were named, not chosen */
+    lw_calibration_trial tried[4];
+    size_t n_tried;
 } lw_calibration_lines;
 
 lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *lines, const lw_standard *standard,
