@@ -34,9 +34,11 @@ lw_drawing lw_drawing_standard(const lw_figure *figure, lw_drawing_format format
     return drawing;
 }
 
-/* A literal string: in single quotes gnuplot takes everything as it stands, but a quote is doubled. */
+/* A literal string: in single quotes gnuplot takes everything as it stands, but a quote is doubled. It knows a
+ * doubled quote only after another character; elsewhere a typographic one stands for it. */
 static void quote(lw_text *out, const char *string)
 {
+    bool after_quote = true;
     lw_text_add(out, "'");
     for (const char *c = string; *c != '\0';) {
         size_t n = lw_utf8_length(c);
@@ -45,9 +47,10 @@ static void quote(lw_text *out, const char *string)
         else if (n == 1 && ((unsigned char)*c < 0x20 || *c == 0x7F))
             lw_text_add(out, " ");
         else if (*c == '\'')
-            lw_text_add(out, "''");
+            lw_text_add(out, after_quote ? "\xE2\x80\x99" : "''");
         else
             lw_text_bytes(out, c, n);
+        after_quote = *c == '\'' && !after_quote;
         c += n > 0 ? n : 1;
     }
     lw_text_add(out, "'");
