@@ -13,7 +13,8 @@ typedef struct lw_deconvolution {
     lw_status (*run)(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err);
 } lw_deconvolution;
 
-extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_physical, lw_deconvolution_stokes;
+extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_physical, lw_deconvolution_stokes,
+    lw_deconvolution_tikhonov, lw_deconvolution_richardson_lucy, lw_deconvolution_maximum_entropy;
 
 /* Degrees of the line's own axis to nm^-1: ds = factor x dx. */
 double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile);

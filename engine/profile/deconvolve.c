@@ -11,8 +11,10 @@
 
 static const double degree = M_PI / 180;
 static const lw_deconvolution *const methods[] = {&lw_deconvolution_convolution, &lw_deconvolution_stokes,
-                                                 &lw_deconvolution_physical, NULL};
-static const char *const method_names[] = {"convolution", "stokes", "physical", NULL};
+                                                 &lw_deconvolution_physical,    &lw_deconvolution_tikhonov,
+                                                 &lw_deconvolution_richardson_lucy, &lw_deconvolution_maximum_entropy, NULL};
+static const char *const method_names[] = {"convolution", "stokes", "physical", "tikhonov",
+                                           "richardson_lucy", "maximum_entropy", NULL};
 
 static const char *const completions[] = {"auto", "voigt", "physical", NULL};
 static const char *const windows[] = {"none", "hann", NULL};
@@ -23,7 +25,7 @@ static const char *const rules[] = {"discrepancy", "gcv", NULL};
 const lw_option lw_deconvolve_option_table[] = {
     {"method", LW_OPTION_CHOICE, "", "convolution", 0, 0, method_names, AT(method),
      "convolution: the Voigt fitted with the instrument inside; stokes: Fourier quotient; physical: lognormal spheres x "
-     "strain, all lines fitted again"},
+     "strain, all lines fitted again; tikhonov, richardson_lucy, maximum_entropy: regularised"},
     {"length_step", LW_OPTION_NUMBER, "nm", "from the breadth", 0, 1000, NULL, AT(length_step_nm),
      "step of the column length L, 0 = from the breadth"},
     {"length_most", LW_OPTION_NUMBER, "nm", "from the breadth", 0, 1e5, NULL, AT(length_most_nm),
@@ -265,7 +267,7 @@ static lw_status check_refold(const lw_profiles *profiles, bool accept, lw_error
         return LW_OK;
     return lw_fail_at(err, LW_REFOLD_FAILED, profiles->lines->scan->file, 0,
                       "check the calibration and the background, or say accept_refold = true",
-                      "instrument x result does not give the data back for %s (chi-square per point)", names);
+                      "instrument x result does not give the data back for %s (chi-square per degree of freedom)", names);
 }
 
 lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calibration *calibration,

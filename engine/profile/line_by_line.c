@@ -32,6 +32,7 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, size_t
     lw_arena scratch;
     lw_arena_begin(&scratch, job->engine);
     lw_profile *profile = job->profile = &job->profiles->profile[k];
+    job->separation = separation;
     job->line = &separation->line[k];
     job->shape_breadth = lw__shape_breadth(&job->line->shape, NULL);
     job->shape_variance = job->profiles->covariance[profile->at_breadth * (job->profiles->n_covariance + 1)];

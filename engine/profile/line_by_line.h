@@ -12,6 +12,7 @@ typedef struct lw__job {
     lw_profiles *profiles;
     lw_profile *profile; /* its arrays of lengths and coefficients are taken */
     const lw_deconvolve_options *options;
+    const lw__separation *separation;
     const lw__separated *line;
     lw__window data;
     lw__instrument instrument; /* with which the line's curve was made */
