@@ -54,9 +54,13 @@ lw_axial_count lw_axial_copies(lw_axial_kind kind, const double parameter[2], do
 {
     lw_axial_count count = {{1, 1}};
     double sine, tangent = tan(two_theta_deg * degree / 2);
-    if (kind == LW_AXIAL_FINGER && parameter[0] + parameter[1] > 0)
-        count.part[0] =
-            points_for(fabs(axial_shift(two_theta_deg * degree, parameter[0] + parameter[1], &sine)), width_deg);
+    if (kind == LW_AXIAL_FINGER && parameter[0] + parameter[1] > 0) {
+        double span = fabs(axial_shift(two_theta_deg * degree, parameter[0] + parameter[1], &sine));
+        /* its weight has kinks, over which the midpoint rule has to take finer steps */
+        count.part[0] = points_for(span, width_deg);
+        if (count.part[0] > 1)
+            count.part[0] = 3 * count.part[0] < LW_AXIAL_NODES_MOST ? 3 * count.part[0] : LW_AXIAL_NODES_MOST;
+    }
     else if (kind == LW_AXIAL_SOLLER) {
         count.part[0] = points_for(parameter[0] * parameter[0] / tangent / degree, width_deg);
         count.part[1] = points_for(parameter[1] * parameter[1] * tangent / degree, width_deg);

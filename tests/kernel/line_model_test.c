@@ -149,10 +149,10 @@ static void gradients_of_local_shapes(void)
                                        {0.08, 1.7},   {0.07, 0.1, 0.3, 0.6}, {0.07, 0.1, 1.4, 2.5}};
     for (int shape = 0; shape < 7; shape++)
         for (int s_axis = 0; s_axis < 2; s_axis++) {
-            setup s;
-            begin(&s, shape, s_axis, LW_AXIAL_NONE, no_axial, LW_CPU_AUTO);
             if (shape == 1 || shape == 2)
                 continue; /* limits of the Voigt, on its bounds */
+            setup s;
+            begin(&s, shape, s_axis, LW_AXIAL_NONE, no_axial, LW_CPU_AUTO);
             lay_out(&s, local[shape], NULL, 20);
             check_gradient(&s, 2e-5);
             end(&s);
