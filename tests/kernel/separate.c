@@ -67,7 +67,7 @@ static void fields(lw_engine *engine)
     const lw_node *agreement = lw_node_get(results, "agreement");
     const lw_node *pairs = lw_node_get(lw_node_get(agreement, "size_volume"), "pairs");
     CHECK(!lw_node_get(agreement, "agree")->flag);
-    CHECK(pairs != NULL && pairs->n == 6); /* 4 methods */
+    CHECK(pairs != NULL && pairs->n == 10); /* 5 methods */
     int flagged = 0;
     for (const lw_node *pair = pairs->first; pair != NULL; pair = pair->next)
         if (strcmp(lw_node_text(pair, "first", ""), "scherrer") == 0 &&
