@@ -22,33 +22,46 @@ local function hours(path, place)
   return tonumber(name:match "(%d+%.?%d*)h") or place
 end
 
-local function analyse(path)
-  local scan     = lw.read_scan(path, { radiation = instrument.radiation, noise = job.noise })
+local function analyse(path, scan)
   local lines    = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
   local profiles = lw.deconvolve(lines, { method = "convolution" })
   local results  = lw.separate(profiles)
-  return lines, profiles, results
+  return { name = path:match "[^/]+$", lines = lines, profiles = profiles, results = results }
+end
+
+-- Each powder is done once: a run that was stopped goes on where it was. What its analysis depends on is in the key.
+local function analyse_once(path)
+  local scan = lw.read_scan(path, { radiation = instrument.radiation, noise = job.noise })
+  local key = table.concat({ scan.hash, instrument.hash, job.noise, tostring(powder) }, " "):gsub('["\\\n]', " ")
+  local fresh
+  local known = job:once(key, function()
+    fresh = analyse(path, scan)
+    local results = fresh.results
+    return { goodness_of_fit = fresh.lines.fit.goodness_of_fit, lines = results.lines, methods = results.methods,
+             lattice = results.lattice, agreement = results.agreement, notes = results.notes }
+  end)
+  return known, fresh
 end
 
 -- One powder after the other. One that can't be analysed is told and left out; the others go on.
 local entries, rows, failed, shown = {}, {}, {}, {}
 for place, path in ipairs(job.scans) do
-  local ok, lines, profiles, results = pcall(analyse, path)
+  local ok, known, fresh = pcall(analyse_once, path)
   if ok then
-    local wh = results.methods.williamson_hall
+    local wh = known.methods.williamson_hall
     local row = {
       scan = path:match "[^/]+$", milling_time_h = hours(path, place),
       size_volume = wh.size_volume, strain_rms = wh.strain_rms, strain_apparent = wh.strain_apparent,
-      lattice_a = results:get "lattice.a", goodness_of_fit = lines.fit.goodness_of_fit,
+      lattice_a = known:get "lattice.a", goodness_of_fit = known.goodness_of_fit,
     }
     rows[#rows + 1] = row
-    entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = results.lines,
-                              methods = results.methods, lattice = results.lattice,
-                              agreement = results.agreement, notes = results.notes }
-    shown[#shown + 1] = { name = row.scan, lines = lines, profiles = profiles, results = results }
+    entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = known.lines,
+                              methods = known.methods, lattice = known.lattice,
+                              agreement = known.agreement, notes = known.notes }
+    shown[#shown + 1] = fresh or { name = row.scan, results = known }
     print(("%-28s size %-16s strain %s"):format(row.scan, tostring(row.size_volume), tostring(row.strain_rms)))
   else
-    local message = tostring(lines)
+    local message = tostring(known)
     entries[#entries + 1] = { scan = path, error = message }
     failed[#failed + 1] = { scan = path, error = message }
     print(("%-28s %s"):format(path:match "[^/]+$", message))
@@ -103,7 +116,7 @@ end
 for _, one in ipairs(shown) do
   items[#items + 1] = { heading = one.name, prefix = one.name:gsub("%.%w+$", "") }
   items[#items + 1] = { brief = one.results }
-  items[#items + 1] = { brief = one.lines }
+  items[#items + 1] = one.lines and { brief = one.lines } or "An earlier run analysed it; its fit is not drawn again."
   items[#items + 1] = { details = one.results }
 end
 job:write({ scans = entries }, lw.report(items))
