@@ -42,9 +42,10 @@ static void add_line(const lw_calibration *instrument, const lw_voigt_kernel *ke
                              .on_s_axis = true,
                              .spectral_widths = true,
                              .axial = profile->axial,
+                             .table = profile->table,
+                             .table_deg = place,
                              .parameter = {profile->value[LW_AXIAL_1], profile->value[LW_AXIAL_2]}};
-    recipe.copies = lw_axial_copies(recipe.axial, recipe.parameter, place,
-                                    lw_voigt_fwhm(sqrt(fmax(gauss_variance, 1e-12)), lorentz));
+    recipe.copies = lw_recipe_copies(&recipe, place, lw_voigt_fwhm(sqrt(fmax(gauss_variance, 1e-12)), lorentz));
     size_t n_nodes = lw_line_nodes(&recipe, place, node);
     for (size_t i = 0; i < n; i++)
         x[i] = 2 * (sin(angle[i] * degree / 2) / cos(theta) - tan(theta)) / degree;

@@ -40,9 +40,11 @@ size_t lw_line_all_nodes(const lw_lines *lines, const lw_line *line, bool instru
                              .on_s_axis = lines->on_s_axis,
                              .spectral_widths = true,
                              .axial = axial->axial,
+                             .table = axial->table,
+                             .table_deg = line->nominal_deg,
                              .parameter = {axial->value[LW_AXIAL_1], axial->value[LW_AXIAL_2]}};
     double width = lw_voigt_fwhm(sqrt(fmax(*variance, 1e-12)), *lorentz);
-    recipe.copies = lw_axial_copies(recipe.axial, recipe.parameter, line->nominal_deg, width);
+    recipe.copies = lw_recipe_copies(&recipe, line->nominal_deg, width);
     return lw_line_nodes(&recipe, line->two_theta.value, node);
 }
 

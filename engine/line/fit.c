@@ -109,6 +109,7 @@ static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_refle
         lines->instrument = *options->instrument;
         memcpy(fit.model.instrument, options->instrument->value, sizeof fit.model.instrument);
         fit.model.axial = options->instrument->axial;
+        fit.model.table = options->instrument->table;
     }
     if (status == LW_OK && material != NULL &&
         (lines->material = lw_arena_copy(&lines->arena, material, 1, sizeof *material, err)) == NULL)

@@ -92,6 +92,8 @@ static lw_node_recipe recipe_of(const lw_model *model, size_t k, const double ax
                             .on_s_axis = model->on_s_axis,
                             .spectral_widths = model->shape->is_voigt,
                             .axial = model->axial,
+                            .table = model->table,
+                            .table_deg = model->line[k].nominal_deg,
                             .parameter = {axial[0], axial[1]},
                             .slopes = {slopes[0], slopes[1]},
                             .copies = model->line[k].copies};
@@ -129,8 +131,8 @@ void lw_model_windows(lw_model *model, const double *p, double window)
         double variance, lorentz;
         lw_model_widths(model, p, k, &variance, &lorentz);
         double width = lw_voigt_fwhm(sqrt(fmax(variance, 1e-12)), lorentz);
-        line->copies = lw_axial_copies(model->axial, axial, line->nominal_deg, width);
         lw_node_recipe recipe = recipe_of(model, k, axial, no_slopes);
+        recipe.copies = line->copies = lw_recipe_copies(&recipe, line->nominal_deg, width);
         lw_voigt_node *node = model->line_nodes;
         size_t n = lw_line_nodes(&recipe, own[0], node);
         double low = 0, high = 0, spectral = 0;

@@ -69,6 +69,7 @@ typedef struct lw_model {
     lw_model_line *line;
     /* width functions: instrument's is fixed unless it stands among the globals */
     lw_axial_kind axial;
+    const lw_profile_table *table; /* of the instrument, or NULL */
     double own[LW_WIDTH_PARAMETERS], instrument[LW_WIDTH_PARAMETERS];
     size_t n_globals;
     lw_global global[LW_GLOBALS_MOST];

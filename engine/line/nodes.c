@@ -221,12 +221,59 @@ static size_t emission_nodes(const lw_node_recipe *recipe, double two_theta_deg,
     return n;
 }
 
+lw_axial_count lw_recipe_copies(const lw_node_recipe *recipe, double two_theta_deg, double width_deg)
+{
+    if (recipe->table == NULL)
+        return lw_axial_copies(recipe->axial, recipe->parameter, two_theta_deg, width_deg);
+    /* neighbours within a twelfth of the width are one: they add less than 0.4 % to its square */
+    double together = floor(width_deg / (12 * recipe->table->spacing_deg));
+    return (lw_axial_count){{(size_t)fmin(fmax(together, 1), 16), 1}};
+}
+
+/* Copies of a tabulated profile, `together` neighbours taken as one at their mean. */
+static size_t table_nodes(const lw_profile_table *table, double angle_deg, size_t together, lw_voigt_node *node)
+{
+    double at = table->n_angles > 1 ? (angle_deg - table->first_deg) / table->step_deg : 0;
+    at = fmin(fmax(at, 0), (double)(table->n_angles - 1));
+    size_t row = (size_t)at;
+    if (row + 2 > table->n_angles && row > 0)
+        row = table->n_angles - 2;
+    double share = at - (double)row;
+    const double *low = table->weight + row * table->n, *high = table->n_angles > 1 ? low + table->n : low;
+    size_t n = 0;
+    for (size_t i = 0; i < table->n; i += together) {
+        double sum = 0, moment = 0;
+        for (size_t j = i; j < i + together && j < table->n; j++) {
+            double weight = (1 - share) * low[j] + share * high[j];
+            sum += weight;
+            moment += weight * (table->low_deg + (double)j * table->spacing_deg);
+        }
+        if (!(fabs(sum) > 1e-7))
+            continue;
+        node[n++] = (lw_voigt_node){.offset = moment / sum, .weight = sum};
+    }
+    return n;
+}
+
+/* Copies of the instrument's profile at one wavelength. */
+static size_t profile_nodes(const lw_node_recipe *recipe, double two_theta_deg, const bool slopes[LW_VOIGT_SHAPES],
+                            lw_voigt_node *node)
+{
+    if (recipe->table != NULL)
+        return table_nodes(recipe->table, recipe->table_deg, recipe->copies.part[0], node);
+    return lw_axial_nodes_at(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, slopes, node);
+}
+
+size_t lw_profile_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node)
+{
+    return profile_nodes(recipe, two_theta_deg, recipe->slopes, node);
+}
+
 size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node)
 {
     lw_voigt_node emission[LW_EMISSION_MOST], axial[LW_AXIAL_NODES_MOST];
     size_t n_emission = emission_nodes(recipe, two_theta_deg, emission);
-    size_t n_axial = lw_axial_nodes_at(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, recipe->slopes,
-                                       axial);
+    size_t n_axial = profile_nodes(recipe, two_theta_deg, recipe->slopes, axial);
     size_t n = 0;
     for (size_t c = 0; c < n_emission; c++)
         for (size_t i = 0; i < n_axial; i++) {
@@ -249,7 +296,7 @@ size_t lw_line_nodes_merged(const lw_node_recipe *recipe, double two_theta_deg, 
     lw_voigt_node axial[LW_AXIAL_NODES_MOST];
     const bool none[LW_VOIGT_SHAPES] = {false};
     size_t n = emission_nodes(recipe, two_theta_deg, node);
-    size_t n_axial = lw_axial_nodes_at(recipe->axial, recipe->parameter, two_theta_deg, recipe->copies, none, axial);
+    size_t n_axial = profile_nodes(recipe, two_theta_deg, none, axial);
     double mean = 0, square = 0, slope = 0;
     for (size_t i = 0; i < n_axial; i++) {
         mean += axial[i].weight * axial[i].offset;

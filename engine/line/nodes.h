@@ -43,8 +43,17 @@ typedef struct lw_node_recipe {
     lw_axial_kind axial;
     double parameter[LW_VOIGT_SHAPES];
     bool slopes[LW_VOIGT_SHAPES]; /* derivatives to the axial parameters wanted */
-    lw_axial_count copies;   /* from lw_axial_copies; kept while a fit iterates, so that it stays smooth */
+    const lw_profile_table *table; /* instead of an axial description, at table_deg; NULL = none */
+    double table_deg;
+    lw_axial_count copies;   /* from lw_recipe_copies; kept while a fit iterates, so that it stays smooth */
 } lw_node_recipe;
+
+/* How many copies the recipe's axial description takes under a profile of FWHM width_deg; with a table: how many of
+ * its neighbours may be taken together. */
+lw_axial_count lw_recipe_copies(const lw_node_recipe *recipe, double two_theta_deg, double width_deg);
+
+/* Nodes of the profile at one wavelength: axial divergence or table, without the emission; most LW_AXIAL_NODES_MOST. */
+size_t lw_profile_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node);
 
 /* All nodes of a line at two_theta_deg (its position at the reference wavelength), most LW_NODES_MOST.
  * Emission components beyond 2theta = 180 are left out and the weights kept (their intensity is not seen). */

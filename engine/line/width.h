@@ -10,6 +10,7 @@
 #define LW_LINE_WIDTH_H
 
 #include <stdbool.h>
+#include <stddef.h>
 
 enum {
     LW_U, LW_V, LW_W, LW_P,  /* deg^2 */
@@ -34,11 +35,23 @@ typedef enum lw_axial_kind {
     LW_AXIAL_SOLLER
 } lw_axial_kind;
 
+/* A profile given by numbers instead: its density on a grid of offsets, at evenly spaced angles, to be convolved with
+ * the function's Gaussian, which is as wide as the grid needs. Between angles it is interpolated linearly. */
+#define LW_TABLE_MOST 64
+typedef struct lw_profile_table {
+    double first_deg, step_deg;   /* angles 2theta */
+    size_t n_angles;
+    double low_deg, spacing_deg;  /* offsets from the unaberrated position */
+    size_t n;                     /* offsets, at most LW_TABLE_MOST */
+    const double *weight;         /* [n_angles][n], each row sums to 1 */
+} lw_profile_table;
+
 typedef struct lw_width_function {
     double value[LW_WIDTH_PARAMETERS];
     bool refined[LW_WIDTH_PARAMETERS]; /* false: held, its covariance is 0 */
     double covariance[LW_WIDTH_PARAMETERS][LW_WIDTH_PARAMETERS];
     lw_axial_kind axial;
+    const lw_profile_table *table; /* instead of the axial description; NULL = none. Borrowed */
     double low_deg, high_deg;          /* 2theta between which it was fitted */
 } lw_width_function;
 

@@ -102,8 +102,13 @@ void lw_width_figure_at(const lw_width_function *function, double two_theta_deg,
     double width = lw_voigt_fwhm(sqrt(of.variance), of.lorentz);
     const bool slopes[LW_VOIGT_SHAPES] = {function->covariance[LW_AXIAL_1][LW_AXIAL_1] > 0 && axial[0] > 0,
                                           function->covariance[LW_AXIAL_2][LW_AXIAL_2] > 0 && axial[1] > 0};
-    of.n = lw_axial_nodes_at(function->axial, axial, two_theta_deg,
-                             lw_axial_copies(function->axial, axial, two_theta_deg, width), slopes, of.node);
+    lw_node_recipe recipe = {.axial = function->axial,
+                             .parameter = {axial[0], axial[1]},
+                             .slopes = {slopes[0], slopes[1]},
+                             .table = function->table,
+                             .table_deg = two_theta_deg};
+    recipe.copies = lw_recipe_copies(&recipe, two_theta_deg, width);
+    of.n = lw_profile_nodes(&recipe, two_theta_deg, of.node);
     for (size_t i = 0; i < of.n; i++) {
         figure->centroid_deg += of.node[i].weight * of.node[i].offset;
         of.node[i].offset_slope = 0; /* the angle is held here */
