@@ -251,23 +251,40 @@ static lw_status voigt_parts(lw_profiles *profiles, lw_error *err)
     return LW_OK;
 }
 
-static lw_status check_refold(const lw_profiles *profiles, bool accept, lw_error *err)
+/* A line of which the scan shows little more than one side can't be checked: what its other half would say is free. */
+static bool is_cut(const lw_profiles *profiles, const lw_profile *profile)
 {
-    char names[120] = "";
-    size_t used = 0;
+    const lw_scan *scan = profiles->lines->scan;
+    double at = profile->line->two_theta.value, reach = 0.5 * profile->line->fwhm.value;
+    return at - scan->two_theta_deg[0] < reach || scan->two_theta_deg[scan->n - 1] - at < reach;
+}
+
+static lw_status check_refold(lw_profiles *profiles, bool accept, lw_error *err)
+{
+    char names[2][120] = {"", ""};
+    size_t used[2] = {0, 0};
     for (size_t k = 0; k < profiles->n; k++) {
-        const lw_profile *profile = &profiles->profile[k];
+        lw_profile *profile = &profiles->profile[k];
         const lw_reflection *r = &profile->line->reflection;
         char hkl[24];
-        if (profile->refold_failed && used + 30 < sizeof names)
-            used += (size_t)snprintf(names + used, sizeof names - used, "%s%s (%.1f)", used ? ", " : "",
-                                     lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl), profile->refold_chi2);
+        int cut = is_cut(profiles, profile);
+        profile->refold_failed |= cut;
+        if (!profile->refold_failed || used[cut] + 30 >= sizeof names[cut])
+            continue;
+        lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl);
+        used[cut] += (size_t)snprintf(names[cut] + used[cut], sizeof names[cut] - used[cut], "%s%s", used[cut] ? ", " : "", hkl);
+        if (!cut)
+            used[0] += (size_t)snprintf(names[0] + used[0], sizeof names[0] - used[0], " (%.1f)", profile->refold_chi2);
     }
-    if (used == 0 || accept)
+    if (accept || (used[0] == 0 && used[1] == 0))
         return LW_OK;
+    if (used[0] == 0)
+        return lw_fail_at(err, LW_REFOLD_FAILED, profiles->lines->scan->file, 0,
+                          "measure further, crop the scan before the line, or say accept_refold = true",
+                          "the scan ends within %s: instrument x result can't be held against half a line", names[1]);
     return lw_fail_at(err, LW_REFOLD_FAILED, profiles->lines->scan->file, 0,
                       "check the calibration and the background, or say accept_refold = true",
-                      "instrument x result does not give the data back for %s (chi-square per degree of freedom)", names);
+                      "instrument x result does not give the data back for %s (chi-square per degree of freedom)", names[0]);
 }
 
 lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calibration *calibration,

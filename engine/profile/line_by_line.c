@@ -26,6 +26,23 @@ double lw__tail_variance(const lw__job *job, double *share)
     return *share * *share * fmin(wrong * wrong + variance, 1);
 }
 
+/* The refold where the fit's shape stands as it is. */
+static void refold_shape(const lw__job *job)
+{
+    const lw__window *data = &job->data;
+    double chi2 = 0, freedom = 0, lost = 0, net = 0;
+    for (size_t i = 0; i < data->n; i++) {
+        if (!(data->own_variance[i] > 0))
+            continue;
+        double square = data->residual[i] * data->residual[i];
+        chi2 += square / data->own_variance[i];
+        lost += square - data->own_variance[i];
+        net += data->curve[i] * data->curve[i];
+        freedom += 1;
+    }
+    lw__set_refold(job->profile, chi2, freedom, data->n, lost, net);
+}
+
 static lw_status one_line(lw__job *job, const lw__separation *separation, size_t k, lw__solve_fn *solve,
                           lw__answer *answer, double slope[2], lw_error *err)
 {
@@ -45,6 +62,8 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, size_t
     *answer = (lw__answer){.breadth = job->shape_breadth, .from_shape = true};
     if (status == LW_OK && job->data.n >= 8 && job->line->area_s > 0 && job->shape_breadth > 0)
         status = solve(job, &job->instrument, true, &scratch, answer, err);
+    if (status == LW_OK && answer->from_shape)
+        refold_shape(job);
     for (int i = 0; i < 2 && status == LW_OK && !answer->from_shape; i++) {
         /* the same data with an instrument a little wider */
         lw__instrument wider = job->instrument;

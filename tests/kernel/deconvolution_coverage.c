@@ -1,0 +1,159 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Deconvolution of counts: intervals cover the truth as often as they say, seeds repeat, and what does not refold is
+ * refused. The truth is in closed form (see deconvolution_made.h). */
+#include "kernel/deconvolution_made.h"
+
+static double voigt(double length, double s, const void *user)
+{
+    const double *beta = user;
+    (void)s;
+    return exp(-2 * beta[0] * length - M_PI * beta[1] * beta[1] * length * length);
+}
+
+#define TRIALS 200
+
+/* 95 % intervals of the breadth, 200 realisations of one line at two levels of counts. Of 200, between 180 and 198
+ * may hold the truth. */
+static void coverage(void)
+{
+    static const double beta[2] = {0.04, 0.03}, height[2] = {800, 12000};
+    static const char *const methods[] = {"convolution", "stokes", "tikhonov", "maximum_entropy"};
+    double per_breadth = sqrt(M_PI) * beta[1] * erfc(beta[0] / (sqrt(M_PI) * beta[1])) /
+                         (sqrt(M_PI) * exp(-beta[0] * beta[0] / (M_PI * beta[1] * beta[1])));
+    /* beta_G exp(-k^2)/erfc(k) (Langford 1978 J. Appl. Cryst. 11, 10) */
+    double truth = beta[1] * beta[1] / per_breadth;
+    for (int level = 0; level < 2; level++) {
+        made m;
+        made_begin(&m, 0.3615, 0.06, 0.03);
+        made_scan(&m, 36, 49, 0.025, height[level], 100, 0, voigt, beta);
+        for (int k = 0; k < 4; k++) {
+            int trials = k < 2 ? TRIALS : TRIALS / 2, hits = 0, refused = 0;
+            double u = 0, error = 0, square = 0;
+            for (int t = 0; t < trials; t++) {
+                lw_error err = LW_ERROR_NONE;
+                lw_random random;
+                lw_random_begin(&random, 20260101, (uint64_t)t);
+                lw_deconvolve_options options = lw_deconvolve_defaults();
+                options.method = made_method(methods[k]);
+                options.completion = 1;
+                lw_scan *scan = NULL;
+                lw_lines *lines;
+                lw_profiles *p;
+                if (made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) != LW_OK) {
+                    refused++;
+                } else {
+                    lw_quantity b = p->profile[0].breadth_s;
+                    hits += fabs(b.value - truth) < 1.96 * b.u;
+                    u += b.u / trials;
+                    error += (b.value - truth) / trials;
+                    square += (b.value - truth) * (b.value - truth) / trials;
+                }
+                made_free(scan, lines, p);
+            }
+            printf("%-16s %6.0f counts: %3d of %d hold the truth; mean u %.2f %%, error %+.2f %%, scatter %.2f %%\n",
+                   methods[k], height[level], hits, trials, 100 * u / truth, 100 * error / truth, 100 * sqrt(square) / truth);
+            CHECK(refused == 0);
+            CHECK(hits >= 0.90 * trials && hits <= 0.99 * trials + 1);
+        }
+        made_end(&m);
+    }
+}
+
+/* A wrong calibration, twice as wide, and a scan that ends within a line are refused; the override works. */
+static void refusals(void)
+{
+    static const double beta[2] = {0.002, 0.002};
+    lw_error err = LW_ERROR_NONE;
+    lw_deconvolve_options options = lw_deconvolve_defaults();
+    lw_scan *scan = NULL;
+    lw_lines *lines;
+    lw_profiles *p;
+    made m;
+    char text[600];
+    made_begin(&m, 0.3615, 0.08, 0.05);
+    made_scan(&m, 38, 47, 0.02, 20000, 100, 0, voigt, beta);
+    lw_width_function wide = m.instrument;
+    wide.value[LW_W] *= 4;
+    wide.value[LW_Z] *= 2;
+    static const char *const methods[] = {"convolution", "stokes", "tikhonov", "richardson_lucy", "maximum_entropy"};
+    for (int k = 0; k < 5; k++) {
+        lw_random random;
+        lw_random_begin(&random, 7, 0);
+        err = LW_ERROR_NONE;
+        options.method = made_method(methods[k]);
+        options.completion = 1;
+        options.realisations = 2;
+        lw_status status = made_deconvolve(&m, &random, &wide, &options, &scan, &lines, &p, &err);
+        if (status != LW_REFOLD_FAILED)
+            fprintf(stderr, "%s: %s\n", methods[k], lw_error_text(&err, text, sizeof text));
+        CHECK(status == LW_REFOLD_FAILED);
+        CHECK_CONTAINS(lw_error_text(&err, text, sizeof text), "111");
+        CHECK_CONTAINS(text, "check the calibration");
+        CHECK_CONTAINS(text, "accept_refold = true");
+        made_free(scan, lines, p);
+        options.accept_refold = true;
+        err = LW_ERROR_NONE;
+        scan = NULL;
+        CHECK(made_deconvolve(&m, &random, &wide, &options, &scan, &lines, &p, &err) == LW_OK);
+        if (p != NULL)
+            CHECK(p->profile[0].refold_failed && p->profile[0].refold_p < 1e-6);
+        made_free(scan, lines, p);
+        options.accept_refold = false;
+        scan = NULL;
+    }
+    made_end(&m);
+    /* the scan ends a third of a width beyond the line's top */
+    static const double broad[2] = {0.15, 0.1};
+    made_begin(&m, 0.3615, 0.08, 0.05);
+    made_scan(&m, 36, 43.8, 0.02, 20000, 100, 0, voigt, broad);
+    for (int k = 0; k < 2; k++) {
+        lw_random random;
+        lw_random_begin(&random, 8, 0);
+        err = LW_ERROR_NONE;
+        scan = NULL;
+        options.method = made_method(methods[k]);
+        CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) == LW_REFOLD_FAILED);
+        CHECK_CONTAINS(lw_error_text(&err, text, sizeof text), "the scan ends within 111");
+        CHECK_CONTAINS(text, "accept_refold = true");
+        made_free(scan, lines, p);
+    }
+    made_end(&m);
+}
+
+/* Monte Carlo uncertainties repeat with their seed and change with another. */
+static void seeds(void)
+{
+    static const double beta[2] = {0.03, 0.02};
+    double u[3] = {0};
+    made m;
+    made_begin(&m, 0.3615, 0.06, 0.03);
+    made_scan(&m, 36, 49, 0.025, 5000, 100, 0, voigt, beta);
+    for (int i = 0; i < 3; i++) {
+        lw_error err = LW_ERROR_NONE;
+        lw_random random;
+        lw_random_begin(&random, 3, 0);
+        lw_deconvolve_options options = lw_deconvolve_defaults();
+        options.method = made_method("richardson_lucy");
+        options.completion = 1;
+        options.seed = i < 2 ? 5 : 6;
+        lw_scan *scan = NULL;
+        lw_lines *lines;
+        lw_profiles *p;
+        CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) == LW_OK);
+        if (p != NULL) {
+            u[i] = p->profile[0].breadth_s.u;
+            CHECK_CONTAINS(p->profile[0].assumed, i < 2 ? "seed 5" : "seed 6");
+        }
+        made_free(scan, lines, p);
+    }
+    CHECK(u[0] == u[1] && u[0] != u[2] && u[0] > 0);
+    made_end(&m);
+}
+
+int main(void)
+{
+    coverage();
+    refusals();
+    seeds();
+    return lw_checks_end();
+}
