@@ -29,7 +29,8 @@ local function analyse(path, scan)
   return { name = path:match "[^/]+$", lines = lines, profiles = profiles, results = results }
 end
 
--- Each powder is done once: a run that was stopped goes on where it was. What its analysis depends on is in the key.
+-- Each powder is done once: a run that was stopped goes on where it was. The key names what the analysis
+-- depends on.
 local function analyse_once(path)
   local scan = lw.read_scan(path, { radiation = instrument.radiation, noise = job.noise })
   local key = table.concat({ scan.hash, instrument.hash, job.noise, tostring(powder) }, " "):gsub('["\\\n]', " ")
@@ -116,7 +117,8 @@ end
 for _, one in ipairs(shown) do
   items[#items + 1] = { heading = one.name, prefix = one.name:gsub("%.%w+$", "") }
   items[#items + 1] = { brief = one.results }
-  items[#items + 1] = one.lines and { brief = one.lines } or "An earlier run analysed it; its fit is not drawn again."
+  items[#items + 1] = one.lines and { brief = one.lines }
+                      or "An earlier run analysed it; its fit is not drawn again."
   items[#items + 1] = { details = one.results }
 end
 job:write({ scans = entries }, lw.report(items))
