@@ -18,7 +18,7 @@ unset LUA_INIT LUA_PATH LUA_CPATH LUA_INIT_5_4 LUA_PATH_5_4 LUA_CPATH_5_4 CC CFL
 
 jobs=2
 lean=no only=
-steps="build ctest sanitized floors luacheck specs demo records faults browser install memory"
+steps="build ctest sanitized fuzz floors luacheck specs demo records faults browser install memory"
 while [ $# -gt 0 ]; do
   case $1 in
     --lean) lean=yes ;;
@@ -97,7 +97,7 @@ part() {
     "python='$python' logs='$logs'" ". '$root/scripts/setup.sh'" "set -eu" "$1"
 }
 
-counted="ctest sanitized floors luacheck specs records faults browser"
+counted="ctest sanitized fuzz floors luacheck specs records faults browser"
 count_lines() {
   good=$(sed -nE 's/^([0-9]+: )?([0-9]+) passed, ([0-9]+) failed$/\2/p' "$log" | awk '{ n += $1 } END { print n + 0 }')
   bad=$(sed -nE 's/^([0-9]+: )?([0-9]+) passed, ([0-9]+) failed$/\3/p' "$log" | awk '{ n += $1 } END { print n + 0 }')
@@ -111,6 +111,7 @@ count_programs() {
 }
 count_ctest() { count_programs; }
 count_sanitized() { count_programs; }
+count_fuzz() { count_lines; }
 count_floors() { count_lines; }
 count_records() { count_lines; }
 count_faults() { count_lines; }
@@ -164,14 +165,28 @@ if wanted sanitized; then
   step sanitized 900 sh "$scratch/sanitized.sh"
 fi
 
-# 4. The rules of the house.
+# 4. Made-up input for the readers, the record and the options, 20 s each.
+if wanted fuzz; then
+  if ! has clang; then
+    skip fuzz "clang is not on this system"
+  else
+    part '
+      configure "$root/build-fuzz" -DCMAKE_C_COMPILER=clang -DCMAKE_BUILD_TYPE=RelWithDebInfo -DLW_WERROR=ON -DLW_TESTS=ON \
+        -DLW_FUZZ=ON -DLW_SANITIZE=address,undefined,fuzzer-no-link
+      make -C "$root/build-fuzz" -j$jobs --no-print-directory fuzzers
+      sh tests/fuzz/run.sh "$root/build-fuzz" 20' >"$scratch/fuzz.sh"
+    step fuzz 900 sh "$scratch/fuzz.sh"
+  fi
+fi
+
+# 5. The rules of the house.
 if wanted floors; then step floors 120 sh tests/floors.sh "$build"; fi
 if wanted luacheck; then
   step luacheck 120 luacheck --no-color --codes -q \
     $(find scripts standards engine/bind tests/spec tests/truth -name '*.lua' 2>/dev/null | sort)
 fi
 
-# 5. The specs, under the interpreter itself.
+# 6. The specs, under the interpreter itself.
 if wanted specs; then
   if [ $built = yes ]; then
     # a path from here: busted hands it to a shell without quotes
@@ -181,7 +196,7 @@ if wanted specs; then
   fi
 fi
 
-# 6. The main job on the demonstration data, as a person runs it; its records against their schemas.
+# 7. The main job on the demonstration data, as a person runs it; its records against their schemas.
 demo=$root/out/test-demo
 if wanted demo || wanted records || wanted browser; then
   if [ $built = yes ]; then
@@ -196,7 +211,7 @@ if wanted demo || wanted records || wanted browser; then
 fi
 if wanted records; then step records 120 "$python" tests/records.py "$demo"; fi
 
-# 7. What happens when the world is not as it should be.
+# 8. What happens when the world is not as it should be.
 if wanted faults; then
   if [ $built = yes ]; then
     step faults 400 sh tests/faults/run.sh "$build"
@@ -205,7 +220,7 @@ if wanted faults; then
   fi
 fi
 
-# 8. The reports in a browser without a window.
+# 9. The reports in a browser without a window.
 if wanted browser; then
   if [ $lean = yes ]; then
     skip browser "left out by --lean"
@@ -214,7 +229,7 @@ if wanted browser; then
   fi
 fi
 
-# 9. Installed, moved and run from somewhere else.
+# 10. Installed, moved and run from somewhere else.
 if wanted install; then
   if [ $built = yes ]; then
     step install 240 sh tests/install.sh "$build"
@@ -223,7 +238,7 @@ if wanted install; then
   fi
 fi
 
-# 10. Memory of the interpreter's own start and end, which the C tests don't cross.
+# 11. Memory of the interpreter's own start and end, which the C tests don't cross.
 if wanted memory; then
   if [ $built = no ]; then
     skip memory "the interpreter was not built"
