@@ -16,37 +16,48 @@
 #define LITERAL_MOST ((size_t)1 << 20) /* bytes of a file */
 #define STEPS_MOST 20000               /* instructions; the largest of ours takes about 200 */
 #define HOOK_EVERY 16
-#define GROWTH_MOST_KB 32768
+#define GROWTH_MOST ((size_t)32 << 20) /* bytes that it may take while it runs */
 #define NAMES_MOST 400
 
 static const char guard_key = 'g';
 
-/* Counts the steps of a literal; the count is kept in the registry under the thread. */
+/* Counts the steps of a literal; the count is kept in the registry. */
 static void guard(lua_State *L, lua_Debug *frame)
 {
     (void)frame;
     lua_rawgetp(L, LUA_REGISTRYINDEX, &guard_key);
-    lua_rawgeti(L, -1, 1);
     lua_Integer steps = lua_tointeger(L, -1) + HOOK_EVERY;
-    lua_rawgeti(L, -2, 2);
-    lua_Integer kb = lua_tointeger(L, -1);
-    lua_pop(L, 2);
-    lua_pushinteger(L, steps);
-    lua_rawseti(L, -2, 1);
     lua_pop(L, 1);
-    if (steps > STEPS_MOST || lua_gc(L, LUA_GCCOUNT, 0) > kb + GROWTH_MOST_KB)
+    lua_pushinteger(L, steps);
+    lua_rawsetp(L, LUA_REGISTRYINDEX, &guard_key);
+    if (steps > STEPS_MOST)
         luaL_error(L, "a data file may only hold constants; this one computes too long");
+}
+
+/* The state's own allocator with a limit: few steps are enough to double a string into gigabytes. */
+typedef struct purse {
+    lua_Alloc allocate;
+    void *user;
+    size_t left;
+} purse;
+
+static void *allocate_limited(void *user, void *block, size_t old_size, size_t new_size)
+{
+    purse *p = user;
+    size_t old = block != NULL ? old_size : 0; /* without a block it is the kind of object */
+    if (new_size > old && new_size - old > p->left)
+        return NULL;
+    void *made = p->allocate(p->user, block, old_size, new_size);
+    if (made != NULL || new_size == 0)
+        p->left = new_size > old ? p->left - (new_size - old) : p->left + (old - new_size);
+    return made;
 }
 
 /* Runs the chunk on the top of the stack in a thread of its own with the guard; leaves its result. */
 static int run_guarded(lua_State *L)
 {
     lua_State *thread = lua_newthread(L); /* chunk, thread */
-    lua_createtable(L, 2, 0);
     lua_pushinteger(L, 0);
-    lua_rawseti(L, -2, 1);
-    lua_pushinteger(L, lua_gc(L, LUA_GCCOUNT, 0));
-    lua_rawseti(L, -2, 2);
     lua_rawsetp(L, LUA_REGISTRYINDEX, &guard_key);
     lua_sethook(thread, guard, LUA_MASKCOUNT, HOOK_EVERY);
     lua_pushvalue(L, 1);
@@ -90,7 +101,11 @@ void lwb_load_literal(lua_State *L, const char *path)
         lua_pushnil(L);
         lua_setmetatable(L, -2);
         lua_pop(L, 1);
+        purse limited = {.left = GROWTH_MOST};
+        limited.allocate = lua_getallocf(L, &limited.user);
+        lua_setallocf(L, allocate_limited, &limited);
         status = lua_pcall(L, 1, 1, 0);
+        lua_setallocf(L, limited.allocate, limited.user);
         lua_pushliteral(L, "");
         lua_pushvalue(L, -3);
         lua_setmetatable(L, -2);
