@@ -1,6 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "base/arena.h"
 
+#include "base/pages.h"
+
 #include <stdarg.h>
 #include <stdint.h>
 #include <stdio.h>
@@ -36,6 +38,8 @@ void *lw_take(lw_engine *engine, size_t size, lw_error *err)
     if (block == NULL)
         lw_fail(err, LW_OUT_OF_MEMORY, "raise the memory limit or crop the scan",
                 "out of memory: %zu bytes were refused", size);
+    else
+        lw_prefer_large_pages(block, size);
     return block;
 }
 
@@ -52,7 +56,7 @@ static size_t aligned(const lw_arena_chunk *chunk, size_t used)
     return used + (size_t)((ALIGNMENT - at % ALIGNMENT) % ALIGNMENT);
 }
 
-void *lw_arena_take(lw_arena *arena, size_t count, size_t size, lw_error *err)
+void *lw_arena_take_raw(lw_arena *arena, size_t count, size_t size, lw_error *err)
 {
     if (size != 0 && count > (SIZE_MAX / 4) / size) {
         lw_fail(err, LW_OUT_OF_MEMORY, NULL, "out of memory: %zu x %zu bytes can't be counted", count,
@@ -74,14 +78,20 @@ void *lw_arena_take(lw_arena *arena, size_t count, size_t size, lw_error *err)
     }
     size_t start = aligned(chunk, chunk->used);
     chunk->used = start + bytes;
-    void *block = (char *)chunk + start;
-    memset(block, 0, bytes);
+    return (char *)chunk + start;
+}
+
+void *lw_arena_take(lw_arena *arena, size_t count, size_t size, lw_error *err)
+{
+    void *block = lw_arena_take_raw(arena, count, size, err);
+    if (block != NULL)
+        memset(block, 0, count * size);
     return block;
 }
 
 void *lw_arena_copy(lw_arena *arena, const void *from, size_t count, size_t size, lw_error *err)
 {
-    void *copy = lw_arena_take(arena, count, size, err);
+    void *copy = lw_arena_take_raw(arena, count, size, err);
     if (copy != NULL && count * size > 0)
         memcpy(copy, from, count * size);
     return copy;

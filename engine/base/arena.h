@@ -23,6 +23,9 @@ void lw_arena_end(lw_arena *arena);
  * overflows. A count of 0 gives a valid pointer that must not be read. */
 void *lw_arena_take(lw_arena *arena, size_t count, size_t size, lw_error *err);
 
+/* The same without zeroing, for arrays that are filled at once. */
+void *lw_arena_take_raw(lw_arena *arena, size_t count, size_t size, lw_error *err);
+
 /* Copies a string (NULL is copied as ""), or count x size bytes. NULL on refusal. */
 char *lw_arena_text(lw_arena *arena, const char *text, lw_error *err);
 void *lw_arena_copy(lw_arena *arena, const void *from, size_t count, size_t size, lw_error *err);

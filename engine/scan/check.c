@@ -22,13 +22,66 @@ __attribute__((format(printf, 6, 7))) static lw_status refuse(const lw_columns *
     return lw_fail_at(err, LW_BAD_DATA, file, 0, remedy, "point %zu: %s", i + 1, message);
 }
 
+/* Points that are judged at once, without a way out between them, so that they are compared side by side. */
+#define AT_ONCE 256
+
+/* The first of the points from i on that may be the one where angles don't ascend within 0 to 180. */
+static size_t ascend_until(const double *x, size_t n)
+{
+    size_t i = 1;
+    if (!(x[0] > 0))
+        return 0;
+    for (; i + AT_ONCE <= n; i += AT_ONCE) {
+        int good = 1;
+        for (size_t k = i; k < i + AT_ONCE; k++)
+            good &= x[k] > x[k - 1];
+        if (!good)
+            break;
+    }
+    while (i < n && x[i] > x[i - 1])
+        i++;
+    /* they ascend so far, so that the last one below 180 vouches for all */
+    for (; i > 0 && !(x[i - 1] < 180); i--)
+        ;
+    return i;
+}
+
+/* The first point whose value is beyond VALUE_MOST, or not finite. */
+static size_t moderate_until(const double *values, size_t n)
+{
+    size_t i = 0;
+    for (; i + AT_ONCE <= n; i += AT_ONCE) {
+        int good = 1;
+        for (size_t k = i; k < i + AT_ONCE; k++)
+            good &= fabs(values[k]) <= VALUE_MOST;
+        if (!good)
+            break;
+    }
+    while (i < n && fabs(values[i]) <= VALUE_MOST)
+        i++;
+    return i;
+}
+
+/* Whether no value is negative and, if they must be, all are whole numbers. */
+static bool are_counts(const double *values, size_t n, bool must)
+{
+    int any = must ? 0 : 1;
+    int good = 1;
+    for (size_t i = 0; i < n && good; i += AT_ONCE) {
+        size_t end = n - i < AT_ONCE ? n : i + AT_ONCE;
+        for (size_t k = i; k < end; k++) {
+            /* adding and taking off 2^52 rounds to a whole number what is below it, as all values are */
+            double whole = (values[k] + 0x1p52) - 0x1p52;
+            good &= (values[k] >= 0) & ((whole == values[k]) | any);
+        }
+    }
+    return good;
+}
+
 static lw_status check_angles(const lw_columns *columns, const char *file, lw_error *err)
 {
     const double *x = columns->two_theta_deg;
-    size_t n = columns->n, i = 0;
-    double before = -1;
-    while (i < n && x[i] > before && x[i] > 0 && x[i] < 180)
-        before = x[i++];
+    size_t n = columns->n, i = ascend_until(x, n);
     if (i == n)
         return LW_OK;
     if (!isfinite(x[i]))
@@ -56,9 +109,7 @@ static lw_status check_angles(const lw_columns *columns, const char *file, lw_er
 static lw_status check_values(const lw_columns *columns, const char *file, const double *values,
                               const char *what, lw_error *err)
 {
-    size_t i = 0;
-    while (i < columns->n && fabs(values[i]) <= VALUE_MOST)
-        i++;
+    size_t i = moderate_until(values, columns->n);
     if (i == columns->n)
         return LW_OK;
     if (!isfinite(values[i]))
@@ -100,7 +151,7 @@ lw_status lw_columns_check(const lw_columns *columns, const char *file, int want
             status = check_sigma(columns, file, err);
     }
     *noise = wants_sigma ? LW_NOISE_SIGMA : wanted == 3 ? LW_NOISE_SCALED : LW_NOISE_COUNTS;
-    if (status != LW_OK || *noise != LW_NOISE_COUNTS)
+    if (status != LW_OK || *noise != LW_NOISE_COUNTS || are_counts(columns->intensity, columns->n, wanted == 0))
         return status;
     bool whole = true;
     for (size_t i = 0; i < columns->n; i++) {

@@ -1,4 +1,5 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "base/pages.h"
 #include "scan/number.h"
 #include "scan/reader.h"
 
@@ -33,6 +34,7 @@ static char *room_of(lw_engine *engine, char *old, size_t size, lw_error *err)
         return NULL;
     }
     grown->total = total;
+    lw_prefer_large_pages(grown, total);
     return (char *)(grown + 1);
 }
 

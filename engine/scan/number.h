@@ -115,6 +115,8 @@ static inline bool lw_plain_number(const char *row, uint64_t *mask, unsigned *at
         return true;
     }
     *mask &= *mask - 1;
+    if (*mask == 0) /* the mark was the last byte in view */
+        return false;
     unsigned end = (unsigned)__builtin_ctzll(*mask), fraction = end - stop - 1;
     if (fraction - 1 > 7)
         return false;

@@ -52,7 +52,7 @@ static lw_status copy_points(lw_engine *engine, const lw_scan *like, size_t from
     lw_scan *made = lw_arena_take(&arena, 1, sizeof *made, err);
     char *file = made ? lw_arena_text(&arena, like->file, err) : NULL;
     char *header = file ? lw_arena_text(&arena, like->header, err) : NULL;
-    double *points = header ? lw_arena_take(&arena, n * (like->sigma ? 3 : 2), sizeof(double), err) : NULL;
+    double *points = header ? lw_arena_take_raw(&arena, n * (like->sigma ? 3 : 2), sizeof(double), err) : NULL;
     if (points == NULL) {
         lw_arena_end(&arena);
         return LW_OUT_OF_MEMORY;

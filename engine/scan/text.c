@@ -382,18 +382,32 @@ static const char *gather_header(const text *t, lw_arena *arena, lw_error *err)
     return header;
 }
 
-static size_t lines_at_most(const lw_content *content)
+/* Rows that the content may hold by the length of the first ones; a guess, with something to spare. */
+static size_t guess_rows(const text *t)
 {
-    size_t n = 1;
-    for (size_t from = 0; from < content->size; from += 128) {
-        /* a byte can't overflow in 128 steps, and bytes are what the compiler counts fastest */
-        size_t to = content->size - from < 128 ? content->size : from + 128;
-        unsigned char some = 0;
-        for (size_t i = from; i < to; i++)
-            some = (unsigned char)(some + (content->bytes[i] == '\n'));
-        n += some;
+    size_t rows = 0;
+    const char *p = t->first;
+    for (; rows < 64 && p < t->end; rows++) {
+        const char *eol = end_of_line(t, p);
+        p = eol < t->end ? eol + 1 : eol;
     }
-    return n;
+    size_t mean = (size_t)(p - t->first) / rows, left = (size_t)(t->end - t->first);
+    return left / (mean > 0 ? mean : 1) * 17 / 16 + 64;
+}
+
+/* Makes room for more rows, keeping those that are there. */
+static lw_status make_room(lw_rows *rows, lw_arena *arena, size_t room, lw_error *err)
+{
+    double *all = lw_arena_take_raw(arena, room * rows->columns, sizeof(double), err);
+    if (all == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (unsigned k = 0; k < rows->columns; k++) {
+        if (rows->n > 0)
+            memcpy(all + k * room, rows->column[k], rows->n * sizeof(double));
+        rows->column[k] = all + k * room;
+    }
+    rows->room = room;
+    return LW_OK;
 }
 
 /* What can be told from the bytes as a whole. */
@@ -434,6 +448,49 @@ static bool claims(const lw_content *content)
     return true;
 }
 
+/* Reads all rows; the header goes into the columns. */
+static lw_status read_rows(lw_engine *engine, text *t, lw_rows *rows, lw_columns *columns, lw_error *err)
+{
+    const lw_content *content = t->content;
+    for (const char *p = content->bytes; p < t->end;) {
+        double row[COLUMNS_MOST];
+        const char *next;
+        line_kind kind = read_line(t, p, row, &next, err);
+        if (kind == LINE_REFUSED)
+            return LW_BAD_DATA;
+        p = next;
+        if (kind == LINE_BARE)
+            continue;
+        rows->separator = t->separator;
+        rows->mark = t->mark;
+        rows->columns = t->columns;
+        if (rows->n == 0)
+            columns->header = gather_header(t, columns->arena, err);
+        if (rows->n == rows->room) {
+            size_t room = rows->n == 0 ? guess_rows(t) : rows->room + rows->room / 2;
+            if (columns->header == NULL || make_room(rows, columns->arena, room, err) != LW_OK)
+                return LW_OUT_OF_MEMORY;
+        }
+        for (unsigned k = 0; k < t->columns; k++)
+            rows->column[k][rows->n] = row[k];
+        rows->n++;
+        size_t free_rows = rows->room - rows->n;
+        p = lw_rows_read(rows, p, free_rows < ROWS_BETWEEN_POLLS ? free_rows : ROWS_BETWEEN_POLLS);
+        lw_status status = lw_engine_poll(engine, err);
+        if (status != LW_OK)
+            return status;
+    }
+    if (rows->n == 0)
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0,
+                          "a scan has rows of 2theta (degrees) and counts", "the file has no numbers");
+    if (t->end[-1] != '\n' && t->line > t->first && is_cut_number(t)) {
+        refuse(t, err, CUT_HELP,
+               "the last line is cut short: its last number has fewer decimals than all before");
+        return LW_BAD_DATA;
+    }
+    return LW_OK;
+}
+
 static lw_status read_text(lw_engine *engine, lw_content *content, const lw_scan_options *options,
                            lw_columns *columns, lw_error *err)
 {
@@ -448,43 +505,9 @@ static lw_status read_text(lw_engine *engine, lw_content *content, const lw_scan
         return LW_OUT_OF_MEMORY;
     *t = (text){.content = content, .end = content->bytes + content->size, .separator = ' ', .mark = '.'};
     lw_rows rows = {.content = content};
-    for (const char *p = content->bytes; p < t->end;) {
-        double row[COLUMNS_MOST];
-        const char *next;
-        line_kind kind = read_line(t, p, row, &next, err);
-        if (kind == LINE_REFUSED)
-            return LW_BAD_DATA;
-        p = next;
-        if (kind == LINE_BARE)
-            continue;
-        if (rows.n == 0) {
-            size_t room = lines_at_most(content);
-            columns->header = gather_header(t, columns->arena, err);
-            rows.column[0] = lw_arena_take(columns->arena, room * t->columns, sizeof(double), err);
-            if (columns->header == NULL || rows.column[0] == NULL)
-                return LW_OUT_OF_MEMORY;
-            rows.column[1] = rows.column[0] + room;
-            rows.column[2] = t->columns == 3 ? rows.column[1] + room : NULL;
-        }
-        for (unsigned k = 0; k < t->columns; k++)
-            rows.column[k][rows.n] = row[k];
-        rows.n++;
-        rows.separator = t->separator;
-        rows.mark = t->mark;
-        rows.columns = t->columns;
-        p = lw_rows_read(&rows, p, ROWS_BETWEEN_POLLS);
-        status = lw_engine_poll(engine, err);
-        if (status != LW_OK)
-            return status;
-    }
-    if (rows.n == 0)
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0,
-                          "a scan has rows of 2theta (degrees) and counts", "the file has no numbers");
-    if (t->end[-1] != '\n' && t->line > t->first && is_cut_number(t)) {
-        refuse(t, err, CUT_HELP,
-               "the last line is cut short: its last number has fewer decimals than all before");
-        return LW_BAD_DATA;
-    }
+    status = read_rows(engine, t, &rows, columns, err);
+    if (status != LW_OK)
+        return status;
     columns->n = rows.n;
     columns->two_theta_deg = rows.column[0];
     columns->intensity = rows.column[1];

@@ -29,3 +29,18 @@ while [ "$round" -lt "$rounds" ]; do
     round=$((round + 1))
 done > "$work/results"
 "$python" "$here/table.py" "$work/results" "$build/bench.json"
+
+# P6: reading text, against numpy.loadtxt
+"$python" "$here/p6.py" make "$work"
+round=0
+while [ "$round" -lt "$rounds" ]; do
+    for case in "short 31 101" "long 3 7"; do
+        set -- $case
+        printf '%s loadtxt ' "$1"
+        $pinned "$python" "$here/p6.py" loadtxt "$work/$1.xy" "$2"
+        printf '%s engine ' "$1"
+        $pinned "$build/bench_p6" "$work/$1.xy" "$3"
+    done
+    round=$((round + 1))
+done > "$work/results6"
+"$python" "$here/p6.py" table "$work/results6"

@@ -1,0 +1,24 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* POSIX knows no request for large pages; Linux shows its own to those who ask for more than POSIX. */
+#define _DEFAULT_SOURCE 1
+#include "base/pages.h"
+
+#include <stdint.h>
+#include <sys/mman.h>
+
+#define LARGE_PAGE ((uintptr_t)2 << 20)
+
+void lw_prefer_large_pages(void *block, size_t size)
+{
+#ifdef MADV_HUGEPAGE
+    if (size < 2 * LARGE_PAGE)
+        return;
+    uintptr_t from = ((uintptr_t)block + LARGE_PAGE - 1) / LARGE_PAGE * LARGE_PAGE;
+    uintptr_t to = ((uintptr_t)block + size) / LARGE_PAGE * LARGE_PAGE;
+    if (to > from) /* a refusal changes nothing but the time */
+        (void)madvise((void *)from, (size_t)(to - from), MADV_HUGEPAGE);
+#else
+    (void)block;
+    (void)size;
+#endif
+}

@@ -1,0 +1,79 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Benchmark P6: reading a scan of text columns, checks and SHA-256 of the file included.
+ * usage: bench_p6 FILE REPEATS
+ * prints one JSON line: median seconds of a read, points, and whether every number is bit-identical to strtod().
+ * (FILE has rows of two numbers and nothing else.) */
+#include "scan/scan.h"
+
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <time.h>
+
+static double now(void)
+{
+    struct timespec t;
+    clock_gettime(CLOCK_MONOTONIC, &t);
+    return (double)t.tv_sec + 1e-9 * (double)t.tv_nsec;
+}
+
+static int ascending(const void *a, const void *b)
+{
+    double x = *(const double *)a, y = *(const double *)b;
+    return (x > y) - (x < y);
+}
+
+/* Whether the points are what strtod() makes of the file. */
+static bool is_as_strtod(const char *path, const lw_scan *scan)
+{
+    FILE *file = fopen(path, "r");
+    char line[256];
+    size_t i = 0;
+    bool same = file != NULL;
+    for (; same && fgets(line, sizeof line, file) != NULL; i++) {
+        char *after;
+        double x = strtod(line, &after), y = strtod(after, NULL);
+        same = i < scan->n && memcmp(&x, &scan->two_theta_deg[i], sizeof x) == 0 &&
+               memcmp(&y, &scan->intensity[i], sizeof y) == 0;
+    }
+    if (file != NULL)
+        fclose(file);
+    return same && i == scan->n;
+}
+
+int main(int argc, char **argv)
+{
+    long repeats = argc == 3 ? strtol(argv[2], NULL, 10) : 0;
+    double *seconds = repeats > 0 ? malloc((size_t)repeats * sizeof *seconds) : NULL;
+    if (seconds == NULL) {
+        fprintf(stderr, "usage: bench_p6 FILE REPEATS\n");
+        return 2;
+    }
+    lw_engine engine;
+    lw_engine_begin(&engine);
+    lw_scan_options options = lw_scan_defaults();
+    options.noise = 1; /* counts, so that reading is all that is timed */
+    bool same = false;
+    size_t n = 0;
+    for (long i = 0; i < repeats; i++) {
+        lw_error err = LW_ERROR_NONE;
+        lw_scan *scan = NULL;
+        double began = now();
+        lw_status status = lw_scan_read(&engine, argv[1], &options, &scan, &err);
+        seconds[i] = now() - began;
+        if (status != LW_OK) {
+            char text[2000];
+            fprintf(stderr, "%s\n", lw_error_text(&err, text, sizeof text));
+            return 1;
+        }
+        if (i == 0)
+            same = is_as_strtod(argv[1], scan);
+        n = scan->n;
+        lw_scan_free(scan);
+    }
+    lw_engine_end(&engine);
+    qsort(seconds, (size_t)repeats, sizeof *seconds, ascending);
+    printf("{\"seconds\": %.9f, \"best\": %.9f, \"points\": %zu, \"as_strtod\": %s}\n", seconds[repeats / 2], seconds[0], n, same ? "true" : "false");
+    free(seconds);
+    return same ? 0 : 1;
+}
