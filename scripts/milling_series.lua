@@ -58,7 +58,9 @@ for place, path in ipairs(job.scans) do
     rows[#rows + 1] = row
     entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = known.lines,
                               methods = known.methods, lattice = known.lattice,
-                              agreement = known.agreement, notes = known.notes }
+local columns = {
+  "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "lattice_a", "goodness_of_fit",
+}
     shown[#shown + 1] = fresh or { name = row.scan, results = known }
     print(("%-28s size %-16s strain %s"):format(row.scan, tostring(row.size_volume), tostring(row.strain_rms)))
   else
@@ -72,7 +74,8 @@ if #rows == 0 then
   error("no scan of the series could be analysed: " .. failed[1].error)
 end
 table.sort(rows, function(a, b) return a.milling_time_h < b.milling_time_h end)
-local columns = { "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "lattice_a", "goodness_of_fit" }
+local columns = { "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "lattice_a",
+                  "goodness_of_fit" }
 job:write_csv("series.csv", rows, columns)
 
 -- Size and strain against time; limits are left out of the curves and stay in the table.
