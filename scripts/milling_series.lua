@@ -58,9 +58,7 @@ for place, path in ipairs(job.scans) do
     rows[#rows + 1] = row
     entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = known.lines,
                               methods = known.methods, lattice = known.lattice,
-local columns = {
-  "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "lattice_a", "goodness_of_fit",
-}
+                              agreement = known.agreement, notes = known.notes }
     shown[#shown + 1] = fresh or { name = row.scan, results = known }
     print(("%-28s size %-16s strain %s"):format(row.scan, tostring(row.size_volume), tostring(row.strain_rms)))
   else

@@ -170,7 +170,8 @@ describe("a recipe", function()
   it("shows a table's columns in the order asked for, and names figures' files by their section", function()
     local code, _, err = run([[
       local figure = lw.figure { name = "own", x = "a", y = "b", series = { { x = { 1, 2, 3 }, y = { 1, 2, 3 } } } }
-      local rows = { { name = "first", time_h = 2, chance = 1e-9 }, { name = "second", chi2 = 12.3456789, size = lw.quantity { 1, 0.1, "nm" } } }
+      local rows = { { name = "first", time_h = 2, chance = 1e-9 },
+        { name = "second", chi2 = 12.3456789, size = lw.quantity { 1, 0.1, "nm" } } }
       job:write(lw.report { { table = rows, columns = { "time_h", "size", "name", "chi2", "chance", "absent" } },
         { heading = "One", prefix = "one" }, figure, figure, { heading = "Two" }, figure,
         { details = lw.result { size = lw.quantity { 1, 0.1, "nm" }, chi2 = 3.14159265, form = "round" } } })
