@@ -103,7 +103,8 @@ static void add_result(lua_State *L, lw_report *report, int self, const lw_node 
     lw_node *first = lw_add_group(scratch->root, name, &err), *rest = lw_add_group(scratch->root, "", &err);
     bool any = false;
     for (const lw_node *child = node->first; child != NULL && rest != NULL; child = child->next) {
-        bool drawn = is_drawing(child->name) || (child->name != NULL && strcmp(child->name, "figure") == 0);
+        bool drawn = is_drawing(child->name) ||
+                     (child->name != NULL && (strcmp(child->name, "figure") == 0 || strcmp(child->name, "figures") == 0));
         if (is_method && is_remarks(child))
             continue;
         if (!drawn)
@@ -116,6 +117,13 @@ static void add_result(lua_State *L, lw_report *report, int self, const lw_node 
     lwb_check(L, lw_report_result(report, first, &err), &err);
     if (with_figure && lwb_push_result_figure(L, node, name))
         add_figure(L, report, self);
+    /* a method shown alone shows all its figures, beside others only the first */
+    const lw_node *figures = is_method ? NULL : lw_node_get(node, "figures");
+    for (const lw_node *more = figures != NULL ? figures->first : NULL; more != NULL && with_figure; more = more->next)
+        if (more->kind == LW_NODE_GROUP) {
+            lwb_push_figure(L, more);
+            add_figure(L, report, self);
+        }
     if (any) {
         fold(L, report, "Its tables");
         lwb_check(L, lw_report_result(report, rest, &err), &err);

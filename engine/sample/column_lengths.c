@@ -263,6 +263,7 @@ lw_status lw_columns_density(const lw_size_coefficients *a, const lw_initial_slo
     double count = 0;
     for (size_t j = 0; j < n; j++)
         count += q[j] * a->step_nm;
+    out->beyond = count > 0 ? (q[told] + q[told + 1]) * a->step_nm / count : 1;
     if (!(count > 0))
         return lw_fail(err, LW_NOT_SUPPORTED, NULL, "no distribution of column lengths fits the size coefficients");
     /* u: of the linear answer with the same entries held, through the coefficients' whole covariance */

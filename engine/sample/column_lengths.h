@@ -41,6 +41,7 @@ typedef struct lw_column_density {
     size_t n;
     double *length_nm, *density, *u; /* [n] p(L), number of columns, nm^-1, integral 1 */
     double chi2, smoothing;          /* of the fit to A(L), and the weight of the second difference */
+    double beyond;                   /* share of the columns that are as long as the last coefficient or longer */
 } lw_column_density;
 
 /* Distribution of column lengths, p = size_area A''(L), as the smoothest density >= 0 whose coefficients agree with A(L)

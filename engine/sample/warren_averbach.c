@@ -117,12 +117,17 @@ static lw_status separate(const lw_profiles *profiles, const warren_averbach_opt
     if (status != LW_OK)
         return status;
     set->size = (lw_size_coefficients){.n = h->n, .step_nm = h->step_nm, .value = h->size, .covariance = h->size_covariance};
+    bool voigt = profiles->method != NULL && strcmp(profiles->method, "convolution") == 0;
     lw_error own = LW_ERROR_NONE;
     status = lw_columns_slope(&set->size, o->slope, arena, &set->slope, &own);
     set->has_slope = status == LW_OK;
+    if (set->has_slope && voigt && h->size[1] < 1) {
+        /* the Voigts' own slope at L = 0 is the other reading of them: between the two lies what their shape makes */
+        double own_slope = h->step_nm / (1 - h->size[1]), off = own_slope - set->slope.size_area;
+        set->slope.u = sqrt(set->slope.u * set->slope.u + off * off / 12);
+    }
     set->no_slope = set->has_slope ? "" : lw_arena_text(arena, own.message, err);
     /* low coefficients of a fitted Voigt are its own tail, not the powder's */
-    bool voigt = profiles->method != NULL && strcmp(profiles->method, "convolution") == 0;
     find_strain(set, voigt ? 0.1 : 0.02);
 
     if (set->has_slope) {
@@ -130,15 +135,16 @@ static lw_status separate(const lw_profiles *profiles, const warren_averbach_opt
                                               arena, err);
         for (size_t i = 1; i < h->n && set->has_volume; i++)
             if (h->size[i] < 0.1) {
-                if (h->coefficient[i] < 0.6 * h->size[i]) { /* of the lowest order */
+                if (h->coefficient[i] < 0.75 * h->size[i]) { /* of the lowest order */
                     set->has_volume = false;
-                    set->no_volume = "where the size coefficients die, strain has taken more than 40 % off every order: "
+                    set->no_volume = "where the size coefficients die, strain has taken more than a quarter off every order: "
                                      "the integral would be an extrapolation";
                 }
                 break;
             }
         lw_error none = LW_ERROR_NONE;
-        set->has_density = lw_columns_density(&set->size, &set->slope, arena, &set->density, &none) == LW_OK;
+        set->has_density = lw_columns_density(&set->size, &set->slope, arena, &set->density, &none) == LW_OK &&
+                           set->density.beyond < 0.5;
         if (none.status == LW_OUT_OF_MEMORY)
             *err = none;
         }
@@ -246,7 +252,13 @@ static void tell_curves(const lw_profiles *profiles, const one_set *set, lw_aren
 
 static void tell_columns(const one_set *set, lw_node *to, lw_error *err)
 {
+    if (set->has_slope && !set->has_density) {
+        lw_add_text(to, "columns_not_determined",
+                    "most columns are longer than the coefficients reach, or no distribution fits them", err);
+        return;
+    }
     lw_node *list = lw_add_list(to, "columns", err);
+
     for (size_t i = 0; set->has_density && i < set->density.n; i++) {
         lw_node *row = lw_add_group(list, NULL, err);
         lw_add_number(row, "length", set->density.length_nm[i], err);

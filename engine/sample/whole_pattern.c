@@ -160,7 +160,10 @@ static void draw(const lw_pattern_answer *a, lw_arena *arena, lw_node *result, l
     lw_add_vector(band, "x", a->length, n, "nm", err);
     lw_add_vector(band, "y", low, n, "", err);
     lw_add_vector(band, "high", high, n, "", err);
-    for (size_t i = 0; i < a->n_forms; i++) {
+    size_t possible = 0;
+    for (size_t i = 0; i < a->n_forms; i++)
+        possible += a->form[i].fitted && a->form[i].weight >= 0.01 && !a->form[i].none;
+    for (size_t i = 0; i < a->n_forms && possible > 1; i++) {
         if (!a->form[i].fitted || a->form[i].weight < 0.01 || a->form[i].none)
             continue;
         lw_node *each = lw_add_group(series, NULL, err);

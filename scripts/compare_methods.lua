@@ -1,0 +1,80 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- One powder, every method, and every way of taking the instrument out: do they say the same?
+local lw = require "linewright"
+
+local job = lw.recipe {
+  title  = "Methods compared on one powder",
+  inputs = {
+    scan        = { kind = "file", help = "scan of the powder" },
+    material    = { kind = "name", help = "material: a name from standards/materials, or a file" },
+    calibration = { kind = "file", help = "calibration.json of the instrument" },
+    ways        = { kind = "list", default = { "convolution", "stokes", "physical" },
+                    help = "ways of taking the instrument out" },
+    methods     = { kind = "list", default = "all", help = "methods to run" },
+  },
+}
+
+local instrument = lw.load_calibration(job.calibration)
+local powder     = lw.material(job.material)
+local scan       = lw.read_scan(job.scan, { radiation = instrument.radiation })
+
+local valid  = instrument.valid_two_theta
+local margin = 0.05 * (valid[2] - valid[1])
+scan = scan:crop(math.max(valid[1] - margin, scan.two_theta[1]), math.min(valid[2] + margin, scan.two_theta[scan.n]))
+
+local lines = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
+local items = { title = "Methods compared: " .. powder.title, subtitle = scan.file }
+if powder.hazard ~= "" then
+  items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }
+end
+
+-- One row a method and way; a method that reads the counts themselves says the same whatever the way, so only once.
+local rows, record, shown = {}, {}, {}
+for _, way in ipairs(job.ways) do
+  local profiles = lw.deconvolve(lines, { method = way, accept_refold = true }) -- a failed refold is told, not hidden
+  local results  = lw.separate(profiles, { methods = job.methods })
+  record[way] = results
+  for name, method in pairs(results.methods:table()) do
+    local first = not shown[name]
+    shown[name] = true
+    if not method.not_applied and (name ~= "whole_pattern" or first) then
+      rows[#rows + 1] = {
+        method = method.title, way = name == "whole_pattern" and "none: the counts" or way,
+        size_volume = method.size_volume, size_area = method.size_area, strain_rms = method.strain_rms,
+      }
+    end
+  end
+end
+table.sort(rows, function(a, b) return a.method .. a.way < b.method .. b.way end)
+for _, row in ipairs(rows) do
+  print(("%-26s %-18s %-22s %-22s %s"):format(row.method, row.way, tostring(row.size_volume or "-"),
+    tostring(row.size_area or "-"), tostring(row.strain_rms or "-")))
+end
+
+-- Values with 2 u beside each other, a field a figure.
+local function compared(field, label, unit)
+  local x, y, u, names = {}, {}, {}, {}
+  for _, row in ipairs(rows) do
+    local q = row[field]
+    if q and q.kind == "value" and q.value == q.value then
+      x[#x + 1], y[#y + 1], u[#u + 1] = #x + 1, q.value, 2 * q.u
+      names[#names + 1] = { x = #x, y = q.value, text = row.method .. ", " .. row.way }
+    end
+  end
+  return #x > 1 and lw.figure {
+    name = "compared_" .. field, title = label .. " by method and way",
+    caption = label .. " with two standard uncertainties, a point for each method and way of taking the instrument out.",
+    x = { label = "row of the table" }, y = { label = label, unit = unit },
+    series = { { kind = "points", label = "value, 2 u", x = x, y = y, u_y = u } }, notes = names,
+  }
+end
+
+items[#items + 1] = { table = rows, caption = "What each method says, by the way in which the instrument was taken out" }
+for _, figure in ipairs {
+  compared("size_volume", "volume-weighted size", "nm") or false, compared("size_area", "area-weighted size", "nm") or false,
+  compared("strain_rms", "rms strain", "") or false,
+} do
+  if figure then items[#items + 1] = figure end
+end
+items[#items + 1] = record[job.ways[1]]
+job:write({ ways = record }, lw.report(items))
