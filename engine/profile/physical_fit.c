@@ -21,6 +21,7 @@
 #define TAPS 6
 #define STEPS 20 /* of the grid in the FWHM of a line */
 #define BEYOND_MOST 8
+#define NEAR 10 /* half-width of what counts for the curvature while iterating, in FWHM */
 #define REACH 40 /* half-width of the grid in FWHM */
 
 static const double degree = M_PI / 180;
@@ -35,6 +36,7 @@ typedef struct fit_line {
     double *place, *factor;  /* [n]: s in grid steps; counts per unit of area (intensity x deg) */
     double *tail;            /* [n]: what a tail of unit kink adds: beyond the grid all, within it less its periodic images */
     size_t first, end;       /* points within the grid */
+    size_t near_first, near_end; /* points that matter for the curvature */
     double kink;             /* of the instrument */
     size_t at_size, at_strain;
     double area_prior, area_u; /* of a line beyond the scan; area_u = 0: free */
@@ -49,6 +51,8 @@ typedef struct fit {
     const lw_strain_form *form;
     double *fixed, *weight, *term; /* [n], [n], [n_terms][n] */
     double *model, *jacobian;      /* [n], [n_parameters][n] */
+    size_t *row_first, *row_end; /* [n_parameters] points at which a parameter matters while iterating */
+    bool whole;                  /* for the covariance: everywhere */
     size_t n_used; /* lengths of the line in hand: up to where its coefficient has died */
     double *spectrum, *column[COLUMNS], *scratch;
     double **curve;                /* [n_all][n] */
@@ -222,8 +226,12 @@ static lw_status evaluate(void *user, const double *p, bool want_normal, lw_norm
             for (size_t i = 0; i < n; i++)
                 weighed[i] = row[i] * f->weight[i];
             normal->g[a] += lw_dot(weighed, f->model, n);
-            for (size_t b = 0; b <= a; b++)
-                normal->h[a * m + b] += lw_dot(weighed, f->jacobian + n * b, n);
+            for (size_t b = 0; b <= a; b++) {
+                size_t first = f->whole ? 0 : f->row_first[a] > f->row_first[b] ? f->row_first[a] : f->row_first[b];
+                size_t end = f->whole ? n : f->row_end[a] < f->row_end[b] ? f->row_end[a] : f->row_end[b];
+                if (first < end)
+                    normal->h[a * m + b] += lw_dot(weighed + first, f->jacobian + n * b + first, end - first);
+            }
         }
         for (size_t k = f->n_lines; k < f->n_all; k++) {
             double u = f->line[k].area_u;
@@ -276,6 +284,10 @@ static lw_status prepare_line(fit *f, fit_line *line, lw_arena *arena, lw_error 
             line->tail[i] = -images / (6 * line->period * line->period);
             line->first = i < line->first ? i : line->first;
             line->end = i + 1;
+            if (fabs(s) < NEAR * width) {
+                line->near_first = line->near_end == 0 ? i : line->near_first;
+                line->near_end = i + 1;
+            }
         } else {
             line->tail[i] = 1 / (2 * M_PI * M_PI * s * s);
         }
@@ -398,6 +410,23 @@ static lw_status prepare(fit *f, lw_engine *engine, const lw_profiles *profiles,
     f->at_length = f->at_sigma + 1;
     f->at_common = f->at_length + 1;
     f->n_parameters = f->at_common + 2;
+    f->row_first = lw_arena_take(arena, f->n_parameters, sizeof(size_t), err);
+    f->row_end = lw_arena_take(arena, f->n_parameters, sizeof(size_t), err);
+    if (f->row_first == NULL || f->row_end == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < f->n_parameters; i++) {
+        f->row_first[i] = i < f->at_terms ? f->n : 0;
+        f->row_end[i] = i < f->at_terms || i >= f->at_common ? 0 : f->n;
+    }
+    for (size_t k = 0; k < f->n_all; k++) {
+        const fit_line *line = &f->line[k];
+        size_t rows[4] = {2 * k, 2 * k + 1, line->at_size, line->at_strain};
+        for (int i = 0; i < 4; i++) {
+            size_t r = rows[i];
+            f->row_first[r] = line->near_first < f->row_first[r] ? line->near_first : f->row_first[r];
+            f->row_end[r] = line->near_end > f->row_end[r] ? line->near_end : f->row_end[r];
+        }
+    }
     /* What is known of the two shared parameters beforehand: milled and precipitated powders have sigma near 0.35
      * (Langford, Louer & Scardi 2000 J. Appl. Cryst. 33, 964, and their like); strain is correlated over less
      * than a crystal. Wide enough for the data to overrule. */
@@ -496,6 +525,7 @@ static lw_status member_covariance(fit *f, const double *p, const bool *held, do
     if (!h || !g || !c || !wide || !by || !answer || !response)
         return LW_OUT_OF_MEMORY;
     lw_normal normal = {.n = m, .h = h, .g = g};
+    f->whole = true;
     lw_status status = evaluate(f, p, true, &normal, err);
     if (status == LW_OK)
         status = lw_invert_normal(f->engine, h, m, held, c, &weakest, err);
@@ -596,6 +626,7 @@ static lw_status fit_members(fit *f, lw_arena *arena, lw__separation *out, lw__p
     control.iterations_most = 60;
     for (size_t i = 0; i < n_forms; i++) {
         f->form = forms[i];
+        f->whole = false;
         held[f->at_length] = f->form->n < 2;
         lower[f->at_length] = f->form->n < 2 ? -INFINITY : fmax(f->form->least[1], f->length_prior - 4);
         upper[f->at_length] = f->form->n < 2 ? INFINITY : fmax(f->form->most[1], f->length_prior);
