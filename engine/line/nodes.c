@@ -271,7 +271,7 @@ size_t lw_profile_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_v
 
 size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node)
 {
-    lw_voigt_node emission[LW_EMISSION_MOST], axial[LW_AXIAL_NODES_MOST];
+    lw_voigt_node emission[LW_EMISSION_MOST], axial[LW_TABLE_MOST];
     size_t n_emission = emission_nodes(recipe, two_theta_deg, emission);
     size_t n_axial = profile_nodes(recipe, two_theta_deg, recipe->slopes, axial);
     size_t n = 0;
@@ -293,7 +293,7 @@ size_t lw_line_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voig
 size_t lw_line_nodes_merged(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node,
                             double *extra_variance)
 {
-    lw_voigt_node axial[LW_AXIAL_NODES_MOST];
+    lw_voigt_node axial[LW_TABLE_MOST];
     const bool none[LW_VOIGT_SHAPES] = {false};
     size_t n = emission_nodes(recipe, two_theta_deg, node);
     size_t n_axial = profile_nodes(recipe, two_theta_deg, none, axial);

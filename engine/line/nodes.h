@@ -11,7 +11,7 @@
 #include <stddef.h>
 
 #define LW_AXIAL_NODES_MOST 64
-#define LW_NODES_MOST (LW_AXIAL_NODES_MOST * LW_EMISSION_MOST)
+#define LW_NODES_MOST (LW_TABLE_MOST * LW_EMISSION_MOST) /* a table has more places than an axial description */
 
 /* How many copies the two parts of an axial description take (the second is 1 where there is one part). */
 typedef struct lw_axial_count {
@@ -52,7 +52,7 @@ typedef struct lw_node_recipe {
  * its neighbours may be taken together. */
 lw_axial_count lw_recipe_copies(const lw_node_recipe *recipe, double two_theta_deg, double width_deg);
 
-/* Nodes of the profile at one wavelength: axial divergence or table, without the emission; most LW_AXIAL_NODES_MOST. */
+/* Nodes of the profile at one wavelength: axial divergence or table, without the emission; most LW_TABLE_MOST. */
 size_t lw_profile_nodes(const lw_node_recipe *recipe, double two_theta_deg, lw_voigt_node *node);
 
 /* All nodes of a line at two_theta_deg (its position at the reference wavelength), most LW_NODES_MOST.

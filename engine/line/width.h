@@ -37,7 +37,7 @@ typedef enum lw_axial_kind {
 
 /* A profile given by numbers instead: its density on a grid of offsets, at evenly spaced angles, to be convolved with
  * the function's Gaussian, which is as wide as the grid needs. Between angles it is interpolated linearly. */
-#define LW_TABLE_MOST 64
+#define LW_TABLE_MOST 128
 typedef struct lw_profile_table {
     double first_deg, step_deg;   /* angles 2theta */
     size_t n_angles;

@@ -7,7 +7,7 @@
 
 typedef struct profile {
     const lw_voigt_kernel *kernel;
-    lw_voigt_node node[LW_AXIAL_NODES_MOST];
+    lw_voigt_node node[LW_TABLE_MOST];
     size_t n;
     double variance, lorentz;
 } profile;
