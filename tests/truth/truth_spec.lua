@@ -313,8 +313,11 @@ describe("a powder of one cause", function()
       it(name .. ": breadths by Stokes' quotient", function()
         local list = deviations(name, material, "stokes")
         tell("%-20s stokes, breadth off by %%: %s", name, told(list))
+        -- tungsten's breadths by Stokes carry u of 2 to 5 %: bounds of about 2 u
+        local low, high = -3, 6
+        if material == "tungsten" then low, high = -6, 8 end
         for _, hkl in ipairs(material == "tungsten" and { "110", "200", "211", "220" } or clear) do
-          between(list[hkl], -3, 6, hkl .. ", %")
+          between(list[hkl], low, high, hkl .. ", %")
         end
       end)
     end
