@@ -23,7 +23,7 @@ double lw__tail_variance(const lw__job *job, double *share)
     if (!(square > 0))
         return *share * *share;
     double wrong = cross / square, variance = 1 / square + level * level / (square * square) * data->background_variance;
-    return *share * *share * fmin(wrong * wrong + variance, 1);
+    return *share * *share * fmin(fmax(wrong * wrong, variance), 1);
 }
 
 /* The refold where the fit's shape stands as it is. */

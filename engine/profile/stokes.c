@@ -201,7 +201,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
         }
     }
     double wrong = weights > 0 ? sum / weights : 1, uncertain = weights > 0 ? 1 / weights : 1;
-    double cut = fmax(beyond / height, 0), cuts = cut * cut * fmin(wrong * wrong + uncertain, 1);
+    double cut = fmax(beyond / height, 0), cuts = cut * cut * fmin(fmax(wrong * wrong, uncertain), 1);
     answer->variance = variance + answer->breadth * answer->breadth * (tails + cuts);
     if (job->options->apodise != 0)
         for (size_t k = 0; k < last; k++) {

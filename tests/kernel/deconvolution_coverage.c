@@ -59,6 +59,63 @@ static void coverage(void)
     }
 }
 
+/* Lognormal spheres x Gaussian strain, median 10 nm, sigma 0.3, rms strain 0.002: Krill & Birringer (1998) Philos. Mag. A
+ * 77, 621; Stokes & Wilson (1944) Proc. Phys. Soc. 56, 174. Exact breadths by mpmath. */
+static double spheres(double length, double s, const void *user)
+{
+    const double *p = user;
+    double v = p[1] * p[1], sum = 0, moment[4];
+    static const double factor[4] = {0.5, 0, -1.5, 1};
+    for (int n = 0; n < 4; n++)
+        moment[n] = pow(p[0], n) * exp(0.5 * n * n * v);
+    for (int n = 0; n < 4; n++) {
+        double x = length > 0 ? (log(length / p[0]) - n * v) / (p[1] * sqrt(2)) : -30;
+        sum += factor[n] * pow(length, 3 - n) * moment[n] * 0.5 * erfc(x);
+    }
+    return sum / moment[3] * exp(-2 * M_PI * M_PI * p[2] * p[2] * s * s * length * length);
+}
+
+static void physical_coverage(void)
+{
+    static const double sample[3] = {10, 0.3, 0.002}, truth[2] = {0.101924542322, 0.103386069622}; /* 111, 200 */
+    static const double height[2] = {800, 12000};
+    static const char *const methods[] = {"physical", "stokes"};
+    for (int level = 0; level < 2; level++) {
+        made m;
+        made_begin(&m, 0.3615, 0.06, 0.03);
+        made_scan(&m, 36, 58, 0.04, height[level], 100, 0, spheres, sample);
+        for (int k = 0; k < 2; k++) {
+            int hits = 0, of = 0;
+            double error = 0, u = 0, square = 0;
+            for (int t = 0; t < TRIALS / 2; t++) {
+                lw_error err = LW_ERROR_NONE;
+                lw_random random;
+                lw_random_begin(&random, 20260102, (uint64_t)t);
+                lw_deconvolve_options options = lw_deconvolve_defaults();
+                options.method = made_method(methods[k]);
+                options.completion = 2;
+                lw_scan *scan = NULL;
+                lw_lines *lines;
+                lw_profiles *p;
+                CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) == LW_OK);
+                for (size_t i = 0; p != NULL && i < p->n && i < 2; i++) {
+                    lw_quantity b = p->profile[i].breadth_s;
+                    hits += fabs(b.value - truth[i]) < 1.96 * b.u;
+                    of++;
+                    u += b.u / truth[i];
+                    error += b.value / truth[i] - 1;
+                    square += (b.value / truth[i] - 1) * (b.value / truth[i] - 1);
+                }
+                made_free(scan, lines, p);
+            }
+            printf("%-16s %6.0f counts: %3d of %d hold the truth (spheres); mean u %.2f %%, error %+.2f %%, scatter %.2f %%\n",
+                   methods[k], height[level], hits, of, 100 * u / of, 100 * error / of, 100 * sqrt(square / of));
+            CHECK(hits >= 0.90 * of && hits <= 0.99 * of + 1);
+        }
+        made_end(&m);
+    }
+}
+
 /* A wrong calibration, twice as wide, and a scan that ends within a line are refused; the override works. */
 static void refusals(void)
 {
@@ -153,6 +210,7 @@ static void seeds(void)
 int main(void)
 {
     coverage();
+    physical_coverage();
     refusals();
     seeds();
     return lw_checks_end();
