@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "instrument/calibration.h"
 
+#include "instrument/calibration_optical.h"
 #include "instrument/calibration_record.h"
 #include "numeric/least_squares.h"
 #include "numeric/statistics.h"
@@ -11,6 +12,7 @@
 #include <string.h>
 
 static const double degree = M_PI / 180;
+static const char *const profile_names[] = {"empirical", "optical", NULL};
 static const char *const geometry_names[] = {"auto", "reflection", "capillary", NULL};
 
 #define AT(field) offsetof(lw_calibrate_options, field)
@@ -22,11 +24,35 @@ const lw_option lw_calibrate_option_table[] = {
     {"aberrations", LW_OPTION_LIST, "", "auto", 0, 0, NULL, AT(aberrations),
      "aberrations of position to fit: zero_shift, displacement, flat_specimen, transparency, wavelength; auto: what the "
      "lines give evidence for"},
+    {"profile", LW_OPTION_CHOICE, "", "empirical", 0, 0, profile_names, AT(profile),
+     "empirical: width functions of the line fit; optical: convolution of the geometry's aberrations, refined to the scan"},
+    {"source_width", LW_OPTION_NUMBER, "mm", "0.04", 0, 10, NULL, AT(source_width_mm),
+     "optical: width of the source as the specimen sees it"},
+    {"slit_width", LW_OPTION_NUMBER, "mm", "from the scan's header, else refined", 0, 20, NULL, AT(slit_width_mm),
+     "optical: receiving slit"},
+    {"divergence", LW_OPTION_NUMBER, "deg", "from the scan's header, else 0.5", 0, 20, NULL, AT(divergence_deg),
+     "optical: full equatorial divergence"},
+    {"source_length", LW_OPTION_NUMBER, "mm", "12", 0, 100, NULL, AT(source_length_mm), "optical: axial length of the source"},
+    {"specimen_length", LW_OPTION_NUMBER, "mm", "refined", 0, 200, NULL, AT(specimen_length_mm),
+     "optical: axial length of the specimen"},
+    {"slit_length", LW_OPTION_NUMBER, "mm", "15", 0, 200, NULL, AT(slit_length_mm), "optical: axial length of the slit"},
+    {"soller", LW_OPTION_NUMBER, "rad", "from the scan's header, else 0.04", 0, 1.58, NULL, AT(soller_rad),
+     "optical: aperture of the Soller slits, distance over length of the foils; 0 = none"},
+    {"attenuation", LW_OPTION_NUMBER, "mm^-1", "not transparent", 0, 1e5, NULL, AT(attenuation_per_mm),
+     "optical: linear attenuation of the specimen with its pores"},
+    {"thickness", LW_OPTION_NUMBER, "mm", "thick", 0, 100, NULL, AT(thickness_mm), "optical: thickness of the specimen"},
+    {"tilt", LW_OPTION_NUMBER, "deg", "0", 0, 5, NULL, AT(tilt_deg), "optical: specimen out of the 2:1 setting"},
+    {"refine", LW_OPTION_LIST, "", "specimen_length, source_width", 0, 0, NULL, AT(refine),
+     "optical: quantities to refine"},
+    {"standard_size", LW_OPTION_FLAG, "", "false", 0, 0, NULL, AT(standard_size),
+     "optical: take the domain size that the standard's certificate states into account"},
     LW_OPTIONS_END};
 
 lw_calibrate_options lw_calibrate_defaults(void)
 {
-    return (lw_calibrate_options){.goniometer_radius_mm = 0};
+    return (lw_calibrate_options){.source_width_mm = NAN, .slit_width_mm = NAN, .divergence_deg = NAN,
+                                  .source_length_mm = NAN, .specimen_length_mm = NAN, .slit_length_mm = NAN,
+                                  .soller_rad = NAN, .attenuation_per_mm = NAN, .thickness_mm = NAN, .tilt_deg = NAN};
 }
 
 /* "goniometer radius 217.5 mm" in the comments at the top of a scan; 0 if it is not said. */
@@ -46,7 +72,8 @@ typedef struct candidates {
     const char *const *names[4];
 } candidates;
 
-static candidates candidates_for(const lw_lines *lines, bool capillary)
+/* With the optical profile the flat specimen is in the profile already. */
+static candidates candidates_for(const lw_lines *lines, bool capillary, bool optical)
 {
     static const char *const all[] = {"zero_shift", "displacement", "flat_specimen", "transparency", NULL};
     static const char *const flat[] = {"zero_shift", "displacement", "flat_specimen", NULL};
@@ -57,6 +84,8 @@ static candidates candidates_for(const lw_lines *lines, bool capillary)
     bool wide = lines->n >= 10 && lines->line[lines->n - 1].two_theta.value - lines->line[0].two_theta.value > 80;
     if (capillary)
         return (candidates){1, {transmission}};
+    if (wide && optical)
+        return (candidates){2, {deep, few}};
     return wide ? (candidates){4, {all, flat, deep, few}} : (candidates){1, {few}};
 }
 
@@ -173,7 +202,7 @@ static lw_status choose_aberrations(lw_engine *engine, const lw_lines *lines, bo
                                     lw_calibration_lines *rows, const double *covariance, const double *certificate,
                                     lw_arena *scratch, lw_error *err)
 {
-    candidates tried = candidates_for(lines, capillary);
+    candidates tried = candidates_for(lines, capillary, rows->refined != NULL);
     double best = INFINITY;
     size_t kept = 0;
     lw_status status = LW_OK;
@@ -194,8 +223,8 @@ static lw_status choose_aberrations(lw_engine *engine, const lw_lines *lines, bo
 
 /* Positions of the supported lines against the certificate. */
 static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
-                                     lw_calibration *calibration, lw_calibration_lines *rows, lw_arena *scratch,
-                                     lw_error *err)
+                                     lw_calibration *calibration, const lw_refined *refined, lw_calibration_lines *rows,
+                                     lw_arena *scratch, lw_error *err)
 {
     lw_aberrations *set = &calibration->aberrations;
     double wavelength = lw_radiation_wavelength(&lines->radiation);
@@ -204,12 +233,14 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
     double u_edge[3] = {cell->u_a, cell->u_b, cell->u_c};
     double *shift = lw_arena_take(scratch, lines->n * 3, sizeof *shift, err); /* per group, already times its u */
     double *covariance = lw_arena_take(scratch, lines->n * lines->n, sizeof *covariance, err);
+    size_t *which = lw_arena_take(scratch, lines->n, sizeof *which, err); /* of the refined lines */
+    rows->place = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->place, err);
     rows->line = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->line, err);
     rows->certified = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->certified, err);
     rows->u_certified = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->u_certified, err);
     rows->difference = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->difference, err);
     rows->residual = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->residual, err);
-    if (!shift || !covariance || !rows->line || !rows->certified || !rows->u_certified || !rows->difference ||
+    if (!shift || !covariance || !which || !rows->place || !rows->line || !rows->certified || !rows->u_certified || !rows->difference ||
         !rows->residual)
         return LW_OUT_OF_MEMORY;
     for (size_t k = 0; k < lines->n; k++) {
@@ -220,6 +251,17 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
         double angle = certified_angle(standard, wavelength, &line->reflection, d);
         if (!isfinite(angle))
             continue;
+        rows->place[n] = line->two_theta;
+        if (calibration->has_optical) {
+            size_t i = 0;
+            while (i < refined->n_lines && refined->line[i] != k)
+                i++;
+            if (i == refined->n_lines)
+                continue;
+            which[n] = i;
+            rows->place[n] = lw_quantity_of(refined->position[i],
+                                            sqrt(refined->position_covariance[i * refined->n_lines + i]), "deg");
+        }
         for (size_t e = 0; e < 3; e++)
             shift[n * 3 + group[e]] += d[e] * u_edge[e];
         for (size_t e = 0; e < groups; e++)
@@ -227,7 +269,7 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
         rows->u_certified[n] = sqrt(rows->u_certified[n]);
         rows->line[n] = line;
         rows->certified[n] = angle;
-        rows->difference[n] = line->two_theta.value - angle;
+        rows->difference[n] = rows->place[n].value - angle;
         n++;
     }
     rows->n = n;
@@ -237,7 +279,9 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
     for (size_t i = 0; i < n; i++)
         for (size_t j = 0; j < n; j++)
             covariance[i * n + j] =
-                lines->covariance[rows->line[i]->at_position * lines->n_parameters + rows->line[j]->at_position];
+                calibration->has_optical
+                    ? refined->position_covariance[which[i] * refined->n_lines + which[j]]
+                    : lines->covariance[rows->line[i]->at_position * lines->n_parameters + rows->line[j]->at_position];
     lw_status status = LW_OK;
     if (rows->given)
         status = fit_aberrations(engine, set, rows, covariance, shift, scratch, err);
@@ -290,14 +334,19 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
         rows.radius_from = "assumed: neither given nor in the scan's header";
     }
     rows.given = options->aberrations.n > 0 && strcmp(options->aberrations.item[0], "auto") != 0;
-    candidates usual = candidates_for(lines, capillary);
+    candidates usual = candidates_for(lines, capillary, options->profile == 1);
     lw_status status = rows.given ? take_named(options->aberrations.item, options->aberrations.n, &calibration->aberrations, err)
                                   : take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
+    lw_refined refined = {0};
+    if (status == LW_OK && options->profile == 1) {
+        status = lw__calibrate_optical(engine, lines, standard, options, calibration, &refined, err);
+        rows.refined = &refined;
+    }
     if (status == LW_OK)
-        status = calibrate_positions(engine, lines, standard, calibration, &rows, &scratch, err);
+        status = calibrate_positions(engine, lines, standard, calibration, &refined, &rows, &scratch, err);
     if (status == LW_OK) {
-        calibration->valid_low_deg = rows.line[0]->two_theta.value;
-        calibration->valid_high_deg = rows.line[rows.n - 1]->two_theta.value;
+        calibration->valid_low_deg = rows.place[0].value;
+        calibration->valid_high_deg = rows.place[rows.n - 1].value;
         calibration->profile.low_deg = calibration->valid_low_deg;
         calibration->profile.high_deg = calibration->valid_high_deg;
         status = lw__calibration_record(calibration, lines, standard, &rows, err);

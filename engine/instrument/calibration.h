@@ -5,6 +5,7 @@
 #define LW_INSTRUMENT_CALIBRATION_H
 
 #include "instrument/aberrations.h"
+#include "instrument/optical/refine.h"
 #include "line/lines.h"
 
 typedef struct lw_calibration {
@@ -13,6 +14,11 @@ typedef struct lw_calibration {
     char geometry[24];          /* "reflection" (flat specimen on the focusing circle) or "capillary" */
     lw_aberrations aberrations;
     lw_width_function profile;
+    bool has_optical;           /* the profile comes from a geometry */
+    lw_geometry optical;
+    size_t n_refined;           /* of its quantities */
+    const char *refined_name[LW_REFINED_MOST];
+    double refined_covariance[LW_REFINED_MOST][LW_REFINED_MOST];
     double valid_low_deg, valid_high_deg;
     char verdict[16];           /* "pass", "attention", "fail" */
     char hash[65];              /* SHA-256 of the record it was saved to or loaded from; "" before */
@@ -24,6 +30,13 @@ typedef struct lw_calibrate_options {
     int geometry;                /* "auto", "reflection", "capillary"; auto: capillary for a plain wavelength */
     lw_option_list aberrations;  /* names; empty or "auto" = by evidence (AICc) among zero_shift, displacement,
                                     flat_specimen, transparency (reflection); zero_shift, wavelength (capillary) */
+    int profile;                 /* "empirical" (width functions), "optical" (from the geometry) */
+    /* the geometry of the optical profile; NAN = from the scan's header, or usual */
+    double source_width_mm, slit_width_mm, divergence_deg, source_length_mm, specimen_length_mm, slit_length_mm,
+        soller_rad, attenuation_per_mm, thickness_mm, tilt_deg;
+    lw_option_list refine;       /* which of them to refine; empty = specimen_length, source_width and, if not known,
+                                    slit_width */
+    bool standard_size;          /* take the standard's own domain size into account */
     bool refine_wavelength;      /* capillary default true: certified cell fixes the wavelength */
 } lw_calibrate_options;
 extern const lw_option lw_calibrate_option_table[];

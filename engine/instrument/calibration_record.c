@@ -2,6 +2,8 @@
 /* linewright/calibration/1: written from a calibration, and read back to one that acts the same. */
 #include "instrument/calibration_record.h"
 
+#include "instrument/calibration_optical.h"
+
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
@@ -48,20 +50,30 @@ static void write_profile(const lw_width_function *profile, lw_node *root, lw_er
     }
 }
 
-static void write_table(const lw_calibration *calibration, lw_node *root, lw_error *err)
+static void write_table(const lw_calibration *calibration, lw_engine *engine, lw_node *root, lw_error *err)
 {
+    lw_optics optics = {0};
+    bool exact = calibration->has_optical && lw_optics_begin(engine, &calibration->optical, &optics, err) == LW_OK;
     lw_node *list = lw_add_list(root, "instrument_profile", err);
     const lw_width_function *profile = &calibration->profile;
     for (double angle = 5 * ceil(calibration->valid_low_deg / 5); angle <= calibration->valid_high_deg; angle += 5) {
         lw_width_figure figure;
         double u_shift, shift = lw_aberrations_shift(&calibration->aberrations, angle, &u_shift);
         lw_width_figure_at(profile, angle, 0, 0, &figure);
+        lw_optics_figure sharp; /* the table of the profile is as sharp as its grid */
+        if (exact && lw_optics_figure_at(&optics, angle, &sharp, err) == LW_OK) {
+            figure.fwhm_deg = sharp.fwhm_deg;
+            figure.breadth_deg = sharp.breadth_deg;
+            figure.centroid_deg = sharp.centroid_deg;
+        }
         lw_node *row = lw_add_group(list, NULL, err);
         lw_add_number(row, "two_theta", angle, err);
         lw_add_quantity(row, "fwhm", lw_quantity_of(figure.fwhm_deg, figure.u_fwhm, "deg"), NULL, err);
         lw_add_quantity(row, "breadth", lw_quantity_of(figure.breadth_deg, figure.u_breadth, "deg"), NULL, err);
         lw_add_quantity(row, "shift", lw_quantity_of(shift + figure.centroid_deg, u_shift, "deg"), NULL, err);
     }
+    if (calibration->has_optical)
+        lw_optics_end(&optics);
 }
 
 static void write_covariance(const lw_calibration *calibration, lw_node *root, lw_error *err)
@@ -128,10 +140,10 @@ static void write_lines(const lw_calibration_lines *rows, lw_node *root, lw_erro
         char hkl[24];
         lw_node *row = lw_add_group(list, NULL, err);
         lw_add_text(row, "hkl", lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl), err);
-        lw_add_quantity(row, "two_theta", line->two_theta, NULL, err);
+        lw_add_quantity(row, "two_theta", rows->place[i], NULL, err);
         lw_add_quantity(row, "two_theta_certified", lw_quantity_of(rows->certified[i], rows->u_certified[i], "deg"), NULL,
                         err);
-        double u = hypot(line->two_theta.u, rows->u_certified[i]);
+        double u = hypot(rows->place[i].u, rows->u_certified[i]);
         lw_add_quantity(row, "difference", lw_quantity_of(rows->difference[i], u, "deg"), NULL, err);
         lw_add_quantity(row, "residual", lw_quantity_of(rows->residual[i], u, "deg"), NULL, err);
         lw_add_quantity(row, "fwhm", line->fwhm, NULL, err);
@@ -158,7 +170,7 @@ static void write_verdict(lw_calibration *calibration, const lw_lines *lines, co
         }
     size_t off = 0;
     for (size_t i = 0; i < rows->n; i++) {
-        double u = hypot(rows->line[i]->two_theta.u, rows->u_certified[i]) * rows->birge;
+        double u = hypot(rows->place[i].u, rows->u_certified[i]) * rows->birge;
         const lw_reflection *h = &rows->line[i]->reflection;
         char hkl[24];
         if (fabs(rows->residual[i]) > fmax(4 * u, 0.002)) {
@@ -230,7 +242,9 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
                         set->kind[i]->definition, err);
     lw_add_quantity(root, "goniometer_radius", lw_quantity_of(set->radius_mm, 0, "mm"), rows->radius_from, err);
     write_profile(&calibration->profile, root, err);
-    write_table(calibration, root, err);
+    if (calibration->has_optical)
+        lw__optical_write(calibration, rows->refined, (lw_node *)lw_node_get(root, "profile"), err);
+    write_table(calibration, calibration->arena.engine, root, err);
     write_covariance(calibration, root, err);
     write_lines(rows, root, err);
     write_choice(set, rows, root, err);
@@ -344,7 +358,7 @@ static bool has_width(const lw_calibration *calibration)
     return true;
 }
 
-static lw_status read_record(const lw_node *record, const char *file, lw_calibration *calibration, lw_error *err)
+static lw_status read_record(lw_engine *engine, const lw_node *record, const char *file, lw_calibration *calibration, lw_error *err)
 {
     if (strcmp(lw_node_text(record, "schema", ""), schema) != 0)
         return lw_fail_at(err, LW_BAD_DATA, file, 0, "give the calibration.json that calibrate wrote",
@@ -390,7 +404,11 @@ static lw_status read_record(const lw_node *record, const char *file, lw_calibra
         calibration->aberrations.kind[calibration->aberrations.n] = kind;
         calibration->aberrations.value[calibration->aberrations.n++] = child->quantity.value;
     }
-    return read_covariance(record, file, calibration, err);
+    status = read_covariance(record, file, calibration, err);
+    const lw_node *optical = lw_node_get(profile, "optical");
+    if (status == LW_OK && optical != NULL)
+        status = lw__optical_read(engine, optical, file, calibration, err);
+    return status;
 }
 
 lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, const char *file,
@@ -405,7 +423,7 @@ lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, con
         return LW_OUT_OF_MEMORY;
     memset(calibration, 0, sizeof *calibration);
     lw_arena_begin(&calibration->arena, engine);
-    lw_status status = read_record(record, file, calibration, err);
+    lw_status status = read_record(engine, record, file, calibration, err);
     if (status == LW_OK) {
         calibration->record = lw_tree_new(&calibration->arena, err);
         for (const lw_node *child = record->first; child != NULL && calibration->record != NULL; child = child->next)

@@ -15,6 +15,8 @@ typedef struct lw_calibration_trial {
 typedef struct lw_calibration_lines {
     size_t n;
     const lw_line **line;
+    lw_quantity *place;              /* fitted 2theta, by the line fit or the optical profile */
+    const lw_refined *refined;       /* of the optical profile, or NULL */
     double *certified, *u_certified; /* deg */
     double *difference, *residual;   /* deg, observed minus certified, before and after the aberrations */
     double chi2, p, birge, rms;      /* of the residuals; rms in deg */

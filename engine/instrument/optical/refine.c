@@ -42,7 +42,7 @@ double *lw_geometry_field(lw_geometry *geometry, const char *name)
 /* One line's window of the scan. */
 typedef struct window {
     double nominal_deg;
-    size_t first, n;
+    size_t first, n, line;
 } window;
 
 enum { OWN = 4 }; /* parameters of a line: position, area, background, its slope */
@@ -194,14 +194,16 @@ static lw_status choose_windows(problem *q, lw_arena *arena, double *start, lw_e
         double place = line->two_theta.value, theta = place * degree / 2;
         double last = 2 * asin(fmin(longest / reference * sin(theta), 0.999)) / degree - place;
         double low = place - 8 * line->fwhm.value - 0.2, high = place + last + 8 * line->fwhm.value + 0.2;
-        bool alone = line->supported && low > scan->two_theta_deg[0] && high < scan->two_theta_deg[scan->n - 1] &&
-                     high - low < 0.5 * LW_OPTICS_POINTS * LW_OPTICS_STEP;
+        /* the window may be cut by the scan's end, the line itself not */
+        double core = 4 * line->fwhm.value + 0.1;
+        bool alone = line->supported && place - core > scan->two_theta_deg[0] &&
+                     place + core < scan->two_theta_deg[scan->n - 1] && high - low < 0.5 * LW_OPTICS_POINTS * LW_OPTICS_STEP;
         if (k > 0)
             alone = alone && lines->line[k - 1].two_theta.value + 2 * last < place - 4 * line->fwhm.value;
         if (!alone)
             continue;
         window *w = &q->window[q->n_lines];
-        *w = (window){.nominal_deg = place};
+        *w = (window){.nominal_deg = place, .line = k};
         for (size_t i = 0; i < scan->n; i++)
             if (scan->two_theta_deg[i] >= low && scan->two_theta_deg[i] <= high) {
                 if (w->n == 0)
@@ -274,10 +276,12 @@ static lw_status refine(problem *q, lw_arena *arena, lw_refined *out, lw_error *
     }
     out->position = lw_arena_take(arena, q->n_lines, sizeof(double), err);
     out->position_covariance = lw_arena_take(arena, q->n_lines * q->n_lines, sizeof(double), err);
-    if (!out->position || !out->position_covariance)
+    out->line = lw_arena_take(arena, q->n_lines, sizeof *out->line, err);
+    if (!out->position || !out->position_covariance || !out->line)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < q->n_lines; i++) {
         out->position[i] = p[n + i * OWN];
+        out->line[i] = q->window[i].line;
         for (size_t j = 0; j < q->n_lines; j++)
             out->position_covariance[i * q->n_lines + j] = c[(n + i * OWN) * size + n + j * OWN];
     }

@@ -28,6 +28,7 @@ typedef struct lw_refined {
     double chi2;
     size_t n_points, n_parameters, iterations;
     size_t n_lines;
+    size_t *line;           /* [n_lines], which of the fitted lines */
     double *position, *position_covariance; /* deg, [n_lines], [n_lines^2]; in the arena of the call */
 } lw_refined;
 

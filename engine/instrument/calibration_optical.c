@@ -1,0 +1,190 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "instrument/calibration_optical.h"
+
+#include "instrument/optical/table.h"
+
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+/* The number after some words in the comments at the top of a scan; `otherwise` if they are not there. */
+static double in_header(const char *header, const char *words, double otherwise)
+{
+    const char *at = header ? strstr(header, words) : NULL;
+    if (at == NULL)
+        return otherwise;
+    char *end;
+    double value = strtod(at + strlen(words), &end);
+    return end != at + strlen(words) && isfinite(value) ? value : otherwise;
+}
+
+/* An option that was not given is NAN. */
+static double chosen(double given, double otherwise)
+{
+    return isnan(given) ? otherwise : given;
+}
+
+static void take_geometry(const lw_calibrate_options *o, const char *header, double radius, lw_geometry *g, bool *slit_known)
+{
+    double slit = in_header(header, "receiving slit", NAN), soller = in_header(header, "Soller slits", 0.04);
+    *slit_known = !isnan(o->slit_width_mm) || !isnan(slit);
+    *g = (lw_geometry){.radius = radius,
+                       .source_width = chosen(o->source_width_mm, 0.04),
+                       .slit_width = chosen(o->slit_width_mm, isnan(slit) ? 0.1 : slit),
+                       .divergence_deg = chosen(o->divergence_deg, in_header(header, "divergence slit", 0.5)),
+                       .source_length = chosen(o->source_length_mm, 12),
+                       .specimen_length = chosen(o->specimen_length_mm, 15),
+                       .slit_length = chosen(o->slit_length_mm, 15),
+                       .soller_incident = chosen(o->soller_rad, soller),
+                       .soller_diffracted = chosen(o->soller_rad, soller),
+                       .attenuation = chosen(o->attenuation_per_mm, 0),
+                       .thickness = chosen(o->thickness_mm, 0),
+                       .tilt_deg = chosen(o->tilt_deg, 0)};
+}
+
+/* Table, and the u of the breadth from that of the geometry as a u of the joining Gaussian's square. */
+static lw_status make_profile(lw_engine *engine, lw_calibration *calibration, double low, double high, lw_error *err)
+{
+    lw_profile_table *table = NULL;
+    lw_width_function *profile = &calibration->profile;
+    *profile = (lw_width_function){.low_deg = low, .high_deg = high};
+    lw_status status = lw_optics_table(engine, &calibration->optical, fmax(low - 10, 2), fmin(high + 10, 175),
+                                       &calibration->arena, &table, &profile->value[LW_W], err);
+    if (status != LW_OK)
+        return status;
+    profile->table = table;
+    double middle = 0.5 * (low + high), slope[LW_REFINED_MOST] = {0}, variance = 0;
+    for (size_t i = 0; i < calibration->n_refined && status == LW_OK; i++) {
+        double u = sqrt(fmax(calibration->refined_covariance[i][i], 0)), breadth[2] = {0};
+        for (int side = 0; side < 2 && status == LW_OK && u > 0; side++) {
+            lw_geometry g = calibration->optical;
+            lw_optics optics;
+            lw_optics_figure figure = {0};
+            double *field = lw_geometry_field(&g, calibration->refined_name[i]);
+            *field = fmax(*field + (side ? 0.5 : -0.5) * u, 0);
+            status = lw_optics_begin(engine, &g, &optics, err);
+            if (status == LW_OK)
+                status = lw_optics_figure_at(&optics, middle, &figure, err);
+            lw_optics_end(&optics);
+            breadth[side] = figure.breadth_deg;
+        }
+        slope[i] = u > 0 ? (breadth[1] - breadth[0]) / u : 0;
+    }
+    for (size_t i = 0; i < calibration->n_refined; i++)
+        for (size_t j = 0; j < calibration->n_refined; j++)
+            variance += slope[i] * calibration->refined_covariance[i][j] * slope[j];
+    lw_width_figure figure;
+    lw_width_figure_at(profile, middle, 0, 0, &figure);
+    profile->refined[LW_W] = true;
+    if (figure.d_breadth[0] > 0)
+        profile->covariance[LW_W][LW_W] = variance / (figure.d_breadth[0] * figure.d_breadth[0]);
+    return status;
+}
+
+lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                                const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
+                                lw_error *err)
+{
+    if (strcmp(calibration->geometry, "reflection") != 0)
+        return lw_fail(err, LW_BAD_ARGUMENT, "use profile = \"empirical\"",
+                       "calibrate: the optical profile is that of a flat specimen in reflection, not of a capillary");
+    lw_geometry start;
+    bool slit_known;
+    take_geometry(options, lines->scan->header, calibration->aberrations.radius_mm, &start, &slit_known);
+    lw_refine_options how = {.summed = lines->scan->header && strstr(lines->scan->header, "summed over each step") != NULL,
+                             .domain_size_nm = options->standard_size ? standard->domain_size_nm : 0};
+    if (options->refine.n > LW_REFINED_MOST)
+        return lw_fail(err, LW_BAD_ARGUMENT, NULL, "calibrate: more than %d quantities to refine", LW_REFINED_MOST);
+    for (size_t i = 0; i < options->refine.n; i++)
+        how.name[how.n++] = options->refine.item[i];
+    if (how.n == 0) {
+        how.name[how.n++] = "specimen_length";
+        how.name[how.n++] = "source_width";
+        if (!slit_known)
+            how.name[how.n++] = "slit_width";
+    }
+    lw_status status = lw_geometry_refine(engine, lines, &start, &how, &calibration->arena, refined, err);
+    if (status != LW_OK)
+        return status;
+    calibration->has_optical = true;
+    calibration->optical = refined->geometry;
+    calibration->n_refined = refined->n;
+    for (size_t i = 0; i < refined->n; i++) {
+        calibration->refined_name[i] = refined->name[i];
+        for (size_t j = 0; j < refined->n; j++)
+            calibration->refined_covariance[i][j] = refined->covariance[i][j];
+    }
+    return make_profile(engine, calibration, refined->position[0], refined->position[refined->n_lines - 1], err);
+}
+
+static const char *unit_of(const char *name)
+{
+    if (strncmp(name, "soller", 6) == 0)
+        return "rad";
+    return strcmp(name, "divergence") == 0 || strcmp(name, "tilt") == 0 || strcmp(name, "gauss") == 0 ? "deg" : "mm";
+}
+
+void lw__optical_write(const lw_calibration *calibration, const lw_refined *refined, lw_node *profile, lw_error *err)
+{
+    lw_node *group = lw_add_group(profile, "optical", err);
+    lw_add_text(group, "source", "Cheary & Coelho (1992) J. Appl. Cryst. 25, 109; (1998) 31, 851; Finger, Cox & Jephcoat "
+                                 "(1994) J. Appl. Cryst. 27, 892", err);
+    lw_geometry g = calibration->optical;
+    for (size_t i = 0; lw_geometry_names[i] != NULL; i++) {
+        double u = 0;
+        for (size_t j = 0; j < calibration->n_refined; j++)
+            if (strcmp(calibration->refined_name[j], lw_geometry_names[i]) == 0)
+                u = sqrt(fmax(calibration->refined_covariance[j][j], 0));
+        lw_add_quantity(group, lw_geometry_names[i],
+                        lw_quantity_of(*lw_geometry_field(&g, lw_geometry_names[i]), u, unit_of(lw_geometry_names[i])), NULL,
+                        err);
+    }
+    lw_add_quantity(group, "attenuation", lw_quantity_of(g.attenuation, 0, "mm^-1"), NULL, err);
+    lw_add_quantity(group, "thickness", lw_quantity_of(g.thickness, 0, "mm"), NULL, err);
+    lw_node *list = lw_add_list(group, "refined", err);
+    for (size_t i = 0; i < calibration->n_refined; i++)
+        lw_add_text(list, NULL, calibration->refined_name[i], err);
+    list = lw_add_list(group, "covariance", err);
+    for (size_t i = 0; i < calibration->n_refined; i++)
+        lw_add_vector(list, NULL, calibration->refined_covariance[i], calibration->n_refined, "", err);
+    if (refined == NULL)
+        return;
+    double freedom = (double)(refined->n_points - refined->n_parameters);
+    lw_add_number(group, "chi2_per_degree_of_freedom", refined->chi2 / freedom, err);
+    lw_add_number(group, "points", (double)refined->n_points, err);
+    lw_add_number(group, "lines", (double)refined->n_lines, err);
+    lw_add_number(group, "iterations", (double)refined->iterations, err);
+}
+
+lw_status lw__optical_read(lw_engine *engine, const lw_node *optical, const char *file, lw_calibration *calibration,
+                           lw_error *err)
+{
+    lw_geometry *g = &calibration->optical;
+    *g = (lw_geometry){.radius = calibration->aberrations.radius_mm,
+                       .attenuation = lw_node_number(optical, "attenuation", NAN),
+                       .thickness = lw_node_number(optical, "thickness", NAN)};
+    for (size_t i = 0; lw_geometry_names[i] != NULL; i++)
+        *lw_geometry_field(g, lw_geometry_names[i]) = lw_node_number(optical, lw_geometry_names[i], NAN);
+    lw_error why = LW_ERROR_NONE;
+    if (lw_geometry_check(g, &why) != LW_OK)
+        return lw_fail_at(err, LW_BAD_DATA, file, 0, "make it again with calibrate, or use an undamaged copy",
+                          "not a usable calibration: %s", why.message);
+    const lw_node *names = lw_node_get(optical, "refined"), *matrix = lw_node_get(optical, "covariance");
+    const lw_node *row = matrix ? matrix->first : NULL;
+    for (const lw_node *name = names ? names->first : NULL; name != NULL && row != NULL; name = name->next, row = row->next) {
+        size_t i = calibration->n_refined;
+        size_t known = 0;
+        while (name->kind == LW_NODE_TEXT && lw_geometry_names[known] != NULL &&
+               strcmp(lw_geometry_names[known], name->text) != 0)
+            known++;
+        if (i == LW_REFINED_MOST || name->kind != LW_NODE_TEXT || lw_geometry_names[known] == NULL ||
+            row->kind != LW_NODE_VECTOR || row->n != names->n)
+            return lw_fail_at(err, LW_BAD_DATA, file, 0, "make it again with calibrate, or use an undamaged copy",
+                              "not a usable calibration: profile.optical has an unknown entry");
+        for (size_t j = 0; j < row->n && j < LW_REFINED_MOST; j++)
+            calibration->refined_covariance[i][j] = isfinite(row->vector[j]) ? row->vector[j] : 0;
+        calibration->refined_name[calibration->n_refined++] = lw_geometry_names[known];
+    }
+    calibration->has_optical = true;
+    return make_profile(engine, calibration, calibration->valid_low_deg, calibration->valid_high_deg, err);
+}

@@ -1,0 +1,21 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The calibration's profile by the full optical model (private to instrument/). */
+#ifndef LW_INSTRUMENT_CALIBRATION_OPTICAL_H
+#define LW_INSTRUMENT_CALIBRATION_OPTICAL_H
+
+#include "instrument/calibration.h"
+#include "instrument/optical/refine.h"
+
+/* Geometry from the options and, where they are silent, from the scan's header ("divergence slit 0.75 deg; receiving
+ * slit 0.15 mm; Soller slits 0.040 and 0.040 rad") or usual values; refined against the scan; the profile of the
+ * calibration becomes its table. `optical` of the record is filled. */
+lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                                const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
+                                lw_error *err);
+
+/* The group `optical` of a record's profile, and back. */
+void lw__optical_write(const lw_calibration *calibration, const lw_refined *refined, lw_node *profile, lw_error *err);
+lw_status lw__optical_read(lw_engine *engine, const lw_node *optical, const char *file, lw_calibration *calibration,
+                           lw_error *err);
+
+#endif
