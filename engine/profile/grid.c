@@ -254,6 +254,24 @@ bool lw__invert(double *a, size_t m, double *z)
     return true;
 }
 
+lw_status lw__add_background(const lw__job *job, const lw__grid *g, const double *z, double *c, lw_arena *scratch,
+                             lw_error *err)
+{
+    size_t m = g->m;
+    double *level = lw_arena_take(scratch, 2 * m, sizeof *level, err), *pulled = level + m;
+    if (level == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < g->n; i++)
+        for (size_t j = 0; j < m; j++)
+            pulled[j] += g->response[i * m + j] * g->weight[i];
+    for (size_t j = 0; j < m; j++)
+        level[j] = lw_dot(z + j * m, pulled, m);
+    for (size_t j = 0; j < m; j++)
+        for (size_t k = 0; k < m; k++)
+            c[j * m + k] += level[j] * level[k] * job->data.background_variance;
+    return LW_OK;
+}
+
 double lw__grid_followed(const lw__grid *g, const double *z, const double *zn)
 {
     /* chi2 of (1 - H) r with H = R Z R' W and noise V' of r: tr V'W - 2 tr Z N' + tr Z N Z N', N' = R' W V' W R */
@@ -286,33 +304,28 @@ double lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x,
 {
     size_t m = g->m;
     double *q = lw_arena_take(scratch, m, sizeof *q, err), *zq = lw_arena_take(scratch, m, sizeof *zq, err);
-    double *level = lw_arena_take(scratch, m, sizeof *level, err);
+    double *wider = lw_arena_take(scratch, m, sizeof *wider, err);
     *shape_share = *bias = 0;
-    if (q == NULL || zq == NULL || level == NULL)
+    if (q == NULL || zq == NULL || wider == NULL)
         return 0;
-    double breadth = lw__grid_breadth(job, g, x, q), variance = 0, by_level = 0, kept = 0, whole = 0;
+    double breadth = lw__grid_breadth(job, g, x, q), variance = 0, kept = 0, whole = 0;
     for (size_t j = 0; j < m; j++) {
         zq[j] = lw_dot(z + j * m, q, m);
         variance += q[j] * lw_dot(c + j * m, q, m);
     }
-    for (size_t i = 0; i < g->n; i++)
-        for (size_t j = 0; j < m; j++)
-            level[j] += g->response[i * m + j] * g->weight[i];
-    for (size_t j = 0; j < m; j++)
-        by_level += zq[j] * level[j];
     /* d: a shape that is wider by a part in one; q'(1 - Z N) d is what survives of it */
     for (size_t j = 0; j < m; j++) {
         double next = g->shape[j + 1 < m ? j + 1 : j], last = g->shape[j > 0 ? j - 1 : j];
-        level[j] = -g->shape[j] - g->place[j] * (next - last) / (2 * g->spacing);
+        wider[j] = -g->shape[j] - g->place[j] * (next - last) / (2 * g->spacing);
     }
     for (size_t j = 0; j < m; j++) {
-        double nd = lw_dot(g->normal + j * m, level, m), nx = lw_dot(g->normal + j * m, x, m);
-        whole += q[j] * level[j];
-        kept += q[j] * level[j] - zq[j] * nd;
+        double nd = lw_dot(g->normal + j * m, wider, m), nx = lw_dot(g->normal + j * m, x, m);
+        whole += q[j] * wider[j];
+        kept += q[j] * wider[j] - zq[j] * nd;
         *bias += zq[j] * nx - q[j] * x[j];
     }
     *shape_share = whole != 0 ? fmin(fabs(kept / whole), 1) : 1;
     double share;
-    return variance + by_level * by_level * job->data.background_variance + breadth * breadth * lw__tail_variance(job, &share) +
+    return variance + breadth * breadth * lw__tail_variance(job, &share) +
            *shape_share * *shape_share * job->shape_variance + *bias * *bias;
 }

@@ -40,6 +40,10 @@ void lw__grid_transform(const lw__job *job, const lw__grid *grid, const double *
 /* Inverse of a positive definite matrix a[m][m] (upper triangle read, destroyed) to z[m][m]. False if singular. */
 bool lw__invert(double *a, size_t m, double *z);
 
+/* Adds to c[m][m], the covariance of x = Z response' weight target, what an error of the background's level makes. */
+lw_status lw__add_background(const lw__job *job, const lw__grid *grid, const double *z, double *c, lw_arena *scratch,
+                             lw_error *err);
+
 /* Degrees of freedom that an estimate x = Z response' weight target takes from chi2; zn[m][m] = Z normal. */
 double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn);
 
@@ -47,8 +51,7 @@ double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn
 void lw__grid_refold(const lw__job *job, const lw__grid *grid, const double *x, double followed);
 
 /* For an estimate x = Z response' weight target, Z = (normal + R)^-1: variance of the breadth from c[m][m] (covariance
- * of x by counting, or posterior), from the level of the background, from tails beyond the window, and from what
- * remains the shape's: shape_share of a change of the shape's breadth survives in the result. bias: by what R keeps x
+ * of x by counting and background, or posterior), from tails beyond the window, and from what remains the shape's: shape_share of a change of the shape's breadth survives in the result. bias: by what R keeps x
  * back, estimated by what it would keep back of x itself; it enters as if it were a standard uncertainty. */
 double lw__grid_variance(const lw__job *job, const lw__grid *grid, const double *x, const double *z, const double *c,
                          double *shape_share, double *bias, lw_arena *scratch, lw_error *err);

@@ -116,9 +116,11 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     for (size_t j = 0; j < m; j++)
         for (size_t k = 0; k < m; k++)
             zn[j * m + k] = lw_dot(z + j * m, g.normal + k * m, m);
-    double share, bias;
+    double share, bias, *c = lw_arena_copy(scratch, z, m * m, sizeof *z, err);
+    if (c == NULL || (status = lw__add_background(job, &g, z, c, scratch, err)) != LW_OK)
+        return LW_OUT_OF_MEMORY;
     /* the posterior holds what the prior keeps back already */
-    answer->variance = lw__grid_variance(job, &g, s.x, z, z, &share, &bias, scratch, err) - bias * bias;
+    answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err) - bias * bias;
     lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn));
     job->profile->assumed = lw_arena_print(&job->profiles->arena, err,
                                            "%s; entropy against that shape, %s; %.2g of the breadth remains the shape's",
@@ -129,7 +131,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
                                            share);
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
-    return lw__grid_coefficients(job, &g, s.x, z, err);
+    return lw__grid_coefficients(job, &g, s.x, c, err);
 }
 
 static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)

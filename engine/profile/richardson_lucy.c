@@ -128,8 +128,9 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     lw_random_begin(&random, (uint64_t)job->options->seed, (uint64_t)(job->profile - job->profiles->profile));
     double sum = 0, square = 0, share;
     for (size_t r = 0; r < count && status == LW_OK; r++) {
+        double level = sqrt(job->data.background_variance) * lw_random_normal(&random);
         for (size_t i = 0; i < g.n; i++)
-            s.y[i] = y[i] + sqrt(job->data.variance[i]) * lw_random_normal(&random);
+            s.y[i] = y[i] + level + sqrt(job->data.variance[i]) * lw_random_normal(&random);
         iterate(&s, (double)g.n, most, 0, &chi2);
         for (size_t j = 0; j < m; j++) {
             draw[r * m + j] = s.f[j] - g.shape[j];
@@ -144,11 +145,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
         for (size_t j = 0; j < m; j++)
             for (size_t k = 0; k < m; k++)
                 c[j * m + k] += (draw[r * m + j] - mean[j]) * (draw[r * m + k] - mean[k]) / (double)(count - 1);
-    double shift = sum / (double)count, level = 0, slope_height = answer->breadth / job->line->area_s * answer->breadth;
-    /* a background that is off raises area and height alike */
-    level = (job->data.s[g.n - 1] - job->data.s[0]) * answer->breadth / job->line->area_s - slope_height;
+    double shift = sum / (double)count;
     answer->variance = (square - (double)count * shift * shift) / (double)(count - 1) + shift * shift +
-                       level * level * job->data.background_variance +
                        answer->breadth * answer->breadth * lw__tail_variance(job, &share);
     job->profile->assumed = lw_arena_print(&job->profiles->arena, err,
                                            "%s; positive, from a flat start, stopped after %zu iterations %s; %zu realisations "

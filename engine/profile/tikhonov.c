@@ -171,6 +171,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
             for (size_t k = 0; k < m; k++)
                 c[j * m + k] = lw_dot(zn + j * m, s.z + k * m, m);
         followed = lw__grid_followed(&g, s.z, zn);
+        if ((status = lw__add_background(job, &g, s.z, c, scratch, err)) != LW_OK)
+            return status;
         solve_at(&s, answer->choice);
     }
     if (job->options->non_negative && (status = keep_positive(&s, answer->choice, scratch, err)) != LW_OK)
