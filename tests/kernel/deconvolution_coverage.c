@@ -207,11 +207,76 @@ static void seeds(void)
     made_end(&m);
 }
 
+/* Orders, rules and windows: each gives the closed-form breadth within 3 u, and says what it did. */
+static void choices(void)
+{
+    static const double beta[2] = {0.03, 0.03};
+    double k = beta[0] / (sqrt(M_PI) * beta[1]), truth = beta[1] * exp(-k * k) / erfc(k); /* Langford 1978 */
+    made m;
+    made_begin(&m, 0.3615, 0.06, 0.03);
+    made_scan(&m, 36, 50, 0.025, 6000, 100, 0, voigt, beta);
+    for (int i = 0; i < 9; i++) {
+        lw_error err = LW_ERROR_NONE;
+        lw_random random;
+        lw_random_begin(&random, 11, 0);
+        lw_deconvolve_options options = lw_deconvolve_defaults();
+        options.method = made_method(i < 8 ? "tikhonov" : "stokes");
+        options.completion = 1;
+        options.order = i % 3;
+        options.parameter = i / 3 == 1;
+        options.non_negative = i == 6;
+        options.strength = i == 7 ? 1e-3 : 0;
+        options.apodise = i == 8;
+        lw_scan *scan = NULL;
+        lw_lines *lines;
+        lw_profiles *p;
+        CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) == LW_OK);
+        if (p != NULL) {
+            const lw_profile *line = &p->profile[0];
+            char order[40];
+            snprintf(order, sizeof order, "derivative of order %d", i % 3);
+            CHECK_NEAR(line->breadth_s.value, truth, 3 * line->breadth_s.u);
+            CHECK(line->breadth_s.u < 0.03 * truth);
+            CHECK(line->refold_p > 1e-3 && line->refold_freedom > 100 && line->refold_freedom <= (double)line->refold_points);
+            if (i < 8) {
+                CHECK_CONTAINS(line->assumed, order);
+                CHECK_CONTAINS(line->assumed, i == 7 ? "as given" : i / 3 == 1 ? "cross-validation" : "discrepancy principle");
+            } else {
+                CHECK_CONTAINS(line->assumed, "apodised (Hann): breadth changed by");
+                CHECK(fabs(line->cosine[line->truncated_at - 1] -
+                           voigt(line->length_nm[line->truncated_at - 1], 0, beta)) < 0.02);
+            }
+            for (size_t j = 0; i == 6 && j < line->n_curve; j++)
+                CHECK(line->curve_intensity[j] > -1e-9);
+        }
+        made_free(scan, lines, p);
+    }
+    /* lines fitted alone have no sample's part */
+    lw_error err = LW_ERROR_NONE;
+    char text[600];
+    lw_scan_options reading = lw_scan_defaults();
+    reading.radiation = &m.radiation;
+    lw_scan *scan = NULL;
+    lw_lines *lines = NULL;
+    lw_profiles *p = NULL;
+    lw_fit_options fit = lw_fit_defaults();
+    fit.shape = 3;
+    fit.intensity_factor = 1;
+    CHECK(lw_scan_make(&m.engine, "made", m.n, m.two_theta, m.noisy, NULL, &reading, &scan, &err) == LW_OK);
+    CHECK(lw_fit_lines(&m.engine, scan, m.reflection, m.n_reflections, &m.material, &fit, &lines, &err) == LW_OK);
+    lw_deconvolve_options options = lw_deconvolve_defaults();
+    CHECK(lines != NULL && lw_deconvolve(&m.engine, lines, NULL, &options, &p, &err) == LW_NOT_SUPPORTED);
+    CHECK_CONTAINS(lw_error_text(&err, text, sizeof text), "without an instrument");
+    made_free(scan, lines, p);
+    made_end(&m);
+}
+
 int main(void)
 {
     coverage();
     physical_coverage();
     refusals();
     seeds();
+    choices();
     return lw_checks_end();
 }
