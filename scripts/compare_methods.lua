@@ -63,15 +63,16 @@ local function compared(field, label, unit)
   end
   return #x > 1 and lw.figure {
     name = "compared_" .. field, title = label .. " by method and way",
-    caption = label .. " with two standard uncertainties, a point for each method and way of taking the instrument out.",
+    caption = label .. " with two standard uncertainties, for each method and way of taking the instrument out.",
     x = { label = "row of the table" }, y = { label = label, unit = unit },
     series = { { kind = "points", label = "value, 2 u", x = x, y = y, u_y = u } }, notes = names,
   }
 end
 
-items[#items + 1] = { table = rows, caption = "What each method says, by the way in which the instrument was taken out" }
+items[#items + 1] = { table = rows, caption = "What each method says, by how the instrument was taken out" }
 for _, figure in ipairs {
-  compared("size_volume", "volume-weighted size", "nm") or false, compared("size_area", "area-weighted size", "nm") or false,
+  compared("size_volume", "volume-weighted size", "nm") or false,
+  compared("size_area", "area-weighted size", "nm") or false,
   compared("strain_rms", "rms strain", "") or false,
 } do
   if figure then items[#items + 1] = figure end

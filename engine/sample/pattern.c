@@ -207,10 +207,10 @@ void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, doub
 
 /* Profile of one line and its slopes to the shape parameters on the grid of s, period 1/length_step; returns
  * the strength of the 1/s^2 tail in tail[0] and its slopes in tail[1..]. */
-static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, const double *p, bool slopes,
-                          double *tail)
+static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, double moved, const double *p,
+                          bool slopes, double *tail)
 {
-    double strain = 2 * PI * PI * line->s_corrected * line->s_corrected;
+    double s0 = line->s_corrected + moved, strain = 2 * PI * PI * s0 * s0;
     double scale = 1 - p[LW_PATTERN_ANISOTROPY] * line->hkl_sum;
     int n_strain = pattern->strain->n, curves = slopes ? 1 + LW_PATTERN_SHAPES : 1;
     double *c = pattern->spectrum;
@@ -419,7 +419,7 @@ static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_
                         !(w == 1 + LW_PATTERN_ANISOTROPY && line->hkl_sum == 0);
         size_t row = lw_pattern_position_row(pattern, k);
         double area = p[row + 1], s0 = line->s_start + p[row];
-        line_profiles(pattern, line, p, slopes, v.tail);
+        line_profiles(pattern, line, p[row], p, slopes, v.tail);
         spread(pattern, s0, p[LW_PATTERN_FALL], slopes, wanted, &v);
         for (size_t i = 0; i < n; i++)
             pattern->of_lines[i] += area * v.curve[0][i];

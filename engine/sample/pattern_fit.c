@@ -217,8 +217,11 @@ static lw_status invert(fitter *f, lw_error *err)
     lw_status status = lw_pattern_evaluate(&f->pattern, f->p, true, &normal, err);
     if (status != LW_OK)
         return status;
-    for (size_t i = 0; i < n; i++)
-        f->skip[i] = f->fixed[i] || (f->at_bound[i] && i != LW_PATTERN_INVERSE_SIZE) || !(f->normal_h[i * n + i] > 0);
+    for (size_t i = 0; i < n; i++) {
+        /* no size or no strain is a bound with an uncertainty: their limits come from it */
+        bool told = i == LW_PATTERN_INVERSE_SIZE || (i == LW_PATTERN_STRAIN_1 && f->pattern.strain->n == 1);
+        f->skip[i] = f->fixed[i] || (f->at_bound[i] && !told) || !(f->normal_h[i * n + i] > 0);
+    }
     for (int held = 0; held < 4; held++) {
         lw_error own = LW_ERROR_NONE;
         size_t weakest = n;
@@ -251,8 +254,8 @@ static lw_status minimise(fitter *f, lw_pattern_form *form, lw_error *err)
     lw_problem problem = {.n = m->n_parameters, .lower = f->lower, .upper = f->upper, .fixed = f->fixed,
                           .evaluate = lw_pattern_evaluate, .user = m};
     lw_fit_control control = lw_fit_control_defaults();
-    control.chi2_tolerance = 1e-7;
-    control.step_tolerance = 1e-2;
+    control.chi2_tolerance = 1e-8;
+    control.step_tolerance = 1e-3;
     control.iterations_most = 60;
     lw_fit_outcome outcome;
     lw_status status = lw_least_squares(m->engine, &problem, &control, f->p, f->at_bound, &outcome, err);
