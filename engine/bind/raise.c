@@ -62,13 +62,19 @@ void lwb_push_error(lua_State *L, const char *kind, const char *message, const c
     lua_setfield(L, -2, "where");
     lua_pushstring(L, hint ? hint : "");
     lua_setfield(L, -2, "hint");
-    if (luaL_newmetatable(L, ERROR_NAME)) {
+    if (luaL_getmetatable(L, ERROR_NAME) != LUA_TTABLE) {
+        lua_pop(L, 1);
+        lua_createtable(L, 0, 4);
+        lua_pushliteral(L, ERROR_NAME);
+        lua_setfield(L, -2, "__name");
         lua_pushcfunction(L, show_error);
         lua_setfield(L, -2, "__tostring");
         lua_pushcfunction(L, join_error);
         lua_setfield(L, -2, "__concat");
         lua_pushliteral(L, "error of linewright");
         lua_setfield(L, -2, "__metatable");
+        lua_pushvalue(L, -1);
+        lua_setfield(L, LUA_REGISTRYINDEX, ERROR_NAME); /* last: a refusal of memory leaves no half of it */
     }
     lua_setmetatable(L, -2);
 }

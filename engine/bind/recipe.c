@@ -262,6 +262,24 @@ static int at(lua_State *L)
     return 1;
 }
 
+/* Pushes the value on the top as text; a list as its items. */
+static void push_words(lua_State *L)
+{
+    if (lua_type(L, -1) != LUA_TTABLE) {
+        luaL_tolstring(L, -1, NULL);
+        return;
+    }
+    int list = lua_gettop(L);
+    lua_pushliteral(L, "");
+    for (lua_Integer i = 1; i <= (lua_Integer)lua_rawlen(L, list); i++) {
+        lua_rawgeti(L, list, i);
+        luaL_tolstring(L, -1, NULL);
+        lua_pushfstring(L, "%s%s%s", lua_tostring(L, list + 1), i > 1 ? ", " : "", lua_tostring(L, -1));
+        lua_replace(L, list + 1);
+        lua_settop(L, list + 1);
+    }
+}
+
 static int show(lua_State *L)
 {
     lwb_self(L, 1, &lwb_recipe_noun, "tostring");
@@ -278,7 +296,7 @@ static int show(lua_State *L)
         lua_rawgeti(L, 3, i);
         lua_pushvalue(L, -1);
         lua_gettable(L, 4);
-        luaL_tolstring(L, -1, NULL);
+        push_words(L);
         lua_remove(L, -2);
         lua_pushfstring(L, "%s = %s", lua_tostring(L, -2), lua_tostring(L, -1));
         lua_replace(L, -3);
