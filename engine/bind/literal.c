@@ -62,8 +62,10 @@ static int run_guarded(lua_State *L)
     lua_sethook(thread, guard, LUA_MASKCOUNT, HOOK_EVERY);
     lua_pushvalue(L, 1);
     lua_xmove(L, thread, 1);
-    int n = 0;
-    if (lua_resume(thread, L, 0, &n) != LUA_OK) {
+    int n = 0, status = lua_resume(thread, L, 0, &n);
+    if (status == LUA_ERRMEM)
+        return luaL_error(L, "a data file may only hold constants; this one needs too much memory");
+    if (status != LUA_OK) {
         if (lua_status(thread) == LUA_YIELD)
             return luaL_error(L, "a data file may only hold constants");
         lua_xmove(thread, L, 1);

@@ -46,7 +46,7 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
                                  "  if ok then\n"
                                  "    assert(type(tostring(made)) == 'string')\n"
                                  "    if make ~= 'radiation' then\n"
-                                 "      pcall(function() return tostring(made:reflections(radiation, 20, 60)) end)\n"
+                                 "      pcall(function() return tostring(made:reflections { 20, 60, radiation = radiation }) end)\n"
                                  "    end\n"
                                  "  end\n"
                                  "end\n"
