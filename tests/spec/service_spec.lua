@@ -1,0 +1,128 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- The recipes of the instrument's own life: after a service, and its history.
+local lw = require "linewright"
+local helper = dofile((debug.getinfo(1, "S").source:match "^@(.*/)" or "./") .. "helper.lua")
+
+local function calibrate(name, options)
+  local scan = lw.read_scan(helper.demo .. "/" .. name .. ".xy", { radiation = "Cu Ka" })
+  local lines = lw.fit_lines(scan, lw.standard("lab6-660c"):reflections(scan), { widths = "smooth", axial = "soller" })
+  return lw.calibrate(lines, "lab6-660c", options)
+end
+
+describe("a service", function()
+  local before, after, folder
+  setup(function()
+    folder = helper.folder()
+    before, after = calibrate "lab6_before_service", calibrate "lab6_after_service"
+    before:save(folder .. "/before.json")
+    after:save(folder .. "/after.json")
+    helper.write(folder .. "/wide.lua",
+      "return { zero_shift = 1, displacement = 1, flat_specimen = 1, transparency = 1, shift = 1, fwhm = 200,\n"
+        .. "  breadth = 200, asymmetry = 1, intensity = 100 }\n")
+  end)
+  teardown(function() helper.remove(folder) end)
+
+  it("is compared: before minus after as the diffractometer was really set", function()
+    local change = after:compare(before, { effects = false })
+    local by_name = {}
+    for _, row in ipairs(change.quantities) do by_name[row.name] = row end
+    -- the traced diffractometer: zero shift 0.021 and -0.008 deg, displacement 0.085 and -0.030 mm
+    assert.is_near(-0.029, by_name.zero_shift.difference.value, 0.002)
+    assert.is_near(-0.115, by_name.displacement.difference.value, 0.004)
+    assert.are.equal("fail", change.verdict)
+    assert.is_true(#change.reasons > 0)
+    assert.are.equal(0, #change.effects)
+    assert.is_near(by_name.zero_shift.difference.value / by_name.zero_shift.difference.u, by_name.zero_shift.z, 1e-9)
+    assert.are.equal("pass", before:compare(before, { effects = false }).verdict)
+    assert.are.equal("pass", after:compare(before, { effects = false, tolerances = folder .. "/wide.lua" }).verdict)
+  end)
+
+  it("takes the laboratory's tolerances, and says what it does not know", function()
+    local function with(tolerances)
+      return function() after:compare(before, { effects = false, tolerances = tolerances }) end
+    end
+    assert.error_matches(with { zero_shfit = 1 }, "zero_shift")
+    assert.error_matches(with { fwhm = -1 }, "fwhm")
+    assert.error_matches(with(folder .. "/nothing.lua"), "nothing.lua")
+    assert.error_matches(function() after:compare(before, { efects = false }) end, "effects")
+    assert.error_matches(function() after:compare() end, "calibration")
+  end)
+
+  it("refuses what can't be compared", function()
+    local record = helper.read(folder .. "/before.json")
+    local text = record:gsub('"geometry": "reflection"', '"geometry": "capillary"')
+    helper.write(folder .. "/capillary.json", text)
+    assert.error_matches(function() after:compare(lw.load_calibration(folder .. "/capillary.json")) end, "geometry")
+    text = record:gsub('"wavelength_nm": 0%.154', '"wavelength_nm": 0.174')
+    helper.write(folder .. "/iron.json", text)
+    local iron = lw.load_calibration(folder .. "/iron.json")
+    assert.error_matches(function() after:compare(iron) end, "nothing to compare")
+  end)
+
+  it("is told by its recipe, which fails under strict", function()
+    local arguments = { helper.root .. "/scripts/after_service.lua", "before=before.json", "after=after.json",
+                        "out=told" }
+    local code, out = helper.run(folder, arguments)
+    assert.are.equal(0, code)
+    assert.matches("linewright/comparison/1", out)
+    local record = helper.read(folder .. "/told/comparison.json")
+    assert.matches('"reported_size_nm"', record)
+    assert.matches('"schema": "linewright/comparison/1"', record)
+    assert.matches("licensed", helper.read(folder .. "/told/report.html"))
+    arguments[#arguments + 1] = "strict=true"
+    assert.are.equal(3, (helper.run(folder, arguments)))
+    arguments[#arguments + 1] = "tolerances=wide.lua"
+    assert.are.equal(0, (helper.run(folder, arguments)))
+    local missing, _, message = helper.run(folder, { arguments[1], "before=gone.json", "after=after.json" })
+    assert.are.equal(1, missing)
+    assert.matches("gone.json", message)
+  end)
+
+  it("is a mark in the history", function()
+    local function entry(calibration, label, after_service)
+      return { calibration = calibration, label = label, after_service = after_service }
+    end
+    local list = {}
+    for i = 1, 8 do list[i] = entry(before, "day " .. i) end
+    list[9] = entry(after, "day 9")
+    local history = lw.history(list)
+    assert.are.equal("fail", history.verdict)
+    local found = false
+    for _, signal in ipairs(history.signals) do
+      found = found
+        or (signal.calibration == "day 9" and signal.quantity == "zero_shift" and signal.rule == "beyond_limits")
+    end
+    assert.is_true(found)
+    list[9].after_service = true
+    assert.are.equal("pass", lw.history(list).verdict)
+    assert.error_matches(function() lw.history { entry(before, "alone") } end, "two")
+    assert.error_matches(function() lw.history({ { calibraton = before } }) end, "calibration")
+  end)
+end)
+
+describe("the optical profile", function()
+  it("gives the traced diffractometer back, and is kept in the record", function()
+    local optical = calibrate("lab6_after_service", { profile = "optical" })
+    local aberrations, geometry = optical.record.aberrations, optical.record.profile.optical
+    assert.is_near(-0.008, aberrations.zero_shift.value, 0.005)
+    assert.is_near(-0.030, aberrations.displacement.value, 0.008)
+    assert.is_near(20, geometry.specimen_length.value, 0.6)
+    assert.is_true(geometry.chi2_per_degree_of_freedom < 1.05)
+    local folder = helper.folder()
+    optical:save(folder .. "/c.json")
+    local again = lw.load_calibration(folder .. "/c.json")
+    assert.are.equal(optical:profile_at(60).breadth.value, again:profile_at(60).breadth.value)
+    helper.remove(folder)
+  end)
+
+  it("refuses an impossible geometry", function()
+    local function with(options)
+      options.profile = "optical"
+      return function() calibrate("lab6_after_service", options) end
+    end
+    assert.error_matches(with { slit_width = -0.1 }, "slit_width")
+    assert.error_matches(with { soller = math.pi / 2 }, "soller")
+    assert.error_matches(with { goniometer_radius = 0.5 }, "radius")
+    assert.error_matches(with { refine = { "slit_with" } }, "slit_with")
+  end)
+end)
