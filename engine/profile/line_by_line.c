@@ -64,6 +64,13 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, size_t
         status = solve(job, &job->instrument, true, &scratch, answer, err);
     if (status == LW_OK && answer->from_shape)
         refold_shape(job);
+    /* noise whose neighbours go together weighs more in every sum over points, by its long-run variance */
+    double together = job->profiles->lines->scan->correlation, factor = (1 + together) / (1 - together);
+    answer->variance *= factor;
+    for (size_t i = 0; i < profile->n_coefficients && factor > 1; i++) {
+        profile->u_cosine[i] *= sqrt(factor);
+        profile->u_sine[i] *= sqrt(factor);
+    }
     for (int i = 0; i < 2 && status == LW_OK && !answer->from_shape; i++) {
         /* the same data with an instrument a little wider */
         lw__instrument wider = job->instrument;

@@ -11,6 +11,7 @@
 #include "numeric/cholesky.h"
 #include "numeric/fft.h"
 #include "numeric/least_squares.h"
+#include "numeric/statistics.h"
 #include "numeric/voigt.h"
 #include "physics/intensity.h"
 
@@ -582,6 +583,27 @@ static lw_status member_covariance(fit *f, const double *p, const bool *held, do
     return LW_OK;
 }
 
+/* By how much variances are enlarged, of the residuals that the last evaluation left: where chi2 is beyond chance by
+ * it, and where neighbours' residuals go together by their long-run variance, as in the fit of lines. */
+static double misfit_factor(const fit *f)
+{
+    const lw_scan *scan = f->profiles->lines->scan;
+    double square = 0, step = 0, before = 0, freedom = fmax((double)f->n - (double)f->n_parameters, 1);
+    for (size_t i = 0; i < f->n; i++) {
+        double z = f->model[i] * sqrt(f->weight[i]);
+        square += z * z;
+        step += i > 0 ? (z - before) * (z - before) : 0;
+        before = z;
+    }
+    double rho = square > 0 ? 1 - step / (2 * square) - scan->correlation : 0;
+    double factor = (1 + scan->correlation) / (1 - scan->correlation);
+    if (lw_chi2_tail(square, freedom) < 1e-3)
+        factor *= square / freedom;
+    if (rho > 3 / sqrt((double)f->n))
+        factor *= (1 + fmin(rho, 0.9)) / (1 - fmin(rho, 0.9));
+    return fmax(factor, 1);
+}
+
 static lw_status fit_members(fit *f, lw_arena *arena, lw__separation *out, lw__physical_fit *result, lw_error *err)
 {
     static const lw_strain_form *const forms[] = {&lw_strain_constant, &lw_strain_correlated,
@@ -674,9 +696,15 @@ static lw_status fit_members(fit *f, lw_arena *arena, lw__separation *out, lw__p
         result->chi2[i] = outcome.chi2;
         best = outcome.chi2 < result->chi2[best] ? i : best;
     }
-    double dof = fmax((double)f->n - (double)m, 1);
-    result->goodness = result->chi2[best] / dof;
-    double inflate = fmax(result->goodness, 1), sum = 0;
+    f->form = forms[best];
+    f->tied = false;
+    lw_normal left = {.n = m};
+    lw_status looked = evaluate(f, p[best], false, &left, err);
+    if (looked != LW_OK)
+        return looked;
+    result->goodness = result->chi2[best] / fmax((double)f->n - (double)m, 1);
+    f->tied = true;
+    double inflate = misfit_factor(f), sum = 0;
     for (size_t i = 0; i < n_forms; i++) {
         result->weight[i] = exp(-0.5 * (result->chi2[i] - result->chi2[best]) / inflate);
         sum += result->weight[i];

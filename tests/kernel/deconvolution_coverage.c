@@ -27,7 +27,7 @@ static void coverage(void)
         made_begin(&m, 0.3615, 0.06, 0.03);
         made_scan(&m, 36, 49, 0.025, height[level], 100, 0, voigt, beta);
         for (int k = 0; k < 4; k++) {
-            int trials = k < 2 ? TRIALS : TRIALS / 2, hits = 0, refused = 0;
+            int trials = k < 2 ? TRIALS : 3 * TRIALS / 10, hits = 0, refused = 0;
             double u = 0, error = 0, square = 0;
             for (int t = 0; t < trials; t++) {
                 lw_error err = LW_ERROR_NONE;
