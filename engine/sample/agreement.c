@@ -16,7 +16,8 @@ static bool either(const char *a, const char *b, const char *name)
 static bool by_breadth(const char *name)
 {
     return strcmp(name, "scherrer") == 0 || strcmp(name, "williamson_hall") == 0 ||
-           strcmp(name, "halder_wagner") == 0 || strcmp(name, "single_line_voigt") == 0;
+           strcmp(name, "halder_wagner") == 0 || strcmp(name, "single_line_voigt") == 0 ||
+           strcmp(name, "double_voigt") == 0;
 }
 
 const char *lw_agreement_reason(const char *field, const char *first, const char *second, double difference)
@@ -33,6 +34,12 @@ const char *lw_agreement_reason(const char *field, const char *first, const char
         return "the single-line method takes each line's Gaussian part for strain and its Lorentzian part "
                "for size; "
                "a narrow distribution of sizes has a Gaussian part of its own";
+    if (either(first, second, "double_voigt"))
+        return "double Voigt needs lines that are Voigts: round crystals with a spread of sizes are none, and a Voigt's area-"
+               "weighted size hangs on its Lorentzian tails";
+    if (either(first, second, "warren_averbach") && either(first, second, "whole_pattern"))
+        return "Warren-Averbach reads the orders of one direction, whose coefficients hang on tails and background; the whole "
+               "pattern reads all lines by a model of the crystals";
     if (by_breadth(first) && by_breadth(second))
         return "the methods add size and strain breadths by different rules, of which none is exact; "
                "column-length "

@@ -1,0 +1,76 @@
+-- SPDX-License-Identifier: GPL-3.0-or-later
+-- The recipes of the column-length methods through the command line: exit codes, files and what they say.
+local helper = dofile((debug.getinfo(1, "S").source:match "^@(.*/)" or "./") .. "helper.lua")
+local record = dofile(helper.spec .. "/record.lua")
+local scripts, demo = helper.root .. "/scripts/", helper.demo
+
+describe("the recipe", function()
+  local folder
+  local function recipe(name, ...)
+    return helper.run(folder, { scripts .. name .. ".lua", "scan=" .. demo .. "/nickel_milled_16h.xy",
+      "material=nickel", "calibration=cal/calibration.json", "out=" .. name, ... })
+  end
+  setup(function()
+    folder = helper.folder()
+    assert.are.equal(0, (helper.run(folder, { scripts .. "calibrate.lua", "geometry=reflection", "out=cal",
+      "scan=" .. demo .. "/lab6_after_service.xy", "standard=lab6-660c", "radiation=Cu Ka" })))
+  end)
+  teardown(function() helper.remove(folder) end)
+
+  it("warren_averbach tells size, strain, columns and what is not determined, with its figures", function()
+    local code, out, err = recipe "warren_averbach"
+    assert.are.same({ 0, "" }, { code, err })
+    assert.matches("size_area", out)
+    assert.matches("strain_not_determined", out)
+    local r = record.read(folder .. "/warren_averbach/results.json").methods.warren_averbach
+    assert.are.equal("nm", r.size_area.unit)
+    assert.is_true(r.size_area.u > 0)
+    assert.is_nil(r.size_volume)
+    assert.is_string(r.size_volume_not_determined)
+    assert.is_true(#r.strain_rms_at >= 4)
+    for _, row in ipairs(r.strain_rms_at) do
+      assert.is_true(row.length > 0 and row.value > 0 and row.u > 0)
+    end
+    for _, name in ipairs { "coefficients", "orders", "strain" } do
+      assert.is_true(helper.exists(folder .. "/warren_averbach/figures/warren_averbach_" .. name .. ".svg"), name)
+    end
+  end)
+
+  it("warren_averbach takes named lines, and refuses those that are not there", function()
+    local code, out = recipe("warren_averbach", "lines=111,220,311")
+    assert.are.equal(0, code)
+    assert.matches("test_of_orders", out)
+    local refused, _, err = recipe("warren_averbach", "lines=111,531")
+    assert.are.equal(1, refused)
+    assert.matches("no resolved line 531", err)
+  end)
+
+  it("whole_pattern tells the distribution, the forms of strain and their covariance", function()
+    local code, _, err = recipe "whole_pattern"
+    assert.are.same({ 0, "" }, { code, err })
+    local r = record.read(folder .. "/whole_pattern/results.json").methods.whole_pattern
+    for _, name in ipairs { "size_volume", "size_area", "diameter_mean", "diameter_dispersion", "strain_rms" } do
+      assert.is_true(r[name].u > 0, name)
+    end
+    local sum = 0
+    for _, form in ipairs(r.forms) do
+      sum = sum + form.weight
+    end
+    assert.is_true(math.abs(sum - 1) < 1e-9)
+    assert.are.equal(5, #r.covariance.rows)
+    assert.is_true(math.abs(r.covariance.rows[2][2] ^ 0.5 / r.size_area.u - 1) < 1e-9)
+    assert.is_true(helper.exists(folder .. "/whole_pattern/figures/whole_pattern_strain.svg"))
+  end)
+
+  it("compare_methods lays every method beside the others", function()
+    local code, out, err = recipe("compare_methods", "ways=convolution,stokes")
+    assert.are.same({ 0, "" }, { code, err })
+    for _, words in ipairs { "Warren%-Averbach +stokes", "Warren%-Averbach +convolution", "Double Voigt",
+                             "Whole pattern +none: the counts" } do
+      assert.matches(words, out)
+    end
+    local ways = record.read(folder .. "/compare_methods/results.json").ways
+    assert.is_table(ways.stokes.methods.warren_averbach)
+    assert.is_true(helper.exists(folder .. "/compare_methods/figures/compared_size_area.svg"))
+  end)
+end)
