@@ -184,6 +184,11 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
                  a->misfit, a->misfit);
         lw_add_text(remarks, NULL, text, err);
     }
+    if (a->misfit > 1.05)
+        lw_add_text(remarks, NULL,
+                    "no form tried here is what the powder is: the uncertainties hold counting, calibration and the forms, "
+                    "not crystals of another shape, spread or strain; take the sizes as indicative",
+                    err);
     double lowest = INFINITY, highest = 0;
     for (size_t i = 0; i < a->n_forms; i++)
         if (a->form[i].fitted && a->form[i].weight > 0.05) {

@@ -91,6 +91,24 @@ static void begin(made *m, lw_engine *engine)
     m->instrument.value[LW_Z] = 0.02;
 }
 
+/* Memory that refuses after so many requests; blocks are the system's, as before and after. */
+typedef struct refusing {
+    long left;
+} refusing;
+
+static void *resize(void *user, void *block, size_t old_size, size_t new_size)
+{
+    refusing *r = user;
+    (void)old_size;
+    if (new_size == 0) {
+        free(block);
+        return NULL;
+    }
+    return r->left-- > 0 ? realloc(block, new_size) : NULL;
+}
+
+static refusing *refuse; /* set: the method runs on memory that refuses */
+
 /* Fits counts; the result tree lives in the arena. NULL if anything failed. */
 static const lw_node *fit(const made *m, const char *strain, lw_arena *arena)
 {
@@ -119,9 +137,16 @@ static const lw_node *fit(const made *m, const char *strain, lw_arena *arena)
         status = lw_fit_lines(m->engine, scan, m->reflection, m->n, &m->material, &options, &lines, &err);
     if (status == LW_OK)
         status = lw_deconvolve(m->engine, lines, NULL, &how, &profiles, &err);
-    if (status == LW_OK)
+    if (status == LW_OK) {
+        lw_allocator before = m->engine->allocator;
+        if (refuse != NULL)
+            m->engine->allocator = (lw_allocator){.resize = resize, .user = refuse};
         status = lw_method_run(m->engine, method, profiles, space, tree, &err);
-    if (status != LW_OK)
+        m->engine->allocator = before;
+    }
+    if (refuse != NULL)
+        CHECK(status == LW_OK || status == LW_OUT_OF_MEMORY);
+    else if (status != LW_OK)
         fprintf(stderr, "%s\n", err.message);
     lw_profiles_free(profiles);
     if (lines != NULL)
@@ -228,6 +253,23 @@ static void coverage(const made *m)
     }
 }
 
+static void refused_memory(const made *m)
+{
+    bool done = false;
+    int refusals = 0;
+    for (long n = 0; !done && n < 5000; n += 1 + n / 6) {
+        refusing r = {.left = n};
+        lw_arena arena;
+        lw_arena_begin(&arena, m->engine);
+        refuse = &r;
+        done = fit(m, "constant", &arena) != NULL;
+        refuse = NULL;
+        refusals += !done;
+        lw_arena_end(&arena);
+    }
+    CHECK(done && refusals > 10);
+}
+
 int main(void)
 {
     lw_engine engine;
@@ -237,6 +279,8 @@ int main(void)
     exact(&m);
     choice(&m);
     coverage(&m);
+    refused_memory(&m);
+
     lw_arena_end(&m.arena);
     lw_engine_end(&engine);
     return lw_checks_end();

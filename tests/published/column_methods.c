@@ -11,6 +11,8 @@
 #include "sample/column_lengths.h"
 #include "sample/harmonics.h"
 
+#include <stdlib.h>
+
 #define PI 3.14159265358979323846
 #define CU 0.15405929
 #define A_FCC 0.3615
@@ -271,6 +273,52 @@ static void coverage(lw_engine *engine)
     }
 }
 
+/* Memory that refuses after so many requests; blocks are the system's, as before and after. */
+typedef struct refusing {
+    long left;
+} refusing;
+
+static void *resize(void *user, void *block, size_t old_size, size_t new_size)
+{
+    refusing *r = user;
+    (void)old_size;
+    if (new_size == 0) {
+        free(block);
+        return NULL;
+    }
+    return r->left-- > 0 ? realloc(block, new_size) : NULL;
+}
+
+static void refused_memory(void)
+{
+    static const line both[2] = {{1, 1, 1}, {2, 2, 2}};
+    static const char *const names[] = {"warren_averbach", "double_voigt"};
+    double p[2] = {4e-6, 0};
+    for (int k = 0; k < 2; k++) {
+        bool done = false;
+        int refusals = 0;
+        for (long n = 0; !done && n < 1000; n++) {
+            refusing r = {.left = n};
+            lw_engine engine;
+            lw_engine_begin(&engine);
+            engine.allocator = (lw_allocator){.resize = resize, .user = &r};
+            lw_arena arena;
+            lw_error err = LW_ERROR_NONE;
+            lw_arena_begin(&arena, &engine);
+            const lw_profiles *profiles = make(both, 2, 0.3, &lw_strain_constant, p, 1e-3, 1);
+            lw_node *tree = lw_tree_new(&arena, &err);
+            lw_status status = tree == NULL ? err.status
+                                            : lw_method_run(&engine, lw_method_named(names[k]), profiles, NULL, tree, &err);
+            done = status == LW_OK;
+            refusals += !done;
+            CHECK(done || status == LW_OUT_OF_MEMORY);
+            lw_arena_end(&arena);
+            lw_engine_end(&engine);
+        }
+        CHECK(done && refusals > 3);
+    }
+}
+
 int main(void)
 {
     lw_engine engine;
@@ -280,6 +328,7 @@ int main(void)
     bench_d(&engine);
     hook(&engine);
     coverage(&engine);
+    refused_memory();
     lw_engine_end(&engine);
     return lw_checks_end();
 }
