@@ -1,13 +1,14 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Deconvolution by convolution: the sample's Gaussian and Lorentzian parts were fitted with the instrument folded
- * into every line, so nothing is divided or subtracted here. */
+/* Deconvolution by convolution: the sample's Gaussian and Lorentzian parts were fitted with the instrument
+ * folded into every line, so nothing is divided or subtracted here. */
 #include "profile/deconvolution.h"
 
 #include "numeric/voigt.h"
 
 #include <math.h>
 
-static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err)
 {
     const lw_scan *scan = profiles->lines->scan;
     size_t stride = profiles->n_covariance;
@@ -24,7 +25,8 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
         for (size_t i = 0; i < profile->n_coefficients; i++) {
             double length = profile->length_nm[i], a = lw__voigt_coefficient(gauss, lorentz, length);
             double by_gauss = -2 * M_PI * gauss * length * length * a, by_lorentz = -2 * length * a;
-            double variance = by_gauss * by_gauss * c[g * stride + g] + by_lorentz * by_lorentz * c[l * stride + l] +
+            double variance = by_gauss * by_gauss * c[g * stride + g] +
+                              by_lorentz * by_lorentz * c[l * stride + l] +
                               2 * by_gauss * by_lorentz * c[g * stride + l];
             profile->cosine[i] = a;
             profile->u_cosine[i] = sqrt(fmax(variance, 0));
@@ -64,6 +66,7 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
 
 const lw_deconvolution lw_deconvolution_convolution = {
     .name = "convolution",
-    .source = "Voigt in the fit: Langford (1978) J. Appl. Cryst. 11, 10; the instrument inside the model: Klug & Alexander "
+    .source = "Voigt in the fit: Langford (1978) J. Appl. Cryst. 11, 10; the instrument inside the model: "
+              "Klug & Alexander "
               "(1974) X-ray Diffraction Procedures, ch. 9",
     .run = run};

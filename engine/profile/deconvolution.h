@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* What a method of deconvolution is, and what the methods share (private to profile/). To add one: a file that
- * ends in one such constant, and a line in the list. */
+/* What a method of deconvolution is, and what the methods share (private to profile/). To add one: a file
+ * that ends in one such constant, and a line in the list. */
 #ifndef LW_PROFILE_DECONVOLUTION_H
 #define LW_PROFILE_DECONVOLUTION_H
 
@@ -9,12 +9,15 @@
 typedef struct lw_deconvolution {
     const char *name;
     const char *source; /* published source */
-    /* Fills coefficients, breadth and refold of every profile in `profiles`; the Voigt parts are there already. */
-    lw_status (*run)(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err);
+    /* Fills coefficients, breadth and refold of every profile in `profiles`; the Voigt parts are there
+     * already. */
+    lw_status (*run)(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err);
 } lw_deconvolution;
 
-extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_physical, lw_deconvolution_stokes,
-    lw_deconvolution_tikhonov, lw_deconvolution_richardson_lucy, lw_deconvolution_maximum_entropy;
+extern const lw_deconvolution lw_deconvolution_convolution, lw_deconvolution_physical,
+    lw_deconvolution_stokes, lw_deconvolution_tikhonov, lw_deconvolution_richardson_lucy,
+    lw_deconvolution_maximum_entropy;
 
 /* Degrees of the line's own axis to nm^-1: ds = factor x dx. */
 double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile);
@@ -23,20 +26,21 @@ double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile);
  * exp(-2 lorentz L - pi gauss^2 L^2). */
 double lw__voigt_coefficient(double gauss_s, double lorentz_s, double length_nm);
 
-/* Lengths 0, step, 2 step ... for a profile: n and step by the options, else so that the last Voigt coefficient
- * is 0.002. Takes the arrays of the profile. */
+/* Lengths 0, step, 2 step ... for a profile: n and step by the options, else so that the last Voigt
+ * coefficient is 0.002. Takes the arrays of the profile. */
 lw_status lw__take_lengths(lw_profiles *profiles, lw_profile *profile, const lw_deconvolve_options *options,
                            lw_error *err);
 
 /* Breadth as a quantity, or an upper limit (95 %) when it is below twice its u. */
 void lw__set_breadth(const lw_profiles *profiles, lw_profile *profile, double value, double u);
 
-/* Refold: chi2 with its degrees of freedom; lost = sum of r^2 - variance, net = sum of (line)^2. It fails when the
- * misfit is beyond chance (1e-6) and more than a tenth of the line (in amplitude, noise taken off) is not given back:
- * a matter of shape alone never reaches that. */
+/* Refold: chi2 with its degrees of freedom; lost = sum of r^2 - variance, net = sum of (line)^2. It fails
+ * when the misfit is beyond chance (1e-6) and more than a tenth of the line (in amplitude, noise taken off)
+ * is not given back: a matter of shape alone never reaches that. */
 void lw__set_refold(lw_profile *profile, double chi2, double freedom, size_t points, double lost, double net);
 
 /* The pure profile for figures, from the coefficients up to truncated_at, over +-4 breadths. */
-lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth_s, lw_error *err);
+lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth_s,
+                                    lw_error *err);
 
 #endif

@@ -10,10 +10,14 @@
 #include <string.h>
 
 static const double degree = M_PI / 180;
-static const lw_deconvolution *const methods[] = {&lw_deconvolution_convolution, &lw_deconvolution_stokes,
-                                                 &lw_deconvolution_physical,    &lw_deconvolution_tikhonov,
-                                                 &lw_deconvolution_richardson_lucy, &lw_deconvolution_maximum_entropy, NULL};
-static const char *const method_names[] = {"convolution", "stokes", "physical", "tikhonov",
+static const lw_deconvolution *const methods[] = {&lw_deconvolution_convolution,
+                                                  &lw_deconvolution_stokes,
+                                                  &lw_deconvolution_physical,
+                                                  &lw_deconvolution_tikhonov,
+                                                  &lw_deconvolution_richardson_lucy,
+                                                  &lw_deconvolution_maximum_entropy,
+                                                  NULL};
+static const char *const method_names[] = {"convolution",     "stokes",          "physical", "tikhonov",
                                            "richardson_lucy", "maximum_entropy", NULL};
 
 static const char *const completions[] = {"auto", "voigt", "physical", NULL};
@@ -24,7 +28,8 @@ static const char *const rules[] = {"discrepancy", "gcv", NULL};
 #define AT(field) offsetof(lw_deconvolve_options, field)
 const lw_option lw_deconvolve_option_table[] = {
     {"method", LW_OPTION_CHOICE, "", "convolution", 0, 0, method_names, AT(method),
-     "convolution: the Voigt fitted with the instrument inside; stokes: Fourier quotient; physical: lognormal spheres x "
+     "convolution: the Voigt fitted with the instrument inside; stokes: Fourier quotient; physical: "
+     "lognormal spheres x "
      "strain, all lines fitted again; tikhonov, richardson_lucy, maximum_entropy: regularised"},
     {"length_step", LW_OPTION_NUMBER, "nm", "from the breadth", 0, 1000, NULL, AT(length_step_nm),
      "step of the column length L, 0 = from the breadth"},
@@ -33,7 +38,8 @@ const lw_option lw_deconvolve_option_table[] = {
     {"window", LW_OPTION_NUMBER, "breadths", "as far as the neighbours allow", 0, 100, NULL, AT(window),
      "half-width of the data used for the Fourier sums"},
     {"completion", LW_OPTION_CHOICE, "", "auto", 0, 0, completions, AT(completion),
-     "shape by which lines are separated and tails completed; physical fits all lines again first, auto does so where "
+     "shape by which lines are separated and tails completed; physical fits all lines again first, auto does "
+     "so where "
      "the fitted Voigts miss the data (p < 0.2) and lines are at most 30"},
     {"apodise", LW_OPTION_CHOICE, "", "none", 0, 0, windows, AT(apodise),
      "stokes: window over the coefficients; its effect on the breadth is stated"},
@@ -43,7 +49,8 @@ const lw_option lw_deconvolve_option_table[] = {
      "tikhonov: rule for the regularisation parameter"},
     {"strength", LW_OPTION_NUMBER, "", "by the rule", 0, 1e300, NULL, AT(strength),
      "tikhonov: the regularisation parameter itself, 0 = by the rule"},
-    {"non_negative", LW_OPTION_FLAG, "", "false", 0, 0, NULL, AT(non_negative), "tikhonov: no negative intensity"},
+    {"non_negative", LW_OPTION_FLAG, "", "false", 0, 0, NULL, AT(non_negative),
+     "tikhonov: no negative intensity"},
     {"iterations_most", LW_OPTION_COUNT, "", "500", 1, 100000, NULL, AT(iterations_most),
      "richardson_lucy: iterations at most"},
     {"realisations", LW_OPTION_COUNT, "", "20", 2, 10000, NULL, AT(realisations),
@@ -108,7 +115,8 @@ lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, 
             double c = cos(phase), d = sin(phase);
             sum += twice * (profile->cosine[k] * c + profile->sine[k] * d);
             variance += twice * twice *
-                        (profile->u_cosine[k] * profile->u_cosine[k] * c * c + profile->u_sine[k] * profile->u_sine[k] * d * d);
+                        (profile->u_cosine[k] * profile->u_cosine[k] * c * c +
+                         profile->u_sine[k] * profile->u_sine[k] * d * d);
         }
         curve[0][j] = s;
         curve[1][j] = sum;
@@ -151,7 +159,8 @@ lw_status lw__take_lengths(lw_profiles *profiles, lw_profile *profile, const lw_
     return LW_OK;
 }
 
-/* Derivatives of gauss_s, lorentz_s and breadth_s of one line to its own variance and Lorentzian (deg^2, deg). */
+/* Derivatives of gauss_s, lorentz_s and breadth_s of one line to its own variance and Lorentzian (deg^2,
+ * deg). */
 static void voigt_slopes(const lw_line *line, double u_variance, double per_degree, double slope[3][2])
 {
     double to_gauss = 0.5 * sqrt(M_PI / M_LN2) * per_degree, to_lorentz = 0.5 * M_PI * per_degree;
@@ -165,7 +174,8 @@ static void voigt_slopes(const lw_line *line, double u_variance, double per_degr
     for (int i = 0; i < 2; i++) {
         double at[3];
         for (int j = 0; j < 3; j++)
-            at[j] = lw_voigt_breadth(sqrt(variance + (i == 0) * j * step[0]), lorentz + (i == 1) * j * step[1]);
+            at[j] =
+                lw_voigt_breadth(sqrt(variance + (i == 0) * j * step[0]), lorentz + (i == 1) * j * step[1]);
         if (variance == 0 && lorentz == 0)
             slope[2][i] = i == 1 ? to_lorentz : 0;
         else
@@ -251,7 +261,8 @@ static lw_status voigt_parts(lw_profiles *profiles, lw_error *err)
     return LW_OK;
 }
 
-/* A line of which the scan shows little more than one side can't be checked: what its other half would say is free. */
+/* A line of which the scan shows little more than one side can't be checked: what its other half would say is
+ * free. */
 static bool is_cut(const lw_profiles *profiles, const lw_profile *profile)
 {
     const lw_scan *scan = profiles->lines->scan;
@@ -272,19 +283,24 @@ static lw_status check_refold(lw_profiles *profiles, bool accept, lw_error *err)
         if (!profile->refold_failed || used[cut] + 30 >= sizeof names[cut])
             continue;
         lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl);
-        used[cut] += (size_t)snprintf(names[cut] + used[cut], sizeof names[cut] - used[cut], "%s%s", used[cut] ? ", " : "", hkl);
+        used[cut] += (size_t)snprintf(names[cut] + used[cut], sizeof names[cut] - used[cut], "%s%s",
+                                      used[cut] ? ", " : "", hkl);
         if (!cut)
-            used[0] += (size_t)snprintf(names[0] + used[0], sizeof names[0] - used[0], " (%.1f)", profile->refold_chi2);
+            used[0] += (size_t)snprintf(names[0] + used[0], sizeof names[0] - used[0], " (%.1f)",
+                                        profile->refold_chi2);
     }
     if (accept || (used[0] == 0 && used[1] == 0))
         return LW_OK;
     if (used[0] == 0)
         return lw_fail_at(err, LW_REFOLD_FAILED, profiles->lines->scan->file, 0,
                           "measure further, crop the scan before the line, or say accept_refold = true",
-                          "the scan ends within %s: instrument x result can't be held against half a line", names[1]);
-    return lw_fail_at(err, LW_REFOLD_FAILED, profiles->lines->scan->file, 0,
-                      "check the calibration and the background, or say accept_refold = true",
-                      "instrument x result does not give the data back for %s (chi-square per degree of freedom)", names[0]);
+                          "the scan ends within %s: instrument x result can't be held against half a line",
+                          names[1]);
+    return lw_fail_at(
+        err, LW_REFOLD_FAILED, profiles->lines->scan->file, 0,
+        "check the calibration and the background, or say accept_refold = true",
+        "instrument x result does not give the data back for %s (chi-square per degree of freedom)",
+        names[0]);
 }
 
 lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calibration *calibration,
@@ -297,18 +313,23 @@ lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calib
                           "the lines were fitted without an instrument: nothing can be taken out of them");
     if (strcmp(lines->shape, "voigt") != 0)
         return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0, "fit the lines with shape = voigt",
-                          "lines of shape %s are not sums of the instrument's and the sample's part", lines->shape);
+                          "lines of shape %s are not sums of the instrument's and the sample's part",
+                          lines->shape);
     size_t supported = 0;
     for (size_t k = 0; k < lines->n; k++)
         supported += lines->line[k].supported;
     if (supported == 0)
-        return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0, "measure longer, or check the material",
+        return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0,
+                          "measure longer, or check the material",
                           "no line of the scan is supported by the data");
     lw_profiles *profiles = lw_take(engine, sizeof *profiles, err);
     if (profiles == NULL)
         return LW_OUT_OF_MEMORY;
-    *profiles = (lw_profiles){.lines = lines, .calibration = calibration, .n = supported,
-                              .method = methods[options->method]->name, .source = methods[options->method]->source};
+    *profiles = (lw_profiles){.lines = lines,
+                              .calibration = calibration,
+                              .n = supported,
+                              .method = methods[options->method]->name,
+                              .source = methods[options->method]->source};
     lw_arena_begin(&profiles->arena, engine);
     lw_status status = LW_OK;
     profiles->profile = lw_arena_take(&profiles->arena, supported, sizeof *profiles->profile, err);

@@ -9,14 +9,15 @@
 
 #define VALUES_MOST 240
 
-/* Instrument folded with one grid value (a triangle of the spacing), tabulated in `fine` steps from -reach. */
+/* Instrument folded with one grid value (a triangle of the spacing), tabulated in `fine` steps from -reach.
+ */
 typedef struct table {
     size_t n;
     double low, fine, *value;
 } table;
 
-static lw_status take_table(const lw__job *job, const lw__instrument *instrument, double spacing, double reach,
-                            lw_arena *scratch, table *out, lw_error *err)
+static lw_status take_table(const lw__job *job, const lw__instrument *instrument, double spacing,
+                            double reach, lw_arena *scratch, table *out, lw_error *err)
 {
     double d = instrument->per_degree;
     size_t per = (size_t)fmax(ceil(spacing / (0.2 * instrument->fwhm_deg * d)), 6);
@@ -31,8 +32,8 @@ static lw_status take_table(const lw__job *job, const lw__instrument *instrument
     for (size_t i = 0; i < all; i++)
         x[i] = ((double)i - (double)(half + per)) * out->fine / d;
     lw_voigt_sums sums = {.value = y};
-    lw_voigt_kernel_for(job->engine->cpu)->sum(all, x, instrument->node, instrument->n, instrument->variance,
-                                               instrument->lorentz, 1, &sums);
+    lw_voigt_kernel_for(job->engine->cpu)
+        ->sum(all, x, instrument->node, instrument->n, instrument->variance, instrument->lorentz, 1, &sums);
     for (size_t i = 0; i < out->n; i++) {
         double sum = y[i + per];
         for (size_t j = 1; j < per; j++)
@@ -48,8 +49,8 @@ static double look_up(const table *t, double x)
     if (!(whole >= 1 && whole + 2 < (double)t->n))
         return 0;
     const double *y = t->value + (size_t)whole;
-    return -u * (u - 1) * (u - 2) / 6 * y[-1] + (u + 1) * (u - 1) * (u - 2) / 2 * y[0] - (u + 1) * u * (u - 2) / 2 * y[1] +
-           (u + 1) * u * (u - 1) / 6 * y[2];
+    return -u * (u - 1) * (u - 2) / 6 * y[-1] + (u + 1) * (u - 1) * (u - 2) / 2 * y[0] -
+           (u + 1) * u * (u - 2) / 2 * y[1] + (u + 1) * u * (u - 1) / 6 * y[2];
 }
 
 /* The shape at the grid's places: in closed form, or as the cosine transform of its coefficients. */
@@ -106,8 +107,8 @@ lw_status lw__take_grid(const lw__job *job, const lw__instrument *instrument, do
     double *own = lw_arena_take(scratch, n, sizeof *own, err);
     double *column = lw_arena_take(scratch, m * n, sizeof *column, err);
     double *weighed = lw_arena_take(scratch, n, sizeof *weighed, err);
-    if (!g->place || !g->shape || !g->pull || !g->target || !g->weight || !g->response || !g->normal || !g->own_normal || !own ||
-        !column || !weighed)
+    if (!g->place || !g->shape || !g->pull || !g->target || !g->weight || !g->response || !g->normal ||
+        !g->own_normal || !own || !column || !weighed)
         return LW_OUT_OF_MEMORY;
     for (size_t j = 0; j < m; j++)
         g->place[j] = ((double)j - (double)g->middle) * g->spacing;
@@ -121,7 +122,8 @@ lw_status lw__take_grid(const lw__job *job, const lw__instrument *instrument, do
         status = take_table(job, &job->instrument, g->spacing, reach, scratch, &then, err);
     if (status != LW_OK)
         return status;
-    /* the shape's centre is not the fitted position: the window's s is from the shape, the instrument's from the line */
+    /* the shape's centre is not the fitted position: the window's s is from the shape, the instrument's from
+     * the line */
     g->expected_chi2 = 0;
     for (size_t i = 0; i < n; i++) {
         g->target[i] = data->residual[i];
@@ -194,7 +196,8 @@ lw_status lw__grid_coefficients(const lw__job *job, const lw__grid *g, const dou
     size_t m = g->m, n = profile->n_coefficients, under = 0;
     lw_arena scratch;
     lw_arena_begin(&scratch, job->engine);
-    double *a = lw_arena_take(&scratch, 2 * n, sizeof *a, err), *b = lw_arena_take(&scratch, 2 * m, sizeof *b, err);
+    double *a = lw_arena_take(&scratch, 2 * n, sizeof *a, err),
+           *b = lw_arena_take(&scratch, 2 * m, sizeof *b, err);
     double *curve[3];
     for (int i = 0; i < 3; i++)
         curve[i] = lw_arena_take(&job->profiles->arena, m, sizeof(double), err);
@@ -254,8 +257,8 @@ bool lw__invert(double *a, size_t m, double *z)
     return true;
 }
 
-lw_status lw__add_background(const lw__job *job, const lw__grid *g, const double *z, double *c, lw_arena *scratch,
-                             lw_error *err)
+lw_status lw__add_background(const lw__job *job, const lw__grid *g, const double *z, double *c,
+                             lw_arena *scratch, lw_error *err)
 {
     size_t m = g->m;
     double *level = lw_arena_take(scratch, 2 * m, sizeof *level, err), *pulled = level + m;
@@ -274,7 +277,8 @@ lw_status lw__add_background(const lw__job *job, const lw__grid *g, const double
 
 double lw__grid_followed(const lw__grid *g, const double *z, const double *zn)
 {
-    /* chi2 of (1 - H) r with H = R Z R' W and noise V' of r: tr V'W - 2 tr Z N' + tr Z N Z N', N' = R' W V' W R */
+    /* chi2 of (1 - H) r with H = R Z R' W and noise V' of r: tr V'W - 2 tr Z N' + tr Z N Z N', N' = R' W V' W
+     * R */
     size_t m = g->m;
     double sum = 0;
     for (size_t j = 0; j < m; j++)
@@ -299,8 +303,8 @@ void lw__grid_refold(const lw__job *job, const lw__grid *g, const double *x, dou
     lw__set_refold(job->profile, chi2, freedom, g->n, lost, net);
 }
 
-double lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x, const double *z, const double *c,
-                         double *shape_share, double *bias, lw_arena *scratch, lw_error *err)
+double lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x, const double *z,
+                         const double *c, double *shape_share, double *bias, lw_arena *scratch, lw_error *err)
 {
     size_t m = g->m;
     double *q = lw_arena_take(scratch, m, sizeof *q, err), *zq = lw_arena_take(scratch, m, sizeof *zq, err);

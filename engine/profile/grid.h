@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The sample's profile as values on a grid, for methods that solve for it there (private to profile/). Between the
- * grid's values the profile is linear; it is told as a departure from the completing shape, which stands alone outside
- * the window. */
+/* The sample's profile as values on a grid, for methods that solve for it there (private to profile/).
+ * Between the grid's values the profile is linear; it is told as a departure from the completing shape, which
+ * stands alone outside the window. */
 #ifndef LW_PROFILE_GRID_H
 #define LW_PROFILE_GRID_H
 
@@ -31,18 +31,21 @@ double lw__grid_chi2(const lw__grid *grid, const double *x);
 /* Breadth of shape + x; slopes[m] (or NULL) to x. */
 double lw__grid_breadth(const lw__job *job, const lw__grid *grid, const double *x, double *slopes);
 
-/* Fills coefficients and curve of the profile from shape + x with the covariance c[m][m] of x, and truncates. */
+/* Fills coefficients and curve of the profile from shape + x with the covariance c[m][m] of x, and truncates.
+ */
 lw_status lw__grid_coefficients(const lw__job *job, const lw__grid *grid, const double *x, const double *c,
                                 lw_error *err);
 /* Coefficients alone: out[2 n_coefficients], cosines then sines. */
 void lw__grid_transform(const lw__job *job, const lw__grid *grid, const double *x, double *out);
 
-/* Inverse of a positive definite matrix a[m][m] (upper triangle read, destroyed) to z[m][m]. False if singular. */
+/* Inverse of a positive definite matrix a[m][m] (upper triangle read, destroyed) to z[m][m]. False if
+ * singular. */
 bool lw__invert(double *a, size_t m, double *z);
 
-/* Adds to c[m][m], the covariance of x = Z response' weight target, what an error of the background's level makes. */
-lw_status lw__add_background(const lw__job *job, const lw__grid *grid, const double *z, double *c, lw_arena *scratch,
-                             lw_error *err);
+/* Adds to c[m][m], the covariance of x = Z response' weight target, what an error of the background's level
+ * makes. */
+lw_status lw__add_background(const lw__job *job, const lw__grid *grid, const double *z, double *c,
+                             lw_arena *scratch, lw_error *err);
 
 /* Degrees of freedom that an estimate x = Z response' weight target takes from chi2; zn[m][m] = Z normal. */
 double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn);
@@ -50,10 +53,13 @@ double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn
 /* Refold of x: `followed` is the number of degrees of freedom that x took up. */
 void lw__grid_refold(const lw__job *job, const lw__grid *grid, const double *x, double followed);
 
-/* For an estimate x = Z response' weight target, Z = (normal + R)^-1: variance of the breadth from c[m][m] (covariance
- * of x by counting and background, or posterior), from tails beyond the window, and from what remains the shape's: shape_share of a change of the shape's breadth survives in the result. bias: by what R keeps x
- * back, estimated by what it would keep back of x itself; it enters as if it were a standard uncertainty. */
-double lw__grid_variance(const lw__job *job, const lw__grid *grid, const double *x, const double *z, const double *c,
-                         double *shape_share, double *bias, lw_arena *scratch, lw_error *err);
+/* For an estimate x = Z response' weight target, Z = (normal + R)^-1: variance of the breadth from c[m][m]
+ * (covariance of x by counting and background, or posterior), from tails beyond the window, and from what
+ * remains the shape's: shape_share of a change of the shape's breadth survives in the result. bias: by what R
+ * keeps x back, estimated by what it would keep back of x itself; it enters as if it were a standard
+ * uncertainty. */
+double lw__grid_variance(const lw__job *job, const lw__grid *grid, const double *x, const double *z,
+                         const double *c, double *shape_share, double *bias, lw_arena *scratch,
+                         lw_error *err);
 
 #endif

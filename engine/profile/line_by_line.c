@@ -22,7 +22,8 @@ double lw__tail_variance(const lw__job *job, double *share)
     *share = fmin(fmax(1 - inside / job->line->area_s, 0), 1);
     if (!(square > 0))
         return *share * *share;
-    double wrong = cross / square, variance = 1 / square + level * level / (square * square) * data->background_variance;
+    double wrong = cross / square,
+           variance = 1 / square + level * level / (square * square) * data->background_variance;
     return *share * *share * fmin(fmax(wrong * wrong, variance), 1);
 }
 
@@ -56,7 +57,8 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, size_t
     slope[0] = slope[1] = 0;
     lw_status status = lw__take_lengths(job->profiles, profile, job->options, err);
     if (status == LW_OK)
-        status = lw__take_window(job->profiles, k, separation, job->options->window, &scratch, &job->data, err);
+        status =
+            lw__take_window(job->profiles, k, separation, job->options->window, &scratch, &job->data, err);
     if (status == LW_OK)
         status = lw__take_instrument(job->profiles, profile, &scratch, &job->instrument, err);
     *answer = (lw__answer){.breadth = job->shape_breadth, .from_shape = true};
@@ -128,7 +130,8 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
             if (answer[a].from_shape && answer[b].from_shape)
                 continue;
             if (answer[a].from_shape || answer[b].from_shape)
-                row[other->at_breadth] = profiles->covariance[other->at_breadth * stride + profile->at_breadth] = 0;
+                row[other->at_breadth] =
+                    profiles->covariance[other->at_breadth * stride + profile->at_breadth] = 0;
             else
                 row[other->at_breadth] = lw__from_instrument(profiles, profile, slope[a], other, slope[b]) +
                                          (a == b ? answer[a].variance : 0);

@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Maximum entropy: of all positive profiles f that give the data back with chi2 as noise alone would make it, the one
- * of greatest entropy sum (f - m - f ln(f/m)) against the completing shape m. f = m exp(theta) is found by Newton's
- * method, its weight alpha by bisection on chi2. Uncertainties are those of the posterior distribution about its
- * maximum (normal approximation). */
+/* Maximum entropy: of all positive profiles f that give the data back with chi2 as noise alone would make it,
+ * the one of greatest entropy sum (f - m - f ln(f/m)) against the completing shape m. f = m exp(theta) is
+ * found by Newton's method, its weight alpha by bisection on chi2. Uncertainties are those of the posterior
+ * distribution about its maximum (normal approximation). */
 #include "profile/grid.h"
 
 #include "numeric/cholesky.h"
@@ -20,7 +20,8 @@ static void curvature(const solver *s, double alpha)
     size_t m = s->g->m;
     for (size_t j = 0; j < m; j++)
         for (size_t k = j; k < m; k++)
-            s->work[j * m + k] = s->root[j] * s->g->normal[j * m + k] * s->root[k] + (j == k ? alpha * s->g->spacing : 0);
+            s->work[j * m + k] =
+                s->root[j] * s->g->normal[j * m + k] * s->root[k] + (j == k ? alpha * s->g->spacing : 0);
 }
 
 static void set_x(const solver *s)
@@ -71,7 +72,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
         if ((*column[i] = lw_arena_take(scratch, m, sizeof(double), err)) == NULL)
             return LW_OUT_OF_MEMORY;
     s.work = lw_arena_take(scratch, m * m, sizeof(double), err);
-    double *z = lw_arena_take(scratch, m * m, sizeof *z, err), *zn = lw_arena_take(scratch, m * m, sizeof *zn, err);
+    double *z = lw_arena_take(scratch, m * m, sizeof *z, err),
+           *zn = lw_arena_take(scratch, m * m, sizeof *zn, err);
     if (!s.work || !z || !zn)
         return LW_OUT_OF_MEMORY;
     /* chi2 falls with alpha; at the top f = m */
@@ -122,25 +124,27 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     /* the posterior holds what the prior keeps back already */
     answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err) - bias * bias;
     lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn));
-    job->profile->assumed = lw_arena_print(&job->profiles->arena, err,
-                                           "%s; entropy against that shape, %s; %.2g of the breadth remains the shape's",
-                                           job->profile->assumed,
-                                           plain     ? "which gives the data back as it is"
-                                           : reached ? "chi-square that of noise"
-                                                     : "chi-square never down to that of noise",
-                                           share);
+    job->profile->assumed = lw_arena_print(
+        &job->profiles->arena, err,
+        "%s; entropy against that shape, %s; %.2g of the breadth remains the shape's", job->profile->assumed,
+        plain     ? "which gives the data back as it is"
+        : reached ? "chi-square that of noise"
+                  : "chi-square never down to that of noise",
+        share);
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
     return lw__grid_coefficients(job, &g, s.x, c, err);
 }
 
-static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err)
 {
     return lw__line_by_line(engine, profiles, options, solve, "maximum entropy", err);
 }
 
 const lw_deconvolution lw_deconvolution_maximum_entropy = {
     .name = "maximum_entropy",
-    .source = "Skilling & Bryan (1984) Mon. Not. R. Astron. Soc. 211, 111; uncertainties: Gull (1989) in Maximum Entropy and "
+    .source = "Skilling & Bryan (1984) Mon. Not. R. Astron. Soc. 211, 111; uncertainties: Gull (1989) in "
+              "Maximum Entropy and "
               "Bayesian Methods, Kluwer, 53",
     .run = run};

@@ -7,8 +7,10 @@
 #include <math.h>
 #include <stdio.h>
 
-/* Coefficients and pure profile of a line: means over the forms of strain, their scatter in the uncertainty. */
-static lw_status fill(lw_profiles *profiles, size_t k, const lw__physical_fit *fit, double breadth, lw_error *err)
+/* Coefficients and pure profile of a line: means over the forms of strain, their scatter in the uncertainty.
+ */
+static lw_status fill(lw_profiles *profiles, size_t k, const lw__physical_fit *fit, double breadth,
+                      lw_error *err)
 {
     lw_profile *profile = &profiles->profile[k];
     for (size_t i = 0; i < profile->n_coefficients; i++) {
@@ -31,7 +33,8 @@ static lw_status fill(lw_profiles *profiles, size_t k, const lw__physical_fit *f
     return lw__curve_of_coefficients(profiles, profile, breadth, err);
 }
 
-static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err)
 {
     lw_arena scratch;
     lw__separation separation;
@@ -68,11 +71,11 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
         }
         lw__set_refold(profile, chi2, (double)profile->refold_points, profile->refold_points, lost, net);
         profile->truncation = "none: the shape has coefficients at every length";
-        profile->assumed = lw_arena_print(&profiles->arena, err,
-                                          "lognormal spheres x strain (%s %.2f, %s %.2f, %s %.2f by weight); reduced "
-                                          "chi-square %.3f; sigma and the correlation length shared by all lines",
-                                          fit.form[0], fit.weight[0], fit.form[1], fit.weight[1], fit.form[2],
-                                          fit.weight[2], fit.goodness);
+        profile->assumed = lw_arena_print(
+            &profiles->arena, err,
+            "lognormal spheres x strain (%s %.2f, %s %.2f, %s %.2f by weight); reduced "
+            "chi-square %.3f; sigma and the correlation length shared by all lines",
+            fit.form[0], fit.weight[0], fit.form[1], fit.weight[1], fit.form[2], fit.weight[2], fit.goodness);
         if (profile->assumed == NULL)
             status = LW_OUT_OF_MEMORY;
     }
@@ -82,6 +85,7 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
 
 const lw_deconvolution lw_deconvolution_physical = {
     .name = "physical",
-    .source = "lognormal spheres: Langford, Louer & Scardi (2000) J. Appl. Cryst. 33, 964; Gaussian strain: Warren & Averbach "
+    .source = "lognormal spheres: Langford, Louer & Scardi (2000) J. Appl. Cryst. 33, 964; Gaussian strain: "
+              "Warren & Averbach "
               "(1950) J. Appl. Phys. 21, 595; the instrument inside the model",
     .run = run};

@@ -8,25 +8,25 @@
 
 typedef struct lw_profile {
     const lw_line *line;
-    double s_per_nm;              /* of the line: 2 sin(theta)/lambda, aberrations taken off */
-    double theta_deg;             /* half of the corrected 2theta */
-    bool resolved;                /* breadth above twice its u */
-    lw_quantity breadth_s;        /* integral breadth, nm^-1; upper limit when not resolved */
-    lw_quantity breadth_deg;      /* the same in degrees 2theta */
+    double s_per_nm;                /* of the line: 2 sin(theta)/lambda, aberrations taken off */
+    double theta_deg;               /* half of the corrected 2theta */
+    bool resolved;                  /* breadth above twice its u */
+    lw_quantity breadth_s;          /* integral breadth, nm^-1; upper limit when not resolved */
+    lw_quantity breadth_deg;        /* the same in degrees 2theta */
     lw_quantity gauss_s, lorentz_s; /* integral breadths of the Gaussian and Lorentzian parts, nm^-1 */
     size_t at_gauss, at_lorentz, at_breadth; /* rows in lw_profiles.covariance */
     /* Fourier coefficients, normalised to A(0) = 1 */
     size_t n_coefficients;
-    double *length_nm;            /* [n] column length L = harmonic number x step, first 0 */
+    double *length_nm;                         /* [n] column length L = harmonic number x step, first 0 */
     double *cosine, *u_cosine, *sine, *u_sine; /* [n] */
-    size_t truncated_at;          /* coefficients from here on are below the noise */
-    const char *truncation;       /* the rule that chose it, in words */
-    const char *assumed;          /* what the method took for granted: separation, prior, regularisation */
+    size_t truncated_at;                       /* coefficients from here on are below the noise */
+    const char *truncation;                    /* the rule that chose it, in words */
+    const char *assumed; /* what the method took for granted: separation, prior, regularisation */
     /* refold: instrument x pure profile against the data */
-    double refold_chi2;           /* per degree of freedom */
-    double refold_freedom;        /* points less what the method fitted to them */
+    double refold_chi2;    /* per degree of freedom */
+    double refold_freedom; /* points less what the method fitted to them */
     size_t refold_points;
-    double refold_p;              /* probability of a chi2 this large by chance */
+    double refold_p; /* probability of a chi2 this large by chance */
     bool refold_failed;
     /* pure profile for figures */
     size_t n_curve;
@@ -40,27 +40,28 @@ typedef struct lw_profiles {
     const char *method;                /* "convolution", "stokes" ... */
     const char *source;                /* published source of the method */
     size_t n;
-    lw_profile *profile;               /* supported lines only, ascending */
+    lw_profile *profile; /* supported lines only, ascending */
     size_t n_covariance;
-    double *covariance;                /* of gauss_s, lorentz_s, breadth_s of all profiles (rows by at_...), nm^-2,
-                                          calibration's part included: shared, so lines are correlated */
+    double *covariance; /* of gauss_s, lorentz_s, breadth_s of all profiles (rows by at_...), nm^-2,
+                           calibration's part included: shared, so lines are correlated */
 } lw_profiles;
 
 typedef struct lw_deconvolve_options {
     int method;            /* of lw_deconvolve_option_table: "convolution", "stokes", "physical" ... */
     double length_step_nm; /* step of L; 0 = from the window */
     double length_most_nm; /* largest L; 0 = where the noise begins */
-    double window;         /* half-width used for the Fourier sums in units of the breadth; 0 = as far as the neighbours allow */
-    int completion;        /* by which shape lines are separated and tails completed: "auto", "voigt", "physical" */
-    int apodise;           /* stokes: "none", "hann" */
-    int order;             /* tikhonov: of the derivative whose square is kept small: 0, 1, 2 */
-    int parameter;         /* tikhonov: rule, "discrepancy", "gcv" */
-    double strength;       /* tikhonov: the parameter itself; 0 = by the rule */
-    bool non_negative;     /* tikhonov: no negative intensity (uncertainties stay those of the free solution) */
-    long iterations_most;  /* richardson_lucy */
-    long realisations;     /* richardson_lucy: of the Monte Carlo uncertainty */
+    double window;         /* half-width used for the Fourier sums in units of the breadth; 0 = as far as the
+                              neighbours allow */
+    int completion;  /* by which shape lines are separated and tails completed: "auto", "voigt", "physical" */
+    int apodise;     /* stokes: "none", "hann" */
+    int order;       /* tikhonov: of the derivative whose square is kept small: 0, 1, 2 */
+    int parameter;   /* tikhonov: rule, "discrepancy", "gcv" */
+    double strength; /* tikhonov: the parameter itself; 0 = by the rule */
+    bool non_negative; /* tikhonov: no negative intensity (uncertainties stay those of the free solution) */
+    long iterations_most; /* richardson_lucy */
+    long realisations;    /* richardson_lucy: of the Monte Carlo uncertainty */
     long seed;
-    bool accept_refold;    /* go on although instrument x result does not give the data back */
+    bool accept_refold; /* go on although instrument x result does not give the data back */
 } lw_deconvolve_options;
 extern const lw_option lw_deconvolve_option_table[];
 lw_deconvolve_options lw_deconvolve_defaults(void);

@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Richardson-Lucy: f <- f R'(y/mu)/R'1, mu = R f + everything else at the points, from a flat start, with the acceleration
- * of Biggs & Andrews (1997), until chi2 is that of noise. Uncertainties by Monte Carlo (JCGM 101): the found line with
- * fresh noise is deconvolved again, as often as the options say, from a stated seed. */
+/* Richardson-Lucy: f <- f R'(y/mu)/R'1, mu = R f + everything else at the points, from a flat start, with the
+ * acceleration of Biggs & Andrews (1997), until chi2 is that of noise. Uncertainties by Monte Carlo (JCGM
+ * 101): the found line with fresh noise is deconvolved again, as often as the options say, from a stated
+ * seed. */
 #include "profile/grid.h"
 
 #include "numeric/cholesky.h"
@@ -31,7 +32,8 @@ static double refold(const solver *s, const double *f, bool ratios)
     return chi2;
 }
 
-/* Runs from a flat start until chi2 <= target (or for `exactly` iterations if that is > 0). Returns the iterations. */
+/* Runs from a flat start until chi2 <= target (or for `exactly` iterations if that is > 0). Returns the
+ * iterations. */
 static size_t iterate(solver *s, double target, size_t most, size_t exactly, double *chi2)
 {
     size_t m = s->g->m, n = s->g->n, count = 0;
@@ -53,7 +55,8 @@ static size_t iterate(solver *s, double target, size_t most, size_t exactly, dou
         memcpy(s->last, s->f, m * sizeof *s->f);
         double along = 0, square = 0;
         for (size_t j = 0; j < m; j++) {
-            s->f[j] = s->sum[j] > 0 ? s->guess[j] * lw_dot(s->column + j * n, s->ratio, n) / s->sum[j] : s->guess[j];
+            s->f[j] = s->sum[j] > 0 ? s->guess[j] * lw_dot(s->column + j * n, s->ratio, n) / s->sum[j]
+                                    : s->guess[j];
             double move = s->f[j] - s->guess[j];
             along += move * s->before[j];
             square += s->before[j] * s->before[j];
@@ -64,11 +67,13 @@ static size_t iterate(solver *s, double target, size_t most, size_t exactly, dou
     return count;
 }
 
-static lw_status take_solver(const lw__job *job, const lw__grid *g, lw_arena *scratch, solver *s, lw_error *err)
+static lw_status take_solver(const lw__job *job, const lw__grid *g, lw_arena *scratch, solver *s,
+                             lw_error *err)
 {
     size_t n = g->n, m = g->m;
     *s = (solver){.g = g};
-    double **by_point[] = {&s->other, &s->y, &s->mu, &s->ratio}, **by_value[] = {&s->sum, &s->f, &s->last, &s->guess, &s->before};
+    double **by_point[] = {&s->other, &s->y, &s->mu, &s->ratio},
+           **by_value[] = {&s->sum, &s->f, &s->last, &s->guess, &s->before};
     for (size_t i = 0; i < 4; i++)
         if ((*by_point[i] = lw_arena_take(scratch, n, sizeof(double), err)) == NULL)
             return LW_OUT_OF_MEMORY;
@@ -84,7 +89,8 @@ static lw_status take_solver(const lw__job *job, const lw__grid *g, lw_arena *sc
         double own = job->line->curve[at], factor = job->data.curve[i] > 0 ? own / job->data.curve[i] : 1;
         double beside = fmax((scan->intensity[at] - job->separation->residual[at] - own) / factor, 0);
         double within = lw_dot(g->response + i * m, g->shape, m);
-        s->other[i] = job->data.curve[i] - within + beside; /* tails from outside the window stay the shape's */
+        s->other[i] =
+            job->data.curve[i] - within + beside; /* tails from outside the window stay the shape's */
         s->y[i] = job->data.curve[i] + g->target[i] + beside;
         for (size_t j = 0; j < m; j++) {
             s->column[j * n + i] = g->response[i * m + j];
@@ -108,8 +114,10 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     double chi2;
     size_t most = (size_t)job->options->iterations_most;
     size_t used = iterate(&s, g.expected_chi2, most, first ? 0 : (size_t)fmax(answer->choice, 1), &chi2);
-    double *x = lw_arena_take(scratch, m, sizeof *x, err), *mean = lw_arena_take(scratch, m, sizeof *mean, err);
-    double *c = lw_arena_take(scratch, m * m, sizeof *c, err), *y = lw_arena_take(scratch, g.n, sizeof *y, err);
+    double *x = lw_arena_take(scratch, m, sizeof *x, err),
+           *mean = lw_arena_take(scratch, m, sizeof *mean, err);
+    double *c = lw_arena_take(scratch, m * m, sizeof *c, err),
+           *y = lw_arena_take(scratch, g.n, sizeof *y, err);
     double *draw = lw_arena_take(scratch, m * (count + 1), sizeof *draw, err);
     double *a = lw_arena_take(scratch, 2 * n_lengths, sizeof *a, err);
     if (!x || !mean || !c || !y || !draw || !a)
@@ -144,28 +152,31 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     for (size_t r = 0; r < count; r++)
         for (size_t j = 0; j < m; j++)
             for (size_t k = 0; k < m; k++)
-                c[j * m + k] += (draw[r * m + j] - mean[j]) * (draw[r * m + k] - mean[k]) / (double)(count - 1);
+                c[j * m + k] +=
+                    (draw[r * m + j] - mean[j]) * (draw[r * m + k] - mean[k]) / (double)(count - 1);
     double shift = sum / (double)count;
     answer->variance = (square - (double)count * shift * shift) / (double)(count - 1) + shift * shift +
                        answer->breadth * answer->breadth * lw__tail_variance(job, &share);
-    job->profile->assumed = lw_arena_print(&job->profiles->arena, err,
-                                           "%s; positive, from a flat start, stopped after %zu iterations %s; %zu realisations "
-                                           "with seed %ld, mean shift of the breadth %.2g nm^-1",
-                                           job->profile->assumed, used,
-                                           used < most ? "where chi-square is that of noise" : "(the limit)", count,
-                                           job->options->seed, shift);
+    job->profile->assumed = lw_arena_print(
+        &job->profiles->arena, err,
+        "%s; positive, from a flat start, stopped after %zu iterations %s; %zu realisations "
+        "with seed %ld, mean shift of the breadth %.2g nm^-1",
+        job->profile->assumed, used, used < most ? "where chi-square is that of noise" : "(the limit)", count,
+        job->options->seed, shift);
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
     return status == LW_OK ? lw__grid_coefficients(job, &g, x, c, err) : status;
 }
 
-static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err)
 {
     return lw__line_by_line(engine, profiles, options, solve, "richardson-lucy", err);
 }
 
 const lw_deconvolution lw_deconvolution_richardson_lucy = {
     .name = "richardson_lucy",
-    .source = "Richardson (1972) J. Opt. Soc. Am. 62, 55; Lucy (1974) Astron. J. 79, 745; acceleration: Biggs & Andrews (1997) "
+    .source = "Richardson (1972) J. Opt. Soc. Am. 62, 55; Lucy (1974) Astron. J. 79, 745; acceleration: "
+              "Biggs & Andrews (1997) "
               "Appl. Opt. 36, 1766",
     .run = run};

@@ -44,8 +44,10 @@ double lw__shape_breadth(const lw__shape *shape, double *slopes)
 {
     if (shape->strain == NULL)
         return lw_voigt_breadth(2 * shape->gauss_s * sqrt(M_LN2 / M_PI), 2 * shape->lorentz_s / M_PI);
-    /* Panels that widen with L: the coefficient is smooth but for the fast fall of a wide distribution at the end. */
-    double x[16], w[16], integral = 0, by[4] = {0}, low = 0, first = 1 / (64 * (lw__shape_kink(shape) + 1e-6));
+    /* Panels that widen with L: the coefficient is smooth but for the fast fall of a wide distribution at the
+     * end. */
+    double x[16], w[16], integral = 0, by[4] = {0}, low = 0,
+                         first = 1 / (64 * (lw__shape_kink(shape) + 1e-6));
     double strain = 2 * M_PI * M_PI * shape->s * shape->s *
                     fmax(shape->strain->displacement(shape->strain_parameter, 1, NULL), 0);
     first = fmin(first, 0.05 / sqrt(strain + 1e-12));
@@ -68,7 +70,8 @@ double lw__shape_breadth(const lw__shape *shape, double *slopes)
     return 1 / (2 * integral);
 }
 
-lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, lw__separation *out, lw_error *err)
+lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, lw__separation *out,
+                                 lw_error *err)
 {
     const lw_lines *lines = profiles->lines;
     size_t n = lines->scan->n;
@@ -85,12 +88,13 @@ lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, l
     for (size_t k = 0; k < profiles->n; k++) {
         const lw_profile *profile = &profiles->profile[k];
         lw__separated *line = &out->line[k];
-        line->shape = (lw__shape){.gauss_s = profile->gauss_s.value, .lorentz_s = profile->lorentz_s.value,
-                                  .s = profile->s_per_nm};
+        line->shape = (lw__shape){
+            .gauss_s = profile->gauss_s.value, .lorentz_s = profile->lorentz_s.value, .s = profile->s_per_nm};
         line->area_s = profile->line->area.value * lw__s_per_degree(profiles, profile);
         if ((line->curve = lw_arena_take(arena, n, sizeof(double), err)) == NULL)
             return LW_OUT_OF_MEMORY;
-        lw_status status = lw_line_curve(lines, profile->line, n, lines->scan->two_theta_deg, line->curve, err);
+        lw_status status =
+            lw_line_curve(lines, profile->line, n, lines->scan->two_theta_deg, line->curve, err);
         if (status != LW_OK)
             return status;
     }

@@ -16,7 +16,7 @@ typedef struct lw__shape {
     double size;                  /* physical: 1/(volume-weighted column length), nm^-1 */
     double sigma;                 /* of the logarithm of the diameters */
     double strain_parameter[LW_STRAIN_PARAMETERS_MOST];
-    double s;                     /* of the line, nm^-1 */
+    double s; /* of the line, nm^-1 */
 } lw__shape;
 
 /* A(L); slopes[4] (or NULL; physical only): to size, strain_parameter[0], sigma, strain_parameter[1]. */
@@ -41,17 +41,18 @@ typedef struct lw__separation {
 } lw__separation;
 
 /* By the Voigts of the fit. */
-lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, lw__separation *out, lw_error *err);
+lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, lw__separation *out,
+                                 lw_error *err);
 
 /* What the fit of physical shapes gives besides. */
 typedef struct lw__physical_fit {
-    size_t n_members;            /* strain forms that were fitted */
-    const char *form[4];         /* their names */
+    size_t n_members;    /* strain forms that were fitted */
+    const char *form[4]; /* their names */
     double weight[4], chi2[4];
-    double goodness;             /* chi2 over degrees of freedom of the best */
-    double *covariance;          /* [profiles^2] of the breadths, nm^-2: counting, instrument, choice of form */
-    double *breadth;             /* [profiles], weighted mean */
-    lw__shape *shape[4];         /* [members][profiles] */
+    double goodness;     /* chi2 over degrees of freedom of the best */
+    double *covariance;  /* [profiles^2] of the breadths, nm^-2: counting, instrument, choice of form */
+    double *breadth;     /* [profiles], weighted mean */
+    lw__shape *shape[4]; /* [members][profiles] */
     double *shape_covariance[4]; /* [members][profiles][16]: of size, strain 0, sigma, strain 1 of a line */
 } lw__physical_fit;
 

@@ -1,11 +1,12 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Stokes' quotient of Fourier coefficients, F(L) = H(L)/G(L).
- * The instrument G (widths, axial copies and the whole emission spectrum) has closed coefficients. The observed H is
- * the transform of the line's fitted curve, in closed form, plus that of what the curve left over inside the window:
- * the tails beyond the window, which a window alone would cut (its error grows as 1/window for tails that fall as
- * 1/s^2), are so completed by the curve's shape, and only the data's departure from it is transformed. Sums run over
- * the points as measured, so nothing is interpolated and each point's noise propagates to each coefficient exactly.
- * Beyond the truncation the coefficients are the shape's. */
+ * The instrument G (widths, axial copies and the whole emission spectrum) has closed coefficients. The
+ * observed H is the transform of the line's fitted curve, in closed form, plus that of what the curve left
+ * over inside the window: the tails beyond the window, which a window alone would cut (its error grows as
+ * 1/window for tails that fall as 1/s^2), are so completed by the curve's shape, and only the data's
+ * departure from it is transformed. Sums run over the points as measured, so nothing is interpolated and each
+ * point's noise propagates to each coefficient exactly. Beyond the truncation the coefficients are the
+ * shape's. */
 #include "profile/line_by_line.h"
 
 #include "numeric/cholesky.h"
@@ -55,9 +56,11 @@ static double **waves(const lw__job *job, size_t n, lw_arena *scratch, lw_error 
     return wave;
 }
 
-/* Degrees of freedom that the refold leaves: the kept coefficients follow the residual r by M r, and the expectation
- * of the weighted square of (1 - M) r is n - 2 tr M + tr(M V M' V^-1). M = waves x taken x waves' x steps. */
-static double freedom(const lw__job *job, double *const *wave, const double *taken, size_t last, double *w, double *v)
+/* Degrees of freedom that the refold leaves: the kept coefficients follow the residual r by M r, and the
+ * expectation of the weighted square of (1 - M) r is n - 2 tr M + tr(M V M' V^-1). M = waves x taken x waves'
+ * x steps. */
+static double freedom(const lw__job *job, double *const *wave, const double *taken, size_t last, double *w,
+                      double *v)
 {
     const lw__window *data = &job->data;
     size_t n = data->n;
@@ -71,7 +74,8 @@ static double freedom(const lw__job *job, double *const *wave, const double *tak
             v[i] = wave[a][i] * data->step[i] * data->step[i] * data->own_variance[i];
         }
         for (size_t b = 0; b <= a; b++)
-            sum += (a == b ? 1 : 2) * taken[a / 2] * taken[b / 2] * lw_dot(w, wave[b], n) * lw_dot(v, wave[b], n);
+            sum += (a == b ? 1 : 2) * taken[a / 2] * taken[b / 2] * lw_dot(w, wave[b], n) *
+                   lw_dot(v, wave[b], n);
     }
     return sum;
 }
@@ -82,13 +86,14 @@ static double apodised(const lw__job *job, size_t k, size_t last)
     return job->options->apodise == 0 ? 1 : 0.5 * (1 + cos(M_PI * (double)k / (double)last));
 }
 
-static lw_status refold(const lw__job *job, double *const *wave, const double *r_re, const double *r_im, size_t last,
-                        lw_arena *scratch, lw_error *err)
+static lw_status refold(const lw__job *job, double *const *wave, const double *r_re, const double *r_im,
+                        size_t last, lw_arena *scratch, lw_error *err)
 {
     const lw__window *data = &job->data;
     size_t n = data->n;
     double step = job->profile->length_nm[1];
-    double *taken = lw_arena_take(scratch, last, sizeof *taken, err), *w = lw_arena_take(scratch, n, sizeof *w, err);
+    double *taken = lw_arena_take(scratch, last, sizeof *taken, err),
+           *w = lw_arena_take(scratch, n, sizeof *w, err);
     double *v = lw_arena_take(scratch, n, sizeof *v, err);
     if (taken == NULL || w == NULL || v == NULL)
         return LW_OUT_OF_MEMORY;
@@ -116,9 +121,12 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     const lw__shape *shape = &job->line->shape;
     size_t n = profile->n_coefficients;
     double step = profile->length_nm[1], area = job->line->area_s;
-    double *g_re = lw_arena_take(scratch, n, sizeof *g_re, err), *g_im = lw_arena_take(scratch, n, sizeof *g_im, err);
-    double *h_re = lw_arena_take(scratch, n, sizeof *h_re, err), *h_im = lw_arena_take(scratch, n, sizeof *h_im, err);
-    double *r_re = lw_arena_take(scratch, n, sizeof *r_re, err), *r_im = lw_arena_take(scratch, n, sizeof *r_im, err);
+    double *g_re = lw_arena_take(scratch, n, sizeof *g_re, err),
+           *g_im = lw_arena_take(scratch, n, sizeof *g_im, err);
+    double *h_re = lw_arena_take(scratch, n, sizeof *h_re, err),
+           *h_im = lw_arena_take(scratch, n, sizeof *h_im, err);
+    double *r_re = lw_arena_take(scratch, n, sizeof *r_re, err),
+           *r_im = lw_arena_take(scratch, n, sizeof *r_im, err);
     double **wave = waves(job, n, scratch, err), *by = lw_arena_take(scratch, data->n, sizeof *by, err);
     if (!g_re || !g_im || !h_re || !h_im || !r_re || !r_im || !wave || !by)
         return LW_OUT_OF_MEMORY;
@@ -141,10 +149,12 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
             profile->cosine[k] = (square_sum * g_re[k] + cross * g_im[k]) / square / scale;
             profile->sine[k] = (cross * g_re[k] - square_sum * g_im[k]) / square / scale;
             for (size_t i = 0; i < data->n; i++) {
-                /* 1/G turns the phase back: weight of this point in the real and imaginary part of the quotient; A(L) is
-                 * over A(0), which the same points make */
-                double by_re = (wave[2 * k][i] * g_re[k] + wave[2 * k + 1][i] * g_im[k]) / square - profile->cosine[k];
-                double by_im = (wave[2 * k + 1][i] * g_re[k] - wave[2 * k][i] * g_im[k]) / square - profile->sine[k];
+                /* 1/G turns the phase back: weight of this point in the real and imaginary part of the
+                 * quotient; A(L) is over A(0), which the same points make */
+                double by_re =
+                    (wave[2 * k][i] * g_re[k] + wave[2 * k + 1][i] * g_im[k]) / square - profile->cosine[k];
+                double by_im =
+                    (wave[2 * k + 1][i] * g_re[k] - wave[2 * k][i] * g_im[k]) / square - profile->sine[k];
                 var_re += by_re * by_re * data->step[i] * data->step[i] * data->variance[i];
                 var_im += by_im * by_im * data->step[i] * data->step[i] * data->variance[i];
                 level += by_re * data->step[i];
@@ -163,8 +173,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     }
     answer->from_shape = false;
 
-    /* Height of the pure profile: integral of A over all lengths, beyond the truncation by the shape. As a linear
-     * function of the points its uncertainty needs no covariance of coefficients. */
+    /* Height of the pure profile: integral of A over all lengths, beyond the truncation by the shape. As a
+     * linear function of the points its uncertainty needs no covariance of coefficients. */
     double height = area / job->shape_breadth, plain = height, beyond = height;
     for (size_t i = 0; i < data->n; i++)
         by[i] = 0;
@@ -177,7 +187,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
         plain += departs;
         beyond -= twice * a;
         for (size_t i = 0; i < data->n && first; i++)
-            by[i] += weight * twice * data->step[i] * (wave[2 * k][i] * g_re[k] + wave[2 * k + 1][i] * g_im[k]) / square;
+            by[i] += weight * twice * data->step[i] *
+                     (wave[2 * k][i] * g_re[k] + wave[2 * k + 1][i] * g_im[k]) / square;
     }
     answer->breadth = scale / height;
     if (!first)
@@ -190,8 +201,9 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     }
     variance += level * level * data->background_variance;
 
-    /* What the shape completes is known no better than the shape is right where the data still see it: tails beyond
-     * the window by the outer half of the window, coefficients beyond the truncation by the last quarter kept. */
+    /* What the shape completes is known no better than the shape is right where the data still see it: tails
+     * beyond the window by the outer half of the window, coefficients beyond the truncation by the last
+     * quarter kept. */
     double share, tails = lw__tail_variance(job, &share), sum = 0, weights = 0;
     for (size_t k = last - last / 4; k < last; k++) {
         double a = lw__shape_coefficient(shape, profile->length_nm[k], NULL), u = profile->u_cosine[k];
@@ -205,25 +217,28 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     answer->variance = variance + answer->breadth * answer->breadth * (tails + cuts);
     if (job->options->apodise != 0)
         for (size_t k = 0; k < last; k++) {
-            double a = lw__shape_coefficient(shape, profile->length_nm[k], NULL), weight = apodised(job, k, last);
+            double a = lw__shape_coefficient(shape, profile->length_nm[k], NULL),
+                   weight = apodised(job, k, last);
             profile->cosine[k] = a + weight * (profile->cosine[k] - a);
             profile->sine[k] *= weight;
         }
-    profile->assumed = lw_arena_print(&job->profiles->arena, err,
-                                      "%s; %.2g of the area lies beyond the window and %.2g of the height beyond the "
-                                      "truncation, both by that shape (u of breadth %.2g and %.2g)%s",
-                                      profile->assumed, share, cut, sqrt(tails), sqrt(cuts),
-                                      job->options->apodise != 0 ? "; apodised (Hann)" : "");
+    profile->assumed =
+        lw_arena_print(&job->profiles->arena, err,
+                       "%s; %.2g of the area lies beyond the window and %.2g of the height beyond the "
+                       "truncation, both by that shape (u of breadth %.2g and %.2g)%s",
+                       profile->assumed, share, cut, sqrt(tails), sqrt(cuts),
+                       job->options->apodise != 0 ? "; apodised (Hann)" : "");
     if (profile->assumed != NULL && job->options->apodise != 0)
-        profile->assumed = lw_arena_print(&job->profiles->arena, err, "%s: breadth changed by %+.2g %%", profile->assumed,
-                                          100 * (plain / height - 1));
+        profile->assumed = lw_arena_print(&job->profiles->arena, err, "%s: breadth changed by %+.2g %%",
+                                          profile->assumed, 100 * (plain / height - 1));
     if (profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
     lw_status status = refold(job, wave, r_re, r_im, last, scratch, err);
     return status == LW_OK ? lw__curve_of_coefficients(job->profiles, profile, answer->breadth, err) : status;
 }
 
-static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err)
 {
     return lw__line_by_line(engine, profiles, options, solve, "stokes", err);
 }

@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Regularisation: the departure x of the sample's profile from the completing shape is the one that minimises
- * chi2(x) + alpha |D x|^2, D the derivative of the order asked for with x = 0 outside the window. alpha by the discrepancy
- * principle (chi2 as noise alone would make it) or by generalised cross-validation. Linear in the data, so
- * uncertainties are propagated exactly; what the regularisation keeps back is estimated from the solution. */
+ * chi2(x) + alpha |D x|^2, D the derivative of the order asked for with x = 0 outside the window. alpha by
+ * the discrepancy principle (chi2 as noise alone would make it) or by generalised cross-validation. Linear in
+ * the data, so uncertainties are propagated exactly; what the regularisation keeps back is estimated from the
+ * solution. */
 #include "profile/grid.h"
 
 #include "numeric/cholesky.h"
@@ -90,7 +91,8 @@ static double choose(const solver *s, const lw_deconvolve_options *options, cons
         if (solve_at(s, unit * pow(10, low)) && lw__grid_chi2(s->g, s->x) <= s->g->expected_chi2) {
             for (int i = 0; i < 16; i++) {
                 double middle = 0.5 * (low + high);
-                bool below = solve_at(s, unit * pow(10, middle)) && lw__grid_chi2(s->g, s->x) <= s->g->expected_chi2;
+                bool below =
+                    solve_at(s, unit * pow(10, middle)) && lw__grid_chi2(s->g, s->x) <= s->g->expected_chi2;
                 *(below ? &low : &high) = middle;
             }
             return unit * pow(10, low);
@@ -151,7 +153,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     for (size_t i = 0; i < 3; i++)
         if ((*square[i] = lw_arena_take(scratch, m * m, sizeof(double), err)) == NULL)
             return LW_OUT_OF_MEMORY;
-    double *c = lw_arena_take(scratch, m * m, sizeof *c, err), *zn = lw_arena_take(scratch, m * m, sizeof *zn, err);
+    double *c = lw_arena_take(scratch, m * m, sizeof *c, err),
+           *zn = lw_arena_take(scratch, m * m, sizeof *zn, err);
     if ((s.x = lw_arena_take(scratch, m, sizeof(double), err)) == NULL || c == NULL || zn == NULL)
         return LW_OUT_OF_MEMORY;
     make_penalty(&s, job->options->order);
@@ -183,24 +186,27 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     double share, bias;
     answer->variance = lw__grid_variance(job, &g, s.x, s.z, c, &share, &bias, scratch, err);
     lw__grid_refold(job, &g, s.x, followed);
-    job->profile->assumed = lw_arena_print(&job->profiles->arena, err,
-                                           "%s; departure from that shape smooth in its derivative of order %d, parameter "
-                                           "%.3g by %s%s; %.2g of the breadth remains the shape's, the smoothing may keep "
-                                           "back %.2g nm^-1",
-                                           job->profile->assumed, job->options->order, answer->choice, rule,
-                                           job->options->non_negative ? ", not negative" : "", share, fabs(bias));
+    job->profile->assumed =
+        lw_arena_print(&job->profiles->arena, err,
+                       "%s; departure from that shape smooth in its derivative of order %d, parameter "
+                       "%.3g by %s%s; %.2g of the breadth remains the shape's, the smoothing may keep "
+                       "back %.2g nm^-1",
+                       job->profile->assumed, job->options->order, answer->choice, rule,
+                       job->options->non_negative ? ", not negative" : "", share, fabs(bias));
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
     return lw__grid_coefficients(job, &g, s.x, c, err);
 }
 
-static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options, lw_error *err)
+static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
+                     lw_error *err)
 {
     return lw__line_by_line(engine, profiles, options, solve, "tikhonov", err);
 }
 
 const lw_deconvolution lw_deconvolution_tikhonov = {
     .name = "tikhonov",
-    .source = "Tikhonov (1963) Dokl. Akad. Nauk SSSR 151, 501; discrepancy principle: Morozov (1966) Dokl. Akad. Nauk SSSR 167, "
+    .source = "Tikhonov (1963) Dokl. Akad. Nauk SSSR 151, 501; discrepancy principle: Morozov (1966) Dokl. "
+              "Akad. Nauk SSSR 167, "
               "510; generalised cross-validation: Golub, Heath & Wahba (1979) Technometrics 21, 215",
     .run = run};

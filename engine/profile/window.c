@@ -29,7 +29,8 @@ void lw__instrument_transform(const lw__instrument *instrument, double step, siz
     for (size_t i = 0; i < instrument->n; i++) {
         const lw_voigt_node *node = &instrument->node[i];
         /* equal steps of length: each copy turns and falls by the same factor from one to the next */
-        double fall = exp(-M_PI * (instrument->lorentz + node->lorentz) * d * step), phase = 2 * M_PI * step * d * node->offset;
+        double fall = exp(-M_PI * (instrument->lorentz + node->lorentz) * d * step),
+               phase = 2 * M_PI * step * d * node->offset;
         double turn_re = fall * cos(phase), turn_im = fall * sin(phase), x = node->weight, y = 0;
         for (size_t k = 0; k < n; k++) {
             re[k] += x;
@@ -53,8 +54,9 @@ static void reach(const lw_lines *lines, const lw_line *line, double most, doubl
     double at = line->two_theta.value, doublet = 0;
     const lw_radiation *r = &lines->radiation;
     for (size_t i = 1; i < r->n; i++)
-        doublet = fmax(doublet, 2 * tan(at * degree / 2) *
-                                    (r->component[i].wavelength_nm / r->component[0].wavelength_nm - 1) / degree);
+        doublet =
+            fmax(doublet, 2 * tan(at * degree / 2) *
+                              (r->component[i].wavelength_nm / r->component[0].wavelength_nm - 1) / degree);
     *low = at - most;
     *high = at + doublet + most;
     for (size_t k = 0; k < lines->n; k++) {
@@ -76,13 +78,15 @@ static double background_variance(const lw_lines *lines, double two_theta)
         term[i] = i == 0 ? 1 : i == 1 ? t : 2 * t * term[i - 1] - term[i - 2];
     for (size_t i = 0; i < n; i++)
         for (size_t j = 0; j < n; j++)
-            sum += term[i] * term[j] *
-                   lines->covariance[(lines->at_background + i) * lines->n_parameters + lines->at_background + j];
+            sum +=
+                term[i] * term[j] *
+                lines
+                    ->covariance[(lines->at_background + i) * lines->n_parameters + lines->at_background + j];
     return fmax(sum, 0);
 }
 
-lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation, double breadths,
-                          lw_arena *arena, lw__window *out, lw_error *err)
+lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation,
+                          double breadths, lw_arena *arena, lw__window *out, lw_error *err)
 {
     const lw_lines *lines = profiles->lines;
     const lw_profile *profile = &profiles->profile[which];
@@ -96,7 +100,8 @@ lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__s
     while (end > first && scan->two_theta_deg[end - 1] > high)
         end--;
     size_t n = end - first;
-    double **column[] = {&out->s, &out->step, &out->curve, &out->residual, &out->variance, &out->own_variance};
+    double **column[] = {&out->s,        &out->step,     &out->curve,
+                         &out->residual, &out->variance, &out->own_variance};
     for (size_t i = 0; i < sizeof column / sizeof *column; i++)
         if ((*column[i] = lw_arena_take(arena, n + 1, sizeof(double), err)) == NULL)
             return LW_OUT_OF_MEMORY;
@@ -120,8 +125,8 @@ lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__s
     return LW_OK;
 }
 
-double lw__from_instrument(const lw_profiles *profiles, const lw_profile *a, const double by_a[2], const lw_profile *b,
-                           const double by_b[2])
+double lw__from_instrument(const lw_profiles *profiles, const lw_profile *a, const double by_a[2],
+                           const lw_profile *b, const double by_b[2])
 {
     const lw_width_function *instrument = &profiles->lines->instrument;
     double slope[2][2][LW_WIDTH_PARAMETERS], sum = 0;

@@ -19,27 +19,29 @@ lw_status lw__take_instrument(const lw_profiles *profiles, const lw_profile *pro
                               lw__instrument *out, lw_error *err);
 
 /* G(L) at L = 0, step, ... (n lengths): integral of the profile times exp(+2 pi i L s). */
-void lw__instrument_transform(const lw__instrument *instrument, double step, size_t n, double *re, double *im);
+void lw__instrument_transform(const lw__instrument *instrument, double step, size_t n, double *re,
+                              double *im);
 
 /* Points of one line's window. Intensities have the factor that runs across the line divided out. */
 typedef struct lw__window {
-    size_t n, first;     /* first: of the scan's points */
-    double *s;           /* nm^-1 from the centre of the line's shape */
-    double *step;        /* trapezoid weight, nm^-1 */
-    double *curve;       /* the line alone, of the separation */
-    double *residual;    /* its share of what no curve explains: line's curve over all curves there */
-    double *variance;    /* of a point, whole */
-    double *own_variance; /* of `residual` by counting: share^2 x variance */
+    size_t n, first;            /* first: of the scan's points */
+    double *s;                  /* nm^-1 from the centre of the line's shape */
+    double *step;               /* trapezoid weight, nm^-1 */
+    double *curve;              /* the line alone, of the separation */
+    double *residual;           /* its share of what no curve explains: line's curve over all curves there */
+    double *variance;           /* of a point, whole */
+    double *own_variance;       /* of `residual` by counting: share^2 x variance */
     double background_variance; /* of the level under the line, the same error at every point */
 } lw__window;
 
 /* breadths: half-width in observed breadths, 0 = 8; neighbours end it half-way. */
-lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation, double breadths,
-                          lw_arena *arena, lw__window *out, lw_error *err);
+lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation,
+                          double breadths, lw_arena *arena, lw__window *out, lw_error *err);
 
-/* Slopes of (Gaussian variance, Lorentzian) of the instrument at a line to the nine width parameters, and from
- * them the covariance between two lines of a result whose slopes to these two widths are by_a[2] and by_b[2]. */
-double lw__from_instrument(const lw_profiles *profiles, const lw_profile *a, const double by_a[2], const lw_profile *b,
-                           const double by_b[2]);
+/* Slopes of (Gaussian variance, Lorentzian) of the instrument at a line to the nine width parameters, and
+ * from them the covariance between two lines of a result whose slopes to these two widths are by_a[2] and
+ * by_b[2]. */
+double lw__from_instrument(const lw_profiles *profiles, const lw_profile *a, const double by_a[2],
+                           const lw_profile *b, const double by_b[2]);
 
 #endif

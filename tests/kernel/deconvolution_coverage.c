@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Deconvolution of counts: intervals cover the truth as often as they say, seeds repeat, and what does not refold is
- * refused. The truth is in closed form (see deconvolution_made.h). */
+/* Deconvolution of counts: intervals cover the truth as often as they say, seeds repeat, and what does not
+ * refold is refused. The truth is in closed form (see deconvolution_made.h). */
 #include "kernel/deconvolution_made.h"
 
 static double voigt(double length, double s, const void *user)
@@ -12,8 +12,8 @@ static double voigt(double length, double s, const void *user)
 
 #define TRIALS 200
 
-/* 95 % intervals of the breadth, 200 realisations of one line at two levels of counts. Of 200, between 180 and 198
- * may hold the truth. */
+/* 95 % intervals of the breadth, 200 realisations of one line at two levels of counts. Of 200, between 180
+ * and 198 may hold the truth. */
 static void coverage(void)
 {
     static const double beta[2] = {0.04, 0.03}, height[2] = {800, 12000};
@@ -50,8 +50,10 @@ static void coverage(void)
                 }
                 made_free(scan, lines, p);
             }
-            printf("%-16s %6.0f counts: %3d of %d hold the truth; mean u %.2f %%, error %+.2f %%, scatter %.2f %%\n",
-                   methods[k], height[level], hits, trials, 100 * u / truth, 100 * error / truth, 100 * sqrt(square) / truth);
+            printf("%-16s %6.0f counts: %3d of %d hold the truth; mean u %.2f %%, error %+.2f %%, scatter "
+                   "%.2f %%\n",
+                   methods[k], height[level], hits, trials, 100 * u / truth, 100 * error / truth,
+                   100 * sqrt(square) / truth);
             CHECK(refused == 0);
             CHECK(hits >= 0.90 * trials && hits <= 0.99 * trials + 1);
         }
@@ -59,8 +61,8 @@ static void coverage(void)
     }
 }
 
-/* Lognormal spheres x Gaussian strain, median 10 nm, sigma 0.3, rms strain 0.002: Krill & Birringer (1998) Philos. Mag. A
- * 77, 621; Stokes & Wilson (1944) Proc. Phys. Soc. 56, 174. Exact breadths by mpmath. */
+/* Lognormal spheres x Gaussian strain, median 10 nm, sigma 0.3, rms strain 0.002: Krill & Birringer (1998)
+ * Philos. Mag. A 77, 621; Stokes & Wilson (1944) Proc. Phys. Soc. 56, 174. Exact breadths by mpmath. */
 static double spheres(double length, double s, const void *user)
 {
     const double *p = user;
@@ -77,7 +79,8 @@ static double spheres(double length, double s, const void *user)
 
 static void physical_coverage(void)
 {
-    static const double sample[3] = {10, 0.3, 0.002}, truth[2] = {0.101924542322, 0.103386069622}; /* 111, 200 */
+    static const double sample[3] = {10, 0.3, 0.002},
+                        truth[2] = {0.101924542322, 0.103386069622}; /* 111, 200 */
     static const double height[2] = {800, 12000};
     static const char *const methods[] = {"physical", "stokes"};
     for (int level = 0; level < 2; level++) {
@@ -97,7 +100,8 @@ static void physical_coverage(void)
                 lw_scan *scan = NULL;
                 lw_lines *lines;
                 lw_profiles *p;
-                CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) == LW_OK);
+                CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) ==
+                      LW_OK);
                 for (size_t i = 0; p != NULL && i < p->n && i < 2; i++) {
                     lw_quantity b = p->profile[i].breadth_s;
                     hits += fabs(b.value - truth[i]) < 1.96 * b.u;
@@ -108,8 +112,10 @@ static void physical_coverage(void)
                 }
                 made_free(scan, lines, p);
             }
-            printf("%-16s %6.0f counts: %3d of %d hold the truth (spheres); mean u %.2f %%, error %+.2f %%, scatter %.2f %%\n",
-                   methods[k], height[level], hits, of, 100 * u / of, 100 * error / of, 100 * sqrt(square / of));
+            printf("%-16s %6.0f counts: %3d of %d hold the truth (spheres); mean u %.2f %%, error %+.2f %%, "
+                   "scatter %.2f %%\n",
+                   methods[k], height[level], hits, of, 100 * u / of, 100 * error / of,
+                   100 * sqrt(square / of));
             CHECK(hits >= 0.90 * of && hits <= 0.99 * of + 1);
         }
         made_end(&m);
@@ -132,7 +138,8 @@ static void refusals(void)
     lw_width_function wide = m.instrument;
     wide.value[LW_W] *= 4;
     wide.value[LW_Z] *= 2;
-    static const char *const methods[] = {"convolution", "stokes", "tikhonov", "richardson_lucy", "maximum_entropy"};
+    static const char *const methods[] = {"convolution", "stokes", "tikhonov", "richardson_lucy",
+                                          "maximum_entropy"};
     for (int k = 0; k < 5; k++) {
         lw_random random;
         lw_random_begin(&random, 7, 0);
@@ -169,7 +176,8 @@ static void refusals(void)
         err = LW_ERROR_NONE;
         scan = NULL;
         options.method = made_method(methods[k]);
-        CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) == LW_REFOLD_FAILED);
+        CHECK(made_deconvolve(&m, &random, &m.instrument, &options, &scan, &lines, &p, &err) ==
+              LW_REFOLD_FAILED);
         CHECK_CONTAINS(lw_error_text(&err, text, sizeof text), "the scan ends within 111");
         CHECK_CONTAINS(text, "accept_refold = true");
         made_free(scan, lines, p);
@@ -237,10 +245,13 @@ static void choices(void)
             snprintf(order, sizeof order, "derivative of order %d", i % 3);
             CHECK_NEAR(line->breadth_s.value, truth, 3 * line->breadth_s.u);
             CHECK(line->breadth_s.u < 0.03 * truth);
-            CHECK(line->refold_p > 1e-3 && line->refold_freedom > 100 && line->refold_freedom <= (double)line->refold_points);
+            CHECK(line->refold_p > 1e-3 && line->refold_freedom > 100 &&
+                  line->refold_freedom <= (double)line->refold_points);
             if (i < 8) {
                 CHECK_CONTAINS(line->assumed, order);
-                CHECK_CONTAINS(line->assumed, i == 7 ? "as given" : i / 3 == 1 ? "cross-validation" : "discrepancy principle");
+                CHECK_CONTAINS(line->assumed, i == 7       ? "as given"
+                                              : i / 3 == 1 ? "cross-validation"
+                                                           : "discrepancy principle");
             } else {
                 CHECK_CONTAINS(line->assumed, "apodised (Hann): breadth changed by");
                 CHECK(fabs(line->cosine[line->truncated_at - 1] -
@@ -263,7 +274,8 @@ static void choices(void)
     fit.shape = 3;
     fit.intensity_factor = 1;
     CHECK(lw_scan_make(&m.engine, "made", m.n, m.two_theta, m.noisy, NULL, &reading, &scan, &err) == LW_OK);
-    CHECK(lw_fit_lines(&m.engine, scan, m.reflection, m.n_reflections, &m.material, &fit, &lines, &err) == LW_OK);
+    CHECK(lw_fit_lines(&m.engine, scan, m.reflection, m.n_reflections, &m.material, &fit, &lines, &err) ==
+          LW_OK);
     lw_deconvolve_options options = lw_deconvolve_defaults();
     CHECK(lines != NULL && lw_deconvolve(&m.engine, lines, NULL, &options, &p, &err) == LW_NOT_SUPPORTED);
     CHECK_CONTAINS(lw_error_text(&err, text, sizeof text), "without an instrument");

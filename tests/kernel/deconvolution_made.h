@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Makes scans of one powder by Fourier synthesis, apart from the engine's line profiles: the coefficients of the sample
- * times those of a Voigt instrument, summed over lengths at every point. */
+/* Makes scans of one powder by Fourier synthesis, apart from the engine's line profiles: the coefficients of
+ * the sample times those of a Voigt instrument, summed over lengths at every point. */
 #ifndef LW_TESTS_DECONVOLUTION_MADE_H
 #define LW_TESTS_DECONVOLUTION_MADE_H
 
@@ -42,18 +42,18 @@ static inline void made_begin(made *m, double a, double gauss_deg, double lorent
     m->instrument.value[LW_Z] = lorentz_deg;
 }
 
-/* Noise-free scan from low to high (deg); `height` counts on the strongest line over `background`; u: the standard
- * uncertainty of every point relative to `height` (0: counts). */
-static inline void made_scan(made *m, double low, double high, double step, double height, double background, double u,
-                             made_coefficient *coefficient, const void *user)
+/* Noise-free scan from low to high (deg); `height` counts on the strongest line over `background`; u: the
+ * standard uncertainty of every point relative to `height` (0: counts). */
+static inline void made_scan(made *m, double low, double high, double step, double height, double background,
+                             double u, made_coefficient *coefficient, const void *user)
 {
     lw_error err = LW_ERROR_NONE;
     m->n = (size_t)((high - low) / step + 1.5);
     double **column[] = {&m->two_theta, &m->clean, &m->noisy, &m->sigma};
     for (int i = 0; i < 4; i++)
         *column[i] = lw_arena_take(&m->arena, m->n, sizeof(double), &err);
-    CHECK(lw_reflections(&m->material, MADE_WAVELENGTH, low, high, &m->arena, &m->reflection, &m->n_reflections, &err) ==
-          LW_OK);
+    CHECK(lw_reflections(&m->material, MADE_WAVELENGTH, low, high, &m->arena, &m->reflection,
+                         &m->n_reflections, &err) == LW_OK);
     const double delta = 0.02; /* nm: the synthesis repeats every 50 nm^-1 */
     double top = 0;
     for (size_t k = 0; k < m->n_reflections; k++) {
@@ -63,9 +63,9 @@ static inline void made_scan(made *m, double low, double high, double step, doub
         double *a = malloc(200000 * sizeof *a);
         for (; terms < 200000; terms++) {
             double length = delta * (double)terms;
-            a[terms] = coefficient(length, s0, user) * exp(-pi * m->instrument.value[LW_Z] * d * length -
-                                                           pi * pi / (4 * M_LN2) * m->instrument.value[LW_W] * d * d *
-                                                               length * length);
+            a[terms] = coefficient(length, s0, user) *
+                       exp(-pi * m->instrument.value[LW_Z] * d * length -
+                           pi * pi / (4 * M_LN2) * m->instrument.value[LW_W] * d * d * length * length);
             if (a[terms] < 1e-15)
                 break;
         }
@@ -94,8 +94,8 @@ static inline void made_scan(made *m, double low, double high, double step, doub
 /* Fits the made scan (or noisy counts of it) and deconvolves. random NULL: noise-free. Returns the status of
  * lw_deconvolve; *lines and *profiles are the caller's, as is *scan. */
 static inline lw_status made_deconvolve(made *m, lw_random *random, const lw_width_function *instrument,
-                                        const lw_deconvolve_options *options, lw_scan **scan, lw_lines **lines,
-                                        lw_profiles **profiles, lw_error *err)
+                                        const lw_deconvolve_options *options, lw_scan **scan,
+                                        lw_lines **lines, lw_profiles **profiles, lw_error *err)
 {
     lw_scan_options reading = lw_scan_defaults();
     reading.radiation = &m->radiation;
@@ -103,15 +103,17 @@ static inline lw_status made_deconvolve(made *m, lw_random *random, const lw_wid
     *profiles = NULL;
     for (size_t i = 0; i < m->n; i++)
         m->noisy[i] = random != NULL ? lw_random_poisson(random, m->clean[i]) : m->clean[i];
-    lw_status status = lw_scan_make(&m->engine, "made", m->n, m->two_theta, m->noisy,
-                                    random != NULL || m->sigma[0] == 0 ? NULL : m->sigma, &reading, scan, err);
+    lw_status status =
+        lw_scan_make(&m->engine, "made", m->n, m->two_theta, m->noisy,
+                     random != NULL || m->sigma[0] == 0 ? NULL : m->sigma, &reading, scan, err);
     lw_fit_options fit = lw_fit_defaults();
     fit.instrument = instrument;
     fit.intensity_factor = 1; /* none */
     fit.widths = 1;           /* free */
     fit.background_terms = 2;
     if (status == LW_OK)
-        status = lw_fit_lines(&m->engine, *scan, m->reflection, m->n_reflections, &m->material, &fit, lines, err);
+        status =
+            lw_fit_lines(&m->engine, *scan, m->reflection, m->n_reflections, &m->material, &fit, lines, err);
     if (status == LW_OK)
         status = lw_deconvolve(&m->engine, *lines, NULL, options, profiles, err);
     return status;

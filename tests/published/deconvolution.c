@@ -1,9 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Deconvolution against transform pairs in closed form, without noise.
- * Lorentzian and exponential columns: A = exp(-2 beta L) = exp(-L/D), L_A = D, L_V = 2 D. Gaussian: exp(-pi beta^2 L^2).
- * Lognormal spheres: A(L), L_A and L_V of Krill & Birringer (1998) Philos. Mag. A 77, 621; digits by mpmath. With Gaussian
- * strain: Stokes & Wilson (1944) Proc. Phys. Soc. 56, 174. Voigts: integral breadths of Lorentzian parts add, of Gaussian
- * parts add in squares (Langford 1978 J. Appl. Cryst. 11, 10). */
+ * Lorentzian and exponential columns: A = exp(-2 beta L) = exp(-L/D), L_A = D, L_V = 2 D. Gaussian: exp(-pi
+ * beta^2 L^2). Lognormal spheres: A(L), L_A and L_V of Krill & Birringer (1998) Philos. Mag. A 77, 621;
+ * digits by mpmath. With Gaussian strain: Stokes & Wilson (1944) Proc. Phys. Soc. 56, 174. Voigts: integral
+ * breadths of Lorentzian parts add, of Gaussian parts add in squares (Langford 1978 J. Appl. Cryst. 11, 10).
+ */
 #include "kernel/deconvolution_made.h"
 
 static double voigt(double length, double s, const void *user)
@@ -78,7 +79,8 @@ static double spheres_coefficient(double length, double s, const void *user)
     return sum / moment[3] * exp(-2 * M_PI * M_PI * p->strain * p->strain * s * s * length * length);
 }
 
-/* Median 10 nm, sigma 0.3, rms strain 0.002, a = 0.3615 nm: exact breadths of 111 and 222 (mpmath), and coefficients. */
+/* Median 10 nm, sigma 0.3, rms strain 0.002, a = 0.3615 nm: exact breadths of 111 and 222 (mpmath), and
+ * coefficients. */
 static void spheres_with_strain(void)
 {
     static const spheres sample = {10, 0.3, 0.002};
@@ -103,7 +105,8 @@ static void spheres_with_strain(void)
                 continue;
             CHECK_RELATIVE(line->breadth_s.value, breadth[which], tolerance);
             for (size_t j = 0; j + 1 < line->n_coefficients && j < line->truncated_at; j++)
-                CHECK_NEAR(line->cosine[j], spheres_coefficient(line->length_nm[j], 1 / r->d_nm, &sample), 10 * tolerance);
+                CHECK_NEAR(line->cosine[j], spheres_coefficient(line->length_nm[j], 1 / r->d_nm, &sample),
+                           10 * tolerance);
         }
         made_free(scan, lines, p);
     }
@@ -133,8 +136,8 @@ static void spheres_alone(void)
     made_end(&m);
 }
 
-/* Instrument g_L, g_G = 0.02, 0.06 deg; sample f = 0.15, 0.08 (breadth 0.194043563368); observed 0.17, 0.10 (breadth
- * 0.227782479346): fitting, Stokes and subtraction of breadths agree. */
+/* Instrument g_L, g_G = 0.02, 0.06 deg; sample f = 0.15, 0.08 (breadth 0.194043563368); observed 0.17, 0.10
+ * (breadth 0.227782479346): fitting, Stokes and subtraction of breadths agree. */
 static void voigts_add(void)
 {
     made m;

@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Breadths and coefficients against ray-traced scans whose samples are known (tests/data/raytraced/SOURCE.md): nickel
- * as lognormal spheres with a random field of displacements, ceria as spheres without strain, nickel with strain alone.
- * The instrument comes from the ray-traced scan of lanthanum hexaboride, as an analyst would take it. */
+/* Breadths and coefficients against ray-traced scans whose samples are known
+ * (tests/data/raytraced/SOURCE.md): nickel as lognormal spheres with a random field of displacements, ceria
+ * as spheres without strain, nickel with strain alone. The instrument comes from the ray-traced scan of
+ * lanthanum hexaboride, as an analyst would take it. */
 #include "check.h"
 #include "numeric/voigt.h"
 #include "physics/size_distribution.h"
@@ -80,14 +81,15 @@ static lw_lines *fit(lw_scan *scan, double edge_nm)
 {
     lw_error err = LW_ERROR_NONE;
     char text[600];
-    lw_material material = {.name = "sample", .space_group = 225, .cell = {edge_nm, edge_nm, edge_nm, 90, 90, 90, 0, 0, 0}};
+    lw_material material = {
+        .name = "sample", .space_group = 225, .cell = {edge_nm, edge_nm, edge_nm, 90, 90, 90, 0, 0, 0}};
     lw_arena arena;
     lw_reflection *reflection;
     size_t n;
     lw_arena_begin(&arena, &engine);
     lw_material_settle(&material, &err);
-    lw_reflections(&material, lw_radiation_wavelength(&copper), scan->two_theta_deg[0], scan->two_theta_deg[scan->n - 1],
-                   &arena, &reflection, &n, &err);
+    lw_reflections(&material, lw_radiation_wavelength(&copper), scan->two_theta_deg[0],
+                   scan->two_theta_deg[scan->n - 1], &arena, &reflection, &n, &err);
     double *shift = lw_arena_take(&arena, n, sizeof *shift, &err);
     for (size_t i = 0; i < n; i++)
         shift[i] = lw_aberrations_shift(&calibration->aberrations, reflection[i].two_theta_deg, NULL);
@@ -120,7 +122,8 @@ static lw_profiles *deconvolve(const lw_lines *lines, const char *method)
     }
     clock_gettime(CLOCK_MONOTONIC, &to);
     printf("  %-16s %6.1f ms a line:", method,
-           1e3 * ((double)(to.tv_sec - from.tv_sec) + 1e-9 * (double)(to.tv_nsec - from.tv_nsec)) / (double)profiles->n);
+           1e3 * ((double)(to.tv_sec - from.tv_sec) + 1e-9 * (double)(to.tv_nsec - from.tv_nsec)) /
+               (double)profiles->n);
     return profiles;
 }
 
@@ -136,8 +139,11 @@ static void check_breadths(const lw_profiles *profiles, const char *truth, allow
         const lw_reflection *r = &profile->line->reflection;
         int code = 100 * r->h + 10 * r->k + r->l;
         double want = true_breadth(truth, r->h, r->k, r->l), off = profile->breadth_s.value / want - 1;
-        double most = code == 222 ? allow.h222 : code == 331 ? allow.h331 : code == 400 ? allow.h400
-                      : code == 111 || code == 200 || code == 220 || code == 311 ? allow.main : 0;
+        double most = code == 222                                                ? allow.h222
+                      : code == 331                                              ? allow.h331
+                      : code == 400                                              ? allow.h400
+                      : code == 111 || code == 200 || code == 220 || code == 311 ? allow.main
+                                                                                 : 0;
         if (isnan(want))
             continue;
         printf(" %d%d%d %+.1f(%.1f)", r->h, r->k, r->l, 100 * off, 100 * profile->breadth_s.u / want);
@@ -156,7 +162,8 @@ static void check_coefficients(const lw_profiles *profiles, const char *truth)
     double sigma = atof(strchr(strstr(truth, "\"sigma_ln\""), ':') + 1);
     /* of the very crystals: their size_volume, not that of the distribution they were drawn from */
     lw_spheres spheres = {.median_nm = median, .sigma = sigma};
-    spheres.median_nm *= atof(strchr(strstr(truth, "\"size_volume\""), ':') + 1) / lw_spheres_size_volume(&spheres, NULL);
+    spheres.median_nm *=
+        atof(strchr(strstr(truth, "\"size_volume\""), ':') + 1) / lw_spheres_size_volume(&spheres, NULL);
     for (size_t i = 0; i < profiles->n; i++) {
         const lw_profile *profile = &profiles->profile[i];
         const lw_reflection *r = &profile->line->reflection;
@@ -187,8 +194,11 @@ int main(void)
     CHECK(lw_radiation_settle(&copper, &err) == LW_OK);
     lw_scan *scan = read_scan("scripts/demo", "lab6_after_service");
     /* SRM 660c: a = 0.415682 6 nm (certificate) */
-    lw_standard standard = {.name = "lab6-660c", .material = {.name = "lab6", .space_group = 221,
-                            .cell = {0.4156826, 0.4156826, 0.4156826, 90, 90, 90, 4e-7, 4e-7, 4e-7}}};
+    lw_standard standard = {
+        .name = "lab6-660c",
+        .material = {.name = "lab6",
+                     .space_group = 221,
+                     .cell = {0.4156826, 0.4156826, 0.4156826, 90, 90, 90, 4e-7, 4e-7, 4e-7}}};
     lw_material_settle(&standard.material, &err);
     lw_arena arena;
     lw_arena_begin(&arena, &engine);
@@ -217,10 +227,19 @@ int main(void)
         {"scripts/demo", "nickel_milled_08h", 0.35238, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
         {"scripts/demo", "nickel_milled_16h", 0.35238, {0.04, 0.04, 0.05, 0}, {0.04, 0.08, 0.06, 0}},
         {"scripts/demo", "nickel_milled_32h", 0.35238, {0.02, 0.04, 0.05, 0}, {0.04, 0.08, 0.06, 0}},
-        {"tests/data/raytraced", "ceria_size_only", 0.5411651, {0.01, 0.02, 0.02, 0.02}, {0.01, 0.02, 0.02, 0.02}},
-        {"tests/data/raytraced", "ni_strain_only", 0.35238, {0.01, 0.02, 0.02, 0.02}, {0.02, 0.02, 0.02, 0.02}},
+        {"tests/data/raytraced",
+         "ceria_size_only",
+         0.5411651,
+         {0.01, 0.02, 0.02, 0.02},
+         {0.01, 0.02, 0.02, 0.02}},
+        {"tests/data/raytraced",
+         "ni_strain_only",
+         0.35238,
+         {0.01, 0.02, 0.02, 0.02},
+         {0.02, 0.02, 0.02, 0.02}},
     };
-    static const char *const methods[] = {"physical", "stokes", "tikhonov", "maximum_entropy", "richardson_lucy"};
+    static const char *const methods[] = {"physical", "stokes", "tikhonov", "maximum_entropy",
+                                          "richardson_lucy"};
     for (size_t i = 0; i < sizeof scans / sizeof *scans; i++) {
         lw_scan *sample = read_scan(scans[i].folder, scans[i].name);
         lw_lines *fitted = fit(sample, scans[i].edge);
