@@ -3,6 +3,7 @@
 #include "instrument/calibration_record.h"
 
 #include "instrument/calibration_optical.h"
+#include "instrument/purity.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -248,6 +249,7 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
     write_covariance(calibration, root, err);
     write_lines(rows, root, err);
     write_choice(set, rows, root, err);
+    lw_purity(calibration->arena.engine, lines, root, err);
     group = lw_add_group(root, "fit", err);
     lw_add_number(group, "rwp", lines->rwp, err);
     lw_add_number(group, "rexp", lines->rexp, err);

@@ -126,3 +126,54 @@ describe("the optical profile", function()
     assert.error_matches(with { refine = { "slit_with" } }, "slit_with")
   end)
 end)
+
+describe("spectral purity", function()
+  local scan, lines
+  local function fit(of)
+    return lw.fit_lines(of, lw.standard("lab6-660c"):reflections(of), { widths = "smooth", axial = "soller" })
+  end
+  setup(function()
+    scan = lw.read_scan(helper.demo .. "/lab6_after_service.xy", { radiation = "Cu Ka" })
+    lines = fit(scan)
+  end)
+
+  -- Lorentz-polarisation factor of a powder
+  local function factor(two_theta)
+    local theta = math.rad(two_theta / 2)
+    return (1 + math.cos(2 * theta) ^ 2) / (math.sin(theta) ^ 2 * math.cos(theta))
+  end
+
+  -- The scan with K-beta lines of a share of each line's area, pseudo-Voigt in shape.
+  local function with_beta(share)
+    local ratio = scan.radiation.k_beta_nm / scan.radiation.wavelength_nm
+    local extra = {}
+    for i = 1, scan.n do extra[i] = 0 end
+    local step = (scan.two_theta[scan.n] - scan.two_theta[1]) / (scan.n - 1)
+    for _, line in ipairs(lines) do
+      local place = 2 * math.deg(math.asin(ratio * math.sin(math.rad(line.two_theta.value / 2))))
+      local width = line.fwhm.value + 0.6 * math.deg(2 * math.tan(math.rad(place / 2)) * 4e-4)
+      local area = share * line.area.value * factor(place) / factor(line.two_theta.value)
+      local middle = math.floor((place - scan.two_theta[1]) / step + 1.5)
+      for i = math.max(1, middle - 200), math.min(scan.n, middle + 200) do
+        local x = (scan.two_theta[i] - place) / width
+        local gauss, lorentz = 0.9394 * math.exp(-4 * math.log(2) * x * x), 0.6366 / (1 + 4 * x * x)
+        extra[i] = extra[i] + area / width * (0.7 * gauss + 0.3 * lorentz)
+      end
+    end
+    local intensity = scan.intensity:map(function(counts, i) return math.floor(counts + extra[i] + 0.5) end)
+    local made = lw.scan { two_theta = scan.two_theta, intensity = intensity, radiation = "Cu Ka" }
+    return lw.calibrate(fit(made), "lab6-660c", { goniometer_radius = 217.5 }).record.purity
+  end
+
+  it("is a limit where nothing is seen, and a share where something is", function()
+    local pure = with_beta(0)
+    assert.are.equal("K-beta", pure[1].line)
+    for i = 1, #pure do
+      assert.are.equal("upper limit", pure[i].relative_intensity.kind, pure[i].line)
+      assert.is_true(pure[i].relative_intensity.value < 0.001, pure[i].line)
+    end
+    local beta = with_beta(0.01)[1].relative_intensity
+    assert.are.equal("value", beta.kind)
+    assert.is_near(0.01, beta.value, 0.0015) -- the shapes differ
+  end)
+end)
