@@ -3,7 +3,7 @@
  * under a user who stops at the nth poll. Either must come back as its own status with a message, give every
  * byte back, and leave the next run as good as the first. The allocator also holds every caller to the
  * size that it took.
- *   test_refusals [seconds]   how long to sweep; 20 by default, spread over all n */
+ *   test_refusals [seconds]   how long to sweep; 20 by default, spread over all n; 0 = every n */
 #include "check.h"
 
 #include "base/engine.h"
@@ -177,14 +177,15 @@ static double now(void)
 }
 
 /* A fault at n = 1, then at steps that grow so that the sweep fits the time, up to `most`. */
-static void sweep(long most, bool refuse, bool keep, double one_run_s, double seconds)
+static long sweep(long most, bool refuse, bool keep, double one_run_s, double seconds)
 {
+    long points = 0;
     double runs = seconds / (one_run_s > 1e-4 ? one_run_s : 1e-4);
-    long step = (long)((double)most / (runs > 1.0 ? runs : 1.0)) + 1;
+    long step = seconds > 0 ? (long)((double)most / (runs > 1.0 ? runs : 1.0)) + 1 : 1;
     /* a step that shares no factor with what a loop of the engine repeats */
     if (step > 1 && step % 2 == 0)
         step++;
-    for (long at = 1; at <= most; at += step) {
+    for (long at = 1; at <= most; at += step, points++) {
         account a = {.refuse_at = refuse ? at : 0, .keep_refusing = keep, .stop_at = refuse ? 0 : at};
         road out;
         lw_error err;
@@ -201,6 +202,7 @@ static void sweep(long most, bool refuse, bool keep, double one_run_s, double se
             fprintf(stderr, "  %zu bytes kept after %s %ld\n", a.held, refuse ? "refusal" : "stop", at);
         CHECK(a.wrong_sizes == 0);
     }
+    return points;
 }
 
 int main(int argc, char **argv)
@@ -225,9 +227,10 @@ int main(int argc, char **argv)
     CHECK(first.lines == 5); /* 111, 200, 220, 311, 222 of nickel below 99 deg */
     printf("%ld requests and %ld polls in %.3f s\n", sound.requests, sound.polls, took);
 
-    sweep(sound.requests, true, false, took, seconds / 3);
-    sweep(sound.requests, true, true, took, seconds / 3);
-    sweep(sound.polls, false, false, took, seconds / 3);
+    long single = sweep(sound.requests, true, false, took, seconds / 3);
+    long lasting = sweep(sound.requests, true, true, took, seconds / 3);
+    long stops = sweep(sound.polls, false, false, took, seconds / 3);
+    printf("%ld single refusals, %ld lasting ones, %ld stops\n", single, lasting, stops);
 
     account again = {0};
     road last;
