@@ -77,5 +77,9 @@ for _, figure in ipairs {
 } do
   if figure then items[#items + 1] = figure end
 end
-items[#items + 1] = record[job.ways[1]]
-job:write({ ways = record }, lw.report(items))
+local main = record[job.ways[1]]
+items[#items + 1] = main
+job:write({
+  lines = main.lines, methods = main.methods, lattice = main.lattice, agreement = main.agreement, notes = main.notes,
+  ways = record,
+}, lw.report(items))

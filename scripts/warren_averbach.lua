@@ -30,7 +30,9 @@ local profiles = lw.deconvolve(lines, { method = job.deconvolve })
 local result   = lw.warren_averbach(profiles, {
   form = job.form, lines = job.lines or nil, length_most = job.length_most or nil,
 })
+local rest     = lw.separate(profiles, { methods = "lattice" }) -- lines and cell, for the record
 print(result)
+
 
 local items = { title = "Warren-Averbach: " .. powder.title, subtitle = scan.file }
 if powder.hazard ~= "" then
@@ -39,4 +41,7 @@ end
 for _, item in ipairs { result, profiles, lines } do
   items[#items + 1] = item
 end
-job:write({ methods = { warren_averbach = result } }, lw.report(items))
+job:write({
+  lines = rest.lines, methods = { warren_averbach = result }, lattice = rest.lattice, agreement = rest.agreement,
+  notes = rest.notes,
+}, lw.report(items))

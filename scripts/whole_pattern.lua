@@ -27,7 +27,9 @@ scan = scan:crop(math.max(valid[1] - margin, scan.two_theta[1]), math.min(valid[
 local lines    = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
 local profiles = lw.deconvolve(lines, { method = "convolution", accept_refold = true }) -- a start, no more
 local result   = lw.whole_pattern(profiles, { strain = job.strain, anisotropy = job.anisotropy })
+local rest     = lw.separate(profiles, { methods = "lattice" }) -- lines and cell, for the record
 print(result)
+
 
 local items = { title = "Whole pattern: " .. powder.title, subtitle = scan.file }
 if powder.hazard ~= "" then
@@ -36,4 +38,7 @@ end
 for _, item in ipairs { result, lines } do
   items[#items + 1] = item
 end
-job:write({ methods = { whole_pattern = result } }, lw.report(items))
+job:write({
+  lines = rest.lines, methods = { whole_pattern = result }, lattice = rest.lattice, agreement = rest.agreement,
+  notes = rest.notes,
+}, lw.report(items))

@@ -17,12 +17,23 @@ describe("the recipe", function()
   end)
   teardown(function() helper.remove(folder) end)
 
+  -- fields of linewright/results/1
+  local function complete(name)
+    local r = record.read(folder .. "/" .. name .. "/results.json")
+    assert.are.equal("linewright/results/1", r.schema)
+    for _, field in ipairs { "lines", "methods", "lattice", "agreement", "provenance" } do
+      assert.is_table(r[field], field)
+    end
+    assert.is_true(#r.lines >= 6)
+    return r
+  end
+
   it("warren_averbach tells size, strain, columns and what is not determined, with its figures", function()
     local code, out, err = recipe "warren_averbach"
     assert.are.same({ 0, "" }, { code, err })
     assert.matches("size_area", out)
     assert.matches("strain_not_determined", out)
-    local r = record.read(folder .. "/warren_averbach/results.json").methods.warren_averbach
+    local r = complete("warren_averbach").methods.warren_averbach
     assert.are.equal("nm", r.size_area.unit)
     assert.is_true(r.size_area.u > 0)
     assert.is_nil(r.size_volume)
@@ -48,7 +59,7 @@ describe("the recipe", function()
   it("whole_pattern tells the distribution, the forms of strain and their covariance", function()
     local code, _, err = recipe "whole_pattern"
     assert.are.same({ 0, "" }, { code, err })
-    local r = record.read(folder .. "/whole_pattern/results.json").methods.whole_pattern
+    local r = complete("whole_pattern").methods.whole_pattern
     for _, name in ipairs { "size_volume", "size_area", "diameter_mean", "diameter_dispersion", "strain_rms" } do
       assert.is_true(r[name].u > 0, name)
     end
@@ -69,7 +80,7 @@ describe("the recipe", function()
                              "Whole pattern +none: the counts" } do
       assert.matches(words, out)
     end
-    local ways = record.read(folder .. "/compare_methods/results.json").ways
+    local ways = complete("compare_methods").ways
     assert.is_table(ways.stokes.methods.warren_averbach)
     assert.is_true(helper.exists(folder .. "/compare_methods/figures/compared_size_area.svg"))
   end)
