@@ -121,6 +121,8 @@ static const char *unit_of(const char *name)
 {
     if (strncmp(name, "soller", 6) == 0)
         return "rad";
+    if (strcmp(name, "attenuation") == 0)
+        return "mm^-1";
     return strcmp(name, "divergence") == 0 || strcmp(name, "tilt") == 0 || strcmp(name, "gauss") == 0 ? "deg" : "mm";
 }
 
@@ -139,7 +141,6 @@ void lw__optical_write(const lw_calibration *calibration, const lw_refined *refi
                         lw_quantity_of(*lw_geometry_field(&g, lw_geometry_names[i]), u, unit_of(lw_geometry_names[i])), NULL,
                         err);
     }
-    lw_add_quantity(group, "attenuation", lw_quantity_of(g.attenuation, 0, "mm^-1"), NULL, err);
     lw_add_quantity(group, "thickness", lw_quantity_of(g.thickness, 0, "mm"), NULL, err);
     lw_node *list = lw_add_list(group, "refined", err);
     for (size_t i = 0; i < calibration->n_refined; i++)
@@ -161,7 +162,6 @@ lw_status lw__optical_read(lw_engine *engine, const lw_node *optical, const char
 {
     lw_geometry *g = &calibration->optical;
     *g = (lw_geometry){.radius = calibration->aberrations.radius_mm,
-                       .attenuation = lw_node_number(optical, "attenuation", NAN),
                        .thickness = lw_node_number(optical, "thickness", NAN)};
     for (size_t i = 0; lw_geometry_names[i] != NULL; i++)
         *lw_geometry_field(g, lw_geometry_names[i]) = lw_node_number(optical, lw_geometry_names[i], NAN);

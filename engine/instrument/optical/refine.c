@@ -24,12 +24,13 @@ static const struct {
               {"soller_incident", AT(soller_incident), 4e-4, 0.002, 0.25},
               {"soller_diffracted", AT(soller_diffracted), 4e-4, 0.002, 0.25},
               {"tilt", AT(tilt_deg), 0.005, 0, 2},
+              {"attenuation", AT(attenuation), 0.05, 0.2, 1000},
               {"gauss", AT(gauss_deg), 5e-4, 0, 0.5}};
 enum { FIELDS = sizeof fields / sizeof *fields };
 
 const char *const lw_geometry_names[] = {"source_width",    "slit_width",      "divergence",      "source_length",
                                          "specimen_length", "slit_length",     "soller_incident", "soller_diffracted",
-                                         "tilt",            "gauss",           NULL};
+                                         "tilt",            "attenuation",     "gauss",           NULL};
 
 double *lw_geometry_field(lw_geometry *geometry, const char *name)
 {
@@ -304,7 +305,7 @@ lw_status lw_geometry_refine(lw_engine *engine, const lw_lines *lines, const lw_
         if (q->field[i] == FIELDS)
             status = lw_fail(err, LW_BAD_ARGUMENT,
                              "choose from: source_width, slit_width, divergence, source_length, specimen_length, "
-                             "slit_length, soller_incident, soller_diffracted, tilt, gauss",
+                             "slit_length, soller_incident, soller_diffracted, tilt, attenuation, gauss",
                              "optics: unknown quantity '%s'", options->name[i]);
     }
     const lw_scan *scan = lines->scan;
