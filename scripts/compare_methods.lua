@@ -51,21 +51,32 @@ for _, row in ipairs(rows) do
     tostring(row.size_area or "-"), tostring(row.strain_rms or "-")))
 end
 
--- Values with 2 u beside each other, a field a figure.
+-- Values with 2 u beside each other, a field a figure, the ways of each method side by side.
 local function compared(field, label, unit)
-  local x, y, u, names = {}, {}, {}, {}
+  local series, by_way, shift, place, count, names = {}, {}, {}, {}, 0, {}
   for _, row in ipairs(rows) do
     local q = row[field]
     if q and q.kind == "value" and q.value == q.value then
-      x[#x + 1], y[#y + 1], u[#u + 1] = #x + 1, q.value, 2 * q.u
-      names[#names + 1] = { x = #x, y = q.value, text = row.method .. ", " .. row.way }
+      if not place[row.method] then
+        count = count + 1
+        place[row.method] = count
+        names[#names + 1] = { x = count, y = q.value, text = row.method:match "^[^(]*" }
+      end
+      local one = by_way[row.way]
+      if not one then
+        one = { kind = "points", label = row.way .. ", 2 u", x = {}, y = {}, u_y = {} }
+
+        by_way[row.way], series[#series + 1] = one, one
+        shift[one] = 0.12 * (#series - 2)
+      end
+      local n = #one.x + 1
+      one.x[n], one.y[n], one.u_y[n] = place[row.method] + shift[one], q.value, 2 * q.u
     end
   end
-  return #x > 1 and lw.figure {
-    name = "compared_" .. field, title = label .. " by method and way",
+  return count > 1 and lw.figure {
+    name = "compared_" .. field, title = label:gsub("^%l", string.upper) .. " by method",
     caption = label .. " with two standard uncertainties, for each method and way of taking the instrument out.",
-    x = { label = "row of the table" }, y = { label = label, unit = unit },
-    series = { { kind = "points", label = "value, 2 u", x = x, y = y, u_y = u } }, notes = names,
+    x = { label = "method" }, y = { label = label, unit = unit }, series = series, notes = names,
   }
 end
 

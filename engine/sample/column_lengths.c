@@ -289,5 +289,18 @@ lw_status lw_columns_density(const lw_size_coefficients *a, const lw_initial_slo
                 var += row[i] * row[m] * a->covariance[i * a->n + m];
         out->u[j] = sqrt(fmax(var, 0)) / count;
     }
+    /* what the smoothing decides: a hundredth of it is as good for the coefficients. Rectangular distribution */
+    for (size_t i = 0; i < n * n; i++)
+        h[i] = base[i] + 0.01 * lambda * smooth[i];
+    for (size_t i = 0; i < n; i++)
+        h[i * n + i] += 1e-14 * scale;
+    memset(held, 0, n * sizeof *held);
+    if (solve(n, h, g, held, work, q)) {
+        count = 0;
+        for (size_t j = 0; j < n; j++)
+            count += q[j] * a->step_nm;
+        for (size_t j = 0; j < told && count > 0; j++)
+            out->u[j] = sqrt(out->u[j] * out->u[j] + pow(q[j] / count - out->density[j], 2) / 3);
+    }
     return LW_OK;
 }

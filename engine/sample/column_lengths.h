@@ -47,7 +47,7 @@ typedef struct lw_column_density {
 /* Distribution of column lengths, p = size_area A''(L), as the smoothest density >= 0 whose coefficients agree with A(L)
  * within its uncertainties: Tikhonov's second-order regularisation with the discrepancy principle (Morozov 1966; for
  * columns: Pausescu et al. 1974 J. Appl. Cryst. 7, 281). Columns longer than the last coefficient are not told.
- * u: the coefficients' part alone, smoothing taken as right. */
+ * u: from the coefficients, and from what a hundredth of the smoothing would change. */
 lw_status lw_columns_density(const lw_size_coefficients *a, const lw_initial_slope *slope, lw_arena *arena,
                              lw_column_density *density, lw_error *err);
 
