@@ -117,6 +117,7 @@
 ---@field profile_at fun(self: calibration, two_theta: number): table
 ---@field figure fun(self: calibration): figure
 ---@field table fun(self: calibration): table
+---@field for_specimen fun(self: calibration, specimen: table): calibration
 ---@field compare fun(self: calibration, previous: calibration, options?: table): result
 
 ---@class profiles what the sample alone does to each line
@@ -292,6 +293,10 @@ local methods = {
     { p("two_theta", "number", "within the valid range", "deg") }, "table of quantities"),
   ["calibration:figure"] = entry("c:figure()", "Width of the instrument against angle.", {}, "figure"),
   ["calibration:table"] = entry("c:table()", "A deep Lua table of the record.", {}, "table"),
+  ["calibration:for_specimen"] = entry("c:for_specimen { attenuation =, thickness = }",
+    "The same instrument, optical profile, with another specimen's transparency.",
+    { p("attenuation", "number", "linear, of the specimen with its pores; 0 = not transparent", "mm^-1"),
+      p("thickness", "number", "of the specimen, 0 = thick", "mm") }, "calibration"),
   ["calibration:compare"] = entry("c:compare(previous, { tolerances =, effects = })",
     "What changed since a calibration before, against tolerances, and what that would do to results.",
     { p("previous", "calibration", "of the same instrument, radiation and geometry"),

@@ -5,6 +5,7 @@
 #include "bind/bind.h"
 #include "bind/comparison.h"
 #include "bind/figures.h"
+#include "bind/inputs.h"
 #include "bind/outputs.h"
 #include "bind/roads.h"
 #include "line/width_figure.h"
@@ -81,6 +82,7 @@ static int load(lua_State *L)
     box->object = calibration;
     lwb_check(L, status, &err);
     lw_sha256_hex(bytes, size, calibration->hash);
+    lwb_check_unchanged(L, path, calibration->hash, "load_calibration");
     keep_record(L, calibration);
     return 1;
 }
@@ -252,7 +254,7 @@ static const char *const fields[] = {"radiation", "geometry", "verdict", "hash",
 static const luaL_Reg functions[] = {{"calibrate", calibrate}, {"load_calibration", load}, {"history", lwb_history}, {NULL, NULL}};
 static const luaL_Reg methods[] = {
     {"save", save}, {"profile_at", profile_at}, {"figure", figure}, {"table", table},
-    {"compare", lwb_calibration_compare}, {NULL, NULL}};
+    {"compare", lwb_calibration_compare}, {"for_specimen", lwb_calibration_for_specimen}, {NULL, NULL}};
 static const luaL_Reg metamethods[] = {{"__index", at}, {"__tostring", show}, {NULL, NULL}};
 
 const lwb_noun lwb_calibration_noun = {.name = "calibration",

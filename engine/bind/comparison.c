@@ -3,6 +3,7 @@
 #include "bind/comparison.h"
 
 #include "bind/outputs.h"
+#include "bind/roads.h"
 #include "bind/standards.h"
 #include "instrument/compare.h"
 #include "instrument/history.h"
@@ -64,6 +65,31 @@ int lwb_calibration_compare(lua_State *L)
     describe(tree->root, "before", before, &err);
     describe(tree->root, "after", after, &err);
     lwb_check(L, LW_OK, &err);
+    return 1;
+}
+
+int lwb_calibration_for_specimen(lua_State *L)
+{
+    static const char *const keys[] = {"attenuation", "thickness", NULL};
+    lw_error err = LW_ERROR_NONE;
+    lua_settop(L, 2);
+    const lw_calibration *calibration = lwb_object(L, 1, &lwb_calibration_noun, "calibration:for_specimen");
+    lwb_want_table(L, 2, "calibration:for_specimen", "the specimen");
+    lwb_only_keys(L, 2, "calibration:for_specimen", keys);
+    double attenuation = lwb_field_number(L, 2, "attenuation", "calibration:for_specimen", 0);
+    double thickness = lwb_field_number(L, 2, "thickness", "calibration:for_specimen", 0);
+    lwb_box *box = lwb_new_box(L, &lwb_calibration_noun, LWB_CALIBRATION_VALUES);
+    for (int i = 1; i <= LWB_CALIBRATION_VALUES; i++) {
+        lua_getiuservalue(L, 1, i);
+        lua_setiuservalue(L, -2, i);
+    }
+    lw_calibration *made = NULL;
+    lw_status status =
+        lw_calibration_for_specimen(lwb_engine(L), calibration, attenuation, thickness, &made, &err);
+    box->object = made;
+    lwb_check(L, status, &err);
+    lwb_push_node(L, made->record, -1);
+    lua_setiuservalue(L, -2, LWB_CALIBRATION_TREE);
     return 1;
 }
 

@@ -6,6 +6,7 @@
 #include "bind/bind.h"
 
 int lwb_calibration_compare(lua_State *L); /* c:compare(previous, { tolerances =, effects = }) */
+int lwb_calibration_for_specimen(lua_State *L); /* c:for_specimen { attenuation =, thickness = } */
 int lwb_history(lua_State *L);             /* lw.history({ { calibration =, label =, after_service = }, ... }, { ... }) */
 
 #endif

@@ -53,6 +53,12 @@ lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, con
                                    lw_calibration **calibration, lw_error *err);
 void lw_calibration_free(lw_calibration *calibration);
 
+/* The same instrument with another specimen in it: an optical calibration whose profile has the specimen's attenuation
+ * (1/mm, with its pores; 0 = not transparent) and thickness (mm; 0 = thick). The standard's own transparency leaves
+ * the aberrations of position. LW_BAD_ARGUMENT if the profile is not optical. */
+lw_status lw_calibration_for_specimen(lw_engine *engine, const lw_calibration *calibration, double attenuation_per_mm,
+                                      double thickness_mm, lw_calibration **out, lw_error *err);
+
 /* Checks that a sample's scan can be analysed with it: same radiation, and [low, high] 2theta inside the valid
  * range (5 % of its length is tolerated at either end, and marked). */
 lw_status lw_calibration_covers(const lw_calibration *calibration, const lw_radiation *radiation, double low_deg,

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "instrument/calibration_optical.h"
 
+#include "instrument/calibration_record.h"
 #include "instrument/optical/table.h"
 
 #include <math.h>
@@ -43,7 +44,7 @@ static void take_geometry(const lw_calibrate_options *o, const char *header, dou
 }
 
 /* Table, and the u of the breadth from that of the geometry as a u of the joining Gaussian's square. */
-static lw_status make_profile(lw_engine *engine, lw_calibration *calibration, double low, double high, lw_error *err)
+lw_status lw__optical_profile(lw_engine *engine, lw_calibration *calibration, double low, double high, lw_error *err)
 {
     lw_profile_table *table = NULL;
     lw_width_function *profile = &calibration->profile;
@@ -114,7 +115,7 @@ lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const 
         for (size_t j = 0; j < refined->n; j++)
             calibration->refined_covariance[i][j] = refined->covariance[i][j];
     }
-    return make_profile(engine, calibration, refined->position[0], refined->position[refined->n_lines - 1], err);
+    return lw__optical_profile(engine, calibration, refined->position[0], refined->position[refined->n_lines - 1], err);
 }
 
 static const char *unit_of(const char *name)
@@ -186,5 +187,47 @@ lw_status lw__optical_read(lw_engine *engine, const lw_node *optical, const char
         calibration->refined_name[calibration->n_refined++] = lw_geometry_names[known];
     }
     calibration->has_optical = true;
-    return make_profile(engine, calibration, calibration->valid_low_deg, calibration->valid_high_deg, err);
+    return lw__optical_profile(engine, calibration, calibration->valid_low_deg, calibration->valid_high_deg, err);
+}
+
+lw_status lw_calibration_for_specimen(lw_engine *engine, const lw_calibration *calibration, double attenuation_per_mm,
+                                      double thickness_mm, lw_calibration **out, lw_error *err)
+{
+    *out = NULL;
+    if (!calibration->has_optical)
+        return lw_fail(err, LW_BAD_ARGUMENT, "calibrate with profile = \"optical\"",
+                       "for_specimen: only an optical profile knows what a specimen's transparency does");
+    lw_calibration *made = lw_take(engine, sizeof *made, err);
+    if (made == NULL)
+        return LW_OUT_OF_MEMORY;
+    *made = *calibration;
+    made->hash[0] = '\0';
+    lw_arena_begin(&made->arena, engine);
+    made->optical.attenuation = attenuation_per_mm;
+    made->optical.thickness = thickness_mm;
+    lw_aberrations *set = &made->aberrations;
+    for (size_t i = 0; i < set->n; i++) {
+        if (strcmp(set->kind[i]->name, "transparency") != 0)
+            continue;
+        set->n--;
+        for (size_t j = i; j < set->n; j++) {
+            set->kind[j] = set->kind[j + 1];
+            set->value[j] = set->value[j + 1];
+            memmove(set->covariance[j], set->covariance[j + 1], sizeof set->covariance[j]);
+        }
+        for (size_t j = 0; j < set->n; j++)
+            for (size_t k = i; k < set->n; k++)
+                set->covariance[j][k] = set->covariance[j][k + 1];
+    }
+    lw_status status = lw_geometry_check(&made->optical, err);
+    if (status == LW_OK)
+        status = lw__optical_profile(engine, made, made->valid_low_deg, made->valid_high_deg, err);
+    if (status == LW_OK)
+        status = lw__calibration_rewrite(made, calibration->record, err);
+    if (status != LW_OK) {
+        lw_calibration_free(made);
+        return status;
+    }
+    *out = made;
+    return LW_OK;
 }

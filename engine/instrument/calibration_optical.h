@@ -15,6 +15,8 @@ lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const 
 
 /* The group `optical` of a record's profile, and back. */
 void lw__optical_write(const lw_calibration *calibration, const lw_refined *refined, lw_node *profile, lw_error *err);
+/* Table of the calibration's geometry between two angles, as its profile. */
+lw_status lw__optical_profile(lw_engine *engine, lw_calibration *calibration, double low_deg, double high_deg, lw_error *err);
 lw_status lw__optical_read(lw_engine *engine, const lw_node *optical, const char *file, lw_calibration *calibration,
                            lw_error *err);
 

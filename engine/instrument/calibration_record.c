@@ -77,6 +77,15 @@ static void write_table(const lw_calibration *calibration, lw_engine *engine, lw
         lw_optics_end(&optics);
 }
 
+static void write_aberrations(const lw_aberrations *set, lw_node *root, lw_error *err)
+{
+    lw_node *group = lw_add_group(root, "aberrations", err);
+    for (size_t i = 0; i < set->n; i++)
+        lw_add_quantity(group, set->kind[i]->name,
+                        lw_quantity_of(set->value[i], sqrt(set->covariance[i][i]), set->kind[i]->unit),
+                        set->kind[i]->definition, err);
+}
+
 static void write_covariance(const lw_calibration *calibration, lw_node *root, lw_error *err)
 {
     lw_node *group = lw_add_group(root, "covariance", err), *names = lw_add_list(group, "parameters", err);
@@ -235,12 +244,8 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
     lw_add_text(root, "geometry", calibration->geometry, err);
     double range[2] = {calibration->valid_low_deg, calibration->valid_high_deg};
     lw_add_vector(root, "valid_two_theta", range, 2, "deg", err);
-    group = lw_add_group(root, "aberrations", err);
     const lw_aberrations *set = &calibration->aberrations;
-    for (size_t i = 0; i < set->n; i++)
-        lw_add_quantity(group, set->kind[i]->name,
-                        lw_quantity_of(set->value[i], sqrt(set->covariance[i][i]), set->kind[i]->unit),
-                        set->kind[i]->definition, err);
+    write_aberrations(set, root, err);
     lw_add_quantity(root, "goniometer_radius", lw_quantity_of(set->radius_mm, 0, "mm"), rows->radius_from, err);
     write_profile(&calibration->profile, root, err);
     if (calibration->has_optical)
@@ -260,6 +265,26 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
     lw_add_number(group, "position_birge_ratio", rows->birge, err);
     lw_add_number(group, "position_rms_deg", rows->rms, err);
     write_verdict(calibration, lines, rows, root, err);
+    calibration->record = root;
+    return err->status;
+}
+
+lw_status lw__calibration_rewrite(lw_calibration *calibration, const lw_node *from, lw_error *err)
+{
+    lw_node *root = lw_tree_new(&calibration->arena, err);
+    for (const lw_node *child = from->first; child != NULL; child = child->next) {
+        if (strcmp(child->name, "aberrations") == 0)
+            write_aberrations(&calibration->aberrations, root, err);
+        else if (strcmp(child->name, "covariance") == 0)
+            write_covariance(calibration, root, err);
+        else if (strcmp(child->name, "instrument_profile") == 0)
+            write_table(calibration, calibration->arena.engine, root, err);
+        else if (strcmp(child->name, "profile") == 0) {
+            write_profile(&calibration->profile, root, err);
+            lw__optical_write(calibration, NULL, (lw_node *)lw_node_get(root, "profile"), err);
+        } else
+            lw_add_copy(root, child->name, child, err);
+    }
     calibration->record = root;
     return err->status;
 }

@@ -26,6 +26,8 @@ typedef struct lw_calibration_lines {
     size_t n_tried;
 } lw_calibration_lines;
 
+/* The record of a calibration that differs from `from` in its aberrations and profile. */
+lw_status lw__calibration_rewrite(lw_calibration *calibration, const lw_node *from, lw_error *err);
 lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *lines, const lw_standard *standard,
                                  const lw_calibration_lines *rows, lw_error *err);
 

@@ -115,6 +115,18 @@ describe("the optical profile", function()
     helper.remove(folder)
   end)
 
+  it("takes another specimen: silicon by the calibration from lanthanum hexaboride", function()
+    local optical = calibrate("lab6_after_service", { profile = "optical" })
+    local silicon = optical:for_specimen { attenuation = 7.5 } -- as traced: tests/data/raytraced/si.truth.json
+    local scan = lw.read_scan(helper.root .. "/tests/data/raytraced/si.xy", { radiation = "Cu Ka" })
+    local lines = lw.fit_lines(scan, lw.standard("si-640f"):reflections(scan), { instrument = silicon })
+    local a = lw.separate(lw.deconvolve(lines), { methods = { "scherrer" } }):get "lattice.a"
+    assert.is_near(0.543114, a.value, 30e-6 * 0.543114)
+    assert.error_matches(function() calibrate("lab6_after_service"):for_specimen { attenuation = 1 } end, "optical")
+    assert.error_matches(function() optical:for_specimen { attenuation = -1 } end, "attenuation")
+    assert.error_matches(function() optical:for_specimen { atenuation = 1 } end, "attenuation")
+  end)
+
   it("refuses an impossible geometry", function()
     local function with(options)
       options.profile = "optical"
