@@ -6,9 +6,9 @@
 
 # One word a package; a|b means that either will do, and a is the one that gets installed.
 # libc6-dev and libclang-rt-dev are only recommended by the compilers, so they are named here.
-build_packages="gcc libc6-dev cmake make pkg-config|pkgconf liblua5.4-dev lua5.4 libgsl-dev libfftw3-dev
+build_packages="gcc libc6-dev cmake make pkg-config|pkgconf liblua5.4-dev lua5.4 libfftw3-dev
   libsymspg-dev libjansson-dev libreadline-dev zlib1g-dev gnuplot-nox|gnuplot-qt|gnuplot-x11"
-test_packages="lua-busted lua-check clang libclang-rt-dev libcerf-dev python3 python3-jsonschema
+test_packages="lua-busted lua-check clang libclang-rt-dev libcerf-dev libgsl-dev python3 python3-jsonschema
   python3-scipy valgrind"
 heavy_packages="chromium"
 
@@ -71,7 +71,7 @@ setup_other() {
     has "$tool_" || missing_="$missing_ $tool_"
   done
   if has pkg-config; then
-    for library_ in lua5.4 gsl fftw3 jansson readline zlib; do
+    for library_ in lua5.4 fftw3 jansson readline zlib; do
       pkg-config --exists "$library_" || missing_="$missing_ $library_(library)"
     done
   fi

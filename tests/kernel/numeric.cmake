@@ -15,5 +15,7 @@ lw_test(strd published/strd_test.c)
 lw_test(voigt_published published/voigt_published_test.c)
 lw_test(straight_line published/straight_line_test.c)
 lw_test(transform published/transform_test.c)
-lw_test(statistics kernel/statistics_test.c)
+# the reference library for tails and nodes
+pkg_check_modules(GSL REQUIRED IMPORTED_TARGET gsl>=2.7)
+lw_test(statistics kernel/statistics_test.c PkgConfig::GSL)
 lw_test(random published/random_test.c)
