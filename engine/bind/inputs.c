@@ -70,6 +70,28 @@ static void add_file(lua_State *L, int files, const char *input, const char *pat
     lua_rawseti(L, files, (lua_Integer)lua_rawlen(L, files) + 1);
 }
 
+void lwb_check_unchanged(lua_State *L, const char *path, const char *hash, const char *verb)
+{
+    int top = lua_gettop(L);
+    luaL_checkstack(L, 8, NULL);
+    if (hash[0] == '\0' || lua_getfield(L, LUA_REGISTRYINDEX, LWB_JOB_KEY) != LUA_TUSERDATA) {
+        lua_settop(L, top);
+        return;
+    }
+    lua_getiuservalue(L, -1, LWB_JOB_FILES);
+    int files = lua_gettop(L);
+    for (lua_Integer i = 1; i <= (lua_Integer)lua_rawlen(L, files); i++) {
+        lua_rawgeti(L, files, i);
+        lua_getfield(L, -1, "file");
+        lua_getfield(L, -2, "sha256");
+        if (strcmp(lua_tostring(L, -2), path) == 0 && strcmp(lua_tostring(L, -1), hash) != 0)
+            lwb_refuse(L, "start the job again once nobody writes to it", "%s: %s has changed since the job began", verb,
+                       path);
+        lua_settop(L, files);
+    }
+    lua_settop(L, top);
+}
+
 static void want_file(lua_State *L, const char *name, const char *path)
 {
     struct stat info;

@@ -3,6 +3,7 @@
 #include "scan/scan.h"
 #include "bind/bind.h"
 #include "bind/figures.h"
+#include "bind/inputs.h"
 
 #include <stdio.h>
 #include <string.h>
@@ -32,6 +33,7 @@ static int read_scan(lua_State *L)
     lw_status status = lw_scan_read(lwb_engine(L), path, &options, &scan, &err);
     box->object = scan;
     lwb_check(L, status, &err);
+    lwb_check_unchanged(L, path, scan->hash, "read_scan");
     return 1;
 }
 
