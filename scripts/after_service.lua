@@ -132,4 +132,5 @@ for _, figure in ipairs { of_size, of_strain } do
 end
 items[#items + 1] = { table = change.effects_on_spacing,
                       caption = "Relative error of spacings corrected with the old aberrations" }
-job:write(change, lw.report(items))
+job:write(change) -- before the figures, which take the longest
+job:write(lw.report(items))

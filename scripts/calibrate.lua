@@ -132,4 +132,5 @@ items[#items + 1] = { heading = "Fit and record" }
 items[#items + 1] = { brief = fitted }
 items[#items + 1] = { details = fitted }
 items[#items + 1] = { details = instrument }
-job:write(instrument, lw.report(items))
+job:write(instrument) -- before the figures, which take the longest
+job:write(lw.report(items))

@@ -90,4 +90,5 @@ end
 for _, of in ipairs(history.charts) do
   items[#items + 1] = chart(of)
 end
-job:write(history, lw.report(items))
+job:write(history) -- before the figures, which take the longest
+job:write(lw.report(items))

@@ -122,4 +122,5 @@ for _, one in ipairs(shown) do
                       or "An earlier run analysed it; its fit is not drawn again."
   items[#items + 1] = { details = one.results }
 end
-job:write({ scans = entries }, lw.report(items))
+job:write({ scans = entries }) -- before the figures, which take the longest
+job:write(lw.report(items))

@@ -47,4 +47,5 @@ end
 for _, item in ipairs { results, profiles, lines } do
   items[#items + 1] = item
 end
-job:write(results, lw.report(items))
+job:write(results) -- before the figures, which take the longest
+job:write(lw.report(items))
