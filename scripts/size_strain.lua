@@ -9,7 +9,7 @@ local job = lw.recipe {
     material    = { kind = "name", help = "material: a name from standards/materials, or a file" },
     calibration = { kind = "file", help = "calibration.json of the instrument" },
     background  = { kind = "file", default = "", help = "scan of the empty holder or capillary" },
-    deconvolve  = { kind = "text", default = "convolution", choices = { "convolution", "stokes" },
+    deconvolve  = { kind = "text", default = "convolution", choices = { "convolution", "physical", "stokes", "tikhonov", "richardson_lucy", "maximum_entropy" },
                     help = "how the instrument is taken out" },
     methods     = { kind = "list", default = "all", help = "methods to run" },
     low         = { kind = "number", default = "", unit = "deg", least = 0, most = 180, help = "first 2theta to use" },
