@@ -261,7 +261,20 @@ static lw_status minimise(fitter *f, lw_pattern_form *form, lw_error *err)
     lw_status status = lw_least_squares(m->engine, &problem, &control, f->p, f->at_bound, &outcome, err);
     if (status != LW_OK)
         return status;
+    lw_normal normal = {.n = m->n_parameters};
+    status = lw_pattern_evaluate(m, f->p, false, &normal, err);
+    if (status != LW_OK)
+        return status;
+    double square = 0, product = 0, last = 0;
+    for (size_t i = 0; i < m->n; i++) {
+        double r = (m->profiles->lines->scan->intensity[i] - m->curve[i]) * sqrt(m->weight[i]);
+        square += r * r;
+        product += r * last;
+        last = r;
+    }
+    form->correlation = square > 0 ? product / square : 0;
     form->chi2 = outcome.chi2;
+
     form->iterations = outcome.iterations;
     form->fitted = isfinite(outcome.chi2);
     form->why = form->fitted ? "" : "the fit found no start";
@@ -434,7 +447,9 @@ static void join(lw_pattern_answer *a)
         }
 }
 
-static void set_misfit(lw_pattern_answer *a)
+/* Factor on u as the fit of the lines has it: for a chi-square that chance does not give, and for residuals that go
+ * together, whose long-run variance is larger (noise that is itself correlated included). */
+static void set_misfit(const fitter *f, lw_pattern_answer *a)
 {
     const lw_pattern_form *best = NULL;
     for (size_t i = 0; i < a->n_forms; i++)
@@ -444,7 +459,13 @@ static void set_misfit(lw_pattern_answer *a)
         return;
     double degrees = fmax((double)a->n_points - (double)best->n_free, 1);
     a->goodness = sqrt(best->chi2 / degrees);
-    a->misfit = lw_chi2_tail(best->chi2, degrees) < 0.01 ? fmax(a->goodness, 1) : 1;
+    double noise = f->pattern.profiles->lines->scan->correlation, rho = best->correlation - noise;
+    double factor2 = (1 + noise) / (1 - noise);
+    if (lw_chi2_tail(best->chi2, degrees) < 1e-3)
+        factor2 *= a->goodness * a->goodness;
+    if (rho > 3 / sqrt((double)a->n_points))
+        factor2 *= (1 + fmin(rho, 0.9)) / (1 - fmin(rho, 0.9));
+    a->misfit = sqrt(fmax(factor2, 1));
 }
 
 /* Parameters after each form, so that covariances can be taken once the weights are known. */
@@ -564,7 +585,7 @@ lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const l
     }
     if (status != LW_OK)
         return status;
-    set_misfit(a);
+    set_misfit(&f, a);
     average(a);
     if (!a->form[a->best].fitted)
         return lw_fail(err, LW_NO_CONVERGENCE, NULL, "no form of strain could be fitted to the whole pattern");
@@ -593,7 +614,7 @@ lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const l
             }
             if (status != LW_OK)
                 return status;
-            set_misfit(a);
+            set_misfit(&f, a);
             average(a);
         }
     } else if (request->anisotropy == 2 && enough_directions(&f)) {

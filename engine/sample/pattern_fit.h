@@ -34,6 +34,7 @@ typedef struct lw_pattern_form {
     bool fitted; /* else `why` says why not */
     const char *why;
     double chi2, weight; /* weight: its share of the answer */
+    double correlation;  /* of neighbouring points' residuals over their u */
     size_t n_free, iterations;
     double shape[LW_PATTERN_SHAPES + 1]; /* and the fall */
     double value[LW_ANSWER_MOST];

@@ -179,12 +179,12 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
     char text[320];
     if (a->misfit > 1) {
         snprintf(text, sizeof text,
-                 "the best form still misses the counts (goodness of fit %.3f): all uncertainties were "
-                 "enlarged %.2f times",
-                 a->misfit, a->misfit);
+                 "the best form still misses the counts (goodness of fit %.3f, or residuals that go together): all "
+                 "uncertainties were enlarged %.2f times",
+                 a->goodness, a->misfit);
         lw_add_text(remarks, NULL, text, err);
     }
-    if (a->misfit > 1.05)
+    if (a->goodness > 1.05)
         lw_add_text(remarks, NULL,
                     "no form tried here is what the powder is: the uncertainties hold counting, calibration and the forms, "
                     "not crystals of another shape, spread or strain; take the sizes as indicative",
