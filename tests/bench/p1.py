@@ -1,7 +1,9 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
-"""Benchmark P1 in NumPy and SciPy: the inputs, and the same fit by normal equations with an analytic Jacobian.
-usage: p1.py make FOLDER    writes FOLDER/doublet and FOLDER/four (scan, start, emission, background)
-       p1.py fit CASE       fits CASE, prints one JSON line
+"""Benchmark P1 in NumPy and SciPy: the inputs, and the same fit with an analytic Jacobian.
+usage: p1.py make FOLDER    writes FOLDER/doublet and FOLDER/four (scan, truth, start, emission, background), and
+                            FOLDER/points_N and FOLDER/lines_N for how the time grows
+       p1.py fit CASE       fits CASE by normal equations in NumPy, prints one JSON line
+       p1.py trf CASE       fits CASE by scipy.optimize.least_squares, method trf, prints one JSON line
 The scan: 13,001 points from 20 to 150 deg, the 24 lines of LaB6 (a = 0.41568 nm) with Cu K-alpha, background of
 degree 7, Poisson noise of a fixed seed; 4 x 24 + 8 parameters."""
 import json
@@ -23,6 +25,7 @@ EMISSION = {
     "four": np.c_[HC / ENERGY, HC / ENERGY * WIDTH / ENERGY, WIDTH * HEIGHT / np.sum(WIDTH * HEIGHT)],
 }
 NORMS = np.array([n for n in range(1, 28) if n not in (7, 15, 23)])
+POINTS, LINES = (3251, 6501, 13001, 26001, 52001), (6, 12, 24, 48, 96)
 TO_WIDTH = 2 * np.sqrt(np.log(2))
 
 
@@ -63,33 +66,46 @@ def model(x, lines, background, emission, jacobian):
     return curve, matrix
 
 
+def write_case(place, emission, x, position, random):
+    theta = np.radians(position / 2)
+    strength = 3e4 * np.exp(-3 * np.sin(theta)) * (0.35 + 0.65 * random.random(len(position)))
+    truth = np.c_[position, strength, np.sqrt(0.002 + 0.001 * np.tan(theta) ** 2), 0.03 / np.cos(theta)]
+    background = np.array([310.0, -95, 40, -18, 11, -5, 3, -2])
+    os.makedirs(place, exist_ok=True)
+    counts = random.poisson(model(x, truth, background, emission, False)[0])
+    start = truth * (1 + np.array([0, 0.25, 0.3, 0.3]) * random.uniform(-1, 1, truth.shape))
+    start[:, 0] += random.uniform(-0.012, 0.012, len(truth))
+    flat = np.zeros(len(background))
+    flat[0] = np.median(counts)
+    np.savetxt(os.path.join(place, "scan.txt"), np.c_[x, counts], fmt="%.6g %d")
+    np.savetxt(os.path.join(place, "truth.txt"), truth, fmt="%.17g")
+    np.savetxt(os.path.join(place, "level.txt"), background, fmt="%.17g")
+    np.savetxt(os.path.join(place, "start.txt"), start, fmt="%.10g")
+    np.savetxt(os.path.join(place, "emission.txt"), emission, fmt="%.17g")
+    np.savetxt(os.path.join(place, "background.txt"), flat, fmt="%.10g")
+
+
 def make(folder):
     random = np.random.default_rng(660)
     x = np.round(np.linspace(20, 150, 13001), 2)
-    theta = np.arcsin(0.15405929 * np.sqrt(NORMS) / (2 * 0.41568))
-    strength = 3e4 * np.exp(-3 * np.sin(theta)) * (0.35 + 0.65 * random.random(len(NORMS)))
-    truth = np.c_[np.degrees(2 * theta), strength, np.sqrt(0.002 + 0.001 * np.tan(theta) ** 2), 0.03 / np.cos(theta)]
-    background = np.array([310.0, -95, 40, -18, 11, -5, 3, -2])
+    lab6 = np.degrees(2 * np.arcsin(0.15405929 * np.sqrt(NORMS) / (2 * 0.41568)))
     for case, emission in EMISSION.items():
-        place = os.path.join(folder, case)
-        os.makedirs(place, exist_ok=True)
-        counts = random.poisson(model(x, truth, background, emission, False)[0])
-        start = truth * (1 + np.array([0, 0.25, 0.3, 0.3]) * random.uniform(-1, 1, truth.shape))
-        start[:, 0] += random.uniform(-0.012, 0.012, len(truth))
-        flat = np.zeros(len(background))
-        flat[0] = np.median(counts)
-        np.savetxt(os.path.join(place, "scan.txt"), np.c_[x, counts], fmt="%.2f %d")
-        np.savetxt(os.path.join(place, "start.txt"), start, fmt="%.10g")
-        np.savetxt(os.path.join(place, "emission.txt"), emission, fmt="%.17g")
-        np.savetxt(os.path.join(place, "background.txt"), flat, fmt="%.10g")
+        write_case(os.path.join(folder, case), emission, x, lab6, random)
+    for n in POINTS:
+        write_case(os.path.join(folder, f"points_{n}"), EMISSION["doublet"], np.linspace(20, 150, n), lab6, random)
+    for n in LINES:
+        write_case(os.path.join(folder, f"lines_{n}"), EMISSION["doublet"], x, np.linspace(24, 146, n), random)
 
 
-def fit(place):
+def read(place):
     x, y = np.loadtxt(os.path.join(place, "scan.txt"), unpack=True)
     lines = np.loadtxt(os.path.join(place, "start.txt"))
     emission = np.atleast_2d(np.loadtxt(os.path.join(place, "emission.txt")))
-    background = np.loadtxt(os.path.join(place, "background.txt"))
-    root = 1 / np.sqrt(np.maximum(y, 1))
+    return x, y, lines, emission, np.loadtxt(os.path.join(place, "background.txt")), 1 / np.sqrt(np.maximum(y, 1))
+
+
+def fit(place):
+    x, y, lines, emission, background, root = read(place)
 
     def at(p):
         curve, matrix = model(x, p[:lines.size].reshape(lines.shape), p[lines.size:], emission, True)
@@ -97,7 +113,7 @@ def fit(place):
         matrix *= root[:, None]
         return residual @ residual, matrix.T @ matrix, matrix.T @ residual
 
-    began = time.perf_counter()
+    began = time.process_time()
     p, damping, evaluations = np.r_[lines.ravel(), background], 1e-3, 1
     chi2, square, downhill = at(p)
     while evaluations < 60:
@@ -112,9 +128,23 @@ def fit(place):
         chi2, square, downhill = there
         if done:
             break
-    print(json.dumps({"program": "numpy", "seconds": time.perf_counter() - began, "chi2": chi2,
+    print(json.dumps({"program": "numpy", "seconds": time.process_time() - began, "chi2": chi2,
                       "evaluations": evaluations}))
 
 
+def trf(place):
+    from scipy.optimize import least_squares
+    x, y, lines, emission, background, root = read(place)
+
+    def at(p, jacobian):
+        return model(x, p[:lines.size].reshape(lines.shape), p[lines.size:], emission, jacobian)
+
+    began = time.process_time()
+    found = least_squares(lambda p: (at(p, False)[0] - y) * root, np.r_[lines.ravel(), background],
+                          jac=lambda p: at(p, True)[1] * root[:, None], method="trf", x_scale="jac", ftol=1e-9)
+    print(json.dumps({"program": "trf", "seconds": time.process_time() - began, "chi2": 2 * found.cost,
+                      "evaluations": int(found.nfev)}))
+
+
 if __name__ == "__main__":
-    {"make": make, "fit": fit}[sys.argv[1]](sys.argv[2])
+    {"make": make, "fit": fit, "trf": trf}[sys.argv[1]](sys.argv[2])

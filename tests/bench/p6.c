@@ -3,25 +3,8 @@
  * usage: bench_p6 FILE REPEATS
  * prints one JSON line: median seconds of a read, points, and whether every number is bit-identical to strtod().
  * (FILE has rows of two numbers and nothing else.) */
+#include "bench.h"
 #include "scan/scan.h"
-
-#include <stdio.h>
-#include <stdlib.h>
-#include <string.h>
-#include <time.h>
-
-static double now(void)
-{
-    struct timespec t;
-    clock_gettime(CLOCK_MONOTONIC, &t);
-    return (double)t.tv_sec + 1e-9 * (double)t.tv_nsec;
-}
-
-static int ascending(const void *a, const void *b)
-{
-    double x = *(const double *)a, y = *(const double *)b;
-    return (x > y) - (x < y);
-}
 
 /* Whether the points are what strtod() makes of the file. */
 static bool is_as_strtod(const char *path, const lw_scan *scan)
@@ -58,9 +41,9 @@ int main(int argc, char **argv)
     for (long i = 0; i < repeats; i++) {
         lw_error err = LW_ERROR_NONE;
         lw_scan *scan = NULL;
-        double began = now();
+        double began = bench_now();
         lw_status status = lw_scan_read(&engine, argv[1], &options, &scan, &err);
-        seconds[i] = now() - began;
+        seconds[i] = bench_now() - began;
         if (status != LW_OK) {
             char text[2000];
             fprintf(stderr, "%s\n", lw_error_text(&err, text, sizeof text));
@@ -72,8 +55,9 @@ int main(int argc, char **argv)
         lw_scan_free(scan);
     }
     lw_engine_end(&engine);
-    qsort(seconds, (size_t)repeats, sizeof *seconds, ascending);
-    printf("{\"seconds\": %.9f, \"best\": %.9f, \"points\": %zu, \"as_strtod\": %s}\n", seconds[repeats / 2], seconds[0], n, same ? "true" : "false");
+    double median = bench_median(seconds, (size_t)repeats);
+    printf("{\"seconds\": %.9f, \"best\": %.9f, \"points\": %zu, \"as_strtod\": %s}\n", median, seconds[0], n,
+           same ? "true" : "false");
     free(seconds);
     return same ? 0 : 1;
 }
