@@ -177,7 +177,7 @@ static double now(void)
 }
 
 /* A fault at n = 1, then at steps that grow so that the sweep fits the time, up to `most`. */
-static long sweep(long most, bool refuse, bool keep, double one_run_s, double seconds)
+static long sweep(const road *sound, long most, bool refuse, bool keep, double one_run_s, double seconds)
 {
     long points = 0;
     double runs = seconds / (one_run_s > 1e-4 ? one_run_s : 1e-4);
@@ -192,8 +192,9 @@ static long sweep(long most, bool refuse, bool keep, double one_run_s, double se
         lw_status status = run(&a, &out, &err);
         lw_status want = refuse ? LW_OUT_OF_MEMORY : LW_CANCELLED;
         /* A library's own workspace may be got around, never half used: then the answer must be whole. */
-        CHECK(status == want);
-        if (status != want)
+        bool around = refuse && !keep && status == LW_OK && memcmp(&out, sound, sizeof out) == 0;
+        CHECK(status == want || around);
+        if (status != want && !around)
             fprintf(stderr, "  %s at %ld of %ld: %s, \"%s\"\n", refuse ? "refusal" : "stop", at, most,
                     lw_status_name(status), err.message);
         CHECK(err.status == status && (status == LW_OK || err.message[0] != '\0'));
@@ -227,9 +228,9 @@ int main(int argc, char **argv)
     CHECK(first.lines == 5); /* 111, 200, 220, 311, 222 of nickel below 99 deg */
     printf("%ld requests and %ld polls in %.3f s\n", sound.requests, sound.polls, took);
 
-    long single = sweep(sound.requests, true, false, took, seconds / 3);
-    long lasting = sweep(sound.requests, true, true, took, seconds / 3);
-    long stops = sweep(sound.polls, false, false, took, seconds / 3);
+    long single = sweep(&first, sound.requests, true, false, took, seconds / 3);
+    long lasting = sweep(&first, sound.requests, true, true, took, seconds / 3);
+    long stops = sweep(&first, sound.polls, false, false, took, seconds / 3);
     printf("%ld single refusals, %ld lasting ones, %ld stops\n", single, lasting, stops);
 
     account again = {0};
