@@ -47,8 +47,8 @@ def evaluate(x, p, jacobian):
 
 def make(folder):
     random = np.random.default_rng(1212)
-    position = np.linspace(25, 145, 12) + random.uniform(-2, 2, 12)
-    truth = np.c_[position, random.uniform(300, 900, 12), random.uniform(0.06, 0.12, 12), random.uniform(0.05, 0.11, 12),
+    position = np.linspace(26, 138, 12) + random.uniform(-1, 1, 12)
+    truth = np.c_[position, random.uniform(800, 3000, 12), random.uniform(0.05, 0.08, 12), random.uniform(0.04, 0.09, 12),
                   np.full(12, 150.0), random.uniform(-15, 15, 12)]
     start = truth * (1 + np.array([0, 0.2, 0.2, 0.2, 0.05, 0]) * random.uniform(-1, 1, truth.shape))
     start[:, 0] += random.uniform(-0.01, 0.01, 12)
