@@ -2,11 +2,16 @@
 /* Options as they were after the defaults had been filled in, for the record's provenance. */
 #include "bind/roads.h"
 
+#include <math.h>
+
 static void add_one(lw_node *group, const lw_option *option, const void *options, lw_error *err)
 {
     const void *field = (const char *)options + option->offset;
     switch (option->kind) {
-    case LW_OPTION_NUMBER: lw_add_number(group, option->key, *(const double *)field, err); break;
+    case LW_OPTION_NUMBER:
+        if (isfinite(*(const double *)field)) /* NaN: not given, and the verb found its own */
+            lw_add_number(group, option->key, *(const double *)field, err);
+        break;
     case LW_OPTION_COUNT: lw_add_number(group, option->key, (double)*(const long *)field, err); break;
     case LW_OPTION_FLAG: lw_add_flag(group, option->key, *(const bool *)field, err); break;
     case LW_OPTION_TEXT:
