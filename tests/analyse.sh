@@ -28,7 +28,7 @@ done
 if command -v clang-tidy >/dev/null 2>&1; then
   for source in $sources; do
     clang-tidy -p "$build" --quiet "$source" 2>/dev/null | grep -E ' (warning|error): ' |
-      sed -E "s|^$root/||; s|^([^:]*):[0-9]+:.*\[([a-zA-Z.-]+)[],].*|\1 \2 &|" >>"$build/findings"
+      sed -E "s|^$root/||; s|^([^:]*):[0-9]+:.*\[([a-zA-Z0-9.-]+)[],].*|\1 \2 &|" >>"$build/findings"
   done
 else
   echo "clang-tidy is not on this system"
