@@ -14,7 +14,11 @@ rounds=${2:-5}
 core=${3:-}
 python=${PYTHON:-python3}
 "$python" -c 'import numpy, scipy' 2>/dev/null || python=/usr/bin/python3
-cmake -S "$root" -B "$build" -DCMAKE_BUILD_TYPE=Release -DLW_BENCH=ON -DLW_TESTS=OFF >/dev/null
+if [ -f "$build/CMakeCache.txt" ]; then
+    cmake -S "$root" -B "$build" -DLW_BENCH=ON >/dev/null
+else
+    cmake -S "$root" -B "$build" -DCMAKE_BUILD_TYPE=Release -DLW_BENCH=ON -DLW_TESTS=OFF >/dev/null
+fi
 cmake --build "$build" --parallel 2 >"$build/bench-build.log" 2>&1 || {
     tail -n 30 "$build/bench-build.log"
     exit 1
