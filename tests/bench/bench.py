@@ -163,7 +163,7 @@ def start_up():
         lua, own = ([one[at] for one in times[name]] for name in ("lua", "own"))
         ratios = sorted(b / a for a, b in zip(lua, own) if a > 0)
         add(f"P5 start-up over lua5.4, {what} ms", 1e3 * statistics.median(lua), 1e3 * statistics.median(own),
-            statistics.median(own) / statistics.median(lua), (ratios[len(ratios) // 4], ratios[3 * len(ratios) // 4]),
+            statistics.median(ratios), (ratios[len(ratios) // 4], ratios[3 * len(ratios) // 4]),
             *goal, False, range="quartiles")
 
 

@@ -1,7 +1,10 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
 """Benchmark P3 in SciPy: one line a window, 12 windows a scan.
 usage: p3.py make FOLDER          writes true.txt, start.txt and counts.bin (200 scans, fixed seed; see p3.c)
-       p3.py fit FOLDER SCANS     scipy.optimize.least_squares, method lm, analytic Jacobian; prints one JSON line"""
+       p3.py fit FOLDER SCANS     scipy.optimize.least_squares, method lm, analytic Jacobian; prints one JSON line
+Areas are such that the Cramer-Rao bound, which is linear theory, can be reached at 3 counts of background: with areas of
+300 to 900 a Gaussian width comes near 0 in some draws, and its scatter is 1.12 times the bound (position, area and
+Lorentzian width stay within 1.03)."""
 import json
 import os
 import sys
