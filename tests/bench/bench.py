@@ -1,6 +1,6 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
 """Runs the benchmark programs beside their baselines and prints a table of ratios with goals.
-usage: bench.py BUILD ROUNDS        (called by run.sh)
+usage: bench.py BUILD ROUNDS [ONLY]     (called by run.sh; ONLY: names of parts, p1,command,p5,p2,p3,p4,p6,kernel)
 
 A ratio is the median, over interleaved rounds, of baseline over engine; its range follows. Times inside a process are
 its processor time, so that a machine busy with other things doesn't favour the shorter run; commands are timed from
@@ -26,6 +26,8 @@ import time
 
 HERE = os.path.dirname(os.path.abspath(__file__))
 BUILD, ROUNDS = os.path.abspath(sys.argv[1]), int(sys.argv[2])
+PARTS = ("p1", "command", "p5", "p2", "p3", "p4", "p6", "kernel")
+ONLY = sys.argv[3].split(",") if len(sys.argv) > 3 else PARTS
 RUNGS = ("avx512", "avx2", "plain")
 rows, growth = [], {}
 
@@ -98,7 +100,6 @@ def seconds(answers, key="seconds"):
 
 
 def p1(work):
-    subprocess.run(python("p1.py", "make", work), check=True)
     goals = {"doublet": ((200, 450), (500, 1200)), "four": ((150, 360), (400, 900))}
     for case, (own_ana, trf) in goals.items():
         place = os.path.join(work, case)
@@ -148,7 +149,7 @@ def whole_command(work):
     row("P1 whole command against SciPy trf, busy ms", busy["trf"], busy["recipe"], 80, None, **more)
 
 
-def start_up():
+def start_up(_):
     lua = shutil.which("lua5.4")
     if lua is None:
         print("P5 left out: lua5.4 is not installed")
@@ -167,7 +168,7 @@ def start_up():
             *goal, False, range="quartiles")
 
 
-def p2():
+def p2(_):
     for n, goal, first_goal in ((1024, (7, 10), (0.5, 0.3)), (4096, (4.5, 7), (0.5, 0.3))):
         repeats = 100 if n == 1024 else 40
         found = rounds({"numpy": python("p2.py", n, repeats), "many": engine("p2", n, 4 * repeats, "many"),
@@ -247,17 +248,19 @@ def instructions():
     return counts
 
 
+unknown = set(ONLY) - set(PARTS)
+if unknown:
+    sys.exit(f"no part is called {', '.join(sorted(unknown))}; choose from {', '.join(PARTS)}")
 work = tempfile.mkdtemp()
 try:
     print(f"{'problem':47} {'baseline':>9} {'engine':>9} {'ratio':>9} {'range':>17} {'goal (wanted)':14}")
-    p1(work)
-    whole_command(work)
-    start_up()
-    p2()
-    p3(work)
-    p4(work)
-    p6(work)
-    kernel = instructions()
+    if "p1" in ONLY or "command" in ONLY:
+        subprocess.run(python("p1.py", "make", work), check=True)
+    for part, measure in (("p1", p1), ("command", whole_command), ("p5", start_up), ("p2", p2), ("p3", p3), ("p4", p4),
+                          ("p6", p6)):
+        if part in ONLY:
+            measure(work)
+    kernel = instructions() if "kernel" in ONLY else {}
 finally:
     shutil.rmtree(work)
 with open(os.path.join(BUILD, "bench.json"), "w") as out:
