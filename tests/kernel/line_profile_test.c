@@ -249,7 +249,7 @@ static void empirical_shapes(void)
         CHECK_RELATIVE(breadth, 1 / top, 1e-9);
         for (int i = 0; i < shape->n_local; i++)
             for (int s = 0; s < 2; s++) {
-                double x = s ? 0.07 : -0.06, up[4], down[4], h = 1e-5 * local[k][i], unused[4];
+                double x = s ? 0.07 : -0.06, up[4], down[4], h = 1e-5 * local[k][i], unused[8];
                 memcpy(up, local[k], sizeof up);
                 memcpy(down, local[k], sizeof down);
                 up[i] += h;
@@ -258,8 +258,8 @@ static void empirical_shapes(void)
                 double difference = (shape->value(x, up, &d_x, unused) - shape->value(x, down, &d_x, unused)) / (2 * h);
                 CHECK_NEAR(d[i], difference, 1e-6 * (fabs(difference) + 1));
                 double fw, br[2];
-                shape->breadths(up, &fw, &br[0], unused, unused + 2);
-                shape->breadths(down, &fw, &br[1], unused, unused + 2);
+                shape->breadths(up, &fw, &br[0], unused, unused + 4);
+                shape->breadths(down, &fw, &br[1], unused, unused + 4);
                 CHECK_NEAR(d_breadth[i], (br[0] - br[1]) / (2 * h), 1e-6);
             }
     }
