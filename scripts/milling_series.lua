@@ -53,6 +53,8 @@ for place, path in ipairs(job.scans) do
     local row = {
       scan = path:match "[^/]+$", milling_time_h = hours(path, place),
       size_volume = wh.size_volume, strain_rms = wh.strain_rms, strain_apparent = wh.strain_apparent,
+      whole_pattern_size = known:get "methods.whole_pattern.size_volume",
+      whole_pattern_strain = known:get "methods.whole_pattern.strain_rms",
       lattice_a = known:get "lattice.a", goodness_of_fit = known.goodness_of_fit,
     }
     rows[#rows + 1] = row
@@ -72,8 +74,8 @@ if #rows == 0 then
   error("no scan of the series could be analysed: " .. failed[1].error)
 end
 table.sort(rows, function(a, b) return a.milling_time_h < b.milling_time_h end)
-local columns = { "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "lattice_a",
-                  "goodness_of_fit" }
+local columns = { "scan", "milling_time_h", "size_volume", "strain_rms", "strain_apparent", "whole_pattern_size",
+                  "whole_pattern_strain", "lattice_a", "goodness_of_fit" }
 job:write_csv("series.csv", rows, columns)
 
 -- Size and strain against time; limits are left out of the curves and stay in the table.
@@ -86,14 +88,21 @@ local function series_of(field)
   end
   return x, y
 end
-local function against_time(field, title, label, unit)
-  local x, y = series_of(field)
-  if #x < 2 then return nil end
+local function against_time(field, whole_pattern, title, label, unit)
+  local curves = {}
+  for _, method in ipairs { { "Williamson-Hall", field }, { "whole pattern", whole_pattern } } do
+    local x, y = series_of(method[2])
+    if #x >= 2 then
+      curves[#curves + 1] = { kind = "points", label = method[1], x = x, y = y }
+      curves[#curves + 1] = { kind = "line", x = x, y = y }
+    end
+  end
+  if #curves == 0 then return nil end
   return lw.figure {
     name = field .. "_against_time", title = title,
-    caption = title .. ", Williamson-Hall, with standard uncertainties (counting, calibration and choice of form).",
-    x = { label = "milling time", unit = "h" }, y = { label = label, unit = unit },
-    series = { { kind = "points", label = label, x = x, y = y }, { kind = "line", x = x, y = y } },
+    caption = title .. ", with standard uncertainties: counting, calibration and choice of form; for milled metals the "
+      .. "whole pattern assumes less than the straight line.",
+    x = { label = "milling time", unit = "h" }, y = { label = label, unit = unit }, series = curves,
   }
 end
 
@@ -104,10 +113,11 @@ if powder.hazard ~= "" then
   items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }
 end
 items[#items + 1] = { heading = "Along the series" }
-items[#items + 1] = { table = rows, columns = columns, caption = "Size and strain by Williamson-Hall" }
+items[#items + 1] = { table = rows, columns = columns, caption = "Volume-weighted size and strain: first by "
+  .. "Williamson-Hall, then by the whole pattern" }
 for _, figure in ipairs {
-  against_time("size_volume", "Size against milling time", "volume-weighted size", "nm") or false,
-  against_time("strain_rms", "Strain against milling time", "rms strain", "") or false,
+  against_time("size_volume", "whole_pattern_size", "Size against milling time", "volume-weighted size", "nm") or false,
+  against_time("strain_rms", "whole_pattern_strain", "Strain against milling time", "rms strain", "") or false,
 } do
   if figure then items[#items + 1] = figure end
 end

@@ -300,8 +300,9 @@ local methods = {
   ["calibration:compare"] = entry("c:compare(previous, { tolerances =, effects = })",
     "What changed since a calibration before, against tolerances, and what that would do to results.",
     { p("previous", "calibration", "of the same instrument, radiation and geometry"),
-      p("tolerances", "table", "or the path of a Lua literal: zero_shift (deg), displacement (mm), flat_specimen (deg), "
-        .. "transparency (deg), wavelength (relative), shift (deg), fwhm (%), breadth (%), asymmetry (deg), intensity (%)"),
+      p("tolerances", "table", "or the path of a Lua literal: zero_shift (deg), displacement (mm), flat_specimen "
+        .. "(deg), transparency (deg), wavelength (relative), shift (deg), fwhm (%), breadth (%), asymmetry (deg), "
+        .. "intensity (%)"),
       p("effects", "flag", "false leaves out what samples would be reported with the old calibration") }, "result"),
   ["profiles:coefficients"] = entry("p:coefficients(i)", "Fourier coefficients of one profile as vectors.",
     { p("i", "integer", "from 1") }, "table: length_nm, cosine, u_cosine, sine, u_sine, truncated_at"),
