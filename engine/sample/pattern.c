@@ -151,7 +151,7 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
         pattern->line[k].g = take(arena, 2 * m, err);
     if (err->status != LW_OK)
         return err->status;
-    pattern->plan = lw_fft_plan(engine, f, LW_FFT_REAL, LW_FFT_FEW, err);
+    pattern->plan = lw_fft_plan(engine, f, LW_FFT_REAL, LW_FFT_MANY, err);
     if (pattern->plan == NULL)
         return err->status;
 
