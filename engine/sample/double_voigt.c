@@ -262,7 +262,7 @@ static void draw(const parts *m, const lw_generalised_fit *fit, const double *p,
                 "size, slopes strain.",
                 err);
     static const char *const axes[] = {"x", "y", "lower_y"};
-    static const char *const labels[] = {"s^2", "Lorentzian breadth", "Gaussian breadth squared"};
+    static const char *const labels[] = {"s^2", "Lorentzian", "Gaussian^2"};
     static const char *const units[] = {"nm^-2", "nm^-1", "nm^-2"};
     for (int i = 0; i < 3; i++) {
         lw_node *axis = lw_add_group(figure, axes[i], err);
