@@ -289,29 +289,26 @@ static void draw(const parts *m, const lw_generalised_fit *fit, const double *p,
     }
 }
 
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     (void)given;
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
     parts m;
     lw_generalised_fit fit;
-    lw_status status = gather(profiles, &arena, &m, err);
+    lw_status status = gather(profiles, arena, &m, err);
     double p[PARAMETERS] = {0};
     if (status == LW_OK) {
         p[SL] = m.y[0];
         p[SG2] = m.y[m.n];
         lw_generalised problem = {
             .n = 2 * m.n, .m = PARAMETERS, .y = m.y, .covariance = m.covariance, .model = model, .user = &m};
-        status = lw_generalised_solve(&problem, &arena, p, &fit, NULL, err);
+        status = lw_generalised_solve(&problem, arena, p, &fit, NULL, err);
     }
     if (status == LW_OK) {
         lw_node *remarks = lw_add_list(result, "remarks", err);
         tell(&fit, p, result, remarks, err);
-        draw(&m, &fit, p, &arena, result, err);
+        draw(&m, &fit, p, arena, result, err);
         status = err->status;
     }
-    lw_arena_end(&arena);
     return status;
 }
 

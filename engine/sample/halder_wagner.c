@@ -49,25 +49,21 @@ static void draw(lw_arena *arena, const lw_breadths *breadths, const lw_breadth_
     lw_add_vector(plot, "line_y", line_y, 2, "", err);
 }
 
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
-                     lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     (void)given;
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
     lw_breadths breadths;
     lw_breadth_fit fit;
-    lw_status status = lw_breadths_gather(profiles, &arena, &breadths, err);
+    lw_status status = lw_breadths_gather(profiles, arena, &breadths, err);
     if (status == LW_OK)
-        status = lw_breadths_fit(&breadths, LW_FORM_PARABOLIC, &arena, &fit, err);
+        status = lw_breadths_fit(&breadths, LW_FORM_PARABOLIC, arena, &fit, err);
     if (status == LW_OK) {
         lw_breadths_tell(&fit, result, err);
-        draw(&arena, &breadths, &fit, result, err);
+        draw(arena, &breadths, &fit, result, err);
         lw_breadths_draw(&breadths, &fit, result, err);
         lw_breadths_remark(&breadths, &fit, lw_add_list(result, "remarks", err), err);
         status = err->status;
     }
-    lw_arena_end(&arena);
     return status;
 }
 

@@ -432,8 +432,7 @@ static void tell(const positions *m, const answer *a, lw_node *result, lw_error 
         lw_add_text(remarks, NULL, "no calibration: the positions were taken as they stand", err);
 }
 
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
-                     lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     const lattice_options *o = given;
     const lw_radiation *radiation =
@@ -441,15 +440,12 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
     positions m = {.profiles = profiles,
                    .free = lw_cell_free_of(profiles->lines->material),
                    .wavelength = lw_radiation_wavelength(radiation)};
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
     answer a;
-    lw_status status = fit_whole(&m, o->displacement, &arena, &a, err);
+    lw_status status = fit_whole(&m, o->displacement, arena, &a, err);
     if (status == LW_OK) {
         tell(&m, &a, result, err);
         status = err->status;
     }
-    lw_arena_end(&arena);
     return status;
 }
 

@@ -39,8 +39,12 @@ lw_status lw_method_run(lw_engine *engine, const lw_method *method, const lw_pro
     if (why != NULL)
         return lw_fail(err, LW_NOT_SUPPORTED, NULL, "%s: %s", method->title, why);
     lw_status status = lw_engine_poll(engine, err);
-    if (status == LW_OK)
-        status = method->run(engine, profiles, options, result, err);
+    if (status == LW_OK) {
+        lw_arena arena;
+        lw_arena_begin(&arena, engine);
+        status = method->run(&arena, profiles, options, result, err);
+        lw_arena_end(&arena);
+    }
     if (status != LW_OK)
         return status;
     lw_add_text(result, "title", method->title, err);

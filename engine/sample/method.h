@@ -17,8 +17,8 @@ typedef struct lw_method {
     void (*defaults)(void *options);
     /* NULL if the profiles can carry the method, else the reason (text in `why`) */
     const char *(*lacks)(const lw_profiles *profiles, char *why, size_t size);
-    lw_status (*run)(lw_engine *engine, const lw_profiles *profiles, const void *options, lw_node *result,
-                     lw_error *err);
+    /* arena: for what the method needs while it runs; its engine is the engine */
+    lw_status (*run)(lw_arena *arena, const lw_profiles *profiles, const void *options, lw_node *result, lw_error *err);
 } lw_method;
 #define LW_METHOD_OPTIONS_MOST 1024
 

@@ -170,9 +170,10 @@ static lw_status list_lines(const lw_breadths *breadths, const double *K, const 
     return err->status;
 }
 
-static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const scherrer_options *given,
-                        lw_node *result, lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *options_given, lw_node *result,
+                     lw_error *err)
 {
+    const scherrer_options *given = options_given;
     lw_breadths breadths;
     lw_status status = lw_breadths_gather(profiles, arena, &breadths, err);
     if (status == LW_OK && given->breadth == FWHM)
@@ -221,16 +222,6 @@ static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const sche
     list_lines(&breadths, m.K, given, result, err);
     remark(&breadths, &fit, arena, lw_add_list(result, "remarks", err), err);
     return err->status;
-}
-
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
-                     lw_error *err)
-{
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
-    lw_status status = answer(&arena, profiles, given, result, err);
-    lw_arena_end(&arena);
-    return status;
 }
 
 const lw_method lw_method_scherrer = {

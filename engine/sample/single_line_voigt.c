@@ -176,17 +176,14 @@ static lw_status tell_mean(const lw_profiles *profiles, bool gauss, lw_arena *ar
     return err->status;
 }
 
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
-                     lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     (void)given;
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
     lw_node *remarks = lw_add_list(result, "remarks", err);
     double sizes = 1, strains = 1;
-    lw_status status = tell_mean(profiles, false, &arena, result, remarks, &sizes, err);
+    lw_status status = tell_mean(profiles, false, arena, result, remarks, &sizes, err);
     if (status == LW_OK)
-        status = tell_mean(profiles, true, &arena, result, remarks, &strains, err);
+        status = tell_mean(profiles, true, arena, result, remarks, &strains, err);
     if (status == LW_OK && (sizes > 1 || strains > 1)) {
         char text[200];
         snprintf(
@@ -199,7 +196,6 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
         tell_lines(profiles, result, err);
         status = err->status;
     }
-    lw_arena_end(&arena);
     return status;
 }
 

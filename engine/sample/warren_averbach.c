@@ -419,13 +419,11 @@ static double vagueness(const one_set *set)
     return hypot(set->slope.u / set->slope.size_area, set->strain > 0 ? set->u_strain / set->strain : 1);
 }
 
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     const warren_averbach_options *o = given;
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
-    one_set *set = lw_arena_take(&arena, SETS_MOST, sizeof *set, err);
-    lw_orders *found = lw_arena_take(&arena, SETS_MOST, sizeof *found, err);
+    one_set *set = lw_arena_take(arena, SETS_MOST, sizeof *set, err);
+    lw_orders *found = lw_arena_take(arena, SETS_MOST, sizeof *found, err);
     lw_status status = set == NULL || found == NULL ? LW_OUT_OF_MEMORY : LW_OK;
     size_t n = 0, best = 0;
     if (status == LW_OK && o->lines.n > 0) {
@@ -443,7 +441,7 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
     for (size_t i = 0; i < n && status == LW_OK; i++) {
         lw_error each = LW_ERROR_NONE;
         set[good].orders = found[i];
-        lw_status one = separate(profiles, o, &set[good], &arena, &each);
+        lw_status one = separate(profiles, o, &set[good], arena, &each);
         if (one == LW_OK)
             good++;
         else if (one == LW_NOT_SUPPORTED)
@@ -481,12 +479,11 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
             lw_add_text(each, "lines", orders, err);
             tell_numbers(&set[i], each, err);
         }
-        tell_curves(profiles, &set[best], &arena, result, err);
-        draw(&set[best], &arena, result, err);
+        tell_curves(profiles, &set[best], arena, result, err);
+        draw(&set[best], arena, result, err);
         remark(profiles, &set[best], lw_add_list(result, "remarks", err), err);
         status = err->status;
     }
-    lw_arena_end(&arena);
     return status;
 }
 

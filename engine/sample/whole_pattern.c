@@ -224,20 +224,17 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
     }
 }
 
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
-                     lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     const whole_pattern_options *o = given;
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
-    lw_pattern_answer *a = lw_arena_take(&arena, 1, sizeof *a, err);
+    lw_pattern_answer *a = lw_arena_take(arena, 1, sizeof *a, err);
     lw_pattern_request request = {.strain = o->strain == 0   ? LW_PATTERN_AUTO
                                             : o->strain == 1 ? LW_PATTERN_NO_STRAIN
                                                              : (lw_pattern_choice)(o->strain - 2),
                                   .anisotropy = o->anisotropy,
                                   .fall = o->fall};
     lw_status status =
-        a == NULL ? LW_OUT_OF_MEMORY : lw_pattern_fit(engine, profiles, &request, &arena, a, err);
+        a == NULL ? LW_OUT_OF_MEMORY : lw_pattern_fit(arena->engine, profiles, &request, arena, a, err);
     if (status == LW_OK) {
         double u[LW_ANSWER_MOST];
         for (size_t i = 0; i < LW_ANSWER_MOST; i++)
@@ -272,11 +269,10 @@ static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void 
         lw_add_number(statistics, "chi2", a->form[a->best].chi2, err);
         lw_add_number(statistics, "goodness", a->goodness, err);
         lw_add_number(statistics, "misfit_factor", a->misfit, err);
-        draw(a, &arena, result, err);
+        draw(a, arena, result, err);
         remark(a, lw_add_list(result, "remarks", err), err);
         status = err->status;
     }
-    lw_arena_end(&arena);
     return status;
 }
 

@@ -142,9 +142,10 @@ static void tell_model(const lw_quantity *strain, int chosen, double mean, lw_no
                     err);
 }
 
-static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const williamson_hall_options *given,
-                        lw_node *result, lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *options_given, lw_node *result,
+                     lw_error *err)
 {
+    const williamson_hall_options *given = options_given;
     lw_breadths breadths;
     lw_status status = lw_breadths_gather(profiles, arena, &breadths, err);
     double mean = 1;
@@ -215,16 +216,6 @@ static lw_status answer(lw_arena *arena, const lw_profiles *profiles, const will
             "uncertainty",
             err);
     return err->status;
-}
-
-static lw_status run(lw_engine *engine, const lw_profiles *profiles, const void *given, lw_node *result,
-                     lw_error *err)
-{
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
-    lw_status status = answer(&arena, profiles, given, result, err);
-    lw_arena_end(&arena);
-    return status;
 }
 
 const lw_method lw_method_williamson_hall = {
