@@ -163,14 +163,15 @@ static lw_status covariance(lw_fit_state *fit, lw_error *err)
         return LW_OK;
     double *part = lw_arena_take(&lines->arena, n * n, sizeof *part, err);
     double *s = lw_arena_take(&fit->scratch, n * nuisance, sizeof *s, err);
-    if (part == NULL || s == NULL)
+    double *slope = lw_arena_take(&lines->arena, n * LW_WIDTH_PARAMETERS, sizeof *slope, err);
+    if (part == NULL || s == NULL || slope == NULL)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < n; i++)
         for (size_t q = 0; q < nuisance; q++) {
             double sum = 0;
             for (size_t j = 0; j < n; j++)
                 sum -= c[i * n + j] / factor2 * normal.h[(n + q) * whole + j];
-            s[i * nuisance + q] = sum;
+            s[i * nuisance + q] = slope[i * LW_WIDTH_PARAMETERS + which[q]] = sum;
         }
     for (size_t i = 0; i < n; i++)
         for (size_t j = 0; j <= i; j++) {
@@ -183,6 +184,7 @@ static lw_status covariance(lw_fit_state *fit, lw_error *err)
     for (size_t i = 0; i < n * n; i++)
         c[i] += part[i];
     lines->from_instrument = part;
+    lines->to_instrument = slope;
     return LW_OK;
 }
 

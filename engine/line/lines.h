@@ -50,6 +50,8 @@ typedef struct lw_lines {
     double *parameter;
     double *covariance;              /* n_parameters^2: counting, instrument's covariance and misfit included */
     double *from_instrument;         /* n_parameters^2: the part that comes from the instrument alone, or NULL */
+    double *to_instrument;           /* [n_parameters][LW_WIDTH_PARAMETERS]: what the fit's parameters do when the
+                                        instrument's change, or NULL */
     /* statistics of the fit */
     double chi2, rwp, rexp, goodness, durbin_watson; /* goodness = sqrt(chi2/(n - parameters)); rwp, rexp as fractions */
     double misfit_factor;            /* by which all u were multiplied because the shape misses the data (>= 1) */

@@ -278,11 +278,14 @@ static lw_status refine(problem *q, lw_arena *arena, lw_refined *out, lw_error *
     out->position = lw_arena_take(arena, q->n_lines, sizeof(double), err);
     out->position_covariance = lw_arena_take(arena, q->n_lines * q->n_lines, sizeof(double), err);
     out->line = lw_arena_take(arena, q->n_lines, sizeof *out->line, err);
-    if (!out->position || !out->position_covariance || !out->line)
+    out->cross = lw_arena_take(arena, q->n_lines * n, sizeof(double), err);
+    if (!out->position || !out->position_covariance || !out->line || !out->cross)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < q->n_lines; i++) {
         out->position[i] = p[n + i * OWN];
         out->line[i] = q->window[i].line;
+        for (size_t j = 0; j < n; j++)
+            out->cross[i * n + j] = c[(n + i * OWN) * size + j];
         for (size_t j = 0; j < q->n_lines; j++)
             out->position_covariance[i * q->n_lines + j] = c[(n + i * OWN) * size + n + j * OWN];
     }

@@ -30,6 +30,7 @@ typedef struct lw_refined {
     size_t n_lines;
     size_t *line;           /* [n_lines], which of the fitted lines */
     double *position, *position_covariance; /* deg, [n_lines], [n_lines^2]; in the arena of the call */
+    double *cross;          /* [n_lines][n]: covariance of the positions with the refined quantities */
 } lw_refined;
 
 /* Refines. `lines` are the fitted lines of the scan (any shape): where they stand, how high they are.
