@@ -41,7 +41,7 @@ static lw_status choose_reflections(lw_fit_state *fit, const lw_reflection *all,
     return LW_OK;
 }
 
-static lw_status take_state(lw_fit_state *fit, lw_error *err)
+lw_status lw__fit_take_state(lw_fit_state *fit, lw_error *err)
 {
     size_t n = fit->n;
     fit->position = lw_arena_take(&fit->scratch, n, sizeof *fit->position, err);
@@ -77,6 +77,43 @@ static lw_status check_options(const lw_scan *scan, const lw_fit_options *option
     return LW_OK;
 }
 
+void lw__fit_begin(lw_fit_state *fit)
+{
+    const lw_fit_options *options = fit->options;
+    lw_lines *lines = fit->lines;
+    fit->model = (lw_model){.engine = fit->engine,
+                            .kernel = lw_voigt_kernel_for(fit->engine->cpu),
+                            .radiation = &lines->radiation,
+                            .on_s_axis = options->axis == 0,
+                            .with_factor = options->intensity_factor == 0,
+                            .axial = (lw_axial_kind)options->axial};
+    double mono = cos(options->monochromator_deg * M_PI / 180);
+    fit->model.constant_polarisation = 1 - options->polarised;
+    fit->model.cos2_monochromator = options->polarised * mono * mono;
+    if (options->instrument != NULL) {
+        lines->has_instrument = true;
+        lines->instrument = *options->instrument;
+        memcpy(fit->model.instrument, options->instrument->value, sizeof fit->model.instrument);
+        fit->model.axial = options->instrument->axial;
+        fit->model.table = options->instrument->table;
+    }
+}
+
+const lw_fit_options *lw__fit_keep_options(const lw_fit_options *options, const lw_width_function *instrument,
+                                           lw_arena *arena, lw_error *err)
+{
+    lw_fit_options *kept = lw_arena_copy(arena, options, 1, sizeof *options, err);
+    if (kept == NULL)
+        return NULL;
+    kept->range[0] = kept->range[1] = 0;
+    kept->expected_shift = NULL;
+    kept->instrument = options->instrument != NULL ? instrument : NULL;
+    for (size_t i = 0; i < kept->fixed.n; i++)
+        if ((kept->fixed.item[i] = lw_arena_text(arena, options->fixed.item[i], err)) == NULL)
+            return NULL;
+    return kept;
+}
+
 /* One fit of the scan, or of the range that the options name. *crop_deg > 0 and no lines: fit again below it. */
 static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_reflection *reflections, size_t n,
                           const lw_material *material, const lw_fit_options *options, lw_lines **out, double *crop_deg,
@@ -95,22 +132,7 @@ static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_refle
         lines->scan = lines->cropped;
     }
     fit.scan = lines->scan;
-    fit.model = (lw_model){.engine = engine,
-                           .kernel = lw_voigt_kernel_for(engine->cpu),
-                           .radiation = &lines->radiation,
-                           .on_s_axis = options->axis == 0,
-                           .with_factor = options->intensity_factor == 0,
-                           .axial = (lw_axial_kind)options->axial};
-    double mono = cos(options->monochromator_deg * M_PI / 180);
-    fit.model.constant_polarisation = 1 - options->polarised;
-    fit.model.cos2_monochromator = options->polarised * mono * mono;
-    if (options->instrument != NULL) {
-        lines->has_instrument = true;
-        lines->instrument = *options->instrument;
-        memcpy(fit.model.instrument, options->instrument->value, sizeof fit.model.instrument);
-        fit.model.axial = options->instrument->axial;
-        fit.model.table = options->instrument->table;
-    }
+    lw__fit_begin(&fit);
     if (status == LW_OK && material != NULL &&
         (lines->material = lw_arena_copy(&lines->arena, material, 1, sizeof *material, err)) == NULL)
         status = LW_OUT_OF_MEMORY;
@@ -119,11 +141,14 @@ static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_refle
     if (status == LW_OK)
         status = lw__fit_take_background_scan(&fit, err);
     if (status == LW_OK)
-        status = take_state(&fit, err);
+        status = lw__fit_take_state(&fit, err);
     if (status == LW_OK)
         status = lw__fit_run(&fit, err);
     if (status == LW_OK && !(fit.crop_deg > 0))
         status = lw_fit_result(&fit, err);
+    if (status == LW_OK &&
+        (lines->options = lw__fit_keep_options(options, &lines->instrument, &lines->arena, err)) == NULL)
+        status = LW_OUT_OF_MEMORY;
     *crop_deg = fit.crop_deg;
     lw_arena_end(&fit.scratch);
     if (status != LW_OK || *crop_deg > 0) {

@@ -44,6 +44,16 @@ typedef struct lw_fit_state {
     lw_width_function shared;      /* the smooth width function, kept when lines get widths of their own */
 } lw_fit_state;
 
+/* Sets the model up from scan, options and instrument; takes the instrument into the lines. */
+void lw__fit_begin(lw_fit_state *fit);
+
+/* Takes what there is one of for each line, once fit->n is known. */
+lw_status lw__fit_take_state(lw_fit_state *fit, lw_error *err);
+
+/* A copy of the options that lives in the arena, for lines->options. */
+const lw_fit_options *lw__fit_keep_options(const lw_fit_options *options, const lw_width_function *instrument,
+                                           lw_arena *arena, lw_error *err);
+
 /* The stages in their order. With fit->crop_deg set at its end the fit is to be run again below that angle. */
 lw_status lw__fit_run(lw_fit_state *fit, lw_error *err);
 

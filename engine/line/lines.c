@@ -431,6 +431,7 @@ lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
         line->at_gauss = free_local && !model->shape->held[0] ? row + 2 : LW_NO_PARAMETER;
         line->at_lorentz = free_local && !model->shape->held[1] ? row + 3 : LW_NO_PARAMETER;
         line->shared_width = model->n_local == 0 || fit->hold_local[k];
+        line->held_position = fit->hold_position[k];
         line->two_theta = lw_quantity_of(fit->position[k], sqrt(lines->covariance[row * n + row]), "deg");
         line->area = lw_quantity_of(fit->area[k], sqrt(lines->covariance[(row + 1) * n + row + 1]), unit);
         line->supported = line->area.value > 3 * line->area.u;

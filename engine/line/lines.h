@@ -29,6 +29,7 @@ typedef struct lw_line {
     double u_instrument_breadth_deg;
     double residual_misfit;     /* chi-square per point within 1.5 FWHM of the line */
     bool shared_width;          /* its width comes from the function shared by lines, not from itself alone */
+    bool held_position;         /* its place was held where it is expected */
     size_t at_position, at_area, at_gauss, at_lorentz; /* rows of the covariance, or LW_NO_PARAMETER;
                                    at_gauss is the SQUARE of the own Gaussian FWHM (deg^2) */
 } lw_line;
@@ -67,6 +68,8 @@ typedef struct lw_lines {
     /* curves, at the scan's points */
     double *fitted, *background, *variance;
     double background_scan_scale, u_background_scan_scale; /* 0 without a background scan */
+    const struct lw_fit_options *options; /* as they were given, without range and expected_shift; its background
+                                             scan is borrowed */
 } lw_lines;
 
 typedef struct lw_fit_options {
@@ -100,6 +103,17 @@ lw_fit_options lw_fit_defaults(void);
  *         standard or radiation?"); LW_OUT_OF_RANGE if a line lies outside the instrument's valid range. */
 lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflection *reflections, size_t n,
                        const lw_material *material, const lw_fit_options *options, lw_lines **lines, lw_error *err);
+/* The same fit of another scan of the same angles: same options, lines, background terms and held parameters, from
+ * where the first one ended. For repeated noise and for other draws of the instrument.
+ * Given:  from        lines as lw_fit_lines() returned them, of shape "voigt" with an instrument
+ *         scan        with the points of from->scan; borrowed by the new lines
+ *         instrument  to fold in, NULL = the same; copied
+ *         background  scan of the holder where the first fit had one, NULL = the same
+ * Returned: *lines; free with lw_lines_free()
+ * Errors: LW_BAD_ARGUMENT for other points or another shape; those of lw_fit_lines(). */
+lw_status lw_refit_lines(lw_engine *engine, const lw_lines *from, const lw_scan *scan,
+                         const lw_width_function *instrument, const lw_scan *background, lw_lines **lines,
+                         lw_error *err);
 void lw_lines_free(lw_lines *lines);
 
 /* The fit as a result tree: lines (list), statistics, width function. */

@@ -333,7 +333,8 @@ lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calib
     lw_arena_begin(&profiles->arena, engine);
     lw_status status = LW_OK;
     profiles->profile = lw_arena_take(&profiles->arena, supported, sizeof *profiles->profile, err);
-    if (profiles->profile == NULL)
+    profiles->options = lw_arena_copy(&profiles->arena, options, 1, sizeof *options, err);
+    if (profiles->profile == NULL || profiles->options == NULL)
         status = LW_OUT_OF_MEMORY;
     for (size_t k = 0, at = 0; k < lines->n && status == LW_OK; k++)
         if (lines->line[k].supported)

@@ -44,6 +44,8 @@ typedef struct lw_profiles {
     size_t n_covariance;
     double *covariance; /* of gauss_s, lorentz_s, breadth_s of all profiles (rows by at_...), nm^-2,
                            calibration's part included: shared, so lines are correlated */
+    const struct lw_deconvolve_options *options; /* as they were given */
+    bool by_physics; /* lines were separated and completed by physical shapes, not by Voigts */
 } lw_profiles;
 
 typedef struct lw_deconvolve_options {
