@@ -25,7 +25,7 @@ lw_status lw__fit_take_background_scan(lw_fit_state *fit, lw_error *err)
     return LW_OK;
 }
 
-lw_status lw__fit_set_background(lw_fit_state *fit, size_t terms, lw_error *err)
+void lw__fit_set_background(lw_fit_state *fit, size_t terms)
 {
     bool hyperbola = fit->options->background_hyperbola;
     double special[2] = {0, 0};
@@ -36,13 +36,7 @@ lw_status lw__fit_set_background(lw_fit_state *fit, size_t terms, lw_error *err)
         fit->background[i] = 0;
     memcpy(fit->background + terms, special, n_special * sizeof(double));
     fit->terms = terms;
-    double *weight = fit->model.weight, *curve = fit->model.curve;
-    lw_status status = lw_model_points(&fit->model, fit->scan, terms, hyperbola, fit->extra, &fit->scratch, err);
-    if (status == LW_OK && weight != NULL) {
-        memcpy(fit->model.weight, weight, fit->scan->n * sizeof *weight);
-        memcpy(fit->model.curve, curve, fit->scan->n * sizeof *curve);
-    }
-    return status;
+    lw_model_background(&fit->model, terms, hyperbola, fit->extra);
 }
 
 /* Terms beyond which the background would follow the lines' tails: its shortest wave, twice the span over the order,
@@ -68,9 +62,8 @@ lw_status lw__fit_choose_background(lw_fit_state *fit, lw_error *err)
     size_t most = most_terms(fit);
     while (fit->terms + 2 <= most && misses < 2) {
         double scale = fmax(1, best / (double)fit->scan->n);
-        lw_status status = lw__fit_set_background(fit, fit->terms + 2, err);
-        if (status == LW_OK)
-            status = lw__fit_stage(fit, 1, false, err);
+        lw__fit_set_background(fit, fit->terms + 2);
+        lw_status status = lw__fit_stage(fit, 1, false, err);
         if (status != LW_OK)
             return status;
         double gain = (best - fit->chi2) / scale, price = (double)(fit->terms - kept) * log((double)fit->scan->n);
@@ -84,9 +77,8 @@ lw_status lw__fit_choose_background(lw_fit_state *fit, lw_error *err)
     }
     if (fit->terms != kept) {
         /* the special terms stand behind the Chebyshev ones: put the kept vector back as it was */
-        lw_status status = lw__fit_set_background(fit, kept, err);
+        lw__fit_set_background(fit, kept);
         memcpy(fit->background, keep, sizeof keep);
-        return status;
     }
     return LW_OK;
 }

@@ -211,7 +211,10 @@ static lw_status start_model(lw_fit_state *fit, lw_error *err)
     if (terms == 0)
         terms = span > 60 ? 6 : span > 15 ? 4 : 2;
     fit->background[0] = background[scan->n / 2];
-    status = lw__fit_set_background(fit, terms, err);
+    status = lw_model_points(model, scan, LW_BACKGROUND_MOST, &fit->scratch, err);
+    if (status != LW_OK)
+        return status;
+    lw__fit_set_background(fit, terms);
     if (status == LW_OK)
         status = lw_model_prepare(model, &fit->scratch, err);
     if (status == LW_OK)

@@ -67,7 +67,7 @@ bool lw__fit_is_fixed(const lw_fit_options *options, const char *name);
 lw_status lw__fit_take_background_scan(lw_fit_state *fit, lw_error *err);
 
 /* Background with `terms` Chebyshev terms; keeps the coefficients there are. */
-lw_status lw__fit_set_background(lw_fit_state *fit, size_t terms, lw_error *err);
+void lw__fit_set_background(lw_fit_state *fit, size_t terms);
 
 /* More background terms while the Bayesian information criterion falls (Schwarz 1978 Ann. Stat. 6, 461). */
 lw_status lw__fit_choose_background(lw_fit_state *fit, lw_error *err);

@@ -30,12 +30,18 @@ size_t lw_model_parameters(const lw_model *model)
 
 lw_status lw_model_prepare(lw_model *model, lw_arena *arena, lw_error *err)
 {
-    size_t n = model->n_lines;
-    model->near_columns = lw_arena_take(arena, n * LW_COLUMNS * LW_BLOCK, sizeof(double), err);
-    model->close_columns = lw_arena_take(arena, n * LW_COLUMNS * LW_BUNDLE * LW_FAR_NODES, sizeof(double), err);
-    model->bundle_columns = lw_arena_take(arena, n * LW_COLUMNS * LW_BUNDLE_NODES, sizeof(double), err);
-    model->line_nodes = lw_arena_take(arena, n * LW_NODES_MOST, sizeof(lw_voigt_node), err);
-    model->merged = lw_arena_take(arena, n * LW_EMISSION_MOST, sizeof(lw_voigt_node), err);
+    size_t n = model->n_lines, shapes = 1;
+    if (model->table != NULL)
+        shapes = model->table->n;
+    else if (model->axial != LW_AXIAL_NONE)
+        shapes = LW_AXIAL_NODES_MOST;
+    model->nodes_most = shapes * model->radiation->n;
+    /* written before they are read: zeroing them would only touch memory */
+    model->near_columns = lw_arena_take_raw(arena, n * LW_COLUMNS * LW_BLOCK, sizeof(double), err);
+    model->close_columns = lw_arena_take_raw(arena, n * LW_COLUMNS * LW_BUNDLE * LW_FAR_NODES, sizeof(double), err);
+    model->bundle_columns = lw_arena_take_raw(arena, n * LW_COLUMNS * LW_BUNDLE_NODES, sizeof(double), err);
+    model->line_nodes = lw_arena_take_raw(arena, n * model->nodes_most, sizeof(lw_voigt_node), err);
+    model->merged = lw_arena_take_raw(arena, n * LW_EMISSION_MOST, sizeof(lw_voigt_node), err);
     model->n_line_nodes = lw_arena_take(arena, n, sizeof(size_t), err);
     model->n_merged = lw_arena_take(arena, n, sizeof(size_t), err);
     model->near = lw_arena_take(arena, n, sizeof(size_t), err);
@@ -198,7 +204,7 @@ bool lw_model_set_lines(const lw_model *model, const double *p)
         line->secant2 = 1 / (cosine * cosine);
         line->factor = lw_model_factor(model, line->position, &line->factor_slope);
         lw_node_recipe recipe = recipe_of(model, k, axial, slopes);
-        lw_voigt_node *node = model->line_nodes + k * LW_NODES_MOST;
+        lw_voigt_node *node = model->line_nodes + k * model->nodes_most;
         model->n_line_nodes[k] = lw_line_nodes(&recipe, line->position, node);
         double extra = 0;
         lw_voigt_node *merged = model->merged + k * LW_EMISSION_MOST;

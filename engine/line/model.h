@@ -56,11 +56,12 @@ typedef struct lw_model {
     const double *y;
     double *weight;            /* 1/variance, set between iterations: then `weighed` is to be made false */
     bool weighed;              /* the products below belong to `weight` */
-    const double *from_nodes;  /* [n_blocks][LW_FAR_NODES][LW_BLOCK]: interpolation from a block's nodes */
+    const double *from_nodes;  /* [LW_FAR_NODES][LW_BLOCK] a block: interpolation from a block's nodes */
+    size_t from_nodes_stride;  /* from one block to the next; 0 where the step is even: all blocks share one */
     const double *from_bundle; /* [n_blocks][LW_BUNDLE_NODES][LW_FAR_NODES]: from its bundle's nodes to a block's */
     /* background */
-    size_t n_background;
-    const double *basis;       /* [n_background][padded n] */
+    size_t n_background, background_room, n_chebyshev; /* columns; most columns; how many of them are polynomials */
+    double *basis;             /* [background_room][padded n] */
     double *basis_square;      /* [n_background][n_background]: basis' W basis, lower triangle */
     double *basis_moment;      /* [n_bundles][n_background][LW_BUNDLE][LW_FAR_NODES]: basis' W from_nodes */
     double *bundle_moment;     /* [n_bundles][n_background][LW_BUNDLE_NODES]: the same, handed on to the bundles */
@@ -78,6 +79,7 @@ typedef struct lw_model {
     double *near_columns;   /* [n_lines][LW_COLUMNS][LW_BLOCK] */
     double *close_columns;  /* [n_lines][LW_COLUMNS][LW_BUNDLE x LW_FAR_NODES] */
     double *bundle_columns; /* [n_lines][LW_COLUMNS][LW_BUNDLE_NODES] */
+    size_t nodes_most;      /* of a line */
     lw_voigt_node *line_nodes, *merged;
     size_t *n_line_nodes, *n_merged, *near, *far, *close;
     struct lw_line_state *state;
@@ -88,10 +90,12 @@ size_t lw_model_parameters(const lw_model *model);
 size_t lw_model_row(const lw_model *model, size_t line);   /* of the line's position */
 size_t lw_model_border(const lw_model *model);             /* row of background term 0 */
 
-/* Lays out points, blocks and interpolation for a scan. Chebyshev background of `terms` terms on the scan's range,
- * then optionally 1/2theta and the extra column (n values, or NULL). */
-lw_status lw_model_points(lw_model *model, const lw_scan *scan, size_t terms, bool hyperbola, const double *extra,
-                          lw_arena *arena, lw_error *err);
+/* Lays out points, blocks and interpolation for a scan, with room for a background of background_room columns. */
+lw_status lw_model_points(lw_model *model, const lw_scan *scan, size_t background_room, lw_arena *arena, lw_error *err);
+
+/* Background of `terms` Chebyshev terms on the scan's range, then optionally 1/2theta and the extra column (n values, or
+ * NULL); all of them fit into the room taken. */
+void lw_model_background(lw_model *model, size_t terms, bool hyperbola, const double *extra);
 
 /* Takes scratch for the present lines and globals. Call again after their number changed. */
 lw_status lw_model_prepare(lw_model *model, lw_arena *arena, lw_error *err);

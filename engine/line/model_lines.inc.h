@@ -37,7 +37,7 @@ static void line_columns(const lw_model *model, size_t k, bool near, const lw_mo
     for (size_t i = 0; i < LW_VOIGT_SHAPES; i++)
         shape[i] = column + (2 + LW_LOCAL_MOST + i) * stride;
     offsets(model, line, places, from, count, x, slope);
-    const lw_voigt_node *node = near ? model->line_nodes + k * LW_NODES_MOST : model->merged + k * LW_EMISSION_MOST;
+    const lw_voigt_node *node = near ? model->line_nodes + k * model->nodes_most : model->merged + k * LW_EMISSION_MOST;
     size_t n_nodes = near ? model->n_line_nodes[k] : model->n_merged[k], n_columns = 2 + model->n_local;
     bool axial = slopes && model->shape->is_voigt && has_axial_slopes(model);
     if (model->shape->is_voigt) {

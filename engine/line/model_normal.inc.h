@@ -345,7 +345,7 @@ static void evaluate_block(const evaluation *e, bundle *u, size_t at)
     k.at = at;
     k.in_bundle = at - u->first;
     k.weight = model->weight + at * LW_BLOCK;
-    k.from_nodes = model->from_nodes + at * LW_FAR_NODES * LW_BLOCK;
+    k.from_nodes = model->from_nodes + at * model->from_nodes_stride;
     k.from_bundle = model->from_bundle + at * LW_BUNDLE_NODES * LW_FAR_NODES;
     far_tails(e, u, &k);
     add_background(e, &k);

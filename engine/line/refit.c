@@ -46,9 +46,10 @@ static lw_status take_over(lw_fit_state *fit, const lw_lines *from, lw_error *er
     fit->model.n_lines = n;
     fit->model.shape = lw_line_shape_list[fit->options->shape];
     memcpy(fit->lines->variance, from->variance, from->scan->n * sizeof(double));
-    status = lw__fit_set_background(fit, from->n_background, err);
+    status = lw_model_points(&fit->model, fit->scan, LW_BACKGROUND_MOST, &fit->scratch, err);
     if (status != LW_OK)
         return status;
+    lw__fit_set_background(fit, from->n_background);
     memcpy(fit->background, from->parameter + from->at_background, fit->model.n_background * sizeof(double));
     for (size_t i = 0; i < from->scan->n; i++)
         fit->model.weight[i] = 1 / from->variance[i];

@@ -73,9 +73,10 @@ int main(int argc, char **argv)
         model.global[1] = (lw_global){.parameter = LW_AXIAL_2};
     }
     model.line = lw_arena_take(&arena, n_lines, sizeof *model.line, &err);
-    if (model.line == NULL || lw_model_points(&model, &scan, n_terms, false, NULL, &arena, &err) != LW_OK ||
+    if (model.line == NULL || lw_model_points(&model, &scan, n_terms, &arena, &err) != LW_OK ||
         lw_model_prepare(&model, &arena, &err) != LW_OK)
         bench_stop(&err);
+    lw_model_background(&model, n_terms, false, NULL);
     size_t n_par = lw_model_parameters(&model);
     double *p0 = bench_take(n_par, sizeof *p0), *p = bench_take(n_par, sizeof *p), *lower = bench_take(n_par, sizeof *lower);
     double *seconds = bench_take(repeats, sizeof *seconds);
@@ -100,8 +101,9 @@ int main(int argc, char **argv)
         }
         if (round == 0) {
             draw(&model, &normal, p0, counts);
-            if (lw_model_points(&model, &scan, n_terms, false, NULL, &arena, &err) != LW_OK)
+            if (lw_model_points(&model, &scan, n_terms, &arena, &err) != LW_OK)
                 bench_stop(&err);
+            lw_model_background(&model, n_terms, false, NULL);
         }
     }
     lw_problem problem = {.n = n_par, .lower = lower, .evaluate = lw_model_evaluate, .user = &model};

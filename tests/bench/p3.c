@@ -38,9 +38,10 @@ static void begin(window *w, lw_engine *engine, const lw_radiation *radiation, d
                           .n_lines = 1,
                           .n_local = 2};
     w->model.line = lw_arena_take(arena, 1, sizeof *w->model.line, &err);
-    if (w->model.line == NULL || lw_model_points(&w->model, &scan, 2, false, NULL, arena, &err) != LW_OK ||
+    if (w->model.line == NULL || lw_model_points(&w->model, &scan, 2, arena, &err) != LW_OK ||
         lw_model_prepare(&w->model, arena, &err) != LW_OK)
         bench_stop(&err);
+    lw_model_background(&w->model, 2, false, NULL);
     w->model.line[0].nominal_deg = middle;
     w->y = bench_take(w->model.n_blocks * LW_BLOCK, sizeof(double));
     w->model.y = w->y;

@@ -51,7 +51,8 @@ static void begin(setup *s, int shape, bool s_axis, lw_axial_kind axial, const d
     for (int i = 0; i < 2; i++)
         m->own[LW_AXIAL_1 + i] = axial_value[i];
     m->line = lw_arena_take(&s->arena, LINES, sizeof *m->line, &err);
-    CHECK(lw_model_points(m, &scan, TERMS, true, NULL, &s->arena, &err) == LW_OK);
+    CHECK(lw_model_points(m, &scan, TERMS + 1, &s->arena, &err) == LW_OK);
+    lw_model_background(m, TERMS, true, NULL);
     for (int k = 0; k < LINES; k++)
         m->line[k].nominal_deg = place[k];
 }
