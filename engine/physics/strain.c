@@ -155,6 +155,7 @@ const lw_strain_form lw_strain_voigt = {
     .unit = {"", "nm"},
     .least = {0, 0},
     .most = {INFINITY, INFINITY},
+    .linear = true,
     .displacement = voigt,
     .kink = voigt_kink,
     .start = voigt_start,

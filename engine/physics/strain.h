@@ -6,6 +6,8 @@
 #ifndef LW_PHYSICS_STRAIN_H
 #define LW_PHYSICS_STRAIN_H
 
+#include <stdbool.h>
+
 #define LW_STRAIN_PARAMETERS_MOST 2
 
 typedef struct lw_strain_form {
@@ -16,6 +18,7 @@ typedef struct lw_strain_form {
     const char *parameter[LW_STRAIN_PARAMETERS_MOST];
     const char *unit[LW_STRAIN_PARAMETERS_MOST];
     double least[LW_STRAIN_PARAMETERS_MOST], most[LW_STRAIN_PARAMETERS_MOST]; /* bounds of the parameters */
+    bool linear; /* <Delta^2> is linear in all parameters; if not, in the first alone */
     /* <Delta^2> at L >= 0 (nm) and its slopes to the parameters (NULL = not wanted) */
     double (*displacement)(const double *p, double length_nm, double *slopes);
     /* limit of <Delta^2>/L at L = 0 (nm), which makes tails that fall as 1/s^2, and its slopes */

@@ -8,19 +8,25 @@
 #include <string.h>
 
 #define PI 3.14159265358979323846
-#define BLOCK 64
 
 static const double degree = PI / 180;
 
-size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line)
+size_t lw_pattern_background_row(const lw_pattern *pattern)
 {
-    return LW_PATTERN_BACKGROUND + pattern->n_background + 2 * line;
+    return LW_PATTERN_SIZE + pattern->shape.n_size;
 }
 
-lw_spheres lw_pattern_spheres(const double *p)
+size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line)
 {
-    double sigma = p[LW_PATTERN_SIGMA];
-    return (lw_spheres){1.5 * exp(-2.5 * sigma * sigma) / p[LW_PATTERN_INVERSE_SIZE], sigma};
+    return lw_pattern_background_row(pattern) + pattern->n_background + 2 * line;
+}
+
+/* The step of length, the middle of the grid by alternating signs, and the spline: its values at the points are those of
+ * the coefficients' transform times (2 + cos)/3 (Unser et al. 1993). */
+double lw_pattern_lift(const lw_pattern *pattern, size_t j)
+{
+    double spline = (2 + cos(2 * PI * (double)j / (double)pattern->n_fft)) / 3;
+    return (j % 2 == 0 ? 1 : -1) * pattern->length_step / spline;
 }
 
 static double s_of(const lw_pattern *pattern, double two_theta_deg)
@@ -60,7 +66,7 @@ static void choose_lengths(lw_pattern *pattern)
     longest = fmin(longest, 6000);
     pattern->n_lengths = (size_t)fmin(ceil(longest / pattern->length_step) + 1, 16384);
     size_t n = 512;
-    while (n < 8 * pattern->n_lengths)
+    while (n < 4 * pattern->n_lengths) /* the spline is then as exact as the sum's end */
         n *= 2;
     pattern->n_fft = n;
 }
@@ -103,8 +109,9 @@ lw_status lw_pattern_instrument(lw_pattern *pattern, const lw_width_function *in
         for (size_t j = 0; j < pattern->n_lengths; j++) {
             double length = pattern->length_step * (double)j;
             double gauss = exp(-PI * PI / (4 * M_LN2) * variance * per * per * length * length);
+            gauss *= lw_pattern_lift(pattern, j);
             line->g[2 * j] *= gauss;
-            line->g[2 * j + 1] *= gauss;
+            line->g[2 * j + 1] *= -gauss; /* the FFT has exp(+2 pi i L s), the profile exp(-2 pi i L s) */
         }
     }
     lw_give(pattern->engine, node, LW_NODES_MOST * sizeof *node);
@@ -119,6 +126,29 @@ static double direction_of(const lw_material *material, const lw_reflection *r)
     return (h * k + h * l + k * l) / ((h + k + l) * (h + k + l));
 }
 
+/* What the 1/s^2 tails of the neighbouring periods add at s, a unit of tail. */
+static double neighbours(double s, double period)
+{
+    double x = PI * s / period;
+    if (fabs(x) < 1e-2)
+        return (PI / period) * (PI / period) * (1.0 / 3 + x * x / 15);
+    double sine = sin(x);
+    return (PI / period) * (PI / period) * (1 / (sine * sine) - 1 / (x * x));
+}
+
+/* Their spline's coefficients: the values less a sixth of their second difference (the next term is below 1e-10). */
+static void set_neighbours(lw_pattern *pattern)
+{
+    double period = 1 / pattern->length_step, cell = period / (double)pattern->n_fft;
+    for (size_t i = 0; i < pattern->n_fft; i++) {
+        double s = cell * ((double)i - (double)(pattern->n_fft / 2)), here = neighbours(s, period);
+        if (i == 0)
+            s = here = 0; /* a pole's neighbour, never used */
+        double bend = i == 0 ? 0 : neighbours(s + cell, period) - 2 * here + neighbours(s - cell, period);
+        pattern->neighbours[i] = here - bend / 6;
+    }
+}
+
 lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles,
                            lw_arena *arena, lw_error *err)
 {
@@ -129,22 +159,29 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
                             .n = scan->n,
                             .n_lines = lines->n,
                             .n_background = lines->n_background,
-                            .strain = &lw_strain_constant};
-    pattern->n_parameters = lw_pattern_position_row(pattern, lines->n);
+                            .rung = lw_pattern_rung_for(engine->cpu)};
     choose_lengths(pattern);
+    if (lw_pattern_shape_begin(&pattern->shape, pattern->n_lengths, pattern->length_step, arena, err) != LW_OK)
+        return err->status;
+    pattern->n_parameters = lw_pattern_position_row(pattern, lines->n);
     size_t n = pattern->n, m = pattern->n_lengths, f = pattern->n_fft;
-    double **array[] = {&pattern->s, &pattern->factor, &pattern->weight, &pattern->curve, &pattern->of_lines};
+    double **array[] = {&pattern->s,     &pattern->factor,   &pattern->fallen,  &pattern->weight,
+                        &pattern->curve, &pattern->of_lines, &pattern->residual};
     for (size_t i = 0; i < sizeof array / sizeof *array; i++)
         *array[i] = take(arena, n, err);
-    double **by_length[] = {
-        &pattern->size,         &pattern->size_slopes[0],         &pattern->size_slopes[1],
-        &pattern->displacement, &pattern->displacement_slopes[0], &pattern->displacement_slopes[1]};
-    for (size_t i = 0; i < sizeof by_length / sizeof *by_length; i++)
-        *by_length[i] = take(arena, m, err);
-    for (size_t i = 0; i < 1 + LW_PATTERN_SHAPES; i++)
-        pattern->profile[i] = take(arena, f, err);
+    size_t channels = 1 + pattern->shape.n_size + LW_PATTERN_STRAIN_MOST;
+    size_t padded = pattern->n_parameters + LW_PATTERN_TILE;
+    pattern->falls = take(arena, 2 * m, err);
     pattern->spectrum = take(arena, f + 2, err);
-    pattern->column = take(arena, pattern->n_parameters * BLOCK, err);
+    pattern->grid = take(arena, channels * f, err);
+    pattern->neighbours = take(arena, f, err);
+    pattern->shared = take(arena, (LW_PATTERN_SHARED_MOST + 1) * n, err);
+    pattern->own = take(arena, 2 * lines->n * n, err);
+    pattern->column = take(arena, padded * LW_PATTERN_BLOCK, err);
+    pattern->weighted = take(arena, padded * LW_PATTERN_BLOCK, err);
+    pattern->total = take(arena, lw_pattern_total_size(padded), err);
+    pattern->source = lw_arena_take(arena, pattern->n_parameters, sizeof *pattern->source, err);
+    pattern->fallen_at = NAN;
     pattern->basis = take(arena, (pattern->n_background + 1) * n, err);
     pattern->line = lw_arena_take(arena, lines->n, sizeof *pattern->line, err);
     for (size_t k = 0; k < lines->n && err->status == LW_OK; k++)
@@ -155,6 +192,7 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
     if (pattern->plan == NULL)
         return err->status;
 
+    set_neighbours(pattern);
     double low = scan->two_theta_deg[0], high = scan->two_theta_deg[n - 1];
     double term[64];
     if (pattern->n_background > 64)
@@ -169,7 +207,7 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
         for (size_t j = 0; j < pattern->n_background; j++)
             pattern->basis[j * n + i] = term[j];
     }
-        /* P/sin^2(theta) is for lines that are narrow against s. The mean over orientations of a crystal whose transform is
+    /* P/sin^2(theta) is for lines that are narrow against s. The mean over orientations of a crystal whose transform is
      * round is exactly profile(s - s0)/(s s0): across a line the factor goes as 1/s (Guinier 1963 X-ray Diffraction,
      * ch. 5, from the integral over the sphere of radius s) */
     for (size_t i = 0; i < n && lines->n > 0 && lines->with_factor; i++)
@@ -203,263 +241,4 @@ void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, doub
             factor *= pattern->line[k].s_start / pattern->line[0].s_start;
         p[lw_pattern_position_row(pattern, k) + 1] = line->area.value * per / factor;
     }
-}
-
-/* Profile of one line and its slopes to the shape parameters on the grid of s, period 1/length_step; returns
- * the strength of the 1/s^2 tail in tail[0] and its slopes in tail[1..]. */
-static void line_profiles(lw_pattern *pattern, const lw_pattern_line *line, double moved, const double *p,
-                          bool slopes, double *tail)
-{
-    double s0 = line->s_corrected + moved, strain = 2 * PI * PI * s0 * s0;
-    double scale = 1 - p[LW_PATTERN_ANISOTROPY] * line->hkl_sum;
-    int n_strain = pattern->strain->n, curves = slopes ? 1 + LW_PATTERN_SHAPES : 1;
-    double *c = pattern->spectrum;
-    size_t n_c = 2 * (pattern->n_fft / 2 + 1);
-    for (int which = 0; which < curves; which++) {
-        if (which == 1 + LW_PATTERN_STRAIN_2 && n_strain < 2)
-            continue;
-        if (which == 1 + LW_PATTERN_ANISOTROPY && line->hkl_sum == 0)
-            continue;
-        size_t last = 0;
-        for (size_t j = 0; j < pattern->n_lengths; j++) {
-            double a = exp(-strain * scale * pattern->displacement[j]);
-            switch (which - 1) {
-            case -1: a *= pattern->size[j]; break;
-            case LW_PATTERN_INVERSE_SIZE: a *= pattern->size_slopes[0][j]; break;
-            case LW_PATTERN_SIGMA: a *= pattern->size_slopes[1][j]; break;
-            case LW_PATTERN_STRAIN_1:
-            case LW_PATTERN_STRAIN_2:
-                a *= -strain * scale * pattern->size[j] *
-                     pattern->displacement_slopes[which - 1 - LW_PATTERN_STRAIN_1][j];
-                break;
-            default: a *= strain * line->hkl_sum * pattern->size[j] * pattern->displacement[j]; break;
-            }
-            c[2 * j] = a * line->g[2 * j] * pattern->length_step;
-            /* the sum below has exp(+2 pi i L s), the profile exp(-2 pi i L s) */
-            c[2 * j + 1] = -a * line->g[2 * j + 1] * pattern->length_step;
-            last = j + 1;
-        }
-        memset(c + 2 * last, 0, (n_c - 2 * last) * sizeof *c);
-        lw_fft_back(pattern->plan, c, pattern->profile[which]);
-    }
-    double kink_slopes[2] = {0, 0};
-    double kink = pattern->strain->kink(p + LW_PATTERN_STRAIN_1, kink_slopes);
-    double unit = 1 / (2 * PI * PI);
-    tail[0] = unit * (p[LW_PATTERN_INVERSE_SIZE] + strain * scale * kink + line->kink);
-    tail[1 + LW_PATTERN_INVERSE_SIZE] = unit;
-    tail[1 + LW_PATTERN_SIGMA] = 0;
-    tail[1 + LW_PATTERN_STRAIN_1] = unit * strain * scale * kink_slopes[0];
-    tail[1 + LW_PATTERN_STRAIN_2] = unit * strain * scale * kink_slopes[1];
-    tail[1 + LW_PATTERN_ANISOTROPY] = -unit * strain * line->hkl_sum * kink;
-}
-
-/* Value (and slope to s) of the profile `which` at s from the line. */
-static inline double at(const double *grid, size_t n, double x, double *slope)
-{
-    double whole = floor(x), t = x - whole;
-    size_t mask = n - 1, i = (size_t)((long long)whole + (long long)n) & mask; /* n is a power of 2 */
-    double a = grid[(i + n - 1) & mask], b = grid[i], c = grid[(i + 1) & mask], d = grid[(i + 2) & mask];
-    double c1 = c - a / 3 - b / 2 - d / 6, c2 = 0.5 * (a + c) - b, c3 = (d - a) / 6 + 0.5 * (b - c);
-    if (slope != NULL)
-        *slope = c1 + t * (2 * c2 + t * 3 * c3);
-    return b + t * (c1 + t * (c2 + t * c3));
-}
-
-/* What the 1/s^2 tails of the neighbouring periods add at s, a unit of tail. */
-static inline double neighbours(double s, double period)
-{
-    double x = PI * s / period;
-    if (fabs(x) < 1e-2)
-        return (PI / period) * (PI / period) * (1.0 / 3 + x * x / 15);
-    double sine = sin(x);
-    return (PI / period) * (PI / period) * (1 / (sine * sine) - 1 / (x * x));
-}
-
-static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_normal *normal,
-                          const double *difference, double *g, lw_error *err);
-
-static bool possible(const lw_pattern *pattern, const double *p)
-{
-    if (!(p[LW_PATTERN_INVERSE_SIZE] > 0) || !(p[LW_PATTERN_SIGMA] > 0))
-        return false;
-    for (size_t k = 0; k < pattern->n_lines; k++)
-        if (!(1 - p[LW_PATTERN_ANISOTROPY] * pattern->line[k].hkl_sum >= 0))
-            return false;
-    return true;
-}
-
-lw_status lw_pattern_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
-{
-    return evaluate(user, p, want_normal, normal, NULL, NULL, err);
-}
-
-lw_status lw_pattern_project(lw_pattern *pattern, const double *p, const double *difference, double *g,
-                             lw_error *err)
-{
-    return evaluate(pattern, p, true, NULL, difference, g, err);
-}
-
-/* The parts of one line that all its points share. */
-typedef struct line_values {
-    double tail[1 + LW_PATTERN_SHAPES];
-    double *curve[2 + LW_PATTERN_SHAPES]; /* [n] unit-area profile, its slopes to the shapes, and to the
-                                             position */
-} line_values;
-
-/* All points of one line into values. */
-static void spread(const lw_pattern *pattern, double s0, double fall, bool slopes, const bool *wanted,
-                   line_values *v)
-{
-    double period = 1 / pattern->length_step, per_cell = (double)pattern->n_fft / period;
-    for (size_t i = 0; i < pattern->n; i++) {
-        double s = pattern->s[i] - s0, by_s = 0;
-        double factor = pattern->factor[i];
-        if (fall != 0)
-            factor *= exp(-fall * (pattern->s[i] * pattern->s[i] - s0 * s0));
-        if (fabs(s) < 0.5 * period) {
-            double others = neighbours(s, period), x = s * per_cell;
-            v->curve[0][i] = factor * (at(pattern->profile[0], pattern->n_fft, x, slopes ? &by_s : NULL) -
-                                       v->tail[0] * others);
-            if (!slopes)
-                continue;
-            for (int w = 1; w <= LW_PATTERN_SHAPES; w++)
-                if (wanted[w])
-                    v->curve[w][i] =
-                        factor * (at(pattern->profile[w], pattern->n_fft, x, NULL) - v->tail[w] * others);
-            v->curve[1 + LW_PATTERN_SHAPES][i] = -factor * by_s * per_cell;
-        } else {
-            double square = factor / (s * s);
-            v->curve[0][i] = v->tail[0] * square;
-            if (!slopes)
-                continue;
-            for (int w = 1; w <= LW_PATTERN_SHAPES; w++)
-                if (wanted[w])
-                    v->curve[w][i] = v->tail[w] * square;
-            v->curve[1 + LW_PATTERN_SHAPES][i] = 2 * v->tail[0] * square / s;
-        }
-    }
-}
-
-/* Adds one block of points to the normal equations; column holds the slopes, block of a parameter after
- * another. */
-static void add_block(const lw_pattern *pattern, size_t first, size_t count, const double *residual,
-                      lw_normal *normal, double *g)
-{
-    size_t n = pattern->n_parameters;
-    double weighted[BLOCK];
-    for (size_t a = 0; a < n; a++) {
-        const double *col = pattern->column + a * BLOCK;
-        double sum = 0;
-        for (size_t i = 0; i < count; i++) {
-            weighted[i] = col[i] * pattern->weight[first + i];
-            sum += weighted[i] * residual[first + i];
-        }
-        for (size_t i = count; i < BLOCK; i++)
-            weighted[i] = 0;
-        g[a] += sum;
-        if (normal == NULL)
-            continue;
-        for (size_t b = 0; b <= a; b++) {
-            const double *other = pattern->column + b * BLOCK;
-            double part[8] = {0};
-            for (size_t i = 0; i < BLOCK; i += 8)
-                for (size_t j = 0; j < 8; j++)
-                    part[j] += weighted[i + j] * other[i + j];
-            normal->h[a * n + b] +=
-                ((part[0] + part[1]) + (part[2] + part[3])) + ((part[4] + part[5]) + (part[6] + part[7]));
-        }
-    }
-}
-
-static lw_status evaluate(lw_pattern *pattern, const double *p, bool slopes, lw_normal *normal,
-                          const double *difference, double *g, lw_error *err)
-{
-    size_t n = pattern->n, m = pattern->n_lines, rows = 2 + LW_PATTERN_SHAPES;
-    const lw_scan *scan = pattern->profiles->lines->scan;
-    if (normal != NULL && !possible(pattern, p)) {
-        normal->chi2 = INFINITY;
-        return LW_OK;
-    }
-    lw_status status = lw_engine_poll(pattern->engine, err);
-    if (status != LW_OK)
-        return status;
-    lw_arena scratch;
-    lw_arena_begin(&scratch, pattern->engine);
-    /* curves that all lines share: slopes to shapes and to the fall, summed over lines; then two a line */
-    double *shared = take(&scratch, (LW_PATTERN_SHAPES + 1) * n, err),
-           *own = slopes ? take(&scratch, 2 * m * n, err) : NULL;
-    double *work = take(&scratch, rows * n, err), *residual = take(&scratch, n, err);
-    if (!shared || (slopes && !own) || !work || !residual) {
-        lw_arena_end(&scratch);
-        return LW_OUT_OF_MEMORY;
-    }
-    lw_spheres spheres = lw_pattern_spheres(p);
-    for (size_t j = 0; j < pattern->n_lengths; j++) {
-        double length = pattern->length_step * (double)j, by_size[2], by_strain[2] = {0, 0};
-        pattern->size[j] = lw_spheres_coefficient(&spheres, length, by_size);
-        pattern->size_slopes[0][j] = -by_size[0] / p[LW_PATTERN_INVERSE_SIZE];
-        pattern->size_slopes[1][j] = by_size[1] - 5 * spheres.sigma * by_size[0];
-        pattern->displacement[j] = pattern->strain->displacement(p + LW_PATTERN_STRAIN_1, length, by_strain);
-        pattern->displacement_slopes[0][j] = by_strain[0];
-        pattern->displacement_slopes[1][j] = by_strain[1];
-    }
-    memset(pattern->of_lines, 0, n * sizeof(double));
-    for (size_t k = 0; k < m; k++) {
-        const lw_pattern_line *line = &pattern->line[k];
-        line_values v;
-        bool wanted[1 + LW_PATTERN_SHAPES];
-        for (size_t w = 0; w < rows; w++)
-            v.curve[w] = work + w * n;
-        if (slopes) {
-            v.curve[0] = own + (2 * k + 1) * n;
-            v.curve[1 + LW_PATTERN_SHAPES] = own + 2 * k * n;
-        }
-        for (int w = 0; w <= LW_PATTERN_SHAPES; w++)
-            wanted[w] = !(w == 1 + LW_PATTERN_STRAIN_2 && pattern->strain->n < 2) &&
-                        !(w == 1 + LW_PATTERN_ANISOTROPY && line->hkl_sum == 0);
-        size_t row = lw_pattern_position_row(pattern, k);
-        double area = p[row + 1], s0 = line->s_start + p[row];
-        line_profiles(pattern, line, p[row], p, slopes, v.tail);
-        spread(pattern, s0, p[LW_PATTERN_FALL], slopes, wanted, &v);
-        for (size_t i = 0; i < n; i++)
-            pattern->of_lines[i] += area * v.curve[0][i];
-        if (!slopes)
-            continue;
-        for (int w = 0; w < LW_PATTERN_SHAPES; w++)
-            if (wanted[w + 1])
-                for (size_t i = 0; i < n; i++)
-                    shared[(size_t)w * n + i] += area * v.curve[w + 1][i];
-        double *by_fall = shared + (size_t)LW_PATTERN_FALL * n;
-        for (size_t i = 0; i < n; i++) {
-            by_fall[i] -= area * v.curve[0][i] * (pattern->s[i] * pattern->s[i] - s0 * s0);
-            v.curve[1 + LW_PATTERN_SHAPES][i] *= area;
-        }
-    }
-    double chi2 = 0;
-    for (size_t i = 0; i < n; i++) {
-        double sum = pattern->profiles->lines->background[i] + pattern->of_lines[i];
-        for (size_t j = 0; j < pattern->n_background; j++)
-            sum += p[LW_PATTERN_BACKGROUND + j] * pattern->basis[j * n + i];
-        pattern->curve[i] = sum;
-        residual[i] = difference != NULL ? difference[i] : scan->intensity[i] - sum;
-        chi2 += residual[i] * residual[i] * pattern->weight[i];
-    }
-    if (normal != NULL)
-        normal->chi2 = chi2;
-    for (size_t first = 0; first < n && slopes; first += BLOCK) {
-        size_t count = n - first < BLOCK ? n - first : BLOCK;
-        for (size_t a = 0; a < pattern->n_parameters; a++) {
-            const double *from = a <= LW_PATTERN_FALL ? shared + a * n
-                                 : a < lw_pattern_position_row(pattern, 0)
-                                     ? pattern->basis + (a - LW_PATTERN_BACKGROUND) * n
-                                     : own + (a - lw_pattern_position_row(pattern, 0)) * n;
-            double *to = pattern->column + a * BLOCK;
-            memcpy(to, from + first, count * sizeof *to);
-            for (size_t i = count; i < BLOCK; i++)
-                to[i] = 0;
-        }
-        add_block(pattern, first, count, residual, normal, normal != NULL ? normal->g : g);
-    }
-    lw_arena_end(&scratch);
-    return LW_OK;
 }

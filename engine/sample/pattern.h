@@ -5,26 +5,17 @@
  * G(L) the instrument's closed transform; H tells the direction in a cubic crystal. The transform is summed on a grid of L
  * by an FFT. Sums over a grid repeat with a period in s; what the neighbouring periods add is taken off by the
  * closed sum of their 1/s^2 tails, whose strength is the kink of A(L) at L = 0, and beyond half a period the tail
- * itself is used. Source: Scardi & Leoni (2002) Acta Cryst. A 58, 190; Warren & Averbach (1950). */
+ * itself is used. Between the FFT's points stands a cubic spline, whose coefficients come out of the same FFT.
+ * Source: Scardi & Leoni (2002) Acta Cryst. A 58, 190; Warren & Averbach (1950); splines: Unser, Aldroubi & Eden
+ * (1993) IEEE Trans. Signal Process. 41, 821. */
 #ifndef LW_SAMPLE_PATTERN_H
 #define LW_SAMPLE_PATTERN_H
 
 #include "numeric/fft.h"
 #include "numeric/least_squares.h"
-#include "physics/size_distribution.h"
-#include "physics/strain.h"
 #include "profile/profiles.h"
-
-enum {
-    LW_PATTERN_INVERSE_SIZE, /* of the area-weighted size, nm^-1: what the lines say best, whatever sigma is */
-    LW_PATTERN_SIGMA,        /* of ln(diameter) */
-    LW_PATTERN_STRAIN_1,
-    LW_PATTERN_STRAIN_2,
-    LW_PATTERN_ANISOTROPY, /* q */
-    LW_PATTERN_SHAPES,
-    LW_PATTERN_FALL = LW_PATTERN_SHAPES, /* of the scattering power across a line, exp(-fall (s^2 - s0^2)), nm^2 */
-    LW_PATTERN_BACKGROUND                /* first Chebyshev term added to the line fit's background */
-};
+#include "sample/pattern_rung.h"
+#include "sample/pattern_shape.h"
 
 typedef struct lw_pattern_line {
     const lw_line *line;
@@ -32,16 +23,20 @@ typedef struct lw_pattern_line {
     double s_corrected;  /* nm^-1, of the lattice: scales strain */
     double hkl_sum;      /* H = (h2k2 + h2l2 + k2l2)/(h2 + k2 + l2)^2 of a cubic crystal, else 0 */
     double kink;         /* fall of ln|G| at L = 0, nm^-1 */
-    double *g;           /* [2 n_lengths] G(L), re and im */
+    double lift;         /* at the last evaluation, what makes the fall of the scattering power 1 at the line */
+    double *g;           /* [2 n_lengths] G(L), re and im, times lw_pattern_lift() */
 } lw_pattern_line;
 
 typedef struct lw_pattern {
     lw_engine *engine;
     const lw_profiles *profiles;
-    const lw_strain_form *strain;
+    const lw_pattern_rung *rung;
+    lw_pattern_shape shape;
     size_t n, n_lines, n_background, n_parameters;
+    const bool *fixed; /* [n_parameters] or NULL: rows that the normal equations may leave at zero */
     double *s;        /* [n] 2 sin(theta)/lambda of the points */
     double *factor;   /* [n] intensity factor of the points */
+    double *fallen, fallen_at; /* [n] the same with the fall of the scattering power, and for which fall */
     double *weight;   /* [n] 1/variance */
     double *basis;    /* [n_background][n] */
     double *curve;    /* [n] model at the last evaluation */
@@ -51,24 +46,32 @@ typedef struct lw_pattern {
     double length_step;
     size_t n_lengths, n_fft;
     lw_fft *plan;
-    double *size, *size_slopes[2], *displacement, *displacement_slopes[2]; /* [n_lengths] */
-    double *spectrum, *profile[1 + LW_PATTERN_SHAPES];
-    double *column; /* [n_parameters][64] */
+    double *falls, *spectrum, *grid;  /* [2 n_lengths], [n_fft + 2], [channels][n_fft] */
+    double *neighbours;               /* [n_fft] spline of what the other periods' tails add, a unit of tail */
+    /* work of one evaluation */
+    double *residual;                 /* [n] */
+    double *shared;                   /* [LW_PATTERN_SHARED_MOST + 1][n]: slopes to the shared rows */
+    double *own;                      /* [n_lines][2][n]: position and area */
+    double *column, *weighted;        /* [n_parameters, padded][LW_PATTERN_BLOCK] */
+    double *total;
+    lw_pattern_source *source;        /* [n_parameters] */
 } lw_pattern;
 
 /* Lays out a pattern for the scan behind the profiles. Voigt lines with an instrument on the s axis only:
- * LW_NOT_SUPPORTED otherwise. p[n_parameters] receives the start: lines and background of the line fit, and the given
- * median diameter, sigma and mean square strain. n_parameters = LW_PATTERN_BACKGROUND + n_background + 2 n_lines. */
+ * LW_NOT_SUPPORTED otherwise. n_parameters = lw_pattern_position_row(pattern, n_lines). */
 lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles, lw_arena *arena,
                            lw_error *err);
-/* The spheres that the parameters p describe. */
-lw_spheres lw_pattern_spheres(const double *p);
 
+/* p[n_parameters] receives the start: lines and background of the line fit, the given spheres, no strain. */
 void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, double *p);
+size_t lw_pattern_background_row(const lw_pattern *pattern); /* first Chebyshev term added to the line fit's background */
 size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line); /* nm^-1 from s_start; the area is the next */
 
 /* G(L) of every line, for the instrument's width function or another one. */
 lw_status lw_pattern_instrument(lw_pattern *pattern, const lw_width_function *instrument, lw_error *err);
+
+/* What G at length j is multiplied with, so that the FFT gives the spline's coefficients with the line in the middle. */
+double lw_pattern_lift(const lw_pattern *pattern, size_t j);
 
 /* The callback of lw_problem; user is the pattern. */
 lw_status lw_pattern_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);

@@ -125,8 +125,8 @@ static lw_status begin(fitter *f, lw_engine *engine, const lw_profiles *profiles
     lw_spheres spheres = {.sigma = 0.35};
     spheres.median_nm = fmin(fmax(size / (0.75 * exp(3.5 * spheres.sigma * spheres.sigma)), 0.6), 1e4);
     lw_pattern_start(m, &spheres, f->p);
-    f->p[LW_PATTERN_STRAIN_1] = square;
-    memcpy(f->start_shape, f->p, sizeof f->start_shape);
+    f->p[LW_PATTERN_STRAIN] = square;
+    memcpy(f->start_shape, f->p + LW_PATTERN_SIZE, sizeof f->start_shape);
     for (size_t i = 0; i < n; i++) {
         f->lower[i] = -INFINITY;
         f->upper[i] = INFINITY;
@@ -137,6 +137,7 @@ static lw_status begin(fitter *f, lw_engine *engine, const lw_profiles *profiles
     f->upper[LW_PATTERN_SIGMA] = 1.2;
     f->lower[LW_PATTERN_ANISOTROPY] = -20;
     f->upper[LW_PATTERN_ANISOTROPY] = 2.99;
+    m->fixed = f->fixed;
     f->fixed[LW_PATTERN_ANISOTROPY] = f->request->anisotropy != 2 || !enough_directions(f);
     f->lower[LW_PATTERN_FALL] = -0.02;
     f->upper[LW_PATTERN_FALL] = 0.1;
@@ -166,7 +167,7 @@ static void quantities(const fitter *f, const lw_strain_form *strain, bool none,
     for (size_t i = 0; i <= LW_ANSWER_LENGTHS; i++) {
         double length = i == 0 ? half : f->answer->length[i - 1];
         bool there = !none && (i == 0 || i <= f->answer->n_lengths);
-        double square = there ? scale * strain->displacement(shape + LW_PATTERN_STRAIN_1, length, NULL) : 0;
+        double square = there ? scale * strain->displacement(shape + LW_PATTERN_STRAIN, length, NULL) : 0;
         value[LW_ANSWER_STRAIN + i] = there ? sqrt(fmax(square, 0)) / length : 0;
     }
 }
@@ -174,14 +175,14 @@ static void quantities(const fitter *f, const lw_strain_form *strain, bool none,
 /* Values and covariance of a form's quantities from its parameters and their covariance. */
 static void propagate(const fitter *f, lw_pattern_form *form, const double *covariance)
 {
-    size_t n = f->pattern.n_parameters;
-    double slope[LW_PATTERN_SHAPES][LW_ANSWER_MOST] = {{0}}, up[LW_ANSWER_MOST], down[LW_ANSWER_MOST];
+    size_t n = f->pattern.n_parameters, shared = lw_pattern_background_row(&f->pattern);
+    double slope[LW_PATTERN_SHARED_MOST][LW_ANSWER_MOST] = {{0}}, up[LW_ANSWER_MOST], down[LW_ANSWER_MOST];
     quantities(f, form->strain, form->none, form->shape, form->value);
-    for (int i = 0; i < LW_PATTERN_SHAPES; i++) {
-        double u = sqrt(fmax(covariance[(size_t)i * n + (size_t)i], 0));
+    for (size_t i = 0; i < shared; i++) {
+        double u = sqrt(fmax(covariance[i * n + i], 0));
         if (!(u > 0))
             continue;
-        double shape[LW_PATTERN_SHAPES], step = 1e-3 * u;
+        double shape[LW_PATTERN_SHARED_MOST], step = 1e-3 * u;
         memcpy(shape, form->shape, sizeof shape);
         shape[i] = form->shape[i] + step;
         quantities(f, form->strain, form->none, shape, up);
@@ -198,9 +199,9 @@ static void propagate(const fitter *f, lw_pattern_form *form, const double *cova
     for (int a = 0; a < LW_ANSWER_MOST; a++)
         for (int b = 0; b < LW_ANSWER_MOST; b++) {
             double sum = 0;
-            for (int i = 0; i < LW_PATTERN_SHAPES; i++)
-                for (int j = 0; j < LW_PATTERN_SHAPES; j++)
-                    sum += slope[i][a] * covariance[(size_t)i * n + (size_t)j] * slope[j][b];
+            for (size_t i = 0; i < shared; i++)
+                for (size_t j = 0; j < shared; j++)
+                    sum += slope[i][a] * covariance[i * n + j] * slope[j][b];
             form->covariance[a][b] = sum;
         }
 }
@@ -219,7 +220,7 @@ static lw_status invert(fitter *f, lw_error *err)
         return status;
     for (size_t i = 0; i < n; i++) {
         /* no size or no strain is a bound with an uncertainty: their limits come from it */
-        bool told = i == LW_PATTERN_INVERSE_SIZE || (i == LW_PATTERN_STRAIN_1 && f->pattern.strain->n == 1);
+        bool told = i == LW_PATTERN_INVERSE_SIZE || (i == LW_PATTERN_STRAIN && f->pattern.shape.n_strain == 1);
         f->skip[i] = f->fixed[i] || (f->at_bound[i] && !told) || !(f->normal_h[i * n + i] > 0);
     }
     for (int held = 0; held < 4; held++) {
@@ -240,9 +241,9 @@ static lw_status invert(fitter *f, lw_error *err)
 static lw_status minimise(fitter *f, lw_pattern_form *form, lw_error *err)
 {
     lw_pattern *m = &f->pattern;
-    m->strain = form->strain;
-    for (int i = 0; i < LW_STRAIN_PARAMETERS_MOST; i++) {
-        size_t row = (size_t)(LW_PATTERN_STRAIN_1 + i);
+    lw_pattern_shape_set_strain(&m->shape, form->strain);
+    for (int i = 0; i < LW_PATTERN_STRAIN_MOST; i++) {
+        size_t row = (size_t)(LW_PATTERN_STRAIN + i);
         bool used = !form->none && i < form->strain->n;
         f->fixed[row] = !used;
         f->lower[row] = used ? form->strain->least[i] : -INFINITY;
@@ -281,7 +282,7 @@ static lw_status minimise(fitter *f, lw_pattern_form *form, lw_error *err)
     form->n_free = 0;
     for (size_t i = 0; i < m->n_parameters; i++)
         form->n_free += !f->fixed[i];
-    memcpy(form->shape, f->p, sizeof form->shape);
+    memcpy(form->shape, f->p, lw_pattern_background_row(&f->pattern) * sizeof *form->shape);
     return LW_OK;
 }
 
@@ -307,10 +308,10 @@ static void restart_strain(fitter *f, const lw_strain_form *from, const lw_strai
 {
     lw_spheres spheres = lw_pattern_spheres(f->p);
     double length = fmin(0.5 * lw_spheres_size_volume(&spheres, NULL), f->half_length);
-    double square = from->displacement(f->p + LW_PATTERN_STRAIN_1, length, NULL) / (length * length);
+    double square = from->displacement(f->p + LW_PATTERN_STRAIN, length, NULL) / (length * length);
     double p[LW_STRAIN_PARAMETERS_MOST] = {0};
     to->start(fmax(square, 1e-9), length, p);
-    memcpy(f->p + LW_PATTERN_STRAIN_1, p, sizeof p);
+    memcpy(f->p + LW_PATTERN_STRAIN, p, sizeof p);
 }
 
 /* ---------------------------------------------------------------------------------------------- instrument */
@@ -348,7 +349,7 @@ static lw_status instrument_differences(fitter *f, lw_error *err)
 static lw_status whole_covariance(fitter *f, lw_pattern_form *form, double misfit, double *covariance, lw_error *err)
 {
     lw_pattern *m = &f->pattern;
-    size_t n = m->n_parameters;
+    size_t n = m->n_parameters, shared = lw_pattern_background_row(m);
     const lw_width_function *instrument = &m->profiles->lines->instrument;
     lw_status status = invert(f, err);
     if (status != LW_OK)
@@ -364,12 +365,12 @@ static lw_status whole_covariance(fitter *f, lw_pattern_form *form, double misfi
         status = lw_pattern_project(m, f->p, f->by_instrument[q], g, err);
         if (status != LW_OK)
             return status;
-        for (size_t i = 0; i < LW_PATTERN_SHAPES; i++)
+        for (size_t i = 0; i < shared; i++)
             for (size_t j = 0; j < n; j++)
                 shift[q][i] += f->inverse[i * n + j] * g[j];
     }
-    for (size_t i = 0; i < LW_PATTERN_SHAPES; i++)
-        for (size_t j = 0; j < LW_PATTERN_SHAPES; j++) {
+    for (size_t i = 0; i < shared; i++)
+        for (size_t j = 0; j < shared; j++) {
             double sum = misfit * misfit * f->inverse[i * n + j];
             for (int a = 0; a < LW_WIDTH_PARAMETERS; a++)
                 for (int b = 0; b < LW_WIDTH_PARAMETERS; b++)
@@ -378,7 +379,7 @@ static lw_status whole_covariance(fitter *f, lw_pattern_form *form, double misfi
                                sqrt(instrument->covariance[a][a] * instrument->covariance[b][b]);
             covariance[i * n + j] = sum;
         }
-    memcpy(form->shape, f->p, sizeof form->shape);
+    memcpy(form->shape, f->p, lw_pattern_background_row(&f->pattern) * sizeof *form->shape);
     return LW_OK;
 }
 
@@ -489,7 +490,7 @@ static void restore(fitter *f, const saved *from, const lw_pattern_form *form)
     memcpy(f->p, from->p, n * sizeof(double));
     memcpy(f->fixed, from->fixed, n * sizeof(bool));
     memcpy(f->at_bound, from->at_bound, n * sizeof(bool));
-    f->pattern.strain = form->strain;
+    lw_pattern_shape_set_strain(&f->pattern.shape, form->strain);
 }
 
 /* The forms to try, the constant first: it tells whether there is strain at all. */
@@ -542,9 +543,9 @@ lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const l
         status = invert(&f, err);
     if (status != LW_OK)
         return status;
-    size_t n = f.pattern.n_parameters, strain_at = LW_PATTERN_STRAIN_1 * (n + 1);
-    double u_strain = sqrt(fmax(f.inverse[strain_at], 0)), strain = f.p[LW_PATTERN_STRAIN_1];
-    bool strained = strain > 3 * u_strain && !f.at_bound[LW_PATTERN_STRAIN_1];
+    size_t n = f.pattern.n_parameters, strain_at = LW_PATTERN_STRAIN * (n + 1);
+    double u_strain = sqrt(fmax(f.inverse[strain_at], 0)), strain = f.p[LW_PATTERN_STRAIN];
+    bool strained = strain > 3 * u_strain && !f.at_bound[LW_PATTERN_STRAIN];
     a->size_unresolved = !size_stands_out(&f);
     if (a->size_unresolved) {
         f.p[LW_PATTERN_SIGMA] = ASSUMED_SIGMA;
@@ -571,7 +572,7 @@ lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const l
                 if (decaying != NULL)
                     memcpy(f.p, decaying->p, n * sizeof(double));
                 else if (!a->size_unresolved)
-                    memcpy(f.p, f.start_shape, sizeof f.start_shape);
+                    memcpy(f.p + LW_PATTERN_SIZE, f.start_shape, sizeof f.start_shape);
                 restart_strain(&f, decaying != NULL ? decaying_form : &lw_strain_constant, form->strain);
             }
         }

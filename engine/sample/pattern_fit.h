@@ -36,7 +36,7 @@ typedef struct lw_pattern_form {
     double chi2, weight; /* weight: its share of the answer */
     double correlation;  /* of neighbouring points' residuals over their u */
     size_t n_free, iterations;
-    double shape[LW_PATTERN_SHAPES + 1]; /* and the fall */
+    double shape[LW_PATTERN_SHARED_MOST];
     double value[LW_ANSWER_MOST];
     double covariance[LW_ANSWER_MOST][LW_ANSWER_MOST];
 } lw_pattern_form;

@@ -103,7 +103,7 @@ static void tell_forms(const lw_pattern_answer *a, lw_node *result, lw_error *er
             lw_add_number(row, "size_area", form->value[LW_ANSWER_SIZE_AREA], err);
             lw_add_number(row, "strain_rms", form->value[LW_ANSWER_STRAIN], err);
             for (int k = 0; k < form->strain->n && !form->none; k++)
-                lw_add_number(row, form->strain->parameter[k], form->shape[LW_PATTERN_STRAIN_1 + k], err);
+                lw_add_number(row, form->strain->parameter[k], form->shape[LW_PATTERN_STRAIN + k], err);
         } else {
             lw_add_text(row, "left_out", form->why, err);
         }

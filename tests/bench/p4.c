@@ -1,10 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Benchmark P4: the whole pattern in Fourier space, sample and instrument.
- * usage: bench_p4 FOLDER REPEATS
+ * usage: bench_p4 FOLDER REPEATS [plain|avx2|avx512]
  * 12 lines of a face-centred cubic cell, ideal Cu K-alpha doublet, 6,000 points from 25 to 150 deg, lognormal spheres, a
  * strain that is the same over every length, anisotropy, 8 background terms. Times the value with chi2, and value with
  * the normal equations of all parameters. Writes what the baseline needs to do the same to FOLDER/pattern.bin (lengths,
- * their step, grid points, s of the lines, H of the lines, kinks, parameters), FOLDER/instrument.bin (G of the lines) and
+ * their step, s of the lines, H of the lines, kinks, parameters), FOLDER/instrument.bin (G of the lines) and
  * FOLDER/curve.bin; prints one JSON line. */
 #include "bench.h"
 #include "sample/pattern.h"
@@ -60,14 +60,15 @@ static void check(lw_status status, const lw_error *err)
 
 int main(int argc, char **argv)
 {
-    size_t repeats = argc == 3 ? strtoul(argv[2], NULL, 10) : 0;
+    size_t repeats = argc == 3 || argc == 4 ? strtoul(argv[2], NULL, 10) : 0;
     if (repeats == 0) {
-        fprintf(stderr, "usage: bench_p4 FOLDER REPEATS\n");
+        fprintf(stderr, "usage: bench_p4 FOLDER REPEATS [RUNG]\n");
         return 2;
     }
     lw_error err = LW_ERROR_NONE;
     lw_engine engine;
     lw_engine_begin(&engine);
+    engine.cpu = bench_rung(argc == 4 ? argv[3] : "auto");
     lw_arena arena;
     lw_arena_begin(&arena, &engine);
     for (size_t i = 0; i < POINTS; i++) {
@@ -94,40 +95,54 @@ int main(int argc, char **argv)
     set_lines(&lines, line, &profiles, profile);
     lw_pattern pattern;
     check(lw_pattern_begin(&pattern, &engine, &profiles, &arena, &err), &err);
-    size_t n = pattern.n_parameters;
-    double *p = bench_take(n, sizeof *p), *seconds = bench_take(repeats, sizeof *seconds);
+    size_t n = pattern.n_parameters, grid = pattern.n_fft;
+    double *p = bench_take(n, sizeof *p), *moved = bench_take(n, sizeof *moved), *seconds = bench_take(repeats, sizeof *seconds);
     lw_normal normal = {.n = n, .h = bench_take(n * n, sizeof(double)), .g = bench_take(n, sizeof(double))};
     lw_spheres spheres = {9, 0.35};
     lw_pattern_start(&pattern, &spheres, p);
-    p[LW_PATTERN_STRAIN_1] = 4e-6;
+    p[LW_PATTERN_STRAIN] = 4e-6;
     p[LW_PATTERN_ANISOTROPY] = 0.5;
 
+    /* no two evaluations at the same parameters: what does not change from step to step of a fit may be kept, no more */
     double median[2];
     for (int slopes = 0; slopes < 2; slopes++) {
         for (size_t i = 0; i < repeats; i++) {
             memset(normal.h, 0, n * n * sizeof(double));
             memset(normal.g, 0, n * sizeof(double));
+            for (size_t j = 0; j < n; j++)
+                moved[j] = j == LW_PATTERN_FALL || p[j] == 0 ? p[j] : p[j] * (1 + 1e-4 * (double)(repeats - 1 - i));
             double began = bench_now();
-            check(lw_pattern_evaluate(&pattern, p, slopes == 1, &normal, &err), &err);
+            check(lw_pattern_evaluate(&pattern, moved, slopes == 1, &normal, &err), &err);
             seconds[i] = bench_now() - began;
         }
         median[slopes] = bench_median(seconds, repeats);
     }
-    double trace = 0, facts[] = {(double)pattern.n_lengths, pattern.length_step, (double)pattern.n_fft, (double)n};
+    double trace = 0, facts[] = {(double)pattern.n_lengths, pattern.length_step};
     for (size_t i = 0; i < n; i++)
-        trace += i != LW_PATTERN_STRAIN_2 && normal.h[i * n + i] > 0 ? log(normal.h[i * n + i]) : 0;
-    write_doubles(argv[1], "pattern.bin", facts, 4, "wb");
+        trace += normal.h[i * n + i] > 0 ? log(normal.h[i * n + i]) : 0;
+    write_doubles(argv[1], "pattern.bin", facts, 2, "wb");
     for (size_t k = 0; k < LINES; k++) {
         double own[] = {pattern.line[k].s_start, pattern.line[k].hkl_sum, pattern.line[k].kink};
         write_doubles(argv[1], "pattern.bin", own, 3, "ab");
-        write_doubles(argv[1], "instrument.bin", pattern.line[k].g, 2 * pattern.n_lengths, k == 0 ? "wb" : "ab");
+        double *g = bench_take(2 * pattern.n_lengths, sizeof *g);
+        for (size_t j = 0; j < pattern.n_lengths; j++) {
+            g[2 * j] = pattern.line[k].g[2 * j] / lw_pattern_lift(&pattern, j);
+            g[2 * j + 1] = -pattern.line[k].g[2 * j + 1] / lw_pattern_lift(&pattern, j);
+        }
+        write_doubles(argv[1], "instrument.bin", g, 2 * pattern.n_lengths, k == 0 ? "wb" : "ab");
+        free(g);
     }
-    write_doubles(argv[1], "pattern.bin", p, n, "ab");
+    /* the baseline's parameters: inverse size, sigma, strain, anisotropy, fall, then the others */
+    double shared[] = {p[LW_PATTERN_INVERSE_SIZE], p[LW_PATTERN_SIGMA], p[LW_PATTERN_STRAIN], p[LW_PATTERN_ANISOTROPY],
+                       p[LW_PATTERN_FALL]};
+    write_doubles(argv[1], "pattern.bin", shared, 5, "ab");
+    write_doubles(argv[1], "pattern.bin", p + lw_pattern_background_row(&pattern), n - lw_pattern_background_row(&pattern), "ab");
     write_doubles(argv[1], "curve.bin", pattern.curve, POINTS, "wb");
-    printf("{\"value\": %.9g, \"seconds\": %.9g, \"lengths\": %zu, \"grid\": %zu, \"parameters\": %zu, \"chi2\": %.9g, "
+    printf("{\"rung\": \"%s\", \"value\": %.9g, \"seconds\": %.9g, \"lengths\": %zu, \"grid\": %zu, \"parameters\": %zu, \"chi2\": %.9g, "
            "\"log_diagonal\": %.9g}\n",
-           median[0], median[1], pattern.n_lengths, pattern.n_fft, n, normal.chi2, trace);
+           pattern.rung->name, median[0], median[1], pattern.n_lengths, grid, n, normal.chi2, trace);
     free(p);
+    free(moved);
     free(seconds);
     free(normal.h);
     free(normal.g);
