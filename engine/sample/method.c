@@ -6,11 +6,13 @@
 #include <string.h>
 
 extern const lw_method lw_method_scherrer, lw_method_williamson_hall, lw_method_halder_wagner,
-    lw_method_single_line_voigt, lw_method_double_voigt, lw_method_warren_averbach, lw_method_whole_pattern, lw_method_lattice;
+    lw_method_single_line_voigt, lw_method_double_voigt, lw_method_warren_averbach, lw_method_whole_pattern, lw_method_variance,
+    lw_method_lattice;
 
 const lw_method *const lw_method_list[] = {&lw_method_scherrer,      &lw_method_williamson_hall,
                                            &lw_method_halder_wagner, &lw_method_single_line_voigt, &lw_method_double_voigt,
                                            &lw_method_warren_averbach, &lw_method_whole_pattern,
+                                           &lw_method_variance,
                                            &lw_method_lattice, NULL};
 
 const lw_method *lw_method_named(const char *name)
