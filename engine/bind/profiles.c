@@ -40,6 +40,10 @@ static int deconvolve(lua_State *L)
     lua_setiuservalue(L, self, LWB_PROFILES_LINES);
     lua_pushvalue(L, instrument);
     lua_setiuservalue(L, self, LWB_PROFILES_CALIBRATION);
+    if (options.standard != NULL) {
+        lua_getfield(L, 2, "standard");
+        lua_setiuservalue(L, self, LWB_PROFILES_STANDARD);
+    }
     lwb_keep_options(L, self, LWB_PROFILES_OPTIONS, "deconvolve", lw_deconvolve_option_table, &options);
     lw_profiles *profiles = NULL;
     lw_status status = lw_deconvolve(lwb_engine(L), lines, calibration, &options, &profiles, &err);

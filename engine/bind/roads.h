@@ -21,7 +21,14 @@ enum {
 enum { LWB_CALIBRATION_LINES = 1, LWB_CALIBRATION_STANDARD, LWB_CALIBRATION_TREE, LWB_CALIBRATION_OPTIONS, LWB_CALIBRATION_VALUES = 4 };
 
 /* Of profiles. */
-enum { LWB_PROFILES_LINES = 1, LWB_PROFILES_CALIBRATION, LWB_PROFILES_TREE, LWB_PROFILES_OPTIONS, LWB_PROFILES_VALUES = 4 };
+enum {
+    LWB_PROFILES_LINES = 1,
+    LWB_PROFILES_CALIBRATION,
+    LWB_PROFILES_TREE,
+    LWB_PROFILES_OPTIONS,
+    LWB_PROFILES_STANDARD, /* nil where the calibration's function stands for the instrument */
+    LWB_PROFILES_VALUES = LWB_PROFILES_STANDARD
+};
 
 /* __index of such an object: entries of its list `list` by number, then methods (upvalue 1), fields of
  * the noun, and the fields of its tree (user value `tree_at`). Self and key are at 1 and 2. */

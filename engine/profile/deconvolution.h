@@ -9,6 +9,8 @@
 typedef struct lw_deconvolution {
     const char *name;
     const char *source; /* published source */
+    bool by_lines;      /* works on one line's data at a time, so that a standard's lines can stand for the
+                           instrument */
     /* Fills coefficients, breadth and refold of every profile in `profiles`; the Voigt parts are there
      * already. */
     lw_status (*run)(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,

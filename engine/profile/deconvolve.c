@@ -56,13 +56,19 @@ const lw_option lw_deconvolve_option_table[] = {
     {"realisations", LW_OPTION_COUNT, "", "20", 2, 10000, NULL, AT(realisations),
      "richardson_lucy: realisations of noise for the uncertainty"},
     {"seed", LW_OPTION_COUNT, "", "1", 0, 2147483647, NULL, AT(seed), "of the realisations"},
+    {"standard", LW_OPTION_NOUN, "lines", "", 0, 0, NULL, AT(standard),
+     "fitted lines of the standard: the instrument as measured on those nearest to each line, carried to its "
+     "angle, instead of the calibration's function (stokes, tikhonov, richardson_lucy, maximum_entropy)"},
+    {"standard_reach", LW_OPTION_NUMBER, "deg", "10", 0.1, 180, NULL, AT(standard_reach),
+     "how far a line of the standard may stand from the sample's"},
     {"accept_refold", LW_OPTION_FLAG, "", "false", 0, 0, NULL, AT(accept_refold),
      "go on although instrument x result does not give the data back"},
     LW_OPTIONS_END};
 
 lw_deconvolve_options lw_deconvolve_defaults(void)
 {
-    return (lw_deconvolve_options){.order = 2, .iterations_most = 500, .realisations = 20, .seed = 1};
+    return (lw_deconvolve_options){
+        .order = 2, .iterations_most = 500, .realisations = 20, .seed = 1, .standard_reach = 10};
 }
 
 double lw__s_per_degree(const lw_profiles *profiles, const lw_profile *profile)
@@ -315,6 +321,15 @@ lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calib
         return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0, "fit the lines with shape = voigt",
                           "lines of shape %s are not sums of the instrument's and the sample's part",
                           lines->shape);
+    const lw_deconvolution *method = methods[options->method];
+    if (options->standard != NULL && !method->by_lines)
+        return lw_fail_at(
+            err, LW_NOT_SUPPORTED, lines->scan->file, 0,
+            "say method = stokes, tikhonov, richardson_lucy or maximum_entropy, or leave the "
+            "standard out",
+            "method %s folds the calibration's own function into a fit: it can't take a standard's "
+            "measured lines",
+            method->name);
     size_t supported = 0;
     for (size_t k = 0; k < lines->n; k++)
         supported += lines->line[k].supported;
@@ -328,8 +343,8 @@ lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calib
     *profiles = (lw_profiles){.lines = lines,
                               .calibration = calibration,
                               .n = supported,
-                              .method = methods[options->method]->name,
-                              .source = methods[options->method]->source};
+                              .method = method->name,
+                              .source = method->source};
     lw_arena_begin(&profiles->arena, engine);
     lw_status status = LW_OK;
     profiles->profile = lw_arena_take(&profiles->arena, supported, sizeof *profiles->profile, err);
@@ -342,7 +357,7 @@ lw_status lw_deconvolve(lw_engine *engine, const lw_lines *lines, const lw_calib
     if (status == LW_OK)
         status = voigt_parts(profiles, err);
     if (status == LW_OK)
-        status = methods[options->method]->run(engine, profiles, options, err);
+        status = method->run(engine, profiles, options, err);
     if (status == LW_OK)
         status = check_refold(profiles, options->accept_refold, err);
     if (status != LW_OK) {

@@ -16,6 +16,45 @@ typedef struct table {
     double low, fine, *value;
 } table;
 
+/* Adds what the standard's lines tell otherwise than the calibration: the transform of G (R - 1) and of the
+ * triangle, over twice the table's length. */
+static lw_status add_measured(const lw__instrument *instrument, double spacing, lw_arena *scratch, table *out,
+                              lw_error *err)
+{
+    double step = 1 / (2 * out->fine * (double)out->n),
+           most = 2.5 / (instrument->fwhm_deg * instrument->per_degree);
+    size_t n = (size_t)fmin(most / step, 20000) + 2;
+    double *g[2], *with[2];
+    for (int i = 0; i < 2; i++) {
+        g[i] = lw_arena_take(scratch, n, sizeof(double), err);
+        with[i] = lw_arena_take(scratch, n, sizeof(double), err);
+    }
+    if (!g[0] || !g[1] || !with[0] || !with[1])
+        return LW_OUT_OF_MEMORY;
+    lw__instrument_transform(instrument, step, n, g[0], g[1]);
+    for (int i = 0; i < 2; i++)
+        memcpy(with[i], g[i], n * sizeof(double));
+    lw_status status = lw__carry_measured(instrument->measured, instrument->per_degree, step, n, with[0],
+                                          with[1], scratch, err);
+    if (status != LW_OK)
+        return status;
+    for (size_t k = 1; k < n; k++) {
+        double u = M_PI * spacing * step * (double)k, sinc = sin(u) / u,
+               scale = 2 * step * spacing * sinc * sinc;
+        double re = scale * (with[0][k] - g[0][k]), im = scale * (with[1][k] - g[1][k]);
+        double phase = 2 * M_PI * step * (double)k, turn_re = cos(phase * out->fine),
+               turn_im = sin(phase * out->fine);
+        double x = cos(phase * out->low), y = sin(phase * out->low);
+        for (size_t i = 0; i < out->n; i++) {
+            out->value[i] += re * x + im * y;
+            double next = x * turn_re - y * turn_im;
+            y = x * turn_im + y * turn_re;
+            x = next;
+        }
+    }
+    return LW_OK;
+}
+
 static lw_status take_table(const lw__job *job, const lw__instrument *instrument, double spacing,
                             double reach, lw_arena *scratch, table *out, lw_error *err)
 {
@@ -40,7 +79,7 @@ static lw_status take_table(const lw__job *job, const lw__instrument *instrument
             sum += (1 - (double)j / (double)per) * (y[i + per - j] + y[i + per + j]);
         out->value[i] = sum * out->fine / d;
     }
-    return LW_OK;
+    return instrument->measured != NULL ? add_measured(instrument, spacing, scratch, out, err) : LW_OK;
 }
 
 static double look_up(const table *t, double x)
@@ -190,7 +229,7 @@ void lw__grid_transform(const lw__job *job, const lw__grid *g, const double *x, 
 }
 
 lw_status lw__grid_coefficients(const lw__job *job, const lw__grid *g, const double *x, const double *c,
-                                lw_error *err)
+                                bool plainly, lw_error *err)
 {
     lw_profile *profile = job->profile;
     size_t m = g->m, n = profile->n_coefficients, under = 0;
@@ -227,8 +266,18 @@ lw_status lw__grid_coefficients(const lw__job *job, const lw__grid *g, const dou
         }
         profile->u_cosine[k] = k == 0 ? 0 : sqrt(fmax(var_re, 0));
         profile->u_sine[k] = k == 0 ? 0 : sqrt(fmax(var_im, 0));
-        under = k > 0 && fabs(a[k]) < 2 * profile->u_cosine[k] ? under + 1 : 0;
-        if (under == 3 && profile->truncated_at == n) {
+    }
+    if (plainly && job->measured.n > 0) {
+        lw_status status =
+            lw__add_measured(&job->measured, job->instrument.per_degree, profile, &scratch, err);
+        if (status != LW_OK) {
+            lw_arena_end(&scratch);
+            return status;
+        }
+    }
+    for (size_t k = 1; k < n && profile->truncated_at == n; k++) {
+        under = fabs(a[k]) < 2 * profile->u_cosine[k] ? under + 1 : 0;
+        if (under == 3) {
             profile->truncated_at = k - 2;
             profile->truncation = "three coefficients in a row below twice their uncertainty";
         }

@@ -32,9 +32,9 @@ double lw__grid_chi2(const lw__grid *grid, const double *x);
 double lw__grid_breadth(const lw__job *job, const lw__grid *grid, const double *x, double *slopes);
 
 /* Fills coefficients and curve of the profile from shape + x with the covariance c[m][m] of x, and truncates.
- */
+ * plainly: what a standard's noise makes of a plain quotient of transforms is added, because c lacks it. */
 lw_status lw__grid_coefficients(const lw__job *job, const lw__grid *grid, const double *x, const double *c,
-                                lw_error *err);
+                                bool plainly, lw_error *err);
 /* Coefficients alone: out[2 n_coefficients], cosines then sines. */
 void lw__grid_transform(const lw__job *job, const lw__grid *grid, const double *x, double *out);
 
@@ -46,6 +46,11 @@ bool lw__invert(double *a, size_t m, double *z);
  * makes. */
 lw_status lw__add_background(const lw__job *job, const lw__grid *grid, const double *z, double *c,
                              lw_arena *scratch, lw_error *err);
+
+/* Adds to c[m][m], the covariance of x = Z response' weight target, what the noise of the standard's counts
+ * makes, and leaves in the answer how the breadth goes with each of them. Nothing without a standard. */
+lw_status lw__add_standard(const lw__job *job, const lw__grid *grid, const double *x, const double *z,
+                           double *c, lw__answer *answer, lw_arena *scratch, lw_error *err);
 
 /* Degrees of freedom that an estimate x = Z response' weight target takes from chi2; zn[m][m] = Z normal. */
 double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn);

@@ -44,8 +44,16 @@ static void refold_shape(const lw__job *job)
     lw__set_refold(job->profile, chi2, freedom, data->n, lost, net);
 }
 
-static lw_status one_line(lw__job *job, const lw__separation *separation, size_t k, lw__solve_fn *solve,
-                          lw__answer *answer, double slope[2], lw_error *err)
+/* What a line's breadth leans on besides its own counts. */
+typedef struct leaning {
+    double angle_deg[3], by[3][2]; /* widths of the instrument: at its own angle, at the standard's lines */
+    lw__measured measured;
+    double *by_point[2]; /* [points of the standard's line's window] */
+} leaning;
+
+static lw_status one_line(lw__job *job, const lw__separation *separation, lw__standard *standard, size_t k,
+                          lw__solve_fn *solve, lw__answer *answer, leaning *lean, lw_arena *arena,
+                          lw_error *err)
 {
     lw_arena scratch;
     lw_arena_begin(&scratch, job->engine);
@@ -54,16 +62,27 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, size_t
     job->line = &separation->line[k];
     job->shape_breadth = lw__shape_breadth(&job->line->shape, NULL);
     job->shape_variance = job->profiles->covariance[profile->at_breadth * (job->profiles->n_covariance + 1)];
-    slope[0] = slope[1] = 0;
+    *lean = (leaning){0};
+    job->measured = (lw__measured){0};
     lw_status status = lw__take_lengths(job->profiles, profile, job->options, err);
     if (status == LW_OK)
         status =
             lw__take_window(job->profiles, k, separation, job->options->window, &scratch, &job->data, err);
     if (status == LW_OK)
         status = lw__take_instrument(job->profiles, profile, &scratch, &job->instrument, err);
+    if (status == LW_OK && standard != NULL) {
+        const char *how;
+        status = lw__take_measured(job->profiles, profile, standard, job->options->standard_reach, arena,
+                                   &job->measured, &how, err);
+        if (status == LW_OK && (profile->assumed = lw_arena_print(&job->profiles->arena, err, "%s; %s",
+                                                                  profile->assumed, how)) == NULL)
+            status = LW_OUT_OF_MEMORY;
+    }
+    lw__instrument taken = job->instrument;
+    taken.measured = standard != NULL ? &job->measured : NULL;
     *answer = (lw__answer){.breadth = job->shape_breadth, .from_shape = true};
     if (status == LW_OK && job->data.n >= 8 && job->line->area_s > 0 && job->shape_breadth > 0)
-        status = solve(job, &job->instrument, true, &scratch, answer, err);
+        status = solve(job, standard != NULL ? &taken : &job->instrument, true, &scratch, answer, err);
     if (status == LW_OK && answer->from_shape)
         refold_shape(job);
     /* noise whose neighbours go together weighs more in every sum over points, by its long-run variance */
@@ -75,13 +94,28 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, size_t
     }
     for (int i = 0; i < 2 && status == LW_OK && !answer->from_shape; i++) {
         /* the same data with an instrument a little wider */
-        lw__instrument wider = job->instrument;
+        lw__instrument wider = taken;
         double step = 0.02 * (i == 0 ? wider.fwhm_deg * wider.fwhm_deg : wider.fwhm_deg);
         *(i == 0 ? &wider.variance : &wider.lorentz) += step;
         lw__answer other = *answer;
         status = solve(job, &wider, false, &scratch, &other, err);
-        slope[i] = (other.breadth - answer->breadth) / step;
+        lean->by[0][i] = (other.breadth - answer->breadth) / step;
     }
+    lean->angle_deg[0] = profile->line->nominal_deg;
+    lean->measured = job->measured;
+    for (size_t j = 0; j < job->measured.n; j++) {
+        /* the calibration's widths at the standard's line divide what stands at this one; lengths there are
+         * longer by the stretch */
+        double stretch = job->measured.stretch[j], weight = job->measured.weight[j];
+        lean->angle_deg[1 + j] = job->measured.line[j]->angle_deg;
+        lean->by[1 + j][0] = -weight * stretch * stretch * lean->by[0][0];
+        lean->by[1 + j][1] = -weight * stretch * lean->by[0][1];
+    }
+    for (int j = 0; j < 2; j++)
+        lean->by_point[j] = answer->by_point[j];
+    if (status == LW_OK && standard != NULL && !answer->from_shape && lean->by_point[0] == NULL)
+        status = lw__measured_slopes(&job->measured, job->instrument.per_degree, profile, answer->breadth,
+                                     arena, lean->by_point, err);
     lw_arena_end(&scratch);
     return status == LW_OK ? lw_engine_poll(job->engine, err) : status;
 }
@@ -95,11 +129,14 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
     lw__physical_fit physical;
     lw_arena_begin(&scratch, engine);
     lw__answer *answer = lw_arena_take(&scratch, n, sizeof *answer, err);
-    double(*slope)[2] = lw_arena_take(&scratch, n, sizeof *slope, err);
-    lw_status status = answer == NULL || slope == NULL ? LW_OUT_OF_MEMORY : LW_OK;
+    leaning *lean = lw_arena_take(&scratch, n, sizeof *lean, err);
+    lw__standard standard;
+    lw_status status = answer == NULL || lean == NULL ? LW_OUT_OF_MEMORY : LW_OK;
     bool by_physics = options->completion == LW__BY_PHYSICS ||
                       (options->completion == LW__BY_MISFIT && profiles->lines->misfit_p < 0.2 && n <= 30);
     profiles->by_physics = by_physics;
+    if (status == LW_OK && options->standard != NULL)
+        status = lw__take_standard(profiles, options->standard, &scratch, &standard, err);
     if (status == LW_OK && by_physics)
         status = lw__separate_by_physics(engine, profiles, &scratch, &separation, &physical, err);
     else if (status == LW_OK)
@@ -111,10 +148,11 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
                 profiles->covariance[profile->at_breadth * stride + profiles->profile[b].at_breadth] =
                     physical.covariance[a * n + b];
         }
-    lw__job job = {.engine = engine, .profiles = profiles, .options = options};
+    lw__job job = {.engine = engine, .profiles = profiles, .options = options, .keep = &scratch};
     for (size_t k = 0; k < n && status == LW_OK; k++) {
         profiles->profile[k].assumed = separation.how;
-        status = one_line(&job, &separation, k, solve, &answer[k], slope[k], err);
+        status = one_line(&job, &separation, options->standard != NULL ? &standard : NULL, k, solve,
+                          &answer[k], &lean[k], &scratch, err);
         lw_engine_progress(engine, name, (double)(k + 1) / (double)n);
     }
     for (size_t a = 0; a < n && status == LW_OK; a++) {
@@ -134,8 +172,14 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
                 row[other->at_breadth] =
                     profiles->covariance[other->at_breadth * stride + profile->at_breadth] = 0;
             else
-                row[other->at_breadth] = lw__from_instrument(profiles, profile, slope[a], other, slope[b]) +
-                                         (a == b ? answer[a].variance : 0);
+                row[other->at_breadth] =
+                    lw__from_instrument(
+                        profiles, &(lw__leaning){1 + lean[a].measured.n, lean[a].angle_deg, lean[a].by},
+                        &(lw__leaning){1 + lean[b].measured.n, lean[b].angle_deg, lean[b].by}) +
+                    lw__measured_covariance(
+                        &lean[a].measured, lean[a].by_point, &lean[b].measured, lean[b].by_point,
+                        options->standard != NULL ? options->standard->scan->correlation : 0) +
+                    (a == b ? answer[a].variance : 0);
         }
         lw__set_breadth(profiles, profile, answer[a].breadth, sqrt(fmax(row[profile->at_breadth], 0)));
     }

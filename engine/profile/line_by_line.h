@@ -4,7 +4,7 @@
 #ifndef LW_PROFILE_LINE_BY_LINE_H
 #define LW_PROFILE_LINE_BY_LINE_H
 
-#include "profile/window.h"
+#include "profile/measured.h"
 
 enum { LW__BY_MISFIT, LW__BY_VOIGTS, LW__BY_PHYSICS }; /* the option completion */
 
@@ -17,6 +17,8 @@ typedef struct lw__job {
     const lw__separated *line;
     lw__window data;
     lw__instrument instrument; /* with which the line's curve was made */
+    lw__measured measured;     /* by the standard's lines; n = 0 without them */
+    lw_arena *keep;            /* for what outlives the line in hand */
     double shape_breadth,
         shape_variance; /* breadth of the completing shape and its variance by the fit, nm^-1 */
 } lw__job;
@@ -27,6 +29,7 @@ typedef struct lw__answer {
     double breadth;  /* nm^-1 */
     double variance; /* of it, by counting, background and what the data do not show; not by the instrument */
     double choice;
+    double *by_point[2]; /* slopes to the points of the standard's lines' windows; NULL: from the coefficients */
     bool from_shape; /* the data carry no departure from the shape: the fit's breadth stands */
 } lw__answer;
 

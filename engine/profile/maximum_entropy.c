@@ -124,6 +124,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     /* the posterior holds what the prior keeps back already */
     answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err) - bias * bias;
     lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn));
+    if ((status = lw__add_standard(job, &g, s.x, z, c, answer, scratch, err)) != LW_OK)
+        return status;
     job->profile->assumed = lw_arena_print(
         &job->profiles->arena, err,
         "%s; entropy against that shape, %s; %.2g of the breadth remains the shape's", job->profile->assumed,
@@ -133,7 +135,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
         share);
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
-    return lw__grid_coefficients(job, &g, s.x, c, err);
+    return lw__grid_coefficients(job, &g, s.x, c, false, err);
 }
 
 static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
@@ -147,4 +149,5 @@ const lw_deconvolution lw_deconvolution_maximum_entropy = {
     .source = "Skilling & Bryan (1984) Mon. Not. R. Astron. Soc. 211, 111; uncertainties: Gull (1989) in "
               "Maximum Entropy and "
               "Bayesian Methods, Kluwer, 53",
+    .by_lines = true,
     .run = run};

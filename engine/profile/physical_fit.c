@@ -73,7 +73,8 @@ static lw_status member_covariance(lw__physical *f, const double *p, const bool 
     double(*answer)[2] =
         lw_arena_take(scratch, lines * lines, sizeof *answer, err); /* [breadth a][widths at line k] */
     double *response = lw_arena_take(scratch, m, sizeof *response, err);
-    if (!h || !g || !c || !wide || !by || !answer || !response)
+    double *angle = lw_arena_take(scratch, lines, sizeof *angle, err);
+    if (!h || !g || !c || !wide || !by || !answer || !response || !angle)
         return LW_OUT_OF_MEMORY;
     lw_normal normal = {.n = m, .h = h, .g = g};
     f->whole = true;
@@ -95,6 +96,7 @@ static lw_status member_covariance(lw__physical *f, const double *p, const bool 
         }
     }
     for (size_t k = 0; k < lines; k++) {
+        angle[k] = f->line[k].profile->line->nominal_deg;
         for (int i = 0; i < 2; i++) {
             lw__physical_widened(f, k, p, i, wide);
             for (size_t j = 0; j < n; j++)
@@ -113,10 +115,8 @@ static lw_status member_covariance(lw__physical *f, const double *p, const bool 
             for (size_t q = 0; q < m; q++)
                 for (size_t r = 0; r < m; r++)
                     sum += inflate * by[a * m + q] * c[q * m + r] * by[b * m + r];
-            for (size_t k = 0; k < lines; k++)
-                for (size_t l = 0; l < lines; l++)
-                    sum += lw__from_instrument(f->profiles, f->line[k].profile, answer[a * lines + k],
-                                               f->line[l].profile, answer[b * lines + l]);
+            sum += lw__from_instrument(f->profiles, &(lw__leaning){lines, angle, answer + a * lines},
+                                       &(lw__leaning){lines, angle, answer + b * lines});
             covariance[a * lines + b] = sum;
         }
     return LW_OK;

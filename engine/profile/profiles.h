@@ -63,6 +63,8 @@ typedef struct lw_deconvolve_options {
     long iterations_most; /* richardson_lucy */
     long realisations;    /* richardson_lucy: of the Monte Carlo uncertainty */
     long seed;
+    const lw_lines *standard; /* fitted lines of the standard; NULL = the instrument by the calibration */
+    double standard_reach;    /* deg, how far a line of the standard may be */
     bool accept_refold; /* go on although instrument x result does not give the data back */
 } lw_deconvolve_options;
 extern const lw_option lw_deconvolve_option_table[];

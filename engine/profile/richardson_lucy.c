@@ -165,7 +165,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
         job->options->seed, shift);
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
-    return status == LW_OK ? lw__grid_coefficients(job, &g, x, c, err) : status;
+    return status == LW_OK ? lw__grid_coefficients(job, &g, x, c, true, err) : status;
 }
 
 static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
@@ -179,4 +179,5 @@ const lw_deconvolution lw_deconvolution_richardson_lucy = {
     .source = "Richardson (1972) J. Opt. Soc. Am. 62, 55; Lucy (1974) Astron. J. 79, 745; acceleration: "
               "Biggs & Andrews (1997) "
               "Appl. Opt. 36, 1766",
+    .by_lines = true,
     .run = run};

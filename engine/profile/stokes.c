@@ -131,6 +131,12 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     if (!g_re || !g_im || !h_re || !h_im || !r_re || !r_im || !wave || !by)
         return LW_OUT_OF_MEMORY;
     lw__instrument_transform(instrument, step, n, g_re, g_im);
+    if (instrument->measured != NULL) {
+        lw_status status = lw__carry_measured(instrument->measured, instrument->per_degree, step, n, g_re,
+                                              g_im, scratch, err);
+        if (status != LW_OK)
+            return status;
+    }
     lw__instrument_transform(&job->instrument, step, n, h_re, h_im); /* in the line's curve */
     for (size_t i = 0; i < data->n; i++)
         by[i] = data->step[i] * data->residual[i];
@@ -162,6 +168,12 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
             /* an error of the background's level is the same at every point of the window */
             profile->u_cosine[k] = sqrt(var_re + level * level * data->background_variance) / scale;
             profile->u_sine[k] = sqrt(var_im) / scale;
+        }
+        if (instrument->measured != NULL) {
+            lw_status status =
+                lw__add_measured(instrument->measured, instrument->per_degree, profile, scratch, err);
+            if (status != LW_OK)
+                return status;
         }
         profile->truncated_at = truncation(profile, g_re, g_im, &profile->truncation);
         answer->choice = (double)profile->truncated_at;
@@ -243,5 +255,7 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
     return lw__line_by_line(engine, profiles, options, solve, "stokes", err);
 }
 
-const lw_deconvolution lw_deconvolution_stokes = {
-    .name = "stokes", .source = "Stokes (1948) Proc. Phys. Soc. London 61, 382", .run = run};
+const lw_deconvolution lw_deconvolution_stokes = {.name = "stokes",
+                                                  .source = "Stokes (1948) Proc. Phys. Soc. London 61, 382",
+                                                  .by_lines = true,
+                                                  .run = run};

@@ -186,6 +186,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     double share, bias;
     answer->variance = lw__grid_variance(job, &g, s.x, s.z, c, &share, &bias, scratch, err);
     lw__grid_refold(job, &g, s.x, followed);
+    if ((status = lw__add_standard(job, &g, s.x, s.z, c, answer, scratch, err)) != LW_OK)
+        return status;
     job->profile->assumed =
         lw_arena_print(&job->profiles->arena, err,
                        "%s; departure from that shape smooth in its derivative of order %d, parameter "
@@ -195,7 +197,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
                        job->options->non_negative ? ", not negative" : "", share, fabs(bias));
     if (job->profile->assumed == NULL)
         return LW_OUT_OF_MEMORY;
-    return lw__grid_coefficients(job, &g, s.x, c, err);
+    return lw__grid_coefficients(job, &g, s.x, c, false, err);
 }
 
 static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
@@ -209,4 +211,5 @@ const lw_deconvolution lw_deconvolution_tikhonov = {
     .source = "Tikhonov (1963) Dokl. Akad. Nauk SSSR 151, 501; discrepancy principle: Morozov (1966) Dokl. "
               "Akad. Nauk SSSR 167, "
               "510; generalised cross-validation: Golub, Heath & Wahba (1979) Technometrics 21, 215",
+    .by_lines = true,
     .run = run};

@@ -125,20 +125,21 @@ lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__s
     return LW_OK;
 }
 
-double lw__from_instrument(const lw_profiles *profiles, const lw_profile *a, const double by_a[2],
-                           const lw_profile *b, const double by_b[2])
+double lw__from_instrument(const lw_profiles *profiles, const lw__leaning *a, const lw__leaning *b)
 {
     const lw_width_function *instrument = &profiles->lines->instrument;
-    double slope[2][2][LW_WIDTH_PARAMETERS], sum = 0;
-    const lw_profile *profile[2] = {a, b};
-    const double *by[2] = {by_a, by_b};
-    for (int i = 0; i < 2; i++) {
-        lw_width_gauss_variance(instrument->value, profile[i]->line->nominal_deg, slope[i][0]);
-        lw_width_lorentz(instrument->value, profile[i]->line->nominal_deg, slope[i][1]);
-    }
+    const lw__leaning *of[2] = {a, b};
+    double slope[2][LW_WIDTH_PARAMETERS] = {{0}}, sum = 0;
+    for (int i = 0; i < 2; i++)
+        for (size_t k = 0; k < of[i]->n; k++) {
+            double gauss[LW_WIDTH_PARAMETERS], lorentz[LW_WIDTH_PARAMETERS];
+            lw_width_gauss_variance(instrument->value, of[i]->angle_deg[k], gauss);
+            lw_width_lorentz(instrument->value, of[i]->angle_deg[k], lorentz);
+            for (int p = 0; p < LW_WIDTH_PARAMETERS; p++)
+                slope[i][p] += of[i]->by[k][0] * gauss[p] + of[i]->by[k][1] * lorentz[p];
+        }
     for (int p = 0; p < LW_WIDTH_PARAMETERS; p++)
         for (int q = 0; q < LW_WIDTH_PARAMETERS; q++)
-            sum += (by[0][0] * slope[0][0][p] + by[0][1] * slope[0][1][p]) * instrument->covariance[p][q] *
-                   (by[1][0] * slope[1][0][q] + by[1][1] * slope[1][1][q]);
+            sum += slope[0][p] * instrument->covariance[p][q] * slope[1][q];
     return sum;
 }

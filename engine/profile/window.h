@@ -7,18 +7,20 @@
 #include "profile/separation.h"
 
 /* The instrument's profile at a line: copies (emission x axial) of one Voigt, on its own axis in degrees. */
+struct lw__measured;
 typedef struct lw__instrument {
     size_t n;
     const lw_voigt_node *node;
-    double variance, lorentz; /* squared Gaussian FWHM (deg^2), Lorentzian FWHM (deg) */
-    double per_degree;        /* to nm^-1 */
-    double fwhm_deg;          /* of the one Voigt */
+    double variance, lorentz;            /* squared Gaussian FWHM (deg^2), Lorentzian FWHM (deg) */
+    double per_degree;                   /* to nm^-1 */
+    double fwhm_deg;                     /* of the one Voigt */
+    const struct lw__measured *measured; /* by what a standard's lines differ from it; NULL = as calibrated */
 } lw__instrument;
 
 lw_status lw__take_instrument(const lw_profiles *profiles, const lw_profile *profile, lw_arena *arena,
                               lw__instrument *out, lw_error *err);
 
-/* G(L) at L = 0, step, ... (n lengths): integral of the profile times exp(+2 pi i L s). */
+/* G(L) at L = 0, step, ... (n lengths): integral of the profile times exp(+2 pi i L s); as calibrated. */
 void lw__instrument_transform(const lw__instrument *instrument, double step, size_t n, double *re,
                               double *im);
 
@@ -38,10 +40,15 @@ typedef struct lw__window {
 lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation,
                           double breadths, lw_arena *arena, lw__window *out, lw_error *err);
 
-/* Slopes of (Gaussian variance, Lorentzian) of the instrument at a line to the nine width parameters, and
- * from them the covariance between two lines of a result whose slopes to these two widths are by_a[2] and
- * by_b[2]. */
-double lw__from_instrument(const lw_profiles *profiles, const lw_profile *a, const double by_a[2],
-                           const lw_profile *b, const double by_b[2]);
+/* How a result leans on the instrument's widths: its slopes to the two (Gaussian variance, Lorentzian) at n
+ * angles. */
+typedef struct lw__leaning {
+    size_t n;
+    const double *angle_deg; /* [n] */
+    double (*by)[2];         /* [n] */
+} lw__leaning;
+
+/* Covariance of two results through the covariance of the instrument's width function. */
+double lw__from_instrument(const lw_profiles *profiles, const lw__leaning *a, const lw__leaning *b);
 
 #endif

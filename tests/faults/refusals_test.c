@@ -134,6 +134,18 @@ static lw_status travel(lw_engine *engine, road *out, lw_error *err)
     deconvolving.accept_refold = true;
     if (status == LW_OK)
         status = lw_deconvolve(engine, sample, calibration, &deconvolving, &profiles, err);
+    if (status == LW_OK) { /* by the standard's own lines, then as before */
+        lw_profiles_free(profiles);
+        lw_deconvolve_options measured = deconvolving;
+        profiles = NULL;
+        measured.method = 1; /* stokes */
+        measured.standard = lines;
+        status = lw_deconvolve(engine, sample, calibration, &measured, &profiles, err);
+        lw_profiles_free(profiles);
+        profiles = NULL;
+    }
+    if (status == LW_OK)
+        status = lw_deconvolve(engine, sample, calibration, &deconvolving, &profiles, err);
     lw_node *results = status == LW_OK ? lw_tree_new(&arena, err) : NULL;
     if (status == LW_OK && results == NULL)
         status = err->status;
