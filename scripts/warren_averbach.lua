@@ -8,8 +8,12 @@ local job = lw.recipe {
     scan        = { kind = "file", help = "scan of the powder" },
     material    = { kind = "name", help = "material: a name from standards/materials, or a file" },
     calibration = { kind = "file", help = "calibration.json of the instrument" },
-    deconvolve  = { kind = "text", default = "stokes", choices = { "stokes", "physical", "convolution" },
-                    help = "how the coefficients are made: stokes as measured, the others from a fitted shape" },
+    deconvolve  = { kind = "text", default = "stokes",
+                    choices = { "stokes", "tikhonov", "maximum_entropy", "physical", "convolution" },
+                    help = "how the coefficients are made: physical and convolution are fitted shapes" },
+    standard    = { kind = "file", default = "",
+                    help = "scan of the calibration's standard: the instrument as measured on its nearest lines, \z
+                    instead of smooth functions (not with fitted shapes)" },
     form        = { kind = "text", default = "log", choices = { "log", "linear" },
                     help = "straight lines through ln A (log) or through A (linear)" },
     lines       = { kind = "list", default = "", help = "lines to take as one set (111,220,311 or all): isotropic" },
@@ -25,8 +29,18 @@ local valid  = instrument.valid_two_theta
 local margin = 0.05 * (valid[2] - valid[1])
 scan = scan:crop(math.max(valid[1] - margin, scan.two_theta[1]), math.min(valid[2] + margin, scan.two_theta[scan.n]))
 
+-- The standard's lines, where they are to stand for the instrument themselves.
+local neighbours
+if job.standard then
+  local standard = lw.standard(instrument.standard.name)
+  local perfect  = lw.read_scan(job.standard, { radiation = instrument.radiation })
+  neighbours = lw.fit_lines(perfect, standard:reflections(perfect), {
+    widths = "smooth", axial = instrument.geometry == "capillary" and "finger_cox_jephcoat" or "soller",
+  })
+end
+
 local lines    = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
-local profiles = lw.deconvolve(lines, { method = job.deconvolve })
+local profiles = lw.deconvolve(lines, { method = job.deconvolve, standard = neighbours })
 local result   = lw.warren_averbach(profiles, {
   form = job.form, lines = job.lines or nil, length_most = job.length_most or nil,
 })

@@ -47,6 +47,17 @@ describe("the recipe", function()
     end
   end)
 
+  it("warren_averbach takes the instrument from the standard's own lines, but not with a fitted shape", function()
+    local code, out, err = recipe("warren_averbach", "standard=" .. demo .. "/lab6_after_service.xy",
+      "deconvolve=tikhonov")
+    assert.are.same({ 0, "" }, { code, err })
+    assert.matches("size_area", out)
+    local refused, _, why = recipe("warren_averbach", "standard=" .. demo .. "/lab6_after_service.xy",
+      "deconvolve=physical")
+    assert.are.equal(1, refused)
+    assert.matches("method physical folds the calibration's own function into a fit", why)
+  end)
+
   it("warren_averbach takes named lines, and refuses those that are not there", function()
     local code, out = recipe("warren_averbach", "lines=111,220,311")
     assert.are.equal(0, code)
