@@ -3,6 +3,7 @@
 #include "sample/breadths.h"
 #include "sample/generalised.h"
 #include "sample/method.h"
+#include "sample/reading.h"
 
 #include "numeric/voigt.h"
 
@@ -159,27 +160,32 @@ static const char SIZE_AREA[] = "Area-weighted mean column length: reciprocal of
 static const char STRAIN[] = "Root mean square strain over columns of half the volume-weighted size.";
 static const char APPARENT[] = "sqrt(pi/2) times the rms strain: as a breadth shows it (Stokes & Wilson 1944).";
 
-static void tell(const lw_generalised_fit *fit, const double *p, lw_node *result, lw_node *remarks, lw_error *err)
+static void tell(const lw_generalised_fit *fit, const double *p, const lw_readings *readings, lw_node *result,
+                 lw_node *remarks, lw_error *err)
 {
     double volume = size_volume(p), u_volume = u_of(fit, p, size_volume), u_sl = fit->scatter * sqrt(fit->covariance[SL][SL]);
     bool resolved = isfinite(volume) && volume > 2 * u_volume;
-    if (resolved)
-        lw_add_quantity(result, "size_volume", lw_quantity_of(volume, u_volume, "nm"), SIZE_VOLUME, err);
-    else {
+    if (resolved) {
+        lw_quantity size = lw_quantity_of(volume, u_volume, "nm");
+        lw_readings_widen(readings, LW_READ_SIZE_VOLUME, 0, &size, result, err);
+        lw_add_quantity(result, "size_volume", size, SIZE_VOLUME, err);
+    } else {
         double inverse = isfinite(volume) ? 1 / volume : 0, u = isfinite(volume) ? u_volume / (volume * volume) : u_sl;
         lw_add_quantity(result, "size_volume", lw_lower_limit(1 / (inverse + ONE_SIDED * fmax(u, 1e-9)), 0.95, "nm"),
                         SIZE_VOLUME, err);
     }
-    if (p[SL] > 2 * u_sl)
-        lw_add_quantity(result, "size_area", lw_quantity_of(size_area(p), u_sl * 2 * size_area(p) * size_area(p), "nm"),
-                        SIZE_AREA, err);
-    else
+    if (p[SL] > 2 * u_sl) {
+        lw_quantity size = lw_quantity_of(size_area(p), u_sl * 2 * size_area(p) * size_area(p), "nm");
+        lw_readings_widen(readings, LW_READ_SIZE_AREA, 0, &size, result, err);
+        lw_add_quantity(result, "size_area", size, SIZE_AREA, err);
+    } else
         lw_add_quantity(result, "size_area", lw_lower_limit(0.5 / (fmax(p[SL], 0) + ONE_SIDED * u_sl), 0.95, "nm"), SIZE_AREA,
                         err);
     double half = resolved ? volume / 2 : 10, value, u;
     bool strained = strain_at(fit, p, half, &value, &u);
     lw_quantity rms = strained ? lw_quantity_of(value, u, "")
                                : lw_upper_limit(sqrt(fmax(value * value, 0) + ONE_SIDED * 2 * fmax(value, u) * u), 0.95, "");
+    lw_readings_widen(readings, LW_READ_STRAIN, 0, &rms, result, err);
     lw_add_quantity(result, "strain_rms", rms, STRAIN, err);
     rms.value /= LW_RMS_PER_APPARENT;
     rms.u /= LW_RMS_PER_APPARENT;
@@ -303,9 +309,16 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
             .n = 2 * m.n, .m = PARAMETERS, .y = m.y, .covariance = m.covariance, .model = model, .user = &m};
         status = lw_generalised_solve(&problem, arena, p, &fit, NULL, err);
     }
+    lw_breadths breadths;
+    lw_readings readings;
+    if (status == LW_OK)
+        status = lw_breadths_gather(profiles, arena, &breadths, err);
+    if (status == LW_OK)
+        status = lw_breadths_read(&breadths, arena, &readings, err);
     if (status == LW_OK) {
         lw_node *remarks = lw_add_list(result, "remarks", err);
-        tell(&fit, p, result, remarks, err);
+        tell(&fit, p, &readings, result, remarks, err);
+        lw_readings_remark(result, remarks, err);
         draw(&m, &fit, p, arena, result, err);
         status = err->status;
     }

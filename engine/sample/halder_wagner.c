@@ -2,6 +2,7 @@
 /* Halder-Wagner, the size-strain plot: (beta/s)^2 against beta/s^2 is a straight line. */
 #include "sample/breadths.h"
 #include "sample/method.h"
+#include "sample/reading.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -54,14 +55,20 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
     (void)given;
     lw_breadths breadths;
     lw_breadth_fit fit;
+    lw_readings readings;
     lw_status status = lw_breadths_gather(profiles, arena, &breadths, err);
     if (status == LW_OK)
         status = lw_breadths_fit(&breadths, LW_FORM_PARABOLIC, arena, &fit, err);
+    if (status == LW_OK)
+        status = lw_breadths_read(&breadths, arena, &readings, err);
     if (status == LW_OK) {
+        lw_readings_widen_fit(&readings, (double[2]){0, 0}, &fit, result, err);
         lw_breadths_tell(&fit, result, err);
         draw(arena, &breadths, &fit, result, err);
         lw_breadths_draw(&breadths, &fit, result, err);
-        lw_breadths_remark(&breadths, &fit, lw_add_list(result, "remarks", err), err);
+        lw_node *remarks = lw_add_list(result, "remarks", err);
+        lw_breadths_remark(&breadths, &fit, remarks, err);
+        lw_readings_remark(result, remarks, err);
         status = err->status;
     }
     return status;

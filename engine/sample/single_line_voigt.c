@@ -3,6 +3,7 @@
 #include "sample/breadths.h"
 #include "sample/generalised.h"
 #include "sample/method.h"
+#include "sample/reading.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -139,7 +140,7 @@ static void tell_lines(const lw_profiles *profiles, lw_node *result, lw_error *e
 /* One headline from a part, with its statistics. *enlarged receives the factor on its u where the lines
  * disagree beyond 3 u, else 1. */
 static lw_status tell_mean(const lw_profiles *profiles, bool gauss, lw_arena *arena, lw_node *result,
-                           lw_node *remarks, double *enlarged, lw_error *err)
+                           const lw_readings *readings, lw_node *remarks, double *enlarged, lw_error *err)
 {
     *enlarged = 1;
     part m;
@@ -161,10 +162,14 @@ static lw_status tell_mean(const lw_profiles *profiles, bool gauss, lw_arena *ar
         return status;
     if (gauss) { /* the parameter is e itself: s = 1/2 makes it its own breadth */
         lw_quantity strain = strain_of(lw_quantity_of(value, u, ""), 0.5);
-        lw_add_quantity(result, "strain_apparent", strain, STRAIN, err);
-        lw_add_quantity(result, "strain_rms", times(strain, LW_RMS_PER_APPARENT), RMS, err);
+        lw_quantity rms = times(strain, LW_RMS_PER_APPARENT);
+        lw_readings_widen(readings, LW_READ_STRAIN, 0, &rms, result, err);
+        lw_add_quantity(result, "strain_apparent", times(rms, 1 / LW_RMS_PER_APPARENT), STRAIN, err);
+        lw_add_quantity(result, "strain_rms", rms, RMS, err);
     } else {
-        lw_add_quantity(result, "size_volume", size_of(lw_quantity_of(value, u, "nm^-1")), SIZE, err);
+        lw_quantity mean = size_of(lw_quantity_of(value, u, "nm^-1"));
+        lw_readings_widen(readings, LW_READ_SIZE_VOLUME, 0, &mean, result, err);
+        lw_add_quantity(result, "size_volume", mean, SIZE, err);
     }
     lw_node *statistics = lw_add_group(result, gauss ? "strain_mean" : "size_mean", err);
     lw_add_number(statistics, "lines", (double)m.n, err);
@@ -181,9 +186,15 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
     (void)given;
     lw_node *remarks = lw_add_list(result, "remarks", err);
     double sizes = 1, strains = 1;
-    lw_status status = tell_mean(profiles, false, arena, result, remarks, &sizes, err);
+    lw_breadths breadths;
+    lw_readings readings = {0};
+    lw_status status = lw_breadths_gather(profiles, arena, &breadths, err);
     if (status == LW_OK)
-        status = tell_mean(profiles, true, arena, result, remarks, &strains, err);
+        status = lw_breadths_read(&breadths, arena, &readings, err);
+    if (status == LW_OK)
+        status = tell_mean(profiles, false, arena, result, &readings, remarks, &sizes, err);
+    if (status == LW_OK)
+        status = tell_mean(profiles, true, arena, result, &readings, remarks, &strains, err);
     if (status == LW_OK && (sizes > 1 || strains > 1)) {
         char text[200];
         snprintf(
@@ -193,6 +204,7 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
         lw_add_text(remarks, NULL, text, err);
     }
     if (status == LW_OK) {
+        lw_readings_remark(result, remarks, err);
         tell_lines(profiles, result, err);
         status = err->status;
     }

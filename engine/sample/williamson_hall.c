@@ -3,6 +3,7 @@
 #include "physics/elasticity.h"
 #include "sample/breadths.h"
 #include "sample/method.h"
+#include "sample/reading.h"
 
 #include <math.h>
 #include <stddef.h>
@@ -182,6 +183,11 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *o
         widen(&lead.size_volume, size_spread);
         widen(&lead.strain_apparent, strain_spread);
     }
+    lw_readings readings;
+    status = lw_breadths_read(&breadths, arena, &readings, err);
+    if (status != LW_OK)
+        return status;
+    lw_readings_widen_fit(&readings, (double[2]){size_spread, strain_spread}, &lead, result, err);
     lw_breadths_tell(&lead, result, err);
     lw_add_text(result, "form", lw_form_name[best], err);
     tell_model(&lead.strain_apparent, given->model, mean, result, err);
@@ -209,6 +215,7 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *o
     lw_breadths_draw(&breadths, &fits[best], result, err);
     lw_node *remarks = lw_add_list(result, "remarks", err);
     lw_breadths_remark(&breadths, &fits[best], remarks, err);
+    lw_readings_remark(result, remarks, err);
     if (given->form == AUTO && fits[best].fit.degrees == 0)
         lw_add_text(
             remarks, NULL,

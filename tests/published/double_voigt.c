@@ -76,9 +76,11 @@ int main(void)
         tree = run(&engine, make(sl, dl, sg, dg, 1e-4, (unsigned)seed), &arena);
         for (int j = 0; j < 3; j++) {
             lw_quantity q = hand_quantity(tree, names[j], NULL, NULL);
+            /* these lines are Voigts, so the part of u for lines that are none stands apart */
+            double part = hand_quantity(tree, "model_difference", names[j], NULL).value, u = sqrt(q.u * q.u - part * part);
             sum2[j] += pow(q.value - truth[j], 2);
-            u_sum[j] += q.u;
-            inside[j] += fabs(q.value - truth[j]) < 1.96 * q.u;
+            u_sum[j] += u;
+            inside[j] += fabs(q.value - truth[j]) < 1.96 * u;
         }
     }
     for (int j = 0; j < 3; j++) {

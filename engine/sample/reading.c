@@ -1,0 +1,211 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "sample/reading.h"
+
+#include "physics/size_distribution.h"
+
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+#define PI 3.14159265358979323846
+#define STEPS 96 /* of Simpson's rule over 4/breadth, where the coefficients have died */
+#define REACH 4.0
+#define LENGTH_OF_UNLIMITED 10.0 /* nm */
+
+static const double sigmas[] = {0.15, 0.3, 0.45};
+static const char *const strains[] = {"constant", "falling", "both"};
+enum { CONSTANT, FALLING, BOTH };
+
+/* Parameters: 1/size_volume, then b (CONSTANT), a (FALLING), or b and a. */
+typedef struct model_of {
+    const lw_breadths *breadths;
+    double sigma;
+    int strain;
+} model_of;
+
+/* Breadth at s, slopes to 1/size_volume, b and a. A negative 1/size_volume continues the breadth evenly about 0. */
+static double breadth(double inverse_size, double b, double a, double s, double sigma, double longest, double slopes[3])
+{
+    double size = fabs(inverse_size), by = -2 * PI * PI * s * s, sum = 0, by_parameter[3] = {0};
+    /* (3/4) D0 exp(7 sigma^2/2) = 1/size */
+    lw_spheres spheres = {size > 0 ? 4 / (3 * size * exp(3.5 * sigma * sigma)) : 0, sigma};
+    for (int i = 0; i <= STEPS; i++) {
+        double length = longest * i / STEPS, weight = i == 0 || i == STEPS ? 1 : i % 2 == 1 ? 4 : 2, of_size[2] = {0};
+        double A = size > 0 && length > 0 ? lw_spheres_coefficient(&spheres, length, of_size) : 1;
+        double D = exp(by * length * (b * length + a));
+        sum += weight * A * D;
+        by_parameter[0] -= size > 0 ? weight * of_size[0] * D / size : 0; /* d ln(median) = -d(size)/size */
+        by_parameter[1] += weight * A * D * by * length * length;
+        by_parameter[2] += weight * A * D * by * length;
+    }
+    double step = longest / STEPS / 3, beta = 1 / (2 * step * sum);
+    for (int i = 0; i < 3; i++)
+        slopes[i] = -2 * beta * beta * step * by_parameter[i];
+    if (inverse_size < 0) {
+        double unused[3], at_0 = breadth(0, b, a, s, sigma, longest, unused);
+        for (int i = 1; i < 3; i++)
+            slopes[i] = 2 * unused[i] - slopes[i];
+        beta = 2 * at_0 - beta;
+    }
+    return beta;
+}
+
+static void model(void *user, const double *p, double *value, double *slopes, double *x_slope)
+{
+    const model_of *m = user;
+    const lw_breadths *k = m->breadths;
+    size_t n = m->strain == BOTH ? 3 : 2;
+    (void)x_slope; /* positions are known far better than breadths */
+    for (size_t i = 0; i < k->n; i++) {
+        double s = k->s[i] * (k->scale != NULL ? k->scale[i] : 1), all[3];
+        double b = m->strain == FALLING ? 0 : p[1], a = m->strain == CONSTANT ? 0 : p[n - 1];
+        value[i] = breadth(p[0], b, a, s, m->sigma, REACH / fmax(k->beta[i], 1e-6), all);
+        slopes[n * i] = all[0];
+        slopes[n * i + 1] = m->strain == FALLING ? all[2] : all[1];
+        if (m->strain == BOTH)
+            slopes[n * i + 2] = all[2];
+    }
+}
+
+/* Half of the narrowest line is size, and what the widest has more is strain. */
+static void start(const model_of *m, double *p)
+{
+    const lw_breadths *k = m->breadths;
+    double least = INFINITY, most = 0, s = 1;
+    for (size_t i = 0; i < k->n; i++) {
+        least = fmin(least, k->beta[i]);
+        if (k->beta[i] > most) {
+            most = k->beta[i];
+            s = k->s[i] * (k->scale != NULL ? k->scale[i] : 1);
+        }
+    }
+    p[0] = 0.5 * least;
+    double rest = fmax(most - p[0], 0.1 * most), b = rest * rest / (2 * PI * s * s), a = rest / (PI * PI * s * s);
+    p[1] = m->strain == CONSTANT ? b : m->strain == FALLING ? a : 0.5 * b;
+    if (m->strain == BOTH)
+        p[2] = 0.5 * a;
+}
+
+static lw_status read_one(model_of *m, lw_arena *arena, lw_reading *out, lw_generalised_fit *fit, lw_error *err)
+{
+    double p[3] = {0};
+    start(m, p);
+    lw_generalised problem = {.n = m->breadths->n,
+                              .m = m->strain == BOTH ? 3 : 2,
+                              .y = m->breadths->beta,
+                              .covariance = m->breadths->covariance,
+                              .model = model,
+                              .user = m};
+    lw_status status = lw_generalised_solve(&problem, arena, p, fit, NULL, err);
+    if (status != LW_OK)
+        return status;
+    double b = m->strain == FALLING ? 0 : p[1], a = m->strain == CONSTANT ? 0 : p[problem.m - 1];
+    bool unlimited = !(p[0] > 0);
+    *out = (lw_reading){.strain = strains[m->strain],
+                        .sigma = m->sigma,
+                        .chi2 = fit->chi2,
+                        .size_volume = unlimited ? INFINITY : 1 / p[0],
+                        .size_area = unlimited ? INFINITY : 8 * exp(-m->sigma * m->sigma) / (9 * p[0])};
+    double length = unlimited ? LENGTH_OF_UNLIMITED : 0.5 * out->size_volume;
+    out->strain_rms = sqrt(fmax(0, b + a / length));
+    return LW_OK;
+}
+
+lw_status lw_breadths_read(const lw_breadths *breadths, lw_arena *arena, lw_readings *readings, lw_error *err)
+{
+    double score[LW_READINGS_MOST], best = INFINITY, scatter = INFINITY, sum = 0, n = 0;
+    size_t parameters[LW_READINGS_MOST];
+    *readings = (lw_readings){0};
+    for (size_t i = 0; i < sizeof sigmas / sizeof *sigmas; i++)
+        for (int strain = CONSTANT; strain <= BOTH; strain++) {
+            model_of m = {.breadths = breadths, .sigma = sigmas[i], .strain = strain};
+            size_t at = readings->n;
+            lw_generalised_fit fit;
+            lw_error each = LW_ERROR_NONE;
+            parameters[at] = strain == BOTH ? 3 : 2;
+            if (breadths->n < (strain == BOTH ? 5 : 2))
+                continue;
+            lw_status status = read_one(&m, arena, &readings->reading[at], &fit, &each);
+            if (status == LW_OUT_OF_MEMORY || status == LW_CANCELLED) {
+                *err = each;
+                return status;
+            }
+            if (status != LW_OK)
+                continue;
+            scatter = fmin(scatter, fit.scatter);
+            n = (double)fit.rank;
+            readings->n++;
+        }
+    for (size_t i = 0; i < readings->n; i++) {
+        double k = (double)parameters[i];
+        score[i] = readings->reading[i].chi2 / (scatter * scatter) + 2 * k + (n > k + 1 ? 2 * k * (k + 1) / (n - k - 1) : 0);
+        best = fmin(best, score[i]);
+    }
+    for (size_t i = 0; i < readings->n; i++)
+        sum += readings->reading[i].weight = exp(-0.5 * (score[i] - best));
+    for (size_t i = 0; i < readings->n; i++)
+        readings->reading[i].weight /= sum;
+    return LW_OK;
+}
+
+double lw_readings_difference(const lw_readings *readings, lw_read_field field, double value)
+{
+    double sum = 0, weight = 0;
+    for (size_t i = 0; i < readings->n; i++) {
+        const lw_reading *r = &readings->reading[i];
+        double is = field == LW_READ_SIZE_VOLUME ? r->size_volume : field == LW_READ_SIZE_AREA ? r->size_area : r->strain_rms;
+        if (!isfinite(is))
+            continue; /* no size was read: its difference is no number, and the size itself a limit */
+        sum += r->weight * (is - value) * (is - value);
+        weight += r->weight;
+    }
+    return weight > 0 ? sqrt(sum / weight) : 0;
+}
+
+void lw_readings_widen(const lw_readings *readings, lw_read_field field, double has, lw_quantity *quantity, lw_node *group,
+                       lw_error *err)
+{
+    static const char *const names[] = {"size_volume", "size_area", "strain_rms"};
+    if (quantity->kind != LW_VALUE || readings->n == 0)
+        return;
+    double difference = lw_readings_difference(readings, field, quantity->value);
+    quantity->u = sqrt(quantity->u * quantity->u + fmax(0, difference * difference - has * has));
+    lw_node *told = NULL;
+    for (lw_node *child = group != NULL ? group->first : NULL; child != NULL; child = child->next)
+        if (child->name != NULL && strcmp(child->name, "model_difference") == 0)
+            told = child;
+    if (told == NULL)
+        told = lw_add_group(group, "model_difference", err);
+    lw_add_quantity(told, names[field], lw_quantity_of(difference, 0, quantity->unit),
+                    "Part of the standard uncertainty: root mean square difference to readings of the same breadths as "
+                    "lognormal spheres whose strain is constant or falls with length, weighted by evidence.",
+                    err);
+}
+
+void lw_readings_widen_fit(const lw_readings *readings, const double has[2], lw_breadth_fit *fit, lw_node *group, lw_error *err)
+{
+    lw_readings_widen(readings, LW_READ_SIZE_VOLUME, has[0], &fit->size_volume, group, err);
+    lw_quantity rms = fit->strain_apparent;
+    rms.value *= LW_RMS_PER_APPARENT;
+    rms.u *= LW_RMS_PER_APPARENT;
+    lw_readings_widen(readings, LW_READ_STRAIN, has[1] * LW_RMS_PER_APPARENT, &rms, group, err);
+    fit->strain_apparent.u = rms.u / LW_RMS_PER_APPARENT;
+}
+
+void lw_readings_remark(const lw_node *group, lw_node *remarks, lw_error *err)
+{
+    char text[400];
+    size_t used = 0;
+    const lw_node *told = lw_node_get(group, "model_difference");
+    for (const lw_node *part = told != NULL ? told->first : NULL; part != NULL; part = part->next) {
+        const lw_node *whole = lw_node_get(group, part->name);
+        if (whole != NULL && part->quantity.value > 0.8 * whole->quantity.u)
+            used += (size_t)snprintf(text + used, sizeof text - used, "%s%s", used > 0 ? ", " : "", part->name);
+    }
+    if (used == 0)
+        return;
+    snprintf(text + used, sizeof text - used,
+             ": most of the uncertainty is the distance to readings of the same breadths as spheres with a spread of diameters, "
+             "whose strain is constant or falls with length; the method's own rule is one of several that the data allow");
+    lw_add_text(remarks, NULL, text, err);
+}
