@@ -7,6 +7,7 @@
 #include "app/run.h"
 #include "app/sandbox.h"
 #include "app/stop.h"
+#include "base/pages.h"
 #include "base/sha256.h"
 #include "bind/home.h"
 #include "bind/inputs.h"
@@ -188,6 +189,7 @@ int main(int argc, char **argv)
         fputs(options.help ? lwa_usage : "linewright " LW_VERSION "\n", stdout);
         return fflush(stdout) == 0 ? LWA_DONE : LWA_FAILED;
     }
+    lw_keep_freed_memory();
     lwa_memory memory = {.most = (size_t)(options.memory_mb * 1048576)};
     lua_State *L = lua_newstate(lwa_allocate, &memory);
     if (L == NULL) {

@@ -5,8 +5,12 @@
 
 #include <stdint.h>
 #include <sys/mman.h>
+#ifdef __GLIBC__
+#include <malloc.h>
+#endif
 
 #define LARGE_PAGE ((uintptr_t)2 << 20)
+#define KEPT_MOST (64 << 20)
 
 void lw_prefer_large_pages(void *block, size_t size)
 {
@@ -20,5 +24,13 @@ void lw_prefer_large_pages(void *block, size_t size)
 #else
     (void)block;
     (void)size;
+#endif
+}
+
+void lw_keep_freed_memory(void)
+{
+#ifdef __GLIBC__
+    (void)mallopt(M_MMAP_THRESHOLD, (int)(2 * LARGE_PAGE));
+    (void)mallopt(M_TRIM_THRESHOLD, KEPT_MOST);
 #endif
 }

@@ -10,4 +10,8 @@
  * systems that have no such request. What is in the block stays. */
 void lw_prefer_large_pages(void *block, size_t size);
 
+/* For a program, not a library, since it concerns the whole process: up to 64 MB of memory that was given back in
+ * blocks below 4 MB wait for the next request, instead of going to the system and coming back in fresh pages. */
+void lw_keep_freed_memory(void);
+
 #endif
