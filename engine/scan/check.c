@@ -3,7 +3,9 @@
 
 #include <math.h>
 #include <stdarg.h>
+#include <stdint.h>
 #include <stdio.h>
+#include <string.h>
 
 #define POINTS_LEAST 3
 #define VALUE_MOST 1e15
@@ -22,8 +24,23 @@ __attribute__((format(printf, 6, 7))) static lw_status refuse(const lw_columns *
     return lw_fail_at(err, LW_BAD_DATA, file, 0, remedy, "point %zu: %s", i + 1, message);
 }
 
-/* Points that are judged at once, without a way out between them, so that they are compared side by side. */
+/* Points that are judged at once, without a way out between them; in pairs, which compilers don't form by themselves
+ * from comparisons that might trap. */
 #define AT_ONCE 256
+typedef double pair __attribute__((vector_size(16)));
+typedef int64_t judged __attribute__((vector_size(16))); /* -1 for yes; sums, since those stay in vectors */
+
+static inline pair pair_at(const double *x)
+{
+    pair two;
+    memcpy(&two, x, sizeof two);
+    return two;
+}
+
+static inline bool all_of(judged sum, size_t n)
+{
+    return sum[0] + sum[1] == -(int64_t)n;
+}
 
 /* The first of the points from i on that may be the one where angles don't ascend within 0 to 180. */
 static size_t ascend_until(const double *x, size_t n)
@@ -32,10 +49,10 @@ static size_t ascend_until(const double *x, size_t n)
     if (!(x[0] > 0))
         return 0;
     for (; i + AT_ONCE <= n; i += AT_ONCE) {
-        int good = 1;
-        for (size_t k = i; k < i + AT_ONCE; k++)
-            good &= x[k] > x[k - 1];
-        if (!good)
+        judged good = {0, 0};
+        for (size_t k = i; k < i + AT_ONCE; k += 2)
+            good += pair_at(x + k) > pair_at(x + k - 1);
+        if (!all_of(good, AT_ONCE))
             break;
     }
     while (i < n && x[i] > x[i - 1])
@@ -51,10 +68,12 @@ static size_t moderate_until(const double *values, size_t n)
 {
     size_t i = 0;
     for (; i + AT_ONCE <= n; i += AT_ONCE) {
-        int good = 1;
-        for (size_t k = i; k < i + AT_ONCE; k++)
-            good &= fabs(values[k]) <= VALUE_MOST;
-        if (!good)
+        judged below = {0, 0}, above = {0, 0};
+        for (size_t k = i; k < i + AT_ONCE; k += 2) {
+            below += pair_at(values + k) <= VALUE_MOST;
+            above += pair_at(values + k) >= -VALUE_MOST;
+        }
+        if (!all_of(below, AT_ONCE) || !all_of(above, AT_ONCE))
             break;
     }
     while (i < n && fabs(values[i]) <= VALUE_MOST)
@@ -65,17 +84,21 @@ static size_t moderate_until(const double *values, size_t n)
 /* Whether no value is negative and, if they must be, all are whole numbers. */
 static bool are_counts(const double *values, size_t n, bool must)
 {
-    int any = must ? 0 : 1;
-    int good = 1;
-    for (size_t i = 0; i < n && good; i += AT_ONCE) {
-        size_t end = n - i < AT_ONCE ? n : i + AT_ONCE;
-        for (size_t k = i; k < end; k++) {
+    size_t i = 0;
+    for (; i + AT_ONCE <= n; i += AT_ONCE) {
+        judged positive = {0, 0}, whole = {0, 0};
+        for (size_t k = i; k < i + AT_ONCE; k += 2) {
+            pair value = pair_at(values + k);
+            positive += value >= 0;
             /* adding and taking off 2^52 rounds to a whole number what is below it, as all values are */
-            double whole = (values[k] + 0x1p52) - 0x1p52;
-            good &= (values[k] >= 0) & ((whole == values[k]) | any);
+            whole += (value + 0x1p52) - 0x1p52 == value;
         }
+        if (!all_of(positive, AT_ONCE) || (must && !all_of(whole, AT_ONCE)))
+            return false;
     }
-    return good;
+    while (i < n && values[i] >= 0 && (!must || (values[i] + 0x1p52) - 0x1p52 == values[i]))
+        i++;
+    return i == n;
 }
 
 static lw_status check_angles(const lw_columns *columns, const char *file, lw_error *err)
