@@ -70,26 +70,44 @@ static void add_file(lua_State *L, int files, const char *input, const char *pat
     lua_rawseti(L, files, (lua_Integer)lua_rawlen(L, files) + 1);
 }
 
-void lwb_check_unchanged(lua_State *L, const char *path, const char *hash, const char *verb)
+/* Pushes the list of files of the running job, or returns false. */
+static bool push_files(lua_State *L)
+{
+    luaL_checkstack(L, 8, NULL);
+    if (lua_getfield(L, LUA_REGISTRYINDEX, LWB_JOB_KEY) != LUA_TUSERDATA)
+        return false;
+    lua_getiuservalue(L, -1, LWB_JOB_FILES);
+    return true;
+}
+
+/* Whether the file is in the list, with another hash than this one if it isn't NULL. */
+static bool is_listed(lua_State *L, const char *path, const char *but)
 {
     int top = lua_gettop(L);
-    luaL_checkstack(L, 8, NULL);
-    if (hash[0] == '\0' || lua_getfield(L, LUA_REGISTRYINDEX, LWB_JOB_KEY) != LUA_TUSERDATA) {
-        lua_settop(L, top);
-        return;
-    }
-    lua_getiuservalue(L, -1, LWB_JOB_FILES);
-    int files = lua_gettop(L);
-    for (lua_Integer i = 1; i <= (lua_Integer)lua_rawlen(L, files); i++) {
-        lua_rawgeti(L, files, i);
-        lua_getfield(L, -1, "file");
-        lua_getfield(L, -2, "sha256");
-        if (strcmp(lua_tostring(L, -2), path) == 0 && strcmp(lua_tostring(L, -1), hash) != 0)
-            lwb_refuse(L, "start the job again once nobody writes to it", "%s: %s has changed since the job began", verb,
-                       path);
-        lua_settop(L, files);
+    bool found = false;
+    if (push_files(L)) {
+        int files = lua_gettop(L);
+        for (lua_Integer i = 1; i <= (lua_Integer)lua_rawlen(L, files) && !found; i++) {
+            lua_rawgeti(L, files, i);
+            lua_getfield(L, -1, "file");
+            lua_getfield(L, -2, "sha256");
+            found = strcmp(lua_tostring(L, -2), path) == 0 && (but == NULL || strcmp(lua_tostring(L, -1), but) != 0);
+            lua_settop(L, files);
+        }
     }
     lua_settop(L, top);
+    return found;
+}
+
+bool lwb_is_input(lua_State *L, const char *path)
+{
+    return is_listed(L, path, NULL);
+}
+
+void lwb_check_unchanged(lua_State *L, const char *path, const char *hash, const char *verb)
+{
+    if (hash[0] != '\0' && is_listed(L, path, hash))
+        lwb_refuse(L, "start the job again once nobody writes to it", "%s: %s has changed since the job began", verb, path);
 }
 
 static void want_file(lua_State *L, const char *name, const char *path)

@@ -20,6 +20,9 @@ void lwb_check_kind(lua_State *L, int index, const char *name);
  * or of the wrong kind. */
 void lwb_read_inputs(lua_State *L, int declared, int names, int arguments, int values, int files);
 
+/* Whether the file is an input of the running job, so that its bytes are known by their hash. */
+bool lwb_is_input(lua_State *L, const char *path);
+
 /* Raises if the file is an input of the running job whose bytes were others when the job began: a record would
  * name bytes that were not read. `hash` is the SHA-256 of the bytes that were read now. */
 void lwb_check_unchanged(lua_State *L, const char *path, const char *hash, const char *verb);

@@ -33,7 +33,8 @@ static int read_scan(lua_State *L)
     lw_status status = lw_scan_read(lwb_engine(L), path, &options, &scan, &err);
     box->object = scan;
     lwb_check(L, status, &err);
-    lwb_check_unchanged(L, path, scan->hash, "read_scan");
+    if (lwb_is_input(L, path))
+        lwb_check_unchanged(L, path, lw_scan_hash(scan), "read_scan");
     return 1;
 }
 
@@ -134,7 +135,7 @@ static bool field(lua_State *L, const char *key)
     else if (strcmp(key, "header") == 0)
         lua_pushstring(L, s->header);
     else if (strcmp(key, "hash") == 0)
-        lua_pushstring(L, s->hash);
+        lua_pushstring(L, lw_scan_hash(s));
     else if (strcmp(key, "noise") == 0)
         lua_pushstring(L, s->noise == LW_NOISE_COUNTS ? "counts" : s->noise == LW_NOISE_SIGMA ? "sigma" : "scaled");
     else if (strcmp(key, "radiation") == 0) {

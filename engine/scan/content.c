@@ -1,10 +1,13 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "base/pages.h"
+#include "base/sha256.h"
 #include "scan/number.h"
 #include "scan/reader.h"
+#include "scan/rows.h"
 
 #include <errno.h>
 #include <fcntl.h>
+#include <stdint.h>
 #include <string.h>
 #include <sys/stat.h>
 #include <unistd.h>
@@ -22,6 +25,7 @@ typedef struct room {
     size_t total;
     size_t pad;
 } room;
+_Static_assert(sizeof(room) >= LW_ROWS_FRONT, "the fast loop reads that far in front of the bytes");
 
 static char *room_of(lw_engine *engine, char *old, size_t size, lw_error *err)
 {
@@ -50,6 +54,12 @@ void lw_content_free(lw_engine *engine, lw_content *content)
 {
     room_give(engine, content->bytes);
     content->bytes = NULL;
+}
+
+void lw_content_settle(lw_content *content)
+{
+    if (content->hash[0] == '\0')
+        lw_sha256_hex(content->bytes, content->size, content->hash);
 }
 
 static void *zlib_take(void *user, unsigned count, unsigned size)
@@ -129,24 +139,20 @@ static lw_status inflate_all(lw_engine *engine, const char *packed, size_t size,
 }
 
 /* Bytes are in content: inflate them if they are gzip, and end them in zeros. */
-static lw_status unpack(lw_engine *engine, lw_sha256 *hash, lw_content *content, lw_error *err)
+static lw_status unpack(lw_engine *engine, lw_content *content, lw_error *err)
 {
-    content->hash = hash;
-    content->hashed = 0;
     lw_status status = LW_OK;
     if (content->size >= 2 && memcmp(content->bytes, "\x1f\x8b", 2) == 0) {
         char *packed = content->bytes;
         size_t size = content->size;
-        lw_sha256_add(hash, packed, size);
-        content->hash = NULL;
+        lw_content_settle(content);
         content->bytes = NULL;
         content->size = 0;
         status = inflate_all(engine, packed, size, content, err);
         room_give(engine, packed);
     }
     if (status == LW_OK && content->size >= 3 && memcmp(content->bytes, "\xef\xbb\xbf", 3) == 0) {
-        if (content->hash != NULL)
-            lw_sha256_add(hash, content->bytes, 3);
+        lw_content_settle(content);
         /* moved out of the way rather than skipped: the block still starts at bytes */
         content->size -= 3;
         memmove(content->bytes, content->bytes + 3, content->size);
@@ -201,8 +207,7 @@ static lw_status read_all(lw_engine *engine, int file, lw_content *content, lw_e
     }
 }
 
-lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, lw_content *content,
-                          lw_error *err)
+lw_status lw_content_open(lw_engine *engine, const char *path, lw_content *content, lw_error *err)
 {
     *content = (lw_content){.name = path};
     int file = open(path, O_RDONLY | O_CLOEXEC | O_NOCTTY);
@@ -216,13 +221,13 @@ lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, 
     lw_status status = read_all(engine, file, content, err);
     close(file);
     if (status == LW_OK)
-        return unpack(engine, hash, content, err);
+        return unpack(engine, content, err);
     lw_content_free(engine, content);
     return status;
 }
 
 lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes, size_t size,
-                          lw_sha256 *hash, lw_content *content, lw_error *err)
+                          lw_content *content, lw_error *err)
 {
     *content = (lw_content){.name = name};
     if (size > SIZE_MOST)
@@ -234,5 +239,5 @@ lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes
     if (size > 0)
         memcpy(content->bytes, bytes, size);
     content->size = size;
-    return unpack(engine, hash, content, err);
+    return unpack(engine, content, err);
 }

@@ -11,10 +11,6 @@
 #include <stdint.h>
 #include <string.h>
 
-#ifdef __SSE2__
-#include <emmintrin.h>
-#endif
-
 /* Zero bytes that must follow any text handed to these functions: they look up to 64 bytes ahead. */
 #define LW_NUMBER_SPARE 80
 
@@ -75,59 +71,6 @@ static inline unsigned lw_eight_digits(const char *s, uint64_t *digits)
     *digits = sum;
     return n;
 #endif
-}
-
-/* Where the bytes that are not digits stand among the next `width` (32 or 64): bit i for s[i], and all bits
- * from `width` on (of 64: the last one), so that the mask never runs out; a number cut by its end is followed
- * by a digit. With it a row is cut into its numbers without waiting for the end of one to find the next. */
-static inline uint64_t lw_not_digits(const char *s, unsigned width)
-{
-    uint64_t mask = ~(uint64_t)0 << (width < 64 ? width : 63);
-#ifdef __SSE2__
-    const __m128i shift = _mm_set1_epi8((char)(0x80 + '0')), nine = _mm_set1_epi8((char)(0x80 + 9));
-    for (unsigned i = 0; i < width; i += 16) {
-        __m128i v = _mm_loadu_si128((const __m128i *)(const void *)(s + i));
-        /* less the digit nought, as signed bytes: digits are the ten lowest values */
-        mask |= (uint64_t)(unsigned)_mm_movemask_epi8(_mm_cmpgt_epi8(_mm_sub_epi8(v, shift), nine)) << i;
-    }
-#else
-    for (unsigned i = 0; i < width; i++)
-        mask |= (uint64_t)((unsigned char)(s[i] - '0') > 9) << i;
-#endif
-    return mask;
-}
-
-/* Reads a plain number (1 to 8 digits, perhaps a mark and 1 to 8 more) of a row.
- * Given:  row   start of the row
- *         mask  of lw_not_digits(row, width), with no bit set below *at
- *         at    place in the row
- * Returned: *at and mask moved behind the number. False, with nothing promised about them, if the number is
- * not that plain. */
-static inline bool lw_plain_number(const char *row, uint64_t *mask, unsigned *at, char mark, double *value)
-{
-    unsigned stop = (unsigned)__builtin_ctzll(*mask), whole = stop - *at;
-    if (whole - 1 > 7)
-        return false;
-    uint64_t digits = lw_digit_bytes(row + *at, whole);
-    if (row[stop] != mark) {
-        *value = (double)(int64_t)lw_digit_value(digits);
-        *at = stop;
-        return true;
-    }
-    *mask &= *mask - 1;
-    if (*mask == 0) /* the mark was the last byte in view */
-        return false;
-    unsigned end = (unsigned)__builtin_ctzll(*mask), fraction = end - stop - 1;
-    if (fraction - 1 > 7)
-        return false;
-    uint64_t decimals = lw_digit_bytes(row + stop + 1, fraction), mantissa;
-    if (whole + fraction <= 8)
-        mantissa = lw_digit_value(digits >> (8 * fraction) | decimals);
-    else
-        mantissa = lw_digit_value(digits) * lw_whole_power_of_ten[fraction] + lw_digit_value(decimals);
-    *value = (double)(int64_t)mantissa / lw_power_of_ten[fraction];
-    *at = end;
-    return mantissa < (uint64_t)1 << 53;
 }
 
 /* Reads the number at s; see lw_number_slow(). */

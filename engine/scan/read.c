@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "scan/reader.h"
+#include "scan/source.h"
 
 #include <stdio.h>
 #include <string.h>
@@ -7,8 +8,9 @@
 /* The readers, most particular first; the last one claims whatever is left. */
 static const lw_reader *const readers[] = {&lw_pdcif_reader, &lw_text_reader};
 
-static lw_status read_content(lw_engine *engine, lw_content *content, lw_sha256 *hash,
-                              const lw_scan_options *options, lw_scan **scan, lw_error *err)
+/* Reads the content; its bytes go over to the scan. */
+static lw_status read_content(lw_engine *engine, lw_content *content, const lw_scan_options *options,
+                              lw_scan **scan, lw_error *err)
 {
     lw_scan_options standard = lw_scan_defaults();
     if (options == NULL)
@@ -32,9 +34,6 @@ static lw_status read_content(lw_engine *engine, lw_content *content, lw_sha256 
         lw_arena_end(&arena);
         return status;
     }
-    if (content->hash != NULL)
-        lw_sha256_add(hash, content->bytes + content->hashed, content->size - content->hashed);
-    lw_sha256_end(hash, made->hash);
     made->file = file;
     made->header = columns.header ? columns.header : "";
     made->n = columns.n;
@@ -54,6 +53,12 @@ static lw_status read_content(lw_engine *engine, lw_content *content, lw_sha256 
     while (!all && first + 1 < columns.n && columns.two_theta_deg[first] < options->range[0])
         first++;
     made->first_line = columns.line_of ? (size_t)columns.line_of(&columns, first) : 0;
+    /* from here on the bytes are the scan's: nothing may look at the content again */
+    status = lw_source_new(engine, content, &made->source, err);
+    if (status != LW_OK) {
+        lw_arena_end(&arena);
+        return status;
+    }
     if (noise == LW_NOISE_SCALED)
         lw_scan_estimate_noise(made, &made->variance_factor, &made->correlation);
     made->arena = arena;
@@ -73,12 +78,10 @@ lw_status lw_scan_read(lw_engine *engine, const char *path, const lw_scan_option
                        lw_error *err)
 {
     *scan = NULL;
-    lw_sha256 hash;
-    lw_sha256_begin(&hash);
     lw_content content;
-    lw_status status = lw_content_open(engine, path, &hash, &content, err);
+    lw_status status = lw_content_open(engine, path, &content, err);
     if (status == LW_OK)
-        status = read_content(engine, &content, &hash, options, scan, err);
+        status = read_content(engine, &content, options, scan, err);
     lw_content_free(engine, &content);
     return status;
 }
@@ -87,12 +90,10 @@ lw_status lw_scan_read_bytes(lw_engine *engine, const char *name, const char *by
                              const lw_scan_options *options, lw_scan **scan, lw_error *err)
 {
     *scan = NULL;
-    lw_sha256 hash;
-    lw_sha256_begin(&hash);
     lw_content content;
-    lw_status status = lw_content_copy(engine, name, bytes, size, &hash, &content, err);
+    lw_status status = lw_content_copy(engine, name, bytes, size, &content, err);
     if (status == LW_OK)
-        status = read_content(engine, &content, &hash, options, scan, err);
+        status = read_content(engine, &content, options, scan, err);
     lw_content_free(engine, &content);
     return status;
 }

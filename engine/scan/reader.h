@@ -4,7 +4,6 @@
 #ifndef LW_SCAN_READER_H
 #define LW_SCAN_READER_H
 
-#include "base/sha256.h"
 #include "scan/scan.h"
 
 /* The inflated content of a file. */
@@ -12,9 +11,7 @@ typedef struct lw_content {
     const char *name; /* of the file, for messages */
     char *bytes;      /* [size], then LW_NUMBER_SPARE zero bytes */
     size_t size;
-    lw_sha256
-        *hash; /* NULL, or a digest of these bytes that a reader may carry on while it reads (see `hashed`) */
-    size_t hashed; /* bytes that the digest holds already */
+    char hash[65]; /* SHA-256 of the file's own bytes; "" while `bytes` are just those */
 } lw_content;
 
 /* Columns as read, before they are checked. Memory belongs to the arena. */
@@ -45,12 +42,12 @@ extern const lw_reader lw_pdcif_reader;
 /* Fills content->bytes from a file or from memory, inflated if gzipped, and drops a byte order mark.
  * Inflated size is limited to 512 MB. Give it back with lw_content_free(). Errors: LW_IO, LW_BAD_DATA,
  * LW_OUT_OF_MEMORY, LW_CANCELLED.
- * hash: begun by the caller. If the content is the file's own bytes it is left for the reader to carry on;
- * if it was inflated, the file's bytes are already in it and content->hash is NULL. */
-lw_status lw_content_open(lw_engine *engine, const char *path, lw_sha256 *hash, lw_content *content,
-                          lw_error *err);
+ * Whatever changes the bytes (inflating, dropping the mark, a reader) settles their hash first. */
+lw_status lw_content_open(lw_engine *engine, const char *path, lw_content *content, lw_error *err);
 lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes, size_t size,
-                          lw_sha256 *hash, lw_content *content, lw_error *err);
+                          lw_content *content, lw_error *err);
+/* Makes the hash, if it isn't there yet. To be called before `bytes` are changed. */
+void lw_content_settle(lw_content *content);
 void lw_content_free(lw_engine *engine, lw_content *content);
 
 /* Refuses columns that can't be a scan: fewer than 3 points, angles that don't ascend or lie outside 0 to

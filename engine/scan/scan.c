@@ -1,8 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "scan/reader.h"
+#include "scan/source.h"
 
 #include <math.h>
 #include <stddef.h>
+#include <stdint.h>
 #include <string.h>
 
 static const char *const noise_words[] = {"auto", "counts", "sigma", "scaled", NULL};
@@ -63,6 +65,7 @@ static lw_status copy_points(lw_engine *engine, const lw_scan *like, size_t from
         memcpy(points + 2 * n, like->sigma + from, n * sizeof(double));
     *made = *like;
     made->arena = arena;
+    made->source = lw_source_share(like->source);
     made->file = file;
     made->header = header;
     made->n = n;
@@ -144,8 +147,14 @@ void lw_scan_free(lw_scan *scan)
 {
     if (scan != NULL) {
         lw_arena arena = scan->arena; /* the scan itself lies in it */
+        lw_source_drop(scan->source);
         lw_arena_end(&arena);
     }
+}
+
+const char *lw_scan_hash(const lw_scan *scan)
+{
+    return scan->source ? lw_source_hash(scan->source) : "";
 }
 
 double lw_scan_at(const lw_scan *scan, double two_theta_deg, bool *inside)

@@ -20,7 +20,7 @@ typedef enum lw_noise {
 typedef struct lw_scan {
     lw_arena arena;
     const char *file;   /* as the user named it; "" for a made scan */
-    char hash[65];      /* SHA-256 of the file's bytes, hexadecimal; empty for a made scan */
+    struct lw_source *source; /* what the hash is made from (scan/source.h); NULL for a made scan */
     const char *header; /* comment lines at the top, newline-separated */
     size_t n;
     const double *two_theta_deg; /* [n] */
@@ -54,6 +54,10 @@ lw_status lw_scan_read(lw_engine *engine, const char *path, const lw_scan_option
 /* The same from bytes in memory (name is only for messages). */
 lw_status lw_scan_read_bytes(lw_engine *engine, const char *name, const char *bytes, size_t size,
                              const lw_scan_options *options, lw_scan **scan, lw_error *err);
+
+/* SHA-256 of the file's bytes as they were read, hexadecimal; "" for a made scan. It is made when it is first asked
+ * for: until then the scan keeps the bytes, so that a file that changes meanwhile can't be mistaken for them. */
+const char *lw_scan_hash(const lw_scan *scan);
 
 /* A scan from arrays, checked like a file's; sigma may be NULL. */
 lw_status lw_scan_make(lw_engine *engine, const char *name, size_t n, const double *two_theta_deg,

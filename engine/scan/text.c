@@ -425,18 +425,14 @@ static lw_status check_bytes(lw_content *content, lw_error *err)
                           "export the scan as columns of text or as pdCIF", "binary content, not a text");
     /* one old line end only: carriage returns alone */
     if (memchr(bytes, '\n', content->size) == NULL && memchr(bytes, '\r', content->size) != NULL) {
-        if (content->hash != NULL)
-            lw_sha256_add(content->hash, bytes, content->size);
-        content->hash = NULL;
+        lw_content_settle(content);
         for (size_t i = 0; i < content->size; i++)
             if (content->bytes[i] == '\r')
                 content->bytes[i] = '\n';
     }
     /* the end mark of old systems */
     if (bytes[content->size - 1] == 0x1a) {
-        if (content->hash != NULL)
-            lw_sha256_add(content->hash, bytes, content->size);
-        content->hash = NULL;
+        lw_content_settle(content);
         content->bytes[--content->size] = '\0';
     }
     return LW_OK;
@@ -504,7 +500,8 @@ static lw_status read_text(lw_engine *engine, lw_content *content, const lw_scan
     if (t == NULL)
         return LW_OUT_OF_MEMORY;
     *t = (text){.content = content, .end = content->bytes + content->size, .separator = ' ', .mark = '.'};
-    lw_rows rows = {.content = content};
+    lw_rows rows;
+    lw_rows_begin(&rows, t->end);
     status = read_rows(engine, t, &rows, columns, err);
     if (status != LW_OK)
         return status;

@@ -228,10 +228,12 @@ def p6(work):
     subprocess.run(python("p6.py", "make", work), check=True)
     for name, n, baseline, own, goal in (("short", 13001, 31, 101, (6, 12)), ("long", 1000000, 3, 7, (5, 10))):
         path = os.path.join(work, f"{name}.xy")
-        found = rounds({"loadtxt": python("p6.py", "loadtxt", path, baseline), "engine": engine("p6", path, own)})
+        found = rounds({"loadtxt": python("p6.py", "loadtxt", path, baseline), "engine": engine("p6", path, own),
+                        "hash": engine("p6", path, own, "hash")})
         if not all(answer["as_strtod"] for answer in found["engine"]):
             sys.exit("P6: numbers differ from strtod's")
         row(f"P6 {n} lines (as strtod, to the bit), ms", seconds(found["loadtxt"]), seconds(found["engine"]), *goal)
+        row(f"P6 {n} lines, SHA-256 of the file too, ms", seconds(found["loadtxt"]), seconds(found["hash"]))
 
 
 def instructions():

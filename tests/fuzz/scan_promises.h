@@ -25,7 +25,7 @@ static inline void read_as_scan(const char *bytes, size_t size)
             FUZZ_PROMISE(err.message[0] != '\0');
             continue;
         }
-        FUZZ_PROMISE(scan->n >= 3 && strlen(scan->hash) == 64);
+        FUZZ_PROMISE(scan->n >= 3 && strlen(lw_scan_hash(scan)) == 64);
         for (size_t i = 0; i < scan->n; i++) {
             FUZZ_PROMISE(scan->two_theta_deg[i] > (i > 0 ? scan->two_theta_deg[i - 1] : 0));
             FUZZ_PROMISE(scan->two_theta_deg[i] < 180 && isfinite(scan->intensity[i]));

@@ -73,7 +73,7 @@ static void try_bytes(lw_engine *engine, const char *bytes, size_t size, int noi
     count[status == LW_OK]++;
     bool sound = true;
     if (status == LW_OK) {
-        sound = scan->n >= 3 && strlen(scan->hash) == 64 && scan->variance_factor > 0 &&
+        sound = scan->n >= 3 && strlen(lw_scan_hash(scan)) == 64 && scan->variance_factor > 0 &&
                 scan->correlation >= 0 && scan->correlation < 1 && strlen(scan->header) < ROOM + 2100;
         for (size_t i = 0; i < scan->n; i++)
             sound = sound && isfinite(scan->two_theta_deg[i]) && isfinite(scan->intensity[i]) &&

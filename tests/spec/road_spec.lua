@@ -34,6 +34,24 @@ describe("a scan", function()
     assert.error_matches(function() scan:crop(200, 210) end, "choose a wider range")
   end)
 
+  it("has the hash of the bytes that were read, whatever becomes of the file", function()
+    local folder = helper.folder()
+    local path = folder .. "/a.xy"
+    helper.write(path, "20.00 195\n20.02 190\n20.04 201\n20.06 180\n")
+    local hash = helper.output_of("sha256sum " .. path):match "^%x+"
+    local before = lw.read_scan(path)
+    local cut = lw.read_scan(path, { range = { 20.01, 20.07 } })
+    local part = before:crop(20.01, 20.07)
+    helper.write(path, "30.00 195\n30.02 190\n30.04 201\n")
+    assert.are.equal(hash, part.hash)
+    before = nil -- luacheck: ignore 311
+    sweep()
+    assert.are.equal(hash, cut.hash)
+    assert.are.equal(hash, part.hash)
+    assert.are.equal(helper.output_of("sha256sum " .. path):match "^%x+", lw.read_scan(path).hash)
+    helper.remove(folder)
+  end)
+
   it("keeps its columns alive", function()
     local column = read("lab6_before_service").intensity:slice(1, 100)
     sweep()
