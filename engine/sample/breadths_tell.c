@@ -1,11 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The words, numbers and curves of a fit of breadths. */
 #include "sample/breadths.h"
+#include "sample/directions.h"
 
 #include <math.h>
 #include <stdarg.h>
 #include <stdio.h>
-#include <stdlib.h>
 
 #define CURVE_POINTS 101
 
@@ -103,53 +103,18 @@ static void say(lw_node *remarks, lw_error *err, const char *format, ...)
     lw_add_text(remarks, NULL, text, err);
 }
 
-static int divisor(int a, int b)
-{
-    a = abs(a);
-    b = abs(b);
-    while (b != 0) {
-        int rest = a % b;
-        a = b;
-        b = rest;
-    }
-    return a;
-}
-
-/* The direction of a reflection: hkl without common divisor; in the cubic system without order and signs. */
-static void direction(const lw_profile *profile, bool cubic, int out[3])
-{
-    const lw_reflection *r = &profile->line->reflection;
-    out[0] = r->h;
-    out[1] = r->k;
-    out[2] = r->l;
-    int common = divisor(divisor(out[0], out[1]), out[2]);
-    for (int i = 0; i < 3; i++) {
-        if (common > 1)
-            out[i] /= common;
-        if (cubic)
-            out[i] = abs(out[i]);
-    }
-    for (int i = 0; cubic && i < 2; i++)
-        for (int j = 0; j < 2; j++)
-            if (out[j] < out[j + 1]) {
-                int keep = out[j];
-                out[j] = out[j + 1];
-                out[j + 1] = keep;
-            }
-}
-
 /* Directions of which two or more orders lie off the line to the same side by more than 3 u of their mean. */
 static void remark_directions(const lw_breadths *breadths, const lw_breadth_fit *fit, bool cubic,
                               lw_node *remarks, lw_error *err)
 {
     for (size_t i = 0; i < breadths->n; i++) {
         int mine[3], other[3];
-        direction(breadths->profile[i], cubic, mine);
+        lw_direction_of(breadths->profile[i], cubic, mine);
         double sum = 0, weight = 0;
         int orders = 0, above = 0;
         bool first = true;
         for (size_t j = 0; j < breadths->n; j++) {
-            direction(breadths->profile[j], cubic, other);
+            lw_direction_of(breadths->profile[j], cubic, other);
             if (mine[0] != other[0] || mine[1] != other[1] || mine[2] != other[2])
                 continue;
             first = first && j >= i;

@@ -2,6 +2,7 @@
 /* Williamson-Hall: size from the breadth at s = 0, strain from its growth with s. */
 #include "physics/elasticity.h"
 #include "sample/breadths.h"
+#include "sample/directions.h"
 #include "sample/method.h"
 #include "sample/reading.h"
 
@@ -213,6 +214,9 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *o
         }
     }
     lw_breadths_draw(&breadths, &fits[best], result, err);
+    status = lw_directions_tell(&breadths, &fits[best], arena, result, err);
+    if (status != LW_OK)
+        return status;
     lw_node *remarks = lw_add_list(result, "remarks", err);
     lw_breadths_remark(&breadths, &fits[best], remarks, err);
     lw_readings_remark(result, remarks, err);

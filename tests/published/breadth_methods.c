@@ -4,6 +4,7 @@
 #include "numeric/straight_line.h"
 #include "numeric/voigt.h"
 #include "published/by_hand.h"
+#include "physics/elasticity.h"
 #include "sample/breadths.h"
 #include "sample/reading.h"
 
@@ -126,6 +127,55 @@ static void bench_a(void)
             CHECK(fabs(rms.value - 0.002) < 2 * rms.u);
         }
     }
+}
+
+/* All four lines at once: each direction keeps the answers of its own two orders, those of bench_a. */
+static void directions_of_bench_a(void)
+{
+    static const struct {
+        int h, k, l;
+        double beta;
+    } line[5] = {{1, 1, 1, 0.101924542322}, {2, 0, 0, 0.103386069622}, {3, 1, 1, 0.112795400614},
+                 {2, 2, 2, 0.114043393741}, {4, 0, 0, 0.118843942240}};
+    static const struct {
+        const char *direction;
+        double D[2], e[2];
+    } want[2] = {{"111", {11.135152, 10.251055}, {0.0012646756, 0.0030823533}},
+                 {"100", {11.372916, 10.236314}, {0.0013970052, 0.003058186}}};
+    static const char *const forms[2] = {"lorentzian", "gaussian"};
+    hand_begin(&h, LW_CUBIC, COPPER, CU);
+    for (int i = 0; i < 5; i++) {
+        double n = line[i].h * line[i].h + line[i].k * line[i].k + line[i].l * line[i].l;
+        hand_line(&h, line[i].h, line[i].k, line[i].l, sqrt(n) / 0.3615, line[i].beta, 0, 0, 1e-5);
+    }
+    hand_end(&h, 0);
+    for (int form = 0; form < 2; form++) {
+        lw_node *node = run_choice("williamson_hall", "form", forms[form], NULL, NULL);
+        const lw_node *list = lw_node_get(node, "directions");
+        CHECK(list != NULL && list->n == 2);
+        for (size_t i = 0; i < 2; i++) {
+            const lw_node *one = lw_node_at(list, i);
+            CHECK(strcmp(lw_node_text(one, "direction", ""), want[i].direction) == 0);
+            lw_quantity D = hand_quantity(one, "size_volume", NULL, NULL);
+            lw_quantity e = hand_quantity(one, "strain_apparent", NULL, NULL);
+            CHECK_NEAR(D.value, want[i].D[form], 6e-7);
+            CHECK_NEAR(e.value, want[i].e[form], 6e-10);
+            CHECK(fabs(D.value - 10.27694483) < 2 * D.u && fabs(RMS * e.value - 0.002) < 2 * RMS * e.u);
+        }
+        CHECK(lw_node_get(lw_node_get(node, "figure"), "series")->n == 4); /* points, all, two directions */
+    }
+    /* another order of indices is the same direction in a cubic crystal, and another one in a tetragonal one */
+    lw_cell cell = {.a = 0.4594, .b = 0.4594, .c = 0.2959, .alpha = 90, .beta = 90, .gamma = 90};
+    hand_begin(&h, LW_TETRAGONAL, cell, CU);
+    hand_line(&h, 2, 0, 0, 2 / cell.a, 0.05, 0, 0, 1e-4);
+    hand_line(&h, 0, 0, 2, 2 / cell.c, 0.08, 0, 0, 1e-4);
+    hand_line(&h, 4, 0, 0, 4 / cell.a, 0.06, 0, 0, 1e-4);
+    hand_end(&h, 0);
+    lw_node *node = run_choice("williamson_hall", "form", "lorentzian", NULL, NULL);
+    CHECK(lw_node_get(node, "directions")->n == 1);
+    const lw_node *one = lw_node_at(lw_node_get(node, "directions"), 0);
+    CHECK_RELATIVE(hand_quantity(one, "size_volume", NULL, NULL).value, 1 / 0.04, 1e-9);
+    CHECK_RELATIVE(hand_quantity(one, "strain_apparent", NULL, NULL).value, 0.01 / (2 * 2 / cell.a), 1e-9);
 }
 
 /* The same crystals read as what they are: six breadths in closed form (bench A, mpmath), size and strain back. */
@@ -431,6 +481,51 @@ static void stiffness(void)
     }
 }
 
+/* The same in a hexagonal crystal (titanium, Fisher & Renken 1964 as in the CRC Handbook, 98th ed.) and a tetragonal one
+ * (rutile): 1/E in closed form (Nye 1957, ch. VIII) from compliances by the 2 x 2 blocks of the stiffness, in this file. */
+static void uniaxial_stiffness(void)
+{
+    static const double constants[2][6] = {{162.4, 92.0, 69.0, 180.7, 46.7, 35.2}, {268, 175, 147, 484.2, 123.8, 190.2}};
+    static const int hkl[5][3] = {{1, 0, 0}, {0, 0, 2}, {1, 0, 1}, {1, 1, 0}, {1, 1, 2}};
+    for (int kind = 0; kind < 2; kind++)
+        for (int energy = 0; energy < 2; energy++) {
+            bool hexagonal = kind == 0;
+            const double *c = constants[kind], D = 21, stress = 0.3, density = 8e-4;
+            lw_cell cell = {.a = hexagonal ? 0.2951 : 0.4594, .c = hexagonal ? 0.4684 : 0.2959, .alpha = 90, .beta = 90};
+            cell.b = cell.a;
+            cell.gamma = hexagonal ? 120 : 90;
+            double det = c[3] * (c[0] + c[1]) - 2 * c[2] * c[2], half = 1 / (c[0] - c[1]);
+            double s11 = 0.5 * (c[3] / det + half), s12 = 0.5 * (c[3] / det - half), s13 = -c[2] / det;
+            double s33 = (c[0] + c[1]) / det;
+            hand_begin(&h, hexagonal ? LW_HEXAGONAL : LW_TETRAGONAL, cell, 0.05);
+            for (int i = 0; i < 5; i++) {
+                int a = hkl[i][0], b = hkl[i][1];
+                /* normal on the axes x along a, y along b* */
+                double n[3] = {a / cell.a, (hexagonal ? (a + 2 * b) / sqrt(3) : b) / cell.a, hkl[i][2] / cell.c};
+                double s2 = n[0] * n[0] + n[1] * n[1] + n[2] * n[2], s = sqrt(s2);
+                double x = n[0] * n[0] / s2, y = n[1] * n[1] / s2, z = n[2] * n[2] / s2;
+                double inverse = (x * x + y * y) * s11 + z * z * s33 + x * y * (2 * s12 + 1 / c[5]) +
+                                 z * (1 - z) * (2 * s13 + 1 / c[4]);
+                double e = energy ? sqrt(2 * density * inverse) : stress * inverse;
+                hand_line(&h, a, b, hkl[i][2], s, 1 / D + 2 * e * s, 0, 0, 1e-4);
+            }
+            hand_end(&h, 0);
+            h.material.space_group = hexagonal ? 194 : 136;
+            lw_error err = LW_ERROR_NONE;
+            CHECK(lw_material_settle(&h.material, &err) == LW_OK);
+            static const char *const names[] = {"c11", "c12", "c13", "c33", "c44", "c66"};
+            for (int i = 0; i < (hexagonal ? 5 : 6); i++)
+                CHECK(lw_stiffness_set(&h.material, names[i], c[i], &err) == LW_OK);
+            CHECK(lw_stiffness_complete(&h.material, &err) == LW_OK);
+            lw_node *node = run_with("williamson_hall", (int[2]){1, 1 + energy});
+            CHECK_RELATIVE(hand_quantity(node, "size_volume", NULL, NULL).value, D, 1e-8);
+            if (energy)
+                CHECK_RELATIVE(hand_quantity(node, "energy_density", NULL, NULL).value, 1000 * density, 1e-8);
+            else
+                CHECK_RELATIVE(hand_quantity(node, "stress_apparent", NULL, NULL).value, stress, 1e-8);
+        }
+}
+
 /* The Lorentzian form is a straight line: the same numbers as the exact line with errors in both coordinates
  * (York et al. 2004), to second order in the relative error of the abscissa. */
 static void straight(void)
@@ -522,6 +617,7 @@ int main(void)
     lw_engine_begin(&engine);
     lw_arena_begin(&arena, &engine);
     bench_a();
+    directions_of_bench_a();
     readings();
     closed_forms();
     uncertainties();
@@ -530,6 +626,7 @@ int main(void)
     common_function();
     directions();
     stiffness();
+    uniaxial_stiffness();
     straight();
     pulls();
     lw_arena_end(&arena);

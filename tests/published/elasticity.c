@@ -137,6 +137,28 @@ static void check_uniaxial(void)
     CHECK_NEAR(with, 1 / inverse, 1e-9);
 }
 
+/* Tetragonal (4/mmm classes): 1/E = (n1^4 + n2^4) s11 + n3^4 s33 + n1^2 n2^2 (2 s12 + s66) + n3^2 (1 - n3^2)(2 s13 + s44)
+ * (Nye 1957, p. 145), compliances by the 2 x 2 blocks of the stiffness; rutile's constants. */
+static void check_tetragonal(void)
+{
+    static const char *const names[] = {"c11", "c12", "c13", "c33", "c44", "c66"};
+    const double c[] = {268, 175, 147, 484.2, 123.8, 190.2}, a = 0.4594, height = 0.2959;
+    lw_material m = of(136, NULL, (lw_cell){.a = a, .c = height});
+    lw_error err = LW_ERROR_NONE;
+    CHECK(give(&m, names, c, 6, &err) == LW_OK);
+    double det = c[3] * (c[0] + c[1]) - 2 * c[2] * c[2], half = 1 / (c[0] - c[1]);
+    double s11 = 0.5 * (c[3] / det + half), s12 = 0.5 * (c[3] / det - half), s13 = -c[2] / det, s33 = (c[0] + c[1]) / det;
+    static const int plane[6][3] = {{1, 1, 0}, {1, 0, 1}, {2, 0, 0}, {2, 1, 1}, {0, 0, 2}, {3, 1, 2}};
+    for (int i = 0; i < 6; i++) {
+        double n[3] = {plane[i][0] / a, plane[i][1] / a, plane[i][2] / height}, all = 0;
+        for (int j = 0; j < 3; j++)
+            all += n[j] * n[j];
+        double x = n[0] * n[0] / all, y = n[1] * n[1] / all, z = n[2] * n[2] / all;
+        double inverse = (x * x + y * y) * s11 + z * z * s33 + x * y * (2 * s12 + 1 / c[5]) + z * (1 - z) * (2 * s13 + 1 / c[4]);
+        CHECK_NEAR(young(&m, plane[i][0], plane[i][1], plane[i][2]), 1 / inverse, 1e-9);
+    }
+}
+
 /* Equivalent planes must have equal moduli, in every symmetry class that has its own set of constants:
  * this holds each relation between constants, and the axes, against the operations of the group. */
 static void check_classes(void)
@@ -270,6 +292,7 @@ int main(void)
     check_cubic();
     check_isotropic();
     check_uniaxial();
+    check_tetragonal();
     check_classes();
     check_refusals();
     return lw_checks_end();
