@@ -23,13 +23,44 @@ void lw_arena_begin(lw_arena *arena, lw_engine *engine)
     arena->chunk = NULL;
 }
 
-void lw_arena_end(lw_arena *arena)
+static void give_chunks(lw_arena *arena, const lw_arena_chunk *until)
 {
-    while (arena->chunk != NULL) {
+    while (arena->chunk != until) {
         lw_arena_chunk *older = arena->chunk->older;
         lw_give(arena->engine, arena->chunk, arena->chunk->size);
         arena->chunk = older;
     }
+}
+
+void lw_arena_end(lw_arena *arena)
+{
+    give_chunks(arena, NULL);
+}
+
+lw_arena_mark lw_arena_mark_now(const lw_arena *arena)
+{
+    return (lw_arena_mark){.chunk = arena->chunk, .used = arena->chunk != NULL ? arena->chunk->used : 0};
+}
+
+void lw_arena_rewind(lw_arena *arena, lw_arena_mark mark)
+{
+    give_chunks(arena, mark.chunk);
+    if (arena->chunk != NULL)
+        arena->chunk->used = mark.used;
+}
+
+lw_status lw_arena_reserve(lw_arena *arena, size_t bytes, lw_error *err)
+{
+    size_t page = lw_large_page(bytes), total = bytes + page + sizeof(lw_arena_chunk) + ALIGNMENT;
+    lw_arena_chunk *fresh = lw_take(arena->engine, total, err);
+    if (fresh == NULL)
+        return LW_OUT_OF_MEMORY;
+    *fresh = (lw_arena_chunk){.older = arena->chunk, .size = total, .used = sizeof *fresh};
+    /* begin where a large page does; what is passed over is never touched */
+    if (page > 0)
+        fresh->used += (size_t)((page - ((uintptr_t)fresh + fresh->used) % page) % page);
+    arena->chunk = fresh;
+    return LW_OK;
 }
 
 void *lw_take(lw_engine *engine, size_t size, lw_error *err)

@@ -19,6 +19,18 @@ void lw_arena_begin(lw_arena *arena, lw_engine *engine);
 /* Gives everything back. Safe on an arena that was only zeroed. */
 void lw_arena_end(lw_arena *arena);
 
+/* Takes room for `bytes` bytes at once, in large pages where the system has them: memory that is touched page by page
+ * for the first time costs more than most of what is done with it. */
+lw_status lw_arena_reserve(lw_arena *arena, size_t bytes, lw_error *err);
+
+/* Where the arena is full to now; lw_arena_rewind() gives everything back that was taken since. */
+typedef struct lw_arena_mark {
+    lw_arena_chunk *chunk;
+    size_t used;
+} lw_arena_mark;
+lw_arena_mark lw_arena_mark_now(const lw_arena *arena);
+void lw_arena_rewind(lw_arena *arena, lw_arena_mark mark);
+
 /* Takes count x size bytes, zeroed. NULL, with err set, if memory is refused or the product
  * overflows. A count of 0 gives a valid pointer that must not be read. */
 void *lw_arena_take(lw_arena *arena, size_t count, size_t size, lw_error *err);

@@ -34,3 +34,8 @@ void lw_keep_freed_memory(void)
     (void)mallopt(M_TRIM_THRESHOLD, KEPT_MOST);
 #endif
 }
+
+size_t lw_large_page(size_t bytes)
+{
+    return bytes >= LARGE_PAGE ? LARGE_PAGE : 0;
+}

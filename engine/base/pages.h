@@ -14,4 +14,7 @@ void lw_prefer_large_pages(void *block, size_t size);
  * blocks below 4 MB wait for the next request, instead of going to the system and coming back in fresh pages. */
 void lw_keep_freed_memory(void);
 
+/* Size of a large page if `bytes` would fill one, else 0. */
+size_t lw_large_page(size_t bytes);
+
 #endif
