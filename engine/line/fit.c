@@ -114,6 +114,13 @@ const lw_fit_options *lw__fit_keep_options(const lw_fit_options *options, const 
     return kept;
 }
 
+/* About what a fit takes: columns along the scan, and matrices of the parameters. */
+static size_t bytes_of(const lw_fit_options *options, size_t points, size_t lines)
+{
+    size_t room = lw__fit_background_room(options), parameters = 4 * lines + room + LW_WIDTH_PARAMETERS;
+    return sizeof(double) * (points * (10 + room) + 6 * parameters * parameters) + 12000 * lines;
+}
+
 /* One fit of the scan, or of the range that the options name. *crop_deg > 0 and no lines: fit again below it. */
 static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_reflection *reflections, size_t n,
                           const lw_material *material, const lw_fit_options *options, lw_lines **out, double *crop_deg,
@@ -132,6 +139,8 @@ static lw_status fit_once(lw_engine *engine, const lw_scan *scan, const lw_refle
         lines->scan = lines->cropped;
     }
     fit.scan = lines->scan;
+    if (status == LW_OK)
+        status = lw_arena_reserve(&fit.scratch, bytes_of(options, fit.scan->n, n), err);
     lw__fit_begin(&fit);
     if (status == LW_OK && material != NULL &&
         (lines->material = lw_arena_copy(&lines->arena, material, 1, sizeof *material, err)) == NULL)

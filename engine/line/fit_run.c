@@ -134,8 +134,15 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
             double nominal = model->line[k].nominal_deg;
             fit->local[k][0] = fmax(variance - lw_width_gauss_variance(model->instrument, nominal, NULL), 0);
             fit->local[k][1] = fmax(lorentz - lw_width_lorentz(model->instrument, nominal, NULL), 0);
-        } else
-            shape->start(lw_voigt_fwhm(sqrt(variance), lorentz), fit->local[k]);
+        } else {
+            /* the smooth function may miss a line by far where the Voigt does; then what was seen of it is a better start */
+            double fwhm = lw_voigt_fwhm(sqrt(variance), lorentz), seen = fit->start[k].fwhm_deg;
+            if (fit->start[k].visible && overlap < 0.2) {
+                fwhm = fmin(fmax(fwhm, 0.8 * seen), 1.25 * seen);
+                fit->position[k] = fit->start[k].position_deg;
+            }
+            shape->start(fwhm, fit->local[k]);
+        }
     }
     /* only the axial length stays common */
     size_t n = 0;
@@ -152,7 +159,7 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
     model->n_local = (size_t)shape->n_local;
     status = lw_model_prepare(model, &fit->scratch, err);
     if (status == LW_OK)
-        status = lw__fit_stage(fit, 6, true, err);
+        status = lw__fit_stage(fit, LW_FINAL_ROUNDS, true, err);
     return status;
 }
 
@@ -196,25 +203,23 @@ static lw_status start_model(lw_fit_state *fit, lw_error *err)
     lw_model *model = &fit->model;
     const lw_scan *scan = fit->scan;
     const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
-    double fwhm, *background = lw_arena_take(&fit->scratch, scan->n, sizeof *background, err);
-    if (background == NULL)
-        return LW_OUT_OF_MEMORY;
-    lw_status status = start_values(fit, background, &fwhm, err);
+    lw_status status = lw_model_points(model, scan, lw__fit_background_room(fit->options), &fit->scratch, err);
     if (status != LW_OK)
         return status;
+    lw_arena_mark mark = lw_arena_mark_now(&fit->scratch);
+    double fwhm, *background = lw_arena_take_raw(&fit->scratch, scan->n, sizeof *background, err);
+    if (background == NULL)
+        return LW_OUT_OF_MEMORY;
+    status = start_values(fit, background, &fwhm, err);
+    if (status == LW_OK)
+        status = lw__fit_start_background(fit, background, err);
+    if (status != LW_OK)
+        return status;
+    lw_arena_rewind(&fit->scratch, mark);
     model->n_lines = fit->n;
     model->shape = shape->is_voigt ? shape : lw_line_shape_list[0];
     model->n_local = 0;
     choose_globals(fit, fwhm);
-    double span = scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0];
-    size_t terms = (size_t)fit->options->background_terms;
-    if (terms == 0)
-        terms = span > 60 ? 6 : span > 15 ? 4 : 2;
-    fit->background[0] = background[scan->n / 2];
-    status = lw_model_points(model, scan, LW_BACKGROUND_MOST, &fit->scratch, err);
-    if (status != LW_OK)
-        return status;
-    lw__fit_set_background(fit, terms);
     if (status == LW_OK)
         status = lw_model_prepare(model, &fit->scratch, err);
     if (status == LW_OK)
@@ -233,6 +238,13 @@ static void hold_globals(lw_fit_state *fit, int which)
     }
 }
 
+/* A stage on the way: once more where it did not come to an end. */
+static lw_status stage_on_the_way(lw_fit_state *fit, lw_error *err)
+{
+    lw_status status = lw__fit_stage(fit, 1, false, err);
+    return status != LW_OK || fit->converged ? status : lw__fit_stage(fit, 1, false, err);
+}
+
 lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
 {
     const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
@@ -242,24 +254,28 @@ lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
     lw_engine_progress(fit->engine, "line fit", 0.1);
     hold_globals(fit, HOLD_ALL);
     if (status == LW_OK)
-        status = lw__fit_stage(fit, 1, false, err); /* areas and background: linear */
+        status = lw__fit_linear_start(fit, err);
     lw_engine_progress(fit->engine, "line fit", 0.25);
     for (size_t k = 0; k < fit->n; k++)
         fit->hold_position[k] = !fit->start[k].visible;
     hold_globals(fit, HOLD_FINE);
     if (status == LW_OK)
-        status = lw__fit_stage(fit, 2, false, err);
+        status = stage_on_the_way(fit, err);
     if (status == LW_OK && whole_scan && (fit->crop_deg = overlap_begins(fit)) > 0)
         return LW_OK;
     hold_globals(fit, HOLD_NONE);
     if (status == LW_OK)
-        status = lw__fit_stage(fit, 2, false, err);
+        status = stage_on_the_way(fit, err);
     lw_engine_progress(fit->engine, "line fit", 0.5);
-    if (status == LW_OK)
-        status = lw__fit_choose_background(fit, err);
+    bool more = true;
+    for (int round = 0; round < 3 && more && status == LW_OK; round++) {
+        status = lw__fit_choose_background(fit, &more, err);
+        if (status == LW_OK && more)
+            status = stage_on_the_way(fit, err);
+    }
     lw_engine_progress(fit->engine, "line fit", 0.7);
-    if (status == LW_OK)
-        status = lw__fit_stage(fit, smooth ? 6 : 2, smooth, err);
+    if (status == LW_OK && smooth)
+        status = lw__fit_stage(fit, LW_FINAL_ROUNDS, true, err);
     if (status == LW_OK && !smooth)
         status = free_widths(fit, err);
     if (status == LW_OK && !fit->converged)

@@ -48,7 +48,7 @@ void lw_fit_weigh(lw_fit_state *fit, bool from_model)
 }
 
 /* Takes arrays for the layout that the model now has, and fills them from the state. */
-static lw_status pack(lw_fit_state *fit, lw_error *err)
+lw_status lw__fit_pack(lw_fit_state *fit, lw_error *err)
 {
     lw_model *model = &fit->model;
     size_t n = lw_model_parameters(model), border = lw_model_border(model);
@@ -92,10 +92,12 @@ static lw_status pack(lw_fit_state *fit, lw_error *err)
         if (model->global[i].parameter >= LW_AXIAL_1)
             fit->upper[border + model->n_background + i] = 0.25;
     }
+    for (size_t i = 0; i < n; i++)
+        fit->at_bound[i] = !fit->fixed[i] && (fit->p[i] <= fit->lower[i] || fit->p[i] >= fit->upper[i]);
     return LW_OK;
 }
 
-static void unpack(lw_fit_state *fit)
+void lw__fit_unpack(lw_fit_state *fit)
 {
     lw_model *model = &fit->model;
     size_t border = lw_model_border(model);
@@ -112,39 +114,59 @@ static void unpack(lw_fit_state *fit)
 
 lw_status lw__fit_stage(lw_fit_state *fit, int rounds, bool final, lw_error *err)
 {
-    bool from_model = fit->options->weights == 0;
+    bool from_model = fit->options->weights == 0 && fit->scan->noise != LW_NOISE_SIGMA;
+    /* Weights and model settle together: while the weights still move, a sharp end would be for nothing. */
+    bool sharp = final && !from_model;
     for (int round = 0; round < rounds; round++) {
-        lw_status status = pack(fit, err);
+        lw_status status = lw__fit_pack(fit, err);
         if (status != LW_OK)
             return status;
-        lw_model_windows(&fit->model, fit->p, fit->options->window);
+        bool changed = lw_model_windows(&fit->model, fit->p, fit->options->window);
+        if (round > 0 && !changed && !from_model)
+            break; /* the same least squares once more */
         lw_problem problem = {.n = fit->n_parameters, .lower = fit->lower, .upper = fit->upper, .fixed = fit->fixed,
                               .evaluate = lw_model_evaluate, .user = &fit->model};
+        lw_width_form form;
+        lw_arena_mark mark = lw_arena_mark_now(&fit->scratch);
+        bool in_form = lw__fit_enter_form(fit, &form, err);
+        if (err != NULL && err->status != LW_OK)
+            return err->status;
+        if (in_form) {
+            problem.evaluate = lw__fit_evaluate_form;
+            problem.user = &form;
+        }
         lw_fit_control control = lw_fit_control_defaults();
         control.iterations_most = final ? 200 : 60;
-        control.chi2_tolerance = final ? 1e-9 : 1e-4;
-        control.step_tolerance = final ? 1e-3 : 0.1; /* a stage on the way need not end sharper than it is used */
+        control.chi2_tolerance = sharp ? 1e-9 : 1e-4;
+        control.step_tolerance = sharp ? 1e-3 : 0.1; /* what is on the way need not end sharper than it is used */
+        control.scratch = &fit->scratch;
         lw_fit_outcome outcome;
         status = lw_least_squares(fit->engine, &problem, &control, fit->p, fit->at_bound, &outcome, err);
         if (status != LW_OK)
             return status;
+        if (in_form)
+            lw__fit_leave_form(fit, &form);
+        lw_arena_rewind(&fit->scratch, mark);
         double before = fit->chi2;
         fit->iterations += outcome.iterations;
         fit->converged = outcome.converged;
         fit->stopped = outcome.reason;
         fit->chi2 = outcome.chi2;
-        unpack(fit);
-        if (from_model && fit->scan->noise != LW_NOISE_SIGMA) {
+        lw__fit_unpack(fit);
+        if (from_model) {
             lw_normal look = {.n = fit->n_parameters};
-            status = lw_model_evaluate(&fit->model, fit->p, false, &look, err);
+            if (!outcome.at_last_evaluation)
+                status = lw_model_evaluate(&fit->model, fit->p, false, &look, err);
             if (status != LW_OK)
                 return status;
             lw_fit_weigh(fit, true);
         }
         if (!final && round > 0)
             break;
-        if (round > 0 && fabs(fit->chi2 - before) < 1e-5 * before)
+        double change = round > 0 ? fabs(fit->chi2 - before) / before : 1;
+        if (sharp && fit->converged && change < 1e-5)
             break;
+        sharp = final && (sharp || change < 1e-4 || round + 3 >= rounds);
     }
     return LW_OK;
 }

@@ -7,7 +7,8 @@
 #include "line/model.h"
 #include "line/start.h"
 
-#define LW_BACKGROUND_MOST 44
+#define LW_BACKGROUND_MOST 44   /* columns */
+#define LW_BACKGROUND_CHOICE 20 /* terms that are chosen from */
 
 enum { LW_WIDTHS_AUTO, LW_WIDTHS_FREE, LW_WIDTHS_SMOOTH }; /* lw_fit_options.widths */
 
@@ -39,6 +40,7 @@ typedef struct lw_fit_state {
     size_t iterations;
     const char *stopped;
     bool converged;
+    bool steep_upwards;            /* the Gaussian width function was seen to want V > 0 */
     double crop_deg;               /* > 0: from here on the lines overlap too much; fit again below it */
     double chi2;                   /* of the last iteration */
     lw_width_function shared;      /* the smooth width function, kept when lines get widths of their own */
@@ -57,8 +59,30 @@ const lw_fit_options *lw__fit_keep_options(const lw_fit_options *options, const 
 /* The stages in their order. With fit->crop_deg set at its end the fit is to be run again below that angle. */
 lw_status lw__fit_run(lw_fit_state *fit, lw_error *err);
 
+#define LW_FINAL_ROUNDS 24
 /* One stage: least squares, then weights and windows from the new model, until both agree. */
 lw_status lw__fit_stage(lw_fit_state *fit, int rounds, bool final, lw_error *err);
+
+/* Takes arrays for the layout that the model now has, and fills them from the state. */
+lw_status lw__fit_pack(lw_fit_state *fit, lw_error *err);
+/* And back. */
+void lw__fit_unpack(lw_fit_state *fit);
+
+/* The Gaussian width function U, V, W as U, t, c while it is fitted; see fit_caglioti.c. */
+typedef struct lw_width_form {
+    lw_model *model;
+    size_t row[3];
+    double *p;
+} lw_width_form;
+
+/* Brings the packed parameters and their bounds into the form, and back; false where it does not apply (err set if
+ * memory was refused). In between, lw__fit_evaluate_form with the form as its user stands for lw_model_evaluate. */
+bool lw__fit_enter_form(lw_fit_state *fit, lw_width_form *form, lw_error *err);
+void lw__fit_leave_form(lw_fit_state *fit, const lw_width_form *form);
+lw_status lw__fit_evaluate_form(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
+
+/* Most columns that the background may come to have. */
+size_t lw__fit_background_room(const lw_fit_options *options);
 
 /* Whether the user holds a parameter (or "positions", "background") of that name. */
 bool lw__fit_is_fixed(const lw_fit_options *options, const char *name);
@@ -69,8 +93,16 @@ lw_status lw__fit_take_background_scan(lw_fit_state *fit, lw_error *err);
 /* Background with `terms` Chebyshev terms; keeps the coefficients there are. */
 void lw__fit_set_background(lw_fit_state *fit, size_t terms);
 
-/* More background terms while the Bayesian information criterion falls (Schwarz 1978 Ann. Stat. 6, 461). */
-lw_status lw__fit_choose_background(lw_fit_state *fit, lw_error *err);
+/* First background: few terms, or those that were asked for, through the level of the scan without its lines
+ * (level[scan->n]). */
+lw_status lw__fit_start_background(lw_fit_state *fit, const double *level, lw_error *err);
+
+/* Areas and background, in which the model is linear, with everything else held: one step. */
+lw_status lw__fit_linear_start(lw_fit_state *fit, lw_error *err);
+
+/* More background terms while the Bayesian information criterion falls (Schwarz 1978 Ann. Stat. 6, 461), by the normal
+ * equations at the present point. *more: there are; they stand at zero as yet. */
+lw_status lw__fit_choose_background(lw_fit_state *fit, bool *more, lw_error *err);
 
 /* Share of a line's area that lies under its neighbours. */
 double lw_fit_overlap(const lw_fit_state *fit, size_t line);

@@ -126,13 +126,14 @@ static void reach_of(const lw_model *model, size_t n_parts, size_t size, double 
         *first = *end;
 }
 
-void lw_model_windows(lw_model *model, const double *p, double window)
+bool lw_model_windows(lw_model *model, const double *p, double window)
 {
+    bool changed = false;
     double axial[2];
     const bool no_slopes[2] = {false, false};
     axial_parameters(model, p, axial);
     for (size_t k = 0; k < model->n_lines; k++) {
-        lw_model_line *line = &model->line[k];
+        lw_model_line *line = &model->line[k], before = *line;
         const double *own = p + lw_model_row(model, k);
         double variance, lorentz;
         lw_model_widths(model, p, k, &variance, &lorentz);
@@ -154,7 +155,12 @@ void lw_model_windows(lw_model *model, const double *p, double window)
                  &line->near_first, &line->near_end);
         reach_of(model, model->n_bundles, LW_BLOCK * LW_BUNDLE, own[0] + low, own[0] + high, reach, BUNDLE_MARGIN,
                  &line->close_first, &line->close_end);
+        changed |= line->core_first != before.core_first || line->core_end != before.core_end ||
+                   line->near_first != before.near_first || line->near_end != before.near_end ||
+                   line->close_first != before.close_first || line->close_end != before.close_end ||
+                   line->copies.part[0] != before.copies.part[0] || line->copies.part[1] != before.copies.part[1];
     }
+    return changed;
 }
 
 bool lw_model_set_lines(const lw_model *model, const double *p)

@@ -100,8 +100,8 @@ void lw_model_background(lw_model *model, size_t terms, bool hyperbola, const do
 /* Takes scratch for the present lines and globals. Call again after their number changed. */
 lw_status lw_model_prepare(lw_model *model, lw_arena *arena, lw_error *err);
 
-/* Decides which blocks are near which line, for a typical FWHM at each: window in FWHM. */
-void lw_model_windows(lw_model *model, const double *p, double window);
+/* Decides which blocks are near which line, for a typical FWHM at each: window in FWHM. True if anything changed. */
+bool lw_model_windows(lw_model *model, const double *p, double window);
 
 /* The callback of lw_problem: user is the lw_model. */
 lw_status lw_model_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);

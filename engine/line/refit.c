@@ -46,7 +46,7 @@ static lw_status take_over(lw_fit_state *fit, const lw_lines *from, lw_error *er
     fit->model.n_lines = n;
     fit->model.shape = lw_line_shape_list[fit->options->shape];
     memcpy(fit->lines->variance, from->variance, from->scan->n * sizeof(double));
-    status = lw_model_points(&fit->model, fit->scan, LW_BACKGROUND_MOST, &fit->scratch, err);
+    status = lw_model_points(&fit->model, fit->scan, from->n_background + 2, &fit->scratch, err);
     if (status != LW_OK)
         return status;
     lw__fit_set_background(fit, from->n_background);
@@ -80,7 +80,7 @@ static void take_shared_widths(lw_fit_state *fit, const lw_lines *from)
 static lw_status stage(lw_fit_state *fit, bool final, lw_error *err)
 {
     lw_status status = lw_model_prepare(&fit->model, &fit->scratch, err);
-    return status == LW_OK ? lw__fit_stage(fit, final ? 6 : 2, final, err) : status;
+    return status == LW_OK ? lw__fit_stage(fit, final ? LW_FINAL_ROUNDS : 2, final, err) : status;
 }
 
 /* Widths shared by all lines, by some, or by none. */

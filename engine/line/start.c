@@ -37,11 +37,30 @@ static void smooth(const double *from, size_t n, size_t half, double *to)
     }
 }
 
+/* Each point at most the mean of the points `width` to both sides; near the ends these are as far as the scan goes. */
+static void clip(const double *restrict from, size_t n, size_t width, double *restrict to)
+{
+    for (size_t i = 0; i < n; i++) {
+        if (i == width && n > 2 * width) {
+            size_t middle = n - width;
+            for (; i < middle; i++) {
+                double across = 0.5 * (from[i - width] + from[i + width]);
+                to[i] = across < from[i] ? across : from[i];
+            }
+        }
+        size_t reach = i < n - 1 - i ? i : n - 1 - i;
+        if (reach > width)
+            reach = width;
+        double across = 0.5 * (from[i - reach] + from[i + reach]);
+        to[i] = reach > 0 && across < from[i] ? across : from[i];
+    }
+}
+
 lw_status lw_start_background(const lw_scan *scan, double window_deg, double *background, lw_arena *scratch,
                               lw_error *err)
 {
     size_t n = scan->n;
-    double *root = lw_arena_take(scratch, n, sizeof *root, err), *next = lw_arena_take(scratch, n, sizeof *next, err);
+    double *root = lw_arena_take_raw(scratch, n, sizeof *root, err), *next = lw_arena_take_raw(scratch, n, sizeof *next, err);
     if (root == NULL || next == NULL)
         return LW_OUT_OF_MEMORY;
     smooth(scan->intensity, n, 2, next);
@@ -49,16 +68,10 @@ lw_status lw_start_background(const lw_scan *scan, double window_deg, double *ba
         root[i] = sqrt(fmax(next[i], 0)); /* even noise, so that clipping is even too */
     size_t widest = (size_t)fmax(window_deg / mean_step(scan), 3);
     for (size_t width = widest; width >= 1; width = width * 3 / 4) {
-        for (size_t i = 0; i < n; i++) {
-            size_t reach = width;
-            if (i < reach)
-                reach = i;
-            if (n - 1 - i < reach)
-                reach = n - 1 - i;
-            double across = 0.5 * (root[i - reach] + root[i + reach]);
-            next[i] = reach > 0 && across < root[i] ? across : root[i];
-        }
-        memcpy(root, next, n * sizeof *root);
+        clip(root, n, width, next);
+        double *swap = root;
+        root = next;
+        next = swap;
         if (width == 1)
             break;
     }
@@ -77,15 +90,19 @@ static double noise_at(const lw_scan *scan, const double *background, size_t i)
 }
 
 /* Sum over the expected places, each counted by its logarithm so that no strong line decides alone. */
-static double score(const lw_scan *scan, const double *excess, const lw_line_start *start, size_t n, double shift,
-                    double shift_cos)
+static double score(const lw_scan *scan, const double *excess, const lw_line_start *start, const double *cosine, size_t n,
+                    double shift, double shift_cos)
 {
-    double sum = 0;
+    double sum = 0, product = 1;
     for (size_t k = 0; k < n; k++) {
-        double place = start[k].expected_deg + shift + shift_cos * cos(start[k].expected_deg * degree / 2);
+        double place = start[k].expected_deg + shift + shift_cos * cosine[k];
         size_t i = point_at(scan, place);
         if (i > 0 && i < scan->n)
-            sum += log1p(fmax(excess[i], 0));
+            product *= 1 + fmax(excess[i], 0);
+        if (product > 1e100 || k + 1 == n) {
+            sum += log(product);
+            product = 1;
+        }
     }
     return sum;
 }
@@ -95,10 +112,13 @@ lw_status lw_start_lines(const lw_scan *scan, const double *background, double s
 {
     size_t m = scan->n;
     double step = mean_step(scan);
-    double *net = lw_arena_take(scratch, m, sizeof *net, err), *even = lw_arena_take(scratch, m, sizeof *even, err);
-    double *excess = lw_arena_take(scratch, m, sizeof *excess, err);
-    if (net == NULL || even == NULL || excess == NULL)
+    double *net = lw_arena_take_raw(scratch, m, sizeof *net, err), *even = lw_arena_take_raw(scratch, m, sizeof *even, err);
+    double *excess = lw_arena_take_raw(scratch, m, sizeof *excess, err);
+    double *cos_theta = lw_arena_take_raw(scratch, n, sizeof *cos_theta, err);
+    if (net == NULL || even == NULL || excess == NULL || cos_theta == NULL)
         return LW_OUT_OF_MEMORY;
+    for (size_t k = 0; k < n; k++)
+        cos_theta[k] = cos(start[k].expected_deg * degree / 2);
     for (size_t i = 0; i < m; i++)
         net[i] = scan->intensity[i] - background[i];
     smooth(net, m, 2, even);
@@ -115,7 +135,7 @@ lw_status lw_start_lines(const lw_scan *scan, const double *background, double s
             double constant = search_deg * 2 * i / steps, cosine = search_deg * j / 8;
             if (fabs(constant + cosine) > search_deg)
                 continue;
-            double now = score(scan, excess, start, n, constant, cosine) *
+            double now = score(scan, excess, start, cos_theta, n, constant, cosine) *
                          (1 - 0.02 * (fabs(constant) + fabs(cosine)) / search_deg); /* the least shift of equals */
             if (now > best) {
                 best = now;
@@ -148,7 +168,13 @@ lw_status lw_start_lines(const lw_scan *scan, const double *background, double s
         size_t left = top;
         while (left > 0 && even[left] > 0.5 * even[top])
             left--;
-        line->fwhm_deg = fmax(2 * (scan->two_theta_deg[top] - scan->two_theta_deg[left]), 2 * step);
+        double place_left = scan->two_theta_deg[left], half = 0.5 * even[top];
+        if (left < top && even[left + 1] > even[left])
+            place_left += (half - even[left]) / (even[left + 1] - even[left]) *
+                          (scan->two_theta_deg[left + 1] - scan->two_theta_deg[left]);
+        /* a mean of five points has a variance of two squared steps, which adds to the line's */
+        double wide = 2 * (scan->two_theta_deg[top] - place_left), taken = 2 * 8 * M_LN2 * step * step;
+        line->fwhm_deg = sqrt(fmax(wide * wide - taken, 4 * step * step));
         if (line->visible && line->height > 0.05 * strongest)
             fallback = fallback > 0 ? fmin(fallback, line->fwhm_deg) : line->fwhm_deg;
     }

@@ -188,6 +188,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
         return lw_fail(err, LW_BAD_ARGUMENT, "choose other starting values",
                        "the model can't be evaluated at the starting values");
     const double chi2_start = s->at.chi2;
+    outcome->at_last_evaluation = true;
     double damping = DAMPING_START, growth = 2;
     size_t rejected = 0;
     bool foretold = true;
@@ -236,6 +237,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
             status = evaluate(problem, s->trial, want_normal, other, outcome, err);
             if (status != LW_OK)
                 return status;
+            outcome->at_last_evaluation = false;
             actual = s->at.chi2 - other->chi2;
         }
         double gain = predicted > 0 ? actual / predicted : -1, limit = control->chi2_tolerance * s->at.chi2;
@@ -243,6 +245,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
                      outcome->largest_step <= control->step_tolerance;
         if (gain > 1e-4 && isfinite(other->chi2)) {
             memcpy(p, s->trial, s->n * sizeof *p);
+            outcome->at_last_evaluation = true;
             if (!want_normal && (status = evaluate(problem, p, true, other, outcome, err)) != LW_OK)
                 return status;
             lw_normal swap = s->at;
@@ -303,23 +306,25 @@ lw_status lw_least_squares(lw_engine *engine, const lw_problem *problem, const l
         if (problem->fixed == NULL || !problem->fixed[i])
             p[i] = fmin(fmax(p[i], lower_of(problem, i)), upper_of(problem, i));
     }
-    lw_arena arena;
-    lw_arena_begin(&arena, engine);
+    lw_arena own;
+    lw_arena_begin(&own, engine);
+    lw_arena *arena = control->scratch != NULL ? control->scratch : &own;
+    lw_arena_mark mark = lw_arena_mark_now(arena);
     size_t ld = (n + 7) / 8 * 8;
     solver s = {.problem = problem, .n = n, .ld = ld};
     lw_normal other = {.n = n};
     s.at.n = n;
-    s.at.h = lw_arena_take(&arena, n * n, sizeof(double), err);
-    s.at.g = lw_arena_take(&arena, n, sizeof(double), err);
-    other.h = lw_arena_take(&arena, n * n, sizeof(double), err);
-    other.g = lw_arena_take(&arena, n, sizeof(double), err);
-    s.matrix = lw_arena_take(&arena, n * ld, sizeof(double), err);
-    s.right = lw_arena_take(&arena, n, sizeof(double), err);
-    s.trial = lw_arena_take(&arena, n, sizeof(double), err);
-    s.step = lw_arena_take(&arena, n, sizeof(double), err);
-    s.scale = lw_arena_take(&arena, n, sizeof(double), err);
-    s.free_at = lw_arena_take(&arena, n, sizeof(size_t), err);
-    s.held = lw_arena_take(&arena, n, 1, err);
+    s.at.h = lw_arena_take_raw(arena, n * n, sizeof(double), err); /* zeroed before each evaluation */
+    s.at.g = lw_arena_take_raw(arena, n, sizeof(double), err);
+    other.h = lw_arena_take_raw(arena, n * n, sizeof(double), err);
+    other.g = lw_arena_take_raw(arena, n, sizeof(double), err);
+    s.matrix = lw_arena_take_raw(arena, n * ld, sizeof(double), err);
+    s.right = lw_arena_take(arena, n, sizeof(double), err);
+    s.trial = lw_arena_take(arena, n, sizeof(double), err);
+    s.step = lw_arena_take(arena, n, sizeof(double), err);
+    s.scale = lw_arena_take(arena, n, sizeof(double), err);
+    s.free_at = lw_arena_take(arena, n, sizeof(size_t), err);
+    s.held = lw_arena_take(arena, n, 1, err);
     lw_status status = LW_OUT_OF_MEMORY;
     if (s.at.h && s.at.g && other.h && other.g && s.matrix && s.right && s.trial && s.step && s.scale &&
         s.free_at && s.held)
@@ -334,7 +339,8 @@ lw_status lw_least_squares(lw_engine *engine, const lw_problem *problem, const l
                 at_bound[i] = bound;
         }
     }
-    lw_arena_end(&arena);
+    lw_arena_rewind(arena, mark);
+    lw_arena_end(&own);
     return status;
 }
 

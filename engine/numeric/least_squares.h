@@ -35,6 +35,7 @@ typedef struct lw_fit_control {
     size_t iterations_most; /* default 100 */
     double chi2_tolerance;  /* stop when the predicted and the actual relative fall are below this; 1e-10 */
     double step_tolerance;  /* and when each step is below this many parameter u (scaled by H); 1e-4 */
+    lw_arena *scratch;      /* work arrays are taken from it and given back to it; NULL: from an arena of its own */
 } lw_fit_control;
 /* The last evaluation is saved where the fall still predicted is a hundredth, and each step a tenth, of
  * these. */
@@ -44,6 +45,7 @@ typedef struct lw_fit_outcome {
     size_t iterations, evaluations;
     double chi2;
     bool converged;
+    bool at_last_evaluation; /* the answer is the point that was evaluated last */
     const char *reason;  /* static text, why it stopped */
     double largest_step; /* last step, in units of u of the parameter that moved most */
     size_t largest_at;   /* which parameter that was */
