@@ -310,17 +310,23 @@ lw_status lw__add_background(const lw__job *job, const lw__grid *g, const double
                              lw_arena *scratch, lw_error *err)
 {
     size_t m = g->m;
-    double *level = lw_arena_take(scratch, 2 * m, sizeof *level, err), *pulled = level + m;
+    double *level = lw_arena_take(scratch, 4 * m, sizeof *level, err), *with = level + m, *pulled = with + m;
     if (level == NULL)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < g->n; i++)
-        for (size_t j = 0; j < m; j++)
-            pulled[j] += g->response[i * m + j] * g->weight[i];
-    for (size_t j = 0; j < m; j++)
+        for (size_t j = 0; j < m; j++) {
+            double r = g->response[i * m + j] * g->weight[i];
+            pulled[j] += r;
+            pulled[m + j] += r * job->data.with_level[i];
+        }
+    for (size_t j = 0; j < m; j++) {
         level[j] = lw_dot(z + j * m, pulled, m);
+        with[j] = lw_dot(z + j * m, pulled + m, m);
+    }
     for (size_t j = 0; j < m; j++)
         for (size_t k = 0; k < m; k++)
-            c[j * m + k] += level[j] * level[k] * job->data.background_variance;
+            c[j * m + k] +=
+                level[j] * level[k] * job->data.background_variance - level[j] * with[k] - with[j] * level[k];
     return LW_OK;
 }
 

@@ -91,9 +91,10 @@ lw_status lw__add_standard(const lw__job *job, const lw__grid *g, const double *
     size_t n = (size_t)fmin(most / step, 2000) + 2;
     double *re = lw_arena_take(scratch, n, sizeof *re, err), *im = lw_arena_take(scratch, n, sizeof *im, err);
     double *q = lw_arena_take(scratch, m, sizeof *q, err),
-           *level = lw_arena_take(scratch, m, sizeof *level, err);
+           *level = lw_arena_take(scratch, 2 * m, sizeof *level, err);
     if (!re || !im || !q || !level)
         return LW_OUT_OF_MEMORY;
+    double *with = level + m;
     lw_status status = observed(job, step, &n, re, im);
     lw__grid_breadth(job, g, x, q);
     for (size_t neighbour = 0; neighbour < job->measured.n && status == LW_OK; neighbour++) {
@@ -105,19 +106,21 @@ lw_status lw__add_standard(const lw__job *job, const lw__grid *g, const double *
         if ((status = moves(job, g, neighbour, z, step, n, re, im, moved, scratch, err)) != LW_OK)
             break;
         for (size_t j = 0; j < m; j++)
-            level[j] = 0;
+            level[j] = with[j] = 0;
         for (size_t p = 0; p < data->n; p++) {
             by[p] = lw_dot(q, moved[p], m);
             for (size_t j = 0; j < m; j++) {
                 double weighed = moved[p][j] * data->own_variance[p];
                 level[j] += moved[p][j];
+                with[j] += moved[p][j] * data->with_level[p];
                 for (size_t k = 0; k < m; k++)
                     c[j * m + k] += weighed * moved[p][k];
             }
         }
         for (size_t j = 0; j < m; j++)
             for (size_t k = 0; k < m; k++)
-                c[j * m + k] += level[j] * level[k] * data->background_variance;
+                c[j * m + k] +=
+                    level[j] * level[k] * data->background_variance - level[j] * with[k] - with[j] * level[k];
     }
     return status;
 }

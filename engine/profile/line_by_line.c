@@ -6,7 +6,7 @@
 double lw__tail_variance(const lw__job *job, double *share)
 {
     const lw__window *data = &job->data;
-    double inside = 0, most = 0, cross = 0, square = 0, level = 0;
+    double inside = 0, most = 0, cross = 0, square = 0, level = 0, with = 0;
     for (size_t i = 0; i < data->n; i++) {
         inside += data->curve[i] * data->step[i];
         most = fmax(most, fabs(data->s[i]));
@@ -18,13 +18,14 @@ double lw__tail_variance(const lw__job *job, double *share)
         cross += w * data->curve[i] * data->residual[i];
         square += w * data->curve[i] * data->curve[i];
         level += w * data->curve[i];
+        with += w * data->curve[i] * data->with_level[i];
     }
     *share = fmin(fmax(1 - inside / job->line->area_s, 0), 1);
     if (!(square > 0))
         return *share * *share;
     double wrong = cross / square,
-           variance = 1 / square + level * level / (square * square) * data->background_variance;
-    return *share * *share * fmin(fmax(wrong * wrong, variance), 1);
+           variance = 1 / square + level / (square * square) * (level * data->background_variance - 2 * with);
+    return *share * *share * fmin(fmax(wrong * wrong, fmax(variance, 0)), 1);
 }
 
 /* The refold where the fit's shape stands as it is. */

@@ -296,23 +296,25 @@ lw_status lw__add_measured(const lw__measured *measured, double per_degree, lw_p
         return LW_OUT_OF_MEMORY;
     for (size_t j = 0; j < measured->n; j++) {
         const lw__window *data = &measured->line[j]->data;
+        double *x = lw_arena_take(scratch, data->n, sizeof *x, err),
+               *y = lw_arena_take(scratch, data->n, sizeof *y, err);
+        if (x == NULL || y == NULL)
+            return LW_OUT_OF_MEMORY;
         lw_status status =
             lw__measured_responses(measured, j, per_degree, profile->length_nm[1], n, by, scratch, err);
         if (status != LW_OK)
             return status;
         for (size_t k = 1; k < n; k++) {
-            double re = profile->cosine[k], im = profile->sine[k], variance[2] = {0, 0}, level[2] = {0, 0};
+            double re = profile->cosine[k], im = profile->sine[k];
             for (size_t i = 0; i < data->n; i++) { /* A = H/G: dA = -A d ln G */
-                double u = by[k][2 * i], v = by[k][2 * i + 1], x = re * u - im * v, y = re * v + im * u;
-                variance[0] += x * x * data->own_variance[i];
-                variance[1] += y * y * data->own_variance[i];
-                level[0] += x;
-                level[1] += y;
+                double u = by[k][2 * i], v = by[k][2 * i + 1];
+                x[i] = re * u - im * v;
+                y[i] = re * v + im * u;
             }
-            for (int i = 0; i < 2; i++)
-                variance[i] += level[i] * level[i] * data->background_variance;
-            profile->u_cosine[k] = sqrt(profile->u_cosine[k] * profile->u_cosine[k] + variance[0]);
-            profile->u_sine[k] = sqrt(profile->u_sine[k] * profile->u_sine[k] + variance[1]);
+            profile->u_cosine[k] =
+                hypot(profile->u_cosine[k], sqrt(lw__window_variance(data, x, data->own_variance)));
+            profile->u_sine[k] =
+                hypot(profile->u_sine[k], sqrt(lw__window_variance(data, y, data->own_variance)));
         }
     }
     return LW_OK;
@@ -351,14 +353,16 @@ double lw__measured_covariance(const lw__measured *a, double *const by_a[2], con
             if (a->line[i] != b->line[j] || by_a[i] == NULL || by_b[j] == NULL)
                 continue;
             const lw__window *data = &a->line[i]->data;
-            double level[2] = {0, 0};
+            double level[2] = {0, 0}, with[2] = {0, 0};
             for (size_t k = 0; k < data->n; k++) {
                 sum +=
                     by_a[i][k] * by_b[j][k] * data->own_variance[k] * (1 + correlation) / (1 - correlation);
                 level[0] += by_a[i][k];
                 level[1] += by_b[j][k];
+                with[0] += by_a[i][k] * data->with_level[k];
+                with[1] += by_b[j][k] * data->with_level[k];
             }
-            sum += level[0] * level[1] * data->background_variance;
+            sum += level[0] * level[1] * data->background_variance - level[0] * with[1] - level[1] * with[0];
         }
     return sum;
 }

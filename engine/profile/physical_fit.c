@@ -59,11 +59,43 @@ static void begin_ties(lw__physical *f, double *p)
     }
 }
 
+/* Of the background's level under every line: variance, and covariance with the counts, C J' (see window.c).
+ */
+static lw_status levels(const lw__physical *f, const double *c, double inflate, lw__separation *out,
+                        lw_arena *arena, lw_error *err)
+{
+    size_t m = f->n_parameters, n = f->n;
+    double *by = lw_arena_take(arena, m, sizeof *by, err);
+    if (by == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t k = 0; k < f->n_lines; k++) {
+        double *with = out->line[k].with_level = lw_arena_take(arena, n, sizeof *with, err);
+        if (with == NULL)
+            return LW_OUT_OF_MEMORY;
+        size_t at = 0;
+        while (at + 1 < n &&
+               f->profiles->lines->scan->two_theta_deg[at] < f->line[k].profile->line->two_theta.value)
+            at++;
+        memset(by, 0, m * sizeof *by);
+        for (size_t t = 0; t < f->n_terms; t++)
+            for (size_t q = 0; q < m; q++)
+                by[q] += f->term[t * n + at] * c[(f->at_terms + t) * m + q];
+        double variance = 0;
+        for (size_t t = 0; t < f->n_terms; t++)
+            variance += by[f->at_terms + t] * f->term[t * n + at];
+        out->line[k].level_variance = inflate * fmax(variance, 0);
+        for (size_t q = 0; q < m; q++)
+            for (size_t i = 0; i < n && by[q] != 0; i++)
+                with[i] += by[q] * f->jacobian[n * q + i];
+    }
+    return LW_OK;
+}
+
 /* Covariance of all parameters and, by_breadth[n_lines][2], what the instrument's two widths at one line do
  * to the breadths: the parameters' answer to a model that is wider there. */
 static lw_status member_covariance(lw__physical *f, const double *p, const bool *held, double inflate,
                                    lw__physical_fit *out, size_t member, double *breadth, double *covariance,
-                                   lw_arena *scratch, lw_error *err)
+                                   lw__separation *apart, lw_arena *arena, lw_arena *scratch, lw_error *err)
 {
     size_t m = f->n_parameters, n = f->n, lines = f->n_lines, weakest;
     double *h = lw_arena_take(scratch, m * m, sizeof *h, err), *g = lw_arena_take(scratch, m, sizeof *g, err);
@@ -81,6 +113,8 @@ static lw_status member_covariance(lw__physical *f, const double *p, const bool 
     lw_status status = lw__physical_evaluate(f, p, true, &normal, err);
     if (status == LW_OK)
         status = lw_invert_normal(f->engine, h, m, held, c, &weakest, err);
+    if (status == LW_OK && apart != NULL)
+        status = levels(f, c, inflate, apart, arena, err);
     if (status != LW_OK)
         return status;
     for (size_t k = 0; k < lines; k++) {
@@ -273,10 +307,11 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
             held[f->line[k].at_size] |= p[i][f->line[k].at_size] <= 1.0001e-5;
             held[f->line[k].at_strain] |= p[i][f->line[k].at_strain] <= 0;
         }
-        lw_status status = result->weight[i] < 1e-4
-                               ? LW_OK
-                               : member_covariance(f, p[i], held, inflate, result, i, breadth[i],
-                                                   covariance[i], &scratch, err);
+        lw_status status =
+            result->weight[i] < 1e-4
+                ? LW_OK
+                : member_covariance(f, p[i], held, inflate, result, i, breadth[i], covariance[i],
+                                    i == best ? out : NULL, arena, &scratch, err);
         lw_arena_end(&scratch);
         if (status != LW_OK)
             return status;
@@ -307,11 +342,13 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
         for (size_t t = 0; t < f->n_terms; t++)
             out->background[i] += p[best][f->at_terms + t] * f->term[t * f->n + i];
     }
-    for (size_t k = 0; k < lines; k++)
-        out->line[k] = (lw__separated){.shape = lw__physical_shape(f, k, p[best]),
-                                       .curve = f->curve[k],
-                                       .shift_s = p[best][2 * k + 1],
-                                       .area_s = p[best][2 * k] * f->line[k].instrument.per_degree};
+    for (size_t k = 0; k < lines; k++) {
+        lw__separated *line = &out->line[k];
+        line->shape = lw__physical_shape(f, k, p[best]);
+        line->curve = f->curve[k];
+        line->shift_s = p[best][2 * k + 1];
+        line->area_s = p[best][2 * k] * f->line[k].instrument.per_degree;
+    }
     return status;
 }
 

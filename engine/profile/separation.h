@@ -28,9 +28,12 @@ double lw__shape_kink(const lw__shape *shape);
 
 typedef struct lw__separated {
     lw__shape shape;
-    double area_s;  /* intensity x nm^-1 */
-    double shift_s; /* centre of the shape from the fitted position, nm^-1 */
-    double *curve;  /* [points of the scan], intensity */
+    double area_s;         /* intensity x nm^-1 */
+    double shift_s;        /* centre of the shape from the fitted position, nm^-1 */
+    double *curve;         /* [points of the scan], intensity */
+    double level_variance; /* of the background under the line */
+    double *with_level; /* [points of the scan] covariance of that level with the counts, or NULL: by the line
+                           fit */
 } lw__separated;
 
 typedef struct lw__separation {

@@ -128,7 +128,9 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     double *r_re = lw_arena_take(scratch, n, sizeof *r_re, err),
            *r_im = lw_arena_take(scratch, n, sizeof *r_im, err);
     double **wave = waves(job, n, scratch, err), *by = lw_arena_take(scratch, data->n, sizeof *by, err);
-    if (!g_re || !g_im || !h_re || !h_im || !r_re || !r_im || !wave || !by)
+    double *to_re = lw_arena_take(scratch, data->n, sizeof *to_re, err),
+           *to_im = lw_arena_take(scratch, data->n, sizeof *to_im, err);
+    if (!to_re || !to_im || !g_re || !g_im || !h_re || !h_im || !r_re || !r_im || !wave || !by)
         return LW_OUT_OF_MEMORY;
     lw__instrument_transform(instrument, step, n, g_re, g_im);
     if (instrument->measured != NULL) {
@@ -148,7 +150,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     if (first) {
         double square_sum, cross;
         for (size_t k = 0; k < n; k++) {
-            double square = g_re[k] * g_re[k] + g_im[k] * g_im[k], var_re = 0, var_im = 0, level = 0;
+            double square = g_re[k] * g_re[k] + g_im[k] * g_im[k];
             double a = area * lw__shape_coefficient(shape, profile->length_nm[k], NULL);
             square_sum = h_re[k] * a + r_re[k];
             cross = h_im[k] * a + r_im[k];
@@ -161,13 +163,11 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
                     (wave[2 * k][i] * g_re[k] + wave[2 * k + 1][i] * g_im[k]) / square - profile->cosine[k];
                 double by_im =
                     (wave[2 * k + 1][i] * g_re[k] - wave[2 * k][i] * g_im[k]) / square - profile->sine[k];
-                var_re += by_re * by_re * data->step[i] * data->step[i] * data->variance[i];
-                var_im += by_im * by_im * data->step[i] * data->step[i] * data->variance[i];
-                level += by_re * data->step[i];
+                to_re[i] = by_re * data->step[i];
+                to_im[i] = by_im * data->step[i];
             }
-            /* an error of the background's level is the same at every point of the window */
-            profile->u_cosine[k] = sqrt(var_re + level * level * data->background_variance) / scale;
-            profile->u_sine[k] = sqrt(var_im) / scale;
+            profile->u_cosine[k] = sqrt(lw__window_variance(data, to_re, data->variance)) / scale;
+            profile->u_sine[k] = sqrt(lw__window_variance(data, to_im, data->variance)) / scale;
         }
         if (instrument->measured != NULL) {
             lw_status status =
@@ -205,13 +205,9 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     answer->breadth = scale / height;
     if (!first)
         return LW_OK;
-    double variance = 0, level = 0;
-    for (size_t i = 0; i < data->n; i++) {
-        double slope = data->step[i] / height - scale / (height * height) * by[i];
-        variance += slope * slope * data->variance[i];
-        level += slope;
-    }
-    variance += level * level * data->background_variance;
+    for (size_t i = 0; i < data->n; i++)
+        by[i] = data->step[i] / height - scale / (height * height) * by[i];
+    double variance = lw__window_variance(data, by, data->variance);
 
     /* What the shape completes is known no better than the shape is right where the data still see it: tails
      * beyond the window by the outer half of the window, coefficients beyond the truncation by the last

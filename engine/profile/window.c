@@ -5,6 +5,7 @@
 #include "numeric/voigt.h"
 
 #include <math.h>
+#include <string.h>
 
 static const double degree = M_PI / 180;
 
@@ -68,21 +69,85 @@ static void reach(const lw_lines *lines, const lw_line *line, double most, doubl
     }
 }
 
-/* Variance of the fitted background at a point, from the covariance of its Chebyshev terms. */
-static double background_variance(const lw_lines *lines, double two_theta)
+/* Chebyshev terms of the background at an angle. */
+static size_t terms_at(const lw_lines *lines, double two_theta, double term[64])
 {
     double low = lines->scan->two_theta_deg[0], high = lines->scan->two_theta_deg[lines->scan->n - 1];
-    double t = 2 * (two_theta - low) / (high - low) - 1, term[64], sum = 0;
+    double t = 2 * (two_theta - low) / (high - low) - 1;
     size_t n = lines->n_background < 64 ? lines->n_background : 64;
     for (size_t i = 0; i < n; i++)
         term[i] = i == 0 ? 1 : i == 1 ? t : 2 * t * term[i - 1] - term[i - 2];
-    for (size_t i = 0; i < n; i++)
-        for (size_t j = 0; j < n; j++)
-            sum +=
-                term[i] * term[j] *
-                lines
-                    ->covariance[(lines->at_background + i) * lines->n_parameters + lines->at_background + j];
-    return fmax(sum, 0);
+    return n;
+}
+
+/* Covariance of two parameters of the line fit by counting alone. */
+static double counting(const lw_lines *lines, size_t a, size_t b)
+{
+    size_t at = a * lines->n_parameters + b;
+    double factor = lines->misfit_factor > 1 ? lines->misfit_factor : 1;
+    return (lines->covariance[at] - (lines->from_instrument != NULL ? lines->from_instrument[at] : 0)) /
+           (factor * factor);
+}
+
+/* Of the level of the fitted background under a line: its variance, and its covariance with the counts of the
+ * window, C J' for parameters of covariance C that counts of unit weight change as J: those of the background
+ * and of the line itself. */
+static lw_status level_under(const lw_lines *lines, const lw_line *line, size_t n, const double *two_theta,
+                             const double *curve, double *variance, double *with_counts, lw_arena *arena,
+                             lw_error *err)
+{
+    double here[64], there[64], by_term[64] = {0}, by_line[3] = {0};
+    size_t n_terms = terms_at(lines, line->two_theta.value, here), stride = lines->n_parameters;
+    size_t of_line[3] = {line->at_area, line->at_gauss, line->at_lorentz};
+    double *wider = lw_arena_take(arena, 2 * n + 1, sizeof *wider, err);
+    if (wider == NULL)
+        return LW_OUT_OF_MEMORY;
+    *variance = 0;
+    for (size_t a = 0; a < n_terms; a++) {
+        size_t row = lines->at_background + a;
+        for (size_t b = 0; b < n_terms; b++) {
+            *variance += here[a] * here[b] * lines->covariance[row * stride + lines->at_background + b];
+            by_term[b] += here[a] * counting(lines, row, lines->at_background + b);
+        }
+        for (int b = 0; b < 3; b++)
+            if (of_line[b] != LW_NO_PARAMETER)
+                by_line[b] += here[a] * counting(lines, row, of_line[b]);
+    }
+    *variance = fmax(*variance, 0);
+    double step[3] = {0, 0.02 * line->fwhm.value * line->fwhm.value, 0.02 * line->fwhm.value};
+    for (int b = 1; b < 3; b++) {
+        if (of_line[b] == LW_NO_PARAMETER)
+            continue;
+        lw_line other = *line;
+        *(b == 1 ? &other.own_variance_deg2 : &other.own_lorentz_deg) += step[b];
+        lw_status status = lw_line_curve(lines, &other, n, two_theta, wider + (b - 1) * (long)n, err);
+        if (status != LW_OK)
+            return status;
+    }
+    for (size_t i = 0; i < n; i++) {
+        double sum = 0;
+        terms_at(lines, two_theta[i], there);
+        for (size_t a = 0; a < n_terms; a++)
+            sum += by_term[a] * there[a];
+        if (line->area.value > 0)
+            sum += by_line[0] * curve[i] / line->area.value;
+        for (int b = 1; b < 3; b++)
+            if (of_line[b] != LW_NO_PARAMETER)
+                sum += by_line[b] * (wider[(size_t)(b - 1) * n + i] - curve[i]) / step[b];
+        with_counts[i] = sum;
+    }
+    return LW_OK;
+}
+
+double lw__window_variance(const lw__window *data, const double *slope, const double *variance)
+{
+    double sum = 0, level = 0, with = 0;
+    for (size_t i = 0; i < data->n; i++) {
+        sum += slope[i] * slope[i] * variance[i];
+        level += slope[i];
+        with += slope[i] * data->with_level[i];
+    }
+    return fmax(sum + level * level * data->background_variance - 2 * level * with, 0);
 }
 
 lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation,
@@ -100,15 +165,23 @@ lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__s
     while (end > first && scan->two_theta_deg[end - 1] > high)
         end--;
     size_t n = end - first;
-    double **column[] = {&out->s,        &out->step,     &out->curve,
-                         &out->residual, &out->variance, &out->own_variance};
+    double **column[] = {&out->s,        &out->step,         &out->curve,     &out->residual,
+                         &out->variance, &out->own_variance, &out->with_level};
     for (size_t i = 0; i < sizeof column / sizeof *column; i++)
         if ((*column[i] = lw_arena_take(arena, n + 1, sizeof(double), err)) == NULL)
             return LW_OUT_OF_MEMORY;
     out->n = n;
     out->first = first;
-    out->background_variance = background_variance(lines, line->two_theta.value);
     const lw__separated *own = &separation->line[which];
+    out->background_variance = own->level_variance;
+    if (own->with_level == NULL) {
+        lw_status status = level_under(lines, line, n, scan->two_theta_deg + first, own->curve + first,
+                                       &out->background_variance, out->with_level, arena, err);
+        if (status != LW_OK)
+            return status;
+    } else {
+        memcpy(out->with_level, own->with_level + first, n * sizeof(double));
+    }
     for (size_t i = 0; i < n; i++) {
         size_t at = first + i;
         double factor = lw_line_relative_factor(lines, line, scan->two_theta_deg[at]);
@@ -119,6 +192,7 @@ lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__s
         out->residual[i] = share * separation->residual[at] / factor;
         out->variance[i] = lines->variance[at] / (factor * factor);
         out->own_variance[i] = share * share * out->variance[i];
+        out->with_level[i] /= factor * factor; /* of level and counts, both over the factor */
     }
     for (size_t i = 0; i < n; i++)
         out->step[i] = 0.5 * (out->s[i + 1 < n ? i + 1 : i] - out->s[i > 0 ? i - 1 : i]);

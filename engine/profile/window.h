@@ -34,7 +34,12 @@ typedef struct lw__window {
     double *variance;           /* of a point, whole */
     double *own_variance;       /* of `residual` by counting: share^2 x variance */
     double background_variance; /* of the level under the line, the same error at every point */
+    double *with_level;         /* covariance of that level with a point's counts, which helped to fix it */
 } lw__window;
+
+/* Variance of sum slope_i x (counts_i - level) by counting, the level being fitted to the same counts.
+ * variance: of the points. */
+double lw__window_variance(const lw__window *window, const double *slope, const double *variance);
 
 /* breadths: half-width in observed breadths, 0 = 8; neighbours end it half-way. */
 lw_status lw__take_window(const lw_profiles *profiles, size_t which, const lw__separation *separation,
