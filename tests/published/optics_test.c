@@ -54,45 +54,95 @@ static void check_closed_forms(void)
     double most = -0.5 * degree * degree / tan(12.5 * degree) / degree;
     double d = sin(25 * degree) / (2 * 5 * 200) / degree, back = 2 * 0.3 * cos(12.5 * degree) / 200 / degree;
     for (double k = 10; k < 2000; k *= 1.7) {
-        double sum[3] = {0}, thin[3] = {0}, re, im;
+        double sum[3] = {0}, thin[3] = {0}, turned[2] = {0}, re, im;
         for (int i = 0; i < 400000; i++) {
             double u = (i + 0.5) / 400000, e = most * u * u;
             sum[1] += cos(k * e) / 400000;
             sum[2] -= sin(k * e) / 400000;
+            /* the flat specimen turned by t: e = -2 cot(theta) (phi^2 + phi t) over the beam (Wilson 1963) */
+            double phi = (u - 0.5) * degree, shift = -2 / tan(12.5 * degree) * (phi * phi + phi * 0.1 * degree) / degree;
+            turned[0] += cos(k * shift) / 400000;
+            turned[1] -= sin(k * shift) / 400000;
             double z = -back * u, weight = exp(z / d);
             thin[0] += weight;
             thin[1] += weight * cos(k * z);
             thin[2] -= weight * sin(k * z);
         }
-        lw_optical_flat.transform(&g, 25, k, &re, &im);
+        lw_geometry straight = g;
+        straight.tilt_deg = 0;
+        lw_optical_flat.transform(&straight, 25, k, &re, &im);
         CHECK_NEAR(re, sum[1], 2e-6);
         CHECK_NEAR(im, sum[2], 2e-6);
+        lw_optical_flat.transform(&g, 25, k, &re, &im);
+        CHECK_NEAR(re, turned[0], 2e-6);
+        CHECK_NEAR(im, turned[1], 2e-6);
         lw_optical_transparency.transform(&g, 25, k, &re, &im);
         CHECK_NEAR(re, thin[1] / thin[0], 2e-6);
         CHECK_NEAR(im, thin[2] / thin[0], 2e-6);
     }
 }
 
-/* No incident divergence: the outermost ray stands at acos[cos(2theta) sqrt(1 + (H/L)^2)] (van Laar & Yelon 1984; Finger,
- * Cox & Jephcoat 1994): -0.126267 deg at 20, -0.054635 at 40, +0.054635 at 140 for H/L = 0.04. */
+/* No incident divergence, specimen a point: the outermost ray stands at acos[cos(2theta) sqrt(1 + (H/L)^2)] (van Laar & Yelon
+ * 1984; Finger, Cox & Jephcoat 1994): -0.126267 deg at 20, -0.054635 at 40, +0.054635 at 140 for H/L = 0.04; no ray falls
+ * on the other side of 2theta; and the density is that of the same paper, proportional to 1/(h(2phi) cos(2phi)),
+ * h = sqrt(cos^2(2phi)/cos^2(2theta) - 1), here by quadrature. */
 static void check_axial_limits(lw_engine *engine)
 {
     static const double angle[] = {20, 40, 140}, limit[] = {-0.126267, -0.054635, 0.054635};
+    enum { POINTS = 8192, PIECES = 20000 };
+    const double step = 0.001;
     lw_arena arena;
     lw_arena_begin(&arena, engine);
     lw_error err = LW_ERROR_NONE;
     lw_geometry g = {.radius = 200, .slit_length = 2 * 0.04 * 200 * 28 / 27.0}; /* the outermost of 28 points is at 0.04 */
     lw_axial_rays rays;
+    double *density = lw_arena_take(&arena, POINTS, sizeof *density, &err);
     CHECK(lw_axial_rays_make(&g, &arena, &rays, &err) == LW_OK);
     for (int i = 0; i < 3; i++) {
-        double t = tan(angle[i] * degree / 2), far = 0, sum = 0;
+        double far = 0, sum = 0, moment[3] = {0}, expected[3] = {0}, theta2 = angle[i] * degree;
         for (size_t k = 0; k < rays.n; k++) {
-            double shift = (rays.p2[k] * t - rays.m2[k] / t) / degree;
+            double shift = lw_axial_shift(&rays, k, angle[i]);
+            CHECK(shift * limit[i] >= 0);
             far = fabs(shift) > fabs(far) ? shift : far;
             sum += rays.weight[k];
         }
-        CHECK_RELATIVE(far, limit[i], 0.004); /* the relation is of second order */
+        CHECK_RELATIVE(far, limit[i], 1e-5); /* the limits are given to six digits */
         CHECK_NEAR(sum, 1, 1e-12);
+        lw_axial_rays_fill(&rays, angle[i], POINTS, step, density);
+        for (int k = 0; k < POINTS; k++) {
+            double e = step * (k < POINTS / 2 ? k : k - POINTS);
+            moment[0] += density[k];
+            moment[1] += density[k] * e;
+            moment[2] += density[k] * e * e * e;
+        }
+        /* 28 points stand for a slit that reaches half a spacing further than the outermost */
+        double end = acos(cos(theta2) * hypot(1, 0.04 * 28 / 27.0)) - theta2;
+        for (int k = 0; k < PIECES; k++) { /* 2phi = 2theta + end v^2 takes the pole at 2theta away */
+            double v = (k + 0.5) / PIECES, e = end * v * v, phi2 = theta2 + e;
+            double weight = v / fabs(sqrt(pow(cos(phi2) / cos(theta2), 2) - 1) * cos(phi2));
+            expected[0] += weight;
+            expected[1] += weight * e / degree;
+            expected[2] += weight * pow(e / degree, 3);
+        }
+        /* the mean of z^2 over n points at the middles of n pieces is (1 - 1/n^2) of that over the length, of z^6 (1 - 7/n^2) */
+        CHECK_NEAR(moment[0], 1, 1e-12);
+        CHECK_RELATIVE(moment[1], expected[1] / expected[0] * (1 - 1 / 784.0), 2e-4);
+        CHECK_RELATIVE(moment[2], expected[2] / expected[0], 0.012);
+    }
+    /* both beams, to second order -m^2 cot(theta) + p^2 tan(theta) (Cheary & Coelho 1998): a long specimen between points
+     * has m = alpha, p = 0; source and slit long, the specimen a point, reach p = alpha on the other side */
+    lw_geometry beam[2] = {{.radius = 200, .specimen_length = 8 * 28 / 27.0},
+                           {.radius = 200, .source_length = 8 * 28 / 27.0, .slit_length = 8 * 28 / 27.0}};
+    for (int i = 0; i < 2; i++) {
+        double low = 0, high = 0, t = tan(40 * degree);
+        CHECK(lw_axial_rays_make(&beam[i], &arena, &rays, &err) == LW_OK);
+        for (size_t k = 0; k < rays.n; k++) {
+            double shift = lw_axial_shift(&rays, k, 80);
+            low = fmin(low, shift);
+            high = fmax(high, shift);
+        }
+        CHECK_RELATIVE(low, -0.02 * 0.02 / t / degree, 2e-3);
+        CHECK_NEAR(high, i == 0 ? 0 : 0.02 * 0.02 * t / degree, 3e-5);
     }
     lw_arena_end(&arena);
 }
@@ -198,7 +248,7 @@ static void check_refinement(lw_engine *engine, const lw_node *truth)
         CHECK(refined.chi2 / (double)(refined.n_points - refined.n_parameters) < 1.05);
         CHECK_NEAR(refined.value[0], exact.specimen_length, 0.6);
         CHECK_NEAR(refined.value[1], exact.source_width, 0.006);
-        check_profile(engine, truth, &refined.geometry, 0.012, 0.0004, 0.05);
+        check_profile(engine, truth, &refined.geometry, 0.012, 0.0004, 0.02);
     }
     how.name[1] = "souce_width";
     CHECK(lw_geometry_refine(engine, lines, &start, &how, &arena, &refined, &err) == LW_BAD_ARGUMENT);

@@ -27,6 +27,6 @@ typedef struct lw_optical {
     void (*transform)(const lw_geometry *geometry, double two_theta_deg, double k, double *re, double *im);
 } lw_optical;
 
-extern const lw_optical lw_optical_source, lw_optical_slit, lw_optical_flat, lw_optical_tilt, lw_optical_transparency;
+extern const lw_optical lw_optical_source, lw_optical_slit, lw_optical_flat, lw_optical_transparency;
 
 #endif

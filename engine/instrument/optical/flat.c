@@ -1,39 +1,57 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Flat specimen: a ray at the equatorial angle phi, -alpha/2..alpha/2, meets the specimen off the focusing circle and is
- * shifted by e = e_M (2 phi/alpha)^2, e_M = -(alpha^2/2) cot(theta): density 1/(2 sqrt(e e_M)), mean e_M/3. */
+ * shifted by -2 phi^2 cot(theta); on a specimen turned by t out of the 2:1 setting it meets it R phi t/sin(theta) higher
+ * still and is shifted by -2 phi t cot(theta) more. Together e = -2 cot(theta) ((phi + t/2)^2 - t^2/4). Without a turn
+ * the density is 1/(2 sqrt(e e_M)) between e_M = -(alpha^2/2) cot(theta) and 0, its mean e_M/3. */
 #include "instrument/optical/aberration.h"
+
+#include "numeric/voigt.h"
 
 #include <math.h>
 #include <stddef.h>
 
+/* Mean of exp(i size u^2) over u = 0..1: sqrt(pi/size)/2 exp(i pi/4) (1 - exp(i size) w((1 + i) sqrt(size/2))), the
+ * Fresnel integral by the Faddeeva function (Abramowitz & Stegun 7.3.22). */
+static void fresnel(double size, double *re, double *im)
+{
+    if (size < 1e-3) {
+        *re = 1 - size * size / 10;
+        *im = size / 3 - size * size * size / 42;
+        return;
+    }
+    double x = sqrt(0.5 * size), a, b;
+    lw_faddeeva(x, x, &a, &b);
+    double c = cos(size), d = sin(size), real = 1 - (c * a - d * b), imaginary = -(c * b + d * a);
+    double scale = 0.5 * sqrt(0.5 * M_PI / size);
+    *re = scale * (real - imaginary);
+    *im = scale * (real + imaginary);
+}
+
+/* The parabola's apex lies at -t/2: the mean over the beam is that of its parts on both sides of the apex. */
 static void transform(const lw_geometry *g, double two_theta_deg, double k, double *re, double *im)
 {
-    double alpha = g->divergence_deg * (M_PI / 180), theta = two_theta_deg * (M_PI / 360);
-    double most = -0.5 * alpha * alpha / tan(theta) * (180 / M_PI), phase = k * most;
-    double size = fabs(phase), c = 0, d = 0; /* mean of exp(-i size u^2) over u = 0..1 = c - i d */
-    if (size > 20) {
-        /* the whole Fresnel integral less its tail beyond 1, by the tail's asymptotic series */
-        double x = 1 / (2 * size), even = x - 3 * x * x * x, odd = x * x - 15 * x * x * x * x;
-        c = 0.5 * sqrt(0.5 * M_PI / size) + even * sin(size) - odd * cos(size);
-        d = 0.5 * sqrt(0.5 * M_PI / size) - even * cos(size) - odd * sin(size);
-    } else {
-        /* Gauss-Legendre pieces, short against the last oscillation */
-        static const double node[4] = {0.0694318442029737, 0.3300094782075719, 0.6699905217924281, 0.9305681557970263};
-        static const double weight[4] = {0.1739274225687269, 0.3260725774312731, 0.3260725774312731, 0.1739274225687269};
-        size_t pieces = (size_t)(1 + size);
-        for (size_t i = 0; i < pieces; i++)
-            for (size_t j = 0; j < 4; j++) {
-                double u = ((double)i + node[j]) / (double)pieces;
-                c += weight[j] * cos(size * u * u) / (double)pieces;
-                d += weight[j] * sin(size * u * u) / (double)pieces;
-            }
+    double alpha = g->divergence_deg * (M_PI / 180), turn = g->tilt_deg * (M_PI / 180);
+    double scale = 2 * k / tan(two_theta_deg * (M_PI / 360)) * (180 / M_PI); /* phase per rad^2 */
+    *re = 1;
+    *im = 0;
+    if (!(alpha > 0))
+        return;
+    double side[2] = {0.5 * (alpha + turn), 0.5 * (alpha - turn)}, a = 0, b = 0;
+    for (int i = 0; i < (turn > 0 || turn < 0 ? 2 : 1); i++) {
+        double c, d, share = turn > 0 || turn < 0 ? side[i] / alpha : 1;
+        fresnel(scale * side[i] * side[i], &c, &d);
+        a += share * c;
+        b += share * d;
     }
-    *re = c;
-    *im = phase < 0 ? d : -d;
+    double back = -0.25 * scale * turn * turn;
+    *re = a * cos(back) - b * sin(back);
+    *im = a * sin(back) + b * cos(back);
 }
 
 const lw_optical lw_optical_flat = {
     .name = "flat_specimen",
-    .definition = "density 1/(2 sqrt(e e_M)) between e_M = -(alpha^2/2) cot(theta) and 0",
-    .source = "Cheary & Coelho (1992) J. Appl. Cryst. 25, 109",
+    .definition = "e = -2 cot(theta) (phi^2 + phi t), phi evenly in -alpha/2..alpha/2: divergence alpha, specimen turned by "
+                  "t out of the 2:1 setting",
+    .source = "Cheary & Coelho (1992) J. Appl. Cryst. 25, 109; Wilson (1963) Mathematical Theory of X-ray Powder "
+              "Diffractometry",
     .transform = transform};

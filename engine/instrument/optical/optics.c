@@ -6,7 +6,7 @@
 #include <math.h>
 #include <string.h>
 
-const lw_optical *const lw_optical_list[] = {&lw_optical_source, &lw_optical_slit, &lw_optical_flat, &lw_optical_tilt,
+const lw_optical *const lw_optical_list[] = {&lw_optical_source, &lw_optical_slit, &lw_optical_flat,
                                              &lw_optical_transparency, NULL};
 
 lw_status lw_geometry_check(const lw_geometry *g, lw_error *err)
@@ -37,7 +37,7 @@ lw_status lw_geometry_check(const lw_geometry *g, lw_error *err)
 
 lw_status lw_optics_begin(lw_engine *engine, const lw_geometry *geometry, lw_optics *optics, lw_error *err)
 {
-    *optics = (lw_optics){.engine = engine, .geometry = *geometry};
+    *optics = (lw_optics){.engine = engine, .geometry = *geometry, .last = LW_OPTICS_POINTS / 2};
     lw_arena_begin(&optics->arena, engine);
     lw_status status = lw_geometry_check(geometry, err);
     if (status == LW_OK)
@@ -46,7 +46,8 @@ lw_status lw_optics_begin(lw_engine *engine, const lw_geometry *geometry, lw_opt
         return status;
     optics->density = lw_arena_take(&optics->arena, LW_OPTICS_POINTS, sizeof(double), err);
     optics->transform = lw_arena_take(&optics->arena, LW_OPTICS_POINTS + 2, sizeof(double), err);
-    return optics->density && optics->transform ? LW_OK : LW_OUT_OF_MEMORY;
+    optics->second = lw_arena_take(&optics->arena, LW_OPTICS_POINTS + 2, sizeof(double), err);
+    return optics->density && optics->transform && optics->second ? LW_OK : LW_OUT_OF_MEMORY;
 }
 
 void lw_optics_end(lw_optics *optics)
@@ -54,18 +55,19 @@ void lw_optics_end(lw_optics *optics)
     lw_arena_end(&optics->arena);
 }
 
-lw_status lw_optics_transform(lw_optics *optics, double two_theta_deg, lw_error *err)
+lw_status lw_optics_transform(lw_optics *optics, double two_theta_deg, double stretch, double *transform, lw_error *err)
 {
     const lw_geometry *g = &optics->geometry;
     lw_fft *plan = lw_fft_plan(optics->engine, LW_OPTICS_POINTS, LW_FFT_REAL, LW_FFT_MANY, err);
     if (plan == NULL)
         return err->status;
-    memset(optics->density, 0, LW_OPTICS_POINTS * sizeof(double));
-    lw_axial_rays_fill(&optics->rays, two_theta_deg, LW_OPTICS_POINTS, LW_OPTICS_STEP, optics->density);
-    lw_fft_forward(plan, optics->density, optics->transform);
+    lw_axial_rays_fill(&optics->rays, two_theta_deg, LW_OPTICS_POINTS, LW_OPTICS_STEP / stretch, optics->density);
+    lw_fft_forward(plan, optics->density, transform);
     double period = LW_OPTICS_POINTS * LW_OPTICS_STEP;
-    for (size_t i = 0; i <= LW_OPTICS_POINTS / 2; i++) {
-        double k = 2 * M_PI * (double)i / period, re = optics->transform[2 * i], im = optics->transform[2 * i + 1];
+    for (size_t i = optics->last + 1; i <= LW_OPTICS_POINTS / 2; i++)
+        transform[2 * i] = transform[2 * i + 1] = 0;
+    for (size_t i = 0; i <= optics->last; i++) {
+        double k = 2 * M_PI * (double)i / period * stretch, re = transform[2 * i], im = transform[2 * i + 1];
         for (size_t j = 0; lw_optical_list[j] != NULL; j++) {
             double a, b;
             lw_optical_list[j]->transform(g, two_theta_deg, k, &a, &b);
@@ -74,17 +76,15 @@ lw_status lw_optics_transform(lw_optics *optics, double two_theta_deg, lw_error 
             re = turned;
         }
         double damped = exp(-k * k * g->gauss_deg * g->gauss_deg / (16 * M_LN2));
-        optics->transform[2 * i] = re * damped;
-        optics->transform[2 * i + 1] = im * damped;
+        transform[2 * i] = re * damped;
+        transform[2 * i + 1] = im * damped;
     }
     return LW_OK;
 }
 
-lw_status lw_optics_profile(lw_optics *optics, double two_theta_deg, double sharpness_deg, lw_error *err)
+/* The transform at hand, softened, to the density. */
+static void to_profile(lw_optics *optics, double sharpness_deg, lw_error *err)
 {
-    lw_status status = lw_optics_transform(optics, two_theta_deg, err);
-    if (status != LW_OK)
-        return status;
     double period = LW_OPTICS_POINTS * LW_OPTICS_STEP;
     for (size_t i = 0; i <= LW_OPTICS_POINTS / 2; i++) {
         double k = 2 * M_PI * (double)i / period;
@@ -94,29 +94,45 @@ lw_status lw_optics_profile(lw_optics *optics, double two_theta_deg, double shar
     }
     lw_fft_back(lw_fft_plan(optics->engine, LW_OPTICS_POINTS, LW_FFT_REAL, LW_FFT_MANY, err), optics->transform,
                 optics->density);
-    return LW_OK;
+}
+
+lw_status lw_optics_profile(lw_optics *optics, double two_theta_deg, double sharpness_deg, lw_error *err)
+{
+    lw_status status = lw_optics_transform(optics, two_theta_deg, 1, optics->transform, err);
+    if (status == LW_OK)
+        to_profile(optics, sharpness_deg, err);
+    return status;
+}
+
+/* Centroid and third central moment: the first and third cumulants, from the phase of the transform at its three lowest
+ * frequencies, arg(k)/k = -c_1 + c_3 k^2/6 - c_5 k^4/120; sums over the density would multiply its ringing by e^3. */
+static void moments(const double *transform, lw_optics_figure *figure)
+{
+    double k1 = 2 * M_PI / (LW_OPTICS_POINTS * LW_OPTICS_STEP), y[3];
+    for (int i = 0; i < 3; i++) {
+        const double *c = transform + 2 * (i + 1);
+        y[i] = atan2(c[1], c[0]) / (k1 * (i + 1));
+    }
+    /* through the three points at x = 1, 4, 9 in units of k1^2: value and slope at 0 */
+    double d1 = (y[1] - y[0]) / 3, d2 = ((y[2] - y[1]) / 5 - d1) / 8;
+    figure->centroid_deg = -(y[0] - d1 + 4 * d2);
+    figure->third_moment_deg3 = 6 * (d1 - 5 * d2) / (k1 * k1);
 }
 
 lw_status lw_optics_figure_at(lw_optics *optics, double two_theta_deg, lw_optics_figure *figure, lw_error *err)
 {
-    lw_status status = lw_optics_profile(optics, two_theta_deg, 0.002, err);
+    lw_status status = lw_optics_transform(optics, two_theta_deg, 1, optics->transform, err);
     if (status != LW_OK)
         return status;
+    moments(optics->transform, figure);
+    to_profile(optics, 0.002, err);
     const double *y = optics->density;
     size_t n = LW_OPTICS_POINTS, top = 0;
-    double sum[4] = {0};
+    double sum = 0;
     for (size_t i = 0; i < n; i++) {
-        double x = LW_OPTICS_STEP * (i < n / 2 ? (double)i : (double)i - (double)n);
-        sum[0] += y[i];
-        sum[1] += y[i] * x;
+        sum += y[i];
         if (y[i] > y[top])
             top = i;
-    }
-    double mean = sum[1] / sum[0];
-    for (size_t i = 0; i < n; i++) {
-        double x = LW_OPTICS_STEP * (i < n / 2 ? (double)i : (double)i - (double)n) - mean;
-        sum[2] += y[i] * x * x;
-        sum[3] += y[i] * x * x * x;
     }
     double before = y[(top + n - 1) % n], after = y[(top + 1) % n];
     double bend = before - 2 * y[top] + after, aside = bend < 0 ? 0.5 * (before - after) / bend : 0;
@@ -131,9 +147,7 @@ lw_status lw_optics_figure_at(lw_optics *optics, double two_theta_deg, lw_optics
         edge[side] = (double)count + (inside - half) / (inside - outside);
     }
     figure->fwhm_deg = LW_OPTICS_STEP * (edge[0] + edge[1]);
-    figure->breadth_deg = sum[0] * LW_OPTICS_STEP / height;
-    figure->centroid_deg = mean;
+    figure->breadth_deg = sum * LW_OPTICS_STEP / height;
     figure->top_deg = LW_OPTICS_STEP * ((top < n / 2 ? (double)top : (double)top - (double)n) + aside);
-    figure->third_moment_deg3 = sum[3] / sum[0];
     return LW_OK;
 }

@@ -21,20 +21,24 @@ typedef struct lw_optics {
     lw_arena arena;
     lw_geometry geometry;
     lw_axial_rays rays;
-    double *density, *transform; /* [points], [points + 2] */
+    double *density, *transform, *second; /* [points], [points + 2] each */
+    size_t last;                          /* of the frequencies: those above are set to 0. points/2 at first */
 } lw_optics;
 
 /* Prepares a geometry (checked). End with lw_optics_end(), also after an error. */
 lw_status lw_optics_begin(lw_engine *engine, const lw_geometry *geometry, lw_optics *optics, lw_error *err);
 void lw_optics_end(lw_optics *optics);
 
-/* Transform of the profile at an angle: optics->transform[k] = mean of exp(-2 pi i k e/period), k = 0..points/2. */
-lw_status lw_optics_transform(lw_optics *optics, double two_theta_deg, lw_error *err);
+/* Transform of the profile at an angle: transform[k] (optics->transform or optics->second) = mean of
+ * exp(-2 pi i k e/period), k = 0..points/2, all shifts e multiplied by `stretch` (1 on an axis of 2theta). */
+lw_status lw_optics_transform(lw_optics *optics, double two_theta_deg, double stretch, double *transform, lw_error *err);
 
 /* The profile, 1/deg, on the periodic grid (negative shifts at the end), into optics->density. sharpness_deg: FWHM of
  * a Gaussian that keeps the edges of boxes from ringing. */
 lw_status lw_optics_profile(lw_optics *optics, double two_theta_deg, double sharpness_deg, lw_error *err);
 
+/* FWHM, breadth (area over height), centroid, place of the top, third central moment. The edges of boxes are softened by
+ * a Gaussian of 0.002 deg FWHM for the first two and the top; the moments are exact. */
 typedef struct lw_optics_figure {
     double fwhm_deg, breadth_deg, centroid_deg, top_deg, third_moment_deg3;
 } lw_optics_figure;

@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "instrument/optical/refine.h"
 
-#include "numeric/fft.h"
+#include "instrument/optical/observed.h"
 #include "numeric/least_squares.h"
 
 #include <math.h>
@@ -54,65 +54,13 @@ typedef struct problem {
     const lw_refine_options *options;
     lw_geometry start;
     size_t field[LW_REFINED_MOST];
-    double step_deg;
+    lw_observed observed;
     size_t n_lines;
     window *window;
     lw_optics optics[1 + 2 * LW_REFINED_MOST]; /* at the point, and moved up and down in each quantity */
     double *curve;                             /* [1 + 2 n][LW_OPTICS_POINTS] of one line */
     double *column;                            /* [OWN + n] at one point */
 } problem;
-
-/* The observed profile of a line at its angle: optical profile, spectrum, standard's own width, step; 1/deg. */
-static lw_status observed(problem *q, lw_optics *optics, double two_theta_deg, double *curve, lw_error *err)
-{
-    lw_status status = lw_optics_transform(optics, two_theta_deg, err);
-    if (status != LW_OK)
-        return status;
-    const lw_radiation *radiation = &q->lines->radiation;
-    double theta = two_theta_deg * degree / 2, reference = lw_radiation_wavelength(radiation);
-    double period = LW_OPTICS_POINTS * LW_OPTICS_STEP, offset[LW_EMISSION_MOST], width[LW_EMISSION_MOST];
-    double own = q->options->domain_size_nm > 0
-                     ? 2 / M_PI * reference / (q->options->domain_size_nm * cos(theta)) / degree : 0;
-    for (size_t c = 0; c < radiation->n; c++) {
-        double there = asin(fmin(radiation->component[c].wavelength_nm / reference * sin(theta), 0.9999));
-        offset[c] = 2 * (there - theta) / degree;
-        width[c] = 2 * tan(there) * radiation->component[c].width_nm / radiation->component[c].wavelength_nm / degree + own;
-    }
-    double *transform = optics->transform, sharp = radiation->is_plain ? 0.004 : 0;
-    for (size_t i = 0; i <= LW_OPTICS_POINTS / 2; i++) {
-        double k = 2 * M_PI * (double)i / period, re = 0, im = 0, x = 0.5 * k * q->step_deg;
-        for (size_t c = 0; c < radiation->n; c++) {
-            double amplitude = radiation->component[c].weight * exp(-0.5 * width[c] * k);
-            re += amplitude * cos(k * offset[c]);
-            im -= amplitude * sin(k * offset[c]);
-        }
-        double box = (x < 1e-4 ? 1 : sin(x) / x) / period * exp(-k * k * sharp * sharp / (16 * M_LN2));
-        double a = transform[2 * i], b = transform[2 * i + 1];
-        transform[2 * i] = box * (re * a - im * b);
-        transform[2 * i + 1] = box * (re * b + im * a);
-    }
-    lw_fft_back(lw_fft_plan(q->engine, LW_OPTICS_POINTS, LW_FFT_REAL, LW_FFT_MANY, err), transform, curve);
-    return LW_OK;
-}
-
-/* Value and slope of a periodic curve at x by cubic interpolation (Catmull & Rom 1974). */
-static double at(const double *curve, double x, double *slope)
-{
-    double place = x / LW_OPTICS_STEP, whole = floor(place), t = place - whole;
-    long n = LW_OPTICS_POINTS, i = (long)whole % n;
-    if (i < 0)
-        i += n;
-    double y0 = curve[(i + n - 1) % n], y1 = curve[i], y2 = curve[(i + 1) % n], y3 = curve[(i + 2) % n];
-    double a = 0.5 * (3 * (y1 - y2) + y3 - y0), b = y0 - 2.5 * y1 + 2 * y2 - 0.5 * y3, c = 0.5 * (y2 - y0);
-    *slope = ((3 * a * t + 2 * b) * t + c) / LW_OPTICS_STEP;
-    return ((a * t + b) * t + c) * t + y1;
-}
-
-static double factor_at(const lw_lines *lines, double two_theta_deg)
-{
-    double c = cos(two_theta_deg * degree), s = sin(two_theta_deg * degree / 2);
-    return lines->with_factor ? (lines->constant_polarisation + lines->cos2_polarisation * c * c) / (s * s) : 1;
-}
 
 /* Rays and transforms of the geometry at p and next to it. */
 static lw_status set_optics(problem *q, const double *p, bool slopes, lw_error *err)
@@ -142,29 +90,28 @@ static lw_status evaluate(void *user, const double *p, bool want_normal, lw_norm
     for (size_t k = 0; k < q->n_lines && status == LW_OK; k++) {
         const window *w = &q->window[k];
         for (size_t i = 0; i < 1 + 2 * all && status == LW_OK; i++)
-            status = observed(q, &q->optics[i], w->nominal_deg, q->curve + i * LW_OPTICS_POINTS, err);
+            status = lw_observed_curve(&q->observed, &q->optics[i], w->nominal_deg, q->curve + i * LW_OPTICS_POINTS, err);
         if (status != LW_OK)
             return status;
         double step[LW_REFINED_MOST], moved_step;
         for (size_t j = 0; j < all; j++)
             step[j] = p[j] + fields[q->field[j]].step - fmax(p[j] - fields[q->field[j]].step, 0);
         const double *own = p + n + k * OWN;
-        double line_factor = factor_at(q->lines, w->nominal_deg);
         for (size_t i = w->first; i < w->first + w->n; i++) {
-            double angle = scan->two_theta_deg[i], x = angle - own[0], slope, relative = factor_at(q->lines, angle) / line_factor;
-            double value = at(q->curve, x, &slope);
+            double angle = scan->two_theta_deg[i], x = lw_observed_offset(own[0], angle), slope;
+            double value = lw_observed_at(q->curve, x, &slope);
             double *c = q->column;
-            double residual = scan->intensity[i] - (own[1] * relative * value + own[2] + own[3] * (angle - w->nominal_deg));
+            double residual = scan->intensity[i] - (own[1] * value + own[2] + own[3] * (angle - w->nominal_deg));
             double weight = 1 / q->lines->variance[i];
             normal->chi2 += weight * residual * residual;
             if (!want_normal)
                 continue;
             for (size_t j = 0; j < n; j++)
-                c[j] = own[1] * relative / step[j] *
-                       (at(q->curve + (1 + 2 * j) * LW_OPTICS_POINTS, x, &moved_step) -
-                        at(q->curve + (2 + 2 * j) * LW_OPTICS_POINTS, x, &moved_step));
-            c[n] = -own[1] * relative * slope;
-            c[n + 1] = relative * value;
+                c[j] = own[1] / step[j] *
+                       (lw_observed_at(q->curve + (1 + 2 * j) * LW_OPTICS_POINTS, x, &moved_step) -
+                        lw_observed_at(q->curve + (2 + 2 * j) * LW_OPTICS_POINTS, x, &moved_step));
+            c[n] = -own[1] * slope;
+            c[n + 1] = value;
             c[n + 2] = 1;
             c[n + 3] = angle - w->nominal_deg;
             for (size_t a = 0; a < n + OWN; a++) {
@@ -312,8 +259,13 @@ lw_status lw_geometry_refine(lw_engine *engine, const lw_lines *lines, const lw_
                              "optics: unknown quantity '%s'", options->name[i]);
     }
     const lw_scan *scan = lines->scan;
+    q->observed = (lw_observed){.radiation = &lines->radiation,
+                                .with_factor = lines->with_factor,
+                                .constant_polarisation = lines->constant_polarisation,
+                                .cos2_polarisation = lines->cos2_polarisation,
+                                .domain_size_nm = options->domain_size_nm};
     if (options->summed)
-        q->step_deg = (scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0]) / (double)(scan->n - 1);
+        q->observed.step_deg = (scan->two_theta_deg[scan->n - 1] - scan->two_theta_deg[0]) / (double)(scan->n - 1);
     if (status == LW_OK)
         status = refine(q, arena, refined, err);
     for (size_t i = 0; i < sizeof q->optics / sizeof *q->optics; i++)

@@ -31,7 +31,7 @@ static void widen(const double *density, double share, double *low, double *high
 static lw_status fill_row(lw_optics *optics, double angle, const lw_profile_table *table, double sigma, double *row,
                           lw_error *err)
 {
-    lw_status status = lw_optics_transform(optics, angle, err);
+    lw_status status = lw_optics_transform(optics, angle, 1, optics->transform, err);
     if (status != LW_OK)
         return status;
     double period = LW_OPTICS_POINTS * LW_OPTICS_STEP, limit = M_PI / table->spacing_deg,

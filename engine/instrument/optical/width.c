@@ -23,14 +23,6 @@ static void slit(const lw_geometry *g, double two_theta_deg, double k, double *r
     box(g->slit_width / g->radius * (180 / M_PI), k, re, im);
 }
 
-/* A ray at the equatorial angle phi meets a specimen turned by t out of the 2:1 setting at the height
- * R phi t/sin(theta), and is shifted by -2 phi t cot(theta). */
-static void tilt(const lw_geometry *g, double two_theta_deg, double k, double *re, double *im)
-{
-    double theta = two_theta_deg * (M_PI / 360);
-    box(2 * g->divergence_deg * g->tilt_deg * (M_PI / 180) / tan(theta), k, re, im);
-}
-
 const lw_optical lw_optical_source = {
     .name = "source_width",
     .definition = "box of the width w/R",
@@ -41,8 +33,3 @@ const lw_optical lw_optical_slit = {
     .definition = "box of the width w/R",
     .source = "Cheary & Coelho (1992) J. Appl. Cryst. 25, 109",
     .transform = slit};
-const lw_optical lw_optical_tilt = {
-    .name = "tilt",
-    .definition = "box of the width 2 alpha t cot(theta): divergence alpha, specimen turned by t out of the 2:1 setting",
-    .source = "Wilson (1963) Mathematical Theory of X-ray Powder Diffractometry",
-    .transform = tilt};
