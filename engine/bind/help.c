@@ -8,6 +8,7 @@
 #include "line/lines.h"
 #include "profile/profiles.h"
 #include "sample/method.h"
+#include "sample/uncertainty.h"
 #include "scan/scan.h"
 
 #include <stdio.h>
@@ -25,6 +26,7 @@ const lw_option *lwb_options_of(const char *function)
                 {"fit_lines", lw_fit_option_table},
                 {"calibrate", lw_calibrate_option_table},
                 {"deconvolve", lw_deconvolve_option_table},
+                {"separate", lw_separate_option_table},
                 {"history", lw_history_option_table}};
     for (size_t i = 0; i < sizeof verb / sizeof *verb; i++)
         if (strcmp(verb[i].name, function) == 0)

@@ -3,6 +3,7 @@
 
 #include "bind/roads.h"
 #include "sample/method.h"
+#include "sample/uncertainty.h"
 
 #include <stddef.h>
 #include <stdint.h>
@@ -65,26 +66,25 @@ static size_t read_names(lua_State *L, int at, const char **names)
     return n;
 }
 
-/* lw.separate(profiles, { methods = "all" | name | {names} }) */
+/* lw.separate(profiles, { methods = "all" | name | {names}, uncertainty = ... }) */
 static int separate(lua_State *L)
 {
-    static const char *const keys[] = {"methods", NULL};
+    static const char *const own[] = {"methods", NULL};
     lw_error err = LW_ERROR_NONE;
     lua_settop(L, 2);
+    luaL_checkstack(L, 40, NULL);
     const lw_profiles *profiles = lwb_object(L, 1, &lwb_profiles_noun, "separate");
+    lw_separate_options options = lw_separate_defaults();
+    lwb_options(L, 2, "separate", lw_separate_option_table, own, &options);
     if (lua_isnil(L, 2))
         lua_pushnil(L);
-    else {
-        lwb_want_table(L, 2, "separate", "the options");
-        lwb_only_keys(L, 2, "separate", keys);
+    else
         lua_getfield(L, 2, "methods");
-    }
-    const char *names[LW_OPTION_LIST_MOST];
-    size_t n = read_names(L, 3, names);
+    options.methods.n = read_names(L, 3, options.methods.item);
     lwb_tree *tree = lwb_new_tree(L);
     lua_pushvalue(L, 1);
     lua_setiuservalue(L, -2, 1);
-    lwb_check(L, lw_separate(lwb_engine(L), profiles, names, n, tree->root, &err), &err);
+    lwb_check(L, lw_separate_with(lwb_engine(L), profiles, &options, tree->root, &err), &err);
     return 1;
 }
 

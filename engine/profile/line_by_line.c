@@ -135,13 +135,14 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
     lw_status status = answer == NULL || lean == NULL ? LW_OUT_OF_MEMORY : LW_OK;
     bool by_physics = options->completion == LW__BY_PHYSICS ||
                       (options->completion == LW__BY_MISFIT && profiles->lines->misfit_p < 0.2 && n <= 30);
-    profiles->by_physics = by_physics;
     if (status == LW_OK && options->standard != NULL)
         status = lw__take_standard(profiles, options->standard, &scratch, &standard, err);
     if (status == LW_OK && by_physics)
         status = lw__separate_by_physics(engine, profiles, &scratch, &separation, &physical, err);
     else if (status == LW_OK)
         status = lw__separate_by_voigts(profiles, &scratch, &separation, err);
+    if (status == LW_OK && by_physics)
+        status = lw__keep_model(profiles, &separation, err);
     if (status == LW_OK && by_physics)
         for (size_t a = 0; a < n; a++) {
             const lw_profile *profile = &profiles->profile[a];

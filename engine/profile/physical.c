@@ -41,6 +41,8 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
     lw__physical_fit fit;
     lw_arena_begin(&scratch, engine);
     lw_status status = lw__separate_by_physics(engine, profiles, &scratch, &separation, &fit, err);
+    if (status == LW_OK)
+        status = lw__keep_model(profiles, &separation, err);
     size_t n = profiles->n, stride = profiles->n_covariance;
     const lw_scan *scan = profiles->lines->scan;
     for (size_t k = 0; k < n && status == LW_OK; k++) {

@@ -46,6 +46,9 @@ typedef struct lw_profiles {
                            calibration's part included: shared, so lines are correlated */
     const struct lw_deconvolve_options *options; /* as they were given */
     bool by_physics; /* lines were separated and completed by physical shapes, not by Voigts */
+    bool values_only; /* set by whoever runs methods again for their values: what is there for u alone, and takes long,
+                         may be left out */
+    double *model;   /* then: the sum of these shapes and the background at the scan's points, else NULL */
 } lw_profiles;
 
 typedef struct lw_deconvolve_options {

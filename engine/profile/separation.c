@@ -100,3 +100,15 @@ lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, l
     }
     return LW_OK;
 }
+
+lw_status lw__keep_model(lw_profiles *profiles, const lw__separation *separation, lw_error *err)
+{
+    const lw_scan *scan = profiles->lines->scan;
+    profiles->model = lw_arena_take(&profiles->arena, scan->n, sizeof(double), err);
+    if (profiles->model == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < scan->n; i++)
+        profiles->model[i] = scan->intensity[i] - separation->residual[i];
+    profiles->by_physics = true;
+    return LW_OK;
+}

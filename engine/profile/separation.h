@@ -63,4 +63,7 @@ typedef struct lw__physical_fit {
 lw_status lw__separate_by_physics(lw_engine *engine, const lw_profiles *profiles, lw_arena *arena,
                                   lw__separation *out, lw__physical_fit *fit, lw_error *err);
 
+/* Notes in the profiles that physical shapes were used, and the curve that they make. */
+lw_status lw__keep_model(lw_profiles *profiles, const lw__separation *separation, lw_error *err);
+
 #endif

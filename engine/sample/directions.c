@@ -47,7 +47,7 @@ static lw_status orders_of(const lw_breadths *all, size_t first, lw_arena *arena
 {
     int mine[3], other[3];
     size_t *at = lw_arena_take(arena, all->n, sizeof *at, err), n = 0;
-    *out = (lw_breadths){.cubic = all->cubic};
+    *out = (lw_breadths){.cubic = all->cubic, .values_only = all->values_only};
     if (at == NULL)
         return LW_OUT_OF_MEMORY;
     lw_direction_of(all->profile[first], all->cubic, mine);

@@ -34,4 +34,8 @@ lw_status lw_method_run(lw_engine *engine, const lw_method *method, const lw_pro
 lw_status lw_separate(lw_engine *engine, const lw_profiles *profiles, const char *const *names, size_t n_names,
                       lw_node *results, lw_error *err);
 
+/* The same without agreement and notes, for whoever runs them again and again. err may not be NULL. */
+lw_status lw_run_methods(lw_engine *engine, const lw_profiles *profiles, const char *const *names, size_t n_names,
+                         lw_node *results, lw_error *err);
+
 #endif

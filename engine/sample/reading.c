@@ -116,6 +116,8 @@ lw_status lw_breadths_read(const lw_breadths *breadths, lw_arena *arena, lw_read
     double score[LW_READINGS_MOST], best = INFINITY, scatter = INFINITY, sum = 0, n = 0;
     size_t parameters[LW_READINGS_MOST];
     *readings = (lw_readings){0};
+    if (breadths->values_only)
+        return LW_OK;
     for (size_t i = 0; i < sizeof sigmas / sizeof *sigmas; i++)
         for (int strain = CONSTANT; strain <= BOTH; strain++) {
             model_of m = {.breadths = breadths, .sigma = sigmas[i], .strain = strain};

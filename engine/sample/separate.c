@@ -96,12 +96,9 @@ static lw_status check_names(const char *const *names, size_t n_names, lw_error 
     return LW_OK;
 }
 
-lw_status lw_separate(lw_engine *engine, const lw_profiles *profiles, const char *const *names,
-                      size_t n_names, lw_node *results, lw_error *err)
+lw_status lw_run_methods(lw_engine *engine, const lw_profiles *profiles, const char *const *names,
+                         size_t n_names, lw_node *results, lw_error *err)
 {
-    lw_error own = LW_ERROR_NONE;
-    if (err == NULL)
-        err = &own;
     lw_status status = check_names(names, n_names, err);
     if (status != LW_OK)
         return status;
@@ -118,8 +115,19 @@ lw_status lw_separate(lw_engine *engine, const lw_profiles *profiles, const char
     }
     if (err->status == LW_OK) /* the cell is told whatever methods were chosen: it costs nothing */
         run_or_say(engine, lw_method_named(LATTICE), profiles, results, err);
-    if (err->status != LW_OK)
-        return err->status;
+    return err->status;
+}
+
+lw_status lw_separate(lw_engine *engine, const lw_profiles *profiles, const char *const *names,
+                      size_t n_names, lw_node *results, lw_error *err)
+{
+    lw_error own = LW_ERROR_NONE;
+    if (err == NULL)
+        err = &own;
+    lw_status status = lw_run_methods(engine, profiles, names, n_names, results, err);
+    if (status != LW_OK)
+        return status;
+    const lw_node *methods = lw_node_get(results, "methods");
     lw_agreement(methods, results, err);
     lw_notes(profiles, methods, results, err);
     lw_engine_progress(engine, "size and strain", 1);

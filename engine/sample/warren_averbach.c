@@ -143,7 +143,8 @@ static lw_status separate(const lw_profiles *profiles, const warren_averbach_opt
                 break;
             }
         lw_error none = LW_ERROR_NONE;
-        set->has_density = lw_columns_density(&set->size, &set->slope, arena, &set->density, &none) == LW_OK &&
+        set->has_density = !profiles->values_only &&
+                           lw_columns_density(&set->size, &set->slope, arena, &set->density, &none) == LW_OK &&
                            set->density.beyond < 0.5;
         if (none.status == LW_OUT_OF_MEMORY)
             *err = none;

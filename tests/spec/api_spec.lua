@@ -119,7 +119,7 @@ describe("the description of the api", function()
   end)
 
   it("has the engine's option tables in its help", function()
-    for _, name in ipairs { "read_scan", "fit_lines", "calibrate", "deconvolve", "scherrer" } do
+    for _, name in ipairs { "read_scan", "fit_lines", "calibrate", "deconvolve", "separate", "scherrer" } do
       local options = lw.options(name)
       assert.is_true(#options > 0, name)
       local text = lw.help(name)
