@@ -7,6 +7,92 @@
 #include <math.h>
 #include <string.h>
 
+/* a x0 + b x1 through y[n], none of them negative, by relative least squares, once more without what lies far off. Returned:
+ * root mean square of the relative misses. */
+static double through(const double *x0, const double *x1, const double *y, size_t n, double *a, double *b)
+{
+    double limit = INFINITY, rms = INFINITY;
+    for (int pass = 0; pass < 2; pass++) {
+        double h00 = 0, h01 = 0, h11 = 0, g0 = 0, g1 = 0, sum = 0, count = 0;
+        for (size_t i = 0; i < n; i++) {
+            double p = x0[i] / y[i], q = x1[i] / y[i];
+            if (pass > 0 && fabs(1 - *a * p - *b * q) > limit)
+                continue;
+            h00 += p * p;
+            h01 += p * q;
+            h11 += q * q;
+            g0 += p;
+            g1 += q;
+        }
+        double determinant = h00 * h11 - h01 * h01;
+        bool two = determinant > 1e-9 * h00 * h11;
+        *a = two ? (g0 * h11 - g1 * h01) / determinant : g0 / h00;
+        *b = two ? (g1 * h00 - g0 * h01) / determinant : 0;
+        if (*b < 0 || *a < 0) {
+            bool rising = *a < 0;
+            *a = rising ? 0 : g0 / h00;
+            *b = rising ? g1 / h11 : 0;
+        }
+        for (size_t i = 0; i < n; i++) {
+            double miss = 1 - (*a * x0[i] + *b * x1[i]) / y[i];
+            if (fabs(miss) > limit)
+                continue;
+            sum += miss * miss;
+            count++;
+        }
+        rms = sqrt(sum / fmax(count, 1));
+        limit = 2.5 * rms;
+    }
+    return rms;
+}
+
+/* Width functions through the widths that were seen. True if these follow them well enough to go on from. */
+static lw_status start_widths(lw_fit_state *fit, bool *good, lw_error *err)
+{
+    lw_model *model = &fit->model;
+    lw_arena_mark mark = lw_arena_mark_now(&fit->scratch);
+    double *work = lw_arena_take(&fit->scratch, 4 * fit->n, sizeof *work, err), *y = work, *flat = work + fit->n;
+    double *steep = work + 2 * fit->n;
+    size_t at[LW_WIDTH_PARAMETERS], n = 0;
+    *good = false;
+    if (work == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < LW_WIDTH_PARAMETERS; i++)
+        at[i] = LW_GLOBALS_MOST;
+    for (size_t i = 0; i < model->n_globals; i++)
+        at[model->global[i].parameter] = i;
+    bool both = at[LW_Y] < LW_GLOBALS_MOST && (at[LW_W] < LW_GLOBALS_MOST || at[LW_P] < LW_GLOBALS_MOST);
+    double part = both ? 0.6 : 1, miss = 0;
+    for (int lorentz = 0; lorentz < 2; lorentz++) {
+        size_t first = lorentz ? at[LW_Y] : at[LW_W] < LW_GLOBALS_MOST ? at[LW_W] : at[LW_P], second = at[lorentz ? LW_X : LW_U];
+        if (first == LW_GLOBALS_MOST || second == LW_GLOBALS_MOST)
+            continue;
+        n = 0;
+        for (size_t k = 0; k < fit->n; k++) {
+            if (!fit->start[k].width_seen)
+                continue;
+            double angle = fit->position[k], t = tan(angle * M_PI / 360), wide = part * fit->start[k].fwhm_deg;
+            if (lorentz) {
+                y[n] = fmax(wide - lw_width_lorentz(model->instrument, angle, NULL), 0.2 * wide);
+                flat[n] = sqrt(1 + t * t);
+                steep[n] = t;
+            } else {
+                y[n] = fmax(wide * wide - lw_width_gauss_variance(model->instrument, angle, NULL), 0.04 * wide * wide);
+                flat[n] = model->global[first].parameter == LW_P ? 1 + t * t : 1;
+                steep[n] = t * t;
+            }
+            n++;
+        }
+        double a, b, off = through(flat, steep, y, n, &a, &b);
+        miss = fmax(miss, lorentz ? off : 0.5 * off);
+        fit->global[first] = a;
+        fit->global[second] = b;
+    }
+    *good = n >= 5 && miss < 0.2;
+    lw_arena_rewind(&fit->scratch, mark);
+    return LW_OK;
+}
+
 /* Width parameters that the lines can carry: no more than there are visible lines. */
 static void choose_globals(lw_fit_state *fit, double fwhm)
 {
@@ -68,25 +154,33 @@ static void choose_globals(lw_fit_state *fit, double fwhm)
 
 double lw_fit_overlap(const lw_fit_state *fit, size_t line)
 {
+    enum { PLACES = 61 };
     const lw_model *model = &fit->model;
-    double variance, lorentz, share = 0, sum = 0;
+    const lw_voigt_kernel *kernel = lw_voigt_kernel_for(LW_CPU_PLAIN); /* the same on every processor */
+    const lw_voigt_node node = {.weight = 1};
+    double variance, lorentz, share = 0, sum = 0, x[PLACES], own[PLACES], others[PLACES] = {0};
     lw_model_widths(model, fit->p, line, &variance, &lorentz);
-    double gauss = sqrt(variance), width = lw_voigt_fwhm(gauss, lorentz);
-    for (int i = -30; i <= 30; i++) {
-        double x = fit->position[line] + 0.1 * i * width;
-        double own = fabs(fit->area[line]) * lw_voigt(x - fit->position[line], gauss, lorentz), others = 0;
-        for (size_t k = 0; k < fit->n; k++) {
-            if (k == line || fabs(fit->position[k] - x) > 12 * width + 1)
-                continue;
-            double v, l;
-            lw_model_widths(model, fit->p, k, &v, &l);
-            others += fabs(fit->area[k]) * lw_voigt(x - fit->position[k], sqrt(v), l);
-        }
-        if (own + others > 0) {
-            share += own * others / (own + others);
-            sum += own;
-        }
+    double width = lw_voigt_fwhm(sqrt(fmax(variance, 1e-12)), lorentz), reach = 15 * width + 1;
+    for (size_t k = 0; k < fit->n; k++) {
+        double away = fit->position[k] - fit->position[line], value[PLACES], v, l;
+        if (fabs(away) > reach)
+            continue;
+        lw_model_widths(model, fit->p, k, &v, &l);
+        for (int i = 0; i < PLACES; i++)
+            x[i] = 0.1 * (i - PLACES / 2) * width - away;
+        lw_voigt_sums sums = {.value = value};
+        kernel->sum(PLACES, x, &node, 1, fmax(v, 1e-12), l, 1, &sums);
+        for (int i = 0; i < PLACES; i++)
+            if (k == line)
+                own[i] = fabs(fit->area[k]) * value[i];
+            else if (fabs(x[i]) <= 12 * width + 1)
+                others[i] += fabs(fit->area[k]) * value[i];
     }
+    for (int i = 0; i < PLACES; i++)
+        if (own[i] + others[i] > 0) {
+            share += own[i] * others[i] / (own[i] + others[i]);
+            sum += own[i];
+        }
     return sum > 0 ? share / sum : 1;
 }
 
@@ -137,7 +231,7 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
         } else {
             /* the smooth function may miss a line by far where the Voigt does; then what was seen of it is a better start */
             double fwhm = lw_voigt_fwhm(sqrt(variance), lorentz), seen = fit->start[k].fwhm_deg;
-            if (fit->start[k].visible && overlap < 0.2) {
+            if (fit->start[k].width_seen && overlap < 0.2) {
                 fwhm = fmin(fmax(fwhm, 0.8 * seen), 1.25 * seen);
                 fit->position[k] = fit->start[k].position_deg;
             }
@@ -198,7 +292,7 @@ static lw_status start_values(lw_fit_state *fit, double *background, double *typ
 }
 
 /* The model with widths as smooth functions, at its starting values. */
-static lw_status start_model(lw_fit_state *fit, lw_error *err)
+static lw_status start_model(lw_fit_state *fit, bool *good_widths, lw_error *err)
 {
     lw_model *model = &fit->model;
     const lw_scan *scan = fit->scan;
@@ -220,6 +314,7 @@ static lw_status start_model(lw_fit_state *fit, lw_error *err)
     model->shape = shape->is_voigt ? shape : lw_line_shape_list[0];
     model->n_local = 0;
     choose_globals(fit, fwhm);
+    status = start_widths(fit, good_widths, err);
     if (status == LW_OK)
         status = lw_model_prepare(model, &fit->scratch, err);
     if (status == LW_OK)
@@ -250,7 +345,8 @@ lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
     const lw_line_shape *shape = lw_line_shape_list[fit->options->shape];
     bool smooth = fit->options->widths == LW_WIDTHS_SMOOTH && shape->is_voigt;
     bool whole_scan = !(fit->options->range[1] > fit->options->range[0]);
-    lw_status status = start_model(fit, err);
+    bool good_widths = false;
+    lw_status status = start_model(fit, &good_widths, err);
     lw_engine_progress(fit->engine, "line fit", 0.1);
     hold_globals(fit, HOLD_ALL);
     if (status == LW_OK)
@@ -259,7 +355,7 @@ lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
     for (size_t k = 0; k < fit->n; k++)
         fit->hold_position[k] = !fit->start[k].visible;
     hold_globals(fit, HOLD_FINE);
-    if (status == LW_OK)
+    if (status == LW_OK && !good_widths)
         status = stage_on_the_way(fit, err);
     if (status == LW_OK && whole_scan && (fit->crop_deg = overlap_begins(fit)) > 0)
         return LW_OK;

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* From a converged fit to lines with uncertainties. */
 #include "line/fit_state.h"
+#include "numeric/cholesky.h"
 #include "numeric/statistics.h"
 
 #include <math.h>
@@ -71,6 +72,22 @@ static void take_shared(const lw_fit_state *fit, const double *c, size_t n, lw_w
                         shared->covariance[rows[i][a]][rows[j][b]] = c[(first + i) * n + first + j];
 }
 
+/* The stage before ended loosely, but what is read off now is kept: the inverse gives the step to its end. A step of more
+ * than one u is not one to the end, and is left out, as is one over a bound. */
+static void last_step(lw_fit_state *fit, const double *c, const double *g)
+{
+    size_t n = fit->n_parameters;
+    for (int pass = 0; pass < 2; pass++)
+        for (size_t i = 0; i < n; i++) {
+            double step = lw_dot(c + i * n, g, n), to = fit->p[i] + step;
+            if (pass == 0 && step * step > c[i * n + i])
+                return;
+            if (pass == 1 && to > fit->lower[i] && to < fit->upper[i])
+                fit->p[i] = to;
+        }
+    lw__fit_unpack(fit);
+}
+
 lw_status lw_fit_survey(lw_fit_state *fit, double *u, lw_error *err)
 {
     size_t n = fit->n_parameters, weakest = 0;
@@ -92,8 +109,10 @@ lw_status lw_fit_survey(lw_fit_state *fit, double *u, lw_error *err)
         /* without an inverse the diagonal alone gives the least possible uncertainty */
         u[k] = status == LW_OK ? sqrt(c[row * n + row]) : sqrt(1 / fmax(normal.h[row * n + row], 1e-300));
     }
-    if (status == LW_OK)
+    if (status == LW_OK) {
+        last_step(fit, c, normal.g);
         take_shared(fit, c, n, &fit->shared);
+    }
     return status == LW_NOT_SUPPORTED ? LW_OK : status;
 }
 
@@ -441,14 +460,14 @@ lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
         else
             empirical_widths(fit, line, k);
         line->remark = remark_of(fit, line, k);
-        double sum = 0;
+        double sum = 0, reach = 1.5 * line->fwhm.value;
         size_t count = 0;
-        for (size_t i = 0; i < fit->scan->n; i++)
-            if (fabs(fit->scan->two_theta_deg[i] - fit->position[k]) < 1.5 * line->fwhm.value) {
-                double r = fit->scan->intensity[i] - lines->fitted[i];
-                sum += r * r / lines->variance[i];
-                count++;
-            }
+        for (size_t i = lw_point_at(fit->scan, fit->position[k] - reach);
+             i < fit->scan->n && fit->scan->two_theta_deg[i] < fit->position[k] + reach; i++) {
+            double r = fit->scan->intensity[i] - lines->fitted[i];
+            sum += r * r / lines->variance[i];
+            count++;
+        }
         line->residual_misfit = count > 0 ? sum / (double)count : NAN;
     }
     if (fit->extra != NULL) {

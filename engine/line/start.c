@@ -6,13 +6,24 @@
 
 static const double degree = M_PI / 180;
 
-/* First point at or above an angle. */
-static size_t point_at(const lw_scan *scan, double angle)
+size_t lw_point_at(const lw_scan *scan, double angle)
 {
-    size_t low = 0, high = scan->n;
+    const double *x = scan->two_theta_deg;
+    size_t n = scan->n, low = 0, high = n;
+    /* most scans are even: look first where the point would be then */
+    double share = (angle - x[0]) / (x[n - 1] - x[0]);
+    if (share > 0 && share < 1) {
+        size_t guess = (size_t)(share * (double)(n - 1));
+        for (size_t i = guess; i < guess + 3 && i < n; i++)
+            if (x[i] >= angle) {
+                if (i == 0 || x[i - 1] < angle)
+                    return i;
+                break;
+            }
+    }
     while (low < high) {
         size_t middle = (low + high) / 2;
-        if (scan->two_theta_deg[middle] < angle)
+        if (x[middle] < angle)
             low = middle + 1;
         else
             high = middle;
@@ -96,7 +107,7 @@ static double score(const lw_scan *scan, const double *excess, const lw_line_sta
     double sum = 0, product = 1;
     for (size_t k = 0; k < n; k++) {
         double place = start[k].expected_deg + shift + shift_cos * cosine[k];
-        size_t i = point_at(scan, place);
+        size_t i = lw_point_at(scan, place);
         if (i > 0 && i < scan->n)
             product *= 1 + fmax(excess[i], 0);
         if (product > 1e100 || k + 1 == n) {
@@ -152,7 +163,7 @@ lw_status lw_start_lines(const lw_scan *scan, const double *background, double s
             reach = fmin(reach, 0.45 * (line->expected_deg - start[k - 1].expected_deg));
         if (k + 1 < n)
             reach = fmin(reach, 0.45 * (start[k + 1].expected_deg - line->expected_deg));
-        size_t from = point_at(scan, place - reach), to = point_at(scan, place + reach);
+        size_t from = lw_point_at(scan, place - reach), to = lw_point_at(scan, place + reach);
         if (to >= m)
             to = m - 1;
         size_t top = from < m ? from : m - 1;
@@ -180,9 +191,11 @@ lw_status lw_start_lines(const lw_scan *scan, const double *background, double s
     }
     if (!(fallback > 0))
         fallback = 6 * step;
-    for (size_t k = 0; k < n; k++)
-        if (!start[k].visible || start[k].fwhm_deg > 4 * fallback)
+    for (size_t k = 0; k < n; k++) {
+        start[k].width_seen = start[k].visible && start[k].fwhm_deg <= 4 * fallback;
+        if (!start[k].width_seen)
             start[k].fwhm_deg = fallback;
+    }
     /* do the strong peaks of the scan stand where lines are expected? */
     double there = 0, all = 0;
     for (size_t i = 2; i + 2 < m; i++) {

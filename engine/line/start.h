@@ -11,7 +11,11 @@ typedef struct lw_line_start {
     double height;        /* above the background, intensity */
     double fwhm_deg;
     bool visible;         /* stands out of the noise */
+    bool width_seen;      /* its width is its own, not taken from narrower lines */
 } lw_line_start;
+
+/* First point of a scan at or above an angle (deg), scan->n if there is none. */
+size_t lw_point_at(const lw_scan *scan, double angle);
 
 /* Background under the lines by repeated clipping of the square-rooted scan with a growing window.
  * Given: window_deg, the widest structure that counts as a line; background[scan->n] receives it.
