@@ -10,6 +10,8 @@ local job = lw.recipe {
     calibration = { kind = "file", help = "calibration.json of the instrument" },
     noise       = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },
                     help = "scaled: intensities are not counts, their noise is estimated from the scan" },
+    workers     = { kind = "text", default = "1",
+                    help = "processes that share the scans: a number, or auto for one a processor core" },
   },
 }
 
@@ -29,26 +31,29 @@ local function analyse(path, scan)
   return { name = path:match "[^/]+$", lines = lines, profiles = profiles, results = results }
 end
 
--- Each powder is done once: a run that was stopped goes on where it was. The key names what the analysis
--- depends on.
-local function analyse_once(path)
-  local scan = lw.read_scan(path, { radiation = instrument.radiation, noise = job.noise })
-  local key = table.concat({ scan.hash, instrument.hash, job.noise, tostring(powder) }, " "):gsub('["\\\n]', " ")
-  local fresh
-  local known = job:once(key, function()
-    fresh = analyse(path, scan)
-    local results = fresh.results
-    return { goodness_of_fit = fresh.lines.fit.goodness_of_fit, lines = results.lines, methods = results.methods,
-             lattice = results.lattice, agreement = results.agreement, notes = results.notes }
-  end)
-  return known, fresh
+local function read(path)
+  return lw.read_scan(path, { radiation = instrument.radiation, noise = job.noise })
 end
 
--- One powder after the other. One that can't be analysed is told and left out; the others go on.
+-- Each powder is done once: a run that was stopped goes on where it was. The key names what the analysis
+-- depends on.
+local function key(path)
+  return (table.concat({ read(path).hash, instrument.hash, job.noise, tostring(powder) }, " "):gsub('["\\\n]', " "))
+end
+
+local fresh = {} -- what this process analysed itself, by path: its fits are drawn
+local function analyse_once(path)
+  local analysed = analyse(path, read(path))
+  local lines, results = analysed.lines, analysed.results
+  fresh[path] = analysed
+  return { goodness_of_fit = lines.fit.goodness_of_fit, lines = results.lines, methods = results.methods,
+           lattice = results.lattice, agreement = results.agreement, notes = results.notes }
+end
+
+-- One powder after the other, or several at a time. One that can't be analysed is told and left out; the others go on.
 local entries, rows, failed, shown = {}, {}, {}, {}
-for place, path in ipairs(job.scans) do
-  local ok, known, fresh = pcall(analyse_once, path)
-  if ok then
+for place, path, known, message in job:each(job.scans, key, analyse_once, { workers = job.workers }) do
+  if known then
     local wh = known.methods.williamson_hall
     local row = {
       scan = path:match "[^/]+$", milling_time_h = hours(path, place),
@@ -61,10 +66,9 @@ for place, path in ipairs(job.scans) do
     entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = known.lines,
                               methods = known.methods, lattice = known.lattice,
                               agreement = known.agreement, notes = known.notes }
-    shown[#shown + 1] = fresh or { name = row.scan, results = known }
+    shown[#shown + 1] = fresh[path] or { name = row.scan, results = known }
     print(("%-28s size %-16s strain %s"):format(row.scan, tostring(row.size_volume), tostring(row.strain_rms)))
   else
-    local message = tostring(known)
     entries[#entries + 1] = { scan = path, error = message }
     failed[#failed + 1] = { scan = path, error = message }
     print(("%-28s %s"):format(path:match "[^/]+$", message))
@@ -129,7 +133,7 @@ for _, one in ipairs(shown) do
   items[#items + 1] = { heading = one.name, prefix = one.name:gsub("%.%w+$", "") }
   items[#items + 1] = { brief = one.results }
   items[#items + 1] = one.lines and { brief = one.lines }
-                      or "An earlier run analysed it; its fit is not drawn again."
+                      or "An earlier run or another worker analysed it; its fit is not drawn here."
   items[#items + 1] = { details = one.results }
 end
 job:write({ scans = entries }) -- before the figures, which take the longest

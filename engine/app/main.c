@@ -29,12 +29,23 @@
 typedef struct job {
     const lwa_options *options;
     lwa_progress *progress;
+    lwa_memory *memory;
     int argc;
     char **argv;
     int code;
 } job;
 
-static void set_up_home(lua_State *L, const job *work)
+/* In a process of job:each: they share what is left of the memory limit, and the bar is not theirs. */
+static void begin_worker(void *host, unsigned workers)
+{
+    const job *work = host;
+    lwa_memory *memory = work->memory;
+    if (memory->most > memory->used)
+        memory->most = memory->used + (memory->most - memory->used) / workers;
+    work->progress->wanted = work->progress->drawn = false;
+}
+
+static void set_up_home(lua_State *L, job *work)
 {
     lwb_home *home = lwb_home_of(L);
     home->interpreter = true;
@@ -43,6 +54,8 @@ static void set_up_home(lua_State *L, const job *work)
     home->engine.cancelled = lwa_stop_wanted;
     home->engine.progress = lwa_progress_show;
     home->engine.user = work->progress;
+    home->worker_begins = begin_worker;
+    home->host = work;
     if (work->options->standards != NULL) {
         snprintf(home->standards, sizeof home->standards, "%s", work->options->standards);
         return;
@@ -204,7 +217,7 @@ int main(int argc, char **argv)
         return LWA_FAILED;
     }
     lwa_progress_begin(&progress);
-    job work = {.options = &options, .progress = &progress, .argc = argc, .argv = argv, .code = LWA_DONE};
+    job work = {.options = &options, .progress = &progress, .memory = &memory, .argc = argc, .argv = argv, .code = LWA_DONE};
     lua_pushcfunction(L, work_through);
     lua_pushlightuserdata(L, &work);
     if (lua_pcall(L, 1, 0, 0) != LUA_OK) {

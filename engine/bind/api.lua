@@ -146,6 +146,7 @@
 ---@field progress fun(self: recipe, what: string, fraction: number)
 ---@field check fun(self: recipe, passed: boolean, text?: string): boolean
 ---@field once fun(self: recipe, key: string, f: fun(): any): result
+---@field each fun(self: recipe, items: table, key: function, f: function, options?: table): function
 ---@field run fun(self: recipe, recipe: string, inputs: table)
 
 ---@class linewright
@@ -329,6 +330,15 @@ local methods = {
     "Runs another recipe as a step of this one; it writes to a folder below this job's own.",
     { p("recipe", "text", "its path, from this recipe's folder"),
       p("inputs", "table", "name = value, and out = \"name\", the folder below out") }),
+  ["recipe:each"] = entry("for place, item, result, message in job:each(items, key, f, { workers = 1 }) do",
+    "Does once for each item of a list what job:once does, and gives it in the order of the list; an item whose f "
+      .. "fails gives a message instead of a result. With several workers, items are shared out to processes of their "
+      .. "own: f can't write, and what it leaves in variables is seen with one worker only.",
+    { p("items", "list", "of anything, for example paths"),
+      p("key", "function", "of an item: the key for job:once"),
+      p("f", "function", "of an item: gives a result or a table, the same whatever was done before"),
+      p("options", "table", "workers: 1 to 64, or \"auto\" for one a usable processor core") },
+    "iterator"),
   ["recipe:once"] = entry("job:once(key, f)",
     "What f() gave when the key was first done: a long job that was stopped goes on where it was.",
     { p("key", "text", "names all that the step depends on besides the recipe, such as hashes"),

@@ -29,6 +29,9 @@ typedef struct lwb_home {
     bool out_is_default;     /* the user did not choose it: it must not be a link */
     char fence[LWB_PATH_MOST]; /* out of the outermost recipe; the engine writes nowhere else if confined */
     int inner;               /* recipes that run as a step of another one now */
+    int in_item;             /* a function given to job:each runs now: it may not write */
+    void (*worker_begins)(void *host, unsigned workers); /* called in each process of job:each; NULL = no need */
+    void *host;              /* handed to it */
 } lwb_home;
 
 /* The home of a state, made at the first call. */

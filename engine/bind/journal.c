@@ -1,6 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The journal of a long job: out/journal.jsonl, one line a finished step, appended and flushed. A job
  * that was killed goes on where it was when it is started again with the same recipe. */
+#include "bind/journal.h"
+
 #include "bind/inputs.h"
 #include "bind/outputs.h"
 #include "record/file.h"
@@ -54,8 +56,7 @@ static void flatten(char *text)
     *to = '\0';
 }
 
-/* Pushes the value of the key as a result that owns itself, or returns false. */
-static bool push_known(lua_State *L, const char *path, const char *key)
+bool lwb_push_known(lua_State *L, const char *path, const char *key)
 {
     lw_error err = LW_ERROR_NONE;
     struct stat info;
@@ -80,38 +81,61 @@ static bool push_known(lua_State *L, const char *path, const char *key)
     return true;
 }
 
+const char *lwb_push_journal(lua_State *L, const char *verb)
+{
+    return lwb_push_out_path(L, "journal.jsonl", verb);
+}
+
+const char *lwb_push_journal_key(lua_State *L, const char *given, const char *verb)
+{
+    if (strlen(given) > KEY_MOST || strpbrk(given, "\"\\\n") != NULL)
+        lwb_refuse(L, "use letters, digits and hashes", "%s: the key can't be used", verb);
+    return lua_pushfstring(L, "%s %s %s", LW_VERSION, lwb_home_of(L)->recipe_hash, given);
+}
+
+void lwb_journal_line(lua_State *L, const char *key, int value, lw_text *line)
+{
+    lw_error err = LW_ERROR_NONE;
+    value = lua_absindex(L, value);
+    lwb_tree *entry = lwb_new_tree(L);
+    lw_add_text(entry->root, "key", key, &err);
+    lwb_check(L, LW_OK, &err);
+    lwb_add_value(L, entry->root, "value", value);
+    lw_text_begin(line, lwb_engine(L));
+    lw_status status = lw_json_write(entry->root, line, &err);
+    if (status != LW_OK)
+        lw_text_end(line);
+    lwb_check(L, status, &err);
+    flatten(line->bytes);
+    lua_pop(L, 1);
+}
+
+void lwb_journal_add(lua_State *L, const char *path, const char *key, lw_text *line, const char *verb)
+{
+    lw_error err = LW_ERROR_NONE;
+    lw_status status = lw_append_line(lwb_engine(L), path, line->bytes, &err);
+    lw_text_end(line);
+    lwb_check(L, status, &err);
+    if (!lwb_push_known(L, path, key))
+        lwb_refuse(L, NULL, "%s: %s can't be read back", verb, path);
+}
+
 /* job:once(key, f): what f gave when the key was first done, or what it gives now. f returns a result or
  * a table. The key should name all that the step depends on besides the recipe, such as hashes. */
 int lwb_job_once(lua_State *L)
 {
-    lwb_home *home = lwb_home_of(L);
-    lw_error err = LW_ERROR_NONE;
     lwb_self(L, 1, &lwb_recipe_noun, "job:once");
     const char *given = lwb_text(L, 2, "job:once", "the key");
     luaL_checktype(L, 3, LUA_TFUNCTION);
     lua_settop(L, 3);
-    if (strlen(given) > KEY_MOST || strpbrk(given, "\"\\\n") != NULL)
-        return lwb_refuse(L, "use letters, digits and hashes", "job:once: the key can't be used");
-    const char *key = lua_pushfstring(L, "%s %s %s", LW_VERSION, home->recipe_hash, given);
-    const char *path = lwb_push_out_path(L, "journal.jsonl", "job:once");
-    if (push_known(L, path, key))
+    const char *key = lwb_push_journal_key(L, given, "job:once");
+    const char *path = lwb_push_journal(L, "job:once");
+    if (lwb_push_known(L, path, key))
         return 1;
     lua_pushvalue(L, 3);
     lua_call(L, 0, 1);
-    lwb_tree *entry = lwb_new_tree(L);
-    lw_add_text(entry->root, "key", key, &err);
-    lwb_check(L, LW_OK, &err);
-    lwb_add_value(L, entry->root, "value", lua_gettop(L) - 1);
-    lw_text text;
-    lw_text_begin(&text, lwb_engine(L)); /* nothing below may raise until it is given back */
-    lw_status status = lw_json_write(entry->root, &text, &err);
-    if (status == LW_OK) {
-        flatten(text.bytes);
-        status = lw_append_line(lwb_engine(L), path, text.bytes, &err);
-    }
-    lw_text_end(&text);
-    lwb_check(L, status, &err);
-    if (!push_known(L, path, key)) /* read back, so that a run and a run that went on give the same */
-        return lwb_refuse(L, NULL, "job:once: %s can't be read back", path);
+    lw_text line;
+    lwb_journal_line(L, key, -1, &line);
+    lwb_journal_add(L, path, key, &line, "job:once");
     return 1;
 }

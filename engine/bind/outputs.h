@@ -30,6 +30,7 @@ int lwb_job_write_csv(lua_State *L);
 int lwb_job_check(lua_State *L);
 int lwb_job_progress(lua_State *L);
 int lwb_job_once(lua_State *L); /* journal.c */
+int lwb_job_each(lua_State *L); /* each.c */
 int lwb_job_run(lua_State *L);  /* run.c */
 
 /* SHA-256 of a file into hex; raises if it can't be read. */

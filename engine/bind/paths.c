@@ -56,6 +56,8 @@ void lwb_allow_write(lua_State *L, const char *path, const char *verb)
     const lwb_home *home = lwb_home_of(L);
     lw_error err = LW_ERROR_NONE;
     size_t n = strlen(home->out), n_fence = strlen(home->fence);
+    if (home->in_item > 0) /* it may run in a process of its own, beside others */
+        lwb_refuse(L, "let it return what is to be written", "%s: a function given to job:each can't write", verb);
     if (!home->confined) {
         char folder[LWB_PATH_MOST];
         if (n > 0 && strncmp(path, home->out, n) == 0 && path[n] == '/' && strlen(path) < sizeof folder) {

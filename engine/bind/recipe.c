@@ -133,7 +133,7 @@ static int end_after_help(lua_State *L)
 static void check_declaration(lua_State *L, int declared)
 {
     static const char *const keys[] = {"kind", "default", "help", "unit", "choices", "least", "most", NULL};
-    static const char *const taken[] = {"path", "write", "write_csv", "check", "progress", "run", "once",
+    static const char *const taken[] = {"path", "write", "write_csv", "check", "progress", "run", "once", "each",
                                         "title", "inputs", NULL};
     for (lua_pushnil(L); lua_next(L, declared); lua_pop(L, 1)) {
         if (lua_type(L, -2) != LUA_TSTRING)
@@ -314,6 +314,7 @@ static const luaL_Reg methods[] = {{"path", lwb_job_path},
                                    {"check", lwb_job_check},
                                    {"progress", lwb_job_progress},
                                    {"once", lwb_job_once},
+                                   {"each", lwb_job_each},
                                    {"run", lwb_job_run},
                                    {NULL, NULL}};
 static const luaL_Reg metamethods[] = {{"__index", at}, {"__tostring", show}, {NULL, NULL}};
