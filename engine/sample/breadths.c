@@ -3,6 +3,7 @@
 
 #include "numeric/voigt.h"
 #include "sample/positions.h"
+#include "sample/shared.h"
 
 #include <math.h>
 
@@ -235,24 +236,34 @@ static void start(const model_of *m, double p[2])
     }
 }
 
+/* Size is a power of p[0] and strain one of p[1]. */
+static double size_power(lw_form form)
+{
+    return form == LW_FORM_GAUSSIAN ? -0.5 : -1;
+}
+
+static double strain_power(lw_form form)
+{
+    return form == LW_FORM_LORENTZIAN ? 1 : 0.5;
+}
+
 /* Size and strain with limits where a parameter is below twice its uncertainty. */
 static void read_parameters(lw_breadth_fit *fit)
 {
     double u0 = sqrt(fit->covariance[0][0]), u1 = sqrt(fit->covariance[1][1]);
-    double size_power = fit->form == LW_FORM_GAUSSIAN ? -0.5 : -1;
-    double strain_power = fit->form == LW_FORM_LORENTZIAN ? 1 : 0.5;
+    double of_size = size_power(fit->form), of_strain = strain_power(fit->form);
     if (fit->p[0] > 2 * u0) {
-        double size = pow(fit->p[0], size_power);
-        fit->size_volume = lw_quantity_of(size, -size_power * size / fit->p[0] * u0, "nm");
+        double size = pow(fit->p[0], of_size);
+        fit->size_volume = lw_quantity_of(size, -of_size * size / fit->p[0] * u0, "nm");
     } else {
-        fit->size_volume = lw_lower_limit(pow(fmax(0, fit->p[0]) + ONE_SIDED * u0, size_power), 0.95, "nm");
+        fit->size_volume = lw_lower_limit(pow(fmax(0, fit->p[0]) + ONE_SIDED * u0, of_size), 0.95, "nm");
     }
     if (fit->p[1] > 2 * u1) {
-        double strain = pow(fit->p[1], strain_power);
-        fit->strain_apparent = lw_quantity_of(strain, strain_power * strain / fit->p[1] * u1, "");
+        double strain = pow(fit->p[1], of_strain);
+        fit->strain_apparent = lw_quantity_of(strain, of_strain * strain / fit->p[1] * u1, "");
     } else {
         fit->strain_apparent =
-            lw_upper_limit(pow(fmax(0, fit->p[1]) + ONE_SIDED * u1, strain_power), 0.95, "");
+            lw_upper_limit(pow(fmax(0, fit->p[1]) + ONE_SIDED * u1, of_strain), 0.95, "");
     }
 }
 
@@ -283,4 +294,23 @@ lw_status lw_breadths_fit(const lw_breadths *breadths, lw_form form, lw_arena *a
     fit->correlation = -fit->covariance[0][1] / sqrt(fit->covariance[0][0] * fit->covariance[1][1]);
     read_parameters(fit);
     return LW_OK;
+}
+
+lw_status lw_breadths_share(const lw_profiles *profiles, const lw_breadths *breadths, const lw_breadth_fit *fit,
+                            lw_arena *arena, lw_node *result, lw_error *err)
+{
+    size_t n = breadths->n, *row = lw_arena_take(arena, n, sizeof *row, err);
+    if (row == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < n; i++)
+        row[i] = breadths->profile[i]->at_breadth;
+    lw_quantity size = fit->size_volume, strain = fit->strain_apparent;
+    double of_size[2] = {size_power(fit->form) * size.value / fit->p[0], 0};
+    double of_strain[2] = {0, LW_RMS_PER_APPARENT * strain_power(fit->form) * strain.value / fit->p[1]};
+    lw_status status = LW_OK;
+    if (size.kind == LW_VALUE)
+        status = lw_shared_tell(profiles, "size_volume", &fit->fit, n, 2, of_size, row, NULL, arena, result, err);
+    if (status == LW_OK && strain.kind == LW_VALUE)
+        status = lw_shared_tell(profiles, "strain_rms", &fit->fit, n, 2, of_strain, row, NULL, arena, result, err);
+    return status;
 }

@@ -62,6 +62,10 @@ lw_status lw_breadths_fit(const lw_breadths *breadths, lw_form form, lw_arena *a
  * (2 d*) (Stokes & Wilson 1944 Proc. Phys. Soc. 56, 174). */
 #define LW_RMS_PER_APPARENT 0.79788456080286535588
 
+/* Leaves in a result how size_volume and strain_rms of a fit move with the breadths (sample/shared.h). */
+lw_status lw_breadths_share(const lw_profiles *profiles, const lw_breadths *breadths, const lw_breadth_fit *fit,
+                            lw_arena *arena, lw_node *result, lw_error *err);
+
 /* Adds size_volume, strain_apparent, strain_rms, their correlation and the statistics of the fit to a group.
  */
 void lw_breadths_tell(const lw_breadth_fit *fit, lw_node *group, lw_error *err);

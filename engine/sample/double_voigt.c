@@ -4,6 +4,7 @@
 #include "sample/generalised.h"
 #include "sample/method.h"
 #include "sample/reading.h"
+#include "sample/shared.h"
 
 #include "numeric/voigt.h"
 
@@ -52,6 +53,8 @@ typedef struct parts {
     size_t n;                /* lines */
     const lw_profile **line; /* [n] */
     double *y, *covariance;  /* [2n]: Lorentzian breadths, then squares of Gaussian ones; [2n][2n] */
+    double *scale;           /* [2n] slopes of y to the breadths */
+    size_t *row;             /* [2n] of the breadths in the profiles' covariance */
 } parts;
 
 static void model(void *user, const double *p, double *value, double *slopes, double *x_slope)
@@ -75,8 +78,8 @@ static lw_status gather(const lw_profiles *profiles, lw_arena *arena, parts *out
     *out = (parts){.line = lw_arena_take(arena, all, sizeof *out->line, err),
                    .y = lw_arena_take(arena, 2 * all, sizeof(double), err),
                    .covariance = lw_arena_take(arena, 4 * all * all, sizeof(double), err)};
-    double *scale = lw_arena_take(arena, 2 * all, sizeof *scale, err);
-    size_t *row = lw_arena_take(arena, 2 * all, sizeof *row, err);
+    double *scale = out->scale = lw_arena_take(arena, 2 * all, sizeof *scale, err);
+    size_t *row = out->row = lw_arena_take(arena, 2 * all, sizeof *row, err);
     if (err->status != LW_OK)
         return err->status;
     for (size_t i = 0; i < all; i++)
@@ -126,10 +129,9 @@ static double strain_square(const double *p, double length)
     return p[DG2] / (2 * PI) + p[DL] / (PI * PI * length);
 }
 
-/* Uncertainty of a function of the parameters by central differences of a thousandth of each u. */
-static double u_of(const lw_generalised_fit *fit, const double *p, double (*of)(const double *))
+/* Slopes of a function of the parameters by central differences of a thousandth of each u. */
+static void slopes_of(const lw_generalised_fit *fit, const double *p, double (*of)(const double *), double slope[PARAMETERS])
 {
-    double slope[PARAMETERS], var = 0;
     for (int i = 0; i < PARAMETERS; i++) {
         double up[PARAMETERS], down[PARAMETERS], step = 1e-3 * sqrt(fmax(fit->covariance[i][i], 0));
         for (int j = 0; j < PARAMETERS; j++)
@@ -138,10 +140,43 @@ static double u_of(const lw_generalised_fit *fit, const double *p, double (*of)(
         down[i] -= step;
         slope[i] = step > 0 ? (of(up) - of(down)) / (2 * step) : 0;
     }
+}
+
+static double u_of(const lw_generalised_fit *fit, const double *p, double (*of)(const double *))
+{
+    double slope[PARAMETERS], var = 0;
+    slopes_of(fit, p, of, slope);
     for (int i = 0; i < PARAMETERS; i++)
         for (int j = 0; j < PARAMETERS; j++)
             var += slope[i] * slope[j] * fit->covariance[i][j];
     return fit->scatter * sqrt(fmax(var, 0));
+}
+
+/* rms strain over half the volume-weighted size, which moves with the parameters too. */
+static double strain_at_half(const double *p)
+{
+    return sqrt(fmax(strain_square(p, size_volume(p) / 2), 0));
+}
+
+static lw_status share(const lw_profiles *profiles, const parts *m, const lw_generalised_fit *fit, const double *p,
+                       lw_arena *arena, lw_node *result, lw_error *err)
+{
+    static const struct {
+        const char *field;
+        double (*of)(const double *);
+    } told[] = {{"size_volume", size_volume}, {"size_area", size_area}, {"strain_rms", strain_at_half}};
+    for (size_t i = 0; i < sizeof told / sizeof *told; i++) {
+        const lw_node *node = lw_node_get(result, told[i].field);
+        double slope[PARAMETERS];
+        if (node == NULL || node->quantity.kind != LW_VALUE)
+            continue;
+        slopes_of(fit, p, told[i].of, slope);
+        lw_status status = lw_shared_tell(profiles, told[i].field, fit, 2 * m->n, PARAMETERS, slope, m->row, m->scale, arena,
+                                          result, err);
+        if (status != LW_OK)
+            return status;
+    }
+    return LW_OK;
 }
 
 static bool strain_at(const lw_generalised_fit *fit, const double *p, double length, double *value, double *u)
@@ -183,6 +218,8 @@ static void tell(const lw_generalised_fit *fit, const double *p, const lw_readin
                         err);
     double half = resolved ? volume / 2 : 10, value, u;
     bool strained = strain_at(fit, p, half, &value, &u);
+    if (strained && resolved)
+        u = u_of(fit, p, strain_at_half); /* half the size moves as well */
     lw_quantity rms = strained ? lw_quantity_of(value, u, "")
                                : lw_upper_limit(sqrt(fmax(value * value, 0) + ONE_SIDED * 2 * fmax(value, u) * u), 0.95, "");
     lw_readings_widen(readings, LW_READ_STRAIN, 0, &rms, result, err);
@@ -318,9 +355,10 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
     if (status == LW_OK) {
         lw_node *remarks = lw_add_list(result, "remarks", err);
         tell(&fit, p, &readings, result, remarks, err);
+        status = share(profiles, &m, &fit, p, arena, result, err);
         lw_readings_remark(result, remarks, err);
         draw(&m, &fit, p, arena, result, err);
-        status = err->status;
+        status = status != LW_OK ? status : err->status;
     }
     return status;
 }

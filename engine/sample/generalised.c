@@ -327,5 +327,18 @@ lw_status lw_generalised_solve(const lw_generalised *problem, lw_arena *arena, d
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < n; i++)
         fit->residual[i] = problem->y[i] - w.value[i];
+    /* dp = C J' W (dy), all whitened */
+    size_t m = problem->m;
+    fit->gain = lw_arena_take(arena, m * n, sizeof(double), err);
+    if (fit->gain == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t j = 0; j < m; j++)
+        for (size_t k = 0; k < w.rank; k++) {
+            double by_white = 0;
+            for (size_t l = 0; l < m; l++)
+                by_white += fit->covariance[j][l] * w.white_slopes[k * m + l];
+            for (size_t i = 0; i < n; i++)
+                fit->gain[j * n + i] += by_white * w.whiten[k * n + i];
+        }
     return LW_OK;
 }

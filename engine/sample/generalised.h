@@ -35,6 +35,7 @@ typedef struct lw_generalised_fit {
     double p;           /* probability of a chi2 this large by chance; 1 without degrees of freedom */
     double scatter;     /* sqrt(chi2/degrees) where above 1, else 1 (Birge 1932 Phys. Rev. 40, 207) */
     double *calculated; /* [n] in the arena */
+    double *gain;       /* [m*n] slopes of the parameters to the observations */
     double *residual;   /* [n] y - calculated */
     double *u;          /* [n] standard uncertainty of each observation, abscissa's part included */
     size_t iterations;

@@ -61,6 +61,8 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
         status = lw_breadths_fit(&breadths, LW_FORM_PARABOLIC, arena, &fit, err);
     if (status == LW_OK)
         status = lw_breadths_read(&breadths, arena, &readings, err);
+    if (status == LW_OK)
+        status = lw_breadths_share(profiles, &breadths, &fit, arena, result, err);
     if (status == LW_OK) {
         lw_readings_widen_fit(&readings, (double[2]){0, 0}, &fit, result, err);
         lw_breadths_tell(&fit, result, err);

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "sample/method.h"
+#include "sample/shared.h"
 
 #include <stdalign.h>
 #include <stdio.h>
@@ -25,6 +26,15 @@ const lw_method *lw_method_named(const char *name)
 
 lw_status lw_method_run(lw_engine *engine, const lw_method *method, const lw_profiles *profiles,
                         const void *options, lw_node *result, lw_error *err)
+{
+    lw_status status = lw_method_run_sharing(engine, method, profiles, options, result, err);
+    if (status == LW_OK)
+        lw_shared_forget(result);
+    return status;
+}
+
+lw_status lw_method_run_sharing(lw_engine *engine, const lw_method *method, const lw_profiles *profiles,
+                                const void *options, lw_node *result, lw_error *err)
 {
     lw_error own = LW_ERROR_NONE;
     if (err == NULL)

@@ -29,6 +29,10 @@ const lw_method *lw_method_named(const char *name);
 lw_status lw_method_run(lw_engine *engine, const lw_method *method, const lw_profiles *profiles, const void *options,
                         lw_node *result, lw_error *err);
 
+/* The same, and what it shares with other methods stays in the result (sample/shared.h). */
+lw_status lw_method_run_sharing(lw_engine *engine, const lw_method *method, const lw_profiles *profiles, const void *options,
+                                lw_node *result, lw_error *err);
+
 /* Runs the named methods (n_names 0 = every one that applies) into the tree `results`:
  * lines (list), methods (group: one child a method, or {not_applied = reason}), lattice, agreement, notes. */
 lw_status lw_separate(lw_engine *engine, const lw_profiles *profiles, const char *const *names, size_t n_names,

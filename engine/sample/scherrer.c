@@ -5,6 +5,7 @@
 #include "physics/scherrer.h"
 #include "sample/breadths.h"
 #include "sample/method.h"
+#include "sample/shared.h"
 
 #include <math.h>
 #include <stddef.h>
@@ -208,6 +209,17 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *o
     if (status != LW_OK)
         return status;
     double u = sqrt(fit.covariance[0][0]) * fit.scatter;
+    if (given->breadth == INTEGRAL && shape == LW_SHAPE_COLUMN && p[0] > 2 * u) {
+        size_t *row = lw_arena_take(arena, breadths.n, sizeof *row, err);
+        if (row == NULL)
+            return LW_OUT_OF_MEMORY;
+        for (size_t i = 0; i < breadths.n; i++)
+            row[i] = breadths.profile[i]->at_breadth;
+        status = lw_shared_tell(profiles, "size_volume", &fit, breadths.n, 1, (double[1]){-1 / (p[0] * p[0])}, row, NULL, arena,
+                                result, err);
+        if (status != LW_OK)
+            return status;
+    }
     lw_add_quantity(result, shape == LW_SHAPE_COLUMN ? "size_volume" : "size",
                     size_of(p[0], u, p[0] > 2 * u, 1), size_definition(given), err);
     lw_add_text(result, "shape", shape_choices[given->shape], err);

@@ -4,6 +4,7 @@
 #include "sample/method.h"
 #include "sample/notes.h"
 #include "sample/scherrer.h"
+#include "sample/shared.h"
 
 #include <stdio.h>
 #include <string.h>
@@ -51,7 +52,7 @@ static lw_status run_or_say(lw_engine *engine, const lw_method *method, const lw
     lw_node *node = lw_add_group(group, method->name, err);
     if (node == NULL)
         return err->status;
-    lw_status status = lw_method_run(engine, method, profiles, NULL, node, &each);
+    lw_status status = lw_method_run_sharing(engine, method, profiles, NULL, node, &each);
     if (status == LW_OK)
         return LW_OK;
     if (status != LW_NOT_SUPPORTED && status != LW_NO_CONVERGENCE && status != LW_OUT_OF_RANGE) {
@@ -128,7 +129,9 @@ lw_status lw_separate(lw_engine *engine, const lw_profiles *profiles, const char
     if (status != LW_OK)
         return status;
     const lw_node *methods = lw_node_get(results, "methods");
-    lw_agreement(methods, results, err);
+    lw_agreement(profiles, methods, results, err);
+    for (lw_node *method = methods->first; method != NULL; method = method->next)
+        lw_shared_forget(method);
     lw_notes(profiles, methods, results, err);
     lw_engine_progress(engine, "size and strain", 1);
     return err->status;

@@ -189,6 +189,9 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *o
     if (status != LW_OK)
         return status;
     lw_readings_widen_fit(&readings, (double[2]){size_spread, strain_spread}, &lead, result, err);
+    status = lw_breadths_share(profiles, &breadths, &lead, arena, result, err);
+    if (status != LW_OK)
+        return status;
     lw_breadths_tell(&lead, result, err);
     lw_add_text(result, "form", lw_form_name[best], err);
     tell_model(&lead.strain_apparent, given->model, mean, result, err);

@@ -1,7 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* All methods side by side: the fields of a record, what they agree on, notes, refused memory and names. */
 #include "check.h"
+#include "numeric/random.h"
 #include "published/by_hand.h"
+#include "sample/agreement.h"
+#include "sample/shared.h"
 
 #include <stdlib.h>
 
@@ -114,6 +117,113 @@ static void agreement(lw_engine *engine)
     lw_arena_end(&arena);
 }
 
+/* Methods that read the same breadths move together: how each of their answers moves with each breadth or part is told as
+ * its slope, times the factor on u for scatter, and here compared with what really happens when one is changed. */
+static void together(lw_engine *engine)
+{
+    static const char *const names[] = {"scherrer", "williamson_hall", "halder_wagner", "single_line_voigt", "double_voigt"};
+    static const char *const fields[] = {"size_volume", "strain_rms", "size_area"};
+    enum { METHODS = 5, FIELDS = 3, ROWS = 15 };
+    const double u = 2e-4, step = 1e-7;
+    int compared = 0;
+    lw_arena arena;
+    lw_error err = LW_ERROR_NONE;
+    lw_arena_begin(&arena, engine);
+    for (int m = 0; m < METHODS; m++) {
+        const void *options = m == 1 ? (int[2]){2, 0} : NULL; /* one form, so that another can't come to lead */
+        const lw_method *method = lw_method_named(names[m]);
+        make(25, 0.002, u);
+        lw_node *base = lw_tree_new(&arena, &err), *own = lw_tree_new(&arena, &err);
+        CHECK(lw_method_run_sharing(engine, method, &h.profiles, options, base, &err) == LW_OK);
+        CHECK(lw_method_run(engine, method, &h.profiles, options, own, &err) == LW_OK);
+        CHECK(lw_node_get(base, "sensitivity") != NULL && lw_node_get(own, "sensitivity") == NULL);
+        double scatter = lw_node_number(base, "scatter_factor", 1), slope[FIELDS][ROWS] = {{0}};
+        for (int row = 0; row < ROWS; row++)
+            for (int sign = -1; sign <= 1; sign += 2) {
+                make(25, 0.002, u);
+                lw_profile *profile = &h.profile[row / 3];
+                lw_quantity *part[3] = {&profile->gauss_s, &profile->lorentz_s, &profile->breadth_s};
+                part[row % 3]->value += sign * step;
+                lw_node *moved = lw_tree_new(&arena, &err);
+                CHECK(lw_method_run(engine, method, &h.profiles, options, moved, &err) == LW_OK);
+                for (int f = 0; f < FIELDS; f++)
+                    slope[f][row] += sign * hand_quantity(moved, fields[f], NULL, NULL).value / (2 * step);
+            }
+        for (int f = 0; f < FIELDS; f++) {
+            const lw_node *told = lw_node_get(lw_node_get(base, "sensitivity"), fields[f]);
+            CHECK((told != NULL) == (hand_quantity(base, fields[f], NULL, NULL).kind == LW_VALUE &&
+                                     isfinite(hand_quantity(base, fields[f], NULL, NULL).value)));
+            double largest = 0;
+            for (int row = 0; told != NULL && row < ROWS; row++)
+                largest = fmax(largest, fabs(told->vector[row]));
+            for (int row = 0; told != NULL && row < ROWS; row++) {
+                CHECK_NEAR(scatter * slope[f][row] / largest, told->vector[row] / largest, 2e-3);
+                compared++;
+            }
+        }
+    }
+    CHECK(compared == ROWS * (5 + 4 + 1));
+    lw_arena_end(&arena);
+}
+
+/* Reasons: what the results show comes before what is known of the methods. */
+static void reasons(lw_engine *engine)
+{
+    lw_arena arena;
+    lw_error err = LW_ERROR_NONE;
+    lw_arena_begin(&arena, engine);
+    make(25, 0.002, 2e-4);
+    lw_node *methods = lw_tree_new(&arena, &err);
+    static const char *const names[] = {"scherrer", "warren_averbach", "whole_pattern", "variance", "halder_wagner"};
+    lw_node *node[5], *remarks = NULL;
+    for (int i = 0; i < 5; i++) {
+        node[i] = lw_add_group(methods, names[i], &err);
+        lw_add_quantity(node[i], "size_area", lw_quantity_of(10 + 5 * i, 0.1, "nm"), "", &err);
+        lw_add_quantity(node[i], "size_volume", lw_quantity_of(10 + 5 * i, 0.1, "nm"), "", &err);
+        remarks = lw_add_list(node[i], "remarks", &err);
+    }
+    lw_add_quantity(node[4], "strain_rms", lw_upper_limit(1e-4, 0.95, ""), "", &err);
+    lw_add_quantity(node[2], "strain_rms", lw_quantity_of(1e-3, 1e-5, ""), "", &err);
+    const lw_profiles *p = &h.profiles;
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "size_area", node[1], node[2]), "orders of one direction");
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "size_area", node[1], node[4]), "truncation");
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "size_area", node[3], node[2]), "background");
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "strain_rms", node[2], node[4]), "limit");
+    lw_add_text(remarks, NULL, "the 2 orders of direction 100 lie above the line: breadths depend on direction", &err);
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "size_area", node[1], node[2]), "depend on direction");
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "size_volume", node[0], node[2]), "all breadth as size");
+    h.profiles.n = 2;
+    CHECK_CONTAINS(lw_agreement_reason(p, methods, "size_area", node[1], node[2]), "fewer than three");
+
+    /* pulls: independent where nothing is told, and with the covariance where it is */
+    lw_node *results = lw_tree_new(&arena, &err);
+    lw_agreement(p, methods, results, &err);
+    const lw_node *pair = lw_node_at(lw_node_get(lw_node_get(lw_node_get(results, "agreement"), "size_area"), "pairs"), 0);
+    CHECK_RELATIVE(lw_node_number(pair, "pull", 0), -5 / hypot(0.1, 0.1), 1e-12);
+    CHECK(lw_node_get(pair, "correlation") == NULL);
+    double slopes[15] = {0};
+    lw_profiles three = h.profiles;
+    three.n_covariance = 3;
+    double covariance[9] = {0.01, 0, 0, 0, 1, 0, 0, 0, 1};
+    three.covariance = covariance;
+    slopes[0] = 1; /* both follow the first row, whose u is 0.1 */
+    for (int i = 0; i < 2; i++)
+        lw_add_vector(lw_add_group(node[i], "sensitivity", &err), "size_area", slopes, 3, "", &err);
+    results = lw_tree_new(&arena, &err);
+    lw_node *twice = lw_add_group(methods, "again", &err);
+    lw_add_quantity(twice, "size_area", lw_quantity_of(10.05, 0.2, "nm"), "", &err);
+    slopes[0] = 0.5;
+    lw_add_vector(lw_add_group(twice, "sensitivity", &err), "size_area", slopes, 3, "", &err);
+    lw_agreement(&three, methods, results, &err);
+    const lw_node *pairs = lw_node_get(lw_node_get(lw_node_get(results, "agreement"), "size_area"), "pairs");
+    for (pair = pairs->first; pair != NULL; pair = pair->next)
+        if (strcmp(lw_node_text(pair, "first", ""), "scherrer") == 0 && strcmp(lw_node_text(pair, "second", ""), "again") == 0) {
+            CHECK_RELATIVE(lw_node_number(pair, "correlation", 0), 0.5 * 0.01 / (0.1 * 0.2), 1e-12);
+            CHECK_RELATIVE(lw_node_number(pair, "pull", 0), -0.05 / sqrt(0.01 + 0.04 - 2 * 0.005), 1e-12);
+        }
+    lw_arena_end(&arena);
+}
+
 /* Memory that refuses the n-th request: every n must end in a clean error until all is granted. */
 typedef struct refusing {
     long left;
@@ -187,6 +297,8 @@ int main(void)
     lw_engine_begin(&engine);
     fields(&engine);
     agreement(&engine);
+    together(&engine);
+    reasons(&engine);
     refused_memory();
     cancelled(&engine);
     lw_engine_end(&engine);
