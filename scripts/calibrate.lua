@@ -1,12 +1,14 @@
 -- SPDX-License-Identifier: GPL-3.0-or-later
--- Calibrates a diffractometer from the scan of a reference material.
+-- Calibrates a diffractometer from scans of one or more reference materials.
 local lw = require "linewright"
 
 local job = lw.recipe {
   title  = "Calibration of a diffractometer",
   inputs = {
-    scan      = { kind = "file", help = "scan of the reference material" },
-    standard  = { kind = "name", help = "reference material: a name from standards/reference, or a file" },
+    scan      = { kind = "glob", help = "scan of the reference material; several of one state of the instrument: "
+                  .. "a.xy,b.xy or a pattern" },
+    standard  = { kind = "list", help = "reference material: a name from standards/reference, or a file; one for all "
+                  .. "scans, or one for each, with commas between" },
     radiation = { kind = "name", help = "Cu Ka, Co Ka ...; or a wavelength, 0.05168nm" },
     previous  = { kind = "file", default = "", help = "calibration.json of the time before, to compare with" },
     geometry  = { kind = "text", default = "auto", choices = { "auto", "reflection", "capillary" },
@@ -20,27 +22,38 @@ local job = lw.recipe {
   },
 }
 
--- The scan, and where the certificate puts the lines.
-local standard = lw.standard(job.standard)
-local scan     = lw.read_scan(job.scan, { radiation = job.radiation, noise = job.noise })
-local lines    = standard:reflections(scan)
+if #job.standard ~= 1 and #job.standard ~= #job.scan then
+  error(("%d scans and %d standards: give one standard for all scans, or one for each"):format(
+    #job.scan, #job.standard))
+end
 
--- All lines at once, their widths smooth functions of the angle. A tube's divergent beam needs the axial
--- divergence of both beams; the parallel beam of a storage ring only that of the diffracted one.
-local capillary = job.geometry == "capillary" or (job.geometry == "auto" and scan.radiation.is_plain)
-local fitted = lw.fit_lines(scan, lines, {
-  widths    = "smooth",
-  axial     = capillary and "finger_cox_jephcoat" or "soller",
-  polarised = capillary and 0.05 or 0.5,
-})
--- Each line by itself as well: these widths show whether the smooth functions do the instrument justice.
-local single = lw.fit_lines(scan, lines, {
-  widths    = "free",
-  axial     = capillary and "finger_cox_jephcoat" or "soller",
-  polarised = capillary and 0.05 or 0.5,
-})
-local instrument = lw.calibrate(fitted, standard, {
-  geometry          = capillary and "capillary" or "reflection",
+-- A scan, and where the certificate puts the lines. All lines at once, their widths smooth functions of the angle;
+-- each line by itself as well: these widths show whether the smooth functions do the instrument justice. A tube's
+-- divergent beam needs the axial divergence of both beams; the parallel beam of a storage ring only that of the
+-- diffracted one.
+local function measure(path, name)
+  local standard = lw.standard(name)
+  local scan     = lw.read_scan(path, { radiation = job.radiation, noise = job.noise })
+  local lines    = standard:reflections(scan)
+  local capillary = job.geometry == "capillary" or (job.geometry == "auto" and scan.radiation.is_plain)
+  local function fit(widths)
+    return lw.fit_lines(scan, lines, {
+      widths    = widths,
+      axial     = capillary and "finger_cox_jephcoat" or "soller",
+      polarised = capillary and 0.05 or 0.5,
+    })
+  end
+  return { scan = scan, standard = standard, capillary = capillary, fitted = fit "smooth", single = fit "free" }
+end
+
+local measured, pairs_of = {}, {}
+for i, path in ipairs(job.scan) do
+  local m = measure(path, job.standard[i] or job.standard[1])
+  measured[i], pairs_of[i] = m, { m.fitted, m.standard }
+end
+local scan = measured[1].scan
+local instrument = lw.calibrate(pairs_of, {
+  geometry          = measured[1].capillary and "capillary" or "reflection",
   goniometer_radius = job.radius or nil,
   profile           = job.profile,
 })
@@ -82,40 +95,52 @@ for angle = instrument.valid_two_theta[1], instrument.valid_two_theta[2], 1.5 do
   curve.x[n], curve.fwhm[n] = angle, fwhm.value
   curve.low[n], curve.high[n] = fwhm.value - 2 * fwhm.u, fwhm.value + 2 * fwhm.u
 end
-local points = { x = {}, fwhm = {} }
-for _, line in ipairs(single) do
-  if line.supported and line.fwhm.u < 0.5 * line.fwhm.value then
-    points.x[#points.x + 1], points.fwhm[#points.fwhm + 1] = line.two_theta.value, line.fwhm
-  end
+-- "single lines", and with several scans whose
+local function whose(what, i)
+  return #measured == 1 and what or ("%s, %s"):format(what, measured[i].standard.title)
 end
-local residuals = { x = {}, before = {}, after = {} }
-for i, line in ipairs(instrument.record.lines) do
-  residuals.x[i], residuals.before[i], residuals.after[i] = line.two_theta.value, line.difference, line.residual
+local width_series = {
+  { kind = "band", label = "2 u", x = curve.x, y = curve.low, high = curve.high },
+  { kind = "line", label = "smooth function", x = curve.x, y = curve.fwhm },
+}
+local position_series = {}
+for i, m in ipairs(measured) do
+  local x, fwhm, place, before, after = {}, {}, {}, {}, {}
+  for _, line in ipairs(m.single) do
+    if line.supported and line.fwhm.u < 0.5 * line.fwhm.value then
+      x[#x + 1], fwhm[#fwhm + 1] = line.two_theta.value, line.fwhm
+    end
+  end
+  for k, line in ipairs(#measured == 1 and instrument.record.lines or instrument.record.scans[i].lines) do
+    place[k], before[k], after[k] = line.two_theta.value, line.difference, line.residual
+  end
+  width_series[#width_series + 1] = { kind = "points", label = whose("single lines", i), x = x, y = fwhm }
+  local n = #position_series
+  position_series[n + 1] = { kind = "points", label = whose("as observed", i), x = place, y = before }
+  position_series[n + 2] = { kind = "points", label = whose("after the aberrations", i), x = place, y = after }
 end
 local widths_figure = lw.figure {
   name = "instrument_width", title = "Width of the instrument at one wavelength",
   caption = "FWHM without the spectrum's share: smooth function with its band (2 u), and every line fitted by itself.",
   x = { label = "2theta", unit = "deg" }, y = { label = "FWHM", unit = "deg" },
-  series = {
-    { kind = "band", label = "2 u", x = curve.x, y = curve.low, high = curve.high },
-    { kind = "line", label = "smooth function", x = curve.x, y = curve.fwhm },
-    { kind = "points", label = "single lines", x = points.x, y = points.fwhm },
-  },
+  series = width_series,
 }
 local positions_figure = lw.figure {
   name = "positions", title = "Observed minus certified position",
   caption = "As observed, and after the fitted aberrations; error bars contain the certificate's uncertainty.",
   x = { label = "2theta", unit = "deg" }, y = { label = "observed - certified", unit = "deg" },
-  series = {
-    { kind = "points", label = "as observed", x = residuals.x, y = residuals.before },
-    { kind = "points", label = "after the aberrations", x = residuals.x, y = residuals.after },
-  },
+  series = position_series,
 }
+
+local titles = {}
+for i, m in ipairs(measured) do
+  titles[i] = m.standard.title
+end
 
 -- The report opens with what protects people.
 local items = {
   title = "Calibration of a diffractometer",
-  subtitle = ("%s, %s"):format(standard.title, scan.radiation.name),
+  subtitle = ("%s, %s"):format(table.concat(titles, " and "), scan.radiation.name),
   { caution = "After work on a tube, shutter or housing the interlocks, warning lights and leakage are checked and "
       .. "released by the licensed radiation-safety officer before the shutter is opened. Local rules come first; a "
       .. "good calibration says nothing about the safety of the beam.", title = "X-rays after maintenance" },
@@ -123,14 +148,40 @@ local items = {
   { brief = instrument },
   widths_figure, positions_figure,
 }
+if #measured > 1 then
+  local rows = {}
+  for i, s in ipairs(instrument.record.scans) do
+    rows[i] = {
+      scan = s.file, standard = s.standard.name, used_for = s.used_for, positions_rms_deg = s.fit.position_rms_deg,
+      displacement = s:get "aberrations.displacement", transparency = s:get "aberrations.transparency",
+      attenuation = s:get "attenuation",
+    }
+  end
+  items[#items + 1] = { heading = "Scans in this calibration" }
+  items[#items + 1] = {
+    table = rows,
+    columns = { "scan", "standard", "used_for", "displacement", "transparency", "attenuation", "positions_rms_deg" },
+    caption = "Zero shift and profile are shared; displacement and transparency are each specimen's",
+  }
+  items[#items + 1] = { details = lw.result { join = instrument.record.join } }
+end
+if #instrument.record.off_certificate > 0 then
+  items[#items + 1] = { heading = "Lines off the certificate" }
+  items[#items + 1] = {
+    table = instrument.record.off_certificate:table(), columns = { "hkl", "standard", "residual", "pull", "why" },
+    caption = "Farther than 3 u from their certified places after the aberrations, and why that may be",
+  }
+end
 if changes then
   items[#items + 1] = { heading = "Since the time before" }
   items[#items + 1] = { table = changes, columns = { "quantity", "before", "after", "difference", "in_units_of_u" },
                         caption = "Before, after, and the difference in units of its u" }
 end
 items[#items + 1] = { heading = "Fit and record" }
-items[#items + 1] = { brief = fitted }
-items[#items + 1] = { details = fitted }
+for _, m in ipairs(measured) do
+  items[#items + 1] = { brief = m.fitted }
+  items[#items + 1] = { details = m.fitted }
+end
 items[#items + 1] = { details = instrument }
 job:write(instrument) -- before the figures, which take the longest
 job:write(lw.report(items))

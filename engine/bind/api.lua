@@ -210,9 +210,14 @@ local functions = {
       p("reflections", "reflections", "or a material or standard: all its reflections within the scan") },
     "lines"),
   calibrate = entry("lw.calibrate(lines, standard, { ... })",
-    "Aberrations and profile of the instrument from the lines of a standard.",
-    { p("lines", "lines", "of the standard, fitted without an instrument"),
-      p("standard", "standard", "or its name") }, "calibration"),
+    "Aberrations and profile of the instrument from the lines of a standard; or of several scans of standards on one "
+      .. "state of it: lw.calibrate({ { lines, standard }, { lines, standard, attenuation =, positions_only = } }, "
+      .. "{ ... }). What scans share is joined, displacement and transparency are each scan's own; aberrations, "
+      .. "standard and lines of the record are the first scan's, scans has all.",
+    { p("lines", "lines", "of the standard, fitted without an instrument; or the list of scans"),
+      p("standard", "standard", "or its name; with a list of scans the options stand here") }, "calibration",
+    "joined by generalised least squares: Aitken (1935) Proc. R. Soc. Edinburgh 55, 42; contradictions: Birge (1932) "
+      .. "Phys. Rev. 40, 207"),
   load_calibration = entry("lw.load_calibration(path)", "Reads a calibration's record.",
     { p("path", "text", "calibration.json") }, "calibration"),
   history = entry("lw.history({ { calibration =, label =, after_service = }, ... }, { ... })",
@@ -242,8 +247,8 @@ local functions = {
   recipe = entry("lw.recipe { title =, inputs = { ... } }",
     "Declares what a recipe wants, reads it from name=value arguments, and gives the job.",
     { p("title", "text", "what the recipe does"),
-      p("inputs", "table", "by name: kind (file, name, text, number, list, folder, flag, glob), default (\"\" = may "
-        .. "be left out, then false), help, unit, choices, least, most") }, "recipe"),
+      p("inputs", "table", "by name: kind (file, name, text, number, list, folder, flag, glob: files or patterns), "
+        .. "default (\"\" = may be left out, then false), help, unit, choices, least, most") }, "recipe"),
   help = entry("lw.help(name)", "What a function, method or noun does.",
     { p("name", "text", "as it is called, or an object; nothing: the list") }, "text"),
   api = entry("lw.api()", "This description as a table, for tools.", {}, "table"),

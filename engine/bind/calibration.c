@@ -12,6 +12,7 @@
 #include "record/file.h"
 #include "record/json.h"
 
+#include <math.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -35,29 +36,96 @@ static void keep_record(lua_State *L, const lw_calibration *calibration)
     lua_setiuservalue(L, -2, LWB_CALIBRATION_TREE);
 }
 
+/* The standard at an index, made of its name if it is one; what is there afterwards keeps it alive. */
+static const lw_standard *standard_at(lua_State *L, int index)
+{
+    if (lua_type(L, index) == LUA_TSTRING) {
+        lua_pushcfunction(L, lwb_standard_noun.functions[0].func);
+        lua_pushvalue(L, index);
+        lua_call(L, 1, 1);
+        lua_replace(L, index);
+    }
+    return lwb_self(L, index, &lwb_standard_noun, "calibrate");
+}
+
+/* Entry `at` of the list of scans at index 1, into the list of lines at `lines` and of standards at `standards`. */
+static void read_entry(lua_State *L, lua_Integer at, int lines, int standards, lw_calibration_scan *scan)
+{
+    static const char *const keys[] = {"attenuation", "positions_only", NULL};
+    lua_rawgeti(L, 1, at);
+    int entry = lua_gettop(L);
+    lwb_want_table(L, entry, "calibrate", "a scan, { lines, standard },");
+    lua_createtable(L, 0, 2); /* the named fields alone, for their check */
+    for (lua_pushnil(L); lua_next(L, entry) != 0; lua_pop(L, 1))
+        if (!lua_isinteger(L, -2) || lua_tointeger(L, -2) < 1 || lua_tointeger(L, -2) > 2) {
+            lua_pushvalue(L, -2);
+            lua_pushvalue(L, -2);
+            lua_rawset(L, entry + 1);
+        }
+    lwb_only_keys(L, entry + 1, "calibrate", keys);
+    scan->attenuation_per_mm = lwb_field_number(L, entry + 1, "attenuation", "calibrate", NAN);
+    scan->positions_only = lwb_field_flag(L, entry + 1, "positions_only", "calibrate", false);
+    if (scan->attenuation_per_mm < 0)
+        lwb_refuse(L, "give 1/mm, 0 for a specimen that is not transparent", "calibrate: the attenuation of scan %d is negative",
+                   (int)at);
+    lua_rawgeti(L, entry, 1);
+    scan->lines = lwb_object(L, -1, &lwb_lines_noun, "calibrate");
+    lua_rawseti(L, lines, at);
+    lua_rawgeti(L, entry, 2);
+    if (lua_isnil(L, -1))
+        lwb_refuse(L, "calibrate({ { lines, standard }, { lines, standard } }, { ... })",
+                   "calibrate: scan %d has no standard", (int)at);
+    scan->standard = standard_at(L, lua_gettop(L));
+    lua_rawseti(L, standards, at);
+    lua_settop(L, entry - 1);
+}
+
+/* lw.calibrate(lines, standard, options), or lw.calibrate({ { lines, standard }, ... }, options). */
 static int calibrate(lua_State *L)
 {
     lw_error err = LW_ERROR_NONE;
     lua_settop(L, 3);
-    luaL_checkstack(L, 40, NULL);
-    const lw_lines *lines = lwb_object(L, 1, &lwb_lines_noun, "calibrate");
-    if (lua_type(L, 2) == LUA_TSTRING) {
-        lua_pushcfunction(L, lwb_standard_noun.functions[0].func);
-        lua_pushvalue(L, 2);
-        lua_call(L, 1, 1);
-        lua_replace(L, 2);
+    luaL_checkstack(L, 60, NULL);
+    lw_calibration_scan scan[LW_SET_MOST];
+    size_t n = 1;
+    int lines = 1, standards = 2;
+    bool many = lua_istable(L, 1);
+    if (many) {
+        if (!lua_isnil(L, 3))
+            return lwb_refuse(L, "calibrate({ { lines, standard }, { lines, standard } }, { ... })",
+                              "calibrate: a list of scans brings its standards, the options come second");
+        n = lua_rawlen(L, 1);
+        if (n == 0 || n > LW_SET_MOST)
+            return lwb_refuse(L, "give { lines, standard } for each scan", "calibrate: %d scans; 1 to %d can be joined", (int)n,
+                              LW_SET_MOST);
+        lua_insert(L, 2);
+        lua_settop(L, 3); /* list, nil, options */
+        lua_createtable(L, (int)n, 0);
+        lua_createtable(L, (int)n, 0);
+        lines = 4, standards = 5;
+        for (size_t i = 0; i < n; i++)
+            read_entry(L, (lua_Integer)i + 1, lines, standards, &scan[i]);
+    } else {
+        scan[0] = (lw_calibration_scan){.attenuation_per_mm = NAN};
+        scan[0].lines = lwb_object(L, 1, &lwb_lines_noun, "calibrate");
+        scan[0].standard = standard_at(L, 2);
     }
-    const lw_standard *standard = lwb_self(L, 2, &lwb_standard_noun, "calibrate");
     lw_calibrate_options options = lw_calibrate_defaults();
     lwb_options(L, 3, "calibrate", lw_calibrate_option_table, NULL, &options);
     lwb_box *box = lwb_new_box(L, &lwb_calibration_noun, LWB_CALIBRATION_VALUES);
-    lua_pushvalue(L, 1);
-    lua_setiuservalue(L, -2, LWB_CALIBRATION_LINES);
-    lua_pushvalue(L, 2);
+    if (many) { /* the first stands for all on the road; the lists keep the others alive */
+        lua_rawgeti(L, lines, 1);
+        lua_setiuservalue(L, -2, LWB_CALIBRATION_LINES);
+        lua_rawgeti(L, standards, 1);
+    } else {
+        lua_pushvalue(L, lines);
+        lua_setiuservalue(L, -2, LWB_CALIBRATION_LINES);
+        lua_pushvalue(L, standards);
+    }
     lua_setiuservalue(L, -2, LWB_CALIBRATION_STANDARD);
     lwb_keep_options(L, -1, LWB_CALIBRATION_OPTIONS, "calibrate", lw_calibrate_option_table, &options);
     lw_calibration *calibration = NULL;
-    lw_status status = lw_calibrate(lwb_engine(L), lines, standard, &options, &calibration, &err);
+    lw_status status = lw_calibrate_set(lwb_engine(L), scan, n, &options, &calibration, &err);
     box->object = calibration;
     lwb_check(L, status, &err);
     keep_record(L, calibration);

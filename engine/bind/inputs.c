@@ -169,10 +169,19 @@ static void push_list(lua_State *L, const char *text)
     }
 }
 
-/* Paths that fit, sorted; glob's memory is copied into the arena before any Lua call. */
-static void push_glob(lua_State *L, const char *name, const char *pattern)
+/* Adds the paths that fit a pattern, sorted, to the list on top; glob's memory is copied into the arena before any Lua
+ * call. What is a file, or has nothing of a pattern, is taken as it stands. */
+static void add_fitting(lua_State *L, const char *name, const char *pattern)
 {
     lw_error err = LW_ERROR_NONE;
+    struct stat info;
+    int list = lua_gettop(L);
+    lua_Integer there = (lua_Integer)lua_rawlen(L, list);
+    if (stat(pattern, &info) == 0 || strpbrk(pattern, "*?[") == NULL) {
+        lua_pushstring(L, pattern);
+        lua_rawseti(L, list, there + 1);
+        return;
+    }
     lw_arena *arena = lwb_scratch(L);
     glob_t found = {0};
     int status = glob(pattern, 0, NULL, &found);
@@ -186,12 +195,35 @@ static void push_glob(lua_State *L, const char *name, const char *pattern)
         lwb_refuse(L, "check the pattern, and put it in quotes", "input '%s': no file fits '%.200s'", name, pattern);
     if (n > INPUT_FILES_MOST)
         lwb_refuse(L, "choose fewer", "input '%s': %zu files fit, at most %d are taken", name, n, INPUT_FILES_MOST);
-    lua_createtable(L, (int)n, 0);
     for (size_t i = 0; i < n; i++) {
         lua_pushstring(L, paths[i]);
-        lua_rawseti(L, -2, (lua_Integer)i + 1);
+        lua_rawseti(L, list, there + (lua_Integer)i + 1);
+    }
+    lua_settop(L, list);
+}
+
+/* A pattern, a file, or several of them with commas between. */
+static void push_glob(lua_State *L, const char *name, const char *text)
+{
+    struct stat info;
+    if (stat(text, &info) == 0 || strchr(text, ',') == NULL) {
+        lua_newtable(L);
+        add_fitting(L, name, text);
+        return;
+    }
+    push_list(L, text);
+    lua_newtable(L);
+    for (lua_Integer i = 1; i <= (lua_Integer)lua_rawlen(L, -2); i++) {
+        lua_rawgeti(L, -2, i);
+        lua_pushvalue(L, -2);
+        add_fitting(L, name, lua_tostring(L, -2)); /* the list keeps the text alive */
+        lua_pop(L, 2);
     }
     lua_remove(L, -2);
+    if (lua_rawlen(L, -1) == 0)
+        lwb_refuse(L, "give a file or a pattern", "input '%s' is empty", name);
+    if (lua_rawlen(L, -1) > INPUT_FILES_MOST)
+        lwb_refuse(L, "choose fewer", "input '%s': more than %d files", name, INPUT_FILES_MOST);
 }
 
 static void check_choice(lua_State *L, const char *name, const char *text, int declaration)

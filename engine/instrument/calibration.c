@@ -55,14 +55,17 @@ lw_calibrate_options lw_calibrate_defaults(void)
                                   .soller_rad = NAN, .attenuation_per_mm = NAN, .thickness_mm = NAN, .tilt_deg = NAN};
 }
 
-/* "goniometer radius 217.5 mm" in the comments at the top of a scan; 0 if it is not said. */
-static double radius_in_header(const char *header)
+double lw__goniometer_radius(const lw_calibrate_options *options, const lw_scan *scan, const char **from)
 {
-    const char *at = header ? strstr(header, "goniometer radius") : NULL;
-    if (at == NULL)
-        return 0;
-    double radius = strtod(at + strlen("goniometer radius"), NULL);
-    return radius > 10 && radius < 2000 ? radius : 0;
+    *from = "given";
+    if (options->goniometer_radius_mm > 0)
+        return options->goniometer_radius_mm;
+    double radius = lw__in_header(scan->header, "goniometer radius", 0); /* "goniometer radius 217.5 mm" */
+    *from = "scan header";
+    if (radius > 10 && radius < 2000)
+        return radius;
+    *from = "assumed: neither given nor in the scan's header";
+    return 200;
 }
 
 /* Sets of aberrations to try, the first with all; evidence decides between them. Zero shift and displacement (or the
@@ -72,6 +75,12 @@ typedef struct candidates {
     const char *const *names[4];
 } candidates;
 
+bool lw__wide_range(const lw_lines *lines)
+{
+    /* a short range can't tell four smooth functions of angle apart */
+    return lines->n >= 10 && lines->line[lines->n - 1].two_theta.value - lines->line[0].two_theta.value > 80;
+}
+
 /* With the optical profile the flat specimen is in the profile already. */
 static candidates candidates_for(const lw_lines *lines, bool capillary, bool optical)
 {
@@ -80,8 +89,7 @@ static candidates candidates_for(const lw_lines *lines, bool capillary, bool opt
     static const char *const deep[] = {"zero_shift", "displacement", "transparency", NULL};
     static const char *const few[] = {"zero_shift", "displacement", NULL};
     static const char *const transmission[] = {"zero_shift", "wavelength", NULL};
-    /* a short range can't tell four smooth functions of angle apart */
-    bool wide = lines->n >= 10 && lines->line[lines->n - 1].two_theta.value - lines->line[0].two_theta.value > 80;
+    bool wide = lw__wide_range(lines);
     if (capillary)
         return (candidates){1, {transmission}};
     if (wide && optical)
@@ -89,7 +97,7 @@ static candidates candidates_for(const lw_lines *lines, bool capillary, bool opt
     return wide ? (candidates){4, {all, flat, deep, few}} : (candidates){1, {few}};
 }
 
-static lw_status take_named(const char *const *names, size_t n, lw_aberrations *set, lw_error *err)
+lw_status lw__take_named(const char *const *names, size_t n, lw_aberrations *set, lw_error *err)
 {
     set->n = 0;
     for (size_t i = 0; i < n && names[i] != NULL; i++) {
@@ -109,8 +117,7 @@ static lw_status take_named(const char *const *names, size_t n, lw_aberrations *
     return LW_OK;
 }
 
-/* Where the certificate puts a line, degrees 2theta at the reference wavelength; slopes to the three edges by *d. */
-static double certified_angle(const lw_standard *standard, double wavelength_nm, const lw_reflection *r, double d[3])
+double lw__certified_angle(const lw_standard *standard, double wavelength_nm, const lw_reflection *r, double d[3])
 {
     const lw_cell *cell = &standard->material.cell;
     double s = lw_cell_s(cell, r->h, r->k, r->l), slopes[6];
@@ -123,14 +130,40 @@ static double certified_angle(const lw_standard *standard, double wavelength_nm,
     return 2 * asin(sine) / degree;
 }
 
-/* Equal edges of the crystal system move together: their shifts are one. */
-static size_t edge_groups(lw_crystal_system system, size_t group[3])
+size_t lw__edge_groups(lw_crystal_system system, size_t group[3])
 {
     bool ab = system == LW_CUBIC || system == LW_TETRAGONAL || system == LW_HEXAGONAL || system == LW_TRIGONAL;
     group[0] = 0;
     group[1] = ab ? 0 : 1;
     group[2] = system == LW_CUBIC ? 0 : group[1] + 1;
     return group[2] + 1;
+}
+
+lw_status lw__residual_u(size_t n, size_t k, size_t m, const double *slope, const double *estimator, const double *covariance,
+                         const double *common, double *u, lw_arena *scratch, lw_error *err)
+{
+    double *row = lw_arena_take(scratch, n, sizeof *row, err);
+    if (row == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t i = 0; i < n; i++) {
+        double sum = 0;
+        for (size_t j = 0; j < n; j++) {
+            row[j] = i == j;
+            for (size_t a = 0; a < k; a++)
+                row[j] -= slope[i * k + a] * estimator[j * k + a];
+        }
+        for (size_t j = 0; j < n; j++)
+            for (size_t l = 0; l < n; l++)
+                sum += row[j] * covariance[j * n + l] * row[l];
+        for (size_t e = 0; e < m; e++) {
+            double moved = 0;
+            for (size_t j = 0; j < n; j++)
+                moved += row[j] * common[j * m + e];
+            sum += moved * moved;
+        }
+        u[i] = sqrt(fmax(sum, 0));
+    }
+    return LW_OK;
 }
 
 /* Weighted least squares of the differences on the aberrations' slopes. Each line is weighted by its own u alone;
@@ -185,12 +218,11 @@ static lw_status fit_aberrations(lw_engine *engine, lw_aberrations *set, lw_cali
                 sum += common[0][e] * common[1][e];
             set->covariance[a][b] = sum;
         }
-    return LW_OK;
+    return lw__residual_u(n, k, 3, slope, estimator, covariance, certificate, rows->u_residual, scratch, err);
 }
 
-/* Akaike's criterion for few data: n ln(chi2/n) + 2 K + 2 K (K + 1)/(n - K - 1), K parameters with the scale (Hurvich &
- * Tsai 1989 Biometrika 76, 297). Infinite where n does not allow it. */
-static double aicc(double chi2, size_t n, size_t parameters)
+/* n ln(chi2/n) + 2 K + 2 K (K + 1)/(n - K - 1), K parameters with the scale. */
+double lw__aicc(double chi2, size_t n, size_t parameters)
 {
     double points = (double)n, k = (double)parameters + 1;
     return points - k - 1 > 0 ? points * log(chi2 / points) + 2 * k + 2 * k * (k + 1) / (points - k - 1) : INFINITY;
@@ -207,10 +239,10 @@ static lw_status choose_aberrations(lw_engine *engine, const lw_lines *lines, bo
     size_t kept = 0;
     lw_status status = LW_OK;
     for (size_t i = 0; i < tried.n && status == LW_OK; i++) {
-        status = take_named(tried.names[i], LW_ABERRATION_MOST, set, err);
+        status = lw__take_named(tried.names[i], LW_ABERRATION_MOST, set, err);
         if (status == LW_OK && rows->n > set->n)
             status = fit_aberrations(engine, set, rows, covariance, certificate, scratch, err);
-        rows->tried[i] = (lw_calibration_trial){.set = *set, .criterion = aicc(rows->chi2, rows->n, set->n)};
+        rows->tried[i] = (lw_calibration_trial){.set = *set, .criterion = lw__aicc(rows->chi2, rows->n, set->n)};
         rows->n_tried = i + 1;
         if (rows->tried[i].criterion < best)
             best = rows->tried[i].criterion;
@@ -221,6 +253,19 @@ static lw_status choose_aberrations(lw_engine *engine, const lw_lines *lines, bo
     return status == LW_OK ? fit_aberrations(engine, set, rows, covariance, certificate, scratch, err) : status;
 }
 
+lw_status lw__calibration_lines_take(lw_calibration_lines *rows, size_t most, lw_arena *arena, lw_error *err)
+{
+    double **column[] = {&rows->certified, &rows->u_certified, &rows->difference, &rows->residual, &rows->u_residual};
+    rows->place = lw_arena_take(arena, most, sizeof *rows->place, err);
+    rows->line = lw_arena_take(arena, most, sizeof *rows->line, err);
+    bool all = rows->place && rows->line;
+    for (size_t i = 0; i < sizeof column / sizeof *column; i++) {
+        *column[i] = lw_arena_take(arena, most, sizeof(double), err);
+        all = all && *column[i] != NULL;
+    }
+    return all ? LW_OK : LW_OUT_OF_MEMORY;
+}
+
 /* Positions of the supported lines against the certificate. */
 static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
                                      lw_calibration *calibration, const lw_refined *refined, lw_calibration_lines *rows,
@@ -228,27 +273,20 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
 {
     lw_aberrations *set = &calibration->aberrations;
     double wavelength = lw_radiation_wavelength(&lines->radiation);
-    size_t n = 0, group[3], groups = edge_groups(standard->material.system, group);
+    size_t n = 0, group[3], groups = lw__edge_groups(standard->material.system, group);
     const lw_cell *cell = &standard->material.cell;
     double u_edge[3] = {cell->u_a, cell->u_b, cell->u_c};
     double *shift = lw_arena_take(scratch, lines->n * 3, sizeof *shift, err); /* per group, already times its u */
     double *covariance = lw_arena_take(scratch, lines->n * lines->n, sizeof *covariance, err);
     size_t *which = lw_arena_take(scratch, lines->n, sizeof *which, err); /* of the refined lines */
-    rows->place = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->place, err);
-    rows->line = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->line, err);
-    rows->certified = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->certified, err);
-    rows->u_certified = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->u_certified, err);
-    rows->difference = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->difference, err);
-    rows->residual = lw_arena_take(&calibration->arena, lines->n, sizeof *rows->residual, err);
-    if (!shift || !covariance || !which || !rows->place || !rows->line || !rows->certified || !rows->u_certified || !rows->difference ||
-        !rows->residual)
+    if (!shift || !covariance || !which || lw__calibration_lines_take(rows, lines->n, &calibration->arena, err) != LW_OK)
         return LW_OUT_OF_MEMORY;
     for (size_t k = 0; k < lines->n; k++) {
         const lw_line *line = &lines->line[k];
         double d[3];
         if (!line->supported || !(line->two_theta.u > 0))
             continue;
-        double angle = certified_angle(standard, wavelength, &line->reflection, d);
+        double angle = lw__certified_angle(standard, wavelength, &line->reflection, d);
         if (!isfinite(angle))
             continue;
         rows->place[n] = line->two_theta;
@@ -323,20 +361,12 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
     snprintf(calibration->geometry, sizeof calibration->geometry, "%s", capillary ? "capillary" : "reflection");
     calibration->radiation = lines->radiation;
     calibration->profile = lines->smooth;
-    lw_calibration_lines rows = {.radius_from = "given"};
-    calibration->aberrations.radius_mm = options->goniometer_radius_mm;
-    if (!(calibration->aberrations.radius_mm > 0)) {
-        calibration->aberrations.radius_mm = radius_in_header(lines->scan->header);
-        rows.radius_from = "scan header";
-    }
-    if (!(calibration->aberrations.radius_mm > 0)) {
-        calibration->aberrations.radius_mm = 200;
-        rows.radius_from = "assumed: neither given nor in the scan's header";
-    }
+    lw_calibration_lines rows = {.lines = lines, .standard = standard};
+    calibration->aberrations.radius_mm = lw__goniometer_radius(options, lines->scan, &rows.radius_from);
     rows.given = options->aberrations.n > 0 && strcmp(options->aberrations.item[0], "auto") != 0;
     candidates usual = candidates_for(lines, capillary, options->profile == 1);
-    lw_status status = rows.given ? take_named(options->aberrations.item, options->aberrations.n, &calibration->aberrations, err)
-                                  : take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
+    lw_status status = rows.given ? lw__take_named(options->aberrations.item, options->aberrations.n, &calibration->aberrations, err)
+                                  : lw__take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
     lw_refined refined = {0};
     if (status == LW_OK && options->profile == 1) {
         status = lw__calibrate_optical(engine, lines, standard, options, calibration, &refined, err);
@@ -349,7 +379,8 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
         calibration->valid_high_deg = rows.place[rows.n - 1].value;
         calibration->profile.low_deg = calibration->valid_low_deg;
         calibration->profile.high_deg = calibration->valid_high_deg;
-        status = lw__calibration_record(calibration, lines, standard, &rows, err);
+        const lw_calibration_lines *all = &rows;
+        status = lw__calibration_record(calibration, &all, 1, NULL, err);
     }
     lw_arena_end(&scratch);
     if (status != LW_OK) {

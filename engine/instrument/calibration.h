@@ -48,6 +48,27 @@ lw_calibrate_options lw_calibrate_defaults(void);
 lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
                        const lw_calibrate_options *options, lw_calibration **calibration, lw_error *err);
 
+/* One scan of a set. */
+typedef struct lw_calibration_scan {
+    const lw_lines *lines;
+    const lw_standard *standard;
+    double attenuation_per_mm; /* of this specimen, for the optical profile; NAN = as the options say, else refined where
+                                  the scan can't be described without it */
+    bool positions_only;       /* take nothing of its widths into the instrument's profile */
+} lw_calibration_scan;
+#define LW_SET_MOST 16
+
+/* Calibrates from scans of one or more standards on one state of the instrument. Zero shift and flat specimen are the
+ * instrument's; displacement and transparency are fitted for each scan. The profile's parameters of the scans are joined
+ * by generalised least squares with their covariances, and every scan's positions follow the joined profile. A standard
+ * whose lines are broader than the sharpest one's beyond chance serves for positions only. What a certificate is unsure
+ * of is common to all scans of its standard. `aberrations`, `standard` and `lines` of the record are the first scan's;
+ * `scans` has each, `join` how well they agree, `covariance_joint` the whole covariance.
+ * Errors besides those of lw_calibrate: LW_BAD_ARGUMENT for scans of different radiation, geometry or axial description,
+ * or the same scan twice; LW_BAD_DATA if the scans contradict each other far beyond chance. */
+lw_status lw_calibrate_set(lw_engine *engine, const lw_calibration_scan *scans, size_t n, const lw_calibrate_options *options,
+                           lw_calibration **calibration, lw_error *err);
+
 /* A calibration from its record tree (as parsed from JSON); checks schema and every number. */
 lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, const char *file,
                                    lw_calibration **calibration, lw_error *err);

@@ -8,8 +8,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* The number after some words in the comments at the top of a scan; `otherwise` if they are not there. */
-static double in_header(const char *header, const char *words, double otherwise)
+double lw__in_header(const char *header, const char *words, double otherwise)
 {
     const char *at = header ? strstr(header, words) : NULL;
     if (at == NULL)
@@ -27,12 +26,12 @@ static double chosen(double given, double otherwise)
 
 static void take_geometry(const lw_calibrate_options *o, const char *header, double radius, lw_geometry *g, bool *slit_known)
 {
-    double slit = in_header(header, "receiving slit", NAN), soller = in_header(header, "Soller slits", 0.04);
+    double slit = lw__in_header(header, "receiving slit", NAN), soller = lw__in_header(header, "Soller slits", 0.04);
     *slit_known = !isnan(o->slit_width_mm) || !isnan(slit);
     *g = (lw_geometry){.radius = radius,
                        .source_width = chosen(o->source_width_mm, 0.04),
                        .slit_width = chosen(o->slit_width_mm, isnan(slit) ? 0.1 : slit),
-                       .divergence_deg = chosen(o->divergence_deg, in_header(header, "divergence slit", 0.5)),
+                       .divergence_deg = chosen(o->divergence_deg, lw__in_header(header, "divergence slit", 0.5)),
                        .source_length = chosen(o->source_length_mm, 12),
                        .specimen_length = chosen(o->specimen_length_mm, 15),
                        .slit_length = chosen(o->slit_length_mm, 15),
@@ -82,16 +81,13 @@ lw_status lw__optical_profile(lw_engine *engine, lw_calibration *calibration, do
     return status;
 }
 
-lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
-                                const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
-                                lw_error *err)
+lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                             const lw_calibrate_options *options, double radius_mm, lw_arena *arena, lw_refined *refined,
+                             lw_error *err)
 {
-    if (strcmp(calibration->geometry, "reflection") != 0)
-        return lw_fail(err, LW_BAD_ARGUMENT, "use profile = \"empirical\"",
-                       "calibrate: the optical profile is that of a flat specimen in reflection, not of a capillary");
     lw_geometry start;
     bool slit_known;
-    take_geometry(options, lines->scan->header, calibration->aberrations.radius_mm, &start, &slit_known);
+    take_geometry(options, lines->scan->header, radius_mm, &start, &slit_known);
     lw_refine_options how = {.summed = lines->scan->header && strstr(lines->scan->header, "summed over each step") != NULL,
                              .domain_size_nm = options->standard_size ? standard->domain_size_nm : 0};
     if (options->refine.n > LW_REFINED_MOST)
@@ -104,7 +100,18 @@ lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const 
         if (!slit_known)
             how.name[how.n++] = "slit_width";
     }
-    lw_status status = lw_geometry_refine(engine, lines, &start, &how, &calibration->arena, refined, err);
+    return lw_geometry_refine(engine, lines, &start, &how, arena, refined, err);
+}
+
+lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                                const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
+                                lw_error *err)
+{
+    if (strcmp(calibration->geometry, "reflection") != 0)
+        return lw_fail(err, LW_BAD_ARGUMENT, "use profile = \"empirical\"",
+                       "calibrate: the optical profile is that of a flat specimen in reflection, not of a capillary");
+    lw_status status = lw__optical_refine(engine, lines, standard, options, calibration->aberrations.radius_mm,
+                                          &calibration->arena, refined, err);
     if (status != LW_OK)
         return status;
     calibration->has_optical = true;

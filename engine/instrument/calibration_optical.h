@@ -6,6 +6,14 @@
 #include "instrument/calibration.h"
 #include "instrument/optical/refine.h"
 
+/* The number after some words in the comments at the top of a scan; `otherwise` if they are not there. */
+double lw__in_header(const char *header, const char *words, double otherwise);
+
+/* The geometry of a scan from the options and its header, and its refinement; attenuation may be among the quantities. */
+lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                             const lw_calibrate_options *options, double radius_mm, lw_arena *arena, lw_refined *refined,
+                             lw_error *err);
+
 /* Geometry from the options and, where they are silent, from the scan's header ("divergence slit 0.75 deg; receiving
  * slit 0.15 mm; Soller slits 0.040 and 0.040 rad") or usual values; refined against the scan; the profile of the
  * calibration becomes its table. `optical` of the record is filled. */

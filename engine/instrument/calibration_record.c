@@ -3,6 +3,7 @@
 #include "instrument/calibration_record.h"
 
 #include "instrument/calibration_optical.h"
+#include "instrument/calibration_set.h"
 #include "instrument/purity.h"
 
 #include <math.h>
@@ -141,99 +142,8 @@ static void write_choice(const lw_aberrations *set, const lw_calibration_lines *
         }
 }
 
-static void write_lines(const lw_calibration_lines *rows, lw_node *root, lw_error *err)
+static void write_standard(const lw_standard *standard, lw_node *root, lw_error *err)
 {
-    lw_node *list = lw_add_list(root, "lines", err);
-    for (size_t i = 0; i < rows->n; i++) {
-        const lw_line *line = rows->line[i];
-        const lw_reflection *r = &line->reflection;
-        char hkl[24];
-        lw_node *row = lw_add_group(list, NULL, err);
-        lw_add_text(row, "hkl", lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl), err);
-        lw_add_quantity(row, "two_theta", rows->place[i], NULL, err);
-        lw_add_quantity(row, "two_theta_certified", lw_quantity_of(rows->certified[i], rows->u_certified[i], "deg"), NULL,
-                        err);
-        double u = hypot(rows->place[i].u, rows->u_certified[i]);
-        lw_add_quantity(row, "difference", lw_quantity_of(rows->difference[i], u, "deg"), NULL, err);
-        lw_add_quantity(row, "residual", lw_quantity_of(rows->residual[i], u, "deg"), NULL, err);
-        lw_add_quantity(row, "fwhm", line->fwhm, NULL, err);
-        lw_add_quantity(row, "breadth", line->breadth, NULL, err);
-        lw_add_quantity(row, "shape_ratio", line->shape_ratio, NULL, err);
-        lw_add_quantity(row, "area", line->area, NULL, err);
-    }
-}
-
-/* What a person should mind, and the verdict that follows: the calibration by itself, without a predecessor. */
-static void write_verdict(lw_calibration *calibration, const lw_lines *lines, const lw_calibration_lines *rows,
-                          lw_node *root, lw_error *err)
-{
-    lw_node *list = lw_add_list(root, "warnings", err);
-    const lw_aberrations *set = &calibration->aberrations;
-    for (size_t i = 0; i < set->n; i++)
-        for (size_t j = 0; j < i; j++) {
-            double r = set->covariance[i][j] / sqrt(set->covariance[i][i] * set->covariance[j][j]);
-            if (fabs(r) > 0.98)
-                lw_add_text(list, NULL,
-                            lw_arena_print(&calibration->arena, err,
-                                           "the range of angles can't separate %s from %s (correlation %.3f): their sum is "
-                                           "sound, each alone is not", set->kind[j]->name, set->kind[i]->name, r), err);
-        }
-    size_t off = 0;
-    for (size_t i = 0; i < rows->n; i++) {
-        double u = hypot(rows->place[i].u, rows->u_certified[i]) * rows->birge;
-        const lw_reflection *h = &rows->line[i]->reflection;
-        char hkl[24];
-        if (fabs(rows->residual[i]) > fmax(4 * u, 0.002)) {
-            off++;
-            lw_add_text(list, NULL,
-                        lw_arena_print(&calibration->arena, err,
-                                       "line %s lies %.4f deg from its certified place after the aberrations (%.1f u)",
-                                       lw_hkl_text(h->h, h->k, h->l, hkl, sizeof hkl), rows->residual[i],
-                                       fabs(rows->residual[i]) / u), err);
-        }
-    }
-    bool far = false; /* a wavelength is known to 1e-4 or so: more says that something else is wrong */
-    for (size_t i = 0; i < set->n; i++)
-        if (strcmp(set->kind[i]->name, "wavelength") == 0 && fabs(set->value[i]) > 1e-3) {
-            far = true;
-            lw_add_text(list, NULL,
-                        lw_arena_print(&calibration->arena, err,
-                                       "the lines ask for a wavelength %.2f %% from the one given: is it the right standard, "
-                                       "and the right radiation?", 100 * set->value[i]), err);
-        }
-    if (lines->misfit[0] != '\0')
-        lw_add_text(list, NULL, lines->misfit, err);
-    if (strncmp(rows->radius_from, "assumed", 7) == 0 && lw_node_get(root, "aberrations") != NULL &&
-        lw_node_get(lw_node_get(root, "aberrations"), "displacement") != NULL)
-        lw_add_text(list, NULL, "the goniometer radius was not given: 200 mm was assumed, the displacement scales with it",
-                    err);
-    /* positions and shape judged by themselves; the limits are common practice for a line-profile calibration: widths
-     * read from a shape that misses the standard by a fifth of the noise are not the instrument's at every angle */
-    bool off_shape = lines->goodness > 1.2;
-    if (off_shape)
-        lw_add_text(list, NULL,
-                    "the profile model does not describe this standard: its widths are an average, wrong by more than their "
-                    "uncertainty at some angles (is the specimen transparent, the domain size small, the geometry another?)",
-                    err);
-    if (rows->rms > 0.005)
-        lw_add_text(list, NULL,
-                    lw_arena_print(&calibration->arena, err,
-                                   "after the aberrations the lines still scatter by %.4f deg rms about their certified "
-                                   "places (attention above 0.005 deg, fail above 0.02 deg)", rows->rms), err);
-    const char *verdict = rows->rms > 0.02 || far ? "fail" : rows->rms > 0.005 || off > 0 || off_shape ? "attention" : "pass";
-    snprintf(calibration->verdict, sizeof calibration->verdict, "%s", verdict);
-    lw_add_text(root, "verdict", verdict, err);
-}
-
-lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *lines, const lw_standard *standard,
-                                 const lw_calibration_lines *rows, lw_error *err)
-{
-    lw_error local = LW_ERROR_NONE;
-    if (err == NULL)
-        err = &local;
-    lw_node *root = lw_tree_new(&calibration->arena, err);
-    lw_add_text(root, "schema", schema, err);
-    write_radiation(&calibration->radiation, root, err);
     lw_node *group = lw_add_group(root, "standard", err);
     lw_add_text(group, "name", standard->name, err);
     lw_add_text(group, "certificate", standard->certificate, err);
@@ -241,21 +151,12 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
     if (standard->material.system != LW_CUBIC)
         lw_add_quantity(group, "c", lw_quantity_of(standard->material.cell.c, standard->material.cell.u_c, "nm"), NULL, err);
     lw_add_number(group, "temperature_c", standard->temperature_c, err);
-    lw_add_text(root, "geometry", calibration->geometry, err);
-    double range[2] = {calibration->valid_low_deg, calibration->valid_high_deg};
-    lw_add_vector(root, "valid_two_theta", range, 2, "deg", err);
-    const lw_aberrations *set = &calibration->aberrations;
-    write_aberrations(set, root, err);
-    lw_add_quantity(root, "goniometer_radius", lw_quantity_of(set->radius_mm, 0, "mm"), rows->radius_from, err);
-    write_profile(&calibration->profile, root, err);
-    if (calibration->has_optical)
-        lw__optical_write(calibration, rows->refined, (lw_node *)lw_node_get(root, "profile"), err);
-    write_table(calibration, calibration->arena.engine, root, err);
-    write_covariance(calibration, root, err);
-    write_lines(rows, root, err);
-    write_choice(set, rows, root, err);
-    lw_purity(calibration->arena.engine, lines, root, err);
-    group = lw_add_group(root, "fit", err);
+}
+
+static void write_fit(const lw_calibration_lines *rows, lw_node *root, lw_error *err)
+{
+    const lw_lines *lines = rows->lines;
+    lw_node *group = lw_add_group(root, "fit", err);
     lw_add_number(group, "rwp", lines->rwp, err);
     lw_add_number(group, "rexp", lines->rexp, err);
     lw_add_number(group, "goodness_of_fit", lines->goodness, err);
@@ -264,7 +165,107 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_lines *li
     lw_add_number(group, "position_chi2", rows->chi2, err);
     lw_add_number(group, "position_birge_ratio", rows->birge, err);
     lw_add_number(group, "position_rms_deg", rows->rms, err);
-    write_verdict(calibration, lines, rows, root, err);
+}
+
+/* Each scan of a set, how well they agree, and the whole covariance. */
+static void write_set(const lw_set *set, lw_node *root, lw_error *err)
+{
+    lw_node *list = lw_add_list(root, "scans", err);
+    for (size_t k = 0; k < set->n; k++) {
+        const lw_set_scan *scan = &set->scan[k];
+        lw_node *row = lw_add_group(list, NULL, err);
+        lw_add_text(row, "file", scan->lines->scan->file, err);
+        lw_add_text(row, "sha256", lw_scan_hash(scan->lines->scan), err);
+        write_standard(scan->standard, row, err);
+        if (scan->standard->domain_size_nm > 0)
+            lw_add_number(row, "domain_size_nm", scan->standard->domain_size_nm, err);
+        lw_add_text(row, "used_for", scan->joined ? "profile and positions" : "positions", err);
+        if (!scan->joined)
+            lw_add_text(row, "why_not_profile", scan->why, err);
+        write_aberrations(&scan->aberrations, row, err);
+        if (scan->attenuation > 0)
+            lw_add_quantity(row, "attenuation", lw_quantity_of(scan->attenuation, scan->u_attenuation, "mm^-1"),
+                            "linear attenuation of the specimen with its pores, in its profile", err);
+        if (set->optical)
+            lw_add_number(row, "chi2_per_degree_of_freedom",
+                          scan->refined.chi2 / (double)(scan->refined.n_points - scan->refined.n_parameters), err);
+        lw__write_lines(&scan->rows, row, err);
+        write_fit(&scan->rows, row, err);
+    }
+    const struct {
+        const char *name, *definition;
+        const lw_joined *joined;
+    } part[] = {{"profile", "the profile's parameters of the scans, about the joined ones", &set->profile},
+                {"positions", "what all scans share (zero shift ...), found from each scan by itself", &set->shared}};
+    lw_node *join = lw_add_group(root, "join", err);
+    for (size_t i = 0; i < 2; i++) {
+        lw_node *group = lw_add_group(join, part[i].name, err);
+        if (group != NULL)
+            group->definition = part[i].definition;
+        lw_add_number(group, "chi2", part[i].joined->chi2, err);
+        lw_add_number(group, "degrees_of_freedom", part[i].joined->freedom, err);
+        lw_add_number(group, "p", part[i].joined->p, err);
+        lw_add_number(group, "birge_ratio", part[i].joined->birge, err);
+    }
+    list = lw_add_list(join, "aberrations_tried", err);
+    double best = INFINITY;
+    for (size_t i = 0; i < set->n_tried; i++)
+        best = fmin(best, set->tried[i].criterion);
+    for (size_t i = 0; i < set->n_tried; i++) {
+        lw_node *row = lw_add_group(list, NULL, err);
+        lw_add_text(row, "aberrations", set->tried[i].text, err);
+        lw_add_number(row, "aicc_above_best", set->tried[i].criterion - best, err);
+    }
+    lw_node *group = lw_add_group(root, "covariance_joint", err), *names = lw_add_list(group, "parameters", err);
+    for (size_t i = 0; i < set->n_profile; i++)
+        lw_add_text(names, NULL, set->optical ? set->name[i] : profile_field[set->width[i]], err);
+    for (size_t a = 0; a < set->n_columns; a++) {
+        const char *name = set->column[a].kind->name;
+        if (set->column[a].scan != LW_SET_ALL)
+            name = lw_arena_print(root->arena, err, "%s of scan %zu", name, set->column[a].scan + 1);
+        lw_add_text(names, NULL, name, err);
+    }
+    lw_node *matrix = lw_add_list(group, "matrix", err);
+    size_t m = set->n_profile, all = m + set->n_columns;
+    for (size_t i = 0; i < all; i++) {
+        double row[LW_WIDTH_PARAMETERS + LW_SET_COLUMNS];
+        for (size_t j = 0; j < all; j++)
+            row[j] = i < m && j < m     ? set->covariance[i * m + j]
+                     : i < m            ? set->shift_profile[(j - m) * m + i]
+                     : j < m            ? set->shift_profile[(i - m) * m + j]
+                                        : set->shift_covariance[(i - m) * set->n_columns + j - m];
+        lw_add_vector(matrix, NULL, row, all, "", err);
+    }
+}
+
+lw_status lw__calibration_record(lw_calibration *calibration, const lw_calibration_lines *const *all, size_t n_all,
+                                 const struct lw_set *set, lw_error *err)
+{
+    lw_error local = LW_ERROR_NONE;
+    if (err == NULL)
+        err = &local;
+    const lw_calibration_lines *rows = all[0];
+    lw_node *root = lw_tree_new(&calibration->arena, err);
+    lw_add_text(root, "schema", schema, err);
+    write_radiation(&calibration->radiation, root, err);
+    write_standard(rows->standard, root, err);
+    lw_add_text(root, "geometry", calibration->geometry, err);
+    double range[2] = {calibration->valid_low_deg, calibration->valid_high_deg};
+    lw_add_vector(root, "valid_two_theta", range, 2, "deg", err);
+    write_aberrations(&calibration->aberrations, root, err);
+    lw_add_quantity(root, "goniometer_radius", lw_quantity_of(calibration->aberrations.radius_mm, 0, "mm"), rows->radius_from, err);
+    write_profile(&calibration->profile, root, err);
+    if (calibration->has_optical)
+        lw__optical_write(calibration, rows->refined, (lw_node *)lw_node_get(root, "profile"), err);
+    write_table(calibration, calibration->arena.engine, root, err);
+    write_covariance(calibration, root, err);
+    lw__write_lines(rows, root, err);
+    write_choice(&calibration->aberrations, rows, root, err);
+    lw_purity(calibration->arena.engine, rows->lines, root, err);
+    write_fit(rows, root, err);
+    if (set != NULL)
+        write_set(set, root, err);
+    lw__write_verdict(calibration, all, n_all, set, root, err);
     calibration->record = root;
     return err->status;
 }
@@ -435,7 +436,7 @@ static lw_status read_record(lw_engine *engine, const lw_node *record, const cha
     const lw_node *optical = lw_node_get(profile, "optical");
     if (status == LW_OK && optical != NULL)
         status = lw__optical_read(engine, optical, file, calibration, err);
-    return status;
+    return status == LW_OK ? lw__calibration_check(engine, calibration, record, file, err) : status;
 }
 
 lw_status lw_calibration_from_tree(lw_engine *engine, const lw_node *record, const char *file,
