@@ -3,6 +3,7 @@
 
 #include "instrument/calibration_record.h"
 #include "instrument/optical/table.h"
+#include "numeric/cholesky.h"
 
 #include <math.h>
 #include <stdlib.h>
@@ -42,9 +43,41 @@ static void take_geometry(const lw_calibrate_options *o, const char *header, dou
                        .tilt_deg = chosen(o->tilt_deg, 0)};
 }
 
-/* Table, and the u of the breadth from that of the geometry as a u of the joining Gaussian's square. */
+enum { ANGLES = 9 };
+
+/* What a unit of a refined quantity does to the breadth over the angles, as changes of the joining Gaussian's U, V and W:
+ * least squares. */
+static void as_widths(const lw_width_function *profile, const double *angle, const double *breadth_slope, double change[3])
+{
+    double normal[9] = {0};
+    memset(change, 0, 3 * sizeof *change);
+    for (size_t i = 0; i < ANGLES; i++) {
+        lw_width_figure figure;
+        lw_width_figure_at(profile, angle[i], 0, 0, &figure);
+        double t = tan(angle[i] * (M_PI / 360)), by[3] = {t * t, t, 1};
+        for (int a = 0; a < 3; a++) {
+            change[a] += by[a] * figure.d_breadth[0] * breadth_slope[i];
+            for (int b = a; b < 3; b++)
+                normal[3 * a + b] += by[a] * by[b] * figure.d_breadth[0] * figure.d_breadth[0];
+        }
+    }
+    if (lw_cholesky(normal, 3, 3, 0) == 3)
+        lw_cholesky_solve(normal, 3, 3, change);
+    else
+        memset(change, 0, 3 * sizeof *change);
+}
+
+lw_refined_set lw__refined_set(const lw_calibration *calibration)
+{
+    return (lw_refined_set){.n = calibration->n_refined, .name = calibration->refined_name,
+                            .covariance = calibration->refined_covariance};
+}
+
+/* Table, and the covariance of the geometry as one of the joining Gaussian's widths, so that the u of a breadth is at every
+ * angle what the geometry's covariance makes it. */
 lw_status lw__optical_profile(lw_engine *engine, lw_calibration *calibration, double low, double high, lw_error *err)
 {
+    static const int width[3] = {LW_U, LW_V, LW_W};
     lw_profile_table *table = NULL;
     lw_width_function *profile = &calibration->profile;
     *profile = (lw_width_function){.low_deg = low, .high_deg = high};
@@ -53,32 +86,28 @@ lw_status lw__optical_profile(lw_engine *engine, lw_calibration *calibration, do
     if (status != LW_OK)
         return status;
     profile->table = table;
-    double middle = 0.5 * (low + high), slope[LW_REFINED_MOST] = {0}, variance = 0;
-    for (size_t i = 0; i < calibration->n_refined && status == LW_OK; i++) {
-        double u = sqrt(fmax(calibration->refined_covariance[i][i], 0)), breadth[2] = {0};
-        for (int side = 0; side < 2 && status == LW_OK && u > 0; side++) {
-            lw_geometry g = calibration->optical;
-            lw_optics optics;
-            lw_optics_figure figure = {0};
-            double *field = lw_geometry_field(&g, calibration->refined_name[i]);
-            *field = fmax(*field + (side ? 0.5 : -0.5) * u, 0);
-            status = lw_optics_begin(engine, &g, &optics, err);
-            if (status == LW_OK)
-                status = lw_optics_figure_at(&optics, middle, &figure, err);
-            lw_optics_end(&optics);
-            breadth[side] = figure.breadth_deg;
-        }
-        slope[i] = u > 0 ? (breadth[1] - breadth[0]) / u : 0;
+    lw_refined_set refined = lw__refined_set(calibration);
+    lw_optics_figure figure[ANGLES], u[ANGLES], slope[ANGLES][LW_REFINED_MOST];
+    double angle[ANGLES], change[LW_REFINED_MOST][3];
+    for (size_t i = 0; i < ANGLES; i++)
+        angle[i] = low + (high - low) * (double)i / (ANGLES - 1);
+    status = lw_optics_figures(engine, &calibration->optical, &refined, ANGLES, angle, figure, u, slope, err);
+    if (status != LW_OK)
+        return status;
+    for (size_t j = 0; j < refined.n; j++) {
+        double breadth_slope[ANGLES];
+        for (size_t i = 0; i < ANGLES; i++)
+            breadth_slope[i] = slope[i][j].breadth_deg;
+        as_widths(profile, angle, breadth_slope, change[j]);
     }
-    for (size_t i = 0; i < calibration->n_refined; i++)
-        for (size_t j = 0; j < calibration->n_refined; j++)
-            variance += slope[i] * calibration->refined_covariance[i][j] * slope[j];
-    lw_width_figure figure;
-    lw_width_figure_at(profile, middle, 0, 0, &figure);
-    profile->refined[LW_W] = true;
-    if (figure.d_breadth[0] > 0)
-        profile->covariance[LW_W][LW_W] = variance / (figure.d_breadth[0] * figure.d_breadth[0]);
-    return status;
+    for (int a = 0; a < 3; a++) {
+        profile->refined[width[a]] = true;
+        for (int b = 0; b < 3; b++)
+            for (size_t i = 0; i < refined.n; i++)
+                for (size_t j = 0; j < refined.n; j++)
+                    profile->covariance[width[a]][width[b]] += change[i][a] * refined.covariance[i][j] * change[j][b];
+    }
+    return LW_OK;
 }
 
 lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,

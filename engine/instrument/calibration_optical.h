@@ -4,7 +4,7 @@
 #define LW_INSTRUMENT_CALIBRATION_OPTICAL_H
 
 #include "instrument/calibration.h"
-#include "instrument/optical/refine.h"
+#include "instrument/optical/sensitivity.h"
 
 /* The number after some words in the comments at the top of a scan; `otherwise` if they are not there. */
 double lw__in_header(const char *header, const char *words, double otherwise);
@@ -20,6 +20,9 @@ lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_
 lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
                                 const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
                                 lw_error *err);
+
+/* The quantities that were refined, borrowed. */
+lw_refined_set lw__refined_set(const lw_calibration *calibration);
 
 /* The group `optical` of a record's profile, and back. */
 void lw__optical_write(const lw_calibration *calibration, const lw_refined *refined, lw_node *profile, lw_error *err);

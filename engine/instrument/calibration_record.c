@@ -52,30 +52,43 @@ static void write_profile(const lw_width_function *profile, lw_node *root, lw_er
     }
 }
 
+/* FWHM, breadth and place at one wavelength every 5 degrees; with a geometry centroid and third moment besides, and every u
+ * from the covariance of what was refined of it. */
 static void write_table(const lw_calibration *calibration, lw_engine *engine, lw_node *root, lw_error *err)
 {
-    lw_optics optics = {0};
-    bool exact = calibration->has_optical && lw_optics_begin(engine, &calibration->optical, &optics, err) == LW_OK;
+    enum { MOST = 36 };
+    double angle[MOST];
+    size_t n = 0;
+    for (double at = 5 * ceil(calibration->valid_low_deg / 5); at <= calibration->valid_high_deg && n < MOST; at += 5)
+        angle[n++] = at;
+    lw_optics_figure sharp[MOST], u[MOST]; /* the table of the profile is as sharp as its grid */
+    lw_refined_set refined = lw__refined_set(calibration);
+    bool exact = calibration->has_optical &&
+                 lw_optics_figures(engine, &calibration->optical, &refined, n, angle, sharp, u, NULL, err) == LW_OK;
     lw_node *list = lw_add_list(root, "instrument_profile", err);
-    const lw_width_function *profile = &calibration->profile;
-    for (double angle = 5 * ceil(calibration->valid_low_deg / 5); angle <= calibration->valid_high_deg; angle += 5) {
+    for (size_t i = 0; i < n; i++) {
         lw_width_figure figure;
-        double u_shift, shift = lw_aberrations_shift(&calibration->aberrations, angle, &u_shift);
-        lw_width_figure_at(profile, angle, 0, 0, &figure);
-        lw_optics_figure sharp; /* the table of the profile is as sharp as its grid */
-        if (exact && lw_optics_figure_at(&optics, angle, &sharp, err) == LW_OK) {
-            figure.fwhm_deg = sharp.fwhm_deg;
-            figure.breadth_deg = sharp.breadth_deg;
-            figure.centroid_deg = sharp.centroid_deg;
+        double u_shift, shift = lw_aberrations_shift(&calibration->aberrations, angle[i], &u_shift);
+        lw_width_figure_at(&calibration->profile, angle[i], 0, 0, &figure);
+        if (exact) {
+            figure.fwhm_deg = sharp[i].fwhm_deg;
+            figure.u_fwhm = u[i].fwhm_deg;
+            figure.breadth_deg = sharp[i].breadth_deg;
+            figure.u_breadth = u[i].breadth_deg;
+            figure.centroid_deg = sharp[i].centroid_deg;
         }
         lw_node *row = lw_add_group(list, NULL, err);
-        lw_add_number(row, "two_theta", angle, err);
+        lw_add_number(row, "two_theta", angle[i], err);
         lw_add_quantity(row, "fwhm", lw_quantity_of(figure.fwhm_deg, figure.u_fwhm, "deg"), NULL, err);
         lw_add_quantity(row, "breadth", lw_quantity_of(figure.breadth_deg, figure.u_breadth, "deg"), NULL, err);
         lw_add_quantity(row, "shift", lw_quantity_of(shift + figure.centroid_deg, u_shift, "deg"), NULL, err);
+        if (exact) {
+            lw_add_quantity(row, "centroid", lw_quantity_of(sharp[i].centroid_deg, u[i].centroid_deg, "deg"),
+                            "of the profile alone, from the unaberrated place", err);
+            lw_add_quantity(row, "third_moment", lw_quantity_of(sharp[i].third_moment_deg3, u[i].third_moment_deg3, "deg^3"),
+                            "third central moment of the profile: its asymmetry", err);
+        }
     }
-    if (calibration->has_optical)
-        lw_optics_end(&optics);
 }
 
 static void write_aberrations(const lw_aberrations *set, lw_node *root, lw_error *err)
