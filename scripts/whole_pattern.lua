@@ -10,8 +10,10 @@ local job = lw.recipe {
     calibration = { kind = "file", help = "calibration.json of the instrument" },
     strain      = { kind = "text", default = "auto",
                     choices = { "auto", "none", "constant", "correlated", "gaussian_correlated", "voigt",
-                                "dislocations" },
-                    help = "form of strain against column length; auto weighs all of them" },
+                                "dislocations", "knots" },
+                    help = "form of strain against column length, knots for a free one; auto weighs all of them" },
+    size        = { kind = "text", default = "lognormal", choices = { "lognormal", "histogram" },
+                    help = "distribution of diameters: lognormal, or a smoothed histogram without a formula" },
     anisotropy  = { kind = "text", default = "auto", choices = { "auto", "no", "yes" },
                     help = "strain of a cubic crystal depends on direction" },
   },
@@ -27,7 +29,7 @@ scan = scan:crop(math.max(valid[1] - margin, scan.two_theta[1]), math.min(valid[
 
 local lines    = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
 local profiles = lw.deconvolve(lines, { method = "convolution", accept_refold = true }) -- a start, no more
-local result   = lw.whole_pattern(profiles, { strain = job.strain, anisotropy = job.anisotropy })
+local result   = lw.whole_pattern(profiles, { strain = job.strain, size = job.size, anisotropy = job.anisotropy })
 local rest     = lw.separate(profiles, { methods = "lattice" }) -- lines and cell, for the record
 print(result)
 

@@ -150,7 +150,7 @@ static void set_neighbours(lw_pattern *pattern)
 }
 
 lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles,
-                           lw_arena *arena, lw_error *err)
+                           const lw_size_histogram *histogram, lw_arena *arena, lw_error *err)
 {
     const lw_lines *lines = profiles->lines;
     const lw_scan *scan = lines->scan;
@@ -161,7 +161,7 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
                             .n_background = lines->n_background,
                             .rung = lw_pattern_rung_for(engine->cpu)};
     choose_lengths(pattern);
-    if (lw_pattern_shape_begin(&pattern->shape, pattern->n_lengths, pattern->length_step, arena, err) != LW_OK)
+    if (lw_pattern_shape_begin(&pattern->shape, pattern->n_lengths, pattern->length_step, histogram, arena, err) != LW_OK)
         return err->status;
     pattern->n_parameters = lw_pattern_position_row(pattern, lines->n);
     size_t n = pattern->n, m = pattern->n_lengths, f = pattern->n_fft;
@@ -227,8 +227,20 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
 void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, double *p)
 {
     memset(p, 0, pattern->n_parameters * sizeof *p);
-    p[LW_PATTERN_INVERSE_SIZE] = 1 / lw_spheres_size_area(spheres, NULL);
-    p[LW_PATTERN_SIGMA] = spheres->sigma;
+    const lw_size_histogram *histogram = pattern->shape.histogram;
+    if (histogram == NULL) {
+        p[LW_PATTERN_INVERSE_SIZE] = 1 / lw_spheres_size_area(spheres, NULL);
+        p[LW_PATTERN_SIGMA] = spheres->sigma;
+    }
+    double sum = 0;
+    for (size_t b = 0; histogram != NULL && b < histogram->n; b++) {
+        /* volume over ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929 J. Franklin Inst. 207, 369) */
+        double middle = log(spheres->median_nm) + 3 * spheres->sigma * spheres->sigma;
+        double off = (log(lw_size_histogram_diameter(histogram, b)) - middle) / fmax(spheres->sigma, 0.7 * histogram->step);
+        sum += p[LW_PATTERN_SIZE + b] = exp(-0.5 * off * off);
+    }
+    for (size_t b = 0; histogram != NULL && b < histogram->n; b++)
+        p[LW_PATTERN_SIZE + b] /= sum;
     for (size_t k = 0; k < pattern->n_lines; k++) {
         const lw_line *line = pattern->line[k].line;
         double per = degree * cos(line->two_theta.value * degree / 2) /

@@ -14,6 +14,7 @@
 #include "numeric/fft.h"
 #include "numeric/least_squares.h"
 #include "profile/profiles.h"
+#include "sample/pattern_prior.h"
 #include "sample/pattern_rung.h"
 #include "sample/pattern_shape.h"
 
@@ -32,6 +33,8 @@ typedef struct lw_pattern {
     const lw_profiles *profiles;
     const lw_pattern_rung *rung;
     lw_pattern_shape shape;
+    lw_pattern_prior prior[2]; /* of size and strain; chi-square has their penalties */
+    double penalty;            /* at the last evaluation */
     size_t n, n_lines, n_background, n_parameters;
     const bool *fixed; /* [n_parameters] or NULL: rows that the normal equations may leave at zero */
     double *s;        /* [n] 2 sin(theta)/lambda of the points */
@@ -57,12 +60,14 @@ typedef struct lw_pattern {
     lw_pattern_source *source;        /* [n_parameters] */
 } lw_pattern;
 
-/* Lays out a pattern for the scan behind the profiles. Voigt lines with an instrument on the s axis only:
- * LW_NOT_SUPPORTED otherwise. n_parameters = lw_pattern_position_row(pattern, n_lines). */
-lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles, lw_arena *arena,
-                           lw_error *err);
+/* Lays out a pattern for the scan behind the profiles, with a histogram of sizes (borrowed) or, where that is NULL,
+ * lognormal spheres. Voigt lines with an instrument on the s axis only: LW_NOT_SUPPORTED otherwise.
+ * n_parameters = lw_pattern_position_row(pattern, n_lines). */
+lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_profiles *profiles,
+                           const lw_size_histogram *histogram, lw_arena *arena, lw_error *err);
 
-/* p[n_parameters] receives the start: lines and background of the line fit, the given spheres, no strain. */
+/* p[n_parameters] receives the start: lines and background of the line fit, the given spheres (a histogram takes their
+ * shares), no strain. */
 void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, double *p);
 size_t lw_pattern_background_row(const lw_pattern *pattern); /* first Chebyshev term added to the line fit's background */
 size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line); /* nm^-1 from s_start; the area is the next */

@@ -212,10 +212,14 @@ static lw_status evaluate(lw_pattern *m, const double *p, bool slopes, lw_normal
         m->residual[i] = difference != NULL ? difference[i] : lines->scan->intensity[i] - m->curve[i];
         chi2 += m->residual[i] * m->residual[i] * m->weight[i];
     }
-    if (normal != NULL)
-        normal->chi2 = chi2;
     if (slopes)
         add_columns(&e, m->residual, normal, normal != NULL ? normal->g : g);
+    m->penalty = 0;
+    for (size_t i = 0; i < sizeof m->prior / sizeof *m->prior && normal != NULL; i++)
+        if (m->prior[i].n > 0)
+            m->penalty += lw_pattern_prior_add(&m->prior[i], p, slopes ? normal : &(lw_normal){.n = m->n_parameters});
+    if (normal != NULL)
+        normal->chi2 = chi2 + m->penalty;
     return LW_OK;
 }
 

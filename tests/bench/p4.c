@@ -94,7 +94,7 @@ int main(int argc, char **argv)
     lw_arena_begin(&lines.arena, &engine);
     set_lines(&lines, line, &profiles, profile);
     lw_pattern pattern;
-    check(lw_pattern_begin(&pattern, &engine, &profiles, &arena, &err), &err);
+    check(lw_pattern_begin(&pattern, &engine, &profiles, NULL, &arena, &err), &err);
     size_t n = pattern.n_parameters, grid = pattern.n_fft;
     double *p = bench_take(n, sizeof *p), *moved = bench_take(n, sizeof *moved), *seconds = bench_take(repeats, sizeof *seconds);
     lw_normal normal = {.n = n, .h = bench_take(n * n, sizeof(double)), .g = bench_take(n, sizeof(double))};

@@ -86,8 +86,8 @@ static void slopes(made *m, const lw_strain_form *form)
 {
     lw_error err = LW_ERROR_NONE;
     lw_pattern pattern;
-    CHECK(lw_pattern_begin(&pattern, m->engine, &m->profiles, &m->arena, &err) == LW_OK);
-    lw_pattern_shape_set_strain(&pattern.shape, form);
+    CHECK(lw_pattern_begin(&pattern, m->engine, &m->profiles, NULL, &m->arena, &err) == LW_OK);
+    lw_pattern_shape_set_strain(&pattern.shape, form, NULL);
     size_t n = pattern.n_parameters;
     double *p = calloc(n, sizeof *p), *g = calloc(n, sizeof *g), *up = calloc(POINTS, sizeof *up);
     lw_normal normal = {.n = n, .h = calloc(n * n, sizeof(double)), .g = calloc(n, sizeof(double))}, none = {.n = n};
@@ -134,8 +134,8 @@ static void rungs(made *m)
     for (int r = 0; r < 3; r++) {
         lw_pattern pattern;
         m->engine->cpu = cpu[r];
-        CHECK(lw_pattern_begin(&pattern, m->engine, &m->profiles, &m->arena, &err) == LW_OK);
-        lw_pattern_shape_set_strain(&pattern.shape, &lw_strain_voigt); /* with tails of its own */
+        CHECK(lw_pattern_begin(&pattern, m->engine, &m->profiles, NULL, &m->arena, &err) == LW_OK);
+        lw_pattern_shape_set_strain(&pattern.shape, &lw_strain_voigt, NULL); /* with tails of its own */
         n = pattern.n_parameters;
         double *p = calloc(n, sizeof *p);
         lw_normal normal = {.n = n, .h = calloc(n * n, sizeof(double)), .g = calloc(n, sizeof(double))};
