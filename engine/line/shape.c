@@ -18,17 +18,17 @@ static double pseudo_voigt_breadth(double eta, double *slope)
     return 1 / top;
 }
 
-static side pseudo_voigt_side(double x, double w, double eta)
+static side pseudo_voigt_side(double x, const lw_shape_side *of)
 {
     const double lorentz = 2 / M_PI, gauss = 2 * sqrt(M_LN2 / M_PI);
-    double slope, breadth = pseudo_voigt_breadth(eta, &slope), u = x / w;
+    double eta = of->form, u = x / of->width;
     double l = 1 / (1 + 4 * u * u), g = exp(-4 * M_LN2 * u * u);
     double sum = eta * lorentz * l + (1 - eta) * gauss * g;
     double d_u = -8 * u * (eta * lorentz * l * l + (1 - eta) * gauss * M_LN2 * g);
-    return (side){.height = breadth * sum,
-                  .d_x = breadth * d_u / w,
-                  .d_width = -breadth * d_u * u / w,
-                  .d_form = slope * sum + breadth * (lorentz * l - gauss * g)};
+    return (side){.height = of->breadth * sum,
+                  .d_x = of->breadth * d_u / of->width,
+                  .d_width = -of->breadth * d_u * u / of->width,
+                  .d_form = of->breadth_slope * sum + of->breadth * (lorentz * l - gauss * g)};
 }
 
 /* Pearson VII: s = m, the exponent; m = 1 is Lorentzian, m to infinity Gaussian. */
@@ -45,43 +45,57 @@ static double pearson_breadth(double m, double *slope)
     return pearson_breadth_only(m);
 }
 
-static side pearson_side(double x, double w, double m)
+static side pearson_side(double x, const lw_shape_side *of)
 {
-    double root = exp2(1 / m), c = 4 * (root - 1), u = x / w, base = 1 + c * u * u;
-    double height = pow(base, -m), d_u = -2 * m * c * u * height / base;
-    double d_c = -4 * root * M_LN2 / (m * m);
+    double m = of->form, u = x / of->width, base = 1 + of->pearson * u * u, logarithm = log(base);
+    double height = exp(-m * logarithm), d_u = -2 * m * of->pearson * u * height / base;
+    double d_c = -(of->pearson + 4) * M_LN2 / (m * m);
     return (side){.height = height,
-                  .d_x = d_u / w,
-                  .d_width = -d_u * u / w,
-                  .d_form = height * (-log(base) - m * u * u * d_c / base)};
+                  .d_x = d_u / of->width,
+                  .d_width = -d_u * u / of->width,
+                  .d_form = height * (-logarithm - m * u * u * d_c / base)};
 }
 
-typedef side side_fn(double x, double w, double form);
 typedef double breadth_fn(double form, double *slope);
 
-/* Unit area from two sides of equal height; local = {w, s} or {w left, w right, s left, s right}. */
-static double build(side_fn *fn, breadth_fn *breadth, bool split, double x, const double *local, double *d_x,
-                    double *d_local)
+/* What is the same at all points; local = {w, s} or {w left, w right, s left, s right}. */
+static void ready(breadth_fn *breadth, bool split, bool pearson, const double *local, lw_shape_ready *to)
 {
-    double slope[2];
-    if (!split) {
-        double area = local[0] * breadth(local[1], &slope[0]);
-        side at = fn(x, local[0], local[1]);
-        double value = at.height / area;
-        *d_x = at.d_x / area;
-        d_local[0] = at.d_width / area - value / local[0];
-        d_local[1] = at.d_form / area - value * local[0] * slope[0] / area;
+    to->split = split;
+    to->area = 0;
+    for (int k = 0; k < 2; k++) {
+        lw_shape_side *at = &to->side[k];
+        if (k == 1 && !split) {
+            *at = to->side[0];
+        } else {
+            at->width = local[k];
+            at->form = local[split ? 2 + k : 1];
+            at->breadth = breadth(at->form, &at->breadth_slope);
+            at->pearson = pearson ? 4 * (exp2(1 / at->form) - 1) : 0;
+        }
+        to->area += 0.5 * at->width * at->breadth;
+    }
+}
+
+typedef side side_fn(double x, const lw_shape_side *of);
+
+/* Unit area from two sides of equal height. */
+static double build(side_fn *fn, double x, const lw_shape_ready *of, double *d_x, double *d_local)
+{
+    int here = of->split && x >= 0 ? 1 : 0;
+    side at = fn(x, &of->side[here]);
+    double area = of->area, value = at.height / area;
+    *d_x = at.d_x / area;
+    if (!of->split) {
+        const lw_shape_side *s = &of->side[0];
+        d_local[0] = at.d_width / area - value / s->width;
+        d_local[1] = at.d_form / area - value * s->width * s->breadth_slope / area;
         return value;
     }
-    double b[2] = {breadth(local[2], &slope[0]), breadth(local[3], &slope[1])};
-    double area = 0.5 * (local[0] * b[0] + local[1] * b[1]);
-    int here = x < 0 ? 0 : 1;
-    side at = fn(x, local[here], local[2 + here]);
-    double value = at.height / area;
-    *d_x = at.d_x / area;
     for (int k = 0; k < 2; k++) {
-        d_local[k] = -value * 0.5 * b[k] / area + (k == here ? at.d_width / area : 0);
-        d_local[2 + k] = -value * 0.5 * local[k] * slope[k] / area + (k == here ? at.d_form / area : 0);
+        const lw_shape_side *s = &of->side[k];
+        d_local[k] = -value * 0.5 * s->breadth / area + (k == here ? at.d_width / area : 0);
+        d_local[2 + k] = -value * 0.5 * s->width * s->breadth_slope / area + (k == here ? at.d_form / area : 0);
     }
     return value;
 }
@@ -112,21 +126,29 @@ static void build_breadths(breadth_fn *breadth, bool split, const double *local,
     }
 }
 
-static double value_pseudo_voigt(double x, const double *local, double *d_x, double *d_local)
+static void ready_pseudo_voigt(const double *local, lw_shape_ready *to)
 {
-    return build(pseudo_voigt_side, pseudo_voigt_breadth, false, x, local, d_x, d_local);
+    ready(pseudo_voigt_breadth, false, false, local, to);
 }
-static double value_split_pseudo_voigt(double x, const double *local, double *d_x, double *d_local)
+static void ready_split_pseudo_voigt(const double *local, lw_shape_ready *to)
 {
-    return build(pseudo_voigt_side, pseudo_voigt_breadth, true, x, local, d_x, d_local);
+    ready(pseudo_voigt_breadth, true, false, local, to);
 }
-static double value_pearson(double x, const double *local, double *d_x, double *d_local)
+static void ready_pearson(const double *local, lw_shape_ready *to)
 {
-    return build(pearson_side, pearson_breadth, false, x, local, d_x, d_local);
+    ready(pearson_breadth, false, true, local, to);
 }
-static double value_split_pearson(double x, const double *local, double *d_x, double *d_local)
+static void ready_split_pearson(const double *local, lw_shape_ready *to)
 {
-    return build(pearson_side, pearson_breadth, true, x, local, d_x, d_local);
+    ready(pearson_breadth, true, true, local, to);
+}
+static double at_pseudo_voigt(double x, const lw_shape_ready *of, double *d_x, double *d_local)
+{
+    return build(pseudo_voigt_side, x, of, d_x, d_local);
+}
+static double at_pearson(double x, const lw_shape_ready *of, double *d_x, double *d_local)
+{
+    return build(pearson_side, x, of, d_x, d_local);
 }
 static void breadths_pseudo_voigt(const double *local, double *fwhm, double *breadth, double *d_fwhm, double *d_breadth)
 {
@@ -198,7 +220,8 @@ static const lw_line_shape pseudo_voigt = {.name = "pseudo_voigt",
                                       .local = {"fwhm", "eta"},
                                       .lower = {WIDTH_LEAST, 0},
                                       .upper = {INFINITY, 1.5},
-                                      .value = value_pseudo_voigt,
+                                      .ready = ready_pseudo_voigt,
+                                      .at = at_pseudo_voigt,
                                       .breadths = breadths_pseudo_voigt,
                                       .start = start_pseudo_voigt};
 static const lw_line_shape pearson7 = {.name = "pearson7",
@@ -207,7 +230,8 @@ static const lw_line_shape pearson7 = {.name = "pearson7",
                                   .local = {"fwhm", "m"},
                                   .lower = {WIDTH_LEAST, 0.6},
                                   .upper = {INFINITY, 50},
-                                  .value = value_pearson,
+                                  .ready = ready_pearson,
+                                  .at = at_pearson,
                                   .breadths = breadths_pearson,
                                   .start = start_pearson};
 static const lw_line_shape split_pseudo_voigt = {.name = "split_pseudo_voigt",
@@ -216,7 +240,8 @@ static const lw_line_shape split_pseudo_voigt = {.name = "split_pseudo_voigt",
                                             .local = {"fwhm left", "fwhm right", "eta left", "eta right"},
                                             .lower = {WIDTH_LEAST, WIDTH_LEAST, 0, 0},
                                             .upper = {INFINITY, INFINITY, 1.5, 1.5},
-                                            .value = value_split_pseudo_voigt,
+                                            .ready = ready_split_pseudo_voigt,
+                                            .at = at_pseudo_voigt,
                                             .breadths = breadths_split_pseudo_voigt,
                                             .start = start_split_pseudo_voigt};
 static const lw_line_shape split_pearson7 = {.name = "split_pearson7",
@@ -226,7 +251,8 @@ static const lw_line_shape split_pearson7 = {.name = "split_pearson7",
                                         .local = {"fwhm left", "fwhm right", "m left", "m right"},
                                         .lower = {WIDTH_LEAST, WIDTH_LEAST, 0.6, 0.6},
                                         .upper = {INFINITY, INFINITY, 50, 50},
-                                        .value = value_split_pearson,
+                                        .ready = ready_split_pearson,
+                                        .at = at_pearson,
                                         .breadths = breadths_split_pearson,
                                         .start = start_split_pearson};
 
@@ -235,14 +261,23 @@ const lw_line_shape *const lw_line_shape_list[] = {&voigt,    &gaussian,        
 const char *const lw_line_shape_names[] = {"voigt",    "gaussian",           "lorentzian",     "pseudo_voigt",
                                       "pearson7", "split_pseudo_voigt", "split_pearson7", NULL};
 
+double lw_line_shape_value(const lw_line_shape *shape, double x, const double *local, double *d_x, double *d_local)
+{
+    lw_shape_ready of;
+    shape->ready(local, &of);
+    return shape->at(x, &of, d_x, d_local);
+}
+
 void lw_line_shape_sum(const lw_line_shape *shape, size_t n, const double *x, const lw_voigt_node *node, size_t n_nodes,
                        const double *local, bool slopes, double *value, double *d_position, double *const *d_local)
 {
+    lw_shape_ready of;
+    shape->ready(local, &of);
     for (size_t i = 0; i < n; i++) {
         double sum = 0, sum_position = 0, sum_local[LW_LOCAL_MOST] = {0};
         for (size_t k = 0; k < n_nodes; k++) {
             double d_x, d[LW_LOCAL_MOST];
-            sum += node[k].weight * shape->value(x[i] - node[k].offset, local, &d_x, d);
+            sum += node[k].weight * shape->at(x[i] - node[k].offset, &of, &d_x, d);
             sum_position -= node[k].weight * d_x * (1 + node[k].offset_slope);
             for (int j = 0; j < shape->n_local; j++)
                 sum_local[j] += node[k].weight * d[j];

@@ -228,17 +228,17 @@ static void empirical_shapes(void)
         enum { STEPS = 200000 };
         for (int i = 0; i < STEPS; i++) {
             double a = (-0.5 + (i + 0.5) / STEPS) * M_PI, x = 0.1 * tan(a);
-            area += shape->value(x, local[k], &d_x, d) * 0.1 / (cos(a) * cos(a)) * M_PI / STEPS;
+            area += lw_line_shape_value(shape, x, local[k], &d_x, d) * 0.1 / (cos(a) * cos(a)) * M_PI / STEPS;
         }
         CHECK_NEAR(area, 1, 1e-4);
         double fwhm, breadth, d_fwhm[LW_LOCAL_MOST], d_breadth[LW_LOCAL_MOST];
         shape->breadths(local[k], &fwhm, &breadth, d_fwhm, d_breadth);
-        double top = shape->value(0, local[k], &d_x, d), edge[2];
+        double top = lw_line_shape_value(shape, 0, local[k], &d_x, d), edge[2];
         for (int side = 0; side < 2; side++) {
             double in = 0, out = reach;
             for (int i = 0; i < 100; i++) {
                 double x = 0.5 * (in + out);
-                if (shape->value(side ? x : -x, local[k], &d_x, d) > 0.5 * top)
+                if (lw_line_shape_value(shape, side ? x : -x, local[k], &d_x, d) > 0.5 * top)
                     in = x;
                 else
                     out = x;
@@ -254,8 +254,8 @@ static void empirical_shapes(void)
                 memcpy(down, local[k], sizeof down);
                 up[i] += h;
                 down[i] -= h;
-                shape->value(x, local[k], &d_x, d);
-                double difference = (shape->value(x, up, &d_x, unused) - shape->value(x, down, &d_x, unused)) / (2 * h);
+                lw_line_shape_value(shape, x, local[k], &d_x, d);
+                double difference = (lw_line_shape_value(shape, x, up, &d_x, unused) - lw_line_shape_value(shape, x, down, &d_x, unused)) / (2 * h);
                 CHECK_NEAR(d[i], difference, 1e-6 * (fabs(difference) + 1));
                 double fw, br[2];
                 shape->breadths(up, &fw, &br[0], unused, unused + 4);
