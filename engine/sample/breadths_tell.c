@@ -103,10 +103,11 @@ static void say(lw_node *remarks, lw_error *err, const char *format, ...)
     lw_add_text(remarks, NULL, text, err);
 }
 
-/* Directions of which two or more orders lie off the line to the same side by more than 3 u of their mean. */
-static void remark_directions(const lw_breadths *breadths, const lw_breadth_fit *fit, bool cubic,
-                              lw_node *remarks, lw_error *err)
+/* Directions of which two or more orders lie off the line to the same side by more than 3 u of their mean: how many. */
+static size_t remark_directions(const lw_breadths *breadths, const lw_breadth_fit *fit, bool cubic,
+                                lw_node *remarks, lw_error *err)
 {
+    size_t told = 0;
     for (size_t i = 0; i < breadths->n; i++) {
         int mine[3], other[3];
         lw_direction_of(breadths->profile[i], cubic, mine);
@@ -132,7 +133,42 @@ static void remark_directions(const lw_breadths *breadths, const lw_breadth_fit 
             "direction",
             orders, lw_hkl_text(mine[0], mine[1], mine[2], text, sizeof text), above > 0 ? "above" : "below",
             fabs(sum) / sqrt(weight));
+        told++;
     }
+    return told;
+}
+
+/* Lines of which the sample's share is less than half of the instrument's breadth, of those that know it. */
+static bool mostly_instrument(const lw_breadths *breadths)
+{
+    size_t narrow = 0;
+    for (size_t i = 0; i < breadths->n; i++) {
+        const lw_profile *profile = breadths->profile[i];
+        double per = profile->breadth_s.value > 0 ? profile->breadth_deg.value / profile->breadth_s.value : 0; /* deg nm */
+        narrow += breadths->beta[i] * per < 0.5 * profile->line->instrument_breadth_deg;
+    }
+    return 2 * narrow > breadths->n;
+}
+
+/* Shares below 0, and what would make them so. */
+static void remark_negative(const lw_breadths *breadths, const lw_breadth_fit *fit, bool directed, lw_node *remarks,
+                            lw_error *err)
+{
+    const char *instrument = "; these lines are mostly instrument: one taken as too broad (over-corrected) would do this";
+    if (fit->p[0] < 0)
+        say(remarks, err,
+            "the share of size is negative (%.1f u below 0): size does not broaden these lines measurably%s",
+            -fit->p[0] / sqrt(fit->covariance[0][0]),
+            mostly_instrument(breadths) ? instrument
+            : directed                  ? "; directions differ, and a line through all mixes them"
+                       : "; strain that falls with length makes breadths grow faster than s, which would do this too");
+    if (fit->p[1] < 0)
+        say(remarks, err, "the share of strain is negative (%.1f u below 0): breadths do not grow with s%s",
+            -fit->p[1] / sqrt(fit->covariance[1][1]),
+            mostly_instrument(breadths) ? instrument
+            : directed                  ? "; directions differ, and a line through all mixes them (see the directions by themselves)"
+            : fit->fit.scatter > 1      ? "; flat crystals or planar faults, which broaden some lines more, would do this"
+                                        : "; strain too small to be seen beside size would look like this");
 }
 
 /* A line whose own uncertainty is so small that the others hardly count. */
@@ -153,7 +189,7 @@ static void remark_weights(const lw_breadths *breadths, const lw_breadth_fit *fi
         return;
     const lw_reflection *r = &breadths->profile[at]->line->reflection;
     char text[24];
-    say(remarks, err, "line %s alone carries %.0f %% of the weight",
+    say(remarks, err, "line %s alone carries %.0f %% of the weight: what is told is told by it, and the others hardly test it",
         lw_hkl_text(r->h, r->k, r->l, text, sizeof text), 100 * most / all);
 }
 
@@ -161,16 +197,10 @@ void lw_breadths_remark(const lw_breadths *breadths, const lw_breadth_fit *fit, 
                         lw_error *err)
 {
     const lw_generalised_fit *f = &fit->fit;
-    if (fit->p[0] < 0)
-        say(remarks, err,
-            "the share of size is negative (%.1f u below 0): size does not broaden these lines measurably",
-            -fit->p[0] / sqrt(fit->covariance[0][0]));
-    else if (fit->size_volume.kind != LW_VALUE)
+    remark_negative(breadths, fit, remark_directions(breadths, fit, breadths->cubic, NULL, err) > 0, remarks, err);
+    if (fit->p[0] >= 0 && fit->size_volume.kind != LW_VALUE)
         say(remarks, err, "size broadening is below twice its uncertainty: a lower limit is given");
-    if (fit->p[1] < 0)
-        say(remarks, err, "the share of strain is negative (%.1f u below 0): breadths do not grow with s",
-            -fit->p[1] / sqrt(fit->covariance[1][1]));
-    else if (fit->strain_apparent.kind != LW_VALUE)
+    if (fit->p[1] >= 0 && fit->strain_apparent.kind != LW_VALUE)
         say(remarks, err, "strain broadening is below twice its uncertainty: an upper limit is given");
     if (f->degrees == 0)
         say(remarks, err,

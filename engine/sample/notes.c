@@ -125,17 +125,22 @@ static void about_methods(const lw_node *methods, lw_node *notes, lw_error *err)
 {
     if (methods == NULL)
         return;
-    bool large = false;
+    bool large = false, strained = false;
     for (const lw_node *m = methods->first; m != NULL; m = m->next) {
         const lw_node *size = lw_node_get(m, "size_volume"), *remarks = lw_node_get(m, "remarks");
         if (size != NULL && size->kind == LW_NODE_QUANTITY && size->quantity.kind == LW_VALUE &&
             size->quantity.value > SIZE_QUALITATIVE_NM)
             large = true;
+        strained = strained || lw_node_get(m, "strain_rms") != NULL;
         if (remarks == NULL)
             continue;
         for (const lw_node *remark = remarks->first; remark != NULL; remark = remark->next)
             say_once(methods, m, remark->text, notes, err);
     }
+    if (strained)
+        say(notes, err,
+            "strain from broadening is the spread of spacings and has no direction: whether lines are drawn or pressed on "
+            "the whole shows in their positions only");
     if (large)
         say(notes, err,
             "sizes above about %.0f nm are qualitative: they rest on small differences from the instrument's "

@@ -130,6 +130,24 @@ static const char *size_definition(const scherrer_options *given)
     }
 }
 
+/* What the constant chosen makes of the size. */
+static const char *meaning_of_K(const scherrer_options *given)
+{
+    switch (shape_of[given->shape]) {
+    case LW_SHAPE_COLUMN:
+        return "K = 1 on the integral breadth: the size is the volume-weighted column length; a sphere of diameter D reads as "
+               "3 D/4, a cube along its edge as the edge";
+    case LW_SHAPE_SPHERE:
+        return given->breadth == INTEGRAL
+                   ? "K = 1.0747 on the integral breadth: the size is the cube root of a sphere's volume, 0.806 of its diameter"
+                   : "K = 0.8920 on the FWHM: the size is the cube root of a sphere's volume, 0.806 of its diameter; it holds "
+                     "for spheres of one size, whose line is no Voigt";
+    default:
+        return "K depends on the line: the size is the cube root of the crystal's volume, for crystals of this shape and one "
+               "size";
+    }
+}
+
 static void remark(const lw_breadths *breadths, const lw_generalised_fit *fit, lw_arena *arena,
                    lw_node *remarks, lw_error *err)
 {
@@ -232,7 +250,9 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *o
     }
     lw_add_number(result, "scatter_factor", fit.scatter, err);
     list_lines(&breadths, m.K, given, result, err);
-    remark(&breadths, &fit, arena, lw_add_list(result, "remarks", err), err);
+    lw_node *remarks = lw_add_list(result, "remarks", err);
+    lw_add_text(remarks, NULL, meaning_of_K(given), err);
+    remark(&breadths, &fit, arena, remarks, err);
     return err->status;
 }
 

@@ -85,6 +85,13 @@ static void fields(lw_engine *engine)
     CHECK(hand_list_has(notes, "line 311: more than 20 %"));
     CHECK(hand_list_has(notes, "line 111: instrument times result does not give"));
     CHECK(hand_list_has(notes, "Scherrer: the lines' sizes disagree"));
+    CHECK(hand_list_has(notes, "Scherrer: K = 1 on the integral breadth"));
+    CHECK(hand_list_has(notes, "has no direction"));
+    CHECK(!hand_list_has(notes, "qualitative"));
+    make(140, 0.0005, 1e-5); /* beyond what a laboratory's instrument tells (common practice: 100 to 120 nm) */
+    results = lw_tree_new(&arena, &err);
+    CHECK(lw_separate(engine, &h.profiles, NULL, 0, results, &err) == LW_OK);
+    CHECK(hand_list_has(lw_node_get(results, "notes"), "sizes above about 100 nm are qualitative"));
     lw_arena_end(&arena);
 }
 

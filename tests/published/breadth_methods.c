@@ -324,7 +324,13 @@ static void limits(void)
     lw_quantity size = hand_quantity(node, "size_volume", NULL, NULL);
     CHECK(size.kind == LW_LOWER_LIMIT && size.confidence == 0.95);
     CHECK_RELATIVE(size.value, 1 / (quantile * u * sqrt(s1 * s1 + s2 * s2) / (s2 - s1)), 1e-9);
-    CHECK(hand_list_has(lw_node_get(node, "remarks"), "negative"));
+    CHECK(hand_list_has(lw_node_get(node, "remarks"), "share of size is negative"));
+    CHECK(hand_list_has(lw_node_get(node, "remarks"), "grow faster than s"));
+    /* the same beside an instrument three times as broad: that is named */
+    for (int i = 0; i < 2; i++)
+        h.line[i].instrument_breadth_deg = 3 * h.profile[i].breadth_deg.value;
+    node = run_choice("williamson_hall", "form", "lorentzian", NULL, NULL);
+    CHECK(hand_list_has(lw_node_get(node, "remarks"), "over-corrected"));
 
     /* breadths that fall with s: no form may fail, strain is a limit in all */
     hand_begin(&h, LW_CUBIC, COPPER, CU);
@@ -338,8 +344,34 @@ static void limits(void)
         CHECK(hand_quantity(node, "forms", forms[i], "size_volume").kind == LW_VALUE);
     }
     CHECK(hand_list_has(lw_node_get(node, "remarks"), "do not grow"));
+    CHECK(hand_list_has(lw_node_get(node, "remarks"), "too small to be seen"));
     node = run_with("halder_wagner", NULL);
     CHECK(hand_quantity(node, "strain_rms", NULL, NULL).kind == LW_UPPER_LIMIT);
+    for (int i = 0; i < 4; i++)
+        h.line[i].instrument_breadth_deg = 3 * h.profile[i].breadth_deg.value;
+    CHECK(hand_list_has(lw_node_get(run_with("williamson_hall", NULL), "remarks"), "over-corrected"));
+    /* fall and scatter: faults or shape; two orders of 100 above, two of 111 below: directions */
+    hand_begin(&h, LW_CUBIC, COPPER, CU);
+    for (int i = 1; i <= 4; i++)
+        hand_line(&h, i, 0, 1, 2.5 * i, 0.06 - 0.002 * i + (i % 2 == 0 ? 0.004 : 0), 0, 0, u);
+    hand_end(&h, 0);
+    CHECK(hand_list_has(lw_node_get(run_choice("williamson_hall", "form", "lorentzian", NULL, NULL), "remarks"), "planar faults"));
+    hand_begin(&h, LW_CUBIC, COPPER, CU);
+    for (int i = 0; i < 4; i++) {
+        int a = i / 2 + 1, b = i % 2 == 0 ? a : 0;
+        double s = sqrt(a * a + 2 * b * b) / 0.3615;
+        hand_line(&h, a, b, b, s, 0.06 - 0.001 * s + (b == 0 ? 0.006 : 0), 0, 0, u);
+    }
+    hand_end(&h, 0);
+    CHECK(hand_list_has(lw_node_get(run_choice("williamson_hall", "form", "lorentzian", NULL, NULL), "remarks"),
+                        "directions differ"));
+    /* one line known ten times better than the rest */
+    hand_begin(&h, LW_CUBIC, COPPER, CU);
+    for (int i = 1; i <= 4; i++)
+        hand_line(&h, i, 0, 0, 2.5 * i, 0.04 + 0.002 * i, 0, 0, i == 2 ? u / 10 : u);
+    hand_end(&h, 0);
+    CHECK(hand_list_has(lw_node_get(run_choice("williamson_hall", "form", "lorentzian", NULL, NULL), "remarks"),
+                        "line 200 alone carries 97 %"));
 
     /* one line whose breadth is a limit: a lower limit for its size */
     hand_begin(&h, LW_CUBIC, COPPER, CU);
@@ -369,6 +401,7 @@ static void scherrer(void)
     lw_quantity size = hand_quantity(node, "size_volume", NULL, NULL);
     CHECK_NEAR(size.value, 18.787, 5e-4);
     CHECK_RELATIVE(size.u, size.value / 50, 1e-12);
+    CHECK(hand_list_has(lw_node_get(node, "remarks"), "K = 1 on the integral breadth"));
     CHECK_NEAR(0.9 * size.value, 16.908, 5e-4);
     node = run_with("single_line_voigt", NULL);
     CHECK_NEAR(hand_quantity(node, "strain_apparent", NULL, NULL).value, 0.0059941, 5e-8);
@@ -376,6 +409,7 @@ static void scherrer(void)
 
     node = run_choice("scherrer", "shape", "sphere", NULL, NULL);
     CHECK_RELATIVE(hand_quantity(node, "size", NULL, NULL).value, 1.07466130 / beta, 1e-8);
+    CHECK(hand_list_has(lw_node_get(node, "remarks"), "0.806 of its diameter")); /* cube root of pi/6 */
     node = run_choice("scherrer", "shape", "cube", NULL, NULL);
     CHECK_RELATIVE(hand_quantity(node, "size", NULL, NULL).value, 1.060660 / beta, 1e-6);
     p->gauss_s.value = 0; /* a Lorentzian: FWHM = 2/pi of its integral breadth */
