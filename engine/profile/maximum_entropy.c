@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Maximum entropy: of all positive profiles f that give the data back with chi2 as noise alone would make it,
  * the one of greatest entropy sum (f - m - f ln(f/m)) against the completing shape m. f = m exp(theta) is
- * found by Newton's method, its weight alpha by bisection on chi2. Uncertainties are those of the posterior
- * distribution about its maximum (normal approximation). */
+ * found by Newton's method, its weight alpha by bisection on chi2. Uncertainties are those of the counts,
+ * propagated through the curvature at the maximum, and what the entropy keeps back. (The posterior's width,
+ * which is often given, takes every profile near the shape for possible: its intervals are too wide.) */
 #include "profile/grid.h"
 
 #include "numeric/cholesky.h"
@@ -118,11 +119,13 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     for (size_t j = 0; j < m; j++)
         for (size_t k = 0; k < m; k++)
             zn[j * m + k] = lw_dot(z + j * m, g.normal + k * m, m);
-    double share, bias, *c = lw_arena_copy(scratch, z, m * m, sizeof *z, err);
+    double share, bias, *c = lw_arena_take(scratch, m * m, sizeof *c, err);
+    for (size_t j = 0; j < m && c != NULL; j++)
+        for (size_t k = 0; k < m; k++)
+            c[j * m + k] = lw_dot(zn + j * m, z + k * m, m);
     if (c == NULL || (status = lw__add_background(job, &g, z, c, scratch, err)) != LW_OK)
         return LW_OUT_OF_MEMORY;
-    /* the posterior holds what the prior keeps back already */
-    answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err) - bias * bias;
+    answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err);
     lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn));
     if ((status = lw__add_standard(job, &g, s.x, z, c, answer, scratch, err)) != LW_OK)
         return status;
@@ -146,8 +149,6 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
 
 const lw_deconvolution lw_deconvolution_maximum_entropy = {
     .name = "maximum_entropy",
-    .source = "Skilling & Bryan (1984) Mon. Not. R. Astron. Soc. 211, 111; uncertainties: Gull (1989) in "
-              "Maximum Entropy and "
-              "Bayesian Methods, Kluwer, 53",
+    .source = "Skilling & Bryan (1984) Mon. Not. R. Astron. Soc. 211, 111",
     .by_lines = true,
     .run = run};

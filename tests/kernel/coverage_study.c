@@ -290,7 +290,7 @@ int main(int argc, char **argv)
                                    {"stokes", 1, 1},
                                    {"tikhonov", 1, 1},
                                    {"maximum_entropy", 1, 1},
-                                   {"richardson_lucy", 1, 5}};
+                                   {"richardson_lucy", 1, 3}};
     static const way by_spheres[] = {{"physical", 2, 1}, {"stokes", 2, 1}};
     for (int level = 0; level < 3; level++) {
         board b = {.n = 0};
