@@ -19,6 +19,7 @@ typedef struct evaluation {
     size_t m;              /* of a line */
     size_t border, nb, ng; /* row of the first background term; background terms; globals */
     size_t padded;         /* points, whole blocks */
+    double *square;        /* sum of weighted squares of the curve */
 } evaluation;
 
 /* What the lines far from a bundle give at its nodes, and the sums over its points on the way back to them. */
@@ -205,6 +206,8 @@ static void take_residual(const evaluation *e, block *k)
         k->weighted[i] = k->weight[i] * residual[i];
     }
     e->normal->chi2 += block_dot(residual, k->weighted);
+    multiply(k->weight, k->curve, residual);
+    *e->square += block_dot(residual, k->curve);
 }
 
 /* Hands sums at a block's nodes on to the nodes of its bundle. */
@@ -372,6 +375,8 @@ lw_status LW_RUNG_EVALUATE(void *user, const double *p, bool want_normal, lw_nor
                     .ng = model->n_globals,
                     .padded = model->n_blocks * LW_BLOCK};
     normal->chi2 = 0;
+    double square = 0;
+    e.square = &square;
     if (!lw_model_set_lines(model, p)) {
         normal->chi2 = INFINITY;
         return LW_OK;
@@ -393,5 +398,8 @@ lw_status LW_RUNG_EVALUATE(void *user, const double *p, bool want_normal, lw_nor
     }
     if (!isfinite(normal->chi2))
         normal->chi2 = INFINITY;
+    /* a value of the curve is sure to a part in 1e13 of it */
+    const double unsure = 1e-13;
+    normal->rounding = unsure * (2 * sqrt(square * normal->chi2) + unsure * square);
     return lw_engine_poll(model->engine, err);
 }

@@ -150,6 +150,7 @@ static lw_status evaluate(const lw_problem *problem, const double *p, bool want_
                           lw_fit_outcome *outcome, lw_error *err)
 {
     normal->chi2 = INFINITY;
+    normal->rounding = 0;
     if (want_normal) {
         memset(normal->h, 0, problem->n * problem->n * sizeof *normal->h);
         memset(normal->g, 0, problem->n * sizeof *normal->g);
@@ -159,6 +160,12 @@ static lw_status evaluate(const lw_problem *problem, const double *p, bool want_
     if (status == LW_OK && (!isfinite(normal->chi2) || (want_normal && !finite_normal(normal))))
         normal->chi2 = INFINITY;
     return status;
+}
+
+/* Whether a fall that was foretold is not worth having, or can't be told from rounding. */
+static bool is_nothing(const lw_normal *at, double fall, double tolerance, double chi2_start)
+{
+    return fall <= tolerance * at->chi2 || fall <= 1e-22 * chi2_start || fall <= at->rounding;
 }
 
 /* Largest step in units of 1/sqrt(diagonal of H), and whether any parameter moved beyond rounding. */
@@ -210,8 +217,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
             /* a heavily damped step that rounds away proves nothing: the undamped one has to */
             if (damping <= 1e-3 || s->at.chi2 == 0 || !find_step(s, p, UNDAMPED) ||
                 !measure_step(s, p, outcome) ||
-                predicted_fall(&s->at, s->step) <= control->chi2_tolerance * s->at.chi2 ||
-                predicted_fall(&s->at, s->step) <= 1e-22 * chi2_start) {
+                is_nothing(&s->at, predicted_fall(&s->at, s->step), control->chi2_tolerance, chi2_start)) {
                 outcome->converged = true;
                 outcome->reason = "the step is below rounding";
             } else {
@@ -276,7 +282,7 @@ static lw_status iterate(solver *s, const lw_fit_control *control, double *p, lw
         if (rejected == REJECTED_MOST) {
             bool done = find_step(s, p, UNDAMPED);
             double left = done ? predicted_fall(&s->at, s->step) : INFINITY;
-            outcome->converged = left <= control->chi2_tolerance * s->at.chi2 || left <= 1e-22 * chi2_start;
+            outcome->converged = is_nothing(&s->at, left, control->chi2_tolerance, chi2_start);
             outcome->reason =
                 outcome->converged ? "chi-square no longer falls" : "no step lowers chi-square further";
             break;

@@ -18,6 +18,7 @@ typedef struct lw_normal {
     double *h;   /* J' W J */
     double *g;   /* J' W r, r = data - model: the downhill direction */
     double chi2; /* r' W r */
+    double rounding; /* how far rounding may put chi2 off; left at 0 where the problem does not know */
 } lw_normal;
 
 typedef struct lw_problem {

@@ -168,6 +168,77 @@ static void bounds_do_not_stick(void)
     }
 }
 
+/* Exact data: the fit ends, and with the truth. Chi-square is then nothing but rounding, from which no step can be told
+ * to lower it; weak, strong, and without a background, where the weights differ the most. */
+static void exact_data(void)
+{
+    static const double area[4] = {1, 1e-4, 1, 1e6}, level[4] = {1, 1e-4, 0, 1};
+    for (int which = 0; which < 4; which++)
+        for (int shape = 0; shape < 7; shape++)
+            for (int weights = 0; weights < 2; weights++) {
+                made m;
+                lw_error err = LW_ERROR_NONE;
+                lw_scan *scan;
+                three_lines(&m, shape);
+                for (int k = 0; k < 3; k++) {
+                    m.area[k] *= area[which];
+                    m.background[k] *= level[which];
+                }
+                lw_fit_options options = made_options(&m);
+                options.weights = weights;
+                lw_lines *lines = fit(&m, 0, &options, &scan, &err);
+                CHECK(lines != NULL);
+                for (size_t k = 0; lines != NULL && k < 3; k++) {
+                    const lw_line *line = &lines->line[k];
+                    CHECK_NEAR(line->two_theta.value, m.position[k], 1e-7);
+                    CHECK_RELATIVE(line->area.value, m.area[k], 1e-6);
+                    for (size_t j = 0; j < (size_t)lw_line_shape_list[shape]->n_local; j++)
+                        CHECK_NEAR(lines->parameter[line->at_position + 2 + j], m.local[k][j],
+                                   1e-6 * fmax(m.local[k][j], 1e-3));
+                }
+                lw_lines_free(lines);
+                lw_scan_free(scan);
+            }
+}
+
+/* Widths that the parabola in tan(theta) can follow only by going below zero between them: the fit ends, on the bound,
+ * with a function that is negative nowhere. */
+static void width_function_on_its_bound(void)
+{
+    made m = {.shape = 1, .n = 6001, .n_lines = 7, .low = 20, .step = 0.02,
+              .position = {25.3, 38.1, 51.7, 66.2, 82.9, 101.4, 123.8},
+              .area = {900, 900, 900, 900, 900, 900, 900}, .background = {150, -30, 10}};
+    static const double fwhm[7] = {0.32, 0.22, 0.1, 0.045, 0.05, 0.2, 0.5};
+    for (size_t k = 0; k < m.n_lines; k++)
+        m.local[k][0] = fwhm[k] * fwhm[k];
+    made_radiation(&m, false);
+    lw_error err = LW_ERROR_NONE;
+    lw_scan *scan;
+    lw_fit_options options = made_options(&m);
+    options.shape = 0;
+    options.widths = 2;
+    options.weights = 1;
+    lw_lines *lines = fit(&m, 23, &options, &scan, &err);
+    char text[1000];
+    if (lines == NULL)
+        fprintf(stderr, "%s\n", lw_error_text(&err, text, sizeof text));
+    CHECK(lines != NULL);
+    if (lines != NULL) {
+        const double *value = lines->smooth.value;
+        CHECK(value[LW_U] > 0 && value[LW_V] < 0);
+        double bottom = value[LW_W] - value[LW_V] * value[LW_V] / (4 * value[LW_U]);
+        CHECK_NEAR(bottom, 0, 1e-9);
+        for (double angle = 15; angle < 150; angle += 0.5) {
+            double t = tan(angle * M_PI / 360);
+            CHECK(value[LW_U] * t * t + value[LW_V] * t + value[LW_W] > -1e-12);
+        }
+        for (size_t k = 0; k < m.n_lines; k++)
+            CHECK_NEAR(lines->line[k].two_theta.value, m.position[k], 0.02);
+    }
+    lw_lines_free(lines);
+    lw_scan_free(scan);
+}
+
 /* A reflection without intensity and one on top of another: reported, and the others are as good as without them. */
 static void lines_that_are_not_there(void)
 {
@@ -320,6 +391,8 @@ int main(void)
     scatter_is_as_stated();
     counting_limits();
     bounds_do_not_stick();
+    exact_data();
+    width_function_on_its_bound();
     lines_that_are_not_there();
     refusals();
     refused_memory();
