@@ -56,7 +56,7 @@ lw_status lw_breadths_gather(const lw_profiles *profiles, lw_arena *arena, lw_br
 {
     size_t all = profiles->n, n = 0;
     *breadths = (lw_breadths){.values_only = profiles->values_only};
-    double *positions = lw_position_covariance(profiles, NULL, arena, err);
+    double *positions = lw_position_covariance(profiles, NULL, 0, arena, err);
     size_t *row = lw_arena_take(arena, all, sizeof *row, err);
     breadths->profile = lw_arena_take(arena, all, sizeof *breadths->profile, err);
     breadths->s = lw_arena_take(arena, all, sizeof(double), err);

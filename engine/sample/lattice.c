@@ -1,43 +1,43 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Lattice parameters of the powder from the positions of its lines. */
-#include "sample/cell_parameters.h"
-#include "sample/generalised.h"
+#include "sample/lattice_fit.h"
 #include "sample/method.h"
-#include "sample/positions.h"
 
 #include <math.h>
 #include <stddef.h>
 #include <stdio.h>
 #include <string.h>
 
-#define RADIAN (3.14159265358979323846 / 180)
-#define SHARED_MOST 0.98 /* multiple correlation above which a displacement can't be told from the cell */
-#define LINES_FOR_DISPLACEMENT 4
-#define FALL_CHANCE                                                                                          \
-    1e-3 /* a fall of chi-square by one parameter rarer than this is evidence of a displacement */
 #define BREADTHS_TO_END                                                                                      \
     2.0 /* a line nearer to an end of the scan has a tail cut off, which pulls its position */
 
 typedef struct lattice_options {
-    int displacement;
+    int displacement, transparency;
 } lattice_options;
 
-enum { AUTO, YES, NO };
-static const char *const displacement_choices[] = {"auto", "yes", "no", NULL};
+/* in the order of LW_LATTICE_AUTO ... */
+static const char *const own_choices[] = {"auto", "yes", "no", NULL};
 
 static const lw_option options[] = {{.key = "displacement",
                                      .kind = LW_OPTION_CHOICE,
                                      .standard = "auto",
-                                     .choices = displacement_choices,
+                                     .choices = own_choices,
                                      .offset = offsetof(lattice_options, displacement),
                                      .help = "refine how far this specimen's surface lies from the axis; "
                                              "auto: for flat specimens, where the lines can tell it from the "
                                              "cell or do not fit without it"},
+                                    {.key = "transparency",
+                                     .kind = LW_OPTION_CHOICE,
+                                     .standard = "auto",
+                                     .choices = own_choices,
+                                     .offset = offsetof(lattice_options, transparency),
+                                     .help = "refine this specimen's transparency in place of the standard's; auto: for flat "
+                                             "specimens, beside the displacement, where the lines do not fit without it"},
                                     LW_OPTIONS_END};
 
 static void defaults(void *target)
 {
-    *(lattice_options *)target = (lattice_options){.displacement = AUTO};
+    *(lattice_options *)target = (lattice_options){.displacement = LW_LATTICE_AUTO};
 }
 
 static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
@@ -53,183 +53,6 @@ static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
     return why;
 }
 
-/* Calculated positions: cell, then what the calibration and the specimen add. */
-typedef struct positions {
-    const lw_profiles *profiles;
-    size_t n;
-    const size_t *use; /* [n] which profiles take part */
-    lw_cell_free free;
-    lw_cell cell;
-    double wavelength;
-    const lw_aberration *displacement; /* refined, or NULL */
-} positions;
-
-static double radius_of(const positions *m)
-{
-    return m->profiles->calibration->aberrations.radius_mm;
-}
-
-/* Shift at a true 2theta by the calibration and by this specimen's displacement (last of p), and its
- * derivative to 2theta by a central difference: without it, a short range converges slowly. */
-static double shift_at(const positions *m, const double *p, double two_theta, double *derivative)
-{
-    static const double step = 0.01;
-    double at[3];
-    for (int i = 0; i < 3; i++) {
-        double x = two_theta + (i - 1) * step;
-        at[i] = lw_position_shift(m->profiles, m->displacement, x);
-        if (m->displacement != NULL)
-            at[i] += p[m->free.n] * m->displacement->slope(x, radius_of(m));
-    }
-    *derivative = (at[2] - at[0]) / (2 * step);
-    return at[1];
-}
-
-static void model(void *user, const double *p, double *value, double *slopes, double *x_slope)
-{
-    positions *m = user;
-    (void)x_slope;
-    size_t n_free = m->free.n, columns = n_free + (m->displacement != NULL);
-    lw_cell_free_set(&m->free, p, &m->cell);
-    for (size_t i = 0; i < m->n; i++) {
-        const lw_reflection *r = &m->profiles->profile[m->use[i]].line->reflection;
-        double s = lw_cell_s(&m->cell, r->h, r->k, r->l), d[6];
-        double sine = 0.5 * m->wavelength * s;
-        if (!(sine > 0 && sine < 1)) {
-            value[i] = NAN;
-            continue;
-        }
-        double theta = asin(sine) / RADIAN, two_theta = 2 * theta;
-        double d_shift, shift = shift_at(m, p, two_theta, &d_shift);
-        double u_scattering;
-        value[i] = two_theta + shift + lw_position_scattering(m->profiles, m->use[i], &u_scattering);
-        lw_cell_s_slopes(&m->cell, r->h, r->k, r->l, d);
-        double per_s = (1 + d_shift) / lw_position_s_slope(s, theta);
-        for (size_t j = 0; j < n_free; j++)
-            for (int k = 0; k < 6; k++)
-                if (m->free.moves[j][k])
-                    slopes[i * columns + j] += per_s * d[k];
-        if (m->displacement != NULL)
-            slopes[i * columns + n_free] = m->displacement->slope(two_theta, radius_of(m));
-    }
-}
-
-typedef struct answer {
-    double p[LW_GENERALISED_MOST];
-    lw_generalised_fit fit;
-    bool displaced;  /* the displacement was refined */
-    const char *why; /* what was decided about it, for the remarks, or NULL */
-} answer;
-
-static const lw_line *line_at(const positions *m, size_t i)
-{
-    return m->profiles->profile[m->use[i]].line;
-}
-
-/* Fits the cell, with this specimen's displacement (not NULL) or without. */
-static lw_status fit_cell(positions *m, const lw_aberration *displacement, lw_arena *arena, answer *out,
-                          lw_error *err)
-{
-    size_t n = m->n;
-    m->displacement = displacement;
-    double *y = lw_arena_take(arena, n, sizeof *y, err);
-    double *covariance = lw_arena_take(arena, n * n, sizeof *covariance, err);
-    const double *all = lw_position_covariance(m->profiles, displacement, arena, err);
-    if (y == NULL || covariance == NULL || all == NULL)
-        return LW_OUT_OF_MEMORY;
-    for (size_t i = 0; i < n; i++) {
-        y[i] = line_at(m, i)->two_theta.value;
-        for (size_t j = 0; j < n; j++)
-            covariance[i * n + j] = all[m->use[i] * m->profiles->n + m->use[j]];
-    }
-    m->cell = m->profiles->lines->material->cell;
-    memset(out, 0, sizeof *out);
-    out->displaced = displacement != NULL;
-    lw_cell_free_read(&m->free, &m->cell, out->p);
-    lw_generalised problem = {.n = n,
-                              .m = m->free.n + (displacement != NULL),
-                              .y = y,
-                              .covariance = covariance,
-                              .model = model,
-                              .user = m};
-    size_t weakest = 0;
-    lw_error each = LW_ERROR_NONE;
-    lw_status status = lw_generalised_solve(&problem, arena, out->p, &out->fit, &weakest, &each);
-    if (status == LW_NOT_SUPPORTED && n >= problem.m && out->fit.iterations == 0 && weakest > 0)
-        return lw_fail(err, status, "measure lines of other directions",
-                       "the lines measured do not determine %s of the cell",
-                       weakest < m->free.n ? m->free.name[weakest] : "displacement beside the parameters");
-    if (status != LW_OK)
-        *err = each;
-    return status;
-}
-
-static bool is_flat(const lw_calibration *calibration)
-{
-    return calibration != NULL && strcmp(calibration->geometry, "reflection") == 0;
-}
-
-/* Chance that chi-square falls as far as from `without` to `with` though the specimen lies where the standard
- * lay. The fall counts in units of what scatters about the better fit (F test with one parameter, its
- * denominator's own scatter left out, which the strict limit covers). */
-static double chance_of_fall(const answer *without, const answer *with)
-{
-    double scatter = with->fit.scatter;
-    return lw_generalised_p((without->fit.chi2 - with->fit.chi2) / (scatter * scatter), 1);
-}
-
-/* Chooses between the two fits by what the lines can tell and by how well each stands. */
-static lw_status choose(positions *m, const lw_aberration *displacement, lw_arena *arena, answer *out,
-                        lw_error *err)
-{
-    answer with, without;
-    lw_error each = LW_ERROR_NONE;
-    size_t needed = m->free.n + 2 > LINES_FOR_DISPLACEMENT ? m->free.n + 2 : LINES_FOR_DISPLACEMENT;
-    lw_status status = m->n < needed ? LW_NOT_SUPPORTED : fit_cell(m, displacement, arena, &with, &each);
-    if (status == LW_OUT_OF_MEMORY) {
-        *err = each;
-        return status;
-    }
-    if (status == LW_OK && with.fit.shared[m->free.n] < SHARED_MOST) {
-        *out = with;
-        out->why = "this specimen's displacement was refined";
-        return LW_OK;
-    }
-    lw_status plain = fit_cell(m, NULL, arena, &without, err);
-    if (plain != LW_OK)
-        return plain;
-    if (status == LW_OK && chance_of_fall(&without, &with) < FALL_CHANCE) {
-        *out = with;
-        m->displacement = displacement;
-        out->why = "this specimen's displacement was refined: the lines hardly tell it from the cell, which "
-                   "enlarges the uncertainty, but do not fit without it";
-        return LW_OK;
-    }
-    *out = without;
-    out->why = m->n < needed
-                   ? "too few lines to refine this specimen's displacement: the calibration's was used, "
-                     "a difference is not in the uncertainty"
-                   : "the lines cannot tell this specimen's displacement from the cell and fit without "
-                     "it: the calibration's was used, a difference is not in the uncertainty";
-    return LW_OK;
-}
-
-static lw_status decide(positions *m, int wanted, lw_arena *arena, answer *out, lw_error *err)
-{
-    const lw_calibration *calibration = m->profiles->calibration;
-    const lw_aberration *displacement = lw_aberration_named("displacement");
-    if (wanted == YES && (calibration == NULL || displacement == NULL))
-        return lw_fail(err, LW_NOT_SUPPORTED, "give a calibration",
-                       "the specimen's displacement needs the goniometer radius of a calibration");
-    if (wanted == AUTO && displacement != NULL && is_flat(calibration))
-        return choose(m, displacement, arena, out, err);
-    lw_status status = fit_cell(m, wanted == YES ? displacement : NULL, arena, out, err);
-    if (wanted == NO && is_flat(calibration))
-        out->why =
-            "this specimen was taken to lie where the standard lay; a difference is not in the uncertainty";
-    return status;
-}
-
 /* Whether a line's tails were measured on both sides. */
 static bool is_whole(const lw_profiles *profiles, const lw_line *line)
 {
@@ -242,7 +65,7 @@ static bool is_whole(const lw_profiles *profiles, const lw_line *line)
 }
 
 /* The fit with the lines that are whole; with all lines where those do not suffice. */
-static lw_status fit_whole(positions *m, int wanted, lw_arena *arena, answer *out, lw_error *err)
+static lw_status fit_whole(lw_lattice *m, const lattice_options *o, lw_arena *arena, lw_lattice_answer *out, lw_error *err)
 {
     size_t n = m->profiles->n, whole = 0;
     size_t *use = lw_arena_take(arena, n, sizeof *use, err);
@@ -255,7 +78,7 @@ static lw_status fit_whole(positions *m, int wanted, lw_arena *arena, answer *ou
     m->n = whole;
     if (whole < n && whole > m->free.n) {
         lw_error each = LW_ERROR_NONE;
-        lw_status status = decide(m, wanted, arena, out, &each);
+        lw_status status = lw__lattice_fit(m, o->displacement, o->transparency, arena, out, &each);
         if (status == LW_OK)
             return LW_OK;
         if (status != LW_NOT_SUPPORTED) {
@@ -266,11 +89,11 @@ static lw_status fit_whole(positions *m, int wanted, lw_arena *arena, answer *ou
     for (size_t i = 0; i < n; i++)
         use[i] = i;
     m->n = n;
-    return decide(m, wanted, arena, out, err);
+    return lw__lattice_fit(m, o->displacement, o->transparency, arena, out, err);
 }
 
 /* Volume with its uncertainty; the slopes by central differences over a millionth. */
-static lw_quantity volume_of(const positions *m, const answer *a)
+static lw_quantity volume_of(const lw_lattice *m, const lw_lattice_answer *a)
 {
     double slope[LW_CELL_FREE_MOST], variance = 0;
     lw_cell cell = m->cell;
@@ -291,7 +114,7 @@ static lw_quantity volume_of(const positions *m, const answer *a)
     return lw_quantity_of(lw_cell_volume(&cell), sqrt(fmax(0, variance)) * a->fit.scatter, "nm^3");
 }
 
-static void tell_parameters(const positions *m, const answer *a, lw_node *result, lw_error *err)
+static void tell_parameters(const lw_lattice *m, const lw_lattice_answer *a, lw_node *result, lw_error *err)
 {
     const lw_cell *stated = &m->profiles->lines->material->cell;
     double start[LW_CELL_FREE_MOST];
@@ -320,7 +143,7 @@ static void tell_parameters(const positions *m, const answer *a, lw_node *result
     }
 }
 
-static bool takes_part(const positions *m, size_t profile)
+static bool takes_part(const lw_lattice *m, size_t profile)
 {
     for (size_t i = 0; i < m->n; i++)
         if (m->use[i] == profile)
@@ -329,11 +152,11 @@ static bool takes_part(const positions *m, size_t profile)
 }
 
 /* The lines that took part; those that did not are named in the remarks. */
-static void tell_lines(const positions *m, const answer *a, lw_node *result, lw_error *err)
+static void tell_lines(const lw_lattice *m, const lw_lattice_answer *a, lw_node *result, lw_error *err)
 {
     lw_node *list = lw_add_list(result, "lines", err);
     for (size_t i = 0; i < m->n; i++) {
-        const lw_line *line = line_at(m, i);
+        const lw_line *line = lw__lattice_line(m, i);
         const lw_reflection *r = &line->reflection;
         char text[24];
         lw_node *node = lw_add_group(list, NULL, err);
@@ -346,7 +169,7 @@ static void tell_lines(const positions *m, const answer *a, lw_node *result, lw_
 }
 
 /* Names the lines whose tails are cut off, and what was done with them. */
-static void tell_cut(const positions *m, lw_node *remarks, lw_error *err)
+static void tell_cut(const lw_lattice *m, lw_node *remarks, lw_error *err)
 {
     char names[160] = "", hkl[24], text[320];
     size_t used = 0, cut = 0;
@@ -371,13 +194,13 @@ static void tell_cut(const positions *m, lw_node *remarks, lw_error *err)
 }
 
 /* Says so where the shift by the atoms' scattering is more than half of a position's uncertainty. */
-static void tell_scattering(const positions *m, lw_node *remarks, lw_error *err)
+static void tell_scattering(const lw_lattice *m, lw_node *remarks, lw_error *err)
 {
     double u, largest = 0;
     bool matters = false;
     for (size_t i = 0; i < m->n; i++) {
         double shift = lw_position_scattering(m->profiles, m->use[i], &u);
-        matters |= fabs(shift) > 0.5 * line_at(m, i)->two_theta.u;
+        matters |= fabs(shift) > 0.5 * lw__lattice_line(m, i)->two_theta.u;
         largest = fmax(largest, fabs(shift));
     }
     if (!matters)
@@ -391,19 +214,44 @@ static void tell_scattering(const positions *m, lw_node *remarks, lw_error *err)
     lw_add_text(remarks, NULL, text, err);
 }
 
-static void tell(const positions *m, const answer *a, lw_node *result, lw_error *err)
+/* What was refined of the specimen beside the cell, and how evidence chose. */
+static void tell_own(const lw_lattice *m, const lw_lattice_answer *a, lw_node *result, lw_error *err)
+{
+    const lw_generalised_fit *fit = &a->fit;
+    size_t height = lw__lattice_row(m, a, "displacement"), depth = lw__lattice_row(m, a, "transparency");
+    lw_add_flag(result, "displacement_refined", height != LW_NO_PARAMETER, err);
+    for (size_t k = 0; k < a->n_own; k++) {
+        size_t at = m->free.n + k;
+        lw_add_quantity(result, a->own[k]->name,
+                        lw_quantity_of(a->p[at], sqrt(fit->covariance[at][at]) * fit->scatter, a->own[k]->unit),
+                        a->own[k]->definition, err);
+        if (at == height)
+            lw_add_number(result, "displacement_correlation", fit->shared[at], err);
+    }
+    if (depth != LW_NO_PARAMETER && height != LW_NO_PARAMETER) {
+        lw_add_number(result, "transparency_correlation", fit->shared[depth], err);
+        lw_add_number(result, "displacement_with_transparency",
+                      fit->covariance[height][depth] / sqrt(fit->covariance[height][height] * fit->covariance[depth][depth]), err);
+    }
+    lw_node *list = a->n_tried > 0 ? lw_add_list(result, "tried", err) : NULL;
+    double best = INFINITY;
+    for (size_t i = 0; i < a->n_tried; i++)
+        best = fmin(best, a->tried[i].criterion);
+    for (size_t i = 0; i < a->n_tried && isfinite(best); i++) {
+        lw_node *row = lw_add_group(list, NULL, err);
+        lw_add_text(row, "refined", a->tried[i].refined[0] != '\0' ? a->tried[i].refined : "the cell alone", err);
+        lw_add_number(row, "chi2", a->tried[i].chi2, err);
+        if (isfinite(a->tried[i].criterion))
+            lw_add_number(row, "aicc_above_best", a->tried[i].criterion - best, err);
+    }
+}
+
+static void tell(const lw_lattice *m, const lw_lattice_answer *a, lw_node *result, lw_error *err)
 {
     const lw_profiles *profiles = m->profiles;
     const lw_generalised_fit *fit = &a->fit;
     tell_parameters(m, a, result, err);
-    lw_add_flag(result, "displacement_refined", a->displaced, err);
-    if (a->displaced) {
-        size_t at = m->free.n;
-        lw_add_quantity(result, "displacement",
-                        lw_quantity_of(a->p[at], sqrt(fit->covariance[at][at]) * fit->scatter, "mm"),
-                        m->displacement->definition, err);
-        lw_add_number(result, "displacement_correlation", fit->shared[at], err);
-    }
+    tell_own(m, a, result, err);
     lw_add_quantity(result, "wavelength", lw_quantity_of(m->wavelength, 0, "nm"),
                     "Wavelength that the positions refer to; its own uncertainty is not in the cell's.", err);
     lw_add_number(result, "chi2", fit->chi2, err);
@@ -417,6 +265,8 @@ static void tell(const positions *m, const answer *a, lw_node *result, lw_error 
     lw_node *remarks = lw_add_list(result, "remarks", err);
     if (a->why != NULL)
         lw_add_text(remarks, NULL, a->why, err);
+    if (a->why_deep != NULL)
+        lw_add_text(remarks, NULL, a->why_deep, err);
     tell_cut(m, remarks, err);
     tell_scattering(m, remarks, err);
     if (fit->degrees > 0 && fit->scatter > 1 && fit->p < 0.01) {
@@ -437,11 +287,11 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
     const lattice_options *o = given;
     const lw_radiation *radiation =
         profiles->calibration != NULL ? &profiles->calibration->radiation : &profiles->lines->radiation;
-    positions m = {.profiles = profiles,
+    lw_lattice m = {.profiles = profiles,
                    .free = lw_cell_free_of(profiles->lines->material),
                    .wavelength = lw_radiation_wavelength(radiation)};
-    answer a;
-    lw_status status = fit_whole(&m, o->displacement, arena, &a, err);
+    lw_lattice_answer a;
+    lw_status status = fit_whole(&m, o, arena, &a, err);
     if (status == LW_OK) {
         tell(&m, &a, result, err);
         status = err->status;

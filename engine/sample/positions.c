@@ -6,8 +6,16 @@
 #define PI 3.14159265358979323846
 #define RADIAN (PI / 180)
 
-double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration *without, lw_arena *arena,
-                               lw_error *err)
+static bool is_among(const lw_aberration *kind, const lw_aberration *const *list, size_t n)
+{
+    for (size_t i = 0; i < n; i++)
+        if (list[i] == kind)
+            return true;
+    return false;
+}
+
+double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration *const *without, size_t n_without,
+                               lw_arena *arena, lw_error *err)
 {
     size_t n = profiles->n;
     const lw_lines *lines = profiles->lines;
@@ -26,7 +34,7 @@ double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration 
                 sum = a->two_theta.u * a->two_theta.u;
             for (size_t k = 0; set != NULL && k < set->n; k++)
                 for (size_t l = 0; l < set->n; l++)
-                    if (set->kind[k] != without && set->kind[l] != without)
+                    if (!is_among(set->kind[k], without, n_without) && !is_among(set->kind[l], without, n_without))
                         sum += set->kind[k]->slope(a->two_theta.value, set->radius_mm) *
                                set->covariance[k][l] *
                                set->kind[l]->slope(b->two_theta.value, set->radius_mm);
@@ -38,14 +46,15 @@ double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration 
     return c;
 }
 
-double lw_position_shift(const lw_profiles *profiles, const lw_aberration *without, double two_theta_deg)
+double lw_position_shift(const lw_profiles *profiles, const lw_aberration *const *without, size_t n_without,
+                         double two_theta_deg)
 {
     double sum = 0;
     if (profiles->calibration == NULL)
         return 0;
     const lw_aberrations *set = &profiles->calibration->aberrations;
     for (size_t k = 0; k < set->n; k++)
-        if (set->kind[k] != without)
+        if (!is_among(set->kind[k], without, n_without))
             sum += set->value[k] * set->kind[k]->slope(two_theta_deg, set->radius_mm);
     return sum;
 }

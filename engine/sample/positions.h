@@ -7,14 +7,15 @@
 
 /* Covariance [n*n] of the profiles' positions, deg^2 of 2theta: the fit's (lines->covariance, else the
  * variance of each position), the calibration's aberrations and the scattering, which move all lines
- * together. Given: without an aberration whose uncertainty is left out because the sample's own is refined,
- * or NULL */
-double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration *without, lw_arena *arena,
-                               lw_error *err);
+ * together. Given: without[n_without] aberrations whose uncertainty is left out because the sample's own are
+ * refined */
+double *lw_position_covariance(const lw_profiles *profiles, const lw_aberration *const *without, size_t n_without,
+                               lw_arena *arena, lw_error *err);
 
-/* Shift of a line at a true 2theta by the calibration's aberrations, degrees, without one of them (or NULL).
- * 0 without a calibration. */
-double lw_position_shift(const lw_profiles *profiles, const lw_aberration *without, double two_theta_deg);
+/* Shift of a line at a true 2theta by the calibration's aberrations, degrees, without some of them. 0 without
+ * a calibration. */
+double lw_position_shift(const lw_profiles *profiles, const lw_aberration *const *without, size_t n_without,
+                         double two_theta_deg);
 
 /* Shift of a broad line by the atoms' scattering, which falls while the line is crossed, degrees; *u its
  * standard uncertainty, common to all lines. A line of integral breadth b (in s) under a factor of

@@ -127,6 +127,25 @@ describe("the optical profile", function()
     assert.error_matches(function() optical:for_specimen { atenuation = 1 } end, "attenuation")
   end)
 
+  it("lets silicon's lines tell its transparency where nobody did", function()
+    local scan = lw.read_scan(helper.root .. "/tests/data/raytraced/si.xy", { radiation = "Cu Ka" })
+    for _, profile in ipairs { "empirical", "optical" } do
+      local instrument = calibrate("lab6_after_service", { profile = profile })
+      local lines = lw.fit_lines(scan, lw.standard("si-640f"):reflections(scan), { instrument = instrument })
+      local results = lw.separate(lw.deconvolve(lines), { methods = { "scherrer" } })
+      local lattice = results.lattice
+      -- as traced (tests/data/raytraced/si.truth.json): a 0.543114 nm, displacement -0.012 mm, 7.5 mm^-1
+      assert.is_near(0.543114, lattice.a.value, 30e-6 * 0.543114, profile)
+      assert.is_true(math.abs(lattice.a:pull(0.543114)) < 3, profile)
+      assert.is_true(math.abs(lattice.displacement:pull(-0.012)) < 3, profile)
+      assert.is_true(lattice.transparency.value < -5 * lattice.transparency.u, profile)
+      assert.are.equal("displacement, transparency", lattice.tried[#lattice.tried].refined)
+      assert.are.equal(0, lattice.tried[#lattice.tried].aicc_above_best)
+      -- what the specimen adds is part of the uncertainty of the cell
+      assert.is_true(lattice.transparency_correlation > 0.5 and lattice.displacement_with_transparency < 0, profile)
+    end
+  end)
+
   it("refuses an impossible geometry", function()
     local function with(options)
       options.profile = "optical"
