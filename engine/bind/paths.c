@@ -51,6 +51,23 @@ static int walk(int at, const char *rest, const char **what)
     return *what != NULL;
 }
 
+/* The first time that something is written to a folder below out, what a killed run has left there goes. */
+static void sweep(lua_State *L, const lwb_home *home, const char *path)
+{
+    const char *slash = strrchr(path, '/');
+    luaL_checkstack(L, 5, NULL);
+    luaL_getsubtable(L, LUA_REGISTRYINDEX, "linewright.swept");
+    lua_pushlstring(L, path, (size_t)(slash - path));
+    lua_pushvalue(L, -1);
+    if (lua_rawget(L, -3) == LUA_TNIL) {
+        lw_sweep_folder(&home->engine, path);
+        lua_pushvalue(L, -2);
+        lua_pushboolean(L, 1);
+        lua_rawset(L, -5);
+    }
+    lua_pop(L, 3);
+}
+
 void lwb_allow_write(lua_State *L, const char *path, const char *verb)
 {
     const lwb_home *home = lwb_home_of(L);
@@ -64,6 +81,7 @@ void lwb_allow_write(lua_State *L, const char *path, const char *verb)
             snprintf(folder, sizeof folder, "%s", path);
             *strrchr(folder, '/') = '\0';
             lwb_check(L, lw_make_folder(folder, &err), &err);
+            sweep(L, home, path);
         }
         return;
     }
@@ -87,6 +105,7 @@ void lwb_allow_write(lua_State *L, const char *path, const char *verb)
     const char *what = NULL;
     if (walk(at, path + n_fence + 1, &what) != 0) /* closes `at` */
         lwb_refuse(L, "give a plain name below the out folder", "%s: '%.200s' is refused: %s", verb, path, what);
+    sweep(L, home, path);
 }
 
 const char *lwb_push_out_path(lua_State *L, const char *name, const char *verb)

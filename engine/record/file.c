@@ -3,9 +3,11 @@
 
 #include "record/quiet.h"
 
+#include <dirent.h>
 #include <errno.h>
 #include <fcntl.h>
 #include <limits.h>
+#include <signal.h>
 #include <stdint.h>
 #include <stdio.h>
 #include <string.h>
@@ -165,6 +167,41 @@ lw_status lw_write_file(lw_engine *engine, const char *path, const void *bytes, 
     if (reason == ECANCELED)
         return LW_CANCELLED;
     return reason == 0 ? LW_OK : refuse(err, "write", path, reason);
+}
+
+/* The process that makes a temporary file of this name, or 0 if it is no such name. */
+static pid_t maker_of(const char *name)
+{
+    long process = 0;
+    int attempt = 0, n = 0;
+    char again[64];
+    if (sscanf(name, ".lw-%9ld-%3d.part%n", &process, &attempt, &n) != 2 || n == 0 || process <= 0)
+        return 0;
+    /* spelt just so: no signs, blanks or leading noughts, and nothing behind */
+    snprintf(again, sizeof again, ".lw-%ld-%d.part", process, attempt);
+    return strcmp(again, name) == 0 ? (pid_t)process : 0;
+}
+
+void lw_sweep_folder(const lw_engine *engine, const char *path)
+{
+    const char *name;
+    int folder = open_folder(engine, path, &name);
+    DIR *entries = folder >= 0 ? fdopendir(folder) : NULL;
+    if (entries == NULL) {
+        if (folder >= 0)
+            close(folder);
+        return;
+    }
+    for (const struct dirent *entry; (entry = readdir(entries)) != NULL;) {
+        struct stat here;
+        pid_t process = maker_of(entry->d_name);
+        /* signal 0 only asks; any other answer than "no such process" means that it may be alive */
+        if (process > 0 && kill(process, 0) != 0 && errno == ESRCH &&
+            fstatat(folder, entry->d_name, &here, AT_SYMLINK_NOFOLLOW) == 0 && S_ISREG(here.st_mode) &&
+            here.st_uid == geteuid())
+            (void)unlinkat(folder, entry->d_name, 0);
+    }
+    closedir(entries);
 }
 
 static bool is_folder(const char *path)

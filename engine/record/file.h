@@ -14,6 +14,11 @@
  *         LW_CANCELLED. On any failure the older file is untouched and the temporary one is gone. */
 lw_status lw_write_file(lw_engine *engine, const char *path, const void *bytes, size_t size, lw_error *err);
 
+/* Removes what a process that was killed while it wrote has left in a folder: plain files of this user by the names
+ * that lw_write_file() gives, whose process is gone. `path` is of a file in that folder, which need not exist. What
+ * can't be looked at or removed stays: nothing depends on it. */
+void lw_sweep_folder(const lw_engine *engine, const char *path);
+
 /* Makes a folder and the ones above it; an existing folder is fine. Status: LW_IO. */
 lw_status lw_make_folder(const char *path, lw_error *err);
 

@@ -190,6 +190,28 @@ else
   says 'chang'; check "a scan that changed is refused as such"
 fi
 
+# --- what a killed run left behind ---
+# nobody has process 999999999 (Linux numbers them up to 4194304); what doesn't look just like a file of ours stays
+mkdir -p swept/figures && echo keep >kept
+for name in .lw-999999999-0.part figures/.lw-999999999-7.part; do echo half >swept/$name; done
+for name in .lw-$$-0.part .lw-1-0.part .lw-999999999-0.part.txt .lw-0999999999-0.part .lw-999999999-00.part \
+  .lw--999999999-0.part lw-999999999-0.part .lw-x-0.part; do echo keep >swept/$name; done
+ln -s "$scratch/kept" swept/.lw-999999999-1.part
+mkdir swept/.lw-999999999-2.part
+recipe sweeps 'local lw = require "linewright"
+local job = lw.recipe { title = "t" }
+job:write { a = 1 }
+job:write(lw.figure { name = "f", title = "t", x = { label = "x" }, y = { label = "y" },
+  series = { { kind = "line", x = { 1, 2 }, y = { 1, 2 } } } })'
+ends 0 "$engine" sweeps.lua out=swept; check "a run into a folder that a killed one has left"
+[ ! -e swept/.lw-999999999-0.part ] && [ ! -e swept/figures/.lw-999999999-7.part ]
+check "takes away what that one had not finished"
+[ -L swept/.lw-999999999-1.part ] && [ -d swept/.lw-999999999-2.part ] && [ "$(cat kept)" = keep ] &&
+  [ "$(cat swept/.lw-$$-0.part swept/.lw-1-0.part swept/.lw-999999999-0.part.txt swept/.lw-0999999999-0.part \
+    swept/.lw-999999999-00.part swept/.lw--999999999-0.part swept/lw-999999999-0.part swept/.lw-x-0.part |
+    grep -c keep)" -eq 8 ]
+check "and nothing else: living processes, other names, links, folders"
+
 # --- scripts that should not be trusted ------------------------------------------------------------
 recipe execute 'os.execute("touch executed")'
 recipe popen 'io.popen("touch executed"):close()'
@@ -238,6 +260,23 @@ if env --default-signal=INT true 2>/dev/null; then
   [ $status -eq 130 ] || [ $status -eq 0 ]; check "Ctrl-C stops a series"
   [ $status -eq 0 ] || [ ! -e stopped/results.json ]; check "and it leaves no half record"
 fi
+
+# --- workers end with the process that made them -------------------------------------------------------
+"$engine" "$scripts/milling_series.lua" scans="$demo/nickel_milled_*.xy" material=nickel calibration=good/calibration.json \
+  workers=3 out=orphans >"$scratch/out" 2>"$scratch/err" </dev/null &
+child=$!
+waited=0
+while [ "$(pgrep -cP "$child")" -lt 2 ] && [ $waited -lt 100 ]; do sleep 0.05; waited=$((waited + 1)); done
+[ "$(pgrep -cP "$child")" -ge 2 ]; check "a series with workers has processes"
+kill -KILL "$child"
+wait "$child" 2>/dev/null
+child=
+sleep 1
+[ "$(pgrep -cf 'out=orphan[s]')" -eq 0 ]; check "none of them outlives a parent that was killed"
+[ ! -e orphans/results.json ] && [ -z "$(find orphans -name '*.part' 2>/dev/null)" ]; check "and nothing half written is left"
+ends 0 "$engine" "$scripts/milling_series.lua" scans="$demo/nickel_milled_*.xy" material=nickel \
+  calibration=good/calibration.json workers=2 out=orphans
+check "a new run goes on"
 
 # --- a series that is killed goes on where it was ----------------------------------------------------
 sh "$root/tests/faults/kills.sh" "$build" 6 >"$scratch/kills" 2>&1
