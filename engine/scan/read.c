@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "scan/reader.h"
 #include "scan/source.h"
+#include "scan/stated.h"
 
 #include <stdio.h>
 #include <string.h>
@@ -30,6 +31,14 @@ static lw_status read_content(lw_engine *engine, lw_content *content, const lw_s
     lw_noise noise = LW_NOISE_COUNTS;
     if (status == LW_OK)
         status = lw_columns_check(&columns, file, options->noise, &noise, err);
+    const char *note = NULL;
+    if (status == LW_OK && options->radiation != NULL)
+        status = lw_stated_check(&columns, file, options->radiation, options->radiation_differs, &note, err);
+    if (status == LW_OK && note != NULL) {
+        bool more = columns.header != NULL && columns.header[0] != '\0';
+        columns.header = lw_arena_print(&arena, err, "%s%s%s", more ? columns.header : "", more ? "\n" : "", note);
+        status = columns.header ? LW_OK : LW_OUT_OF_MEMORY;
+    }
     if (status != LW_OK) {
         lw_arena_end(&arena);
         return status;

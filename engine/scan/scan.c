@@ -38,6 +38,12 @@ const lw_option lw_scan_option_table[] = {
      .standard = "that of the file",
      .offset = offsetof(lw_scan_options, radiation),
      .help = "radiation of the scan, instead of what the file says"},
+    {.key = "radiation_differs",
+     .kind = LW_OPTION_FLAG,
+     .unit = "",
+     .standard = "false",
+     .offset = offsetof(lw_scan_options, radiation_differs),
+     .help = "read it with that radiation though the file states a wavelength that differs by more than 0.1 %"},
     LW_OPTIONS_END};
 
 lw_scan_options lw_scan_defaults(void)

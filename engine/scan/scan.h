@@ -40,6 +40,7 @@ typedef struct lw_scan_options {
     double range[2];               /* keep only these 2theta, degrees; both 0 = all */
     const char *block;             /* data block of a CIF with several scans; NULL = the only one */
     const lw_radiation *radiation; /* what the user says; overrides the file's; NULL = the file's, if any */
+    bool radiation_differs;        /* it may contradict what the file states */
 } lw_scan_options;
 extern const lw_option lw_scan_option_table[];
 lw_scan_options lw_scan_defaults(void);
@@ -47,7 +48,8 @@ lw_scan_options lw_scan_defaults(void);
 /* Reads a scan from a file: text columns or pdCIF, plain or gzipped, told apart by content.
  * Noise "auto": sigma if a third column or s.u. is there; counts if all intensities are whole numbers
  * (and non-negative); else LW_BAD_DATA asks for noise = "scaled" or a sigma column.
- * Errors: LW_IO (can't open), LW_BAD_DATA with file, line and remedy. Ownership: free with lw_scan_free(). */
+ * Errors: LW_IO (can't open), LW_BAD_DATA with file, line and remedy, LW_BAD_ARGUMENT for a radiation that contradicts
+ * the file. Ownership: free with lw_scan_free(). */
 lw_status lw_scan_read(lw_engine *engine, const char *path, const lw_scan_options *options, lw_scan **scan,
                        lw_error *err);
 

@@ -429,6 +429,7 @@ static void test_forms(lw_engine *engine)
     CHECK(lw_radiation_plain(0.07, &radiation, NULL) == LW_OK);
     options.block = "two";
     options.radiation = &radiation;
+    options.radiation_differs = true;
     options.range[0] = 30.5;
     options.range[1] = 33;
     scan = read_text(engine, blocks, sizeof blocks - 1, &options);

@@ -136,7 +136,9 @@ describe("malformed input", function()
     for _, case in ipairs {
       { "the wrong standard", "calibrate", { "scan=" .. lab6, "standard=si-640c", "radiation=Cu Ka" },
         "not where the reflections are expected" },
-      { "the wrong radiation", "calibrate", { "scan=" .. lab6, "standard=lab6-660c", "radiation=Co Ka" },
+      { "another radiation than the file states", "calibrate",
+        { "scan=" .. lab6, "standard=lab6-660c", "radiation=Co Ka" }, "the file states Cu K radiation" },
+      { "the wrong radiation", "calibrate", { "scan=bare.xy", "standard=lab6-660c", "radiation=Co Ka" },
         "not where the reflections are expected" },
       { "the wrong material", "size_strain", { "scan=" .. nickel, "material=silicon", "calibration=good.json" },
         "nickel_milled_04h.xy" },
@@ -167,6 +169,7 @@ describe("malformed input", function()
         helper.write(folder .. "/between.json", (good:gsub('("valid_two_theta": %[%s*)[%d.]+,%s*[%d.]+', "%155, 70")))
         helper.write(folder .. "/plain.json", (good:gsub('"wavelength_nm": 0%.154', '"wavelength_nm": 0.174')))
         helper.write(folder .. "/holder.xy", rows(5, 20, 0.02))
+        helper.write(folder .. "/bare.xy", (helper.read(lab6):gsub("#[^\n]*\n", "")))
         helper.write(folder .. "/results.json", '{"schema": "linewright/results/1", "lines": [], "methods": {}}')
         refused(case[2], case[3], { case[4] })
       end)

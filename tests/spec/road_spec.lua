@@ -52,6 +52,54 @@ describe("a scan", function()
     helper.remove(folder)
   end)
 
+  it("is not read with a radiation that its file contradicts", function()
+    -- K-alpha1 lines in angstrom: Cu 1.54059, Mo 0.70932, Ag 0.55942; mean of Cu 1.5418, of Mo 0.71073, as published
+    -- tables print them (International Tables C, 4.2.2); all from memory
+    local folder = helper.folder()
+    local rows = "20.00 195\n20.02 190\n20.04 201\n20.06 180\n"
+    local function cif(wavelength)
+      return "data_a\n_diffrn_radiation_wavelength " .. wavelength
+        .. "\nloop_\n_pd_meas_2theta_scan\n_pd_meas_counts_total\n" .. rows
+    end
+    local plain = lw.radiation
+    local function try(text, radiation, differs)
+      helper.write(folder .. "/a", text)
+      local ok, result = pcall(lw.read_scan, folder .. "/a", { radiation = radiation, radiation_differs = differs })
+      if ok and result.header:find("while the file states", 1, true) then return "noted", result.header end
+      return ok and "read" or "refused", tostring(ok or result)
+    end
+    for _, case in ipairs {
+      { cif "1.540593", "Cu Ka", "read" }, { cif "1.54059", "Cu Ka", "read" }, { cif "1.5418", "Cu Ka", "noted" },
+      { cif "1.5406", "Cu Ka", "read" }, { cif "1.5444", "Cu Ka", "refused" }, { cif "1.5432", "Cu Ka", "noted" },
+      { cif "0.70932", "Cu Ka", "refused" }, { cif "0.71073", "Mo Ka", "noted" }, { cif "0.70932", "Mo Ka", "read" },
+      { cif "0.51678", plain(0.051678), "read" }, { cif "0.51678", plain(0.0516), "refused" },
+      { cif "0.5165", plain(0.0516501), "read" },
+      { "# wavelength: 1.5406 A\n" .. rows, "Cu Ka", "read" },
+      { "# Wavelength (nm) = 0.154\n" .. rows, "Cu Ka", "read" },
+      { "# wavelength 1.54\n" .. rows, "Cu Ka", "read" }, { "# wavelength 1.5\n" .. rows, "Cu Ka", "read" },
+      { "# wavelength 1.5406\n" .. rows, "Mo Ka", "refused" },
+      { "# wavelength 0.7093 \xc3\x85\n" .. rows, "Mo Ka", "read" },
+      { "# wavelength=1.5406 nm\n" .. rows, "Cu Ka", "read" }, -- no diffractometer has that: not understood
+      { "# wavelength = 0.1789 nm\n" .. rows, "Cu Ka", "refused" },
+      { "# wavelength not known\n" .. rows, "Cu Ka", "read" },
+      { "# wavelengths of 3 lamps\n" .. rows, "Cu Ka", "read" }, { "# radiation: Cu Ka\n" .. rows, "Cu Ka", "read" },
+      { "# radiation: Cu Ka\n" .. rows, "Mo Ka", "refused" },
+      { "# radiation: Co K-alpha\n" .. rows, "Cu Ka", "refused" },
+      { "# radiation: X-rays\n" .. rows, "Cu Ka", "read" }, { "# radiation: Cu Ka\n" .. rows, plain(0.0709), "read" },
+    } do
+      local got, why = try(case[1], case[2])
+      assert.are.equal(case[3], got, case[1]:sub(1, 60) .. tostring(case[2]) .. ": " .. why)
+    end
+    local _, why = try(cif "0.70932", "Cu Ka")
+    assert.matches("the file states a wavelength of 0.0709320 nm, but the radiation given is Cu Ka %(0.15405%d+ nm%); "
+      .. "give", why)
+    assert.matches("radiation_differs = true", why)
+    local got, header = try(cif "0.70932", "Cu Ka", true)
+    assert.are.equal("noted", got)
+    assert.matches("read with Cu Ka %(0.15405%d+ nm%), while the file states a wavelength of 0.0709320 nm", header)
+    helper.remove(folder)
+  end)
+
   it("keeps its columns alive", function()
     local column = read("lab6_before_service").intensity:slice(1, 100)
     sweep()
