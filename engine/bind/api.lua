@@ -160,9 +160,11 @@
 ---@field read_scan fun(path: string, options?: table): scan
 ---@field scan fun(columns: table): scan
 ---@field fit_lines fun(scan: scan, reflections: reflections|material|standard, options?: table): lines
----@field calibrate fun(lines: lines, standard: standard|string, options?: table): calibration
+---@field calibrate fun(lines: lines|table[], standard: standard|string|table, options?: table): calibration
 ---@field load_calibration fun(path: string): calibration
 ---@field history fun(calibrations: table[], options?: table): result
+---@field response fun(lines: lines, standard: standard|string, options?: table): result
+---@field dead_time fun(stronger: scan, weaker?: scan|table, options?: table): result
 ---@field deconvolve fun(lines: lines, options?: table): profiles
 ---@field separate fun(profiles: profiles, options?: table): result
 ---@field figure fun(parts: table): figure
@@ -224,6 +226,16 @@ local functions = {
     "Control charts of an instrument's calibrations in order of time: which point broke which rule.",
     { p("calibrations", "list", "tables: calibration, label (a date or a file), after_service (flag)") }, "result",
     "Shewhart (1931) Economic Control of Quality of Manufactured Product; ISO 7870-2"),
+  response = entry("lw.response(lines, standard, { ... })",
+    "Relative intensities of a standard against its certificate as a curve of the angle, flat or not.",
+    { p("lines", "lines", "of the standard"),
+      p("standard", "standard", "with certified intensities, or its name or file") },
+    "result"),
+  dead_time = entry("lw.dead_time(stronger, weaker, { ... })",
+    "Dead time of the counter from two scans of one specimen at two currents, and the loss at the strongest point; or "
+      .. "lw.dead_time(scan, { dead_time = 2e-6 }): the loss by a stated one.",
+    { p("stronger", "scan", "counts"), p("weaker", "scan", "counts over the same angles") }, "result",
+    "Knoll, Radiation Detection and Measurement (from memory)"),
   deconvolve = entry("lw.deconvolve(lines, { ... })",
     "Takes the instrument out of the lines, and refolds what it finds against the data.",
     { p("lines", "lines", "fitted with an instrument, which is used") }, "profiles"),

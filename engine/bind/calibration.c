@@ -3,6 +3,7 @@
 #include "instrument/calibration.h"
 #include "base/sha256.h"
 #include "bind/bind.h"
+#include "bind/checks.h"
 #include "bind/comparison.h"
 #include "bind/figures.h"
 #include "bind/inputs.h"
@@ -319,7 +320,8 @@ static int table(lua_State *L)
 
 static const char *const fields[] = {"radiation", "geometry", "verdict", "hash", "valid_two_theta",
                                      "record", "fitted_lines", "standard_used", NULL};
-static const luaL_Reg functions[] = {{"calibrate", calibrate}, {"load_calibration", load}, {"history", lwb_history}, {NULL, NULL}};
+static const luaL_Reg functions[] = {{"calibrate", calibrate}, {"load_calibration", load}, {"history", lwb_history},
+                                     {"response", lwb_response}, {"dead_time", lwb_dead_time}, {NULL, NULL}};
 static const luaL_Reg methods[] = {
     {"save", save}, {"profile_at", profile_at}, {"figure", figure}, {"table", table},
     {"compare", lwb_calibration_compare}, {"for_specimen", lwb_calibration_for_specimen}, {NULL, NULL}};

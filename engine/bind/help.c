@@ -4,7 +4,9 @@
 #include "bind/bind.h"
 #include "bind/help.h"
 #include "instrument/calibration.h"
+#include "instrument/dead_time.h"
 #include "instrument/history.h"
+#include "instrument/response.h"
 #include "line/lines.h"
 #include "profile/profiles.h"
 #include "sample/method.h"
@@ -27,7 +29,9 @@ const lw_option *lwb_options_of(const char *function)
                 {"calibrate", lw_calibrate_option_table},
                 {"deconvolve", lw_deconvolve_option_table},
                 {"separate", lw_separate_option_table},
-                {"history", lw_history_option_table}};
+                {"history", lw_history_option_table},
+                {"response", lw_response_option_table},
+                {"dead_time", lw_dead_time_option_table}};
     for (size_t i = 0; i < sizeof verb / sizeof *verb; i++)
         if (strcmp(verb[i].name, function) == 0)
             return verb[i].table;

@@ -7,6 +7,57 @@
 
 #define VERB "standard"
 
+/* "104", "1 0 4", "-1 0 10": three indices, parted by blanks where one has two digits. */
+static bool read_hkl(const char *text, lw_intensity *out)
+{
+    int used = 0;
+    if (sscanf(text, "%d %d %d %n", &out->h, &out->k, &out->l, &used) == 3 && text[used] == '\0')
+        return true;
+    return strlen(text) == 3 && strspn(text, "0123456789") == 3 && (out->h = text[0] - '0', out->k = text[1] - '0',
+                                                                    out->l = text[2] - '0', true);
+}
+
+/* intensities = { { hkl = "104", value = 100, expanded_uncertainty = 2 }, ... } */
+static void read_intensities(lua_State *L, int at, const char *called, lw_standard *standard)
+{
+    static const char *const keys[] = {"hkl", "value", "expanded_uncertainty", NULL};
+    const char *of = lwb_field_text(L, at, "intensities_of", called, "areas");
+    standard->intensities_are_heights = strcmp(of, "heights") == 0;
+    if (!standard->intensities_are_heights && strcmp(of, "areas") != 0)
+        lwb_refuse(L, "write \"areas\" or \"heights\"", "%s: intensities_of is '%.40s'", called, of);
+    if (lua_getfield(L, at, "intensities") == LUA_TNIL) {
+        lua_pop(L, 1);
+        return;
+    }
+    int list = lua_gettop(L);
+    lwb_want_table(L, list, called, "intensities");
+    size_t n = lua_rawlen(L, list);
+    if (n == 0 || n > LW_INTENSITIES_MOST)
+        lwb_refuse(L, "list the lines of the certificate", "%s: %d intensities; 1 to %d are taken", called, (int)n,
+                   LW_INTENSITIES_MOST);
+    for (size_t i = 0; i < n; i++) {
+        lw_intensity *out = &standard->intensity[i];
+        lua_rawgeti(L, list, (lua_Integer)i + 1);
+        int entry = lua_gettop(L);
+        lwb_want_table(L, entry, called, "an intensity");
+        lwb_only_keys(L, entry, called, keys);
+        const char *hkl = lwb_field_text(L, entry, "hkl", called, "");
+        out->value = lwb_field_number(L, entry, "value", called, 0);
+        out->u = lwb_field_number(L, entry, "expanded_uncertainty", called, 0) / standard->coverage_factor;
+        if (!read_hkl(hkl, out) || (out->h == 0 && out->k == 0 && out->l == 0))
+            lwb_refuse(L, "write \"104\" or \"1 0 10\"", "%s: '%.40s' are no Miller indices", called, hkl);
+        if (!(out->value > 0 && out->u >= 0))
+            lwb_refuse(L, "give the certificate's numbers", "%s: the intensity of %s must be positive, its uncertainty not negative",
+                       called, hkl);
+        for (size_t j = 0; j < i; j++)
+            if (standard->intensity[j].h == out->h && standard->intensity[j].k == out->k && standard->intensity[j].l == out->l)
+                lwb_refuse(L, "name each line once", "%s: the intensity of %s is given twice", called, hkl);
+        lua_settop(L, list);
+    }
+    standard->n_intensities = n;
+    lua_settop(L, list - 1);
+}
+
 /* called: how messages name it, a file by its path */
 static void read_standard(lua_State *L, int at, const char *called, lw_standard *standard)
 {
@@ -14,7 +65,7 @@ static void read_standard(lua_State *L, int at, const char *called, lw_standard 
         "name",       "title",   "aliases", "formula",       "space_group",      "setting",        "unit",
         "cell",       "stiffness_gpa", "stiffness_source", "burgers_nm", "burgers", "density_kg_m3", "hazard",
         "source",     "certificate", "expanded_uncertainty", "coverage_factor", "temperature_c", "domain_size_nm",
-        "unverified", NULL};
+        "unverified", "intensities", "intensities_of", NULL};
     lwb_only_keys(L, at, called, keys);
     lwb_read_material(L, at, called, &standard->material);
     memcpy(standard->name, standard->material.name, sizeof standard->name);
@@ -23,6 +74,7 @@ static void read_standard(lua_State *L, int at, const char *called, lw_standard 
     standard->temperature_c = lwb_field_number(L, at, "temperature_c", called, 25);
     standard->domain_size_nm = lwb_field_number(L, at, "domain_size_nm", called, 0);
     standard->unverified = lwb_field_flag(L, at, "unverified", called, false);
+    read_intensities(L, at, called, standard);
 }
 
 static int make(lua_State *L)

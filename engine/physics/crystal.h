@@ -39,6 +39,13 @@ typedef struct lw_material {
 } lw_material;
 
 /* A certified reference material: the material with its certificate. */
+/* A certified relative intensity. */
+typedef struct lw_intensity {
+    int h, k, l;
+    double value, u;            /* u: expanded uncertainty / k */
+} lw_intensity;
+#define LW_INTENSITIES_MOST 64
+
 typedef struct lw_standard {
     lw_material material;       /* its cell is the certified one, u_* = expanded uncertainty / k */
     char name[64];
@@ -47,6 +54,9 @@ typedef struct lw_standard {
     double temperature_c;       /* at which the cell is certified */
     double domain_size_nm;      /* certified or stated mean column length; 0 = none stated */
     bool unverified;            /* certified values to be checked against the user's own certificate */
+    size_t n_intensities;       /* 0 where the literal carries none */
+    lw_intensity intensity[LW_INTENSITIES_MOST];
+    bool intensities_are_heights; /* else areas */
 } lw_standard;
 
 /* One reflection, families of equal spacing joined (333 and 511). */

@@ -11,6 +11,8 @@
 --   temperature_c            at which the cell holds
 --   certificate, source      which certificate, and where its numbers were read
 --   unverified               true: check the numbers against the certificate of your own jar before use
+--   intensities              certified relative intensities, { hkl = "104" or "1 0 10", value =, expanded_uncertainty = }
+--                            a line; intensities_of = "areas" (the default) or "heights"
 --   domain_size_nm           mean column length, where one is stated
 --   stiffness_gpa, hazard    as in standards/materials
 return {
