@@ -94,8 +94,10 @@ lw_status lw_columns_slope(const lw_size_coefficients *a, const double range[2],
         out->u_hook = sqrt(fmax(c[0][0], 0));
         size_t two_thirds = first + (last - first) * 2 / 3;
         double q[3], d[3][3];
-        if (two_thirds >= first + 3 && fit(a, first, two_thirds, unit, q, d) && q[1] > 0)
+        if (two_thirds >= first + 3 && fit(a, first, two_thirds, unit, q, d) && q[1] > 0) {
             out->u = sqrt(out->u * out->u + pow(unit * q[0] / q[1] - next, 2) / 3);
+            out->u_hook = hypot(out->u_hook, (q[0] - p[0]) / sqrt(3));
+        }
         if (fabs(next - size) < 1e-3 * size || fabs(next - before) < 1e-12 * next)
             break;
         before = size;
@@ -125,16 +127,19 @@ bool lw_columns_integral(const lw_size_coefficients *a, const lw_initial_slope *
     for (size_t i = 0; i < a->n; i++)
         for (size_t j = 0; j < a->n; j++)
             var += weight[i] * weight[j] * a->covariance[i * a->n + j];
-    /* what is left beyond falls at least as a straight line: rectangular between nothing and that triangle, twice over */
-    double fall = fmax((a->value[a->n - 1 - a->n / 8] - last) / (a->step_nm * (double)(a->n / 8)), 1e-12);
-    double left = last > 0 ? last * last / fall : 0;
-    if (last > 0.1 || u_last > 0.1 || left > 0.1 * sum) {
+    /* What is left beyond: the coefficients of crystals are convex, so more than the triangle under their last slope; and
+     * they end, so less than the exponential that goes on as they fell. A rectangular distribution between the two. */
+    double eighth = a->step_nm * (double)(a->n / 8), before = a->value[a->n - 1 - a->n / 8];
+    double fall = fmax((before - last) / eighth, 1e-12), rate = last > 0 ? fmax(log(before / last) / eighth, 1e-12) : 0;
+    double least = last > 0 ? last * last / (2 * fall) : 0, most = last > 0 ? last / rate : 0;
+    double left = 0.5 * (least + most), u_left = (most - least) / sqrt(12), by_last = last > 0 ? u_last / rate : 0;
+    if (last > 0.1 || u_last > 0.1 || !(most < 0.1 * sum)) {
         *why = "the coefficients end before they have died: the integral beyond would be a guess";
         return false;
     }
-    *size_volume = 2 * (sum + 0.5 * left) / slope->start;
+    *size_volume = 2 * (sum + left) / slope->start;
     *u = 2 / slope->start *
-         sqrt(fmax(var, 0) + left * left / 12 + pow(sum / slope->start * slope->u_hook, 2));
+         sqrt(fmax(var, 0) + u_left * u_left + by_last * by_last + pow(sum / slope->start * slope->u_hook, 2));
     return true;
 }
 

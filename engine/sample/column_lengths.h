@@ -27,7 +27,7 @@ typedef struct lw_initial_slope {
 /* Area-weighted size from the initial slope: A(L) = a - b L + c L^3 is fitted over range[0] to range[1] times the
  * size itself, and size_area = a/b. There is no square because no crystal ends in columns of no length:
  * p(0) = A''(0) = 0, and the cube is the first term that spheres have. u holds the coefficients' covariance and, as a
- * rectangular distribution, what leaving out the upper third of the range changes.
+ * rectangular distribution, what leaving out the upper third of the range changes; so does u_hook.
  * Status: LW_NOT_SUPPORTED with the reason if the coefficients don't reach or don't fall. */
 lw_status lw_columns_slope(const lw_size_coefficients *a, const double range[2], lw_arena *arena, lw_initial_slope *slope,
                            lw_error *err);

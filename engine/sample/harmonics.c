@@ -121,6 +121,43 @@ static double between(const double *y, size_t n, double x)
            a[3] * t * (t - 1) * (t - 2) / 6;
 }
 
+/* Share of a line's own counts among those in the window of its Fourier sums; 0 where the counts are not there. */
+static double share_of_net(const lw_profiles *profiles, const lw_profile *profile)
+{
+    const lw_lines *lines = profiles->lines;
+    const lw_line *line = profile->line;
+    if (lines->scan == NULL || lines->background == NULL)
+        return 0;
+    size_t at = 0;
+    while (at + 1 < lines->scan->n && lines->scan->two_theta_deg[at] < line->two_theta.value)
+        at++;
+    double own = line->area.value, under = lines->background[at] * 2 * WINDOW * line->breadth.value;
+    return own > 0 && under >= 0 ? own / (own + under) : 0;
+}
+
+/* The line's coefficient as observed, instrument in it: that of the sample further out, by the breadths. */
+static double observed(const lw_profile *profile, double length)
+{
+    double wider = profile->breadth_deg.value > 0 ? profile->line->breadth.value / profile->breadth_deg.value : 1;
+    double x = fabs(length) * fmax(wider, 1) / profile->length_nm[1];
+    return x < (double)(profile->n_coefficients - 1) ? between(profile->cosine, profile->n_coefficients, x) : 0;
+}
+
+/* Covariance by counting of two normalised cosine sums, to a factor: counts vary as the line does (share net) and as the
+ * background under it (the rest), and sum var cos(a) cos(b) is half the transform of var at the difference and at the sum
+ * of the lengths; the area that both are divided by takes its part off. */
+static double counted(const lw_profile *profile, double net, double l1, double l2)
+{
+    double wide = 2 * PI * WINDOW * profile->breadth_s.value, x = (l1 - l2) * wide, y = (l1 + l2) * wide;
+    double flat[2] = {exp(-x * x / 6), exp(-y * y / 6)}; /* as sin(x)/x to second order, and positive */
+    if (!(net > 0))
+        return flat[0];
+    double h1 = observed(profile, l1), h2 = observed(profile, l2), z1 = l1 * wide, z2 = l2 * wide;
+    double own = 0.5 * (observed(profile, l1 - l2) + observed(profile, l1 + l2)) - h1 * h2;
+    double rest = 0.5 * (flat[0] + flat[1]) - h1 * exp(-z2 * z2 / 6) - h2 * exp(-z1 * z1 / 6) + h1 * h2;
+    return net * own + (1 - net) * rest;
+}
+
 /* Covariance of one line's coefficients at two lengths, given both uncertainties. */
 static double covariance_of(const lw_profiles *profiles, const lw_profile *profile, double l1, double a1, double u1,
                             double l2, double a2, double u2)
@@ -135,8 +172,14 @@ static double covariance_of(const lw_profiles *profiles, const lw_profile *profi
         double both = pg * qg * c[g * n + g] + (pg * ql + pl * qg) * c[g * n + l] + pl * ql * c[l * n + l];
         return c1 > 0 && c2 > 0 ? u1 * u2 * both / sqrt(c1 * c2) : l1 == l2 ? u1 * u2 : 0;
     }
-    double x = (l1 - l2) * 2 * PI * WINDOW * profile->breadth_s.value;
-    return u1 * u2 * exp(-x * x / 6); /* as sin(x)/x to second order, and positive */
+    if (profiles->method != NULL && strcmp(profiles->method, "physical") == 0) {
+        /* few parameters move all lengths together, the choice of form moves them against each other: half each */
+        double x = (l1 - l2) * 2 * PI * WINDOW * profile->breadth_s.value;
+        return 0.5 * u1 * u2 * (1 + exp(-x * x / 6));
+    }
+    double net = share_of_net(profiles, profile);
+    double k12 = counted(profile, net, l1, l2), k11 = counted(profile, net, l1, l1), k22 = counted(profile, net, l2, l2);
+    return k11 > 0 && k22 > 0 ? u1 * u2 * k12 / sqrt(k11 * k22) : l1 == l2 ? u1 * u2 : 0;
 }
 
 lw_status lw_harmonics_separate(const lw_profiles *profiles, const lw_orders *orders, lw_harmonic_form form,

@@ -4,6 +4,7 @@
 #include "sample/column_lengths.h"
 #include "sample/harmonics.h"
 #include "sample/method.h"
+#include "sample/reading.h"
 
 #include "numeric/statistics.h"
 
@@ -61,6 +62,7 @@ typedef struct one_set {
     lw_initial_slope slope;
     bool has_slope, has_volume;
     double size_volume, u_volume;
+    lw_readings readings; /* of the breadths, where the coefficients are those of fitted Voigts */
     const char *no_slope, *no_volume;
     lw_column_density density;
     bool has_density;
@@ -126,6 +128,14 @@ static lw_status separate(const lw_profiles *profiles, const warren_averbach_opt
         double own_slope = h->step_nm / (1 - h->size[1]), off = own_slope - set->slope.size_area;
         set->slope.u = sqrt(set->slope.u * set->slope.u + off * off / 12);
     }
+    if (voigt) { /* coefficients of fitted Voigts stand beside the same readings as the breadths of these Voigts */
+        lw_breadths breadths;
+        status = lw_breadths_gather(profiles, arena, &breadths, err);
+        if (status == LW_OK)
+            status = lw_breadths_read(&breadths, arena, &set->readings, err);
+        if (status != LW_OK)
+            return status;
+    }
     set->no_slope = set->has_slope ? "" : lw_arena_text(arena, own.message, err);
     /* low coefficients of a fitted Voigt are its own tail, not the powder's */
     find_strain(set, voigt ? 0.1 : 0.02);
@@ -179,19 +189,24 @@ static void tell_numbers(const one_set *set, lw_node *to, lw_error *err)
 {
     lw_add_text(to, "direction", set->orders.direction, err);
     if (set->has_slope) {
-        lw_add_quantity(to, "size_area", lw_quantity_of(set->slope.size_area, set->slope.u, "nm"), SIZE_AREA, err);
-        if (set->has_volume)
-            lw_add_quantity(to, "size_volume", lw_quantity_of(set->size_volume, set->u_volume, "nm"), SIZE_VOLUME, err);
-        else
+        lw_quantity area = lw_quantity_of(set->slope.size_area, set->slope.u, "nm");
+        lw_quantity volume = lw_quantity_of(set->size_volume, set->u_volume, "nm");
+        lw_readings_widen(&set->readings, LW_READ_SIZE_AREA, 0, &area, to, err);
+        lw_add_quantity(to, "size_area", area, SIZE_AREA, err);
+        if (set->has_volume) {
+            lw_readings_widen(&set->readings, LW_READ_SIZE_VOLUME, 0, &volume, to, err);
+            lw_add_quantity(to, "size_volume", volume, SIZE_VOLUME, err);
+        } else
             lw_add_text(to, "size_volume_not_determined", set->no_volume, err);
     } else {
         lw_add_text(to, "size_not_determined", set->no_slope, err);
     }
     if (set->strain > 0) {
-        lw_add_quantity(to, "strain_rms", lw_quantity_of(set->strain, set->u_strain, ""),
-                        set->has_slope ? STRAIN : STRAIN_MIDDLE, err);
+        lw_quantity strain = lw_quantity_of(set->strain, set->u_strain, "");
+        lw_readings_widen(&set->readings, LW_READ_STRAIN, 0, &strain, to, err);
+        lw_add_quantity(to, "strain_rms", strain, set->has_slope ? STRAIN : STRAIN_MIDDLE, err);
         lw_add_quantity(to, "strain_apparent",
-                        lw_quantity_of(set->strain / LW_RMS_PER_APPARENT, set->u_strain / LW_RMS_PER_APPARENT, ""),
+                        lw_quantity_of(strain.value / LW_RMS_PER_APPARENT, strain.u / LW_RMS_PER_APPARENT, ""),
                         "sqrt(pi/2) times the rms strain: as a breadth shows it (Stokes & Wilson 1944).", err);
     }
     lw_node *list = lw_add_list(to, "strain_rms_at", err);
