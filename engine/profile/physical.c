@@ -33,12 +33,25 @@ static lw_status fill(lw_profiles *profiles, size_t k, const lw__physical_fit *f
     return lw__curve_of_coefficients(profiles, profile, breadth, err);
 }
 
+/* "correlated 0.62, dislocations 0.38": what has a weight. */
+static const char *forms_of(const lw__physical_fit *fit, char *text, size_t size)
+{
+    size_t used = 0;
+    text[0] = '\0';
+    for (size_t m = 0; m < fit->n_members && used < size; m++)
+        if (fit->weight[m] >= 0.005)
+            used += (size_t)snprintf(text + used, size - used, "%s%s %.2f", used > 0 ? ", " : "",
+                                     fit->form[m], fit->weight[m]);
+    return text;
+}
+
 static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
                      lw_error *err)
 {
     lw_arena scratch;
     lw__separation separation;
     lw__physical_fit fit;
+    char forms[200];
     lw_arena_begin(&scratch, engine);
     lw_status status = lw__separate_by_physics(engine, profiles, &scratch, &separation, &fit, err);
     if (status == LW_OK)
@@ -75,9 +88,9 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
         profile->truncation = "none: the shape has coefficients at every length";
         profile->assumed = lw_arena_print(
             &profiles->arena, err,
-            "lognormal spheres x strain (%s %.2f, %s %.2f, %s %.2f by weight); reduced "
-            "chi-square %.3f; sigma and the correlation length shared by all lines",
-            fit.form[0], fit.weight[0], fit.form[1], fit.weight[1], fit.form[2], fit.weight[2], fit.goodness);
+            "lognormal spheres x strain (%s by weight); reduced chi-square %.3f; sigma and the "
+            "correlation length or cut-off radius shared by all lines",
+            forms_of(&fit, forms, sizeof forms), fit.goodness);
         if (profile->assumed == NULL)
             status = LW_OUT_OF_MEMORY;
     }
@@ -89,5 +102,7 @@ const lw_deconvolution lw_deconvolution_physical = {
     .name = "physical",
     .source = "lognormal spheres: Langford, Louer & Scardi (2000) J. Appl. Cryst. 33, 964; Gaussian strain: "
               "Warren & Averbach "
-              "(1950) J. Appl. Phys. 21, 595; the instrument inside the model",
+              "(1950) J. Appl. Phys. 21, 595; dislocations: Wilkens (1970) Phys. Status Solidi A 2, 359; the "
+              "instrument inside the "
+              "model",
     .run = run};

@@ -178,15 +178,37 @@ static double misfit_factor(const lw__physical *f)
     return fmax(factor, 1);
 }
 
+/* The last: of a crystal's dislocations the line sees g.b of its own, none or much, and g.b changes from
+ * crystal to crystal as their Burgers vectors do. The mean of exp(-x) over them is then not exp(-mean x),
+ * which is right for columns that meet many kinds of dislocations: the other end is x exponentially
+ * distributed, 1/(1 + x). */
+static const struct member {
+    const char *name;
+    const lw_strain_form *form;
+    bool spread;
+} members[LW__MEMBERS] = {{"constant", &lw_strain_constant, false},
+                          {"correlated", &lw_strain_correlated, false},
+                          {"gaussian_correlated", &lw_strain_gaussian_correlated, false},
+                          {"dislocations", &lw_strain_dislocations, false},
+                          {"dislocations of one kind a crystal", &lw_strain_dislocations, true}};
+
+/* What is expected of a form's second parameter: a correlation length of half a crystal; a cut-off radius of
+ * dislocations, beyond which their strains screen each other, of two crystals. Both within a factor of e. */
+static void take_member(lw__physical *f, size_t which)
+{
+    f->form = members[which].form;
+    f->spread = members[which].spread;
+    f->length_prior = f->size_prior + (f->form == &lw_strain_dislocations ? 0.7 : -0.7);
+}
+
 static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *out, lw__physical_fit *result,
                              lw_error *err)
 {
-    static const lw_strain_form *const forms[] = {&lw_strain_constant, &lw_strain_correlated,
-                                                  &lw_strain_gaussian_correlated};
-    const size_t n_forms = sizeof forms / sizeof *forms;
+    const size_t n_forms = LW__MEMBERS;
     size_t m = f->n_parameters, lines = f->n_lines, best = 0;
-    double *p[4], *breadth[4], *covariance[4], *other = lw_arena_take(arena, m, sizeof *other, err),
-                                               *lower = lw_arena_take(arena, m, sizeof *lower, err);
+    double *p[LW__MEMBERS], *breadth[LW__MEMBERS], *covariance[LW__MEMBERS],
+        *other = lw_arena_take(arena, m, sizeof *other, err),
+        *lower = lw_arena_take(arena, m, sizeof *lower, err);
     double *upper = lw_arena_take(arena, m, sizeof *upper, err);
     bool *held = lw_arena_take(arena, m, sizeof *held, err),
          *at_bound = lw_arena_take(arena, m, sizeof *at_bound, err);
@@ -224,7 +246,7 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
     control.step_tolerance = 0.01;
     control.iterations_most = 60;
     for (size_t i = 0; i < n_forms; i++) {
-        f->form = forms[i];
+        take_member(f, i);
         f->whole = false;
         held[f->at_length] = f->form->n < 2;
         lower[f->at_length] = f->form->n < 2 ? -INFINITY : fmax(f->form->least[1], f->length_prior - 4);
@@ -246,7 +268,7 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
         lw_status status = LW_OK;
         double least = INFINITY;
         for (int from = 0; from < 2 && status == LW_OK; from++) {
-            if (from == 1 && i >= 2)
+            if (from == 1 && i == 2)
                 memcpy(other, p[i - 1], m * sizeof *other);
             else
                 start(f, from == 0 ? 0.85 : 0.5, other);
@@ -275,11 +297,11 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
         if (!isfinite(outcome.chi2))
             return lw_fail_at(err, LW_NO_CONVERGENCE, f->profiles->lines->scan->file, 0,
                               "use method = convolution", "the fit of physical shapes found no start");
-        result->form[i] = f->form->name;
+        result->form[i] = members[i].name;
         result->chi2[i] = outcome.chi2;
         best = outcome.chi2 < result->chi2[best] ? i : best;
     }
-    f->form = forms[best];
+    take_member(f, best);
     f->tied = false;
     lw_normal left = {.n = m};
     lw_status looked = lw__physical_evaluate(f, p[best], false, &left, err);
@@ -297,7 +319,7 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
     for (size_t i = 0; i < n_forms; i++) {
         lw_arena scratch;
         lw_arena_begin(&scratch, f->engine);
-        f->form = forms[i];
+        take_member(f, i);
         memcpy(f->tie_u, f->member_tie[i], sizeof f->tie_u);
         for (size_t j = 0; j < m; j++) {
             held[j] =
@@ -333,7 +355,7 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
                     (covariance[i][a * lines + b] +
                      (breadth[i][a] - result->breadth[a]) * (breadth[i][b] - result->breadth[b]));
     /* the best member takes the scan apart */
-    f->form = forms[best];
+    take_member(f, best);
     lw_normal normal = {.n = m};
     lw_status status = lw__physical_evaluate(f, p[best], false, &normal, err);
     for (size_t i = 0; i < f->n && status == LW_OK; i++) {

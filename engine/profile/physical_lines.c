@@ -207,7 +207,7 @@ lw_status lw__physical_prepare(lw__physical *f, lw_engine *engine, const lw_prof
      * less than a crystal. Wide enough for the data to overrule. */
     f->sigma_prior = 0.35;
     f->sigma_u = 0.15;
-    f->length_prior = -breadth_sum / (double)f->n_lines - 0.7;
+    f->size_prior = -breadth_sum / (double)f->n_lines;
     f->length_u = 1;
     f->jacobian = lw_arena_take(arena, f->n * f->n_parameters, sizeof(double), err);
     f->spectrum = lw_arena_take(arena, longest + 2, sizeof(double), err);

@@ -21,7 +21,8 @@ lw__shape lw__physical_shape(const lw__physical *f, size_t k, const double *p)
                        .size = p[f->line[k].at_size],
                        .sigma = p[f->at_sigma],
                        .strain_parameter = {p[f->line[k].at_strain], p[f->at_length]},
-                       .s = f->line[k].profile->s_per_nm};
+                       .s = f->line[k].profile->s_per_nm,
+                       .spread = f->spread};
 }
 
 /* Weights of six neighbouring grid points at a fraction 0 <= t < 1 between the third and the fourth

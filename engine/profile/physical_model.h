@@ -35,19 +35,20 @@ typedef struct lw__physical {
         n_parameters, at_terms, at_sigma, at_length;
     lw__physical_line *line;
     const lw_strain_form *form;
+    bool spread;                   /* see lw__shape */
     double *fixed, *weight, *term; /* [n], [n], [n_terms][n] */
     double *model, *jacobian;      /* [n], [n_parameters][n] */
     size_t *row_first, *row_end;   /* [n_parameters] points at which a parameter matters while iterating */
     bool whole;                    /* for the covariance: everywhere */
     size_t n_used;                 /* lengths of the line in hand: up to where its coefficient has died */
     double *spectrum, *column[LW__PHYSICAL_COLUMNS], *scratch;
-    double **curve; /* [n_all][n] */
-    double sigma_prior, sigma_u, length_prior, length_u;
+    double **curve;                                                  /* [n_all][n] */
+    double sigma_prior, sigma_u, size_prior, length_prior, length_u; /* size: logarithm of a crystal's */
     /* sizes and strains of the lines are expected to scatter about a common one, fitted too (after a first
      * round) */
     size_t at_common; /* size, then strain */
     bool tied;
-    double tie_u[2], member_tie[4][2];
+    double tie_u[2], member_tie[LW__MEMBERS][2];
 } lw__physical;
 
 /* Lays out lines (with those that stand beyond the scan), grids, parameters and what is expected of them. */

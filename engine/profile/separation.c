@@ -22,7 +22,9 @@ double lw__shape_coefficient(const lw__shape *shape, double length, double *slop
     double columns = lw_spheres_coefficient(&spheres, length, slopes ? by_size : NULL);
     double square = 2 * M_PI * M_PI * shape->s * shape->s;
     double moved = shape->strain->displacement(shape->strain_parameter, length, slopes ? by_strain : NULL);
-    double strain = exp(-square * moved);
+    double strain = shape->spread ? 1 / (1 + square * moved) : exp(-square * moved);
+    if (shape->spread) /* exp(-x) averaged over x, exponentially distributed */
+        square *= strain;
     if (slopes != NULL) {
         slopes[0] = -by_size[0] / shape->size * strain;
         slopes[1] = -square * by_strain[0] * columns * strain;

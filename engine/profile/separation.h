@@ -17,6 +17,8 @@ typedef struct lw__shape {
     double sigma;                 /* of the logarithm of the diameters */
     double strain_parameter[LW_STRAIN_PARAMETERS_MOST];
     double s; /* of the line, nm^-1 */
+    bool
+        spread; /* mean square strain exponentially distributed over the crystals, about what the form says */
 } lw__shape;
 
 /* A(L); slopes[4] (or NULL; physical only): to size, strain_parameter[0], sigma, strain_parameter[1]. */
@@ -47,16 +49,19 @@ typedef struct lw__separation {
 lw_status lw__separate_by_voigts(const lw_profiles *profiles, lw_arena *arena, lw__separation *out,
                                  lw_error *err);
 
+#define LW__MEMBERS 5 /* strain forms that are fitted */
+
 /* What the fit of physical shapes gives besides. */
 typedef struct lw__physical_fit {
-    size_t n_members;    /* strain forms that were fitted */
-    const char *form[4]; /* their names */
-    double weight[4], chi2[4];
-    double goodness;     /* chi2 over degrees of freedom of the best */
-    double *covariance;  /* [profiles^2] of the breadths, nm^-2: counting, instrument, choice of form */
-    double *breadth;     /* [profiles], weighted mean */
-    lw__shape *shape[4]; /* [members][profiles] */
-    double *shape_covariance[4]; /* [members][profiles][16]: of size, strain 0, sigma, strain 1 of a line */
+    size_t n_members;              /* strain forms that were fitted */
+    const char *form[LW__MEMBERS]; /* their names */
+    double weight[LW__MEMBERS], chi2[LW__MEMBERS];
+    double goodness;    /* chi2 over degrees of freedom of the best */
+    double *covariance; /* [profiles^2] of the breadths, nm^-2: counting, instrument, choice of form */
+    double *breadth;    /* [profiles], weighted mean */
+    lw__shape *shape[LW__MEMBERS];         /* [members][profiles] */
+    double *shape_covariance[LW__MEMBERS]; /* [members][profiles][16]: of size, strain 0, sigma, strain 1 of a
+                                              line */
 } lw__physical_fit;
 
 /* All lines at once, each with its own size and strain, as lognormal spheres x correlated strain. */

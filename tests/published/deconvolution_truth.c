@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Breadths and coefficients against ray-traced scans whose samples are known
  * (tests/data/raytraced/SOURCE.md): nickel as lognormal spheres with a random field of displacements, ceria
- * as spheres without strain, nickel with strain alone. The instrument comes from the ray-traced scan of
- * lanthanum hexaboride, as an analyst would take it. */
+ * as spheres without strain, nickel with strain alone, tungsten with dislocations. The instrument comes from
+ * the ray-traced scan of lanthanum hexaboride, as an analyst would take it. */
 #include "check.h"
 #include "numeric/voigt.h"
 #include "physics/size_distribution.h"
@@ -77,12 +77,13 @@ static double true_strain(const char *truth, double length)
     return last;
 }
 
-static lw_lines *fit(lw_scan *scan, double edge_nm)
+static lw_lines *fit(lw_scan *scan, double edge_nm, int space_group)
 {
     lw_error err = LW_ERROR_NONE;
     char text[600];
-    lw_material material = {
-        .name = "sample", .space_group = 225, .cell = {edge_nm, edge_nm, edge_nm, 90, 90, 90, 0, 0, 0}};
+    lw_material material = {.name = "sample",
+                            .space_group = space_group,
+                            .cell = {edge_nm, edge_nm, edge_nm, 90, 90, 90, 0, 0, 0}};
     lw_arena arena;
     lw_reflection *reflection;
     size_t n;
@@ -105,12 +106,14 @@ static lw_lines *fit(lw_scan *scan, double edge_nm)
     return lines;
 }
 
-static lw_profiles *deconvolve(const lw_lines *lines, const char *method)
+/* standard: its lines for the instrument, or NULL for the calibration. */
+static lw_profiles *deconvolve(const lw_lines *lines, const char *method, const lw_lines *standard)
 {
     lw_error err = LW_ERROR_NONE;
     char text[600];
     lw_deconvolve_options options = lw_deconvolve_defaults();
     lw_profiles *profiles = NULL;
+    options.standard = standard;
     for (int i = 0; lw_deconvolve_option_table[0].choices[i] != NULL; i++)
         if (strcmp(lw_deconvolve_option_table[0].choices[i], method) == 0)
             options.method = i;
@@ -121,7 +124,7 @@ static lw_profiles *deconvolve(const lw_lines *lines, const char *method)
         exit(1);
     }
     clock_gettime(CLOCK_MONOTONIC, &to);
-    printf("  %-16s %6.1f ms a line:", method,
+    printf("  %-16s%s %6.1f ms a line:", method, standard != NULL ? " (measured)" : "",
            1e3 * ((double)(to.tv_sec - from.tv_sec) + 1e-9 * (double)(to.tv_nsec - from.tv_nsec)) /
                (double)profiles->n);
     return profiles;
@@ -139,11 +142,16 @@ static void check_breadths(const lw_profiles *profiles, const char *truth, allow
         const lw_reflection *r = &profile->line->reflection;
         int code = 100 * r->h + 10 * r->k + r->l;
         double want = true_breadth(truth, r->h, r->k, r->l), off = profile->breadth_s.value / want - 1;
-        double most = code == 222                                                ? allow.h222
-                      : code == 331                                              ? allow.h331
-                      : code == 400                                              ? allow.h400
-                      : code == 111 || code == 200 || code == 220 || code == 311 ? allow.main
-                                                                                 : 0;
+        double most = code == 222   ? allow.h222
+                      : code == 331 ? allow.h331
+                      : code == 400 ? allow.h400
+                      : code == 111 || code == 200 || code == 220 || code == 311 || code == 110 ||
+                              code == 211 || code == 310 || code == 321
+                          ? allow.main
+                          : 0;
+        if (r->h == 2 && r->l == 0 && r->k == 2 && true_breadth(truth, 1, 1, 0) > 0)
+            most = 0; /* tungsten: half of the dislocations leave 220 as sharp as its crystals: its top is a
+                         cusp */
         if (isnan(want))
             continue;
         printf(" %d%d%d %+.1f(%.1f)", r->h, r->k, r->l, 100 * off, 100 * profile->breadth_s.u / want);
@@ -218,39 +226,48 @@ int main(void)
     static const struct {
         const char *folder, *name;
         double edge;
+        int group;
         allowed physical, stokes;
     } scans[] = {
-        {"scripts/demo", "nickel_milled_00h", 0.35238, {0.02, 0, 0, 0}, {0.04, 0, 0, 0}},
-        {"scripts/demo", "nickel_milled_01h", 0.35238, {0.02, 0, 0, 0}, {0.04, 0, 0, 0}},
-        {"scripts/demo", "nickel_milled_02h", 0.35238, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
-        {"scripts/demo", "nickel_milled_04h", 0.35238, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
-        {"scripts/demo", "nickel_milled_08h", 0.35238, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
-        {"scripts/demo", "nickel_milled_16h", 0.35238, {0.04, 0.04, 0.05, 0}, {0.04, 0.08, 0.06, 0}},
-        {"scripts/demo", "nickel_milled_32h", 0.35238, {0.02, 0.04, 0.05, 0}, {0.04, 0.08, 0.06, 0}},
+        {"scripts/demo", "nickel_milled_00h", 0.35238, 225, {0.02, 0, 0, 0}, {0.04, 0, 0, 0}},
+        {"scripts/demo", "nickel_milled_01h", 0.35238, 225, {0.02, 0, 0, 0}, {0.04, 0, 0, 0}},
+        {"scripts/demo", "nickel_milled_02h", 0.35238, 225, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
+        {"scripts/demo", "nickel_milled_04h", 0.35238, 225, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
+        {"scripts/demo", "nickel_milled_08h", 0.35238, 225, {0.02, 0.04, 0.04, 0}, {0.04, 0.08, 0.06, 0}},
+        {"scripts/demo", "nickel_milled_16h", 0.35238, 225, {0.04, 0.04, 0.05, 0}, {0.04, 0.08, 0.06, 0}},
+        {"scripts/demo", "nickel_milled_32h", 0.35238, 225, {0.02, 0.04, 0.05, 0}, {0.04, 0.08, 0.06, 0}},
         {"tests/data/raytraced",
          "ceria_size_only",
          0.5411651,
+         225,
          {0.01, 0.02, 0.02, 0.02},
          {0.01, 0.02, 0.02, 0.02}},
         {"tests/data/raytraced",
          "ni_strain_only",
          0.35238,
+         225,
          {0.01, 0.02, 0.02, 0.02},
          {0.02, 0.02, 0.02, 0.02}},
+        {"tests/data/raytraced", "tungsten_filings", 0.31652, 229, {0.04, 0.04, 0, 0}, {0.04, 0.05, 0, 0}},
     };
     static const char *const methods[] = {"physical", "stokes", "tikhonov", "maximum_entropy",
                                           "richardson_lucy"};
     for (size_t i = 0; i < sizeof scans / sizeof *scans; i++) {
         lw_scan *sample = read_scan(scans[i].folder, scans[i].name);
-        lw_lines *fitted = fit(sample, scans[i].edge);
+        lw_lines *fitted = fit(sample, scans[i].edge, scans[i].group);
         char *truth = read_truth(scans[i].name);
         printf("%s: breadths off by %% (u)\n", scans[i].name);
         bool full = i == 4; /* every method once */
         for (int k = 0; k < (full ? 5 : 2); k++) {
-            lw_profiles *profiles = deconvolve(fitted, methods[k]);
+            lw_profiles *profiles = deconvolve(fitted, methods[k], NULL);
             check_breadths(profiles, truth, k == 0 ? scans[i].physical : scans[i].stokes);
             if (full && k < 4)
                 check_coefficients(profiles, truth);
+            lw_profiles_free(profiles);
+        }
+        for (int k = 1; k < (full ? 5 : 2); k++) { /* the standard's own lines for the instrument */
+            lw_profiles *profiles = deconvolve(fitted, methods[k], lines);
+            check_breadths(profiles, truth, scans[i].stokes);
             lw_profiles_free(profiles);
         }
         free(truth);
