@@ -47,6 +47,11 @@ double lw_strain_knots_square(const lw_strain_knots *knots, const double *y, dou
     return exp(sum);
 }
 
+double lw_strain_knots_least_step(const lw_strain_knots *knots, size_t knot, double spacing)
+{
+    return -log(fmax(lw_strain_knots_length(knots, knot), spacing) / fmax(lw_strain_knots_length(knots, knot - 1), spacing));
+}
+
 void lw_strain_knots_roughness(const lw_strain_knots *knots, double *matrix)
 {
     size_t n = knots->n;

@@ -26,6 +26,11 @@ double lw_strain_knots_length(const lw_strain_knots *knots, size_t knot);
 /* <eps^2(L)> for values y[n] = ln <eps^2> at the knots; slopes[n] of ln <eps^2> to the values (NULL = not wanted). */
 double lw_strain_knots_square(const lw_strain_knots *knots, const double *y, double length_nm, double *slopes);
 
+/* Steps y[k] - y[k-1], k > 0, lie between *least and 0 where displacements along a column are not against each other: then
+ * <Delta^2> grows at least as L and at most as L^2 (the mean square strain falls, but not faster than 1/L). Columns are not
+ * shorter than neighbouring atoms, `spacing` (nm). */
+double lw_strain_knots_least_step(const lw_strain_knots *knots, size_t knot, double spacing);
+
 /* matrix[n n], row-major, such that y' matrix y is the integral of the squared second derivative over x. */
 void lw_strain_knots_roughness(const lw_strain_knots *knots, double *matrix);
 

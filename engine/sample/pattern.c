@@ -169,9 +169,12 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
                         &pattern->curve, &pattern->of_lines, &pattern->residual};
     for (size_t i = 0; i < sizeof array / sizeof *array; i++)
         *array[i] = take(arena, n, err);
-    size_t channels = 1 + pattern->shape.n_size + LW_PATTERN_STRAIN_MOST;
+    size_t channels = 2 + pattern->shape.n_size + LW_PATTERN_STRAIN_MOST;
     size_t padded = pattern->n_parameters + LW_PATTERN_TILE;
     pattern->falls = take(arena, 2 * m, err);
+    pattern->exponent = take(arena, m, err);
+    pattern->thinned = take(arena, m, err);
+    pattern->work = take(arena, m, err);
     pattern->spectrum = take(arena, f + 2, err);
     pattern->grid = take(arena, channels * f, err);
     pattern->neighbours = take(arena, f, err);

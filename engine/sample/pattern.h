@@ -1,8 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The model of all lines of a scan at once: crystals of spherical shape with lognormal diameters, strained, seen through
  * the instrument, on a background. A line's profile on the axis s = 2 sin(theta)/lambda is the Fourier transform of
- *   A(L) = A_size(L) exp(-2 pi^2 s0^2 (1 - q H) <Delta^2(L)>) G(L),
- * G(L) the instrument's closed transform; H tells the direction in a cubic crystal. The transform is summed on a grid of L
+ *   A(L) = A_size(L) exp(-x) G(L),    x = 2 pi^2 s0^2 (1 - q H) <Delta^2(L)>,
+ * G(L) the instrument's closed transform; H tells the direction in a cubic crystal. Where the mean square strain varies
+ * from crystal to crystal as a gamma distribution of relative variance kappa, exp(-x) becomes (1 + kappa x)^(-1/kappa)
+ * (Madan & Seneta 1990 J. Business 63, 511). The transform is summed on a grid of L
  * by an FFT. Sums over a grid repeat with a period in s; what the neighbouring periods add is taken off by the
  * closed sum of their 1/s^2 tails, whose strength is the kink of A(L) at L = 0, and beyond half a period the tail
  * itself is used. Between the FFT's points stands a cubic spline, whose coefficients come out of the same FFT.
@@ -50,6 +52,7 @@ typedef struct lw_pattern {
     size_t n_lengths, n_fft;
     lw_fft *plan;
     double *falls, *spectrum, *grid;  /* [2 n_lengths], [n_fft + 2], [channels][n_fft] */
+    double *exponent, *thinned, *work; /* [n_lengths] each, where strain varies between crystals */
     double *neighbours;               /* [n_fft] spline of what the other periods' tails add, a unit of tail */
     /* work of one evaluation */
     double *residual;                 /* [n] */

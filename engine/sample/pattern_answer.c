@@ -104,14 +104,28 @@ void lw_pattern_answer_weigh(lw_pattern_answer *a)
 /* Mean by evidence. Its spread over the forms counts forms in reach more than evidence does: every form is an
  * approximation of what the powder is, so that a difference in chi-square is worth less than if one of them were true.
  * The likelihood is raised to a power for it (Miller & Dunson 2019 J. Am. Stat. Assoc. 114, 1113); at a twentieth a form
- * 28 in chi-square behind the best still counts half. */
+ * 28 in chi-square behind the best still counts half. Forms read the same counts: a form that determines a quantity less
+ * well than the best lies off by as much as the variances differ without meaning anything else (Hausman 1978 Econometrica
+ * 46, 1251); only what is beyond that is spread. */
 #define COARSE 0.05
+
+double lw_pattern_answer_reach(const lw_pattern_form *form)
+{
+    return form->none ? form->weight : pow(form->weight, COARSE);
+}
+
+static double beyond_chance(const lw_pattern_answer *a, const lw_pattern_form *form, int k)
+{
+    double off = form->value[k] - a->value[k];
+    double chance = fmax(form->covariance[k][k] - a->form[a->best].covariance[k][k], 0);
+    return off * off > chance ? off * sqrt(1 - chance / (off * off)) : 0;
+}
 
 void lw_pattern_answer_join(lw_pattern_answer *a)
 {
     double coarse[LW_PATTERN_FORMS_MOST], total = 0;
     for (size_t i = 0; i < a->n_forms; i++)
-        total += coarse[i] = a->form[i].none ? a->form[i].weight : pow(a->form[i].weight, COARSE);
+        total += coarse[i] = lw_pattern_answer_reach(&a->form[i]);
     for (int k = 0; k < LW_ANSWER_MOST; k++) {
         a->value[k] = 0;
         for (size_t i = 0; i < a->n_forms; i++)
@@ -124,7 +138,7 @@ void lw_pattern_answer_join(lw_pattern_answer *a)
             for (size_t i = 0; i < a->n_forms; i++)
                 if (a->form[i].weight > 0)
                     sum += a->form[i].weight * a->form[i].covariance[k][l] +
-                           coarse[i] / total * (a->form[i].value[k] - a->value[k]) * (a->form[i].value[l] - a->value[l]);
+                           coarse[i] / total * beyond_chance(a, &a->form[i], k) * beyond_chance(a, &a->form[i], l);
             a->covariance[k][l] = sum;
         }
 }

@@ -12,7 +12,7 @@ typedef struct evaluation {
     lw_pattern *m;
     const double *p;
     bool slopes;
-    bool anisotropy, fall; /* their rows are wanted */
+    bool anisotropy, variation, fall; /* their rows are wanted */
     double *first, *second; /* [n] sums over lines of area x profile, and the same x s0^2 */
 } evaluation;
 
@@ -51,6 +51,34 @@ static const double *grid_of(lw_pattern *m, size_t which, const double *curve, s
     return grid;
 }
 
+/* How the line's coefficients fall with strain, into m->falls; returns after how many nothing is left. Where strain varies
+ * between crystals m->exponent takes ln(1 + kappa x)/kappa, m->thinned its slope to x, 1/(1 + kappa x). */
+static size_t set_falls(lw_pattern *m, const lw_pattern_line *line, double strength, double kappa, bool thin)
+{
+    if (!thin)
+        return m->rung->falls(m->n_lengths, strength, m->shape.displacement, line->g, m->falls);
+    for (size_t j = 0; j < m->n_lengths; j++) {
+        double x = strength * m->shape.displacement[j];
+        m->exponent[j] = kappa > 0 ? log1p(kappa * x) / kappa : x;
+        m->thinned[j] = 1 / (1 + kappa * x);
+    }
+    return m->rung->falls(m->n_lengths, 1, m->exponent, line->g, m->falls);
+}
+
+/* Slope of the coefficient to kappa over its fall: size times (ln(1 + y) - y/(1 + y))/kappa^2, y = kappa x. */
+static const double *by_kappa(lw_pattern *m, double strength, double kappa)
+{
+    for (size_t j = 0; j < m->n_lengths; j++) {
+        double x = strength * m->shape.displacement[j], y = kappa * x, slope;
+        if (y < 1e-3)
+            slope = x * x * (0.5 + y * (-2.0 / 3 + y * (0.75 - 0.8 * y)));
+        else
+            slope = (log1p(y) - y / (1 + y)) / (kappa * kappa);
+        m->work[j] = m->shape.size[j] * slope;
+    }
+    return m->work;
+}
+
 static void add_line(const evaluation *e, size_t k)
 {
     lw_pattern *m = e->m;
@@ -61,9 +89,11 @@ static void add_line(const evaluation *e, size_t k)
     double squared = line->s_corrected + moved, strain = 2 * PI * PI * squared * squared;
     double scale = 1 - e->p[LW_PATTERN_ANISOTROPY] * line->hkl_sum, unit = 1 / (2 * PI * PI);
     double lift = line->lift = exp(e->p[LW_PATTERN_FALL] * s0 * s0);
-    size_t count = m->rung->falls(m->n_lengths, strain * scale, shape->displacement, line->g, m->falls);
+    double kappa = e->p[LW_PATTERN_VARIATION];
+    bool thin = kappa > 0 || e->variation;
+    size_t count = set_falls(m, line, strain * scale, kappa, thin);
 
-    lw_pattern_channel channel[1 + LW_PATTERN_SIZE_MOST + LW_PATTERN_STRAIN_MOST];
+    lw_pattern_channel channel[2 + LW_PATTERN_SIZE_MOST + LW_PATTERN_STRAIN_MOST];
     double tail = unit * (shape->size_kink + strain * scale * shape->strain_kink + line->kink);
     channel[0] = (lw_pattern_channel){.grid = grid_of(m, 0, shape->size, count, tail),
                                       .tail = tail,
@@ -93,12 +123,22 @@ static void add_line(const evaluation *e, size_t k)
          * combination of these */
         tail = -unit * shape->strain_kink_slope[i];
         double by_strain = -strain * scale * lift * area;
-        channel[n] = (lw_pattern_channel){.grid = grid_of(m, n, shape->strained[i], count, tail),
+        const double *curve = shape->strained[i];
+        for (size_t j = 0; j < count && thin; j++)
+            m->work[j] = curve[j] * m->thinned[j];
+        channel[n] = (lw_pattern_channel){.grid = grid_of(m, n, thin ? m->work : curve, count, tail),
                                           .tail = tail,
                                           .sum = own ? shared(m, LW_PATTERN_STRAIN + i) : NULL,
                                           .share = by_strain,
                                           .also = turned ? shared(m, LW_PATTERN_ANISOTROPY) : NULL,
                                           .also_share = -line->hkl_sum / scale * shape->combine[i] * by_strain};
+        n++;
+    }
+    if (e->variation) {
+        const double *curve = by_kappa(m, strain * scale, kappa);
+        channel[n] = (lw_pattern_channel){.grid = grid_of(m, n, curve, count, 0),
+                                          .sum = shared(m, LW_PATTERN_VARIATION),
+                                          .share = lift * area};
         n++;
     }
     double per_cell = (double)m->n_fft * m->length_step, half = ((double)(m->n_fft / 2) - EDGE) / per_cell;
@@ -183,6 +223,7 @@ static lw_status evaluate(lw_pattern *m, const double *p, bool slopes, lw_normal
     evaluation e = {.m = m, .p = p, .slopes = slopes, .first = m->of_lines, .second = shared(m, LW_PATTERN_SHARED_MOST)};
     for (size_t k = 0; k < m->n_lines && wanted(m, LW_PATTERN_ANISOTROPY); k++)
         e.anisotropy |= slopes && m->line[k].hkl_sum != 0;
+    e.variation = slopes && wanted(m, LW_PATTERN_VARIATION);
     e.fall = slopes && wanted(m, LW_PATTERN_FALL);
     lw_pattern_shape_fill(&m->shape, p, slopes);
     set_fall(m, p[LW_PATTERN_FALL]);

@@ -142,6 +142,34 @@ static lw_status fit_forms(lw_pattern_fitter *f, look *first, lw_pattern_saved *
     return status;
 }
 
+/* The best form with few parameters, and the best of all, again with strain that varies from crystal to crystal. */
+static lw_status try_variation(lw_pattern_fitter *f, lw_pattern_saved *after, lw_error *err)
+{
+    lw_pattern_answer *a = f->answer;
+    size_t plain = a->n_forms, tried[2] = {a->n_forms, a->best};
+    for (size_t i = 0; i < plain; i++) {
+        bool better = tried[0] == plain || a->form[i].weight > a->form[tried[0]].weight;
+        if (a->form[i].fitted && a->form[i].strain != NULL && better)
+            tried[0] = i;
+    }
+    for (int i = 0; i < 2 && a->n_forms < LW_PATTERN_FORMS_MOST; i++) {
+        if (tried[i] == plain || (i == 1 && tried[1] == tried[0]))
+            continue;
+        lw_pattern_form *form = &a->form[a->n_forms];
+        *form = a->form[tried[i]];
+        form->varying = true;
+        lw_pattern_fitter_restore(f, &after[tried[i]], form);
+        lw_status status = lw_pattern_fitter_minimise(f, form, err);
+        if (status == LW_OK)
+            status = lw_pattern_fitter_save(f, &after[a->n_forms++], err);
+        if (status != LW_OK)
+            return status;
+    }
+    lw_pattern_answer_misfit(f);
+    lw_pattern_answer_weigh(a);
+    return LW_OK;
+}
+
 /* Lets the strain of the forms vary with direction, if that is worth a parameter to the best of them. */
 static lw_status try_directions(lw_pattern_fitter *f, lw_pattern_saved *after, lw_error *err)
 {
@@ -212,8 +240,10 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
             continue;
         memset(covariance, 0, n * n * sizeof *covariance);
         lw_pattern_fitter_restore(f, &after[i], form);
-        if (form->weight > SEEN)
+        if (lw_pattern_answer_reach(form) > 0.01)
             status = lw_pattern_fitter_covariance(f, a->misfit, covariance, err);
+        if (status == LW_OK && form->weight > SEEN)
+            status = lw_pattern_fitter_widen(f, a->misfit, covariance, err);
         if (status != LW_OK)
             return status;
         lw_pattern_answer_propagate(f, form, covariance);
@@ -224,6 +254,7 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
             u_inverse_size = sqrt(fmax(covariance[LW_PATTERN_INVERSE_SIZE * (n + 1)], 0));
             a->sigma_at_bound = f->at_bound[LW_PATTERN_SIGMA];
         }
+        a->u_variation = sqrt(fmax(covariance[LW_PATTERN_VARIATION * (n + 1)], 0));
         a->anisotropy = form->shape[LW_PATTERN_ANISOTROPY];
         a->u_anisotropy = sqrt(fmax(covariance[LW_PATTERN_ANISOTROPY * (n + 1)], 0));
         a->anisotropy_at_bound = f->at_bound[LW_PATTERN_ANISOTROPY];
@@ -240,7 +271,8 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
         a->size_volume_limit = ratio / limit;
     }
     const lw_pattern_form *best = &a->form[a->best];
-    if (best->none || (best->strain == &lw_strain_constant && !first->strained))
+    bool told = best->strain == &lw_strain_constant || best->strain == NULL; /* their limit is one for every length */
+    if (best->none || (told && !first->strained))
         a->strain_limit = sqrt(fmax(first->strain, 0) + ONE_SIDED * fmax(first->u_strain, 0));
     return LW_OK;
 }
@@ -268,9 +300,11 @@ lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const l
     lw_pattern_answer_weigh(a);
     if (!a->form[a->best].fitted)
         return lw_fail(err, LW_NO_CONVERGENCE, NULL, "no form of strain could be fitted to the whole pattern");
+    if (a->n_forms > 1 && first.strained && !a->form[a->best].none)
+        status = try_variation(&f, after, err);
     bool directions = lw_pattern_fitter_directions(&f);
     a->anisotropic = request->anisotropy == 2 && directions;
-    if (request->anisotropy == 0 && directions && !a->form[a->best].none && first.strained)
+    if (status == LW_OK && request->anisotropy == 0 && directions && !a->form[a->best].none && first.strained)
         status = try_directions(&f, after, err);
     if (status == LW_OK && request->histogram && !a->size_unresolved) {
         last = &with_histogram;

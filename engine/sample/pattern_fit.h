@@ -18,7 +18,7 @@ typedef struct lw_pattern_request {
     bool histogram; /* of the diameters, in place of a lognormal distribution */
 } lw_pattern_request;
 
-#define LW_PATTERN_FORMS_MOST 8
+#define LW_PATTERN_FORMS_MOST 10
 #define LW_ANSWER_LENGTHS 24
 enum {
     LW_ANSWER_SIZE_VOLUME,
@@ -35,6 +35,7 @@ typedef struct lw_pattern_form {
     const char *name, *title, *source;
     const lw_strain_form *strain; /* NULL: free at knots */
     bool none;                    /* strain held at 0 */
+    bool varying;                 /* from crystal to crystal */
     bool fitted;                  /* else `why` says why not */
     const char *why;
     double chi2, weight; /* weight: its share of the answer */
@@ -54,11 +55,13 @@ typedef struct lw_pattern_answer {
     double value[LW_ANSWER_MOST];                      /* weighted mean over the forms */
     double covariance[LW_ANSWER_MOST][LW_ANSWER_MOST]; /* counting, misfit, calibration, choice of the form */
     double goodness, misfit; /* misfit: factor on u, 1 where chi-square is as it should be */
+    double disagreement;     /* of lines under the forms: the largest factor that it puts on a parameter's u */
     double strain_limit;     /* 95 % upper limit of the rms strain where none stands out, else 0 */
     double size_volume_limit, size_area_limit; /* nm, 95 % lower limits where no size stands out */
     bool size_unresolved, sigma_at_bound;
     bool anisotropic, anisotropy_at_bound;
     double anisotropy, u_anisotropy, anisotropy_limit; /* limit: of q at its bound, 95 % */
+    double u_variation; /* of kappa of the best form */
     lw_size_histogram histogram; /* n = 0: lognormal spheres */
     lw_strain_knots knots;       /* n = 0: not tried */
 } lw_pattern_answer;

@@ -56,6 +56,11 @@ lw_status lw_pattern_fitter_instrument(lw_pattern_fitter *f, lw_error *err);
 /* Covariance of the shared parameters at f->p, [n n]: counting times misfit^2, plus the calibration's part. */
 lw_status lw_pattern_fitter_covariance(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
 
+/* ---------------------------------------------------------------------------------------- pattern_robust.c */
+
+/* Enlarges the covariance where lines contradict each other beyond chance, after lw_pattern_fitter_covariance. */
+lw_status lw_pattern_fitter_widen(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
+
 /* ---------------------------------------------------------------------------------------- pattern_answer.c */
 
 /* Column lengths at which the strain is told. */
@@ -66,6 +71,8 @@ void lw_pattern_answer_propagate(const lw_pattern_fitter *f, lw_pattern_form *fo
 void lw_pattern_answer_misfit(const lw_pattern_fitter *f);
 /* Weights of the forms, and the best. */
 void lw_pattern_answer_weigh(lw_pattern_answer *a);
+/* For how much a form counts in the spread over the forms, before all are made to sum to 1. */
+double lw_pattern_answer_reach(const lw_pattern_form *form);
 /* Mean over the forms and its covariance. */
 void lw_pattern_answer_join(lw_pattern_answer *a);
 

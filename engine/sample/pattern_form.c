@@ -4,6 +4,8 @@
 #include <math.h>
 #include <string.h>
 
+#define ATOMS 0.25 /* nm, between neighbours: no column is shorter */
+
 static void set_form(lw_pattern_fitter *f, const lw_pattern_form *form)
 {
     lw_pattern_shape_set_strain(&f->pattern.shape, form->strain, form->strain == NULL ? &f->answer->knots : NULL);
@@ -54,6 +56,7 @@ static void set_priors(lw_pattern_fitter *f, const lw_pattern_form *form)
         size_t n = m->shape.n_strain;
         m->prior[1] = (lw_pattern_prior){.row = LW_PATTERN_STRAIN, .n = n, .freedom = n - 2, .strength = 1};
         lw_strain_knots_roughness(&f->answer->knots, m->prior[1].matrix);
+        lw_pattern_prior_by_steps(&m->prior[1]);
     }
 }
 
@@ -121,13 +124,18 @@ lw_status lw_pattern_fitter_minimise(lw_pattern_fitter *f, lw_pattern_form *form
         size_t row = LW_PATTERN_STRAIN + i;
         bool used = !form->none && i < m->shape.n_strain;
         f->fixed[row] = !used;
-        /* knots: from strains of 1e-9 to 1 */
-        f->lower[row] = !used ? -INFINITY : form->strain != NULL ? form->strain->least[i] : -41;
-        f->upper[row] = !used ? INFINITY : form->strain != NULL ? form->strain->most[i] : 0;
+        f->lower[row] = used && form->strain != NULL ? form->strain->least[i] : -INFINITY;
+        f->upper[row] = used && form->strain != NULL ? form->strain->most[i] : INFINITY;
+        if (used && form->strain == NULL) {
+            f->lower[row] = i == 0 ? -41 : lw_strain_knots_least_step(&f->answer->knots, i, ATOMS); /* strain 1e-9 */
+            f->upper[row] = 0; /* strain 1, and no rise */
+        }
         if (!used)
             f->p[row] = 0;
         f->p[row] = fmin(fmax(f->p[row], f->lower[row]), f->upper[row]);
     }
+    f->fixed[LW_PATTERN_VARIATION] = !form->varying;
+    f->p[LW_PATTERN_VARIATION] = !form->varying ? 0 : f->p[LW_PATTERN_VARIATION] > 0 ? f->p[LW_PATTERN_VARIATION] : 0.1;
     form->iterations = 0;
     form->parameters = 0;
     bool smoothed = m->prior[0].n > 0 || m->prior[1].n > 0;
@@ -184,6 +192,8 @@ void lw_pattern_fitter_restart_strain(lw_pattern_fitter *f, const lw_strain_form
             double length = fmax(lw_strain_knots_length(knots, i), 0.1 * knots->scale);
             p[i] = log(fmax(from->displacement(own, length, NULL) / (length * length), 1e-12));
         }
+        for (size_t i = knots->n - 1; i > 0; i--)
+            p[i] -= p[i - 1];
     }
     memcpy(own, p, sizeof p);
 }

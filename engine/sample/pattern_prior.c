@@ -16,6 +16,17 @@ void lw_pattern_prior_bends(lw_pattern_prior *prior, size_t row, size_t n, doubl
             }
 }
 
+void lw_pattern_prior_by_steps(lw_pattern_prior *prior)
+{
+    size_t n = prior->n;
+    for (size_t i = 0; i < n; i++) /* value j moves with every step up to j: sums from the end, of columns and rows */
+        for (size_t j = n - 1; j > 0; j--)
+            prior->matrix[i * n + j - 1] += prior->matrix[i * n + j];
+    for (size_t i = n - 1; i > 0; i--)
+        for (size_t j = 0; j < n; j++)
+            prior->matrix[(i - 1) * n + j] += prior->matrix[i * n + j];
+}
+
 double lw_pattern_prior_add(const lw_pattern_prior *prior, const double *p, lw_normal *normal)
 {
     size_t n = prior->n;

@@ -21,6 +21,9 @@ typedef struct lw_pattern_prior {
 /* Second differences of n values with zeros beyond both ends. */
 void lw_pattern_prior_bends(lw_pattern_prior *prior, size_t row, size_t n, double strength);
 
+/* The matrix for the first value and the steps from one to the next, in place of the values. */
+void lw_pattern_prior_by_steps(lw_pattern_prior *prior);
+
 /* The penalty at p, and with normal->h its parts of the normal equations added. */
 double lw_pattern_prior_add(const lw_pattern_prior *prior, const double *p, lw_normal *normal);
 

@@ -102,18 +102,29 @@ static void fill_form(lw_pattern_shape *shape, const double *own, bool slopes)
         shape->combine[i] = i == 0 || strain->linear ? own[i] : 0;
 }
 
-static void fill_knots(lw_pattern_shape *shape, const double *own, bool slopes)
+void lw_pattern_shape_knots(const lw_pattern_shape *shape, const double *p, double *y)
 {
+    y[0] = p[LW_PATTERN_STRAIN];
+    for (size_t i = 1; i < shape->n_strain; i++)
+        y[i] = y[i - 1] + p[LW_PATTERN_STRAIN + i];
+}
+
+static void fill_knots(lw_pattern_shape *shape, const double *p, bool slopes)
+{
+    double y[LW_STRAIN_KNOTS_MOST];
+    lw_pattern_shape_knots(shape, p, y);
     shape->strain_kink = 0;
     for (size_t j = 0; j < shape->n; j++) {
         double by[LW_STRAIN_KNOTS_MOST], length = shape->step * (double)j;
-        shape->displacement[j] = length * length * lw_strain_knots_square(shape->knots, own, length, slopes ? by : NULL);
+        shape->displacement[j] = length * length * lw_strain_knots_square(shape->knots, y, length, slopes ? by : NULL);
+        for (size_t i = shape->n_strain - 1; i > 0 && slopes; i--)
+            by[i - 1] += by[i]; /* a step moves all knots from its own on */
         for (size_t i = 0; i < shape->n_strain && slopes; i++)
             shape->strained[i][j] = shape->size[j] * shape->displacement[j] * by[i];
     }
     for (size_t i = 0; i < shape->n_strain; i++) {
         shape->strain_kink_slope[i] = 0;
-        shape->combine[i] = 1; /* a spline of ones is one */
+        shape->combine[i] = i == 0; /* the first moves ln <eps^2> as a whole */
     }
 }
 
@@ -124,21 +135,24 @@ void lw_pattern_shape_fill(lw_pattern_shape *shape, const double *p, bool slopes
     else
         fill_spheres(shape, p, slopes);
     if (shape->knots != NULL)
-        fill_knots(shape, p + LW_PATTERN_STRAIN, slopes);
+        fill_knots(shape, p, slopes);
     else
         fill_form(shape, p + LW_PATTERN_STRAIN, slopes);
 }
 
 double lw_pattern_shape_displacement(const lw_pattern_shape *shape, const double *p, double length_nm)
 {
-    if (shape->knots != NULL)
-        return length_nm * length_nm * lw_strain_knots_square(shape->knots, p + LW_PATTERN_STRAIN, length_nm, NULL);
+    if (shape->knots != NULL) {
+        double y[LW_STRAIN_KNOTS_MOST];
+        lw_pattern_shape_knots(shape, p, y);
+        return length_nm * length_nm * lw_strain_knots_square(shape->knots, y, length_nm, NULL);
+    }
     return shape->strain->displacement(p + LW_PATTERN_STRAIN, length_nm, NULL);
 }
 
 bool lw_pattern_shape_possible(const lw_pattern_shape *shape, const double *p)
 {
     if (shape->histogram != NULL)
-        return share_sum(shape, p) > 0;
-    return p[LW_PATTERN_INVERSE_SIZE] > 0 && p[LW_PATTERN_SIGMA] > 0;
+        return p[LW_PATTERN_VARIATION] >= 0 && share_sum(shape, p) > 0;
+    return p[LW_PATTERN_VARIATION] >= 0 && p[LW_PATTERN_INVERSE_SIZE] > 0 && p[LW_PATTERN_SIGMA] > 0;
 }

@@ -15,8 +15,9 @@
 
 /* Rows of the parameters that all lines share. */
 enum {
-    LW_PATTERN_STRAIN, /* first of the strain's */
+    LW_PATTERN_STRAIN, /* first of the strain's; at knots: ln <eps^2> at the first, then the steps from knot to knot */
     LW_PATTERN_ANISOTROPY = LW_PATTERN_STRAIN + LW_PATTERN_STRAIN_MOST, /* q */
+    LW_PATTERN_VARIATION, /* kappa: variance over squared mean of the mean square strain, from crystal to crystal */
     LW_PATTERN_FALL, /* of the scattering power across a line, exp(-fall (s^2 - s0^2)), nm^2 */
     LW_PATTERN_SIZE, /* first of the size's. Lognormal spheres: */
     LW_PATTERN_INVERSE_SIZE = LW_PATTERN_SIZE, /* of the area-weighted size, nm^-1: what the lines say best */
@@ -58,6 +59,9 @@ double lw_pattern_shape_displacement(const lw_pattern_shape *shape, const double
 
 /* The lognormal spheres that the parameters p describe. */
 lw_spheres lw_pattern_spheres(const double *p);
+
+/* ln <eps^2> at the knots, y[n], for the parameters p. */
+void lw_pattern_shape_knots(const lw_pattern_shape *shape, const double *p, double *y);
 
 /* Volume-weighted mean of the sphere diameter's power, nm^power: power 1 is 4/3 of size_volume, -1 is 2/3 of its area
  * counterpart's reciprocal, and ratios of -2, -3 and -1 give the mean diameter and its dispersion. */

@@ -111,6 +111,8 @@ static lw_status lay_out(lw_pattern_fitter *f, double narrowest, lw_error *err)
     f->lower[LW_PATTERN_ANISOTROPY] = -20;
     f->upper[LW_PATTERN_ANISOTROPY] = 2.99;
     f->fixed[LW_PATTERN_ANISOTROPY] = f->request->anisotropy != 2 || !lw_pattern_fitter_directions(f);
+    f->lower[LW_PATTERN_VARIATION] = 0;
+    f->upper[LW_PATTERN_VARIATION] = 5;
     f->lower[LW_PATTERN_FALL] = -0.02;
     f->upper[LW_PATTERN_FALL] = 0.1;
     f->fixed[LW_PATTERN_FALL] = f->request->fall != 1;

@@ -47,10 +47,12 @@ static void tell_knots(const lw_pattern_answer *a, const lw_pattern_form *form, 
 {
     lw_add_number(row, "smoothing_of_strain", form->strength[1], err);
     lw_node *list = lw_add_list(row, "knots", err);
+    double logarithm = 0;
     for (size_t k = 0; k < a->knots.n; k++) {
         lw_node *each = lw_add_group(list, NULL, err);
         lw_add_number(each, "length", lw_strain_knots_length(&a->knots, k), err);
-        lw_add_number(each, "value", exp(0.5 * form->shape[LW_PATTERN_STRAIN + k]), err);
+        logarithm += form->shape[LW_PATTERN_STRAIN + k];
+        lw_add_number(each, "value", exp(0.5 * logarithm), err);
     }
 }
 
@@ -64,6 +66,8 @@ static void tell_forms(const lw_pattern_answer *a, lw_node *result, lw_error *er
         lw_add_text(row, "title", form->title, err);
         if (!form->none)
             lw_add_text(row, "source", form->source, err);
+        if (form->varying)
+            lw_add_number(row, "variation", form->shape[LW_PATTERN_VARIATION], err);
         lw_add_number(row, "chi2", form->chi2, err);
         lw_add_number(row, "parameters", form->parameters, err);
         lw_add_number(row, "weight", form->weight, err);
@@ -136,6 +140,7 @@ static void draw(const lw_pattern_answer *a, lw_arena *arena, lw_node *result, l
     lw_add_vector(band, "y", low, n, "", err);
     lw_add_vector(band, "high", high, n, "", err);
     size_t possible = 0;
+    char label[160];
     for (size_t i = 0; i < a->n_forms; i++)
         possible += a->form[i].fitted && a->form[i].weight >= 0.01 && !a->form[i].none;
     for (size_t i = 0; i < a->n_forms && possible > 1; i++) {
@@ -143,7 +148,8 @@ static void draw(const lw_pattern_answer *a, lw_arena *arena, lw_node *result, l
             continue;
         lw_node *each = lw_add_group(series, NULL, err);
         lw_add_text(each, "kind", "line", err);
-        lw_add_text(each, "label", a->form[i].title, err);
+        snprintf(label, sizeof label, "%s%s", a->form[i].title, a->form[i].varying ? ", varying" : "");
+        lw_add_text(each, "label", label, err);
         lw_add_vector(each, "x", a->length, n, "nm", err);
         lw_add_vector(each, "y", a->form[i].value + LW_ANSWER_STRAIN_AT, n, "", err);
     }
@@ -157,6 +163,13 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
                  "the best form still misses the counts (goodness of fit %.3f, or residuals that go together): all "
                  "uncertainties were enlarged %.2f times",
                  a->goodness, a->misfit);
+        lw_add_text(remarks, NULL, text, err);
+    }
+    if (a->disagreement > 1) {
+        snprintf(text, sizeof text,
+                 "lines contradict each other under the forms of strain: the uncertainties follow their scatter and are up to "
+                 "%.1f times those of the counts",
+                 a->disagreement);
         lw_add_text(remarks, NULL, text, err);
     }
     if (a->goodness > 1.05)
@@ -189,6 +202,11 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
             remarks, NULL,
             "the width of the size distribution ended at its bound: read the dispersion as not determined",
             err);
+    if (a->form[a->best].varying)
+        lw_add_text(remarks, NULL,
+                    "crystals are strained to different degrees: the mean square strain varies from one to the other as a "
+                    "gamma distribution (Madan & Seneta 1990 J. Business 63, 511)",
+                    err);
     if (a->anisotropic) {
         char q[64];
         if (a->anisotropy_at_bound)
@@ -297,6 +315,10 @@ lw_status lw_whole_pattern_tell(const lw_pattern_answer *a, lw_arena *arena, lw_
         tell_diameters(a, result, err);
     tell_strain(a, result, err);
     lw_add_text(result, "strain_form", a->form[a->best].name, err);
+    if (a->form[a->best].varying)
+        lw_add_quantity(result, "strain_variation",
+                        lw_quantity_of(a->form[a->best].shape[LW_PATTERN_VARIATION], a->u_variation, ""),
+                        "Variance of the mean square strain from crystal to crystal over its squared mean.", err);
     if (a->anisotropic)
         tell_anisotropy(a, result, err);
     lw_add_text(result, "size_form", a->histogram.n > 0 ? "histogram" : "lognormal", err);

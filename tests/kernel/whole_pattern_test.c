@@ -21,6 +21,9 @@
 static const lw_spheres SPHERES = {10, 0.3};
 static const lw_spheres SMALL = {4, 0.25}, LARGE = {16, 0.25}; /* a mixture, half of the volume each */
 static bool mixed;
+static double kappa;     /* relative variance of the mean square strain from crystal to crystal */
+static double turn;      /* mean square strain falls with direction as 1 - turn H, to 0 */
+static double odd = 1;   /* one line has this times the strain of the others */
 static double angle[POINTS], ideal[POINTS], counts[POINTS];
 
 typedef struct made {
@@ -46,6 +49,13 @@ static double coefficient(double length)
                  : lw_spheres_coefficient(&SPHERES, length, NULL);
 }
 
+/* Mean of exp(-x v) over crystals whose v is gamma distributed, of mean 1 and variance kappa: the Laplace transform of the
+ * gamma density. */
+static double strained(double x)
+{
+    return kappa > 0 ? pow(1 + kappa * x, -1 / kappa) : exp(-x);
+}
+
 static void make_ideal(const made *m, const lw_strain_form *strain, const double *p, double scale)
 {
     double step = 0.02, last = 60;
@@ -55,12 +65,15 @@ static void make_ideal(const made *m, const lw_strain_form *strain, const double
         ideal[i] = scale * (0.02 + 1e-4 * (angle[i] - 80));
     for (size_t k = 0; k < m->n; k++) {
         double at = m->reflection[k].two_theta_deg, s0 = 1 / m->reflection[k].d_nm;
+        double h = m->reflection[k].h * m->reflection[k].h, q = m->reflection[k].k * m->reflection[k].k,
+               l2 = m->reflection[k].l * m->reflection[k].l;
+        double own = fmax(1 - turn * (h * q + h * l2 + q * l2) / ((h + q + l2) * (h + q + l2)), 0) * (k == 1 ? odd * odd : 1);
         double per = DEGREE * cos(at * DEGREE / 2) / LAMBDA, variance = 0.0036 * per * per, lorentz = 0.02 * per;
         for (size_t j = 0; j < n; j++) {
             double l = step * (double)j;
             a[j] = (j == 0 || j + 1 == n ? 1 : j % 2 == 1 ? 4 : 2) * step / 3 * 2 * coefficient(l) *
-                   exp(-2 * PI * PI * s0 * s0 * strain->displacement(p, l, NULL) -
-                       PI * PI / (4 * log(2)) * variance * l * l - PI * lorentz * l);
+                   strained(2 * PI * PI * s0 * s0 * own * strain->displacement(p, l, NULL)) *
+                   exp(-PI * PI / (4 * log(2)) * variance * l * l - PI * lorentz * l);
         }
         double area = scale * 0.3 / (double)(k + 2);
         for (size_t i = 0; i < POINTS; i++) {
@@ -267,6 +280,78 @@ static void knots(const made *m)
     lw_arena_end(&arena);
 }
 
+/* Strain that varies from crystal to crystal is found, and its size with it. */
+static void variation(const made *m)
+{
+    static const double p[2] = {2.5e-5, 1.4};
+    kappa = 0.6;
+    make_ideal(m, &lw_strain_correlated, p, 1e6);
+    kappa = 0;
+    draw_counts(5);
+    lw_arena arena;
+    lw_arena_begin(&arena, m->engine);
+    const lw_node *tree = fit(m, "auto", &arena);
+    CHECK(tree != NULL);
+    lw_quantity found = quantity(tree, "strain_variation"), area = quantity(tree, "size_area");
+    printf("variation %.3f(%.3f), truth 0.6; size_area %.3f(%.3f), truth %.3f\n", found.value, found.u, area.value, area.u,
+           lw_spheres_size_area(&SPHERES, NULL));
+    CHECK(fabs(found.value - 0.6) < 3 * found.u && found.u < 0.2);
+    CHECK(fabs(area.value - lw_spheres_size_area(&SPHERES, NULL)) < 3 * area.u && area.u < 0.05 * area.value);
+    lw_arena_end(&arena);
+}
+
+static bool says(const lw_node *tree, const char *what)
+{
+    const lw_node *remarks = tree != NULL ? lw_node_get(tree, "remarks") : NULL;
+    for (const lw_node *r = remarks != NULL ? remarks->first : NULL; r != NULL; r = r->next)
+        if (r->kind == LW_NODE_TEXT && strstr(r->text, what) != NULL)
+            return true;
+    return false;
+}
+
+/* A line that is strained unlike the others: said, and the uncertainty holds it. */
+static void contradiction(const made *m)
+{
+    static const double p[2] = {8e-6, 0};
+    double u[2] = {0, 0};
+    for (int contradicts = 0; contradicts < 2; contradicts++) {
+        odd = contradicts ? 1.15 : 1;
+        make_ideal(m, &lw_strain_constant, p, 1e5);
+        odd = 1;
+        draw_counts(6);
+        lw_arena arena;
+        lw_arena_begin(&arena, m->engine);
+        const lw_node *tree = fit(m, "constant", &arena);
+        CHECK(says(tree, "contradict") == (contradicts == 1));
+        u[contradicts] = quantity(tree, "strain_rms").u;
+        lw_arena_end(&arena);
+    }
+    CHECK(u[1] > 2 * u[0]);
+}
+
+/* Strain that depends on direction: q where it is possible, a limit where the fit goes to the end of what is. */
+static void directions(const made *m)
+{
+    static const double p[2] = {1.6e-5, 0}, turns[2] = {1.5, 4};
+    for (int i = 0; i < 2; i++) {
+        turn = turns[i];
+        make_ideal(m, &lw_strain_constant, p, 1e6);
+        turn = 0;
+        draw_counts(8);
+        lw_arena arena;
+        lw_arena_begin(&arena, m->engine);
+        const lw_node *tree = fit(m, "constant", &arena);
+        lw_quantity q = quantity(tree, "strain_anisotropy");
+        if (i == 0) {
+            CHECK(q.kind == LW_VALUE && fabs(q.value - 1.5) < 3 * q.u && q.u < 0.1);
+        } else {
+            CHECK(q.kind == LW_LOWER_LIMIT && q.value > 2.5 && q.value < 2.99);
+            CHECK(says(tree, "at its bound"));
+        }
+        lw_arena_end(&arena);
+    }
+}
+
 /* Two kinds of crystals: the histogram gives back means that a lognormal distribution does not, and both humps. Volume over
  * ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929). */
 static void histogram(const made *m)
@@ -387,6 +472,9 @@ int main(void)
     choice(&m);
     knots(&m);
     histogram(&m);
+    variation(&m);
+    contradiction(&m);
+    directions(&m);
     coverage(&m);
     refused_memory(&m);
 

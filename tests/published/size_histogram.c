@@ -80,6 +80,9 @@ static void splines(void)
     lw_strain_knots_square(&three, bent, 2 * expm1(0.5), slopes);
     CHECK_NEAR(slopes[1], 0.5 * 0.5 * (3 - 0.25), 1e-12);
     CHECK_NEAR(slopes[0] + slopes[1] + slopes[2], 1, 1e-12);
+    /* no faster than 1/L, from atoms 0.25 nm apart on */
+    CHECK_NEAR(lw_strain_knots_least_step(&three, 2, 0.25), log(expm1(1) / expm1(2)), 1e-12);
+    CHECK_NEAR(lw_strain_knots_least_step(&three, 1, 0.25), log(0.25 / (2 * expm1(1))), 1e-12);
     /* four knots, 0, 1, 0, 0: 2/3 M1 + 1/6 M2 = -2, 1/6 M1 + 2/3 M2 = 1 give M1 = -18/5, M2 = 12/5 */
     lw_strain_knots_make(4, 2, 2 * expm1(3), &four);
     CHECK_NEAR(four.bend[1][1], -3.6, 1e-12);

@@ -46,6 +46,7 @@ describe("the whole pattern", function()
         r.size_area:pull(truth.size_area), half_off, r.strain_form, seconds)
       -- the choice of the form is in the uncertainty, so that no size_volume is off by more than 3 u
       assert.is_true(math.abs(r.size_volume:pull(truth.size_volume)) < 3)
+      assert.is_true(math.abs(r.size_area:pull(truth.size_area)) < 3)
       assert.is_true(r.statistics.goodness < 1.06)
       assert.are_not.equal("constant", r.strain_form)
     end)
@@ -120,6 +121,19 @@ describe("the whole pattern", function()
     assert.is_true(beyond <= #r.diameter_distribution // 8)
     assert.is_true(largest < 0.01) -- nm^-1, of 0.097 at the top
     assert.are.equal("histogram", r.size_form)
+  end)
+
+  it("of tungsten with dislocations says that its lines contradict each other", function()
+    local truth = roads.truth "tungsten_filings".sample
+    local r = fitted("tungsten_filings", "tungsten")
+    tell("%-20s whole pattern: size_volume %s, truth %.4g; size_area %s, %.4g; strain varies between crystals: %s",
+      "tungsten_filings", tostring(r.size_volume), truth.size_volume, tostring(r.size_area), truth.size_area,
+      tostring(r.strain_variation))
+    assert.is_true(math.abs(r.size_volume:pull(truth.size_volume)) < 3)
+    assert.is_true(r.strain_variation.value > 3 * r.strain_variation.u) -- few dislocations in each crystal
+    local remarks = table.concat(r.remarks, "\n")
+    assert.is_truthy(remarks:find("contradict each other", 1, true))
+    assert.is_truthy(remarks:find("indicative", 1, true))
   end)
 
   it("of strained crystals without size finds strain alone", function()
