@@ -11,6 +11,11 @@ local job = lw.recipe {
     ways        = { kind = "list", default = { "convolution", "stokes", "physical" },
                     help = "ways of taking the instrument out" },
     methods     = { kind = "list", default = "all", help = "methods to run" },
+    uncertainty = { kind = "text", default = "analytic", choices = { "analytic", "monte_carlo", "bootstrap" },
+                    help = "monte_carlo, bootstrap: the whole chain again for drawn counts; ways other than "
+                      .. "convolution take their time" },
+    realisations = { kind = "number", default = 200, least = 2, most = 1e6, help = "of Monte Carlo or bootstrap" },
+    seed        = { kind = "number", default = 1, least = 0, most = 2147483647, help = "of the realisations" },
   },
 }
 
@@ -32,7 +37,9 @@ end
 local rows, record, shown = {}, {}, {}
 for _, way in ipairs(job.ways) do
   local profiles = lw.deconvolve(lines, { method = way, accept_refold = true }) -- a failed refold is told, not hidden
-  local results  = lw.separate(profiles, { methods = job.methods })
+  local results  = lw.separate(profiles, {
+    methods = job.methods, uncertainty = job.uncertainty, realisations = job.realisations, seed = job.seed,
+  })
   record[way] = results
   for name, method in pairs(results.methods:table()) do
     local first = not shown[name]
@@ -92,5 +99,6 @@ local main = record[job.ways[1]]
 items[#items + 1] = main
 job:write({
   lines = main.lines, methods = main.methods, lattice = main.lattice, agreement = main.agreement, notes = main.notes,
+  budget = main.budget, uncertainty = main:get "uncertainty",
   ways = record,
 }, lw.report(items))

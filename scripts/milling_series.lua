@@ -10,6 +10,10 @@ local job = lw.recipe {
     calibration = { kind = "file", help = "calibration.json of the instrument" },
     noise       = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },
                     help = "scaled: intensities are not counts, their noise is estimated from the scan" },
+    uncertainty = { kind = "text", default = "analytic", choices = { "analytic", "monte_carlo", "bootstrap" },
+                    help = "monte_carlo, bootstrap: the whole chain again for drawn counts, for each scan" },
+    realisations = { kind = "number", default = 200, least = 2, most = 1e6, help = "of Monte Carlo or bootstrap" },
+    seed        = { kind = "number", default = 1, least = 0, most = 2147483647, help = "of the realisations" },
     workers     = { kind = "text", default = "1",
                     help = "processes that share the scans: a number, or auto for one a processor core" },
   },
@@ -27,7 +31,9 @@ end
 local function analyse(path, scan)
   local lines    = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
   local profiles = lw.deconvolve(lines, { method = "convolution" })
-  local results  = lw.separate(profiles)
+  local results  = lw.separate(profiles, {
+    uncertainty = job.uncertainty, realisations = job.realisations, seed = job.seed,
+  })
   return { name = path:match "[^/]+$", lines = lines, profiles = profiles, results = results }
 end
 
@@ -38,7 +44,11 @@ end
 -- Each powder is done once: a run that was stopped goes on where it was. The key names what the analysis
 -- depends on.
 local function key(path)
-  return (table.concat({ read(path).hash, instrument.hash, job.noise, tostring(powder) }, " "):gsub('["\\\n]', " "))
+  local words = { read(path).hash, instrument.hash, job.noise, job.uncertainty, tostring(powder) }
+  if job.uncertainty ~= "analytic" then
+    words[#words + 1] = ("%d %d"):format(job.realisations, job.seed)
+  end
+  return (table.concat(words, " "):gsub('["\\\n]', " "))
 end
 
 local fresh = {} -- what this process analysed itself, by path: its fits are drawn
@@ -47,7 +57,8 @@ local function analyse_once(path)
   local lines, results = analysed.lines, analysed.results
   fresh[path] = analysed
   return { goodness_of_fit = lines.fit.goodness_of_fit, lines = results.lines, methods = results.methods,
-           lattice = results.lattice, agreement = results.agreement, notes = results.notes }
+           lattice = results.lattice, agreement = results.agreement, notes = results.notes,
+           budget = results.budget, uncertainty = results:get "uncertainty" }
 end
 
 -- One powder after the other, or several at a time. One that can't be analysed is told and left out; the others go on.
@@ -65,7 +76,8 @@ for place, path, known, message in job:each(job.scans, key, analyse_once, { work
     rows[#rows + 1] = row
     entries[#entries + 1] = { scan = path, milling_time_h = row.milling_time_h, lines = known.lines,
                               methods = known.methods, lattice = known.lattice,
-                              agreement = known.agreement, notes = known.notes }
+                              agreement = known.agreement, notes = known.notes,
+                              budget = known.budget, uncertainty = known:get "uncertainty" }
     shown[#shown + 1] = fresh[path] or { name = row.scan, results = known }
     print(("%-28s size %-16s strain %s"):format(row.scan, tostring(row.size_volume), tostring(row.strain_rms)))
   else

@@ -13,6 +13,12 @@ local job = lw.recipe {
                     choices = { "convolution", "physical", "stokes", "tikhonov", "richardson_lucy", "maximum_entropy" },
                     help = "how the instrument is taken out" },
     methods     = { kind = "list", default = "all", help = "methods to run" },
+    uncertainty = { kind = "text", default = "analytic", choices = { "analytic", "monte_carlo", "bootstrap" },
+                    help = "monte_carlo: the whole chain again for drawn counts and calibrations; bootstrap: with "
+                      .. "blocks of the residuals, where the shape misses the data" },
+    realisations = { kind = "number", default = 200, least = 2, most = 1e6,
+                     help = "of Monte Carlo or bootstrap: 200 give every u to 5 %, 5000 to 1 %" },
+    seed        = { kind = "number", default = 1, least = 0, most = 2147483647, help = "of the realisations" },
     low         = { kind = "number", default = "", unit = "deg", least = 0, most = 180, help = "first 2theta to use" },
     high        = { kind = "number", default = "", unit = "deg", least = 0, most = 180, help = "last 2theta to use" },
     noise       = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },
@@ -38,7 +44,9 @@ local lines    = lw.fit_lines(scan, powder:reflections(scan), {
   polarised  = instrument.geometry == "capillary" and 0.05 or 0.5,
 })
 local profiles = lw.deconvolve(lines, { method = job.deconvolve })     -- refolded, or it stops here
-local results  = lw.separate(profiles, { methods = job.methods })      -- every method that applies
+local results  = lw.separate(profiles, {                               -- every method that applies
+  methods = job.methods, uncertainty = job.uncertainty, realisations = job.realisations, seed = job.seed,
+})
 print(results)
 
 local items = { title = "Size and strain: " .. powder.title, subtitle = scan.file }

@@ -8,6 +8,7 @@
 #include "bind/figures.h"
 #include "bind/inputs.h"
 #include "bind/outputs.h"
+#include "bind/report_parts.h"
 #include "bind/reports.h"
 #include "bind/roads.h"
 #include "record/gnuplot.h"
@@ -166,9 +167,16 @@ static void add_brief_methods(lua_State *L, lw_report *report, int self, const l
     lw_error err = LW_ERROR_NONE;
     add_summary(L, report, methods);
     lwb_check(L, lw_report_remarks(report, "To mind", lw_node_get(node, "notes"), &err), &err);
+    lwb_report_parts(L, report, node, true);
     const lw_node *plot = lw_node_get(methods, BRIEF_PLOT);
     if (plot != NULL && lwb_push_result_figure(L, plot, plot->name))
         add_figure(L, report, self);
+}
+
+/* Shown by lwb_report_parts. */
+static bool is_parts(const lw_node *node)
+{
+    return strcmp(node->name, "budget") == 0 || strcmp(node->name, "uncertainty") == 0;
 }
 
 /* Lines and methods one by one. */
@@ -181,8 +189,9 @@ static void add_each_method(lua_State *L, lw_report *report, int self, const lw_
     for (const lw_node *method = methods->first; method != NULL; method = method->next)
         if (lw_node_get(method, "not_applied") == NULL)
             add_result(L, report, self, method, true, strcmp(method->name, BRIEF_PLOT) != 0);
+    lwb_report_parts(L, report, node, false);
     for (const lw_node *rest = node->first; rest != NULL; rest = rest->next)
-        if (rest->kind == LW_NODE_GROUP && rest != methods)
+        if (rest->kind == LW_NODE_GROUP && rest != methods && !is_parts(rest))
             add_result(L, report, self, rest, false, true);
 }
 

@@ -132,9 +132,15 @@ static void tell_row(const budget *b, size_t entry, const lw_node *method, const
     double scatter = method != NULL ? scatter_of(method, quantity) : 1;
     double form = method != NULL ? form_variance(method, quantity) : 0;
     double model = method != NULL ? fmax(model_variance(method, quantity) - form, 0) : 0; /* it holds the form */
-    bool parted = b->parted && !reads_counts(name);
+    bool parted = b->parted && !reads_counts(name), averbach = strcmp(name, AVERBACH) == 0;
     if (parted && isnan(b->variance[entry * LW__PARTS]))
         return;
+    if (parted && averbach) { /* its ranges go by whole steps of L: where one jumps, slopes tell nothing */
+        double sum = 0;
+        for (int p = 0; p < LW__PARTS; p++)
+            sum += b->variance[entry * LW__PARTS + (size_t)p];
+        parted = sum <= c->node->quantity.u * c->node->quantity.u;
+    }
     lw_node *group;
     row r = begin_row(b, c->path, c->node->quantity, c->node->definition, &group, err);
     double rest = fmax(r.whole - form - model, 0), enlarged = rest * (1 - 1 / (scatter * scatter));
@@ -146,7 +152,7 @@ static void tell_row(const budget *b, size_t entry, const lw_node *method, const
         add_part(&r, "scatter", enlarged, err);
     if (form > 0)
         add_part(&r, "form", form, err);
-    if (parted && strcmp(name, AVERBACH) == 0) /* its range of the slope, the Voigts' own shape: by difference */
+    if (parted && averbach) /* its range of the slope, the Voigts' own shape: by difference */
         model = fmax(r.whole - r.sum, 0);
     if (model > 0)
         add_part(&r, "model", model, err);
@@ -286,8 +292,9 @@ lw_status lw_budget(lw_engine *engine, const lw_profiles *profiles, lw_node *res
         lw_add_text(group, "definition",
                     "Parts of each quantity's standard uncertainty, in its unit and as a share of its variance. counting, "
                     "background (what not knowing it adds), misfit (by how much it widened both), calibration and wavelength "
-                    "come through the fit; scatter: the lines scatter about the method's model; form: how size and strain "
-                    "add; model: distance to other readings of the same breadths, or ranges chosen; constant: Scherrer's K of an unknown shape. A column length is free of K.",
+                    "come through the fit of the lines; propagated: all of these together; scatter: the lines scatter about "
+                    "the method's model; form: how size and strain add; model: distance to other readings of the same "
+                    "breadths, or ranges chosen; constant: Scherrer's K of an unknown shape. A column length is free of K.",
                     err);
         if (!b.parted)
             lw_add_text(group, "remark",

@@ -13,7 +13,7 @@
  *       slopes of the quantity to the fitted parameters and aberrations, by central differences through deconvolution
  *       and method (JCGM 100:2008, 5.1.3 note 2 and 5.2.2). For deconvolution by convolution.
  *   propagated  all of these together, by difference, where they can't be told apart: other deconvolutions, and methods
- *       that read the counts anew (whole pattern, variance)
+ *       that read the counts anew (whole pattern, variance), and Warren-Averbach where its ranges jump
  *   scattering  of the atoms, across broad lines (positions only)
  *   scatter     enlargement because lines scatter about the method's model
  *   form        choice of the form that size and strain add by, or of the strain's form

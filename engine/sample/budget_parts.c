@@ -220,6 +220,10 @@ static lw_status look(moved *m, const lw__collection *collection, double *value,
                       &each);
     if (each.status == LW_OK) {
         profiles->values_only = true;
+        /* the stated u are those of the methods' weights as they are, so these don't move with the breadths */
+        if (profiles->n_covariance == m->profiles->n_covariance)
+            memcpy(profiles->covariance, m->profiles->covariance,
+                   profiles->n_covariance * profiles->n_covariance * sizeof *profiles->covariance);
         lw_run_methods(m->engine, profiles, m->methods, m->n_methods, tree, &each);
     }
     for (size_t q = 0; q < collection->n; q++) {
