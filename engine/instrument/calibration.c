@@ -340,6 +340,29 @@ static lw_status calibrate_positions(lw_engine *engine, const lw_lines *lines, c
     return LW_OK;
 }
 
+/* Where the lines' places show the standard's transparency, the profile has it too: once more with the attenuation that the
+ * shift gives, as a value with its u, and the positions again, whose transparency is then in the profile. */
+static lw_status deepen(lw_engine *engine, const lw_lines *lines, const lw_standard *standard, const lw_calibrate_options *options,
+                        lw_calibration *calibration, lw_refined *refined, lw_calibration_lines *rows, lw_arena *scratch,
+                        lw_error *err)
+{
+    lw_quantity attenuation;
+    if (rows->given || !lw__optical_transparency(options, calibration, &attenuation))
+        return LW_OK;
+    lw_refined plain = *refined, deep = {0};
+    lw_error why = LW_ERROR_NONE;
+    lw_status status = lw__calibrate_optical(engine, lines, standard, options, &attenuation, calibration, &deep, &why);
+    if (status != LW_OK && status != LW_NO_CONVERGENCE) {
+        *err = why;
+        return status;
+    }
+    if (status != LW_OK || deep.chi2 > plain.chi2 + 10.83) /* the shape speaks against it (p = 0.001) */
+        return lw__calibrate_optical(engine, lines, standard, options, NULL, calibration, refined, err);
+    deep.attenuation_from_positions = true;
+    *refined = deep;
+    return calibrate_positions(engine, lines, standard, calibration, refined, rows, scratch, err);
+}
+
 lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
                        const lw_calibrate_options *options, lw_calibration **out, lw_error *err)
 {
@@ -369,11 +392,13 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
                                   : lw__take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
     lw_refined refined = {0};
     if (status == LW_OK && options->profile == 1) {
-        status = lw__calibrate_optical(engine, lines, standard, options, calibration, &refined, err);
+        status = lw__calibrate_optical(engine, lines, standard, options, NULL, calibration, &refined, err);
         rows.refined = &refined;
     }
     if (status == LW_OK)
         status = calibrate_positions(engine, lines, standard, calibration, &refined, &rows, &scratch, err);
+    if (status == LW_OK && calibration->has_optical)
+        status = deepen(engine, lines, standard, options, calibration, &refined, &rows, &scratch, err);
     if (status == LW_OK) {
         calibration->valid_low_deg = rows.place[0].value;
         calibration->valid_high_deg = rows.place[rows.n - 1].value;

@@ -110,9 +110,10 @@ lw_status lw__optical_profile(lw_engine *engine, lw_calibration *calibration, do
     return LW_OK;
 }
 
-lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
-                             const lw_calibrate_options *options, double radius_mm, lw_arena *arena, lw_refined *refined,
-                             lw_error *err)
+/* attenuation: refined as well, with what is known of it, 1/mm, from the geometry refined before; NULL: not. */
+static lw_status refine_with(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                             const lw_calibrate_options *options, double radius_mm, const lw_quantity *attenuation,
+                             const lw_geometry *before, lw_arena *arena, lw_refined *refined, lw_error *err)
 {
     lw_geometry start;
     bool slit_known;
@@ -129,18 +130,31 @@ lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_
         if (!slit_known)
             how.name[how.n++] = "slit_width";
     }
+    if (attenuation != NULL && how.n < LW_REFINED_MOST) {
+        start = *before;
+        how.known[how.n] = start.attenuation = attenuation->value;
+        how.u_known[how.n] = attenuation->u;
+        how.name[how.n++] = "attenuation";
+    }
     return lw_geometry_refine(engine, lines, &start, &how, arena, refined, err);
 }
 
+lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                             const lw_calibrate_options *options, double radius_mm, lw_arena *arena, lw_refined *refined,
+                             lw_error *err)
+{
+    return refine_with(engine, lines, standard, options, radius_mm, NULL, NULL, arena, refined, err);
+}
+
 lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
-                                const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
-                                lw_error *err)
+                                const lw_calibrate_options *options, const lw_quantity *attenuation,
+                                lw_calibration *calibration, lw_refined *refined, lw_error *err)
 {
     if (strcmp(calibration->geometry, "reflection") != 0)
         return lw_fail(err, LW_BAD_ARGUMENT, "use profile = \"empirical\"",
                        "calibrate: the optical profile is that of a flat specimen in reflection, not of a capillary");
-    lw_status status = lw__optical_refine(engine, lines, standard, options, calibration->aberrations.radius_mm,
-                                          &calibration->arena, refined, err);
+    lw_status status = refine_with(engine, lines, standard, options, calibration->aberrations.radius_mm, attenuation,
+                                   &calibration->optical, &calibration->arena, refined, err);
     if (status != LW_OK)
         return status;
     calibration->has_optical = true;
@@ -152,6 +166,25 @@ lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const 
             calibration->refined_covariance[i][j] = refined->covariance[i][j];
     }
     return lw__optical_profile(engine, calibration, refined->position[0], refined->position[refined->n_lines - 1], err);
+}
+
+bool lw__optical_transparency(const lw_calibrate_options *options, const lw_calibration *calibration, lw_quantity *attenuation)
+{
+    const lw_aberrations *set = &calibration->aberrations;
+    if (!isnan(options->attenuation_per_mm) || options->refine.n >= LW_REFINED_MOST)
+        return false;
+    for (size_t i = 0; i < options->refine.n; i++)
+        if (strcmp(options->refine.item[i], "attenuation") == 0)
+            return false;
+    for (size_t i = 0; i < set->n; i++) {
+        double u = sqrt(set->covariance[i][i]);
+        if (strcmp(set->kind[i]->name, "transparency") != 0 || !(set->value[i] < -3 * u))
+            continue;
+        *attenuation = lw_quantity_of(-180 / M_PI / (2 * set->radius_mm * set->value[i]), 0, "mm^-1");
+        attenuation->u = attenuation->value * u / -set->value[i];
+        return true;
+    }
+    return false;
 }
 
 static const char *unit_of(const char *name)
@@ -178,6 +211,12 @@ void lw__optical_write(const lw_calibration *calibration, const lw_refined *refi
                         lw_quantity_of(*lw_geometry_field(&g, lw_geometry_names[i]), u, unit_of(lw_geometry_names[i])), NULL,
                         err);
     }
+    if (refined != NULL && refined->attenuation_from_positions)
+        lw_add_text(group, "attenuation_from",
+                    "the shift of the standard's lines, -sin(2theta)/(2 mu R) beside zero shift and displacement (Keating & Warren "
+                    "1952), and their shape", err);
+    lw_add_text(group, "held", "quantities that are not listed under `refined` are as given or usual; no uncertainty here has "
+                               "a share of theirs", err);
     lw_add_quantity(group, "thickness", lw_quantity_of(g.thickness, 0, "mm"), NULL, err);
     lw_node *list = lw_add_list(group, "refined", err);
     for (size_t i = 0; i < calibration->n_refined; i++)
@@ -226,6 +265,23 @@ lw_status lw__optical_read(lw_engine *engine, const lw_node *optical, const char
     return lw__optical_profile(engine, calibration, calibration->valid_low_deg, calibration->valid_high_deg, err);
 }
 
+/* A quantity that is no longer the refined one, and so has no u any more. */
+static void drop_refined(lw_calibration *c, const char *name)
+{
+    size_t n = 0;
+    for (size_t i = 0; i < c->n_refined; i++) {
+        if (strcmp(c->refined_name[i], name) == 0)
+            continue;
+        c->refined_name[n] = c->refined_name[i];
+        size_t m = 0;
+        for (size_t j = 0; j < c->n_refined; j++)
+            if (strcmp(c->refined_name[j], name) != 0)
+                c->refined_covariance[n][m++] = c->refined_covariance[i][j];
+        n++;
+    }
+    c->n_refined = n;
+}
+
 lw_status lw_calibration_for_specimen(lw_engine *engine, const lw_calibration *calibration, double attenuation_per_mm,
                                       double thickness_mm, lw_calibration **out, lw_error *err)
 {
@@ -241,6 +297,7 @@ lw_status lw_calibration_for_specimen(lw_engine *engine, const lw_calibration *c
     lw_arena_begin(&made->arena, engine);
     made->optical.attenuation = attenuation_per_mm;
     made->optical.thickness = thickness_mm;
+    drop_refined(made, "attenuation"); /* that was the standard's */
     lw_aberrations *set = &made->aberrations;
     for (size_t i = 0; i < set->n; i++) {
         if (strcmp(set->kind[i]->name, "transparency") != 0)

@@ -16,10 +16,15 @@ lw_status lw__optical_refine(lw_engine *engine, const lw_lines *lines, const lw_
 
 /* Geometry from the options and, where they are silent, from the scan's header ("divergence slit 0.75 deg; receiving
  * slit 0.15 mm; Soller slits 0.040 and 0.040 rad") or usual values; refined against the scan; the profile of the
- * calibration becomes its table. `optical` of the record is filled. */
+ * calibration becomes its table. `optical` of the record is filled. attenuation: what is known of the specimen's, which is
+ * then refined as well; NULL: it is as the options say. */
 lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
-                                const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
-                                lw_error *err);
+                                const lw_calibrate_options *options, const lw_quantity *attenuation,
+                                lw_calibration *calibration, lw_refined *refined, lw_error *err);
+
+/* Attenuation of the standard from the transparency among the calibration's aberrations, whose mean shift is
+ * -sin(2theta)/(2 mu R): true if the options leave it open and the shift is there (3 u). */
+bool lw__optical_transparency(const lw_calibrate_options *options, const lw_calibration *calibration, lw_quantity *attenuation);
 
 /* The quantities that were refined, borrowed. */
 lw_refined_set lw__refined_set(const lw_calibration *calibration);

@@ -115,6 +115,34 @@ describe("the optical profile", function()
     helper.remove(folder)
   end)
 
+  it("knows each figure of the profile and how sure it is", function()
+    local read = dofile(helper.root .. "/tests/truth/json.lua")
+    for _, name in ipairs { "lab6_before_service", "lab6_after_service" } do
+      -- one-wavelength profiles by ray tracing, their own u 0.2 % and less
+      local truth = read(helper.read(helper.root .. "/tests/data/raytraced/" .. name .. ".truth.json"))
+      local record, exact, seen = calibrate(name, { profile = "optical" }).record, {}, 0
+      for _, row in ipairs(truth.instrument_profile.rows) do exact[row.two_theta] = row end
+      assert.is_true(record.profile.optical.chi2_per_degree_of_freedom < 1.05, name)
+      -- nobody told the attenuation: the lines' places and shape do
+      assert.is_true(math.abs(record.profile.optical.attenuation:pull(55)) < 3, name)
+      for _, row in ipairs(record.instrument_profile) do
+        local is = exact[row.two_theta]
+        if row.two_theta >= 25 and row.two_theta <= 145 then
+          local where, third = name .. " " .. row.two_theta, math.abs(is.third_central_moment)
+          assert.is_near(is.fwhm, row.fwhm.value, 0.006 * is.fwhm, where)
+          assert.is_near(is.breadth, row.breadth.value, 0.005 * is.breadth, where)
+          assert.is_near(is.shift_centroid, row.shift.value, 0.0004, where)
+          -- at 100 and 105 deg it passes through 0, and a share of it says little
+          assert.is_near(is.third_central_moment, row.third_moment.value, math.max(0.02 * third, 1.5e-8), where)
+          local u = math.sqrt(row.third_moment.u ^ 2 + is.third_central_moment_u ^ 2)
+          assert.is_true(math.abs(row.third_moment.value - is.third_central_moment) < 3.5 * u, where)
+          seen = seen + 1
+        end
+      end
+      assert.are.equal(25, seen)
+    end
+  end)
+
   it("takes another specimen: silicon by the calibration from lanthanum hexaboride", function()
     local optical = calibrate("lab6_after_service", { profile = "optical" })
     local silicon = optical:for_specimen { attenuation = 7.5 } -- as traced: tests/data/raytraced/si.truth.json

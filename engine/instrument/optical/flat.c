@@ -10,19 +10,32 @@
 #include <math.h>
 #include <stddef.h>
 
-/* Mean of exp(i size u^2) over u = 0..1: sqrt(pi/size)/2 exp(i pi/4) (1 - exp(i size) w((1 + i) sqrt(size/2))), the
- * Fresnel integral by the Faddeeva function (Abramowitz & Stegun 7.3.22). */
+/* Mean of exp(i size u^2) over u = 0..1, a Fresnel integral (Abramowitz & Stegun 7.3): its power series
+ * sum (i size)^n/(n! (2n + 1)) where that is short, the asymptotic series of its tail where that is exact to 1e-7, and
+ * between them sqrt(pi/size)/2 exp(i pi/4) (1 - exp(i size) w((1 + i) sqrt(size/2))) with the Faddeeva function w (7.3.22). */
 static void fresnel(double size, double *re, double *im)
 {
-    if (size < 1e-3) {
-        *re = 1 - size * size / 10;
-        *im = size / 3 - size * size * size / 42;
+    if (size < 6) {
+        double term = 1, sum[4] = {1, 0, 0, 0}; /* n mod 4: +re, +im, -re, -im */
+        for (int n = 1; term > 1e-16; n++) {
+            term *= size / n;
+            sum[n % 4] += term / (2 * n + 1);
+        }
+        *re = sum[0] - sum[2];
+        *im = sum[1] - sum[3];
+        return;
+    }
+    double c = cos(size), d = sin(size);
+    if (size > 20) {
+        double x = 1 / (2 * size), x2 = x * x, whole = 0.5 * sqrt(0.5 * M_PI / size);
+        double even = x * (1 - x2 * (3 - 105 * x2)), odd = x2 * (1 - x2 * (15 - 945 * x2));
+        *re = whole + even * d - odd * c;
+        *im = whole - even * c - odd * d;
         return;
     }
     double x = sqrt(0.5 * size), a, b;
     lw_faddeeva(x, x, &a, &b);
-    double c = cos(size), d = sin(size), real = 1 - (c * a - d * b), imaginary = -(c * b + d * a);
-    double scale = 0.5 * sqrt(0.5 * M_PI / size);
+    double real = 1 - (c * a - d * b), imaginary = -(c * b + d * a), scale = 0.5 * sqrt(0.5 * M_PI / size);
     *re = scale * (real - imaginary);
     *im = scale * (real + imaginary);
 }

@@ -80,13 +80,30 @@ static lw_status set_optics(problem *q, const double *p, bool slopes, lw_error *
     return status;
 }
 
+/* What is known apart from the profile: its chi-square, added to the normal equations. */
+static double add_known(const problem *q, const double *p, bool want_normal, lw_normal *normal)
+{
+    double sum = 0;
+    for (size_t j = 0; j < q->options->n; j++) {
+        double u = q->options->u_known[j], residual = q->options->known[j] - p[j];
+        if (!(u > 0))
+            continue;
+        sum += residual * residual / (u * u);
+        if (want_normal) {
+            normal->g[j] += residual / (u * u);
+            normal->h[j * normal->n + j] += 1 / (u * u);
+        }
+    }
+    return sum;
+}
+
 static lw_status evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err)
 {
     problem *q = user;
     const lw_scan *scan = q->lines->scan;
     size_t n = q->options->n, size = normal->n, all = want_normal ? n : 0;
     lw_status status = set_optics(q, p, want_normal, err);
-    normal->chi2 = 0;
+    normal->chi2 = add_known(q, p, want_normal, normal);
     for (size_t k = 0; k < q->n_lines && status == LW_OK; k++) {
         const window *w = &q->window[k];
         for (size_t i = 0; i < 1 + 2 * all && status == LW_OK; i++)
@@ -207,6 +224,7 @@ static lw_status refine(problem *q, lw_arena *arena, lw_refined *out, lw_error *
                           "the optical profile did not converge in %zu iterations: %s", outcome.iterations, outcome.reason);
     lw_normal normal = {.n = size, .h = h, .g = g};
     status = evaluate(q, p, true, &normal, err);
+    normal.chi2 -= add_known(q, p, false, &normal);
     size_t weakest = 0;
     if (status == LW_OK)
         status = lw_invert_normal(q->engine, h, size, at_bound, c, &weakest, err);

@@ -16,6 +16,9 @@ double *lw_geometry_field(lw_geometry *geometry, const char *name); /* NULL if u
 typedef struct lw_refine_options {
     size_t n;
     const char *name[LW_REFINED_MOST];
+    /* what is known of a quantity apart from the profile, as a value with its u; u = 0: nothing. It counts as one more
+     * observation, not in chi2 */
+    double known[LW_REFINED_MOST], u_known[LW_REFINED_MOST];
     double domain_size_nm; /* mean column length of the standard: a Lorentzian of lambda/(D cos theta); 0 = none */
     bool summed;           /* counts are summed over each step: a box of the step's width */
 } lw_refine_options;
@@ -30,6 +33,7 @@ typedef struct lw_refined {
     size_t n_lines;
     size_t *line;           /* [n_lines], which of the fitted lines */
     double *position, *position_covariance; /* deg, [n_lines], [n_lines^2]; in the arena of the call */
+    bool attenuation_from_positions; /* for the caller's use: a value known from the lines' places went in */
     double *cross;          /* [n_lines][n]: covariance of the positions with the refined quantities */
 } lw_refined;
 
