@@ -1,6 +1,6 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
 """Runs the benchmark programs beside their baselines and prints a table of ratios with goals.
-usage: bench.py BUILD ROUNDS [ONLY]     (called by run.sh; ONLY: names of parts, p1,command,p5,p2,p3,p4,p6,kernel)
+usage: bench.py BUILD ROUNDS [ONLY]     (called by run.sh; ONLY: names of parts, p1,command,p5,p2,p3,workers,p4,p6,kernel)
 
 A ratio is the median, over interleaved rounds, of baseline over engine; its range follows. Times inside a process are
 its processor time, so that a machine busy with other things doesn't favour the shorter run; commands are timed from
@@ -10,6 +10,7 @@ time.
 P1  all lines of a scan at once; baselines: normal equations in NumPy (own-ana) and SciPy trf, both analytic
 P2  quotient of transforms with error propagation; baseline NumPy
 P3  12 windows a scan; baseline SciPy lm, analytic; scatter of the answers over the Cramer-Rao bound
+workers  a series by one process and by two; a goal only where two cores stand idle
 P4  whole pattern in Fourier space, value and normal equations; baseline NumPy, analytic, the same model to rounding
 P5  start-up against lua5.4
 P6  reading text against numpy.loadtxt"""
@@ -26,7 +27,7 @@ import time
 
 HERE = os.path.dirname(os.path.abspath(__file__))
 BUILD, ROUNDS = os.path.abspath(sys.argv[1]), int(sys.argv[2])
-PARTS = ("p1", "command", "p5", "p2", "p3", "p4", "p6", "kernel")
+PARTS = ("p1", "command", "p5", "p2", "p3", "workers", "p4", "p6", "kernel")
 ONLY = sys.argv[3].split(",") if len(sys.argv) > 3 else PARTS
 RUNGS = ("avx512", "avx2", "plain")
 rows, growth = [], {}
@@ -206,6 +207,35 @@ def p3(work):
                 worst_line=facts["worst_bias"][i])
 
 
+def idle_cores(seconds=2):
+    """Cores that did nothing meanwhile, of those that there are."""
+    def idle():
+        with open("/proc/stat") as stat:
+            return sum(int(ticks) for ticks in stat.readline().split()[4:6])
+    before = idle()
+    time.sleep(seconds)
+    return (idle() - before) / os.sysconf("SC_CLK_TCK") / seconds
+
+
+def workers(work):
+    scan = os.path.join(HERE, "..", "..", "scripts", "demo", "lab6_before_service.xy")
+    wall, said, idle = {1: [], 2: []}, {1: set(), 2: set()}, []
+    for number in range(ROUNDS):
+        idle.append(idle_cores())
+        for count in (1, 2):
+            output = os.path.join(work, f"workers-{count}")
+            with open(output, "w+") as out:
+                wall[count].append(spawn([os.path.join(BUILD, "linewright"), os.path.join(HERE, "workers.lua"),
+                                          f"scan={scan}", f"workers={count}", f"out={output}-{number}"], out)[0])
+                out.seek(0)
+                said[count].add(out.read())
+    if len(said[1] | said[2]) != 1:
+        sys.exit("workers: two give other results than one")
+    free = statistics.median(idle)
+    goals = (1.8, 1.95) if free >= 1.9 else (None, None)
+    row(f"P3 two workers, {free:.1f} cores were idle, wall s", wall[1], wall[2], *goals, unit=1, idle_cores=idle)
+
+
 def p4(work):
     place = os.path.join(work, "p4")
     os.makedirs(place)
@@ -264,8 +294,8 @@ try:
     print(f"{'problem':47} {'baseline':>9} {'engine':>9} {'ratio':>9} {'range':>17} {'goal (wanted)':14}")
     if "p1" in ONLY or "command" in ONLY:
         subprocess.run(python("p1.py", "make", work), check=True)
-    for part, measure in (("p1", p1), ("command", whole_command), ("p5", start_up), ("p2", p2), ("p3", p3), ("p4", p4),
-                          ("p6", p6)):
+    for part, measure in (("p1", p1), ("command", whole_command), ("p5", start_up), ("p2", p2), ("p3", p3),
+                          ("workers", workers), ("p4", p4), ("p6", p6)):
         if part in ONLY:
             measure(work)
     kernel = instructions() if "kernel" in ONLY else {}
