@@ -14,9 +14,13 @@ static inline void read_as_scan(const char *bytes, size_t size)
 {
     lw_engine engine;
     lw_engine_begin(&engine);
+    /* with "counts" also under a radiation that the bytes may contradict */
+    lw_radiation radiation;
+    FUZZ_PROMISE(lw_radiation_plain(0.15406, &radiation, NULL) == LW_OK);
     for (int noise = 0; noise < 4; noise++) {
         lw_scan_options options = lw_scan_defaults();
         options.noise = noise;
+        options.radiation = noise == 1 ? &radiation : NULL;
         lw_error err = LW_ERROR_NONE;
         lw_scan *scan = NULL;
         lw_status status = lw_scan_read_bytes(&engine, "input", bytes, size, &options, &scan, &err);
