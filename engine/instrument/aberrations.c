@@ -48,6 +48,7 @@ static const lw_aberration aberration_displacement = {
     .unit = "mm",
     .definition = "specimen surface outside (+) or inside (-) the focusing circle; lines move by -2 s cos(theta)/R",
     .source = "Wilson (1963) Mathematical Theory of X-ray Powder Diffractometry",
+    .of_specimen = true,
     .slope = displacement};
 static const lw_aberration aberration_flat_specimen = {
     .name = "flat_specimen",
@@ -62,6 +63,7 @@ static const lw_aberration aberration_transparency = {
     .definition = "coefficient of sin(2theta): penetration into the specimen (negative), and what of the axial and "
                   "flat-specimen shifts has the same course",
     .source = "Keating & Warren (1952) Rev. Sci. Instrum. 23, 519: -sin(2theta)/(2 mu R) for a thick specimen",
+    .of_specimen = true,
     .slope = transparency};
 static const lw_aberration aberration_wavelength = {
     .name = "wavelength",

@@ -14,6 +14,7 @@ typedef struct lw_aberration {
     const char *unit;       /* of its parameter */
     const char *definition; /* one sentence with the sign */
     const char *source;
+    bool of_specimen;       /* each specimen has its own; else it is the instrument's, shared by all scans */
     /* shift of 2theta in degrees for a parameter of 1, at a true 2theta; radius_mm of the goniometer */
     double (*slope)(double two_theta_deg, double radius_mm);
 } lw_aberration;

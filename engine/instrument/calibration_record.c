@@ -180,6 +180,24 @@ static void write_fit(const lw_calibration_lines *rows, lw_node *root, lw_error 
     lw_add_number(group, "position_rms_deg", rows->rms, err);
 }
 
+/* What the standard's own domains add to its lines, and what became of that. */
+static void write_own_breadth(const lw_set *set, const lw_set_scan *scan, lw_node *row, lw_error *err)
+{
+    double size = scan->standard->domain_size_nm;
+    if (!(size > 0)) {
+        lw_add_text(row, "own_breadth",
+                    "the certificate's domain size is not stated: what the domains broaden counts as the instrument's", err);
+        return;
+    }
+    const bool taken = set->optical && set->options->standard_size;
+    const double middle = 60; /* Lorentzian FWHM 2 lambda/(pi D cos(theta)) there */
+    double fwhm = 2 / M_PI * lw_radiation_wavelength(&scan->lines->radiation) / (size * cos(middle * M_PI / 360)) * 180 / M_PI;
+    lw_add_number(row, "domain_size_nm", size, err);
+    lw_add_text(row, "own_breadth",
+                lw_arena_print(row->arena, err, "domains of %g nm broaden its lines by a Lorentzian of %.4f deg at %g deg: %s", size,
+                               fwhm, middle, taken ? "taken into account" : "counted as the instrument's"), err);
+}
+
 /* Each scan of a set, how well they agree, and the whole covariance. */
 static void write_set(const lw_set *set, lw_node *root, lw_error *err)
 {
@@ -190,8 +208,7 @@ static void write_set(const lw_set *set, lw_node *root, lw_error *err)
         lw_add_text(row, "file", scan->lines->scan->file, err);
         lw_add_text(row, "sha256", lw_scan_hash(scan->lines->scan), err);
         write_standard(scan->standard, row, err);
-        if (scan->standard->domain_size_nm > 0)
-            lw_add_number(row, "domain_size_nm", scan->standard->domain_size_nm, err);
+        write_own_breadth(set, scan, row, err);
         lw_add_text(row, "used_for", scan->joined ? "profile and positions" : "positions", err);
         if (!scan->joined)
             lw_add_text(row, "why_not_profile", scan->why, err);

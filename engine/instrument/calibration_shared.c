@@ -13,11 +13,6 @@
 /* Beyond this Birge ratio scans do not belong together (common practice). */
 static const double far_beyond_chance = 4;
 
-static bool own_kind(const lw_aberration *kind)
-{
-    return strcmp(kind->name, "displacement") == 0 || strcmp(kind->name, "transparency") == 0;
-}
-
 /* Weighted least squares of lines [from, to) on the columns: slopes and estimator [to - from][n_columns], values. As for
  * one scan each line is weighted by its own u; what lines have in common enters through the estimator. */
 static lw_status fit_columns(lw_engine *engine, const lw_set *set, const lw_set_column *column, size_t k, size_t from, size_t to,
@@ -68,7 +63,7 @@ static lw_status start_columns(lw_set *set, lw_error *err)
     for (size_t i = 0; i < named.n && status == LW_OK; i++) {
         bool flat = strcmp(named.kind[i]->name, "flat_specimen") == 0;
         bool deep = strcmp(named.kind[i]->name, "transparency") == 0;
-        if (!own_kind(named.kind[i])) {
+        if (!named.kind[i]->of_specimen) {
             if (given || !flat || (wide && !set->optical)) /* the optical profile has the flat specimen in it */
                 set->column[set->n_columns++] = (lw_set_column){named.kind[i], LW_SET_ALL};
             continue;
