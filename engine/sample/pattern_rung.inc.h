@@ -220,18 +220,26 @@ static void multiply(size_t n_columns, const double *weighted, const double *col
             const double *left = weighted + row * LW_PATTERN_BLOCK, *right = column + b * LW_PATTERN_BLOCK;
             vec sum[ACROSS][LW_PATTERN_TILE];
             double *to = total + tile_at(row / LW_PATTERN_TILE, 0, b);
-            memcpy(sum, to, sizeof sum);
+            /* unrolled whole, or the sums would not stay in registers */
+#pragma GCC unroll 16
+            for (int c = 0; c < ACROSS * LW_PATTERN_TILE; c++)
+                sum[c / LW_PATTERN_TILE][c % LW_PATTERN_TILE] = load(to + c * LW_LANES, LW_LANES);
             for (size_t i = 0; i < LW_PATTERN_BLOCK; i += LW_LANES) {
                 vec x[LW_PATTERN_TILE];
+#pragma GCC unroll 4
                 for (int a = 0; a < LW_PATTERN_TILE; a++)
                     x[a] = load(left + a * LW_PATTERN_BLOCK + i, LW_LANES);
+#pragma GCC unroll 4
                 for (int c = 0; c < ACROSS; c++) {
                     vec y = load(right + c * LW_PATTERN_BLOCK + i, LW_LANES);
+#pragma GCC unroll 4
                     for (int a = 0; a < LW_PATTERN_TILE; a++)
                         sum[c][a] += x[a] * y;
                 }
             }
-            memcpy(to, sum, sizeof sum);
+#pragma GCC unroll 16
+            for (int c = 0; c < ACROSS * LW_PATTERN_TILE; c++)
+                store(to + c * LW_LANES, LW_LANES, sum[c / LW_PATTERN_TILE][c % LW_PATTERN_TILE]);
         }
 }
 

@@ -82,6 +82,28 @@ describe("the recipe", function()
     assert.are.equal(5, #r.covariance.rows)
     assert.is_true(math.abs(r.covariance.rows[2][2] ^ 0.5 / r.size_area.u - 1) < 1e-9)
     assert.is_true(helper.exists(folder .. "/whole_pattern/figures/whole_pattern_strain.svg"))
+    assert.are.equal("lognormal", r.size_form)
+  end)
+
+  it("whole_pattern takes a histogram of sizes and strain at knots", function()
+    local code, _, err = recipe("whole_pattern", "size=histogram", "strain=knots")
+    assert.are.same({ 0, "" }, { code, err })
+    local r = complete("whole_pattern").methods.whole_pattern
+    assert.are.same({ "histogram", "knots" }, { r.size_form, r.strain_form })
+    local before, knots = math.huge, r.forms[1].knots
+    assert.is_true(#knots > 3 and r.forms[1].smoothing_of_sizes > 0 and r.forms[1].smoothing_of_strain > 0)
+    for _, knot in ipairs(knots) do
+      assert.is_true(knot.value > 0 and knot.value <= before)
+      before = knot.value
+    end
+    local volume, last = 0, nil
+    for _, row in ipairs(r.diameter_distribution) do
+      assert.is_true(row.value >= 0 and row.u > 0)
+      volume = volume + (last and 0.5 * (row.value + last.value) * (row.diameter - last.diameter) or 0)
+      last = row
+    end
+    assert.is_true(math.abs(volume - 1) < 0.02, volume) -- the ends' outer halves apart
+    assert.is_true(helper.exists(folder .. "/whole_pattern/figures/whole_pattern_sizes.svg"))
   end)
 
   it("compare_methods lays every method beside the others", function()
