@@ -11,9 +11,10 @@ static lw_status choose_reflections(lw_fit_state *fit, const lw_reflection *all,
 {
     const lw_scan *scan = fit->scan;
     double low = scan->two_theta_deg[0], high = scan->two_theta_deg[scan->n - 1];
-    fit->reflection = lw_arena_take(&fit->scratch, n_all, sizeof *fit->reflection, err);
-    fit->start = lw_arena_take(&fit->scratch, n_all, sizeof *fit->start, err);
-    fit->remark = lw_arena_take(&fit->scratch, n_all, sizeof *fit->remark, err);
+    size_t room = n_all + LW_BEYOND_MOST;
+    fit->reflection = lw_arena_take(&fit->scratch, room, sizeof *fit->reflection, err);
+    fit->start = lw_arena_take(&fit->scratch, room, sizeof *fit->start, err);
+    fit->remark = lw_arena_take(&fit->scratch, room, sizeof *fit->remark, err);
     if (!fit->reflection || !fit->start || !fit->remark)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < n_all; i++) {
@@ -43,7 +44,7 @@ static lw_status choose_reflections(lw_fit_state *fit, const lw_reflection *all,
 
 lw_status lw__fit_take_state(lw_fit_state *fit, lw_error *err)
 {
-    size_t n = fit->n;
+    size_t n = fit->n + LW_BEYOND_MOST;
     fit->position = lw_arena_take(&fit->scratch, n, sizeof *fit->position, err);
     fit->area = lw_arena_take(&fit->scratch, n, sizeof *fit->area, err);
     fit->local = lw_arena_take(&fit->scratch, n, sizeof *fit->local, err);

@@ -116,7 +116,7 @@ static lw_status take_system(lw_fit_state *fit, size_t first, size_t most, term_
     if (!normal.h || !normal.g || !s->u || !s->z || !s->scale || !s->at)
         return LW_OUT_OF_MEMORY;
     lw_model_windows(&fit->model, fit->p, fit->options->window);
-    status = lw_model_evaluate(&fit->model, fit->p, true, &normal, err);
+    status = lw__fit_evaluate(fit, fit->p, true, &normal, err);
     if (status != LW_OK)
         return status;
     fit->chi2 = normal.chi2;

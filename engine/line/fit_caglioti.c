@@ -24,7 +24,7 @@ static bool find_rows(const lw_fit_state *fit, size_t row[3])
 bool lw__fit_enter_form(lw_fit_state *fit, lw_width_form *form, lw_error *err)
 {
     size_t *row = form->row;
-    *form = (lw_width_form){.model = &fit->model};
+    *form = (lw_width_form){.fit = fit};
     if (fit->steep_upwards || !find_rows(fit, row) || fit->p[row[1]] > 0)
         return false;
     form->p = lw_arena_take(&fit->scratch, fit->n_parameters, sizeof *form->p, err);
@@ -72,7 +72,7 @@ lw_status lw__fit_evaluate_form(void *user, const double *p, bool want_normal, l
     const size_t *row = form->row;
     memcpy(form->p, p, normal->n * sizeof *p);
     plain(form, p, form->p);
-    lw_status status = lw_model_evaluate(form->model, form->p, want_normal, normal, err);
+    lw_status status = lw__fit_evaluate(form->fit, form->p, want_normal, normal, err);
     if (status != LW_OK || !want_normal || !isfinite(normal->chi2))
         return status;
     double u = p[row[0]], t = p[row[1]];

@@ -161,7 +161,7 @@ double lw_fit_overlap(const lw_fit_state *fit, size_t line)
     double variance, lorentz, share = 0, sum = 0, x[PLACES], own[PLACES], others[PLACES] = {0};
     lw_model_widths(model, fit->p, line, &variance, &lorentz);
     double width = lw_voigt_fwhm(sqrt(fmax(variance, 1e-12)), lorentz), reach = 15 * width + 1;
-    for (size_t k = 0; k < fit->n; k++) {
+    for (size_t k = 0; k < fit->n + fit->n_beyond; k++) {
         double away = fit->position[k] - fit->position[line], value[PLACES], v, l;
         if (fabs(away) > reach)
             continue;
@@ -205,6 +205,16 @@ static double overlap_begins(const lw_fit_state *fit)
     return 0;
 }
 
+/* A line's own part of the width that the smooth function gives it. */
+static void own_widths(lw_fit_state *fit, size_t k)
+{
+    const lw_model *model = &fit->model;
+    double variance, lorentz, nominal = model->line[k].nominal_deg;
+    lw_model_widths(model, fit->p, k, &variance, &lorentz);
+    fit->local[k][0] = fmax(variance - lw_width_gauss_variance(model->instrument, nominal, NULL), 0);
+    fit->local[k][1] = fmax(lorentz - lw_width_lorentz(model->instrument, nominal, NULL), 0);
+}
+
 /* From smooth widths to each line's own, where the data carry them. */
 static lw_status free_widths(lw_fit_state *fit, lw_error *err)
 {
@@ -216,6 +226,11 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
     lw_status status = lw_fit_survey(fit, u_area, err);
     if (status != LW_OK)
         return status;
+    status = lw__fit_tie_beyond(fit, err);
+    if (status != LW_OK)
+        return status;
+    for (size_t k = fit->n; k < fit->n + fit->n_beyond; k++)
+        own_widths(fit, k);
     bool automatic = fit->options->widths == LW_WIDTHS_AUTO;
     for (size_t k = 0; k < fit->n; k++) {
         double significance = fit->area[k] / u_area[k], overlap = lw_fit_overlap(fit, k);
@@ -224,11 +239,9 @@ static lw_status free_widths(lw_fit_state *fit, lw_error *err)
             fit->hold_position[k] = true;
         double variance, lorentz;
         lw_model_widths(model, fit->p, k, &variance, &lorentz);
-        if (shape->is_voigt) {
-            double nominal = model->line[k].nominal_deg;
-            fit->local[k][0] = fmax(variance - lw_width_gauss_variance(model->instrument, nominal, NULL), 0);
-            fit->local[k][1] = fmax(lorentz - lw_width_lorentz(model->instrument, nominal, NULL), 0);
-        } else {
+        if (shape->is_voigt)
+            own_widths(fit, k);
+        else {
             /* the smooth function may miss a line by far where the Voigt does; then what was seen of it is a better start */
             double fwhm = lw_voigt_fwhm(sqrt(variance), lorentz), seen = fit->start[k].fwhm_deg;
             if (fit->start[k].width_seen && overlap < 0.2) {
@@ -363,6 +376,8 @@ lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
     if (status == LW_OK)
         status = stage_on_the_way(fit, err);
     lw_engine_progress(fit->engine, "line fit", 0.5);
+    if (status == LW_OK)
+        status = lw__fit_add_beyond(fit, err);
     bool more = true;
     for (int round = 0; round < 3 && more && status == LW_OK; round++) {
         status = lw__fit_choose_background(fit, &more, err);
@@ -370,6 +385,8 @@ lw_status lw__fit_run(lw_fit_state *fit, lw_error *err)
             status = stage_on_the_way(fit, err);
     }
     lw_engine_progress(fit->engine, "line fit", 0.7);
+    if (status == LW_OK && smooth)
+        status = lw__fit_tie_beyond(fit, err);
     if (status == LW_OK && smooth)
         status = lw__fit_stage(fit, LW_FINAL_ROUNDS, true, err);
     if (status == LW_OK && !smooth)

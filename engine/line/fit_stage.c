@@ -68,13 +68,15 @@ lw_status lw__fit_pack(lw_fit_state *fit, lw_error *err)
         fit->fixed[i] = false;
     }
     bool positions_fixed = lw__fit_is_fixed(fit->options, "positions");
-    for (size_t k = 0; k < fit->n; k++) {
+    for (size_t k = 0; k < fit->n + fit->n_beyond; k++) {
         size_t row = lw_model_row(model, k);
         fit->p[row] = fit->position[k];
         fit->fixed[row] = fit->hold_position[k] || positions_fixed;
         fit->lower[row] = fit->start[k].expected_deg - 1.5 * fit->options->search_deg;
         fit->upper[row] = fit->start[k].expected_deg + 1.5 * fit->options->search_deg;
         fit->p[row + 1] = fit->area[k];
+        if (k >= fit->n)
+            fit->lower[row + 1] = 0;
         for (size_t j = 0; j < model->n_local; j++) {
             fit->p[row + 2 + j] = fit->local[k][j];
             fit->fixed[row + 2 + j] = fit->hold_local[k] || model->shape->held[j];
@@ -101,7 +103,7 @@ void lw__fit_unpack(lw_fit_state *fit)
 {
     lw_model *model = &fit->model;
     size_t border = lw_model_border(model);
-    for (size_t k = 0; k < fit->n; k++) {
+    for (size_t k = 0; k < fit->n + fit->n_beyond; k++) {
         size_t row = lw_model_row(model, k);
         fit->position[k] = fit->p[row];
         fit->area[k] = fit->p[row + 1];
@@ -125,7 +127,7 @@ lw_status lw__fit_stage(lw_fit_state *fit, int rounds, bool final, lw_error *err
         if (round > 0 && !changed && !from_model)
             break; /* the same least squares once more */
         lw_problem problem = {.n = fit->n_parameters, .lower = fit->lower, .upper = fit->upper, .fixed = fit->fixed,
-                              .evaluate = lw_model_evaluate, .user = &fit->model};
+                              .evaluate = lw__fit_evaluate, .user = fit};
         lw_width_form form;
         lw_arena_mark mark = lw_arena_mark_now(&fit->scratch);
         bool in_form = lw__fit_enter_form(fit, &form, err);

@@ -12,6 +12,12 @@
 
 enum { LW_WIDTHS_AUTO, LW_WIDTHS_FREE, LW_WIDTHS_SMOOTH }; /* lw_fit_options.widths */
 
+#define LW_BEYOND_MOST 8
+#define LW_BEYOND_DEG 30 /* how far beyond the ends they are looked for */
+typedef struct lw_area_tie {
+    double mean, weight; /* the area expected, and 1/u^2 of that */
+} lw_area_tie;
+
 typedef struct lw_fit_state {
     lw_engine *engine;
     lw_arena scratch;              /* freed at the end of the fit */
@@ -20,6 +26,8 @@ typedef struct lw_fit_state {
     lw_lines *lines;               /* the result under construction */
     lw_model model;
     size_t n;                      /* lines */
+    size_t n_beyond;               /* lines beyond the scan's ends, behind them in all arrays and in the model */
+    lw_area_tie tie[LW_BEYOND_MOST];
     lw_reflection *reflection;
     lw_line_start *start;
     const char **remark;           /* [n] */
@@ -68,15 +76,24 @@ lw_status lw__fit_pack(lw_fit_state *fit, lw_error *err);
 /* And back. */
 void lw__fit_unpack(lw_fit_state *fit);
 
+/* Takes lines beyond the scan whose tails would be seen in it, where the reflections came with a material. */
+lw_status lw__fit_add_beyond(lw_fit_state *fit, lw_error *err);
+
+/* Their places and expected areas from the lines inside as they are now. */
+lw_status lw__fit_tie_beyond(lw_fit_state *fit, lw_error *err);
+
+/* The callback of lw_problem, user is the lw_fit_state: the model, and the ties of the areas beyond. */
+lw_status lw__fit_evaluate(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
+
 /* The Gaussian width function U, V, W as U, t, c while it is fitted; see fit_caglioti.c. */
 typedef struct lw_width_form {
-    lw_model *model;
+    lw_fit_state *fit;
     size_t row[3];
     double *p;
 } lw_width_form;
 
 /* Brings the packed parameters and their bounds into the form, and back; false where it does not apply (err set if
- * memory was refused). In between, lw__fit_evaluate_form with the form as its user stands for lw_model_evaluate. */
+ * memory was refused). In between, lw__fit_evaluate_form with the form as its user stands for lw__fit_evaluate. */
 bool lw__fit_enter_form(lw_fit_state *fit, lw_width_form *form, lw_error *err);
 void lw__fit_leave_form(lw_fit_state *fit, const lw_width_form *form);
 lw_status lw__fit_evaluate_form(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);

@@ -16,7 +16,7 @@ static lw_status normal_matrix(lw_fit_state *fit, const double *p, size_t n, lw_
     if (normal->h == NULL || normal->g == NULL)
         return LW_OUT_OF_MEMORY;
     fit->model.whole_normal = true;
-    lw_status status = lw_model_evaluate(&fit->model, p, true, normal, err);
+    lw_status status = lw__fit_evaluate(fit, p, true, normal, err);
     fit->model.whole_normal = false;
     return status;
 }
@@ -37,7 +37,7 @@ static const char *name_of(lw_fit_state *fit, lw_arena *arena, size_t row, lw_er
         const lw_reflection *r = &fit->reflection[row / m];
         char hkl[24];
         size_t field = row % m;
-        return lw_arena_print(arena, err, "%s %s", lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl),
+        return lw_arena_print(arena, err, row / m < fit->n ? "%s %s" : "%s %s, beyond the scan", lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl),
                               field == 0 ? "position" : field == 1 ? "area" : model->shape->local[field - 2]);
     }
     row -= border;
@@ -399,6 +399,21 @@ static const char *remark_of(lw_fit_state *fit, const lw_line *line, size_t k)
     return fit->remark[k];
 }
 
+static void take_beyond(const lw_fit_state *fit)
+{
+    fit->lines->n_beyond = fit->n_beyond;
+    for (size_t b = 0; b < fit->n_beyond; b++) {
+        size_t k = fit->n + b;
+        fit->lines->beyond[b] = (lw_line_beyond){.reflection = fit->reflection[k],
+                                                 .two_theta_deg = fit->position[k],
+                                                 .area = fit->area[k],
+                                                 .own_variance_deg2 = fit->local[k][0],
+                                                 .own_lorentz_deg = fit->local[k][1],
+                                                 .area_expected = fit->tie[b].mean,
+                                                 .area_weight = fit->tie[b].weight};
+    }
+}
+
 lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
 {
     lw_lines *lines = fit->lines;
@@ -418,7 +433,8 @@ lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
     lines->parameter = lw_arena_copy(&lines->arena, fit->p, n, sizeof(double), err);
     lines->parameter_name = lw_arena_take(&lines->arena, n, sizeof(char *), err);
     lines->line = lw_arena_take(&lines->arena, fit->n, sizeof(lw_line), err);
-    if (!lines->parameter || !lines->parameter_name || !lines->line)
+    lines->beyond = lw_arena_take(&lines->arena, fit->n_beyond, sizeof(lw_line_beyond), err);
+    if (!lines->parameter || !lines->parameter_name || !lines->line || !lines->beyond)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < n; i++)
         if ((lines->parameter_name[i] = name_of(fit, &lines->arena, i, err)) == NULL)
@@ -470,6 +486,7 @@ lw_status lw_fit_result(lw_fit_state *fit, lw_error *err)
         }
         line->residual_misfit = count > 0 ? sum / (double)count : NAN;
     }
+    take_beyond(fit);
     if (fit->extra != NULL) {
         size_t row = lw_model_border(model) + model->n_background - 1;
         lines->background_scan_scale = fit->p[row];

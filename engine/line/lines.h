@@ -34,6 +34,15 @@ typedef struct lw_line {
                                    at_gauss is the SQUARE of the own Gaussian FWHM (deg^2) */
 } lw_line;
 
+/* A line beyond the ends of the scan whose tail was fitted with it: place and width from what the lines inside show, area
+ * tied to theirs. Not a result. */
+typedef struct lw_line_beyond {
+    lw_reflection reflection;
+    double two_theta_deg, area;
+    double own_variance_deg2, own_lorentz_deg;
+    double area_expected, area_weight; /* to what the area was tied, and 1/u^2 of that */
+} lw_line_beyond;
+
 typedef struct lw_lines {
     lw_arena arena;
     const lw_scan *scan;             /* borrowed: must outlive the lines */
@@ -46,6 +55,8 @@ typedef struct lw_lines {
     const char *shape;               /* "voigt" ... */
     size_t n;
     lw_line *line;                   /* ascending in 2theta */
+    size_t n_beyond;                 /* lines beyond the scan; their parameters follow those of the lines */
+    lw_line_beyond *beyond;
     size_t n_parameters;
     const char **parameter_name;     /* "111 position", "background 0", "U" ... */
     double *parameter;

@@ -2,6 +2,9 @@
 /* Fitted lines as a result tree. */
 #include "line/lines.h"
 
+#include <stdio.h>
+#include <string.h>
+
 lw_node *lw_lines_tree(const lw_lines *lines, lw_arena *arena, lw_error *err)
 {
     lw_node *root = lw_tree_new(arena, err), *list = lw_add_list(root, "lines", err);
@@ -41,6 +44,15 @@ lw_node *lw_lines_tree(const lw_lines *lines, lw_arena *arena, lw_error *err)
     lw_add_number(fit, "misfit_factor", lines->misfit_factor, err);
     lw_add_text(fit, "misfit", lines->misfit, err);
     lw_add_text(fit, "left_out", lines->left_out, err);
+    if (lines->n_beyond > 0) {
+        char text[16 * 30] = "";
+        for (size_t b = 0; b < lines->n_beyond && strlen(text) + 30 < sizeof text; b++) {
+            const lw_reflection *r = &lines->beyond[b].reflection;
+            char hkl[24];
+            snprintf(text + strlen(text), 30, "%s%s", b > 0 ? ", " : "", lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl));
+        }
+        lw_add_text(fit, "beyond", text, err);
+    }
     lw_add_number(fit, "iterations", (double)lines->iterations, err);
     lw_add_text(fit, "stopped", lines->stopped, err);
     if (lines->background_scan_scale != 0)

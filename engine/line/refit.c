@@ -24,9 +24,10 @@ static lw_status take_over(lw_fit_state *fit, const lw_lines *from, lw_error *er
 {
     size_t n = from->n;
     fit->n = n;
-    fit->reflection = lw_arena_take(&fit->scratch, n, sizeof *fit->reflection, err);
-    fit->start = lw_arena_take(&fit->scratch, n, sizeof *fit->start, err);
-    fit->remark = lw_arena_take(&fit->scratch, n, sizeof *fit->remark, err);
+    fit->n_beyond = from->n_beyond;
+    fit->reflection = lw_arena_take(&fit->scratch, n + LW_BEYOND_MOST, sizeof *fit->reflection, err);
+    fit->start = lw_arena_take(&fit->scratch, n + LW_BEYOND_MOST, sizeof *fit->start, err);
+    fit->remark = lw_arena_take(&fit->scratch, n + LW_BEYOND_MOST, sizeof *fit->remark, err);
     lw_status status = lw__fit_take_state(fit, err);
     if (!fit->reflection || !fit->start || !fit->remark || status != LW_OK)
         return LW_OUT_OF_MEMORY;
@@ -43,7 +44,20 @@ static lw_status take_over(lw_fit_state *fit, const lw_lines *from, lw_error *er
         fit->hold_local[k] = line->shared_width;
         fit->model.line[k].nominal_deg = line->nominal_deg;
     }
-    fit->model.n_lines = n;
+    for (size_t b = 0; b < from->n_beyond; b++) {
+        const lw_line_beyond *line = &from->beyond[b];
+        size_t k = n + b;
+        fit->reflection[k] = line->reflection;
+        fit->start[k] = (lw_line_start){.expected_deg = line->two_theta_deg};
+        fit->remark[k] = "";
+        fit->position[k] = fit->model.line[k].nominal_deg = line->two_theta_deg;
+        fit->area[k] = line->area;
+        fit->local[k][0] = line->own_variance_deg2;
+        fit->local[k][1] = line->own_lorentz_deg;
+        fit->hold_position[k] = fit->hold_local[k] = true;
+        fit->tie[b] = (lw_area_tie){.mean = line->area_expected, .weight = line->area_weight};
+    }
+    fit->model.n_lines = n + from->n_beyond;
     fit->model.shape = lw_line_shape_list[fit->options->shape];
     memcpy(fit->lines->variance, from->variance, from->scan->n * sizeof(double));
     status = lw_model_points(&fit->model, fit->scan, from->n_background + 2, &fit->scratch, err);

@@ -239,6 +239,61 @@ static void width_function_on_its_bound(void)
     lw_scan_free(scan);
 }
 
+/* Broad lines of a face-centred cubic powder; the scan ends a width before the last one's place. With the material the
+ * tail beyond is known for what it is and the last line inside comes out right; without it line and background are off by dozens of u. */
+static void lines_beyond_the_end(void)
+{
+    lw_error err = LW_ERROR_NONE;
+    lw_material material = {.name = "made", .space_group = 225, .cell = {0.36, 0.36, 0.36, 90, 90, 90, 0, 0, 0}};
+    CHECK(lw_material_settle(&material, &err) == LW_OK);
+    lw_arena arena;
+    lw_arena_begin(&arena, &engine);
+    lw_reflection *all = NULL;
+    size_t n_all = 0;
+    CHECK(lw_reflections(&material, 0.15405929, 30, 150, &arena, &all, &n_all, &err) == LW_OK);
+    CHECK(n_all == 8); /* 111 200 220 311 222, and 400 331 420 beyond */
+    made m = {.n = 4201, .n_lines = n_all, .low = 30, .step = 0.02, .background = {200, -60, 20}};
+    made_radiation(&m, false);
+    for (size_t k = 0; k < n_all; k++) {
+        double theta = all[k].two_theta_deg * M_PI / 360, c = cos(2 * theta), s = sin(theta);
+        m.position[k] = all[k].two_theta_deg;
+        /* multiplicity, polarisation and Lorentz factor, and what atoms lose with 1/d; 3 % off it here and there */
+        m.area[k] = 4000 * (double)all[k].multiplicity * 0.5 * (1 + c * c) / (s * s * cos(theta)) * exp(-0.1 / all[k].d_nm) *
+                    (k % 2 ? 1.03 : 0.97);
+        m.local[k][0] = 0.3 + 1.2 * tan(theta) * tan(theta);
+        m.local[k][1] = 0.8 / cos(theta);
+    }
+    double beyond = m.position[5], last = m.position[4];
+    m.n = (size_t)((beyond - 1.1 - m.low) / m.step);
+    CHECK(last < m.low + m.step * (double)m.n - 1);
+    lw_scan *scan = made_scan(&engine, &m, 31, &err);
+    lw_fit_options options = made_options(&m);
+    options.misfit = false; /* u from counting alone */
+    double off[2], areas[2];
+    for (int with = 0; with < 2; with++) {
+        lw_lines *lines = NULL;
+        CHECK(lw_fit_lines(&engine, scan, all, n_all, with ? &material : NULL, &options, &lines, &err) == LW_OK);
+        if (lines == NULL)
+            continue;
+        CHECK(lines->n == 5);
+        CHECK(lines->n_beyond == (with ? n_all - 5 : 0));
+        const lw_line *line = &lines->line[4];
+        double breadth = lw_voigt_breadth(sqrt(m.local[4][0]), m.local[4][1]);
+        off[with] = (line->breadth.value - breadth) / line->breadth.u;
+        areas[with] = (line->area.value - m.area[4]) / line->area.u;
+        if (with) {
+            CHECK(lines->beyond[0].reflection.h == all[5].h);
+            CHECK_RELATIVE(lines->beyond[0].area, m.area[5], 0.1); /* three times the scatter of 3 % */
+            CHECK_NEAR(lines->beyond[0].two_theta_deg, beyond, 0.1);
+        }
+        lw_lines_free(lines);
+    }
+    CHECK(fabs(off[1]) < 4 && fabs(areas[1]) < 4);
+    CHECK(fabs(off[0]) > 6 && fabs(areas[0]) > 6);
+    lw_scan_free(scan);
+    lw_arena_end(&arena);
+}
+
 /* A reflection without intensity and one on top of another: reported, and the others are as good as without them. */
 static void lines_that_are_not_there(void)
 {
@@ -380,7 +435,7 @@ static void refused_memory(void)
             break;
         }
     }
-    CHECK(refused > 10);
+    CHECK(refused > 5); /* most of what a fit takes is reserved in one piece */
     engine = plain;
 }
 
@@ -393,6 +448,7 @@ int main(void)
     bounds_do_not_stick();
     exact_data();
     width_function_on_its_bound();
+    lines_beyond_the_end();
     lines_that_are_not_there();
     refusals();
     refused_memory();

