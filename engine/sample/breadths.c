@@ -6,6 +6,7 @@
 #include "sample/shared.h"
 
 #include <math.h>
+#include <string.h>
 
 #define PI 3.14159265358979323846
 #define SQRT_PI 1.77245385090551602730
@@ -80,6 +81,19 @@ lw_status lw_breadths_gather(const lw_profiles *profiles, lw_arena *arena, lw_br
         breadths->beta[n++] = beta;
     }
     breadths->n = n;
+    breadths->by_voigts = profiles->method != NULL && strcmp(profiles->method, "convolution") == 0;
+    const lw_lines *lines = profiles->lines;
+    if (breadths->by_voigts && lines->scan != NULL && lines->background != NULL) {
+        breadths->background = lw_arena_take(arena, n, sizeof(double), err);
+        if (breadths->background == NULL)
+            return LW_OUT_OF_MEMORY;
+        for (size_t i = 0; i < n; i++) {
+            size_t at = 0;
+            while (at + 1 < lines->scan->n && lines->scan->two_theta_deg[at] < breadths->profile[i]->line->two_theta.value)
+                at++;
+            breadths->background[i] = lines->background[at];
+        }
+    }
     breadths->cubic = profiles->lines->material != NULL && profiles->lines->material->system == LW_CUBIC;
     bool any = false;
     for (size_t i = 0; i < n; i++)

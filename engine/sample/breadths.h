@@ -17,6 +17,8 @@ typedef struct lw_breadths {
     const double *scale;        /* [n] factor on s in the share of strain, by direction; NULL = 1 */
     double *s_covariance;       /* [n*n] nm^-2, or NULL if positions have no uncertainty */
     size_t n_left_out;          /* profiles that carry a limit only */
+    bool by_voigts;             /* the lines were fitted as Voigts, and these are the Voigts' breadths */
+    double *background;         /* [n] under each line, intensity, or NULL if not known */
     bool values_only;           /* of the profiles */
     bool cubic;                 /* of the material: directions are told apart by |h|, |k|, |l| in any order */
 } lw_breadths;

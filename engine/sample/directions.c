@@ -47,7 +47,7 @@ static lw_status orders_of(const lw_breadths *all, size_t first, lw_arena *arena
 {
     int mine[3], other[3];
     size_t *at = lw_arena_take(arena, all->n, sizeof *at, err), n = 0;
-    *out = (lw_breadths){.cubic = all->cubic, .values_only = all->values_only};
+    *out = (lw_breadths){.cubic = all->cubic, .values_only = all->values_only, .by_voigts = all->by_voigts};
     if (at == NULL)
         return LW_OUT_OF_MEMORY;
     lw_direction_of(all->profile[first], all->cubic, mine);
@@ -63,6 +63,8 @@ static lw_status orders_of(const lw_breadths *all, size_t first, lw_arena *arena
     out->s = lw_arena_take(arena, n, sizeof(double), err);
     out->beta = lw_arena_take(arena, n, sizeof(double), err);
     out->covariance = lw_arena_take(arena, n * n, sizeof(double), err);
+    if (all->background != NULL)
+        out->background = lw_arena_take(arena, n, sizeof(double), err);
     if (all->s_covariance != NULL)
         out->s_covariance = lw_arena_take(arena, n * n, sizeof(double), err);
     if (err->status != LW_OK)
@@ -72,6 +74,8 @@ static lw_status orders_of(const lw_breadths *all, size_t first, lw_arena *arena
         out->profile[i] = all->profile[at[i]];
         out->s[i] = all->s[at[i]];
         out->beta[i] = all->beta[at[i]];
+        if (all->background != NULL)
+            out->background[i] = all->background[at[i]];
         for (size_t j = 0; j < n; j++) {
             out->covariance[i * n + j] = all->covariance[at[i] * all->n + at[j]];
             if (all->s_covariance != NULL)

@@ -2,6 +2,8 @@
 #include "sample/reading.h"
 
 #include "physics/size_distribution.h"
+#include "physics/strain.h"
+#include "sample/voigt_image.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -13,38 +15,87 @@
 #define LENGTH_OF_UNLIMITED 10.0 /* nm */
 
 static const double sigmas[] = {0.15, 0.3, 0.45};
-static const char *const strains[] = {"constant", "falling", "both"};
-enum { CONSTANT, FALLING, BOTH };
+static const char *const strains[] = {"constant", "fading slowly", "fading", "falling", "both"};
+enum { CONSTANT, SLOWLY, FADING, FALLING, BOTH };
+static const double reach_of_size[] = {0, 1.0 / 4, 1.0 / 12}; /* xi of SLOWLY and FADING over the volume-weighted size */
 
-/* Parameters: 1/size_volume, then b (CONSTANT), a (FALLING), or b and a. */
+/* Parameters: 1/size_volume, then b (CONSTANT), eps0^2 (SLOWLY, FADING), a (FALLING), or b and a. */
 typedef struct model_of {
     const lw_breadths *breadths;
     double sigma;
     int strain;
 } model_of;
 
-/* Breadth at s, slopes to 1/size_volume, b and a. A negative 1/size_volume continues the breadth evenly about 0. */
-static double breadth(double inverse_size, double b, double a, double s, double sigma, double longest, double slopes[3])
+/* <Delta^2(L)> and its slopes to the parameters. */
+static double displacement(const model_of *m, const double *p, double length, double slopes[3])
 {
-    double size = fabs(inverse_size), by = -2 * PI * PI * s * s, sum = 0, by_parameter[3] = {0};
-    /* (3/4) D0 exp(7 sigma^2/2) = 1/size */
-    lw_spheres spheres = {size > 0 ? 4 / (3 * size * exp(3.5 * sigma * sigma)) : 0, sigma};
+    slopes[0] = slopes[2] = 0;
+    if (m->strain == BOTH || m->strain == CONSTANT || (m->strain != FALLING && !(p[0] > 0))) { /* unlimited: no xi */
+        slopes[1] = length * length;
+        slopes[2] = m->strain == BOTH ? length : 0;
+        return p[1] * slopes[1] + (m->strain == BOTH ? p[2] * length : 0);
+    }
+    if (m->strain == FALLING) {
+        slopes[1] = length;
+        return p[1] * length;
+    }
+    double own[2] = {p[1], log(reach_of_size[m->strain] / p[0])}, by[2];
+    double value = lw_strain_correlated.displacement(own, length, by);
+    slopes[0] = -by[1] / p[0];
+    slopes[1] = by[0];
+    return value;
+}
+
+static lw_spheres spheres_of(const model_of *m, double inverse_size)
+{
+    /* (3/4) D0 exp(7 sigma^2/2) = size_volume */
+    return (lw_spheres){4 / (3 * inverse_size * exp(3.5 * m->sigma * m->sigma)), m->sigma};
+}
+
+/* Factors by which a fit by Voigts has the breadths of these crystals wrong. */
+static void take_image(const model_of *m, const double *p, double *factor)
+{
+    const lw_breadths *k = m->breadths;
+    double coefficient[STEPS + 1], unused[3];
+    bool limited = p[0] > 0;
+    lw_spheres spheres = spheres_of(m, limited ? p[0] : 1);
+    for (size_t i = 0; i < k->n; i++) {
+        const lw_line *line = k->profile[i]->line;
+        double s = k->s[i] * (k->scale != NULL ? k->scale[i] : 1), longest = REACH / fmax(k->beta[i], 1e-6);
+        for (int j = 0; j <= STEPS; j++) {
+            double length = longest * j / STEPS;
+            coefficient[j] = (limited && length > 0 ? lw_spheres_coefficient(&spheres, length, NULL) : 1) *
+                             exp(-2 * PI * PI * s * s * displacement(m, p, length, unused));
+        }
+        double under = k->background != NULL && line->height.value > 0 ? k->background[i] / line->height.value : 0.05;
+        factor[i] = lw_voigt_image(STEPS + 1, coefficient, longest / STEPS, under);
+    }
+}
+
+/* Breadth at s and its slopes. A negative 1/size_volume continues the breadth evenly about 0. */
+static double breadth(const model_of *m, const double *p, double s, double longest, double slopes[3])
+{
+    double size = fabs(p[0]), by = -2 * PI * PI * s * s, sum = 0, by_parameter[3] = {0};
+    double even[3] = {size, p[1], m->strain == BOTH ? p[2] : 0};
+    lw_spheres spheres = spheres_of(m, size > 0 ? size : 1);
     for (int i = 0; i <= STEPS; i++) {
-        double length = longest * i / STEPS, weight = i == 0 || i == STEPS ? 1 : i % 2 == 1 ? 4 : 2, of_size[2] = {0};
+        double length = longest * i / STEPS, weight = i == 0 || i == STEPS ? 1 : i % 2 == 1 ? 4 : 2;
+        double of_size[2] = {0}, of_strain[3];
         double A = size > 0 && length > 0 ? lw_spheres_coefficient(&spheres, length, of_size) : 1;
-        double D = exp(by * length * (b * length + a));
+        double D = exp(by * displacement(m, even, length, of_strain));
         sum += weight * A * D;
-        by_parameter[0] -= size > 0 ? weight * of_size[0] * D / size : 0; /* d ln(median) = -d(size)/size */
-        by_parameter[1] += weight * A * D * by * length * length;
-        by_parameter[2] += weight * A * D * by * length;
+        if (size > 0)
+            by_parameter[0] += weight * D * (A * by * of_strain[0] - of_size[0] / size); /* d ln(median) = -d(size)/size */
+        by_parameter[1] += weight * A * D * by * of_strain[1];
+        by_parameter[2] += weight * A * D * by * of_strain[2];
     }
     double step = longest / STEPS / 3, beta = 1 / (2 * step * sum);
     for (int i = 0; i < 3; i++)
         slopes[i] = -2 * beta * beta * step * by_parameter[i];
-    if (inverse_size < 0) {
-        double unused[3], at_0 = breadth(0, b, a, s, sigma, longest, unused);
+    if (p[0] < 0) {
+        double zero[3] = {0, even[1], even[2]}, other[3], at_0 = breadth(m, zero, s, longest, other);
         for (int i = 1; i < 3; i++)
-            slopes[i] = 2 * unused[i] - slopes[i];
+            slopes[i] = 2 * other[i] - slopes[i];
         beta = 2 * at_0 - beta;
     }
     return beta;
@@ -58,12 +109,9 @@ static void model(void *user, const double *p, double *value, double *slopes, do
     (void)x_slope; /* positions are known far better than breadths */
     for (size_t i = 0; i < k->n; i++) {
         double s = k->s[i] * (k->scale != NULL ? k->scale[i] : 1), all[3];
-        double b = m->strain == FALLING ? 0 : p[1], a = m->strain == CONSTANT ? 0 : p[n - 1];
-        value[i] = breadth(p[0], b, a, s, m->sigma, REACH / fmax(k->beta[i], 1e-6), all);
-        slopes[n * i] = all[0];
-        slopes[n * i + 1] = m->strain == FALLING ? all[2] : all[1];
-        if (m->strain == BOTH)
-            slopes[n * i + 2] = all[2];
+        value[i] = breadth(m, p, s, REACH / fmax(k->beta[i], 1e-6), all);
+        for (size_t j = 0; j < n; j++)
+            slopes[n * i + j] = all[j];
     }
 }
 
@@ -81,25 +129,33 @@ static void start(const model_of *m, double *p)
     }
     p[0] = 0.5 * least;
     double rest = fmax(most - p[0], 0.1 * most), b = rest * rest / (2 * PI * s * s), a = rest / (PI * PI * s * s);
-    p[1] = m->strain == CONSTANT ? b : m->strain == FALLING ? a : 0.5 * b;
+    p[1] = m->strain == FALLING ? a : m->strain == BOTH ? 0.5 * b : b;
     if (m->strain == BOTH)
         p[2] = 0.5 * a;
 }
 
 static lw_status read_one(model_of *m, lw_arena *arena, lw_reading *out, lw_generalised_fit *fit, lw_error *err)
 {
-    double p[3] = {0};
+    double p[3] = {0}, *y = lw_arena_copy(arena, m->breadths->beta, m->breadths->n, sizeof(double), err);
+    double *factor = lw_arena_take(arena, m->breadths->n, sizeof *factor, err);
+    if (y == NULL || factor == NULL)
+        return LW_OUT_OF_MEMORY;
     start(m, p);
     lw_generalised problem = {.n = m->breadths->n,
                               .m = m->strain == BOTH ? 3 : 2,
-                              .y = m->breadths->beta,
+                              .y = y,
                               .covariance = m->breadths->covariance,
                               .model = model,
                               .user = m};
     lw_status status = lw_generalised_solve(&problem, arena, p, fit, NULL, err);
+    for (int round = 0; round < 2 && status == LW_OK && m->breadths->by_voigts; round++) {
+        take_image(m, p, factor);
+        for (size_t i = 0; i < m->breadths->n; i++)
+            y[i] = m->breadths->beta[i] / factor[i];
+        status = lw_generalised_solve(&problem, arena, p, fit, NULL, err);
+    }
     if (status != LW_OK)
         return status;
-    double b = m->strain == FALLING ? 0 : p[1], a = m->strain == CONSTANT ? 0 : p[problem.m - 1];
     bool unlimited = !(p[0] > 0);
     *out = (lw_reading){.strain = strains[m->strain],
                         .sigma = m->sigma,
@@ -107,7 +163,8 @@ static lw_status read_one(model_of *m, lw_arena *arena, lw_reading *out, lw_gene
                         .size_volume = unlimited ? INFINITY : 1 / p[0],
                         .size_area = unlimited ? INFINITY : 8 * exp(-m->sigma * m->sigma) / (9 * p[0])};
     double length = unlimited ? LENGTH_OF_UNLIMITED : 0.5 * out->size_volume;
-    out->strain_rms = sqrt(fmax(0, b + a / length));
+    double unused[3];
+    out->strain_rms = sqrt(fmax(0, displacement(m, p, length, unused))) / length;
     return LW_OK;
 }
 

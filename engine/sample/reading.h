@@ -7,11 +7,11 @@
 
 #include "sample/breadths.h"
 
-#define LW_READINGS_MOST 9
+#define LW_READINGS_MOST 15
 
 /* One reading: a spread of diameters and a form of strain. */
 typedef struct lw_reading {
-    const char *strain; /* name of the form: "constant", "falling", "both" */
+    const char *strain; /* name of the form: "constant", "fading" ... */
     double sigma;       /* of the logarithm of the diameters */
     double weight;      /* by evidence, all add up to 1 */
     double chi2;
@@ -25,9 +25,12 @@ typedef struct lw_readings {
 } lw_readings;
 
 /* Reads the breadths 1/(2 int A dL), A(L) = (lognormal spheres) exp(-2 pi^2 s^2 <Delta^2>), with sigma = 0.15, 0.3 and
- * 0.45 and <Delta^2> = b L^2 (strain the same over every length), a L (mean square strain falling as 1/L) or both. Each is
- * fitted with the breadths' covariance and weighted by Akaike's corrected criterion (Hurvich & Tsai 1989 Biometrika 76,
- * 297), chi-square in units of the best one's scatter. Readings that do not settle are left out.
+ * 0.45 and <Delta^2> of five forms: b L^2 (strain the same over every length), strain correlated along the column as
+ * exp(-t/xi) with xi a quarter or a twelfth of size_volume (physics/strain.h, "correlated"), a L (mean square strain
+ * falling as 1/L), and b L^2 + a L (five lines or more). Each is fitted with the breadths' covariance and weighted by Akaike's
+ * corrected criterion (Hurvich & Tsai 1989 Biometrika 76, 297), chi-square in units of the best one's scatter. Readings that
+ * do not settle are left out.
+ * Breadths that come from fitted Voigts are read as what Voigts make of such lines (sample/voigt_image.h).
  * Status: LW_OUT_OF_MEMORY, LW_CANCELLED; LW_OK otherwise, with n = 0 where nothing could be read. */
 lw_status lw_breadths_read(const lw_breadths *breadths, lw_arena *arena, lw_readings *readings, lw_error *err);
 
