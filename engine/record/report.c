@@ -8,12 +8,16 @@
 
 #include <math.h>
 #include <string.h>
+#include <time.h>
+
+#define SILENT_S 30 /* a drawing that failed after this long failed for want of an answer */
 
 struct lw_report {
     lw_engine *engine;
     lw_arena arena; /* title, warning and figures made from trees */
     const char *title, *subtitle;
     const char *warning;
+    bool silent; /* the drawing program did not answer: it isn't asked again, which would take as long each time */
     lw_text body, contents;
     int headings, figures;
 };
@@ -229,6 +233,24 @@ static void inline_svg(lw_text *out, const char *svg, int number, const char *ti
     }
 }
 
+static double now(void)
+{
+    struct timespec t;
+    clock_gettime(CLOCK_MONOTONIC, &t);
+    return (double)t.tv_sec + 1e-9 * (double)t.tv_nsec;
+}
+
+/* Draws, unless the program has kept silent before. */
+static lw_status draw(lw_report *report, const lw_figure *figure, const lw_drawing *drawing, lw_text *svg, lw_error *err)
+{
+    if (report->silent)
+        return lw_fail(err, LW_IO, "see the first figure that is missing", "an earlier figure got no answer");
+    double begun = now();
+    lw_status status = lw_figure_draw(figure, drawing, svg, err);
+    report->silent = status == LW_IO && now() - begun > SILENT_S;
+    return status;
+}
+
 lw_status lw_report_figure(lw_report *report, const lw_figure *figure, lw_error *err)
 {
     lw_drawing drawing = lw_drawing_standard(figure, LW_DRAW_SVG);
@@ -238,7 +260,7 @@ lw_status lw_report_figure(lw_report *report, const lw_figure *figure, lw_error 
     drawing.height -= 34; /* the title's row */
     lw_layout layout = lw_layout_of(figure, drawing.width, drawing.height, false);
     lw_text_begin(&svg, report->engine);
-    lw_status status = lw_figure_draw(figure, &drawing, &svg, &fault);
+    lw_status status = draw(report, figure, &drawing, &svg, &fault);
     report->figures++;
     lw_text_print(&report->body, "<figure id=\"figure-%d\"", report->figures);
     if (status == LW_OK) {
