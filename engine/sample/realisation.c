@@ -4,6 +4,7 @@
 #include <math.h>
 #include <string.h>
 
+#define PHYSICAL_MOST 30 /* lines: as where a deconvolution completes lines by these shapes of its own accord */
 #define REACH_FWHM 3.0 /* residuals this near to a line are the line's */
 
 void lw__square_root(const double *covariance, size_t n, double *factor)
@@ -142,9 +143,49 @@ lw_status lw__draws_begin(const lw_profiles *profiles, bool bootstrap, lw_arena 
         return lw_fail_at(err, LW_NOT_SUPPORTED, lines->scan->file, 0,
                           "read it with noise = \"scaled\", or give its sigma",
                           "intensities that never reach 2 are no counts: nothing can be drawn from them");
+    draws->by_physics = profiles->model != NULL;
     draws->model = profiles->model != NULL ? profiles->model : lines->fitted;
     take_calibration(draws);
     return bootstrap ? take_residuals(draws, arena, err) : LW_OK;
+}
+
+static double chi2_of(const lw_lines *lines, const double *model)
+{
+    double sum = 0;
+    for (size_t i = 0; i < lines->scan->n; i++) {
+        double r = lines->scan->intensity[i] - model[i];
+        sum += r * r / lines->variance[i];
+    }
+    return sum;
+}
+
+lw_status lw__draws_choose_model(lw_engine *engine, lw__draws *draws, lw_arena *arena, lw_error *err)
+{
+    const lw_profiles *profiles = draws->profiles;
+    if (draws->by_physics || profiles->n > PHYSICAL_MOST)
+        return LW_OK;
+    lw_deconvolve_options options = lw_deconvolve_defaults();
+    for (const lw_option *o = lw_deconvolve_option_table; o->key != NULL; o++)
+        for (int i = 0; strcmp(o->key, "method") == 0 && o->choices[i] != NULL; i++)
+            if (strcmp(o->choices[i], "physical") == 0)
+                options.method = i;
+    options.accept_refold = true;
+    lw_profiles *physical = NULL;
+    lw_error each = LW_ERROR_NONE;
+    lw_status status = lw_deconvolve(engine, profiles->lines, profiles->calibration, &options, &physical, &each);
+    if (status == LW_OUT_OF_MEMORY || status == LW_CANCELLED) {
+        *err = each;
+        return status;
+    }
+    if (status == LW_OK && physical->model != NULL &&
+        chi2_of(profiles->lines, physical->model) < chi2_of(profiles->lines, draws->model)) {
+        const double *kept =
+            lw_arena_copy(arena, physical->model, profiles->lines->scan->n, sizeof *physical->model, err);
+        draws->by_physics = kept != NULL;
+        draws->model = kept != NULL ? kept : draws->model;
+    }
+    lw_profiles_free(physical);
+    return err->status;
 }
 
 lw_status lw__realisation_begin(const lw__draws *draws, lw_arena *arena, lw__realisation *one, lw_error *err)

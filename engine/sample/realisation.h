@@ -12,6 +12,7 @@ enum { LW__UNDER_LINES, LW__BETWEEN_LINES, LW__PLACES };
 typedef struct lw__draws {
     const lw_profiles *profiles;
     const double *model; /* [points] what is expected */
+    bool by_physics;     /* it is made of physical shapes, else of the Voigts of the fit */
     bool counting, calibration, wavelength; /* what is drawn */
     uint64_t seed;
     /* bootstrap: residuals over their u, by where they belong */
@@ -38,6 +39,10 @@ typedef struct lw__realisation {
 /* Errors: LW_NOT_SUPPORTED if the profiles do not come from a fit that can be repeated. */
 lw_status lw__draws_begin(const lw_profiles *profiles, bool bootstrap, lw_arena *arena, lw__draws *draws,
                           lw_error *err);
+/* Takes the curve of physical shapes (deconvolution "physical") for what is expected, if it describes the counts better
+ * than the fit's Voigts do: methods that read the counts anew would else be shown a powder of Voigts. Leaves it as it is
+ * for more than 30 lines, and where the shapes can't be fitted. */
+lw_status lw__draws_choose_model(lw_engine *engine, lw__draws *draws, lw_arena *arena, lw_error *err);
 lw_status lw__realisation_begin(const lw__draws *draws, lw_arena *arena, lw__realisation *one, lw_error *err);
 /* The number-th realisation; counts and calibration have streams of their own. */
 void lw__realisation_draw(const lw__draws *draws, uint64_t number, lw__realisation *one);

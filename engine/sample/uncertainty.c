@@ -201,9 +201,15 @@ static void tell_how(const run *r, const lw_separate_options *options, const lw_
     if (draws->counting)
         lw_add_text(sources, NULL,
                     draws->bootstrap                     ? "counting and misfit: blocks of the residuals over their u"
-                    : scan->noise == LW_NOISE_COUNTS     ? "counting: Poisson about the fitted curve"
+                    : scan->noise == LW_NOISE_COUNTS     ? "counting: Poisson"
                     : scan->noise == LW_NOISE_SIGMA      ? "noise: normal with the given sigma"
                                                          : "noise: normal, scaled, next points correlated",
+                    err);
+    if (draws->counting && !draws->bootstrap)
+        lw_add_text(group, "drawn_about",
+                    draws->by_physics ? "the curve of physical shapes (lognormal spheres x strain) fitted to the lines, which "
+                                        "describes the counts better than Voigts do"
+                                      : "the curve of the lines' fit",
                     err);
     if (draws->calibration)
         lw_add_text(sources, NULL, "calibration: widths and aberrations, the same for all lines of a realisation", err);
@@ -212,6 +218,8 @@ static void tell_how(const run *r, const lw_separate_options *options, const lw_
         wavelength |= strcmp(r->one.calibration.aberrations.kind[i]->name, "wavelength") == 0;
     if (draws->wavelength && wavelength)
         lw_add_text(sources, NULL, "wavelength: as the calibration refined it", err);
+    if (draws->profiles->options->standard != NULL)
+        lw_add_text(sources, NULL, "not drawn: the standard whose lines were taken for the instrument's", err);
     if (draws->bootstrap) {
         static const char *const places[] = {"under_lines", "between_lines"};
         lw_node *blocks = lw_add_group(group, "blocks", err);
@@ -298,6 +306,8 @@ lw_status lw_separate_with(lw_engine *engine, const lw_profiles *profiles, const
     if (drawn && status == LW_OK) {
         draws.seed = (uint64_t)options->seed;
         status = choose_sources(&options->sources, &draws, err);
+        if (status == LW_OK && draws.counting && !draws.bootstrap)
+            status = lw__draws_choose_model(engine, &draws, &arena, err);
     }
     bool all = names_all(&options->methods);
     if (status == LW_OK)

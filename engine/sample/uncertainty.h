@@ -19,12 +19,12 @@ extern const lw_option lw_separate_option_table[];
 lw_separate_options lw_separate_defaults(void);
 
 /* lw_separate() and, as the options say, the budget (sample/budget.h) and the group `uncertainty`:
- *   how, source, sources (what was drawn), realisations, seed, relative_accuracy (of every u, 1/sqrt(2 (n - 1))),
+ *   how, source, sources (what was drawn), drawn_about, realisations, seed, relative_accuracy (of every u, 1/sqrt(2 (n - 1))),
  *   failed (realisations that gave nothing) with failed_because, methods_left_out, block_lengths (bootstrap),
  *   quantities: list of { quantity (path in the results), analytic, mean, u, low, high (95 %, probabilistically
  *   symmetric), ratio (u over the analytic one), ratio_of_parts (u over what the budget has for the sources drawn),
  *   values, limits, missing }.
- * Monte Carlo draws counts from the fitted curve (Poisson; normal where sigma was given or intensities are scaled),
+ * Monte Carlo draws counts about the fitted curve, or that of physical shapes where it describes them better (Poisson; normal where sigma was given or intensities are scaled),
  * and the calibration's widths and aberrations from their covariance, once a realisation for all lines. The bootstrap
  * adds blocks of the residuals to the curve instead. Each realisation is fitted again from where the fit ended, with
  * the same options, deconvolved and separated. Methods not named leave out the whole pattern, which takes the longest.

@@ -11,7 +11,7 @@
 #include "instrument/calibration.h"
 #include "line/lines.h"
 #include "profile/profiles.h"
-#include "sample/method.h"
+#include "sample/uncertainty.h"
 #include "scan/scan.h"
 
 #include <stdbool.h>
@@ -151,6 +151,14 @@ static lw_status travel(lw_engine *engine, road *out, lw_error *err)
         status = err->status;
     if (status == LW_OK)
         status = lw_separate(engine, profiles, NULL, 0, results, err);
+    for (int how = LW_UNCERTAINTY_MONTE_CARLO; how <= LW_UNCERTAINTY_BOOTSTRAP && status == LW_OK; how++) {
+        lw_separate_options drawing = lw_separate_defaults();
+        drawing.methods = (lw_option_list){.n = 1, .item = {"single_line_voigt"}};
+        drawing.uncertainty = how;
+        drawing.realisations = 2;
+        lw_node *drawn = lw_tree_new(&arena, err);
+        status = drawn == NULL ? err->status : lw_separate_with(engine, profiles, &drawing, drawn, err);
+    }
     if (status == LW_OK) {
         out->zero_shift = calibration->aberrations.value[0];
         out->lines = (int)profiles->n;
