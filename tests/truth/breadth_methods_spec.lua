@@ -5,7 +5,9 @@ local here = debug.getinfo(1, "S").source:match "^@(.*/)" or "./"
 local roads = dofile(here .. "roads.lua")
 local lw = require "linewright"
 
-local methods = { "williamson_hall", "halder_wagner", "single_line_voigt", "double_voigt", "warren_averbach", "variance" }
+local methods = {
+  "williamson_hall", "halder_wagner", "single_line_voigt", "double_voigt", "warren_averbach", "variance",
+}
 local fields = { "size_volume", "size_area", "strain_rms" }
 
 -- Not in the list: Scherrer, which reads strain as size by definition. Of dislocations the tails fall as 1/s^3 and the
