@@ -136,7 +136,7 @@ void lw_model_background(lw_model *model, size_t terms, bool hyperbola, const do
         for (size_t i = 0; i < padded && k == 1; i++)
             row[i] = 2 * (angle[i] - low) / (high - low) - 1;
         for (size_t i = 0; i < padded && k >= 2; i++)
-            row[i] = 2 * basis[padded + i] * row[i - padded] - (row - 2 * padded)[i];
+            row[i] = 2 * basis[padded + i] * (row - padded)[i] - (row - 2 * padded)[i];
     }
     double *row = basis + terms * padded;
     for (size_t i = 0; i < padded && hyperbola; i++)
