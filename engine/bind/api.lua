@@ -127,7 +127,7 @@
 ---@field method string
 ---@field source string
 ---@field coefficients fun(self: profiles, i: integer): table
----@field figure fun(self: profiles): figure
+---@field figure fun(self: profiles, name?: string): figure
 ---@field table fun(self: profiles): table
 
 ---@class figure
@@ -325,7 +325,9 @@ local methods = {
       p("effects", "flag", "false leaves out what samples would be reported with the old calibration") }, "result"),
   ["profiles:coefficients"] = entry("p:coefficients(i)", "Fourier coefficients of one profile as vectors.",
     { p("i", "integer", "from 1") }, "table: length_nm, cosine, u_cosine, sine, u_sine, truncated_at"),
-  ["profiles:figure"] = entry("p:figure()", "Fourier coefficients against column length.", {}, "figure"),
+  ["profiles:figure"] = entry("p:figure(name)",
+    "Fourier coefficients against column length, or instrument and profile put together against the data.",
+    { p("name", "text", "\"coefficients\" (as without a name) or \"refold\"") }, "figure"),
   ["profiles:table"] = entry("p:table()", "A deep Lua table of the profiles.", {}, "table"),
   ["figure:save"] = entry("f:save(path)", "Draws it with gnuplot; .svg, .png or .pdf says how.",
     { p("path", "text", "job:path(name) in a recipe") }),

@@ -5,6 +5,7 @@
 #include "bind/figures.h"
 #include "bind/roads.h"
 
+#include <math.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -81,26 +82,94 @@ static int coefficients(lua_State *L)
     return 1;
 }
 
-/* Fourier coefficients of the supported lines. */
-static int figure(lua_State *L)
+/* What was taken for granted, of the first line as an example: the words of the methods differ in numbers alone. */
+static const char *told(lw_figure *made, const lw_profiles *self, const char *first, lw_error *err)
 {
-    const lw_profiles *self = self_of(L, "profiles:figure");
-    lw_error err = LW_ERROR_NONE;
+    const char *assumed = self->n > 0 && self->profile[0].assumed != NULL ? self->profile[0].assumed : "nothing more";
+    return lw_arena_print(made->arena, err, "%s Method %s. Assumed, for the first line: %s.", first, self->method, assumed);
+}
+
+/* Fourier coefficients of the supported lines, as far as they stand out of the noise. */
+static lw_figure *draw_coefficients(lua_State *L, const lw_profiles *self, lw_error *err)
+{
     lw_figure *made = lwb_new_figure(L, "coefficients", "Fourier coefficients of the sample's profiles");
-    lw_figure_label(made, LW_AXIS_X, "column length", "nm", &err);
-    lw_figure_label(made, LW_AXIS_Y, "A(L)", "", &err);
+    lw_figure_label(made, LW_AXIS_X, "column length L", "nm", err);
+    lw_figure_label(made, LW_AXIS_Y, "coefficient A", "", err);
+    double *cut = lwb_new_vector(L, self->n);
+    size_t n_cut = 0;
     for (size_t i = 0; i < self->n; i++) {
         const lw_profile *p = &self->profile[i];
         char hkl[32];
-        size_t n = p->truncated_at > 0 && p->truncated_at < p->n_coefficients ? p->truncated_at : p->n_coefficients;
+        bool truncated = p->truncated_at > 0 && p->truncated_at < p->n_coefficients;
+        size_t n = truncated ? p->truncated_at : p->n_coefficients;
         if (p->cosine == NULL || p->length_nm == NULL || n == 0)
             continue;
+        if (truncated)
+            cut[n_cut++] = p->length_nm[n];
         const lw_reflection *r = &p->line->reflection;
         lw_hkl_text(r->h, r->k, r->l, hkl, sizeof hkl);
-        lw_series *series = lw_figure_series(made, LW_SERIES_POINTS, 0, hkl, p->length_nm, p->cosine, n, &err);
-        if (series != NULL && p->u_cosine != NULL)
-            lw_series_errors(made, series, NULL, p->u_cosine, &err);
+        lw_series *series = lw_figure_series(made, LW_SERIES_POINTS, 0, hkl, p->length_nm, p->cosine, n, err);
+        if (series != NULL && p->u_cosine != NULL) {
+            double *twice = lwb_new_vector(L, n);
+            for (size_t k = 0; k < n; k++)
+                twice[k] = 2 * p->u_cosine[k];
+            lw_series_errors(made, series, NULL, twice, err);
+            lua_pop(L, 1);
+        }
     }
+    if (n_cut > 0)
+        lw_figure_series(made, LW_SERIES_TICKS, 0, "truncated", cut, NULL, n_cut, err);
+    lua_pop(L, 1);
+    made->caption = told(made, self,
+                         "Bars: two standard uncertainties. Marks below: where the coefficients of a line are cut, "
+                         "because they sink into the noise.",
+                         err);
+    return made;
+}
+
+/* Instrument and profile put together again, over what was measured of each line. */
+static lw_figure *draw_refold(lua_State *L, const lw_profiles *self, lw_error *err)
+{
+    lw_figure *made = lwb_new_figure(L, "refold", "Instrument and pure profile against the data");
+    lw_figure_label(made, LW_AXIS_X, "2theta", "deg", err);
+    lw_figure_label(made, LW_AXIS_Y, "above background", "", err);
+    lw_figure_label(made, LW_AXIS_LOWER_Y, "residual / u", "", err);
+    size_t n = 0, at = 0;
+    for (size_t i = 0; i < self->n; i++)
+        n += self->profile[i].n_refold + 1;
+    double *x = lwb_new_vector(L, n), *seen = lwb_new_vector(L, n), *curve = lwb_new_vector(L, n),
+           *residual = lwb_new_vector(L, n);
+    for (size_t i = 0; i < self->n; i++) {
+        const lw_profile *p = &self->profile[i];
+        for (size_t k = 0; k <= p->n_refold; k++, at++) {
+            bool gap = k == p->n_refold; /* parts the curves of two lines */
+            x[at] = gap ? (k > 0 ? p->refold_deg[k - 1] : 0) : p->refold_deg[k];
+            seen[at] = gap ? NAN : p->refold_seen[k];
+            curve[at] = gap ? NAN : p->refold_curve[k];
+            residual[at] = gap || !(p->refold_u[k] > 0) ? NAN : (seen[at] - curve[at]) / p->refold_u[k];
+        }
+    }
+    lw_figure_series(made, LW_SERIES_POINTS, 0, "measured, background and neighbours off", x, seen, n, err);
+    lw_figure_series(made, LW_SERIES_LINE, 0, "instrument x profile", x, curve, n, err);
+    lw_figure_series(made, LW_SERIES_LINE, 1, "", x, residual, n, err);
+    lua_pop(L, 4);
+    made->caption = told(made, self, "Each line over its own window, the residual in units of a point's uncertainty.", err);
+    return made;
+}
+
+/* figure("coefficients") or figure("refold"). */
+static int figure(lua_State *L)
+{
+    static const char *const names[] = {"coefficients", "refold", NULL};
+    const lw_profiles *self = self_of(L, "profiles:figure");
+    lw_error err = LW_ERROR_NONE;
+    const char *name = lua_isnoneornil(L, 2) ? names[0] : lwb_text(L, 2, "profiles:figure", "which figure");
+    if (strcmp(name, names[0]) != 0 && strcmp(name, names[1]) != 0)
+        return lwb_unknown_field(L, "profiles' figures", name, names);
+    if (strcmp(name, names[0]) == 0)
+        draw_coefficients(L, self, &err);
+    else
+        draw_refold(L, self, &err);
     lwb_check(L, LW_OK, &err);
     return 1;
 }

@@ -66,13 +66,15 @@ static void add_figure(lua_State *L, lw_report *report, int self)
     lua_pop(L, 3);
 }
 
-/* Calls item:figure(...) and shows what it gives. */
-static void add_figure_of(lua_State *L, lw_report *report, int self, int item)
+/* Calls item:figure(name), item:figure() without a name, and shows what it gives. */
+static void add_figure_of(lua_State *L, lw_report *report, int self, int item, const char *name)
 {
     luaL_getmetafield(L, item, "__methods");
     lua_getfield(L, -1, "figure");
     lua_pushvalue(L, item);
-    lua_call(L, 1, 1);
+    if (name != NULL)
+        lua_pushstring(L, name);
+    lua_call(L, name != NULL ? 2 : 1, 1);
     lua_remove(L, -2);
     add_figure(L, report, self);
 }
@@ -265,7 +267,7 @@ static void add_calibration(lua_State *L, lw_report *report, int self, int item,
         lwb_check(L, lw_report_result(report, copy_parts(scratch, record, "", brief, false, &err), &err), &err);
     }
     if (shown == WHOLE)
-        add_figure_of(L, report, self, item);
+        add_figure_of(L, report, self, item, NULL);
     if (shown != BRIEF) {
         fold(L, report, "The whole record");
         lwb_check(L, lw_report_result(report, copy_parts(scratch, record, "", shown_before, true, &err), &err), &err);
@@ -285,7 +287,9 @@ static void add_lines(lua_State *L, lw_report *report, int self, int item, part 
     if (shown == WHOLE)
         heading(L, report, profiles ? "The sample's own profiles" : "Lines");
     if (shown != DETAILS)
-        add_figure_of(L, report, self, item);
+        add_figure_of(L, report, self, item, NULL);
+    if (profiles && shown == WHOLE)
+        add_figure_of(L, report, self, item, "refold");
     if (shown == DETAILS)
         fold(L, report, caption);
     if (shown != BRIEF) {
@@ -398,7 +402,7 @@ static void add_item(lua_State *L, lw_report *report, int self, int item)
         lua_pushvalue(L, item);
         add_figure(L, report, self);
     } else if (lwb_test(L, item, &lwb_scan_noun) != NULL)
-        add_figure_of(L, report, self, item);
+        add_figure_of(L, report, self, item, NULL);
     else if (lua_type(L, item) == LUA_TTABLE)
         add_table_item(L, report, self, item);
     else if (!add_object(L, report, self, item, WHOLE))

@@ -41,6 +41,11 @@ void lw__set_breadth(const lw_profiles *profiles, lw_profile *profile, double va
  * is not given back: a matter of shape alone never reaches that. */
 void lw__set_refold(lw_profile *profile, double chi2, double freedom, size_t points, double lost, double net);
 
+/* Takes the points of a refold: n of the scan from `first` on; their angles are set. */
+lw_status lw__take_refold(lw_profiles *profiles, lw_profile *profile, size_t first, size_t n, lw_error *err);
+/* Sets one of them. */
+void lw__set_refold_point(lw_profile *profile, size_t i, double seen, double variance, double curve);
+
 /* The pure profile for figures, from the coefficients up to truncated_at, over +-4 breadths. */
 lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth_s,
                                     lw_error *err);

@@ -104,6 +104,25 @@ void lw__set_refold(lw_profile *profile, double chi2, double freedom, size_t poi
     profile->refold_failed = profile->refold_p < 1e-6 && lost > 0.01 * net;
 }
 
+lw_status lw__take_refold(lw_profiles *profiles, lw_profile *profile, size_t first, size_t n, lw_error *err)
+{
+    double **column[] = {&profile->refold_deg, &profile->refold_seen, &profile->refold_u,
+                         &profile->refold_curve};
+    for (size_t c = 0; c < sizeof column / sizeof *column; c++)
+        if ((*column[c] = lw_arena_take(&profiles->arena, n, sizeof(double), err)) == NULL)
+            return LW_OUT_OF_MEMORY;
+    memcpy(profile->refold_deg, profiles->lines->scan->two_theta_deg + first, n * sizeof(double));
+    profile->n_refold = n;
+    return LW_OK;
+}
+
+void lw__set_refold_point(lw_profile *profile, size_t i, double seen, double variance, double curve)
+{
+    profile->refold_seen[i] = seen;
+    profile->refold_u[i] = sqrt(variance);
+    profile->refold_curve[i] = curve;
+}
+
 lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth, lw_error *err)
 {
     size_t n = 161, last = profile->truncated_at;

@@ -346,16 +346,23 @@ double lw__grid_followed(const lw__grid *g, const double *z, const double *zn)
     return sum;
 }
 
-void lw__grid_refold(const lw__job *job, const lw__grid *g, const double *x, double followed)
+lw_status lw__grid_refold(const lw__job *job, const lw__grid *g, const double *x, double followed,
+                          lw_error *err)
 {
+    lw_status status = lw__take_refold(job->profiles, job->profile, job->data.first, g->n, err);
+    if (status != LW_OK)
+        return status;
     double chi2 = 0, lost = 0, net = 0, freedom = fmax(g->expected_chi2 - followed, 1);
     for (size_t i = 0; i < g->n; i++) {
         double r = g->target[i] - lw_dot(g->response + i * g->m, x, g->m), v = 1 / g->weight[i];
         chi2 += r * r / v;
         lost += r * r - v * freedom / (double)g->n;
         net += job->data.curve[i] * job->data.curve[i];
+        double seen = job->data.curve[i] + job->data.residual[i];
+        lw__set_refold_point(job->profile, i, seen, job->data.own_variance[i], seen - r);
     }
     lw__set_refold(job->profile, chi2, freedom, g->n, lost, net);
+    return LW_OK;
 }
 
 double lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x, const double *z,

@@ -56,7 +56,7 @@ lw_status lw__add_standard(const lw__job *job, const lw__grid *grid, const doubl
 double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn);
 
 /* Refold of x: `followed` is the number of degrees of freedom that x took up. */
-void lw__grid_refold(const lw__job *job, const lw__grid *grid, const double *x, double followed);
+lw_status lw__grid_refold(const lw__job *job, const lw__grid *grid, const double *x, double followed, lw_error *err);
 
 /* For an estimate x = Z response' weight target, Z = (normal + R)^-1: variance of the breadth from c[m][m]
  * (covariance of x by counting and background, or posterior), from tails beyond the window, and from what

@@ -29,11 +29,16 @@ double lw__tail_variance(const lw__job *job, double *share)
 }
 
 /* The refold where the fit's shape stands as it is. */
-static void refold_shape(const lw__job *job)
+static lw_status refold_shape(const lw__job *job, lw_error *err)
 {
+    lw_status status = lw__take_refold(job->profiles, job->profile, job->data.first, job->data.n, err);
+    if (status != LW_OK)
+        return status;
     const lw__window *data = &job->data;
     double chi2 = 0, freedom = 0, lost = 0, net = 0;
     for (size_t i = 0; i < data->n; i++) {
+        lw__set_refold_point(job->profile, i, data->curve[i] + data->residual[i], data->own_variance[i],
+                             data->curve[i]);
         if (!(data->own_variance[i] > 0))
             continue;
         double square = data->residual[i] * data->residual[i];
@@ -43,6 +48,7 @@ static void refold_shape(const lw__job *job)
         freedom += 1;
     }
     lw__set_refold(job->profile, chi2, freedom, data->n, lost, net);
+    return LW_OK;
 }
 
 /* What a line's breadth leans on besides its own counts. */
@@ -85,7 +91,7 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, lw__st
     if (status == LW_OK && job->data.n >= 8 && job->line->area_s > 0 && job->shape_breadth > 0)
         status = solve(job, standard != NULL ? &taken : &job->instrument, true, &scratch, answer, err);
     if (status == LW_OK && answer->from_shape)
-        refold_shape(job);
+        status = refold_shape(job, err);
     /* noise whose neighbours go together weighs more in every sum over points, by its long-run variance */
     double together = job->profiles->lines->scan->correlation, factor = (1 + together) / (1 - together);
     answer->variance *= factor;

@@ -126,7 +126,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     if (c == NULL || (status = lw__add_background(job, &g, z, c, scratch, err)) != LW_OK)
         return LW_OUT_OF_MEMORY;
     answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err);
-    lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn));
+    if ((status = lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn), err)) != LW_OK)
+        return status;
     if ((status = lw__add_standard(job, &g, s.x, z, c, answer, scratch, err)) != LW_OK)
         return status;
     job->profile->assumed = lw_arena_print(

@@ -74,14 +74,22 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
             (status = fill(profiles, k, &fit, fit.breadth[k], err)) != LW_OK)
             break;
         double chi2 = 0, lost = 0, net = 0;
-        for (size_t i = 0; i < scan->n; i++) {
-            if (fabs(scan->two_theta_deg[i] - profile->line->two_theta.value) > 2 * profile->line->fwhm.value)
-                continue;
+        size_t first = 0, end = scan->n;
+        while (first < end &&
+               scan->two_theta_deg[first] < profile->line->two_theta.value - 2 * profile->line->fwhm.value)
+            first++;
+        while (end > first &&
+               scan->two_theta_deg[end - 1] > profile->line->two_theta.value + 2 * profile->line->fwhm.value)
+            end--;
+        if ((status = lw__take_refold(profiles, profile, first, end - first, err)) != LW_OK)
+            break;
+        for (size_t i = first; i < end; i++) {
             double r = separation.residual[i], v = profiles->lines->variance[i];
             double above = scan->intensity[i] - r - separation.background[i];
             chi2 += r * r / v;
             lost += r * r - v;
             net += above * above;
+            lw__set_refold_point(profile, i - first, above + r, v, above);
             profile->refold_points++;
         }
         lw__set_refold(profile, chi2, (double)profile->refold_points, profile->refold_points, lost, net);

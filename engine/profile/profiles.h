@@ -28,6 +28,9 @@ typedef struct lw_profile {
     size_t refold_points;
     double refold_p; /* probability of a chi2 this large by chance */
     bool refold_failed;
+    /* its points: what stands over background and neighbours, with its u, and instrument x pure profile */
+    size_t n_refold;
+    double *refold_deg, *refold_seen, *refold_u, *refold_curve;
     /* pure profile for figures */
     size_t n_curve;
     double *curve_s, *curve_intensity, *curve_u; /* s - s_line in nm^-1, unit area */

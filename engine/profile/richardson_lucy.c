@@ -159,7 +159,8 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     if (!first)
         return LW_OK;
     answer->choice = (double)used;
-    lw__grid_refold(job, &g, x, 0);
+    if ((status = lw__grid_refold(job, &g, x, 0, err)) != LW_OK)
+        return status;
     /* what survives, after as many iterations, of a start that is wider by a part in fifty */
     double kept, moved = 0;
     for (size_t j = 0; j < m; j++) {

@@ -98,6 +98,9 @@ static lw_status refold(const lw__job *job, double *const *wave, const double *r
     double *v = lw_arena_take(scratch, n, sizeof *v, err);
     if (taken == NULL || w == NULL || v == NULL)
         return LW_OUT_OF_MEMORY;
+    lw_status status = lw__take_refold(job->profiles, job->profile, data->first, n, err);
+    if (status != LW_OK)
+        return status;
     for (size_t k = 0; k < last; k++)
         taken[k] = (k == 0 ? 1 : 2) * step * apodised(job, k, last);
     double chi2 = 0, lost = 0, net = 0, free = freedom(job, wave, taken, last, w, v);
@@ -109,6 +112,8 @@ static lw_status refold(const lw__job *job, double *const *wave, const double *r
         chi2 += r * r / data->own_variance[i];
         lost += r * r - data->own_variance[i] * free / (double)n;
         net += data->curve[i] * data->curve[i];
+        lw__set_refold_point(job->profile, i, data->curve[i] + data->residual[i], data->own_variance[i],
+                             data->curve[i] + follows);
     }
     lw__set_refold(job->profile, chi2, free, n, lost, net);
     return LW_OK;

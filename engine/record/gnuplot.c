@@ -167,6 +167,10 @@ static void data(lw_text *out, const lw_series *s, int index, const lw_layout *l
     lw_pick pick = lw_pick_begin(s, l);
     size_t i;
     while (lw_pick_next(&pick, &i)) {
+        if (s->kind == LW_SERIES_LINE && isnan(s->y[i])) { /* a missing value would be bridged, an empty row parts */
+            lw_text_add(out, "\n");
+            continue;
+        }
         number(out, s->x[i] * fx);
         if (s->kind == LW_SERIES_TICKS) { /* a row of marks above the lower edge */
             double from = 0.015 + 0.05 * tick_row, to = from + 0.035;

@@ -355,9 +355,11 @@ static void draw(const one_set *set, lw_arena *arena, lw_node *result, lw_error 
     }
 
     lw_node *more = lw_add_group(result, "figures", err);
-    new_figure(more, "orders", "warren_averbach_orders", "ln A against s^2, Warren-Averbach",
-               "Logarithms of the orders' coefficients at some column lengths: the intercepts are size, the slopes strain.",
-               "s^2", "nm^-2", "ln A", "", &series, err);
+    new_figure(more, "orders", "warren_averbach_orders", "ln A against s\302\262, Warren-Averbach",
+               "Logarithms of the orders' coefficients at some column lengths, with one standard uncertainty: the intercepts "
+               "are size, the slopes strain. Assumed: the orders see the same columns, and strains over a column are normally "
+               "distributed (form log) or small (form linear).",
+               "s\302\262 = 1/d\302\262", "nm^-2", "ln A", "", &series, err);
     for (size_t part = 1; part <= 6; part++) {
         size_t i = part * (n - 1) / 6, m = set->orders.n, used = 0;
         double s2[LW_ORDERS_MOST], ln_a[LW_ORDERS_MOST], u_ln[LW_ORDERS_MOST];
@@ -383,7 +385,7 @@ static void draw(const one_set *set, lw_arena *arena, lw_node *result, lw_error 
     if (count > 1) {
         new_figure(more, "strain", "warren_averbach_strain", "Strain against column length, Warren-Averbach",
                    "Root mean square strain over columns of a length, where it is determined, with two standard "
-                   "uncertainties.",
+                   "uncertainties. Assumed: the same strain for all orders of the direction.",
                    "column length L", "nm", "rms strain", "", &series, err);
         for (size_t i = 0; i < count; i++) {
             y[i] = sqrt(fmax(h->square[first + i], 0));

@@ -202,11 +202,12 @@ describe("the road", function()
   end)
 
   it("draws each of its objects", function()
-    for _, figure in ipairs { lines:figure(), calibration:figure(), profiles:figure(), results:figure "williamson_hall",
-      lines.scan:figure() } do
+    for _, figure in ipairs { lines:figure(), calibration:figure(), profiles:figure(), profiles:figure "refold",
+      results:figure "williamson_hall", lines.scan:figure() } do
       assert.matches("^figure ", tostring(figure))
       assert.matches("%S", figure.title)
     end
+    assert.error_matches(function() profiles:figure "refolded" end, "refold")
   end)
 
   it("keeps all it needs when only the end is held", function()
