@@ -304,8 +304,15 @@ lw_status lw_columns_density(const lw_size_coefficients *a, const lw_initial_slo
         count = 0;
         for (size_t j = 0; j < n; j++)
             count += q[j] * a->step_nm;
-        for (size_t j = 0; j < told && count > 0; j++)
-            out->u[j] = sqrt(out->u[j] * out->u[j] + pow(q[j] / count - out->density[j], 2) / 3);
+        /* that the two answers cross somewhere is no knowledge of that place: the mean square around it counts */
+        size_t around = told / 8 + 1;
+        for (size_t j = 0; j < told && count > 0; j++) {
+            size_t low = j > around ? j - around : 0, high = j + around < told ? j + around : told - 1;
+            double square = 0;
+            for (size_t i = low; i <= high; i++)
+                square += pow(q[i] / count - out->density[i], 2) / (double)(high - low + 1);
+            out->u[j] = sqrt(out->u[j] * out->u[j] + square / 3);
+        }
     }
     return LW_OK;
 }
