@@ -132,6 +132,37 @@ local positions_figure = lw.figure {
   series = position_series,
 }
 
+-- The profile itself at a low, a middle and a high angle, and how skew it is.
+local low, high = instrument.valid_two_theta[1], instrument.valid_two_theta[2]
+local profile_series, skew = {}, { x = {}, y = {}, low = {}, high = {} }
+local from, to = 0, 0 -- where there is something to see
+for i, share in ipairs { 0.1, 0.5, 0.9 } do
+  local angle = math.floor(low + share * (high - low) + 0.5)
+  local shape, top = instrument:profile_curve(angle), 0
+  for _, y in ipairs(shape.density) do top = math.max(top, y) end
+  for k, y in ipairs(shape.density) do
+    if y > 0.005 * top then from, to = math.min(from, shape.offset[k]), math.max(to, shape.offset[k]) end
+  end
+  profile_series[i] = { kind = "line", label = ("%d deg"):format(angle), x = shape.offset, y = shape.density }
+end
+local profile_figure = lw.figure {
+  name = "instrument_profile", title = "Profile of the instrument at one wavelength",
+  caption = "Density against the distance from the unaberrated place at three angles, each of unit area.",
+  x = { label = "2theta - unaberrated place", unit = "deg", low = from, high = to },
+  y = { label = "density", unit = "deg^-1" }, series = profile_series,
+}
+for i = 0, 30 do skew.x[i + 1] = low + (high - low) * i / 30 end
+for i, q in ipairs(instrument:asymmetry_at(skew.x)) do
+  skew.y[i], skew.low[i], skew.high[i] = q.value, q.value - 2 * q.u, q.value + 2 * q.u
+end
+local skew_figure = lw.figure {
+  name = "instrument_asymmetry", title = "Asymmetry of the instrument's profile",
+  caption = "Centroid minus the middle at half height, at one wavelength; negative where the tail goes to low angles.",
+  x = { label = "2theta", unit = "deg" }, y = { label = "centroid - middle", unit = "deg" },
+  series = { { kind = "line", label = "asymmetry", x = skew.x, y = skew.y },
+             { kind = "band", label = "2 u", x = skew.x, y = skew.low, high = skew.high } },
+}
+
 local titles = {}
 for i, m in ipairs(measured) do
   titles[i] = m.standard.title
@@ -146,7 +177,7 @@ local items = {
       .. "good calibration says nothing about the safety of the beam.", title = "X-rays after maintenance" },
   { heading = "Calibration of the instrument" },
   { brief = instrument },
-  widths_figure, positions_figure,
+  widths_figure, profile_figure, skew_figure, positions_figure,
 }
 if #measured > 1 then
   local rows = {}

@@ -115,6 +115,8 @@
 ---@field standard_used standard?
 ---@field save fun(self: calibration, path: string)
 ---@field profile_at fun(self: calibration, two_theta: number): table
+---@field profile_curve fun(self: calibration, two_theta: number): table
+---@field asymmetry_at fun(self: calibration, angles: table): table
 ---@field figure fun(self: calibration): figure
 ---@field table fun(self: calibration): table
 ---@field for_specimen fun(self: calibration, specimen: table): calibration
@@ -310,6 +312,12 @@ local methods = {
   ["calibration:profile_at"] = entry("c:profile_at(two_theta)",
     "The instrument's profile at one wavelength: fwhm, breadth, shift.",
     { p("two_theta", "number", "within the valid range", "deg") }, "table of quantities"),
+  ["calibration:profile_curve"] = entry("c:profile_curve(two_theta)",
+    "The instrument's profile at one wavelength as a curve: offset (deg) and density (deg^-1), out to 6 FWHM.",
+    { p("two_theta", "number", "within the valid range", "deg") }, "table of vectors"),
+  ["calibration:asymmetry_at"] = entry("c:asymmetry_at { angles }",
+    "Centroid minus the middle at half height; negative where the tail goes to low angles.",
+    { p("angles", "list", "within the valid range", "deg") }, "list of quantities"),
   ["calibration:figure"] = entry("c:figure()", "Width of the instrument against angle.", {}, "figure"),
   ["calibration:table"] = entry("c:table()", "A deep Lua table of the record.", {}, "table"),
   ["calibration:for_specimen"] = entry("c:for_specimen { attenuation =, thickness = }",

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* calibration: lw.calibrate(lines, standard, options) or lw.load_calibration(path). */
 #include "instrument/calibration.h"
+#include "instrument/profile_shape.h"
 #include "base/sha256.h"
 #include "bind/bind.h"
 #include "bind/checks.h"
@@ -214,8 +215,9 @@ static int profile_at(lua_State *L)
     if (!(angle >= c->valid_low_deg && angle <= c->valid_high_deg))
         return lwb_refuse(L, "measure the standard further out", "calibration:profile_at: %g deg is outside %g to %g deg",
                           angle, c->valid_low_deg, c->valid_high_deg);
+    lw_error err = LW_ERROR_NONE;
     lw_width_figure figure;
-    lw_width_figure_at(&c->profile, angle, 0, 0, &figure);
+    lwb_check(L, lw_profile_figure(lwb_engine(L), c, angle, &figure, &err), &err);
     double u = 0, shift = lw_aberrations_shift(&c->aberrations, angle, &u);
     lua_createtable(L, 0, 3);
     lwb_push_quantity(L, lw_quantity_of(figure.fwhm_deg, figure.u_fwhm, "deg"));
@@ -239,7 +241,7 @@ static int figure(lua_State *L)
     for (size_t i = 0; i < CURVE_POINTS; i++) {
         lw_width_figure at;
         x[i] = c->valid_low_deg + (c->valid_high_deg - c->valid_low_deg) * (double)i / (CURVE_POINTS - 1);
-        lw_width_figure_at(&c->profile, x[i], 0, 0, &at);
+        lwb_check(L, lw_profile_figure(lwb_engine(L), c, x[i], &at, &err), &err);
         fwhm[i] = at.fwhm_deg;
         breadth[i] = at.breadth_deg;
     }
@@ -324,7 +326,8 @@ static const luaL_Reg functions[] = {{"calibrate", calibrate}, {"load_calibratio
                                      {"response", lwb_response}, {"dead_time", lwb_dead_time}, {NULL, NULL}};
 static const luaL_Reg methods[] = {
     {"save", save}, {"profile_at", profile_at}, {"figure", figure}, {"table", table},
-    {"compare", lwb_calibration_compare}, {"for_specimen", lwb_calibration_for_specimen}, {NULL, NULL}};
+    {"compare", lwb_calibration_compare}, {"for_specimen", lwb_calibration_for_specimen},
+    {"profile_curve", lwb_calibration_curve}, {"asymmetry_at", lwb_calibration_asymmetry}, {NULL, NULL}};
 static const luaL_Reg metamethods[] = {{"__index", at}, {"__tostring", show}, {NULL, NULL}};
 
 const lwb_noun lwb_calibration_noun = {.name = "calibration",

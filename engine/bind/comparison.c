@@ -7,6 +7,7 @@
 #include "bind/standards.h"
 #include "instrument/compare.h"
 #include "instrument/history.h"
+#include "instrument/profile_shape.h"
 
 #include <string.h>
 
@@ -65,6 +66,62 @@ int lwb_calibration_compare(lua_State *L)
     describe(tree->root, "before", before, &err);
     describe(tree->root, "after", after, &err);
     lwb_check(L, LW_OK, &err);
+    return 1;
+}
+
+static double angle_within(lua_State *L, int index, const lw_calibration *c, const char *verb)
+{
+    double angle = lwb_number(L, index, verb, "the angle");
+    if (!(angle >= c->valid_low_deg && angle <= c->valid_high_deg))
+        lwb_refuse(L, "measure the standard further out", "%s: %g deg is outside %g to %g deg", verb, angle, c->valid_low_deg,
+                   c->valid_high_deg);
+    return angle;
+}
+
+#define SHAPE_POINTS 401
+#define SHAPE_WIDTHS 6.0
+
+int lwb_calibration_curve(lua_State *L)
+{
+    lw_error err = LW_ERROR_NONE;
+    const lw_calibration *c = lwb_object(L, 1, &lwb_calibration_noun, "calibration:profile_curve");
+    double angle = angle_within(L, 2, c, "calibration:profile_curve");
+    lw_width_figure figure;
+    lw_width_figure_at(&c->profile, angle, 0, 0, &figure);
+    lua_createtable(L, 0, 2);
+    double *offset = lwb_new_vector(L, SHAPE_POINTS);
+    lua_setfield(L, -2, "offset");
+    double *density = lwb_new_vector(L, SHAPE_POINTS);
+    lua_setfield(L, -2, "density");
+    for (size_t i = 0; i < SHAPE_POINTS; i++)
+        offset[i] = figure.middle_deg + SHAPE_WIDTHS * figure.fwhm_deg * (2 * (double)i / (SHAPE_POINTS - 1) - 1);
+    lwb_check(L, lw_profile_curve(lwb_engine(L), c, angle, SHAPE_POINTS, offset, density, &err), &err);
+    return 1;
+}
+
+int lwb_calibration_asymmetry(lua_State *L)
+{
+    enum { MOST = 200 };
+    static const char verb[] = "calibration:asymmetry_at";
+    lw_error err = LW_ERROR_NONE;
+    const lw_calibration *c = lwb_object(L, 1, &lwb_calibration_noun, verb);
+    lwb_want_table(L, 2, verb, "the angles");
+    size_t n = lua_rawlen(L, 2);
+    double angle[MOST];
+    lw_quantity asymmetry[MOST];
+    if (n == 0 || n > MOST)
+        return lwb_refuse(L, "give a list of angles", "%s: %d angles; 1 to %d can be asked for", verb, (int)n, MOST);
+    for (size_t i = 0; i < n; i++) {
+        lua_rawgeti(L, 2, (lua_Integer)i + 1);
+        angle[i] = angle_within(L, lua_gettop(L), c, verb);
+        lua_pop(L, 1);
+    }
+    lwb_check(L, lw_profile_asymmetry(lwb_engine(L), c, n, angle, asymmetry, &err), &err);
+    lua_createtable(L, (int)n, 0);
+    for (size_t i = 0; i < n; i++) {
+        lwb_push_quantity(L, asymmetry[i]);
+        lua_rawseti(L, -2, (lua_Integer)i + 1);
+    }
     return 1;
 }
 

@@ -6,6 +6,8 @@
 #include "bind/bind.h"
 
 int lwb_calibration_compare(lua_State *L); /* c:compare(previous, { tolerances =, effects = }) */
+int lwb_calibration_curve(lua_State *L);     /* c:profile_curve(two_theta) */
+int lwb_calibration_asymmetry(lua_State *L); /* c:asymmetry_at(angles) */
 int lwb_calibration_for_specimen(lua_State *L); /* c:for_specimen { attenuation =, thickness = } */
 int lwb_history(lua_State *L);             /* lw.history({ { calibration =, label =, after_service = }, ... }, { ... }) */
 

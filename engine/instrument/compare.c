@@ -1,6 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "instrument/compare.h"
 
+#include "instrument/profile_shape.h"
+
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
@@ -24,7 +26,7 @@ const lw_option lw_tolerance_table[] = {
     {"breadth", LW_OPTION_NUMBER, "%", "5", 0, 1000, NULL, AT(breadth_percent),
      "change of the integral breadth at three angles"},
     {"asymmetry", LW_OPTION_NUMBER, "deg", "0.005", 0, 10, NULL, AT(asymmetry_deg),
-     "change of centroid minus top at three angles"},
+     "change of centroid minus middle at half height at three angles"},
     {"intensity", LW_OPTION_NUMBER, "%", "20", 0, 1000, NULL, AT(intensity_percent),
      "change of the lines' areas, for one standard and counting time"},
     LW_OPTIONS_END};
@@ -138,33 +140,7 @@ static void compare_aberrations(comparison *c, const lw_calibration *before, con
         }
 }
 
-lw_quantity lw_compare_asymmetry(const lw_width_function *profile, double angle)
-{
-    lw_width_figure figure;
-    double slope[LW_WIDTH_PARAMETERS] = {0}, variance = 0;
-    for (int i = 0; i < LW_WIDTH_PARAMETERS; i++) {
-        double u = sqrt(fmax(profile->covariance[i][i], 0));
-        if (!(u > 0))
-            continue;
-        lw_width_function moved = *profile;
-        double step = 0.5 * u, low = profile->value[i] - step;
-        if (i >= LW_AXIAL_1)
-            low = fmax(low, 0);
-        moved.value[i] = profile->value[i] + step;
-        lw_width_figure_at(&moved, angle, 0, 0, &figure);
-        slope[i] = figure.centroid_deg - figure.top_deg;
-        moved.value[i] = low;
-        lw_width_figure_at(&moved, angle, 0, 0, &figure);
-        slope[i] = (slope[i] - figure.centroid_deg + figure.top_deg) / (profile->value[i] + step - low);
-    }
-    for (int i = 0; i < LW_WIDTH_PARAMETERS; i++)
-        for (int j = 0; j < LW_WIDTH_PARAMETERS; j++)
-            variance += slope[i] * profile->covariance[i][j] * slope[j];
-    lw_width_figure_at(profile, angle, 0, 0, &figure);
-    return lw_quantity_of(figure.centroid_deg - figure.top_deg, sqrt(fmax(variance, 0)), "deg");
-}
-
-static void compare_at(comparison *c, const lw_calibration *before, const lw_calibration *after, const char *where,
+static lw_status compare_at(comparison *c, const lw_calibration *before, const lw_calibration *after, const char *where,
                        double angle, const lw_tolerances *tolerances, lw_error *err)
 {
     char name[48];
@@ -172,8 +148,17 @@ static void compare_at(comparison *c, const lw_calibration *before, const lw_cal
     double u_was, u_is;
     double shift_was = lw_aberrations_shift(&before->aberrations, angle, &u_was);
     double shift_is = lw_aberrations_shift(&after->aberrations, angle, &u_is);
-    lw_width_figure_at(&before->profile, angle, 0, 0, &was);
-    lw_width_figure_at(&after->profile, angle, 0, 0, &is);
+    lw_quantity lean_was, lean_is;
+    lw_engine *engine = c->arena->engine;
+    lw_status status = lw_profile_figure(engine, before, angle, &was, err);
+    if (status == LW_OK)
+        status = lw_profile_figure(engine, after, angle, &is, err);
+    if (status == LW_OK)
+        status = lw_profile_asymmetry(engine, before, 1, &angle, &lean_was, err);
+    if (status == LW_OK)
+        status = lw_profile_asymmetry(engine, after, 1, &angle, &lean_is, err);
+    if (status != LW_OK)
+        return status;
     snprintf(name, sizeof name, "shift_%s", where);
     add_quantity(c, name, "the place of a line", angle, lw_quantity_of(shift_was, u_was, "deg"),
                  lw_quantity_of(shift_is, u_is, "deg"), tolerances->shift_deg, true, err);
@@ -185,8 +170,9 @@ static void compare_at(comparison *c, const lw_calibration *before, const lw_cal
                  lw_quantity_of(is.breadth_deg, is.u_breadth, "deg"), tolerances->breadth_percent / 100 * was.breadth_deg,
                  true, err);
     snprintf(name, sizeof name, "asymmetry_%s", where);
-    add_quantity(c, name, "the asymmetry (centroid minus top)", angle, lw_compare_asymmetry(&before->profile, angle),
-                 lw_compare_asymmetry(&after->profile, angle), tolerances->asymmetry_deg, true, err);
+    add_quantity(c, name, "the asymmetry (centroid minus the middle at half height)", angle, lean_was, lean_is,
+                 tolerances->asymmetry_deg, true, err);
+    return LW_OK;
 }
 
 bool lw_compare_intensity(const lw_calibration *before, const lw_calibration *after, lw_quantity *percent)
@@ -331,8 +317,10 @@ lw_status lw_compare(lw_engine *engine, const lw_calibration *before, const lw_c
     lw_add_vector(record, "two_theta", range, 2, "deg", err);
     c.quantities = lw_add_list(record, "quantities", err);
     compare_aberrations(&c, before, after, &options->tolerances, err);
-    for (int i = 0; i < 3; i++)
-        compare_at(&c, before, after, where[i], angle[i], &options->tolerances, err);
+    for (int i = 0; i < 3 && status == LW_OK; i++)
+        status = compare_at(&c, before, after, where[i], angle[i], &options->tolerances, err);
+    if (status != LW_OK)
+        return status;
     lw_quantity intensity;
     if (lw_compare_intensity(before, after, &intensity))
         add_quantity(&c, "intensity", "the intensity", 0, lw_quantity_of(100, 0, "%"), intensity,

@@ -11,7 +11,7 @@ typedef struct lw_tolerances {
     double zero_shift_deg, displacement_mm, flat_specimen_deg, transparency_deg, wavelength_relative;
     double shift_deg;             /* of a line's place, all aberrations together, at each of three angles */
     double fwhm_percent, breadth_percent; /* at each of three angles, of the value before */
-    double asymmetry_deg;         /* centroid minus top, at each of three angles */
+    double asymmetry_deg;         /* centroid minus the middle at half height, at each of three angles */
     double intensity_percent;     /* of the lines' areas, same standard and counting time taken for granted */
 } lw_tolerances;
 extern const lw_option lw_tolerance_table[];
@@ -34,11 +34,7 @@ lw_status lw_comparable(const lw_calibration *before, const lw_calibration *afte
  * The overall verdict is the worst; `reasons` says why in words. */
 lw_status lw_compare(lw_engine *engine, const lw_calibration *before, const lw_calibration *after,
                      const lw_compare_options *options, lw_node *record, lw_error *err);
-
-/* The parts that the history shares. Centroid minus top of the profile at an angle, deg, with its u by central
- * differences over the profile's parameters. */
-lw_quantity lw_compare_asymmetry(const lw_width_function *profile, double two_theta_deg);
-/* Areas of the lines that both have: geometric mean of after over before, percent, u from the scatter of the lines.
+/* The parts that the history shares. Areas of the lines that both have: geometric mean of after over before, percent, u from the scatter of the lines.
  * False if the standards differ or fewer than three lines are common. */
 bool lw_compare_intensity(const lw_calibration *before, const lw_calibration *after, lw_quantity *percent);
 /* The low, middle and high angle (which = 0, 1, 2) of a range, deg. */

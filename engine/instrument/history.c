@@ -3,6 +3,7 @@
 
 #include "instrument/compare.h"
 #include "instrument/control_chart.h"
+#include "instrument/profile_shape.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -144,11 +145,13 @@ static lw_status chart_profile(history *h, bool width, const char *name, const c
     chart c;
     lw_status status = begin(h, &c, name, title, "deg", angle, err);
     for (size_t i = 0; status == LW_OK && i < h->n; i++) {
-        const lw_width_function *profile = &h->entry[i].calibration->profile;
-        lw_width_figure figure;
-        lw_width_figure_at(profile, angle, 0, 0, &figure);
-        lw_quantity lean = lw_compare_asymmetry(profile, angle);
-        add_point(h, &c, i, width ? figure.fwhm_deg : lean.value, width ? figure.u_fwhm : lean.u);
+        const lw_calibration *calibration = h->entry[i].calibration;
+        lw_width_figure figure = {0};
+        lw_quantity lean = {0};
+        status = width ? lw_profile_figure(h->arena->engine, calibration, angle, &figure, err)
+                       : lw_profile_asymmetry(h->arena->engine, calibration, 1, &angle, &lean, err);
+        if (status == LW_OK)
+            add_point(h, &c, i, width ? figure.fwhm_deg : lean.value, width ? figure.u_fwhm : lean.u);
     }
     return status == LW_OK ? finish(h, &c, err) : status;
 }
@@ -177,7 +180,7 @@ static lw_status draw_up(history *h, double low, double high, lw_error *err)
     for (int i = 0; i < 3 && status == LW_OK; i++)
         status = chart_profile(h, true, widths[i], "FWHM", lw_compare_angle(low, high, i), err);
     for (int i = 0; i < 3 && status == LW_OK; i++)
-        status = chart_profile(h, false, leans[i], "Asymmetry (centroid minus top)", lw_compare_angle(low, high, i), err);
+        status = chart_profile(h, false, leans[i], "Asymmetry (centroid minus middle)", lw_compare_angle(low, high, i), err);
     return status == LW_OK ? chart_intensity(h, err) : status;
 }
 

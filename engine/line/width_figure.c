@@ -119,6 +119,7 @@ void lw_width_figure_at(const lw_width_function *function, double two_theta_deg,
     double left = crossing(&of, 0.5 * top.value, figure->top_deg, -0.25 * width);
     point at_right = at(&of, right), at_left = at(&of, left);
     figure->fwhm_deg = right - left;
+    figure->middle_deg = 0.5 * (left + right);
     figure->breadth_deg = 1 / top.value;
     /* a place of half height moves so that the value there stays half the top's */
     double fwhm_by[OF_ALL], breadth_by[OF_ALL];

@@ -7,7 +7,7 @@
 
 typedef struct lw_width_figure {
     double fwhm_deg, u_fwhm, breadth_deg, u_breadth; /* breadth: area over height */
-    double centroid_deg, top_deg;                    /* from the unaberrated position */
+    double centroid_deg, top_deg, middle_deg; /* from the unaberrated position; middle: at half height */
     double d_fwhm[2], d_breadth[2]; /* slopes to the own Gaussian FWHM^2 (1/deg) and to the own Lorentzian FWHM */
 } lw_width_figure;
 

@@ -68,7 +68,12 @@ describe("a service", function()
     local record = helper.read(folder .. "/told/comparison.json")
     assert.matches('"reported_size_nm"', record)
     assert.matches('"schema": "linewright/comparison/1"', record)
-    assert.matches("licensed", helper.read(folder .. "/told/report.html"))
+    local report = helper.read(folder .. "/told/report.html")
+    assert.matches("licensed", report)
+    for _, name in ipairs { "profile_low", "profile_middle", "profile_high", "asymmetry_before_after",
+                            "fwhm_before_after", "effects_grid_size", "effects_grid_strain" } do
+      assert.is_true(#helper.read(folder .. "/told/figures/" .. name .. ".svg") > 1000, name)
+    end
     arguments[#arguments + 1] = "strict=true"
     assert.are.equal(3, (helper.run(folder, arguments)))
     arguments[#arguments + 1] = "tolerances=wide.lua"
@@ -140,6 +145,36 @@ describe("the optical profile", function()
         end
       end
       assert.are.equal(25, seen)
+    end
+  end)
+
+  it("shows its shape: of unit area, where the rays fall, with the tail on the right side", function()
+    local read = dofile(helper.root .. "/tests/truth/json.lua")
+    local truth = read(helper.read(helper.root .. "/tests/data/raytraced/lab6_after_service.truth.json"))
+    for _, profile in ipairs { "empirical", "optical" } do
+      local instrument = calibrate("lab6_after_service", { profile = profile })
+      for _, row in ipairs(truth.instrument_profile.rows) do
+        if row.two_theta == 40 or row.two_theta == 90 or row.two_theta == 140 then
+          local curve, area, mean, top = instrument:profile_curve(row.two_theta), 0, 0, 0
+          local step = curve.offset[2] - curve.offset[1]
+          for i, y in ipairs(curve.density) do
+            area, mean = area + y * step, mean + y * curve.offset[i] * step
+            top = math.max(top, y)
+          end
+          assert.is_near(1, area, 0.01, profile)
+          assert.is_near(row.breadth, 1 / top, 0.05 * row.breadth, profile) -- area over height, as traced
+          -- the tail that the traced third moment shows: below 100 deg to low angles, beyond to high ones
+          local asymmetry = instrument:asymmetry_at({ row.two_theta })[1]
+          assert.is_true(asymmetry.value * row.third_central_moment > 0, profile)
+          if profile == "optical" then
+            local zero, height = -0.008, 2 * 0.030 * math.cos(math.rad(row.two_theta / 2)) / 217.5
+            assert.is_near(row.shift_centroid, mean / area + zero + math.deg(height), 0.0006, profile)
+          end
+        end
+      end
+      assert.error_matches(function() instrument:profile_curve(170) end, "170")
+      assert.error_matches(function() instrument:asymmetry_at({}) end, "angles")
+      assert.error_matches(function() instrument:asymmetry_at({ 30, "far" }) end, "angle")
     end
   end)
 

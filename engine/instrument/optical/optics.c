@@ -148,6 +148,8 @@ lw_status lw_optics_figure_at(lw_optics *optics, double two_theta_deg, lw_optics
     }
     figure->fwhm_deg = LW_OPTICS_STEP * (edge[0] + edge[1]);
     figure->breadth_deg = sum * LW_OPTICS_STEP / height;
-    figure->top_deg = LW_OPTICS_STEP * ((top < n / 2 ? (double)top : (double)top - (double)n) + aside);
+    double place = top < n / 2 ? (double)top : (double)top - (double)n;
+    figure->top_deg = LW_OPTICS_STEP * (place + aside);
+    figure->middle_deg = LW_OPTICS_STEP * (place + 0.5 * (edge[1] - edge[0]));
     return LW_OK;
 }

@@ -37,10 +37,10 @@ lw_status lw_optics_transform(lw_optics *optics, double two_theta_deg, double st
  * a Gaussian that keeps the edges of boxes from ringing. */
 lw_status lw_optics_profile(lw_optics *optics, double two_theta_deg, double sharpness_deg, lw_error *err);
 
-/* FWHM, breadth (area over height), centroid, place of the top, third central moment. The edges of boxes are softened by
+/* FWHM, breadth (area over height), centroid, place of the top, middle at half height, third central moment. The edges of boxes are softened by
  * a Gaussian of 0.002 deg FWHM for the first two and the top; the moments are exact. */
 typedef struct lw_optics_figure {
-    double fwhm_deg, breadth_deg, centroid_deg, top_deg, third_moment_deg3;
+    double fwhm_deg, breadth_deg, centroid_deg, top_deg, middle_deg, third_moment_deg3;
 } lw_optics_figure;
 lw_status lw_optics_figure_at(lw_optics *optics, double two_theta_deg, lw_optics_figure *figure, lw_error *err);
 
