@@ -56,6 +56,11 @@ lw_status lw_pattern_fitter_instrument(lw_pattern_fitter *f, lw_error *err);
 /* Covariance of the shared parameters at f->p, [n n]: counting times misfit^2, plus the calibration's part. */
 lw_status lw_pattern_fitter_covariance(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
 
+/* -------------------------------------------------------------------------------------- pattern_positive.c */
+
+/* Puts what shares that can't be negative are known to in place of counting times misfit^2; right after the latter. */
+lw_status lw_pattern_fitter_positive(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
+
 /* ---------------------------------------------------------------------------------------- pattern_robust.c */
 
 /* Enlarges the covariance where lines contradict each other beyond chance, after lw_pattern_fitter_covariance. */

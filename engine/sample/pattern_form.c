@@ -247,31 +247,6 @@ lw_status lw_pattern_fitter_instrument(lw_pattern_fitter *f, lw_error *err)
     return status;
 }
 
-/* Shares that stand at 0: given the others they are normal about what the downhill direction wants, cut off at 0; their mean
- * square (of a truncated normal distribution: Johnson, Kotz & Balakrishnan 1994 Continuous Univariate Distributions 1, ch. 13)
- * is the uncertainty. */
-static void add_empty(const lw_pattern_fitter *f, const lw_pattern_prior *prior, double factor, double *covariance)
-{
-    size_t n = f->pattern.n_parameters;
-    const double *h = f->normal_h;
-    for (size_t row = prior->row; row < prior->row + prior->n; row++) {
-        if (!f->at_bound[row])
-            continue;
-        double left = h[row * n + row];
-        for (size_t i = 0; i < n; i++) {
-            double sum = 0, by_i = i < row ? h[row * n + i] : h[i * n + row];
-            for (size_t j = 0; j < n && by_i != 0; j++)
-                sum += f->inverse[i * n + j] * (j < row ? h[row * n + j] : h[j * n + row]);
-            left -= by_i * sum;
-        }
-        if (!(left > 0))
-            continue;
-        double sd = 1 / sqrt(left), below = fmax(-f->normal_g[row] * sd, 0); /* how far below 0 it would be, in sd */
-        double ratio = below > 25 ? below + 1 / below : 0.79788456080286536 * exp(-0.5 * below * below) / erfc(below * sqrt(0.5));
-        covariance[row * n + row] = factor * sd * sd * fmax(1 + below * below - below * ratio, 0);
-    }
-}
-
 /* What the uncertainty of the smoothing's strength adds. work: [n]. */
 static void add_strength(lw_pattern_fitter *f, const lw_pattern_prior *prior, double *work, double *covariance)
 {
@@ -326,7 +301,5 @@ lw_status lw_pattern_fitter_covariance(lw_pattern_fitter *f, double misfit, doub
     for (int i = 0; i < 2; i++)
         if (m->prior[i].n > 0)
             add_strength(f, &m->prior[i], g, covariance);
-    if (m->prior[0].n > 0)
-        add_empty(f, &m->prior[0], misfit * misfit, covariance);
-    return LW_OK;
+    return m->prior[0].n > 0 ? lw_pattern_fitter_positive(f, misfit, covariance, err) : LW_OK;
 }

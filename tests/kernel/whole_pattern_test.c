@@ -445,6 +445,39 @@ static void coverage(const made *m)
     }
 }
 
+/* The histogram's intervals: of 40, 95 % lie within 1.96 u at 35 or more (binomial, one chance in 200 for fewer). */
+static void coverage_of_histogram(const made *m)
+{
+    static const double p[2] = {4e-6, 0};
+    static const char *const names[2] = {"size_volume", "size_area"};
+    double truth[2] = {lw_spheres_size_volume(&SPHERES, NULL), lw_spheres_size_area(&SPHERES, NULL)};
+    double sum[2] = {0}, sum2[2] = {0}, u_sum[2] = {0};
+    int inside[2] = {0}, runs = 40;
+    make_ideal(m, &lw_strain_constant, p, 2e4);
+    sizes = "histogram";
+    for (int seed = 1; seed <= runs; seed++) {
+        lw_arena arena;
+        lw_arena_begin(&arena, m->engine);
+        draw_counts((unsigned)seed + 100);
+        const lw_node *tree = fit(m, "constant", &arena);
+        for (int j = 0; j < 2; j++) {
+            lw_quantity q = quantity(tree, names[j]);
+            sum[j] += q.value - truth[j];
+            sum2[j] += (q.value - truth[j]) * (q.value - truth[j]);
+            u_sum[j] += q.u;
+            inside[j] += fabs(q.value - truth[j]) < 1.96 * q.u;
+        }
+        lw_arena_end(&arena);
+    }
+    sizes = "lognormal";
+    for (int j = 0; j < 2; j++) {
+        printf("histogram, %s: scatter %.3g, u %.3g, mean off by %.2g, inside %d of %d\n", names[j], sqrt(sum2[j] / runs),
+               u_sum[j] / runs, sum[j] / runs, inside[j], runs);
+        CHECK(inside[j] >= 35);
+        CHECK(u_sum[j] / runs < 0.05 * truth[j]);
+    }
+}
+
 static void refused_memory(const made *m)
 {
     bool done = false;
@@ -476,6 +509,7 @@ int main(void)
     contradiction(&m);
     directions(&m);
     coverage(&m);
+    coverage_of_histogram(&m);
     refused_memory(&m);
 
     lw_arena_end(&m.arena);
