@@ -114,7 +114,7 @@ static void add_curve(lw_node *list, const char *label, const lw_breadth_fit *fi
     for (size_t i = 0; i < CURVE_POINTS; i++) {
         x[n] = 1.08 * most * (double)i / (CURVE_POINTS - 1);
         y[n] = lw_form_breadth(fit->form, fit->p, x[n], slopes, &s_slope);
-        n += isfinite(y[n]);
+        n += isfinite(y[n]) ? 1 : 0;
     }
     add_series(list, "line", label, x, y, NULL, n, err);
 }
