@@ -169,7 +169,6 @@ static void add_brief_methods(lua_State *L, lw_report *report, int self, const l
     lw_error err = LW_ERROR_NONE;
     add_summary(L, report, methods);
     lwb_check(L, lw_report_remarks(report, "To mind", lw_node_get(node, "notes"), &err), &err);
-    lwb_report_parts(L, report, node, true);
     const lw_node *plot = lw_node_get(methods, BRIEF_PLOT);
     if (plot != NULL && lwb_push_result_figure(L, plot, plot->name))
         add_figure(L, report, self);
@@ -191,7 +190,11 @@ static void add_each_method(lua_State *L, lw_report *report, int self, const lw_
     for (const lw_node *method = methods->first; method != NULL; method = method->next)
         if (lw_node_get(method, "not_applied") == NULL)
             add_result(L, report, self, method, true, strcmp(method->name, BRIEF_PLOT) != 0);
-    lwb_report_parts(L, report, node, false);
+    if (lw_node_get(node, "budget") != NULL || lw_node_get(node, "uncertainty") != NULL) {
+        fold(L, report, "Every uncertainty in its parts");
+        lwb_report_parts(L, report, node, false);
+        fold_end(L, report);
+    }
     for (const lw_node *rest = node->first; rest != NULL; rest = rest->next)
         if (rest->kind == LW_NODE_GROUP && rest != methods && !is_parts(rest))
             add_result(L, report, self, rest, false, true);
@@ -214,10 +217,13 @@ static void add_tree(lua_State *L, lw_report *report, int self, int item, part s
         heading(L, report, "Size and strain");
     if (shown != DETAILS)
         add_brief_methods(L, report, self, node, methods);
-    if (shown == WHOLE)
+    if (shown == WHOLE) {
+        lwb_report_parts(L, report, node, true);
         add_each_method(L, report, self, node, methods);
+    }
     if (shown == DETAILS) {
         fold(L, report, "Every method: values, assumptions and sources");
+        lwb_report_parts(L, report, node, true);
         add_each_method(L, report, self, node, methods);
         fold_end(L, report);
     }

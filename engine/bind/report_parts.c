@@ -126,7 +126,7 @@ static void add_budget(lua_State *L, lw_report *report, const lw_node *results, 
         }
         lwb_check(L,
                   lw_report_table(report,
-                                  shares       ? "Budget: shares of the variance in per cent; each part in its unit is below"
+                                  shares       ? "Budget: shares of the variance in per cent; each part in its unit is folded away below"
                                   : first_hand ? "Budget: each part as standard uncertainty and share of the variance; together, "
                                                  "of the whole"
                                                : "Budget of the lines' breadths",
