@@ -127,6 +127,7 @@ lw_status lw__fit_stage(lw_fit_state *fit, int rounds, bool final, lw_error *err
         if (round > 0 && !changed && !from_model)
             break; /* the same least squares once more */
         lw_problem problem = {.n = fit->n_parameters, .lower = fit->lower, .upper = fit->upper, .fixed = fit->fixed,
+                              .border = fit->n_parameters - lw_model_border(&fit->model),
                               .evaluate = lw__fit_evaluate, .user = fit};
         lw_width_form form;
         lw_arena_mark mark = lw_arena_mark_now(&fit->scratch);

@@ -101,7 +101,7 @@ lw_status lw_fit_survey(lw_fit_state *fit, double *u, lw_error *err)
         return LW_OUT_OF_MEMORY;
     for (size_t i = 0; i < n; i++)
         skip[i] = fit->fixed[i] || fit->at_bound[i];
-    status = lw_invert_normal(fit->engine, normal.h, n, skip, c, &weakest, err);
+    status = lw_invert_bordered(fit->engine, normal.h, n, n - lw_model_border(&fit->model), skip, c, &weakest, err);
     if (status == LW_NOT_SUPPORTED && err != NULL)
         *err = LW_ERROR_NONE;
     for (size_t k = 0; k < fit->n; k++) {
@@ -154,7 +154,7 @@ static lw_status covariance(lw_fit_state *fit, lw_error *err)
         skip[i] = fit->fixed[i] || (axial && fit->at_bound[i]);
         memcpy(pp + i * n, normal.h + i * whole, n * sizeof *pp);
     }
-    status = lw_invert_normal(fit->engine, pp, n, skip, c, &weakest, err);
+    status = lw_invert_bordered(fit->engine, pp, n, n - lw_model_border(model), skip, c, &weakest, err);
     if (status == LW_NOT_SUPPORTED) {
         /* a parameter on its bound may be the one that can't be told: it then counts as held */
         bool helped = false;
@@ -165,7 +165,7 @@ static lw_status covariance(lw_fit_state *fit, lw_error *err)
         if (helped && err != NULL)
             *err = LW_ERROR_NONE;
         if (helped)
-            status = lw_invert_normal(fit->engine, pp, n, skip, c, &weakest, err);
+            status = lw_invert_bordered(fit->engine, pp, n, n - lw_model_border(model), skip, c, &weakest, err);
         if (status == LW_NOT_SUPPORTED) {
             if (err != NULL)
                 *err = LW_ERROR_NONE;

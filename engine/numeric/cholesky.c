@@ -94,3 +94,72 @@ void lw_cholesky_invert_factor(double *u, size_t n, size_t ld)
         row[i] = inverse;
     }
 }
+
+bool lw_cholesky_envelope(const size_t *first, size_t n, size_t border, size_t *end)
+{
+    size_t core = n - border, reach = 0;
+    for (size_t k = 0; k < core; k++)
+        end[k] = k + 1;
+    for (size_t i = 0; i < core; i++)
+        if (end[first[i]] < i + 1)
+            end[first[i]] = i + 1;
+    double cost = 0;
+    for (size_t k = 0; k < core; k++) {
+        /* the factor fills up what lies between a row's first number and the row's diagonal */
+        reach = end[k] > reach ? end[k] : reach;
+        end[k] = reach;
+        double wide = (double)(reach - k + border);
+        cost += wide * wide;
+    }
+    cost += (double)border * (double)border * (double)border / 3;
+    return cost < 0.5 * (double)n * (double)n * (double)n / 3;
+}
+
+size_t lw_cholesky_bordered(double *u, size_t n, size_t ld, const size_t *end, size_t border, double least)
+{
+    size_t core = n - border;
+    for (size_t k = 0; k < n; k++) {
+        double *row = u + k * ld;
+        size_t to = k < core ? end[k] : n, from = k < core ? core : n;
+        if (!(row[k] > least))
+            return k;
+        double pivot = sqrt(row[k]), inverse = 1 / pivot;
+        row[k] = pivot;
+        for (size_t j = k + 1; j < to; j++)
+            row[j] *= inverse;
+        for (size_t j = from; j < n; j++)
+            row[j] *= inverse;
+        for (size_t i = k + 1; i < to; i++) {
+            take_off(u + i * ld + i, row + i, row[i], to - i);
+            take_off(u + i * ld + from, row + from, row[i], n - from);
+        }
+        for (size_t i = from; i < n; i++)
+            take_off(u + i * ld + i, row + i, row[i], n - i);
+    }
+    return n;
+}
+
+void lw_cholesky_bordered_inverse(const double *u, size_t n, size_t ld, const size_t *end, size_t border, double *c)
+{
+    size_t core = n - border;
+    for (size_t i = n; i-- > 0;) {
+        const double *row = u + i * ld;
+        double *to = c + i * n, inverse = 1 / row[i];
+        for (size_t j = i; j < n; j++)
+            to[j] = 0;
+        for (size_t k = i + 1; k < (i < core ? end[i] : n); k++)
+            take_off(to + i + 1, c + k * n + i + 1, row[k], n - i - 1);
+        for (size_t k = i < core ? core : n; k < n; k++)
+            take_off(to + i + 1, c + k * n + i + 1, row[k], n - i - 1);
+        double sum = inverse;
+        for (size_t j = i + 1; j < n; j++) {
+            to[j] *= inverse;
+            c[j * n + i] = to[j];
+        }
+        for (size_t k = i + 1; k < (i < core ? end[i] : n); k++)
+            sum -= row[k] * to[k];
+        for (size_t k = i < core ? core : n; k < n; k++)
+            sum -= row[k] * to[k];
+        to[i] = sum * inverse;
+    }
+}

@@ -22,6 +22,7 @@ typedef struct solver {
     double *matrix;       /* factor of the free part */
     double *right;        /* its right-hand side */
     size_t *free_at;      /* which parameters are free */
+    size_t *first, *end;  /* envelope of the free part */
     unsigned char *held;  /* 0 free, 1 held for this step, 2 moved onto its bound by this step */
 } solver;
 
@@ -79,10 +80,19 @@ static bool solve_free(solver *s, double damping)
             s->free_at[m++] = i;
         moved = moved || s->held[i] == 2;
     }
+    size_t border = 0;
+    while (border < m && s->free_at[m - 1 - border] >= n - s->problem->border)
+        border++;
     for (size_t a = 0; a < m; a++) {
         size_t i = s->free_at[a];
         const double *row = s->at.h + i * n;
         double scale = s->scale[i];
+        s->first[a] = a;
+        for (size_t b = 0; b < a; b++)
+            if (row[s->free_at[b]] != 0) {
+                s->first[a] = b;
+                break;
+            }
         for (size_t b = 0; b <= a; b++) {
             size_t j = s->free_at[b];
             s->matrix[b * s->ld + a] = row[j] * scale * s->scale[j];
@@ -96,7 +106,10 @@ static bool solve_free(solver *s, double damping)
                     g -= h_of(&s->at, i, j) * s->step[j];
         s->right[a] = g * scale;
     }
-    if (lw_cholesky(s->matrix, m, s->ld, 1e-15) < m)
+    size_t done = border > 0 && lw_cholesky_envelope(s->first, m, border, s->end)
+                      ? lw_cholesky_bordered(s->matrix, m, s->ld, s->end, border, 1e-15)
+                      : lw_cholesky(s->matrix, m, s->ld, 1e-15);
+    if (done < m)
         return false;
     lw_cholesky_solve(s->matrix, m, s->ld, s->right);
     for (size_t a = 0; a < m; a++)
@@ -331,9 +344,11 @@ lw_status lw_least_squares(lw_engine *engine, const lw_problem *problem, const l
     s.scale = lw_arena_take(arena, n, sizeof(double), err);
     s.free_at = lw_arena_take(arena, n, sizeof(size_t), err);
     s.held = lw_arena_take(arena, n, 1, err);
+    s.first = lw_arena_take(arena, n, sizeof(size_t), err);
+    s.end = lw_arena_take(arena, n, sizeof(size_t), err);
     lw_status status = LW_OUT_OF_MEMORY;
     if (s.at.h && s.at.g && other.h && other.g && s.matrix && s.right && s.trial && s.step && s.scale &&
-        s.free_at && s.held)
+        s.free_at && s.held && s.first && s.end)
         status = iterate(&s, control, p, &other, outcome, engine, err);
     if (status == LW_OK) {
         outcome->chi2 = s.at.chi2;
@@ -370,15 +385,22 @@ static size_t weakest_of(double *u, size_t k, size_t ld, double *work)
 lw_status lw_invert_normal(lw_engine *engine, const double *h, size_t n, const bool *skip, double *c,
                            size_t *weakest, lw_error *err)
 {
+    return lw_invert_bordered(engine, h, n, 0, skip, c, weakest, err);
+}
+
+lw_status lw_invert_bordered(lw_engine *engine, const double *h, size_t n, size_t border, const bool *skip, double *c,
+                             size_t *weakest, lw_error *err)
+{
     lw_arena arena;
     lw_arena_begin(&arena, engine);
     size_t ld = (n + 7) / 8 * 8, m = 0;
     double *u = lw_arena_take(&arena, n * ld, sizeof *u, err);
     double *scale = lw_arena_take(&arena, n, sizeof *scale, err);
     double *work = lw_arena_take(&arena, n, sizeof *work, err);
-    size_t *at = lw_arena_take(&arena, n, sizeof *at, err);
+    size_t *at = lw_arena_take(&arena, n, sizeof *at, err), *first = lw_arena_take(&arena, 2 * n, sizeof *first, err);
+    size_t wide = 0, *end = first + n;
     lw_status status = LW_OK;
-    if (!u || !scale || !work || !at) {
+    if (!u || !scale || !work || !at || !first) {
         status = LW_OUT_OF_MEMORY;
         goto done;
     }
@@ -393,19 +415,39 @@ lw_status lw_invert_normal(lw_engine *engine, const double *h, size_t n, const b
         }
         scale[m] = 1 / sqrt(h[i * n + i]);
         at[m++] = i;
+        wide += i >= n - border;
     }
-    for (size_t a = 0; a < m; a++)
-        for (size_t b = 0; b <= a; b++)
+    for (size_t a = 0; a < m; a++) {
+        first[a] = a;
+        for (size_t b = a + 1; b-- > 0;) {
             u[b * ld + a] = h[at[a] * n + at[b]] * scale[a] * scale[b];
-    size_t k = lw_cholesky(u, m, ld, 4 * DBL_EPSILON * (double)m);
+            if (u[b * ld + a] != 0)
+                first[a] = b;
+        }
+    }
+    bool bordered = wide > 0 && lw_cholesky_envelope(first, m, wide, end);
+    double least = 4 * DBL_EPSILON * (double)m;
+    size_t k = bordered ? lw_cholesky_bordered(u, m, ld, end, wide, least) : lw_cholesky(u, m, ld, least);
     if (k < m) {
         if (weakest != NULL)
             *weakest = at[weakest_of(u, k, ld, work)];
         status = LW_NOT_SUPPORTED;
         goto singular;
     }
-    lw_cholesky_invert_factor(u, m, ld);
     memset(c, 0, n * n * sizeof *c);
+    if (bordered) {
+        double *packed = lw_arena_take_raw(&arena, m * m, sizeof *packed, err);
+        if (packed == NULL) {
+            status = LW_OUT_OF_MEMORY;
+            goto done;
+        }
+        lw_cholesky_bordered_inverse(u, m, ld, end, wide, packed);
+        for (size_t a = 0; a < m; a++)
+            for (size_t b = 0; b < m; b++)
+                c[at[a] * n + at[b]] = packed[a * m + b] * scale[a] * scale[b];
+        goto done;
+    }
+    lw_cholesky_invert_factor(u, m, ld);
     for (size_t a = 0; a < m; a++)
         for (size_t b = 0; b <= a; b++) {
             double value = lw_dot(u + a * ld + a, u + b * ld + a, m - a) * scale[a] * scale[b];

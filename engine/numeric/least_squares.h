@@ -26,6 +26,7 @@ typedef struct lw_problem {
     const double *lower; /* [n] or NULL; -INFINITY where free */
     const double *upper; /* [n] or NULL */
     const bool *fixed;   /* [n] or NULL: held at its start */
+    size_t border;       /* the last ones of the n, which may go with all others; these go with near ones only, or 0 */
     /* chi2 at p, and with want_normal also h and g (both zeroed by the caller of evaluate). A point where
      * the model can't be evaluated sets chi2 = INFINITY and returns LW_OK: the step is then shortened. */
     lw_status (*evaluate)(void *user, const double *p, bool want_normal, lw_normal *normal, lw_error *err);
@@ -65,5 +66,9 @@ lw_status lw_least_squares(lw_engine *engine, const lw_problem *problem, const l
  * if it is singular to rounding. */
 lw_status lw_invert_normal(lw_engine *engine, const double *h, size_t n, const bool *skip, double *c,
                            size_t *weakest, lw_error *err);
+
+/* The same where the last `border` parameters go with all others and these with near ones only. */
+lw_status lw_invert_bordered(lw_engine *engine, const double *h, size_t n, size_t border, const bool *skip, double *c,
+                             size_t *weakest, lw_error *err);
 
 #endif

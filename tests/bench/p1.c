@@ -106,7 +106,7 @@ int main(int argc, char **argv)
             lw_model_background(&model, n_terms, false, NULL);
         }
     }
-    lw_problem problem = {.n = n_par, .lower = lower, .evaluate = lw_model_evaluate, .user = &model};
+    lw_problem problem = {.n = n_par, .border = n_par - lw_model_border(&model), .lower = lower, .evaluate = lw_model_evaluate, .user = &model};
     lw_fit_control control = lw_fit_control_defaults();
     control.chi2_tolerance = 1e-9; /* as the baseline; it asks nothing of the steps */
     control.step_tolerance = 1e-2;

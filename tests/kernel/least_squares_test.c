@@ -2,7 +2,9 @@
 /* Least squares: bounds, fixed parameters, points where the model fails, scales, cancelling, memory; and
  * the inverse of the normal matrix. Answers are closed forms, stated at each. */
 #include "check.h"
+#include "numeric/cholesky.h"
 #include "numeric/least_squares.h"
+#include "numeric/random.h"
 
 #include <stdint.h>
 #include <stdlib.h>
@@ -290,6 +292,69 @@ static void test_inverse(void)
     CHECK_NEAR(worst, 0, 1e-13);
 }
 
+/* Lines of four parameters that meet their neighbours, and a border: the factor within the envelope against the dense
+ * one, the inverse by recursion against the one by the inverted factor, and the same through the normal matrix with
+ * parameters left out. */
+static void test_border(void)
+{
+    enum { LINES = 30, OWN = 4, BORDER = 9, N = LINES * OWN + BORDER, LD = (N + 7) / 8 * 8, SAMPLES = 400 };
+    static double h[N * N], dense[N * LD], bordered[N * LD], inverse[N * N], c[2][N * N];
+    size_t first[N], end[N], weakest;
+    lw_random random;
+    lw_random_begin(&random, 12, 0);
+    /* J'J of samples that see two or three lines each and the border */
+    for (int sample = 0; sample < SAMPLES; sample++) {
+        double row[N] = {0};
+        size_t line = (size_t)(sample * LINES / SAMPLES);
+        for (size_t k = line > 0 ? line - 1 : 0; k <= line + (size_t)(line % 5 == 0) && k < LINES; k++)
+            for (size_t j = 0; j < OWN; j++)
+                row[k * OWN + j] = lw_random_normal(&random);
+        for (size_t j = N - BORDER; j < N; j++)
+            row[j] = lw_random_normal(&random);
+        for (size_t i = 0; i < N; i++)
+            for (size_t j = 0; j <= i; j++)
+                h[i * N + j] += row[i] * row[j];
+    }
+    for (size_t i = 0; i < N; i++) {
+        first[i] = i;
+        for (size_t j = i + 1; j-- > 0;) {
+            dense[j * LD + i] = bordered[j * LD + i] = h[i * N + j];
+            if (h[i * N + j] != 0)
+                first[i] = j;
+        }
+    }
+    CHECK(lw_cholesky_envelope(first, N, BORDER, end));
+    CHECK(end[0] > OWN && end[0] < N - BORDER);
+    CHECK(lw_cholesky(dense, N, LD, 0) == N);
+    CHECK(lw_cholesky_bordered(bordered, N, LD, end, BORDER, 0) == N);
+    for (size_t i = 0; i < N; i++)
+        for (size_t j = i; j < N; j++)
+            CHECK_NEAR(bordered[i * LD + j], dense[i * LD + j], 1e-12 * dense[i * LD + i] + 1e-12);
+    lw_cholesky_bordered_inverse(bordered, N, LD, end, BORDER, inverse);
+    lw_cholesky_invert_factor(dense, N, LD);
+    for (size_t i = 0; i < N; i++)
+        for (size_t j = 0; j < N; j++) {
+            size_t a = i > j ? i : j;
+            double want = lw_dot(dense + i * LD + a, dense + j * LD + a, N - a);
+            CHECK_NEAR(inverse[i * N + j], want, 1e-11 * sqrt(inverse[i * N + i] * inverse[j * N + j]));
+        }
+    bool skip[N] = {false};
+    skip[2] = skip[17] = skip[N - 3] = true;
+    CHECK(lw_invert_normal(&engine, h, N, skip, c[0], &weakest, NULL) == LW_OK);
+    CHECK(lw_invert_bordered(&engine, h, N, BORDER, skip, c[1], &weakest, NULL) == LW_OK);
+    for (size_t i = 0; i < N; i++)
+        for (size_t j = 0; j < N; j++)
+            CHECK_NEAR(c[1][i * N + j], c[0][i * N + j], 1e-11 * sqrt(c[0][i * N + i] * c[0][j * N + j]));
+    /* a parameter that another one repeats is named either way */
+    for (size_t j = 0; j < N; j++)
+        h[41 * N + j] = h[j * N + 41] = j < 40 ? h[40 * N + j] : h[j * N + 40];
+    h[41 * N + 40] = h[40 * N + 41] = h[41 * N + 41] = h[40 * N + 40];
+    for (size_t border = 0; border <= BORDER; border += BORDER) {
+        CHECK(lw_invert_bordered(&engine, h, N, border, NULL, c[1], &weakest, NULL) == LW_NOT_SUPPORTED);
+        CHECK(weakest == 40 || weakest == 41);
+    }
+}
+
 int main(void)
 {
     lw_engine_begin(&engine);
@@ -298,6 +363,7 @@ int main(void)
     test_scales();
     test_refusals();
     test_inverse();
+    test_border();
     lw_engine_end(&engine);
     return lw_checks_end();
 }
