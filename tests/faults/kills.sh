@@ -38,9 +38,10 @@ done
 check "the calibration works"
 series() {
   exec "$engine" "$root/scripts/milling_series.lua" scans='powder_*.xy' material=nickel \
-    calibration=good/calibration.json out="$1"
+    calibration=good/calibration.json out="$1" workers="${2:-1}"
 }
-plain() { sed -E '/"(date|out)": /d' "$1/results.json"; } # the folder is one of the inputs that a record names
+# folder and workers are inputs, which a record names
+plain() { sed -E '/"(date|out|workers)": /d' "$1/results.json"; }
 
 began=$(now)
 if ! (series whole) >/dev/null 2>err </dev/null; then
@@ -99,7 +100,7 @@ while [ $done -lt "$kills" ]; do
   each=0
   while [ $done -lt "$kills" ] && [ $each -lt 8 ]; do
     wait=$(awk -v seed=$((seed * 100003 + done)) -v whole="$whole" 'BEGIN { srand(seed); rand(); print rand() * whole }')
-    (series "out$round") >/dev/null 2>&1 </dev/null &
+    (series "out$round" $((done % 2 + 1))) >/dev/null 2>&1 </dev/null &
     child=$!
     sleep "$wait"
     kill -KILL "$child" 2>/dev/null || early=$((early + 1)) # it had ended by itself
@@ -113,7 +114,7 @@ while [ $done -lt "$kills" ]; do
     fi
     done=$((done + 1)) each=$((each + 1))
   done
-  (series "out$round") >/dev/null 2>err </dev/null
+  (series "out$round" 2) >/dev/null 2>err </dev/null
   check "a run after $each kills ends well"
   plain "out$round" | cmp -s - reference.json
   check "and its results are those of a run that was never killed"
