@@ -10,6 +10,7 @@
 #include <signal.h>
 #include <stdint.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
 #include <sys/types.h>
@@ -172,13 +173,14 @@ lw_status lw_write_file(lw_engine *engine, const char *path, const void *bytes, 
 /* The process that makes a temporary file of this name, or 0 if it is no such name. */
 static pid_t maker_of(const char *name)
 {
-    long process = 0;
-    int attempt = 0, n = 0;
-    char again[64];
-    if (sscanf(name, ".lw-%9ld-%3d.part%n", &process, &attempt, &n) != 2 || n == 0 || process <= 0)
+    char *end, again[64];
+    if (strncmp(name, ".lw-", 4) != 0)
+        return 0;
+    long process = strtol(name + 4, &end, 10), attempt = *end == '-' ? strtol(end + 1, &end, 10) : -1;
+    if (process <= 0 || process > INT_MAX || attempt < 0)
         return 0;
     /* spelt just so: no signs, blanks or leading noughts, and nothing behind */
-    snprintf(again, sizeof again, ".lw-%ld-%d.part", process, attempt);
+    snprintf(again, sizeof again, ".lw-%ld-%ld.part", process, attempt);
     return strcmp(again, name) == 0 ? (pid_t)process : 0;
 }
 

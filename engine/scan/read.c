@@ -24,7 +24,7 @@ static lw_status read_content(lw_engine *engine, lw_content *content, const lw_s
     lw_status status = file == NULL ? LW_OUT_OF_MEMORY : LW_OK;
     if (status == LW_OK) {
         size_t i = 0;
-        while (!readers[i]->claims(content))
+        while (i + 1 < sizeof readers / sizeof readers[0] && !readers[i]->claims(content))
             i++;
         status = readers[i]->read(engine, content, options, &columns, err);
     }
