@@ -143,8 +143,8 @@ local function grid(name, title, label, bias)
   table.sort(strains, function(one, other) return (one > 0 and one or 1) < (other > 0 and other or 1) end)
   for i, strain in ipairs(strains) do
     local of = strains[strain]
-    local label = strain == 0 and "no strain" or ("strain %g %%"):format(100 * strain)
-    series[i] = { kind = "points", label = label, x = of.x, y = of.y }
+    local which = strain == 0 and "no strain" or ("strain %g %%"):format(100 * strain)
+    series[i] = { kind = "points", label = which, x = of.x, y = of.y }
   end
   if #series == 0 then return false end
   return lw.figure {

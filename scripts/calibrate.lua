@@ -13,8 +13,9 @@ local job = lw.recipe {
     previous  = { kind = "file", default = "", help = "calibration.json of the time before, to compare with" },
     geometry  = { kind = "text", default = "auto", choices = { "auto", "reflection", "capillary" },
                   help = "flat specimen in reflection, or capillary; auto: capillary for a plain wavelength" },
-    profile   = { kind = "text", default = "empirical", choices = { "empirical", "optical" },
-                  help = "optical: the convolution of the geometry's aberrations, refined to the scan (reflection)" },
+    profile   = { kind = "text", default = "empirical", choices = { "empirical", "optical", "auto" },
+                  help = "optical: the convolution of the geometry's aberrations, refined to the scan (reflection); "
+                  .. "auto: that, where the header gives the slits and it describes the scan better" },
     radius    = { kind = "number", default = "", unit = "mm", least = 10, most = 2000,
                   help = "goniometer radius; left out: as the scan's header says, else 200" },
     noise     = { kind = "text", default = "auto", choices = { "auto", "counts", "sigma", "scaled" },

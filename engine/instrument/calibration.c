@@ -12,7 +12,8 @@
 #include <string.h>
 
 static const double degree = M_PI / 180;
-static const char *const profile_names[] = {"empirical", "optical", NULL};
+enum { PROFILE_OPTICAL = 1, PROFILE_AUTO };
+static const char *const profile_names[] = {"empirical", "optical", "auto", NULL};
 static const char *const geometry_names[] = {"auto", "reflection", "capillary", NULL};
 
 #define AT(field) offsetof(lw_calibrate_options, field)
@@ -25,7 +26,8 @@ const lw_option lw_calibrate_option_table[] = {
      "aberrations of position to fit: zero_shift, displacement, flat_specimen, transparency, wavelength; auto: what the "
      "lines give evidence for"},
     {"profile", LW_OPTION_CHOICE, "", "empirical", 0, 0, profile_names, AT(profile),
-     "empirical: width functions of the line fit; optical: convolution of the geometry's aberrations, refined to the scan"},
+     "empirical: width functions of the line fit; optical: convolution of the geometry's aberrations, refined to the scan; "
+     "auto: optical where the scan's header gives the slits and it describes the scan better"},
     {"source_width", LW_OPTION_NUMBER, "mm", "0.04", 0, 10, NULL, AT(source_width_mm),
      "optical: width of the source as the specimen sees it"},
     {"slit_width", LW_OPTION_NUMBER, "mm", "from the scan's header, else refined", 0, 20, NULL, AT(slit_width_mm),
@@ -387,14 +389,19 @@ lw_status lw_calibrate(lw_engine *engine, const lw_lines *lines, const lw_standa
     lw_calibration_lines rows = {.lines = lines, .standard = standard};
     calibration->aberrations.radius_mm = lw__goniometer_radius(options, lines->scan, &rows.radius_from);
     rows.given = options->aberrations.n > 0 && strcmp(options->aberrations.item[0], "auto") != 0;
-    candidates usual = candidates_for(lines, capillary, options->profile == 1);
-    lw_status status = rows.given ? lw__take_named(options->aberrations.item, options->aberrations.n, &calibration->aberrations, err)
-                                  : lw__take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
     lw_refined refined = {0};
-    if (status == LW_OK && options->profile == 1) {
+    bool optical = options->profile == PROFILE_OPTICAL;
+    lw_status status = LW_OK;
+    if (options->profile == PROFILE_AUTO)
+        status = lw__optical_or_not(engine, lines, standard, options, calibration, &refined, &optical, err);
+    else if (optical)
         status = lw__calibrate_optical(engine, lines, standard, options, NULL, calibration, &refined, err);
+    if (optical)
         rows.refined = &refined;
-    }
+    candidates usual = candidates_for(lines, capillary, optical);
+    if (status == LW_OK)
+        status = rows.given ? lw__take_named(options->aberrations.item, options->aberrations.n, &calibration->aberrations, err)
+                                  : lw__take_named(usual.names[usual.n - 1], LW_ABERRATION_MOST, &calibration->aberrations, err);
     if (status == LW_OK)
         status = calibrate_positions(engine, lines, standard, calibration, &refined, &rows, &scratch, err);
     if (status == LW_OK && calibration->has_optical)

@@ -21,6 +21,7 @@ typedef struct lw_calibration {
     double refined_covariance[LW_REFINED_MOST][LW_REFINED_MOST];
     double valid_low_deg, valid_high_deg;
     char verdict[16];           /* "pass", "attention", "fail" */
+    char profile_why[500];      /* which profile was chosen and why, with profile = "auto"; else "" */
     char hash[65];              /* SHA-256 of the record it was saved to or loaded from; "" before */
     lw_node *record;            /* the whole record as a tree: linewright/calibration/1 without provenance */
 } lw_calibration;
@@ -30,7 +31,8 @@ typedef struct lw_calibrate_options {
     int geometry;                /* "auto", "reflection", "capillary"; auto: capillary for a plain wavelength */
     lw_option_list aberrations;  /* names; empty or "auto" = by evidence (AICc) among zero_shift, displacement,
                                     flat_specimen, transparency (reflection); zero_shift, wavelength (capillary) */
-    int profile;                 /* "empirical" (width functions), "optical" (from the geometry) */
+    int profile;                 /* "empirical" (width functions), "optical" (from the geometry), "auto" (optical where
+                                    the scan's header gives the slits and the evidence is for it) */
     /* the geometry of the optical profile; NAN = from the scan's header, or usual */
     double source_width_mm, slit_width_mm, divergence_deg, source_length_mm, specimen_length_mm, slit_length_mm,
         soller_rad, attenuation_per_mm, thickness_mm, tilt_deg;

@@ -6,6 +6,7 @@
 #include "numeric/cholesky.h"
 
 #include <math.h>
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -166,6 +167,50 @@ lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const 
             calibration->refined_covariance[i][j] = refined->covariance[i][j];
     }
     return lw__optical_profile(engine, calibration, refined->position[0], refined->position[refined->n_lines - 1], err);
+}
+
+lw_status lw__optical_or_not(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                             const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
+                             bool *optical, lw_error *err)
+{
+    char *why = calibration->profile_why;
+    const size_t size = sizeof calibration->profile_why;
+    const char *header = lines->scan->header;
+    *optical = false;
+    if (strcmp(calibration->geometry, "reflection") != 0) {
+        snprintf(why, size, "empirical: the specimen is not flat");
+        return LW_OK;
+    }
+    if (isnan(chosen(options->slit_width_mm, lw__in_header(header, "receiving slit", NAN))) ||
+        isnan(chosen(options->divergence_deg, lw__in_header(header, "divergence slit", NAN)))) {
+        snprintf(why, size, "empirical: neither the scan's header nor the options give receiving slit and divergence");
+        return LW_OK;
+    }
+    lw_error each = LW_ERROR_NONE;
+    lw_status status = lw__calibrate_optical(engine, lines, standard, options, NULL, calibration, refined, &each);
+    if (status == LW_OK) {
+        size_t widths = 0;
+        for (int i = 0; i < LW_WIDTH_PARAMETERS; i++)
+            widths += lines->smooth.refined[i];
+        /* chi-square + 2 K (Akaike 1974): positions and areas are in both */
+        double by_widths = refined->chi2_as_fitted + 2 * (double)(2 * refined->n_lines + widths + lines->n_background);
+        double by_geometry = refined->chi2 + 2 * (double)refined->n_parameters;
+        *optical = by_geometry < by_widths;
+        snprintf(why, size, "%s: Akaike's criterion is %.1f %s than with %s", *optical ? "optical" : "empirical",
+                 fabs(by_geometry - by_widths), "lower", *optical ? "width functions" : "the geometry's profile");
+    } else if (status == LW_NO_CONVERGENCE || status == LW_NOT_SUPPORTED)
+        snprintf(why, size, "empirical: %s", each.message);
+    else {
+        *err = each;
+        return status;
+    }
+    if (!*optical) {
+        calibration->has_optical = false;
+        calibration->n_refined = 0;
+        calibration->profile = lines->smooth;
+        *refined = (lw_refined){0};
+    }
+    return LW_OK;
 }
 
 bool lw__optical_transparency(const lw_calibrate_options *options, const lw_calibration *calibration, lw_quantity *attenuation)

@@ -26,6 +26,13 @@ lw_status lw__calibrate_optical(lw_engine *engine, const lw_lines *lines, const 
  * -sin(2theta)/(2 mu R): true if the options leave it open and the shift is there (3 u). */
 bool lw__optical_transparency(const lw_calibrate_options *options, const lw_calibration *calibration, lw_quantity *attenuation);
 
+/* With profile = "auto": whether the optical profile is to be used, which then is the calibration's; profile_why says why or
+ * why not. It is where the specimen is flat, the slits are known from the header or the options, and Akaike's criterion, at the
+ * points of the lines that stand alone, is lower than that of the width functions. */
+lw_status lw__optical_or_not(lw_engine *engine, const lw_lines *lines, const lw_standard *standard,
+                             const lw_calibrate_options *options, lw_calibration *calibration, lw_refined *refined,
+                             bool *optical, lw_error *err);
+
 /* The quantities that were refined, borrowed. */
 lw_refined_set lw__refined_set(const lw_calibration *calibration);
 

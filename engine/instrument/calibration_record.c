@@ -284,6 +284,8 @@ lw_status lw__calibration_record(lw_calibration *calibration, const lw_calibrati
     lw_add_vector(root, "valid_two_theta", range, 2, "deg", err);
     write_aberrations(&calibration->aberrations, root, err);
     lw_add_quantity(root, "goniometer_radius", lw_quantity_of(calibration->aberrations.radius_mm, 0, "mm"), rows->radius_from, err);
+    if (calibration->profile_why[0] != '\0')
+        lw_add_text(root, "profile_chosen", calibration->profile_why, err);
     write_profile(&calibration->profile, root, err);
     if (calibration->has_optical)
         lw__optical_write(calibration, rows->refined, (lw_node *)lw_node_get(root, "profile"), err);

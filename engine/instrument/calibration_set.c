@@ -406,6 +406,26 @@ static lw_status calibrate(lw_engine *engine, const lw_calibration_scan *scans, 
     return lw__calibration_record(calibration, rows, set->n, set, err);
 }
 
+/* profile = "auto" for several scans: as the first of those that carry the profile would choose by itself. */
+static lw_status choose_profile(lw_engine *engine, const lw_calibration_scan *scans, size_t n, const lw_calibrate_options *options,
+                                lw_set *set, lw_calibration *calibration, lw_error *err)
+{
+    set->optical = options->profile == 1;
+    if (options->profile < 2)
+        return LW_OK;
+    size_t first = 0;
+    while (first + 1 < n && scans[first].positions_only)
+        first++;
+    lw_calibration *alone = NULL;
+    lw_status status = lw_calibrate(engine, scans[first].lines, scans[first].standard, options, &alone, err);
+    if (status == LW_OK) {
+        set->optical = alone->has_optical;
+        memcpy(calibration->profile_why, alone->profile_why, sizeof calibration->profile_why);
+    }
+    lw_calibration_free(alone);
+    return status;
+}
+
 lw_status lw_calibrate_set(lw_engine *engine, const lw_calibration_scan *scans, size_t n, const lw_calibrate_options *options,
                            lw_calibration **out, lw_error *err)
 {
@@ -434,11 +454,12 @@ lw_status lw_calibrate_set(lw_engine *engine, const lw_calibration_scan *scans, 
     if (set != NULL) {
         set->n = n;
         set->options = options;
-        set->optical = options->profile == 1;
         set->capillary = options->geometry == 2 || (options->geometry == 0 && scans[0].lines->radiation.is_plain);
         snprintf(calibration->geometry, sizeof calibration->geometry, "%s", set->capillary ? "capillary" : "reflection");
         calibration->radiation = scans[0].lines->radiation;
-        status = calibrate(engine, scans, set, calibration, &scratch, err);
+        status = choose_profile(engine, scans, n, options, set, calibration, err);
+        if (status == LW_OK)
+            status = calibrate(engine, scans, set, calibration, &scratch, err);
         for (size_t k = 0; k < n; k++)
             lw_lines_free(set->scan[k].again);
     }

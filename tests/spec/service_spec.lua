@@ -209,6 +209,29 @@ describe("the optical profile", function()
     end
   end)
 
+  it("is chosen where the header gives the slits and the evidence is for it, and the record says so", function()
+    local chosen = calibrate("lab6_before_service", { profile = "auto" })
+    assert.is_truthy(chosen.record.profile.optical)
+    assert.matches("^optical: Akaike", chosen.record.profile_chosen)
+    -- the same counts without the header
+    local scan = lw.read_scan(helper.demo .. "/lab6_before_service.xy", { radiation = "Cu Ka" })
+    local bare = lw.scan { two_theta = scan.two_theta, intensity = scan.intensity, radiation = "Cu Ka" }
+    local lines = lw.fit_lines(bare, lw.standard("lab6-660c"):reflections(bare), { widths = "smooth", axial = "soller" })
+    local other = lw.calibrate(lines, "lab6-660c", { profile = "auto", goniometer_radius = 217.5 })
+    assert.is_nil(other.record:get "profile.optical")
+    assert.matches("^empirical: neither", other.record.profile_chosen)
+    assert.matches("not flat", lw.calibrate(lines, "lab6-660c",
+      { profile = "auto", geometry = "capillary" }).record.profile_chosen)
+    -- slits that are far too wide describe the lines worse than width functions do
+    local wrong = lw.calibrate(lines, "lab6-660c",
+      { profile = "auto", goniometer_radius = 217.5, slit_width = 0.6, divergence = 0.75 })
+    assert.is_nil(wrong.record:get "profile.optical")
+    assert.matches("^empirical: ", wrong.record.profile_chosen)
+    assert.error_matches(function()
+      lw.calibrate(lines, "lab6-660c", { profile = "auto", slit_width = -1, divergence = 1 })
+    end, "slit_width")
+  end)
+
   it("refuses an impossible geometry", function()
     local function with(options)
       options.profile = "optical"

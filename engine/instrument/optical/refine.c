@@ -232,8 +232,14 @@ static lw_status refine(problem *q, lw_arena *arena, lw_refined *out, lw_error *
         return status;
     *out = (lw_refined){.geometry = q->optics[0].geometry, .n = n, .chi2 = normal.chi2, .n_parameters = size,
                         .iterations = outcome.iterations, .n_lines = q->n_lines};
-    for (size_t k = 0; k < q->n_lines; k++)
-        out->n_points += q->window[k].n;
+    for (size_t k = 0; k < q->n_lines; k++) {
+        const window *w = &q->window[k];
+        out->n_points += w->n;
+        for (size_t i = w->first; i < w->first + w->n; i++) {
+            double residual = q->lines->scan->intensity[i] - q->lines->fitted[i];
+            out->chi2_as_fitted += residual * residual / q->lines->variance[i];
+        }
+    }
     for (size_t i = 0; i < n; i++) {
         out->name[i] = fields[q->field[i]].name;
         out->value[i] = p[i];

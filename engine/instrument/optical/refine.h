@@ -28,7 +28,7 @@ typedef struct lw_refined {
     size_t n;
     const char *name[LW_REFINED_MOST];
     double value[LW_REFINED_MOST], covariance[LW_REFINED_MOST][LW_REFINED_MOST];
-    double chi2;
+    double chi2, chi2_as_fitted; /* the second: of the lines' own fit, at the same points */
     size_t n_points, n_parameters, iterations;
     size_t n_lines;
     size_t *line;           /* [n_lines], which of the fitted lines */
