@@ -8,7 +8,7 @@
 
 #include <math.h>
 
-#define LEAST 1e-4 /* of the observed line's transform, below which it does nothing */
+#define LEAST 1e-3 /* of the observed line's transform, below which it does nothing */
 
 /* Transform of the observed line at 0, step ...: its curve's and that of what the curve left. */
 static lw_status observed(const lw__job *job, double step, size_t *n, double *re, double *im)
