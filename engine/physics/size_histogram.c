@@ -14,8 +14,9 @@ double lw_size_histogram_moment(const lw_size_histogram *histogram, size_t node,
     return pow(lw_size_histogram_diameter(histogram, node), power) * ratio * ratio;
 }
 
-/* Integral of the side of a hat that rises from 0 at `foot` to 1 at `top` (ln D, either may be the larger) times the
- * coefficient of a sphere, over what lies above ln L; five points of Gauss and Legendre, the integrand being smooth there. */
+/* Integral of the side of a hat that rises from 0 at `foot` to 1 at `top` (ln D, either may be the larger)
+ * times the coefficient of a sphere, over what lies above ln L; five points of Gauss and Legendre, the
+ * integrand being smooth there. */
 static double side(double foot, double top, double log_length)
 {
     static const double node[5] = {-0.9061798459386639928, -0.5384693101056830910, 0, 0.5384693101056830910,
@@ -37,5 +38,6 @@ double lw_size_histogram_coefficient(const lw_size_histogram *histogram, size_t 
     if (!(length_nm > 0))
         return 1;
     double top = histogram->first + histogram->step * (double)node, log_length = log(length_nm);
-    return (side(top - histogram->step, top, log_length) + side(top + histogram->step, top, log_length)) / histogram->step;
+    return (side(top - histogram->step, top, log_length) + side(top + histogram->step, top, log_length)) /
+           histogram->step;
 }

@@ -21,8 +21,8 @@ size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line)
     return lw_pattern_background_row(pattern) + pattern->n_background + 2 * line;
 }
 
-/* The step of length, the middle of the grid by alternating signs, and the spline: its values at the points are those of
- * the coefficients' transform times (2 + cos)/3 (Unser et al. 1993). */
+/* The step of length, the middle of the grid by alternating signs, and the spline: its values at the points
+ * are those of the coefficients' transform times (2 + cos)/3 (Unser et al. 1993). */
 double lw_pattern_lift(const lw_pattern *pattern, size_t j)
 {
     double spline = (2 + cos(2 * PI * (double)j / (double)pattern->n_fft)) / 3;
@@ -136,7 +136,8 @@ static double neighbours(double s, double period)
     return (PI / period) * (PI / period) * (1 / (sine * sine) - 1 / (x * x));
 }
 
-/* Their spline's coefficients: the values less a sixth of their second difference (the next term is below 1e-10). */
+/* Their spline's coefficients: the values less a sixth of their second difference (the next term is below
+ * 1e-10). */
 static void set_neighbours(lw_pattern *pattern)
 {
     double period = 1 / pattern->length_step, cell = period / (double)pattern->n_fft;
@@ -161,7 +162,8 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
                             .n_background = lines->n_background,
                             .rung = lw_pattern_rung_for(engine->cpu)};
     choose_lengths(pattern);
-    if (lw_pattern_shape_begin(&pattern->shape, pattern->n_lengths, pattern->length_step, histogram, arena, err) != LW_OK)
+    if (lw_pattern_shape_begin(&pattern->shape, pattern->n_lengths, pattern->length_step, histogram, arena,
+                               err) != LW_OK)
         return err->status;
     pattern->n_parameters = lw_pattern_position_row(pattern, lines->n);
     size_t n = pattern->n, m = pattern->n_lengths, f = pattern->n_fft;
@@ -210,9 +212,9 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
         for (size_t j = 0; j < pattern->n_background; j++)
             pattern->basis[j * n + i] = term[j];
     }
-    /* P/sin^2(theta) is for lines that are narrow against s. The mean over orientations of a crystal whose transform is
-     * round is exactly profile(s - s0)/(s s0): across a line the factor goes as 1/s (Guinier 1963 X-ray Diffraction,
-     * ch. 5, from the integral over the sphere of radius s) */
+    /* P/sin^2(theta) is for lines that are narrow against s. The mean over orientations of a crystal whose
+     * transform is round is exactly profile(s - s0)/(s s0): across a line the factor goes as 1/s (Guinier
+     * 1963 X-ray Diffraction, ch. 5, from the integral over the sphere of radius s) */
     for (size_t i = 0; i < n && lines->n > 0 && lines->with_factor; i++)
         pattern->factor[i] *= pattern->s[i] / s_of(pattern, lines->line[0].two_theta.value);
     for (size_t k = 0; k < lines->n; k++) {
@@ -237,9 +239,11 @@ void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, doub
     }
     double sum = 0;
     for (size_t b = 0; histogram != NULL && b < histogram->n; b++) {
-        /* volume over ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929 J. Franklin Inst. 207, 369) */
+        /* volume over ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929 J. Franklin Inst. 207,
+         * 369) */
         double middle = log(spheres->median_nm) + 3 * spheres->sigma * spheres->sigma;
-        double off = (log(lw_size_histogram_diameter(histogram, b)) - middle) / fmax(spheres->sigma, 0.7 * histogram->step);
+        double off = (log(lw_size_histogram_diameter(histogram, b)) - middle) /
+                     fmax(spheres->sigma, 0.7 * histogram->step);
         sum += p[LW_PATTERN_SIZE + b] = exp(-0.5 * off * off);
     }
     for (size_t b = 0; histogram != NULL && b < histogram->n; b++)
@@ -248,8 +252,7 @@ void lw_pattern_start(const lw_pattern *pattern, const lw_spheres *spheres, doub
         const lw_line *line = pattern->line[k].line;
         double per = degree * cos(line->two_theta.value * degree / 2) /
                      lw_radiation_wavelength(&pattern->profiles->lines->radiation);
-        /* the fit's area is over degrees of the line's own axis; its factor was 1 at the line, here at line 0
-         */
+        /* the fit's area is over degrees of the line's own axis; its factor was 1 at the line, here at line 0 */
         double factor =
             lw_line_relative_factor(pattern->profiles->lines, pattern->line[0].line, line->two_theta.value);
         if (pattern->profiles->lines->with_factor)

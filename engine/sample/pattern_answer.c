@@ -69,8 +69,8 @@ void lw_pattern_answer_propagate(const lw_pattern_fitter *f, lw_pattern_form *fo
 
 void lw_pattern_answer_lengths(lw_pattern_fitter *f)
 {
-    static const double nice[] = {0.5, 1, 1.5, 2, 3, 4, 5, 6, 8, 10, 12, 15, 20, 25, 30, 40, 50, 60, 80, 100, 150, 200,
-                                  300, 400};
+    static const double nice[] = {0.5, 1,  1.5, 2,  3,  4,  5,  6,   8,   10,  12,  15,
+                                  20,  25, 30,  40, 50, 60, 80, 100, 150, 200, 300, 400};
     lw_pattern_answer *a = f->answer;
     double most = fmin(1.3 * 0.75 * lw_pattern_shape_moment(&f->pattern.shape, f->p, 1), 3 * f->half_length);
     a->n_lengths = 0;
@@ -102,11 +102,11 @@ void lw_pattern_answer_weigh(lw_pattern_answer *a)
 }
 
 /* Mean by evidence. Its spread over the forms counts forms in reach more than evidence does: every form is an
- * approximation of what the powder is, so that a difference in chi-square is worth less than if one of them were true.
- * The likelihood is raised to a power for it (Miller & Dunson 2019 J. Am. Stat. Assoc. 114, 1113); at a twentieth a form
- * 28 in chi-square behind the best still counts half. Forms read the same counts: a form that determines a quantity less
- * well than the best lies off by as much as the variances differ without meaning anything else (Hausman 1978 Econometrica
- * 46, 1251); only what is beyond that is spread. */
+ * approximation of what the powder is, so that a difference in chi-square is worth less than if one of them
+ * were true. The likelihood is raised to a power for it (Miller & Dunson 2019 J. Am. Stat. Assoc. 114, 1113);
+ * at a twentieth a form 28 in chi-square behind the best still counts half. Forms read the same counts: a
+ * form that determines a quantity less well than the best lies off by as much as the variances differ without
+ * meaning anything else (Hausman 1978 Econometrica 46, 1251); only what is beyond that is spread. */
 #define COARSE 0.05
 
 double lw_pattern_answer_reach(const lw_pattern_form *form)
@@ -138,13 +138,14 @@ void lw_pattern_answer_join(lw_pattern_answer *a)
             for (size_t i = 0; i < a->n_forms; i++)
                 if (a->form[i].weight > 0)
                     sum += a->form[i].weight * a->form[i].covariance[k][l] +
-                           coarse[i] / total * beyond_chance(a, &a->form[i], k) * beyond_chance(a, &a->form[i], l);
+                           coarse[i] / total * beyond_chance(a, &a->form[i], k) *
+                               beyond_chance(a, &a->form[i], l);
             a->covariance[k][l] = sum;
         }
 }
 
-/* Factor on u as the fit of the lines has it: for a chi-square that chance does not give, and for residuals that go
- * together, whose long-run variance is larger (noise that is itself correlated included). */
+/* Factor on u as the fit of the lines has it: for a chi-square that chance does not give, and for residuals
+ * that go together, whose long-run variance is larger (noise that is itself correlated included). */
 void lw_pattern_answer_misfit(const lw_pattern_fitter *f)
 {
     lw_pattern_answer *a = f->answer;

@@ -13,7 +13,7 @@ typedef struct evaluation {
     const double *p;
     bool slopes;
     bool anisotropy, variation, fall; /* their rows are wanted */
-    double *first, *second; /* [n] sums over lines of area x profile, and the same x s0^2 */
+    double *first, *second;           /* [n] sums over lines of area x profile, and the same x s0^2 */
 } evaluation;
 
 static bool wanted(const lw_pattern *m, size_t row)
@@ -51,8 +51,9 @@ static const double *grid_of(lw_pattern *m, size_t which, const double *curve, s
     return grid;
 }
 
-/* How the line's coefficients fall with strain, into m->falls; returns after how many nothing is left. Where strain varies
- * between crystals m->exponent takes ln(1 + kappa x)/kappa, m->thinned its slope to x, 1/(1 + kappa x). */
+/* How the line's coefficients fall with strain, into m->falls; returns after how many nothing is left. Where
+ * strain varies between crystals m->exponent takes ln(1 + kappa x)/kappa, m->thinned its slope to x, 1/(1 +
+ * kappa x). */
 static size_t set_falls(lw_pattern *m, const lw_pattern_line *line, double strength, double kappa, bool thin)
 {
     if (!thin)
@@ -119,19 +120,20 @@ static void add_line(const evaluation *e, size_t k)
         bool own = wanted(m, LW_PATTERN_STRAIN + i);
         if (!own && !(turned && shape->combine[i] != 0))
             continue;
-        /* the slope to ln of the coefficient is -strain scale x slope of the displacement, and the anisotropy's slope a
-         * combination of these */
+        /* the slope to ln of the coefficient is -strain scale x slope of the displacement, and the
+         * anisotropy's slope a combination of these */
         tail = -unit * shape->strain_kink_slope[i];
         double by_strain = -strain * scale * lift * area;
         const double *curve = shape->strained[i];
         for (size_t j = 0; j < count && thin; j++)
             m->work[j] = curve[j] * m->thinned[j];
-        channel[n] = (lw_pattern_channel){.grid = grid_of(m, n, thin ? m->work : curve, count, tail),
-                                          .tail = tail,
-                                          .sum = own ? shared(m, LW_PATTERN_STRAIN + i) : NULL,
-                                          .share = by_strain,
-                                          .also = turned ? shared(m, LW_PATTERN_ANISOTROPY) : NULL,
-                                          .also_share = -line->hkl_sum / scale * shape->combine[i] * by_strain};
+        channel[n] =
+            (lw_pattern_channel){.grid = grid_of(m, n, thin ? m->work : curve, count, tail),
+                                 .tail = tail,
+                                 .sum = own ? shared(m, LW_PATTERN_STRAIN + i) : NULL,
+                                 .share = by_strain,
+                                 .also = turned ? shared(m, LW_PATTERN_ANISOTROPY) : NULL,
+                                 .also_share = -line->hkl_sum / scale * shape->combine[i] * by_strain};
         n++;
     }
     if (e->variation) {
@@ -163,7 +165,8 @@ static size_t list_sources(const evaluation *e, lw_pattern_source *source)
         if (!wanted(m, row))
             continue;
         if (row < background) {
-            if ((row < LW_PATTERN_ANISOTROPY && row >= m->shape.n_strain) || (row == LW_PATTERN_ANISOTROPY && !e->anisotropy))
+            if ((row < LW_PATTERN_ANISOTROPY && row >= m->shape.n_strain) ||
+                (row == LW_PATTERN_ANISOTROPY && !e->anisotropy))
                 continue;
             source[n++] = (lw_pattern_source){shared(m, row), row, 1, true};
         } else if (row < lines) {
@@ -171,7 +174,8 @@ static size_t list_sources(const evaluation *e, lw_pattern_source *source)
         } else {
             size_t own = row - lines;
             double lift = m->line[own / 2].lift;
-            source[n++] = (lw_pattern_source){m->own + own * m->n, row, own % 2 == 0 ? lift * e->p[row + 1] : lift, true};
+            source[n++] = (lw_pattern_source){m->own + own * m->n, row,
+                                              own % 2 == 0 ? lift * e->p[row + 1] : lift, true};
         }
     }
     return n;
@@ -182,7 +186,8 @@ static void add_columns(const evaluation *e, const double *residual, lw_normal *
 {
     lw_pattern *m = e->m;
     lw_pattern_source *list = m->source;
-    size_t count = list_sources(e, list), padded = (count + LW_PATTERN_TILE - 1) / LW_PATTERN_TILE * LW_PATTERN_TILE;
+    size_t count = list_sources(e, list),
+           padded = (count + LW_PATTERN_TILE - 1) / LW_PATTERN_TILE * LW_PATTERN_TILE;
     memset(m->total, 0, lw_pattern_total_size(padded) * sizeof(double));
     for (size_t a = count; a < padded; a++) {
         memset(m->column + a * LW_PATTERN_BLOCK, 0, LW_PATTERN_BLOCK * sizeof(double));
@@ -190,7 +195,8 @@ static void add_columns(const evaluation *e, const double *residual, lw_normal *
     }
     for (size_t first = 0; first < m->n; first += LW_PATTERN_BLOCK) {
         size_t points = m->n - first < LW_PATTERN_BLOCK ? m->n - first : LW_PATTERN_BLOCK;
-        m->rung->columns(points, first, list, count, m->fallen, m->weight, residual, m->column, m->weighted, g);
+        m->rung->columns(points, first, list, count, m->fallen, m->weight, residual, m->column, m->weighted,
+                         g);
         if (normal != NULL)
             m->rung->multiply(padded, m->weighted, m->column, m->total);
     }
@@ -209,8 +215,8 @@ static void set_fall(lw_pattern *m, double fall)
     m->fallen_at = fall;
 }
 
-static lw_status evaluate(lw_pattern *m, const double *p, bool slopes, lw_normal *normal, const double *difference, double *g,
-                          lw_error *err)
+static lw_status evaluate(lw_pattern *m, const double *p, bool slopes, lw_normal *normal,
+                          const double *difference, double *g, lw_error *err)
 {
     if (normal != NULL && !possible(m, p)) {
         normal->chi2 = INFINITY;
@@ -220,7 +226,8 @@ static lw_status evaluate(lw_pattern *m, const double *p, bool slopes, lw_normal
     if (status != LW_OK)
         return status;
     size_t n = m->n;
-    evaluation e = {.m = m, .p = p, .slopes = slopes, .first = m->of_lines, .second = shared(m, LW_PATTERN_SHARED_MOST)};
+    evaluation e = {
+        .m = m, .p = p, .slopes = slopes, .first = m->of_lines, .second = shared(m, LW_PATTERN_SHARED_MOST)};
     for (size_t k = 0; k < m->n_lines && wanted(m, LW_PATTERN_ANISOTROPY); k++)
         e.anisotropy |= slopes && m->line[k].hkl_sum != 0;
     e.variation = slopes && wanted(m, LW_PATTERN_VARIATION);
@@ -258,7 +265,8 @@ static lw_status evaluate(lw_pattern *m, const double *p, bool slopes, lw_normal
     m->penalty = 0;
     for (size_t i = 0; i < sizeof m->prior / sizeof *m->prior && normal != NULL; i++)
         if (m->prior[i].n > 0)
-            m->penalty += lw_pattern_prior_add(&m->prior[i], p, slopes ? normal : &(lw_normal){.n = m->n_parameters});
+            m->penalty +=
+                lw_pattern_prior_add(&m->prior[i], p, slopes ? normal : &(lw_normal){.n = m->n_parameters});
     if (normal != NULL)
         normal->chi2 = chi2 + m->penalty;
     return LW_OK;
@@ -269,7 +277,8 @@ lw_status lw_pattern_evaluate(void *user, const double *p, bool want_normal, lw_
     return evaluate(user, p, want_normal, normal, NULL, NULL, err);
 }
 
-lw_status lw_pattern_project(lw_pattern *pattern, const double *p, const double *difference, double *g, lw_error *err)
+lw_status lw_pattern_project(lw_pattern *pattern, const double *p, const double *difference, double *g,
+                             lw_error *err)
 {
     return evaluate(pattern, p, true, NULL, difference, g, err);
 }

@@ -11,22 +11,28 @@
 static lw_pattern_form named(const lw_strain_form *strain)
 {
     if (strain == NULL)
-        return (lw_pattern_form){.name = "knots",
-                                 .title = "free at knots, smooth between them",
-                                 .source = "Green & Silverman (1994) Nonparametric Regression and Generalized Linear Models; "
-                                           "smoothness: MacKay (1992) Neural Comput. 4, 415",
-                                 .why = ""};
+        return (lw_pattern_form){
+            .name = "knots",
+            .title = "free at knots, smooth between them",
+            .source = "Green & Silverman (1994) Nonparametric Regression and Generalized Linear Models; "
+                      "smoothness: MacKay (1992) Neural Comput. 4, 415",
+            .why = ""};
     return (lw_pattern_form){
         .name = strain->name, .title = strain->title, .source = strain->source, .strain = strain, .why = ""};
 }
 
 static lw_pattern_form without_strain(void)
 {
-    return (lw_pattern_form){
-        .name = "none", .title = "no strain", .source = "", .strain = &lw_strain_constant, .none = true, .why = ""};
+    return (lw_pattern_form){.name = "none",
+                             .title = "no strain",
+                             .source = "",
+                             .strain = &lw_strain_constant,
+                             .none = true,
+                             .why = ""};
 }
 
-/* The forms to try, the constant first: it tells whether there is strain at all. The free one starts from a decaying one. */
+/* The forms to try, the constant first: it tells whether there is strain at all. The free one starts from a
+ * decaying one. */
 static void list_forms(const lw_pattern_request *request, lw_pattern_answer *a)
 {
     a->n_forms = 0;
@@ -38,7 +44,8 @@ static void list_forms(const lw_pattern_request *request, lw_pattern_answer *a)
     } else if (request->strain == LW_PATTERN_NO_STRAIN) {
         a->form[a->n_forms++] = without_strain();
     } else {
-        a->form[a->n_forms++] = named(request->strain == LW_PATTERN_KNOTS ? NULL : lw_strain_form_list[request->strain]);
+        a->form[a->n_forms++] =
+            named(request->strain == LW_PATTERN_KNOTS ? NULL : lw_strain_form_list[request->strain]);
     }
 }
 
@@ -47,8 +54,8 @@ static bool many_parameters(const lw_pattern_form *form)
     return form->strain == NULL || form->strain->n > 1;
 }
 
-/* Does the size stand out of its uncertainty? Looked at with the width of the distribution free and, where that says
- * no, held. */
+/* Does the size stand out of its uncertainty? Looked at with the width of the distribution free and, where
+ * that says no, held. */
 static bool size_stands_out(const lw_pattern_fitter *f)
 {
     size_t n = f->pattern.n_parameters, at = LW_PATTERN_INVERSE_SIZE;
@@ -129,7 +136,8 @@ static lw_status fit_forms(lw_pattern_fitter *f, look *first, lw_pattern_saved *
                 lw_strain_knots_make(KNOTS, size / 4, 2 * size, &a->knots);
             }
             if (form->strain == NULL || form->strain != decaying_form)
-                lw_pattern_fitter_restart_strain(f, decaying != NULL ? decaying_form : &lw_strain_constant, form);
+                lw_pattern_fitter_restart_strain(f, decaying != NULL ? decaying_form : &lw_strain_constant,
+                                                 form);
         }
         status = lw_pattern_fitter_minimise(f, form, err);
         if (status == LW_OK)
@@ -142,7 +150,8 @@ static lw_status fit_forms(lw_pattern_fitter *f, look *first, lw_pattern_saved *
     return status;
 }
 
-/* The best form with few parameters, and the best of all, again with strain that varies from crystal to crystal. */
+/* The best form with few parameters, and the best of all, again with strain that varies from crystal to
+ * crystal. */
 static lw_status try_variation(lw_pattern_fitter *f, lw_pattern_saved *after, lw_error *err)
 {
     lw_pattern_answer *a = f->answer;
@@ -199,7 +208,8 @@ static lw_status try_directions(lw_pattern_fitter *f, lw_pattern_saved *after, l
 }
 
 /* The forms that take part, with a histogram of sizes. */
-static lw_status fit_histogram(lw_pattern_fitter *f, lw_pattern_fitter *from, lw_pattern_saved *after, lw_error *err)
+static lw_status fit_histogram(lw_pattern_fitter *f, lw_pattern_fitter *from, lw_pattern_saved *after,
+                               lw_error *err)
 {
     lw_pattern_answer *a = f->answer;
     lw_pattern_fitter_restore(from, &after[a->best], &a->form[a->best]);
@@ -224,11 +234,13 @@ static lw_status fit_histogram(lw_pattern_fitter *f, lw_pattern_fitter *from, lw
 }
 
 /* Values, covariances and limits, once it is known which forms count for how much. */
-static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_pattern_saved *after, lw_error *err)
+static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_pattern_saved *after,
+                          lw_error *err)
 {
     lw_pattern_answer *a = f->answer;
     size_t n = f->pattern.n_parameters;
-    double *covariance = lw_arena_take(f->arena, n * n, sizeof *covariance, err), inverse_size = 0, u_inverse_size = 0;
+    double *covariance = lw_arena_take(f->arena, n * n, sizeof *covariance, err), inverse_size = 0,
+           u_inverse_size = 0;
     if (covariance == NULL)
         return LW_OUT_OF_MEMORY;
     lw_pattern_fitter_restore(f, &after[a->best], &a->form[a->best]);
@@ -271,7 +283,8 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
         a->size_volume_limit = ratio / limit;
     }
     const lw_pattern_form *best = &a->form[a->best];
-    bool told = best->strain == &lw_strain_constant || best->strain == NULL; /* their limit is one for every length */
+    bool told =
+        best->strain == &lw_strain_constant || best->strain == NULL; /* their limit is one for every length */
     if (best->none || (told && !first->strained))
         a->strain_limit = sqrt(fmax(first->strain, 0) + ONE_SIDED * fmax(first->u_strain, 0));
     return LW_OK;
@@ -280,7 +293,8 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
 lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const lw_pattern_request *request,
                          lw_arena *arena, lw_pattern_answer *answer, lw_error *err)
 {
-    lw_pattern_fitter f = {.request = request, .arena = arena, .answer = answer}, with_histogram = f, *last = &f;
+    lw_pattern_fitter f = {.request = request, .arena = arena, .answer = answer}, with_histogram = f,
+                      *last = &f;
     lw_pattern_saved after[LW_PATTERN_FORMS_MOST] = {{0}};
     look first;
     lw_pattern_answer *a = answer;
@@ -299,7 +313,8 @@ lw_status lw_pattern_fit(lw_engine *engine, const lw_profiles *profiles, const l
     lw_pattern_answer_misfit(&f);
     lw_pattern_answer_weigh(a);
     if (!a->form[a->best].fitted)
-        return lw_fail(err, LW_NO_CONVERGENCE, NULL, "no form of strain could be fitted to the whole pattern");
+        return lw_fail(err, LW_NO_CONVERGENCE, NULL,
+                       "no form of strain could be fitted to the whole pattern");
     if (a->n_forms > 1 && first.strained && !a->form[a->best].none)
         status = try_variation(&f, after, err);
     bool directions = lw_pattern_fitter_directions(&f);

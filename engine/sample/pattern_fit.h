@@ -27,7 +27,8 @@ enum {
     LW_ANSWER_DISPERSION,
     LW_ANSWER_STRAIN,    /* rms over half the volume-weighted size */
     LW_ANSWER_STRAIN_AT, /* first of the lengths */
-    LW_ANSWER_SHARE = LW_ANSWER_STRAIN_AT + LW_ANSWER_LENGTHS, /* first of the histogram's nodes: volume a unit of ln D */
+    LW_ANSWER_SHARE =
+        LW_ANSWER_STRAIN_AT + LW_ANSWER_LENGTHS, /* first of the histogram's nodes: volume a unit of ln D */
     LW_ANSWER_MOST = LW_ANSWER_SHARE + LW_PATTERN_SIZE_MOST
 };
 
@@ -55,15 +56,15 @@ typedef struct lw_pattern_answer {
     double value[LW_ANSWER_MOST];                      /* weighted mean over the forms */
     double covariance[LW_ANSWER_MOST][LW_ANSWER_MOST]; /* counting, misfit, calibration, choice of the form */
     double goodness, misfit; /* misfit: factor on u, 1 where chi-square is as it should be */
-    double disagreement;     /* of lines under the forms: the largest factor that it puts on a parameter's u */
-    double strain_limit;     /* 95 % upper limit of the rms strain where none stands out, else 0 */
+    double disagreement; /* of lines under the forms: the largest factor that it puts on a parameter's u */
+    double strain_limit; /* 95 % upper limit of the rms strain where none stands out, else 0 */
     double size_volume_limit, size_area_limit; /* nm, 95 % lower limits where no size stands out */
     bool size_unresolved, sigma_at_bound;
     bool anisotropic, anisotropy_at_bound;
     double anisotropy, u_anisotropy, anisotropy_limit; /* limit: of q at its bound, 95 % */
-    double u_variation; /* of kappa of the best form */
-    lw_size_histogram histogram; /* n = 0: lognormal spheres */
-    lw_strain_knots knots;       /* n = 0: not tried */
+    double u_variation;                                /* of kappa of the best form */
+    lw_size_histogram histogram;                       /* n = 0: lognormal spheres */
+    lw_strain_knots knots;                             /* n = 0: not tried */
 } lw_pattern_answer;
 
 /* Status: those of the fit; LW_NO_CONVERGENCE if no form could be fitted. */

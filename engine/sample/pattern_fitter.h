@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* What the files of the whole pattern's fit share (private to sample/): a pattern with its parameters, and the steps from
- * them to an answer. */
+/* What the files of the whole pattern's fit share (private to sample/): a pattern with its parameters, and
+ * the steps from them to an answer. */
 #ifndef LW_SAMPLE_PATTERN_FITTER_H
 #define LW_SAMPLE_PATTERN_FITTER_H
 
@@ -29,11 +29,13 @@ typedef struct lw_pattern_saved {
 
 /* ----------------------------------------------------------------------------------------- pattern_start.c */
 
-/* Lays out a pattern with lognormal spheres and bounds; f->request, arena and answer stand already. Start: breadths against
- * s, and the line fit. */
-lw_status lw_pattern_fitter_begin(lw_pattern_fitter *f, lw_engine *engine, const lw_profiles *profiles, lw_error *err);
+/* Lays out a pattern with lognormal spheres and bounds; f->request, arena and answer stand already. Start:
+ * breadths against s, and the line fit. */
+lw_status lw_pattern_fitter_begin(lw_pattern_fitter *f, lw_engine *engine, const lw_profiles *profiles,
+                                  lw_error *err);
 /* The same with a histogram (f->answer->histogram, set here), from where `from` ended with lognormal spheres. */
-lw_status lw_pattern_fitter_begin_histogram(lw_pattern_fitter *f, const lw_pattern_fitter *from, lw_error *err);
+lw_status lw_pattern_fitter_begin_histogram(lw_pattern_fitter *f, const lw_pattern_fitter *from,
+                                            lw_error *err);
 /* Parameters of a fit with lognormal spheres, as a start with the histogram. */
 void lw_pattern_fitter_carry(lw_pattern_fitter *f, const lw_pattern_fitter *from, const double *p);
 /* Whether the lines lie in directions that differ enough to tell them apart. */
@@ -41,29 +43,36 @@ bool lw_pattern_fitter_directions(const lw_pattern_fitter *f);
 
 /* ------------------------------------------------------------------------------------------ pattern_form.c */
 
-/* Minimises chi-square for the form from f->p; smoothed curves with the strength that the data make most probable. */
+/* Minimises chi-square for the form from f->p; smoothed curves with the strength that the data make most
+ * probable. */
 lw_status lw_pattern_fitter_minimise(lw_pattern_fitter *f, lw_pattern_form *form, lw_error *err);
 /* f->inverse at f->p; parameters that the data can't tell apart are held, one after another. */
 lw_status lw_pattern_fitter_invert(lw_pattern_fitter *f, lw_error *err);
 /* Weights follow the model where they are a matter of counting. */
 lw_status lw_pattern_fitter_weigh(lw_pattern_fitter *f, lw_error *err);
-/* Strain parameters of another form that give the same strain near half the size; free knots take the whole curve. */
-void lw_pattern_fitter_restart_strain(lw_pattern_fitter *f, const lw_strain_form *from, const lw_pattern_form *to);
+/* Strain parameters of another form that give the same strain near half the size; free knots take the whole
+ * curve. */
+void lw_pattern_fitter_restart_strain(lw_pattern_fitter *f, const lw_strain_form *from,
+                                      const lw_pattern_form *to);
 lw_status lw_pattern_fitter_save(lw_pattern_fitter *f, lw_pattern_saved *to, lw_error *err);
-void lw_pattern_fitter_restore(lw_pattern_fitter *f, const lw_pattern_saved *from, const lw_pattern_form *form);
+void lw_pattern_fitter_restore(lw_pattern_fitter *f, const lw_pattern_saved *from,
+                               const lw_pattern_form *form);
 /* What one u of each width parameter of the instrument does to the curve, into f->by_instrument. */
 lw_status lw_pattern_fitter_instrument(lw_pattern_fitter *f, lw_error *err);
 /* Covariance of the shared parameters at f->p, [n n]: counting times misfit^2, plus the calibration's part. */
-lw_status lw_pattern_fitter_covariance(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
+lw_status lw_pattern_fitter_covariance(lw_pattern_fitter *f, double misfit, double *covariance,
+                                       lw_error *err);
 
 /* -------------------------------------------------------------------------------------- pattern_positive.c */
 
-/* Puts what shares that can't be negative are known to in place of counting times misfit^2; right after the latter. */
+/* Puts what shares that can't be negative are known to in place of counting times misfit^2; right after the
+ * latter. */
 lw_status lw_pattern_fitter_positive(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
 
 /* ---------------------------------------------------------------------------------------- pattern_robust.c */
 
-/* Enlarges the covariance where lines contradict each other beyond chance, after lw_pattern_fitter_covariance. */
+/* Enlarges the covariance where lines contradict each other beyond chance, after
+ * lw_pattern_fitter_covariance. */
 lw_status lw_pattern_fitter_widen(lw_pattern_fitter *f, double misfit, double *covariance, lw_error *err);
 
 /* ---------------------------------------------------------------------------------------- pattern_answer.c */

@@ -8,7 +8,8 @@
 
 static void set_form(lw_pattern_fitter *f, const lw_pattern_form *form)
 {
-    lw_pattern_shape_set_strain(&f->pattern.shape, form->strain, form->strain == NULL ? &f->answer->knots : NULL);
+    lw_pattern_shape_set_strain(&f->pattern.shape, form->strain,
+                                form->strain == NULL ? &f->answer->knots : NULL);
 }
 
 lw_status lw_pattern_fitter_invert(lw_pattern_fitter *f, lw_error *err)
@@ -21,9 +22,10 @@ lw_status lw_pattern_fitter_invert(lw_pattern_fitter *f, lw_error *err)
     if (status != LW_OK)
         return status;
     for (size_t i = 0; i < n; i++) {
-        /* no size, no strain and the utmost anisotropy are bounds with an uncertainty: their limits come from it */
-        bool told = (i == LW_PATTERN_INVERSE_SIZE && f->pattern.shape.histogram == NULL) || i == LW_PATTERN_ANISOTROPY ||
-                    (i == LW_PATTERN_STRAIN && f->pattern.shape.n_strain == 1);
+        /* no size, no strain and the utmost anisotropy are bounds with an uncertainty: their limits come from
+         * it */
+        bool told = (i == LW_PATTERN_INVERSE_SIZE && f->pattern.shape.histogram == NULL) ||
+                    i == LW_PATTERN_ANISOTROPY || (i == LW_PATTERN_STRAIN && f->pattern.shape.n_strain == 1);
         f->skip[i] = f->fixed[i] || (f->at_bound[i] && !told) || !(f->normal_h[i * n + i] > 0);
     }
     for (int held = 0; held < 4; held++) {
@@ -63,8 +65,12 @@ static void set_priors(lw_pattern_fitter *f, const lw_pattern_form *form)
 static lw_status descend(lw_pattern_fitter *f, lw_pattern_form *form, lw_error *err)
 {
     lw_pattern *m = &f->pattern;
-    lw_problem problem = {.n = m->n_parameters, .lower = f->lower, .upper = f->upper, .fixed = f->fixed,
-                          .evaluate = lw_pattern_evaluate, .user = m};
+    lw_problem problem = {.n = m->n_parameters,
+                          .lower = f->lower,
+                          .upper = f->upper,
+                          .fixed = f->fixed,
+                          .evaluate = lw_pattern_evaluate,
+                          .user = m};
     lw_fit_control control = lw_fit_control_defaults();
     control.chi2_tolerance = 1e-8;
     control.step_tolerance = 1e-3;
@@ -79,8 +85,8 @@ static lw_status descend(lw_pattern_fitter *f, lw_pattern_form *form, lw_error *
     return status;
 }
 
-#define ROUNDS 20      /* for the strength of the smoothing */
-#define SETTLED 0.1    /* change of its logarithm */
+#define ROUNDS 20   /* for the strength of the smoothing */
+#define SETTLED 0.1 /* change of its logarithm */
 
 /* Fits, and asks anew for the strength of the smoothing until it settles. */
 static lw_status descend_smoothed(lw_pattern_fitter *f, lw_pattern_form *form, lw_error *err)
@@ -97,7 +103,8 @@ static lw_status descend_smoothed(lw_pattern_fitter *f, lw_pattern_form *form, l
             lw_pattern_prior *prior = &m->prior[i];
             if (prior->n == 0)
                 continue;
-            double counted, due = lw_pattern_prior_due(prior, f->p, f->inverse, m->n_parameters, f->skip, &counted);
+            double counted,
+                due = lw_pattern_prior_due(prior, f->p, f->inverse, m->n_parameters, f->skip, &counted);
             change = fmax(change, fabs(log(due / prior->strength)));
             determined += counted - (prior->pin > 0);
             all += (double)prior->freedom;
@@ -127,7 +134,8 @@ lw_status lw_pattern_fitter_minimise(lw_pattern_fitter *f, lw_pattern_form *form
         f->lower[row] = used && form->strain != NULL ? form->strain->least[i] : -INFINITY;
         f->upper[row] = used && form->strain != NULL ? form->strain->most[i] : INFINITY;
         if (used && form->strain == NULL) {
-            f->lower[row] = i == 0 ? -41 : lw_strain_knots_least_step(&f->answer->knots, i, ATOMS); /* strain 1e-9 */
+            f->lower[row] =
+                i == 0 ? -41 : lw_strain_knots_least_step(&f->answer->knots, i, ATOMS); /* strain 1e-9 */
             f->upper[row] = 0; /* strain 1, and no rise */
         }
         if (!used)
@@ -135,7 +143,9 @@ lw_status lw_pattern_fitter_minimise(lw_pattern_fitter *f, lw_pattern_form *form
         f->p[row] = fmin(fmax(f->p[row], f->lower[row]), f->upper[row]);
     }
     f->fixed[LW_PATTERN_VARIATION] = !form->varying;
-    f->p[LW_PATTERN_VARIATION] = !form->varying ? 0 : f->p[LW_PATTERN_VARIATION] > 0 ? f->p[LW_PATTERN_VARIATION] : 0.1;
+    f->p[LW_PATTERN_VARIATION] = !form->varying                   ? 0
+                                 : f->p[LW_PATTERN_VARIATION] > 0 ? f->p[LW_PATTERN_VARIATION]
+                                                                  : 0.1;
     form->iterations = 0;
     form->parameters = 0;
     bool smoothed = m->prior[0].n > 0 || m->prior[1].n > 0;
@@ -178,7 +188,8 @@ lw_status lw_pattern_fitter_weigh(lw_pattern_fitter *f, lw_error *err)
     return status;
 }
 
-void lw_pattern_fitter_restart_strain(lw_pattern_fitter *f, const lw_strain_form *from, const lw_pattern_form *to)
+void lw_pattern_fitter_restart_strain(lw_pattern_fitter *f, const lw_strain_form *from,
+                                      const lw_pattern_form *to)
 {
     double p[LW_PATTERN_STRAIN_MOST] = {0}, *own = f->p + LW_PATTERN_STRAIN;
     if (to->strain != NULL) {
@@ -208,7 +219,8 @@ lw_status lw_pattern_fitter_save(lw_pattern_fitter *f, lw_pattern_saved *to, lw_
     return to->p && to->fixed && to->at_bound ? LW_OK : LW_OUT_OF_MEMORY;
 }
 
-void lw_pattern_fitter_restore(lw_pattern_fitter *f, const lw_pattern_saved *from, const lw_pattern_form *form)
+void lw_pattern_fitter_restore(lw_pattern_fitter *f, const lw_pattern_saved *from,
+                               const lw_pattern_form *form)
 {
     size_t n = f->pattern.n_parameters;
     memcpy(f->p, from->p, n * sizeof(double));
@@ -240,7 +252,8 @@ lw_status lw_pattern_fitter_instrument(lw_pattern_fitter *f, lw_error *err)
         if (status == LW_OK)
             status = lw_pattern_evaluate(m, f->p, false, &normal, err);
         for (size_t i = 0; i < m->n; i++)
-            f->by_instrument[q][i] = (base[i] - m->curve[i]) / 0.1; /* what the fit would have to make up for */
+            f->by_instrument[q][i] =
+                (base[i] - m->curve[i]) / 0.1; /* what the fit would have to make up for */
     }
     if (status == LW_OK)
         status = lw_pattern_instrument(m, instrument, err);
@@ -248,7 +261,8 @@ lw_status lw_pattern_fitter_instrument(lw_pattern_fitter *f, lw_error *err)
 }
 
 /* What the uncertainty of the smoothing's strength adds. work: [n]. */
-static void add_strength(lw_pattern_fitter *f, const lw_pattern_prior *prior, double *work, double *covariance)
+static void add_strength(lw_pattern_fitter *f, const lw_pattern_prior *prior, double *work,
+                         double *covariance)
 {
     size_t n = f->pattern.n_parameters, shared = lw_pattern_background_row(&f->pattern);
     double counted, moved[LW_PATTERN_SHARED_MOST];

@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Uncertainty of shares that can't be negative. About the minimum the parameters are taken as normal, but the shares of a
- * histogram only from 0 up: their second moments about the answer, from draws of the truncated normal distribution by
- * Gibbs' sampler (Geweke 1991 Proc. 23rd Symp. Interface, 571; tails by Robert 1995 Stat. Comput. 5, 121), stand in place of
- * the covariance, and the other parameters follow them linearly. The draws' seed is fixed. */
+/* Uncertainty of shares that can't be negative. About the minimum the parameters are taken as normal, but the
+ * shares of a histogram only from 0 up: their second moments about the answer, from draws of the truncated
+ * normal distribution by Gibbs' sampler (Geweke 1991 Proc. 23rd Symp. Interface, 571; tails by Robert 1995
+ * Stat. Comput. 5, 121), stand in place of the covariance, and the other parameters follow them linearly. The
+ * draws' seed is fixed. */
 #include "sample/pattern_fitter.h"
 
 #include "numeric/random.h"
@@ -13,7 +14,8 @@
 
 #define SWEEPS 12000
 #define SKIPPED 1000
-#define LOOSE 100.0 /* strength that keeps the sum of the shares near 1 while drawing: only their ratios count */
+#define LOOSE                                                                                                \
+    100.0 /* strength that keeps the sum of the shares near 1 while drawing: only their ratios count */
 
 /* A normal deviate above `least`. */
 static double draw_above(lw_random *random, double least)
@@ -61,10 +63,12 @@ lw_status lw_pattern_fitter_positive(lw_pattern_fitter *f, double misfit, double
     lw_pattern *m = &f->pattern;
     const lw_pattern_prior *prior = &m->prior[0];
     size_t n = m->n_parameters, all = lw_pattern_background_row(m), k = prior->n, first = prior->row;
-    double *c = lw_arena_take(f->arena, n * n, sizeof *c, err), *block = lw_arena_take(f->arena, 4 * k * k, sizeof *block, err);
+    double *c = lw_arena_take(f->arena, n * n, sizeof *c, err),
+           *block = lw_arena_take(f->arena, 4 * k * k, sizeof *block, err);
     if (c == NULL || block == NULL)
         return LW_OUT_OF_MEMORY;
-    double *precision = block + k * k, *second = precision + k * k, *gain = second + k * k, moved[LW_PATTERN_SIZE_MOST];
+    double *precision = block + k * k, *second = precision + k * k, *gain = second + k * k,
+           moved[LW_PATTERN_SIZE_MOST];
     /* covariance with no share held at 0 */
     for (size_t i = 0; i < k; i++) {
         f->skip[first + i] = false;
@@ -79,7 +83,8 @@ lw_status lw_pattern_fitter_positive(lw_pattern_fitter *f, double misfit, double
         moved[i] = 0;
         for (size_t j = 0; j < k; j++) {
             /* the downhill direction is 0 but at the bound */
-            moved[i] += c[(first + i) * n + first + j] * (f->at_bound[first + j] ? fmin(f->normal_g[first + j], 0) : 0);
+            moved[i] += c[(first + i) * n + first + j] *
+                        (f->at_bound[first + j] ? fmin(f->normal_g[first + j], 0) : 0);
             block[i * k + j] = misfit * misfit * c[(first + i) * n + first + j];
         }
     }

@@ -19,7 +19,8 @@ void lw_pattern_prior_bends(lw_pattern_prior *prior, size_t row, size_t n, doubl
 void lw_pattern_prior_by_steps(lw_pattern_prior *prior)
 {
     size_t n = prior->n;
-    for (size_t i = 0; i < n; i++) /* value j moves with every step up to j: sums from the end, of columns and rows */
+    for (size_t i = 0; i < n;
+         i++) /* value j moves with every step up to j: sums from the end, of columns and rows */
         for (size_t j = n - 1; j > 0; j--)
             prior->matrix[i * n + j - 1] += prior->matrix[i * n + j];
     for (size_t i = n - 1; i > 0; i--)
@@ -44,13 +45,14 @@ double lw_pattern_prior_add(const lw_pattern_prior *prior, const double *p, lw_n
         size_t row = prior->row + i;
         normal->g[row] -= prior->strength * sum + prior->pin * off;
         for (size_t j = 0; j <= i; j++)
-            normal->h[row * normal->n + prior->row + j] += prior->strength * prior->matrix[i * n + j] + prior->pin;
+            normal->h[row * normal->n + prior->row + j] +=
+                prior->strength * prior->matrix[i * n + j] + prior->pin;
     }
     return penalty + (prior->pin > 0 ? prior->pin * off * off : 0);
 }
 
-double lw_pattern_prior_due(const lw_pattern_prior *prior, const double *p, const double *inverse, size_t size,
-                            const bool *held, double *counted)
+double lw_pattern_prior_due(const lw_pattern_prior *prior, const double *p, const double *inverse,
+                            size_t size, const bool *held, double *counted)
 {
     size_t n = prior->n;
     const double *own = p + prior->row;

@@ -1,9 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Do the lines agree? Each line, with the points nearest to it, draws at the parameters; at the minimum these pulls cancel.
- * Where they are larger than counting makes them, lines contradict each other under the model, and the scatter of the pulls
- * says what that does to each parameter, however the residuals within a line go together: the covariance of clustered
- * data of White (1982) Econometrica 50, 1, and Liang & Zeger (1986) Biometrika 73, 13. With as few clusters as there are
- * lines it is itself uncertain: it replaces the other only where chance does not give it. */
+/* Do the lines agree? Each line, with the points nearest to it, draws at the parameters; at the minimum these
+ * pulls cancel. Where they are larger than counting makes them, lines contradict each other under the model,
+ * and the scatter of the pulls says what that does to each parameter, however the residuals within a line go
+ * together: the covariance of clustered data of White (1982) Econometrica 50, 1, and Liang & Zeger (1986)
+ * Biometrika 73, 13. With as few clusters as there are lines it is itself uncertain: it replaces the other
+ * only where chance does not give it. */
 #include "sample/pattern_fitter.h"
 
 #include "numeric/statistics.h"
@@ -14,8 +15,8 @@
 #define CHANCE 0.01
 
 /* Sum over the lines of the squared shift that each alone asks of the shared parameters. */
-static lw_status add_pulls(lw_pattern_fitter *f, double *residual, double *difference, double *g, double *square, size_t *groups,
-                           lw_error *err)
+static lw_status add_pulls(lw_pattern_fitter *f, double *residual, double *difference, double *g,
+                           double *square, size_t *groups, lw_error *err)
 {
     lw_pattern *m = &f->pattern;
     size_t n = m->n_parameters, shared = lw_pattern_background_row(m), begin = 0;

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Body of one rung of the whole pattern's loops. The includer sets LW_LANES (numbers done at once), LW_RUNG (the constant
- * to define) and LW_RUNG_NAME. No include guard: each rung is one translation unit. */
+/* Body of one rung of the whole pattern's loops. The includer sets LW_LANES (numbers done at once), LW_RUNG
+ * (the constant to define) and LW_RUNG_NAME. No include guard: each rung is one translation unit. */
 #include "sample/pattern_rung.h"
 
 #include <math.h>
@@ -83,7 +83,8 @@ INLINE four four_at(const double *from)
 INLINE void taps(const double *grid, const long long *at, vec tap[4])
 {
 #if LW_LANES == 8
-#define PAIR(k) __builtin_shufflevector(four_at(grid + at[k]), four_at(grid + at[k + 4]), 0, 1, 2, 3, 4, 5, 6, 7)
+#define PAIR(k)                                                                                              \
+    __builtin_shufflevector(four_at(grid + at[k]), four_at(grid + at[k + 4]), 0, 1, 2, 3, 4, 5, 6, 7)
     vec a = PAIR(0), b = PAIR(1), c = PAIR(2), d = PAIR(3);
 #undef PAIR
     vec even = __builtin_shufflevector(a, b, 0, 8, 2, 10, 4, 12, 6, 14);
@@ -95,7 +96,8 @@ INLINE void taps(const double *grid, const long long *at, vec tap[4])
     tap[2] = __builtin_shufflevector(even, even2, 2, 3, 10, 11, 6, 7, 14, 15);
     tap[3] = __builtin_shufflevector(odd, odd2, 2, 3, 10, 11, 6, 7, 14, 15);
 #elif LW_LANES == 4
-    four a = four_at(grid + at[0]), b = four_at(grid + at[1]), c = four_at(grid + at[2]), d = four_at(grid + at[3]);
+    four a = four_at(grid + at[0]), b = four_at(grid + at[1]), c = four_at(grid + at[2]),
+         d = four_at(grid + at[3]);
     four even = __builtin_shufflevector(a, b, 0, 4, 2, 6), odd = __builtin_shufflevector(a, b, 1, 5, 3, 7);
     four even2 = __builtin_shufflevector(c, d, 0, 4, 2, 6), odd2 = __builtin_shufflevector(c, d, 1, 5, 3, 7);
     tap[0] = __builtin_shufflevector(even, even2, 0, 1, 4, 5);
@@ -103,7 +105,8 @@ INLINE void taps(const double *grid, const long long *at, vec tap[4])
     tap[2] = __builtin_shufflevector(even, even2, 2, 3, 6, 7);
     tap[3] = __builtin_shufflevector(odd, odd2, 2, 3, 6, 7);
 #else
-    vec a = load(grid + at[0], 2), b = load(grid + at[1], 2), c = load(grid + at[0] + 2, 2), d = load(grid + at[1] + 2, 2);
+    vec a = load(grid + at[0], 2), b = load(grid + at[1], 2), c = load(grid + at[0] + 2, 2),
+        d = load(grid + at[1] + 2, 2);
     tap[0] = __builtin_shufflevector(a, b, 0, 2);
     tap[1] = __builtin_shufflevector(a, b, 1, 3);
     tap[2] = __builtin_shufflevector(c, d, 0, 2);
@@ -139,19 +142,22 @@ INLINE void inside(const double *s, size_t i, size_t count, double s0, double pe
     long long at[LW_LANES];
     memcpy(at, &whole, sizeof at);
     vec t2 = t * t, r2 = r * r;
-    vec w0 = r2 * r * (1.0 / 6), w3 = t2 * t * (1.0 / 6), w1 = (0.5 * t - 1.0) * t2 + 2.0 / 3, w2 = (0.5 * r - 1.0) * r2 + 2.0 / 3;
+    vec w0 = r2 * r * (1.0 / 6), w3 = t2 * t * (1.0 / 6), w1 = (0.5 * t - 1.0) * t2 + 2.0 / 3,
+        w2 = (0.5 * r - 1.0) * r2 + 2.0 / 3;
     for (size_t c = 0; c < n_channels; c++) {
         vec tap[4];
         taps(channel[c].grid, at, tap);
         hand_out(&channel[c], i, count, (w0 * tap[0] + w1 * tap[1]) + (w2 * tap[2] + w3 * tap[3]));
         if (channel[c].slope != NULL) {
             vec d0 = 0.5 * r2, d3 = -0.5 * t2, d1 = (2.0 - 1.5 * t) * t, d2 = (1.5 * r - 2.0) * r;
-            store(channel[c].slope + i, count, per_cell * ((d0 * tap[0] + d1 * tap[1]) + (d2 * tap[2] + d3 * tap[3])));
+            store(channel[c].slope + i, count,
+                  per_cell * ((d0 * tap[0] + d1 * tap[1]) + (d2 * tap[2] + d3 * tap[3])));
         }
     }
 }
 
-INLINE void outside(const double *s, size_t i, size_t count, double s0, const lw_pattern_channel *channel, size_t n_channels)
+INLINE void outside(const double *s, size_t i, size_t count, double s0, const lw_pattern_channel *channel,
+                    size_t n_channels)
 {
     vec off = load(s + i, count) - s0;
     for (size_t lane = count; lane < LW_LANES; lane++)
@@ -166,8 +172,8 @@ INLINE void outside(const double *s, size_t i, size_t count, double s0, const lw
     }
 }
 
-static void spread(size_t n, const double *s, double s0, double per_cell, size_t n_fft, size_t first, size_t last,
-                   const lw_pattern_channel *channel, size_t n_channels)
+static void spread(size_t n, const double *s, double s0, double per_cell, size_t n_fft, size_t first,
+                   size_t last, const lw_pattern_channel *channel, size_t n_channels)
 {
     for (size_t i = 0; i < first; i += LW_LANES)
         outside(s, i, first - i < LW_LANES ? first - i : LW_LANES, s0, channel, n_channels);
@@ -180,8 +186,9 @@ static void spread(size_t n, const double *s, double s0, double per_cell, size_t
         outside(s, i, n - i < LW_LANES ? n - i : LW_LANES, s0, channel, n_channels);
 }
 
-static void columns(size_t points, size_t first, const lw_pattern_source *source, size_t n_sources, const double *factor,
-                    const double *weight, const double *residual, double *column, double *weighted, double *g)
+static void columns(size_t points, size_t first, const lw_pattern_source *source, size_t n_sources,
+                    const double *factor, const double *weight, const double *residual, double *column,
+                    double *weighted, double *g)
 {
     for (size_t a = 0; a < n_sources; a++) {
         const double *from = source[a].from + first;

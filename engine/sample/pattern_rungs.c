@@ -5,8 +5,8 @@ const lw_pattern_rung *lw_pattern_rung_for(lw_cpu cpu)
 {
 #ifdef LW_RUNGS_X86
     if ((cpu == LW_CPU_AUTO || cpu == LW_CPU_AVX512) && __builtin_cpu_supports("avx512f") &&
-        __builtin_cpu_supports("avx512bw") && __builtin_cpu_supports("avx512cd") && __builtin_cpu_supports("avx512dq") &&
-        __builtin_cpu_supports("avx512vl"))
+        __builtin_cpu_supports("avx512bw") && __builtin_cpu_supports("avx512cd") &&
+        __builtin_cpu_supports("avx512dq") && __builtin_cpu_supports("avx512vl"))
         return &lw_pattern_rung_avx512;
     if (cpu != LW_CPU_PLAIN && __builtin_cpu_supports("avx2") && __builtin_cpu_supports("fma"))
         return &lw_pattern_rung_avx2;

@@ -3,10 +3,11 @@
 
 #include <math.h>
 
-lw_status lw_pattern_shape_begin(lw_pattern_shape *shape, size_t n, double step, const lw_size_histogram *histogram,
-                                 lw_arena *arena, lw_error *err)
+lw_status lw_pattern_shape_begin(lw_pattern_shape *shape, size_t n, double step,
+                                 const lw_size_histogram *histogram, lw_arena *arena, lw_error *err)
 {
-    *shape = (lw_pattern_shape){.n = n, .step = step, .histogram = histogram, .n_size = histogram != NULL ? histogram->n : 2};
+    *shape = (lw_pattern_shape){
+        .n = n, .step = step, .histogram = histogram, .n_size = histogram != NULL ? histogram->n : 2};
     lw_pattern_shape_set_strain(shape, &lw_strain_constant, NULL);
     shape->size = lw_arena_take(arena, n, sizeof(double), err);
     shape->displacement = lw_arena_take(arena, n, sizeof(double), err);
@@ -22,7 +23,8 @@ lw_status lw_pattern_shape_begin(lw_pattern_shape *shape, size_t n, double step,
     return err->status;
 }
 
-void lw_pattern_shape_set_strain(lw_pattern_shape *shape, const lw_strain_form *form, const lw_strain_knots *knots)
+void lw_pattern_shape_set_strain(lw_pattern_shape *shape, const lw_strain_form *form,
+                                 const lw_strain_knots *knots)
 {
     shape->strain = form;
     shape->knots = knots;
@@ -82,7 +84,8 @@ static void fill_histogram(lw_pattern_shape *shape, const double *p, bool slopes
             shape->size[j] += share[b] / all * shape->hat[b][j];
     shape->size_kink = 1.5 * lw_pattern_shape_moment(shape, p, -1);
     for (size_t b = 0; b < shape->n_size && slopes; b++) {
-        shape->size_kink_slope[b] = (1.5 * lw_size_histogram_moment(shape->histogram, b, -1) - shape->size_kink) / all;
+        shape->size_kink_slope[b] =
+            (1.5 * lw_size_histogram_moment(shape->histogram, b, -1) - shape->size_kink) / all;
         for (size_t j = 0; j < shape->n; j++)
             shape->size_slope[b][j] = (shape->hat[b][j] - shape->size[j]) / all;
     }
@@ -116,7 +119,8 @@ static void fill_knots(lw_pattern_shape *shape, const double *p, bool slopes)
     shape->strain_kink = 0;
     for (size_t j = 0; j < shape->n; j++) {
         double by[LW_STRAIN_KNOTS_MOST], length = shape->step * (double)j;
-        shape->displacement[j] = length * length * lw_strain_knots_square(shape->knots, y, length, slopes ? by : NULL);
+        shape->displacement[j] =
+            length * length * lw_strain_knots_square(shape->knots, y, length, slopes ? by : NULL);
         for (size_t i = shape->n_strain - 1; i > 0 && slopes; i--)
             by[i - 1] += by[i]; /* a step moves all knots from its own on */
         for (size_t i = 0; i < shape->n_strain && slopes; i++)

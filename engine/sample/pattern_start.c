@@ -16,7 +16,8 @@ bool lw_pattern_fitter_directions(const lw_pattern_fitter *f)
             least = fmin(least, f->pattern.line[k].hkl_sum);
             most = fmax(most, f->pattern.line[k].hkl_sum);
         }
-    return material != NULL && material->system == LW_CUBIC && f->pattern.profiles->n >= 4 && most - least > 0.1;
+    return material != NULL && material->system == LW_CUBIC && f->pattern.profiles->n >= 4 &&
+           most - least > 0.1;
 }
 
 /* beta^2 = 1/D^2 + 4 e^2 s^2, weighted: near enough to begin with. */
@@ -52,9 +53,9 @@ static void start_from_breadths(const lw_profiles *profiles, double *size, doubl
     *square_strain = fmax(slope, 0) / (2 * PI);
 }
 
-/* Fall of the scattering power: slope of ln(area over multiplicity, Lorentz factor and polarisation) against s^2, by
- * least squares. Structure factors that differ scatter about it; what remains is how atoms and their vibration fall off.
- * Kept within what atoms do (0 to 0.03 nm^2). */
+/* Fall of the scattering power: slope of ln(area over multiplicity, Lorentz factor and polarisation) against
+ * s^2, by least squares. Structure factors that differ scatter about it; what remains is how atoms and their
+ * vibration fall off. Kept within what atoms do (0 to 0.03 nm^2). */
 static double fall_of_areas(const lw_profiles *profiles)
 {
     const lw_lines *lines = profiles->lines;
@@ -64,7 +65,8 @@ static double fall_of_areas(const lw_profiles *profiles)
         double theta = line->two_theta.value * PI / 360, c = cos(2 * theta);
         double factor = (lines->constant_polarisation + lines->cos2_polarisation * c * c) /
                         (sin(theta) * sin(theta) * cos(theta));
-        if (!lines->with_factor || !(line->area.value > 0) || line->reflection.multiplicity < 1 || !(factor > 0))
+        if (!lines->with_factor || !(line->area.value > 0) || line->reflection.multiplicity < 1 ||
+            !(factor > 0))
             continue;
         double s2 = profiles->profile[i].s_per_nm * profiles->profile[i].s_per_nm;
         double value = log(line->area.value / (factor * line->reflection.multiplicity));
@@ -125,7 +127,8 @@ static lw_status lay_out(lw_pattern_fitter *f, double narrowest, lw_error *err)
     return LW_OK;
 }
 
-lw_status lw_pattern_fitter_begin(lw_pattern_fitter *f, lw_engine *engine, const lw_profiles *profiles, lw_error *err)
+lw_status lw_pattern_fitter_begin(lw_pattern_fitter *f, lw_engine *engine, const lw_profiles *profiles,
+                                  lw_error *err)
 {
     lw_status status = lw_pattern_begin(&f->pattern, engine, profiles, NULL, f->arena, err);
     if (status != LW_OK)
@@ -146,7 +149,8 @@ lw_status lw_pattern_fitter_begin(lw_pattern_fitter *f, lw_engine *engine, const
     return LW_OK;
 }
 
-lw_status lw_pattern_fitter_begin_histogram(lw_pattern_fitter *f, const lw_pattern_fitter *from, lw_error *err)
+lw_status lw_pattern_fitter_begin_histogram(lw_pattern_fitter *f, const lw_pattern_fitter *from,
+                                            lw_error *err)
 {
     /* nodes where lognormal spheres have all their volume, and beyond it where they are narrow */
     lw_size_histogram *histogram = &f->answer->histogram;
@@ -154,7 +158,8 @@ lw_status lw_pattern_fitter_begin_histogram(lw_pattern_fitter *f, const lw_patte
     double middle = log(spheres.median_nm) + 3 * spheres.sigma * spheres.sigma;
     double down = fmax(3 * spheres.sigma, log(5)), up = fmax(2.5 * spheres.sigma, log(3));
     *histogram = (lw_size_histogram){.n = NODES, .first = middle - down, .step = (down + up) / (NODES - 1)};
-    lw_status status = lw_pattern_begin(&f->pattern, from->pattern.engine, from->pattern.profiles, histogram, f->arena, err);
+    lw_status status =
+        lw_pattern_begin(&f->pattern, from->pattern.engine, from->pattern.profiles, histogram, f->arena, err);
     if (status == LW_OK)
         status = lay_out(f, from->upper[lw_pattern_position_row(&from->pattern, 0)], err);
     if (status != LW_OK)
@@ -170,6 +175,7 @@ void lw_pattern_fitter_carry(lw_pattern_fitter *f, const lw_pattern_fitter *from
     lw_spheres spheres = lw_pattern_spheres(p);
     lw_pattern_start(&f->pattern, &spheres, f->p);
     memcpy(f->p, p, LW_PATTERN_SIZE * sizeof *p);
-    size_t to_row = lw_pattern_background_row(&f->pattern), from_row = lw_pattern_background_row(&from->pattern);
+    size_t to_row = lw_pattern_background_row(&f->pattern),
+           from_row = lw_pattern_background_row(&from->pattern);
     memcpy(f->p + to_row, p + from_row, (from->pattern.n_parameters - from_row) * sizeof *p);
 }

@@ -47,7 +47,8 @@ static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
     return why;
 }
 
-static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
+static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result,
+                     lw_error *err)
 {
     const whole_pattern_options *o = given;
     lw_pattern_answer *a = lw_arena_take(arena, 1, sizeof *a, err);
@@ -61,7 +62,8 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
         choice = LW_PATTERN_KNOTS;
     lw_pattern_request request = {
         .strain = choice, .anisotropy = o->anisotropy, .fall = o->fall, .histogram = o->size == 1};
-    lw_status status = a == NULL ? LW_OUT_OF_MEMORY : lw_pattern_fit(arena->engine, profiles, &request, arena, a, err);
+    lw_status status =
+        a == NULL ? LW_OUT_OF_MEMORY : lw_pattern_fit(arena->engine, profiles, &request, arena, a, err);
     return status == LW_OK ? lw_whole_pattern_tell(a, arena, result, err) : status;
 }
 
@@ -69,13 +71,16 @@ const lw_method lw_method_whole_pattern = {
     .name = "whole_pattern",
     .title = "Whole pattern",
     .purpose = "spheres and strain fitted to the counts of all lines at once",
-    .assumes =
-        "Crystals are spheres, or close to it, with lognormal diameters or those of a histogram; displacements between two "
-        "points of a column are normally distributed. Strain is the same in every direction unless said otherwise.",
-    .source = "Scardi & Leoni (2002) Acta Cryst. A 58, 190; Krill & Birringer (1998) Philos. Mag. A 77, 621; "
-              "forms of "
-              "strain weighted by evidence: Hoeting et al. (1999) Stat. Sci. 14, 382; Schwarz (1978) Ann. Stat. 6, 461; "
-              "histogram: Leoni & Scardi (2004) J. Appl. Cryst. 37, 629, smoothed as Phillips (1962) J. ACM 9, 84",
+    .assumes = "Crystals are spheres, or close to it, with lognormal diameters or those of a histogram; "
+               "displacements between two "
+               "points of a column are normally distributed. Strain is the same in every direction unless "
+               "said otherwise.",
+    .source =
+        "Scardi & Leoni (2002) Acta Cryst. A 58, 190; Krill & Birringer (1998) Philos. Mag. A 77, 621; "
+        "forms of "
+        "strain weighted by evidence: Hoeting et al. (1999) Stat. Sci. 14, 382; Schwarz (1978) Ann. Stat. 6, "
+        "461; "
+        "histogram: Leoni & Scardi (2004) J. Appl. Cryst. 37, 629, smoothed as Phillips (1962) J. ACM 9, 84",
     .options = options,
     .options_size = sizeof(whole_pattern_options),
     .defaults = defaults,

@@ -160,21 +160,24 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
     char text[320];
     if (a->misfit > 1) {
         snprintf(text, sizeof text,
-                 "the best form still misses the counts (goodness of fit %.3f, or residuals that go together): all "
+                 "the best form still misses the counts (goodness of fit %.3f, or residuals that go "
+                 "together): all "
                  "uncertainties were enlarged %.2f times",
                  a->goodness, a->misfit);
         lw_add_text(remarks, NULL, text, err);
     }
     if (a->disagreement > 1) {
         snprintf(text, sizeof text,
-                 "lines contradict each other under the forms of strain: the uncertainties follow their scatter and are up to "
+                 "lines contradict each other under the forms of strain: the uncertainties follow their "
+                 "scatter and are up to "
                  "%.1f times those of the counts",
                  a->disagreement);
         lw_add_text(remarks, NULL, text, err);
     }
     if (a->goodness > 1.05)
         lw_add_text(remarks, NULL,
-                    "no form tried here is what the powder is: the uncertainties hold counting, calibration and the forms, "
+                    "no form tried here is what the powder is: the uncertainties hold counting, calibration "
+                    "and the forms, "
                     "not crystals of another shape, spread or strain; take the sizes as indicative",
                     err);
     double lowest = INFINITY, highest = 0;
@@ -204,7 +207,8 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
             err);
     if (a->form[a->best].varying)
         lw_add_text(remarks, NULL,
-                    "crystals are strained to different degrees: the mean square strain varies from one to the other as a "
+                    "crystals are strained to different degrees: the mean square strain varies from one to "
+                    "the other as a "
                     "gamma distribution (Madan & Seneta 1990 J. Business 63, 511)",
                     err);
     if (a->anisotropic) {
@@ -214,7 +218,8 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
         else
             snprintf(q, sizeof q, "= %.3f(%.3f)", a->anisotropy, a->u_anisotropy);
         snprintf(text, sizeof text,
-                 "strain depends on the direction: mean square strain goes as 1 - q H with q %s, H = 0 along h00, 1/3 along "
+                 "strain depends on the direction: mean square strain goes as 1 - q H with q %s, H = 0 along "
+                 "h00, 1/3 along "
                  "hhh; the strains given are means over all directions (H = 1/5)",
                  q);
         lw_add_text(remarks, NULL, text, err);
@@ -227,10 +232,12 @@ static void tell_anisotropy(const lw_pattern_answer *a, lw_node *result, lw_erro
     static const char meaning[] = "q of the mean square strain of a cubic crystal, proportional to 1 - q H.";
     double reach = ONE_SIDED * a->u_anisotropy;
     if (!a->anisotropy_at_bound)
-        lw_add_quantity(result, "strain_anisotropy", lw_quantity_of(a->anisotropy, a->u_anisotropy, ""), meaning, err);
+        lw_add_quantity(result, "strain_anisotropy", lw_quantity_of(a->anisotropy, a->u_anisotropy, ""),
+                        meaning, err);
     else if (!(reach > 0) || reach > 3) /* from one end of what is possible to the other */
-        lw_add_text(result, "strain_anisotropy_not_determined",
-                    "the fit took it to the bound of what is possible, and its uncertainty is as wide as that", err);
+        lw_add_text(
+            result, "strain_anisotropy_not_determined",
+            "the fit took it to the bound of what is possible, and its uncertainty is as wide as that", err);
     else
         lw_add_quantity(result, "strain_anisotropy",
                         a->anisotropy > 0 ? lw_lower_limit(a->anisotropy - reach, 0.95, "")
@@ -263,7 +270,8 @@ static void tell_distribution(const lw_pattern_answer *a, lw_arena *arena, lw_no
     lw_add_text(figure, "name", "whole_pattern_sizes", err);
     lw_add_text(figure, "title", "Distribution of diameters, whole pattern", err);
     lw_add_text(figure, "caption",
-                "Share of the volume in spheres of a diameter, a nm, as a smoothed histogram without a formula, with two "
+                "Share of the volume in spheres of a diameter, a nm, as a smoothed histogram without a "
+                "formula, with two "
                 "standard uncertainties. The smoothing is the one for which the counts are most probable.",
                 err);
     lw_node *axis = lw_add_group(figure, "x", err);
@@ -294,22 +302,27 @@ static void tell_diameters(const lw_pattern_answer *a, lw_node *result, lw_error
     if (mean > 2 * u_mean)
         lw_add_quantity(result, "diameter_mean", lw_quantity_of(mean, u_mean, "nm"), DIAMETER, err);
     else
-        lw_add_text(result, "diameter_mean_not_determined", "the smallest spheres, which rule it, do not stand out", err);
+        lw_add_text(result, "diameter_mean_not_determined",
+                    "the smallest spheres, which rule it, do not stand out", err);
     if (a->histogram.n == 0 || dispersion > 2 * u_dispersion)
-        lw_add_quantity(result, "diameter_dispersion", lw_quantity_of(dispersion, u_dispersion, ""), DISPERSION, err);
+        lw_add_quantity(result, "diameter_dispersion", lw_quantity_of(dispersion, u_dispersion, ""),
+                        DISPERSION, err);
     else
-        lw_add_text(result, "diameter_dispersion_not_determined", "the smallest spheres, which rule it, do not stand out", err);
+        lw_add_text(result, "diameter_dispersion_not_determined",
+                    "the smallest spheres, which rule it, do not stand out", err);
 }
 
 static lw_quantity size_of(const lw_pattern_answer *a, int which, double limit)
 {
-    return a->size_unresolved ? lw_lower_limit(limit, 0.95, "nm")
-                              : lw_quantity_of(a->value[which], sqrt(fmax(a->covariance[which][which], 0)), "nm");
+    return a->size_unresolved
+               ? lw_lower_limit(limit, 0.95, "nm")
+               : lw_quantity_of(a->value[which], sqrt(fmax(a->covariance[which][which], 0)), "nm");
 }
 
 lw_status lw_whole_pattern_tell(const lw_pattern_answer *a, lw_arena *arena, lw_node *result, lw_error *err)
 {
-    lw_add_quantity(result, "size_volume", size_of(a, LW_ANSWER_SIZE_VOLUME, a->size_volume_limit), SIZE_VOLUME, err);
+    lw_add_quantity(result, "size_volume", size_of(a, LW_ANSWER_SIZE_VOLUME, a->size_volume_limit),
+                    SIZE_VOLUME, err);
     lw_add_quantity(result, "size_area", size_of(a, LW_ANSWER_SIZE_AREA, a->size_area_limit), SIZE_AREA, err);
     if (!a->size_unresolved)
         tell_diameters(a, result, err);
@@ -318,7 +331,8 @@ lw_status lw_whole_pattern_tell(const lw_pattern_answer *a, lw_arena *arena, lw_
     if (a->form[a->best].varying)
         lw_add_quantity(result, "strain_variation",
                         lw_quantity_of(a->form[a->best].shape[LW_PATTERN_VARIATION], a->u_variation, ""),
-                        "Variance of the mean square strain from crystal to crystal over its squared mean.", err);
+                        "Variance of the mean square strain from crystal to crystal over its squared mean.",
+                        err);
     if (a->anisotropic)
         tell_anisotropy(a, result, err);
     lw_add_text(result, "size_form", a->histogram.n > 0 ? "histogram" : "lognormal", err);

@@ -6,6 +6,7 @@
 #include "sample/pattern_fit.h"
 
 /* Quantities, forms, covariance, figures and remarks. arena: for what the tree does not copy. */
-lw_status lw_whole_pattern_tell(const lw_pattern_answer *answer, lw_arena *arena, lw_node *result, lw_error *err);
+lw_status lw_whole_pattern_tell(const lw_pattern_answer *answer, lw_arena *arena, lw_node *result,
+                                lw_error *err);
 
 #endif

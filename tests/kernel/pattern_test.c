@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The whole pattern's model: curve and normal equations of every rung beside the plain one, the slopes beside differences
- * of the curve, the vector exponential beside the system's. */
+/* The whole pattern's model: curve and normal equations of every rung beside the plain one, the slopes beside
+ * differences of the curve, the vector exponential beside the system's. */
 #include "check.h"
 #include "base/arena.h"
 #include "sample/pattern.h"
@@ -39,17 +39,18 @@ static void make(made *m, lw_engine *engine)
         counts[i] = 60 + 10 * cos(0.1 * (double)i);
     }
     m->scan = (lw_scan){.n = POINTS, .two_theta_deg = angle, .intensity = counts};
-    m->lines = (lw_lines){.scan = &m->scan,
-                          .material = &m->material,
-                          .radiation = {.n = 2, .component = {{LAMBDA, 0, 2.0 / 3}, {0.15444274, 0, 1.0 / 3}}},
-                          .has_instrument = true,
-                          .instrument = {.value = {[LW_W] = 0.0016, [LW_Z] = 0.02}},
-                          .shape = "voigt",
-                          .n = LINES,
-                          .line = m->line,
-                          .n_background = TERMS,
-                          .background = background,
-                          .variance = variance};
+    m->lines =
+        (lw_lines){.scan = &m->scan,
+                   .material = &m->material,
+                   .radiation = {.n = 2, .component = {{LAMBDA, 0, 2.0 / 3}, {0.15444274, 0, 1.0 / 3}}},
+                   .has_instrument = true,
+                   .instrument = {.value = {[LW_W] = 0.0016, [LW_Z] = 0.02}},
+                   .shape = "voigt",
+                   .n = LINES,
+                   .line = m->line,
+                   .n_background = TERMS,
+                   .background = background,
+                   .variance = variance};
     for (size_t k = 0; k < LINES; k++) {
         int h = hkl[k][0], l = hkl[k][1], n = hkl[k][2];
         double s = sqrt(h * h + l * l + n * n) / 0.36, at = 2 * asin(s * LAMBDA / 2) / DEGREE;
@@ -86,8 +87,8 @@ static void start(const lw_pattern *pattern, double *p)
         p[lw_pattern_background_row(pattern) + j] = 1 - 0.3 * (double)j;
 }
 
-/* All slopes of the curve against its differences, through their products with every column. Strain of a form or, with
- * NULL, at knots. */
+/* All slopes of the curve against its differences, through their products with every column. Strain of a form
+ * or, with NULL, at knots. */
 static void slopes(made *m, const lw_strain_form *form, const lw_size_histogram *histogram)
 {
     lw_error err = LW_ERROR_NONE;
@@ -98,7 +99,8 @@ static void slopes(made *m, const lw_strain_form *form, const lw_size_histogram 
     lw_pattern_shape_set_strain(&pattern.shape, form, form == NULL ? &knots : NULL);
     size_t n = pattern.n_parameters;
     double *p = calloc(n, sizeof *p), *g = calloc(n, sizeof *g), *up = calloc(POINTS, sizeof *up);
-    lw_normal normal = {.n = n, .h = calloc(n * n, sizeof(double)), .g = calloc(n, sizeof(double))}, none = {.n = n};
+    lw_normal normal = {.n = n, .h = calloc(n * n, sizeof(double)), .g = calloc(n, sizeof(double))},
+              none = {.n = n};
     start(&pattern, p);
     lw_pattern_evaluate(&pattern, p, true, &normal, &err);
     for (size_t a = 0; a < n; a++) {
@@ -118,10 +120,12 @@ static void slopes(made *m, const lw_strain_form *form, const lw_size_histogram 
         p[a] = kept;
         memset(g, 0, n * sizeof *g);
         lw_pattern_project(&pattern, p, up, g, &err);
-        bool position = a >= lw_pattern_position_row(&pattern, 0) && (a - lw_pattern_position_row(&pattern, 0)) % 2 == 0;
+        bool position =
+            a >= lw_pattern_position_row(&pattern, 0) && (a - lw_pattern_position_row(&pattern, 0)) % 2 == 0;
         for (size_t b = 0; b <= a; b++) {
             double scale = sqrt(normal.h[a * n + a] * normal.h[b * n + b]);
-            /* differences lose step^2; strain at the place that a line had, not where it moves, costs positions 2e-3 */
+            /* differences lose step^2; strain at the place that a line had, not where it moves, costs
+             * positions 2e-3 */
             CHECK_NEAR((g[b] - normal.h[a * n + b]) / fmax(scale, 1e-300), 0, position ? 4e-3 : 2e-6);
         }
     }
@@ -168,7 +172,8 @@ static void rungs(made *m)
         for (size_t a = 0; a < n; a++)
             for (size_t b = 0; b <= a; b++)
                 if (h[0][a * n + a] > 0 && h[0][b * n + b] > 0)
-                    largest = fmax(largest, fabs(h[r][a * n + b] - h[0][a * n + b]) / sqrt(h[0][a * n + a] * h[0][b * n + b]));
+                    largest = fmax(largest, fabs(h[r][a * n + b] - h[0][a * n + b]) /
+                                                sqrt(h[0][a * n + a] * h[0][b * n + b]));
         CHECK(largest < 1e-10);
         printf("largest difference of a scaled product: %.2g\n", largest);
     }
@@ -179,7 +184,8 @@ static void rungs(made *m)
     m->engine->cpu = LW_CPU_AUTO;
 }
 
-/* exp(-x) through `falls`, of x from 0 to where it ends: 2 units in the last place, and what the fusing may add. */
+/* exp(-x) through `falls`, of x from 0 to where it ends: 2 units in the last place, and what the fusing may
+ * add. */
 static void exponential(void)
 {
     static const lw_cpu cpu[3] = {LW_CPU_PLAIN, LW_CPU_AVX2, LW_CPU_AVX512};

@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The whole pattern on a made scan: every line is the Fourier integral of lognormal spheres, strain and a Voigt
- * instrument, summed by Simpson's rule at every point (no FFT, no tails by rule, no interpolation), so that the fit must
- * give back what went in; then with seeded counts. */
+/* The whole pattern on a made scan: every line is the Fourier integral of lognormal spheres, strain and a
+ * Voigt instrument, summed by Simpson's rule at every point (no FFT, no tails by rule, no interpolation), so
+ * that the fit must give back what went in; then with seeded counts. */
 #include "check.h"
 #include "instrument/calibration.h"
 #include "numeric/random.h"
@@ -21,9 +21,9 @@
 static const lw_spheres SPHERES = {10, 0.3};
 static const lw_spheres SMALL = {4, 0.25}, LARGE = {16, 0.25}; /* a mixture, half of the volume each */
 static bool mixed;
-static double kappa;     /* relative variance of the mean square strain from crystal to crystal */
-static double turn;      /* mean square strain falls with direction as 1 - turn H, to 0 */
-static double odd = 1;   /* one line has this times the strain of the others */
+static double kappa;   /* relative variance of the mean square strain from crystal to crystal */
+static double turn;    /* mean square strain falls with direction as 1 - turn H, to 0 */
+static double odd = 1; /* one line has this times the strain of the others */
 static double angle[POINTS], ideal[POINTS], counts[POINTS];
 
 typedef struct made {
@@ -45,12 +45,13 @@ static double factor_at(double two_theta)
 /* Volume-weighted coefficients add. */
 static double coefficient(double length)
 {
-    return mixed ? 0.5 * lw_spheres_coefficient(&SMALL, length, NULL) + 0.5 * lw_spheres_coefficient(&LARGE, length, NULL)
+    return mixed ? 0.5 * lw_spheres_coefficient(&SMALL, length, NULL) +
+                       0.5 * lw_spheres_coefficient(&LARGE, length, NULL)
                  : lw_spheres_coefficient(&SPHERES, length, NULL);
 }
 
-/* Mean of exp(-x v) over crystals whose v is gamma distributed, of mean 1 and variance kappa: the Laplace transform of the
- * gamma density. */
+/* Mean of exp(-x v) over crystals whose v is gamma distributed, of mean 1 and variance kappa: the Laplace
+ * transform of the gamma density. */
 static double strained(double x)
 {
     return kappa > 0 ? pow(1 + kappa * x, -1 / kappa) : exp(-x);
@@ -67,11 +68,16 @@ static void make_ideal(const made *m, const lw_strain_form *strain, const double
         double at = m->reflection[k].two_theta_deg, s0 = 1 / m->reflection[k].d_nm;
         double h = m->reflection[k].h * m->reflection[k].h, q = m->reflection[k].k * m->reflection[k].k,
                l2 = m->reflection[k].l * m->reflection[k].l;
-        double own = fmax(1 - turn * (h * q + h * l2 + q * l2) / ((h + q + l2) * (h + q + l2)), 0) * (k == 1 ? odd * odd : 1);
-        double per = DEGREE * cos(at * DEGREE / 2) / LAMBDA, variance = 0.0036 * per * per, lorentz = 0.02 * per;
+        double own = fmax(1 - turn * (h * q + h * l2 + q * l2) / ((h + q + l2) * (h + q + l2)), 0) *
+                     (k == 1 ? odd * odd : 1);
+        double per = DEGREE * cos(at * DEGREE / 2) / LAMBDA, variance = 0.0036 * per * per,
+               lorentz = 0.02 * per;
         for (size_t j = 0; j < n; j++) {
             double l = step * (double)j;
-            a[j] = (j == 0 || j + 1 == n ? 1 : j % 2 == 1 ? 4 : 2) * step / 3 * 2 * coefficient(l) *
+            a[j] = (j == 0 || j + 1 == n ? 1
+                    : j % 2 == 1         ? 4
+                                         : 2) *
+                   step / 3 * 2 * coefficient(l) *
                    strained(2 * PI * PI * s0 * s0 * own * strain->displacement(p, l, NULL)) *
                    exp(-PI * PI / (4 * log(2)) * variance * l * l - PI * lorentz * l);
         }
@@ -204,7 +210,8 @@ static void exact(const made *m)
         CHECK_RELATIVE(quantity(tree, "size_area").value, lw_spheres_size_area(&SPHERES, NULL), 3e-6);
         CHECK_RELATIVE(quantity(tree, "size_volume").value, lw_spheres_size_volume(&SPHERES, NULL), 3e-6);
         CHECK_RELATIVE(quantity(tree, "diameter_mean").value, lw_spheres_diameter_mean(&SPHERES, NULL), 1e-4);
-        CHECK_RELATIVE(quantity(tree, "diameter_dispersion").value, lw_spheres_diameter_dispersion(&SPHERES, NULL), 1e-3);
+        CHECK_RELATIVE(quantity(tree, "diameter_dispersion").value,
+                       lw_spheres_diameter_dispersion(&SPHERES, NULL), 1e-3);
         double half = lw_spheres_size_volume(&SPHERES, NULL) / 2;
         CHECK_RELATIVE(quantity(tree, "strain_rms").value,
                        sqrt(cases[i].form->displacement(cases[i].p, half, NULL)) / half, 1e-5);
@@ -221,7 +228,8 @@ static void choice(const made *m)
         lw_arena arena;
         lw_arena_begin(&arena, m->engine);
         lw_random_begin(&random, 5, (unsigned)strained);
-        make_ideal(m, strained ? &lw_strain_correlated : &lw_strain_constant, strained ? correlated : none, 1e5);
+        make_ideal(m, strained ? &lw_strain_correlated : &lw_strain_constant, strained ? correlated : none,
+                   1e5);
         for (size_t i = 0; i < POINTS; i++)
             counts[i] = lw_random_poisson(&random, ideal[i]);
         const lw_node *tree = fit(m, "auto", &arena);
@@ -262,8 +270,10 @@ static void knots(const made *m)
     CHECK(tree != NULL);
     if (tree != NULL) {
         lw_quantity area = quantity(tree, "size_area"), volume = quantity(tree, "size_volume");
-        CHECK(fabs(area.value - lw_spheres_size_area(&SPHERES, NULL)) < 3 * area.u && area.u < 0.05 * area.value);
-        CHECK(fabs(volume.value - lw_spheres_size_volume(&SPHERES, NULL)) < 3 * volume.u && volume.u < 0.1 * volume.value);
+        CHECK(fabs(area.value - lw_spheres_size_area(&SPHERES, NULL)) < 3 * area.u &&
+              area.u < 0.05 * area.value);
+        CHECK(fabs(volume.value - lw_spheres_size_volume(&SPHERES, NULL)) < 3 * volume.u &&
+              volume.u < 0.1 * volume.value);
         const lw_node *list = lw_node_get(tree, "strain_rms_at");
         size_t seen = 0;
         for (size_t i = 0; i < list->n; i++) {
@@ -293,8 +303,8 @@ static void variation(const made *m)
     const lw_node *tree = fit(m, "auto", &arena);
     CHECK(tree != NULL);
     lw_quantity found = quantity(tree, "strain_variation"), area = quantity(tree, "size_area");
-    printf("variation %.3f(%.3f), truth 0.6; size_area %.3f(%.3f), truth %.3f\n", found.value, found.u, area.value, area.u,
-           lw_spheres_size_area(&SPHERES, NULL));
+    printf("variation %.3f(%.3f), truth 0.6; size_area %.3f(%.3f), truth %.3f\n", found.value, found.u,
+           area.value, area.u, lw_spheres_size_area(&SPHERES, NULL));
     CHECK(fabs(found.value - 0.6) < 3 * found.u && found.u < 0.2);
     CHECK(fabs(area.value - lw_spheres_size_area(&SPHERES, NULL)) < 3 * area.u && area.u < 0.05 * area.value);
     lw_arena_end(&arena);
@@ -352,8 +362,8 @@ static void directions(const made *m)
     }
 }
 
-/* Two kinds of crystals: the histogram gives back means that a lognormal distribution does not, and both humps. Volume over
- * ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929). */
+/* Two kinds of crystals: the histogram gives back means that a lognormal distribution does not, and both
+ * humps. Volume over ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929). */
 static void histogram(const made *m)
 {
     static const double none[2] = {0, 0};
@@ -372,8 +382,10 @@ static void histogram(const made *m)
     CHECK(one != NULL && tree != NULL);
     if (one != NULL && tree != NULL) {
         lw_quantity v = quantity(tree, "size_volume"), a = quantity(tree, "size_area");
-        printf("two kinds: size_volume %.3f(%.3f), truth %.3f, lognormal %.3f; size_area %.3f(%.3f), %.3f, %.3f\n", v.value,
-               v.u, volume, quantity(one, "size_volume").value, a.value, a.u, area, quantity(one, "size_area").value);
+        printf("two kinds: size_volume %.3f(%.3f), truth %.3f, lognormal %.3f; size_area %.3f(%.3f), %.3f, "
+               "%.3f\n",
+               v.value, v.u, volume, quantity(one, "size_volume").value, a.value, a.u, area,
+               quantity(one, "size_area").value);
         CHECK(fabs(v.value - volume) < 3 * v.u && v.u < 0.05 * volume);
         CHECK(fabs(a.value - area) < 3 * a.u && a.u < 0.05 * area);
         CHECK(fabs(v.value - volume) < 0.5 * fabs(quantity(one, "size_volume").value - volume));
@@ -408,7 +420,8 @@ static void histogram(const made *m)
     lw_arena_end(&arena);
 }
 
-/* Seeded counts: the scatter is what u says, and 95 % intervals hold the truth in 92 to 98 % (of 100: 89 to 100). */
+/* Seeded counts: the scatter is what u says, and 95 % intervals hold the truth in 92 to 98 % (of 100: 89 to
+ * 100). */
 static void coverage(const made *m)
 {
     static const double p[2] = {4e-6, 0};
@@ -437,15 +450,16 @@ static void coverage(const made *m)
     }
     for (int j = 0; j < 3; j++) {
         double scatter = sqrt(sum2[j] / runs), u = u_sum[j] / runs;
-        printf("%s: scatter %.3g, u %.3g, mean off by %.2g, inside %d of %d\n", names[j], scatter, u, sum[j] / runs, inside[j],
-               runs);
+        printf("%s: scatter %.3g, u %.3g, mean off by %.2g, inside %d of %d\n", names[j], scatter, u,
+               sum[j] / runs, inside[j], runs);
         CHECK(fabs(sum[j] / runs) < 0.35 * scatter);
         CHECK(scatter > 0.8 * u && scatter < 1.25 * u); /* of 100: 3 standard deviations are 21 % */
         CHECK(inside[j] >= 89);
     }
 }
 
-/* The histogram's intervals: of 40, 95 % lie within 1.96 u at 35 or more (binomial, one chance in 200 for fewer). */
+/* The histogram's intervals: of 40, 95 % lie within 1.96 u at 35 or more (binomial, one chance in 200 for
+ * fewer). */
 static void coverage_of_histogram(const made *m)
 {
     static const double p[2] = {4e-6, 0};
@@ -471,8 +485,8 @@ static void coverage_of_histogram(const made *m)
     }
     sizes = "lognormal";
     for (int j = 0; j < 2; j++) {
-        printf("histogram, %s: scatter %.3g, u %.3g, mean off by %.2g, inside %d of %d\n", names[j], sqrt(sum2[j] / runs),
-               u_sum[j] / runs, sum[j] / runs, inside[j], runs);
+        printf("histogram, %s: scatter %.3g, u %.3g, mean off by %.2g, inside %d of %d\n", names[j],
+               sqrt(sum2[j] / runs), u_sum[j] / runs, sum[j] / runs, inside[j], runs);
         CHECK(inside[j] >= 35);
         CHECK(u_sum[j] / runs < 0.05 * truth[j]);
     }

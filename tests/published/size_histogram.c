@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Histogram of sphere diameters and strain at knots against closed forms: one narrow hat is one sphere, hats that follow a
- * lognormal distribution give its coefficients and means; the natural cubic spline of three and four knots by hand. */
+/* Histogram of sphere diameters and strain at knots against closed forms: one narrow hat is one sphere, hats
+ * that follow a lognormal distribution give its coefficients and means; the natural cubic spline of three and
+ * four knots by hand. */
 #include "check.h"
 #include "physics/size_distribution.h"
 #include "physics/size_histogram.h"
@@ -11,7 +12,8 @@ static void one_sphere(void)
     lw_size_histogram narrow = {1, log(10.0), 1e-4};
     for (double l = 0; l < 12; l += 0.7) {
         double t = l / 10; /* common volume of a sphere and its ghost: Wilson 1962 X-ray Optics */
-        CHECK_NEAR(lw_size_histogram_coefficient(&narrow, 0, l), t < 1 ? 1 - 1.5 * t + 0.5 * t * t * t : 0, 1e-8);
+        CHECK_NEAR(lw_size_histogram_coefficient(&narrow, 0, l), t < 1 ? 1 - 1.5 * t + 0.5 * t * t * t : 0,
+                   1e-8);
     }
     CHECK_RELATIVE(lw_size_histogram_moment(&narrow, 0, 1), 10, 1e-8);
     CHECK_RELATIVE(lw_size_histogram_moment(&narrow, 0, -3), 1e-3, 1e-7);
@@ -27,11 +29,12 @@ static void moments(void)
     }
     /* as the initial slope has it: 1.5 <1/D> */
     double l = 1e-6;
-    CHECK_RELATIVE((1 - lw_size_histogram_coefficient(&h, 2, l)) / l, 1.5 * lw_size_histogram_moment(&h, 2, -1), 1e-6);
+    CHECK_RELATIVE((1 - lw_size_histogram_coefficient(&h, 2, l)) / l,
+                   1.5 * lw_size_histogram_moment(&h, 2, -1), 1e-6);
 }
 
-/* Volume over ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929 J. Franklin Inst. 207, 369); hats of step h
- * follow a curve to h^2/12 of its second derivative, here 7e-5. */
+/* Volume over ln D is normal about ln(median) + 3 sigma^2 (Hatch & Choate 1929 J. Franklin Inst. 207, 369);
+ * hats of step h follow a curve to h^2/12 of its second derivative, here 7e-5. */
 static void lognormal(void)
 {
     lw_spheres spheres = {10, 0.4};
@@ -69,7 +72,8 @@ static void splines(void)
     double line[3] = {-3, -4, -5}, bent[3] = {0, 1, 0}, matrix[16];
     for (double x = 0; x < 4; x += 0.3) /* beyond the last knot too */
         CHECK_NEAR(at(&three, line, x), -3 - x, 1e-12);
-    /* 0, 1, 0 at unit steps: second derivative -3 in the middle, s(x) = x (3 - x^2)/2 up to it; slope -3/2 at the end */
+    /* 0, 1, 0 at unit steps: second derivative -3 in the middle, s(x) = x (3 - x^2)/2 up to it; slope -3/2 at
+     * the end */
     for (double x = 0; x <= 1; x += 0.125)
         CHECK_NEAR(at(&three, bent, x), 0.5 * x * (3 - x * x), 1e-12);
     CHECK_NEAR(at(&three, bent, 1.5), 0.5 * 0.5 * (3 - 0.25), 1e-12);
