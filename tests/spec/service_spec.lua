@@ -216,7 +216,8 @@ describe("the optical profile", function()
     -- the same counts without the header
     local scan = lw.read_scan(helper.demo .. "/lab6_before_service.xy", { radiation = "Cu Ka" })
     local bare = lw.scan { two_theta = scan.two_theta, intensity = scan.intensity, radiation = "Cu Ka" }
-    local lines = lw.fit_lines(bare, lw.standard("lab6-660c"):reflections(bare), { widths = "smooth", axial = "soller" })
+    local reflections = lw.standard("lab6-660c"):reflections(bare)
+    local lines = lw.fit_lines(bare, reflections, { widths = "smooth", axial = "soller" })
     local other = lw.calibrate(lines, "lab6-660c", { profile = "auto", goniometer_radius = 217.5 })
     assert.is_nil(other.record:get "profile.optical")
     assert.matches("^empirical: neither", other.record.profile_chosen)
