@@ -90,14 +90,14 @@ static double first_scale(const lw_scan *scan)
         double size = fabs(difference(&w, i));
         if (isnan(size))
             continue;
-        double place = size > 0 ? 10 * log2(size) + BINS / 2 : 0;
+        double place = size > 0 ? 10 * log2(size) + BINS / 2.0 : 0;
         bin[place < 0 ? 0 : place >= BINS ? BINS - 1 : (size_t)place]++;
         total++;
     }
     size_t at = 0;
     while (at < BINS && below + bin[at] <= total / 2)
         below += bin[at++];
-    return total == 0 || at == 0 ? 0 : exp2(((double)at + 0.5 - BINS / 2) / 10) / 0.6745;
+    return total == 0 || at == 0 ? 0 : exp2(((double)at + 0.5 - BINS / 2.0) / 10) / 0.6745;
 }
 
 /* Covariances of the differences that lie within `most`, by lag. Returns how many were used for lag 0. */

@@ -122,6 +122,15 @@ static int find_wavelengths(lw_powder *p, const lw_cif_block *block, lw_radiatio
     return 0;
 }
 
+static bool are_equal(const lw_radiation *a, const lw_radiation *b)
+{
+    bool equal = a->n == b->n;
+    for (size_t i = 0; equal && i < a->n; i++)
+        equal = a->component[i].wavelength_nm == b->component[i].wavelength_nm &&
+                a->component[i].weight == b->component[i].weight;
+    return equal;
+}
+
 lw_status lw_powder_radiation(lw_powder *p, lw_columns *columns, lw_error *err)
 {
     lw_radiation radiation = {.n = 0};
@@ -134,8 +143,7 @@ lw_status lw_powder_radiation(lw_powder *p, lw_columns *columns, lw_error *err)
             return err ? err->status : LW_BAD_DATA;
         if (there == 0)
             continue;
-        if (radiation.n > 0 && (radiation.n != another.n || memcmp(radiation.component, another.component,
-                                                                   sizeof radiation.component) != 0)) {
+        if (radiation.n > 0 && !are_equal(&radiation, &another)) {
             lw_powder_note(p, "other data blocks state different wavelengths; none was taken");
             return LW_OK;
         }
