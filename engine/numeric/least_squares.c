@@ -398,7 +398,7 @@ lw_status lw_invert_bordered(lw_engine *engine, const double *h, size_t n, size_
     double *scale = lw_arena_take(&arena, n, sizeof *scale, err);
     double *work = lw_arena_take(&arena, n, sizeof *work, err);
     size_t *at = lw_arena_take(&arena, n, sizeof *at, err), *first = lw_arena_take(&arena, 2 * n, sizeof *first, err);
-    size_t wide = 0, *end = first + n;
+    size_t wide = 0, *end = first != NULL ? first + n : NULL;
     lw_status status = LW_OK;
     if (!u || !scale || !work || !at || !first) {
         status = LW_OUT_OF_MEMORY;
