@@ -165,7 +165,10 @@ lw_status lw__fit_add_beyond(lw_fit_state *fit, lw_error *err)
         double variance = 0, lorentz = 0;
         if (status == LW_OK)
             lw_model_widths(&fit->model, fit->p, k, &variance, &lorentz);
-        bool reaches = tie->weight > 0 && variance + lorentz > 0 && fit->position[k] > 0 && fit->position[k] < 179 &&
+        /* from further off comes nothing but a slope, which the background takes better */
+        double width = lw_voigt_fwhm(sqrt(fmax(variance, 1e-12)), fmax(lorentz, 0));
+        bool close = fit->position[k] > low - 5 * width && fit->position[k] < high + 5 * width;
+        bool reaches = close && tie->weight > 0 && variance + lorentz > 0 && fit->position[k] > 0 && fit->position[k] < 179 &&
                        tie->mean * tie->mean * seen_of(fit, fit->position[k], variance, lorentz) > 1;
         fit->area[k] = tie->mean;
         fit->hold_position[k] = fit->hold_local[k] = true;
