@@ -175,7 +175,7 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     }
     double scale = area + r_re[0];
     if (first) {
-        double square_sum, cross;
+        double square_sum, cross, of_tails, beyond_window = lw__tail_variance(job, &of_tails);
         for (size_t k = 0; k < n; k++) {
             double square = g_re[k] * g_re[k] + g_im[k] * g_im[k];
             double a = area * lw__shape_coefficient(shape, profile->length_nm[k], NULL);
@@ -193,7 +193,11 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
                 to_re[i] = by_re * data->step[i];
                 to_im[i] = by_im * data->step[i];
             }
-            profile->u_cosine[k] = sqrt(lw__window_variance(data, to_re, data->variance)) / scale;
+            /* tails beyond the window are in A(0), and the less in A(L) the longer L against the window */
+            double apart =
+                profile->cosine[k] * fmin(profile->length_nm[k] * (data->s[data->n - 1] - data->s[0]), 1);
+            profile->u_cosine[k] = hypot(sqrt(lw__window_variance(data, to_re, data->variance)) / scale,
+                                         apart * sqrt(beyond_window));
             profile->u_sine[k] = sqrt(lw__window_variance(data, to_im, data->variance)) / scale;
         }
         if (instrument->measured != NULL) {
