@@ -56,8 +56,8 @@ describe("LaB6 and silicon in one calibration", function()
     it("find the instrument as it was set, " .. profile, function()
       joined = lw.calibrate({ { lab6, "lab6-660c" }, { si, "si-640f" } }, { profile = profile })
       local off = against_truth(joined)
-      -- alone it would find its transparency from the places of its lines; scans that are joined are not transparent unless
-      -- their shape or the analyst says so
+      -- alone it would find its transparency from the places of its lines; scans that are joined are
+      -- not transparent unless their shape or the analyst says so
       local single = lw.calibrate(lab6, "lab6-660c", { profile = profile, attenuation = 0 })
       tell("joined, %-9s zero off by %+.5f deg (%.5f LaB6 alone), displacement LaB6 %+.4f mm (%+.4f), Si %+.4f mm",
         profile, off.zero, single.record.aberrations.zero_shift.value + 0.008, off[1],
