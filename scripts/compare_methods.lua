@@ -10,6 +10,9 @@ local job = lw.recipe {
     calibration = { kind = "file", help = "calibration.json of the instrument" },
     ways        = { kind = "list", default = { "convolution", "stokes", "physical" },
                     help = "ways of taking the instrument out" },
+    standard    = { kind = "file", default = "",
+                    help = "scan of the calibration's standard: stokes, tikhonov, richardson_lucy and \z
+                    maximum_entropy take the instrument as measured on its nearest lines" },
     methods     = { kind = "list", default = "all", help = "methods to run" },
     uncertainty = { kind = "text", default = "analytic", choices = { "analytic", "monte_carlo", "bootstrap" },
                     help = "monte_carlo, bootstrap: the whole chain again for drawn counts; ways other than "
@@ -27,6 +30,24 @@ local valid  = instrument.valid_two_theta
 local margin = 0.05 * (valid[2] - valid[1])
 scan = scan:crop(math.max(valid[1] - margin, scan.two_theta[1]), math.min(valid[2] + margin, scan.two_theta[scan.n]))
 
+-- The standard's lines, and the ways that let them stand for the instrument; the others fit shapes.
+local neighbours, measured = nil, { stokes = true, tikhonov = true, richardson_lucy = true, maximum_entropy = true }
+if job.standard then
+  local any = false
+  for _, way in ipairs(job.ways) do
+    any = any or measured[way]
+  end
+  if not any then
+    error("none of the ways (" .. table.concat(job.ways, ", ") .. ") can take the standard's measured lines; " ..
+      "add stokes, tikhonov, richardson_lucy or maximum_entropy to ways=, or leave standard= out")
+  end
+  local standard = lw.standard(instrument.standard.name)
+  local perfect  = lw.read_scan(job.standard, { radiation = instrument.radiation })
+  neighbours = lw.fit_lines(perfect, standard:reflections(perfect), {
+    widths = "smooth", axial = instrument.geometry == "capillary" and "finger_cox_jephcoat" or "soller",
+  })
+end
+
 local lines = lw.fit_lines(scan, powder:reflections(scan), { instrument = instrument })
 local items = { title = "Methods compared: " .. powder.title, subtitle = scan.file }
 if powder.hazard ~= "" then
@@ -36,7 +57,10 @@ end
 -- One row a method and way; a method that reads the counts themselves says the same whatever the way, so only once.
 local rows, record, shown = {}, {}, {}
 for _, way in ipairs(job.ways) do
-  local profiles = lw.deconvolve(lines, { method = way, accept_refold = true }) -- a failed refold is told, not hidden
+  local profiles = lw.deconvolve(lines, {
+    method = way, standard = measured[way] and neighbours or nil,
+    accept_refold = true, -- a failed refold is told, not hidden
+  })
   local results  = lw.separate(profiles, {
     methods = job.methods, uncertainty = job.uncertainty, realisations = job.realisations, seed = job.seed,
   })
@@ -87,6 +111,10 @@ local function compared(field, label, unit)
   }
 end
 
+if neighbours then
+  items[#items + 1] = "Stokes, tikhonov, richardson_lucy and maximum_entropy take the instrument as measured on the "
+    .. "lines of " .. job.standard .. "; the other ways take the calibration's smooth functions."
+end
 items[#items + 1] = { table = rows, caption = "What each method says, by how the instrument was taken out" }
 for _, figure in ipairs {
   compared("size_volume", "volume-weighted size", "nm") or false,

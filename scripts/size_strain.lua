@@ -12,6 +12,9 @@ local job = lw.recipe {
     deconvolve  = { kind = "text", default = "convolution",
                     choices = { "convolution", "physical", "stokes", "tikhonov", "richardson_lucy", "maximum_entropy" },
                     help = "how the instrument is taken out" },
+    standard    = { kind = "file", default = "",
+                    help = "scan of the calibration's standard: the instrument as measured on its nearest lines, \z
+                    instead of smooth functions (not with convolution or physical, which fit shapes)" },
     methods     = { kind = "list", default = "all", help = "methods to run" },
     uncertainty = { kind = "text", default = "analytic", choices = { "analytic", "monte_carlo", "bootstrap" },
                     help = "monte_carlo: the whole chain again for drawn counts and calibrations; bootstrap: with "
@@ -39,11 +42,21 @@ local low   = job.low or math.max(valid[1] - margin, scan.two_theta[1])
 local high  = job.high or math.min(valid[2] + margin, scan.two_theta[scan.n])
 scan = scan:crop(low, high)
 
+-- The standard's lines, where they are to stand for the instrument themselves.
+local neighbours
+if job.standard then
+  local standard = lw.standard(instrument.standard.name)
+  local perfect  = lw.read_scan(job.standard, reading)
+  neighbours = lw.fit_lines(perfect, standard:reflections(perfect), {
+    widths = "smooth", axial = instrument.geometry == "capillary" and "finger_cox_jephcoat" or "soller",
+  })
+end
+
 local lines    = lw.fit_lines(scan, powder:reflections(scan), {
   instrument = instrument, background = holder,
   polarised  = instrument.geometry == "capillary" and 0.05 or 0.5,
 })
-local profiles = lw.deconvolve(lines, { method = job.deconvolve })     -- refolded, or it stops here
+local profiles = lw.deconvolve(lines, { method = job.deconvolve, standard = neighbours }) -- refolded, or it stops here
 local results  = lw.separate(profiles, {                               -- every method that applies
   methods = job.methods, uncertainty = job.uncertainty, realisations = job.realisations, seed = job.seed,
 })

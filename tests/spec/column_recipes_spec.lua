@@ -117,4 +117,22 @@ describe("the recipe", function()
     assert.is_table(ways.stokes.methods.warren_averbach)
     assert.is_true(helper.exists(folder .. "/compare_methods/figures/compared_size_area.svg"))
   end)
+
+  it("compare_methods takes the standard's own lines for the ways that can, and says where none can", function()
+    local standard = "standard=" .. demo .. "/lab6_after_service.xy"
+    local function of(...)
+      local code, _, err = recipe("compare_methods", "ways=convolution,stokes", "methods=williamson_hall", ...)
+      assert.are.same({ 0, "" }, { code, err })
+      local ways = record.read(folder .. "/compare_methods/results.json").ways
+      return ways.convolution.methods.williamson_hall, ways.stokes.methods.williamson_hall
+    end
+    local same, smooth = of()
+    local shape, measured = of(standard)
+    assert.are.equal(same.size_volume.value, shape.size_volume.value)
+    assert.are_not.equal(smooth.size_volume.value, measured.size_volume.value)
+    assert.matches("as measured on the lines of", helper.read(folder .. "/compare_methods/report.html"))
+    local refused, _, why = recipe("compare_methods", standard, "ways=convolution,physical")
+    assert.are.equal(1, refused)
+    assert.matches("none of the ways %(convolution, physical%) can take the standard's measured lines", why)
+  end)
 end)

@@ -189,6 +189,29 @@ describe("the recipe", function()
       end
     end)
 
+    it("takes the instrument from the standard's own lines, but not into a fitted shape", function()
+      local function with(...)
+        return recipe("size_strain", "scan=" .. nickel, "material=nickel", "standard=" .. after,
+          "calibration=" .. made .. "/after/calibration.json", ...)
+      end
+      local code, _, err = with("deconvolve=stokes", "out=measured")
+      assert.are.same({ 0, "" }, { code, err })
+      assert.are.equal(0, (recipe("size_strain", "scan=" .. nickel, "material=nickel", "deconvolve=stokes",
+        "calibration=" .. made .. "/after/calibration.json", "out=smooth")))
+      local of = {}
+      for _, out in ipairs { "measured", "smooth" } do
+        of[out] = record.read(folder .. "/" .. out .. "/results.json").methods.williamson_hall
+      end
+      -- another instrument, so another number, though none that is far away
+      local one, other = of.measured.size_volume, of.smooth.size_volume
+      assert.are_not.equal(one.value, other.value)
+      assert.is_true(math.abs(one.value - other.value) < 3 * math.sqrt(one.u ^ 2 + other.u ^ 2))
+      local refused, _, why = with "out=shape"
+      assert.are.equal(1, refused)
+      assert.matches("method convolution folds the calibration's own function into a fit", why)
+      assert.is_false(helper.exists(folder .. "/shape/results.json"))
+    end)
+
     it("has a schema to be held against", function()
       if not has_jsonschema then pending "python3-jsonschema is not here" end
     end)
