@@ -3,18 +3,26 @@
 #include "bind/standards.h"
 
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 #define VERB "standard"
+#define INDEX_MOST 999 /* no line has an index like it */
 
 /* "104", "1 0 4", "-1 0 10": three indices, parted by blanks where one has two digits. */
 static bool read_hkl(const char *text, lw_intensity *out)
 {
-    int used = 0;
-    if (sscanf(text, "%d %d %d %n", &out->h, &out->k, &out->l, &used) == 3 && text[used] == '\0')
-        return true;
-    return strlen(text) == 3 && strspn(text, "0123456789") == 3 && (out->h = text[0] - '0', out->k = text[1] - '0',
-                                                                    out->l = text[2] - '0', true);
+    int *const index[3] = {&out->h, &out->k, &out->l};
+    bool together = strlen(text) == 3 && strspn(text, "0123456789") == 3;
+    for (int i = 0; i < 3; i++) {
+        char *end = NULL;
+        long number = together ? text[i] - '0' : strtol(text, &end, 10);
+        if (number < -INDEX_MOST || number > INDEX_MOST || end == text || (i < 2 && end != NULL && *end != ' '))
+            return false;
+        *index[i] = (int)number;
+        text = together ? text : end;
+    }
+    return together || text[strspn(text, " ")] == '\0';
 }
 
 /* intensities = { { hkl = "104", value = 100, expanded_uncertainty = 2 }, ... } */
