@@ -139,15 +139,15 @@ static void tell_lines(const lw_profiles *profiles, lw_node *result, lw_error *e
 }
 
 /* How a headline moves with the parts of the lines. */
-static lw_status share(const lw_profiles *profiles, const part *m, bool gauss, const char *field, double of,
-                       const lw_generalised_fit *fit, lw_arena *arena, lw_node *result, lw_error *err)
+static void share(const lw_profiles *profiles, const part *m, bool gauss, const char *field, double of,
+                  const lw_generalised_fit *fit, lw_arena *arena, lw_node *result, lw_error *err)
 {
     size_t *row = lw_arena_take(arena, m->n, sizeof *row, err);
     if (row == NULL)
-        return LW_OUT_OF_MEMORY;
+        return;
     for (size_t i = 0; i < m->n; i++)
         row[i] = gauss ? m->profile[i]->at_gauss : m->profile[i]->at_lorentz;
-    return lw_shared_tell(profiles, field, fit, m->n, 1, &of, row, NULL, arena, result, err);
+    lw_shared_tell(profiles, field, fit, m->n, 1, &of, row, NULL, arena, result, err);
 }
 
 /* One headline from a part, with its statistics. *enlarged receives the factor on its u where the lines
@@ -177,14 +177,14 @@ static lw_status tell_mean(const lw_profiles *profiles, bool gauss, lw_arena *ar
         lw_quantity strain = strain_of(lw_quantity_of(value, u, ""), 0.5);
         lw_quantity rms = times(strain, LW_RMS_PER_APPARENT);
         if (rms.kind == LW_VALUE)
-            status = share(profiles, &m, gauss, "strain_rms", LW_RMS_PER_APPARENT, &fit, arena, result, err);
+            share(profiles, &m, gauss, "strain_rms", LW_RMS_PER_APPARENT, &fit, arena, result, err);
         lw_readings_widen(readings, LW_READ_STRAIN, 0, &rms, result, err);
         lw_add_quantity(result, "strain_apparent", times(rms, 1 / LW_RMS_PER_APPARENT), STRAIN, err);
         lw_add_quantity(result, "strain_rms", rms, RMS, err);
     } else {
         lw_quantity mean = size_of(lw_quantity_of(value, u, "nm^-1"));
         if (mean.kind == LW_VALUE)
-            status = share(profiles, &m, gauss, "size_volume", -1 / (value * value), &fit, arena, result, err);
+            share(profiles, &m, gauss, "size_volume", -1 / (value * value), &fit, arena, result, err);
         lw_readings_widen(readings, LW_READ_SIZE_VOLUME, 0, &mean, result, err);
         lw_add_quantity(result, "size_volume", mean, SIZE, err);
     }
