@@ -13,16 +13,20 @@
 static bool read_hkl(const char *text, lw_intensity *out)
 {
     int *const index[3] = {&out->h, &out->k, &out->l};
-    bool together = strlen(text) == 3 && strspn(text, "0123456789") == 3;
+    if (strlen(text) == 3 && strspn(text, "0123456789") == 3) {
+        for (int i = 0; i < 3; i++)
+            *index[i] = text[i] - '0';
+        return true;
+    }
     for (int i = 0; i < 3; i++) {
-        char *end = NULL;
-        long number = together ? text[i] - '0' : strtol(text, &end, 10);
-        if (number < -INDEX_MOST || number > INDEX_MOST || end == text || (i < 2 && end != NULL && *end != ' '))
+        char *end;
+        long number = strtol(text, &end, 10);
+        if (end == text || (i < 2 && *end != ' ') || number < -INDEX_MOST || number > INDEX_MOST)
             return false;
         *index[i] = (int)number;
-        text = together ? text : end;
+        text = end;
     }
-    return together || text[strspn(text, " ")] == '\0';
+    return text[strspn(text, " ")] == '\0';
 }
 
 /* intensities = { { hkl = "104", value = 100, expanded_uncertainty = 2 }, ... } */
