@@ -224,9 +224,9 @@ describe("a joined calibration's record", function()
       if row.name == "zero_shift" then assert.is_near(-0.029, row.difference.value, 0.002) end
       if row.name == "displacement" then assert.is_near(-0.115, row.difference.value, 0.004) end
     end
-    local course = lw.history({ { calibration = before, label = "before" },
+    local control = lw.history({ { calibration = before, label = "before" },
                                 { calibration = joined, label = "after", after_service = true } }, {})
-    assert.are.equal("lab6-660c", course.calibrations[2].standard)
+    assert.are.equal("lab6-660c", control.calibrations[2].standard)
     local scan = lw.read_scan(roads.path "nickel_milled_04h", { radiation = joined.radiation })
     local lines = lw.fit_lines(scan, lw.material("nickel"):reflections(scan), { instrument = joined })
     assert.is_near(0.352, lw.separate(lw.deconvolve(lines, {})).lattice.a.value, 0.001)
