@@ -11,15 +11,10 @@
 #include "bind/report_parts.h"
 #include "bind/reports.h"
 #include "bind/roads.h"
-#include "record/gnuplot.h"
 
-#include <stdio.h>
 #include <string.h>
 
 #define COLUMNS_MOST 1000
-
-/* User values: list of figures, list of the prefixes of their files, the prefix of the present section. */
-enum { FIGURES = 1, SUBJECT, PREFIXES, PREFIX, VALUES = 4 };
 
 /* How much of an object is shown. */
 typedef enum part { WHOLE, BRIEF, DETAILS } part;
@@ -57,11 +52,11 @@ static void add_figure(lua_State *L, lw_report *report, int self)
     lw_error err = LW_ERROR_NONE;
     const lwb_figure *figure = lwb_self(L, -1, &lwb_figure_noun, "report");
     lwb_check(L, lw_report_figure(report, figure->figure, &err), &err);
-    lua_getiuservalue(L, self, FIGURES);
+    lua_getiuservalue(L, self, LWB_REPORT_FIGURES);
     lua_pushvalue(L, -2);
     lua_rawseti(L, -2, (lua_Integer)lua_rawlen(L, -2) + 1);
-    lua_getiuservalue(L, self, PREFIXES);
-    lua_getiuservalue(L, self, PREFIX);
+    lua_getiuservalue(L, self, LWB_REPORT_PREFIXES);
+    lua_getiuservalue(L, self, LWB_REPORT_PREFIX);
     lua_rawseti(L, -2, (lua_Integer)lua_rawlen(L, -3));
     lua_pop(L, 3);
 }
@@ -322,7 +317,7 @@ static bool add_object(lua_State *L, lw_report *report, int self, int item, part
     else
         return false;
     lua_pushvalue(L, item); /* the last of them tells the provenance which calibration was used */
-    lua_setiuservalue(L, self, SUBJECT);
+    lua_setiuservalue(L, self, LWB_REPORT_SUBJECT);
     return true;
 }
 
@@ -366,7 +361,7 @@ static void add_table_item(lua_State *L, lw_report *report, int self, int item)
     if (head != NULL) {
         heading(L, report, head);
         lua_pushstring(L, lwb_field_text(L, item, "prefix", "report", ""));
-        lua_setiuservalue(L, self, PREFIX);
+        lua_setiuservalue(L, self, LWB_REPORT_PREFIX);
     }
     if (verdict != NULL) {
         static const char *const words[] = {"pass", "attention", "fail", NULL};
@@ -428,14 +423,14 @@ static int make(lua_State *L)
         lua_getiuservalue(L, -1, LWB_JOB_TITLE);
         title = lua_tostring(L, -1); /* the job keeps it alive */
     }
-    lwb_box *box = lwb_new_box(L, &lwb_report_noun, VALUES);
+    lwb_box *box = lwb_new_box(L, &lwb_report_noun, LWB_REPORT_VALUES);
     int self = lua_gettop(L);
     lua_newtable(L);
-    lua_setiuservalue(L, self, FIGURES);
+    lua_setiuservalue(L, self, LWB_REPORT_FIGURES);
     lua_newtable(L);
-    lua_setiuservalue(L, self, PREFIXES);
+    lua_setiuservalue(L, self, LWB_REPORT_PREFIXES);
     lua_pushliteral(L, "");
-    lua_setiuservalue(L, self, PREFIX);
+    lua_setiuservalue(L, self, LWB_REPORT_PREFIX);
     lw_report *report = lw_report_new(lwb_engine(L), title ? title : "Report",
                                       lwb_field_text(L, 1, "subtitle", "report", NULL), &err);
     box->object = report;
@@ -449,71 +444,10 @@ static int make(lua_State *L)
     return 1;
 }
 
-/* figures/NAME with the prefix of its section, without a suffix. The lists lie at `figures` and after it. */
-static void file_name(lua_State *L, int figures, lua_Integer i, char name[256])
-{
-    lua_rawgeti(L, figures, i);
-    const lwb_figure *figure = lwb_self(L, -1, &lwb_figure_noun, "job:write");
-    lua_rawgeti(L, figures + 1, i);
-    const char *prefix = lua_tostring(L, -1);
-    snprintf(name, 256, "figures/%.100s%s%.100s", prefix, prefix[0] != '\0' ? "_" : "", figure->figure->name);
-    lua_pop(L, 2);
-}
-
-/* Writes every figure that the report shows; the second of a name gets a number. */
-static void write_figures(lua_State *L, int index)
-{
-    static const char *const suffix[] = {"svg", "png"};
-    lw_error err = LW_ERROR_NONE;
-    lua_getiuservalue(L, index, FIGURES);
-    int figures = lua_gettop(L);
-    lua_getiuservalue(L, index, PREFIXES);
-    for (lua_Integer i = 1, n = (lua_Integer)lua_rawlen(L, figures); i <= n; i++) {
-        char name[256], other[256], whole[300], number[16] = "";
-        int same = 1;
-        file_name(L, figures, i, name);
-        for (lua_Integer j = 1; j < i; j++) {
-            file_name(L, figures, j, other);
-            same += strcmp(other, name) == 0;
-        }
-        if (same > 1)
-            snprintf(number, sizeof number, "_%d", same);
-        lua_rawgeti(L, figures, i);
-        const lwb_figure *figure = lwb_self(L, -1, &lwb_figure_noun, "job:write");
-        for (int k = 0; k < 2; k++) {
-            snprintf(whole, sizeof whole, "%s%s.%s", name, number, suffix[k]);
-            const char *file = lwb_push_out_path(L, whole, "job:write");
-            lwb_check(L, lw_figure_save_as(lwb_engine(L), figure->figure, file, &err), &err);
-            lua_pop(L, 1);
-        }
-        lua_pop(L, 1);
-    }
-}
-
-void lwb_write_report(lua_State *L, int index)
-{
-    lw_error err = LW_ERROR_NONE;
-    index = lua_absindex(L, index);
-    int top = lua_gettop(L);
-    luaL_checkstack(L, 20, NULL);
-    lw_report *report = lwb_object(L, index, &lwb_report_noun, "job:write");
-    const char *path = lwb_push_out_path(L, "report.html", "job:write");
-    lwb_tree *tree = lwb_new_tree(L);
-    lua_getiuservalue(L, index, SUBJECT);
-    lwb_add_provenance(L, tree->root, -1);
-    lwb_check(L, lw_report_provenance(report, tree->root->first, &err), &err);
-    lwb_check(L, lw_report_save(lwb_engine(L), report, path, &err), &err);
-    if (lw_report_warning(report) != NULL)
-        fprintf(stderr, "warning: figures are missing: %s\n", lw_report_warning(report));
-    else
-        write_figures(L, index);
-    lua_settop(L, top);
-}
-
 static int show(lua_State *L)
 {
     lwb_self(L, 1, &lwb_report_noun, "tostring");
-    lua_getiuservalue(L, 1, FIGURES);
+    lua_getiuservalue(L, 1, LWB_REPORT_FIGURES);
     lua_pushfstring(L, "report with %d figures; write it with job:write", (int)lua_rawlen(L, -1));
     return 1;
 }

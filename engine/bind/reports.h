@@ -5,6 +5,15 @@
 
 #include "bind/bind.h"
 
+/* User values of a report. */
+enum {
+    LWB_REPORT_FIGURES = 1, /* list of figures */
+    LWB_REPORT_SUBJECT,     /* the last object of the road that it shows, for the provenance */
+    LWB_REPORT_PREFIXES,    /* how the files' names of each figure begin */
+    LWB_REPORT_PREFIX,      /* of the present section */
+    LWB_REPORT_VALUES = LWB_REPORT_PREFIX
+};
+
 /* Writes the report at an index to out/report.html and its figures to out/figures. */
 void lwb_write_report(lua_State *L, int index);
 
