@@ -53,8 +53,6 @@ int lwb_raise(lua_State *L, const lw_error *err);
 int lwb_refuse(lua_State *L, const char *hint, const char *format, ...); /* kind "bad argument" */
 /* Pushes an error object without raising it, with the place of the caller. */
 void lwb_push_error(lua_State *L, const char *kind, const char *message, const char *hint);
-/* Pushes "recipe.lua:12: " of the nearest Lua caller, or "". */
-void lwb_where(lua_State *L);
 /* Raises unless status is LW_OK. */
 void lwb_check(lua_State *L, lw_status status, const lw_error *err);
 

@@ -41,15 +41,6 @@ static void push_place(lua_State *L)
     lua_pushliteral(L, "");
 }
 
-void lwb_where(lua_State *L)
-{
-    push_place(L);
-    if (lua_rawlen(L, -1) > 0) {
-        lua_pushliteral(L, ": ");
-        lua_concat(L, 2);
-    }
-}
-
 void lwb_push_error(lua_State *L, const char *kind, const char *message, const char *hint)
 {
     luaL_checkstack(L, 6, NULL);

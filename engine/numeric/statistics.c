@@ -117,16 +117,6 @@ static double beta_fraction(double a, double b, double x, double y, double front
     return turn ? 1 - value : value;
 }
 
-double lw_incomplete_beta(double a, double b, double x)
-{
-    if (!(a > 0) || !(b > 0) || !(x >= 0 && x <= 1))
-        return NAN;
-    if (x == 0 || x == 1)
-        return x;
-    double front = exp(lgamma(a + b) - lgamma(a) - lgamma(b) + a * log(x) + b * log1p(-x));
-    return beta_fraction(a, b, x, 1 - x, front);
-}
-
 /* P(T > t) for t >= 0: I_x(dof/2, 1/2)/2 with x = dof/(dof + t^2). */
 static double student_tail(double t, double dof)
 {

@@ -18,8 +18,6 @@ double lw_student_probability(double t, double dof);
 double lw_student_quantile(double p, double dof);
 /* The coverage factor k of a two-sided interval of the given probability (0.95: 1.96 for infinite dof). */
 double lw_coverage_factor(double probability, double dof);
-/* Regularised incomplete beta function I_x(a, b), a, b > 0, 0 <= x <= 1 (continued fraction). */
-double lw_incomplete_beta(double a, double b, double x);
 
 /* Durbin-Watson statistic of residuals in order: 2 for none, below 2 for positive serial correlation
  * (Durbin & Watson 1950 Biometrika 37, 409; the weighted residuals of a scan: Hill & Flack 1987 J. Appl.

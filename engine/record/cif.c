@@ -1,7 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "record/cif.h"
 
-#include "record/file.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -242,15 +241,4 @@ lw_status lw_cif_write(const lw_node *group, const char *name, lw_text *out, lw_
         }
     }
     return status == LW_OK ? lw_text_check(out, err) : status;
-}
-
-lw_status lw_cif_save(lw_engine *engine, const char *path, const lw_node *group, const char *name, lw_error *err)
-{
-    lw_text text;
-    lw_text_begin(&text, engine);
-    lw_status status = lw_cif_write(group, name, &text, err);
-    if (status == LW_OK)
-        status = lw_write_file(engine, path, text.bytes, text.n, err);
-    lw_text_end(&text);
-    return status;
 }

@@ -20,9 +20,6 @@
  * groups, or a group that holds no vectors; LW_OUT_OF_MEMORY. */
 lw_status lw_cif_write(const lw_node *group, const char *name, lw_text *out, lw_error *err);
 
-/* The same to a file (record/file.h). */
-lw_status lw_cif_save(lw_engine *engine, const char *path, const lw_node *group, const char *name, lw_error *err);
-
 /* Appends value(su) as CIF writes it: the uncertainty's first two digits count units of the value's last
  * place; without uncertainty (0 or not finite) the shortest digits that read back to the same value. */
 void lw_cif_write_number(lw_text *out, double value, double u);
