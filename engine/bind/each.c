@@ -25,7 +25,8 @@ typedef struct each {
     char broken[400];       /* why no more are begun; "" = nothing is wrong */
 } each;
 
-/* User values. FOUND has results and MESSAGES texts by place; both are false for what is under way. */
+/* User values. FOUND has results and MESSAGES texts by place; both have nothing for what is under way, and FOUND has
+ * false where a worker ended before it was done. */
 enum { ITEMS = 1, KEY, FUNCTION, FOUND, MESSAGES, KEYS };
 
 static int end_each(lua_State *L)

@@ -25,7 +25,7 @@ void lw_fit_weigh(lw_fit_state *fit, bool from_model)
         least = 1e-4 * sum / (double)scan->n;
     }
     for (size_t i = 0; i < scan->n; i++) {
-        double level = scan->intensity[i];
+        double level;
         if (from_model)
             level = fit->model.curve[i];
         else {
