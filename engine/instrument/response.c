@@ -145,10 +145,17 @@ static lw_status covariance_inverse(lw_engine *engine, const lw_lines *lines, co
     return lw_invert_normal(engine, c, n, NULL, inverse, &weakest, err);
 }
 
-static void write_rows(const fit *f, const row *rows, double low, double high, lw_node *result, lw_error *err)
+/* Factor on u where the lines scatter about the curve beyond chance (Birge 1932 Phys. Rev. 40, 207), else 1. */
+static double birge_ratio(const fit *f)
+{
+    double freedom = (double)f->n - (double)f->order - 1;
+    return lw_chi2_tail(f->chi2, freedom) < 1e-3 ? sqrt(f->chi2 / freedom) : 1;
+}
+
+static void write_rows(const fit *f, const row *rows, bool heights, double low, double high, lw_node *result, lw_error *err)
 {
     lw_node *list = lw_add_list(result, "lines", err);
-    double mean = 0;
+    double mean = 0, birge = birge_ratio(f);
     for (size_t i = 0; i < f->n; i++) { /* the scale: the curve's mean over the lines is 1 */
         double x = place(rows[i].angle, low, high), p = 1;
         for (size_t a = 0; a <= f->order; a++, p *= x)
@@ -160,17 +167,17 @@ static void write_rows(const fit *f, const row *rows, double low, double high, l
         lw_node *at = lw_add_group(list, NULL, err);
         lw_add_text(at, "hkl", lw_hkl_text(rows[i].certified->h, rows[i].certified->k, rows[i].certified->l, hkl, sizeof hkl), err);
         lw_add_quantity(at, "two_theta", rows[i].line->two_theta, NULL, err);
-        lw_add_quantity(at, "observed", rows[i].line->area, NULL, err);
+        lw_add_quantity(at, "observed", heights ? rows[i].line->height : rows[i].line->area, NULL, err);
         lw_add_quantity(at, "certified", lw_quantity_of(rows[i].certified->value, rows[i].certified->u, ""), NULL, err);
         lw_add_quantity(at, "ratio", lw_quantity_of(ratio, ratio * rows[i].u_log, ""), NULL, err);
-        lw_add_quantity(at, "curve", lw_quantity_of(exp(value), exp(value) * u, ""), NULL, err);
+        lw_add_quantity(at, "curve", lw_quantity_of(exp(value), exp(value) * u * birge, ""), NULL, err);
         lw_add_number(at, "pull", (rows[i].log_ratio - mean - value) / rows[i].u_log, err);
     }
     double angle[CURVE], response[CURVE], band[CURVE];
     for (size_t i = 0; i < CURVE; i++) {
         double u, value = curve_at(f, rows, angle[i] = low + (high - low) * (double)i / (CURVE - 1), low, high, &u);
         response[i] = exp(value);
-        band[i] = response[i] * u;
+        band[i] = response[i] * u * birge;
     }
     lw_node *group = lw_add_group(result, "curve", err);
     lw_add_vector(group, "two_theta", angle, CURVE, "deg", err);
@@ -181,8 +188,7 @@ static void write_rows(const fit *f, const row *rows, double low, double high, l
 static void write_verdict(const fit *tried, size_t n_tried, const fit *kept, const row *rows, double low, double high,
                           lw_node *result, lw_error *err)
 {
-    double freedom = (double)kept->n - (double)kept->order - 1, fits = lw_chi2_tail(kept->chi2, freedom);
-    double birge = fits < 1e-3 ? sqrt(kept->chi2 / freedom) : 1;
+    double freedom = (double)kept->n - (double)kept->order - 1, fits = lw_chi2_tail(kept->chi2, freedom), birge = birge_ratio(kept);
     /* a response that is flat leaves chi-square of the bent curve no lower than chance: line and parabola are what a
      * cut beam or lost counts look like */
     const fit *bent = &tried[n_tried > 3 ? 2 : n_tried - 1];
@@ -267,7 +273,7 @@ static lw_status respond(lw_engine *engine, const lw_lines *lines, const lw_stan
         lw_add_number(at, "chi2", tried[i].chi2, err);
         lw_add_number(at, "aicc_above_best", tried[i].criterion - tried[best].criterion, err);
     }
-    write_rows(&tried[best], rows, low, high, result, err);
+    write_rows(&tried[best], rows, standard->intensities_are_heights, low, high, result, err);
     if (why[0] != '\0')
         lw_add_text(result, "left_out", why, err);
     write_verdict(tried, n_tried, &tried[best], rows, low, high, result, err);
