@@ -104,7 +104,7 @@ static void tell_trial(lw_set *set, const lw_set_column *column, size_t k, doubl
  * can't be ruled out stays in the uncertainty. */
 static lw_status choose_columns(lw_engine *engine, lw_set *set, double *slope, double *estimator, lw_error *err)
 {
-    double chi2, best, value[LW_SET_COLUMNS];
+    double chi2 = 0, best, value[LW_SET_COLUMNS];
     lw_status status = fit_columns(engine, set, set->column, set->n_columns, 0, set->n_lines, slope, estimator, value, &chi2, err);
     best = lw__aicc(chi2, set->n_lines, set->n_columns);
     if (status == LW_OK)
