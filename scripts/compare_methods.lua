@@ -96,7 +96,6 @@ local function compared(field, label, unit)
       local one = by_way[row.way]
       if not one then
         one = { kind = "points", label = row.way .. ", 2 u", x = {}, y = {}, u_y = {} }
-
         by_way[row.way], series[#series + 1] = one, one
         shift[one] = 0.12 * (#series - 2)
       end

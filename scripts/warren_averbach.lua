@@ -47,7 +47,6 @@ local result   = lw.warren_averbach(profiles, {
 local rest     = lw.separate(profiles, { methods = "lattice" }) -- lines and cell, for the record
 print(result)
 
-
 local items = { title = "Warren-Averbach: " .. powder.title, subtitle = scan.file }
 if powder.hazard ~= "" then
   items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }

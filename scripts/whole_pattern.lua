@@ -33,7 +33,6 @@ local result   = lw.whole_pattern(profiles, { strain = job.strain, size = job.si
 local rest     = lw.separate(profiles, { methods = "lattice" }) -- lines and cell, for the record
 print(result)
 
-
 local items = { title = "Whole pattern: " .. powder.title, subtitle = scan.file }
 if powder.hazard ~= "" then
   items[#items + 1] = { caution = powder.hazard, title = "Handling the powder" }
