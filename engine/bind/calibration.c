@@ -10,6 +10,7 @@
 #include "bind/inputs.h"
 #include "bind/outputs.h"
 #include "bind/roads.h"
+#include "bind/standards.h"
 #include "line/width_figure.h"
 #include "record/file.h"
 #include "record/json.h"
@@ -36,18 +37,6 @@ static void keep_record(lua_State *L, const lw_calibration *calibration)
 {
     lwb_push_node(L, calibration->record, -1);
     lua_setiuservalue(L, -2, LWB_CALIBRATION_TREE);
-}
-
-/* The standard at an index, made of its name if it is one; what is there afterwards keeps it alive. */
-static const lw_standard *standard_at(lua_State *L, int index)
-{
-    if (lua_type(L, index) == LUA_TSTRING) {
-        lua_pushcfunction(L, lwb_standard_noun.functions[0].func);
-        lua_pushvalue(L, index);
-        lua_call(L, 1, 1);
-        lua_replace(L, index);
-    }
-    return lwb_self(L, index, &lwb_standard_noun, "calibrate");
 }
 
 /* Entry `at` of the list of scans at index 1, into the list of lines at `lines` and of standards at `standards`. */
@@ -77,7 +66,7 @@ static void read_entry(lua_State *L, lua_Integer at, int lines, int standards, l
     if (lua_isnil(L, -1))
         lwb_refuse(L, "calibrate({ { lines, standard }, { lines, standard } }, { ... })",
                    "calibrate: scan %d has no standard", (int)at);
-    scan->standard = standard_at(L, lua_gettop(L));
+    scan->standard = lwb_standard_at(L, lua_gettop(L), "calibrate");
     lua_rawseti(L, standards, at);
     lua_settop(L, entry - 1);
 }
@@ -110,7 +99,7 @@ static int calibrate(lua_State *L)
     } else {
         scan[0] = (lw_calibration_scan){.attenuation_per_mm = NAN};
         scan[0].lines = lwb_object(L, 1, &lwb_lines_noun, "calibrate");
-        scan[0].standard = standard_at(L, 2);
+        scan[0].standard = lwb_standard_at(L, 2, "calibrate");
     }
     lw_calibrate_options options = lw_calibrate_defaults();
     lwb_options(L, 3, "calibrate", lw_calibrate_option_table, NULL, &options);
@@ -171,9 +160,8 @@ lwb_tree *lwb_calibration_record(lua_State *L, int index)
     const lw_node *made = lw_node_get(calibration->record, "provenance");
     if (made != NULL) /* a record that was loaded keeps where it came from */
         lw_add_copy(tree->root, "provenance", made, &err);
-    else {
+    else
         lwb_add_provenance(L, tree->root, index);
-    }
     lwb_check(L, LW_OK, &err);
     return tree;
 }

@@ -12,13 +12,7 @@ int lwb_response(lua_State *L)
     lua_settop(L, 3);
     luaL_checkstack(L, 20, NULL);
     const lw_lines *lines = lwb_object(L, 1, &lwb_lines_noun, "response");
-    if (lua_type(L, 2) == LUA_TSTRING) {
-        lua_pushcfunction(L, lwb_standard_noun.functions[0].func);
-        lua_pushvalue(L, 2);
-        lua_call(L, 1, 1);
-        lua_replace(L, 2);
-    }
-    const lw_standard *standard = lwb_self(L, 2, &lwb_standard_noun, "response");
+    const lw_standard *standard = lwb_standard_at(L, 2, "response");
     lw_response_options options = lw_response_defaults();
     lwb_options(L, 3, "response", lw_response_option_table, NULL, &options);
     lwb_tree *tree = lwb_new_tree(L);

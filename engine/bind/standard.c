@@ -158,3 +158,14 @@ const lwb_noun lwb_standard_noun = {.name = "standard",
                                     .metamethods = metamethods,
                                     .fields = fields,
                                     .field = field};
+
+const lw_standard *lwb_standard_at(lua_State *L, int index, const char *verb)
+{
+    if (lua_type(L, index) == LUA_TSTRING) {
+        lua_pushcfunction(L, make);
+        lua_pushvalue(L, index);
+        lua_call(L, 1, 1);
+        lua_replace(L, index);
+    }
+    return lwb_self(L, index, &lwb_standard_noun, verb);
+}

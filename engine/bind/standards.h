@@ -18,6 +18,10 @@ void lwb_load_literal(lua_State *L, const char *path);
  * raise with the nearest spelling and the list. */
 void lwb_find_literal(lua_State *L, const char *kind, const char *verb, const char *name);
 
+/* The standard at an index, made of its name or path where a text stands there; what is there afterwards keeps it
+ * alive. */
+const lw_standard *lwb_standard_at(lua_State *L, int index, const char *verb);
+
 /* Reads the parts of a material that a material and a reference have in common from the table at index. */
 void lwb_read_material(lua_State *L, int index, const char *verb, lw_material *material);
 /* Fields of a material for scripts: pushes the one of a key, or returns false. */
