@@ -232,7 +232,7 @@ local functions = {
     "Relative intensities of a standard against its certificate as a curve of the angle, flat or not.",
     { p("lines", "lines", "of the standard"),
       p("standard", "standard", "with certified intensities, or its name or file") },
-    "result"),
+    "result", "order of the curve: Hurvich & Tsai (1989) Biometrika 76, 297"),
   dead_time = entry("lw.dead_time(stronger, weaker, { ... })",
     "Dead time of the counter from two scans of one specimen at two currents, and the loss at the strongest point; or "
       .. "lw.dead_time(scan, { dead_time = 2e-6 }): the loss by a stated one.",
