@@ -142,10 +142,18 @@ static double quantile(const double *sorted, size_t n, double p)
     return sorted[below] + (at - (double)below) * (sorted[above] - sorted[below]);
 }
 
+/* How far a quantile of n draws may be off: the rank is binomial, its standard deviation carried to the values beside
+ * it (David & Nagaraja 2003, Order Statistics, 7.1; from memory). */
+static double quantile_u(const double *sorted, size_t n, double p)
+{
+    double spread = sqrt(p * (1 - p) / (double)n), low = fmax(p - spread, 0), high = fmin(p + spread, 1);
+    return (quantile(sorted, n, high) - quantile(sorted, n, low)) * spread / (high - low);
+}
+
 lw__summary lw__summarise(const lw__collection *collection, size_t entry, double *scratch)
 {
     const double *value = collection->entry[entry].value;
-    lw__summary out = {.mean = NAN, .u = NAN, .low = NAN, .high = NAN};
+    lw__summary out = {.mean = NAN, .u = NAN, .low = NAN, .high = NAN, .u_low = NAN, .u_high = NAN};
     size_t n = 0;
     for (size_t i = 0; i < collection->taken; i++) {
         if (isnan(value[i]))
@@ -166,5 +174,7 @@ lw__summary lw__summarise(const lw__collection *collection, size_t entry, double
     lw_sort(scratch, n);
     out.low = quantile(scratch, n, 0.025);
     out.high = quantile(scratch, n, 0.975);
+    out.u_low = quantile_u(scratch, n, 0.025);
+    out.u_high = quantile_u(scratch, n, 0.975);
     return out;
 }

@@ -31,6 +31,7 @@ typedef struct lw__summary {
     size_t values, limits, missing;
     double mean, u;   /* over the values; NAN below two */
     double low, high; /* 2.5 and 97.5 % quantiles, limits ranked where they point to; NAN where they fall on a limit */
+    double u_low, u_high; /* standard uncertainties of the two for want of draws; NAN where they can't be had */
 } lw__summary;
 /* scratch[collection->taken]. */
 lw__summary lw__summarise(const lw__collection *collection, size_t entry, double *scratch);

@@ -170,10 +170,12 @@ static void tell_row(lw_node *list, const lw__collected *entry, const lw__summar
     if (s->values >= 2) {
         lw_add_quantity(row, "drawn", lw_quantity_of(s->mean, s->u, unit),
                         "Mean of the realisations, and their standard deviation as u.", err);
-        if (isfinite(s->low))
-            lw_add_quantity(row, "low", lw_quantity_of(s->low, 0, unit), "2.5 % of the realisations lie below it.", err);
-        if (isfinite(s->high))
-            lw_add_quantity(row, "high", lw_quantity_of(s->high, 0, unit), "2.5 % of the realisations lie above it.", err);
+        if (isfinite(s->low) && isfinite(s->u_low))
+            lw_add_quantity(row, "low", lw_quantity_of(s->low, s->u_low, unit),
+                            "2.5 % of the realisations lie below it; u: for want of more of them.", err);
+        if (isfinite(s->high) && isfinite(s->u_high))
+            lw_add_quantity(row, "high", lw_quantity_of(s->high, s->u_high, unit),
+                            "2.5 % of the realisations lie above it; u: for want of more of them.", err);
         if (analytic.kind == LW_VALUE && analytic.u > 0)
             lw_add_number(row, "ratio", s->u / analytic.u, err);
         if (expected > 0)

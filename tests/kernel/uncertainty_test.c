@@ -84,6 +84,9 @@ static void straight_line(void)
     CHECK_RELATIVE(slope.u, u_slope, root / sqrt(2));
     CHECK_NEAR(slope.low, want_slope - 1.959964 * u_slope, 2.67 * root * u_slope);
     CHECK_NEAR(slope.high, want_slope + 1.959964 * u_slope, 2.67 * root * u_slope);
+    /* and told so, from the 20 draws beside each end: their spacings are exponential, so this scatters by 1/sqrt(20) */
+    CHECK_RELATIVE(slope.u_low, 2.67 / sqrt(TRIALS) * u_slope, 4 / sqrt(20));
+    CHECK_RELATIVE(slope.u_high, 2.67 / sqrt(TRIALS) * u_slope, 4 / sqrt(20));
     CHECK(slope.values == TRIALS && slope.limits == 0 && slope.missing == 0);
     CHECK(limited.values == TRIALS - TRIALS / 10 && limited.limits == TRIALS / 10);
     CHECK(isnan(limited.high) && isfinite(limited.low));
