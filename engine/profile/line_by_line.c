@@ -55,12 +55,13 @@ static lw_status refold_shape(const lw__job *job, lw_error *err)
 typedef struct leaning {
     double angle_deg[3], by[3][2]; /* widths of the instrument: at its own angle, at the standard's lines */
     lw__measured measured;
-    double *by_point[2]; /* [points of the standard's line's window] */
+    double *by_point[2];     /* [points of the standard's line's window] */
+    double off[LW__MEMBERS]; /* with the other forms for completion; squares add up to their variance */
 } leaning;
 
 static lw_status one_line(lw__job *job, const lw__separation *separation, lw__standard *standard, size_t k,
-                          lw__solve_fn *solve, lw__answer *answer, leaning *lean, lw_arena *arena,
-                          lw_error *err)
+                          const lw__physical_fit *physical, lw__solve_fn *solve, lw__answer *answer,
+                          leaning *lean, lw_arena *arena, lw_error *err)
 {
     lw_arena scratch;
     lw_arena_begin(&scratch, job->engine);
@@ -123,8 +124,30 @@ static lw_status one_line(lw__job *job, const lw__separation *separation, lw__st
     if (status == LW_OK && standard != NULL && !answer->from_shape && lean->by_point[0] == NULL)
         status = lw__measured_slopes(&job->measured, job->instrument.per_degree, profile, answer->breadth,
                                      arena, lean->by_point, err);
+    for (size_t m = 0; m < physical->n_members && status == LW_OK && !answer->from_shape; m++) {
+        /* the same data, taken apart and completed by another form within reach */
+        if (m == physical->best || !(physical->reach[m] > 0))
+            continue;
+        job->separation = &physical->apart[m];
+        job->line = &job->separation->line[k];
+        job->shape_breadth = lw__shape_breadth(&job->line->shape, NULL);
+        status = lw__take_window(job->profiles, k, job->separation, job->options->window, &scratch,
+                                 &job->data, err);
+        lw__answer other = *answer;
+        if (status == LW_OK)
+            status = solve(job, &taken, false, &scratch, &other, err);
+        lean->off[m] = sqrt(physical->reach[m]) * (other.breadth - answer->breadth);
+    }
     lw_arena_end(&scratch);
     return status == LW_OK ? lw_engine_poll(job->engine, err) : status;
+}
+
+static double between_forms(const leaning *a, const leaning *b)
+{
+    double sum = 0;
+    for (size_t m = 0; m < LW__MEMBERS; m++)
+        sum += a->off[m] * b->off[m];
+    return sum;
 }
 
 lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
@@ -133,7 +156,7 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
     size_t n = profiles->n, stride = profiles->n_covariance;
     lw_arena scratch;
     lw__separation separation;
-    lw__physical_fit physical;
+    lw__physical_fit physical = {0};
     lw_arena_begin(&scratch, engine);
     lw__answer *answer = lw_arena_take(&scratch, n, sizeof *answer, err);
     leaning *lean = lw_arena_take(&scratch, n, sizeof *lean, err);
@@ -159,8 +182,8 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
     lw__job job = {.engine = engine, .profiles = profiles, .options = options, .keep = &scratch};
     for (size_t k = 0; k < n && status == LW_OK; k++) {
         profiles->profile[k].assumed = separation.how;
-        status = one_line(&job, &separation, options->standard != NULL ? &standard : NULL, k, solve,
-                          &answer[k], &lean[k], &scratch, err);
+        status = one_line(&job, &separation, options->standard != NULL ? &standard : NULL, k, &physical,
+                          solve, &answer[k], &lean[k], &scratch, err);
         lw_engine_progress(engine, name, (double)(k + 1) / (double)n);
     }
     for (size_t a = 0; a < n && status == LW_OK; a++) {
@@ -187,7 +210,7 @@ lw_status lw__line_by_line(lw_engine *engine, lw_profiles *profiles, const lw_de
                     lw__measured_covariance(
                         &lean[a].measured, lean[a].by_point, &lean[b].measured, lean[b].by_point,
                         options->standard != NULL ? options->standard->scan->correlation : 0) +
-                    (a == b ? answer[a].variance : 0);
+                    between_forms(&lean[a], &lean[b]) + (a == b ? answer[a].variance : 0);
         }
         lw__set_breadth(profiles, profile, answer[a].breadth, sqrt(fmax(row[profile->at_breadth], 0)));
     }

@@ -14,21 +14,21 @@ static lw_status fill(lw_profiles *profiles, size_t k, const lw__physical_fit *f
 {
     lw_profile *profile = &profiles->profile[k];
     for (size_t i = 0; i < profile->n_coefficients; i++) {
-        double mean = 0, square = 0, variance = 0;
+        double value[LW__MEMBERS] = {0}, own[LW__MEMBERS] = {0}, off[LW__MEMBERS], variance = 0;
         for (size_t m = 0; m < fit->n_members; m++) {
-            if (!(fit->weight[m] > 0))
+            if (!(fit->reach[m] > 0))
                 continue;
-            double slope[4], own = 0;
-            double a = lw__shape_coefficient(&fit->shape[m][k], profile->length_nm[i], slope);
+            double slope[4];
+            value[m] = lw__shape_coefficient(&fit->shape[m][k], profile->length_nm[i], slope);
             for (int p = 0; p < 4; p++)
                 for (int q = 0; q < 4; q++)
-                    own += slope[p] * slope[q] * fit->shape_covariance[m][16 * k + (size_t)(4 * p + q)];
-            mean += fit->weight[m] * a;
-            square += fit->weight[m] * a * a;
-            variance += fit->weight[m] * fmax(own, 0);
+                    own[m] += slope[p] * slope[q] * fit->shape_covariance[m][16 * k + (size_t)(4 * p + q)];
+            own[m] = fmax(own[m], 0);
         }
-        profile->cosine[i] = mean;
-        profile->u_cosine[i] = sqrt(variance + fmax(square - mean * mean, 0));
+        profile->cosine[i] = lw__mean_of_members(fit, value, own, off);
+        for (size_t m = 0; m < fit->n_members; m++)
+            variance += fit->weight[m] * own[m] + off[m] * off[m];
+        profile->u_cosine[i] = sqrt(variance);
     }
     return lw__curve_of_coefficients(profiles, profile, breadth, err);
 }

@@ -4,8 +4,8 @@
  * of the distribution of sizes and the length over which strain is correlated; the background's Chebyshev
  * terms are fitted again, because tails of a shape that is too wide push it down. The form of the strain is
  * not known: each of a few is fitted, and they are averaged with weights exp(-chi2/2) (Burnham & Anderson
- * 2002 Model Selection and Multimodel Inference, 2nd ed., ch. 4), their scatter being part of the
- * uncertainty. */
+ * 2002 Model Selection and Multimodel Inference, 2nd ed., ch. 4; Hoeting et al. 1999 Stat. Sci. 14, 382),
+ * their scatter being part of the uncertainty. */
 #include "profile/physical_model.h"
 
 #include "numeric/cholesky.h"
@@ -201,6 +201,82 @@ static void take_member(lw__physical *f, size_t which)
     f->length_prior = f->size_prior + (f->form == &lw_strain_dislocations ? 0.7 : -0.7);
 }
 
+/* The scatter counts forms in reach more than evidence does, as where whole patterns are fitted: every form
+ * is an approximation, so that a difference in chi-square is worth less than if one of them were true. The
+ * likelihood is raised to a power for it (Miller & Dunson 2019 J. Am. Stat. Assoc. 114, 1113). */
+#define COARSE 0.05
+#define LEAST 0.01 /* reach, against the best, of a form that is taken along */
+
+static void weigh(lw__physical_fit *result, double inflate)
+{
+    double sum = 0, reach = 0;
+    for (size_t i = 0; i < result->n_members; i++) {
+        result->weight[i] = exp(-0.5 * (result->chi2[i] - result->chi2[result->best]) / inflate);
+        result->reach[i] = pow(result->weight[i], COARSE);
+        result->reach[i] = result->reach[i] > LEAST ? result->reach[i] : 0;
+        result->weight[i] = result->weight[i] < 1e-4 ? 0 : result->weight[i];
+        sum += result->weight[i];
+        reach += result->reach[i];
+    }
+    for (size_t i = 0; i < result->n_members; i++) {
+        result->weight[i] /= sum;
+        result->reach[i] /= reach;
+    }
+}
+
+double lw__mean_of_members(const lw__physical_fit *fit, const double *value, const double *variance,
+                           double *off)
+{
+    double mean = 0;
+    for (size_t i = 0; i < fit->n_members; i++)
+        mean += fit->weight[i] > 0 ? fit->weight[i] * value[i] : 0;
+    for (size_t i = 0; i < fit->n_members; i++) {
+        off[i] = 0;
+        if (!(fit->reach[i] > 0))
+            continue;
+        /* read from the same counts, a form that knows less than the best lies off by as much as the
+         * variances differ without meaning anything else (Hausman 1978 Econometrica 46, 1251) */
+        double d = value[i] - mean, chance = fmax(variance[i] - variance[fit->best], 0);
+        if (d * d > chance)
+            off[i] = sqrt(fit->reach[i] * (1 - chance / (d * d))) * d;
+    }
+    return mean;
+}
+
+/* The scan as a member takes it apart. Beside the best, which has it already, levels are the best's. */
+static lw_status take_apart(lw__physical *f, size_t which, const double *p, lw__physical_fit *result,
+                            lw_arena *arena, lw_error *err)
+{
+    lw__separation *out = &result->apart[which];
+    const lw__separation *best = &result->apart[result->best];
+    size_t n = f->n, lines = f->n_lines;
+    take_member(f, which);
+    lw_normal normal = {.n = f->n_parameters};
+    lw_status status = lw__physical_evaluate(f, p, false, &normal, err);
+    if (status != LW_OK)
+        return status;
+    out->how = best->how;
+    if (out != best)
+        out->line = lw_arena_copy(arena, best->line, lines, sizeof *out->line, err);
+    out->residual = lw_arena_copy(arena, f->model, n, sizeof(double), err);
+    out->background = lw_arena_copy(arena, f->profiles->lines->background, n, sizeof(double), err);
+    if (!out->line || !out->residual || !out->background)
+        return LW_OUT_OF_MEMORY;
+    for (size_t t = 0; t < f->n_terms; t++)
+        for (size_t i = 0; i < n; i++)
+            out->background[i] += p[f->at_terms + t] * f->term[t * n + i];
+    for (size_t k = 0; k < lines; k++) {
+        lw__separated *line = &out->line[k];
+        line->shape = lw__physical_shape(f, k, p);
+        line->curve = lw_arena_copy(arena, f->curve[k], n, sizeof(double), err);
+        line->shift_s = p[2 * k + 1];
+        line->area_s = p[2 * k] * f->line[k].instrument.per_degree;
+        if (line->curve == NULL)
+            return LW_OUT_OF_MEMORY;
+    }
+    return LW_OK;
+}
+
 static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *out, lw__physical_fit *result,
                              lw_error *err)
 {
@@ -309,13 +385,9 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
         return looked;
     result->goodness = result->chi2[best] / fmax((double)f->n - (double)m, 1);
     f->tied = true;
-    double inflate = misfit_factor(f), sum = 0;
-    for (size_t i = 0; i < n_forms; i++) {
-        result->weight[i] = exp(-0.5 * (result->chi2[i] - result->chi2[best]) / inflate);
-        sum += result->weight[i];
-    }
-    for (size_t i = 0; i < n_forms; i++)
-        result->weight[i] /= sum;
+    double inflate = misfit_factor(f);
+    result->best = best;
+    weigh(result, inflate);
     for (size_t i = 0; i < n_forms; i++) {
         lw_arena scratch;
         lw_arena_begin(&scratch, f->engine);
@@ -330,47 +402,40 @@ static lw_status fit_members(lw__physical *f, lw_arena *arena, lw__separation *o
             held[f->line[k].at_strain] |= p[i][f->line[k].at_strain] <= 0;
         }
         lw_status status =
-            result->weight[i] < 1e-4
+            !(result->reach[i] > 0)
                 ? LW_OK
                 : member_covariance(f, p[i], held, inflate, result, i, breadth[i], covariance[i],
                                     i == best ? out : NULL, arena, &scratch, err);
         lw_arena_end(&scratch);
         if (status != LW_OK)
             return status;
-        if (result->weight[i] < 1e-4)
-            result->weight[i] = 0;
     }
     result->breadth = lw_arena_take(arena, lines, sizeof(double), err);
     result->covariance = lw_arena_take(arena, lines * lines, sizeof(double), err);
     if (!result->breadth || !result->covariance)
         return LW_OUT_OF_MEMORY;
-    for (size_t i = 0; i < n_forms; i++)
-        for (size_t k = 0; k < lines; k++)
-            result->breadth[k] += result->weight[i] * breadth[i][k];
+    double(*off)[LW__MEMBERS] = lw_arena_take(arena, lines, sizeof *off, err);
+    if (off == NULL)
+        return LW_OUT_OF_MEMORY;
+    for (size_t k = 0; k < lines; k++) {
+        double value[LW__MEMBERS], variance[LW__MEMBERS];
+        for (size_t i = 0; i < n_forms; i++) {
+            value[i] = breadth[i][k];
+            variance[i] = covariance[i][k * lines + k];
+        }
+        result->breadth[k] = lw__mean_of_members(result, value, variance, off[k]);
+    }
     for (size_t i = 0; i < n_forms; i++)
         for (size_t a = 0; a < lines; a++)
             for (size_t b = 0; b < lines; b++)
                 result->covariance[a * lines + b] +=
-                    result->weight[i] *
-                    (covariance[i][a * lines + b] +
-                     (breadth[i][a] - result->breadth[a]) * (breadth[i][b] - result->breadth[b]));
-    /* the best member takes the scan apart */
-    take_member(f, best);
-    lw_normal normal = {.n = m};
-    lw_status status = lw__physical_evaluate(f, p[best], false, &normal, err);
-    for (size_t i = 0; i < f->n && status == LW_OK; i++) {
-        out->residual[i] = f->model[i];
-        out->background[i] = f->profiles->lines->background[i];
-        for (size_t t = 0; t < f->n_terms; t++)
-            out->background[i] += p[best][f->at_terms + t] * f->term[t * f->n + i];
-    }
-    for (size_t k = 0; k < lines; k++) {
-        lw__separated *line = &out->line[k];
-        line->shape = lw__physical_shape(f, k, p[best]);
-        line->curve = f->curve[k];
-        line->shift_s = p[best][2 * k + 1];
-        line->area_s = p[best][2 * k] * f->line[k].instrument.per_degree;
-    }
+                    result->weight[i] * covariance[i][a * lines + b] + off[a][i] * off[b][i];
+    result->apart[best] = *out;
+    lw_status status = take_apart(f, best, p[best], result, arena, err);
+    *out = result->apart[best];
+    for (size_t i = 0; i < n_forms && status == LW_OK; i++)
+        if (i != best && result->reach[i] > 0)
+            status = take_apart(f, i, p[i], result, arena, err);
     return status;
 }
 
@@ -381,9 +446,7 @@ lw_status lw__separate_by_physics(lw_engine *engine, const lw_profiles *profiles
     *result = (lw__physical_fit){0};
     *out = (lw__separation){.how = "lines separated and their tails completed by fitted physical shapes"};
     out->line = lw_arena_take(arena, profiles->n, sizeof *out->line, err);
-    out->background = lw_arena_take(arena, profiles->lines->scan->n, sizeof(double), err);
-    out->residual = lw_arena_take(arena, profiles->lines->scan->n, sizeof(double), err);
-    if (!out->line || !out->background || !out->residual)
+    if (out->line == NULL)
         return LW_OUT_OF_MEMORY;
     lw_status status = lw__physical_prepare(&f, engine, profiles, arena, err);
     return status == LW_OK ? fit_members(&f, arena, out, result, err) : status;

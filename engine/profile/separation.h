@@ -56,13 +56,22 @@ typedef struct lw__physical_fit {
     size_t n_members;              /* strain forms that were fitted */
     const char *form[LW__MEMBERS]; /* their names */
     double weight[LW__MEMBERS], chi2[LW__MEMBERS];
-    double goodness;    /* chi2 over degrees of freedom of the best */
+    double reach[LW__MEMBERS]; /* shares of the members in the spread between them; 0: not taken along */
+    size_t best;
+    lw__separation apart[LW__MEMBERS]; /* by the members with a reach */
+    double goodness;                   /* chi2 over degrees of freedom of the best */
     double *covariance; /* [profiles^2] of the breadths, nm^-2: counting, instrument, choice of form */
     double *breadth;    /* [profiles], weighted mean */
     lw__shape *shape[LW__MEMBERS];         /* [members][profiles] */
     double *shape_covariance[LW__MEMBERS]; /* [members][profiles][16]: of size, strain 0, sigma, strain 1 of a
                                               line */
 } lw__physical_fit;
+
+/* What the members say of one quantity, value[n_members] with variance[n_members]: returns their mean by
+ * evidence; off[n_members] receives their deviations from it, so that the sum of products of two quantities'
+ * is the covariance by the choice of form. */
+double lw__mean_of_members(const lw__physical_fit *fit, const double *value, const double *variance,
+                           double *off);
 
 /* All lines at once, each with its own size and strain, as lognormal spheres x correlated strain. */
 lw_status lw__separate_by_physics(lw_engine *engine, const lw_profiles *profiles, lw_arena *arena,

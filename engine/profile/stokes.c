@@ -10,7 +10,6 @@
 #include "profile/line_by_line.h"
 
 #include "numeric/cholesky.h"
-#include "numeric/voigt.h"
 
 #include <math.h>
 
@@ -117,27 +116,6 @@ static lw_status refold(const lw__job *job, double *const *wave, const double *r
     }
     lw__set_refold(job->profile, chi2, free, n, lost, net);
     return LW_OK;
-}
-
-/* What the fitted Voigt would add to the height over the area beyond the truncation, if it is as high as the
- * shape before it: the data don't tell the two apart there. */
-static double beyond_by_voigt(const lw__job *job, double step, size_t last)
-{
-    const lw_profile *profile = job->profile;
-    double gauss = profile->gauss_s.value, lorentz = profile->lorentz_s.value, cross = 0, square = 0;
-    double breadth = lw_voigt_breadth(2 * gauss * sqrt(M_LN2 / M_PI), 2 * lorentz / M_PI);
-    if (!(breadth > 0))
-        return 0;
-    double beyond = 1 / breadth;
-    for (size_t k = 0; k < last; k++) {
-        double v = lw__voigt_coefficient(gauss, lorentz, profile->length_nm[k]);
-        beyond -= (k == 0 ? 1 : 2) * step * v;
-        if (k >= last - last / 4) {
-            cross += v * lw__shape_coefficient(&job->line->shape, profile->length_nm[k], NULL);
-            square += v * v;
-        }
-    }
-    return square > 0 ? fmax(beyond, 0) * cross / square : 0;
 }
 
 static lw_status solve(const lw__job *job, const lw__instrument *instrument, bool first, lw_arena *scratch,
@@ -253,8 +231,6 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     }
     double wrong = weights > 0 ? sum / weights : 1, uncertain = weights > 0 ? 1 / weights : 1;
     double cut = fmax(beyond / height, 0), cuts = cut * cut * fmin(fmax(wrong * wrong, uncertain), 1);
-    double apart = shape->strain != NULL ? cut - beyond_by_voigt(job, step, last) * area / height : 0;
-    cuts += apart * apart / 3; /* the shape stands at one end of a rectangular distribution */
     answer->variance = variance + answer->breadth * answer->breadth * (tails + cuts);
     if (job->options->apodise != 0)
         for (size_t k = 0; k < last; k++) {

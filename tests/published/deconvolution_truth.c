@@ -149,9 +149,11 @@ static void check_breadths(const lw_profiles *profiles, const char *truth, allow
                               code == 211 || code == 310 || code == 321
                           ? allow.main
                           : 0;
-        if (r->h == 2 && r->l == 0 && r->k == 2 && true_breadth(truth, 1, 1, 0) > 0)
-            most = 0; /* tungsten: half of the dislocations leave 220 as sharp as its crystals: its top is a
-                         cusp */
+        /* Tungsten: forms of strain that the counts hardly tell apart differ by 8 % in 220, the line that
+         * half of the dislocations leave alone. What it can be held to is the u that says so. */
+        bool tungsten = true_breadth(truth, 1, 1, 0) > 0;
+        if (tungsten && code == 220)
+            most = 3 * profile->breadth_s.u / want;
         if (isnan(want))
             continue;
         printf(" %d%d%d %+.1f(%.1f)", r->h, r->k, r->l, 100 * off, 100 * profile->breadth_s.u / want);
@@ -159,6 +161,7 @@ static void check_breadths(const lw_profiles *profiles, const char *truth, allow
             printf(" <-- beyond %.1f", 100 * most);
         CHECK(most == 0 || fabs(off) <= most);
         CHECK(profile->resolved);
+        CHECK(!tungsten || fabs(off) * want < 3 * profile->breadth_s.u);
     }
     printf("\n");
 }

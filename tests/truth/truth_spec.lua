@@ -313,11 +313,19 @@ describe("a powder of one cause", function()
       it(name .. ": breadths by Stokes' quotient", function()
         local list = deviations(name, material, "stokes")
         tell("%-20s stokes, breadth off by %%: %s", name, told(list))
-        -- tungsten's breadths by Stokes carry u of 2 to 5 %: bounds of about 2 u
+        -- tungsten's breadths by Stokes carry u of 2 to 5 %: bounds of about 2 u. Forms of strain that the counts
+        -- hardly tell apart differ by 8 % in 220, which half of the dislocations leave alone: there u must say so
         local low, high = -3, 6
         if material == "tungsten" then low, high = -6, 8 end
-        for _, hkl in ipairs(material == "tungsten" and { "110", "200", "211", "220" } or clear) do
+        for _, hkl in ipairs(material == "tungsten" and { "110", "200", "211" } or clear) do
           between(list[hkl], low, high, hkl .. ", %")
+        end
+        if material == "tungsten" then
+          local row = roads.by_hkl(roads.truth(name).sample.breadth_s_by_line)
+          for _, profile in ipairs(roads.profiles(name, material, "stokes"):table().profiles) do
+            local off = profile.breadth_s.value - row[profile.hkl].beta_s_per_nm
+            between(off / profile.breadth_s.u, -3, 3, profile.hkl .. ", u away")
+          end
         end
       end)
     end
