@@ -232,10 +232,12 @@ lw_status lw__lattice_fit(lw_lattice *m, int displacement, int transparency, lw_
                                                                    : fit_cell(m, own, n_own, arena, out, err);
     if (status == LW_OK && automatic && transparency == LW_LATTICE_AUTO)
         status = deepen(m, height, depth, arena, out, err);
+    if (status != LW_OK)
+        return status;
     m->n_own = out->n_own;
     memcpy(m->own, out->own, sizeof m->own);
     if (displacement == LW_LATTICE_NO && flat)
         out->why =
             "this specimen was taken to lie where the standard lay; a difference is not in the uncertainty";
-    return status;
+    return LW_OK;
 }
