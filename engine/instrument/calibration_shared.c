@@ -220,9 +220,10 @@ static lw_status compare_scans(lw_engine *engine, lw_set *set, lw_arena *scratch
         return lw_fail_at(err, LW_BAD_DATA, set->scan[able[1]].lines->scan->file, 0,
                           "join scans of one state of the instrument only: was it realigned between them? is each scan "
                           "paired with its own standard?",
-                          "calibrate: the scans contradict each other: each by itself they put the %s %.5f deg apart or more "
-                          "(%.1f u in the mean of what they share)",
-                          "zero shift", fabs(value[shared] - value[0]), set->shared.birge);
+                          "calibrate: the scans contradict each other: by themselves two of them have a %s that is %.2g %s "
+                          "apart (%.1f u in the mean of what they share)",
+                          set->column[0].kind->name, fabs(value[shared] - value[0]), set->column[0].kind->unit,
+                          set->shared.birge);
     return LW_OK;
 }
 
