@@ -12,8 +12,8 @@ static lw_status check(const lw_lines *from, const lw_scan *scan, const lw_scan 
     if (from->options == NULL || !from->has_instrument || strcmp(from->shape, "voigt") != 0)
         return lw_fail(err, LW_BAD_ARGUMENT, "fit them with fit_lines, shape = \"voigt\" and an instrument",
                        "only lines of that kind can be fitted again");
-    bool same = scan->n == first->n && scan->two_theta_deg[0] == first->two_theta_deg[0] &&
-                scan->two_theta_deg[scan->n - 1] == first->two_theta_deg[first->n - 1];
+    bool same = scan->n == first->n &&
+                memcmp(scan->two_theta_deg, first->two_theta_deg, scan->n * sizeof *scan->two_theta_deg) == 0;
     if (!same || (background != NULL) > (from->options->background_scan != NULL))
         return lw_fail(err, LW_BAD_ARGUMENT, NULL, "a fit can be repeated on the same points only");
     return LW_OK;
