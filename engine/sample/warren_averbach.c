@@ -1,10 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Warren-Averbach: size and strain at every column length, from two or more orders of a direction. */
+#include "sample/warren_averbach.h"
+
 #include "sample/breadths.h"
-#include "sample/column_lengths.h"
-#include "sample/harmonics.h"
 #include "sample/method.h"
-#include "sample/reading.h"
 
 #include "numeric/statistics.h"
 
@@ -12,7 +11,6 @@
 #include <stdio.h>
 #include <string.h>
 
-#define PI 3.14159265358979323846
 #define SETS_MOST 12
 #define HALF_SIZE 0.65 /* half the volume-weighted over the area-weighted size, for usual widths of distributions */
 #define CONTRAST 0.1   /* difference of ln A between the orders below which tails and background decide */
@@ -55,23 +53,7 @@ static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
 
 /* ------------------------------------------------------------------------------------------------ one set */
 
-typedef struct one_set {
-    lw_orders orders;
-    lw_harmonics harmonics;
-    lw_size_coefficients size;
-    lw_initial_slope slope;
-    bool has_slope, has_volume;
-    double size_volume, u_volume;
-    lw_readings readings; /* of the breadths, where the coefficients are those of fitted Voigts */
-    const char *no_slope, *no_volume;
-    lw_column_density density;
-    bool has_density;
-    double strain, u_strain, strain_length; /* at half the size; strain 0 = not determined */
-    size_t first_strain, end_strain;        /* lengths at which the strain is determined */
-    double chi2, chi2_length, chi2_p;
-} one_set;
-
-static bool strain_at(const one_set *set, double length, double *value, double *u)
+static bool strain_at(const lw__averbach *set, double length, double *value, double *u)
 {
     double x = length / set->harmonics.step_nm;
     size_t i = (size_t)floor(x + 1e-9), n = set->harmonics.n;
@@ -90,7 +72,7 @@ static bool strain_at(const one_set *set, double length, double *value, double *
 }
 
 /* Lengths over which the strain stands out: the longest run without a gap. */
-static void find_strain(one_set *set, double least)
+static void find_strain(lw__averbach *set, double least)
 {
     const lw_harmonics *h = &set->harmonics;
     const double *highest = h->coefficient + (set->orders.n - 1) * h->n;
@@ -111,7 +93,7 @@ static void find_strain(one_set *set, double least)
     }
 }
 
-static lw_status separate(const lw_profiles *profiles, const warren_averbach_options *o, one_set *set, lw_arena *arena,
+static lw_status separate(const lw_profiles *profiles, const warren_averbach_options *o, lw__averbach *set, lw_arena *arena,
                           lw_error *err)
 {
     lw_harmonics *h = &set->harmonics;
@@ -185,7 +167,7 @@ static const char *hkl_of(const lw_profile *profile, char text[24])
     return lw_hkl_text(r->h, r->k, r->l, text, 24);
 }
 
-static void tell_numbers(const one_set *set, lw_node *to, lw_error *err)
+static void tell_numbers(const lw__averbach *set, lw_node *to, lw_error *err)
 {
     lw_add_text(to, "direction", set->orders.direction, err);
     if (set->has_slope) {
@@ -234,7 +216,7 @@ static void tell_numbers(const one_set *set, lw_node *to, lw_error *err)
         lw_add_quantity(to, "hook", lw_quantity_of(set->slope.hook, set->slope.u_hook, ""), HOOK, err);
 }
 
-static void tell_curves(const lw_profiles *profiles, const one_set *set, lw_arena *arena, lw_node *to, lw_error *err)
+static void tell_curves(const lw_profiles *profiles, const lw__averbach *set, lw_arena *arena, lw_node *to, lw_error *err)
 {
     (void)profiles;
     const lw_harmonics *h = &set->harmonics;
@@ -266,7 +248,7 @@ static void tell_curves(const lw_profiles *profiles, const one_set *set, lw_aren
     }
 }
 
-static void tell_columns(const one_set *set, lw_node *to, lw_error *err)
+static void tell_columns(const lw__averbach *set, lw_node *to, lw_error *err)
 {
     if (set->has_slope && !set->has_density) {
         lw_add_text(to, "columns_not_determined",
@@ -283,129 +265,7 @@ static void tell_columns(const one_set *set, lw_node *to, lw_error *err)
     }
 }
 
-/* --------------------------------------------------------------------------------------------------- figures */
-
-static lw_node *new_figure(lw_node *parent, const char *field, const char *name, const char *title, const char *caption,
-                           const char *x_label, const char *x_unit, const char *y_label, const char *y_unit, lw_node **series,
-                           lw_error *err)
-{
-    lw_node *figure = lw_add_group(parent, field, err);
-    lw_add_text(figure, "name", name, err);
-    lw_add_text(figure, "title", title, err);
-    lw_add_text(figure, "caption", caption, err);
-    lw_node *x = lw_add_group(figure, "x", err), *y = lw_add_group(figure, "y", err);
-    lw_add_text(x, "label", x_label, err);
-    lw_add_text(x, "unit", x_unit, err);
-    lw_add_text(y, "label", y_label, err);
-    lw_add_text(y, "unit", y_unit, err);
-    *series = lw_add_list(figure, "series", err);
-    return figure;
-}
-
-static lw_node *add_series(lw_node *series, const char *kind, const char *label, const double *x, const double *y, size_t n,
-                           lw_error *err)
-{
-    lw_node *one = lw_add_group(series, NULL, err);
-    lw_add_text(one, "kind", kind, err);
-    lw_add_text(one, "label", label, err);
-    lw_add_vector(one, "x", x, n, "", err);
-    lw_add_vector(one, "y", y, n, "", err);
-    return one;
-}
-
-static void add_band(lw_node *series, const char *label, const double *x, const double *y, const double *u, size_t n,
-                     double *scratch, lw_error *err)
-{
-    for (size_t i = 0; i < n; i++)
-        scratch[i] = y[i] - 2 * u[i];
-    lw_node *band = add_series(series, "band", label, x, scratch, n, err);
-    for (size_t i = 0; i < n; i++)
-        scratch[i] = y[i] + 2 * u[i];
-    lw_add_vector(band, "high", scratch, n, "", err);
-}
-
-static void draw(const one_set *set, lw_arena *arena, lw_node *result, lw_error *err)
-{
-    const lw_harmonics *h = &set->harmonics;
-    size_t n = h->n;
-    double *x = lw_arena_take(arena, n + 2, sizeof *x, err), *y = lw_arena_take(arena, n + 2, sizeof *y, err);
-    double *u = lw_arena_take(arena, n + 2, sizeof *u, err), *scratch = lw_arena_take(arena, n + 2, sizeof *scratch, err);
-    if (!x || !y || !u || !scratch)
-        return;
-    lw_node *series;
-    char label[60];
-    for (size_t i = 0; i < n; i++) {
-        x[i] = h->step_nm * (double)i;
-        u[i] = sqrt(fmax(h->size_covariance[i * n + i], 0));
-    }
-    new_figure(result, "figure", "warren_averbach_coefficients", "Fourier coefficients, Warren-Averbach",
-               "Coefficients of the orders against column length, the size coefficients that follow from them with two "
-               "standard uncertainties, and the initial slope, whose foot is the area-weighted size.",
-               "column length L", "nm", "coefficient A", "", &series, err);
-    add_series(series, "line", "size", x, h->size, n, err);
-    add_band(series, "2 u", x, h->size, u, n, scratch, err);
-    for (size_t k = 0; k < set->orders.n; k++) {
-        char hkl[24];
-        lw_node *line = add_series(series, "points", hkl_of(set->orders.profile[k], hkl), x, h->coefficient + k * n, n, err);
-        lw_add_vector(line, "u_y", h->u + k * n, n, "", err);
-    }
-    if (set->has_slope) {
-        double foot[2] = {0, set->slope.size_area}, from[2] = {set->slope.start, 0};
-        add_series(series, "line", "initial slope", foot, from, 2, err);
-    }
-
-    lw_node *more = lw_add_group(result, "figures", err);
-    new_figure(more, "orders", "warren_averbach_orders", "ln A against s\302\262, Warren-Averbach",
-               "Logarithms of the orders' coefficients at some column lengths, with one standard uncertainty: the intercepts "
-               "are size, the slopes strain. Assumed: the orders see the same columns, and strains over a column are normally "
-               "distributed (form log) or small (form linear).",
-               "s\302\262 = 1/d\302\262", "nm^-2", "ln A", "", &series, err);
-    for (size_t part = 1; part <= 6; part++) {
-        size_t i = part * (n - 1) / 6, m = set->orders.n, used = 0;
-        double s2[LW_ORDERS_MOST], ln_a[LW_ORDERS_MOST], u_ln[LW_ORDERS_MOST];
-        for (size_t k = 0; k < m; k++) {
-            double a = h->coefficient[k * n + i], s = set->orders.profile[k]->s_per_nm;
-            if (!(a > 0))
-                continue;
-            s2[used] = s * s;
-            ln_a[used] = log(a);
-            u_ln[used++] = h->u[k * n + i] / a;
-        }
-        if (i == 0 || used < 2 || !(h->size[i] > 0))
-            continue;
-        snprintf(label, sizeof label, "L = %.3g nm", x[i]);
-        lw_node *points = add_series(series, "points", label, s2, ln_a, used, err);
-        lw_add_vector(points, "u_y", u_ln, used, "", err);
-        double ends[2] = {0, s2[used - 1]}, b = -2 * PI * PI * x[i] * x[i] * h->square[i];
-        double line[2] = {log(h->size[i]), log(h->size[i]) + b * ends[1]};
-        add_series(series, "line", "", ends, line, 2, err);
-    }
-
-    size_t first = set->first_strain, count = set->end_strain > first ? set->end_strain - first : 0;
-    if (count > 1) {
-        new_figure(more, "strain", "warren_averbach_strain", "Strain against column length, Warren-Averbach",
-                   "Root mean square strain over columns of a length, where it is determined, with two standard "
-                   "uncertainties. Assumed: the same strain for all orders of the direction.",
-                   "column length L", "nm", "rms strain", "", &series, err);
-        for (size_t i = 0; i < count; i++) {
-            y[i] = sqrt(fmax(h->square[first + i], 0));
-            u[i] = sqrt(fmax(h->square_covariance[(first + i) * (n + 1)], 0)) / (2 * fmax(y[i], 1e-12));
-        }
-        add_series(series, "line", "rms strain", x + first, y, count, err);
-        add_band(series, "2 u", x + first, y, u, count, scratch, err);
-    }
-    if (set->has_density) {
-        const lw_column_density *d = &set->density;
-        new_figure(more, "columns", "warren_averbach_columns", "Column lengths, Warren-Averbach",
-                   "Distribution of column lengths (by number): the smoothest that agrees with the size coefficients, with "
-                   "two standard uncertainties. Columns longer than the last length are not told.",
-                   "column length L", "nm", "density p", "nm^-1", &series, err);
-        add_series(series, "line", "p", d->length_nm, d->density, d->n, err);
-        add_band(series, "2 u", d->length_nm, d->density, d->u, d->n, scratch, err);
-    }
-}
-
-static void remark(const lw_profiles *profiles, const one_set *set, lw_node *remarks, lw_error *err)
+static void remark(const lw_profiles *profiles, const lw__averbach *set, lw_node *remarks, lw_error *err)
 {
     char text[320];
     if (set->has_slope && fabs(set->slope.hook) > fmax(0.02, 3 * set->slope.u_hook)) {
@@ -430,7 +290,7 @@ static void remark(const lw_profiles *profiles, const one_set *set, lw_node *rem
 }
 
 /* Relative uncertainty of size and strain together: the direction with the least speaks for the powder. */
-static double vagueness(const one_set *set)
+static double vagueness(const lw__averbach *set)
 {
     if (!set->has_slope)
         return INFINITY;
@@ -440,7 +300,7 @@ static double vagueness(const one_set *set)
 static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *given, lw_node *result, lw_error *err)
 {
     const warren_averbach_options *o = given;
-    one_set *set = lw_arena_take(arena, SETS_MOST, sizeof *set, err);
+    lw__averbach *set = lw_arena_take(arena, SETS_MOST, sizeof *set, err);
     lw_orders *found = lw_arena_take(arena, SETS_MOST, sizeof *found, err);
     lw_status status = set == NULL || found == NULL ? LW_OUT_OF_MEMORY : LW_OK;
     size_t n = 0, best = 0;
@@ -498,7 +358,7 @@ static lw_status run(lw_arena *arena, const lw_profiles *profiles, const void *g
             tell_numbers(&set[i], each, err);
         }
         tell_curves(profiles, &set[best], arena, result, err);
-        draw(&set[best], arena, result, err);
+        lw__averbach_draw(&set[best], arena, result, err);
         remark(profiles, &set[best], lw_add_list(result, "remarks", err), err);
         status = err->status;
     }
