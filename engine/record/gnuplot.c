@@ -487,19 +487,6 @@ static lw_status save(lw_engine *engine, const lw_figure *figure, const char *pa
     return status;
 }
 
-lw_status lw_figure_save(lw_engine *engine, const lw_figure *figure, const char *folder, lw_drawing_format format,
-                         lw_error *err)
-{
-    lw_text path;
-    lw_text_begin(&path, engine);
-    lw_text_print(&path, "%s/%s%s", folder, figure->name, suffix[format]);
-    lw_status status = lw_text_check(&path, err);
-    if (status == LW_OK)
-        status = save(engine, figure, path.bytes, format, err);
-    lw_text_end(&path);
-    return status;
-}
-
 lw_status lw_figure_save_as(lw_engine *engine, const lw_figure *figure, const char *path, lw_error *err)
 {
     size_t n = strlen(path);

@@ -23,11 +23,7 @@ lw_drawing lw_drawing_standard(const lw_figure *figure, lw_drawing_format format
  *         LW_CANCELLED, LW_OUT_OF_MEMORY. */
 lw_status lw_figure_draw(const lw_figure *figure, const lw_drawing *drawing, lw_text *out, lw_error *err);
 
-/* Draws to folder/<name>.svg (.png, .pdf), written whole. */
-lw_status lw_figure_save(lw_engine *engine, const lw_figure *figure, const char *folder, lw_drawing_format format,
-                         lw_error *err);
-
-/* The same to a path whose suffix .svg, .png or .pdf says the format.
+/* Draws to a file, written whole, whose suffix .svg, .png or .pdf says the format.
  * Status: also LW_BAD_ARGUMENT for another suffix. */
 lw_status lw_figure_save_as(lw_engine *engine, const lw_figure *figure, const char *path, lw_error *err);
 
