@@ -62,6 +62,33 @@ void lw_content_settle(lw_content *content)
         lw_sha256_hex(content->bytes, content->size, content->hash);
 }
 
+lw_status lw_content_check_text(lw_content *content, lw_error *err)
+{
+    const char *bytes = content->bytes;
+    if (content->size == 0)
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "export or copy the scan again",
+                          "the file is empty");
+    if (content->size >= 2 && (memcmp(bytes, "\xff\xfe", 2) == 0 || memcmp(bytes, "\xfe\xff", 2) == 0))
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "save it as plain text (ASCII or UTF-8)",
+                          "the text is in UTF-16");
+    if (memchr(bytes, '\0', content->size) != NULL)
+        return lw_fail_at(err, LW_BAD_DATA, content->name, 0,
+                          "export the scan as columns of text or as pdCIF", "binary content, not a text");
+    /* one old line end only: carriage returns alone */
+    if (memchr(bytes, '\n', content->size) == NULL && memchr(bytes, '\r', content->size) != NULL) {
+        lw_content_settle(content);
+        for (size_t i = 0; i < content->size; i++)
+            if (content->bytes[i] == '\r')
+                content->bytes[i] = '\n';
+    }
+    /* the end mark of old systems */
+    if (bytes[content->size - 1] == 0x1a) {
+        lw_content_settle(content);
+        content->bytes[--content->size] = '\0';
+    }
+    return LW_OK;
+}
+
 static void *zlib_take(void *user, unsigned count, unsigned size)
 {
     return room_of(user, NULL, (size_t)count * size, NULL);

@@ -48,6 +48,9 @@ lw_status lw_content_copy(lw_engine *engine, const char *name, const char *bytes
                           lw_content *content, lw_error *err);
 /* Makes the hash, if it isn't there yet. To be called before `bytes` are changed. */
 void lw_content_settle(lw_content *content);
+/* Refuses bytes that are no text of ASCII or UTF-8, and makes lines that end with carriage returns alone end with
+ * newlines; an old end mark is taken off. Status: LW_BAD_DATA. */
+lw_status lw_content_check_text(lw_content *content, lw_error *err);
 void lw_content_free(lw_engine *engine, lw_content *content);
 
 /* Refuses columns that can't be a scan: fewer than 3 points, angles that don't ascend or lie outside 0 to

@@ -410,34 +410,6 @@ static lw_status make_room(lw_rows *rows, lw_arena *arena, size_t room, lw_error
     return LW_OK;
 }
 
-/* What can be told from the bytes as a whole. */
-static lw_status check_bytes(lw_content *content, lw_error *err)
-{
-    const char *bytes = content->bytes;
-    if (content->size == 0)
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "export or copy the scan again",
-                          "the file is empty");
-    if (content->size >= 2 && (memcmp(bytes, "\xff\xfe", 2) == 0 || memcmp(bytes, "\xfe\xff", 2) == 0))
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0, "save it as plain text (ASCII or UTF-8)",
-                          "the text is in UTF-16");
-    if (memchr(bytes, '\0', content->size) != NULL)
-        return lw_fail_at(err, LW_BAD_DATA, content->name, 0,
-                          "export the scan as columns of text or as pdCIF", "binary content, not a text");
-    /* one old line end only: carriage returns alone */
-    if (memchr(bytes, '\n', content->size) == NULL && memchr(bytes, '\r', content->size) != NULL) {
-        lw_content_settle(content);
-        for (size_t i = 0; i < content->size; i++)
-            if (content->bytes[i] == '\r')
-                content->bytes[i] = '\n';
-    }
-    /* the end mark of old systems */
-    if (bytes[content->size - 1] == 0x1a) {
-        lw_content_settle(content);
-        content->bytes[--content->size] = '\0';
-    }
-    return LW_OK;
-}
-
 static bool claims(const lw_content *content)
 {
     (void)content;
@@ -493,7 +465,7 @@ static lw_status read_text(lw_engine *engine, lw_content *content, const lw_scan
     if (options->block != NULL)
         return lw_fail_at(err, LW_BAD_ARGUMENT, content->name, 0, "leave the option out",
                           "option 'block' is for CIF, and this file is columns of text");
-    lw_status status = check_bytes(content, err);
+    lw_status status = lw_content_check_text(content, err);
     if (status != LW_OK)
         return status;
     text *t = lw_arena_take(columns->arena, 1, sizeof *t, err);
