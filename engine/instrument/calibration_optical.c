@@ -196,8 +196,8 @@ lw_status lw__optical_or_not(lw_engine *engine, const lw_lines *lines, const lw_
         double by_widths = refined->chi2_as_fitted + 2 * (double)(2 * refined->n_lines + widths + lines->n_background);
         double by_geometry = refined->chi2 + 2 * (double)refined->n_parameters;
         *optical = by_geometry < by_widths;
-        snprintf(why, size, "%s: Akaike's criterion is %.1f %s than with %s", *optical ? "optical" : "empirical",
-                 fabs(by_geometry - by_widths), "lower", *optical ? "width functions" : "the geometry's profile");
+        snprintf(why, size, "%s: Akaike's criterion is %.1f lower than with %s", *optical ? "optical" : "empirical",
+                 fabs(by_geometry - by_widths), *optical ? "width functions" : "the geometry's profile");
     } else if (status == LW_NO_CONVERGENCE || status == LW_NOT_SUPPORTED)
         snprintf(why, size, "empirical: %s", each.message);
     else {

@@ -220,12 +220,15 @@ static void write_verdict(const fit *tried, size_t n_tried, const fit *kept, con
                     lw_arena_print(result->arena, err,
                                    "the lines scatter about the curve by %.1f times their u: texture of this specimen, few grains, "
                                    "or not the specimen of the certificate", birge), err);
-    if (!flat)
+    if (!flat) {
+        char off[64];
+        lw_quantity_text(lw_quantity_of(100 * (exp(largest) - 1), 100 * exp(largest) * u_largest, "%"), off, sizeof off);
         lw_add_text(warnings, NULL,
                     lw_arena_print(result->arena, err,
-                                   "the response is not flat: %+.1f(%.1f) %% at %.1f deg (p of a flat one %.1e): does the beam leave "
+                                   "the response is not flat: off by %s at %.1f deg (p of a flat one %.1e): does the beam leave "
                                    "the specimen at low angles, is a mask in the way, are counts lost at the strong lines?",
-                                   100 * (exp(largest) - 1), 100 * exp(largest) * u_largest, where, p), err);
+                                   off, where, p), err);
+    }
     lw_node *cautions = lw_add_list(result, "cautions", err);
     lw_add_text(cautions, NULL,
                 "a plate with preferred orientation certifies the intensities of its own kind only: neither those of a powder of the "

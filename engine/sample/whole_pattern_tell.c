@@ -212,11 +212,12 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
                     "gamma distribution (Madan & Seneta 1990 J. Business 63, 511)",
                     err);
     if (a->anisotropic) {
-        char q[64];
+        char q[96], value[64];
         if (a->anisotropy_at_bound)
             snprintf(q, sizeof q, "at its bound, %.3g", a->anisotropy);
         else
-            snprintf(q, sizeof q, "= %.3f(%.3f)", a->anisotropy, a->u_anisotropy);
+            snprintf(q, sizeof q, "= %s",
+                     lw_quantity_text(lw_quantity_of(a->anisotropy, a->u_anisotropy, ""), value, sizeof value));
         snprintf(text, sizeof text,
                  "strain depends on the direction: mean square strain goes as 1 - q H with q %s, H = 0 along "
                  "h00, 1/3 along "
