@@ -121,6 +121,18 @@ static double beyond_chance(const lw_pattern_answer *a, const lw_pattern_form *f
     return off * off > chance ? off * sqrt(1 - chance / (off * off)) : 0;
 }
 
+/* No strain is the edge of every form rather than another one: what it knows better of the size, it knows by
+ * leaving strain out, and it is preferred where counts hide strain by chance. It counts with the covariance
+ * of the likeliest form that has strain. */
+static const lw_pattern_form *uncertain_as(const lw_pattern_answer *a, const lw_pattern_form *form)
+{
+    const lw_pattern_form *found = form;
+    for (size_t i = 0; i < a->n_forms && form->none; i++)
+        if (!a->form[i].none && a->form[i].weight > 0 && (found->none || a->form[i].weight > found->weight))
+            found = &a->form[i];
+    return lw_pattern_answer_reach(found) > 0.01 ? found : form;
+}
+
 void lw_pattern_answer_join(lw_pattern_answer *a)
 {
     double coarse[LW_PATTERN_FORMS_MOST], total = 0;
@@ -137,7 +149,7 @@ void lw_pattern_answer_join(lw_pattern_answer *a)
             double sum = 0;
             for (size_t i = 0; i < a->n_forms; i++)
                 if (a->form[i].weight > 0)
-                    sum += a->form[i].weight * a->form[i].covariance[k][l] +
+                    sum += a->form[i].weight * uncertain_as(a, &a->form[i])->covariance[k][l] +
                            coarse[i] / total * beyond_chance(a, &a->form[i], k) *
                                beyond_chance(a, &a->form[i], l);
             a->covariance[k][l] = sum;
