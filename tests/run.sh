@@ -191,7 +191,7 @@ fi
 if wanted specs; then
   if [ $built = yes ]; then
     # a path from here: busted hands it to a shell without quotes
-    step specs 600 busted --lua=build/lua-for-busted --output=plainTerminal --pattern=_spec tests/spec tests/truth
+    step specs 900 busted --lua=build/lua-for-busted --output=plainTerminal --pattern=_spec tests/spec tests/truth
   else
     skip specs "the interpreter was not built"
   fi
