@@ -1,6 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "line/start.h"
 
+#include "numeric/statistics.h"
+
 #include <math.h>
 #include <string.h>
 
@@ -9,7 +11,7 @@ static const double degree = M_PI / 180;
 size_t lw_point_at(const lw_scan *scan, double angle)
 {
     const double *x = scan->two_theta_deg;
-    size_t n = scan->n, low = 0, high = n;
+    size_t n = scan->n;
     /* most scans are even: look first where the point would be then */
     double share = (angle - x[0]) / (x[n - 1] - x[0]);
     if (share > 0 && share < 1) {
@@ -21,14 +23,7 @@ size_t lw_point_at(const lw_scan *scan, double angle)
                 break;
             }
     }
-    while (low < high) {
-        size_t middle = (low + high) / 2;
-        if (x[middle] < angle)
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    return low;
+    return lw_first_not_below(x, n, angle);
 }
 
 static double mean_step(const lw_scan *scan)

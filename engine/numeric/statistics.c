@@ -273,8 +273,7 @@ void lw_sort(double *values, size_t n)
         qsort(values, n, sizeof *values, ascending);
 }
 
-/* Place of the first of sorted[n] that is not below `value`. */
-static size_t place_of(const double *sorted, size_t n, double value)
+size_t lw_first_not_below(const double *sorted, size_t n, double value)
 {
     size_t low = 0, high = n;
     while (low < high) {
@@ -303,13 +302,13 @@ lw_status lw_running_median(lw_engine *engine, const double *y, size_t n, size_t
     size_t next = 0; /* first value not yet in the window */
     for (size_t i = 0; i < n && status == LW_OK; i++) {
         for (; next < n && next <= i + half; next++) {
-            size_t at = place_of(window, count, y[next]);
+            size_t at = lw_first_not_below(window, count, y[next]);
             memmove(window + at + 1, window + at, (count - at) * sizeof *window);
             window[at] = y[next];
             count++;
         }
         if (i > half) {
-            size_t at = place_of(window, count, y[i - half - 1]);
+            size_t at = lw_first_not_below(window, count, y[i - half - 1]);
             memmove(window + at, window + at + 1, (count - at - 1) * sizeof *window);
             count--;
         }

@@ -7,6 +7,8 @@
 
 #include <stddef.h>
 
+#define LW_ONE_SIDED_95 1.6448536269514722 /* 95 % quantile of the normal distribution: a limit is so many u away */
+
 /* Probability that chi-square with dof > 0 degrees of freedom exceeds chi2 >= 0, to 1e-12 relative
  * (incomplete gamma function: series and continued fraction). */
 double lw_chi2_tail(double chi2, double dof);
@@ -33,6 +35,8 @@ double lw_median(double *values, size_t n);
 double lw_robust_sd(double *values, size_t n);
 /* Quantile of values in ascending order, linear between order statistics (type 7 of Hyndman & Fan 1996). */
 double lw_quantile_of_sorted(const double *sorted, size_t n, double p);
+/* Place of the first of sorted[n], ascending, that is not below a value; n if all are. */
+size_t lw_first_not_below(const double *sorted, size_t n, double value);
 /* Sorts ascending. */
 void lw_sort(double *values, size_t n);
 /* Running median over 2 half + 1 points, fewer at the ends; out[n] may not be y. */

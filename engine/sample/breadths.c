@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "sample/breadths.h"
 
+#include "numeric/statistics.h"
 #include "numeric/voigt.h"
 #include "sample/positions.h"
 #include "sample/shared.h"
@@ -10,7 +11,6 @@
 
 #define PI 3.14159265358979323846
 #define SQRT_PI 1.77245385090551602730
-#define ONE_SIDED 1.6448536269514722 /* 95 % quantile of the normal distribution */
 
 const char *const lw_form_name[LW_FORMS] = {"lorentzian", "gaussian", "mixed", "parabolic"};
 
@@ -270,14 +270,14 @@ static void read_parameters(lw_breadth_fit *fit)
         double size = pow(fit->p[0], of_size);
         fit->size_volume = lw_quantity_of(size, -of_size * size / fit->p[0] * u0, "nm");
     } else {
-        fit->size_volume = lw_lower_limit(pow(fmax(0, fit->p[0]) + ONE_SIDED * u0, of_size), 0.95, "nm");
+        fit->size_volume = lw_lower_limit(pow(fmax(0, fit->p[0]) + LW_ONE_SIDED_95 * u0, of_size), 0.95, "nm");
     }
     if (fit->p[1] > 2 * u1) {
         double strain = pow(fit->p[1], of_strain);
         fit->strain_apparent = lw_quantity_of(strain, of_strain * strain / fit->p[1] * u1, "");
     } else {
         fit->strain_apparent =
-            lw_upper_limit(pow(fmax(0, fit->p[1]) + ONE_SIDED * u1, of_strain), 0.95, "");
+            lw_upper_limit(pow(fmax(0, fit->p[1]) + LW_ONE_SIDED_95 * u1, of_strain), 0.95, "");
     }
 }
 

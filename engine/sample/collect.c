@@ -132,14 +132,11 @@ void lw__collect(lw__collection *collection, const lw_node *results)
     collection->taken++;
 }
 
-/* Quantile of sorted numbers, linear between neighbours; NAN where one of them is a limit. */
+/* NAN where the quantile falls on a limit, or between one and a number. */
 static double quantile(const double *sorted, size_t n, double p)
 {
-    double at = p * (double)(n - 1);
-    size_t below = (size_t)at, above = below + 1 < n ? below + 1 : below;
-    if (!isfinite(sorted[below]) || !isfinite(sorted[above]))
-        return NAN;
-    return sorted[below] + (at - (double)below) * (sorted[above] - sorted[below]);
+    double value = lw_quantile_of_sorted(sorted, n, p);
+    return isfinite(value) ? value : NAN;
 }
 
 /* How far a quantile of n draws may be off: the rank is binomial, its standard deviation carried to the values beside

@@ -6,13 +6,13 @@
 #include "sample/reading.h"
 #include "sample/shared.h"
 
+#include "numeric/statistics.h"
 #include "numeric/voigt.h"
 
 #include <math.h>
 #include <stdio.h>
 
 #define PI 3.14159265358979323846
-#define ONE_SIDED 1.6448536269514722 /* 95 % quantile of the normal distribution */
 
 /* Of a line at s:  lorentz = SL + DL s^2,  gauss^2 = SG2 + DG2 s^2. */
 enum { SL, DL, SG2, DG2, PARAMETERS };
@@ -206,7 +206,7 @@ static void tell(const lw_generalised_fit *fit, const double *p, const lw_readin
         lw_add_quantity(result, "size_volume", size, SIZE_VOLUME, err);
     } else {
         double inverse = isfinite(volume) ? 1 / volume : 0, u = isfinite(volume) ? u_volume / (volume * volume) : u_sl;
-        lw_add_quantity(result, "size_volume", lw_lower_limit(1 / (inverse + ONE_SIDED * fmax(u, 1e-9)), 0.95, "nm"),
+        lw_add_quantity(result, "size_volume", lw_lower_limit(1 / (inverse + LW_ONE_SIDED_95 * fmax(u, 1e-9)), 0.95, "nm"),
                         SIZE_VOLUME, err);
     }
     if (p[SL] > 2 * u_sl) {
@@ -214,14 +214,14 @@ static void tell(const lw_generalised_fit *fit, const double *p, const lw_readin
         lw_readings_widen(readings, LW_READ_SIZE_AREA, 0, &size, result, err);
         lw_add_quantity(result, "size_area", size, SIZE_AREA, err);
     } else
-        lw_add_quantity(result, "size_area", lw_lower_limit(0.5 / (fmax(p[SL], 0) + ONE_SIDED * u_sl), 0.95, "nm"), SIZE_AREA,
+        lw_add_quantity(result, "size_area", lw_lower_limit(0.5 / (fmax(p[SL], 0) + LW_ONE_SIDED_95 * u_sl), 0.95, "nm"), SIZE_AREA,
                         err);
     double half = resolved ? volume / 2 : 10, value, u;
     bool strained = strain_at(fit, p, half, &value, &u);
     if (strained && resolved)
         u = u_of(fit, p, strain_at_half); /* half the size moves as well */
     lw_quantity rms = strained ? lw_quantity_of(value, u, "")
-                               : lw_upper_limit(sqrt(fmax(value * value, 0) + ONE_SIDED * 2 * fmax(value, u) * u), 0.95, "");
+                               : lw_upper_limit(sqrt(fmax(value * value, 0) + LW_ONE_SIDED_95 * 2 * fmax(value, u) * u), 0.95, "");
     lw_readings_widen(readings, LW_READ_STRAIN, 0, &rms, result, err);
     lw_add_quantity(result, "strain_rms", rms, STRAIN, err);
     rms.value /= LW_RMS_PER_APPARENT;

@@ -1,6 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "sample/pattern.h"
 
+#include "numeric/statistics.h"
+
 #include <math.h>
 #include <string.h>
 
@@ -24,19 +26,6 @@ static bool wanted(const lw_pattern *m, size_t row)
 static double *shared(const lw_pattern *m, size_t row)
 {
     return m->shared + row * m->n;
-}
-
-static size_t first_not_below(const double *s, size_t n, double value)
-{
-    size_t low = 0, high = n;
-    while (low < high) {
-        size_t middle = low + (high - low) / 2;
-        if (s[middle] < value)
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    return low;
 }
 
 /* A curve's grid from its coefficients. */
@@ -144,8 +133,8 @@ static void add_line(const evaluation *e, size_t k)
         n++;
     }
     double per_cell = (double)m->n_fft * m->length_step, half = ((double)(m->n_fft / 2) - EDGE) / per_cell;
-    m->rung->spread(m->n, m->s, s0, per_cell, m->n_fft, first_not_below(m->s, m->n, s0 - half),
-                    first_not_below(m->s, m->n, s0 + half), channel, n);
+    m->rung->spread(m->n, m->s, s0, per_cell, m->n_fft, lw_first_not_below(m->s, m->n, s0 - half),
+                    lw_first_not_below(m->s, m->n, s0 + half), channel, n);
 }
 
 static bool possible(const lw_pattern *m, const double *p)

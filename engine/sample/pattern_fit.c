@@ -1,10 +1,11 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "sample/pattern_fitter.h"
 
+#include "numeric/statistics.h"
+
 #include <math.h>
 #include <string.h>
 
-#define ONE_SIDED 1.6448536269514722 /* 95 % quantile of the normal distribution */
 #define KNOTS 6                      /* of a free strain */
 #define SEEN 1e-4                    /* weight of a form that takes part */
 
@@ -278,7 +279,7 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
         /* the width of the distribution is assumed, so that both sizes go with the one parameter */
         lw_spheres spheres = {1, LW_ASSUMED_SIGMA};
         double ratio = lw_spheres_size_volume(&spheres, NULL) / lw_spheres_size_area(&spheres, NULL);
-        double limit = fmax(inverse_size, 0) + ONE_SIDED * u_inverse_size;
+        double limit = fmax(inverse_size, 0) + LW_ONE_SIDED_95 * u_inverse_size;
         a->size_area_limit = 1 / limit;
         a->size_volume_limit = ratio / limit;
     }
@@ -286,7 +287,7 @@ static lw_status conclude(lw_pattern_fitter *f, const look *first, const lw_patt
     bool told =
         best->strain == &lw_strain_constant || best->strain == NULL; /* their limit is one for every length */
     if (best->none || (told && !first->strained))
-        a->strain_limit = sqrt(fmax(first->strain, 0) + ONE_SIDED * fmax(first->u_strain, 0));
+        a->strain_limit = sqrt(fmax(first->strain, 0) + LW_ONE_SIDED_95 * fmax(first->u_strain, 0));
     return LW_OK;
 }
 

@@ -2,6 +2,7 @@
 /* Scherrer: each line's breadth read as size alone. */
 #include "sample/scherrer.h"
 
+#include "numeric/statistics.h"
 #include "physics/scherrer.h"
 #include "sample/breadths.h"
 #include "sample/method.h"
@@ -11,7 +12,6 @@
 #include <stddef.h>
 #include <stdio.h>
 
-#define ONE_SIDED 1.6448536269514722 /* 95 % quantile of the normal distribution */
 #define CHANCE_OF_3U 0.0026997960632601866
 
 typedef struct scherrer_options {
@@ -57,7 +57,7 @@ static const char *lacks(const lw_profiles *profiles, char *why, size_t size)
 static lw_quantity size_of(double breadth, double u, bool resolved, double K)
 {
     if (!resolved)
-        return lw_lower_limit(K / (fmax(0, breadth) + ONE_SIDED * u), 0.95, "nm");
+        return lw_lower_limit(K / (fmax(0, breadth) + LW_ONE_SIDED_95 * u), 0.95, "nm");
     return lw_quantity_of(K / breadth, K * u / (breadth * breadth), "nm");
 }
 

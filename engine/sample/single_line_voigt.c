@@ -6,10 +6,11 @@
 #include "sample/reading.h"
 #include "sample/shared.h"
 
+#include "numeric/statistics.h"
+
 #include <math.h>
 #include <stdio.h>
 
-#define ONE_SIDED 1.6448536269514722       /* 95 % quantile of the normal distribution */
 #define CHANCE_OF_3U 0.0026997960632601866 /* of a normal deviate beyond 3 u */
 
 static const lw_option options[] = {LW_OPTIONS_END};
@@ -95,7 +96,7 @@ static lw_quantity size_of(lw_quantity lorentz)
         return lw_lower_limit(1 / lorentz.value, lorentz.confidence, "nm");
     if (lorentz.value > 2 * lorentz.u)
         return lw_quantity_of(1 / lorentz.value, lorentz.u / (lorentz.value * lorentz.value), "nm");
-    return lw_lower_limit(1 / (fmax(0, lorentz.value) + ONE_SIDED * lorentz.u), 0.95, "nm");
+    return lw_lower_limit(1 / (fmax(0, lorentz.value) + LW_ONE_SIDED_95 * lorentz.u), 0.95, "nm");
 }
 
 static lw_quantity strain_of(lw_quantity gauss, double s)
@@ -105,7 +106,7 @@ static lw_quantity strain_of(lw_quantity gauss, double s)
         return lw_upper_limit(gauss.value * per, gauss.confidence, "");
     if (gauss.value > 2 * gauss.u)
         return lw_quantity_of(gauss.value * per, gauss.u * per, "");
-    return lw_upper_limit((fmax(0, gauss.value) + ONE_SIDED * gauss.u) * per, 0.95, "");
+    return lw_upper_limit((fmax(0, gauss.value) + LW_ONE_SIDED_95 * gauss.u) * per, 0.95, "");
 }
 
 static lw_quantity times(lw_quantity q, double factor)

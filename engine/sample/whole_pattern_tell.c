@@ -3,11 +3,12 @@
 
 #include "sample/breadths.h"
 
+#include "numeric/statistics.h"
+
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
 
-#define ONE_SIDED 1.6448536269514722 /* 95 % quantile of the normal distribution */
 
 static const char SIZE_VOLUME[] = "Volume-weighted mean column length (3/4)<D^4>/<D^3> of the spheres.";
 static const char SIZE_AREA[] = "Area-weighted mean column length (2/3)<D^3>/<D^2> of the spheres.";
@@ -231,7 +232,7 @@ static void remark(const lw_pattern_answer *a, lw_node *remarks, lw_error *err)
 static void tell_anisotropy(const lw_pattern_answer *a, lw_node *result, lw_error *err)
 {
     static const char meaning[] = "q of the mean square strain of a cubic crystal, proportional to 1 - q H.";
-    double reach = ONE_SIDED * a->u_anisotropy;
+    double reach = LW_ONE_SIDED_95 * a->u_anisotropy;
     if (!a->anisotropy_at_bound)
         lw_add_quantity(result, "strain_anisotropy", lw_quantity_of(a->anisotropy, a->u_anisotropy, ""),
                         meaning, err);

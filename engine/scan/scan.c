@@ -2,6 +2,8 @@
 #include "scan/reader.h"
 #include "scan/source.h"
 
+#include "numeric/statistics.h"
+
 #include <math.h>
 #include <stddef.h>
 #include <stdint.h>
@@ -84,28 +86,14 @@ static lw_status copy_points(lw_engine *engine, const lw_scan *like, size_t from
     return LW_OK;
 }
 
-/* Number of points below an angle (or up to it, if `with`). */
-static size_t points_below(const lw_scan *scan, double two_theta_deg, bool with)
-{
-    size_t low = 0, high = scan->n;
-    while (low < high) {
-        size_t middle = low + (high - low) / 2;
-        double x = scan->two_theta_deg[middle];
-        if (x < two_theta_deg || (with && x == two_theta_deg))
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    return low;
-}
-
 lw_status lw_scan_crop(const lw_scan *scan, double low_deg, double high_deg, lw_scan **cropped, lw_error *err)
 {
     *cropped = NULL;
     if (!(low_deg < high_deg) || !isfinite(low_deg) || !isfinite(high_deg))
         return lw_fail(err, LW_BAD_ARGUMENT, "give the lower angle first",
                        "the range %g to %g degrees is empty", low_deg, high_deg);
-    size_t first = points_below(scan, low_deg, false), end = points_below(scan, high_deg, true);
+    size_t first = lw_first_not_below(scan->two_theta_deg, scan->n, low_deg);
+    size_t end = lw_first_not_below(scan->two_theta_deg, scan->n, nextafter(high_deg, INFINITY)); /* with its point */
     size_t n = end - first;
     if (n < 3)
         return lw_fail_at(err, LW_BAD_ARGUMENT, scan->file, 0, "choose a wider range within that of the scan",
@@ -171,7 +159,7 @@ double lw_scan_at(const lw_scan *scan, double two_theta_deg, bool *inside)
         *inside = within;
     if (!within)
         return 0;
-    size_t i = points_below(scan, two_theta_deg, true);
+    size_t i = lw_first_not_below(x, scan->n, nextafter(two_theta_deg, INFINITY));
     if (i == scan->n)
         return y[scan->n - 1];
     double share = (two_theta_deg - x[i - 1]) / (x[i] - x[i - 1]);
