@@ -2,6 +2,7 @@
 /* Variance method: size from how fast a line's variance grows with the range it is taken over, strain from its start.
  * Read from the counts, so that it checks methods that rest on a shape of line. */
 #include "line/curve.h"
+#include "numeric/statistics.h"
 #include "numeric/voigt.h"
 #include "sample/generalised.h"
 #include "sample/method.h"
@@ -11,7 +12,6 @@
 #include <stdio.h>
 
 #define PI 3.14159265358979323846
-#define ONE_SIDED 1.6448536269514722 /* 95 % quantile of the normal distribution */
 #define RANGES 15
 #define NARROWEST 2.0 /* half of the narrowest range, in observed breadths: the law of the tails holds beyond the top only */
 #define WIDEST 12.0   /* of the widest */
@@ -241,14 +241,14 @@ static lw_quantity size_of(double slope, double u)
     double per = 2 * PI * PI;
     if (slope > 2 * u)
         return lw_quantity_of(1 / (per * slope), u / (per * slope * slope), "nm");
-    return lw_lower_limit(1 / (per * (fmax(slope, 0) + ONE_SIDED * u)), 0.95, "nm");
+    return lw_lower_limit(1 / (per * (fmax(slope, 0) + LW_ONE_SIDED_95 * u)), 0.95, "nm");
 }
 
 static lw_quantity strain_of(double square, double u)
 {
     if (square > 2 * u)
         return lw_quantity_of(sqrt(square), u / (2 * sqrt(square)), "");
-    return lw_upper_limit(sqrt(fmax(square, 0) + ONE_SIDED * u), 0.95, "");
+    return lw_upper_limit(sqrt(fmax(square, 0) + LW_ONE_SIDED_95 * u), 0.95, "");
 }
 
 static const char SIZE[] = "Area-weighted mean column length: 1/(2 pi^2 slope), slope of the variance against the whole range "
@@ -283,8 +283,8 @@ static void tell_lines(const lw_profiles *profiles, const tailed_line *all, lw_n
         lw_add_quantity(node, "slope", lw_quantity_of(t->fit.slope, u[1], "nm^-1"),
                         "Growth of the variance with the whole range.", err);
         lw_add_quantity(node, "start", lw_quantity_of(t->fit.start, u[0], "nm^-2"), "Variance at range 0.", err);
-        lw_add_number(node, "range_low", 2 * t->w.half[t->fit.first], err);
-        lw_add_number(node, "range_high", 2 * t->high, err);
+        lw_add_number(node, "range_low_per_nm", 2 * t->w.half[t->fit.first], err);
+        lw_add_number(node, "range_high_per_nm", 2 * t->high, err);
         lw_add_number(node, "chi2", t->fit.chi2, err);
         lw_add_number(node, "degrees_of_freedom", (double)t->fit.degrees, err);
     }
