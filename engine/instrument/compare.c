@@ -100,11 +100,14 @@ static void add_quantity(comparison *c, const char *name, const char *what, doub
     char place[32] = "";
     if (angle_deg > 0)
         snprintf(place, sizeof place, " at %g deg", angle_deg);
+    char was[64], is[64];
+    lw_quantity_text(before, was, sizeof was);
+    lw_quantity_text(after, is, sizeof is);
     bool improved = better_smaller && fabs(after.value) < fabs(before.value);
     if (size > tolerance)
         lw_add_text(c->reasons, NULL,
-                    lw_arena_print(c->arena, err, "%s: %s%s went from %.4g to %.4g %s, by more than the tolerance of %.3g%s%s",
-                                   verdicts[verdict], what, place, before.value, after.value, after.unit, tolerance,
+                    lw_arena_print(c->arena, err, "%s: %s%s went from %s to %s, by more than the tolerance of %.3g %s%s%s",
+                                   verdicts[verdict], what, place, was, is, tolerance, after.unit,
                                    verdict == 1 ? " but not by two standard uncertainties more" : "",
                                    improved ? "; smaller than before, yet the calibration from before no longer holds" : ""),
                     err);
@@ -112,7 +115,7 @@ static void add_quantity(comparison *c, const char *name, const char *what, doub
         lw_add_text(c->reasons, NULL,
                     lw_arena_print(c->arena, err,
                                    "attention: the standard uncertainty of the change of %s%s, %.3g %s, exceeds the "
-                                   "tolerance of %.3g: the scans can't tell", what, place, u, after.unit, tolerance),
+                                   "tolerance of %.3g %s: the scans can't tell", what, place, u, after.unit, tolerance, after.unit),
                     err);
 }
 
