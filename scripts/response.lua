@@ -16,7 +16,7 @@ local job = lw.recipe {
 -- The lines' areas, each line with its own width.
 local standard = lw.standard(job.standard)
 local instrument = job.instrument and lw.load_calibration(job.instrument) or nil
-local scan  = lw.read_scan(job.scan, { radiation = instrument and instrument.radiation or job.radiation })
+local scan  = lw.read_scan(job.scan, { radiation = job.radiation })
 local lines = lw.fit_lines(scan, standard:reflections(scan), { instrument = instrument })
 
 local response = lw.response(lines, standard, {})
