@@ -10,7 +10,6 @@
 static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvolve_options *options,
                      lw_error *err)
 {
-    const lw_scan *scan = profiles->lines->scan;
     size_t stride = profiles->n_covariance;
     for (size_t k = 0; k < profiles->n; k++) {
         lw_profile *profile = &profiles->profile[k];
@@ -32,27 +31,9 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
             profile->u_cosine[i] = sqrt(fmax(variance, 0));
         }
         profile->truncation = "none: a Voigt has coefficients at every length";
-        /* the refold is the fit itself */
-        double chi2 = 0, residual = 0, net = 0;
-        size_t first = 0, end = scan->n;
-        while (first < end &&
-               scan->two_theta_deg[first] < profile->line->two_theta.value - 2 * profile->line->fwhm.value)
-            first++;
-        while (end > first &&
-               scan->two_theta_deg[end - 1] > profile->line->two_theta.value + 2 * profile->line->fwhm.value)
-            end--;
-        if ((status = lw__take_refold(profiles, profile, first, end - first, err)) != LW_OK)
+        status = lw__refold_of_fit(profiles, profile, profiles->lines->fitted, profiles->lines->background, err);
+        if (status != LW_OK)
             return status;
-        for (size_t i = first; i < end; i++) {
-            double r = scan->intensity[i] - profiles->lines->fitted[i];
-            double above = profiles->lines->fitted[i] - profiles->lines->background[i];
-            chi2 += r * r / profiles->lines->variance[i];
-            residual += r * r - profiles->lines->variance[i];
-            net += above * above;
-            lw__set_refold_point(profile, i - first, above + r, profiles->lines->variance[i], above);
-            profile->refold_points++;
-        }
-        lw__set_refold(profile, chi2, (double)profile->refold_points, profile->refold_points, residual, net);
         profile->assumed = "the sample's profile is a Voigt";
         size_t n = 161;
         double *curve[3];

@@ -46,6 +46,12 @@ lw_status lw__take_refold(lw_profiles *profiles, lw_profile *profile, size_t fir
 /* Sets one of them. */
 void lw__set_refold_point(lw_profile *profile, size_t i, double seen, double variance, double curve);
 
+/* Refold where the method is itself a fit of the whole scan: the points within 2 FWHM of the line against the
+ * fit's model and background, [points of the scan], intensity. Beyond, a line's own misfit drowns in its
+ * neighbours' and the background's. LW_OUT_OF_MEMORY. */
+lw_status lw__refold_of_fit(lw_profiles *profiles, lw_profile *profile, const double *model,
+                            const double *background, lw_error *err);
+
 /* The pure profile for figures, from the coefficients up to truncated_at, over +-4 breadths. */
 lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth_s,
                                     lw_error *err);

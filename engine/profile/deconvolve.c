@@ -123,6 +123,32 @@ void lw__set_refold_point(lw_profile *profile, size_t i, double seen, double var
     profile->refold_curve[i] = curve;
 }
 
+lw_status lw__refold_of_fit(lw_profiles *profiles, lw_profile *profile, const double *model,
+                            const double *background, lw_error *err)
+{
+    const lw_scan *scan = profiles->lines->scan;
+    double at = profile->line->two_theta.value, reach = 2 * profile->line->fwhm.value;
+    double chi2 = 0, lost = 0, net = 0;
+    size_t first = 0, end = scan->n;
+    while (first < end && scan->two_theta_deg[first] < at - reach)
+        first++;
+    while (end > first && scan->two_theta_deg[end - 1] > at + reach)
+        end--;
+    lw_status status = lw__take_refold(profiles, profile, first, end - first, err);
+    if (status != LW_OK)
+        return status;
+    for (size_t i = first; i < end; i++) {
+        double r = scan->intensity[i] - model[i], variance = profiles->lines->variance[i];
+        double above = model[i] - background[i];
+        chi2 += r * r / variance;
+        lost += r * r - variance;
+        net += above * above;
+        lw__set_refold_point(profile, i - first, above + r, variance, above);
+    }
+    lw__set_refold(profile, chi2, (double)(end - first), end - first, lost, net);
+    return LW_OK;
+}
+
 lw_status lw__curve_of_coefficients(lw_profiles *profiles, lw_profile *profile, double breadth, lw_error *err)
 {
     size_t n = 161, last = profile->truncated_at;

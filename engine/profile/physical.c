@@ -57,7 +57,6 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
     if (status == LW_OK)
         status = lw__keep_model(profiles, &separation, err);
     size_t n = profiles->n, stride = profiles->n_covariance;
-    const lw_scan *scan = profiles->lines->scan;
     for (size_t k = 0; k < n && status == LW_OK; k++) {
         lw_profile *profile = &profiles->profile[k];
         for (size_t l = 0; l < n; l++)
@@ -73,26 +72,9 @@ static lw_status run(lw_engine *engine, lw_profiles *profiles, const lw_deconvol
         if ((status = lw__take_lengths(profiles, profile, options, err)) != LW_OK ||
             (status = fill(profiles, k, &fit, fit.breadth[k], err)) != LW_OK)
             break;
-        double chi2 = 0, lost = 0, net = 0;
-        size_t first = 0, end = scan->n;
-        while (first < end &&
-               scan->two_theta_deg[first] < profile->line->two_theta.value - 2 * profile->line->fwhm.value)
-            first++;
-        while (end > first &&
-               scan->two_theta_deg[end - 1] > profile->line->two_theta.value + 2 * profile->line->fwhm.value)
-            end--;
-        if ((status = lw__take_refold(profiles, profile, first, end - first, err)) != LW_OK)
+        status = lw__refold_of_fit(profiles, profile, profiles->model, separation.background, err);
+        if (status != LW_OK)
             break;
-        for (size_t i = first; i < end; i++) {
-            double r = separation.residual[i], v = profiles->lines->variance[i];
-            double above = scan->intensity[i] - r - separation.background[i];
-            chi2 += r * r / v;
-            lost += r * r - v;
-            net += above * above;
-            lw__set_refold_point(profile, i - first, above + r, v, above);
-            profile->refold_points++;
-        }
-        lw__set_refold(profile, chi2, (double)profile->refold_points, profile->refold_points, lost, net);
         profile->truncation = "none: the shape has coefficients at every length";
         profile->assumed = lw_arena_print(
             &profiles->arena, err,
