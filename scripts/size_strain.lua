@@ -69,5 +69,6 @@ end
 for _, item in ipairs { results, profiles, lines } do
   items[#items + 1] = item
 end
+job:write_cif("fit.cif", lines)
 job:write(results) -- before the figures, which take the longest
 job:write(lw.report(items))

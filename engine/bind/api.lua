@@ -144,6 +144,7 @@
 ---@field path fun(self: recipe, name: string): string
 ---@field write fun(self: recipe, ...: any)
 ---@field write_csv fun(self: recipe, name: string, rows: any, columns?: string[]): string
+---@field write_cif fun(self: recipe, name: string, lines: lines): string
 ---@field run fun(self: recipe, recipe: string, inputs: table)
 ---@field progress fun(self: recipe, what: string, fraction: number)
 ---@field check fun(self: recipe, passed: boolean, text?: string): boolean
@@ -348,6 +349,9 @@ local methods = {
     { p("name", "text", "below the out folder"), p("rows", "list", "of a result, lines, profiles, or tables"),
       p("columns", "list", "names, which and in what order; left out: all, those of tables by the alphabet") },
     "text"),
+  ["recipe:write_cif"] = entry("job:write_cif(name, lines)",
+    "Lines and the scan that they were fitted to as powder CIF: points, wavelengths, lines, cell.",
+    { p("name", "text", "below the out folder"), p("lines", "lines", "from lw.fit_lines") }, "text"),
   ["recipe:check"] = entry("job:check(passed, text)", "A verdict: exit code 3 under strict=true if it failed.",
     { p("passed", "flag", "whether it holds"), p("text", "text", "what was judged") }, "flag"),
   ["recipe:progress"] = entry("job:progress(what, fraction)",

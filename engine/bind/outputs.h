@@ -23,10 +23,11 @@ lwb_tree *lwb_calibration_record(lua_State *L, int index);
 /* Writes it; the path was allowed before. */
 void lwb_calibration_save(lua_State *L, int index, const char *path);
 
-/* Methods of the recipe that write: job:path, job:write, job:write_csv, job:check. */
+/* Methods of the recipe that write: job:path, job:write, job:write_csv, job:write_cif, job:check. */
 int lwb_job_path(lua_State *L);
 int lwb_job_write(lua_State *L);
 int lwb_job_write_csv(lua_State *L);
+int lwb_job_write_cif(lua_State *L); /* export_cif.c */
 int lwb_job_check(lua_State *L);
 int lwb_job_progress(lua_State *L);
 int lwb_job_once(lua_State *L); /* journal.c */

@@ -133,7 +133,7 @@ static int end_after_help(lua_State *L)
 static void check_declaration(lua_State *L, int declared)
 {
     static const char *const keys[] = {"kind", "default", "help", "unit", "choices", "least", "most", NULL};
-    static const char *const taken[] = {"path", "write", "write_csv", "check", "progress", "run", "once", "each",
+    static const char *const taken[] = {"path", "write", "write_csv", "write_cif", "check", "progress", "run", "once", "each",
                                         "title", "inputs", NULL};
     for (lua_pushnil(L); lua_next(L, declared); lua_pop(L, 1)) {
         if (lua_type(L, -2) != LUA_TSTRING)
@@ -311,6 +311,7 @@ static const luaL_Reg functions[] = {{"recipe", make}, {NULL, NULL}};
 static const luaL_Reg methods[] = {{"path", lwb_job_path},
                                    {"write", lwb_job_write},
                                    {"write_csv", lwb_job_write_csv},
+                                   {"write_cif", lwb_job_write_cif},
                                    {"check", lwb_job_check},
                                    {"progress", lwb_job_progress},
                                    {"once", lwb_job_once},

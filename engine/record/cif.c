@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "record/cif.h"
 
+#include "record/file.h"
 
 #include <math.h>
 #include <stdio.h>
@@ -211,12 +212,16 @@ static lw_status write_columns(lw_text *out, const lw_node *group, lw_error *err
         write_name(out, child->name, " _");
         lw_text_add(out, "\n");
     }
-    for (size_t i = 0; i < first->n; i++)
+    lw_status status = LW_OK;
+    for (size_t i = 0; i < first->n && status == LW_OK; i++) {
         for (const lw_node *child = first; child != NULL; child = child->next) {
             lw_cif_write_number(out, child->vector[i], 0);
             lw_text_add(out, child->next != NULL ? " " : "\n");
         }
-    return LW_OK;
+        if (i % 65536 == 65535)
+            status = lw_engine_poll(out->engine, err);
+    }
+    return status;
 }
 
 lw_status lw_cif_write(const lw_node *group, const char *name, lw_text *out, lw_error *err)
@@ -241,4 +246,15 @@ lw_status lw_cif_write(const lw_node *group, const char *name, lw_text *out, lw_
         }
     }
     return status == LW_OK ? lw_text_check(out, err) : status;
+}
+
+lw_status lw_cif_save(lw_engine *engine, const char *path, const lw_node *group, const char *name, lw_error *err)
+{
+    lw_text text;
+    lw_text_begin(&text, engine);
+    lw_status status = lw_cif_write(group, name, &text, err);
+    if (status == LW_OK)
+        status = lw_write_file(engine, path, text.bytes, text.n, err);
+    lw_text_end(&text);
+    return status;
 }

@@ -17,8 +17,11 @@
 /* Appends the block data_<name> of a group. Characters that a name can't have become _, characters
  * outside ASCII in text become ?, as CIF 1.1 is ASCII.
  * Status: LW_BAD_ARGUMENT for vectors of a loop that differ in length, a list of something else than
- * groups, or a group that holds no vectors; LW_OUT_OF_MEMORY. */
+ * groups, or a group that holds no vectors; LW_OUT_OF_MEMORY; LW_CANCELLED. */
 lw_status lw_cif_write(const lw_node *group, const char *name, lw_text *out, lw_error *err);
+
+/* Writes the block to a file of its own (record/file.h). */
+lw_status lw_cif_save(lw_engine *engine, const char *path, const lw_node *group, const char *name, lw_error *err);
 
 /* Appends value(su) as CIF writes it: the uncertainty's first two digits count units of the value's last
  * place; without uncertainty (0 or not finite) the shortest digits that read back to the same value. */

@@ -78,6 +78,7 @@ static const char chunk[] =
     "for name, value in pairs(done) do tell(name, value) end\n"
     "local rows = { { a = 1, b = lw.quantity { 1, 0.5, 'nm' } }, { a = 2, b = lw.quantity { 2, 0.5, 'nm' } } }\n"
     "job:write_csv('rows.csv', rows, { 'b', 'a' })\n"
+    "job:write_cif('fit.cif', lines)\n"
     "job:write({ a = done, rows = rows, text = 'x', vector = v }, calibration)\n"
     "tell(lw.load_calibration(job:path 'calibration.json').verdict, lw.help 'fit_lines')\n"
     "tell(pcall(lw.fit_lines, scan, nil, { wndow = 1 }))\n"

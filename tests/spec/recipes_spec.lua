@@ -184,6 +184,8 @@ describe("the recipe", function()
       assert.is_not_nil(r.agreement)
       assert.are.equal(helper.output_of("sha256sum " .. helper.quote(made .. "/before/calibration.json")):match "^%x+",
         r.provenance.calibration_sha256)
+      assert.matches("\nSHA%-256 of the calibration: " .. r.provenance.calibration_sha256,
+        helper.read(folder .. "/one/fit.cif"))
       if has_jsonschema then
         assert.are.equal("", schema_errors("results-1.json", folder .. "/one/results.json"))
       end
