@@ -15,11 +15,6 @@ double lw_chi2_tail(double chi2, double dof);
 /* Normal distribution: P(Z <= z), and z for a probability 0 < p < 1. */
 double lw_normal_probability(double z);
 double lw_normal_quantile(double p);
-/* Student's t with dof > 0: P(T <= t), and t for a probability 0 < p < 1. */
-double lw_student_probability(double t, double dof);
-double lw_student_quantile(double p, double dof);
-/* The coverage factor k of a two-sided interval of the given probability (0.95: 1.96 for infinite dof). */
-double lw_coverage_factor(double probability, double dof);
 
 /* Durbin-Watson statistic of residuals in order: 2 for none, below 2 for positive serial correlation
  * (Durbin & Watson 1950 Biometrika 37, 409; the weighted residuals of a scan: Hill & Flack 1987 J. Appl.

@@ -13,7 +13,7 @@
 
 static void test_distributions(void)
 {
-    double worst[3] = {0};
+    double worst[2] = {0};
     /* the reference loses digits from 80000 degrees of freedom on: there a 40-digit continued fraction */
     static const double large[][3] = {{87480, 87166.288348957198, 0.7731630332191852},
                                       {787320, 786378.86504687159, 0.7733026943674963},
@@ -34,27 +34,9 @@ static void test_distributions(void)
         worst[1] = fmax(worst[1], fabs(z - want) / (1 + fabs(want)));
         CHECK_NEAR(z, want, 1e-13 * (1 + fabs(want)));
         CHECK_RELATIVE(lw_normal_probability(z), p, 1e-12 * (1 + z * z));
-        for (double dof = 1; dof < 1e6; dof = dof < 10 ? dof + 0.5 : 7 * dof) {
-            if (p < 1e-9) /* the reference's own inverse is not reliable further out */
-                continue;
-            double t = lw_student_quantile(p, dof), reference = gsl_cdf_tdist_Pinv(p, dof);
-            double off = fabs(t - reference) / (1e-3 + fabs(reference));
-            worst[2] = fmax(worst[2], off);
-            CHECK_NEAR(off, 0, 1e-7);
-            CHECK_RELATIVE(lw_student_probability(t, dof), gsl_cdf_tdist_P(t, dof), 1e-9);
-            CHECK_RELATIVE(lw_student_probability(t, dof), p, 1e-12);
-        }
     }
-    printf("chi-square %.1e, normal quantile %.1e, Student quantile %.1e\n", worst[0], worst[1], worst[2]);
-    CHECK(lw_student_quantile(0.5, 4) == 0 && isnan(lw_student_quantile(0, 4)) &&
-          isnan(lw_normal_quantile(1)));
-    /* JCGM 100:2008, table G.2: t_95 and t_99 (two digits after the point) */
-    CHECK_NEAR(lw_coverage_factor(0.95, 1), 12.71, 0.005);
-    CHECK_NEAR(lw_coverage_factor(0.95, 10), 2.23, 0.005);
-    CHECK_NEAR(lw_coverage_factor(0.95, 100), 1.984, 0.0005);
-    CHECK_NEAR(lw_coverage_factor(0.99, 5), 4.03, 0.005);
-    CHECK_NEAR(lw_coverage_factor(0.95, INFINITY), 1.960, 0.0005);
-    CHECK_NEAR(lw_coverage_factor(0.9973, INFINITY), 3.000, 0.0005);
+    printf("chi-square %.1e, normal quantile %.1e\n", worst[0], worst[1]);
+    CHECK(isnan(lw_normal_quantile(1)));
 }
 
 static void test_summaries(void)
