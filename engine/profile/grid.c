@@ -365,19 +365,20 @@ lw_status lw__grid_refold(const lw__job *job, const lw__grid *g, const double *x
     return LW_OK;
 }
 
-double lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x, const double *z,
-                         const double *c, double *shape_share, double *bias, lw_arena *scratch, lw_error *err)
+lw_status lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x, const double *z,
+                            const double *c, double *variance, double *shape_share, double *bias,
+                            lw_arena *scratch, lw_error *err)
 {
     size_t m = g->m;
     double *q = lw_arena_take(scratch, m, sizeof *q, err), *zq = lw_arena_take(scratch, m, sizeof *zq, err);
     double *wider = lw_arena_take(scratch, m, sizeof *wider, err);
-    *shape_share = *bias = 0;
     if (q == NULL || zq == NULL || wider == NULL)
-        return 0;
-    double breadth = lw__grid_breadth(job, g, x, q), variance = 0, kept = 0, whole = 0;
+        return LW_OUT_OF_MEMORY;
+    double breadth = lw__grid_breadth(job, g, x, q), by_points = 0, kept = 0, whole = 0, share;
+    *bias = 0;
     for (size_t j = 0; j < m; j++) {
         zq[j] = lw_dot(z + j * m, q, m);
-        variance += q[j] * lw_dot(c + j * m, q, m);
+        by_points += q[j] * lw_dot(c + j * m, q, m);
     }
     /* d: a shape that is wider by a part in one; q'(1 - Z N) d is what survives of it */
     for (size_t j = 0; j < m; j++) {
@@ -391,7 +392,7 @@ double lw__grid_variance(const lw__job *job, const lw__grid *g, const double *x,
         *bias += zq[j] * nx - q[j] * x[j];
     }
     *shape_share = whole != 0 ? fmin(fabs(kept / whole), 1) : 1;
-    double share;
-    return variance + breadth * breadth * lw__tail_variance(job, &share) +
-           *shape_share * *shape_share * job->shape_variance + *bias * *bias;
+    *variance = by_points + breadth * breadth * lw__tail_variance(job, &share) +
+                *shape_share * *shape_share * job->shape_variance + *bias * *bias;
+    return LW_OK;
 }

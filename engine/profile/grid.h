@@ -58,13 +58,13 @@ double lw__grid_followed(const lw__grid *grid, const double *z, const double *zn
 /* Refold of x: `followed` is the number of degrees of freedom that x took up. */
 lw_status lw__grid_refold(const lw__job *job, const lw__grid *grid, const double *x, double followed, lw_error *err);
 
-/* For an estimate x = Z response' weight target, Z = (normal + R)^-1: variance of the breadth from c[m][m]
+/* For an estimate x = Z response' weight target, Z = (normal + R)^-1: *variance of the breadth, nm^-2, from c[m][m]
  * (covariance of x by counting and background, or posterior), from tails beyond the window, and from what
  * remains the shape's: shape_share of a change of the shape's breadth survives in the result. bias: by what R
  * keeps x back, estimated by what it would keep back of x itself; it enters as if it were a standard
- * uncertainty. */
-double lw__grid_variance(const lw__job *job, const lw__grid *grid, const double *x, const double *z,
-                         const double *c, double *shape_share, double *bias, lw_arena *scratch,
-                         lw_error *err);
+ * uncertainty. LW_OUT_OF_MEMORY. */
+lw_status lw__grid_variance(const lw__job *job, const lw__grid *grid, const double *x, const double *z,
+                            const double *c, double *variance, double *shape_share, double *bias,
+                            lw_arena *scratch, lw_error *err);
 
 #endif

@@ -123,9 +123,13 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     for (size_t j = 0; j < m && c != NULL; j++)
         for (size_t k = 0; k < m; k++)
             c[j * m + k] = lw_dot(zn + j * m, z + k * m, m);
-    if (c == NULL || (status = lw__add_background(job, &g, z, c, scratch, err)) != LW_OK)
+    if (c == NULL)
         return LW_OUT_OF_MEMORY;
-    answer->variance = lw__grid_variance(job, &g, s.x, z, c, &share, &bias, scratch, err);
+    if ((status = lw__add_background(job, &g, z, c, scratch, err)) != LW_OK)
+        return status;
+    status = lw__grid_variance(job, &g, s.x, z, c, &answer->variance, &share, &bias, scratch, err);
+    if (status != LW_OK)
+        return status;
     if ((status = lw__grid_refold(job, &g, s.x, lw__grid_followed(&g, z, zn), err)) != LW_OK)
         return status;
     if ((status = lw__add_standard(job, &g, s.x, z, c, answer, scratch, err)) != LW_OK)

@@ -184,7 +184,9 @@ static lw_status solve(const lw__job *job, const lw__instrument *instrument, boo
     if (!first)
         return LW_OK;
     double share, bias;
-    answer->variance = lw__grid_variance(job, &g, s.x, s.z, c, &share, &bias, scratch, err);
+    status = lw__grid_variance(job, &g, s.x, s.z, c, &answer->variance, &share, &bias, scratch, err);
+    if (status != LW_OK)
+        return status;
     if ((status = lw__grid_refold(job, &g, s.x, followed, err)) != LW_OK)
         return status;
     if ((status = lw__add_standard(job, &g, s.x, s.z, c, answer, scratch, err)) != LW_OK)
