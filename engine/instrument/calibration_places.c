@@ -53,15 +53,6 @@ static lw_status take_places(places *p, size_t n, size_t m, lw_arena *scratch, l
                                                                                                        : LW_OUT_OF_MEMORY;
 }
 
-/* Row of a width parameter in the covariance of the lines, or LW_NO_PARAMETER. */
-static size_t row_of_width(const lw_lines *lines, int width)
-{
-    for (size_t i = 0; i < lines->n_parameters; i++)
-        if (strcmp(lines->parameter_name[i], lw_width_name[width]) == 0)
-            return i;
-    return LW_NO_PARAMETER;
-}
-
 /* Lines of the scan that count, with where they stand and where the certificate wants them. */
 static lw_status choose_lines(lw_set *set, size_t k, places *p, lw_arena *arena, lw_error *err)
 {
@@ -102,7 +93,7 @@ static lw_status find_places(lw_engine *engine, lw_set *set, size_t k, places *p
     for (size_t a = 0; a < set->n_profile; a++) {
         size_t at = LW_NO_PARAMETER;
         if (!set->optical)
-            at = scan->again ? a : row_of_width(lines, set->width[a]);
+            at = scan->again ? a : lw_lines_row(lines, lw_width_name[set->width[a]]);
         for (size_t i = 0; i < refined->n && set->optical; i++)
             if (strcmp(refined->name[i], set->name[a]) == 0)
                 at = i;

@@ -124,7 +124,7 @@ static lw_status refine_scan(lw_engine *engine, const lw_set *set, lw_set_scan *
     lw_status further =
         lw__optical_refine(engine, scan->lines, scan->standard, options, set->radius_mm, arena, &deep, &deep_why);
     size_t last = options->refine.n - 1;
-    if (further == LW_OK && deep.value[last] > 3 * sqrt(deep.covariance[last][last]) && (stuck || plain.chi2 - deep.chi2 > 10.83)) {
+    if (further == LW_OK && deep.value[last] > 3 * sqrt(deep.covariance[last][last]) && (stuck || lw_chi2_tail(fmax(plain.chi2 - deep.chi2, 0), 1) < 1e-3)) {
         scan->refined = deep;
         return LW_OK;
     }
@@ -166,14 +166,6 @@ static lw_status refine_scans(lw_engine *engine, lw_set *set, const lw_calibrati
     return status;
 }
 
-static size_t row_named(const lw_lines *lines, const char *name)
-{
-    for (size_t i = 0; i < lines->n_parameters; i++)
-        if (strcmp(lines->parameter_name[i], name) == 0)
-            return i;
-    return LW_NO_PARAMETER;
-}
-
 /* The parameters that the scans have in common: widths, or quantities of the geometry but each specimen's attenuation. */
 static void name_parameters(lw_set *set)
 {
@@ -182,7 +174,7 @@ static void name_parameters(lw_set *set)
         size_t count = set->optical ? scan->refined.n : (size_t)LW_WIDTH_PARAMETERS;
         for (size_t i = 0; i < count && scan->joined; i++) {
             const char *name = set->optical ? scan->refined.name[i] : lw_width_name[i];
-            size_t row = set->optical ? i : row_named(scan->lines, name), size = scan->lines->n_parameters;
+            size_t row = set->optical ? i : lw_lines_row(scan->lines, name), size = scan->lines->n_parameters;
             bool known = set->optical ? strcmp(name, "attenuation") == 0 || !(scan->refined.covariance[i][i] > 0)
                                       : row == LW_NO_PARAMETER || !(scan->lines->covariance[row * size + row] > 0);
             for (size_t a = 0; a < set->n_profile; a++)
@@ -207,7 +199,7 @@ static lw_status estimate(const lw_set *set, size_t k, lw_estimate *out, lw_aren
         return LW_OUT_OF_MEMORY;
     size_t size = scan->lines->n_parameters;
     for (size_t a = 0; a < set->n_profile; a++) {
-        size_t at = set->optical ? LW_NO_PARAMETER : row_named(scan->lines, set->name[a]);
+        size_t at = set->optical ? LW_NO_PARAMETER : lw_lines_row(scan->lines, set->name[a]);
         for (size_t i = 0; i < refined->n && set->optical; i++)
             if (strcmp(refined->name[i], set->name[a]) == 0)
                 at = i;

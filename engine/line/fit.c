@@ -199,6 +199,14 @@ lw_status lw_fit_lines(lw_engine *engine, const lw_scan *scan, const lw_reflecti
     return LW_OK;
 }
 
+size_t lw_lines_row(const lw_lines *lines, const char *name)
+{
+    for (size_t i = 0; i < lines->n_parameters; i++)
+        if (strcmp(lines->parameter_name[i], name) == 0)
+            return i;
+    return LW_NO_PARAMETER;
+}
+
 void lw_lines_free(lw_lines *lines)
 {
     if (lines == NULL)

@@ -7,7 +7,6 @@
 #include "line/model.h"
 #include "line/start.h"
 
-#define LW_BACKGROUND_MOST 44   /* columns */
 #define LW_BACKGROUND_CHOICE 20 /* terms that are chosen from */
 
 enum { LW_WIDTHS_AUTO, LW_WIDTHS_FREE, LW_WIDTHS_SMOOTH }; /* lw_fit_options.widths */

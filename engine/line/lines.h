@@ -10,6 +10,7 @@
 #include "scan/scan.h"
 
 #define LW_NO_PARAMETER ((size_t)-1)
+#define LW_BACKGROUND_MOST 44 /* columns: 40 terms by the option, what a hyperbola and a background scan add */
 
 typedef struct lw_line {
     lw_reflection reflection;
@@ -72,7 +73,7 @@ typedef struct lw_lines {
     const char *left_out;            /* which part of the scan was not used because its lines overlap; "" if none */
     size_t n_points, iterations;
     const char *stopped;             /* why the iteration stopped */
-    size_t at_background, n_background; /* rows of the Chebyshev terms */
+    size_t at_background, n_background; /* rows of the Chebyshev terms, LW_BACKGROUND_MOST at most */
     /* how the model was set up, for lw_line_curve */
     bool on_s_axis, with_factor;
     double constant_polarisation, cos2_polarisation;
@@ -126,6 +127,10 @@ lw_status lw_refit_lines(lw_engine *engine, const lw_lines *from, const lw_scan 
                          const lw_width_function *instrument, const lw_scan *background, lw_lines **lines,
                          lw_error *err);
 void lw_lines_free(lw_lines *lines);
+
+/* Row of a parameter in lines->parameter and the covariance by its name ("U", "background 0" ...); LW_NO_PARAMETER
+ * where the fit's last stage did not have it. */
+size_t lw_lines_row(const lw_lines *lines, const char *name);
 
 /* The fit as a result tree: lines (list), statistics, width function. */
 lw_node *lw_lines_tree(const lw_lines *lines, lw_arena *arena, lw_error *err);

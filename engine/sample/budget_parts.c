@@ -27,15 +27,6 @@ typedef struct inputs {
     double *part[LW__PARTS]; /* [n][n] covariance of the inputs by part */
 } inputs;
 
-/* Row of a shared width in the fit's covariance; LW_NO_PARAMETER where the fit's last stage did not have it. */
-static size_t row_of_shared(const lw_lines *lines, size_t parameter)
-{
-    for (size_t i = lines->at_background; i < lines->n_parameters; i++)
-        if (strcmp(lines->parameter_name[i], lw_width_name[parameter]) == 0)
-            return i;
-    return LW_NO_PARAMETER;
-}
-
 static void add_input(inputs *all, int kind, size_t at, size_t row, double variance)
 {
     if (variance > 0 && isfinite(variance))
@@ -57,7 +48,7 @@ static void gather_inputs(const lw_profiles *profiles, inputs *all)
     }
     for (size_t i = 0; i < LW_AXIAL_1 && shared; i++)
         if (lines->smooth.refined[i])
-            add_input(all, SHARED, i, row_of_shared(lines, i), lines->smooth.covariance[i][i]);
+            add_input(all, SHARED, i, lw_lines_row(lines, lw_width_name[i]), lines->smooth.covariance[i][i]);
     const lw_aberrations *set = profiles->calibration != NULL ? &profiles->calibration->aberrations : NULL;
     for (size_t i = 0; set != NULL && i < set->n; i++) {
         size_t before = all->n;
