@@ -2,6 +2,7 @@
 #include "profile/physical_model.h"
 
 #include "line/curve.h"
+#include "numeric/chebyshev.h"
 #include "numeric/voigt.h"
 #include "physics/intensity.h"
 
@@ -234,13 +235,11 @@ lw_status lw__physical_prepare(lw__physical *f, lw_engine *engine, const lw_prof
     }
     double first = lines->scan->two_theta_deg[0], last = lines->scan->two_theta_deg[f->n - 1];
     for (size_t i = 0; i < f->n; i++) {
-        double t = 2 * (lines->scan->two_theta_deg[i] - first) / (last - first) - 1;
+        double term[LW_BACKGROUND_MOST];
         f->weight[i] = 1 / lines->variance[i];
+        lw_chebyshev(lines->scan->two_theta_deg[i], first, last, f->n_terms, term, NULL);
         for (size_t j = 0; j < f->n_terms; j++)
-            f->term[j * f->n + i] = j == 0 ? 1
-                                    : j == 1
-                                        ? t
-                                        : 2 * t * f->term[(j - 1) * f->n + i] - f->term[(j - 2) * f->n + i];
+            f->term[j * f->n + i] = term[j];
     }
     return LW_OK;
 }

@@ -2,6 +2,7 @@
 #include "profile/window.h"
 
 #include "line/curve.h"
+#include "numeric/chebyshev.h"
 #include "numeric/voigt.h"
 
 #include <math.h>
@@ -69,17 +70,6 @@ static void reach(const lw_lines *lines, const lw_line *line, double most, doubl
     }
 }
 
-/* Chebyshev terms of the background at an angle. */
-static size_t terms_at(const lw_lines *lines, double two_theta, double term[64])
-{
-    double low = lines->scan->two_theta_deg[0], high = lines->scan->two_theta_deg[lines->scan->n - 1];
-    double t = 2 * (two_theta - low) / (high - low) - 1;
-    size_t n = lines->n_background < 64 ? lines->n_background : 64;
-    for (size_t i = 0; i < n; i++)
-        term[i] = i == 0 ? 1 : i == 1 ? t : 2 * t * term[i - 1] - term[i - 2];
-    return n;
-}
-
 /* Covariance of two parameters of the line fit by counting alone. */
 static double counting(const lw_lines *lines, size_t a, size_t b)
 {
@@ -96,12 +86,14 @@ static lw_status level_under(const lw_lines *lines, const lw_line *line, size_t 
                              const double *curve, double *variance, double *with_counts, lw_arena *arena,
                              lw_error *err)
 {
-    double here[64], there[64], by_term[64] = {0}, by_line[3] = {0};
-    size_t n_terms = terms_at(lines, line->two_theta.value, here), stride = lines->n_parameters;
+    double here[LW_BACKGROUND_MOST], there[LW_BACKGROUND_MOST], by_term[LW_BACKGROUND_MOST] = {0}, by_line[3] = {0};
+    double low = lines->scan->two_theta_deg[0], high = lines->scan->two_theta_deg[lines->scan->n - 1];
+    size_t n_terms = lines->n_background, stride = lines->n_parameters;
     size_t of_line[3] = {line->at_area, line->at_gauss, line->at_lorentz};
     double *wider = lw_arena_take(arena, 2 * n + 1, sizeof *wider, err);
     if (wider == NULL)
         return LW_OUT_OF_MEMORY;
+    lw_chebyshev(line->two_theta.value, low, high, n_terms, here, NULL);
     *variance = 0;
     for (size_t a = 0; a < n_terms; a++) {
         size_t row = lines->at_background + a;
@@ -126,7 +118,7 @@ static lw_status level_under(const lw_lines *lines, const lw_line *line, size_t 
     }
     for (size_t i = 0; i < n; i++) {
         double sum = 0;
-        terms_at(lines, two_theta[i], there);
+        lw_chebyshev(two_theta[i], low, high, n_terms, there, NULL);
         for (size_t a = 0; a < n_terms; a++)
             sum += by_term[a] * there[a];
         if (line->area.value > 0)

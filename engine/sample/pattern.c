@@ -7,9 +7,7 @@
 #include <math.h>
 #include <string.h>
 
-#define PI 3.14159265358979323846
-
-static const double degree = PI / 180;
+static const double degree = M_PI / 180;
 
 size_t lw_pattern_background_row(const lw_pattern *pattern)
 {
@@ -25,7 +23,7 @@ size_t lw_pattern_position_row(const lw_pattern *pattern, size_t line)
  * are those of the coefficients' transform times (2 + cos)/3 (Unser et al. 1993). */
 double lw_pattern_lift(const lw_pattern *pattern, size_t j)
 {
-    double spline = (2 + cos(2 * PI * (double)j / (double)pattern->n_fft)) / 3;
+    double spline = (2 + cos(2 * M_PI * (double)j / (double)pattern->n_fft)) / 3;
     return (j % 2 == 0 ? 1 : -1) * pattern->length_step / spline;
 }
 
@@ -58,7 +56,7 @@ static void choose_lengths(lw_pattern *pattern)
         lorentz = (fmax(lorentz, 0) + 0.7 * line->own_lorentz_deg) * per_degree;
         widest = fmax(widest, line->breadth.value * per_degree);
         /* pi lorentz L + (pi^2/(4 ln 2)) variance L^2 = 16 */
-        double a = PI * PI / (4 * M_LN2) * variance, b = PI * lorentz;
+        double a = M_PI * M_PI / (4 * M_LN2) * variance, b = M_PI * lorentz;
         double most = a > 1e-14 ? (-b + sqrt(b * b + 64 * a)) / (2 * a) : b > 0 ? 16 / b : 5000;
         longest = fmax(longest, most);
     }
@@ -87,10 +85,10 @@ lw_status lw_pattern_instrument(lw_pattern *pattern, const lw_width_function *in
         line->kink = 0;
         memset(line->g, 0, 2 * pattern->n_lengths * sizeof(double));
         for (size_t i = 0; i < n; i++) {
-            double fall = PI * (lorentz + node[i].lorentz) * per;
+            double fall = M_PI * (lorentz + node[i].lorentz) * per;
             line->kink += node[i].weight * fall;
             /* steps of one length: a rotation and a shrinking, renewed every 64 against rounding */
-            double angle = 2 * PI * per * node[i].offset * pattern->length_step;
+            double angle = 2 * M_PI * per * node[i].offset * pattern->length_step;
             double turn_re = exp(-fall * pattern->length_step) * cos(angle);
             double turn_im = exp(-fall * pattern->length_step) * sin(angle), re = 0, im = 0;
             for (size_t j = 0; j < pattern->n_lengths; j++) {
@@ -108,7 +106,7 @@ lw_status lw_pattern_instrument(lw_pattern *pattern, const lw_width_function *in
         }
         for (size_t j = 0; j < pattern->n_lengths; j++) {
             double length = pattern->length_step * (double)j;
-            double gauss = exp(-PI * PI / (4 * M_LN2) * variance * per * per * length * length);
+            double gauss = exp(-M_PI * M_PI / (4 * M_LN2) * variance * per * per * length * length);
             gauss *= lw_pattern_lift(pattern, j);
             line->g[2 * j] *= gauss;
             line->g[2 * j + 1] *= -gauss; /* the FFT has exp(+2 pi i L s), the profile exp(-2 pi i L s) */
@@ -129,11 +127,11 @@ static double direction_of(const lw_material *material, const lw_reflection *r)
 /* What the 1/s^2 tails of the neighbouring periods add at s, a unit of tail. */
 static double neighbours(double s, double period)
 {
-    double x = PI * s / period;
+    double x = M_PI * s / period;
     if (fabs(x) < 1e-2)
-        return (PI / period) * (PI / period) * (1.0 / 3 + x * x / 15);
+        return (M_PI / period) * (M_PI / period) * (1.0 / 3 + x * x / 15);
     double sine = sin(x);
-    return (PI / period) * (PI / period) * (1 / (sine * sine) - 1 / (x * x));
+    return (M_PI / period) * (M_PI / period) * (1 / (sine * sine) - 1 / (x * x));
 }
 
 /* Their spline's coefficients: the values less a sixth of their second difference (the next term is below
@@ -199,10 +197,7 @@ lw_status lw_pattern_begin(lw_pattern *pattern, lw_engine *engine, const lw_prof
 
     set_neighbours(pattern);
     double low = scan->two_theta_deg[0], high = scan->two_theta_deg[n - 1];
-    double term[64];
-    if (pattern->n_background > 64)
-        return lw_fail(err, LW_NOT_SUPPORTED, "fit with fewer background terms",
-                       "%zu background terms are too many", pattern->n_background);
+    double term[LW_BACKGROUND_MOST];
     for (size_t i = 0; i < n; i++) {
         pattern->s[i] = s_of(pattern, scan->two_theta_deg[i]);
         pattern->factor[i] =
