@@ -12,8 +12,6 @@
 #include <math.h>
 #include <stdio.h>
 
-#define PI 3.14159265358979323846
-
 /* Of a line at s:  lorentz = SL + DL s^2,  gauss^2 = SG2 + DG2 s^2. */
 enum { SL, DL, SG2, DG2, PARAMETERS };
 
@@ -115,7 +113,7 @@ static double size_volume(const double *p)
     double gauss = sqrt(fmax(p[SG2], 0)), lorentz = fmax(p[SL], 0);
     if (!(gauss > 0) && !(lorentz > 0))
         return INFINITY;
-    return 1 / lw_voigt_breadth(2 * gauss * sqrt(M_LN2 / PI), 2 * lorentz / PI);
+    return 1 / lw_voigt_breadth(2 * gauss * sqrt(M_LN2 / M_PI), 2 * lorentz / M_PI);
 }
 
 static double size_area(const double *p)
@@ -126,7 +124,7 @@ static double size_area(const double *p)
 /* <eps^2(L)> = DG2/(2 pi) + DL/(pi^2 L). */
 static double strain_square(const double *p, double length)
 {
-    return p[DG2] / (2 * PI) + p[DL] / (PI * PI * length);
+    return p[DG2] / (2 * M_PI) + p[DL] / (M_PI * M_PI * length);
 }
 
 /* Slopes of a function of the parameters by central differences of a thousandth of each u. */
@@ -181,7 +179,7 @@ static lw_status share(const lw_profiles *profiles, const parts *m, const lw_gen
 
 static bool strain_at(const lw_generalised_fit *fit, const double *p, double length, double *value, double *u)
 {
-    double square = strain_square(p, length), by_gauss = 1 / (2 * PI), by_lorentz = 1 / (PI * PI * length);
+    double square = strain_square(p, length), by_gauss = 1 / (2 * M_PI), by_lorentz = 1 / (M_PI * M_PI * length);
     double var = by_gauss * by_gauss * fit->covariance[DG2][DG2] + 2 * by_gauss * by_lorentz * fit->covariance[DG2][DL] +
                  by_lorentz * by_lorentz * fit->covariance[DL][DL];
     double u_square = fit->scatter * sqrt(fmax(var, 0));
@@ -272,7 +270,7 @@ static void tell(const lw_generalised_fit *fit, const double *p, const lw_readin
             lw_add_text(remarks, NULL, text, err);
         }
     /* A''(0) = 4 SL^2 - 2 pi SG2 is the density of the shortest columns (Balzar & Ledbetter 1993) */
-    if (resolved && p[SL] > 0 && 4 * p[SL] * p[SL] < 2 * PI * p[SG2])
+    if (resolved && p[SL] > 0 && 4 * p[SL] * p[SL] < 2 * M_PI * p[SG2])
         lw_add_text(remarks, NULL,
                     "the size Voigt has a negative number of short columns: its size_area is a matter of the Voigt's shape "
                     "near L = 0 more than of the powder",

@@ -4,7 +4,6 @@
 #include <math.h>
 #include <string.h>
 
-#define PI 3.14159265358979323846
 #define NODES 30 /* of the histogram */
 
 bool lw_pattern_fitter_directions(const lw_pattern_fitter *f)
@@ -50,7 +49,7 @@ static void start_from_breadths(const lw_profiles *profiles, double *size, doubl
     double least = 0.01 * *narrowest * *narrowest;
     *size = 1 / sqrt(fmax(intercept, least));
     /* 2/pi: mean square strain over squared apparent strain, slope = 4 e^2 */
-    *square_strain = fmax(slope, 0) / (2 * PI);
+    *square_strain = fmax(slope, 0) / (2 * M_PI);
 }
 
 /* Fall of the scattering power: slope of ln(area over multiplicity, Lorentz factor and polarisation) against
@@ -62,7 +61,7 @@ static double fall_of_areas(const lw_profiles *profiles)
     double w = 0, x = 0, y = 0, xx = 0, xy = 0;
     for (size_t i = 0; i < profiles->n; i++) {
         const lw_line *line = profiles->profile[i].line;
-        double theta = line->two_theta.value * PI / 360, c = cos(2 * theta);
+        double theta = line->two_theta.value * M_PI / 360, c = cos(2 * theta);
         double factor = (lines->constant_polarisation + lines->cos2_polarisation * c * c) /
                         (sin(theta) * sin(theta) * cos(theta));
         if (!lines->with_factor || !(line->area.value > 0) || line->reflection.multiplicity < 1 ||

@@ -9,7 +9,6 @@
 #include <stdio.h>
 #include <string.h>
 
-#define PI 3.14159265358979323846
 #define STEPS 96 /* of Simpson's rule over 4/breadth, where the coefficients have died */
 #define REACH 4.0
 #define LENGTH_OF_UNLIMITED 10.0 /* nm */
@@ -65,7 +64,7 @@ static void take_image(const model_of *m, const double *p, double *factor)
         for (int j = 0; j <= STEPS; j++) {
             double length = longest * j / STEPS;
             coefficient[j] = (limited && length > 0 ? lw_spheres_coefficient(&spheres, length, NULL) : 1) *
-                             exp(-2 * PI * PI * s * s * displacement(m, p, length, unused));
+                             exp(-2 * M_PI * M_PI * s * s * displacement(m, p, length, unused));
         }
         double under = k->background != NULL && line->height.value > 0 ? k->background[i] / line->height.value : 0.05;
         factor[i] = lw_voigt_image(STEPS + 1, coefficient, longest / STEPS, under);
@@ -75,7 +74,7 @@ static void take_image(const model_of *m, const double *p, double *factor)
 /* Breadth at s and its slopes. A negative 1/size_volume continues the breadth evenly about 0. */
 static double breadth(const model_of *m, const double *p, double s, double longest, double slopes[3])
 {
-    double size = fabs(p[0]), by = -2 * PI * PI * s * s, sum = 0, by_parameter[3] = {0};
+    double size = fabs(p[0]), by = -2 * M_PI * M_PI * s * s, sum = 0, by_parameter[3] = {0};
     double even[3] = {size, p[1], m->strain == BOTH ? p[2] : 0};
     lw_spheres spheres = spheres_of(m, size > 0 ? size : 1);
     for (int i = 0; i <= STEPS; i++) {
@@ -128,7 +127,7 @@ static void start(const model_of *m, double *p)
         }
     }
     p[0] = 0.5 * least;
-    double rest = fmax(most - p[0], 0.1 * most), b = rest * rest / (2 * PI * s * s), a = rest / (PI * PI * s * s);
+    double rest = fmax(most - p[0], 0.1 * most), b = rest * rest / (2 * M_PI * s * s), a = rest / (M_PI * M_PI * s * s);
     p[1] = m->strain == FALLING ? a : m->strain == BOTH ? 0.5 * b : b;
     if (m->strain == BOTH)
         p[2] = 0.5 * a;

@@ -6,7 +6,6 @@
 #include <math.h>
 #include <stdbool.h>
 
-#define PI 3.14159265358979323846
 #define POINTS 41 /* from the top to REACH breadths: lines are symmetric */
 #define REACH 4.0
 #define ROUNDS 40
@@ -16,7 +15,7 @@ enum { AREA, LEVEL, GAUSS, LORENTZ, PARAMETERS }; /* GAUSS: square of the FWHM *
 /* Simpson's rule of A cos(2 pi s L). */
 static double profile(size_t n, const double *coefficient, double step, double s)
 {
-    double turn = 2 * cos(2 * PI * s * step), before = 0.5 * turn, now = 1, sum = 0;
+    double turn = 2 * cos(2 * M_PI * s * step), before = 0.5 * turn, now = 1, sum = 0;
     for (size_t i = 0; i < n; i++) {
         sum += coefficient[i] * now * (i == 0 || i + 1 == n ? 1 : i % 2 == 1 ? 4 : 2);
         double next = turn * now - before;
