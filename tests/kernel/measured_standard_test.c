@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The instrument as measured on a standard's neighbouring line: a calibration that is wrong, but wrong alike
- * at both angles, then gives the closed-form breadth all the same; the noise of the standard's counts is in
- * the uncertainty, and joins lines that share a line of the standard. Truth in closed form: breadth of a
+ * at both angles, then gives the closed-form breadth all the same, however far the line and whatever a further
+ * one says; the noise of the standard's counts is in the uncertainty, and joins lines that share a line of the standard. Truth in closed form: breadth of a
  * Voigt, beta_G exp(-k^2)/erfc(k), k = beta_L/(sqrt(pi) beta_G) (Langford 1978 J. Appl. Cryst. 11, 10). */
 #include "kernel/deconvolution_made.h"
 #include "line/width.h"
@@ -28,6 +28,7 @@ typedef struct pair {
     lw_scan *scan, *standard_scan;
     lw_lines *lines, *standard_lines;
     lw_profiles *profiles;
+    double reach_deg; /* of the standard; 0: as by default */
 } pair;
 
 static void fit_standard(pair *p, lw_random *random)
@@ -53,6 +54,9 @@ static lw_status deconvolve(pair *p, lw_random *random, const lw_width_function 
     options.method = made_method(method);
     options.completion = 1;
     options.standard = measured ? p->standard_lines : NULL;
+    if (p->reach_deg > 0)
+        options.standard_reach = p->reach_deg;
+    options.length_step_nm = 2; /* the same lengths in every realisation */
     options.accept_refold = true;
     return made_deconvolve(&p->sample, random, calibrated, &options, &p->scan, &p->lines, &p->profiles, err);
 }
@@ -123,7 +127,64 @@ static void wrong_calibration(void)
     made_end(&p.standard);
 }
 
+/* Breadth of the sample's 111 by Stokes' quotient against the standard's lines between low and high, deg. */
+static double against(pair *p, double low, double high, const lw_width_function *calibrated)
+{
+    static const double beta[2] = {0.02, 0.025}, perfect[2] = {0, 0};
+    lw_random random;
+    lw_error err = LW_ERROR_NONE;
+    made_scan(&p->sample, 36, 49, 0.01, 2e6, 500, 0, voigt, beta);
+    made_scan(&p->standard, low, high, 0.01, 1e7, 500, 0, voigt, perfect);
+    lw_random_begin(&random, 20260304, 0);
+    fit_standard(p, &random);
+    CHECK(deconvolve(p, &random, calibrated, "stokes", true, &err) == LW_OK);
+    double breadth = p->profiles != NULL ? p->profiles->profile[0].breadth_s.value : NAN;
+    free_sample(p);
+    free_standard(p);
+    return breadth / breadth_of(beta) - 1;
+}
+
+/* A line of the standard far off, where the instrument is broader by the ratio of tan(theta): a calibration that is
+ * wrong by one factor at all angles is put right only if its error is read at the length that the ratio of breadths
+ * gives (transforms of profiles of one form depend on length x breadth alone). */
+static void far_away(void)
+{
+    double tangent[2] = {tan(asin(0.5 * MADE_WAVELENGTH * sqrt(3) / EDGE_SAMPLE)),
+                         tan(asin(0.5 * MADE_WAVELENGTH * sqrt(8) / EDGE_STANDARD))};
+    pair p = {.reach_deg = 25};
+    made_begin(&p.sample, EDGE_SAMPLE, 0.14 * tangent[0], 0.08 * tangent[0]);
+    made_begin(&p.standard, EDGE_STANDARD, 0.14 * tangent[1], 0.08 * tangent[1]);
+    lw_width_function wrong = {.low_deg = 5, .high_deg = 175};
+    wrong.value[LW_U] = 0.16 * 0.16;
+    wrong.value[LW_X] = 0.10;
+    double off = against(&p, 60, 66, &wrong); /* 220 at 63.2 deg alone */
+    printf("breadth off by %+.3f %% with a line of the standard 20 deg away\n", 100 * off);
+    CHECK(fabs(off) < 0.004);
+    made_end(&p.sample);
+    made_end(&p.standard);
+}
+
+/* Lines of the standard on either side, 6 and 0.2 deg off, an instrument of constant widths and a calibration whose
+ * widths grow as tan(theta): wrong otherwise at the further line, so that nearly all has to come from the near one. */
+static void near_and_far(void)
+{
+    pair p = {.scan = NULL};
+    made_begin(&p.sample, EDGE_SAMPLE, 0.06, 0.03);
+    made_begin(&p.standard, EDGE_STANDARD, 0.06, 0.03);
+    lw_width_function trend = {.low_deg = 5, .high_deg = 175};
+    trend.value[LW_U] = 0.15 * 0.15; /* 0.06 and 0.03 deg at 43.4 deg */
+    trend.value[LW_X] = 0.075;
+    double both = against(&p, 34, 47, &trend), alone = against(&p, 34, 41, &trend); /* 111 at 37.5 deg, 200 at 43.5 */
+    printf("breadth off by %+.3f %% with the standard's lines 6 and 0.2 deg away, %+.3f %% with the first alone\n",
+           100 * both, 100 * alone);
+    CHECK(fabs(both) < 0.004);
+    CHECK(fabs(alone) > 0.02);
+    made_end(&p.sample);
+    made_end(&p.standard);
+}
+
 #define TRIALS 200
+#define AT 4 /* coefficient whose scatter is held against its u: L = 8 nm */
 
 /* Few counts of the standard under many of a narrow sample: 95 % intervals hold the truth, the standard's
  * part rules u, and two lines' breadths go together as the realisations do. */
@@ -141,6 +202,7 @@ static void noise_of_the_standard(void)
                   perfect); /* 200 at 43.51 deg serves both lines */
         int hits = 0, of = 0, trials = k == 0 ? TRIALS : TRIALS / 4;
         double sum[2] = {0}, square[2] = {0}, cross = 0, u[2] = {0}, together = 0, alone = 0;
+        double cosine = 0, cosine_square = 0, u_cosine = 0;
         for (int t = 0; t < trials; t++) {
             lw_error err = LW_ERROR_NONE;
             lw_random random;
@@ -162,6 +224,9 @@ static void noise_of_the_standard(void)
                 u[i] += q.u * q.u / trials;
             }
             cross += value[0] * value[1] / trials;
+            cosine += found->profile[0].cosine[AT] / trials;
+            cosine_square += pow(found->profile[0].cosine[AT], 2) / trials;
+            u_cosine += pow(found->profile[0].u_cosine[AT], 2) / trials;
             together += found->covariance[a * found->n_covariance + b] / trials;
             free_sample(&p);
             if (t == 0) { /* the same counts with the calibration: only the sample's own noise */
@@ -184,6 +249,11 @@ static void noise_of_the_standard(void)
                r_told, r_seen);
         CHECK(hits >= 0.90 * of && hits <= 0.99 * of + 1);
         CHECK(sqrt(u[0]) > 2 * alone);
+        double scatter_cosine = sqrt(cosine_square - cosine * cosine);
+        printf("%-16s A(8 nm) %.4f, u %.4f, scatter %.4f\n", methods[k], cosine, sqrt(u_cosine), scatter_cosine);
+        /* relative u of a scatter: 1/sqrt(2 n) */
+        if (k == 0)
+            CHECK_RELATIVE(sqrt(u_cosine), scatter_cosine, 4 / sqrt(2.0 * trials));
         /* u of a correlation: (1 - r^2)/sqrt(n) */
         CHECK_NEAR(r_told, r_seen, 4 * (1 - r_seen * r_seen) / sqrt(trials) + 0.05);
         made_end(&p.sample);
@@ -251,6 +321,8 @@ static void refusals(void)
 int main(void)
 {
     wrong_calibration();
+    far_away();
+    near_and_far();
     noise_of_the_standard();
     refusals();
     return lw_checks_end();

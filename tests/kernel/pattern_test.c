@@ -103,6 +103,14 @@ static void slopes(made *m, const lw_strain_form *form, const lw_size_histogram 
               none = {.n = n};
     start(&pattern, p);
     lw_pattern_evaluate(&pattern, p, true, &normal, &err);
+    if (histogram != NULL) { /* the fall at L = 0, which the tails beyond the grid go by, is that of the hats */
+        double all = 0, fall = 0, length = 1e-6;
+        for (size_t b = 0; b < histogram->n; b++) {
+            all += p[LW_PATTERN_SIZE + b];
+            fall += p[LW_PATTERN_SIZE + b] * (1 - lw_size_histogram_coefficient(histogram, b, length)) / length;
+        }
+        CHECK_RELATIVE(pattern.shape.size_kink, fall / all, 1e-5);
+    }
     for (size_t a = 0; a < n; a++) {
         bool unused = a >= LW_PATTERN_STRAIN + pattern.shape.n_strain && a < LW_PATTERN_ANISOTROPY;
         if (unused) {

@@ -58,7 +58,23 @@ describe("the response", function()
       local step = last.curve.value / first.curve.value
       local u = step * math.sqrt((first.curve.u / first.curve.value) ^ 2 + (last.curve.u / last.curve.value) ^ 2)
       assert.is_true(math.abs(step - true_step) < 3 * u, ("%.4f, wanted %.4f(%.4f)"):format(step, true_step, u))
+      -- the curve that is drawn is the one of the table, from its first line to its last
+      local drawn = r.curve
+      assert.is_near(first.curve.value, drawn.response[1], 1e-9)
+      assert.is_near(last.curve.value, drawn.response[#drawn.response], 1e-9)
+      assert.is_near(first.curve.u, drawn.u[1], 1e-9)
       assert.matches("not flat", r.warnings[1])
+    end
+  end)
+
+  it("is no better known than the certificate", function()
+    local literal = certificate(flat)
+    for _, row in ipairs(literal.intensities) do row.expanded_uncertainty = 0.2 * row.value end
+    local r = lw.response(lines(), lw.standard(literal), {})
+    for _, row in ipairs(r.lines) do
+      -- of a quotient: relative u in quadrature (JCGM 100:2008, 5.1.6), the certificate's 0.2 being k = 2
+      local relative = math.sqrt((row.observed.u / row.observed.value) ^ 2 + 0.1 ^ 2)
+      assert.is_near(relative, row.ratio.u / row.ratio.value, 1e-9)
     end
   end)
 
@@ -142,9 +158,10 @@ describe("the dead time", function()
   it("of drawn counts comes back, with an honest u, in both models", function()
     math.randomseed(91, 3)
     for _, model in ipairs { "non_paralysable", "paralysable" } do
-      local sum, runs = 0, 20
+      local sum, runs, widened = 0, 20, 0
       for _ = 1, runs do
         local r = lw.dead_time(scan("s.xy", 5, 3e-6, model, 2), scan("w.xy", 1, 3e-6, model, 4), { model = model })
+        widened = widened + (r.birge_ratio > 1 and 1 or 0)
         sum = sum + r.dead_time:pull(3e-6) ^ 2
         assert.is_true(math.abs(r.intensity_ratio:pull(5)) < 4)
         -- n tau/(1 + n tau) or 1 - exp(-n tau) of the strongest point, 50200 a second
@@ -153,6 +170,8 @@ describe("the dead time", function()
         assert.is_true(math.abs(r.loss_at_strongest:pull(loss)) < 4, tostring(r.loss_at_strongest))
         assert.are.equal("attention", r.verdict)
       end
+      -- u comes from counting: chi-square beyond chance (p < 1e-3) more than once in 20 happens in one of 5000 cases
+      assert.is_true(widened <= 1, widened .. " widened")
       -- rms of 20 pulls: 1 within 3 of its standard deviations, 1/sqrt(40)
       local rms = math.sqrt(sum / runs)
       assert.is_true(math.abs(rms - 1) < 3 / math.sqrt(2 * runs), ("%s: rms pull %.2f"):format(model, rms))
