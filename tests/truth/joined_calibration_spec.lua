@@ -122,6 +122,27 @@ describe("LaB6 and silicon in one calibration", function()
     end)
   end
 
+  it("share no error of their certificates", function()
+    -- two certificates are independent: what each adds to a variance adds up (JCGM 100:2008, 5.1.2), and were it one
+    -- certificate, twice the product of both slopes would come in
+    local function wider(name, factor)
+      local literal = dofile(helper.root .. "/standards/reference/" .. name .. ".lua")
+      literal.expanded_uncertainty.a = factor * literal.expanded_uncertainty.a
+      return lw.standard(literal)
+    end
+    local function variances(of_lab6, of_si)
+      local record = lw.calibrate({ { lab6, wider("lab6-660c", of_lab6) }, { si, wider("si-640f", of_si) } },
+        { profile = "empirical" }).record
+      return { record.aberrations.zero_shift.u ^ 2, record.scans[1].aberrations.displacement.u ^ 2 }
+    end
+    local none, one, other, both = variances(1, 1), variances(50, 1), variances(1, 50), variances(50, 50)
+    for i = 1, 2 do
+      local adds = { one[i] - none[i], other[i] - none[i], both[i] - none[i] }
+      assert.is_true(2 * math.sqrt(adds[1] * adds[2]) > 0.1 * adds[3]) -- else one certificate would look the same
+      assert.is_near(adds[1] + adds[2], adds[3], 1e-6 * adds[3])
+    end
+  end)
+
   it("can be told to use a scan for positions only", function()
     local joined = lw.calibrate({ { lab6, "lab6-660c" }, { si, "si-640f", positions_only = true } }, {})
     assert.matches("given for its positions only", joined.record.scans[2].why_not_profile)
