@@ -106,6 +106,7 @@ static lw_status level_under(const lw_lines *lines, const lw_line *line, size_t 
                 by_line[b] += here[a] * counting(lines, row, of_line[b]);
     }
     *variance = fmax(*variance, 0);
+    /* differences over a fiftieth of the width: far from rounding, and the curve is nearly linear over it */
     double step[3] = {0, 0.02 * line->fwhm.value * line->fwhm.value, 0.02 * line->fwhm.value};
     for (int b = 1; b < 3; b++) {
         if (of_line[b] == LW_NO_PARAMETER)

@@ -102,6 +102,7 @@ static lw_status lay_out(lw_pattern_fitter *f, double narrowest, lw_error *err)
         f->upper[i] = INFINITY;
     }
     if (m->shape.histogram == NULL) {
+        /* from a millimetre, which no line shows, to two cells of a metal */
         f->lower[LW_PATTERN_INVERSE_SIZE] = 1e-6;
         f->upper[LW_PATTERN_INVERSE_SIZE] = 2;
         f->lower[LW_PATTERN_SIGMA] = 0.02;
@@ -110,7 +111,7 @@ static lw_status lay_out(lw_pattern_fitter *f, double narrowest, lw_error *err)
     for (size_t b = 0; m->shape.histogram != NULL && b < m->shape.n_size; b++)
         f->lower[LW_PATTERN_SIZE + b] = 0; /* no volume is negative */
     f->lower[LW_PATTERN_ANISOTROPY] = -20;
-    f->upper[LW_PATTERN_ANISOTROPY] = 2.99;
+    f->upper[LW_PATTERN_ANISOTROPY] = 2.99; /* H is 1/3 at most: from q = 3 on 1 - q H is negative along <111> */
     f->fixed[LW_PATTERN_ANISOTROPY] = f->request->anisotropy != 2 || !lw_pattern_fitter_directions(f);
     f->lower[LW_PATTERN_VARIATION] = 0;
     f->upper[LW_PATTERN_VARIATION] = 5;
