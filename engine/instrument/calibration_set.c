@@ -345,7 +345,7 @@ static lw_status fit_again(lw_engine *engine, const lw_calibration *calibration,
 {
     const lw_lines *lines = scan->lines;
     lw_width_function profile = calibration->profile;
-    lw_fit_options how = lw_fit_defaults();
+    lw_fit_options how = *lines->options;
     lw_reflection *reflection = lw_arena_take(scratch, lines->n, sizeof *reflection, err);
     double *expected = lw_arena_take(scratch, lines->n, sizeof *expected, err);
     if (reflection == NULL || expected == NULL)
@@ -358,11 +358,9 @@ static lw_status fit_again(lw_engine *engine, const lw_calibration *calibration,
     profile.high_deg = fmax(profile.high_deg, lines->scan->two_theta_deg[lines->scan->n - 1]);
     how.instrument = &profile;
     how.expected_shift = expected;
-    how.axis = lines->on_s_axis ? 0 : 1;
-    how.intensity_factor = lines->with_factor ? 0 : 1;
-    how.polarised = 1 - lines->constant_polarisation;
-    if (how.polarised > 0)
-        how.monochromator_deg = acos(sqrt(fmin(lines->cos2_polarisation / how.polarised, 1))) * 180 / M_PI;
+    how.axial = LW_AXIAL_NONE; /* it is in the instrument, as are the widths that were held */
+    how.widths = lw_fit_defaults().widths;
+    how.fixed = (lw_option_list){0};
     return lw_fit_lines(engine, lines->scan, reflection, lines->n, lines->material, &how, &scan->again, err);
 }
 
